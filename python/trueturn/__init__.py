@@ -1,0 +1,1 @@
+"""Prove product-formula circuits against a certified reference."""

@@ -1,0 +1,75 @@
+//! Every way in which an input can be refused, with the facts a caller needs to mend it.
+
+use std::fmt;
+
+/// A refused input. `Display` gives the whole message: argument, what is wrong, value, remedy.
+#[derive(Clone, Debug, PartialEq)]
+#[non_exhaustive]
+pub enum Error {
+    /// Operator text that does not parse, or that parses to something that is not Hermitian.
+    Term {
+        /// One-based line of the offending text.
+        line: usize,
+        /// One-based column of the offending text, in characters.
+        column: usize,
+        /// The offending text itself.
+        text: String,
+        /// What was expected, or what to do.
+        expected: String,
+    },
+    /// Masks, coefficients or a number of qubits that make no operator.
+    Operator {
+        /// The argument at fault.
+        argument: &'static str,
+        /// The whole message.
+        message: String,
+    },
+    /// Angles, repeats or phases that make no circuit.
+    Rotation {
+        /// The argument at fault.
+        argument: &'static str,
+        /// The whole message.
+        message: String,
+    },
+    /// A state of the wrong length or number of qubits.
+    StateShape {
+        /// What was given.
+        found: String,
+        /// What would do.
+        expected: String,
+    },
+    /// The caller asked to stop; the state holds the result of the passes that were finished.
+    Cancelled {
+        /// Passes that were finished.
+        passes_done: u64,
+    },
+    /// The caller asked twice to stop; the pass was left half-way and the state holds nothing meaningful.
+    Abandoned,
+    /// A bug of ours.
+    Internal {
+        /// What went wrong.
+        message: String,
+    },
+}
+
+impl fmt::Display for Error {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        match self {
+            Self::Term { line, column, text, expected } => {
+                write!(f, "line {line}, column {column}: {expected} (found {text:?})")
+            }
+            Self::Operator { message, .. } | Self::Rotation { message, .. } => f.write_str(message),
+            Self::StateShape { found, expected } => write!(f, "state: wrong shape ({found}); give {expected}"),
+            Self::Cancelled { passes_done } => write!(f, "stopped on request after {passes_done} finished passes"),
+            Self::Abandoned => f.write_str("stopped at once on a second request; the state is spoiled"),
+            Self::Internal { message } => {
+                write!(f, "internal error: {message}; please report it with the output of trueturn.build_info()")
+            }
+        }
+    }
+}
+
+impl std::error::Error for Error {}
+
+/// Shorthand used throughout the crate.
+pub type Result<T> = std::result::Result<T, Error>;
