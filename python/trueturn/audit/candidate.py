@@ -1,0 +1,73 @@
+"""A candidate circuit: a formula, a rule that makes parts, and a number of steps."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+from trueturn.errors import ArgumentError
+from trueturn.formulas import Formula, formula
+from trueturn.operator import Operator
+from trueturn.partition import Partition
+
+__all__ = ["Candidate"]
+
+
+@dataclass(frozen=True)
+class Candidate:
+    """One circuit to be judged.
+
+    Parameters
+    ----------
+    formula : str or Formula
+        A registered name (`trueturn.formulas()`) or a formula of the user's own.
+    rule : str or Partition
+        How the Hamiltonian is split into parts: a rule of `Partition.of`, or a ready partition.
+    steps : int or "least"
+        Step count, or ``"least"`` to search for the smallest that meets the tolerance.
+
+    Raises
+    ------
+    FormulaError
+        The name is not registered.
+    ArgumentError
+        `steps` is neither a positive whole number nor ``"least"``.
+
+    Examples
+    --------
+    >>> Candidate("strang", rule="bond", steps=40).label
+    'strang, bond'
+    """
+
+    formula: Formula
+    rule: str | Partition = "commuting"
+    steps: int | str = "least"
+
+    def __post_init__(self) -> None:
+        if isinstance(self.formula, str):
+            object.__setattr__(self, "formula", formula(self.formula))
+        if not isinstance(self.formula, Formula):
+            raise ArgumentError(
+                f"formula: neither a name nor a Formula ({self.formula!r}); see trueturn.formulas()",
+                argument="formula",
+                value=self.formula,
+            )
+        whole = isinstance(self.steps, int) and not isinstance(self.steps, bool)
+        if self.steps != "least" and not (whole and int(self.steps) >= 1):
+            raise ArgumentError(
+                f'steps: not a positive whole number ({self.steps!r}); give 1 or more, or "least"',
+                argument="steps",
+                value=self.steps,
+            )
+
+    @property
+    def label(self) -> str:
+        """Formula and rule, for tables."""
+        rule = self.rule if isinstance(self.rule, str) else "own parts"
+        return f"{self.formula.name}, {rule}"
+
+    def partition(self, operator: Operator) -> Partition:
+        """Split the operator by this candidate's rule, or check that its own parts sum to it."""
+        if isinstance(self.rule, Partition):
+            self.rule.require_sum(operator)
+            return self.rule
+        return Partition.of(operator, self.rule)
