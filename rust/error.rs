@@ -31,6 +31,13 @@ pub enum Error {
         /// The whole message.
         message: String,
     },
+    /// A setting out of range: a thread count, an environment variable.
+    Argument {
+        /// The argument or variable at fault.
+        argument: &'static str,
+        /// The whole message.
+        message: String,
+    },
     /// A state of the wrong length or number of qubits.
     StateShape {
         /// What was given.
@@ -58,7 +65,9 @@ impl fmt::Display for Error {
             Self::Term { line, column, text, expected } => {
                 write!(f, "line {line}, column {column}: {expected} (found {text:?})")
             }
-            Self::Operator { message, .. } | Self::Rotation { message, .. } => f.write_str(message),
+            Self::Operator { message, .. } | Self::Rotation { message, .. } | Self::Argument { message, .. } => {
+                f.write_str(message)
+            }
             Self::StateShape { found, expected } => write!(f, "state: wrong shape ({found}); give {expected}"),
             Self::Cancelled { passes_done } => write!(f, "stopped on request after {passes_done} finished passes"),
             Self::Abandoned => f.write_str("stopped at once on a second request; the state is spoiled"),

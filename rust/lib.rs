@@ -4,12 +4,28 @@
 //! | --- | --- |
 //! | [`pauli`] | one Pauli string as two bit masks, products and commutation |
 //! | [`terms`] | real sums of strings: parsing, printing, sums, products, brackets |
+//! | [`rotations`] | a circuit: ordered rotations in repeated blocks, and a global phase |
+//! | [`passes`] | the planner: which rotations share one traversal of memory |
+//! | [`evolve`] | carries the passes out on a state vector |
+//! | [`action`] | H applied to a state, expectations, the Chebyshev recurrence |
+//! | [`sums`] | norm, overlap and distance in a fixed order |
+//! | [`team`] | worker threads, requests to stop, progress |
+//! | [`kernel`] | inner loops for each instruction set; all unsafe code |
+//! | [`twin`] | one rotation by its definition, the oracle of the above |
 //! | [`error`] | every way in which an input can be refused |
 //!
 //! Nothing here knows Python except [`python`](crate::python), which is compiled with the feature of that name.
 
+pub mod action;
 pub mod error;
+pub mod evolve;
+pub mod kernel;
+pub mod passes;
 pub mod pauli;
 #[cfg(feature = "python")]
 pub mod python;
+pub mod rotations;
+pub mod sums;
+pub mod team;
 pub mod terms;
+pub mod twin;

@@ -26,7 +26,9 @@ pub fn to_python(py: Python<'_>, error: Error) -> PyErr {
         Error::Term { line, column, text, .. } => {
             details.set_item("text", text).and_then(|()| details.set_item("position", (line, column)))
         }
-        Error::Operator { argument, .. } | Error::Rotation { argument, .. } => details.set_item("argument", argument),
+        Error::Operator { argument, .. } | Error::Rotation { argument, .. } | Error::Argument { argument, .. } => {
+            details.set_item("argument", argument)
+        }
         Error::StateShape { found, expected } => {
             details.set_item("shape", found).and_then(|()| details.set_item("expected", expected))
         }
@@ -39,6 +41,7 @@ pub fn to_python(py: Python<'_>, error: Error) -> PyErr {
         Error::Term { .. } => "TermError",
         Error::Operator { .. } => "OperatorError",
         Error::Rotation { .. } => "RotationError",
+        Error::Argument { .. } => "ArgumentError",
         Error::StateShape { .. } => "StateShapeError",
         Error::Cancelled { .. } => return pyo3::exceptions::PyKeyboardInterrupt::new_err(message),
         Error::Abandoned => "StateSpoiledError",

@@ -1,0 +1,365 @@
+//! Loops over groups of eight lanes, and the weights that a Pauli string has there.
+//!
+//! A string multiplies amplitude `k` by `i^{|x & z|} (-1)^{|k & z|}` and moves it to `k ^ x`. Write `k = 4 q + a`: group
+//! `q`, position `a` inside it. Then the group moves to `q ^ (x >> 2)`, the position to `a ^ (x & 3)`, and the sign is the
+//! parity of `q & (z >> 2)` times the parity of `a & (z & 3)`. The first parity picks one of two weight vectors, the
+//! second is written into them.
+//!
+//! Worked example on three qubits: exp(-i θ X_0 X_2) has x = 0b101. Groups 0 and 1 are partners and lanes move by
+//! `m = 2 · 0b01 + 1 = 3`: amplitude 0 takes from amplitude 5, its real part from that one's imaginary part:
+//! re' = cos θ · re + sin θ · im(5), im' = cos θ · im - sin θ · re(5).
+
+use std::ops::{Add, AddAssign, Mul, Neg, Range, Sub};
+
+use super::Work;
+use super::shared::Shared;
+
+/// Reals in a group: four amplitudes.
+pub const LANES: usize = 8;
+/// Amplitudes in a group, as a power of two.
+pub const GROUP_BITS: u32 = 2;
+
+/// f64 or f32.
+pub trait Real:
+    Copy
+    + Default
+    + PartialEq
+    + Send
+    + Sync
+    + 'static
+    + Add<Output = Self>
+    + AddAssign
+    + Sub<Output = Self>
+    + Mul<Output = Self>
+    + Neg<Output = Self>
+{
+    /// Rounds to this type.
+    fn from_f64(value: f64) -> Self;
+    /// Widens without loss.
+    fn to_f64(self) -> f64;
+}
+
+impl Real for f64 {
+    #[inline(always)]
+    fn from_f64(value: f64) -> Self {
+        value
+    }
+    #[inline(always)]
+    fn to_f64(self) -> f64 {
+        self
+    }
+}
+
+impl Real for f32 {
+    #[inline(always)]
+    fn from_f64(value: f64) -> Self {
+        value as f32
+    }
+    #[inline(always)]
+    fn to_f64(self) -> f64 {
+        f64::from(self)
+    }
+}
+
+/// A string with a complex factor that is real or imaginary, ready for the loops below: out = factor · P · in.
+#[derive(Clone, Debug, PartialEq)]
+pub struct LaneString<T> {
+    /// Lane `l` takes from lane `l ^ m`.
+    pub m: usize,
+    /// Group `q` takes from group `q ^ x`.
+    pub x: usize,
+    /// The parity of `source group & z` picks the weights.
+    pub z: usize,
+    /// Weights by parity and by target lane.
+    pub weights: [[T; LANES]; 2],
+}
+
+/// The factor in front of a string.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub enum Factor {
+    /// A real number.
+    Real(f64),
+    /// i times a real number.
+    Imaginary(f64),
+}
+
+impl Factor {
+    /// The factor times `i^turns`.
+    pub fn times_i_power(self, turns: u32) -> Self {
+        let turned = match (self, turns & 1) {
+            (factor, 0) => factor,
+            (Self::Real(value), _) => Self::Imaginary(value),
+            (Self::Imaginary(value), _) => Self::Real(-value),
+        };
+        match (turned, turns & 2) {
+            (factor, 0) => factor,
+            (Self::Real(value), _) => Self::Real(-value),
+            (Self::Imaginary(value), _) => Self::Imaginary(-value),
+        }
+    }
+}
+
+impl<T: Real> LaneString<T> {
+    /// Prepares `factor · X^x Z^z`, where a string's own `i^{|x & z|}` is already part of the factor.
+    pub fn new(x: u64, z: u64, factor: Factor) -> Self {
+        let (x_in, z_in) = ((x & 3) as usize, (z & 3) as usize);
+        let mut weights = [[T::default(); LANES]; 2];
+        for (parity, row) in weights.iter_mut().enumerate() {
+            for (lane, weight) in row.iter_mut().enumerate() {
+                let source = (lane >> 1) ^ x_in;
+                let odd = ((source & z_in).count_ones() as usize + parity) & 1 == 1;
+                let value = match (factor, lane & 1) {
+                    (Factor::Real(value), _) | (Factor::Imaginary(value), 1) => value,
+                    (Factor::Imaginary(value), _) => -value,
+                };
+                *weight = T::from_f64(if odd { -value } else { value });
+            }
+        }
+        let m = 2 * x_in + usize::from(matches!(factor, Factor::Imaginary(_)));
+        Self { m, x: (x >> GROUP_BITS) as usize, z: (z >> GROUP_BITS) as usize, weights }
+    }
+
+    /// The string with all weights multiplied by a number.
+    #[inline]
+    pub fn scaled(&self, by: T) -> Self {
+        Self { weights: self.weights.map(|row| row.map(|weight| weight * by)), ..*self }
+    }
+
+    /// Parity of the source group's sign bits.
+    #[inline(always)]
+    fn parity(&self, source: usize) -> usize {
+        (source & self.z).count_ones() as usize & 1
+    }
+}
+
+#[inline(always)]
+fn permuted<T: Real, const M: usize>(lanes: &[T; LANES]) -> [T; LANES] {
+    std::array::from_fn(|l| lanes[l ^ M])
+}
+
+/// `keep · own + weights · permuted(other)`, the two products rounded, then the sum.
+#[inline(always)]
+fn mixed<T: Real, const M: usize>(keep: T, own: &[T; LANES], weights: &[T; LANES], other: &[T; LANES]) -> [T; LANES] {
+    let other = permuted::<T, M>(other);
+    std::array::from_fn(|l| keep * own[l] + weights[l] * other[l])
+}
+
+/// Compiles one body for the eight lane permutations and picks by `m`.
+macro_rules! for_each_permutation {
+    ($m:expr, $call:ident, $($argument:expr),*) => {
+        match $m {
+            0 => $call::<T, 0>($($argument),*),
+            1 => $call::<T, 1>($($argument),*),
+            2 => $call::<T, 2>($($argument),*),
+            3 => $call::<T, 3>($($argument),*),
+            4 => $call::<T, 4>($($argument),*),
+            5 => $call::<T, 5>($($argument),*),
+            6 => $call::<T, 6>($($argument),*),
+            _ => $call::<T, 7>($($argument),*),
+        }
+    };
+}
+
+/// a ← keep · a + factor · P a on groups of lanes, in place. `range` counts pairs of partner groups where the string moves
+/// groups ([`Mix::units`]), else groups.
+pub struct Mix<'a, T: Real> {
+    /// The amplitudes.
+    pub state: &'a Shared<'a, T>,
+    /// Which pairs or groups.
+    pub range: Range<usize>,
+    /// The cosine.
+    pub keep: T,
+    /// The string with its factor.
+    pub string: &'a LaneString<T>,
+    /// 1 where the factor changes sign for all groups, else 0.
+    pub flip: usize,
+}
+
+impl<T: Real> Mix<'_, T> {
+    /// Pairs or groups in a state of `groups` groups.
+    pub fn units(string: &LaneString<T>, groups: usize) -> usize {
+        if string.x == 0 { groups } else { groups / 2 }
+    }
+}
+
+impl<T: Real> Work for Mix<'_, T> {
+    type Output = ();
+    #[inline(always)]
+    fn run(self) {
+        if self.string.x == 0 {
+            for_each_permutation!(self.string.m, mix_alone, self.state, self.range, self.keep, self.string, self.flip);
+        } else {
+            for_each_permutation!(self.string.m, mix_pairs, self.state, self.range, self.keep, self.string, self.flip);
+        }
+    }
+}
+
+#[inline(always)]
+fn mix_alone<T: Real, const M: usize>(
+    state: &Shared<T>,
+    range: Range<usize>,
+    keep: T,
+    string: &LaneString<T>,
+    flip: usize,
+) {
+    for q in range {
+        // SAFETY: the caller gave this range of groups to this worker alone.
+        let own = unsafe { state.group(q) };
+        *own = mixed::<T, M>(keep, own, &string.weights[string.parity(q) ^ flip], own);
+    }
+}
+
+#[inline(always)]
+fn mix_pairs<T: Real, const M: usize>(
+    state: &Shared<T>,
+    range: Range<usize>,
+    keep: T,
+    string: &LaneString<T>,
+    flip: usize,
+) {
+    let pivot = string.x.ilog2();
+    let below = (1usize << pivot) - 1;
+    let between = string.parity(string.x);
+    for pair in range {
+        // A zero is put in at the pivot, the highest bit in which partners differ: each pair is met once.
+        let q = ((pair & !below) << 1) | (pair & below);
+        let parity = string.parity(q) ^ flip;
+        // SAFETY: a pair number names two groups that no other pair number names, they differ since x is not 0, and the
+        // caller gave this range of pairs to this worker alone.
+        let (first, second) = unsafe { (state.group(q), state.group(q ^ string.x)) };
+        let new = mixed::<T, M>(keep, first, &string.weights[parity ^ between], second);
+        *second = mixed::<T, M>(keep, second, &string.weights[parity], first);
+        *first = new;
+    }
+}
+
+/// out[q] += factor · (P in)[q] for the groups of one block; `source` is the block that the string's high bits select.
+pub struct Accumulate<'a, T> {
+    /// Sum so far.
+    pub out: &'a mut [[T; LANES]],
+    /// The block to read.
+    pub source: &'a [[T; LANES]],
+    /// The string with its factor, masks cut to the block.
+    pub string: &'a LaneString<T>,
+}
+
+impl<T: Real> Work for Accumulate<'_, T> {
+    type Output = ();
+    #[inline(always)]
+    fn run(self) {
+        for_each_permutation!(self.string.m, accumulate, self.out, self.source, self.string);
+    }
+}
+
+#[inline(always)]
+fn accumulate<T: Real, const M: usize>(out: &mut [[T; LANES]], source: &[[T; LANES]], string: &LaneString<T>) {
+    if string.x == 0 && string.z == 0 {
+        for (out, source) in out.iter_mut().zip(source) {
+            add_weighted::<T, M>(out, &string.weights[0], source);
+        }
+        return;
+    }
+    // The block length is a power of two, so the mask keeps the index in bounds and spares the check.
+    let mask = source.len() - 1;
+    for (q, out) in out.iter_mut().enumerate() {
+        let from = (q ^ string.x) & mask;
+        add_weighted::<T, M>(out, &string.weights[string.parity(from)], &source[from]);
+    }
+}
+
+#[inline(always)]
+fn add_weighted<T: Real, const M: usize>(out: &mut [T; LANES], weights: &[T; LANES], source: &[T; LANES]) {
+    let source = permuted::<T, M>(source);
+    *out = std::array::from_fn(|l| out[l] + weights[l] * source[l]);
+}
+
+/// a ← phase · table · a on a block; an empty table stands for ones.
+pub struct Multiply<'a, T> {
+    /// The amplitudes.
+    pub block: &'a mut [[T; LANES]],
+    /// One complex number for each amplitude, or nothing.
+    pub table: &'a [[T; LANES]],
+    /// One complex number for all.
+    pub phase: num_complex::Complex<T>,
+}
+
+impl<T: Real> Work for Multiply<'_, T> {
+    type Output = ();
+    #[inline(always)]
+    fn run(self) {
+        let (re, im) = (self.phase.re, self.phase.im);
+        let turn = |own: &[T; LANES]| -> [T; LANES] {
+            std::array::from_fn(|l| {
+                let imaginary = if l & 1 == 0 { -im } else { im };
+                re * own[l] + imaginary * own[l ^ 1]
+            })
+        };
+        if self.table.is_empty() {
+            self.block.iter_mut().for_each(|own| *own = turn(own));
+            return;
+        }
+        for (own, table) in self.block.iter_mut().zip(self.table) {
+            let product: [T; LANES] = std::array::from_fn(|l| {
+                let imaginary = if l & 1 == 0 { -table[l | 1] } else { table[l] };
+                table[l & !1] * own[l] + imaginary * own[l ^ 1]
+            });
+            *own = turn(&product);
+        }
+    }
+}
+
+/// Sums of products of two blocks in a fixed order: Σ (re re + im im) and Σ (re im' - im re'), eight partial sums each.
+pub struct Dot<'a, T> {
+    /// Left block, conjugated.
+    pub left: &'a [[T; LANES]],
+    /// Right block.
+    pub right: &'a [[T; LANES]],
+}
+
+impl<T: Real> Work for Dot<'_, T> {
+    type Output = (f64, f64);
+    #[inline(always)]
+    fn run(self) -> (f64, f64) {
+        let mut straight = [0.0_f64; LANES];
+        let mut crossed = [0.0_f64; LANES];
+        for (left, right) in self.left.iter().zip(self.right) {
+            for l in 0..LANES {
+                straight[l] += left[l].to_f64() * right[l].to_f64();
+                crossed[l] += left[l].to_f64() * right[l ^ 1].to_f64();
+            }
+        }
+        let even = (crossed[0] + crossed[2]) + (crossed[4] + crossed[6]);
+        let odd = (crossed[1] + crossed[3]) + (crossed[5] + crossed[7]);
+        let real = ((straight[0] + straight[1]) + (straight[2] + straight[3]))
+            + ((straight[4] + straight[5]) + (straight[6] + straight[7]));
+        (real, even - odd)
+    }
+}
+
+/// Σ |left - factor · right|² of two blocks.
+pub struct SquaredDistance<'a, T> {
+    /// Left block.
+    pub left: &'a [[T; LANES]],
+    /// Right block.
+    pub right: &'a [[T; LANES]],
+    /// Complex factor of the right block: (re, im).
+    pub factor: (f64, f64),
+}
+
+impl<T: Real> Work for SquaredDistance<'_, T> {
+    type Output = f64;
+    #[inline(always)]
+    fn run(self) -> f64 {
+        let (re, im) = self.factor;
+        let mut sums = [0.0_f64; LANES];
+        for (left, right) in self.left.iter().zip(self.right) {
+            for (l, sum) in sums.iter_mut().enumerate() {
+                let signed = if l & 1 == 0 { -im } else { im };
+                let turned = re * right[l].to_f64() + signed * right[l ^ 1].to_f64();
+                let difference = left[l].to_f64() - turned;
+                *sum += difference * difference;
+            }
+        }
+        ((sums[0] + sums[1]) + (sums[2] + sums[3])) + ((sums[4] + sums[5]) + (sums[6] + sums[7]))
+    }
+}
