@@ -63,7 +63,7 @@ impl fmt::Display for Error {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         match self {
             Self::Term { line, column, text, expected } => {
-                write!(f, "line {line}, column {column}: {expected} (found {text:?})")
+                write!(f, "text: refused at line {line}, column {column} ({text:?}); {expected}")
             }
             Self::Operator { message, .. } | Self::Rotation { message, .. } | Self::Argument { message, .. } => {
                 f.write_str(message)
