@@ -45,6 +45,20 @@ pub enum Error {
         /// What would do.
         expected: String,
     },
+    /// Not an array of amplitudes.
+    StateType {
+        /// What was given.
+        found: String,
+        /// What would do.
+        expected: &'static str,
+    },
+    /// An array that cannot be written in place.
+    StateLayout {
+        /// Why, and what to do.
+        reason: &'static str,
+    },
+    /// An array in use by another call.
+    StateBusy,
     /// The caller asked to stop; the state holds the result of the passes that were finished.
     Cancelled {
         /// Passes that were finished.
@@ -69,6 +83,9 @@ impl fmt::Display for Error {
                 f.write_str(message)
             }
             Self::StateShape { found, expected } => write!(f, "state: wrong shape ({found}); give {expected}"),
+            Self::StateType { found, expected } => write!(f, "state: wrong type ({found}); give {expected}"),
+            Self::StateLayout { reason } => write!(f, "state: cannot be evolved in place: {reason}"),
+            Self::StateBusy => f.write_str("state: the array is in use by another call; wait for it or evolve a copy"),
             Self::Cancelled { passes_done } => write!(f, "stopped on request after {passes_done} finished passes"),
             Self::Abandoned => f.write_str("stopped at once on a second request; the state is spoiled"),
             Self::Internal { message } => {

@@ -5,6 +5,7 @@
 //! | [`pauli`] | one Pauli string as two bit masks, products and commutation |
 //! | [`terms`] | real sums of strings: parsing, printing, sums, products, brackets |
 //! | [`rotations`] | a circuit: ordered rotations in repeated blocks, and a global phase |
+//! | [`cost`] | two-qubit gates and depth, without writing a circuit out |
 //! | [`passes`] | the planner: which rotations share one traversal of memory |
 //! | [`evolve`] | carries the passes out on a state vector |
 //! | [`action`] | H applied to a state, expectations, the Chebyshev recurrence |
@@ -17,6 +18,7 @@
 //! Nothing here knows Python except [`python`](crate::python), which is compiled with the feature of that name.
 
 pub mod action;
+pub mod cost;
 pub mod error;
 pub mod evolve;
 pub mod kernel;

@@ -85,6 +85,14 @@ impl Rotations {
         Ok(Self { qubits, blocks, phase })
     }
 
+    /// A circuit from blocks of another one.
+    ///
+    /// # Errors
+    /// The phase is not finite.
+    pub fn from_blocks(qubits: u32, blocks: Vec<Block>, phase: f64) -> Result<Self> {
+        Self::checked(qubits, blocks, phase)
+    }
+
     /// One circuit after the other.
     ///
     /// # Errors
@@ -184,7 +192,8 @@ fn inverted(blocks: &[Block]) -> Vec<Block> {
     blocks.iter().rev().map(invert).collect()
 }
 
-fn visit_lists(blocks: &[Block], times: u64, visit: &mut dyn FnMut(&[Rotation], u64)) {
+/// [`Rotations::for_each_list`] on bare blocks that run `times` times.
+pub(crate) fn visit_lists(blocks: &[Block], times: u64, visit: &mut dyn FnMut(&[Rotation], u64)) {
     for block in blocks {
         let times = times.saturating_mul(block.repeat);
         match &block.body {

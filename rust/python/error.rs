@@ -32,7 +32,11 @@ pub fn to_python(py: Python<'_>, error: Error) -> PyErr {
         Error::StateShape { found, expected } => {
             details.set_item("shape", found).and_then(|()| details.set_item("expected", expected))
         }
-        Error::Cancelled { .. } | Error::Abandoned | Error::Internal { .. } => Ok(()),
+        Error::StateType { found, expected } => {
+            details.set_item("dtype", found).and_then(|()| details.set_item("expected", expected))
+        }
+        Error::StateLayout { reason } => details.set_item("reason", reason),
+        Error::StateBusy | Error::Cancelled { .. } | Error::Abandoned | Error::Internal { .. } => Ok(()),
     };
     if let Err(failure) = filled {
         return failure;
@@ -43,6 +47,9 @@ pub fn to_python(py: Python<'_>, error: Error) -> PyErr {
         Error::Rotation { .. } => "RotationError",
         Error::Argument { .. } => "ArgumentError",
         Error::StateShape { .. } => "StateShapeError",
+        Error::StateType { .. } => "StateTypeError",
+        Error::StateLayout { .. } => "StateLayoutError",
+        Error::StateBusy => "StateBusyError",
         Error::Cancelled { .. } => return pyo3::exceptions::PyKeyboardInterrupt::new_err(message),
         Error::Abandoned => "StateSpoiledError",
         Error::Internal { .. } => "InternalError",

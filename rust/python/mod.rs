@@ -1,12 +1,24 @@
 //! The Python module `trueturn._native`: a list of exports, nothing else.
 
+mod arrays;
 mod error;
+mod gateway;
+pub mod rotations;
+pub mod state;
 pub mod terms;
 
 use pyo3::prelude::*;
 
 /// The compiled core of trueturn; users import `trueturn`, never this.
 #[pymodule]
-fn _native(module: &Bound<'_, PyModule>) -> PyResult<()> {
-    module.add_class::<terms::PyTerms>()
+mod _native {
+    #[pymodule_export]
+    use super::rotations::PyRotations;
+    #[pymodule_export]
+    use super::state::{
+        application_rounding, apply_terms, chebyshev_sums, distance, evolve, expectation, instruction_sets, overlap,
+        pairwise_sum, squared_norms,
+    };
+    #[pymodule_export]
+    use super::terms::PyTerms;
 }

@@ -1,0 +1,262 @@
+"""What a circuit does: ordered Pauli rotations in repeated blocks."""
+
+from __future__ import annotations
+
+import operator as _operator
+from collections.abc import Iterable, Sequence
+from typing import NamedTuple
+
+import numpy as np
+import numpy.typing as npt
+
+from trueturn import _native
+from trueturn.errors import RotationError
+from trueturn.operator import Operator
+
+__all__ = ["Block", "Rotations"]
+
+WRITTEN_OUT_LIMIT = 10**7
+
+
+class Block(NamedTuple):
+    """A circuit and how often it runs."""
+
+    rotations: Rotations
+    repeat: int
+
+
+class Rotations:
+    """Ordered rotations exp(-i θ P), repeated blocks of them, and a global phase; immutable.
+
+    Parameters
+    ----------
+    x, z : sequence of int
+        Bit masks of the strings: bit q of x where qubit q carries X or Y, bit q of z where it carries Z or Y.
+    angles : sequence of float
+        θ in radians, without a factor 1/2 (an OpenQASM ``rz(φ)`` is θ = φ/2). Kept as given, never reduced.
+    qubits : int
+        At most 128.
+    phase : float, optional
+        The circuit is exp(i phase) times the rotations.
+
+    Raises
+    ------
+    RotationError
+        Lengths differ, an angle or the phase is not finite, a string acts outside of the qubits.
+
+    Notes
+    -----
+    Repeats are stored, never written out: a million steps cost what one costs.
+
+    Examples
+    --------
+    >>> step = Rotations(x=[0b01, 0b00], z=[0b00, 0b11], angles=[0.1, 0.2], qubits=2)
+    >>> step.times(1000).count
+    2000
+    """
+
+    __slots__ = ("_native",)
+    _native: _native.Rotations
+
+    def __init__(
+        self,
+        x: Iterable[int],
+        z: Iterable[int],
+        angles: Sequence[float] | npt.NDArray[np.float64],
+        qubits: int,
+        phase: float = 0.0,
+    ) -> None:
+        self._native = _native.Rotations.from_list(
+            _masks("x", x), _masks("z", z), _angles(angles), _qubits(qubits), _number("phase", phase)
+        )
+
+    @classmethod
+    def _wrap(cls, native: _native.Rotations) -> Rotations:
+        made = cls.__new__(cls)
+        made._native = native
+        return made
+
+    @property
+    def qubits(self) -> int:
+        """Number of qubits."""
+        return self._native.qubits
+
+    @property
+    def count(self) -> int:
+        """Number of rotations, repeats included; stops at 2**64 - 1."""
+        return self._native.count
+
+    @property
+    def phase(self) -> float:
+        """Global phase in radians, not reduced."""
+        return self._native.phase
+
+    @property
+    def blocks(self) -> tuple[Block, ...]:
+        """The blocks in order of time. A block's rotations carry phase 0; a plain list is one block."""
+        return tuple(Block(Rotations._wrap(body), repeat) for body, repeat in self._native.blocks())
+
+    @property
+    def x_masks(self) -> npt.NDArray[np.object_]:
+        """x mask of each rotation, written out: shape (count,), Python ints (masks have up to 128 bits)."""
+        return _objects(self._written_out()[0])
+
+    @property
+    def z_masks(self) -> npt.NDArray[np.object_]:
+        """z mask of each rotation, written out: shape (count,), Python ints."""
+        return _objects(self._written_out()[1])
+
+    @property
+    def angles(self) -> npt.NDArray[np.float64]:
+        """Angle of each rotation in radians, written out: shape (count,).
+
+        Raises
+        ------
+        RotationError
+            There are more than 10**7 rotations; use `blocks`.
+        """
+        return self._written_out()[2]
+
+    def _written_out(self) -> tuple[list[int], list[int], npt.NDArray[np.float64]]:
+        columns = self._native.written_out(WRITTEN_OUT_LIMIT)
+        if columns is None:
+            raise RotationError(
+                f"rotations: too many to write out ({self.count}); use .blocks, which keeps repeats apart",
+                argument="rotations",
+            )
+        return columns
+
+    def inverse(self) -> Rotations:
+        """Return the circuit that undoes this one."""
+        return Rotations._wrap(self._native.inverse())
+
+    def times(self, k: int) -> Rotations:
+        """Return the circuit run `k` times over, at no cost in memory.
+
+        Raises
+        ------
+        RotationError
+            `k` is not a whole number from 0 to 2**63.
+        """
+        whole = not isinstance(k, bool) and hasattr(k, "__index__")
+        if not whole or not 0 <= _operator.index(k) <= 2**63:
+            raise RotationError(f"k: not a repeat count ({k!r}); give a whole number, 0 or more", argument="k")
+        return Rotations._wrap(self._native.times(_operator.index(k)))
+
+    def __add__(self, other: Rotations) -> Rotations:
+        """Return this circuit followed by the other; nothing merges at the seam."""
+        if not isinstance(other, Rotations):
+            return NotImplemented
+        return Rotations._wrap(self._native.then(other._native))
+
+    def angle_totals(self) -> Operator:
+        """Return Σ θ P over all rotations: the first moment of the circuit.
+
+        For a consistent product formula it is t times the Hamiltonian without its identity term, whose share is
+        minus `phase`.
+
+        Returns
+        -------
+        Operator
+        """
+        totals: dict[tuple[int, int], float] = {}
+        for (x_masks, z_masks, angles), times in self._native.lists():
+            for x, z, angle in zip(x_masks, z_masks, angles, strict=True):
+                totals[x, z] = totals.get((x, z), 0.0) + times * float(angle)
+        return Operator.from_masks(
+            [x for x, _ in totals], [z for _, z in totals], list(totals.values()), self.qubits
+        )
+
+    def two_qubit_gates(self) -> int:
+        """Return the number of two-qubit gates: 2(w-1) for a rotation of weight w.
+
+        References
+        ----------
+        M. A. Nielsen, I. L. Chuang, Quantum Computation and Quantum Information (2000), section 4.7.3.
+        """
+        return self._native.two_qubit_gates()
+
+    def depth(self) -> int:
+        """Return the depth in two-qubit gates.
+
+        A rotation of weight w holds its qubits for 2(w-1) gates in a row; it starts as soon as all of them are free.
+        """
+        return self._native.two_qubit_depth()
+
+    def rounding_bound(self, angle_roundings: int = 0, unit: float = 2.0**-53) -> float:
+        """Return a bound on the 2-norm error that rounding adds when a unit vector is evolved.
+
+        Parameters
+        ----------
+        angle_roundings : int
+            Roundings that went into forming each angle; 0 where the angles are taken as exact.
+        unit : float
+            Unit roundoff of the amplitudes: 2**-53 for complex128, 2**-24 for complex64.
+
+        Notes
+        -----
+        With a' = c a + w b rounded after each product and sum, a rotation's arithmetic costs at most 2 u (|c| + |s|) ≤
+        2√2 u in the 2-norm, and a sine and cosine within one unit in the last place cost 2 u: 5 u bounds both. Phase
+        passes multiply factors together at √5 u and 2 u each (Brent, Percival, Zimmermann, Math. Comp. 76, 1469 (2007)),
+        below 5 u for each string. An angle off by k roundings costs k u |θ|. The global phase counts as one rotation.
+        The factor exp(5 N u), N rotations, covers products of errors.
+        """
+        double = 2.0**-53
+        count = self.count + (1 if self.phase else 0)
+        angles = self._native.angle_sum() + abs(self.phase)
+        linear = 5.0 * unit * count + angle_roundings * double * angles
+        return float(linear * np.exp(min(linear, 600.0)))
+
+    def __len__(self) -> int:
+        return self.count
+
+    def __eq__(self, other: object) -> bool:
+        """Equal blocks, repeats, strings, angles and phase; equality of what they do is a matter for `diagnose`."""
+        return isinstance(other, Rotations) and self._native.same_as(other._native)
+
+    def __hash__(self) -> int:
+        return hash((self.qubits, self.count, self.phase))
+
+    def __repr__(self) -> str:
+        return f"Rotations(count={self.count}, qubits={self.qubits}, blocks={len(self.blocks)}, phase={self.phase!r})"
+
+
+def _masks(argument: str, masks: Iterable[int]) -> list[int]:
+    try:
+        found = [_operator.index(mask) for mask in masks]
+    except TypeError:
+        raise RotationError(f"{argument}: not a sequence of whole numbers; give bit masks", argument=argument) from None
+    if any(not 0 <= mask < 1 << 128 for mask in found):
+        raise RotationError(f"{argument}: a mask is negative or longer than 128 bits; give masks of qubits", argument=argument)
+    return found
+
+
+def _angles(angles: Sequence[float] | npt.NDArray[np.float64]) -> npt.NDArray[np.float64]:
+    try:
+        found = np.ascontiguousarray(angles, dtype=np.float64)
+    except (TypeError, ValueError, OverflowError):
+        raise RotationError("angles: not real numbers; give radians", argument="angles") from None
+    if found.ndim != 1 or np.iscomplexobj(angles):
+        raise RotationError(
+            f"angles: not a list of real numbers (shape {found.shape}); give one angle per string", argument="angles"
+        )
+    return found
+
+
+def _qubits(qubits: int) -> int:
+    if isinstance(qubits, bool) or not hasattr(qubits, "__index__") or not 0 <= _operator.index(qubits) <= 128:
+        raise RotationError(f"qubits: not a number of qubits ({qubits!r}); give 0 to 128", argument="qubits")
+    return _operator.index(qubits)
+
+
+def _number(argument: str, value: float) -> float:
+    try:
+        return float(value)
+    except (TypeError, ValueError):
+        raise RotationError(f"{argument}: not a number ({value!r}); give radians", argument=argument) from None
+
+
+def _objects(values: list[int]) -> npt.NDArray[np.object_]:
+    array = np.empty(len(values), dtype=object)
+    array[:] = values
+    return array

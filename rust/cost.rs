@@ -1,0 +1,133 @@
+//! What a circuit costs in two-qubit gates, counted without writing it out.
+
+use crate::rotations::{Block, Body, Rotation, Rotations};
+
+/// Two-qubit gates: 2(w-1) for a rotation of weight w, one ladder down and one up.
+pub fn two_qubit_gates(rotations: &Rotations) -> u64 {
+    let mut sum = 0u64;
+    rotations.for_each_list(&mut |list, times| {
+        let once: u64 = list.iter().map(ladder_gates).sum();
+        sum = sum.saturating_add(once.saturating_mul(times));
+    });
+    sum
+}
+
+fn ladder_gates(rotation: &Rotation) -> u64 {
+    2 * u64::from(rotation.string.weight().saturating_sub(1))
+}
+
+/// Depth in two-qubit gates when each rotation starts as soon as all its qubits are free.
+///
+/// A rotation of weight w occupies its qubits for 2(w-1) gates in a row (a ladder of nearest neighbours), so rotations on
+/// disjoint qubits run side by side. One run of a block maps the times at which its qubits become free by maxima and sums
+/// only; once some earlier times recur, shifted by one constant in each connected part of the block, they recur for good.
+/// So a repeated block is run until that happens and the rest is multiplied out: a million steps cost what a few do.
+pub fn depth(rotations: &Rotations) -> u64 {
+    let mut free_at = vec![0u64; rotations.qubits() as usize];
+    advance(rotations.blocks(), &mut free_at);
+    free_at.into_iter().max().unwrap_or(0)
+}
+
+/// How many runs back a recurrence is looked for.
+const LONGEST_PERIOD: usize = 12;
+
+fn advance(blocks: &[Block], free_at: &mut [u64]) {
+    for block in blocks {
+        let parts = if block.repeat > 1 { connected_parts(block) } else { vec![] };
+        let mut history: Vec<Vec<u64>> = Vec::new();
+        let mut left = block.repeat;
+        while left > 0 {
+            if block.repeat > 1 {
+                history.push(free_at.to_vec());
+            }
+            match &block.body {
+                Body::List(list) => list.iter().for_each(|rotation| schedule(rotation, free_at)),
+                Body::Nested(blocks) => advance(blocks, free_at),
+            }
+            left -= 1;
+            let recent = history.iter().rev().take(LONGEST_PERIOD).enumerate();
+            let period = recent.map(|(back, was)| (back as u64 + 1, was)).find(|(_, was)| recurs(free_at, was, &parts));
+            if let Some((period, was)) = period.filter(|(period, _)| left >= *period) {
+                for (now, was) in free_at.iter_mut().zip(was) {
+                    *now = now.saturating_add((*now - was).saturating_mul(left / period));
+                }
+                left %= period;
+                history.clear();
+            }
+        }
+    }
+}
+
+fn schedule(rotation: &Rotation, free_at: &mut [u64]) {
+    let gates = ladder_gates(rotation);
+    if gates == 0 {
+        return;
+    }
+    let support = rotation.string.support();
+    let on = |qubit: &usize| support >> qubit & 1 == 1;
+    let start = (0..free_at.len()).filter(on).map(|qubit| free_at[qubit]).max().unwrap_or(0);
+    (0..free_at.len()).filter(on).for_each(|qubit| free_at[qubit] = start.saturating_add(gates));
+}
+
+/// Whether the times are earlier ones shifted by one constant in each part.
+fn recurs(now: &[u64], was: &[u64], parts: &[u128]) -> bool {
+    parts.iter().all(|part| {
+        let mut shifts = (0..now.len()).filter(|qubit| part >> qubit & 1 == 1).map(|qubit| now[qubit] - was[qubit]);
+        let first = shifts.next();
+        shifts.all(|shift| Some(shift) == first)
+    })
+}
+
+/// Sets of qubits that the block's ladders connect.
+fn connected_parts(block: &Block) -> Vec<u128> {
+    let mut parts: Vec<u128> = Vec::new();
+    let mut join = |list: &[Rotation]| {
+        for rotation in list.iter().filter(|rotation| ladder_gates(rotation) > 0) {
+            let (touched, mut apart): (Vec<u128>, Vec<u128>) =
+                parts.iter().partition(|&part| part & rotation.string.support() != 0);
+            apart.push(touched.into_iter().fold(rotation.string.support(), |all, part| all | part));
+            parts = apart;
+        }
+    };
+    match &block.body {
+        Body::List(list) => join(list),
+        Body::Nested(blocks) => crate::rotations::visit_lists(blocks, 1, &mut |list, _| join(list)),
+    }
+    parts
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::pauli::PauliString;
+
+    fn circuit(masks: &[u128]) -> Rotations {
+        let list = masks.iter().map(|&x| Rotation { string: PauliString { x, z: 0 }, angle: 0.1 }).collect();
+        Rotations::from_list(8, list, 0.0).unwrap()
+    }
+
+    #[test]
+    fn gates_are_two_for_each_qubit_after_the_first() {
+        assert_eq!(two_qubit_gates(&circuit(&[0b1, 0b11, 0b111]).times(5).unwrap()), 5 * (2 + 4));
+    }
+
+    #[test]
+    fn disjoint_rotations_run_side_by_side() {
+        assert_eq!(depth(&circuit(&[0b11, 0b1100, 0b11_0000])), 2);
+        assert_eq!(depth(&circuit(&[0b11, 0b110])), 4);
+    }
+
+    #[test]
+    fn repeats_are_multiplied_out_exactly() {
+        for masks in
+            [&[0b11, 0b110, 0b1100, 0b111][..], &[0b11, 0b1_1000, 0b11, 0b110], &[0b11, 0b11_0000, 0b1100_0011]]
+        {
+            let once = circuit(masks);
+            for repeat in [1u64, 2, 3, 7, 20, 41] {
+                let written = (1..repeat).fold(once.clone(), |all, _| all.then(&once).unwrap());
+                assert_eq!(depth(&once.times(repeat).unwrap()), depth(&written), "{masks:?} {repeat}");
+            }
+            assert!(depth(&once.times(1 << 40).unwrap()) >= 1 << 40);
+        }
+    }
+}

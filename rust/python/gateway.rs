@@ -1,0 +1,90 @@
+//! The one door through which long work on states leaves the interpreter lock.
+
+use std::panic::{AssertUnwindSafe, catch_unwind};
+use std::thread;
+use std::time::Duration;
+
+use pyo3::exceptions::PyKeyboardInterrupt;
+use pyo3::prelude::*;
+
+use super::error::to_python;
+use crate::error::{Error, Result};
+use crate::team::Control;
+
+/// Time between two looks for signals; an interrupt is heard within it.
+const LOOK: Duration = Duration::from_millis(25);
+
+/// Amplitudes times passes below which work runs on the calling thread without a watcher: less than a look.
+const BRIEF: u64 = 1 << 22;
+
+/// Runs `work` without the interpreter lock while this thread looks for Ctrl-C and reports progress.
+///
+/// The first Ctrl-C is acknowledged on stderr and stops the run after the current pass, the second at once. `progress` is
+/// called with finished passes and passes in all; an exception of its own stops the run and passes through.
+pub fn run<T: Send>(
+    py: Python<'_>,
+    weight: u64,
+    progress: Option<&Py<PyAny>>,
+    work: impl FnOnce(&Control) -> Result<T> + Send,
+) -> PyResult<T> {
+    let control = Control::default();
+    let guarded = || {
+        catch_unwind(AssertUnwindSafe(|| work(&control)))
+            .unwrap_or_else(|_| Err(Error::Internal { message: "a computation panicked".into() }))
+    };
+    if weight < BRIEF && progress.is_none() {
+        return py.detach(guarded).map_err(|error| to_python(py, error));
+    }
+    let (outcome, raised) = py.detach(|| {
+        thread::scope(|scope| {
+            let caller = thread::current();
+            let worker = scope.spawn(move || {
+                let outcome = guarded();
+                caller.unpark();
+                outcome
+            });
+            let mut raised = None;
+            let mut reported = 0;
+            while !worker.is_finished() {
+                thread::park_timeout(LOOK);
+                watch(&control, progress, &mut raised, &mut reported);
+            }
+            let lost = || Err(Error::Internal { message: "a computation's thread was lost".into() });
+            (worker.join().unwrap_or_else(|_| lost()), raised)
+        })
+    });
+    match (outcome, raised) {
+        // A spoiled state must be told as such even where an exception is waiting.
+        (Err(error @ (Error::Abandoned | Error::Internal { .. })), _) | (Err(error), None) => Err(to_python(py, error)),
+        (_, Some(raised)) => Err(raised),
+        (Ok(value), None) => Ok(value),
+    }
+}
+
+/// One look: signals first, then progress if it moved.
+fn watch(control: &Control, progress: Option<&Py<PyAny>>, raised: &mut Option<PyErr>, reported: &mut u64) {
+    Python::attach(|py| {
+        if let Err(interrupt) = py.check_signals() {
+            control.request_stop();
+            if raised.is_none() && interrupt.is_instance_of::<PyKeyboardInterrupt>(py) {
+                acknowledge(py);
+            }
+            raised.get_or_insert(interrupt);
+        }
+        let (done, total) = control.progress();
+        if let (Some(callback), true, None) = (progress, done != *reported, raised.as_ref()) {
+            *reported = done;
+            if let Err(failure) = callback.call1(py, (done, total)) {
+                control.request_stop();
+                *raised = Some(failure);
+            }
+        }
+    });
+}
+
+fn acknowledge(py: Python<'_>) {
+    let said = "\ntrueturn: stopping after the current pass; press Ctrl-C again to stop at once and spoil the state\n";
+    // A closed stderr must not hide the interrupt.
+    let _ =
+        py.import("sys").and_then(|sys| sys.getattr("stderr")).and_then(|stderr| stderr.call_method1("write", (said,)));
+}
