@@ -1,0 +1,76 @@
+//! How far is one rotation, and a step of many, from the in-place sweep of the same state?
+//!
+//! `cargo bench --no-default-features --bench passes -- [QUBITS ...]` prints, for one and two threads, the best of nine
+//! times of each circuit as a multiple of S1, the one-thread sweep that multiplies every amplitude by a constant.
+
+use std::hint::black_box;
+use std::time::Instant;
+
+use _native::evolve::evolve;
+use _native::pauli::PauliString;
+use _native::rotations::{Rotation, Rotations};
+use _native::team::Control;
+use num_complex::Complex64;
+
+fn main() {
+    let asked: Vec<u32> = std::env::args().filter_map(|text| text.parse().ok()).collect();
+    for qubits in if asked.is_empty() { vec![14, 18, 20, 24] } else { asked } {
+        report(qubits);
+    }
+}
+
+fn best(mut work: impl FnMut()) -> f64 {
+    let once = |work: &mut dyn FnMut()| {
+        let start = Instant::now();
+        work();
+        start.elapsed().as_secs_f64()
+    };
+    (0..9).map(|_| once(&mut work)).fold(f64::INFINITY, f64::min)
+}
+
+fn report(qubits: u32) {
+    let mut state = vec![Complex64::new(0.0, 0.0); 1 << qubits];
+    state[0].re = 1.0;
+    let turn = Complex64::from_polar(1.0, 1e-3);
+    let sweep = best(|| black_box(&mut state).iter_mut().for_each(|amplitude| *amplitude *= turn));
+    println!("{qubits} qubits: S1 = {:.3} ms, {:.3} ns an amplitude", 1e3 * sweep, 1e9 * sweep / state.len() as f64);
+    println!("{:<28}{:>10}{:>8}{:>12}{:>12}", "circuit", "rotations", "passes", "1 thread", "2 threads");
+    for (name, list) in circuits(qubits) {
+        let circuit = Rotations::from_list(qubits, list, 0.0).expect("strings within the qubits");
+        let mut passes = 0;
+        let times = [1, 2].map(|threads| {
+            best(|| passes = evolve(&mut state, &circuit, threads, &Control::default()).expect("no stop asked").passes)
+        });
+        println!(
+            "{name:<28}{:>10}{passes:>8}{:>9.2} S1{:>9.2} S1",
+            circuit.count(),
+            times[0] / sweep,
+            times[1] / sweep
+        );
+    }
+}
+
+fn circuits(qubits: u32) -> Vec<(&'static str, Vec<Rotation>)> {
+    let all = (1u128 << qubits) - 1;
+    let top = 1u128 << (qubits - 1);
+    let one = |x: u128, z: u128| vec![Rotation { string: PauliString { x, z }, angle: 0.1 }];
+    let ring: Vec<u128> = (0..qubits).map(|q| if q + 1 == qubits { top | 1 } else { 3 << q }).collect();
+    let list = |strings: Vec<(u128, u128)>| strings.into_iter().flat_map(|(x, z)| one(x, z)).collect::<Vec<_>>();
+    let heisenberg: Vec<(u128, u128)> =
+        [(1, 0), (1, 1), (0, 1)].iter().flat_map(|(x, z)| ring.iter().map(move |bond| (x * bond, z * bond))).collect();
+    let mut strang = heisenberg.clone();
+    strang.extend(heisenberg[..2 * ring.len()].iter().rev());
+    vec![
+        ("X on qubit 0", one(1, 0)),
+        ("X on qubit 2", one(4, 0)),
+        ("X on the top qubit", one(top, 0)),
+        ("Y on the top qubit", one(top, top)),
+        ("X on all", one(all, 0)),
+        ("X and Z mixed", one(0x5555_5555 & all, 0x3333_3333 & all)),
+        ("Z on the top qubit", one(0, top)),
+        ("ring of XX", list(ring.iter().map(|&bond| (bond, 0)).collect())),
+        ("ring of ZZ", list(ring.iter().map(|&bond| (0, bond)).collect())),
+        ("Heisenberg ring, Lie step", list(heisenberg)),
+        ("Heisenberg ring, Strang step", list(strang)),
+    ]
+}

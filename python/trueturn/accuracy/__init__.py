@@ -1,0 +1,5 @@
+"""Error science: proven bounds."""
+
+from trueturn.accuracy.bounds import Bound, bound
+
+__all__ = ["Bound", "bound"]

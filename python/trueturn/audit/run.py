@@ -1,0 +1,320 @@
+"""Carries an audit out: reference first, then every candidate against it."""
+
+from __future__ import annotations
+
+import math
+import time as clock
+from collections.abc import Callable, Iterable, Mapping, Sequence
+
+from trueturn import _memory, _threads
+from trueturn.accuracy.bounds import bound
+from trueturn.audit import words
+from trueturn.audit.candidate import Candidate
+from trueturn.audit.measure import Bench, Measured
+from trueturn.audit.result import Audit, Row, Trial
+from trueturn.audit.search import least_steps
+from trueturn.errors import ArgumentError, AuditError, FormulaError, ToleranceError
+from trueturn.operator import Operator
+from trueturn.partition import Partition
+from trueturn.reference import Reference, reference
+from trueturn.state import State, require_same_qubits
+
+__all__ = ["audit"]
+
+Progress = Callable[[str, float, float], object]
+QUANTITIES = ("observables", "state")
+READOUTS = ("along", "separate")
+
+
+def audit(
+    operator: Operator,
+    state: State,
+    times: float | Iterable[float],
+    candidates: Sequence[Candidate],
+    tolerance: float,
+    quantity: str = "observables",
+    observables: Mapping[str, Operator] | None = None,
+    readout: str = "along",
+    *,
+    relative_to: str | None = None,
+    reference_tolerance: float | None = None,
+    reference_method: str = "chebyshev",
+    most_steps: int = 1_000_000,
+    threads: int | None = None,
+    progress: Progress | None = None,
+    title: str = "",
+    start: str = "",
+    energy_unit: str = "",
+) -> Audit:
+    """Judge candidate circuits against a certified reference.
+
+    Parameters
+    ----------
+    operator : Operator
+        The Hamiltonian; ħ = 1.
+    state : State
+        Start; not written.
+    times : float or iterable of float
+        Positive, in inverse units of the coefficients.
+    candidates : sequence of Candidate
+    tolerance : float
+        On the largest error over times and observables; absolute.
+    quantity : "observables" or "state"
+        Largest |<O>_S - <O>| over `observables`, or ‖ψ_S - ψ‖ with the global phase kept.
+    observables : mapping of str to Operator
+        Needed for ``quantity="observables"``.
+    readout : "along" or "separate"
+        One circuit of `steps` equal steps to the last time, read on the way; or a circuit of `steps` steps for each time.
+    relative_to : None or "norm"
+        ``"norm"`` divides each observable's error by a proven bound on its norm (identity removed).
+    reference_tolerance : float, optional
+        Error bound asked of the reference state. Default 1e-10, or a hundredth of `tolerance` where that is less; where
+        double precision cannot certify so much but can certify a hundredth of `tolerance`, what it can.
+    reference_method : "chebyshev", "krylov" or "dense"
+    most_steps : int
+        Where a search for the least step count gives up.
+    threads : int, optional
+    progress : callable, optional
+        Called with (stage, done, total).
+    title, start, energy_unit : str
+        Labels for the report.
+
+    Returns
+    -------
+    Audit
+
+    Raises
+    ------
+    ArgumentError, AuditError
+        Something is out of range; the message says what and what to do.
+    ToleranceError
+        The tolerance is not positive, or below what double precision can certify.
+    MemoryRefusedError
+        The vectors needed do not fit: start, reference and one work vector at a time, and for
+        ``quantity="state"`` one reference state for each time.
+
+    Notes
+    -----
+    Every error is an interval: measured ∓ (reference bound + rounding of the candidate + rounding of the expectation).
+    Verdicts use the whole interval.
+
+    Examples
+    --------
+    >>> import trueturn as tt
+    >>> chain = tt.model.ising(tt.lattice.chain(4), zz=-1.0, x=-0.7)
+    >>> start = tt.State.product("0000")
+    >>> found = tt.audit(chain, start, 1.0, [tt.Candidate("strang")], 1e-3, observables={"m": tt.Operator("Z_1", qubits=4)})
+    >>> found.verdict
+    'meets'
+    """
+    began = clock.perf_counter()
+    watched = dict(observables or {})
+    asked = _times(times)
+    _check(operator, state, candidates, tolerance, quantity, watched, readout, relative_to, most_steps)
+    workers = _threads.resolve(threads)
+    partitions = [candidate.partition(operator) for candidate in candidates]
+    _memory.require(
+        (2 + (len(asked) if quantity == "state" else 1)) * (16 << state.qubits),
+        "audit",
+        lambda n: (2 + (len(asked) if quantity == "state" else 1)) * (16 << n),
+    )
+    truth = _reference(
+        operator, state, asked, tolerance, reference_tolerance, watched, reference_method, quantity, workers, progress
+    )
+    seconds = {"reference": clock.perf_counter() - began}
+    bench = Bench(state, asked, truth, tolerance, quantity, watched, relative_to, readout, workers)
+    rows = []
+    for number, (candidate, partition) in enumerate(zip(candidates, partitions, strict=True)):
+        started = clock.perf_counter()
+
+        def tell(steps: int, candidate: Candidate = candidate, number: int = number) -> None:
+            if progress is not None:
+                progress(f"{candidate.label}: {steps} steps", number, len(candidates))
+
+        rows.append(_row(bench, candidate, partition, most_steps, tell))
+        seconds[f"candidate {number + 1}"] = clock.perf_counter() - started
+    if progress is not None:
+        progress("done", len(candidates), len(candidates))
+    recommended, reason = words.recommendation(rows, tolerance)
+    verdicts = {row.verdict for row in rows}
+    return Audit(
+        rows=tuple(rows),
+        recommended=recommended,
+        reason=reason,
+        verdict=next(verdict for verdict in ("meets", "undecided", "misses") if verdict in verdicts),
+        reference=truth,
+        quantity=quantity,
+        tolerance=tolerance,
+        relative_to=relative_to,
+        times=tuple(asked),
+        readout=readout,
+        observables=watched,
+        operator=operator,
+        start=start or f"a given state vector of {state.qubits} qubits",
+        title=title,
+        energy_unit=energy_unit,
+        assumptions=words.assumptions(state, readout, relative_to),
+        proven=words.proven(truth),
+        measured=words.measured(quantity),
+        cautions=words.CAUTIONS,
+        seconds=seconds,
+    )
+
+
+def _row(
+    bench: Bench, candidate: Candidate, partition: Partition, most_steps: int, tell: Callable[[int], None]
+) -> Row:
+    runs: dict[int, Measured] = {}
+
+    def run(steps: int) -> Trial:
+        tell(steps)
+        runs[steps] = bench.measure(candidate, partition, steps)
+        return runs[steps].trial
+
+    note = ""
+    accidental: tuple[int, ...] = ()
+    if isinstance(candidate.steps, int):
+        run(candidate.steps)
+        steps = candidate.steps
+    else:
+        unit = bench.step_unit()
+        found = least_steps(run, bench.tolerance, candidate.formula.order, unit=unit, most_steps=most_steps)
+        steps, accidental = found.steps, found.accidental
+        note = words.search_note(found, bench.tolerance, most_steps)
+    chosen = runs[steps]
+    limit, source = _bound(bench, candidate, partition, steps)
+    return Row(
+        candidate=candidate,
+        label=candidate.label,
+        steps=steps,
+        error=chosen.trial.error,
+        bound=limit,
+        bound_source=source,
+        rotations=chosen.circuit.count,
+        two_qubit_gates=chosen.trial.two_qubit_gates,
+        depth=chosen.circuit.depth(),
+        verdict=chosen.trial.verdict,
+        rounding=chosen.rounding,
+        points=chosen.points,
+        trials=tuple(runs[count].trial for count in sorted(runs)),
+        accidental=accidental,
+        note=note,
+    )
+
+
+def _bound(bench: Bench, candidate: Candidate, partition: Partition, steps: int) -> tuple[float | None, str]:
+    """Return a proven bound on the row's error and its source, or None and the reason."""
+    try:
+        found = bound(candidate.formula, partition, bench.times[-1], steps)
+    except FormulaError as refusal:
+        return None, str(refusal)
+    source = f"{found.theorem}, {found.source}"
+    if bench.quantity == "state":
+        return found.value, source
+    # |<O>_S - <O>| ≤ 2 ‖O‖ ‖S - U‖ for unitary S and U, the identity removed.
+    scales = [2.0 if bench.relative_to == "norm" else 2.0 * norm for norm in bench.norms.values()]
+    return max(scales) * found.value, f"{source}, times twice the observable's norm"
+
+
+def _reference(
+    operator: Operator,
+    state: State,
+    times: Sequence[float],
+    tolerance: float,
+    asked: float | None,
+    observables: Mapping[str, Operator],
+    method: str,
+    quantity: str,
+    threads: int,
+    progress: Progress | None,
+) -> Reference:
+    keep = "all" if quantity == "state" else "last"
+
+    def certified(limit: float) -> Reference:
+        return reference(operator, state, times, limit, observables, method, keep, progress, threads=threads)
+
+    if asked is not None:
+        return certified(asked)
+    try:
+        return certified(min(1e-10, tolerance / 100.0))
+    except ToleranceError as refusal:
+        if refusal.achievable <= tolerance / 100.0:
+            return certified(refusal.achievable)
+        raise ToleranceError(
+            f"tolerance: cannot be judged in double precision ({tolerance:g}): the reference can be certified to "
+            f"{refusal.achievable:g} here, and a hundredth of the tolerance is needed; ask for "
+            f"{100.0 * refusal.achievable:.3g} or more, or a shorter time",
+            tolerance=tolerance,
+            achievable=100.0 * refusal.achievable,
+        ) from None
+
+
+def _times(times: float | Iterable[float]) -> list[float]:
+    given = [times] if isinstance(times, (int, float)) else list(times)
+    try:
+        found = sorted({float(time) for time in given})
+    except (TypeError, ValueError):
+        raise ArgumentError(f"times: not numbers ({times!r}); give positive numbers", argument="times", value=times) from None
+    if not found or not all(0.0 < time < math.inf for time in found):
+        raise ArgumentError(
+            f"times: not positive and finite ({given!r}); give at least one time above 0", argument="times", value=times
+        )
+    return found
+
+
+def _check(
+    operator: Operator,
+    state: State,
+    candidates: Sequence[Candidate],
+    tolerance: float,
+    quantity: str,
+    observables: Mapping[str, Operator],
+    readout: str,
+    relative_to: str | None,
+    most_steps: int,
+) -> None:
+    if isinstance(tolerance, bool) or not isinstance(tolerance, (int, float)) or not 0.0 < tolerance < math.inf:
+        raise ToleranceError(
+            f"tolerance: not a positive number ({tolerance!r}); 1e-8 and above can usually be judged",
+            tolerance=tolerance,
+            achievable=1e-8,
+        )
+    if quantity not in QUANTITIES:
+        raise _choice("quantity", quantity, QUANTITIES)
+    if readout not in READOUTS:
+        raise _choice("readout", readout, READOUTS)
+    if relative_to not in (None, "norm"):
+        raise _choice("relative_to", relative_to, (None, "norm"))
+    if relative_to == "norm" and quantity == "state":
+        raise AuditError(
+            "relative_to: a state error has no norm to divide by (quantity='state'); leave it out",
+            reason="relative_to with a state error",
+            limit=None,
+        )
+    if quantity == "observables" and not observables:
+        raise AuditError(
+            "observables: empty (quantity='observables'); name at least one, or ask for quantity='state'",
+            reason="no observables",
+            limit=None,
+        )
+    if isinstance(most_steps, bool) or not isinstance(most_steps, int) or most_steps < 1:
+        raise ArgumentError(
+            f"most_steps: not a positive whole number ({most_steps!r}); give 1 or more",
+            argument="most_steps",
+            value=most_steps,
+        )
+    if not candidates or not all(isinstance(candidate, Candidate) for candidate in candidates):
+        raise AuditError(
+            f"candidates: no list of Candidate ({candidates!r}); give at least one",
+            reason="no candidates",
+            limit=None,
+        )
+    require_same_qubits(state, operator, "operator")
+    for name, observable in observables.items():
+        require_same_qubits(state, observable, f"observables[{name!r}]")
+
+
+def _choice(argument: str, value: object, choices: Sequence[object]) -> ArgumentError:
+    return ArgumentError(
+        f"{argument}: unknown ({value!r}); give one of {', '.join(map(repr, choices))}", argument=argument, value=value
+    )

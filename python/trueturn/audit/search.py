@@ -1,0 +1,155 @@
+"""Finds the least number of steps that meets a tolerance, with few and mostly small runs."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable
+from dataclasses import dataclass
+
+from trueturn.audit.result import Trial
+
+__all__ = ["Search", "least_steps"]
+
+# Past the answer r the search looks at r + 1, about √2 r and 2 r, in units of the readout grid.
+_PROBES = (math.sqrt(2.0), 2.0)
+_FASTEST_GROWTH = 8.0
+
+
+@dataclass(frozen=True)
+class Search:
+    """What a search found.
+
+    `steps` is the answer or, where none was found, the largest count that was tried (`found` is then False).
+    `accidental` lists smaller counts that met the tolerance although a larger tested one did not.
+    """
+
+    steps: int
+    found: bool
+    trials: tuple[Trial, ...]
+    accidental: tuple[int, ...]
+
+
+def least_steps(
+    run: Callable[[int], Trial], tolerance: float, order: int, *, unit: int = 1, most_steps: int = 1_000_000
+) -> Search:
+    """Find the smallest r such that r and every tested r' in [r, 2r] meet the tolerance.
+
+    The error is taken to fall as steps^-order, which tells where to look next; the answer never rests on it: r meets,
+    r - unit was run and does not, and r + unit, about √2 r and 2 r were run and meet.
+
+    Parameters
+    ----------
+    run : callable
+        Gives the trial at a step count; called at most once for each.
+    tolerance : float
+    order : int
+        Order of the formula.
+    unit : int
+        Step counts are multiples of it.
+    most_steps : int
+        Largest step count that is tried.
+
+    Notes
+    -----
+    Runs cost in proportion to their steps. Counts grow towards the predicted answer by at most 8 times a run; near the
+    answer the two nearest trials are interpolated. A typical search costs 7 to 9 times one run at the answer, most of
+    it for the look at [r, 2r] that the definition asks for.
+    """
+    return _Searcher(run, tolerance, order, unit, max(1, most_steps // unit)).search()
+
+
+class _Searcher:
+    def __init__(
+        self, run: Callable[[int], Trial], tolerance: float, order: int, unit: int, most: int
+    ) -> None:
+        self.run, self.tolerance, self.order, self.unit, self.most = run, tolerance, order, unit, most
+        self.trials: dict[int, Trial] = {}
+
+    def meets(self, count: int) -> bool:
+        """Run `count` units of steps, unless done before."""
+        if count not in self.trials:
+            self.trials[count] = self.run(count * self.unit)
+        return self.trials[count].verdict == "meets"
+
+    def search(self) -> Search:
+        failing = 0
+        while True:
+            passing = self._grow(failing)
+            if passing is None:
+                return self._result(max(self.trials), found=False)
+            answer = self._narrow(failing, passing)
+            failing = self._first_failure_after(answer)
+            if failing == 0:
+                return self._result(answer, found=True)
+
+    def _result(self, count: int, *, found: bool) -> Search:
+        passed = sorted(c for c, trial in self.trials.items() if trial.verdict == "meets")
+        accidental = tuple(c * self.unit for c in passed if not found or c < count)
+        trials = tuple(self.trials[c] for c in sorted(self.trials))
+        return Search(count * self.unit, found, trials, accidental)
+
+    def _grow(self, failing: int) -> int | None:
+        """Return a count above `failing` that meets the tolerance, and leave all failures on the way as trials."""
+        count = 1 if failing == 0 else self._predicted(failing)
+        while True:
+            count = min(count, self.most)
+            if count <= failing:
+                return None
+            if self.meets(count):
+                return count
+            if count == self.most or self._hopeless(count):
+                return None
+            count = self._predicted(count)
+
+    def _hopeless(self, count: int) -> bool:
+        """Whether rounding and the reference alone exceed the tolerance; more steps only add rounding."""
+        low, high = self.trials[count].error
+        return high - low > 2.0 * self.tolerance and low < self.tolerance
+
+    def _predicted(self, count: int) -> int:
+        error = max(self.trials[count].error[1], self.tolerance)
+        factor = min(_FASTEST_GROWTH, (error / self.tolerance) ** (1.0 / self.order))
+        return max(count + 1, math.ceil(count * factor))
+
+    def _narrow(self, failing: int, passing: int) -> int:
+        """Return the end of the interval (failing, passing] where a failing count is followed by a passing one."""
+        failing = max((c for c in self.trials if failing <= c < passing and not self.meets(c)), default=failing)
+        while passing - failing > 1:
+            guess = self._interpolated(failing, passing)
+            stride = 1
+            upward = not self.meets(guess)
+            # Gallop away from the guess: the interpolation is usually right to one or two steps.
+            while True:
+                if upward:
+                    failing = max(failing, guess)
+                    guess += stride
+                else:
+                    passing = min(passing, guess)
+                    guess -= stride
+                if not failing < guess < passing or self.meets(guess) == upward:
+                    break
+                stride *= 2
+            if failing < guess < passing:
+                failing, passing = (failing, guess) if self.meets(guess) else (guess, passing)
+        return passing
+
+    def _interpolated(self, failing: int, passing: int) -> int:
+        """Return the count strictly between at which a power law through both trials reaches the tolerance."""
+        middle = (failing + passing) // 2
+        if failing == 0:
+            return middle
+        above = self.trials[failing].error[1] / self.tolerance
+        below = self.trials[passing].error[1] / self.tolerance
+        if not (above > 1.0 and 0.0 < below <= 1.0):
+            return middle
+        share = math.log(above) / (math.log(above) - math.log(below))
+        guess = round(failing * (passing / failing) ** share)
+        return min(max(guess, failing + 1), passing - 1)
+
+    def _first_failure_after(self, answer: int) -> int:
+        """Run the probes in [answer, 2 answer]; return the largest count there that fails, or 0."""
+        probes = {answer + 1, *(round(answer * probe) for probe in _PROBES)}
+        for count in sorted(probes):
+            if count <= self.most and not self.meets(count):
+                break
+        return max((c for c in self.trials if answer < c <= 2 * answer and not self.meets(c)), default=0)

@@ -1,0 +1,108 @@
+"""The sentences of an audit: recommendation, notes, assumptions, cautions."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+from trueturn.audit.result import Row
+from trueturn.audit.search import Search
+from trueturn.reference import Reference
+from trueturn.state import State
+
+__all__ = ["CAUTIONS", "assumptions", "measured", "proven", "recommendation", "search_note"]
+
+CAUTIONS = (
+    "The verdict is about the ideal circuit. It does not validate hardware: gate errors, drifts, crosstalk and readout "
+    "errors need a validation of their own.",
+    "It holds for this start state, these times and these observables. Another start or another observable can have a "
+    "larger error at the same step count.",
+    "Errors need not fall evenly with the step count: step counts between and beyond the tested ones were not run.",
+    "Gate counts take 2(w-1) two-qubit gates for a rotation on w qubits with all qubits connected, before any "
+    "compilation or routing.",
+)
+
+
+def assumptions(state: State, readout: str, relative_to: str | None) -> tuple[str, ...]:
+    """Return what was taken as given."""
+    single = state.dtype.itemsize == 8
+    how = (
+        "One circuit of equal steps to the last time, read on the way at each time."
+        if readout == "along"
+        else "A circuit of its own for each time, each with the stated number of steps."
+    )
+    scale = "Errors are divided by a proven bound on each observable's norm." if relative_to else "Errors are absolute."
+    return (
+        "The Hamiltonian and the start state are exactly as given; ħ = 1.",
+        how,
+        scale,
+        f"Candidates ran in {'single' if single else 'double'} precision on a noiseless state vector.",
+    )
+
+
+def proven(reference: Reference) -> tuple[str, ...]:
+    """Return what is proven."""
+    certificate = reference.certificate
+    found = [
+        f"Reference ({certificate.method}): within {certificate.largest:.2g} of the exact state at every time, "
+        f"{'every part proven' if certificate.proven else 'partly estimated (see the notes)'}.",
+        "Rounding of each candidate's run: bounded rotation by rotation and added to both ends of the error interval.",
+        "The column of bounds, where a theorem covers the formula: holds for every start state.",
+    ]
+    return (*found, *certificate.notes)
+
+
+def measured(quantity: str) -> tuple[str, ...]:
+    """Return what was only measured."""
+    what = "state distance" if quantity == "state" else "observables"
+    return (
+        f"The error intervals: the {what} of candidate and reference were both computed and compared; the interval holds "
+        "the true error of this circuit on this start state.",
+        "The least step counts: the smallest that met the tolerance together with every tested count up to its double.",
+    )
+
+
+def recommendation(rows: Sequence[Row], tolerance: float) -> tuple[Row | None, str]:
+    """Return the row to use and why, in one sentence."""
+    fitting = sorted(
+        (row for row in rows if row.verdict == "meets"), key=lambda row: (row.two_qubit_gates, row.rotations)
+    )
+    if not fitting:
+        closest = min(rows, key=lambda row: row.error[1])
+        return None, (
+            f"No candidate is shown to meet {tolerance:g}; the closest is {closest.label} with {_steps(closest.steps)}, "
+            f"whose error is at most {closest.error[1]:.2g}."
+        )
+    best = fitting[0]
+    reason = f"{best.label} with {_steps(best.steps)} meets {tolerance:g} with {_gates(best)}"
+    if len(fitting) == 1:
+        others = "it is the only candidate" if len(rows) == 1 else "no other candidate meets it"
+        return best, f"{reason}; {others}."
+    return best, f"{reason}, the fewest here; next is {fitting[1].label} with {_gates(fitting[1])}."
+
+
+def _gates(row: Row) -> str:
+    if row.two_qubit_gates:
+        return f"{row.two_qubit_gates} two-qubit gate{'' if row.two_qubit_gates == 1 else 's'}"
+    return f"no two-qubit gates and {row.rotations} rotation{'' if row.rotations == 1 else 's'}"
+
+
+def _steps(count: int) -> str:
+    return f"{count} step{'' if count == 1 else 's'}"
+
+
+def search_note(search: Search, tolerance: float, most_steps: int) -> str:
+    """Return what the reader must know about a search, or nothing."""
+    parts = []
+    if not search.found:
+        last = search.trials[-1]
+        if last.error[1] - last.error[0] > 2.0 * tolerance:
+            parts.append(
+                f"rounding alone leaves the error undecided at {last.steps} steps; more steps only add to it, "
+                "use a larger tolerance or double precision"
+            )
+        else:
+            parts.append(f"no step count up to {min(most_steps, last.steps)} meets the tolerance")
+    if search.accidental:
+        counts = ", ".join(map(str, search.accidental))
+        parts.append(f"met by accident at {counts}: a larger tested step count misses")
+    return "; ".join(parts)

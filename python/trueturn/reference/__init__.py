@@ -1,0 +1,276 @@
+"""Certified reference evolution: exp(-iHt) applied to a state with a stated error bound."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable, Iterable, Mapping, Sequence
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+import numpy.typing as npt
+
+from trueturn import _threads
+from trueturn.errors import ArgumentError, OperatorError, ToleranceError
+from trueturn.operator import Operator
+from trueturn.reference import chebyshev, dense, krylov
+from trueturn.reference.certificate import (
+    Certificate,
+    expectation_rounding,
+    expectation_shift,
+    norm_bound,
+)
+from trueturn.state import State, require_same_qubits
+
+__all__ = ["Certificate", "Reference", "reference"]
+
+Progress = Callable[[str, float, float], object]
+METHODS = ("chebyshev", "krylov", "dense")
+DENSE_LIMIT = 12
+
+
+@dataclass(frozen=True)
+class Reference:
+    """An evolution with a stated error bound.
+
+    Attributes
+    ----------
+    times : tuple of float
+        As asked, in the order asked.
+    states : list of State
+        With ``keep="all"`` one a time, in the order of `times`; with ``keep="last"`` only the state at the time
+        furthest from 0.
+    expectations : mapping of str to ndarray, shape (len(times),), float64
+    expectation_bounds : mapping of str to ndarray, shape (len(times),), float64
+        How far each expectation can be from the exact one: ‖O‖ (2δ + δ²) plus rounding, δ the state's error bound.
+    certificate : Certificate
+    """
+
+    times: tuple[float, ...]
+    states: list[State]
+    expectations: Mapping[str, npt.NDArray[np.float64]]
+    expectation_bounds: Mapping[str, npt.NDArray[np.float64]]
+    certificate: Certificate
+
+
+def reference(
+    operator: Operator,
+    state: State,
+    times: float | Iterable[float],
+    tolerance: float = 1e-10,
+    observables: Mapping[str, Operator] | None = None,
+    method: str = "chebyshev",
+    keep: str = "last",
+    progress: Progress | None = None,
+    *,
+    threads: int | None = None,
+) -> Reference:
+    """Evolve a state by exp(-i operator t) to each time, with a certificate.
+
+    Parameters
+    ----------
+    operator : Operator
+        The Hamiltonian, on as many qubits as the state; ħ = 1.
+    state : State
+        Start; not written. Its norm must be 1 within 1e-6 (1e-3 for complex64).
+    times : float or iterable of float
+        In inverse units of the coefficients; finite, of one sign, any order.
+    tolerance : float
+        Largest 2-norm error bound at any time.
+    observables : mapping of str to Operator
+        Recorded at each time.
+    method : "chebyshev", "krylov" or "dense"
+        Chebyshev is proven in every part. Krylov and dense (12 qubits at most) serve to cross-check it; the rounding
+        part of their bound is estimated.
+    keep : "last" or "all"
+        Which states to keep.
+    progress : callable, optional
+        Called with ("reference", done, total); an exception of its own stops the run and passes through.
+
+    Returns
+    -------
+    Reference
+
+    Raises
+    ------
+    ArgumentError
+        Times, method, keep or the norm of the state are out of range.
+    OperatorError
+        The operator has no terms.
+    StateShapeError
+        Operator or observables act on other qubits than the state.
+    ToleranceError
+        The tolerance is not positive, or below what double precision can certify.
+    MemoryRefusedError
+        Three state vectors beside the start (and one more for each further state that is kept) do not fit.
+
+    Notes
+    -----
+    Chebyshev expansion: H. Tal-Ezer, R. Kosloff, J. Chem. Phys. 81, 3967 (1984); the bounds are derived in the modules
+    `bessel` and `schedule`. Applications of H: about λ t plus 20 to 30, λ half the width of the spectral interval.
+
+    Examples
+    --------
+    >>> import trueturn as tt
+    >>> spin = tt.Operator("0.6 X_0 + 0.8 Z_0")
+    >>> found = tt.reference(spin, tt.State.product("0"), [1.0], observables={"z": tt.Operator("Z_0")})
+    >>> print(f"{found.expectations['z'][0]:.10f}")
+    0.4901871388
+    """
+    watched = dict(observables or {})
+    asked = _times(times)
+    _check(operator, state, tolerance, watched, method, keep)
+    workers = _threads.resolve(threads)
+    if asked and min(asked) < 0.0:
+        mirrored, sign = -1.0 * operator, -1.0
+    else:
+        mirrored, sign = operator, 1.0
+    ascending = sorted({sign * time for time in asked if time != 0.0})
+
+    def tick(done: int, total: int) -> None:
+        if progress is not None:
+            progress("reference", done, total)
+
+    hook = None if progress is None else tick
+    certificate, steps = _run(mirrored, state, ascending, tolerance, method, keep, workers, hook)
+    values: dict[str, dict[float, float]] = {name: {} for name in watched}
+    kept: dict[float, State] = {}
+    last = ascending[-1] if ascending else 0.0
+    if 0.0 in asked:
+        _record(values, watched, 0.0, state, workers)
+        if keep == "all" or not ascending:
+            kept[0.0] = state.copy()
+    for time, vector in steps:
+        now = State.from_array(vector)
+        _record(values, watched, sign * time, now, workers)
+        if keep == "all" and time != last:
+            kept[sign * time] = State.from_array(vector.copy())
+        elif time == last:
+            kept[sign * time] = now
+    certificate = _resigned(certificate, sign, asked)
+    order = asked if keep == "all" else [sign * last]
+    rounding = {name: expectation_rounding(observable, state.qubits) for name, observable in watched.items()}
+    norms = {name: norm_bound(observable) for name, observable in watched.items()}
+    return Reference(
+        times=tuple(asked),
+        states=[kept[time] for time in order if time in kept],
+        expectations={name: np.array([values[name][time] for time in asked]) for name in watched},
+        expectation_bounds={
+            name: np.array(
+                [expectation_shift(norms[name], certificate.error_bound[time]) + rounding[name] for time in asked]
+            )
+            for name in watched
+        },
+        certificate=certificate,
+    )
+
+
+def _run(
+    operator: Operator,
+    state: State,
+    times: Sequence[float],
+    tolerance: float,
+    method: str,
+    keep: str,
+    threads: int,
+    progress: Callable[[int, int], object] | None,
+) -> tuple[Certificate, Any]:
+    start = state.amplitudes
+    if not times:
+        low, high = operator.spectral_interval()
+        return Certificate(method, {}, {}, {}, (low, high), "not used", 0, True), iter(())
+    if method == "krylov":
+        return krylov.evolve(operator, start, times, tolerance, threads=threads, progress=progress)
+    if method == "dense":
+        return dense.evolve(operator, start, times)
+    return chebyshev.evolve(
+        operator, start, times, tolerance, keep_all=keep == "all", threads=threads, progress=progress
+    )
+
+
+def _record(
+    values: dict[str, dict[float, float]],
+    watched: Mapping[str, Operator],
+    time: float,
+    state: State,
+    threads: int,
+) -> None:
+    for name, observable in watched.items():
+        values[name][time] = state.expectation(observable, threads=threads)
+
+
+def _resigned(certificate: Certificate, sign: float, asked: Sequence[float]) -> Certificate:
+    """Give the certificate the times as asked; time 0 is exact."""
+
+    def by_time(bounds: Mapping[float, float]) -> dict[float, float]:
+        return {time: bounds[sign * time] if time else 0.0 for time in asked}
+
+    low, high = certificate.spectral_interval
+    return Certificate(
+        method=certificate.method,
+        error_bound=by_time(certificate.error_bound),
+        truncation=by_time(certificate.truncation),
+        rounding=by_time(certificate.rounding),
+        spectral_interval=(low, high) if sign > 0 else (-high, -low),
+        spectral_route=certificate.spectral_route,
+        applications=certificate.applications,
+        proven=certificate.proven,
+        notes=certificate.notes,
+    )
+
+
+def _times(times: float | Iterable[float]) -> list[float]:
+    given = [times] if isinstance(times, (int, float)) else list(times)
+    try:
+        found = [float(time) for time in given]
+    except (TypeError, ValueError):
+        raise ArgumentError(f"times: not numbers ({times!r}); give finite numbers", argument="times", value=times) from None
+    if not found:
+        raise ArgumentError("times: empty; give at least one time", argument="times", value=times)
+    for time in found:
+        if not math.isfinite(time):
+            raise ArgumentError(f"times: not finite ({time}); give finite times", argument="times", value=time)
+    if min(found) < 0.0 < max(found):
+        raise ArgumentError(
+            f"times: of both signs ({min(found):g} and {max(found):g}); ask for one sign at a time",
+            argument="times",
+            value=times,
+        )
+    return found
+
+
+def _check(
+    operator: Operator,
+    state: State,
+    tolerance: float,
+    observables: Mapping[str, Operator],
+    method: str,
+    keep: str,
+) -> None:
+    if len(operator) == 0:
+        raise OperatorError("operator: has no terms (0.0); give a Hamiltonian with at least one", argument="operator")
+    require_same_qubits(state, operator, "operator")
+    for name, observable in observables.items():
+        require_same_qubits(state, observable, f"observables[{name!r}]")
+    if method not in METHODS:
+        raise ArgumentError(f"method: unknown ({method!r}); give one of {', '.join(METHODS)}", argument="method", value=method)
+    if method == "dense" and state.qubits > DENSE_LIMIT:
+        raise ArgumentError(
+            f"method: dense is for at most {DENSE_LIMIT} qubits ({state.qubits} given); use chebyshev",
+            argument="method",
+            value=method,
+        )
+    if keep not in ("last", "all"):
+        raise ArgumentError(f'keep: unknown ({keep!r}); give "last" or "all"', argument="keep", value=keep)
+    if isinstance(tolerance, bool) or not isinstance(tolerance, (int, float)) or not 0.0 < tolerance < math.inf:
+        raise ToleranceError(
+            f"tolerance: not a positive number ({tolerance!r}); 1e-10 can usually be certified",
+            tolerance=tolerance,
+            achievable=1e-10,
+        )
+    norm = state.norm()
+    slack = 1e-3 if state.dtype == np.dtype(np.complex64) else 1e-6
+    if abs(norm - 1.0) > slack:
+        raise ArgumentError(
+            f"state: not normalised (norm {norm:.9g}); divide its amplitudes by their norm", argument="state", value=norm
+        )

@@ -1,0 +1,149 @@
+"""Cuts an evolution into Chebyshev expansions so that a tolerance is met with the fewest applications of H.
+
+One expansion of length s has x = λ s and costs a little more than x applications. Its rounding error grows faster than x,
+so long times are cut into segments, each with its own few terms of overhead. The growth is known: an error e_j made in
+term j of the recurrence T_{k+1} = 2 H' T_k - T_{k-1} enters term k as U_{k-j}(H') e_j, and the Chebyshev polynomials of the
+second kind satisfy |U_m(y)| ≤ m + 1 on [-1, 1] but also |U_m(y)| ≤ 1/√(1-y²). So a spectral interval that is widened by a
+few percent turns quadratic growth into linear growth, for a few percent more terms; the widening is chosen here too.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterator, Sequence
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from trueturn import _native
+from trueturn.errors import ToleranceError
+from trueturn.operator import Operator
+from trueturn.reference.bessel import bessel_values, least_degree, truncation
+from trueturn.reference.certificate import UNIT
+
+__all__ = ["Expansion", "Schedule", "schedule"]
+
+_WIDENINGS = (0.0, 0.01, 0.04, 0.12)
+# Start states may be off unit length by as much (complex64 ones; the bounds are linear in the norm).
+NORM_SLACK = 1.001
+
+
+@dataclass(frozen=True)
+class Expansion:
+    """One expansion from a state at `start` to states at `targets` (ascending; the last is where the next one starts)."""
+
+    start: float
+    targets: tuple[float, ...]
+    degree: int
+    truncation: tuple[float, ...]
+    rounding: tuple[float, ...]
+
+    def coefficients(self, half_width: float) -> list[list[float]]:
+        """Return (2 - δ_k0) J_k(λ (target - start)) for k = 0 … degree, one list a target."""
+        lists = []
+        for target in self.targets:
+            values = bessel_values(half_width * (target - self.start))
+            cut = np.pad(values[: self.degree + 1], (0, max(0, self.degree + 1 - len(values))))
+            lists.append([float(cut[0]), *(2.0 * cut[1:]).tolist()])
+        return lists
+
+
+@dataclass(frozen=True)
+class Schedule:
+    """Expansions in order, on the interval of the given centre and half-width."""
+
+    expansions: tuple[Expansion, ...]
+    centre: float
+    half_width: float
+
+    @property
+    def applications(self) -> int:
+        """Applications of H in all."""
+        return sum(expansion.degree for expansion in self.expansions)
+
+    def bounds(self) -> dict[float, tuple[float, float]]:
+        """Return (truncation, rounding) bounds by target time; errors of earlier expansions are carried on."""
+        found = {}
+        cut = rounded = 0.0
+        for expansion in self.expansions:
+            growth = 1.0 + cut + rounded
+            for target, own_cut, own_rounded in zip(
+                expansion.targets, expansion.truncation, expansion.rounding, strict=True
+            ):
+                found[target] = (cut + growth * own_cut, rounded + growth * own_rounded)
+            cut, rounded = found[expansion.targets[-1]]
+        return found
+
+
+def schedule(
+    operator: Operator,
+    interval: tuple[float, float],
+    times: Sequence[float],
+    tolerance: float,
+    group: int,
+) -> Schedule:
+    """Plan expansions to all times (ascending, positive) within a tolerance, with at most `group` targets each.
+
+    Raises
+    ------
+    ToleranceError
+        No plan meets the tolerance in double precision; `achievable` is the best bound that was found.
+    """
+    drafts = sorted(_drafts(operator, interval, times, tolerance, group), key=lambda draft: draft.total)
+    fitting = sorted((draft for draft in drafts if draft.total <= tolerance), key=lambda draft: draft.applications)
+    # A draft rounds lengths; the exact plan may miss the tolerance by a hair, and then the next draft is due.
+    for draft in fitting:
+        exact = draft.schedule(exact=True)
+        if _total(exact) <= tolerance:
+            return exact
+    achievable = _rounded_up(_total(drafts[0].schedule(exact=True)))
+    raise ToleranceError(
+        f"tolerance: below what double precision can certify for this evolution ({tolerance:g}); "
+        f"ask for {achievable:g} or more, or a shorter time",
+        tolerance=tolerance,
+        achievable=achievable,
+    )
+
+
+def _total(plan: Schedule) -> float:
+    return max((cut + rounded for cut, rounded in plan.bounds().values()), default=0.0)
+
+
+def _rounded_up(value: float) -> float:
+    """Round up to two significant digits, so that the number in the message is itself accepted."""
+    step = 10.0 ** (math.floor(math.log10(value)) - 1)
+    return math.ceil(1.02 * value / step) * step
+
+
+@dataclass(frozen=True)
+class _Draft:
+    """One way to cut the evolution, with its cost and bound to three digits."""
+
+    cuts: tuple[tuple[float, tuple[float, ...]], ...]
+    centre: float
+    half: float
+    allowed: float
+    local: float
+    growth: float
+    applications: int = 0
+    total: float = math.inf
+
+    def schedule(self, exact: bool) -> Schedule:
+        expansions = tuple(self._expansion(start, targets, exact) for start, targets in self.cuts)
+        return Schedule(expansions, self.centre, self.half)
+
+    def evaluated(self) -> _Draft:
+        plan = self.schedule(exact=False)
+        return replace(self, applications=plan.applications, total=_total(plan))
+
+    def _rounding(x: float, degree: int, turn: float, local: float, growth: float) -> float:
+    """Bound what arithmetic adds to one sum: the recurrence, the coefficients, the additions, the final phase."""
+    values = np.abs(bessel_values(x)[: degree + 1])
+    values[1:] *= 2.0
+    # Σ_{m < k} min(m + 1, growth) for k = 0 … degree.
+    steps = np.concatenate(([0.0], np.cumsum(np.minimum(np.arange(1, len(values)), growth))))
+    recurrence = local * float(values @ steps)
+    before = np.cumsum(values)
+    after = before[-1] - before
+    partial = float(np.minimum(before, 1.0 + after).sum())
+    return 1.01 * (recurrence + UNIT * (2.0 * float(before[-1]) + partial + 5.0 + 3.0 * abs(turn)))
