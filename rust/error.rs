@@ -38,6 +38,15 @@ pub enum Error {
         /// What would do.
         expected: String,
     },
+    /// A result that would not fit in memory.
+    Memory {
+        /// The whole message.
+        message: String,
+        /// Bytes needed, at least.
+        needed: u64,
+        /// Bytes allowed.
+        available: u64,
+    },
     /// The caller asked to stop; the state holds the result of the passes that were finished.
     Cancelled {
         /// Passes that were finished.
@@ -58,7 +67,9 @@ impl fmt::Display for Error {
             Self::Term { line, column, text, expected } => {
                 write!(f, "text: refused at line {line}, column {column} ({text:?}); {expected}")
             }
-            Self::Operator { message, .. } | Self::Rotation { message, .. } => f.write_str(message),
+            Self::Operator { message, .. } | Self::Rotation { message, .. } | Self::Memory { message, .. } => {
+                f.write_str(message)
+            }
             Self::StateShape { found, expected } => write!(f, "state: wrong shape ({found}); give {expected}"),
             Self::Cancelled { passes_done } => write!(f, "stopped on request after {passes_done} finished passes"),
             Self::Abandoned => f.write_str("stopped at once on a second request; the state is spoiled"),

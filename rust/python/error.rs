@@ -30,6 +30,10 @@ pub fn to_python(py: Python<'_>, error: Error) -> PyErr {
         Error::StateShape { found, expected } => {
             details.set_item("shape", found).and_then(|()| details.set_item("expected", expected))
         }
+        Error::Memory { needed, available, .. } => details
+            .set_item("needed", needed)
+            .and_then(|()| details.set_item("available", available))
+            .and_then(|()| details.set_item("largest_qubits", -1)),
         Error::Cancelled { .. } | Error::Abandoned | Error::Internal { .. } => Ok(()),
     };
     if let Err(failure) = filled {
@@ -40,6 +44,7 @@ pub fn to_python(py: Python<'_>, error: Error) -> PyErr {
         Error::Operator { .. } => "OperatorError",
         Error::Rotation { .. } => "RotationError",
         Error::StateShape { .. } => "StateShapeError",
+        Error::Memory { .. } => "MemoryRefusedError",
         Error::Cancelled { .. } => return pyo3::exceptions::PyKeyboardInterrupt::new_err(message),
         Error::Abandoned => "StateSpoiledError",
         Error::Internal { .. } => "InternalError",

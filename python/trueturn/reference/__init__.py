@@ -1,0 +1,1 @@
+"""Certified reference evolution."""
