@@ -19,7 +19,7 @@ PUBLISHED = Path(__file__).parent / "published"
 
 @pytest.fixture(scope="session")
 def published():
-    """Check values from the literature: ``published("exact.json")`` or ``published("formulas.toml")``, parsed."""
+    """Check values from the literature, parsed: ``published("exact.json")``."""
 
     def load(name):
         text = (PUBLISHED / name).read_text(encoding="utf-8")

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import numpy as np
 from hypothesis import strategies as st
-
 from trueturn import Operator
 
 coefficients = st.floats(min_value=-4, max_value=4, allow_subnormal=False).filter(
@@ -38,7 +37,7 @@ def operators(
 
 @st.composite
 def commuting_operators(draw, max_qubits=5, max_terms=8):
-    """Operators whose terms commute pairwise: Z strings turned by a layer of one-qubit Clifford relabellings."""
+    """Operators whose terms commute pairwise: Z strings with the axes of each qubit renamed."""
     count = draw(st.integers(1, max_qubits))
     z_masks = draw(st.lists(st.integers(0, 2**count - 1), max_size=max_terms))
     values = draw(st.lists(coefficients, min_size=len(z_masks), max_size=len(z_masks)))

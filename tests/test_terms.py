@@ -3,6 +3,9 @@
 from __future__ import annotations
 
 import itertools
+import signal
+import threading
+import time
 
 import numpy as np
 import oracle
@@ -10,7 +13,6 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 from strategies import any_finite, commuting_operators, operators, pauli_strings
-
 from trueturn import Operator
 from trueturn.errors import OperatorError, TermError, TrueturnError
 
@@ -18,7 +20,7 @@ UNIT_ROUNDOFF = 2.0**-53
 
 
 def tolerance(*operands, terms_per_entry=64):
-    """Rounding of dense algebra on both sides: each entry sums at most that many products of sizes below Π Σ|c|."""
+    """Rounding of dense algebra on both sides: an entry sums so many products, of sizes below Π Σ|c|."""
     size = 1.0
     for operand in operands:
         size *= 1 + operand.one_norm()
@@ -259,7 +261,7 @@ def test_relabelling_permutes_index_bits(operator, names):
 
 
 def windows(qubits=128, width=4):
-    """About 10^5 local terms: every string on each window of the chain that starts with a letter on its first qubit."""
+    """Every string on each window of the chain, with a letter on the window's first qubit."""
     x_masks, z_masks = [], []
     letters = [(0, 0), (1, 0), (1, 1), (0, 1)]
     for start, (first, *rest) in itertools.product(
@@ -311,9 +313,32 @@ def test_dense_random_strings_are_grouped():
     assert operator._terms.commuting_groups().max() > 100
 
 
-def test_results_do_not_depend_on_the_hash_seed(large):
-    twice = [str(windows(40, 3).bracket(windows(40, 2))) for _ in range(2)]
-    assert twice[0] == twice[1]
+def test_long_algebra_stops_on_an_interrupt():
+    """Strings of Y alone commute but share every qubit, so 10^10 pairs have to be looked at: minutes."""
+    generator = np.random.default_rng(7)
+    masks = [int.from_bytes(generator.bytes(16), "little") for _ in range(100_000)]
+    operator = Operator.from_masks(masks, masks, np.ones(len(masks)), 128)
+    timer = threading.Timer(0.2, signal.raise_signal, [signal.SIGINT])
+    timer.start()
+    started = time.monotonic()
+    with pytest.raises(KeyboardInterrupt):
+        operator.bracket_vanishes(operator)
+    # Checked every 40 ms; the bound leaves room for a loaded machine.
+    assert time.monotonic() - started < 5
+    timer.join()
+
+
+def test_the_order_of_results_is_that_of_first_occurrence():
+    left, right = windows(9, 2), windows(9, 3)
+    expected = {}
+    for x1, z1 in zip(left.x_masks, left.z_masks, strict=True):
+        for x2, z2 in zip(right.x_masks, right.z_masks, strict=True):
+            if ((x1 & z2).bit_count() + (z1 & x2).bit_count()) % 2:
+                expected[x1 ^ x2, z1 ^ z2] = None
+    bracket = left.bracket(right)
+    strings = dict.fromkeys(zip(bracket.x_masks, bracket.z_masks, strict=True))
+    assert list(strings) == [string for string in expected if string in strings]
+    assert len(strings) > 0.9 * len(expected)
 
 
 def test_errors_share_one_base():

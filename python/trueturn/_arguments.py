@@ -56,7 +56,11 @@ def real(value: object, name: str) -> float:
 
 def real_array(values: Any, name: str) -> npt.NDArray[np.float64]:
     """Return a one-dimensional contiguous float64 array; whether it is finite is left to the core."""
-    array = np.asarray(values if hasattr(values, "__len__") else list(values))
+    try:
+        array = np.asarray(values if hasattr(values, "__len__") else list(values))
+    except (TypeError, ValueError):
+        message = f"{name}: not a sequence of numbers ({values!r}); give one number for each term"
+        raise OperatorError(message, argument=name) from None
     if array.ndim != 1:
         message = f"{name}: not one-dimensional (shape {array.shape}); give one number for each term"
         raise OperatorError(message, argument=name)

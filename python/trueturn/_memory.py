@@ -73,7 +73,7 @@ def require(needed: int, what: str, bytes_for_qubits: Callable[[int], int] | int
 def readable(count: int) -> str:
     """Return a byte count in the unit that suits it, such as ``"1.5 GiB"``."""
     units = ("B", "KiB", "MiB", "GiB", "TiB", "PiB", "EiB")
-    power = min(max(count, 1).bit_length() // 10, len(units) - 1)
+    power = min((max(count, 1).bit_length() - 1) // 10, len(units) - 1)
     if power == 0:
         return f"{count} B"
     value = count / 1024**power

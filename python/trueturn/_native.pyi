@@ -6,6 +6,8 @@ from typing import final
 import numpy as np
 import numpy.typing as npt
 
+__all__ = ["Terms"]
+
 @final
 class Terms:
     @staticmethod

@@ -306,8 +306,8 @@ class Operator:
         """Return a multiple, or the product of two operators that commute.
 
         A product of operators that do not commute is not Hermitian and is refused; rounding is allowed for,
-        see `bracket_vanishes`. The cost is one multiplication for each pair of terms; a result that outgrows the
-        memory available raises `MemoryRefusedError`.
+        see `bracket_vanishes`. The cost is one multiplication for each pair of terms. A result that outgrows
+        the memory available raises `MemoryRefusedError`.
         """
         if isinstance(other, Operator):
             return self._of(self._terms.times(other._terms, _memory.allowed_bytes()))

@@ -28,6 +28,7 @@ __all__ = [
 ]
 
 UNIT_ROUNDOFF = 2.0**-53
+SMALLEST = 2.0**-900  # below this, underflow would disturb the error bounds
 
 Scaled = tuple[int, int, float]
 """One term: x mask, z mask, coefficient of at most 1 in size."""
@@ -97,8 +98,8 @@ def dense_extremes(terms: Sequence[Scaled], qubits: int) -> tuple[float, float]:
     .. [2] N. J. Higham, Accuracy and Stability of Numerical Algorithms, 2nd ed., SIAM (2002), Theorem 10.3.
     """
     size = triangle(terms)
-    if not terms:
-        return 0.0, 0.0
+    if size < SMALLEST:
+        return -size, size
     matrix = _matrix(terms, qubits)
     proposed = np.linalg.eigvalsh(matrix)
     low = _proved_low(matrix, float(proposed[0]), size, len(terms))

@@ -21,6 +21,7 @@ from trueturn.reference._extremes import (
     Scaled,
     commuting_extremes,
     dense_extremes,
+    down,
     sum_down,
     sum_up,
     triangle,
@@ -128,7 +129,8 @@ def spectral_report(operator: Operator) -> SpectralInterval:
     >>> round(report.low, 6), round(report.high, 6), report.route
     (-3.0, 1.0, 'dense')
     """
-    identity, terms, exponent = _scaled(operator)
+    terms, exponent = _scaled(operator)
+    identity = operator.identity_coefficient
     routes = [RouteInterval("coefficients", -triangle(terms), triangle(terms))]
     support = 0
     for x, z, _ in terms:
@@ -156,33 +158,27 @@ def spectral_report(operator: Operator) -> SpectralInterval:
     return SpectralInterval(lowest.low, highest.high, name, tuple(routes))
 
 
-def _scaled(operator: Operator) -> tuple[float, list[Scaled], int]:
-    """The identity's coefficient and the other terms, all times 2^-exponent so that none exceeds 1.
+def _scaled(operator: Operator) -> tuple[list[Scaled], int]:
+    """The terms without identity, times 2^-exponent, so that the largest is between 1/2 and 1.
 
-    A coefficient so small that it is rounded by this is below 2^-1020 of the largest and drowns in every
-    padding.
+    A coefficient that is rounded by this is below 2^-1021 of the largest, and drowns in the outward
+    rounding of sums.
     """
-    coefficients = operator.coefficients
-    exponent = int(np.frexp(np.max(np.abs(coefficients)))[1]) if len(operator) else 0
-    identity = 0.0
-    terms: list[Scaled] = []
-    for x, z, coefficient in zip(operator.x_masks, operator.z_masks, coefficients.tolist(), strict=True):
-        small = math.ldexp(coefficient, -exponent)
-        if x == 0 and z == 0:
-            identity = small
-        else:
-            terms.append((x, z, small))
-    return identity, terms, exponent
+    bare = operator.without_identity()
+    exponent = int(np.frexp(np.max(np.abs(bare.coefficients)))[1]) if len(bare) else 0
+    coefficients = np.ldexp(bare.coefficients, -exponent).tolist()
+    return list(zip(bare.x_masks.tolist(), bare.z_masks.tolist(), coefficients, strict=True)), exponent
 
 
 def _unscaled(route: RouteInterval, identity: float, exponent: int) -> RouteInterval:
-    """Add the identity and undo the scaling, rounding outward."""
-    exact = route.low == route.high == 0.0
-    low = identity if exact else sum_down((identity, route.low))
-    high = identity if exact else sum_up((identity, route.high))
-    low = _times_power(low, exponent, -math.inf)
-    high = _times_power(high, exponent, math.inf)
-    return RouteInterval(route.route, low, high)
+    """Undo the scaling and add the identity, rounding outward."""
+    if route.low == route.high == 0.0:
+        return RouteInterval(route.route, identity, identity)
+    low = _times_power(route.low, exponent, -math.inf)
+    high = _times_power(route.high, exponent, math.inf)
+    if identity == 0.0:
+        return RouteInterval(route.route, low, high)
+    return RouteInterval(route.route, down(low + identity), up(high + identity))
 
 
 def _times_power(value: float, exponent: int, outward: float) -> float:
