@@ -59,6 +59,15 @@ pub enum Error {
     },
     /// An array in use by another call.
     StateBusy,
+    /// A result that would not fit in memory.
+    Memory {
+        /// The whole message.
+        message: String,
+        /// Bytes needed, at least.
+        needed: u64,
+        /// Bytes allowed.
+        available: u64,
+    },
     /// The caller asked to stop; the state holds the result of the passes that were finished.
     Cancelled {
         /// Passes that were finished.
@@ -79,9 +88,10 @@ impl fmt::Display for Error {
             Self::Term { line, column, text, expected } => {
                 write!(f, "text: refused at line {line}, column {column} ({text:?}); {expected}")
             }
-            Self::Operator { message, .. } | Self::Rotation { message, .. } | Self::Argument { message, .. } => {
-                f.write_str(message)
-            }
+            Self::Operator { message, .. }
+            | Self::Rotation { message, .. }
+            | Self::Argument { message, .. }
+            | Self::Memory { message, .. } => f.write_str(message),
             Self::StateShape { found, expected } => write!(f, "state: wrong shape ({found}); give {expected}"),
             Self::StateType { found, expected } => write!(f, "state: wrong type ({found}); give {expected}"),
             Self::StateLayout { reason } => write!(f, "state: cannot be evolved in place: {reason}"),

@@ -20,7 +20,7 @@ use crate::error::{Error, Result};
 use crate::pauli::PauliString;
 use collect::Sum;
 
-pub use algebra::Check;
+pub use algebra::{Check, Limits};
 pub use grouping::commuting_groups;
 pub use text::parse_factors;
 

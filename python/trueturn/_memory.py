@@ -8,7 +8,7 @@ from pathlib import Path
 
 from trueturn.errors import MemoryRefusedError
 
-__all__ = ["available_bytes", "readable", "require"]
+__all__ = ["allowed_bytes", "available_bytes", "readable", "require"]
 
 AMPLITUDE_BYTES = 16
 
@@ -16,11 +16,20 @@ AMPLITUDE_BYTES = 16
 def available_bytes() -> int | None:
     """Return the bytes that this process can still allocate, or None where the system does not tell.
 
-    The least of: the kernel's own estimate (``MemAvailable``), what each enclosing control group leaves, and what
-    the address-space limit leaves. Elsewhere than on Linux: the free pages that ``sysconf`` reports, else all pages.
+    The least of: the kernel's own estimate (``MemAvailable``), what each enclosing control group leaves,
+    and what the address-space limit leaves. Elsewhere than on Linux: the free pages that ``sysconf``
+    reports, else all pages.
     """
-    bounds = [bound for bound in (_kernel_estimate(), *_control_groups(), _address_space()) if bound is not None]
+    bounds = [
+        bound for bound in (_kernel_estimate(), *_control_groups(), _address_space()) if bound is not None
+    ]
     return max(0, min(bounds)) if bounds else None
+
+
+def allowed_bytes() -> int:
+    """Return `available_bytes` as a limit for growing results: 2**63 where the system does not tell."""
+    available = available_bytes()
+    return 1 << 63 if available is None else available
 
 
 def require(needed: int, what: str, bytes_for_qubits: Callable[[int], int] | int | None = None) -> None:
@@ -33,8 +42,8 @@ def require(needed: int, what: str, bytes_for_qubits: Callable[[int], int] | int
     what : str
         Whose request it is, such as ``"sparse"``; opens the message.
     bytes_for_qubits : callable or int, optional
-        Bytes needed as a function of the number of qubits, or a count of complex128 state vectors. Serves to name the
-        largest size that fits.
+        Bytes needed as a function of the number of qubits, or a count of complex128 state vectors. Serves
+        to name the largest size that fits.
 
     Raises
     ------
@@ -54,7 +63,7 @@ def require(needed: int, what: str, bytes_for_qubits: Callable[[int], int] | int
             largest += 1
     remedy = f"at most {largest} qubits fit" if largest >= 0 else "free memory or ask for less"
     raise MemoryRefusedError(
-        f"{what}: does not fit in memory (needs {readable(needed)}, {readable(available)} available); {remedy}",
+        f"{what}: does not fit in memory (needs {readable(needed)} of {readable(available)}); {remedy}",
         needed=needed,
         available=available,
         largest_qubits=largest,
@@ -64,7 +73,7 @@ def require(needed: int, what: str, bytes_for_qubits: Callable[[int], int] | int
 def readable(count: int) -> str:
     """Return a byte count in the unit that suits it, such as ``"1.5 GiB"``."""
     units = ("B", "KiB", "MiB", "GiB", "TiB", "PiB", "EiB")
-    power = min(max(count, 1).bit_length() // 10, len(units) - 1)
+    power = min((max(count, 1).bit_length() - 1) // 10, len(units) - 1)
     if power == 0:
         return f"{count} B"
     value = count / 1024**power

@@ -4,28 +4,23 @@ from __future__ import annotations
 
 import math
 import numbers
-import operator as _builtin
 import os
-import re
-import tempfile
 from collections.abc import Iterable, Mapping
 from pathlib import Path
-from typing import Any, final
+from typing import TYPE_CHECKING, Any, final
 
 import numpy as np
 import numpy.typing as npt
-import scipy.sparse
-import scipy.sparse.linalg
 
-from trueturn import _apply, _memory
+from trueturn import _arguments, _matrices, _memory, _terms_file
 from trueturn._native import Terms
-from trueturn.errors import MemoryRefusedError, OperatorError, TermError
+from trueturn.errors import OperatorError, TermError
+
+if TYPE_CHECKING:
+    import scipy.sparse
+    import scipy.sparse.linalg
 
 __all__ = ["Operator"]
-
-MAX_QUBITS = 128
-DENSE_QUBITS = 12
-_QUBITS_COMMENT = re.compile(r"^[ \t]*#[ \t]*qubits:[ \t]*(\S*)[ \t]*$", re.MULTILINE)
 
 
 @final
@@ -35,28 +30,30 @@ class Operator:
     Parameters
     ----------
     text : str
-        The written notation, such as ``"-1.0 Z_0 Z_1 + 0.5 X_0 - 0.25"``. A bare number is the identity term. Letters are
-        X, Y, Z; the qubit number may stand in braces (``Z_{10}``). A missing coefficient is 1. A line break ends a term
-        (unless it follows a sign) and ``#`` starts a comment. Factors on one qubit multiply out: ``X_0 X_0`` is 1.
+        The written notation, such as ``"-1.0 Z_0 Z_1 + 0.5 X_0 - 0.25"``. A bare number is the identity
+        term. Letters are X, Y, Z; the qubit number may stand in braces (``Z_{10}``). A missing coefficient
+        is 1. A line break ends a term (unless it follows a sign) and ``#`` starts a comment. Factors on one
+        qubit multiply out: ``X_0 X_0`` is 1.
     qubits : int, optional
         Number of qubits acted on, 1 to 128. By default just enough for the qubits named, at least 1.
 
     Raises
     ------
     TermError
-        If the text does not parse or a term is not Hermitian (``X_0 Y_0``, complex coefficients); carries `text`, the
-        offending piece, and `position`, its (line, column).
+        If the text does not parse or a term is not Hermitian (``X_0 Y_0``, complex coefficients); carries
+        `text`, the offending piece, and `position`, its (line, column).
     OperatorError
         If `qubits` is out of range or repeated terms add up beyond double precision; carries `argument`.
 
     Notes
     -----
-    Immutable. Terms keep their order; repeated strings merge at their first occurrence, and sums that are exactly zero are
-    dropped while almost-zero ones are kept. Binary operations act on the larger number of qubits of the two.
+    Immutable. Terms keep their order; repeated strings merge at their first occurrence, and sums that are
+    exactly zero are dropped while almost-zero ones are kept. Binary operations act on the larger number of
+    qubits of the two.
 
-    Two operators are equal when they have the same strings with exactly the same coefficients, in any order; the number of
-    qubits is not compared, since ``Z_0`` names the same operator however many idle qubits stand beside it. For equality up
-    to rounding there is `near`.
+    Two operators are equal when they have the same strings with exactly the same coefficients, in any
+    order; the number of qubits is not compared, since ``Z_0`` names the same operator however many idle
+    qubits stand beside it. For equality up to rounding there is `near`.
 
     Examples
     --------
@@ -72,20 +69,28 @@ class Operator:
     __array_ufunc__ = None  # numpy scalars leave arithmetic to us
 
     _terms: Terms
+    _coefficients: npt.NDArray[np.float64] | None
+    _x_masks: npt.NDArray[np.object_] | None
+    _z_masks: npt.NDArray[np.object_] | None
+    _hash: int | None
 
     def __init__(self, text: str, qubits: int | None = None) -> None:
         if not isinstance(text, str):
             raise OperatorError(
-                f"text: not a string ({type(text).__name__}); give terms such as '0.5 X_0', or use gather or from_masks",
+                f"text: not a string ({type(text).__name__}); give terms such as '0.5 X_0', or use gather",
                 argument="text",
             )
-        self._terms = Terms.parse(text, _checked_qubits(qubits))
+        self._hold(Terms.parse(text, _arguments.qubit_count(qubits)))
 
     @classmethod
     def _of(cls, terms: Terms) -> Operator:
         made = cls.__new__(cls)
-        made._terms = terms
+        made._hold(terms)
         return made
+
+    def _hold(self, terms: Terms) -> None:
+        self._terms = terms
+        self._coefficients = self._x_masks = self._z_masks = self._hash = None
 
     @classmethod
     def gather(cls, terms: Iterable[tuple[float, str]], qubits: int | None = None) -> Operator:
@@ -114,7 +119,7 @@ class Operator:
         >>> print(Operator.gather([(-1.0, "Z_0 Z_1"), (0.5, "X_0"), (2, "")]))
         -1.0 Z_0 Z_1 + 0.5 X_0 + 2.0
         """
-        qubits = _checked_qubits(qubits)
+        qubits = _arguments.qubit_count(qubits)
         x: list[int] = []
         z: list[int] = []
         coefficients: list[float] = []
@@ -125,8 +130,10 @@ class Operator:
             except (TypeError, ValueError):
                 factors = None
             if not isinstance(factors, str):
-                raise OperatorError(f"{name}: not a pair ({entry!r}); give (coefficient, 'X_0 Z_3')", argument="terms")
-            value = _real(coefficient, name)
+                raise OperatorError(
+                    f"{name}: not a pair ({entry!r}); give (coefficient, 'X_0 Z_3')", argument="terms"
+                )
+            value = _arguments.real(coefficient, name)
             try:
                 x_mask, z_mask, sign = Terms.parse_factors(factors, qubits)
             except TermError as error:
@@ -149,7 +156,8 @@ class Operator:
         Parameters
         ----------
         x, z : sequences of int, length m
-            Bit q of a mask belongs to qubit q. (x bit, z bit) is I = (0, 0), X = (1, 0), Y = (1, 1), Z = (0, 1).
+            Bit q of a mask belongs to qubit q. (x bit, z bit) is I = (0, 0), X = (1, 0), Y = (1, 1), Z =
+            (0, 1).
         coefficients : array_like, shape (m,), float
         qubits : int, optional
             As for the constructor.
@@ -161,16 +169,20 @@ class Operator:
         Raises
         ------
         OperatorError
-            If lengths differ, a mask is no integer from 0 to 2**128 - 1 or needs more qubits than given, or a coefficient
-            is not a finite real number.
+            If lengths differ, a mask is no integer from 0 to 2**128 - 1 or needs more qubits than given, or
+            a coefficient is not a finite real number.
 
         Examples
         --------
         >>> print(Operator.from_masks([0b01, 0b11], [0b10, 0b10], [0.5, -2.0], qubits=2))
         0.5 X_0 Z_1 - 2.0 X_0 Y_1
         """
-        values = _real_array(coefficients)
-        return cls._of(Terms.from_masks(_masks(x, "x"), _masks(z, "z"), values, _checked_qubits(qubits)))
+        values = _arguments.real_array(coefficients, "coefficients")
+        return cls._of(
+            Terms.from_masks(
+                _arguments.masks(x, "x"), _arguments.masks(z, "z"), values, _arguments.qubit_count(qubits)
+            )
+        )
 
     @classmethod
     def read(cls, path: str | os.PathLike[str]) -> Operator:
@@ -195,23 +207,11 @@ class Operator:
         OSError
             As raised by the system.
         """
-        name = os.fspath(path)
-        try:
-            text = Path(path).read_text(encoding="utf-8")
-        except UnicodeDecodeError as error:
-            raise OperatorError(f"{name}: not UTF-8 text (byte {error.start}); give a .terms file", argument="path") from None
-        stated = _QUBITS_COMMENT.search(text)
-        qubits = None
-        if stated is not None:
-            if not stated[1].isascii() or not stated[1].isdigit():
-                raise OperatorError(
-                    f"{name}: the qubits comment holds no number ({stated[1]!r}); write '# qubits: 4'", argument="path"
-                )
-            qubits = int(stated[1])
+        text, qubits = _terms_file.read_text(Path(path))
         try:
             return cls(text, qubits)
         except TermError as error:
-            raise _renamed(error, name) from None
+            raise _renamed(error, os.fspath(path)) from None
 
     def write(self, path: str | os.PathLike[str]) -> None:
         """Write a ``.terms`` file that `read` gives back exactly.
@@ -228,17 +228,7 @@ class Operator:
         OSError
             As raised by the system; an existing file is then left as it was.
         """
-        target = Path(path)
-        lines = str(self).replace(" + ", "\n").replace(" - ", "\n-")
-        handle, temporary = tempfile.mkstemp(dir=target.parent, prefix=f".{target.name}.", suffix=".part")
-        try:
-            with os.fdopen(handle, "w", encoding="utf-8", newline="\n") as file:
-                file.write(f"# qubits: {self.qubits}\n{lines}\n")
-            os.chmod(temporary, 0o666 & ~_umask())
-            os.replace(temporary, target)
-        except BaseException:
-            Path(temporary).unlink(missing_ok=True)
-            raise
+        _terms_file.write_text(Path(path), str(self), self.qubits)
 
     @property
     def qubits(self) -> int:
@@ -248,32 +238,26 @@ class Operator:
     @property
     def coefficients(self) -> npt.NDArray[np.float64]:
         """Coefficients in the order of the terms: ndarray, shape (len(self),), float64, read-only."""
-        try:
-            return self._coefficients
-        except AttributeError:
-            self._coefficients: npt.NDArray[np.float64] = _frozen(self._terms.coefficients())
-            return self._coefficients
+        if self._coefficients is None:
+            self._coefficients = _frozen(self._terms.coefficients())
+        return self._coefficients
 
     @property
     def x_masks(self) -> npt.NDArray[np.object_]:
-        """Masks of the qubits that carry X or Y: ndarray of Python integers (dtype object), shape (len(self),), read-only.
+        """Masks of the qubits that carry X or Y: ndarray of Python integers, shape (len(self),), read-only.
 
-        Masks have up to 128 bits, more than any integer type of numpy.
+        Masks have up to 128 bits, more than any integer type of numpy, hence the dtype object.
         """
-        try:
-            return self._x_masks
-        except AttributeError:
-            self._x_masks: npt.NDArray[np.object_] = _frozen(_objects(self._terms.x_masks()))
-            return self._x_masks
+        if self._x_masks is None:
+            self._x_masks = _frozen(_objects(self._terms.x_masks()))
+        return self._x_masks
 
     @property
     def z_masks(self) -> npt.NDArray[np.object_]:
         """Masks of the qubits that carry Z or Y, like `x_masks`."""
-        try:
-            return self._z_masks
-        except AttributeError:
-            self._z_masks: npt.NDArray[np.object_] = _frozen(_objects(self._terms.z_masks()))
-            return self._z_masks
+        if self._z_masks is None:
+            self._z_masks = _frozen(_objects(self._terms.z_masks()))
+        return self._z_masks
 
     @property
     def identity_coefficient(self) -> float:
@@ -321,14 +305,15 @@ class Operator:
     def __mul__(self, other: Operator | float) -> Operator:
         """Return a multiple, or the product of two operators that commute.
 
-        A product of operators that do not commute is not Hermitian and is refused; rounding is allowed for, see
-        `bracket_vanishes`. The cost is one multiplication for each pair of terms.
+        A product of operators that do not commute is not Hermitian and is refused; rounding is allowed for,
+        see `bracket_vanishes`. The cost is one multiplication for each pair of terms. A result that outgrows
+        the memory available raises `MemoryRefusedError`.
         """
         if isinstance(other, Operator):
-            return self._of(self._terms.times(other._terms))
+            return self._of(self._terms.times(other._terms, _memory.allowed_bytes()))
         if not isinstance(other, numbers.Number):
             return NotImplemented
-        return self._of(self._terms.scaled(_real(other, "factor")))
+        return self._of(self._terms.scaled(_arguments.real(other, "factor")))
 
     def __rmul__(self, other: float) -> Operator:
         return self.__mul__(other)
@@ -336,7 +321,7 @@ class Operator:
     def __truediv__(self, other: float) -> Operator:
         if not isinstance(other, numbers.Number):
             return NotImplemented
-        divisor = _real(other, "divisor")
+        divisor = _arguments.real(other, "divisor")
         if divisor == 0.0:
             raise OperatorError("divisor: zero (0.0); divide by another number", argument="divisor")
         return self._of(self._terms.divided(divisor))
@@ -353,7 +338,7 @@ class Operator:
             return other
         if not isinstance(other, numbers.Number):
             return None
-        value = np.array([_real(other, "number")])
+        value = np.array([_arguments.real(other, "number")])
         return self._of(Terms.from_masks([0], [0], value, None))
 
     def __eq__(self, other: object) -> bool:
@@ -362,12 +347,10 @@ class Operator:
         return self._terms.same_as(other._terms)
 
     def __hash__(self) -> int:
-        try:
-            return self._hash
-        except AttributeError:
+        if self._hash is None:
             terms = zip(self.x_masks.tolist(), self.z_masks.tolist(), self.coefficients.tolist(), strict=True)
-            self._hash: int = hash(frozenset(terms))
-            return self._hash
+            self._hash = hash(frozenset(terms))
+        return self._hash
 
     def near(self, other: Operator, atol: float) -> bool:
         """Say whether no coefficient differs by more than `atol`.
@@ -387,7 +370,7 @@ class Operator:
         OperatorError
             If `other` is no operator or `atol` no finite number of at least 0.
         """
-        tolerance = _real(atol, "atol")
+        tolerance = _arguments.real(atol, "atol")
         if tolerance < 0:
             raise OperatorError(f"atol: negative ({tolerance}); give at least 0", argument="atol")
         difference = self._terms.minus(_operator(other)._terms)
@@ -409,18 +392,20 @@ class Operator:
         ------
         OperatorError
             If `other` is no operator or a coefficient overflows.
+        MemoryRefusedError
+            If the result outgrows the memory available.
 
         Notes
         -----
-        Only terms that meet on some qubit are looked at, so local operators of 10^5 terms take seconds. Each coefficient is
-        within m u Σ|contributions| of the exact one, u = 2^-53, for m contributions.
+        Only terms that meet on some qubit are looked at, so local operators of 10^5 terms take seconds.
+        Each coefficient is within m u Σ|contributions| of the exact one, u = 2^-53, for m contributions.
 
         Examples
         --------
         >>> print(Operator("X_0").bracket(Operator("Y_0")))
         -2.0 Z_0
         """
-        return self._of(self._terms.bracket(_operator(other)._terms))
+        return self._of(self._terms.bracket(_operator(other)._terms, _memory.allowed_bytes()))
 
     def bracket_vanishes(self, other: Operator) -> bool:
         """Say whether the operators commute.
@@ -432,13 +417,15 @@ class Operator:
         Returns
         -------
         bool
-            True when each coefficient of the bracket is at most (m + 1) u Σ|contributions| for its m contributions,
-            u = 2^-53: what rounding alone can leave of an exact zero.
+            True when each coefficient of the bracket is at most (m + 1) u Σ|contributions| for its m
+            contributions, u = 2^-53: what rounding alone can leave of an exact zero.
 
         Raises
         ------
         OperatorError
             If `other` is no operator or a coefficient overflows.
+        MemoryRefusedError
+            If the result outgrows the memory available.
 
         References
         ----------
@@ -450,7 +437,7 @@ class Operator:
         >>> bond.bracket_vanishes(Operator("Z_0 + Z_1")), bond.bracket_vanishes(Operator("Z_0"))
         (True, False)
         """
-        return self._terms.bracket_vanishes(_operator(other)._terms)
+        return self._terms.bracket_vanishes(_operator(other)._terms, _memory.allowed_bytes())
 
     def support(self) -> tuple[int, ...]:
         """Return the qubits on which some term is not the identity, ascending."""
@@ -475,7 +462,8 @@ class Operator:
         Raises
         ------
         OperatorError
-            If an old qubit is out of range, a new one is not within 0 to 127, or two qubits in use get one number.
+            If an old qubit is out of range, a new one is not within 0 to 127, or two qubits in use get one
+            number.
 
         Examples
         --------
@@ -484,18 +472,19 @@ class Operator:
         """
         new_names = list(range(self.qubits))
         for old, new in names.items():
-            for role, qubit, limit in (("old", old, self.qubits), ("new", new, MAX_QUBITS)):
-                if isinstance(qubit, bool) or not isinstance(qubit, numbers.Integral) or not 0 <= qubit < limit:
-                    raise OperatorError(
-                        f"names: {role} qubit out of range ({qubit!r}); give integers from 0 to {limit - 1}",
-                        argument="names",
-                    )
-            new_names[int(old)] = int(new)
+            old = _arguments.qubit_number(old, self.qubits, "old qubit", "names")
+            new_names[old] = _arguments.qubit_number(new, _arguments.MAX_QUBITS, "new qubit", "names")
         return self._of(self._terms.relabelled(new_names))
 
     def one_norm(self) -> float:
-        """Return Σ|c| over all terms, the identity included, correctly rounded. It bounds the spectral norm."""
-        return math.fsum(np.abs(self.coefficients))
+        """Return Σ|c| over all terms, the identity included, correctly rounded.
+
+        It bounds the spectral norm. Infinite where the sum is beyond double precision.
+        """
+        try:
+            return math.fsum(np.abs(self.coefficients))
+        except OverflowError:
+            return math.inf
 
     def spectral_interval(self) -> tuple[float, float]:
         """Return (low, high), proved to enclose every eigenvalue.
@@ -519,22 +508,7 @@ class Operator:
         MemoryRefusedError
             Above 12 qubits, or if it does not fit; raised before anything is allocated.
         """
-        size = 1 << self.qubits
-        needed = 16 * size * size
-        if self.qubits > DENSE_QUBITS:
-            raise MemoryRefusedError(
-                f"dense: too many qubits ({self.qubits}, which need {_memory.readable(needed)}); at most {DENSE_QUBITS} "
-                "are allowed, use sparse() or linear_operator()",
-                needed=needed,
-                available=_memory.available_bytes(),
-                largest_qubits=DENSE_QUBITS,
-            )
-        _memory.require(needed + 64 * size, "dense", lambda qubits: (16 << 2 * qubits) + (64 << qubits))
-        matrix = np.zeros((size, size), dtype=np.complex128)
-        columns = np.arange(size)
-        for x, entries in self._diagonals():
-            matrix[columns ^ x, columns] += entries
-        return matrix
+        return _matrices.dense(self)
 
     def sparse(self) -> scipy.sparse.csr_matrix:
         """Return the matrix in compressed rows.
@@ -553,38 +527,7 @@ class Operator:
         -----
         At most one entry in each row for each distinct x mask. While it is made, an entry takes 48 bytes.
         """
-        masks = sorted(set(self.x_masks.tolist()))
-        count = max(1, len(masks))
-        _memory.require(
-            48 * (count + 2) << self.qubits, "sparse", lambda qubits: 48 * (count + 2) << qubits
-        )
-        size = 1 << self.qubits
-        index_type = np.int32 if size * count < 2**31 else np.int64
-        rows = np.arange(size, dtype=index_type)
-        data = np.zeros((size, len(masks)), dtype=np.complex128)
-        columns = np.empty((size, len(masks)), dtype=index_type)
-        for x, entries in self._diagonals():
-            place = masks.index(x)
-            columns[:, place] = rows ^ x
-            data[:, place] = entries[columns[:, place]]
-        starts = np.arange(size + 1, dtype=index_type) * len(masks)
-        matrix = scipy.sparse.csr_matrix((data.ravel(), columns.ravel(), starts), shape=(size, size))
-        matrix.eliminate_zeros()
-        matrix.sort_indices()
-        return matrix
-
-    def _diagonals(self) -> Iterable[tuple[int, npt.NDArray[np.complex128]]]:
-        """For each distinct x mask, the entries at row k ^ x of each column k."""
-        by_mask: dict[int, list[int]] = {}
-        for place, x in enumerate(self.x_masks):
-            by_mask.setdefault(x, []).append(place)
-        for x, places in by_mask.items():
-            entries = np.zeros(1 << self.qubits, dtype=np.complex128)
-            for place in places:
-                z = self.z_masks[place]
-                factor = self.coefficients[place] * 1j ** ((x & z).bit_count() % 4)
-                entries += factor * _apply.parity_signs(z, self.qubits)
-            yield x, entries
+        return _matrices.sparse(self)
 
     def linear_operator(self) -> scipy.sparse.linalg.LinearOperator:
         """Return the operator as something that multiplies vectors, for the solvers of scipy.
@@ -598,13 +541,7 @@ class Operator:
         MemoryRefusedError
             If two state vectors do not fit.
         """
-        _memory.require(2 * 16 << self.qubits, "linear_operator", 2)
-        size = 1 << self.qubits
-
-        def times(vector: npt.NDArray[Any]) -> npt.NDArray[np.complex128]:
-            return _apply.operator_times(self, np.ascontiguousarray(vector.reshape(size), dtype=np.complex128))
-
-        return scipy.sparse.linalg.LinearOperator((size, size), matvec=times, rmatvec=times, dtype=np.complex128)
+        return _matrices.linear_operator(self)
 
     def __str__(self) -> str:
         return self._terms.text()
@@ -614,12 +551,20 @@ class Operator:
         if len(self) <= shown:
             return f"Operator({str(self)!r}, qubits={self.qubits})"
         first = Terms.from_masks(
-            self.x_masks[:shown].tolist(), self.z_masks[:shown].tolist(), self.coefficients[:shown], self.qubits
+            self.x_masks[:shown].tolist(),
+            self.z_masks[:shown].tolist(),
+            self.coefficients[:shown],
+            self.qubits,
         )
         return f"<Operator on {self.qubits} qubits, {len(self)} terms: {first.text()} …>"
 
     def __reduce__(self) -> tuple[Any, ...]:
-        return _rebuild, (self.x_masks.tolist(), self.z_masks.tolist(), np.array(self.coefficients), self.qubits)
+        return _rebuild, (
+            self.x_masks.tolist(),
+            self.z_masks.tolist(),
+            np.array(self.coefficients),
+            self.qubits,
+        )
 
 
 def _rebuild(x: list[int], z: list[int], coefficients: npt.NDArray[np.float64], qubits: int) -> Operator:
@@ -629,59 +574,10 @@ def _rebuild(x: list[int], z: list[int], coefficients: npt.NDArray[np.float64], 
 
 def _operator(other: object) -> Operator:
     if not isinstance(other, Operator):
-        raise OperatorError(f"other: not an Operator ({type(other).__name__}); give an Operator", argument="other")
-    return other
-
-
-def _checked_qubits(qubits: object) -> int | None:
-    if qubits is None:
-        return None
-    if isinstance(qubits, bool) or not isinstance(qubits, numbers.Integral) or not 1 <= qubits <= MAX_QUBITS:
-        raise OperatorError(f"qubits: out of range ({qubits!r}); give an integer from 1 to {MAX_QUBITS}", argument="qubits")
-    return int(qubits)
-
-
-def _real(value: object, name: str) -> float:
-    """A finite float, or an error that names the argument."""
-    argument = name.partition("[")[0]
-    if isinstance(value, bool) or not isinstance(value, numbers.Real):
-        raise OperatorError(f"{name}: not a real number ({value!r}); give a finite real number", argument=argument)
-    try:
-        number = float(value)
-    except OverflowError:
-        number = math.inf
-    if not math.isfinite(number):
-        raise OperatorError(f"{name}: not finite ({value!r}); give a finite real number", argument=argument)
-    return number
-
-
-def _real_array(coefficients: npt.ArrayLike) -> npt.NDArray[np.float64]:
-    values = np.asarray(coefficients if hasattr(coefficients, "__len__") else list(coefficients))  # type: ignore[arg-type]
-    if values.ndim != 1:
         raise OperatorError(
-            f"coefficients: not one-dimensional (shape {values.shape}); give one number for each term",
-            argument="coefficients",
+            f"other: not an Operator ({type(other).__name__}); give an Operator", argument="other"
         )
-    if values.size == 0:
-        return np.zeros(0)
-    if values.dtype.kind in "fiu":
-        with np.errstate(over="ignore"):
-            return np.ascontiguousarray(values, dtype=np.float64)
-    return np.array([_real(value, f"coefficients[{number}]") for number, value in enumerate(values.tolist())])
-
-
-def _masks(values: npt.ArrayLike | Iterable[int], name: str) -> list[int]:
-    entries = values.tolist() if isinstance(values, np.ndarray) else values
-    try:
-        masks = [_builtin.index(mask) for mask in entries]  # type: ignore[union-attr]
-    except TypeError:
-        raise OperatorError(f"{name}: not a sequence of integers ({values!r}); give bit masks", argument=name) from None
-    for number, mask in enumerate(masks):
-        if not 0 <= mask < 1 << MAX_QUBITS:
-            raise OperatorError(
-                f"{name}[{number}]: out of range ({mask}); give a bit mask of at most {MAX_QUBITS} qubits", argument=name
-            )
-    return masks
+    return other
 
 
 def _objects(values: list[int]) -> npt.NDArray[np.object_]:
@@ -698,9 +594,3 @@ def _frozen(array: npt.NDArray[Any]) -> npt.NDArray[Any]:
 def _renamed(error: TermError, name: str) -> TermError:
     """The same error about another argument than `text`."""
     return TermError(name + str(error).removeprefix("text"), text=error.text, position=error.position)
-
-
-def _umask() -> int:
-    mask = os.umask(0)
-    os.umask(mask)
-    return mask

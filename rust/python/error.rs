@@ -36,6 +36,10 @@ pub fn to_python(py: Python<'_>, error: Error) -> PyErr {
             details.set_item("dtype", found).and_then(|()| details.set_item("expected", expected))
         }
         Error::StateLayout { reason } => details.set_item("reason", reason),
+        Error::Memory { needed, available, .. } => details
+            .set_item("needed", needed)
+            .and_then(|()| details.set_item("available", available))
+            .and_then(|()| details.set_item("largest_qubits", -1)),
         Error::StateBusy | Error::Cancelled { .. } | Error::Abandoned | Error::Internal { .. } => Ok(()),
     };
     if let Err(failure) = filled {
@@ -50,6 +54,7 @@ pub fn to_python(py: Python<'_>, error: Error) -> PyErr {
         Error::StateType { .. } => "StateTypeError",
         Error::StateLayout { .. } => "StateLayoutError",
         Error::StateBusy => "StateBusyError",
+        Error::Memory { .. } => "MemoryRefusedError",
         Error::Cancelled { .. } => return pyo3::exceptions::PyKeyboardInterrupt::new_err(message),
         Error::Abandoned => "StateSpoiledError",
         Error::Internal { .. } => "InternalError",

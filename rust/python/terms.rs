@@ -9,7 +9,7 @@ use pyo3::prelude::*;
 use super::error::to_python;
 use crate::error::{Error, Result};
 use crate::pauli::PauliString;
-use crate::terms::{Check, Terms, commuting_groups, parse_factors};
+use crate::terms::{Check, Limits, Terms, commuting_groups, parse_factors};
 
 /// Time between two looks for Ctrl-C during long algebra.
 const SIGNAL_INTERVAL: Duration = Duration::from_millis(40);
@@ -136,16 +136,16 @@ impl PyTerms {
         run(py, |_| self.terms.divided(divisor).map(Self::from))
     }
 
-    fn times(&self, py: Python<'_>, other: &Self) -> PyResult<Self> {
-        run(py, |check| self.terms.times(&other.terms, check).map(Self::from))
+    fn times(&self, py: Python<'_>, other: &Self, memory: u64) -> PyResult<Self> {
+        run(py, |check| self.terms.times(&other.terms, &mut Limits { memory, check }).map(Self::from))
     }
 
-    fn bracket(&self, py: Python<'_>, other: &Self) -> PyResult<Self> {
-        run(py, |check| self.terms.bracket(&other.terms, check).map(Self::from))
+    fn bracket(&self, py: Python<'_>, other: &Self, memory: u64) -> PyResult<Self> {
+        run(py, |check| self.terms.bracket(&other.terms, &mut Limits { memory, check }).map(Self::from))
     }
 
-    fn bracket_vanishes(&self, py: Python<'_>, other: &Self) -> PyResult<bool> {
-        run(py, |check| self.terms.bracket_vanishes(&other.terms, check))
+    fn bracket_vanishes(&self, py: Python<'_>, other: &Self, memory: u64) -> PyResult<bool> {
+        run(py, |check| self.terms.bracket_vanishes(&other.terms, &mut Limits { memory, check }))
     }
 
     /// Numbers of the first two terms that do not commute.

@@ -20,7 +20,15 @@ const UNIT_ROUNDOFF: f64 = f64::EPSILON / 2.0;
 /// Asked now and then during long work: `Err` stops it.
 pub type Check<'a> = &'a mut dyn FnMut() -> Result<()>;
 
-/// Pairs between two questions to [`Check`]: some milliseconds of work.
+/// What long work may use, and who may stop it.
+pub struct Limits<'a> {
+    /// Bytes that the result may take while it grows.
+    pub memory: u64,
+    /// Asked every few milliseconds.
+    pub check: Check<'a>,
+}
+
+/// Pairs of terms between two looks at the limits: some milliseconds of work.
 const PAIRS_PER_CHECK: usize = 1 << 17;
 
 impl Terms {
@@ -65,9 +73,9 @@ impl Terms {
     ///
     /// # Errors
     ///
-    /// [`Error::Operator`] if the two do not commute, and what `check` returns.
-    pub fn times(&self, other: &Self, check: Check) -> Result<Self> {
-        if !self.bracket_vanishes(other, check)? {
+    /// [`Error::Operator`] if the two do not commute, and what `limits` demand.
+    pub fn times(&self, other: &Self, limits: &mut Limits) -> Result<Self> {
+        if !self.bracket_vanishes(other, limits)? {
             let message = "other: the product is not Hermitian because the two operators do not commute; \
                            use bracket(other) for i[A, B], which always is";
             return Err(Error::Operator { argument: "other", message: message.to_owned() });
@@ -75,7 +83,7 @@ impl Terms {
         let mut sum = Sum::with_capacity(self.len().max(other.len()));
         let mut pairs = 0;
         for (left, a) in self.iter() {
-            pause(&mut pairs, other.len(), check)?;
+            pause(&mut pairs, other.len(), &sum, limits)?;
             for (right, b) in other.iter() {
                 let (string, turns) = left.times(right);
                 if turns & 1 == 0 {
@@ -87,26 +95,22 @@ impl Terms {
     }
 
     /// i[A, B], which is Hermitian again. Coefficients that rounding leaves almost zero are kept.
-    pub fn bracket(&self, other: &Self, check: Check) -> Result<Self> {
-        let mut sum = Sum::with_capacity(self.len().max(other.len()));
-        self.each_anticommuting_pair(other, check, |string, value| {
-            sum.add(string, 2.0 * value);
-        })?;
-        sum.into_terms(self.qubits().max(other.qubits()))
+    ///
+    /// # Errors
+    ///
+    /// [`Error::Operator`] if a coefficient overflows, and what `limits` demand.
+    pub fn bracket(&self, other: &Self, limits: &mut Limits) -> Result<Self> {
+        let (sum, _) = self.half_bracket(other, limits)?;
+        sum.into_terms(self.qubits().max(other.qubits()))?.scaled(2.0)
     }
 
     /// Whether [A, B] = 0 up to the rounding bound of this module's introduction.
-    pub fn bracket_vanishes(&self, other: &Self, check: Check) -> Result<bool> {
-        let mut sum = Sum::with_capacity(0);
-        let mut sizes: Vec<(f64, f64)> = Vec::new();
-        self.each_anticommuting_pair(other, check, |string, value| {
-            let place = sum.add(string, value);
-            if place == sizes.len() {
-                sizes.push((0.0, 0.0));
-            }
-            sizes[place].0 += 1.0;
-            sizes[place].1 += value.abs();
-        })?;
+    ///
+    /// # Errors
+    ///
+    /// As for [`Terms::bracket`].
+    pub fn bracket_vanishes(&self, other: &Self, limits: &mut Limits) -> Result<bool> {
+        let (sum, sizes) = self.half_bracket(other, limits)?;
         if sum.values().iter().any(|value| !value.is_finite()) {
             // Only to name the coefficient that overflowed.
             return sum.into_terms(MAX_QUBITS).map(|_| false);
@@ -115,30 +119,34 @@ impl Terms {
         Ok(sum.values().iter().zip(&sizes).all(|(&value, &(count, size))| vanishes(value, count, size)))
     }
 
-    /// Hands over each contribution to i[A, B]/2, in the order of the terms of `self`, then of `other`.
-    fn each_anticommuting_pair(
-        &self,
-        other: &Self,
-        check: Check,
-        mut take: impl FnMut(PauliString, f64),
-    ) -> Result<()> {
+    /// i[A, B]/2, and for each string the count and total size of its contributions.
+    ///
+    /// Contributions come in the order of the terms of `self`, then of `other`.
+    fn half_bracket(&self, other: &Self, limits: &mut Limits) -> Result<(Sum, Vec<(f64, f64)>)> {
         let mut index = Locality::of(other.strings());
         let mut near = Vec::new();
+        let mut sum = Sum::with_capacity(0);
+        let mut sizes: Vec<(f64, f64)> = Vec::new();
         let mut pairs = 0;
         for (left, a) in self.iter() {
             index.neighbours(left, &mut near);
-            pause(&mut pairs, near.len(), check)?;
+            pause(&mut pairs, near.len(), &sum, limits)?;
             for &number in &near {
                 let right = other.strings()[number as usize];
                 if !left.commutes_with(right) {
                     // PQ = i^t R with t = 1 or 3, and i[P, Q]/2 = i^{t+1} R.
                     let (string, turns) = left.times(right);
                     let value = a * other.coefficients()[number as usize];
-                    take(string, if turns == 1 { -value } else { value });
+                    let place = sum.add(string, if turns == 1 { -value } else { value });
+                    if place == sizes.len() {
+                        sizes.push((0.0, 0.0));
+                    }
+                    sizes[place].0 += 1.0;
+                    sizes[place].1 += value.abs();
                 }
             }
         }
-        Ok(())
+        Ok((sum, sizes))
     }
 
     /// The same operator with qubit `q` renamed to `new_names[q]`.
@@ -170,11 +178,12 @@ impl Terms {
     }
 }
 
-fn pause(pairs: &mut usize, more: usize, check: Check) -> Result<()> {
+fn pause(pairs: &mut usize, more: usize, sum: &Sum, limits: &mut Limits) -> Result<()> {
     *pairs += more;
     if *pairs >= PAIRS_PER_CHECK {
         *pairs = 0;
-        check()?;
+        sum.check_memory(limits.memory)?;
+        (limits.check)()?;
     }
     Ok(())
 }
@@ -187,8 +196,9 @@ mod tests {
         Terms::parse(text, None).unwrap()
     }
 
-    fn go() -> Result<()> {
-        Ok(())
+    fn bracket(left: &str, right: &str) -> String {
+        let mut limits = Limits { memory: u64::MAX, check: &mut || Ok(()) };
+        terms(left).bracket(&terms(right), &mut limits).unwrap().to_string()
     }
 
     #[test]
@@ -201,17 +211,18 @@ mod tests {
     #[test]
     fn the_bracket_has_the_sign_of_the_commutator() {
         // [X, Y] = 2 i Z, so i[X, Y] = -2 Z.
-        assert_eq!(terms("X_0").bracket(&terms("Y_0"), &mut go).unwrap().to_string(), "-2.0 Z_0");
-        assert_eq!(terms("Y_0").bracket(&terms("X_0"), &mut go).unwrap().to_string(), "2.0 Z_0");
+        assert_eq!(bracket("X_0", "Y_0"), "-2.0 Z_0");
+        assert_eq!(bracket("Y_0", "X_0"), "2.0 Z_0");
     }
 
     #[test]
     fn cancellation_is_seen_through_rounding() {
+        let mut limits = Limits { memory: u64::MAX, check: &mut || Ok(()) };
         let heisenberg = terms("0.1 X_0 X_1 + 0.1 Y_0 Y_1 + 0.7 Z_0 Z_1 + 0.3 X_1 X_2 + 0.3 Y_1 Y_2");
-        assert!(heisenberg.bracket_vanishes(&terms("0.3 Z_0 + 0.3 Z_1 + 0.3 Z_2"), &mut go).unwrap());
-        assert!(!heisenberg.bracket_vanishes(&terms("0.3 Z_0 + 0.3 Z_1 + 0.300001 Z_2"), &mut go).unwrap());
-        assert!(terms("X_0").times(&terms("Z_0"), &mut go).is_err());
-        let square = terms("X_0 + Z_0").times(&terms("X_0 + Z_0"), &mut go).unwrap();
+        assert!(heisenberg.bracket_vanishes(&terms("0.3 Z_0 + 0.3 Z_1 + 0.3 Z_2"), &mut limits).unwrap());
+        assert!(!heisenberg.bracket_vanishes(&terms("0.3 Z_0 + 0.3 Z_1 + 0.300001 Z_2"), &mut limits).unwrap());
+        assert!(terms("X_0").times(&terms("Z_0"), &mut limits).is_err());
+        let square = terms("X_0 + Z_0").times(&terms("X_0 + Z_0"), &mut limits).unwrap();
         assert_eq!(square.to_string(), "2.0");
     }
 

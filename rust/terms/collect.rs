@@ -35,6 +35,10 @@ impl Hasher for MaskHasher {
     }
 }
 
+/// Bytes for each string at the worst moment: a table of 49-byte slots at least 7/16 full beside its half-sized
+/// predecessor (168), and three lists of 56 bytes together at up to twice their length beside their predecessors (168).
+const BYTES_PER_STRING: u64 = 336;
+
 /// A sum under construction.
 pub(super) struct Sum {
     places: HashMap<PauliString, usize, BuildHasherDefault<MaskHasher>>,
@@ -63,6 +67,20 @@ impl Sum {
             self.values[place] += value;
         }
         place
+    }
+
+    /// Refuses to grow beyond what fits in so many bytes.
+    pub(super) fn check_memory(&self, available: u64) -> Result<()> {
+        let needed = BYTES_PER_STRING * self.strings.len() as u64;
+        if needed <= available {
+            return Ok(());
+        }
+        let message = format!(
+            "other: the result does not fit in memory (over {} strings, {needed} bytes of {available}); \
+             combine fewer terms at a time",
+            self.strings.len()
+        );
+        Err(Error::Memory { message, needed, available })
     }
 
     pub(super) fn strings(&self) -> &[PauliString] {

@@ -44,7 +44,7 @@ impl Locality {
         self.last_asker.push(0);
     }
 
-    /// Upper bound on the number of strings that [`Self::neighbours`] returns, repetitions counted.
+    /// Number of strings that [`Self::each_neighbour`] hands over, repetitions counted.
     pub(super) fn neighbour_bound(&self, string: PauliString) -> usize {
         self.lists(string).map(Vec::len).sum()
     }
@@ -76,6 +76,20 @@ impl Locality {
         if lists > 1 {
             found.sort_unstable();
         }
+    }
+
+    /// Hands over the numbers of the strings that may anticommute with `string`, in any order, some of them repeatedly.
+    pub(super) fn each_neighbour(&self, string: PauliString, mut take: impl FnMut(u32)) {
+        for list in self.lists(string) {
+            for &number in list {
+                take(number);
+            }
+        }
+    }
+
+    /// Number of strings in the index.
+    pub(super) fn len(&self) -> usize {
+        self.length
     }
 
     fn lists(&self, string: PauliString) -> impl Iterator<Item = &Vec<u32>> {

@@ -1,0 +1,28 @@
+"""Hypothesis profiles (``TRUETURN_HYPOTHESIS=dev|ci``) and fixtures shared by all tests."""
+
+from __future__ import annotations
+
+import json
+import os
+import tomllib
+from pathlib import Path
+
+import hypothesis
+import pytest
+
+hypothesis.settings.register_profile("dev", deadline=None, max_examples=60)
+hypothesis.settings.register_profile("ci", deadline=None, max_examples=150, derandomize=True, print_blob=True)
+hypothesis.settings.load_profile(os.environ.get("TRUETURN_HYPOTHESIS", "dev"))
+
+PUBLISHED = Path(__file__).parent / "published"
+
+
+@pytest.fixture(scope="session")
+def published():
+    """Check values from the literature, parsed: ``published("exact.json")``."""
+
+    def load(name):
+        text = (PUBLISHED / name).read_text(encoding="utf-8")
+        return json.loads(text) if name.endswith(".json") else tomllib.loads(text)
+
+    return load

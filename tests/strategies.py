@@ -1,0 +1,57 @@
+"""Hypothesis strategies shared by all tests."""
+
+from __future__ import annotations
+
+import numpy as np
+from hypothesis import strategies as st
+from trueturn import Operator
+
+coefficients = st.floats(min_value=-4, max_value=4, allow_subnormal=False).filter(
+    lambda value: value == 0 or abs(value) > 1e-6
+)
+"""Moderate numbers, so that dense comparisons have one scale; zero included."""
+
+any_finite = st.floats(allow_nan=False, allow_infinity=False)
+"""Every finite double, subnormal ones and both zeros included."""
+
+
+def pauli_strings(qubits):
+    """(x mask, z mask) on `qubits` qubits."""
+    masks = st.integers(0, 2**qubits - 1)
+    return st.tuples(masks, masks)
+
+
+@st.composite
+def operators(
+    draw, max_qubits=4, max_terms=12, values=coefficients, min_terms=0, qubits=None, distinct=False
+):
+    """Operators on up to `max_qubits` qubits (or exactly `qubits`); repeats merge unless `distinct`."""
+    count = qubits or draw(st.integers(1, max_qubits))
+    unique_by = (lambda term: term[0]) if distinct else None
+    pairs = st.tuples(pauli_strings(count), values)
+    terms = draw(st.lists(pairs, min_size=min_terms, max_size=max_terms, unique_by=unique_by))
+    return Operator.from_masks(
+        [x for (x, _), _ in terms], [z for (_, z), _ in terms], [c for _, c in terms], count
+    )
+
+
+@st.composite
+def commuting_operators(draw, max_qubits=5, max_terms=8):
+    """Operators whose terms commute pairwise: Z strings with the axes of each qubit renamed."""
+    count = draw(st.integers(1, max_qubits))
+    z_masks = draw(st.lists(st.integers(0, 2**count - 1), max_size=max_terms))
+    values = draw(st.lists(coefficients, min_size=len(z_masks), max_size=len(z_masks)))
+    axes = draw(st.lists(st.sampled_from("XYZ"), min_size=count, max_size=count))
+    to_x = sum(1 << qubit for qubit, axis in enumerate(axes) if axis in "XY")
+    to_z = sum(1 << qubit for qubit, axis in enumerate(axes) if axis in "YZ")
+    return Operator.from_masks(
+        [mask & to_x for mask in z_masks], [mask & to_z for mask in z_masks], values, count
+    )
+
+
+@st.composite
+def states(draw, qubits):
+    """Normalised complex vectors of length 2**qubits, from a drawn seed."""
+    generator = np.random.default_rng(draw(st.integers(0, 2**32 - 1)))
+    vector = generator.normal(size=2**qubits) + 1j * generator.normal(size=2**qubits)
+    return vector / np.linalg.norm(vector)
