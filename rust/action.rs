@@ -1,19 +1,24 @@
 //! What an operator does to a state: H|ψ>, expectations, and the Chebyshev recurrence.
 //!
 //! The output is made block by block in first-level cache. Terms are sorted by the high bits of their x mask: all of one
-//! sort read the same source block. Inside, terms with the same low masks share one coefficient for the block, the sum of
-//! theirs with the signs that the high bits give. So one traversal of the output serves all terms, and the recurrence
-//! T_{k+1} = 2 H' T_k - T_{k-1} with its accumulations is folded into the same traversal.
+//! sort read the same source block. Inside, terms join as far as one pass over the block can carry them:
 //!
-//! Terms are summed in groups of eight and the groups then added, so that a term passes through at most 8 + (terms / 8)
-//! additions; [`Action::rounding`] counts them for the certificate.
+//! - terms with the same low masks share one coefficient for the block, the sum of theirs with the signs that the high
+//!   bits give;
+//! - strings with the same low x mask whose signs depend on one parity of the block index at most (XX and YY on a bond) add
+//!   up to one string with weights for either parity;
+//! - diagonal strings on low bits alone add up to a table, made once.
+//!
+//! So one traversal of the output serves all terms, and the recurrence T_{k+1} = 2 H' T_k - T_{k-1} with its accumulations
+//! is folded into the same traversal. Joined terms are summed in groups of eight and the groups then added, so that a term
+//! passes through at most 8 + (joined terms / 8) additions; [`Action::rounding`] counts them for the certificate.
 
 use num_complex::{Complex, Complex64};
 
 use crate::error::{Error, Result};
 use crate::evolve::require_length;
 use crate::kernel::Isa;
-use crate::kernel::lanes::{Accumulate, Dot, Factor, GROUP_BITS, LANES, LaneString, Real};
+use crate::kernel::lanes::{Accumulate, Dot, Factor, GROUP_BITS, Gain, LANES, LaneString, Real, Weigh};
 use crate::kernel::shared::Shared;
 use crate::sums::{collect_blocks, pairwise};
 use crate::team::{Control, Member, Run, run, workers_for};
@@ -24,15 +29,47 @@ const BLOCK_BITS: u32 = 9;
 /// Terms added up before they join the sum.
 const PART: usize = 8;
 
-/// Terms with the same low masks, reading the same source block.
-struct Item<T> {
-    /// The low part of the strings with factor 1 or i.
+/// Strings with the same low masks.
+struct Share<T> {
+    /// Their low part with factor 1 or i.
     unit: LaneString<T>,
-    /// High z mask and signed coefficient of each term.
+    /// High z mask and signed coefficient of each.
     terms: Vec<(usize, f64)>,
 }
 
-/// Terms that read the same source block.
+impl<T> Share<T> {
+    /// Σ ± coefficient, the signs being those of the high bits of the source block.
+    fn coefficient(&self, source: usize) -> f64 {
+        let signed = |(z, c): &(usize, f64)| if (source & z).count_ones() & 1 == 1 { -c } else { *c };
+        self.terms.iter().map(signed).sum()
+    }
+}
+
+/// Strings that one pass over a block carries: they move lanes and groups alike, and at most one parity of the group index
+/// other than none gives their signs.
+struct Item<T> {
+    shares: Vec<Share<T>>,
+}
+
+impl<T: Real> Item<T> {
+    fn admits(&self, unit: &LaneString<T>) -> bool {
+        let first = &self.shares[0].unit;
+        let parities = self.shares.iter().map(|share| share.unit.z).chain([unit.z]).filter(|&z| z != 0);
+        let mut parities = parities.collect::<Vec<_>>();
+        parities.dedup();
+        first.m == unit.m && first.x == unit.x && parities.len() <= 1
+    }
+
+    /// The sum of the shares as one string, for a source block.
+    fn joined(&self, source: usize) -> LaneString<T> {
+        let scaled = |share: &Share<T>| share.unit.scaled(T::from_f64(share.coefficient(source)));
+        let mut shares = self.shares.iter();
+        let first = shares.next().map(scaled);
+        shares.map(scaled).fold(first, |sum, next| sum.map(|sum| sum.plus(&next))).unwrap_or_else(LaneString::nothing)
+    }
+}
+
+/// Items that read the same source block.
 struct Source<T> {
     x: usize,
     items: Vec<Item<T>>,
@@ -42,17 +79,31 @@ struct Source<T> {
 pub struct Action<T> {
     qubits: u32,
     sources: Vec<Source<T>>,
+    /// Diagonal strings on low bits alone: how many, Σ |coefficient|, and the sum for each lane.
+    diagonal: Option<Diagonal<T>>,
+}
+
+struct Diagonal<T> {
+    strings: usize,
+    size: f64,
+    table: Vec<[T; LANES]>,
 }
 
 impl<T: Real> Action<T> {
     /// Prepares `scale · terms + shift`.
     pub fn new(terms: &Terms, scale: f64, shift: f64) -> Self {
-        let mut action = Self { qubits: terms.qubits(), sources: vec![] };
-        for (string, coefficient) in terms.strings().iter().zip(terms.coefficients()) {
-            action.add(string.x as u64, string.z as u64, string.y_count(), scale * coefficient);
+        let mut action = Self { qubits: terms.qubits(), sources: vec![], diagonal: None };
+        let low = (1u64 << BLOCK_BITS) - 1;
+        let masks = terms.strings().iter().map(|s| (s.x as u64, s.z as u64, s.y_count()));
+        let scaled = masks.zip(terms.coefficients().iter().map(|coefficient| scale * coefficient));
+        let all = scaled.chain((shift != 0.0).then_some(((0, 0, 0), shift)));
+        let (diagonal, others): (Vec<_>, Vec<_>) = all.partition(|((x, z, _), _)| *x == 0 && z & !low == 0);
+        for ((x, z, y_count), coefficient) in others {
+            action.add(x, z, y_count, coefficient);
         }
-        if shift != 0.0 {
-            action.add(0, 0, 0, shift);
+        if !diagonal.is_empty() {
+            action.diagonal =
+                Some(action.tabulated(&diagonal.iter().map(|((_, z, _), c)| (*z, *c)).collect::<Vec<_>>()));
         }
         action
     }
@@ -71,26 +122,46 @@ impl<T: Real> Action<T> {
         });
         let term = ((z >> BLOCK_BITS) as usize, signed);
         let items = &mut self.sources[place].items;
-        match items.iter_mut().find(|item| item.unit == unit) {
-            Some(item) => item.terms.push(term),
-            None => items.push(Item { unit, terms: vec![term] }),
+        match items.iter_mut().find(|item| item.admits(&unit)) {
+            None => items.push(Item { shares: vec![Share { unit, terms: vec![term] }] }),
+            Some(item) => match item.shares.iter_mut().find(|share| share.unit == unit) {
+                Some(share) => share.terms.push(term),
+                None => item.shares.push(Share { unit, terms: vec![term] }),
+            },
+        }
+    }
+
+    fn tabulated(&self, strings: &[(u64, f64)]) -> Diagonal<T> {
+        let groups = 1usize << (self.qubits.max(GROUP_BITS).min(BLOCK_BITS) - GROUP_BITS);
+        let value = |index: u64| -> f64 {
+            strings.iter().map(|(z, c)| if (index & z).count_ones() & 1 == 1 { -c } else { *c }).sum()
+        };
+        let lanes = |q: usize| std::array::from_fn(|l| T::from_f64(value((q * LANES / 2 + l / 2) as u64)));
+        Diagonal {
+            strings: strings.len(),
+            size: strings.iter().map(|(_, c)| c.abs()).sum(),
+            table: (0..groups).map(lanes).collect(),
         }
     }
 
     /// Bound on the 2-norm of the rounding error of one application to a unit vector, in units of the roundoff.
     ///
-    /// Each term is rounded once when scaled, once for each sum of coefficients, once when multiplied, and once for each
-    /// addition that it passes through; the error is at most the sum of |coefficient| times that number, since a string
-    /// only permutes amplitudes and changes their phase by a power of i.
+    /// Each term is rounded once when scaled, once for each sum of coefficients or weights it enters, once when multiplied,
+    /// and once for each addition of amplitudes that it passes through; the error is at most the sum of |coefficient| times
+    /// that number, since a string only permutes amplitudes and changes their phase by a power of i.
     pub fn rounding(&self) -> f64 {
         let items: Vec<&Item<T>> = self.sources.iter().flat_map(|source| &source.items).collect();
-        let parts = items.len().div_ceil(PART);
+        let parts = items.len().div_ceil(PART) + 1;
         let weigh = |(place, item): (usize, &&Item<T>)| {
             let additions = (PART - place % PART) + (parts - place / PART);
-            let size: f64 = item.terms.iter().map(|(_, coefficient)| coefficient.abs()).sum();
-            size * (1 + item.terms.len() + additions) as f64
+            let one = |share: &Share<T>| {
+                let size: f64 = share.terms.iter().map(|(_, coefficient)| coefficient.abs()).sum();
+                size * (2 + share.terms.len() + item.shares.len() + additions) as f64
+            };
+            item.shares.iter().map(one).sum::<f64>()
         };
-        items.iter().enumerate().map(weigh).sum()
+        let diagonal = self.diagonal.as_ref().map_or(0.0, |d| d.size * (2 + d.strings + parts) as f64);
+        items.iter().enumerate().map(weigh).sum::<f64>() + diagonal
     }
 
     /// Groups in a block of a state of `groups` groups.
@@ -106,34 +177,32 @@ impl<T: Real> Action<T> {
         let groups = out.len();
         let zero = [T::default(); LANES];
         let mut waiting = 0;
-        out.fill(zero);
+        match &self.diagonal {
+            None => out.fill(zero),
+            Some(diagonal) => {
+                // SAFETY: blocks below the number of blocks are in bounds, and nobody writes, by this function's contract.
+                let own = unsafe { state.groups_ref(block * groups, groups) };
+                isa.run(Weigh { out, source: own, weights: &diagonal.table });
+            }
+        }
         part.fill(zero);
         for source in &self.sources {
             let from = block ^ source.x;
-            // SAFETY: blocks below the number of blocks are in bounds, and nobody writes, by this function's contract.
+            // SAFETY: as above.
             let amplitudes = unsafe { state.groups_ref(from * groups, groups) };
             for item in &source.items {
-                let signed = |(z, c): &(usize, f64)| if (from & z).count_ones() & 1 == 1 { -c } else { *c };
-                let coefficient: f64 = item.terms.iter().map(signed).sum();
-                let string = item.unit.scaled(T::from_f64(coefficient));
-                isa.run(Accumulate { out: part, source: amplitudes, string: &string });
+                isa.run(Accumulate { out: part, source: amplitudes, string: &item.joined(from) });
                 waiting += 1;
                 if waiting == PART {
-                    add(out, part);
+                    isa.run(Gain { out, part });
                     part.fill(zero);
                     waiting = 0;
                 }
             }
         }
         if waiting > 0 {
-            add(out, part);
+            isa.run(Gain { out, part });
         }
-    }
-}
-
-fn add<T: Real>(out: &mut [[T; LANES]], part: &[[T; LANES]]) {
-    for (out, part) in out.iter_mut().zip(part) {
-        *out = std::array::from_fn(|l| out[l] + part[l]);
     }
 }
 

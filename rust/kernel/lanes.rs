@@ -125,6 +125,23 @@ impl<T: Real> LaneString<T> {
         Self { weights: self.weights.map(|row| row.map(|weight| weight * by)), ..*self }
     }
 
+    /// The string that adds nothing.
+    pub fn nothing() -> Self {
+        Self { m: 0, x: 0, z: 0, weights: [[T::default(); LANES]; 2] }
+    }
+
+    /// The sum with a string that moves lanes and groups alike; at most one other parity than none may occur in both.
+    pub fn plus(&self, other: &Self) -> Self {
+        debug_assert!(self.m == other.m && self.x == other.x && (self.z == other.z || self.z * other.z == 0));
+        let z = self.z | other.z;
+        let row = |string: &Self, parity: usize| string.weights[if string.z == 0 { 0 } else { parity }];
+        let weights = [0, 1].map(|parity| {
+            let (own, others) = (row(self, parity), row(other, parity));
+            std::array::from_fn(|l| own[l] + others[l])
+        });
+        Self { z, weights, ..*self }
+    }
+
     /// Parity of the source group's sign bits.
     #[inline(always)]
     fn parity(&self, source: usize) -> usize {
@@ -271,6 +288,44 @@ fn accumulate<T: Real, const M: usize>(out: &mut [[T; LANES]], source: &[[T; LAN
 fn add_weighted<T: Real, const M: usize>(out: &mut [T; LANES], weights: &[T; LANES], source: &[T; LANES]) {
     let source = permuted::<T, M>(source);
     *out = std::array::from_fn(|l| out[l] + weights[l] * source[l]);
+}
+
+/// out ← weights · source, lane by lane.
+pub struct Weigh<'a, T> {
+    /// Receives the products.
+    pub out: &'a mut [[T; LANES]],
+    /// The block to read.
+    pub source: &'a [[T; LANES]],
+    /// One weight for each lane.
+    pub weights: &'a [[T; LANES]],
+}
+
+impl<T: Real> Work for Weigh<'_, T> {
+    type Output = ();
+    #[inline(always)]
+    fn run(self) {
+        for ((out, source), weights) in self.out.iter_mut().zip(self.source).zip(self.weights) {
+            *out = std::array::from_fn(|l| weights[l] * source[l]);
+        }
+    }
+}
+
+/// out += part, lane by lane.
+pub struct Gain<'a, T> {
+    /// Sum so far.
+    pub out: &'a mut [[T; LANES]],
+    /// What joins it.
+    pub part: &'a [[T; LANES]],
+}
+
+impl<T: Real> Work for Gain<'_, T> {
+    type Output = ();
+    #[inline(always)]
+    fn run(self) {
+        for (out, part) in self.out.iter_mut().zip(self.part) {
+            *out = std::array::from_fn(|l| out[l] + part[l]);
+        }
+    }
 }
 
 /// a ← phase · table · a on a block; an empty table stands for ones.

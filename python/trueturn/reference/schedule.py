@@ -110,9 +110,9 @@ def _total(plan: Schedule) -> float:
 
 
 def _rounded_up(value: float) -> float:
-    """Round up to two significant digits, so that the number in the message is itself accepted."""
+    """Round up to two digits, with room for the truncation that a larger tolerance allows itself: then it is accepted."""
     step = 10.0 ** (math.floor(math.log10(value)) - 1)
-    return math.ceil(1.02 * value / step) * step
+    return math.ceil(1.08 * value / step) * step
 
 
 @dataclass(frozen=True)
@@ -136,7 +136,73 @@ class _Draft:
         plan = self.schedule(exact=False)
         return replace(self, applications=plan.applications, total=_total(plan))
 
-    def _rounding(x: float, degree: int, turn: float, local: float, growth: float) -> float:
+    def _expansion(self, start: float, targets: tuple[float, ...], exact: bool) -> Expansion:
+        lengths = [self.half * (target - start) for target in targets]
+        if not exact:
+            # Equal up to rounding is equal enough here, and saves computing the Bessel functions anew.
+            lengths = [float(f"{length:.3g}") * 1.005 for length in lengths]
+        degree = max(least_degree(x, self.allowed) for x in lengths)
+        cut = tuple(NORM_SLACK * truncation(x, degree) for x in lengths)
+        turns = [self.centre * (target - start) for target in targets]
+        rounding = tuple(
+            _rounding(x, degree, turn, self.local, self.growth) for x, turn in zip(lengths, turns, strict=True)
+        )
+        return Expansion(start, targets, degree, cut, rounding)
+
+
+def _drafts(
+    operator: Operator, interval: tuple[float, float], times: Sequence[float], tolerance: float, group: int
+) -> Iterator[_Draft]:
+    low, high = interval
+    centre, half = low + 0.5 * (high - low), 0.5 * (high - low)
+    # Any centre and half-width will do as long as the interval stays inside: pad for their own rounding.
+    half = half * (1.0 + 4.0 * UNIT) + 4.0 * UNIT * abs(centre)
+    if half == 0.0:
+        half = UNIT
+    for widening in _WIDENINGS:
+        wide = half * (1.0 + widening)
+        growth = math.inf if widening == 0.0 else 1.0 / math.sqrt(1.0 - (1.0 + widening) ** -2)
+        local = _local_error(operator, centre, wide)
+        for segments in _segment_counts(wide * times[-1]):
+            cuts = tuple(_cuts(times, times[-1] / segments, group))
+            for share in (0.5, 0.05):
+                allowed = share * tolerance / len(cuts)
+                yield _Draft(cuts, centre, wide, allowed, local, growth).evaluated()
+
+
+def _segment_counts(x: float) -> list[int]:
+    """Numbers of segments worth trying: segments with x below about 4 cost more than they save."""
+    most = max(1, math.ceil(x / 4.0))
+    counts = [1]
+    while counts[-1] < most:
+        counts.append(min(most, max(counts[-1] + 1, round(counts[-1] * 1.6))))
+    return counts
+
+
+def _cuts(times: Sequence[float], longest: float, group: int) -> list[tuple[float, tuple[float, ...]]]:
+    """Cut the way to the last time into expansions no longer than `longest` with at most `group` targets."""
+    cuts: list[tuple[float, tuple[float, ...]]] = []
+    start, waiting = 0.0, list(times)
+    reach = longest * (1.0 + 1e-9)
+    while waiting:
+        inside = [time for time in waiting[:group] if time - start <= reach]
+        if not inside:
+            parts = math.ceil((waiting[0] - start) / reach)
+            inside = [start + (waiting[0] - start) / parts]
+        cuts.append((start, tuple(inside)))
+        start = inside[-1]
+        waiting = [time for time in waiting if time > start]
+    return cuts
+
+
+def _local_error(operator: Operator, centre: float, half: float) -> float:
+    """Bound the error that one step of the recurrence adds: image, scale, shift and subtraction."""
+    scale = 2.0 / half
+    counted = _native.application_rounding(operator._terms, scale, -scale * centre)
+    return 1.05 * UNIT * (counted + scale * operator.one_norm() + 2.0 * abs(scale * centre) + 2.0)
+
+
+def _rounding(x: float, degree: int, turn: float, local: float, growth: float) -> float:
     """Bound what arithmetic adds to one sum: the recurrence, the coefficients, the additions, the final phase."""
     values = np.abs(bessel_values(x)[: degree + 1])
     values[1:] *= 2.0
