@@ -180,7 +180,8 @@ def test_the_bracket_matches_dense_matrices(left, right):
     a, b = dense_pair(left, right)
     bracket = left.bracket(right)
     assert np.allclose(oracle.dense(bracket), 1j * (a @ b - b @ a), rtol=0, atol=tolerance(left, right))
-    assert right.bracket(left) == -bracket
+    # The same contributions in another order.
+    assert right.bracket(left).near(-bracket, tolerance(left, right))
     assert bracket.bracket_vanishes(bracket)
 
 
@@ -314,7 +315,7 @@ def test_dense_random_strings_are_grouped():
 
 
 def test_long_algebra_stops_on_an_interrupt():
-    """Strings of Y alone commute but share every qubit, so 10^10 pairs have to be looked at: minutes."""
+    """Strings of Y alone commute but share every qubit, so 10^10 pairs have to be looked at."""
     generator = np.random.default_rng(7)
     masks = [int.from_bytes(generator.bytes(16), "little") for _ in range(100_000)]
     operator = Operator.from_masks(masks, masks, np.ones(len(masks)), 128)
@@ -324,7 +325,7 @@ def test_long_algebra_stops_on_an_interrupt():
     with pytest.raises(KeyboardInterrupt):
         operator.bracket_vanishes(operator)
     # Checked every 40 ms; the bound leaves room for a loaded machine.
-    assert time.monotonic() - started < 5
+    assert time.monotonic() - started < 10
     timer.join()
 
 
