@@ -6,7 +6,7 @@
 //! | [`terms`] | real sums of strings: parsing, printing, sums, products, brackets |
 //! | [`error`] | every way in which an input can be refused |
 //!
-//! Nothing here knows Python except [`python`](crate::python), which is compiled with the feature of that name.
+//! Nothing here knows Python except `python`, which is compiled with the feature of that name.
 
 pub mod error;
 pub mod pauli;

@@ -212,6 +212,13 @@ def test_commuting_terms_form_one_group_and_multiply(operator):
     assert set(operator._terms.commuting_groups().tolist()) <= {0}
 
 
+def test_underflow_does_not_make_operators_commute():
+    tiny = Operator("1e-200 X_0 + X_1"), Operator("1e-200 Z_0 + X_1")
+    assert not tiny[0].bracket_vanishes(tiny[1])
+    bond = Operator("1e-200 X_0 X_1 + 1e-200 Y_0 Y_1")
+    assert bond.bracket_vanishes(Operator("1e-200 Z_0 + 1e-200 Z_1"))
+
+
 def test_products_that_are_not_hermitian_point_to_the_bracket():
     with pytest.raises(OperatorError, match="bracket"):
         Operator("X_0") * Operator("Z_0")
