@@ -15,7 +15,7 @@
 //! | [`twin`] | one rotation by its definition, the oracle of the above |
 //! | [`error`] | every way in which an input can be refused |
 //!
-//! Nothing here knows Python except [`python`](crate::python), which is compiled with the feature of that name.
+//! Nothing here knows Python except `python`, which is compiled with the feature of that name.
 
 pub mod action;
 pub mod cost;

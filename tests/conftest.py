@@ -7,6 +7,9 @@ import os
 import tomllib
 from pathlib import Path
 
+# Matrices here are small: threads of the linear algebra library would only wait for each other.
+os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
+
 import hypothesis
 import pytest
 

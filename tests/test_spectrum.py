@@ -180,6 +180,11 @@ def test_overflowing_spectra_are_refused():
         spectral_interval(Operator("1.7e308 Z_0 + 1.7e308 Z_1"))
 
 
+def test_strangers_are_refused():
+    with pytest.raises(OperatorError, match=r"operator: not an Operator \(str\); give"):
+        spectral_report("Z_0")
+
+
 def test_centre_and_half_width_enclose_the_interval():
     report = spectral_report(ring(5, coupling=0.1) + 0.3)
     assert report.centre - report.half_width <= report.low
@@ -233,3 +238,10 @@ def test_many_dense_strings_are_bounded():
     operator = Operator.from_masks(x_masks, z_masks, generator.normal(size=3000), 128)
     low, high = spectral_interval(operator)
     assert -operator.one_norm() * 1.001 < low < high < operator.one_norm() * 1.001
+
+
+def test_operators_of_a_hundred_thousand_terms_are_enclosed():
+    masks = list(range(1, 100_001))
+    operator = Operator.from_masks(masks, [mask << 17 for mask in masks], np.ones(len(masks)), 34)
+    low, high = spectral_interval(operator)
+    assert -1.0001e5 < low < high < 1.0001e5

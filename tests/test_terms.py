@@ -180,7 +180,8 @@ def test_the_bracket_matches_dense_matrices(left, right):
     a, b = dense_pair(left, right)
     bracket = left.bracket(right)
     assert np.allclose(oracle.dense(bracket), 1j * (a @ b - b @ a), rtol=0, atol=tolerance(left, right))
-    assert right.bracket(left) == -bracket
+    # The same contributions in another order.
+    assert right.bracket(left).near(-bracket, tolerance(left, right))
     assert bracket.bracket_vanishes(bracket)
 
 
@@ -209,6 +210,13 @@ def test_powers_of_an_operator_are_products(operator):
 def test_commuting_terms_form_one_group_and_multiply(operator):
     assert operator._terms.first_anticommuting_pair() is None
     assert set(operator._terms.commuting_groups().tolist()) <= {0}
+
+
+def test_underflow_does_not_make_operators_commute():
+    tiny = Operator("1e-200 X_0 + X_1"), Operator("1e-200 Z_0 + X_1")
+    assert not tiny[0].bracket_vanishes(tiny[1])
+    bond = Operator("1e-200 X_0 X_1 + 1e-200 Y_0 Y_1")
+    assert bond.bracket_vanishes(Operator("1e-200 Z_0 + 1e-200 Z_1"))
 
 
 def test_products_that_are_not_hermitian_point_to_the_bracket():
@@ -314,7 +322,7 @@ def test_dense_random_strings_are_grouped():
 
 
 def test_long_algebra_stops_on_an_interrupt():
-    """Strings of Y alone commute but share every qubit, so 10^10 pairs have to be looked at: minutes."""
+    """Strings of Y alone commute but share every qubit, so 10^10 pairs have to be looked at."""
     generator = np.random.default_rng(7)
     masks = [int.from_bytes(generator.bytes(16), "little") for _ in range(100_000)]
     operator = Operator.from_masks(masks, masks, np.ones(len(masks)), 128)
@@ -324,7 +332,7 @@ def test_long_algebra_stops_on_an_interrupt():
     with pytest.raises(KeyboardInterrupt):
         operator.bracket_vanishes(operator)
     # Checked every 40 ms; the bound leaves room for a loaded machine.
-    assert time.monotonic() - started < 5
+    assert time.monotonic() - started < 10
     timer.join()
 
 

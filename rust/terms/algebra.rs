@@ -8,6 +8,8 @@
 //! coefficients, is off by at most u Σ|c| from the products and (m - 1) u Σ|c| from the additions, to first order in
 //! u = 2^-53 (Higham, Accuracy and Stability of Numerical Algorithms, 2nd ed., section 4.2). The test used is
 //! |Σ c| <= (m + 1) u Σ|c|: the one more covers the second order and the rounding of the test itself while 2 m² u < 1.
+//! Products that underflow are off by 2^-1075 more, so (m + 1) 2^-1074 is allowed too. A single contribution is the product of
+//! two numbers that are not zero and never vanishes.
 
 use super::collect::{Sum, from_distinct};
 use super::locality::{Locality, bits};
@@ -16,6 +18,9 @@ use crate::error::{Error, Result};
 use crate::pauli::PauliString;
 
 const UNIT_ROUNDOFF: f64 = f64::EPSILON / 2.0;
+
+/// 2^-1074.
+const SMALLEST: f64 = f64::MIN_POSITIVE * f64::EPSILON;
 
 /// Asked now and then during long work: `Err` stops it.
 pub type Check<'a> = &'a mut dyn FnMut() -> Result<()>;
@@ -115,7 +120,9 @@ impl Terms {
             // Only to name the coefficient that overflowed.
             return sum.into_terms(MAX_QUBITS).map(|_| false);
         }
-        let vanishes = |value: f64, count: f64, size: f64| value.abs() <= (count + 1.0) * UNIT_ROUNDOFF * size;
+        let vanishes = |value: f64, count: f64, size: f64| {
+            count > 1.0 && value.abs() <= (count + 1.0) * (UNIT_ROUNDOFF * size + SMALLEST)
+        };
         Ok(sum.values().iter().zip(&sizes).all(|(&value, &(count, size))| vanishes(value, count, size)))
     }
 

@@ -41,6 +41,9 @@ class Cluster:
 
 
 def _compressed(mask: int, places: Sequence[int]) -> int:
+    first, last = places[0], places[-1]
+    if last - first < len(places):
+        return mask >> first
     return sum(1 << new for new, old in enumerate(places) if mask >> old & 1)
 
 

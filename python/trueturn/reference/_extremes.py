@@ -13,7 +13,7 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
-from trueturn._matrices import diagonals
+from trueturn._matrices import diagonals, walsh_hadamard
 
 __all__ = [
     "Scaled",
@@ -81,13 +81,14 @@ def dense_extremes(terms: Sequence[Scaled], qubits: int) -> tuple[float, float]:
     Notes
     -----
     The eigenvalue routine only proposes a value; the proof is a Cholesky factorisation of A - s, with s a
-    little below. If it runs to its end in floating point with factor R on B = fl(A - s), then B + D = R* R
-    is positive semidefinite, with ‖D‖ <= g ‖R‖_F^2 and ‖R‖_F^2 = tr(B + D) <= tr(B) / (1 - g), where g = (N
-    + 2) u / (1 - (N + 2) u) for real matrices [1]_ [2]_ and four times that for complex ones, where each
-    part of an inner product is a real one of twice the length. Hence A >= s - g tr(B) / (1 - g) - e, where
-    e bounds the forming of B: at most m terms add up to an entry, and in each row the sizes of the terms
-    add up to Σ|c|, so e is at most m u Σ|c| plus one rounding of the diagonal, u max|b_ii|. This holds for
-    any order of summation, and so for blocked and threaded libraries.
+    little below. If it runs to its end in floating point with factor R on B = fl(A - s), then B + D = R*
+    R is positive semidefinite, with ‖D‖ <= g ‖R‖_F^2 and ‖R‖_F^2 = tr(B + D) <= tr(B) / (1 - g), where g
+    = (N + 2) u / (1 - (N + 2) u) for real matrices [1]_ [2]_ and four times that for complex ones, where
+    each part of an inner product is a real one of twice the length. Hence A >= s - g tr(B) / (1 - g) - e,
+    where e bounds the forming of B: an entry is off by at most max(m, log2 N) u times the sizes of its m
+    terms, which add up to Σ|c| over a row, so e is at most max(m, log2 N) u Σ|c| plus one rounding of the
+    diagonal, u max|b_ii|. This holds for any order of summation, and so for blocked and threaded
+    libraries.
 
     The last digits of the proposed value depend on library and threads. So that the bound does not, it is
     moved outward to a multiple of 2^-32 of the power of two above Σ|c|.
@@ -137,7 +138,7 @@ def _proved_low(matrix: npt.NDArray[Any], proposed: float, size: float, count: i
             continue
         largest = float(np.max(np.abs(shifted[diagonal, diagonal].real)))
         factored = growth / (1 - growth) * trace
-        formed = UNIT_ROUNDOFF * (count * size + largest)
+        formed = UNIT_ROUNDOFF * (max(count, order.bit_length()) * size + largest)
         # Two parts in 2^20 cover the roundings of this very line.
         return down(shift - (factored + formed) * (1 + 2.0**-19))
     return -size
@@ -190,11 +191,7 @@ def commuting_extremes(terms: Sequence[Scaled], rank_cap: int) -> tuple[float, f
     values = np.zeros(1 << rank)
     for (x, z, coefficient), place in zip(terms, places, strict=True):
         values[place] = coefficient * _product_sign(generators, place, (x, z))
-    for level in range(rank):
-        pairs = values.reshape(-1, 2, 1 << level)
-        even, odd = pairs[:, 0].copy(), pairs[:, 1]
-        pairs[:, 0] += odd
-        pairs[:, 1] = even - odd
+    walsh_hadamard(values)
     pad = (rank + 1) * UNIT_ROUNDOFF * size
     low, high = down(float(values.min()) - pad), up(float(values.max()) + pad)
     return max(-size, low), min(size, high), 1 << rank

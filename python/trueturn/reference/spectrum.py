@@ -35,6 +35,7 @@ RANK_CAP = 20
 GROUP_TERMS = 20_000
 GROUP_ENTRIES = 1 << 24
 CLUSTER_COST = 8 * 8**10
+SMALLEST_CLUSTER = 4
 
 
 @dataclass(frozen=True)
@@ -96,20 +97,19 @@ def spectral_report(operator: Operator) -> SpectralInterval:
     Raises
     ------
     OperatorError
-        If the interval exceeds the range of double precision.
+        If `operator` is no operator, or the interval exceeds the range of double precision.
 
     Notes
     -----
     With c_0 the coefficient of the identity and c_j the others, the routes are
 
-    - coefficients: c_0 ± Σ|c_j|; - commuting groups: the terms are put greedily into commuting groups, each
-    group into pieces that share no qubit, and
-      the exact extremes of the pieces, found by listing joint eigenvalues (at most 2^20 in a piece), are
-      added up;
+    - coefficients: c_0 ± Σ|c_j|;
+    - commuting groups: the terms are put greedily into commuting groups, each group into pieces that share
+      no qubit, and the exact extremes of the pieces, found by listing joint eigenvalues (at most 2^20 in a
+      piece), are added up;
     - clusters: the terms are dealt out to clusters of at most q neighbouring qubits, q = 10 for 18 qubits
-    and more, 8 for
-      13 to 17 and 6 below, and the extremes of the clusters are added up [1]_; equal clusters are solved
-      once;
+      and more, 8 for 13 to 17 and 6 below, less where that would take too long, and the extremes of the
+      clusters are added up [1]_; equal clusters are solved once;
     - dense: up to 8 qubits in use, the whole operator at once, instead of all the others.
 
     Adding up extremes bounds a sum from outside (Weyl). Each route is limited to about a second or two;
@@ -129,6 +129,9 @@ def spectral_report(operator: Operator) -> SpectralInterval:
     >>> round(report.low, 6), round(report.high, 6), report.route
     (-3.0, 1.0, 'dense')
     """
+    if not isinstance(operator, Operator):
+        message = f"operator: not an Operator ({type(operator).__name__}); give an Operator"
+        raise OperatorError(message, argument="operator")
     terms, exponent = _scaled(operator)
     identity = operator.identity_coefficient
     routes = [RouteInterval("coefficients", -triangle(terms), triangle(terms))]
@@ -222,9 +225,11 @@ def _by_clusters(terms: Sequence[Scaled], qubits: int) -> tuple[float, float]:
     while True:
         clusters, left_over = _clusters.plan(terms, size)
         distinct = set(clusters)
-        if sum(cluster.cost for cluster in distinct) <= CLUSTER_COST or size <= 4:
+        excess = sum(cluster.cost for cluster in distinct) / CLUSTER_COST
+        if excess <= 1 or size <= SMALLEST_CLUSTER:
             break
-        size -= 1
+        # One qubit less is eight times cheaper for each cluster, though there are more of them.
+        size = max(SMALLEST_CLUSTER, size - max(1, int(math.log(excess, 8))))
     known = {cluster: dense_extremes(cluster.terms, cluster.qubits) for cluster in distinct}
     lows = [known[cluster][0] for cluster in clusters]
     highs = [known[cluster][1] for cluster in clusters]
