@@ -1,4 +1,4 @@
-"""An operator times a state vector."""
+"""An operator times a state vector, by the engine."""
 
 from __future__ import annotations
 
@@ -6,6 +6,8 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import numpy.typing as npt
+
+from trueturn import _native, _threads
 
 if TYPE_CHECKING:
     from trueturn.operator import Operator
@@ -28,13 +30,9 @@ def operator_times(operator: Operator, vector: npt.NDArray[Any]) -> npt.NDArray[
 
     Notes
     -----
-    Each string gathers from one place: (P v)[j] = i^y (-1)^(bits shared by z and k) v[k] with k = j ^ x and
-    y the number of Y factors.
+    With y the number of Y factors, (P v)[j] = i^y (-1)^(bits shared by z and k) v[k] at k = j ^ x.
     """
-    from trueturn._matrices import diagonals
-
-    index = np.arange(1 << operator.qubits)
-    result = np.zeros(index.size, dtype=np.complex128)
-    for x, entries in diagonals(operator.x_masks, operator.z_masks, operator.coefficients, operator.qubits):
-        result += (entries * vector)[index ^ x]
-    return result
+    source = np.array(vector, dtype=np.complex128, order="C")
+    image = np.empty_like(source)
+    _native.apply_terms(operator._terms, source, image, _threads.resolve(None))
+    return image
