@@ -114,23 +114,17 @@ class _Searcher:
     def _narrow(self, failing: int, passing: int) -> int:
         """Return the end of the interval (failing, passing] where a failing count is followed by a passing one."""
         failing = max((c for c in self.trials if failing <= c < passing and not self.meets(c)), default=failing)
+        streak, side = 0, True
         while passing - failing > 1:
-            guess = self._interpolated(failing, passing)
-            stride = 1
-            upward = not self.meets(guess)
-            # Gallop away from the guess: the interpolation is usually right to one or two steps.
-            while True:
-                if upward:
-                    failing = max(failing, guess)
-                    guess += stride
-                else:
-                    passing = min(passing, guess)
-                    guess -= stride
-                if not failing < guess < passing or self.meets(guess) == upward:
-                    break
-                stride *= 2
-            if failing < guess < passing:
-                failing, passing = (failing, guess) if self.meets(guess) else (guess, passing)
+            # The interpolation is usually right to one or two steps. Repeated results on one side push past it, by 1, 2,
+            # 4, …, so that the bracket closes from both ends.
+            push = 2 ** (streak - 1) if streak else 0
+            guess = self._interpolated(failing, passing) + (-push if side else push)
+            guess = min(max(guess, failing + 1), passing - 1)
+            meets = self.meets(guess)
+            failing, passing = (failing, guess) if meets else (guess, passing)
+            streak = streak + 1 if meets == side else 1
+            side = meets
         return passing
 
     def _interpolated(self, failing: int, passing: int) -> int:
