@@ -4,16 +4,17 @@ use num_complex::Complex;
 
 use crate::error::{Error, Result};
 use crate::kernel::Isa;
-use crate::kernel::lanes::{GROUP_BITS, LANES, Mix, Real};
-use crate::kernel::shared::{Shared, as_groups_mut};
-use crate::passes::{
-    BLOCK_BITS, COSET_BITS, FusedPass, LaneRotation, Pass, PhasePass, block_rotation, high_phase, plan,
-};
+use crate::kernel::lanes::{GROUP_BITS, LANES, LaneRotation, Multiply, Real, Rotate};
+use crate::kernel::shared::{Shared, as_groups, as_groups_mut};
+use crate::passes::{BLOCK_BITS, COSET_BITS, CosetRotation, FusedPass, HighPhase, Pass, PhasePass, high_phase, plan};
 use crate::rotations::{Block, Body, Rotations};
 use crate::team::{Control, Member, Run, run, workers_for};
 
 /// Groups that a worker handles between two looks at the flags.
 const PIECE: usize = 1 << 13;
+
+/// Groups of a coset that stay in first-level cache: 2^10 amplitudes.
+const INNER_GROUPS: usize = 1 << (10 - GROUP_BITS);
 
 /// A planned block.
 enum Planned<T> {
@@ -72,7 +73,7 @@ pub fn evolve<T: Real>(
 /// exp(i phase) as a pass, or None for phase 0.
 fn global_phase<T: Real>(phase: f64) -> Option<PhasePass<T>> {
     let (sin, cos) = libm::sincos(phase);
-    let everywhere = crate::passes::HighPhase { z: 0, cos_sin: (cos, -sin) };
+    let everywhere = HighPhase { z: 0, cos_sin: (cos, -sin) };
     (phase != 0.0).then(|| PhasePass { table: vec![], high: vec![everywhere], crossing: vec![] })
 }
 
@@ -136,9 +137,8 @@ impl<T: Real> Worker<'_, T> {
     }
 
     fn single(&self, rotation: &LaneRotation<T>) -> Result<()> {
-        let LaneRotation { cos, string } = rotation;
-        self.member.each_piece(Mix::units(string, self.state.groups()), PIECE, |range| {
-            self.isa.run(Mix { state: self.state, range, keep: *cos, string, flip: 0 });
+        self.member.each_piece(rotation.units(self.state.groups()), PIECE, |range| {
+            self.isa.run(Rotate { state: self.state, range, rotation, flip: 0, other_angle: 0 });
         })
     }
 
@@ -155,8 +155,9 @@ impl<T: Real> Worker<'_, T> {
                 }
                 let block = Shared::over(amplitudes);
                 for (low, parts) in &phase.crossing {
-                    let LaneRotation { cos, string } = block_rotation::<T>(*low, high_phase(parts, high));
-                    self.isa.run(Mix { state: &block, range: 0..groups, keep: cos, string: &string, flip: 0 });
+                    let rotation = LaneRotation::diagonal(*low, high_phase(parts, high));
+                    let range = 0..groups;
+                    self.isa.run(Rotate { state: &block, range, rotation: &rotation, flip: 0, other_angle: 0 });
                 }
             }
         })
@@ -186,13 +187,23 @@ impl<T: Real> Worker<'_, T> {
     }
 }
 
+/// Applies the rotations of a pass to one coset, as many in a row as possible to one first-level block after the other.
 fn rotate_coset<T: Real>(isa: Isa, block: &mut [[T; LANES]], pass: &FusedPass<T>, rep: usize) {
     let groups = block.len();
+    let inner = groups.min(INNER_GROUPS);
     let block = Shared::over(block);
-    for (LaneRotation { cos, string }, z) in &pass.rotations {
-        let flip = (rep as u64 & z).count_ones() as usize & 1;
-        let range = 0..Mix::units(string, groups);
-        isa.run(Mix { state: &block, range, keep: *cos, string, flip });
+    let parity = |mask: usize| (rep & mask).count_ones() as usize & 1;
+    let apply = |CosetRotation { rotation, z, d }: &CosetRotation<T>, part: usize, parts: usize| {
+        let units = rotation.units(groups) / parts;
+        let range = part * units..(part + 1) * units;
+        isa.run(Rotate { state: &block, range, rotation, flip: parity(*z), other_angle: parity(*d) });
+    };
+    let stays = |member: &CosetRotation<T>| member.rotation.stays_within(inner);
+    for run in pass.rotations.chunk_by(|one, next| stays(one) && stays(next)) {
+        let parts = if stays(&run[0]) { groups / inner } else { 1 };
+        for part in 0..parts {
+            run.iter().for_each(|member| apply(member, part, parts));
+        }
     }
 }
 
@@ -216,7 +227,7 @@ fn move_runs<T: Real>(
 /// Multiplies a block by a table of phases (or by 1 where it is empty) and by one phase.
 fn multiply<T: Real>(isa: Isa, block: &mut [[T; LANES]], table: &[Complex<T>], phase: Complex<f64>) {
     let phase = Complex::new(T::from_f64(phase.re), T::from_f64(phase.im));
-    isa.run(crate::kernel::lanes::Multiply { block, table: crate::kernel::shared::as_groups(table), phase });
+    isa.run(Multiply { block, table: as_groups(table), phase });
 }
 
 #[cfg(test)]
@@ -285,14 +296,14 @@ mod tests {
 
     #[test]
     fn every_instruction_set_gives_the_same_bits() {
-        let (list, start) = (random_list(15, 24, 5), random_state(15, 2));
+        let (list, start) = (random_list(14, 24, 5), random_state(14, 2));
         let lane_rotations = |isa: Isa| {
             let mut state = start.clone();
             let shared = Shared::new(&mut state);
             for pass in plan::<f64>(14, &list) {
-                if let Pass::Single(LaneRotation { cos, string }) = pass {
-                    let range = 0..Mix::units(&string, shared.groups());
-                    isa.run(Mix { state: &shared, range, keep: cos, string: &string, flip: 0 });
+                if let Pass::Single(rotation) = &pass {
+                    let range = 0..rotation.units(shared.groups());
+                    isa.run(Rotate { state: &shared, range, rotation, flip: 0, other_angle: 0 });
                 }
             }
             state

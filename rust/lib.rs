@@ -6,6 +6,7 @@
 //! | [`terms`] | real sums of strings: parsing, printing, sums, products, brackets |
 //! | [`rotations`] | a circuit: ordered rotations in repeated blocks, and a global phase |
 //! | [`cost`] | two-qubit gates and depth, without writing a circuit out |
+//! | [`operation`] | two commuting rotations with one x mask act as one |
 //! | [`passes`] | the planner: which rotations share one traversal of memory |
 //! | [`evolve`] | carries the passes out on a state vector |
 //! | [`action`] | H applied to a state, expectations, the Chebyshev recurrence |
@@ -22,6 +23,7 @@ pub mod cost;
 pub mod error;
 pub mod evolve;
 pub mod kernel;
+pub mod operation;
 pub mod passes;
 pub mod pauli;
 #[cfg(feature = "python")]

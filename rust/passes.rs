@@ -18,13 +18,16 @@
 //! share a pass with local masks 0b10 and 0b11, but Z_0 Z_1 stands between and anticommutes with X_2 X_0, so it does not
 //! move past it: three passes here.
 //!
+//! Before all that, commuting rotations about strings with one x mask join in pairs ([`crate::operation`]).
+//!
 //! The planner is greedy: it opens a pass with the first rotation that is left and takes every later one that fits and
 //! commutes with all that it skipped. Plans depend on the list and the number of qubits only, never on the machine, so
 //! results keep their bits. The rotations are never re-ordered otherwise.
 
 use num_complex::Complex;
 
-use crate::kernel::lanes::{Factor, GROUP_BITS, LaneString, Real};
+use crate::kernel::lanes::{LaneRotation, Real};
+use crate::operation::{Operation, joined};
 use crate::rotations::Rotation;
 
 /// Low bits of a block of a phase pass: 2^10 amplitudes stay in first-level cache.
@@ -38,6 +41,13 @@ const FUSE_FROM: u32 = 15;
 /// How many rotations a pass may skip before it is closed.
 const LOOK_AHEAD: usize = 192;
 
+/// An operation on masks of at most 64 bits, ready for the kernels.
+fn lane_rotation<T: Real>(operation: &Operation) -> LaneRotation<T> {
+    let string = operation.first.string;
+    let (x, z, d) = (string.x as u64, string.z as u64, operation.parity_mask() as u64);
+    LaneRotation::new(x, z, d, string.y_count(), operation.angles())
+}
+
 /// One traversal of the state vector.
 #[derive(Clone, Debug)]
 pub enum Pass<T> {
@@ -47,28 +57,6 @@ pub enum Pass<T> {
     Phase(PhasePass<T>),
     /// Several rotations on cosets.
     Fused(FusedPass<T>),
-}
-
-/// A rotation ready for the kernels.
-#[derive(Clone, Debug)]
-pub struct LaneRotation<T> {
-    /// The cosine.
-    pub cos: T,
-    /// -i sin θ times the string.
-    pub string: LaneString<T>,
-}
-
-impl<T: Real> LaneRotation<T> {
-    /// A rotation on masks of at most 64 bits.
-    fn new(x: u64, z: u64, y_count: u32, angle: f64) -> Self {
-        let (sin, cos) = libm::sincos(angle);
-        Self { cos: T::from_f64(cos), string: LaneString::new(x, z, Factor::Imaginary(-sin).times_i_power(y_count)) }
-    }
-
-    fn of(rotation: &Rotation) -> Self {
-        let string = rotation.string;
-        Self::new(string.x as u64, string.z as u64, string.y_count(), rotation.angle)
-    }
 }
 
 /// A diagonal string on high bits: its mask above the block, and cos θ, sin θ.
@@ -91,13 +79,25 @@ pub struct PhasePass<T> {
     pub crossing: Vec<(u64, Vec<HighPhase>)>,
 }
 
+/// A rotation in the coordinates of a coset, with the masks whose parity over the representative turns its sign and its
+/// angle.
+#[derive(Clone, Debug)]
+pub struct CosetRotation<T> {
+    /// The rotation on local bits.
+    pub rotation: LaneRotation<T>,
+    /// Mask of the sign.
+    pub z: usize,
+    /// Mask of the angle.
+    pub d: usize,
+}
+
 /// Rotations that act inside cosets.
 #[derive(Clone, Debug)]
 pub struct FusedPass<T> {
     /// Reduced basis with ascending pivots; the first [`RUN_BITS`] are unit vectors.
     basis: Vec<u64>,
-    /// The rotations in local coordinates, each with its z mask over the whole index.
-    pub rotations: Vec<(LaneRotation<T>, u64)>,
+    /// The rotations in local coordinates.
+    pub rotations: Vec<CosetRotation<T>>,
     /// Where run `i` of a coset starts, relative to its representative.
     pub offsets: Vec<usize>,
     /// Whether cosets are contiguous blocks, so that no gathering is needed.
@@ -125,6 +125,7 @@ impl<T> FusedPass<T> {
 
 /// Plans a list on `qubits` qubits. Every rotation of the list ends up in exactly one pass.
 pub fn plan<T: Real>(qubits: u32, list: &[Rotation]) -> Vec<Pass<T>> {
+    let list = &joined(list)[..];
     let mut passes = Vec::new();
     let mut taken = vec![false; list.len()];
     let mut first = 0;
@@ -134,35 +135,35 @@ pub fn plan<T: Real>(qubits: u32, list: &[Rotation]) -> Vec<Pass<T>> {
             continue;
         }
         let opening = &list[first];
-        let gathered = if opening.string.x == 0 && qubits > BLOCK_BITS {
-            gather(list, &taken, first, |rotation| rotation.string.x == 0)
-        } else if opening.string.x != 0 && qubits >= FUSE_FROM {
+        let gathered = if opening.x() == 0 && qubits > BLOCK_BITS {
+            gather(list, &taken, first, |operation| operation.x() == 0)
+        } else if opening.x() != 0 && qubits >= FUSE_FROM {
             let mut span = Span::of_low_bits(RUN_BITS);
-            gather(list, &taken, first, |r| r.string.x != 0 && span.admit(r.string.x as u64, COSET_BITS))
+            gather(list, &taken, first, |o| o.x() != 0 && span.admit(o.x() as u64, COSET_BITS))
         } else {
             vec![first]
         };
         gathered.iter().for_each(|&place| taken[place] = true);
-        let members: Vec<&Rotation> = gathered.iter().map(|&place| &list[place]).collect();
+        let members: Vec<&Operation> = gathered.iter().map(|&place| &list[place]).collect();
         passes.push(match members.as_slice() {
-            [one] => Pass::Single(LaneRotation::of(one)),
-            _ if opening.string.x == 0 => Pass::Phase(phase_pass(&members)),
+            [one] => Pass::Single(lane_rotation(one)),
+            _ if opening.x() == 0 => Pass::Phase(phase_pass(&members)),
             _ => Pass::Fused(fused_pass(&members)),
         });
     }
     passes
 }
 
-/// Places, from `first` on, of rotations that `fits` admits and that commute with all that were skipped before them.
-fn gather(list: &[Rotation], taken: &[bool], first: usize, mut fits: impl FnMut(&Rotation) -> bool) -> Vec<usize> {
+/// Places, from `first` on, of operations that `fits` admits and that commute with all that were skipped before them.
+fn gather(list: &[Operation], taken: &[bool], first: usize, mut fits: impl FnMut(&Operation) -> bool) -> Vec<usize> {
     let mut members = Vec::new();
-    let mut skipped: Vec<&Rotation> = Vec::new();
+    let mut skipped: Vec<&Operation> = Vec::new();
     for place in (first..list.len()).filter(|&place| !taken[place]) {
-        let rotation = &list[place];
-        if skipped.iter().all(|s| s.string.commutes_with(rotation.string)) && fits(rotation) {
+        let operation = &list[place];
+        if skipped.iter().all(|s| s.commutes_with_all_of(operation)) && fits(operation) {
             members.push(place);
         } else {
-            skipped.push(rotation);
+            skipped.push(operation);
             if skipped.len() == LOOK_AHEAD {
                 break;
             }
@@ -215,24 +216,22 @@ impl Span {
     }
 }
 
-fn fused_pass<T: Real>(members: &[&Rotation]) -> FusedPass<T> {
+fn fused_pass<T: Real>(members: &[&Operation]) -> FusedPass<T> {
     let mut span = Span::of_low_bits(RUN_BITS);
-    for rotation in members {
-        span.admit(rotation.string.x as u64, COSET_BITS);
+    for operation in members {
+        span.admit(operation.x() as u64, COSET_BITS);
     }
     let basis = span.filled(COSET_BITS);
-    let rotations = members
-        .iter()
-        .map(|rotation| {
-            let (x, z) = (rotation.string.x as u64, rotation.string.z as u64);
-            let (mut local_x, mut local_z) = (0u64, 0u64);
-            for (i, v) in basis.iter().enumerate() {
-                local_x |= (x >> v.ilog2() & 1) << i;
-                local_z |= u64::from((v & z).count_ones() & 1) << i;
-            }
-            (LaneRotation::new(local_x, local_z, rotation.string.y_count(), rotation.angle), z)
-        })
-        .collect();
+    let at_pivots = |x: u64| basis.iter().enumerate().fold(0, |m, (i, v)| m | (x >> v.ilog2() & 1) << i);
+    let by_parity = |z: u64| basis.iter().enumerate().fold(0, |m, (i, v)| m | u64::from((v & z).count_ones() & 1) << i);
+    let local = |operation: &&Operation| {
+        let string = operation.first.string;
+        let (z, d) = (string.z as u64, operation.parity_mask() as u64);
+        let x = at_pivots(string.x as u64);
+        let rotation = LaneRotation::new(x, by_parity(z), by_parity(d), string.y_count(), operation.angles());
+        CosetRotation { rotation, z: z as usize, d: d as usize }
+    };
+    let rotations = members.iter().map(local).collect();
     let upper = &basis[RUN_BITS as usize..];
     let offsets = (0..1usize << upper.len())
         .map(|run| upper.iter().enumerate().fold(0, |at, (i, v)| if run >> i & 1 == 1 { at ^ *v as usize } else { at }))
@@ -241,12 +240,12 @@ fn fused_pass<T: Real>(members: &[&Rotation]) -> FusedPass<T> {
     FusedPass { basis, rotations, offsets, contiguous }
 }
 
-fn phase_pass<T: Real>(members: &[&Rotation]) -> PhasePass<T> {
+fn phase_pass<T: Real>(members: &[&Operation]) -> PhasePass<T> {
     let low_mask = (1u64 << BLOCK_BITS) - 1;
     let mut table: Vec<Complex<f64>> = Vec::new();
     let mut high = Vec::new();
     let mut crossing: Vec<(u64, Vec<HighPhase>)> = Vec::new();
-    for rotation in members {
+    for Operation { first: rotation, .. } in members {
         let z = rotation.string.z as u64;
         let (sin, cos) = libm::sincos(rotation.angle);
         let part = HighPhase { z: (z >> BLOCK_BITS) as usize, cos_sin: (cos, sin) };
@@ -277,12 +276,6 @@ fn phase_of(cos: f64, sin: f64, masked: usize) -> Complex<f64> {
 pub fn high_phase(parts: &[HighPhase], block: usize) -> Complex<f64> {
     let one = |part: &HighPhase| phase_of(part.cos_sin.0, part.cos_sin.1, block & part.z);
     parts.iter().map(one).reduce(|product, phase| product * phase).unwrap_or(Complex::new(1.0, 0.0))
-}
-
-/// exp(-i θ σ(index)) for a low mask, as a diagonal rotation of a block: `phase` is its value where σ = +1.
-pub fn block_rotation<T: Real>(low: u64, phase: Complex<f64>) -> LaneRotation<T> {
-    debug_assert!(low >> BLOCK_BITS == 0 && BLOCK_BITS > GROUP_BITS);
-    LaneRotation { cos: T::from_f64(phase.re), string: LaneString::new(0, low, Factor::Imaginary(phase.im)) }
 }
 
 #[cfg(test)]
