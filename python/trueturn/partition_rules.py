@@ -1,0 +1,98 @@
+"""Partition rules: which terms share a part, and the order of the parts.
+
+A rule takes an operator without identity and returns the numbers of the terms of each part, every term once.
+To add one: a function, an entry in `RULES`, and a line in the docstring of `Partition.of`.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterable, Sequence
+
+import numpy as np
+
+from trueturn.edge_colouring import colour_edges
+from trueturn.errors import PartitionError
+from trueturn.operator import Operator
+
+__all__ = ["RULES", "Groups", "string_text", "subset"]
+
+Groups = list[list[int]]
+
+
+def _each_alone(terms: Operator) -> Groups:
+    return [[term] for term in range(len(terms))]
+
+
+def _largest_first(terms: Operator) -> Groups:
+    return [[int(term)] for term in np.argsort(-np.abs(terms.coefficients), kind="stable")]
+
+
+def _commuting(terms: Operator) -> Groups:
+    return _commuting_among(terms, range(len(terms)))
+
+
+def _commuting_among(terms: Operator, chosen: Iterable[int]) -> Groups:
+    """Greedy colouring: each chosen term joins the first group with all of which it commutes."""
+    numbers = list(chosen)
+    groups: dict[int, list[int]] = {}
+    for number, group in zip(numbers, subset(terms, numbers)._terms.commuting_groups().tolist(), strict=True):
+        groups.setdefault(group, []).append(number)
+    return [groups[group] for group in sorted(groups)]
+
+
+def _axis(terms: Operator) -> Groups:
+    pure: dict[str, list[int]] = {"X": [], "Y": [], "Z": []}
+    mixed: list[int] = []
+    for term, (x, z) in enumerate(zip(terms.x_masks, terms.z_masks, strict=True)):
+        letter = "X" if z == 0 else "Y" if x == z else "Z" if x == 0 else None
+        (mixed if letter is None else pure[letter]).append(term)
+    return [group for group in pure.values() if group] + _commuting_among(terms, mixed)
+
+
+def _bond(terms: Operator) -> Groups:
+    bonds: dict[tuple[int, int], list[int]] = {}
+    fields: list[int] = []
+    for term, (x, z) in enumerate(zip(terms.x_masks, terms.z_masks, strict=True)):
+        support = tuple(qubit for qubit in range(terms.qubits) if (x | z) >> qubit & 1)
+        if len(support) > 2:
+            raise PartitionError(
+                f"rule: 'bond' takes one or two qubits a term ({string_text(x, z)} acts on {len(support)}); "
+                "use 'commuting', 'axis', 'single' or 'magnitude'",
+                argument="rule",
+                choices=("commuting", "axis", "single", "magnitude"),
+            )
+        if len(support) == 2:
+            bonds.setdefault((support[0], support[1]), []).append(term)
+        else:
+            fields.append(term)
+    of_colour: dict[int, list[int]] = {}
+    for colour, members in zip(colour_edges(list(bonds)), bonds.values(), strict=True):
+        of_colour.setdefault(colour, []).extend(members)
+    groups: Groups = []
+    for colour in sorted(of_colour):
+        groups += _commuting_among(terms, sorted(of_colour[colour]))
+    return groups + _commuting_among(terms, fields)
+
+
+RULES: dict[str, Callable[[Operator], Groups]] = {
+    "single": _each_alone,
+    "commuting": _commuting,
+    "bond": _bond,
+    "axis": _axis,
+    "magnitude": _largest_first,
+}
+
+
+def subset(terms: Operator, chosen: Sequence[int]) -> Operator:
+    """Pick terms by number, in the order named."""
+    numbers = np.asarray(chosen, dtype=np.intp)
+    return Operator.from_masks(
+        terms.x_masks[numbers], terms.z_masks[numbers], terms.coefficients[numbers], terms.qubits
+    )
+
+
+def string_text(x: int, z: int) -> str:
+    """The factors of a string, in the written notation."""
+    qubits = range((x | z).bit_length())
+    letters = ("I", "X", "Z", "Y")
+    return " ".join(f"{letters[(x >> q & 1) + 2 * (z >> q & 1)]}_{q}" for q in qubits if (x | z) >> q & 1)
