@@ -12,7 +12,7 @@ use std::sync::atomic::{AtomicBool, AtomicU8, AtomicU64, AtomicUsize, Ordering};
 use crate::error::{Error, Result};
 
 /// Amplitudes below which a run uses one worker, whatever was asked.
-pub const SERIAL_BELOW: usize = 1 << 14;
+pub const SERIAL_BELOW: usize = 1 << 16;
 
 const CONTINUE: u8 = 0;
 const STOP_AFTER_PASS: u8 = 1;

@@ -86,8 +86,8 @@ def test_sums_have_equal_bits_for_any_number_of_threads():
 
 
 def test_references_have_equal_bits_for_any_number_of_threads():
-    chain = tt.model.heisenberg(tt.lattice.chain(15), 1.0, z=0.3)
-    start = tt.State.product("01" * 7 + "+")
+    chain = tt.model.heisenberg(tt.lattice.chain(16), 1.0, z=0.3)
+    start = tt.State.product("01" * 7 + "++")
     hashes = set()
     for threads in (1, 2, 3):
         kept = tt.reference(chain, start, [0.4], threads=threads).states[0]
@@ -115,8 +115,8 @@ def test_the_lock_is_released_while_the_engine_works():
 
 
 def test_thread_counts_come_from_the_call_then_the_block_then_the_environment(monkeypatch):
-    state = tt.State.random(15, 2)
-    circuit = tt.Rotations([1], [0], [0.1], 15)
+    state = tt.State.random(16, 2)
+    circuit = tt.Rotations([1], [0], [0.1], 16)
     monkeypatch.setenv("TRUETURN_NUM_THREADS", "3")
     state.apply(circuit)
     assert state.last_run.workers == 3

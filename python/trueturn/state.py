@@ -247,7 +247,7 @@ class State:
         rotations : Rotations
             On as many qubits as the state.
         threads : int, optional
-            Default: `trueturn.threads`, then ``TRUETURN_NUM_THREADS``, then all processors. States below 2**14
+            Default: `trueturn.threads`, then ``TRUETURN_NUM_THREADS``, then all processors. States below 2**16
             amplitudes use one thread whatever is asked.
         progress : callable, optional
             Called with (finished passes, passes in all) about forty times a second at most; an exception of its own
