@@ -6,6 +6,7 @@ import json
 import os
 import subprocess
 import sys
+from importlib import import_module
 from pathlib import Path
 
 import pytest
@@ -191,7 +192,7 @@ def test_a_disk_that_is_full_is_one_line_after_the_table(
     def fail(*_):
         raise OSError(28, "No space left on device")
 
-    monkeypatch.setattr("trueturn.audit.report.json_text", fail)
+    monkeypatch.setattr(import_module("trueturn.audit.report"), "json_text", fail)
     assert cli.run(["audit", str(job), "--into", str(tmp_path / "new")]) == 2
     out, err = capsys.readouterr()
     assert "MEETS" in out and "No space left on device" in err and err.count("\n") == 1

@@ -406,7 +406,7 @@ def test_an_error_from_below_stays_attached(read) -> None:
 
 
 def test_a_rule_that_does_not_fit_is_refused_before_the_run(read) -> None:
-    with pytest.raises(JobError, match=r"candidate\[1\].rule: .*at most two qubits"):
+    with pytest.raises(JobError, match=r"candidate\[1\].rule: .*bond.* takes one or two qubits a term"):
         read(
             (SYSTEM, 'terms = "1.0 Z_0 Z_1 Z_2"'),
             ('product = "0+"', 'pattern = "0"'),

@@ -7,6 +7,7 @@ import json
 import math
 import re
 from html.parser import HTMLParser
+from importlib import import_module
 from pathlib import Path
 from xml.etree import ElementTree
 
@@ -297,7 +298,7 @@ def test_a_failure_while_writing_leaves_the_old_folder(
     def fail(document) -> str:
         raise OSError(28, "No space left on device")
 
-    monkeypatch.setattr("trueturn.audit.report.json_text", fail)
+    monkeypatch.setattr(import_module("trueturn.audit.report"), "json_text", fail)
     with pytest.raises(OSError, match="No space left"):
         sample_audit(title="second").write(folder)
     assert json.loads((folder / "audit.json").read_text())["title"] == "first"
