@@ -58,6 +58,12 @@ fn circuits(qubits: u32) -> Vec<(&'static str, Vec<Rotation>)> {
     let list = |strings: Vec<(u128, u128)>| strings.into_iter().flat_map(|(x, z)| one(x, z)).collect::<Vec<_>>();
     let heisenberg: Vec<(u128, u128)> =
         [(1, 0), (1, 1), (0, 1)].iter().flat_map(|(x, z)| ring.iter().map(move |bond| (x * bond, z * bond))).collect();
+    let bonds: Vec<(u128, u128)> = ring
+        .iter()
+        .step_by(2)
+        .chain(ring.iter().skip(1).step_by(2))
+        .flat_map(|&bond| [(bond, 0), (bond, bond), (0, bond)])
+        .collect();
     let mut strang = heisenberg.clone();
     strang.extend(heisenberg[..2 * ring.len()].iter().rev());
     vec![
@@ -72,5 +78,6 @@ fn circuits(qubits: u32) -> Vec<(&'static str, Vec<Rotation>)> {
         ("ring of ZZ", list(ring.iter().map(|&bond| (0, bond)).collect())),
         ("Heisenberg ring, Lie step", list(heisenberg)),
         ("Heisenberg ring, Strang step", list(strang)),
+        ("the Lie step bond by bond", list(bonds)),
     ]
 }

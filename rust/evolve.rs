@@ -4,8 +4,8 @@ use num_complex::Complex;
 
 use crate::error::{Error, Result};
 use crate::kernel::Isa;
-use crate::kernel::lanes::{GROUP_BITS, LANES, LaneRotation, Multiply, Real, Rotate};
-use crate::kernel::shared::{Shared, as_groups, as_groups_mut};
+use crate::kernel::lanes::{GROUP_BITS, LANES, LaneFactors, LaneRotation, Multiply, Real, Rotate};
+use crate::kernel::shared::{Shared, as_groups_mut};
 use crate::passes::{BLOCK_BITS, COSET_BITS, CosetRotation, FusedPass, HighPhase, Pass, PhasePass, high_phase, plan};
 use crate::rotations::{Block, Body, Rotations};
 use crate::team::{Control, Member, Run, run, workers_for};
@@ -151,7 +151,9 @@ impl<T: Real> Worker<'_, T> {
                 let amplitudes = unsafe { self.state.groups_mut(block * groups, groups) };
                 let high = block << bits >> BLOCK_BITS;
                 if !phase.high.is_empty() || !phase.table.is_empty() {
-                    multiply(self.isa, amplitudes, &phase.table, high_phase(&phase.high, high));
+                    let all = high_phase(&phase.high, high);
+                    let all = LaneFactors::new(|_| all);
+                    self.isa.run(Multiply { block: &mut *amplitudes, table: &phase.table, all });
                 }
                 let block = Shared::over(amplitudes);
                 for (low, parts) in &phase.crossing {
@@ -222,12 +224,6 @@ fn move_runs<T: Real>(
         let run = unsafe { state.groups_mut((rep ^ offset) >> GROUP_BITS, run_groups) };
         copy(run, own);
     }
-}
-
-/// Multiplies a block by a table of phases (or by 1 where it is empty) and by one phase.
-fn multiply<T: Real>(isa: Isa, block: &mut [[T; LANES]], table: &[Complex<T>], phase: Complex<f64>) {
-    let phase = Complex::new(T::from_f64(phase.re), T::from_f64(phase.im));
-    isa.run(Multiply { block, table: as_groups(table), phase });
 }
 
 #[cfg(test)]

@@ -26,12 +26,12 @@
 
 use num_complex::Complex;
 
-use crate::kernel::lanes::{LaneRotation, Real};
+use crate::kernel::lanes::{GROUP_BITS, LaneFactors, LaneRotation, Real};
 use crate::operation::{Operation, joined};
 use crate::rotations::Rotation;
 
-/// Low bits of a block of a phase pass: 2^10 amplitudes stay in first-level cache.
-pub const BLOCK_BITS: u32 = 10;
+/// Low bits of a block of a phase pass: 2^9 amplitudes and their factors stay in first-level cache together.
+pub const BLOCK_BITS: u32 = 9;
 /// Dimension of a coset: 2^12 amplitudes stay in second-level cache.
 pub const COSET_BITS: u32 = 12;
 /// Lowest bits that every coset contains, so that it is read in runs of 32 amplitudes.
@@ -72,7 +72,7 @@ pub struct HighPhase {
 #[derive(Clone, Debug)]
 pub struct PhasePass<T> {
     /// Phases of the strings on low bits alone, empty where there are none.
-    pub table: Vec<Complex<T>>,
+    pub table: Vec<LaneFactors<T>>,
     /// Strings on high bits alone.
     pub high: Vec<HighPhase>,
     /// Strings on both, by low mask.
@@ -263,8 +263,8 @@ fn phase_pass<T: Real>(members: &[&Operation]) -> PhasePass<T> {
             },
         }
     }
-    let round = |phase: &Complex<f64>| Complex::new(T::from_f64(phase.re), T::from_f64(phase.im));
-    PhasePass { table: table.iter().map(round).collect(), high, crossing }
+    let table = table.chunks_exact(1 << GROUP_BITS).map(|phases| LaneFactors::new(|place| phases[place])).collect();
+    PhasePass { table, high, crossing }
 }
 
 /// exp(-i θ σ) where σ is the sign of the masked index.
@@ -300,7 +300,9 @@ mod tests {
     fn diagonal_strings_share_a_pass_and_do_not_move_past_what_they_anticommute_with() {
         let list = [rotation(0, 0b11), rotation(1 << 12, 0), rotation(0, 0b110), rotation(0, 3 << 12)];
         let passes = plan::<f64>(14, &list);
-        assert!(matches!(&passes[0], Pass::Phase(pass) if pass.table.len() == 1 << BLOCK_BITS && pass.high.is_empty()));
+        assert!(
+            matches!(&passes[0], Pass::Phase(pass) if pass.table.len() == 1 << (BLOCK_BITS - GROUP_BITS) && pass.high.is_empty())
+        );
         assert_eq!(passes.len(), 3);
     }
 
