@@ -220,9 +220,8 @@ def _resigned(certificate: Certificate, sign: float, asked: Sequence[float]) -> 
 
 
 def _times(times: float | Iterable[float]) -> list[float]:
-    given = [times] if isinstance(times, (int, float)) else list(times)
     try:
-        found = [float(time) for time in given]
+        found = [float(time) for time in times] if hasattr(times, "__iter__") and np.ndim(times) else [float(times)]
     except (TypeError, ValueError):
         raise ArgumentError(f"times: not numbers ({times!r}); give finite numbers", argument="times", value=times) from None
     if not found:

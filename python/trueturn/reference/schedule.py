@@ -154,11 +154,12 @@ def _drafts(
     operator: Operator, interval: tuple[float, float], times: Sequence[float], tolerance: float, group: int
 ) -> Iterator[_Draft]:
     low, high = interval
-    centre, half = low + 0.5 * (high - low), 0.5 * (high - low)
+    half = 0.5 * high - 0.5 * low
+    centre = low + half
     # Any centre and half-width will do as long as the interval stays inside: pad for their own rounding.
     half = half * (1.0 + 4.0 * UNIT) + 4.0 * UNIT * abs(centre)
-    if half == 0.0:
-        half = UNIT
+    # A wider interval is as true, and 2 / half must not overflow.
+    half = max(half, 1e-307)
     for widening in _WIDENINGS:
         wide = half * (1.0 + widening)
         growth = math.inf if widening == 0.0 else 1.0 / math.sqrt(1.0 - (1.0 + widening) ** -2)
