@@ -21,6 +21,8 @@ Vector = npt.NDArray[np.complex128]
 Tick = Callable[[int, int], object]
 
 _DIMENSION = 24
+# Of the tolerance; the rest is for rounding.
+TRUNCATION_SHARE = 0.9
 
 
 def evolve(
@@ -62,7 +64,7 @@ def evolve(
         while now < target:
             basis, diagonal, off_diagonal = _lanczos(operator, vector / norm, dimension, threads)
             applications += len(diagonal)
-            length, bound = _step_length(off_diagonal, target - now, tolerance / last)
+            length, bound = _step_length(off_diagonal, target - now, TRUNCATION_SHARE * tolerance / last)
             if length < 1e-12 * last:
                 raise ToleranceError(
                     f"tolerance: too small for the Krylov method ({tolerance:g}); use the Chebyshev method",
