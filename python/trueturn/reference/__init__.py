@@ -249,7 +249,8 @@ def _times(times: float | Iterable[float]) -> list[float]:
     try:
         if isinstance(times, str):
             raise TypeError
-        many = list(times) if isinstance(times, Iterable) and getattr(times, "ndim", 1) else [times]
+        single = not isinstance(times, Iterable) or getattr(times, "ndim", None) == 0
+        many: list[Any] = [times] if single else list(times)  # type: ignore[arg-type]
         found = [float(time) for time in many]
     except (TypeError, ValueError):
         raise ArgumentError(f"times: not numbers ({times!r}); give finite numbers", argument="times", value=times) from None
