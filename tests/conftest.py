@@ -17,6 +17,19 @@ hypothesis.settings.register_profile("dev", deadline=None, max_examples=60)
 hypothesis.settings.register_profile("ci", deadline=None, max_examples=150, derandomize=True, print_blob=True)
 hypothesis.settings.load_profile(os.environ.get("TRUETURN_HYPOTHESIS", "dev"))
 
+
+def pytest_addoption(parser):
+    parser.addoption("--heavy", action="store_true", help="run the tests marked heavy too")
+
+
+def pytest_collection_modifyitems(config, items):
+    if config.getoption("--heavy") or "heavy" in config.getoption("-m"):
+        return
+    for item in items:
+        if "heavy" in item.keywords:
+            item.add_marker(pytest.mark.skip(reason="heavy; run with --heavy"))
+
+
 PUBLISHED = Path(__file__).parent / "published"
 
 

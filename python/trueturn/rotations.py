@@ -138,10 +138,10 @@ class Rotations:
         RotationError
             `k` is not a whole number from 0 to 2**63.
         """
-        whole = not isinstance(k, bool) and hasattr(k, "__index__")
-        if not whole or not 0 <= _operator.index(k) <= 2**63:
+        count = _whole(k)
+        if count is None or not 0 <= count <= 2**63:
             raise RotationError(f"k: not a repeat count ({k!r}); give a whole number, 0 or more", argument="k")
-        return Rotations._wrap(self._native.times(_operator.index(k)))
+        return Rotations._wrap(self._native.times(count))
 
     def __add__(self, other: Rotations) -> Rotations:
         """Return this circuit followed by the other; nothing merges at the seam."""
@@ -234,10 +234,12 @@ def _masks(argument: str, masks: Iterable[int]) -> list[int]:
 
 def _angles(angles: Sequence[float] | npt.NDArray[np.float64]) -> npt.NDArray[np.float64]:
     try:
+        if np.iscomplexobj(angles):
+            raise TypeError
         found = np.ascontiguousarray(angles, dtype=np.float64)
     except (TypeError, ValueError, OverflowError):
         raise RotationError("angles: not real numbers; give radians", argument="angles") from None
-    if found.ndim != 1 or np.iscomplexobj(angles):
+    if found.ndim != 1:
         raise RotationError(
             f"angles: not a list of real numbers (shape {found.shape}); give one angle per string", argument="angles"
         )
@@ -245,9 +247,19 @@ def _angles(angles: Sequence[float] | npt.NDArray[np.float64]) -> npt.NDArray[np
 
 
 def _qubits(qubits: int) -> int:
-    if isinstance(qubits, bool) or not hasattr(qubits, "__index__") or not 0 <= _operator.index(qubits) <= 128:
+    count = _whole(qubits)
+    if count is None or not 0 <= count <= 128:
         raise RotationError(f"qubits: not a number of qubits ({qubits!r}); give 0 to 128", argument="qubits")
-    return _operator.index(qubits)
+    return count
+
+
+def _whole(value: object) -> int | None:
+    if isinstance(value, bool):
+        return None
+    try:
+        return _operator.index(value)  # type: ignore[arg-type]
+    except TypeError:
+        return None
 
 
 def _number(argument: str, value: float) -> float:

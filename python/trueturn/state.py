@@ -290,7 +290,8 @@ class State:
         """
         operator = Operator.gather([(1.0, string)], qubits=self.qubits)
         factor = float(operator.coefficients[0])
-        self.apply(Rotations(operator.x_masks, operator.z_masks, [factor * float(angle)], self.qubits))
+        turn = Rotations(operator.x_masks, operator.z_masks, [angle], self.qubits)
+        self.apply(turn if factor > 0.0 else turn.inverse())
 
     def expectation(self, operator: Operator, *, threads: int | None = None) -> float:
         """Return <ψ|operator|ψ>; the state is not normalised first.
@@ -368,12 +369,16 @@ class State:
         Raises
         ------
         ArgumentError
-            `shots` or `seed` is not a whole number, 0 or more.
+            `shots` or `seed` is not a whole number, 0 or more; all amplitudes are 0.
         """
         generator = np.random.Generator(np.random.PCG64(_whole("seed", seed, 0)))
         draws = generator.random(_whole("shots", shots, 0))
         squares = _native.squared_norms(self.amplitudes, _threads.resolve(None))
         ends = np.cumsum(squares)
+        if not ends[-1] > 0.0:
+            raise ArgumentError(
+                f"state: nothing to draw from (squared norm {ends[-1]:g}); give it amplitudes", argument="state", value=0.0
+            )
         targets = draws * ends[-1]
         blocks = np.minimum(np.searchsorted(ends, targets, side="right"), ends.size - 1)
         size = self._array.size // squares.size if self._array.size >= squares.size else self._array.size

@@ -31,7 +31,8 @@ def tail_bound(x: float, degree: int) -> float:
         rho = 1.0 + excess
         return x * (rho - 1.0 / rho) / 2.0 - degree * math.log1p(excess) - log_rho_minus_one
 
-    found = minimize_scalar(logarithm, bounds=(-12.0, math.log(4.0 * (degree + 1) / x + 4.0)), method="bounded")
+    largest = min(700.0, math.log(4.0 * (degree + 1) / x + 4.0))
+    found = minimize_scalar(logarithm, bounds=(-12.0, largest), method="bounded")
     # The exponent is a difference of large numbers: pad it by their rounding.
     padded = float(found.fun) + 1e-13 * (x + degree + 10.0)
     return 2.0 * math.exp(min(padded, 700.0))

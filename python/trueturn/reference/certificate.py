@@ -59,9 +59,9 @@ def norm_bound(observable: Operator) -> float:
     return max(abs(low - constant), abs(high - constant))
 
 
-def expectation_shift(norm: float, distance: float) -> float:
-    """Return how far an expectation can move when a unit vector moves by `distance`: ‖O‖ (2δ + δ²)."""
-    return norm * distance * (2.0 + distance)
+def expectation_shift(norm: float, distance: float, length: float = 1.0) -> float:
+    """Return how far an expectation can move when a vector of this length moves by `distance`: ‖O‖ (2 ‖ψ‖ δ + δ²)."""
+    return norm * distance * (2.0 * length + distance)
 
 
 def expectation_rounding(observable: Operator, qubits: int) -> float:

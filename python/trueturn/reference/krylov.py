@@ -21,6 +21,8 @@ Vector = npt.NDArray[np.complex128]
 Tick = Callable[[int, int], object]
 
 _DIMENSION = 24
+# Of the tolerance; the rest is for rounding.
+TRUNCATION_SHARE = 0.9
 
 
 def evolve(
@@ -62,7 +64,11 @@ def evolve(
         while now < target:
             basis, diagonal, off_diagonal = _lanczos(operator, vector / norm, dimension, threads)
             applications += len(diagonal)
-            length, bound = _step_length(off_diagonal, target - now, tolerance / last)
+            if len(diagonal) < dimension or off_diagonal[-1] <= _floor(operator):
+                # The space is invariant up to a remainder, which acts all along.
+                length, bound = target - now, float(off_diagonal[-1]) * (target - now)
+            else:
+                length, bound = _step_length(off_diagonal, target - now, TRUNCATION_SHARE * tolerance / last)
             if length < 1e-12 * last:
                 raise ToleranceError(
                     f"tolerance: too small for the Krylov method ({tolerance:g}); use the Chebyshev method",
@@ -105,27 +111,29 @@ def _lanczos(
     basis[0] = unit
     image = np.empty_like(unit)
     diagonal, off_diagonal = [], []
-    floor = 64.0 * UNIT * max(operator.one_norm(), UNIT)
+    floor = _floor(operator)
     for k in range(dimension):
         _native.apply_terms(operator._terms, np.ascontiguousarray(basis[k]), image, threads)
         diagonal.append(float(np.vdot(basis[k], image).real))
         for _ in range(2):
             image -= basis[: k + 1].T @ (basis[: k + 1].conj() @ image)
         remainder = float(np.linalg.norm(image))
-        if remainder <= floor:
-            off_diagonal.append(0.0)
-            break
         off_diagonal.append(remainder)
+        if remainder <= floor:
+            break
         if k + 1 < dimension:
             basis[k + 1] = image / remainder
     return basis, np.array(diagonal), np.array(off_diagonal)
 
 
+def _floor(operator: Operator) -> float:
+    """Return the size of a remainder that is nothing but rounding."""
+    return 64.0 * UNIT * max(operator.one_norm(), UNIT)
+
+
 def _step_length(off_diagonal: npt.NDArray[np.float64], longest: float, rate: float) -> tuple[float, float]:
     """Return the longest step whose bound stays below `rate` times the step, and its bound."""
     m = len(off_diagonal)
-    if off_diagonal[-1] == 0.0:
-        return longest, 0.0
     log_product = float(np.log(off_diagonal).sum()) - math.lgamma(m + 1)
     if m == 1:
         return longest, min(2.0, math.exp(log_product) * longest)

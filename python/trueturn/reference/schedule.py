@@ -12,6 +12,7 @@ from __future__ import annotations
 import math
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, replace
+from functools import lru_cache
 
 import numpy as np
 
@@ -24,6 +25,8 @@ from trueturn.reference.certificate import UNIT
 __all__ = ["Expansion", "Schedule", "schedule"]
 
 _WIDENINGS = (0.0, 0.01, 0.04, 0.12)
+# λ times the length of the longest expansion: beyond it the overhead that longer ones save is below 2 %.
+_LONGEST = 2000.0
 # Start states may be off unit length by as much (complex64 ones; the bounds are linear in the norm).
 NORM_SLACK = 1.001
 
@@ -89,6 +92,9 @@ def schedule(
     ToleranceError
         No plan meets the tolerance in double precision; `achievable` is the best bound that was found.
     """
+    reach = _least_rounding(operator, interval, times[-1])
+    if reach > tolerance:
+        raise _refusal(tolerance, _far_bound(operator, interval, times[-1], reach))
     drafts = sorted(_drafts(operator, interval, times, tolerance, group), key=lambda draft: draft.total)
     fitting = sorted((draft for draft in drafts if draft.total <= tolerance), key=lambda draft: draft.applications)
     # A draft rounds lengths; the exact plan may miss the tolerance by a hair, and then the next draft is due.
@@ -96,13 +102,40 @@ def schedule(
         exact = draft.schedule(exact=True)
         if _total(exact) <= tolerance:
             return exact
-    achievable = _rounded_up(_total(drafts[0].schedule(exact=True)))
-    raise ToleranceError(
-        f"tolerance: below what double precision can certify for this evolution ({tolerance:g}); "
-        f"ask for {achievable:g} or more, or a shorter time",
+    raise _refusal(tolerance, _total(drafts[0].schedule(exact=True)))
+
+
+def _refusal(tolerance: float, bound: float) -> ToleranceError:
+    achievable = _rounded_up(bound) if bound < 1.0 else math.inf
+    remedy = f"ask for {achievable:g} or more, or a shorter time" if bound < 1.0 else "ask for a shorter time"
+    return ToleranceError(
+        f"tolerance: below what double precision can certify for this evolution ({tolerance:g}); {remedy}",
         tolerance=tolerance,
         achievable=achievable,
     )
+
+
+def _least_rounding(operator: Operator, interval: tuple[float, float], time: float) -> float:
+    """Return what any plan's rounding bound exceeds, so that hopeless requests are refused without planning.
+
+    Each recurrence counts at least `local` Σ k |a_k|, and x sin θ = |d/dθ exp(-ix cos θ)| ≤ Σ k |a_k| at every θ.
+    """
+    centre, half = _centred(interval)
+    return min(_local_error(operator, centre, half * (1.0 + w)) * half * time for w in _WIDENINGS)
+
+
+def _far_bound(operator: Operator, interval: tuple[float, float], time: float, reach: float) -> float:
+    """Return the bound of a plan of equal expansions to a time that is out of reach, from one of them."""
+    centre, half = _centred(interval)
+    totals = []
+    for widening in _WIDENINGS:
+        wide = half * (1.0 + widening)
+        local = _local_error(operator, centre, wide)
+        for parts in _segment_counts(wide * time):
+            cuts = ((0.0, (time / parts,)),)
+            one = _Draft(cuts, centre, wide, 0.05 * reach / parts, local, _growth(widening)).evaluated()
+            totals.append(math.expm1(min(parts * one.total, 700.0)))
+    return min(totals)
 
 
 def _total(plan: Schedule) -> float:
@@ -140,40 +173,62 @@ class _Draft:
         lengths = [self.half * (target - start) for target in targets]
         if not exact:
             # Equal up to rounding is equal enough here, and saves computing the Bessel functions anew.
-            lengths = [float(f"{length:.3g}") * 1.005 for length in lengths]
+            lengths = [_nearly(length) for length in lengths]
         degree = max(least_degree(x, self.allowed) for x in lengths)
         cut = tuple(NORM_SLACK * truncation(x, degree) for x in lengths)
         turns = [self.centre * (target - start) for target in targets]
+        if not exact:
+            turns = [_nearly(turn) for turn in turns]
         rounding = tuple(
             _rounding(x, degree, turn, self.local, self.growth) for x, turn in zip(lengths, turns, strict=True)
         )
         return Expansion(start, targets, degree, cut, rounding)
 
 
+def _nearly(value: float) -> float:
+    """Return a number of three digits, times 1.005: at least the given one."""
+    return float(f"{value:.3g}") * 1.005
+
+
 def _drafts(
     operator: Operator, interval: tuple[float, float], times: Sequence[float], tolerance: float, group: int
 ) -> Iterator[_Draft]:
-    low, high = interval
-    centre, half = low + 0.5 * (high - low), 0.5 * (high - low)
-    # Any centre and half-width will do as long as the interval stays inside: pad for their own rounding.
-    half = half * (1.0 + 4.0 * UNIT) + 4.0 * UNIT * abs(centre)
-    if half == 0.0:
-        half = UNIT
+    centre, half = _centred(interval)
     for widening in _WIDENINGS:
         wide = half * (1.0 + widening)
-        growth = math.inf if widening == 0.0 else 1.0 / math.sqrt(1.0 - (1.0 + widening) ** -2)
         local = _local_error(operator, centre, wide)
         for segments in _segment_counts(wide * times[-1]):
             cuts = tuple(_cuts(times, times[-1] / segments, group))
             for share in (0.5, 0.05):
                 allowed = share * tolerance / len(cuts)
-                yield _Draft(cuts, centre, wide, allowed, local, growth).evaluated()
+                yield _Draft(cuts, centre, wide, allowed, local, _growth(widening)).evaluated()
+
+
+def _growth(widening: float) -> float:
+    """Bound |U_m| on an interval that was widened by so much."""
+    return math.inf if widening == 0.0 else 1.0 / math.sqrt(1.0 - (1.0 + widening) ** -2)
+
+
+def _centred(interval: tuple[float, float]) -> tuple[float, float]:
+    """Return centre and half-width of an interval that holds the given one."""
+    low, high = interval
+    half = 0.5 * high - 0.5 * low
+    centre = low + half
+    # Any centre and half-width will do as long as the interval stays inside: pad for their own rounding.
+    half = half * (1.0 + 4.0 * UNIT) + 4.0 * UNIT * abs(centre)
+    # A wider interval is as true, and 2 / half must not overflow.
+    half = max(half, 1e-307)
+    return centre, half
 
 
 def _segment_counts(x: float) -> list[int]:
-    """Numbers of segments worth trying: segments with x below about 4 cost more than they save."""
-    most = max(1, math.ceil(x / 4.0))
-    counts = [1]
+    """Numbers of segments worth trying: segments with x below about 4 cost more than they save.
+
+    Of very many, the shortest are left out: planning would take longer than it saves.
+    """
+    least = max(1, math.ceil(x / _LONGEST))
+    most = max(least, min(max(4000, 32 * least), math.ceil(x / 4.0)))
+    counts = [least]
     while counts[-1] < most:
         counts.append(min(most, max(counts[-1] + 1, round(counts[-1] * 1.6))))
     return counts
@@ -202,8 +257,12 @@ def _local_error(operator: Operator, centre: float, half: float) -> float:
     return 1.05 * UNIT * (counted + scale * operator.one_norm() + 2.0 * abs(scale * centre) + 2.0)
 
 
+@lru_cache(maxsize=4096)
 def _rounding(x: float, degree: int, turn: float, local: float, growth: float) -> float:
-    """Bound what arithmetic adds to one sum: the recurrence, the coefficients, the additions, the final phase."""
+    """Bound what arithmetic adds to one sum: the recurrence, the coefficients, the additions, the final phase.
+
+    The argument x is a rounded product of a rounded difference: off by 2 u x, it turns the sum by as much at most.
+    """
     values = np.abs(bessel_values(x)[: degree + 1])
     values[1:] *= 2.0
     # Σ_{m < k} min(m + 1, growth) for k = 0 … degree.
@@ -212,4 +271,4 @@ def _rounding(x: float, degree: int, turn: float, local: float, growth: float) -
     before = np.cumsum(values)
     after = before[-1] - before
     partial = float(np.minimum(before, 1.0 + after).sum())
-    return 1.01 * (recurrence + UNIT * (2.0 * float(before[-1]) + partial + 5.0 + 3.0 * abs(turn)))
+    return 1.01 * (recurrence + UNIT * (2.0 * float(before[-1]) + partial + 5.0 + 3.0 * abs(turn) + 2.0 * x))
