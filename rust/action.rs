@@ -132,7 +132,7 @@ impl<T: Real> Action<T> {
     }
 
     fn tabulated(&self, strings: &[(u64, f64)]) -> Diagonal<T> {
-        let groups = 1usize << (self.qubits.max(GROUP_BITS).min(BLOCK_BITS) - GROUP_BITS);
+        let groups = 1usize << (self.qubits.clamp(GROUP_BITS, BLOCK_BITS) - GROUP_BITS);
         let value = |index: u64| -> f64 {
             strings.iter().map(|(z, c)| if (index & z).count_ones() & 1 == 1 { -c } else { *c }).sum()
         };
@@ -380,7 +380,7 @@ fn recur(
             let (read, write) = (&buffers[(term + 1) & 1], &buffers[term & 1]);
             let turned: Vec<LaneString<f64>> = coefficients
                 .iter()
-                .map(|list| LaneString::new(0, 0, Factor::Real(list[term]).times_i_power(3 * term as u32 & 3)))
+                .map(|list| LaneString::new(0, 0, Factor::Real(list[term]).times_i_power((3 * term as u32) & 3)))
                 .collect();
             each_block(action, isa, member, read, |block, image| {
                 let place = block * image.len();

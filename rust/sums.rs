@@ -147,7 +147,7 @@ mod tests {
             assert_eq!(overlap(&left, &right, 2).unwrap(), direct);
             let apart: f64 = left.iter().zip(&right).map(|(a, b)| (a - b).norm_sqr()).sum();
             assert_eq!(distance(&left, &right, Complex::new(1.0, 0.0), 1).unwrap(), apart.sqrt());
-            assert_eq!(pairwise(&squared_norms(&left, 2).unwrap()), left.iter().map(|a| a.norm_sqr()).sum());
+            assert_eq!(pairwise(&squared_norms(&left, 2).unwrap()), left.iter().map(|a| a.norm_sqr()).sum::<f64>());
         }
     }
 }

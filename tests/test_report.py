@@ -16,7 +16,7 @@ import pytest
 from sample_audit import TIMES, sample_audit
 from trueturn.audit.report import FILES, plain_table, require_replaceable, to_dict, write_folder
 from trueturn.audit.report.document import COLUMNS, SCHEMA, json_text
-from trueturn.audit.report.figures import count, interval, nearest, plain, upper
+from trueturn.audit.figures import count, interval, nearest, plain, upper
 from trueturn.audit.report.page import page
 from trueturn.audit.report.pictures import MOST_OBSERVABLES, gates_picture, steps_picture, time_picture
 from trueturn.errors import ArgumentError

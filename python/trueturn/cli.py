@@ -175,7 +175,7 @@ def say_reference(task: Job, found: Reference) -> None:
     from rich.table import Table
     from rich.text import Text
 
-    from trueturn.audit.report.figures import count, outward, plain, upper
+    from trueturn.audit.figures import count, outward, plain, upper
 
     proof = found.certificate
     table = Table(box=None, padding=(0, 2, 0, 0), header_style="dim")

@@ -55,8 +55,8 @@ class Rotations:
     2000
     """
 
-    __slots__ = ("_native",)
-    _native: _native.Rotations
+    __slots__ = ("_circuit",)
+    _circuit: _native.Rotations
 
     def __init__(
         self,
@@ -66,35 +66,35 @@ class Rotations:
         qubits: int,
         phase: float = 0.0,
     ) -> None:
-        self._native = _native.Rotations.from_list(
+        self._circuit = _native.Rotations.from_list(
             _masks("x", x), _masks("z", z), _angles(angles), _qubits(qubits), _number("phase", phase)
         )
 
     @classmethod
     def _wrap(cls, native: _native.Rotations) -> Rotations:
         made = cls.__new__(cls)
-        made._native = native
+        made._circuit = native
         return made
 
     @property
     def qubits(self) -> int:
         """Number of qubits."""
-        return self._native.qubits
+        return self._circuit.qubits
 
     @property
     def count(self) -> int:
         """Number of rotations, repeats included; stops at 2**64 - 1."""
-        return self._native.count
+        return self._circuit.count
 
     @property
     def phase(self) -> float:
         """Global phase in radians, not reduced."""
-        return self._native.phase
+        return self._circuit.phase
 
     @property
     def blocks(self) -> tuple[Block, ...]:
         """The blocks in order of time. A block's rotations carry phase 0; a plain list is one block."""
-        return tuple(Block(Rotations._wrap(body), repeat) for body, repeat in self._native.blocks())
+        return tuple(Block(Rotations._wrap(body), repeat) for body, repeat in self._circuit.blocks())
 
     @property
     def x_masks(self) -> npt.NDArray[np.object_]:
@@ -118,7 +118,7 @@ class Rotations:
         return self._written_out()[2]
 
     def _written_out(self) -> tuple[list[int], list[int], npt.NDArray[np.float64]]:
-        columns = self._native.written_out(WRITTEN_OUT_LIMIT)
+        columns = self._circuit.written_out(WRITTEN_OUT_LIMIT)
         if columns is None:
             raise RotationError(
                 f"rotations: too many to write out ({self.count}); use .blocks, which keeps repeats apart",
@@ -128,7 +128,7 @@ class Rotations:
 
     def inverse(self) -> Rotations:
         """Return the circuit that undoes this one."""
-        return Rotations._wrap(self._native.inverse())
+        return Rotations._wrap(self._circuit.inverse())
 
     def times(self, k: int) -> Rotations:
         """Return the circuit run `k` times over, at no cost in memory.
@@ -141,13 +141,13 @@ class Rotations:
         count = _whole(k)
         if count is None or not 0 <= count <= 2**63:
             raise RotationError(f"k: not a repeat count ({k!r}); give a whole number, 0 or more", argument="k")
-        return Rotations._wrap(self._native.times(count))
+        return Rotations._wrap(self._circuit.times(count))
 
     def __add__(self, other: Rotations) -> Rotations:
         """Return this circuit followed by the other; nothing merges at the seam."""
         if not isinstance(other, Rotations):
             return NotImplemented
-        return Rotations._wrap(self._native.then(other._native))
+        return Rotations._wrap(self._circuit.then(other._circuit))
 
     def angle_totals(self) -> Operator:
         """Return Σ θ P over all rotations: the first moment of the circuit.
@@ -160,7 +160,7 @@ class Rotations:
         Operator
         """
         totals: dict[tuple[int, int], float] = {}
-        for (x_masks, z_masks, angles), times in self._native.lists():
+        for (x_masks, z_masks, angles), times in self._circuit.lists():
             for x, z, angle in zip(x_masks, z_masks, angles, strict=True):
                 totals[x, z] = totals.get((x, z), 0.0) + times * float(angle)
         return Operator.from_masks(
@@ -174,14 +174,14 @@ class Rotations:
         ----------
         M. A. Nielsen, I. L. Chuang, Quantum Computation and Quantum Information (2000), section 4.7.3.
         """
-        return self._native.two_qubit_gates()
+        return self._circuit.two_qubit_gates()
 
     def depth(self) -> int:
         """Return the depth in two-qubit gates.
 
         A rotation of weight w holds its qubits for 2(w-1) gates in a row; it starts as soon as all of them are free.
         """
-        return self._native.two_qubit_depth()
+        return self._circuit.two_qubit_depth()
 
     def rounding_bound(self, angle_roundings: int = 0, unit: float = 2.0**-53) -> float:
         """Return a bound on the 2-norm error that rounding adds when a unit vector is evolved.
@@ -204,7 +204,7 @@ class Rotations:
         """
         double = 2.0**-53
         count = self.count + (1 if self.phase else 0)
-        angles = self._native.angle_sum() + abs(self.phase)
+        angles = self._circuit.angle_sum() + abs(self.phase)
         linear = 5.0 * unit * count + (angle_roundings + 1) * double * angles
         return float(linear * np.exp(min(linear, 600.0)))
 
@@ -213,7 +213,7 @@ class Rotations:
 
     def __eq__(self, other: object) -> bool:
         """Equal blocks, repeats, strings, angles and phase; equality of what they do is a matter for `diagnose`."""
-        return isinstance(other, Rotations) and self._native.same_as(other._native)
+        return isinstance(other, Rotations) and self._circuit.same_as(other._circuit)
 
     def __hash__(self) -> int:
         return hash((self.qubits, self.count, self.phase))

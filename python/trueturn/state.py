@@ -267,7 +267,7 @@ class State:
         -----
         Rounding: see `Rotations.rounding_bound`. Memory beyond the state: one coset of 64 KiB for each thread.
         """
-        self._run = Run(*self._guarded(_native.evolve, rotations._native, _threads.resolve(threads), progress))
+        self._run = Run(*self._guarded(_native.evolve, rotations._circuit, _threads.resolve(threads), progress))
 
     def _guarded(self, call: Callable[..., Any], *arguments: Any) -> Any:
         try:

@@ -16,6 +16,9 @@ __all__ = ["Bound", "bound"]
 
 _SOURCE = "A. M. Childs, Y. Su, M. C. Tran, N. Wiebe, S. Zhu, Theory of Trotter error, Phys. Rev. X 11, 011020 (2021)"
 _COVERED = ("lie", "strang")
+# A spectral interval of more than this costs seconds, and saves less than a factor of two on brackets of local terms.
+_SMALL_QUBITS = 8
+_FEW_TERMS = 100
 
 
 @dataclass(frozen=True)
@@ -67,8 +70,8 @@ def bound(formula: Formula, partition: Partition, time: float, steps: int) -> Bo
 
     Notes
     -----
-    Nested brackets come from the Pauli algebra; their norms are bounded by proven spectral intervals, so the value is
-    an upper bound of the theorem's own.
+    Nested brackets come from the Pauli algebra. Their norms are bounded by proven spectral intervals (up to 8 qubits or
+    100 terms) or by the sum of |coefficients|, so the value is an upper bound of the theorem's own.
 
     References
     ----------
@@ -108,7 +111,12 @@ def _rests(partition: Partition) -> list[tuple[Operator, Operator]]:
 
 
 def _norm(operator: Operator) -> float:
-    return norm_bound(operator) if len(operator) else 0.0
+    """Bound a norm: by a spectral interval where that is quick, else by the triangle inequality."""
+    if len(operator) == 0:
+        return 0.0
+    if operator.qubits <= _SMALL_QUBITS or len(operator) <= _FEW_TERMS:
+        return norm_bound(operator)
+    return operator.without_identity().one_norm()
 
 
 @lru_cache(maxsize=32)

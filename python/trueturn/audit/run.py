@@ -206,14 +206,16 @@ def _bound(bench: Bench, candidate: Candidate, partition: Partition, steps: int)
     """Return a proven bound on the row's error and its source, or None and the reason."""
     try:
         found = bound(candidate.formula, partition, bench.times[-1], steps)
-    except FormulaError as refusal:
-        return None, str(refusal)
+    except FormulaError:
+        return None, f"no theorem at hand covers {candidate.formula.name}"
     source = f"{found.theorem}, {found.source}"
     if bench.quantity == "state":
-        return found.value, source
-    # |<O>_S - <O>| ≤ 2 ‖O‖ ‖S - U‖ for unitary S and U, the identity removed.
-    scales = [2.0 if bench.relative_to == "norm" else 2.0 * norm for norm in bench.norms.values()]
-    return max(scales) * found.value, f"{source}, times twice the observable's norm"
+        return (found.value, source) if found.value < 2.0 else (2.0, "no two unit vectors are further apart")
+    # |<O>_S - <O>| ≤ 2 ‖O‖ ‖S - U‖ for unitary S and U, the identity removed; and never more than 2 ‖O‖.
+    largest = 1.0 if bench.relative_to == "norm" else max(bench.norms.values())
+    if found.value >= 1.0:
+        return 2.0 * largest, "no two values of the observable are further apart"
+    return 2.0 * largest * found.value, f"{source}, times twice the observable's norm"
 
 
 def _reference(

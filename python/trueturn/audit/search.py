@@ -108,7 +108,7 @@ class _Searcher:
 
     def _predicted(self, count: int) -> int:
         error = max(self.trials[count].error[1], self.tolerance)
-        factor = min(_FASTEST_GROWTH, (error / self.tolerance) ** (1.0 / self.order))
+        factor: float = min(_FASTEST_GROWTH, (error / self.tolerance) ** (1.0 / self.order))
         return max(count + 1, math.ceil(count * factor))
 
     def _narrow(self, failing: int, passing: int) -> int:
@@ -118,7 +118,7 @@ class _Searcher:
         while passing - failing > 1:
             # The interpolation is usually right to one or two steps. Repeated results on one side push past it, by 1, 2,
             # 4, …, so that the bracket closes from both ends.
-            push = 2 ** (streak - 1) if streak else 0
+            push = 1 << (streak - 1) if streak else 0
             guess = self._interpolated(failing, passing) + (-push if side else push)
             guess = min(max(guess, failing + 1), passing - 1)
             meets = self.meets(guess)
@@ -137,7 +137,7 @@ class _Searcher:
         if not (above > 1.0 and 0.0 < below <= 1.0):
             return middle
         share = math.log(above) / (math.log(above) - math.log(below))
-        guess = round(failing * (passing / failing) ** share)
+        guess = round(failing * float((passing / failing) ** share))
         return min(max(guess, failing + 1), passing - 1)
 
     def _first_failure_after(self, answer: int) -> int:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
+from trueturn.audit.figures import upper
 from trueturn.audit.result import Row
 from trueturn.audit.search import Search
 from trueturn.reference import Reference
@@ -43,7 +44,7 @@ def proven(reference: Reference) -> tuple[str, ...]:
     """Return what is proven."""
     certificate = reference.certificate
     found = [
-        f"Reference ({certificate.method}): within {certificate.largest:.2g} of the exact state at every time, "
+        f"Reference ({certificate.method}): within {upper(certificate.largest)} of the exact state at every time, "
         f"{'every part proven' if certificate.proven else 'partly estimated (see the notes)'}.",
         "Rounding of each candidate's run: bounded rotation by rotation and added to both ends of the error interval.",
         "The column of bounds, where a theorem covers the formula: holds for every start state.",
@@ -70,7 +71,7 @@ def recommendation(rows: Sequence[Row], tolerance: float) -> tuple[Row | None, s
         closest = min(rows, key=lambda row: row.error[1])
         return None, (
             f"No candidate is shown to meet {tolerance:g}; the closest is {closest.label} with {_steps(closest.steps)}, "
-            f"whose error is at most {closest.error[1]:.2g}."
+            f"whose error is at most {upper(closest.error[1])}."
         )
     best = fitting[0]
     reason = f"{best.label} with {_steps(best.steps)} meets {tolerance:g} with {_gates(best)}"

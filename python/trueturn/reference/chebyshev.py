@@ -118,7 +118,7 @@ def _carry_out(
         done += expansion.degree
         for target, vector in zip(expansion.targets, used, strict=True):
             turn = Rotations([], [], [], operator.qubits, phase=-plan.centre * (target - expansion.start))
-            _native.evolve(vector, turn._native, threads, None)
+            _native.evolve(vector, turn._circuit, threads, None)
             if target in wanted:
                 yield target, vector
         current, sums[len(used) - 1] = used[-1], current

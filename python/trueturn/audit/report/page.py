@@ -12,7 +12,7 @@ from typing import TYPE_CHECKING
 
 from trueturn.audit.report import words
 from trueturn.audit.report.document import build_facts
-from trueturn.audit.report.figures import count, plain, upper
+from trueturn.audit.figures import count, plain, upper
 from trueturn.audit.report.pictures import (
     MOST_OBSERVABLES,
     gates_picture,

@@ -7,7 +7,7 @@ from collections.abc import Callable, Sequence
 from typing import TYPE_CHECKING, Any
 
 from trueturn.audit.report.canvas import GRID, INK, MARKERS, MUTED, PAPER, SERIES, draw, logarithmic
-from trueturn.audit.report.figures import plain
+from trueturn.audit.figures import plain
 
 if TYPE_CHECKING:
     from trueturn.audit.result import Audit, Row, Trial

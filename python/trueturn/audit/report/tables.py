@@ -14,7 +14,7 @@ from rich.console import Console, Group, RenderableType
 from rich.text import Text
 
 from trueturn.audit.report import words
-from trueturn.audit.report.figures import count
+from trueturn.audit.figures import count
 
 if TYPE_CHECKING:
     from trueturn.audit.result import Audit, Row

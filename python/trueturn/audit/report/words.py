@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 from typing import TYPE_CHECKING
 
-from trueturn.audit.report.figures import count, interval, outward, plain, upper
+from trueturn.audit.figures import count, interval, outward, plain, upper
 
 if TYPE_CHECKING:
     from trueturn.audit.result import Audit, PointError, Row
