@@ -4,7 +4,9 @@ use num_complex::Complex;
 
 use crate::error::{Error, Result};
 use crate::kernel::Isa;
-use crate::kernel::lanes::{GROUP_BITS, LANES, LaneFactors, LaneRotation, Multiply, Real, Rotate};
+use crate::kernel::blocks::{LaneFactors, Multiply};
+use crate::kernel::lanes::{GROUP_BITS, LANES, Real};
+use crate::kernel::rotate::{LaneRotation, Rotate};
 use crate::kernel::shared::{Shared, as_groups_mut};
 use crate::passes::{BLOCK_BITS, COSET_BITS, CosetRotation, FusedPass, HighPhase, Pass, PhasePass, high_phase, plan};
 use crate::rotations::{Block, Body, Rotations};

@@ -26,7 +26,9 @@
 
 use num_complex::Complex;
 
-use crate::kernel::lanes::{GROUP_BITS, LaneFactors, LaneRotation, Real};
+use crate::kernel::blocks::LaneFactors;
+use crate::kernel::lanes::{GROUP_BITS, Real};
+use crate::kernel::rotate::LaneRotation;
 use crate::operation::{Operation, joined};
 use crate::rotations::Rotation;
 

@@ -9,7 +9,8 @@ use num_complex::Complex;
 
 use crate::error::{Error, Result};
 use crate::kernel::Isa;
-use crate::kernel::lanes::{Dot, GROUP_BITS, LANES, Real, SquaredDistance};
+use crate::kernel::lanes::{GROUP_BITS, LANES, Real};
+use crate::kernel::reduce::{Dot, SquaredDistance};
 use crate::kernel::shared::as_groups;
 use crate::team::{Control, run, workers_for};
 

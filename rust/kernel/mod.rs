@@ -14,7 +14,10 @@
 //! All unsafe code of the crate is in this folder: the calls into feature-enabled functions here, and the disjoint
 //! access of several workers to one array in [`shared`].
 
+pub mod blocks;
 pub mod lanes;
+pub mod reduce;
+pub mod rotate;
 pub mod shared;
 #[cfg(target_arch = "x86_64")]
 mod x86_64;

@@ -1,0 +1,60 @@
+"""What the documents show is what the code does."""
+
+from __future__ import annotations
+
+import io
+import os
+import re
+import subprocess
+import sys
+from contextlib import redirect_stdout
+from pathlib import Path
+
+import pytest
+
+import trueturn as tt
+
+ROOT = Path(__file__).parent.parent
+README = (ROOT / "README.md").read_text(encoding="utf-8")
+
+
+def test_the_readme_example_prints_what_the_readme_says(tmp_path, monkeypatch):
+    (code, printed) = re.search(r"```python\n(.*?)```\n```\n(.*?)```", README, re.DOTALL).groups()
+    monkeypatch.chdir(tmp_path)
+    out = io.StringIO()
+    with redirect_stdout(out):
+        exec(compile(code, "README.md", "exec"), {})
+    assert out.getvalue().rstrip() == printed.rstrip()
+    assert (tmp_path / "audit" / "report.html").exists()
+
+
+def test_every_public_name_has_a_docstring_and_is_exported_once():
+    assert sorted(set(tt.__all__)) == sorted(tt.__all__)
+    for name in tt.__all__:
+        assert getattr(tt, name).__doc__, name
+
+
+def test_every_public_method_has_a_docstring():
+    for name in tt.__all__:
+        thing = getattr(tt, name)
+        if isinstance(thing, type):
+            for method, value in vars(thing).items():
+                if not method.startswith("_") and (callable(value) or isinstance(value, property)):
+                    assert value.__doc__, f"{name}.{method}"
+
+
+def test_pictures_are_not_imported_until_drawn():
+    code = "import sys, trueturn; sys.exit('matplotlib' in sys.modules)"
+    assert subprocess.run([sys.executable, "-c", code]).returncode == 0
+
+
+@pytest.mark.parametrize("command", ["audit", "reference", "init", "formulas"])
+def test_the_commands_of_the_readme_exist(command):
+    run = subprocess.run(
+        [sys.executable, "-m", "trueturn", command, "--help"],
+        capture_output=True,
+        text=True,
+        env={**os.environ, "COLUMNS": "100"},
+    )
+    assert run.returncode == 0 and f"trueturn {command}" in run.stdout
+    assert f"trueturn {command}" in README
