@@ -5,6 +5,7 @@ from __future__ import annotations
 import numpy as np
 from hypothesis import strategies as st
 from trueturn import Operator
+from trueturn.rotations import Rotations
 
 coefficients = st.floats(min_value=-4, max_value=4, allow_subnormal=False).filter(
     lambda value: value == 0 or abs(value) > 1e-6
@@ -55,3 +56,14 @@ def states(draw, qubits):
     generator = np.random.default_rng(draw(st.integers(0, 2**32 - 1)))
     vector = generator.normal(size=2**qubits) + 1j * generator.normal(size=2**qubits)
     return vector / np.linalg.norm(vector)
+
+
+@st.composite
+def circuits(draw, max_qubits=5, max_count=12, qubits=None):
+    """Lists of rotations with a global phase; angles up to 50 rad, zero included."""
+    count = qubits or draw(st.integers(1, max_qubits))
+    turns = st.floats(-50, 50, allow_subnormal=False)
+    listed = draw(st.lists(st.tuples(pauli_strings(count), turns), max_size=max_count))
+    return Rotations(
+        [x for (x, _), _ in listed], [z for (_, z), _ in listed], [t for _, t in listed], count, draw(turns)
+    )
