@@ -14,9 +14,7 @@ OBSERVABLES = {
     "middle_rung_zz": Operator("Z_2 Z_3", 6),
     "edge <order> & more": Operator("0.5 Z_0 - 0.5 Z_1", 6),
 }
-OPERATOR = Operator(
-    " + ".join(f"1.0 {axis}_{q} {axis}_{q + 1}" for q in range(5) for axis in "XYZ") + " + 0.25 Z_0"
-)
+OPERATOR = Operator(" + ".join(f"1.0 {axis}_{q} {axis}_{q + 1}" for q in range(5) for axis in "XYZ") + " + 0.25 Z_0")
 
 
 def interval(error: float, half_width: float) -> tuple[float, float]:
@@ -51,9 +49,7 @@ def row(
         for index, time in enumerate(TIMES):
             share = (0.3, 0.6, 1.0)[index] * (1.0 if name.startswith("middle") else 0.4)
             exact = math.cos(time)
-            points.append(
-                PointError(time, name, exact + share * largest, exact, interval(share * largest, width))
-            )
+            points.append(PointError(time, name, exact + share * largest, exact, interval(share * largest, width)))
     error = interval(largest, width)
     return Row(
         candidate=SimpleNamespace(formula=SimpleNamespace(name=formula), rule=rule, steps=asked),  # type: ignore[arg-type]

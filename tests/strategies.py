@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 from hypothesis import strategies as st
+
 from trueturn import Operator
 from trueturn.rotations import Rotations
 
@@ -23,17 +24,13 @@ def pauli_strings(qubits):
 
 
 @st.composite
-def operators(
-    draw, max_qubits=4, max_terms=12, values=coefficients, min_terms=0, qubits=None, distinct=False
-):
+def operators(draw, max_qubits=4, max_terms=12, values=coefficients, min_terms=0, qubits=None, distinct=False):
     """Operators on up to `max_qubits` qubits (or exactly `qubits`); repeats merge unless `distinct`."""
     count = qubits or draw(st.integers(1, max_qubits))
     unique_by = (lambda term: term[0]) if distinct else None
     pairs = st.tuples(pauli_strings(count), values)
     terms = draw(st.lists(pairs, min_size=min_terms, max_size=max_terms, unique_by=unique_by))
-    return Operator.from_masks(
-        [x for (x, _), _ in terms], [z for (_, z), _ in terms], [c for _, c in terms], count
-    )
+    return Operator.from_masks([x for (x, _), _ in terms], [z for (_, z), _ in terms], [c for _, c in terms], count)
 
 
 @st.composite
@@ -45,9 +42,7 @@ def commuting_operators(draw, max_qubits=5, max_terms=8):
     axes = draw(st.lists(st.sampled_from("XYZ"), min_size=count, max_size=count))
     to_x = sum(1 << qubit for qubit, axis in enumerate(axes) if axis in "XY")
     to_z = sum(1 << qubit for qubit, axis in enumerate(axes) if axis in "YZ")
-    return Operator.from_masks(
-        [mask & to_x for mask in z_masks], [mask & to_z for mask in z_masks], values, count
-    )
+    return Operator.from_masks([mask & to_x for mask in z_masks], [mask & to_z for mask in z_masks], values, count)
 
 
 @st.composite

@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 import numpy as np
-import oracle
 import pytest
-import strategies
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
+import oracle
+import strategies
 import trueturn as tt
 
 CHAIN = tt.model.ising(tt.lattice.chain(6), zz=-1.0, x=-0.7, z=0.2)

@@ -2,14 +2,14 @@
 
 from __future__ import annotations
 
-import circuits
 import numpy as np
-import oracle
 import pytest
-import strategies
 from hypothesis import given
 from hypothesis import strategies as st
 
+import circuits
+import oracle
+import strategies
 import trueturn as tt
 
 LIE, STRANG = tt.formula("lie"), tt.formula("strang")

@@ -8,11 +8,12 @@ from __future__ import annotations
 
 import functools
 
-import fixed_point
 import mpmath
 import numpy as np
-import oracle
 import pytest
+
+import fixed_point
+import oracle
 from trueturn import Operator, _native
 from trueturn.reference import reference
 from trueturn.reference.bessel import bessel_values, least_degree, tail_bound, truncation
@@ -120,15 +121,11 @@ def test_bessel_values_are_rounded_correctly(x):
         for degree in degrees:
             exact = mpmath.besselj(degree, mpmath.mpf(x))
             # The bound stated by the function.
-            assert abs(mpmath.mpf(float(values[degree])) - exact) <= UNIT_ROUNDOFF * abs(exact) + mpmath.mpf(
-                "1e-40"
-            )
+            assert abs(mpmath.mpf(float(values[degree])) - exact) <= UNIT_ROUNDOFF * abs(exact) + mpmath.mpf("1e-40")
 
 
 def test_bessel_values_of_negative_arguments_alternate():
-    assert np.array_equal(
-        bessel_values(-5.0), bessel_values(5.0) * (-1.0) ** np.arange(len(bessel_values(5.0)))
-    )
+    assert np.array_equal(bessel_values(-5.0), bessel_values(5.0) * (-1.0) ** np.arange(len(bessel_values(5.0))))
     assert np.array_equal(bessel_values(0.0), [1.0])
 
 
@@ -184,10 +181,7 @@ def twin_application(operator, amplitudes):
 
 def local_operator(generator, qubits, terms):
     """Strings that share x masks and low masks often, so that the engine joins many."""
-    x = [
-        int(generator.choice([0, 3, 5])) << int(generator.integers(0, max(1, qubits - 2)))
-        for _ in range(terms)
-    ]
+    x = [int(generator.choice([0, 3, 5])) << int(generator.integers(0, max(1, qubits - 2))) for _ in range(terms)]
     z = [int(generator.integers(0, 8)) << int(generator.integers(0, qubits)) for _ in range(terms)]
     mask = 2**qubits - 1
     return Operator.from_masks(
@@ -202,18 +196,12 @@ def application_slacks():
         terms = int(generator.integers(1, 80))
         operator = (random_operator if seed % 2 else local_operator)(generator, qubits, terms)
         amplitudes = State.random(qubits, seed).amplitudes
-        scale, shift = (
-            (1.0, 0.0) if seed % 3 else (float(generator.uniform(0.1, 3)), float(generator.normal()))
-        )
+        scale, shift = (1.0, 0.0) if seed % 3 else (float(generator.uniform(0.1, 3)), float(generator.normal()))
         image, room = amplitudes.copy(), np.empty_like(amplitudes)
         # The recurrence's first step gives half the image, times -i and the coefficient 2: no rounding on the
         # way.
-        _native.chebyshev_sums(
-            operator._terms, scale, shift, amplitudes.copy(), room, [image], [[0.0, 2.0]], 1, None
-        )
-        exact = (
-            np.longdouble(scale) * twin_application(operator, amplitudes) + np.longdouble(shift) * amplitudes
-        )
+        _native.chebyshev_sums(operator._terms, scale, shift, amplitudes.copy(), room, [image], [[0.0, 2.0]], 1, None)
+        exact = np.longdouble(scale) * twin_application(operator, amplitudes) + np.longdouble(shift) * amplitudes
         error = float(np.linalg.norm(1j * image.astype(np.clongdouble) - exact))
         counted = _native.application_rounding(operator._terms, scale, shift)
         # Extended precision itself rounds 2^11 times finer, some 2 + terms times.
@@ -259,9 +247,7 @@ def test_evolved_circuits_round_less_than_their_bound():
     for seed in range(24):
         generator = np.random.default_rng(seed)
         qubits = int(generator.integers(1, 7))
-        circuit = random_circuit(
-            generator, qubits, int(generator.integers(1, 400)), 10 ** generator.uniform(-3, 1.7)
-        )
+        circuit = random_circuit(generator, qubits, int(generator.integers(1, 400)), 10 ** generator.uniform(-3, 1.7))
         state = State.random(qubits, seed)
         exact = fixed_point.rotated(circuit, state.amplitudes)
         state.apply(circuit)

@@ -94,9 +94,7 @@ def test_audit_without_a_job_runs_the_built_in_one(canned, capsys) -> None:
 
 
 @pytest.mark.parametrize("width", [80, 120])
-def test_the_table_keeps_to_the_width_of_the_terminal(
-    canned, job: Path, capsys, monkeypatch, width: int
-) -> None:
+def test_the_table_keeps_to_the_width_of_the_terminal(canned, job: Path, capsys, monkeypatch, width: int) -> None:
     monkeypatch.setenv("COLUMNS", str(width))
     cli.run(["audit", str(job)])
     assert max(map(len, capsys.readouterr().out.splitlines())) <= width
@@ -123,9 +121,7 @@ def test_the_folder_of_the_job_is_used(canned, job: Path, capsys) -> None:
     json.loads(capsys.readouterr().out)
 
 
-def test_a_folder_that_is_refused_is_refused_before_the_run(
-    canned, job: Path, tmp_path: Path, capsys
-) -> None:
+def test_a_folder_that_is_refused_is_refused_before_the_run(canned, job: Path, tmp_path: Path, capsys) -> None:
     canned(AssertionError("must not run"))
     (tmp_path / "thesis.tex").write_text("precious")
     assert cli.run(["audit", str(job), "--into", str(tmp_path)]) == 2
@@ -151,9 +147,7 @@ def test_bad_input_with_json_is_an_object_too(job: Path, capsys) -> None:
     assert cli.run(["audit", str(job.parent / "gone.toml"), "--json"]) == 2
     out, err = capsys.readouterr()
     document = json.loads(out)
-    assert (
-        document["kind"] == "trueturn error" and document["class"] == "JobError" and document["status"] == 2
-    )
+    assert document["kind"] == "trueturn error" and document["class"] == "JobError" and document["status"] == 2
     assert document["message"] in err
 
 
@@ -173,9 +167,7 @@ def test_an_interrupt_is_status_130(canned, job: Path, capsys) -> None:
 
 
 @pytest.mark.parametrize("error", [ZeroDivisionError("by\nzero"), InternalError("lost a pass")])
-def test_a_bug_asks_for_a_report_without_a_traceback(
-    canned, job: Path, capsys, error: Exception, monkeypatch
-) -> None:
+def test_a_bug_asks_for_a_report_without_a_traceback(canned, job: Path, capsys, error: Exception, monkeypatch) -> None:
     canned(error)
     monkeypatch.delenv("TRUETURN_DEBUG", raising=False)
     assert cli.run(["audit", str(job)]) == 70

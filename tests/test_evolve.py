@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 import numpy as np
-import oracle
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+
+import oracle
 from strategies import circuits, states
 from trueturn.rotations import Rotations
 from trueturn.state import State
@@ -120,18 +121,14 @@ def test_contiguous_and_gathered_fused_passes_follow_the_twin(qubits):
     state = assert_follows_twin(listed(qubits, bonds))
     assert state.last_run.passes < 1 + len(bonds) // 4
     # Masks that share their highest bit, so that cosets have no unit vectors for a basis.
-    spread = [
-        (1 << (qubits - 1) | 1 << int(k), int(generator.integers(everywhere))) for k in range(qubits - 1)
-    ]
+    spread = [(1 << (qubits - 1) | 1 << int(k), int(generator.integers(everywhere))) for k in range(qubits - 1)]
     assert_follows_twin(listed(qubits, spread))
 
 
 @pytest.mark.parametrize("qubits", LARGE)
 def test_strings_of_full_weight_follow_the_twin(qubits):
     full = (1 << qubits) - 1
-    assert_follows_twin(
-        listed(qubits, [(full, 0), (full, full), (0, full), (full, 1), (1, full), (full ^ 1, 2)])
-    )
+    assert_follows_twin(listed(qubits, [(full, 0), (full, full), (0, full), (full, 1), (1, full), (full ^ 1, 2)]))
 
 
 @pytest.mark.parametrize("qubits", LARGE)

@@ -6,8 +6,9 @@ import math
 from decimal import Decimal
 
 import numpy as np
-import oracle
 import pytest
+
+import oracle
 import trueturn as tt
 from circuits import P3, P3_PARTS, distance, matrix
 from trueturn import errors

@@ -110,7 +110,7 @@ def test_an_interrupted_command_line_exits_with_130(tmp_path):
     job.write_text(
         '[system]\nmodel = "heisenberg"\nlattice = "ring"\nsites = 20\ncoupling = 1.0\n'
         '[start]\nproduct = "' + "01" * 10 + '"\n'
-        "[target]\ntimes = [50.0]\ntolerance = 0.001\n[target.observables]\nm = \"Z_0\"\n"
+        '[target]\ntimes = [50.0]\ntolerance = 0.001\n[target.observables]\nm = "Z_0"\n'
         '[[candidate]]\nformula = "strang"\n'
     )
     child = subprocess.Popen(

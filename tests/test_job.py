@@ -93,9 +93,7 @@ def test_a_job_is_frozen(read) -> None:
 def test_the_template_is_the_built_in_job(write) -> None:
     from_file, built_in = read_job(write(template())), built_in_job()
     assert built_in.path is None
-    same = [
-        name for name in vars(built_in) if name != "path" and vars(from_file)[name] == vars(built_in)[name]
-    ]
+    same = [name for name in vars(built_in) if name != "path" and vars(from_file)[name] == vars(built_in)[name]]
     assert len(same) == len(vars(built_in)) - 1
     assert built_in.operator.qubits == 18 and "invented" in built_in.title
     assert len(built_in.candidates) >= 4
@@ -130,14 +128,14 @@ SYSTEMS = {
     'model = "ising"\nlattice = "chain"\nsites = 4\nzz = -1.0\nx = 0.5': lambda: model.ising(
         lattice.chain(4), zz=-1.0, x=0.5
     ),
-    'model = "ising"\nbonds = [[0, 1], [2, 1], [2, 3]]\nzz = [1.0, 2.0, 3]\nx = 0.5\nz = 1': lambda: (
-        model.ising(lattice.from_bonds([(0, 1), (2, 1), (2, 3)]), zz=[1.0, 2.0, 3.0], x=0.5, z=1.0)
+    'model = "ising"\nbonds = [[0, 1], [2, 1], [2, 3]]\nzz = [1.0, 2.0, 3]\nx = 0.5\nz = 1': lambda: model.ising(
+        lattice.from_bonds([(0, 1), (2, 1), (2, 3)]), zz=[1.0, 2.0, 3.0], x=0.5, z=1.0
     ),
     'model = "exchange"\nlattice = "square"\nrows = 2\ncolumns = 2\nperiodic = true\nxx = 1\nyy = 1\nzz=2': (
         lambda: model.exchange(lattice.square(2, 2, periodic=True), xx=1.0, yy=1.0, zz=2.0)
     ),
-    'model = "heisenberg"\nlattice = "ring"\nsites = 4\ncoupling = 1\nspin = "half"': lambda: (
-        model.heisenberg(lattice.ring(4), 1.0, spin="half")
+    'model = "heisenberg"\nlattice = "ring"\nsites = 4\ncoupling = 1\nspin = "half"': lambda: model.heisenberg(
+        lattice.ring(4), 1.0, spin="half"
     ),
     'model = "hubbard"\nlattice = "chain"\nsites = 2\nhopping = 1\nrepulsion = 4\npotential = 2': (
         lambda: model.hubbard(lattice.chain(2), 1.0, 4.0, potential=2.0)
@@ -165,9 +163,7 @@ def test_a_ladder_takes_strengths_of_legs_and_rungs(read) -> None:
 
 def test_a_terms_file_is_found_beside_the_job(read, tmp_path: Path) -> None:
     Operator("0.5 X_0 Z_1", qubits=2).write(tmp_path / "own.terms")
-    assert read(('terms = "-1.0 Z_0 Z_1 + 0.5 X_0"', 'file = "own.terms"')).operator == Operator(
-        "0.5 X_0 Z_1"
-    )
+    assert read(('terms = "-1.0 Z_0 Z_1 + 0.5 X_0"', 'file = "own.terms"')).operator == Operator("0.5 X_0 Z_1")
     wider = read(
         ('terms = "-1.0 Z_0 Z_1 + 0.5 X_0"', 'file = "own.terms"\nqubits = 3'),
         ('product = "0+"', 'pattern = "0"'),
@@ -180,14 +176,10 @@ def test_a_start_file_is_checked_without_being_used(read, tmp_path: Path) -> Non
     job = read(('product = "0+"', 'file = "start.npy"'))
     assert job.start.sites is None and job.start.words == "amplitudes from the file start.npy"
     np.save(tmp_path / "start.npy", np.zeros(8, dtype=np.complex128))
-    with pytest.raises(
-        JobError, match=r"start.file: holds an array of the wrong shape for 2 qubits \(\(8,\)\)"
-    ):
+    with pytest.raises(JobError, match=r"start.file: holds an array of the wrong shape for 2 qubits \(\(8,\)\)"):
         read(('product = "0+"', 'file = "start.npy"'))
     np.save(tmp_path / "start.npy", np.zeros(4))
-    with pytest.raises(
-        JobError, match=r"start.file: not complex amplitudes \(float64\); save them as complex128"
-    ):
+    with pytest.raises(JobError, match=r"start.file: not complex amplitudes \(float64\); save them as complex128"):
         read(('product = "0+"', 'file = "start.npy"'))
     (tmp_path / "start.npy").write_text("no array")
     with pytest.raises(JobError, match=r"start.file: not a NumPy .npy file"):
@@ -386,9 +378,7 @@ BAD = [
 ]
 
 
-@pytest.mark.parametrize(
-    ("old", "new", "key", "message"), BAD, ids=[f"{key}: {text}" for _, _, key, text in BAD]
-)
+@pytest.mark.parametrize(("old", "new", "key", "message"), BAD, ids=[f"{key}: {text}" for _, _, key, text in BAD])
 def test_a_mistake_is_refused_by_key(read, old: str, new: str, key: str, message: str) -> None:
     with pytest.raises(JobError) as caught:
         read((old, new))

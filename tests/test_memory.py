@@ -21,7 +21,7 @@ from trueturn import _memory
     ids=["product", "computational", "random"],
 )
 def test_states_beyond_memory_are_refused_with_the_largest_size_that_fits(make):
-    with pytest.raises(tt.errors.MemoryRefusedError, match="does not fit in memory.*at most") as refusal:
+    with pytest.raises(tt.errors.MemoryRefusedError, match=r"does not fit in memory.*at most") as refusal:
         make()
     error = refusal.value
     assert isinstance(error, MemoryError)

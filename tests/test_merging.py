@@ -5,11 +5,12 @@ from __future__ import annotations
 from fractions import Fraction
 
 import numpy as np
+from hypothesis import given
+from hypothesis import strategies as st
+
 import oracle
 import trueturn as tt
 from circuits import P3, distance, matrix, plain
-from hypothesis import given
-from hypothesis import strategies as st
 from trueturn.formulas import Stage
 from trueturn.formulas.merging import merged_runs, repeated
 
@@ -21,9 +22,7 @@ def test_counts_of_exponentials_are_the_published_ones(published):
     check = next(check for check in published("bounds.toml")["check"] if check["id"] == "exponential_counts")
     letters = "XYZ"
     for parts, one_step, ten_steps in zip(check["L"], check["one_step"], check["ten_steps"], strict=True):
-        partition = tt.Partition(
-            [tt.Operator(f"{letters[k % 3]}_{k // 3 % 20}", qubits=20) for k in range(parts)]
-        )
+        partition = tt.Partition([tt.Operator(f"{letters[k % 3]}_{k // 3 % 20}", qubits=20) for k in range(parts)])
         for order, count in zip((2, 4, 6, 8), one_step, strict=True):
             name = "strang" if order == 2 else f"suzuki-{order}"
             assert tt.formula(name).rotations(partition, 1.0, 1).count == count
@@ -34,9 +33,7 @@ def test_counts_of_exponentials_are_the_published_ones(published):
 
 def test_strang_costs_what_the_closed_form_says():
     for parts in (1, 2, 3, 5):
-        partition = tt.Partition(
-            [tt.Operator(text, qubits=3) for text in ("X_0", "Z_0", "Y_1", "X_1", "Z_2")[:parts]]
-        )
+        partition = tt.Partition([tt.Operator(text, qubits=3) for text in ("X_0", "Z_0", "Y_1", "X_1", "Z_2")[:parts]])
         for steps in (1, 2, 3, 1000):
             count = tt.formula("strang").rotations(partition, 1.0, steps).count
             assert count == (1 if parts == 1 else steps * (2 * parts - 2) + 1)
@@ -146,9 +143,7 @@ def test_angles_are_rounded_no_more_often_than_stated():
             for coefficient in P3.parts[part].coefficients
         ]
         for found, wanted in zip(formula.rotations(P3, time, steps).angles, exact, strict=True):
-            assert abs(Fraction(float(found)) - wanted) <= (2 * Fraction(UNIT) + Fraction(UNIT) ** 2) * abs(
-                wanted
-            )
+            assert abs(Fraction(float(found)) - wanted) <= (2 * Fraction(UNIT) + Fraction(UNIT) ** 2) * abs(wanted)
 
 
 def test_the_identity_becomes_the_phase():
@@ -167,9 +162,7 @@ def test_negative_time_runs_a_symmetric_formula_backwards():
         formula = tt.formula(name)
         if formula.symmetric and len(formula.stages) <= 50:
             there, back = (matrix(formula.rotations(P3, time, 3)) for time in (0.4, -0.4))
-            assert (
-                distance(back @ there, np.eye(8)) <= 2 * 64 * 8 * formula.rotations(P3, 0.4, 3).count * UNIT
-            )
+            assert distance(back @ there, np.eye(8)) <= 2 * 64 * 8 * formula.rotations(P3, 0.4, 3).count * UNIT
 
 
 def test_zero_time_needs_no_rotation():

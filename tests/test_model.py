@@ -6,8 +6,9 @@ import math
 from functools import reduce
 
 import numpy as np
-import oracle
 import pytest
+
+import oracle
 from trueturn import Operator, errors, lattice, model
 
 UNIT = 2.0**-53
@@ -15,9 +16,7 @@ UNIT = 2.0**-53
 
 def written_out(terms, qubits):
     """Sum coefficients times Kronecker products, term by term."""
-    return sum(
-        (c * oracle.pauli(text, qubits) for c, text in terms), np.zeros((2**qubits, 2**qubits), complex)
-    )
+    return sum((c * oracle.pauli(text, qubits) for c, text in terms), np.zeros((2**qubits, 2**qubits), complex))
 
 
 def test_ising_has_the_signs_that_it_states():
@@ -28,9 +27,7 @@ def test_ising_has_the_signs_that_it_states():
         + [(0.1, "Z_0"), (0.2, "Z_1"), (0.3, "Z_2")],
         3,
     )
-    assert np.array_equal(made.dense(), expected) or np.allclose(
-        made.dense(), expected, rtol=0, atol=8 * UNIT
-    )
+    assert np.array_equal(made.dense(), expected) or np.allclose(made.dense(), expected, rtol=0, atol=8 * UNIT)
 
 
 def test_exchange_takes_one_strength_per_bond_or_site():

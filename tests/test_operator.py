@@ -8,10 +8,11 @@ import math
 import pickle
 
 import numpy as np
-import oracle
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+
+import oracle
 from strategies import any_finite, operators, states
 from trueturn import Operator, _memory
 from trueturn.errors import MemoryRefusedError, OperatorError, TermError
@@ -32,9 +33,7 @@ def test_number_of_qubits_is_inferred_or_stated():
 
 
 def test_gather_takes_pairs():
-    operator = Operator.gather(
-        [(-1, "Z_0 Z_1"), (np.float32(0.5), "X_0"), (fractions.Fraction(1, 4), "")], qubits=3
-    )
+    operator = Operator.gather([(-1, "Z_0 Z_1"), (np.float32(0.5), "X_0"), (fractions.Fraction(1, 4), "")], qubits=3)
     assert str(operator) == "-1.0 Z_0 Z_1 + 0.5 X_0 + 0.25"
     assert operator.qubits == 3
     assert str(Operator.gather((c, s) for c, s in [(2.0, "X_0 Y_0 X_0")])) == "-2.0 Y_0"

@@ -12,6 +12,7 @@ from itertools import pairwise
 import mpmath
 import numpy as np
 import pytest
+
 import trueturn as tt
 
 # Three and four parts, no two of which commute; a part's terms do. Coefficients are arbitrary.
@@ -127,8 +128,7 @@ def test_a_weight_moved_by_a_thousandth_is_noticed(name):
         changes.append({middle: 1e-3, middle - 1: -1e-3})  # with the sum kept, which is harder to see
     for change in changes:
         moved = [
-            (weight + change.get(place, 0.0), direction)
-            for place, (weight, direction) in enumerate(listed(formula))
+            (weight + change.get(place, 0.0), direction) for place, (weight, direction) in enumerate(listed(formula))
         ]
         assert not abs(measured_order(moved, THREE_PARTS, steps) - formula.order) < 0.15
 
@@ -137,9 +137,7 @@ def test_a_weight_moved_by_a_thousandth_is_noticed(name):
     "test", [test_the_claimed_order_is_the_slope_of_the_error, test_a_weight_moved_by_a_thousandth_is_noticed]
 )
 def test_every_registered_formula_has_an_order_test(test):
-    covered = [
-        mark.args[1] for mark in test.pytestmark if mark.name == "parametrize" and mark.args[0] == "name"
-    ]
+    covered = [mark.args[1] for mark in test.pytestmark if mark.name == "parametrize" and mark.args[0] == "name"]
     assert [set(names) for names in covered] == [set(tt.formulas())]
 
 

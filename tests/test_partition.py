@@ -5,11 +5,12 @@ from __future__ import annotations
 import itertools
 
 import numpy as np
-import oracle
 import pytest
-import strategies
 from hypothesis import given
 from hypothesis import strategies as st
+
+import oracle
+import strategies
 from trueturn import Operator, Partition, errors, lattice, model
 from trueturn.edge_colouring import colour_edges
 
@@ -192,15 +193,11 @@ def test_reordered_takes_part_by_part():
 def test_require_sum_accepts_divided_strings_and_refuses_missing_ones():
     partition = Partition([Operator("0.1 X_0 + Z_1"), Operator("0.2 X_0 + Y_1")])
     partition.require_sum(Operator("0.3 X_0 + Z_1 + Y_1"))  # 0.1 + 0.2 misses 0.3 by one rounding
-    with pytest.raises(
-        errors.PartitionError, match=r"parts: do not sum.*Y_1 lacks 0.5.*; add what is missing"
-    ):
+    with pytest.raises(errors.PartitionError, match=r"parts: do not sum.*Y_1 lacks 0.5.*; add what is missing"):
         partition.require_sum(Operator("0.3 X_0 + Z_1 + 1.5 Y_1"))
     with pytest.raises(errors.PartitionError, match=r"the identity lacks 1.0"):
         partition.require_sum(Operator("0.3 X_0 + Z_1 + Y_1 + 1"))
-    with pytest.raises(
-        errors.PartitionError, match=r"parts: act on 2 qubits.*on 3; build every part with qubits=3"
-    ):
+    with pytest.raises(errors.PartitionError, match=r"parts: act on 2 qubits.*on 3; build every part with qubits=3"):
         partition.require_sum(Operator("0.3 X_0 + Z_1 + Y_1", qubits=3))
 
 

@@ -8,10 +8,11 @@ from __future__ import annotations
 
 import itertools
 
-import free_fermions
 import numpy as np
-import oracle
 import pytest
+
+import free_fermions
+import oracle
 from trueturn import Operator
 from trueturn.reference import reference
 from trueturn.state import State
@@ -33,9 +34,7 @@ def assert_cases_hold(cases):
     """Check all cases of one Hamiltonian and start, which one reference can serve."""
     times = sorted({case["time"] for case in cases})
     observables = {case["id"]: operator_of(case["observable"], case["n"]) for case in cases}
-    found = reference(
-        operator_of(cases[0]["terms"], cases[0]["n"]), start_of(cases[0]), times, 1e-11, observables
-    )
+    found = reference(operator_of(cases[0]["terms"], cases[0]["n"]), start_of(cases[0]), times, 1e-11, observables)
     for case in cases:
         at = times.index(case["time"])
         value, bound = found.expectations[case["id"]][at], found.expectation_bounds[case["id"]][at]
@@ -44,9 +43,7 @@ def assert_cases_hold(cases):
 
 
 def assert_topic_holds(published, topic, qubits, count):
-    cases = [
-        case for case in published("exact.json")["cases"] if case["topic"] == topic and case["n"] in qubits
-    ]
+    cases = [case for case in published("exact.json")["cases"] if case["topic"] == topic and case["n"] in qubits]
     assert len(cases) == count
 
     def evolution(case):
@@ -62,9 +59,7 @@ def test_one_spin_in_a_tilted_field_precesses(published):
     assert_topic_holds(published, "rabi", [1], 9)
 
 
-@pytest.mark.parametrize(
-    ("amplitude", "tilt", "time"), [(0.6, 0.8, 1.0), (0.35, -1.2, 37.0), (-2.0, 0.1, 80.0)]
-)
+@pytest.mark.parametrize(("amplitude", "tilt", "time"), [(0.6, 0.8, 1.0), (0.35, -1.2, 37.0), (-2.0, 0.1, 80.0)])
 def test_one_spin_follows_the_closed_form_of_rabi(amplitude, tilt, time):
     """I. I. Rabi, Phys. Rev. 51, 652 (1937), from memory: <Z> = 1 - 2 (a/w)² sin² wt, <Y> = -(a/w) sin
     2wt."""

@@ -6,12 +6,13 @@ from __future__ import annotations
 import math
 
 import numpy as np
-import oracle
 import pytest
 import scipy.linalg
 import scipy.sparse.linalg
 from hypothesis import given, settings
 from hypothesis import strategies as st
+
+import oracle
 from strategies import operators, states
 from trueturn import Operator
 from trueturn.errors import ArgumentError, OperatorError, StateShapeError, ToleranceError
@@ -37,9 +38,7 @@ def gap(state, expected):
 def chain(qubits):
     """An Ising chain in a tilted field: nothing commutes, nothing is conserved but the energy."""
     bonds = [(1.0, f"Z_{k} Z_{k + 1}") for k in range(qubits - 1)]
-    return Operator.gather(
-        bonds + [(0.9, f"X_{k}") for k in range(qubits)] + [(0.4, f"Z_{k}") for k in range(qubits)]
-    )
+    return Operator.gather(bonds + [(0.9, f"X_{k}") for k in range(qubits)] + [(0.4, f"Z_{k}") for k in range(qubits)])
 
 
 # Against scipy
@@ -62,15 +61,11 @@ def test_references_agree_with_scipy_on_sparse_matrices(data):
     time = data.draw(moments)
     found = reference(operator, State.from_array(start.copy()), time)
     matrix = operator.sparse()
-    expected = scipy.sparse.linalg.expm_multiply(
-        -1j * time * matrix, start, traceA=-1j * time * matrix.trace()
-    )
+    expected = scipy.sparse.linalg.expm_multiply(-1j * time * matrix, start, traceA=-1j * time * matrix.trace())
     # expm_multiply aims at unit roundoff with truncated Taylor series: as many products as ‖Ht‖ and 55 terms
     # more, each rounding some u (terms + 2), on 128 entries.
     products = abs(time) * operator.one_norm() + 55
-    assert gap(found.states[0], expected) <= found.certificate.largest + UNIT_ROUNDOFF * products * (
-        len(operator) + 20
-    )
+    assert gap(found.states[0], expected) <= found.certificate.largest + UNIT_ROUNDOFF * products * (len(operator) + 20)
 
 
 @given(st.data())
@@ -91,9 +86,7 @@ def test_methods_agree_within_the_sum_of_their_certificates(data):
 @pytest.mark.parametrize("qubits", [1, 2])
 @pytest.mark.parametrize("method", METHODS)
 def test_the_smallest_systems_evolve(qubits, method):
-    operator = Operator("0.3 X_0 - 0.8 Y_0 + 0.25", qubits=qubits) + Operator(
-        f"0.5 Z_{qubits - 1}", qubits=qubits
-    )
+    operator = Operator("0.3 X_0 - 0.8 Y_0 + 0.25", qubits=qubits) + Operator(f"0.5 Z_{qubits - 1}", qubits=qubits)
     start = State.random(qubits, 4)
     found = reference(operator, start, 3.0, method=method)
     expected = oracle.evolution(operator, 3.0) @ start.amplitudes
@@ -215,8 +208,7 @@ def test_extreme_scales_of_time_and_coefficients_evolve(size, time):
     found = reference(Operator.gather([(size, "X_0")]), State.product("0"), time)
     angle = size * time
     assert (
-        gap(found.states[0], [math.cos(angle), -1j * math.sin(angle)])
-        <= found.certificate.largest + 4 * UNIT_ROUNDOFF
+        gap(found.states[0], [math.cos(angle), -1j * math.sin(angle)]) <= found.certificate.largest + 4 * UNIT_ROUNDOFF
     )
 
 
@@ -240,28 +232,20 @@ def test_observables_norm_and_energy_stay_inside_their_bounds(data):
     found = reference(operator, start, [time], 1e-8, {"energy": operator, "other": observable})
     energy = start.expectation(operator)
     own_rounding = found.expectation_bounds["energy"][0]
-    assert (
-        abs(found.expectations["energy"][0] - energy)
-        <= own_rounding + 300 * UNIT_ROUNDOFF * operator.one_norm()
-    )
+    assert abs(found.expectations["energy"][0] - energy) <= own_rounding + 300 * UNIT_ROUNDOFF * operator.one_norm()
     # A unit start is one within 4 u here, and the norm's own sum of 32 squares rounds by 32 u.
     assert abs(found.states[0].norm() - 1) <= found.certificate.largest + 40 * UNIT_ROUNDOFF
     exact = oracle.evolution(operator, time) @ start.amplitudes
     expected = np.vdot(exact, oracle.dense(observable) @ exact).real
     oracle_rounding = (2 * expm_rounding(operator, time) + 64 * UNIT_ROUNDOFF) * (1 + observable.one_norm())
-    assert (
-        abs(found.expectations["other"][0] - expected)
-        <= found.expectation_bounds["other"][0] + oracle_rounding
-    )
+    assert abs(found.expectations["other"][0] - expected) <= found.expectation_bounds["other"][0] + oracle_rounding
 
 
 def test_the_identity_of_an_observable_does_not_spoil_its_bound():
     """The truncated state is not exactly of unit length; 1e6 times that must not show."""
     operator, start = Operator("0.7 X_0 + 0.3 Z_0 + X_0 X_1 + 0.2 Z_1"), State.random(2, 0)
     small, large = Operator("1e-3 Z_0", qubits=2), Operator("1e6 + 1e-3 Z_0", qubits=2)
-    found = reference(
-        operator, start, 5.0, 1e-6, {"small": small, "large": large, "one": Operator("1", qubits=2)}
-    )
+    found = reference(operator, start, 5.0, 1e-6, {"small": small, "large": large, "one": Operator("1", qubits=2)})
     both = found.expectation_bounds["small"][0] + found.expectation_bounds["large"][0]
     # The start is a unit vector within 8 u, which the identity multiplies by 1e6.
     excess = found.expectations["large"][0] - 1e6 - found.expectations["small"][0]
@@ -293,9 +277,7 @@ def test_single_precision_starts_evolve_in_double_precision(method):
     for one, other in zip(found.states, expected.states, strict=True):
         assert np.array_equal(one.amplitudes, other.amplitudes)
     assert np.array_equal(found.expectations["h"], expected.expectations["h"])
-    assert (
-        abs(found.expectations["h"][0] - double.expectation(chain(5))) <= 2 * found.expectation_bounds["h"][0]
-    )
+    assert abs(found.expectations["h"][0] - double.expectation(chain(5))) <= 2 * found.expectation_bounds["h"][0]
 
 
 def test_states_have_the_same_bits_for_any_number_of_threads():
@@ -313,9 +295,7 @@ def test_states_have_the_same_bits_for_any_number_of_threads():
 @pytest.mark.parametrize("method", ["chebyshev", "krylov"])
 def test_progress_is_reported(method):
     seen = []
-    reference(
-        chain(13), State.product("+" * 13), 4.0, method=method, progress=lambda *news: seen.append(news)
-    )
+    reference(chain(13), State.product("+" * 13), 4.0, method=method, progress=lambda *news: seen.append(news))
     assert seen
     assert all(name == "reference" and 0 < done <= total for name, done, total in seen)
     assert [done for _, done, _ in seen] == sorted(done for _, done, _ in seen)
@@ -346,9 +326,7 @@ def test_bad_times_are_refused_by_name(times):
     assert refusal.value.argument == "times"
 
 
-@pytest.mark.parametrize(
-    "times", [1, np.int64(1), np.float32(1), np.array(1.0), np.array([1.0]), (1.0,), range(1, 2)]
-)
+@pytest.mark.parametrize("times", [1, np.int64(1), np.float32(1), np.array(1.0), np.array([1.0]), (1.0,), range(1, 2)])
 def test_one_time_may_be_any_kind_of_number(times):
     assert reference(chain(2), State.product("00"), times).times == (1.0,)
 

@@ -14,9 +14,9 @@ from xml.etree import ElementTree
 import pytest
 
 from sample_audit import TIMES, sample_audit
+from trueturn.audit.figures import count, interval, nearest, plain, upper
 from trueturn.audit.report import FILES, plain_table, require_replaceable, to_dict, write_folder
 from trueturn.audit.report.document import COLUMNS, SCHEMA, json_text
-from trueturn.audit.figures import count, interval, nearest, plain, upper
 from trueturn.audit.report.page import page
 from trueturn.audit.report.pictures import MOST_OBSERVABLES, gates_picture, steps_picture, time_picture
 from trueturn.errors import ArgumentError
@@ -82,17 +82,13 @@ def test_page_needs_nothing_from_elsewhere(outline: Outline) -> None:
 
 def test_page_says_verdict_and_recommendation_before_the_table(outline: Outline) -> None:
     text = " ".join(outline.text)
-    places = [
-        text.index(word) for word in ("keep the error within", "Recommended: strang, commuting", "depth")
-    ]
+    places = [text.index(word) for word in ("keep the error within", "Recommended: strang, commuting", "depth")]
     assert places == sorted(places)
 
 
 def test_page_escapes_what_the_user_wrote() -> None:
     hostile = "<script>alert('x')</script> & \"quoted\""
-    audit = sample_audit(
-        title=hostile, start=hostile, energy_unit=hostile, reason=hostile, cautions=(hostile,)
-    )
+    audit = sample_audit(title=hostile, start=hostile, energy_unit=hostile, reason=hostile, cautions=(hostile,))
     text = page(audit)
     assert "<script" not in text
     assert text.count("&lt;script&gt;") >= 5
@@ -151,10 +147,7 @@ def test_pictures_hold_the_tolerance_and_every_candidate() -> None:
     for picture in (steps_picture, gates_picture):
         text = picture(sample_audit())
         assert "tolerance 0.01" in text
-        assert all(
-            label in text
-            for label in ("lie, commuting", "strang, commuting", "suzuki-4, bond", "strang, axis")
-        )
+        assert all(label in text for label in ("lie, commuting", "strang, commuting", "suzuki-4, bond", "strang, axis"))
     text = time_picture(sample_audit())
     assert "middle_rung_zz" in text and "edge &lt;order&gt; &amp; more" in text
 
@@ -172,9 +165,7 @@ def test_pictures_take_errors_that_reach_zero_and_names_with_dollars() -> None:
     audit = sample_audit()
     row = audit.rows[0]
     zero = type(row)(**{**vars(row), "error": (0.0, 1e-12), "label": "_my $formula, bond"})
-    zero = type(row)(
-        **{**vars(zero), "trials": tuple(type(t)(t.steps, (0.0, 0.0), "meets", 0) for t in row.trials)}
-    )
+    zero = type(row)(**{**vars(zero), "trials": tuple(type(t)(t.steps, (0.0, 0.0), "meets", 0) for t in row.trials)})
     changed = sample_audit(rows=(zero,), recommended=zero)
     for picture in (steps_picture, gates_picture, time_picture):
         ElementTree.fromstring(picture(changed))
@@ -290,9 +281,7 @@ def test_a_file_of_the_name_is_refused(tmp_path: Path) -> None:
         require_replaceable(tmp_path / "audit" / "below")
 
 
-def test_a_failure_while_writing_leaves_the_old_folder(
-    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
-) -> None:
+def test_a_failure_while_writing_leaves_the_old_folder(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     folder = sample_audit(title="first").write(tmp_path / "audit")
 
     def fail(document) -> str:
@@ -361,10 +350,5 @@ def test_figures_round_in_the_direction_that_is_safe() -> None:
     assert nearest(0.0) == "0"
     assert upper(math.inf) == "inf"
     assert (upper(73.2), upper(732.0), upper(7320.0), upper(0.0999)) == ("74", "740", "7.4e3", "0.10")
-    assert (
-        plain(1e-10) == "1e-10"
-        and plain(0.1) == "0.1"
-        and plain(1e22) == "1e22"
-        and plain(1 / 3)[:4] == "0.33"
-    )
+    assert plain(1e-10) == "1e-10" and plain(0.1) == "0.1" and plain(1e22) == "1e22" and plain(1 / 3)[:4] == "0.33"
     assert count(1234567) == "1\u00a0234\u00a0567"

@@ -8,6 +8,7 @@ import numpy as np
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+
 from strategies import circuits, commuting_operators, operators, states
 from trueturn import Operator
 from trueturn.errors import RotationError
@@ -85,9 +86,7 @@ def test_renaming_qubits_permutes_bits(data):
     places = np.array([renamed(index) for index in range(2**n)])
     moved = np.empty_like(vector)
     moved[places] = vector
-    other = Rotations(
-        map(renamed, circuit.x_masks), map(renamed, circuit.z_masks), circuit.angles, n, circuit.phase
-    )
+    other = Rotations(map(renamed, circuit.x_masks), map(renamed, circuit.z_masks), circuit.angles, n, circuit.phase)
     gap = np.linalg.norm(evolved(other, moved)[places] - evolved(circuit, vector))
     assert gap <= 2 * circuit.rounding_bound()
 
@@ -156,9 +155,7 @@ def test_writing_out_stops_at_ten_million():
     step = Rotations([1], [0], [0.1], 1)
     assert len(step.times(10**6).angles) == 10**6
     for name in ("angles", "x_masks", "z_masks"):
-        with pytest.raises(
-            RotationError, match=r"^rotations: too many to write out \(10000001\); use .blocks"
-        ):
+        with pytest.raises(RotationError, match=r"^rotations: too many to write out \(10000001\); use .blocks"):
             getattr(step.times(10**7 + 1), name)
 
 

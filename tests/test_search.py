@@ -36,8 +36,11 @@ class Runs:
 def test_a_power_law_gives_the_exact_answer_with_few_runs(order, constant, tolerance, unit):
     runs = Runs(lambda steps: constant / steps**order, tolerance)
     found = least_steps(runs, tolerance, order, unit=unit, most_steps=10**9)
-    exact = next(r for r in range(max(unit, int((constant / tolerance) ** (1 / order)) // unit * unit - unit), 10**9, unit)
-                 if r > 0 and r % unit == 0 and constant / r**order <= tolerance)
+    exact = next(
+        r
+        for r in range(max(unit, int((constant / tolerance) ** (1 / order)) // unit * unit - unit), 10**9, unit)
+        if r > 0 and r % unit == 0 and constant / r**order <= tolerance
+    )
     assert (found.steps, found.found, found.accidental) == (exact, True, ())
     # Cost in units of one run at the answer: two beside it, about 1 + √2 + 2 for the probes, growth and interpolation.
     assert sum(runs.steps) <= 10 * found.steps + 40 * unit
@@ -95,5 +98,5 @@ def test_steps_off_the_grid_are_refused_with_counts_that_fit():
 
 
 def test_times_without_a_common_grid_are_refused():
-    with pytest.raises(AuditError, match="no common grid.*separate"):
+    with pytest.raises(AuditError, match=r"no common grid.*separate"):
         grid_unit([0.1, 0.31415926535])

@@ -6,10 +6,11 @@ import dataclasses
 import math
 
 import numpy as np
-import oracle
 import pytest
 import scipy.sparse.linalg
 from hypothesis import given
+
+import oracle
 from strategies import any_finite, commuting_operators, operators
 from trueturn import Operator
 from trueturn.errors import OperatorError
@@ -27,9 +28,7 @@ def exact_extremes(operator):
 
 
 def ring(qubits, letters="XYZ", coupling=1.0):
-    return Operator.gather(
-        [(coupling, f"{p}_{k} {p}_{(k + 1) % qubits}") for k in range(qubits) for p in letters]
-    )
+    return Operator.gather([(coupling, f"{p}_{k} {p}_{(k + 1) % qubits}") for k in range(qubits) for p in letters])
 
 
 def plain_terms(operator):
@@ -174,9 +173,7 @@ def test_tiny_terms_beside_huge_ones_are_enclosed():
 
 
 def test_overflowing_spectra_are_refused():
-    with pytest.raises(
-        OperatorError, match=r"operator: spectrum beyond double precision .*; scale the operator down"
-    ):
+    with pytest.raises(OperatorError, match=r"operator: spectrum beyond double precision .*; scale the operator down"):
         spectral_interval(Operator("1.7e308 Z_0 + 1.7e308 Z_1"))
 
 
@@ -232,9 +229,7 @@ def test_work_beyond_the_caps_is_still_enclosed(monkeypatch):
 
 def test_many_dense_strings_are_bounded():
     generator = np.random.default_rng(3)
-    x_masks, z_masks = (
-        [int.from_bytes(generator.bytes(16), "little") for _ in range(3000)] for _ in range(2)
-    )
+    x_masks, z_masks = ([int.from_bytes(generator.bytes(16), "little") for _ in range(3000)] for _ in range(2))
     operator = Operator.from_masks(x_masks, z_masks, generator.normal(size=3000), 128)
     low, high = spectral_interval(operator)
     assert -operator.one_norm() * 1.001 < low < high < operator.one_norm() * 1.001

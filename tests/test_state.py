@@ -6,10 +6,11 @@ import math
 import threading
 
 import numpy as np
-import oracle
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+
+import oracle
 from strategies import operators, states
 from trueturn import Operator
 from trueturn.errors import (
@@ -167,9 +168,7 @@ def test_descriptions_that_make_no_state_are_refused(make, kind, words):
     ],
 )
 def test_states_beyond_memory_are_refused_before_anything_is_allocated(make):
-    with pytest.raises(
-        MemoryRefusedError, match=r"does not fit in memory .* at most \d+ qubits fit"
-    ) as refusal:
+    with pytest.raises(MemoryRefusedError, match=r"does not fit in memory .* at most \d+ qubits fit") as refusal:
         make()
     assert isinstance(refusal.value, MemoryError)
     largest = refusal.value.largest_qubits

@@ -8,10 +8,11 @@ import threading
 import time
 
 import numpy as np
-import oracle
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+
+import oracle
 from strategies import any_finite, commuting_operators, operators, pauli_strings
 from trueturn import Operator
 from trueturn.errors import OperatorError, TermError, TrueturnError
@@ -152,9 +153,7 @@ def test_repeated_strings_merge_at_their_first_occurrence(terms):
     for string, value in terms:
         sums[string] = sums.get(string, 0) + value
     expected = [(string, value) for string, value in sums.items() if value]
-    operator = Operator.from_masks(
-        [x for (x, _), _ in terms], [z for (_, z), _ in terms], [c for _, c in terms], 2
-    )
+    operator = Operator.from_masks([x for (x, _), _ in terms], [z for (_, z), _ in terms], [c for _, c in terms], 2)
     assert list(zip(operator.x_masks, operator.z_masks, strict=True)) == [string for string, _ in expected]
     assert operator.coefficients.tolist() == [value for _, value in expected]
 
@@ -243,9 +242,7 @@ def test_commuting_groups_are_first_fit(operator):
     groups: list[list[tuple[int, int]]] = []
     expected = []
     for string in strings:
-        fitting = (
-            number for number, group in enumerate(groups) if all(commute(string, other) for other in group)
-        )
+        fitting = (number for number, group in enumerate(groups) if all(commute(string, other) for other in group))
         number = next(fitting, len(groups))
         if number == len(groups):
             groups.append([])
@@ -314,9 +311,7 @@ def test_large_diagonal_operators_commute_and_multiply():
 
 def test_dense_random_strings_are_grouped():
     generator = np.random.default_rng(6)
-    x_masks, z_masks = (
-        [int.from_bytes(generator.bytes(16), "little") for _ in range(20_000)] for _ in range(2)
-    )
+    x_masks, z_masks = ([int.from_bytes(generator.bytes(16), "little") for _ in range(20_000)] for _ in range(2))
     operator = Operator.from_masks(x_masks, z_masks, np.ones(20_000), 128)
     assert operator._terms.commuting_groups().max() > 100
 

@@ -9,10 +9,10 @@ import sys
 import threading
 from pathlib import Path
 
-import fixed_circuit
 import numpy as np
 import pytest
 
+import fixed_circuit
 import trueturn as tt
 from trueturn import _native
 
@@ -141,7 +141,7 @@ def test_impossible_thread_counts_are_refused(count):
 
 def test_an_impossible_environment_variable_is_named(monkeypatch):
     monkeypatch.setenv("TRUETURN_NUM_THREADS", "many")
-    with pytest.raises(tt.errors.ArgumentError, match="TRUETURN_NUM_THREADS.*'many'"):
+    with pytest.raises(tt.errors.ArgumentError, match=r"TRUETURN_NUM_THREADS.*'many'"):
         tt.State.random(3, 1).norm()
 
 

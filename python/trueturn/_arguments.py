@@ -67,9 +67,7 @@ def real_array(values: Any, name: str) -> npt.NDArray[np.float64]:
     if array.dtype.kind in "fiu":
         with np.errstate(over="ignore"):
             return np.ascontiguousarray(array, dtype=np.float64)
-    return np.array(
-        [real(value, f"{name}[{number}]") for number, value in enumerate(array.tolist())], dtype=np.float64
-    )
+    return np.array([real(value, f"{name}[{number}]") for number, value in enumerate(array.tolist())], dtype=np.float64)
 
 
 def masks(values: Any, name: str) -> list[int]:
@@ -82,9 +80,7 @@ def masks(values: Any, name: str) -> list[int]:
         raise OperatorError(message, argument=name) from None
     for number, mask in enumerate(numbers):
         if not 0 <= mask < 1 << MAX_QUBITS:
-            message = (
-                f"{name}[{number}]: out of range ({mask}); give a bit mask of at most {MAX_QUBITS} qubits"
-            )
+            message = f"{name}[{number}]: out of range ({mask}); give a bit mask of at most {MAX_QUBITS} qubits"
             raise OperatorError(message, argument=name)
     return numbers
 

@@ -139,6 +139,4 @@ def linear_operator(operator: Operator) -> scipy.sparse.linalg.LinearOperator:
         column = np.ascontiguousarray(vector.reshape(size), dtype=np.complex128)
         return _apply.operator_times(operator, column)
 
-    return scipy.sparse.linalg.LinearOperator(
-        (size, size), matvec=times, rmatvec=times, dtype=np.dtype(np.complex128)
-    )
+    return scipy.sparse.linalg.LinearOperator((size, size), matvec=times, rmatvec=times, dtype=np.dtype(np.complex128))

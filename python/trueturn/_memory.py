@@ -20,9 +20,7 @@ def available_bytes() -> int | None:
     and what the address-space limit leaves. Elsewhere than on Linux: the free pages that ``sysconf``
     reports, else all pages.
     """
-    bounds = [
-        bound for bound in (_kernel_estimate(), *_control_groups(), _address_space()) if bound is not None
-    ]
+    bounds = [bound for bound in (_kernel_estimate(), *_control_groups(), _address_space()) if bound is not None]
     return max(0, min(bounds)) if bounds else None
 
 

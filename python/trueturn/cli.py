@@ -126,8 +126,7 @@ def formulas(as_json: bool) -> int:
     known = [formula(name) for name in all_names()]
     if as_json:
         records = [
-            {"name": one.name, "order": one.order, "stages": len(one.stages), "source": one.source}
-            for one in known
+            {"name": one.name, "order": one.order, "stages": len(one.stages), "source": one.source} for one in known
         ]
         say_json({"kind": "trueturn formulas", "formulas": records})
         return 0
@@ -153,9 +152,7 @@ def reference_document(task: Job, found: Reference) -> dict[str, Any]:
         "schema": 1,
         "title": task.title,
         "times": [float(time) for time in found.times],
-        "expectations": {
-            name: [float(value) for value in values] for name, values in found.expectations.items()
-        },
+        "expectations": {name: [float(value) for value in values] for name, values in found.expectations.items()},
         "certificate": {
             "method": proof.method,
             "proven": bool(proof.proven),
@@ -190,9 +187,7 @@ def say_reference(task: Job, found: Reference) -> None:
         f"{count(proof.applications)} operator applications; spectrum within {outward(low, high)}.",
         *proof.notes,
     ]
-    say_rich(
-        lambda width: Group(Text(task.title, style="bold"), Text(), table, Text(), Text("\n".join(lines)))
-    )
+    say_rich(lambda width: Group(Text(task.title, style="bold"), Text(), table, Text(), Text("\n".join(lines))))
 
 
 def say(text: str) -> None:

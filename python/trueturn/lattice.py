@@ -69,8 +69,7 @@ class Lattice:
                 )
             if (low, high) in seen:
                 raise ModelError(
-                    f"bonds: the bond ({low}, {high}) is listed twice; "
-                    "list it once and give the sum as its strength",
+                    f"bonds: the bond ({low}, {high}) is listed twice; list it once and give the sum as its strength",
                     argument="bonds",
                 )
             seen.add((low, high))
@@ -330,8 +329,7 @@ def _pair(pair: object) -> tuple[int, int]:
         )
     if i == j:
         raise ModelError(
-            f"bonds: a bond joins a site to itself (({i}, {j})); "
-            "leave it out, or give a one-site term as a field",
+            f"bonds: a bond joins a site to itself (({i}, {j})); leave it out, or give a one-site term as a field",
             argument="bonds",
         )
     return i, j

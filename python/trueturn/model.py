@@ -104,8 +104,7 @@ def exchange(
     """
     _lattice(lattice)
     strengths = [
-        (letter, _per_bond(2 * letter.lower(), value, lattice))
-        for letter, value in (("X", xx), ("Y", yy), ("Z", zz))
+        (letter, _per_bond(2 * letter.lower(), value, lattice)) for letter, value in (("X", xx), ("Y", yy), ("Z", zz))
     ]
     terms: _Terms = []
     for bond, (i, j) in enumerate(lattice.bonds):
@@ -215,8 +214,7 @@ def hubbard(lattice: Lattice, hopping: Strength, repulsion: Strength, potential:
     _lattice(lattice)
     if lattice.sites > 64:
         raise ModelError(
-            f"lattice: two qubits a site need more than 128 qubits ({lattice.sites} sites); "
-            "use at most 64 sites",
+            f"lattice: two qubits a site need more than 128 qubits ({lattice.sites} sites); use at most 64 sites",
             argument="lattice",
         )
     t = _per_bond("hopping", hopping, lattice)
@@ -251,8 +249,7 @@ def _fields(lattice: Lattice, **strengths: Strength) -> _Terms:
 def _lattice(lattice: object) -> None:
     if not isinstance(lattice, Lattice):
         raise ModelError(
-            f"lattice: is not a Lattice ({lattice!r}); make one with trueturn.lattice, "
-            "for example lattice.chain(4)",
+            f"lattice: is not a Lattice ({lattice!r}); make one with trueturn.lattice, for example lattice.chain(4)",
             argument="lattice",
         )
 

@@ -130,9 +130,7 @@ class Operator:
             except (TypeError, ValueError):
                 factors = None
             if not isinstance(factors, str):
-                raise OperatorError(
-                    f"{name}: not a pair ({entry!r}); give (coefficient, 'X_0 Z_3')", argument="terms"
-                )
+                raise OperatorError(f"{name}: not a pair ({entry!r}); give (coefficient, 'X_0 Z_3')", argument="terms")
             value = _arguments.real(coefficient, name)
             try:
                 x_mask, z_mask, sign = Terms.parse_factors(factors, qubits)
@@ -179,9 +177,7 @@ class Operator:
         """
         values = _arguments.real_array(coefficients, "coefficients")
         return cls._of(
-            Terms.from_masks(
-                _arguments.masks(x, "x"), _arguments.masks(z, "z"), values, _arguments.qubit_count(qubits)
-            )
+            Terms.from_masks(_arguments.masks(x, "x"), _arguments.masks(z, "z"), values, _arguments.qubit_count(qubits))
         )
 
     @classmethod
@@ -574,9 +570,7 @@ def _rebuild(x: list[int], z: list[int], coefficients: npt.NDArray[np.float64], 
 
 def _operator(other: object) -> Operator:
     if not isinstance(other, Operator):
-        raise OperatorError(
-            f"other: not an Operator ({type(other).__name__}); give an Operator", argument="other"
-        )
+        raise OperatorError(f"other: not an Operator ({type(other).__name__}); give an Operator", argument="other")
     return other
 
 

@@ -144,9 +144,7 @@ class Partition:
         made._qubits = operator.qubits
         made._rule = rule
         if made.operator() != operator or not all(map(_commutes, made._parts)):
-            raise InternalError(
-                f"partition: rule {rule!r} made wrong parts; please report this with the operator"
-            )
+            raise InternalError(f"partition: rule {rule!r} made wrong parts; please report this with the operator")
         return made
 
     @property
@@ -203,9 +201,7 @@ class Partition:
             )
         rest = operator - self.operator()
         if len(rest):
-            largest = max(
-                float(np.max(np.abs(part.coefficients))) for part in (operator, *self._parts) if len(part)
-            )
+            largest = max(float(np.max(np.abs(part.coefficients))) for part in (operator, *self._parts) if len(part))
             worst = int(np.argmax(np.abs(rest.coefficients)))
             missing = float(rest.coefficients[worst])
             if abs(missing) > len(self._parts) * 2.0**-52 * largest:
@@ -246,9 +242,7 @@ class Partition:
         """
         number = _integer("seed", seed, "give an integer of at least 0")
         if number < 0:
-            raise PartitionError(
-                f"seed: is negative ({seed}); give an integer of at least 0", argument="seed"
-            )
+            raise PartitionError(f"seed: is negative ({seed}); give an integer of at least 0", argument="seed")
         order = list(range(len(self._parts)))
         draw = random.Random(number)
         for last in range(len(order) - 1, 0, -1):
@@ -281,20 +275,14 @@ class Partition:
         ['1.0 Z_0', '1.0 X_0', '1.0 Y_0']
         """
         count = len(self._parts)
-        remedy = (
-            f"give each of the numbers 0 to {count - 1} once" if count else "there are no parts to reorder"
-        )
+        remedy = f"give each of the numbers 0 to {count - 1} once" if count else "there are no parts to reorder"
         try:
             entries = list(indices)
         except TypeError:
-            raise PartitionError(
-                f"indices: is not a sequence ({indices!r}); {remedy}", argument="indices"
-            ) from None
+            raise PartitionError(f"indices: is not a sequence ({indices!r}); {remedy}", argument="indices") from None
         order = [_integer("indices", entry, remedy) for entry in entries]
         if sorted(order) != list(range(count)):
-            raise PartitionError(
-                f"indices: does not arrange the {count} parts ({order}); {remedy}", argument="indices"
-            )
+            raise PartitionError(f"indices: does not arrange the {count} parts ({order}); {remedy}", argument="indices")
         return self._in_order(order, "reordered")
 
     def _in_order(self, order: list[int], note: str) -> Partition:
@@ -347,9 +335,7 @@ def _operators(parts: object) -> list[Operator]:
         raise PartitionError(f"parts: is empty ({parts!r}); {remedy}", argument="parts")
     for number, part in enumerate(given):
         if not isinstance(part, Operator):
-            raise PartitionError(
-                f"parts: part {number} is not an Operator ({part!r}); {remedy}", argument="parts"
-            )
+            raise PartitionError(f"parts: part {number} is not an Operator ({part!r}); {remedy}", argument="parts")
     return given
 
 
@@ -359,6 +345,4 @@ def _integer(argument: str, value: object, remedy: str) -> int:
             raise TypeError
         return index(value)  # type: ignore[arg-type]
     except TypeError:
-        raise PartitionError(
-            f"{argument}: is not an integer ({value!r}); {remedy}", argument=argument
-        ) from None
+        raise PartitionError(f"{argument}: is not an integer ({value!r}); {remedy}", argument=argument) from None

@@ -163,9 +163,7 @@ class Rotations:
         for (x_masks, z_masks, angles), times in self._circuit.lists():
             for x, z, angle in zip(x_masks, z_masks, angles, strict=True):
                 totals[x, z] = totals.get((x, z), 0.0) + times * float(angle)
-        return Operator.from_masks(
-            [x for x, _ in totals], [z for _, z in totals], list(totals.values()), self.qubits
-        )
+        return Operator.from_masks([x for x, _ in totals], [z for _, z in totals], list(totals.values()), self.qubits)
 
     def two_qubit_gates(self) -> int:
         """Return the number of two-qubit gates: 2(w-1) for a rotation of weight w.
@@ -228,7 +226,9 @@ def _masks(argument: str, masks: Iterable[int]) -> list[int]:
     except TypeError:
         raise RotationError(f"{argument}: not a sequence of whole numbers; give bit masks", argument=argument) from None
     if any(not 0 <= mask < 1 << 128 for mask in found):
-        raise RotationError(f"{argument}: a mask is negative or longer than 128 bits; give masks of qubits", argument=argument)
+        raise RotationError(
+            f"{argument}: a mask is negative or longer than 128 bits; give masks of qubits", argument=argument
+        )
     return found
 
 

@@ -167,7 +167,9 @@ class State:
         norms = _native.squared_norms(array, 1 if np.size(array) < 1 << 16 else _threads.resolve(None))
         if not np.isfinite(norms).all():
             raise ArgumentError(
-                "array: not finite (it holds NaN or infinite amplitudes); give finite ones", argument="array", value=array
+                "array: not finite (it holds NaN or infinite amplitudes); give finite ones",
+                argument="array",
+                value=array,
             )
         return cls._over(array)
 
@@ -237,9 +239,7 @@ class State:
         """What the last `apply` did, or None."""
         return self._run
 
-    def apply(
-        self, rotations: Rotations, *, threads: int | None = None, progress: Progress | None = None
-    ) -> None:
+    def apply(self, rotations: Rotations, *, threads: int | None = None, progress: Progress | None = None) -> None:
         """Evolve the state in place by a circuit; returns None.
 
         Parameters
@@ -377,7 +377,9 @@ class State:
         ends = np.cumsum(squares)
         if not ends[-1] > 0.0:
             raise ArgumentError(
-                f"state: nothing to draw from (squared norm {ends[-1]:g}); give it amplitudes", argument="state", value=0.0
+                f"state: nothing to draw from (squared norm {ends[-1]:g}); give it amplitudes",
+                argument="state",
+                value=0.0,
             )
         targets = draws * ends[-1]
         blocks = np.minimum(np.searchsorted(ends, targets, side="right"), ends.size - 1)

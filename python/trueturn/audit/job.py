@@ -332,7 +332,5 @@ def read_steps(section: Table) -> int | str:
     if value == "least":
         return "least"
     if isinstance(value, str):
-        raise section.error(
-            "steps", "neither a number nor least", 'write steps = 20 or steps = "least"', value
-        )
+        raise section.error("steps", "neither a number nor least", 'write steps = 20 or steps = "least"', value)
     return section.whole("steps", 'steps = 20 or steps = "least"')

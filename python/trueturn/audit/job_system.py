@@ -73,9 +73,7 @@ def read_system(section: Table, folder: Path) -> Operator:
     given = [key for key in ("terms", "file", "model") if key in section]
     if len(given) != 1:
         found = " and ".join(given) if given else "none"
-        raise section.error(
-            "", f"needs exactly one of terms, file or model ({found} given)", "keep one of them"
-        )
+        raise section.error("", f"needs exactly one of terms, file or model ({found} given)", "keep one of them")
     if given == ["model"]:
         return read_model(section)
     section.only(("terms", "file", "qubits"), {key: "goes with a model only" for key in model_keys()})
@@ -106,9 +104,7 @@ def read_model(section: Table) -> Operator:
     """Make the Hamiltonian of a named model on a named lattice."""
     name = section.choice("model", tuple(STRENGTHS))
     if ("lattice" in section) == ("bonds" in section):
-        raise section.error(
-            "lattice", "needs exactly one of lattice or bonds", 'write lattice = "chain", sites = 8'
-        )
+        raise section.error("lattice", "needs exactly one of lattice or bonds", 'write lattice = "chain", sites = 8')
     kind = None if "bonds" in section else section.choice("lattice", tuple(SIZES))
     required, optional = STRENGTHS[name]
     known = ["model", "extra", "lattice", "bonds", *required, *optional]
@@ -199,9 +195,7 @@ def read_start(section: Table, qubits: int, folder: Path) -> Start:
     sites = read_sites(section, key)
     if key == "pattern":
         if len(sites) > qubits:
-            raise section.error(
-                key, f"longer than the {qubits} qubits of the system", "shorten it", len(sites)
-            )
+            raise section.error(key, f"longer than the {qubits} qubits of the system", "shorten it", len(sites))
         sites = [sites[qubit % len(sites)] for qubit in range(qubits)]
     if len(sites) != qubits:
         wrong = f"describes {len(sites)} qubits, but the system has {qubits}"
@@ -233,9 +227,7 @@ def require_file(section: Table, path: Path) -> None:
     """Refuse a path that is no file, naming it as the job does."""
     if not path.is_file():
         wrong = "is a folder" if path.is_dir() else "no such file"
-        raise section.error(
-            "file", wrong, "the path is taken from the job file's own folder", section.values["file"]
-        )
+        raise section.error("file", wrong, "the path is taken from the job file's own folder", section.values["file"])
 
 
 def require_amplitudes(section: Table, path: Path, qubits: int) -> None:

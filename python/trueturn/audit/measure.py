@@ -107,9 +107,7 @@ class Bench:
 
     def _segments(self, candidate: Candidate, partition: Partition, counts: Sequence[int]) -> list[Rotations]:
         circuits = []
-        for now, was, count, before in zip(
-            self.times, [0.0, *self.times[:-1]], counts, [0, *counts[:-1]], strict=True
-        ):
+        for now, was, count, before in zip(self.times, [0.0, *self.times[:-1]], counts, [0, *counts[:-1]], strict=True):
             circuits.append(candidate.formula.rotations(partition, now - was, count - before))
         return circuits
 

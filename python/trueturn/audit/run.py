@@ -161,9 +161,7 @@ def audit(
     )
 
 
-def _row(
-    bench: Bench, candidate: Candidate, partition: Partition, most_steps: int, tell: Callable[[int], None]
-) -> Row:
+def _row(bench: Bench, candidate: Candidate, partition: Partition, most_steps: int, tell: Callable[[int], None]) -> Row:
     runs: dict[int, Measured] = {}
 
     def run(steps: int) -> Trial:
@@ -256,7 +254,9 @@ def _times(times: float | Iterable[float]) -> list[float]:
     try:
         found = sorted({float(time) for time in given})
     except (TypeError, ValueError):
-        raise ArgumentError(f"times: not numbers ({times!r}); give positive numbers", argument="times", value=times) from None
+        raise ArgumentError(
+            f"times: not numbers ({times!r}); give positive numbers", argument="times", value=times
+        ) from None
     if not found or not all(0.0 < time < math.inf for time in found):
         raise ArgumentError(
             f"times: not positive and finite ({given!r}); give at least one time above 0", argument="times", value=times

@@ -59,9 +59,7 @@ def least_steps(
 
 
 class _Searcher:
-    def __init__(
-        self, run: Callable[[int], Trial], tolerance: float, order: int, unit: int, most: int
-    ) -> None:
+    def __init__(self, run: Callable[[int], Trial], tolerance: float, order: int, unit: int, most: int) -> None:
         self.run, self.tolerance, self.order, self.unit, self.most = run, tolerance, order, unit, most
         self.trials: dict[int, Trial] = {}
 

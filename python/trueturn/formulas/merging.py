@@ -38,9 +38,7 @@ Block = tuple[list[Run], int]
 Columns = tuple[list[int], list[int], list[float]]
 
 
-def rotations_of(
-    stages: Sequence[tuple[Fraction, bool]], partition: Partition, time: float, steps: int
-) -> Rotations:
+def rotations_of(stages: Sequence[tuple[Fraction, bool]], partition: Partition, time: float, steps: int) -> Rotations:
     """Build the circuit of `steps` equal steps; see `Formula.rotations`."""
     runs = merged_runs(stages, len(partition.parts))
     writer = _Writer(partition, Fraction(time) / steps)

@@ -58,9 +58,7 @@ class Shortfall:
     residual: float
 
 
-def measured_order(
-    stages: Sequence[tuple[Fraction, bool]], at_most: int = MOST_ORDER
-) -> tuple[int, Shortfall | None]:
+def measured_order(stages: Sequence[tuple[Fraction, bool]], at_most: int = MOST_ORDER) -> tuple[int, Shortfall | None]:
     """Return the order of a list of stages on general operators.
 
     Parameters

@@ -22,9 +22,7 @@ def exact_weights(argument: str, values: Sequence[Number], name: str) -> list[Fr
     """Turn numbers or decimal texts into the exact fractions that they are; check that they sum to 1."""
     remedy = "give finite numbers, or decimal digits as text"
     if isinstance(values, str) or not hasattr(values, "__iter__"):
-        raise FormulaError(
-            f"{argument}: is not a list of weights ({values!r}); {remedy}", name=name, choices=()
-        )
+        raise FormulaError(f"{argument}: is not a list of weights ({values!r}); {remedy}", name=name, choices=())
     exact: list[Fraction] = []
     for number, value in enumerate(values):
         wanted = isinstance(value, (Real, Rational, Decimal, str)) and not isinstance(value, bool)

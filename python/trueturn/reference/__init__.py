@@ -253,7 +253,9 @@ def _times(times: float | Iterable[float]) -> list[float]:
         many: list[Any] = [times] if single else list(times)  # type: ignore[arg-type]
         found = [float(time) for time in many]
     except (TypeError, ValueError):
-        raise ArgumentError(f"times: not numbers ({times!r}); give finite numbers", argument="times", value=times) from None
+        raise ArgumentError(
+            f"times: not numbers ({times!r}); give finite numbers", argument="times", value=times
+        ) from None
     if not found:
         raise ArgumentError("times: empty; give at least one time", argument="times", value=times)
     for time in found:
@@ -282,7 +284,9 @@ def _check(
     for name, observable in observables.items():
         require_same_qubits(state, observable, f"observables[{name!r}]")
     if method not in METHODS:
-        raise ArgumentError(f"method: unknown ({method!r}); give one of {', '.join(METHODS)}", argument="method", value=method)
+        raise ArgumentError(
+            f"method: unknown ({method!r}); give one of {', '.join(METHODS)}", argument="method", value=method
+        )
     if method == "dense" and state.qubits > DENSE_LIMIT:
         raise ArgumentError(
             f"method: dense is for at most {DENSE_LIMIT} qubits ({state.qubits} given); use chebyshev",
@@ -301,5 +305,7 @@ def _check(
     slack = 1e-3 if state.dtype == np.dtype(np.complex64) else 1e-6
     if abs(norm - 1.0) > slack:
         raise ArgumentError(
-            f"state: not normalised (norm {norm:.9g}); divide its amplitudes by their norm", argument="state", value=norm
+            f"state: not normalised (norm {norm:.9g}); divide its amplitudes by their norm",
+            argument="state",
+            value=norm,
         )

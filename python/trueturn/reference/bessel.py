@@ -8,7 +8,6 @@ from functools import lru_cache
 
 import numpy as np
 import numpy.typing as npt
-from scipy.optimize import minimize_scalar
 
 __all__ = ["bessel_values", "least_degree", "tail_bound", "truncation"]
 
@@ -22,6 +21,8 @@ def tail_bound(x: float, degree: int) -> float:
     Cauchy's estimate on the circle of radius ρ gives |J_k(x)| ≤ e^{x(ρ-1/ρ)/2} ρ^{-k}; the sum is geometric. Any ρ > 1
     is valid, so the minimisation need not be exact.
     """
+    from scipy.optimize import minimize_scalar  # slow to import, so only where it is needed
+
     x = abs(x)
     if x == 0.0:
         return 0.0

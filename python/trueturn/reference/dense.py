@@ -7,7 +7,6 @@ from typing import Any
 
 import numpy as np
 import numpy.typing as npt
-from scipy.linalg import eigh
 
 from trueturn.operator import Operator
 from trueturn.reference.certificate import UNIT, Certificate
@@ -27,6 +26,8 @@ def evolve(
     The last part is estimated. Divide and conquer keeps V orthogonal to a few u; LAPACK's default of relatively robust
     representations does not.
     """
+    from scipy.linalg import eigh  # slow to import, so only where it is needed
+
     matrix = operator.dense()
     values, vectors = eigh(matrix, driver="evd")
     residual = float(np.linalg.norm(matrix @ vectors - vectors * values))

@@ -8,7 +8,6 @@ from typing import Any
 
 import numpy as np
 import numpy.typing as npt
-from scipy.linalg import eigh_tridiagonal
 
 from trueturn import _memory, _native
 from trueturn.errors import ToleranceError
@@ -50,9 +49,13 @@ def evolve(
     .. [1] T. Jawecki, W. Auzinger, O. Koch, Computable upper error bounds for Krylov approximations to matrix
        exponentials and associated φ-functions, BIT Numer. Math. 60, 157 (2020), Theorem 1 (from memory).
     """
+    from scipy.linalg import eigh_tridiagonal  # slow to import, so only where it is needed
+
     dimension = min(_DIMENSION, start.size)
     size = 16 * start.size
-    _memory.require((dimension + 2 + len(times)) * size, "reference", lambda n: (dimension + 2 + len(times)) * (16 << n))
+    _memory.require(
+        (dimension + 2 + len(times)) * size, "reference", lambda n: (dimension + 2 + len(times)) * (16 << n)
+    )
     last = times[-1]
     vector: Vector = start.astype(np.complex128)
     norm = float(np.linalg.norm(vector))

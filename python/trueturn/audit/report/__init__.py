@@ -45,9 +45,7 @@ def require_replaceable(folder: Path) -> None:
             raise refuse("exists and is not an audit folder", "choose another name, or empty it first")
         strangers = [name for name in names if name not in FILES]
         if strangers:
-            raise refuse(
-                f"holds {strangers[0]}, which is no part of an audit", "move it away, or choose another name"
-            )
+            raise refuse(f"holds {strangers[0]}, which is no part of an audit", "move it away, or choose another name")
     above = next(place for place in folder.absolute().parents if place.exists())
     if not above.is_dir() or not os.access(above, os.W_OK | os.X_OK):
         raise refuse("cannot be made here", "choose a place that you may write to")

@@ -145,9 +145,7 @@ def reference_data(audit: Audit) -> dict[str, Any]:
     return {
         "times": [float(time) for time in reference.times],
         "expectations": {name: numbers(values) for name, values in reference.expectations.items()},
-        "expectation_bounds": {
-            name: numbers(values) for name, values in reference.expectation_bounds.items()
-        },
+        "expectation_bounds": {name: numbers(values) for name, values in reference.expectation_bounds.items()},
         "summary": words.certificate_line(audit),
         "method": certificate.method,
         "proven": bool(certificate.proven),

@@ -10,9 +10,9 @@ from html import escape
 from importlib import resources
 from typing import TYPE_CHECKING
 
+from trueturn.audit.figures import count, plain, upper
 from trueturn.audit.report import words
 from trueturn.audit.report.document import build_facts
-from trueturn.audit.figures import count, plain, upper
 from trueturn.audit.report.pictures import (
     MOST_OBSERVABLES,
     gates_picture,
@@ -114,10 +114,7 @@ def table(audit: Audit) -> str:
 
 def framed(head: str, rows: str) -> str:
     """Put heading cells and rows into a table that scrolls sideways where it must."""
-    return (
-        f'<div class="scroll">\n<table>\n<thead><tr>{head}</tr></thead>\n'
-        f"<tbody>\n{rows}\n</tbody>\n</table>\n</div>"
-    )
+    return f'<div class="scroll">\n<table>\n<thead><tr>{head}</tr></thead>\n<tbody>\n{rows}\n</tbody>\n</table>\n</div>'
 
 
 def class_of(kind: str) -> str:
@@ -232,9 +229,7 @@ def inputs(audit: Audit) -> str:
         f'<p class="small">{escape(name)}</p>\n<pre class="terms">{escape(shown_terms(operator))}</pre>'
         for name, operator in operators
     )
-    return (
-        definitions(facts) + "\n" + blocks + '\n<p class="small">audit.json holds every term and figure.</p>'
-    )
+    return definitions(facts) + "\n" + blocks + '\n<p class="small">audit.json holds every term and figure.</p>'
 
 
 def shown_terms(operator: Operator) -> str:
@@ -250,8 +245,4 @@ def made_with(audit: Audit) -> str:
 
 def definitions(facts: Iterable[tuple[str, str]]) -> str:
     """Write names and values in two columns."""
-    return (
-        "<dl>\n"
-        + "\n".join(f"<dt>{escape(key)}</dt><dd>{escape(value)}</dd>" for key, value in facts)
-        + "\n</dl>"
-    )
+    return "<dl>\n" + "\n".join(f"<dt>{escape(key)}</dt><dd>{escape(value)}</dd>" for key, value in facts) + "\n</dl>"

@@ -6,8 +6,8 @@ import math
 from collections.abc import Callable, Sequence
 from typing import TYPE_CHECKING, Any
 
-from trueturn.audit.report.canvas import GRID, INK, MARKERS, MUTED, PAPER, SERIES, draw, logarithmic
 from trueturn.audit.figures import plain
+from trueturn.audit.report.canvas import GRID, INK, MARKERS, MUTED, PAPER, SERIES, draw, logarithmic
 
 if TYPE_CHECKING:
     from trueturn.audit.result import Audit, Row, Trial
@@ -50,9 +50,7 @@ def trials_picture(audit: Audit, name: str, label: str, place: Callable[[Trial],
             middles, arms = bars([trial.error for trial in trials], floor)
             colour, marker = SERIES[index % len(SERIES)], MARKERS[index % len(MARKERS)]
             axes.plot(at, middles, color=colour, linewidth=1.0, alpha=0.55)
-            axes.errorbar(
-                at, middles, yerr=arms, fmt="none", ecolor=colour, elinewidth=1.4, capsize=2.5, capthick=1.0
-            )
+            axes.errorbar(at, middles, yerr=arms, fmt="none", ecolor=colour, elinewidth=1.4, capsize=2.5, capthick=1.0)
             full = [trial.steps == row.steps for trial in trials]
             for tested, face, size in ((False, PAPER, 5.0), (True, colour, 8.0)):
                 chosen = [(x, y) for x, y, mark in zip(at, middles, full, strict=True) if mark is tested]
@@ -85,9 +83,7 @@ def trials_picture(audit: Audit, name: str, label: str, place: Callable[[Trial],
         logarithmic(axes.yaxis)
         figure.legend(loc="outside upper left", ncols=2, fontsize=9.5, handletextpad=0.3, columnspacing=1.2)
 
-    text = (
-        f"Error against {label} for {len(audit.rows)} candidates, with the tolerance {plain(audit.tolerance)}"
-    )
+    text = f"Error against {label} for {len(audit.rows)} candidates, with the tolerance {plain(audit.tolerance)}"
     return draw(f"picture-{name}", (5.2, 4.1), text, paint)
 
 
@@ -252,9 +248,7 @@ def floor_of(audit: Audit) -> float:
     """Give the lowest error worth drawing: an interval that reaches 0 ends there on a logarithmic axis."""
     found = [trial.error for row in audit.rows for trial in row.trials]
     found += [row.error for row in audit.rows]
-    ends = (
-        [low for low, _ in found if low > 0] or [high for _, high in found if high > 0] or [audit.tolerance]
-    )
+    ends = [low for low, _ in found if low > 0] or [high for _, high in found if high > 0] or [audit.tolerance]
     return min([*ends, audit.tolerance]) / 3
 
 

@@ -13,8 +13,8 @@ from typing import TYPE_CHECKING
 from rich.console import Console, Group, RenderableType
 from rich.text import Text
 
-from trueturn.audit.report import words
 from trueturn.audit.figures import count
+from trueturn.audit.report import words
 
 if TYPE_CHECKING:
     from trueturn.audit.result import Audit, Row

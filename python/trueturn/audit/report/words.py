@@ -31,15 +31,11 @@ HARDWARE = (
 def tolerance_words(audit: Audit) -> str:
     """Say what is asked of a candidate, to follow "keep the" or to stand alone."""
     tolerance = plain(audit.tolerance)
-    when = (
-        f"at t = {plain(audit.times[0])}" if len(audit.times) == 1 else f"at each of {len(audit.times)} times"
-    )
+    when = f"at t = {plain(audit.times[0])}" if len(audit.times) == 1 else f"at each of {len(audit.times)} times"
     if audit.quantity == "state":
         return f"state error within {tolerance} {when}"
     share = " of its norm" if audit.relative_to == "norm" else ""
-    which = (
-        "the observable" if len(audit.observables) == 1 else f"each of {len(audit.observables)} observables"
-    )
+    which = "the observable" if len(audit.observables) == 1 else f"each of {len(audit.observables)} observables"
     return f"error within {tolerance}{share} on {which} {when}"
 
 
@@ -49,9 +45,7 @@ def headline(audit: Audit) -> str:
     if total == 1:
         fares = {"meets": "the candidate keeps the", "misses": "the candidate does not keep the"}
         return f"{fares.get(audit.verdict, 'it is undecided whether the candidate keeps the')} {asked}"
-    tally = {
-        name: sum(row.verdict == name for row in audit.rows) for name in ("meets", "misses", "undecided")
-    }
+    tally = {name: sum(row.verdict == name for row in audit.rows) for name in ("meets", "misses", "undecided")}
     rest = ", ".join(f"{number} {name}" for name, number in tally.items() if name != "meets" and number)
     keep = "keeps" if tally["meets"] == 1 else "keep"
     return f"{tally['meets']} of {total} candidates {keep} the {asked}" + (f" ({rest})" if rest else "")
