@@ -17,8 +17,8 @@ import trueturn as tt
 from trueturn import _native
 
 # SHA-256 of the little-endian amplitudes after `fixed_circuit.circuit()` on the product state 01+-01+-…
-DOUBLE = "to be filled"
-SINGLE = "to be filled"
+DOUBLE = "1065c9a459620a2f69b4ac0aafbbebfb72a5cb4529e21eef6a84d6d1969deed8"
+SINGLE = "d4e3a7a0359fb7eafe71a61ec3560860718544ea4aa7699db92ac7d3e080e683"
 
 
 @pytest.mark.parametrize("threads", [1, 2, 3, 5, 7])

@@ -5,6 +5,7 @@ use pyo3::prelude::*;
 
 use super::error::to_python;
 use crate::error::{Error, Result};
+use crate::operation::joined;
 use crate::pauli::PauliString;
 use crate::rotations::{Body, Rotation, Rotations};
 
@@ -118,6 +119,16 @@ impl PyRotations {
     /// Depth in two-qubit gates, saturating; see [`crate::cost::depth`].
     fn two_qubit_depth(&self) -> u64 {
         crate::cost::depth(&self.rotations)
+    }
+
+    /// Σ |θ| over the rotations that the engine joins in pairs, for rounding bounds.
+    fn joined_angle_sum(&self) -> f64 {
+        let mut sum = 0.0;
+        self.rotations.for_each_list(&mut |list, times| {
+            let pairs = joined(list).into_iter().filter_map(|operation| Some((operation.first, operation.second?)));
+            sum += times as f64 * pairs.map(|(one, two)| one.angle.abs() + two.angle.abs()).sum::<f64>();
+        });
+        sum
     }
 
     /// Σ |θ|, for rounding bounds.
