@@ -377,7 +377,9 @@ class State:
         ends = np.cumsum(squares)
         if not ends[-1] > 0.0:
             raise ArgumentError(
-                f"state: nothing to draw from (squared norm {ends[-1]:g}); give it amplitudes", argument="state", value=0.0
+                f"state: nothing to draw from (squared norm {ends[-1]:g}); give it amplitudes",
+                argument="state",
+                value=0.0,
             )
         targets = draws * ends[-1]
         blocks = np.minimum(np.searchsorted(ends, targets, side="right"), ends.size - 1)
