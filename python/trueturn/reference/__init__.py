@@ -42,8 +42,8 @@ class Reference:
         furthest from 0.
     expectations : mapping of str to ndarray, shape (len(times),), float64
     expectation_bounds : mapping of str to ndarray, shape (len(times),), float64
-        How far each expectation can be from the exact one: ‖O‖ (2δ + δ²) plus rounding, δ the state's error bound and O
-        without its identity term, whose share is that of the start exactly.
+        How far each expectation can be from the exact one: ‖O‖ (2δ + δ²) plus rounding, δ the state's error
+        bound and O without its identity term, whose share is that of the start exactly.
     certificate : Certificate
     """
 
@@ -158,7 +158,9 @@ def reference(
     return Reference(
         times=tuple(asked),
         states=[kept[time] for time in order if time in kept],
-        expectations={name: np.array([record.values[time] for time in asked]) for name, record in records.items()},
+        expectations={
+            name: np.array([record.values[time] for time in asked]) for name, record in records.items()
+        },
         expectation_bounds={
             name: np.array([record.bound(certificate.error_bound[time]) for time in asked])
             for name, record in records.items()
@@ -191,7 +193,7 @@ def _run(
 
 
 def _refuse_tolerance(certificate: Certificate, tolerance: float) -> NoReturn:
-    """Refuse what the cross-checking methods reach only above the tolerance; the Chebyshev plan refuses by itself."""
+    """Refuse what a cross-checking method reaches only above the tolerance; Chebyshev plans refuse themselves."""
     rounding = max(certificate.rounding.values())
     achievable = 2.0 * rounding / (1.0 - krylov.TRUNCATION_SHARE)
     raise ToleranceError(
@@ -205,8 +207,8 @@ def _refuse_tolerance(certificate: Certificate, tolerance: float) -> NoReturn:
 class _Record:
     """Expectations of one observable along the way.
 
-    The identity term counts with the norm of the start, which exact evolution keeps: the truncated one keeps it only within
-    its error bound, and that would have to be paid for with the size of the term.
+    The identity term counts with the norm of the start, which exact evolution keeps: the truncated one keeps it
+    only within its error bound, and that would have to be paid for with the size of the term.
     """
 
     def __init__(self, observable: Operator, start: State, threads: int) -> None:

@@ -60,7 +60,7 @@ def norm_bound(observable: Operator) -> float:
 
 
 def expectation_shift(norm: float, distance: float, length: float = 1.0) -> float:
-    """Return how far an expectation can move when a vector of this length moves by `distance`: ‖O‖ (2 ‖ψ‖ δ + δ²)."""
+    """Return how far an expectation moves at most when a vector moves by `distance`: ‖O‖ (2 ‖ψ‖ δ + δ²)."""
     return norm * distance * (2.0 * length + distance)
 
 

@@ -22,9 +22,9 @@ def evolve(
     Notes
     -----
     Nothing is truncated. Rounding follows from what is measured of the diagonalisation, r = ‖H V - V Λ‖ and
-    q = ‖V† V - 1‖ in the Frobenius norm: r t (1 + q) + 2 q, plus u (4 d + 4 ‖H‖ t) for the products and phases in dimension d.
-    The last part is estimated. Divide and conquer keeps V orthogonal to a few u; LAPACK's default of relatively robust
-    representations does not.
+    q = ‖V† V - 1‖ in the Frobenius norm: r t (1 + q) + 2 q, plus u (4 d + 4 ‖H‖ t) for the products and phases
+    in dimension d. The last part is estimated. Divide and conquer keeps V orthogonal to a few u; LAPACK's default
+    of relatively robust representations does not.
     """
     from scipy.linalg import eigh  # slow to import, so only where it is needed
 
@@ -35,7 +35,8 @@ def evolve(
     amplitudes = vectors.conj().T @ start.astype(np.complex128)
     norm = max(abs(float(values[0])), abs(float(values[-1])))
     rounding = {
-        time: residual * time * (1.0 + skew) + 2.0 * skew + UNIT * 4.0 * (start.size + norm * time) for time in times
+        time: residual * time * (1.0 + skew) + 2.0 * skew + 4.0 * UNIT * (start.size + norm * time)
+        for time in times
     }
     certificate = Certificate(
         method="dense",

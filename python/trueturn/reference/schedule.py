@@ -118,7 +118,7 @@ def _refusal(tolerance: float, bound: float) -> ToleranceError:
 def _least_rounding(operator: Operator, interval: tuple[float, float], time: float) -> float:
     """Return what any plan's rounding bound exceeds, so that hopeless requests are refused without planning.
 
-    Each recurrence counts at least `local` Σ k |a_k|, and x sin θ = |d/dθ exp(-ix cos θ)| ≤ Σ k |a_k| at every θ.
+    Each recurrence counts at least `local` Σ k |a_k|, and x sin θ = |d/dθ exp(-ix cos θ)| ≤ Σ k |a_k| for all θ.
     """
     centre, half = _centred(interval)
     return min(_local_error(operator, centre, half * (1.0 + w)) * half * time for w in _WIDENINGS)
@@ -259,9 +259,9 @@ def _local_error(operator: Operator, centre: float, half: float) -> float:
 
 @lru_cache(maxsize=4096)
 def _rounding(x: float, degree: int, turn: float, local: float, growth: float) -> float:
-    """Bound what arithmetic adds to one sum: the recurrence, the coefficients, the additions, the final phase.
+    """Bound what arithmetic adds to one sum: recurrence, coefficients, additions, final phase.
 
-    The argument x is a rounded product of a rounded difference: off by 2 u x, it turns the sum by as much at most.
+    The argument x is a rounded product of a rounded difference: off by 2 u x, it moves the sum by as much at most.
     """
     values = np.abs(bessel_values(x)[: degree + 1])
     values[1:] *= 2.0
