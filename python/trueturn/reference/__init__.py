@@ -158,9 +158,7 @@ def reference(
     return Reference(
         times=tuple(asked),
         states=[kept[time] for time in order if time in kept],
-        expectations={
-            name: np.array([record.values[time] for time in asked]) for name, record in records.items()
-        },
+        expectations={name: np.array([record.values[time] for time in asked]) for name, record in records.items()},
         expectation_bounds={
             name: np.array([record.bound(certificate.error_bound[time]) for time in asked])
             for name, record in records.items()

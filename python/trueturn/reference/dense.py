@@ -35,8 +35,7 @@ def evolve(
     amplitudes = vectors.conj().T @ start.astype(np.complex128)
     norm = max(abs(float(values[0])), abs(float(values[-1])))
     rounding = {
-        time: residual * time * (1.0 + skew) + 2.0 * skew + 4.0 * UNIT * (start.size + norm * time)
-        for time in times
+        time: residual * time * (1.0 + skew) + 2.0 * skew + 4.0 * UNIT * (start.size + norm * time) for time in times
     }
     certificate = Certificate(
         method="dense",
