@@ -145,7 +145,16 @@ def test_bounds_hold_for_observables_and_states_and_are_absent_where_no_theorem_
         found = tt.audit(CHAIN, START, [0.5, 1.0], candidates, 1e-3, quantity, WATCHED)
         lie, strang, suzuki = found.rows
         assert lie.error[1] <= lie.bound and strang.error[1] <= strang.bound
-        assert suzuki.bound is None and "no proven bound" in suzuki.bound_source
+        assert suzuki.bound is None and "no theorem" in suzuki.bound_source
+
+
+def test_an_identity_term_of_an_observable_does_not_spoil_the_interval():
+    shifted = {"m": WATCHED["m"] + 1e6}
+    candidates = [tt.Candidate("strang", steps=5)]
+    plain = tt.audit(CHAIN, START, 1.0, candidates, 1e-3, observables=WATCHED).rows[0].points[0]
+    found = tt.audit(CHAIN, START, 1.0, candidates, 1e-3, observables=shifted, reference_tolerance=1e-6).rows[0]
+    low, high = found.points[0].error
+    assert low <= plain.error[1] and plain.error[0] <= high and high - low < 1e-5
 
 
 def test_costs_are_those_of_the_circuit_that_ran():

@@ -12,7 +12,7 @@ from hypothesis import strategies as st
 
 import oracle
 from strategies import operators, states
-from trueturn import Operator
+from trueturn import Operator, errors
 from trueturn.errors import (
     ArgumentError,
     MemoryRefusedError,
@@ -369,3 +369,24 @@ def test_files_that_hold_no_state_are_refused(tmp_path):
     np.save(path, np.array([{}], dtype=object), allow_pickle=True)
     with pytest.raises(ArgumentError, match=r"^path: "):
         State.load(path)
+
+
+@pytest.mark.parametrize(
+    ("call", "message"),
+    [
+        (lambda s: s.apply(Operator("Z_0", qubits=3)), r"rotations: no Rotations \(Operator\); make one"),
+        (lambda s: s.expectation("Z_0"), r"operator: no Operator \(str\); make one from text"),
+        (lambda s: s.overlap(None), r"other: no State \(NoneType\); make one"),
+        (lambda s: s.distance(s.amplitudes), r"other: no State \(ndarray\); make one"),
+    ],
+)
+def test_other_things_than_circuits_operators_and_states_are_refused(call, message):
+    with pytest.raises(errors.ArgumentError, match=message):
+        call(State.product("0+1"))
+
+
+def test_absurd_sizes_and_types_are_refused_by_class():
+    with pytest.raises(errors.MemoryRefusedError, match="does not fit in memory"):
+        State.computational(0, 5000)
+    with pytest.raises(errors.StateTypeError, match="dtype: wrong type .'nonsense'.; give complex128 or complex64"):
+        State.product("0", dtype="nonsense")

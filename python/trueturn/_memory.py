@@ -74,8 +74,12 @@ def readable(count: int) -> str:
     power = min((max(count, 1).bit_length() - 1) // 10, len(units) - 1)
     if power == 0:
         return f"{count} B"
-    value = count / 1024**power
-    return f"{value:.1f} {units[power]}" if value < 1e6 else f"{value:.1e} {units[power]}"
+    # Whole numbers, since an absurd request has more bytes than a float can count.
+    tenths = count * 10 // 1024**power
+    if tenths >= 10**8:
+        return f"10^{len(str(count)) - 1} B"
+    value = tenths / 10
+    return f"{value:.1f} {units[power]}"
 
 
 def _kernel_estimate() -> int | None:

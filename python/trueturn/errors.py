@@ -93,14 +93,14 @@ class StateShapeError(TrueturnError, ValueError):
 
 
 class StateTypeError(TrueturnError, TypeError):
-    """Not an array, or an array of a type other than complex128 and complex64."""
+    """Not an array, or an array of another type than complex128 and complex64 in native byte order."""
 
     dtype: Any
     expected: Any
 
 
 class StateLayoutError(TrueturnError, ValueError):
-    """A strided, misaligned, byte-swapped or read-only array."""
+    """A strided, misaligned or read-only array."""
 
     reason: str
 

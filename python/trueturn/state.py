@@ -267,6 +267,7 @@ class State:
         -----
         Rounding: see `Rotations.rounding_bound`. Memory beyond the state: one coset of 64 KiB for each thread.
         """
+        _require("rotations", rotations, Rotations, "make one by a formula's .rotations")
         self._run = Run(*self._guarded(_native.evolve, rotations._circuit, _threads.resolve(threads), progress))
 
     def _guarded(self, call: Callable[..., Any], *arguments: Any) -> Any:
@@ -301,6 +302,7 @@ class State:
         StateShapeError
             The operator acts on another number of qubits.
         """
+        _require("operator", operator, Operator, "make one from text: Operator('Z_0', qubits=…)")
         return _native.expectation(operator._terms, self.amplitudes, _threads.resolve(threads))
 
     def variance(self, operator: Operator, *, threads: int | None = None) -> float:
@@ -329,6 +331,7 @@ class State:
         StateShapeError, StateTypeError
             The states differ in qubits or precision.
         """
+        _require("other", other, State, "make one by State.from_array")
         return _native.overlap(self.amplitudes, other.amplitudes, _threads.resolve(threads))
 
     def distance(self, other: State, phase: str = "kept", *, threads: int | None = None) -> float:
@@ -347,6 +350,7 @@ class State:
         """
         if phase not in ("kept", "free"):
             raise ArgumentError(f'phase: unknown ({phase!r}); give "kept" or "free"', argument="phase", value=phase)
+        _require("other", other, State, "make one by State.from_array")
         factor = 1.0 + 0.0j
         if phase == "free":
             shared = other.overlap(self, threads=threads)
@@ -412,13 +416,25 @@ class State:
 
 
 def _allocate(what: str, qubits: int, dtype: npt.DTypeLike) -> npt.NDArray[Any]:
-    kind = np.dtype(dtype)
+    try:
+        kind = np.dtype(dtype)
+    except TypeError:
+        kind = np.dtype(np.void)
     if kind not in (np.dtype(np.complex128), np.dtype(np.complex64)):
         raise StateTypeError(
-            f"dtype: wrong type ({kind}); give complex128 or complex64", dtype=kind, expected="complex128 or complex64"
+            f"dtype: wrong type ({dtype!r}); give complex128 or complex64",
+            dtype=kind,
+            expected="complex128 or complex64",
         )
     _memory.require(kind.itemsize << qubits, what, lambda n: kind.itemsize << n)
     return np.zeros(1 << qubits, dtype=kind)
+
+
+def _require(argument: str, value: object, kind: type, remedy: str) -> None:
+    if not isinstance(value, kind):
+        raise ArgumentError(
+            f"{argument}: no {kind.__name__} ({type(value).__name__}); {remedy}", argument=argument, value=value
+        )
 
 
 def _whole(argument: str, value: Any, least: int) -> int:

@@ -60,6 +60,8 @@ class Bench:
     readout: str
     threads: int
     norms: Mapping[str, float] = field(init=False)
+    _bare: Mapping[str, Operator] = field(init=False)
+    _constants: Mapping[str, float] = field(init=False)
     unit: float = field(init=False)
     _work: State = field(init=False)
     _expectation_rounding: Mapping[str, float] = field(init=False)
@@ -72,6 +74,10 @@ class Bench:
             name: expectation_rounding(observable, self.start.qubits) * (self.unit / UNIT)
             for name, observable in self.observables.items()
         }
+        # An identity term counts with the norm of the start on both sides, so that it cannot spoil the comparison.
+        squared = self.start.norm(threads=self.threads) ** 2
+        self._bare = {name: observable.without_identity() for name, observable in self.observables.items()}
+        self._constants = {name: o.identity_coefficient * squared for name, o in self.observables.items()}
         self._work = self.start.copy()
 
     def step_unit(self) -> int:
@@ -117,7 +123,7 @@ class Bench:
         return [self._observable_error(place, name, rounding) for name in self.observables]
 
     def _observable_error(self, place: int, name: str, rounding: float) -> PointError:
-        value = self._work.expectation(self.observables[name], threads=self.threads)
+        value = self._constants[name] + self._work.expectation(self._bare[name], threads=self.threads)
         expected = float(self.reference.expectations[name][place])
         slack = (
             float(self.reference.expectation_bounds[name][place])
