@@ -1,9 +1,8 @@
 //! How far is one rotation, and a step of many, from the in-place sweep of the same state?
 //!
 //! `cargo bench --no-default-features --bench passes -- [QUBITS ...]` prints, for one and two threads, the best of nine
-//! times of each circuit as a multiple of S1, the one-thread sweep that multiplies every amplitude by a constant.
+//! times of each circuit as a multiple of S1, the one-thread engine pass that multiplies every amplitude by a constant.
 
-use std::hint::black_box;
 use std::time::Instant;
 
 use _native::evolve::evolve;
@@ -31,8 +30,10 @@ fn best(mut work: impl FnMut()) -> f64 {
 fn report(qubits: u32) {
     let mut state = vec![Complex64::new(0.0, 0.0); 1 << qubits];
     state[0].re = 1.0;
-    let turn = Complex64::from_polar(1.0, 1e-3);
-    let sweep = best(|| black_box(&mut state).iter_mut().for_each(|amplitude| *amplitude *= turn));
+    let turn = Rotations::from_list(qubits, vec![], 1e-3).expect("a finite phase");
+    let sweep = best(|| {
+        evolve(&mut state, &turn, 1, &Control::default()).expect("no stop asked");
+    });
     println!("{qubits} qubits: S1 = {:.3} ms, {:.3} ns an amplitude", 1e3 * sweep, 1e9 * sweep / state.len() as f64);
     println!("{:<28}{:>10}{:>8}{:>12}{:>12}", "circuit", "rotations", "passes", "1 thread", "2 threads");
     for (name, list) in circuits(qubits) {

@@ -388,5 +388,5 @@ def test_other_things_than_circuits_operators_and_states_are_refused(call, messa
 def test_absurd_sizes_and_types_are_refused_by_class():
     with pytest.raises(errors.MemoryRefusedError, match="does not fit in memory"):
         State.computational(0, 5000)
-    with pytest.raises(errors.StateTypeError, match="dtype: wrong type .'nonsense'.; give complex128 or complex64"):
+    with pytest.raises(errors.StateTypeError, match=r"dtype: wrong type \(nonsense\); give complex128"):
         State.product("0", dtype="nonsense")

@@ -196,9 +196,9 @@ class Rotations:
         With a' = c a + w b rounded after each product and sum, a rotation's arithmetic costs at most 2 u (|c| + |s|) ≤
         2√2 u in the 2-norm, and a sine and cosine within one unit in the last place cost 2 u: 5 u bounds both. Phase
         passes multiply factors together at √5 u and 2 u each (Brent, Percival, Zimmermann, Math. Comp. 76, 1469 (2007)),
-        below 5 u for each string. An angle off by k roundings costs k u |θ|; where the engine joins two
-        rotations about strings with one x mask, adding their angles costs u (|θ_1| + |θ_2|). The global phase counts as one rotation.
-        The factor exp(5 N u), N rotations, covers products of errors.
+        below 5 u for each string. An angle off by k roundings costs k u |θ|; where the engine joins two rotations about
+        strings with one x mask, adding their angles costs u (|θ_1| + |θ_2|). The global phase counts as one rotation. A
+        factor exp(bound) covers products of errors.
         """
         double = 2.0**-53
         count = self.count + (1 if self.phase else 0)

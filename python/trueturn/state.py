@@ -417,16 +417,17 @@ class State:
 
 def _allocate(what: str, qubits: int, dtype: npt.DTypeLike) -> npt.NDArray[Any]:
     try:
-        kind = np.dtype(dtype)
+        kind: np.dtype[Any] | None = np.dtype(dtype)
     except TypeError:
-        kind = np.dtype(np.void)
-    if kind not in (np.dtype(np.complex128), np.dtype(np.complex64)):
+        kind = None
+    if kind is None or kind not in (np.dtype(np.complex128), np.dtype(np.complex64)):
         raise StateTypeError(
-            f"dtype: wrong type ({dtype!r}); give complex128 or complex64",
-            dtype=kind,
+            f"dtype: wrong type ({dtype if kind is None else kind}); give complex128 or complex64",
+            dtype=dtype,
             expected="complex128 or complex64",
         )
-    _memory.require(kind.itemsize << qubits, what, lambda n: kind.itemsize << n)
+    size = kind.itemsize
+    _memory.require(size << qubits, what, lambda n: size << n)
     return np.zeros(1 << qubits, dtype=kind)
 
 
