@@ -6,7 +6,20 @@ from typing import Any, final
 import numpy as np
 import numpy.typing as npt
 
-__all__ = ["Terms"]
+__all__ = [
+    "Rotations",
+    "Terms",
+    "application_rounding",
+    "apply_terms",
+    "chebyshev_sums",
+    "distance",
+    "evolve",
+    "expectation",
+    "instruction_sets",
+    "overlap",
+    "pairwise_sum",
+    "squared_norms",
+]
 
 @final
 class Terms:

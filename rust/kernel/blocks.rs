@@ -5,7 +5,7 @@ use num_complex::Complex;
 use super::Work;
 use super::lanes::{LANES, LaneString, Real, for_each_permutation, mixed, permuted};
 
-/// out[q] += factor · (P in)[q] for the groups of one block; `source` is the block that the string's high bits select.
+/// out += factor · P in for the groups of one block; `source` is the block that the string's high bits select.
 pub struct Accumulate<'a, T> {
     /// Sum so far.
     pub out: &'a mut [[T; LANES]],

@@ -34,7 +34,7 @@ pub trait Work {
     fn run(self) -> Self::Output;
 }
 
-/// An instruction set that this processor has. Values other than [`Isa::Baseline`] exist only where it was detected.
+/// An instruction set that this processor has. Values other than [`Isa::BASELINE`] exist only where it was detected.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
 pub struct Isa(Level);
 

@@ -1,8 +1,8 @@
-//! The one door through which long work on states leaves the interpreter lock.
+//! The one door through which long work leaves the interpreter lock.
 
 use std::panic::{AssertUnwindSafe, catch_unwind};
 use std::thread;
-use std::time::Duration;
+use std::time::{Duration, Instant};
 
 use pyo3::exceptions::PyKeyboardInterrupt;
 use pyo3::prelude::*;
@@ -10,6 +10,7 @@ use pyo3::prelude::*;
 use super::error::to_python;
 use crate::error::{Error, Result};
 use crate::team::Control;
+use crate::terms::Check;
 
 /// Time between two looks for signals; an interrupt is heard within it.
 const LOOK: Duration = Duration::from_millis(25);
@@ -58,6 +59,30 @@ pub fn run<T: Send>(
         (Err(error @ (Error::Abandoned | Error::Internal { .. })), _) | (Err(error), None) => Err(to_python(py, error)),
         (_, Some(raised)) => Err(raised),
         (Ok(value), None) => Ok(value),
+    }
+}
+
+/// Runs algebra on this thread without the interpreter lock; `work` calls the check it is given now and then, which hears
+/// Ctrl-C.
+pub fn run_checked<T: Send>(py: Python<'_>, work: impl FnOnce(Check) -> Result<T> + Send) -> PyResult<T> {
+    let mut interrupt = None;
+    let outcome = py.detach(|| {
+        let mut asked = Instant::now();
+        let mut check = || {
+            if asked.elapsed() < LOOK {
+                return Ok(());
+            }
+            asked = Instant::now();
+            Python::attach(|py| py.check_signals()).map_err(|raised| {
+                interrupt = Some(raised);
+                Error::Cancelled { passes_done: 0 }
+            })
+        };
+        work(&mut check)
+    });
+    match interrupt {
+        Some(raised) => Err(raised),
+        None => outcome.map_err(|error| to_python(py, error)),
     }
 }
 

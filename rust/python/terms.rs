@@ -1,18 +1,15 @@
 //! `trueturn._native.Terms`: the algebra behind `trueturn.Operator`.
 
 use std::sync::Arc;
-use std::time::{Duration, Instant};
 
 use numpy::{PyArray1, PyArrayMethods, PyReadonlyArray1};
 use pyo3::prelude::*;
 
 use super::error::to_python;
-use crate::error::{Error, Result};
+use super::gateway::run_checked;
+use crate::error::Error;
 use crate::pauli::PauliString;
-use crate::terms::{Check, Limits, Terms, commuting_groups, parse_factors};
-
-/// Time between two looks for Ctrl-C during long algebra.
-const SIGNAL_INTERVAL: Duration = Duration::from_millis(40);
+use crate::terms::{Limits, Terms, commuting_groups, parse_factors};
 
 /// A real sum of distinct Pauli strings; masks cross the boundary as Python integers.
 #[pyclass(frozen, name = "Terms", module = "trueturn._native")]
@@ -24,29 +21,6 @@ pub struct PyTerms {
 impl From<Terms> for PyTerms {
     fn from(terms: Terms) -> Self {
         Self { terms: Arc::new(terms) }
-    }
-}
-
-/// Runs algebra without the interpreter lock; Ctrl-C stops it.
-fn run<T: Send>(py: Python<'_>, work: impl FnOnce(Check) -> Result<T> + Send) -> PyResult<T> {
-    let mut interrupt = None;
-    let outcome = py.detach(|| {
-        let mut asked = Instant::now();
-        let mut check = || {
-            if asked.elapsed() < SIGNAL_INTERVAL {
-                return Ok(());
-            }
-            asked = Instant::now();
-            Python::attach(|py| py.check_signals()).map_err(|raised| {
-                interrupt = Some(raised);
-                Error::Cancelled { passes_done: 0 }
-            })
-        };
-        work(&mut check)
-    });
-    match interrupt {
-        Some(raised) => Err(raised),
-        None => outcome.map_err(|error| to_python(py, error)),
     }
 }
 
@@ -62,7 +36,7 @@ impl PyTerms {
         qubits: Option<u32>,
     ) -> PyResult<Self> {
         let coefficients = coefficients.to_vec()?;
-        run(py, |_| {
+        run_checked(py, |_| {
             if x.len() != z.len() || x.len() != coefficients.len() {
                 let message = format!(
                     "coefficients: lengths differ ({} x masks, {} z masks, {} coefficients); give one of each per term",
@@ -80,7 +54,7 @@ impl PyTerms {
     #[staticmethod]
     #[pyo3(signature = (text, qubits))]
     fn parse(py: Python<'_>, text: &str, qubits: Option<u32>) -> PyResult<Self> {
-        run(py, |_| Terms::parse(text, qubits).map(Self::from))
+        run_checked(py, |_| Terms::parse(text, qubits).map(Self::from))
     }
 
     /// The x mask, the z mask and the sign of factors such as `X_0 Z_3`.
@@ -121,45 +95,45 @@ impl PyTerms {
     }
 
     fn plus(&self, py: Python<'_>, other: &Self) -> PyResult<Self> {
-        run(py, |_| self.terms.plus(&other.terms).map(Self::from))
+        run_checked(py, |_| self.terms.plus(&other.terms).map(Self::from))
     }
 
     fn minus(&self, py: Python<'_>, other: &Self) -> PyResult<Self> {
-        run(py, |_| self.terms.minus(&other.terms).map(Self::from))
+        run_checked(py, |_| self.terms.minus(&other.terms).map(Self::from))
     }
 
     fn scaled(&self, py: Python<'_>, factor: f64) -> PyResult<Self> {
-        run(py, |_| self.terms.scaled(factor).map(Self::from))
+        run_checked(py, |_| self.terms.scaled(factor).map(Self::from))
     }
 
     fn divided(&self, py: Python<'_>, divisor: f64) -> PyResult<Self> {
-        run(py, |_| self.terms.divided(divisor).map(Self::from))
+        run_checked(py, |_| self.terms.divided(divisor).map(Self::from))
     }
 
     fn times(&self, py: Python<'_>, other: &Self, memory: u64) -> PyResult<Self> {
-        run(py, |check| self.terms.times(&other.terms, &mut Limits { memory, check }).map(Self::from))
+        run_checked(py, |check| self.terms.times(&other.terms, &mut Limits { memory, check }).map(Self::from))
     }
 
     fn bracket(&self, py: Python<'_>, other: &Self, memory: u64) -> PyResult<Self> {
-        run(py, |check| self.terms.bracket(&other.terms, &mut Limits { memory, check }).map(Self::from))
+        run_checked(py, |check| self.terms.bracket(&other.terms, &mut Limits { memory, check }).map(Self::from))
     }
 
     fn bracket_vanishes(&self, py: Python<'_>, other: &Self, memory: u64) -> PyResult<bool> {
-        run(py, |check| self.terms.bracket_vanishes(&other.terms, &mut Limits { memory, check }))
+        run_checked(py, |check| self.terms.bracket_vanishes(&other.terms, &mut Limits { memory, check }))
     }
 
     /// Numbers of the first two terms that do not commute.
     fn first_anticommuting_pair(&self, py: Python<'_>) -> PyResult<Option<(usize, usize)>> {
-        run(py, |check| self.terms.first_anticommuting_pair(check))
+        run_checked(py, |check| self.terms.first_anticommuting_pair(check))
     }
 
     /// The number of the greedy commuting group of each term.
     fn commuting_groups<'py>(&self, py: Python<'py>) -> PyResult<Bound<'py, PyArray1<i64>>> {
-        let groups = run(py, |check| commuting_groups(self.terms.strings(), check))?;
+        let groups = run_checked(py, |check| commuting_groups(self.terms.strings(), check))?;
         Ok(PyArray1::from_iter(py, groups.into_iter().map(|group| group as i64)))
     }
 
     fn relabelled(&self, py: Python<'_>, new_names: Vec<u32>) -> PyResult<Self> {
-        run(py, |_| self.terms.relabelled(&new_names).map(Self::from))
+        run_checked(py, |_| self.terms.relabelled(&new_names).map(Self::from))
     }
 }
