@@ -109,6 +109,22 @@ def test_ranks_at_a_budget_and_at_an_accuracy(compared):
     assert cheapest[0].on_front and compared.at_accuracy(1e-300) == ()
 
 
+@pytest.mark.parametrize("steps", [1, 2, 4, 5, 8])
+def test_a_budget_that_fits_exactly_is_filled(steps):
+    budget = tt.formula("strang").rotations(tt.Partition.of(CHAIN, "axis"), 1.0, steps).two_qubit_gates()
+    (point,) = compare(CHAIN, START, 1.0, ["strang"], "axis", [budget]).points
+    assert (point.steps, point.cost) == (steps, budget)
+    if steps > 1:
+        (point,) = compare(CHAIN, START, 1.0, ["strang"], "axis", [budget - 1]).points
+        assert point.steps == steps - 1 and point.cost < budget
+
+
+def test_an_accuracy_counts_as_reached_only_when_the_whole_interval_is_below(compared):
+    points = (Point("a", 1, 10, (1e-9, 3e-9), (10,)), Point("a", 2, 20, (0.0, 1e-9), (20,)))
+    found = Comparison(points, ("a",), (10, 20), "rotations", "axis", 1.0, "state", {"a": 1}, {}, compared.reference)
+    assert found.at_accuracy(2e-9) == points[1:] and found.at_accuracy(3e-9) == points[:1]
+
+
 ends = st.floats(0.0, 1.0)
 intervals = st.tuples(ends, ends).map(lambda pair: (min(pair), max(pair)))
 
