@@ -164,6 +164,21 @@ def test_defaults_compare_all_registered_formulas_at_the_state():
     assert strang.steps in (3, 4)
 
 
+def test_a_registered_formula_that_cannot_run_is_left_out_with_the_reason(monkeypatch):
+    monkeypatch.setattr("trueturn.comparison.run.known_formulas", lambda: ("strang", "gone"))
+    found = compare(CHAIN, START, 1.0, budgets=[60])
+    assert found.formulas == ("strang",) and found.left_out["gone"].startswith("name: is no known formula ('gone')")
+    assert "Left out: gone. name: is no known" in found.table()
+
+
+def test_own_parts_serve_as_a_rule_and_must_sum_to_the_operator():
+    parts = tt.Partition.of(CHAIN, "axis")
+    own, named_rule = (compare(CHAIN, START, 1.0, ["strang"], rule, [120]) for rule in (parts, "axis"))
+    assert own.points == named_rule.points and own.rule == "own parts" and "own parts, by" in own.table()
+    with pytest.raises(errors.PartitionError):
+        compare(CHAIN + tt.Operator("X_0", qubits=4), START, 1.0, ["strang"], parts, [120])
+
+
 def test_the_table_fits_eighty_columns_and_tells_all(compared):
     text = compared.table()
     assert repr(compared) == text

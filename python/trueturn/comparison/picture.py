@@ -9,7 +9,7 @@ from trueturn.audit.figures import plain
 from trueturn.audit.report.canvas import GRID, INK, MARKERS, MUTED, PAPER, SERIES, logarithmic, own_settings
 from trueturn.audit.report.pictures import bars, legend
 from trueturn.comparison.result import unit_words
-from trueturn.comparison.table import quantity_words, shortened
+from trueturn.comparison.table import quantity_words, rule_words, shortened
 from trueturn.errors import ArgumentError
 
 if TYPE_CHECKING:
@@ -72,7 +72,7 @@ def _paint(comparison: Comparison, figure: Any) -> None:
     axes.margins(y=0.08)
     axes.set_xlabel(unit_words(comparison.cost))
     axes.set_ylabel(quantity_words(comparison).lower())
-    axes.set_title(f"time {plain(comparison.time)}, {comparison.rule} parts; filled: efficient", color=MUTED)
+    axes.set_title(f"time {plain(comparison.time)}, {rule_words(comparison)}; filled: efficient", color=MUTED)
     axes.grid(color=GRID, linewidth=0.6)
     logarithmic(axes.xaxis, whole=True)
     logarithmic(axes.yaxis)

@@ -11,7 +11,7 @@ from trueturn import _memory, _threads
 from trueturn.audit.candidate import Candidate
 from trueturn.audit.measure import Bench
 from trueturn.comparison.result import Comparison, Point, efficient, unit_words
-from trueturn.errors import ArgumentError, AuditError, FormulaError, ToleranceError
+from trueturn.errors import ArgumentError, AuditError, FormulaError, PartitionError, ToleranceError
 from trueturn.formulas import Formula
 from trueturn.formulas import formulas as known_formulas
 from trueturn.operator import Operator
@@ -90,7 +90,13 @@ def compare(
     AuditError
         No formulas, two of one name, or no observables where their errors are asked for.
     FormulaError
-        A name is not registered.
+        A name is not registered, or a named formula cannot be run on these parts.
+    PartitionError
+        Unknown rule, or own parts that do not sum to the Hamiltonian.
+    StateShapeError
+        The state is on another number of qubits than the operator or an observable.
+    ToleranceError
+        `reference_tolerance` cannot be certified in double precision.
     MemoryRefusedError
         Six state vectors do not fit.
 
@@ -113,8 +119,8 @@ def compare(
     asked = quantity if quantity is not None else "observables" if watched else "state"
     moment = _check(operator, state, time, watched, asked, cost)
     workers = _threads.resolve(threads)
-    chosen, left_out = _candidates(operator, formulas, rule, moment)
-    partition = chosen[0].partition(operator)
+    partition = Candidate("strang", rule, 1).partition(operator)  # type: ignore[arg-type]
+    chosen, left_out = _candidates(partition, formulas, rule, moment)
     price = COSTS[cost]
 
     def priced(candidate: Candidate, steps: int) -> int:
@@ -160,7 +166,7 @@ def compare(
 
 
 def _candidates(
-    operator: Operator, formulas: Iterable[str | Formula] | None, rule: str | Partition, time: float
+    partition: Partition, formulas: Iterable[str | Formula] | None, rule: str | Partition, time: float
 ) -> tuple[list[Candidate], dict[str, str]]:
     if isinstance(formulas, (str, Formula)):
         formulas = [formulas]
@@ -170,8 +176,8 @@ def _candidates(
     for entry in given:
         try:
             candidate = Candidate(entry, rule, 1)  # type: ignore[arg-type]
-            candidate.formula.rotations(candidate.partition(operator), time, 1)
-        except FormulaError as refusal:
+            candidate.formula.rotations(partition, time, 1)
+        except (FormulaError, PartitionError) as refusal:
             if formulas is not None:
                 raise
             left_out[str(entry)] = str(refusal)

@@ -12,7 +12,7 @@ from trueturn.comparison.result import unit_words
 if TYPE_CHECKING:
     from trueturn.comparison.result import Comparison, Point
 
-__all__ = ["quantity_words", "written"]
+__all__ = ["quantity_words", "rule_words", "shortened", "written"]
 
 WIDTH = 80
 LONGEST_NAME = 24
@@ -23,7 +23,7 @@ GAP = 2
 def written(comparison: Comparison) -> str:
     """Write errors by formula and budget, then the winners by accuracy; see `Comparison.table`."""
     unit = unit_words(comparison.cost)
-    title = f"{quantity_words(comparison)} at time {plain(comparison.time)}, {comparison.rule} parts, by {unit}"
+    title = f"{quantity_words(comparison)} at time {plain(comparison.time)}, {rule_words(comparison)}, by {unit}"
     lines = [*wrap(title, WIDTH), "", *_grid(comparison), ""]
     notes = ["Errors are upper ends of the error intervals, rounded up; ≤ where the interval reaches 0."]
     notes.append("* efficient: all that cost as much or less have larger errors.")
@@ -43,6 +43,11 @@ def written(comparison: Comparison) -> str:
 def quantity_words(comparison: Comparison) -> str:
     """Name what the errors are of."""
     return "State error" if comparison.quantity == "state" else "Largest observable error"
+
+
+def rule_words(comparison: Comparison) -> str:
+    """Say how the Hamiltonian was split."""
+    return comparison.rule if comparison.rule == "own parts" else f"{comparison.rule} parts"
 
 
 def shortened(name: str) -> str:

@@ -81,8 +81,12 @@ def extrapolate(
         too, and these weights do not cancel them.
     ArgumentError
         Step counts, times or rule are out of range.
+    PartitionError
+        Unknown rule, or own parts that do not sum to the Hamiltonian.
     AuditError
         No observables.
+    StateShapeError
+        The state is on another number of qubits than the operator or an observable.
     ToleranceError
         `tolerance` is not positive, or cannot be certified in double precision.
     MemoryRefusedError
