@@ -5,7 +5,8 @@
 
 use std::time::Instant;
 
-use _native::action::{Action, chebyshev_sums, expectation};
+use _native::action::Action;
+use _native::apply::{chebyshev_sums, expectation};
 use _native::evolve::evolve;
 use _native::pauli::PauliString;
 use _native::rotations::Rotations;

@@ -4,19 +4,12 @@ use num_complex::Complex;
 
 use crate::error::{Error, Result};
 use crate::kernel::Isa;
-use crate::kernel::blocks::{LaneFactors, Multiply};
-use crate::kernel::lanes::{GROUP_BITS, LANES, Real};
-use crate::kernel::rotate::{LaneRotation, Rotate};
-use crate::kernel::shared::{Shared, as_groups_mut};
-use crate::passes::{BLOCK_BITS, COSET_BITS, CosetRotation, FusedPass, HighPhase, Pass, PhasePass, high_phase, plan};
+use crate::kernel::carry::Carrier;
+use crate::kernel::lanes::{GROUP_BITS, Real};
+use crate::kernel::shared::Shared;
+use crate::passes::{HighPhase, Pass, PhasePass, plan};
 use crate::rotations::{Block, Body, Rotations};
-use crate::team::{Control, Member, Run, run, workers_for};
-
-/// Groups that a worker handles between two looks at the flags.
-const PIECE: usize = 1 << 13;
-
-/// Groups of a coset that stay in first-level cache: 2^10 amplitudes.
-const INNER_GROUPS: usize = 1 << (10 - GROUP_BITS);
+use crate::team::{Control, Run, run, workers_for};
 
 /// A planned block.
 enum Planned<T> {
@@ -65,18 +58,18 @@ pub fn evolve<T: Real>(
         let workers = workers_for(threads, amplitudes.len());
         let state = Shared::new(amplitudes);
         run(workers, control, |member| {
-            let mut worker = Worker { isa, member, state: &state, coset: vec![] };
-            worker.blocks(&blocks)?;
-            phase.as_ref().map_or(Ok(()), |phase| worker.pass(&Pass::Phase(phase.clone())))
+            let mut carrier = Carrier::new(isa, member, &state);
+            carry_out(&mut carrier, &blocks)?;
+            phase.as_ref().map_or(Ok(()), |phase| carrier.pass(phase))
         })
     })
 }
 
 /// exp(i phase) as a pass, or None for phase 0.
-fn global_phase<T: Real>(phase: f64) -> Option<PhasePass<T>> {
+fn global_phase<T: Real>(phase: f64) -> Option<Pass<T>> {
     let (sin, cos) = libm::sincos(phase);
     let everywhere = HighPhase { z: 0, cos_sin: (cos, -sin) };
-    (phase != 0.0).then(|| PhasePass { table: vec![], high: vec![everywhere], crossing: vec![] })
+    (phase != 0.0).then(|| Pass::Phase(PhasePass { table: vec![], high: vec![everywhere], crossing: vec![] }))
 }
 
 /// Refuses a state whose length is not 2^qubits.
@@ -107,130 +100,25 @@ pub fn padded<T: Real, R>(amplitudes: &mut [Complex<T>], work: impl FnOnce(&mut 
     result
 }
 
-struct Worker<'a, T: Real> {
-    isa: Isa,
-    member: &'a Member<'a>,
-    state: &'a Shared<'a, T>,
-    coset: Vec<Complex<T>>,
-}
-
-impl<T: Real> Worker<'_, T> {
-    fn blocks(&mut self, blocks: &[Planned<T>]) -> Result<()> {
-        for block in blocks {
-            match block {
-                Planned::Passes(passes, repeat) => {
-                    for _ in 0..*repeat {
-                        passes.iter().try_for_each(|pass| self.pass(pass))?;
-                    }
-                }
-                Planned::Nested(blocks, repeat) => (0..*repeat).try_for_each(|_| self.blocks(blocks))?,
-            }
-        }
-        Ok(())
-    }
-
-    fn pass(&mut self, pass: &Pass<T>) -> Result<()> {
-        match pass {
-            Pass::Single(rotation) => self.single(rotation)?,
-            Pass::Phase(phase) => self.phase(phase)?,
-            Pass::Fused(fused) => self.fused(fused)?,
-        }
-        self.member.pass_done()
-    }
-
-    fn single(&self, rotation: &LaneRotation<T>) -> Result<()> {
-        self.member.each_piece(rotation.units(self.state.groups()), PIECE, |range| {
-            self.isa.run(Rotate { state: self.state, range, rotation, flip: 0, other_angle: 0 });
-        })
-    }
-
-    fn phase(&self, phase: &PhasePass<T>) -> Result<()> {
-        let groups = self.state.groups().min(1 << (BLOCK_BITS - GROUP_BITS));
-        let bits = groups.ilog2() + GROUP_BITS;
-        self.member.each_piece(self.state.groups() / groups, PIECE / groups, |blocks| {
-            for block in blocks {
-                // SAFETY: each block number belongs to one piece of one worker.
-                let amplitudes = unsafe { self.state.groups_mut(block * groups, groups) };
-                let high = block << bits >> BLOCK_BITS;
-                if !phase.high.is_empty() || !phase.table.is_empty() {
-                    let all = high_phase(&phase.high, high);
-                    let all = LaneFactors::new(|_| all);
-                    self.isa.run(Multiply { block: &mut *amplitudes, table: &phase.table, all });
-                }
-                let block = Shared::over(amplitudes);
-                for (low, parts) in &phase.crossing {
-                    let rotation = LaneRotation::diagonal(*low, high_phase(parts, high));
-                    let range = 0..groups;
-                    self.isa.run(Rotate { state: &block, range, rotation: &rotation, flip: 0, other_angle: 0 });
+/// Carries out planned blocks, repeats and all.
+fn carry_out<T: Real>(carrier: &mut Carrier<T>, blocks: &[Planned<T>]) -> Result<()> {
+    for block in blocks {
+        match block {
+            Planned::Passes(passes, repeat) => {
+                for _ in 0..*repeat {
+                    passes.iter().try_for_each(|pass| carrier.pass(pass))?;
                 }
             }
-        })
-    }
-
-    fn fused(&mut self, pass: &FusedPass<T>) -> Result<()> {
-        let size = 1usize << COSET_BITS;
-        let groups = size >> GROUP_BITS;
-        let (isa, state, member) = (self.isa, self.state, self.member);
-        self.coset.resize(size, Complex::new(T::default(), T::default()));
-        let coset = as_groups_mut(&mut self.coset);
-        member.each_piece(state.groups() / groups, 8, |numbers| {
-            for number in numbers {
-                let rep = pass.representative(number);
-                if pass.contiguous {
-                    // SAFETY: coset `number` is the block of groups that starts at its representative; cosets are disjoint
-                    // and each belongs to one piece of one worker.
-                    let block = unsafe { state.groups_mut(rep >> GROUP_BITS, groups) };
-                    rotate_coset(isa, block, pass, rep);
-                } else {
-                    move_runs(state, coset, pass, rep, |run, own| own.copy_from_slice(run));
-                    rotate_coset(isa, coset, pass, rep);
-                    move_runs(state, coset, pass, rep, |run, own| run.copy_from_slice(own));
-                }
-            }
-        })
-    }
-}
-
-/// Applies the rotations of a pass to one coset, as many in a row as possible to one first-level block after the other.
-fn rotate_coset<T: Real>(isa: Isa, block: &mut [[T; LANES]], pass: &FusedPass<T>, rep: usize) {
-    let groups = block.len();
-    let inner = groups.min(INNER_GROUPS);
-    let block = Shared::over(block);
-    let parity = |mask: usize| (rep & mask).count_ones() as usize & 1;
-    let apply = |CosetRotation { rotation, z, d }: &CosetRotation<T>, part: usize, parts: usize| {
-        let units = rotation.units(groups) / parts;
-        let range = part * units..(part + 1) * units;
-        isa.run(Rotate { state: &block, range, rotation, flip: parity(*z), other_angle: parity(*d) });
-    };
-    let stays = |member: &CosetRotation<T>| member.rotation.stays_within(inner);
-    for run in pass.rotations.chunk_by(|one, next| stays(one) && stays(next)) {
-        let parts = if stays(&run[0]) { groups / inner } else { 1 };
-        for part in 0..parts {
-            run.iter().for_each(|member| apply(member, part, parts));
+            Planned::Nested(blocks, repeat) => (0..*repeat).try_for_each(|_| carry_out(carrier, blocks))?,
         }
     }
-}
-
-/// Walks through the runs of a coset in the state and their places in the buffer.
-fn move_runs<T: Real>(
-    state: &Shared<T>,
-    coset: &mut [[T; LANES]],
-    pass: &FusedPass<T>,
-    rep: usize,
-    copy: impl Fn(&mut [[T; LANES]], &mut [[T; LANES]]),
-) {
-    let run_groups = FusedPass::<T>::RUN >> GROUP_BITS;
-    for (own, offset) in coset.chunks_exact_mut(run_groups).zip(&pass.offsets) {
-        // SAFETY: the runs of a coset are disjoint, cosets are disjoint, and each belongs to one piece of one worker; `run`
-        // is the only piece of the state in use here.
-        let run = unsafe { state.groups_mut((rep ^ offset) >> GROUP_BITS, run_groups) };
-        copy(run, own);
-    }
+    Ok(())
 }
 
 #[cfg(test)]
 mod tests {
     use super::*;
+    use crate::kernel::rotate::Rotate;
     use crate::pauli::PauliString;
     use crate::rotations::Rotation;
     use num_complex::Complex64;

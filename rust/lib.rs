@@ -9,7 +9,7 @@
 //! | [`operation`] | two commuting rotations with one x mask act as one |
 //! | [`passes`] | the planner: which rotations share one traversal of memory |
 //! | [`evolve`] | carries the passes out on a state vector |
-//! | [`action`] | H applied to a state, expectations, the Chebyshev recurrence |
+//! | [`action`], [`apply`] | an operator sorted for use; H applied to a state, expectations, the Chebyshev recurrence |
 //! | [`sums`] | norm, overlap and distance in a fixed order |
 //! | [`team`] | worker threads, requests to stop, progress |
 //! | [`kernel`] | inner loops for each instruction set; all unsafe code |
@@ -19,6 +19,7 @@
 //! Nothing here knows Python except `python`, which is compiled with the feature of that name.
 
 pub mod action;
+pub mod apply;
 pub mod cost;
 pub mod error;
 pub mod evolve;

@@ -36,8 +36,8 @@ use crate::rotations::Rotation;
 pub const BLOCK_BITS: u32 = 9;
 /// Dimension of a coset: 2^12 amplitudes stay in second-level cache.
 pub const COSET_BITS: u32 = 12;
-/// Lowest bits that every coset contains, so that it is read in runs of 32 amplitudes.
-const RUN_BITS: u32 = 5;
+/// Lowest bits that every coset contains, so that it is read in runs of 16 amplitudes, four cache lines.
+const RUN_BITS: u32 = 4;
 /// States below this many qubits stay in cache as a whole and gain nothing from fusing.
 const FUSE_FROM: u32 = 15;
 /// How many rotations a pass may skip before it is closed.
@@ -310,7 +310,7 @@ mod tests {
 
     #[test]
     fn a_chain_of_bonds_takes_as_many_passes_as_its_span_needs() {
-        // Low bits 0 to 4, then one more dimension for each bond that leaves them: 11 bonds, then 7.
+        // Low bits 0 to 3, then one more dimension for each bond that leaves them: 11 bonds, then 8, of which 7 are left.
         let list: Vec<_> = (0..18).map(|q| rotation(3 << q, 0)).collect();
         let members = |pass: &Pass<f64>| match pass {
             Pass::Fused(fused) => fused.rotations.len(),

@@ -57,6 +57,18 @@ def test_every_interval_holds_the_error_of_dense_matrices(quantity, readout):
         assert row.error == (max(p.error[0] for p in row.points), max(p.error[1] for p in row.points))
 
 
+def test_a_large_identity_term_does_not_turn_rounding_into_error():
+    """20000 steps change the norm by 6e-12: times a million, that was taken for an error of the circuit, as proven."""
+    plain = {"m": tt.Operator("Z_2", qubits=6)}
+    lifted = {"m": plain["m"] + 1e6}
+    candidates = [tt.Candidate("strang", steps=20_000)]
+    (expected,) = tt.audit(CHAIN, START, 1.0, candidates, 1e-3, observables=plain).rows
+    (found,) = tt.audit(CHAIN, START, 1.0, candidates, 1e-3, observables=lifted).rows
+    # The two intervals hold the same true error, so they overlap; a sum of a million is rounded at 1.2e-10 each time.
+    assert found.error[0] <= expected.error[1] and expected.error[0] <= found.error[1]
+    assert found.error[1] < 1e-6
+
+
 @settings(max_examples=25)
 @given(operator=strategies.operators(max_qubits=4, max_terms=7, min_terms=1), seed=st.integers(0, 1000))
 def test_intervals_hold_on_random_hamiltonians(operator, seed):

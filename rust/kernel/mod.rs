@@ -15,6 +15,8 @@
 //! access of several workers to one array in [`shared`].
 
 pub mod blocks;
+pub mod carry;
+pub mod image;
 pub mod lanes;
 pub mod reduce;
 pub mod rotate;

@@ -8,7 +8,8 @@ use super::error::to_python;
 use super::gateway::run;
 use super::rotations::PyRotations;
 use super::terms::PyTerms;
-use crate::action::{self, Action};
+use crate::action::Action;
+use crate::apply;
 use crate::evolve::evolve as evolve_state;
 use crate::kernel::Isa;
 use crate::kernel::lanes::Real;
@@ -61,7 +62,7 @@ pub fn apply_terms(
     let (state, out) = (slice(py, &mut state)?, slice(py, &mut out)?);
     let weight = (state.len() * terms.terms.strings().len().max(1)) as u64;
     run(py, weight, None, |control| {
-        action::apply(&Action::new(&terms.terms, 1.0, 0.0), state, out, threads, control).map(drop)
+        apply::apply(&Action::new(&terms.terms, 1.0, 0.0), state, out, threads, control).map(drop)
     })
 }
 
@@ -72,7 +73,7 @@ pub fn expectation(py: Python<'_>, terms: &PyTerms, state: &Bound<'_, PyAny>, th
     either!(py, &mut amplitudes, state => {
         let weight = (state.len() * terms.terms.strings().len().max(1)) as u64;
         run(py, weight, None, |control| {
-            action::expectation(&Action::new(&terms.terms, 1.0, 0.0), state, threads, control)
+            apply::expectation(&Action::new(&terms.terms, 1.0, 0.0), state, threads, control)
         })
     })
 }
@@ -83,7 +84,7 @@ pub fn application_rounding(terms: &PyTerms, scale: f64, shift: f64) -> f64 {
     Action::<f64>::new(&terms.terms, scale, shift).rounding()
 }
 
-/// Chebyshev sums from `current` (used up) with room `previous` into `sums`; see [`action::chebyshev_sums`].
+/// Chebyshev sums from `current` (used up) with room `previous` into `sums`; see [`apply::chebyshev_sums`].
 #[pyfunction]
 #[allow(clippy::too_many_arguments)]
 pub fn chebyshev_sums(
@@ -106,7 +107,7 @@ pub fn chebyshev_sums(
     let weight = (current.len() as u64).saturating_mul((count * terms.terms.strings().len().max(1)) as u64);
     run(py, weight, progress.as_ref(), |control| {
         let action = Action::new(&terms.terms, scale, shift);
-        action::chebyshev_sums(&action, current, previous, &mut views, &coefficients, threads, control).map(drop)
+        apply::chebyshev_sums(&action, current, previous, &mut views, &coefficients, threads, control).map(drop)
     })
 }
 
