@@ -167,7 +167,8 @@ def test_commuting_parts_and_few_parts_have_nothing_to_gain():
 def test_the_rule_takes_the_order_that_improved_finds():
     h = tt.model.exchange(tt.lattice.ring(5), xx=1.0, yy=0.6, zz=0.3, x=0.4, z=0.7)
     commuting = tt.Partition.of(h, "commuting")
-    found = commuting.improved("strang")
+    found = commuting.improved(tt.formula("strang"))
+    assert tt.Candidate("strang", rule="error-saving", steps=1).partition(h) == found.partition
     assert tt.Partition.of(h, "error-saving").parts == found.partition.parts
     assert found.after < found.before
 
@@ -215,3 +216,8 @@ def test_too_many_brackets_are_refused(monkeypatch):
     monkeypatch.setattr("trueturn.leading_error.MOST_ENTRIES", 2)
     with pytest.raises(errors.PartitionError, match=r"parts: have too many nested brackets \(3 parts.*fewer parts"):
         PARTITION.improved("strang")
+    with pytest.raises(
+        errors.PartitionError, match=r"rule: 'error-saving' meets too many.*3 parts, 3 terms.*'lie'"
+    ) as caught:
+        tt.Partition.of(PARTITION.operator(), "error-saving")
+    assert caught.value.argument == "rule"

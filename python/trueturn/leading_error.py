@@ -21,19 +21,23 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable, Sequence
+from typing import TYPE_CHECKING
 
 import numpy as np
 import numpy.typing as npt
-import scipy.sparse
 
+from trueturn import _memory
 from trueturn.errors import PartitionError
 from trueturn.operator import Operator
+
+if TYPE_CHECKING:
+    import scipy.sparse
 
 __all__ = ["KINDS", "MOST_ENTRIES", "LeadingError"]
 
 KINDS = ("lie", "strang")
-MOST_ENTRIES = 10**7
-"""Strings in all brackets together above which the table is refused: 120 MB."""
+MOST_ENTRIES = 2 * 10**6
+"""Strings in all brackets together above which the table is refused: half a gigabyte while it is made."""
 
 Order = npt.NDArray[np.intp]
 
@@ -68,6 +72,7 @@ class LeadingError:
         self._rows: dict[tuple[int, int], int] = {}
         self._entries: list[tuple[list[int], npt.NDArray[np.float64]]] = []
         self._count = 0
+        self._allowed = _memory.allowed_bytes()
         supports = [_support(part) for part in parts]
         for j in range(len(parts)):
             for k in range(j + 1, len(parts)):
@@ -78,7 +83,7 @@ class LeadingError:
         self._factors: Callable[[Order], npt.NDArray[np.float64]] = self._lie if kind == "lie" else self._strang
 
     def _add_brackets(self, j: int, k: int, kind: str, supports: list[int]) -> None:
-        once = self._parts[j].bracket(self._parts[k])
+        once = self._bracket(self._parts[j], self._parts[k])
         if len(once) == 0:
             return
         if kind == "lie":
@@ -87,11 +92,15 @@ class LeadingError:
         support = _support(once)
         for i, part in enumerate(self._parts):
             if supports[i] & support:
-                self._add(part.bracket(once), (i, j, k))
+                self._add(self._bracket(part, once), (i, j, k))
+
+    def _bracket(self, left: Operator, right: Operator) -> Operator:
+        """`Operator.bracket`, asking the system for its memory once instead of each time."""
+        return Operator._of(left._terms.bracket(right._terms, self._allowed))
 
     def _add(self, column: Operator, name: tuple[int, int, int]) -> None:
         if self._observable is not None:
-            column = column.bracket(self._observable)
+            column = self._bracket(column, self._observable)
         if len(column) == 0:
             return
         strings = zip(column.x_masks.tolist(), column.z_masks.tolist(), strict=True)
@@ -107,6 +116,8 @@ class LeadingError:
         self._entries.append((rows, column.coefficients))
 
     def _assembled(self) -> scipy.sparse.csr_matrix:
+        import scipy.sparse  # slow to import, and few need it
+
         shape = (len(self._rows), len(self._entries))
         if not self._entries:
             return scipy.sparse.csr_matrix(shape)

@@ -112,7 +112,8 @@ class Partition:
         Raises
         ------
         PartitionError
-            Unknown rule, or ``bond`` for an operator with a term on more than two qubits.
+            Unknown rule, ``bond`` for an operator with a term on more than two qubits, or ``error-saving`` where
+            there are too many nested brackets.
 
         Notes
         -----

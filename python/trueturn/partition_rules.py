@@ -18,7 +18,7 @@ from trueturn.leading_error import LeadingError
 from trueturn.operator import Operator
 from trueturn.vertex_colouring import STRATEGIES, colour_strings
 
-__all__ = ["COMMUTING", "RULES", "Groups", "string_text", "subset"]
+__all__ = ["COMMUTING", "RULES", "Groups", "part_counts", "string_text", "subset"]
 
 Groups = list[list[int]]
 Rule = Callable[[Operator], Groups]
@@ -78,7 +78,15 @@ def _error_saving(terms: Operator) -> Groups:
     groups = _commuting(terms)
     if len(groups) < 2:
         return groups
-    error = LeadingError([subset(terms, group) for group in groups], "strang")
+    try:
+        error = LeadingError([subset(terms, group) for group in groups], "strang")
+    except PartitionError as refused:
+        raise PartitionError(
+            f"rule: 'error-saving' meets too many nested brackets ({len(groups)} parts, {len(terms)} terms); "
+            "use 'commuting', and .improved('lie') on what it makes",
+            argument="rule",
+            choices=("commuting",),
+        ) from refused
     return [groups[part] for part in search(error.one_norm, len(groups), seed=0, evaluations=EVALUATIONS).order]
 
 
@@ -133,6 +141,29 @@ RULES: dict[str, Rule] = {
     "gate-saving": _gate_saving,
     "error-saving": _error_saving,
 }
+
+
+def part_counts(operator: Operator) -> dict[str, int]:
+    """Report how many parts each way of colouring makes.
+
+    Parameters
+    ----------
+    operator : Operator
+
+    Returns
+    -------
+    dict of str to int
+        From each rule in `COMMUTING` to its number of parts; ``commuting-fewest`` makes the least of them.
+
+    Examples
+    --------
+    >>> import trueturn as tt
+    >>> from trueturn.partition_rules import part_counts
+    >>> part_counts(tt.Operator("X_0 + Z_1 + Z_0 + X_1"))["commuting-saturation"]
+    2
+    """
+    terms = operator.without_identity()
+    return {name: len(rule(terms)) for name, rule in COMMUTING.items()}
 
 
 def subset(terms: Operator, chosen: Sequence[int]) -> Operator:

@@ -19,7 +19,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from trueturn import _arguments
+from trueturn import _arguments, _memory
 from trueturn.errors import ArgumentError, OperatorError, PartitionError
 from trueturn.operator import Operator
 from trueturn.partition import Partition
@@ -241,7 +241,13 @@ def _conserved(judged: list[Operator]) -> list[Symmetry]:
 
 
 def _quantity(name: str, meaning: str, quantity: Operator, judged: list[Operator]) -> Symmetry:
-    return _row(name, meaning, judged, quantity.bracket_vanishes, quantity)
+    return _row(name, meaning, judged, _commuting_with(quantity), quantity)
+
+
+def _commuting_with(quantity: Operator) -> Callable[[Operator], bool]:
+    """`Operator.bracket_vanishes`, asking the system for its memory once instead of each time."""
+    allowed = _memory.allowed_bytes()
+    return lambda operator: quantity._terms.bracket_vanishes(operator._terms, allowed)
 
 
 def _total(axis: str, qubits: int, weights: list[float]) -> Operator:
