@@ -172,6 +172,17 @@ def test_no_order_inside_a_part_saves_more(h, order):
     assert saved_gates(tt.Rotations(part.x_masks, part.z_masks, part.coefficients, h.qubits), order) == best
 
 
+def test_the_next_part_and_its_first_string_share_most_with_the_last_string():
+    texts = ["X_0 X_1 X_2", "Y_0 + Z_2", "Z_0 Z_1 + X_0 X_1 Z_2"]
+    made = tt.Partition([tt.Operator(text, qubits=3) for text in texts]).gate_saving()
+    assert [str(part) for part in made.parts] == [
+        "1.0 X_0 X_1 X_2",
+        "1.0 X_0 X_1 Z_2 + 1.0 Z_0 Z_1",
+        "1.0 Y_0 + 1.0 Z_2",
+    ]
+    assert saved_gates(tt.formula("lie").rotations(made, 1.0, 1)) == 2
+
+
 def many_body(qubits):
     """All products of three Z and all of three X."""
     masks = [1 << a | 1 << b | 1 << c for a, b, c in itertools.combinations(range(qubits), 3)]
