@@ -14,7 +14,20 @@ import strategies
 from trueturn import Operator, Partition, errors, lattice, model
 from trueturn.edge_colouring import colour_edges
 
-RULES = ("single", "commuting", "bond", "axis", "magnitude")
+RULES = (
+    "single",
+    "magnitude",
+    "lexicographic",
+    "commuting",
+    "commuting-largest-first",
+    "commuting-smallest-last",
+    "commuting-saturation",
+    "commuting-fewest",
+    "bond",
+    "axis",
+    "gate-saving",
+    "error-saving",
+)
 
 
 def texts(partition):
@@ -41,7 +54,9 @@ def test_every_rule_distributes_the_terms_into_commuting_parts(operator, rule):
 
 @given(
     operator=strategies.operators(max_qubits=4, max_terms=12),
-    rule=st.sampled_from(("single", "commuting", "axis")),
+    rule=st.sampled_from(
+        ("single", "commuting", "axis", "commuting-saturation", "commuting-smallest-last", "error-saving")
+    ),
 )
 def test_the_given_order_is_kept_inside_a_part(operator, rule):
     place = {string: number for number, string in enumerate(terms_of(operator))}
@@ -58,6 +73,13 @@ def test_single_and_magnitude_put_each_term_alone():
     h = Operator("0.5 X_0 - 2.0 Z_0 + 0.5 Y_0 + 1.0 X_1 + 7")
     assert texts(Partition.of(h, "single")) == ["0.5 X_0", "-2.0 Z_0", "0.5 Y_0", "1.0 X_1"]
     assert texts(Partition.of(h, "magnitude")) == ["-2.0 Z_0", "1.0 X_1", "0.5 X_0", "0.5 Y_0"]
+
+
+def test_lexicographic_sorts_by_letters_from_qubit_0_on():
+    h = Operator("Z_0 + X_0 Z_1 + Y_0 + X_1 + X_0 + X_0 Y_1 + X_0 X_1")
+    # II < IX < XI < XX < XY < XZ < YI < ZI
+    expected = ["1.0 X_1", "1.0 X_0", "1.0 X_0 X_1", "1.0 X_0 Y_1", "1.0 X_0 Z_1", "1.0 Y_0", "1.0 Z_0"]
+    assert texts(Partition.of(h, "lexicographic")) == expected
 
 
 def test_axis_takes_x_then_y_then_z_then_mixed_strings():
@@ -231,6 +253,14 @@ PARTITION = Partition.of(Operator("X_0 + Y_0 + Z_0"), "single")
             "rule",
             ["('bonds')", "did you mean 'bond'?", "'axis'"],
         ),
+        (
+            lambda: Partition.of(Operator("X_0"), "commuting-saturated"),
+            "rule",
+            ["('commuting-saturated')", "did you mean 'commuting-saturation'?"],
+        ),
+        (lambda: Partition.of(Operator("X_0"), "lexicographical"), "rule", ["did you mean 'lexicographic'?"]),
+        (lambda: Partition.of(Operator("X_0"), "gates-saving"), "rule", ["did you mean 'gate-saving'?"]),
+        (lambda: Partition.of(Operator("X_0"), "error saving"), "rule", ["did you mean 'error-saving'?"]),
         (lambda: Partition.of(Operator("X_0"), 3), "rule", ["rule:", "(3)", "choose one of 'single'"]),
         (
             lambda: Partition.of(Operator("Z_0 Z_1 + X_0 Y_1 Z_3"), "bond"),

@@ -10,14 +10,18 @@ from __future__ import annotations
 import difflib
 import random
 from collections.abc import Iterable, Sequence
-from operator import index
-from typing import final
+from typing import TYPE_CHECKING, final
 
 import numpy as np
 
+from trueturn._partition_checks import check_commuting, commutes, given_parts, whole_number
 from trueturn.errors import InternalError, PartitionError
 from trueturn.operator import Operator
 from trueturn.partition_rules import RULES, string_text, subset
+
+if TYPE_CHECKING:
+    from trueturn.error_saving import Improved
+    from trueturn.formulas import Formula
 
 __all__ = ["Partition"]
 
@@ -68,19 +72,12 @@ class Partition:
     __slots__ = ("_identity", "_parts", "_qubits", "_rule")
 
     def __init__(self, parts: Iterable[Operator]) -> None:
-        given = _operators(parts)
-        qubits = given[0].qubits
+        given = given_parts(parts)
         for number, part in enumerate(given):
-            if part.qubits != qubits:
-                raise PartitionError(
-                    f"parts: part {number} acts on {part.qubits} qubits and part 0 on {qubits}; "
-                    f"build every part with qubits={max(p.qubits for p in given)}",
-                    argument="parts",
-                )
-            _check_commuting(number, part)
+            check_commuting(number, part)
         self._parts = tuple(part for part in (p.without_identity() for p in given) if len(part))
         self._identity = float(np.sum([part.identity_coefficient for part in given]))
-        self._qubits = qubits
+        self._qubits = given[0].qubits
         self._rule = "given"
 
     @classmethod
@@ -90,32 +87,39 @@ class Partition:
         Parameters
         ----------
         operator : Operator
-        rule : {"single", "commuting", "bond", "axis", "magnitude"}
+        rule : str
             - ``single``: each term a part of its own, in the given order.
             - ``magnitude``: the same, largest absolute coefficient first; equal ones keep their order.
+            - ``lexicographic``: the same, sorted by the letters from qubit 0 on, with I before X, Y and Z.
             - ``commuting``: few parts; each term joins the first part with all of whose terms it commutes.
+            - ``commuting-largest-first``, ``-smallest-last``, ``-saturation``: the same, taking terms in another
+              order (`trueturn.vertex_colouring`), often with fewer parts; parts stand by their first terms.
+            - ``commuting-fewest``: whichever of these four makes fewest parts, the first named of equals.
             - ``bond``: two-qubit terms are edges of a graph, coloured so that edges of one colour share no
               qubit. One part for each colour with all commuting terms of its edges; strings of an edge that
               do not commute with those go into further parts right after. One-qubit terms follow in
               commuting parts of their own.
             - ``axis``: strings of X alone, of Y alone, of Z alone, then the others in commuting parts.
+            - ``gate-saving``: the parts of ``commuting``, put in order by `gate_saving`.
+            - ``error-saving``: the parts of ``commuting`` in the order of ``improved("strang")``.
 
         Returns
         -------
         Partition
             Made of the operator's terms with unchanged coefficients, each in exactly one part, in the given
-            order inside a part. Deterministic.
+            order inside a part (``gate-saving`` excepted). Deterministic.
 
         Raises
         ------
         PartitionError
-            Unknown rule, or ``bond`` for an operator with a term on more than two qubits.
+            Unknown rule, ``bond`` for an operator with a term on more than two qubits, or ``error-saving`` where
+            there are too many nested brackets.
 
         Notes
         -----
         ``bond`` gives the even and the odd bonds of a chain, two parts on rings of even length,
         and at most one more part than the largest number of bonds at a qubit when all strings of a bond
-        commute.
+        commute. The rules ``commuting-…`` take about terms² × qubits operations: seconds for 10^4 terms.
 
         Examples
         --------
@@ -140,10 +144,8 @@ class Partition:
         terms = operator.without_identity()
         made = cls.__new__(cls)
         made._parts = tuple(subset(terms, group) for group in RULES[rule](terms))
-        made._identity = operator.identity_coefficient
-        made._qubits = operator.qubits
-        made._rule = rule
-        if made.operator() != operator or not all(map(_commutes, made._parts)):
+        made._identity, made._qubits, made._rule = operator.identity_coefficient, operator.qubits, rule
+        if made.operator() != operator or not all(map(commutes, made._parts)):
             raise InternalError(f"partition: rule {rule!r} made wrong parts; please report this with the operator")
         return made
 
@@ -240,9 +242,10 @@ class Partition:
         >>> partition.shuffled(1) == partition.shuffled(1)
         True
         """
-        number = _integer("seed", seed, "give an integer of at least 0")
+        remedy = "give an integer of at least 0"
+        number = whole_number("seed", seed, remedy)
         if number < 0:
-            raise PartitionError(f"seed: is negative ({seed}); give an integer of at least 0", argument="seed")
+            raise PartitionError(f"seed: is negative ({seed}); {remedy}", argument="seed")
         order = list(range(len(self._parts)))
         draw = random.Random(number)
         for last in range(len(order) - 1, 0, -1):
@@ -280,16 +283,98 @@ class Partition:
             entries = list(indices)
         except TypeError:
             raise PartitionError(f"indices: is not a sequence ({indices!r}); {remedy}", argument="indices") from None
-        order = [_integer("indices", entry, remedy) for entry in entries]
+        order = [whole_number("indices", entry, remedy) for entry in entries]
         if sorted(order) != list(range(count)):
             raise PartitionError(f"indices: does not arrange the {count} parts ({order}); {remedy}", argument="indices")
         return self._in_order(order, "reordered")
 
+    def gate_saving(self, ladder: str = "ascending") -> Partition:
+        """Order parts, and the terms inside them, so that ladders of neighbours cancel.
+
+        Parameters
+        ----------
+        ladder : {"ascending", "z-first"}
+            How a string's qubits are strung together; see `trueturn.ladders.saved_gates`, which counts what
+            is saved.
+
+        Returns
+        -------
+        Partition
+            The same parts, terms sorted by ladder inside each, which saves most there. The first part stays
+            first; the next is always the one that shares most with the last string.
+
+        Raises
+        ------
+        ArgumentError
+            Unknown ladder.
+
+        Examples
+        --------
+        >>> import trueturn as tt
+        >>> h = tt.Operator("Z_0 Z_1 Z_2 + Z_2 Z_3 + Z_0 Z_1 Z_3")
+        >>> print(tt.Partition.of(h, "commuting").gate_saving().parts[0])
+        1.0 Z_0 Z_1 Z_2 + 1.0 Z_0 Z_1 Z_3 + 1.0 Z_2 Z_3
+        """
+        from trueturn.ladders import gate_saving_order, known_ladder
+
+        made = gate_saving_order(self._parts, known_ladder(ladder))
+        return self._with_parts([subset(self._parts[part], terms) for part, terms in made], f"gate-saving({ladder})")
+
+    def improved(
+        self, formula: Formula | str, *, for_: str | Operator = "norm", seed: int = 0, evaluations: int = 2000
+    ) -> Improved:
+        """Look for an order of the parts with a smaller leading error.
+
+        Parameters
+        ----------
+        formula : Formula or str
+            Lie or Strang, or a Formula with their stages.
+        for_ : {"norm", "rms"} or Operator
+            What is to be small of the leading error operator D: ``"norm"``, the sum of |coefficients|, which
+            bounds its spectral norm; ``"rms"``, the root of the sum of squares, the error averaged over input
+            states; an observable O, the sum of |coefficients| of i[D, O].
+        seed : int
+            At least 0; one seed gives one result.
+        evaluations : int
+            Most orders to look at. All are tried where there are no more (6 parts with the default).
+
+        Returns
+        -------
+        Improved
+            The partition in its new order, and the figure before and after, which never rises.
+
+        Raises
+        ------
+        FormulaError
+            A formula whose leading error is not at hand; `choices` names those that are.
+        ArgumentError
+            `for_`, `seed` or `evaluations` out of range.
+        OperatorError, PartitionError
+            An observable on other qubits; too many nested brackets.
+
+        Notes
+        -----
+        A step τ is exp(-iτ(H + τ^p D + …)) for order p; D is made of brackets (`trueturn.leading_error`), parts²
+        (Lie) or parts³ (Strang) of them, fewer for local parts. Its figure is an estimate to leading order.
+
+        Examples
+        --------
+        >>> import trueturn as tt
+        >>> partition = tt.Partition([tt.Operator("Z_0"), tt.Operator("Z_0"), tt.Operator("X_0")])
+        >>> print(partition.improved("lie"))
+        leading error (norm) 2 -> 0, inf times less; the best of all orders
+        """
+        from trueturn.error_saving import improve
+
+        return improve(self, formula, for_, seed, evaluations)
+
     def _in_order(self, order: list[int], note: str) -> Partition:
+        return self._with_parts([self._parts[k] for k in order], note)
+
+    def _with_parts(self, parts: list[Operator], note: str) -> Partition:
         made = Partition.__new__(Partition)
-        made._parts = tuple(self._parts[k] for k in order)
-        made._identity, made._qubits = self._identity, self._qubits
-        made._rule = f"{self._rule} {note}"
+        made._parts = tuple(parts)
+        made._identity, made._qubits, made._rule = self._identity, self._qubits, f"{self._rule} {note}"
         return made
 
     def _key(self) -> tuple[object, ...]:
@@ -309,40 +394,3 @@ class Partition:
         more = ", …" if len(self._parts) > 8 else ""
         count = len(self._parts)
         return f"<Partition {self._rule!r} of {self._qubits} qubits: {count} parts of {sizes}{more} terms>"
-
-
-def _commutes(part: Operator) -> bool:
-    return part._terms.first_anticommuting_pair() is None
-
-
-def _check_commuting(number: int, part: Operator) -> None:
-    pair = part._terms.first_anticommuting_pair()
-    if pair is not None:
-        first, second = (string_text(part.x_masks[term], part.z_masks[term]) for term in pair)
-        raise PartitionError(
-            f"parts: {first} and {second} in part {number} do not commute; put them into different parts, "
-            "or let Partition.of(operator, 'commuting') distribute the terms",
-            argument="parts",
-        )
-
-
-def _operators(parts: object) -> list[Operator]:
-    remedy = "give a sequence of Operators, or use Partition.of(operator, rule)"
-    if isinstance(parts, Operator) or not isinstance(parts, Iterable):
-        raise PartitionError(f"parts: is not a sequence of Operators ({parts!r}); {remedy}", argument="parts")
-    given = list(parts)
-    if not given:
-        raise PartitionError(f"parts: is empty ({parts!r}); {remedy}", argument="parts")
-    for number, part in enumerate(given):
-        if not isinstance(part, Operator):
-            raise PartitionError(f"parts: part {number} is not an Operator ({part!r}); {remedy}", argument="parts")
-    return given
-
-
-def _integer(argument: str, value: object, remedy: str) -> int:
-    try:
-        if isinstance(value, bool):
-            raise TypeError
-        return index(value)  # type: ignore[arg-type]
-    except TypeError:
-        raise PartitionError(f"{argument}: is not an integer ({value!r}); {remedy}", argument=argument) from None

@@ -11,12 +11,17 @@ from collections.abc import Callable, Iterable, Sequence
 import numpy as np
 
 from trueturn.edge_colouring import colour_edges
+from trueturn.error_saving import EVALUATIONS, search
 from trueturn.errors import PartitionError
+from trueturn.ladders import gate_saving_order
+from trueturn.leading_error import LeadingError
 from trueturn.operator import Operator
+from trueturn.vertex_colouring import STRATEGIES, colour_strings
 
-__all__ = ["RULES", "Groups", "string_text", "subset"]
+__all__ = ["COMMUTING", "RULES", "Groups", "part_counts", "string_text", "subset"]
 
 Groups = list[list[int]]
+Rule = Callable[[Operator], Groups]
 
 
 def _each_alone(terms: Operator) -> Groups:
@@ -25,6 +30,15 @@ def _each_alone(terms: Operator) -> Groups:
 
 def _largest_first(terms: Operator) -> Groups:
     return [[int(term)] for term in np.argsort(-np.abs(terms.coefficients), kind="stable")]
+
+
+def _lexicographic(terms: Operator) -> Groups:
+    """Letters I, X, Y, Z are 0, 1, 2, 3, and qubit 0 is the first digit."""
+    keys = [
+        [(x >> q & 1) ^ 3 * (z >> q & 1) for q in range(terms.qubits)]
+        for x, z in zip(terms.x_masks.tolist(), terms.z_masks.tolist(), strict=True)
+    ]
+    return [[term] for term in sorted(range(len(terms)), key=keys.__getitem__)]
 
 
 def _commuting(terms: Operator) -> Groups:
@@ -38,6 +52,42 @@ def _commuting_among(terms: Operator, chosen: Iterable[int]) -> Groups:
     for number, group in zip(numbers, subset(terms, numbers)._terms.commuting_groups().tolist(), strict=True):
         groups.setdefault(group, []).append(number)
     return [groups[group] for group in sorted(groups)]
+
+
+def _commuting_by(strategy: str) -> Rule:
+    def rule(terms: Operator) -> Groups:
+        groups: dict[int, list[int]] = {}
+        for term, colour in enumerate(colour_strings(terms, strategy)):
+            groups.setdefault(colour, []).append(term)
+        return list(groups.values())
+
+    return rule
+
+
+def _commuting_fewest(terms: Operator) -> Groups:
+    return min((rule(terms) for rule in COMMUTING.values()), key=len)
+
+
+def _gate_saving(terms: Operator) -> Groups:
+    groups = _commuting(terms)
+    order = gate_saving_order([subset(terms, group) for group in groups], "ascending")
+    return [[groups[part][term] for term in inside] for part, inside in order]
+
+
+def _error_saving(terms: Operator) -> Groups:
+    groups = _commuting(terms)
+    if len(groups) < 2:
+        return groups
+    try:
+        error = LeadingError([subset(terms, group) for group in groups], "strang")
+    except PartitionError as refused:
+        raise PartitionError(
+            f"rule: 'error-saving' meets too many nested brackets ({len(groups)} parts, {len(terms)} terms); "
+            "use 'commuting', and .improved('lie') on what it makes",
+            argument="rule",
+            choices=("commuting",),
+        ) from refused
+    return [groups[part] for part in search(error.one_norm, len(groups), seed=0, evaluations=EVALUATIONS).order]
 
 
 def _axis(terms: Operator) -> Groups:
@@ -74,13 +124,46 @@ def _bond(terms: Operator) -> Groups:
     return groups + _commuting_among(terms, fields)
 
 
-RULES: dict[str, Callable[[Operator], Groups]] = {
-    "single": _each_alone,
+COMMUTING: dict[str, Rule] = {
     "commuting": _commuting,
+    **{f"commuting-{strategy}": _commuting_by(strategy) for strategy in STRATEGIES},
+}
+"""The ways to colour strings that do not commute."""
+
+RULES: dict[str, Rule] = {
+    "single": _each_alone,
+    "magnitude": _largest_first,
+    "lexicographic": _lexicographic,
+    **COMMUTING,
+    "commuting-fewest": _commuting_fewest,
     "bond": _bond,
     "axis": _axis,
-    "magnitude": _largest_first,
+    "gate-saving": _gate_saving,
+    "error-saving": _error_saving,
 }
+
+
+def part_counts(operator: Operator) -> dict[str, int]:
+    """Report how many parts each way of colouring makes.
+
+    Parameters
+    ----------
+    operator : Operator
+
+    Returns
+    -------
+    dict of str to int
+        From each rule in `COMMUTING` to its number of parts; ``commuting-fewest`` makes the least of them.
+
+    Examples
+    --------
+    >>> import trueturn as tt
+    >>> from trueturn.partition_rules import part_counts
+    >>> part_counts(tt.Operator("X_0 + Z_1 + Z_0 + X_1"))["commuting-saturation"]
+    2
+    """
+    terms = operator.without_identity()
+    return {name: len(rule(terms)) for name, rule in COMMUTING.items()}
 
 
 def subset(terms: Operator, chosen: Sequence[int]) -> Operator:

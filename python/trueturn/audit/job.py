@@ -22,6 +22,7 @@ from trueturn.audit.job_table import Table, nearest
 from trueturn.errors import JobError
 from trueturn.formulas import Formula, formula, formulas
 from trueturn.operator import Operator
+from trueturn.partition_rules import RULES
 
 if TYPE_CHECKING:
     from trueturn.audit.result import Audit
@@ -30,7 +31,6 @@ if TYPE_CHECKING:
 __all__ = ["Job", "built_in_job", "read_job", "template"]
 
 SECTIONS = ("system", "start", "target", "candidate", "reference", "output", "run")
-RULES = ("single", "commuting", "bond", "axis", "magnitude")
 METHODS = ("chebyshev", "krylov", "dense")
 EXAMPLE_CANDIDATE = '[[candidate]] with formula = "strang", rule = "commuting", steps = "least"'
 
@@ -311,7 +311,7 @@ def read_candidates(file: Table, operator: Operator, required: bool) -> tuple[Ca
         section = Table(entry, f"candidate[{index}]", file.path)
         section.only(("formula", "rule", "steps"))
         name = section.text("formula", 'formula = "strang"')
-        rule = section.choice("rule", RULES, default="commuting")
+        rule = section.choice("rule", tuple(RULES), default="commuting")
         candidate = Candidate(known_formula(section, name), rule=rule, steps=read_steps(section))
         with section.blame("rule"):
             candidate.partition(operator)
