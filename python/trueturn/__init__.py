@@ -5,32 +5,48 @@ from trueturn._build import build_info
 from trueturn._threads import threads
 from trueturn.accuracy import Bound, bound
 from trueturn.audit import Audit, Candidate, audit
+from trueturn.comparison import Comparison, compare
+from trueturn.error_saving import Improved
+from trueturn.extrapolation import Extrapolation, extrapolate, multiproduct_weights, well_conditioned_steps
 from trueturn.formulas import Formula, formula, formulas
+from trueturn.ladders import saved_gates
 from trueturn.operator import Operator
 from trueturn.partition import Partition
 from trueturn.reference import Certificate, Reference, reference
 from trueturn.rotations import Rotations
 from trueturn.state import State
+from trueturn.symmetry import Symmetries, Symmetry, symmetries
 
 __all__ = [
     "Audit",
     "Bound",
     "Candidate",
     "Certificate",
+    "Comparison",
+    "Extrapolation",
     "Formula",
+    "Improved",
     "Operator",
     "Partition",
     "Reference",
     "Rotations",
     "State",
+    "Symmetries",
+    "Symmetry",
     "audit",
     "bound",
     "build_info",
+    "compare",
     "errors",
+    "extrapolate",
     "formula",
     "formulas",
     "lattice",
     "model",
+    "multiproduct_weights",
     "reference",
+    "saved_gates",
+    "symmetries",
     "threads",
+    "well_conditioned_steps",
 ]

@@ -114,9 +114,9 @@ class _Searcher:
         failing = max((c for c in self.trials if failing <= c < passing and not self.meets(c)), default=failing)
         streak, side = 0, True
         while passing - failing > 1:
-            # The interpolation is usually right to one or two steps. Repeated results on one side push past it, by 1, 2,
-            # 4, …, so that the bracket closes from both ends.
-            push = 1 << (streak - 1) if streak else 0
+            # The interpolation is usually right to one step. Repeated results on one side push past it, by 1, 2, 4, …, so
+            # that the bracket closes from both ends.
+            push = 1 << (streak - 2) if streak > 1 else 0
             guess = self._interpolated(failing, passing) + (-push if side else push)
             guess = min(max(guess, failing + 1), passing - 1)
             meets = self.meets(guess)
