@@ -111,11 +111,7 @@ def steps_of(driven: Driven, clock: Clock, parts: Sequence[DrivenPart], starts: 
     """
     _require_room(clock, parts, len(starts))
     table = _strengths(driven, clock, starts, lengths)
-    phase = -math.fsum(
-        float(weight) * float(length) * driven.identity(row)
-        for weight, reading in clock.stages
-        for length, row in zip(lengths, table[reading], strict=True)
-    )
+    phase = 0.0 - _identity_angle(driven, clock, lengths, table)
     writer = _Writer(parts, lengths, table)
     x, z, angles = writer.columns(clock)
     if not (np.isfinite(angles).all() and math.isfinite(phase)):
@@ -127,7 +123,19 @@ def steps_of(driven: Driven, clock: Clock, parts: Sequence[DrivenPart], starts: 
     if not angles.all():
         kept = np.flatnonzero(angles).tolist()
         x, z, angles = [x[k] for k in kept], [z[k] for k in kept], angles[kept]
-    return Rotations(x, z, angles, driven.qubits, phase=phase + 0.0)
+    return Rotations(x, z, angles, driven.qubits, phase=phase)
+
+
+def _identity_angle(driven: Driven, clock: Clock, lengths: Floats, table: dict[Fraction, Floats]) -> float:
+    """Return the formula's quadrature of the identity's strength, term by term in order of time."""
+    shares = [(term, operator.identity_coefficient) for term, (_, operator) in enumerate(driven.terms)]
+    return math.fsum(
+        angle
+        for term, share in shares
+        if share
+        for weight, reading in clock.stages
+        for angle in (lengths * float(weight) * table[reading][:, term] * share).tolist()
+    )
 
 
 def _require_room(clock: Clock, parts: Sequence[DrivenPart], steps: int) -> None:

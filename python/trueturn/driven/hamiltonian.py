@@ -139,10 +139,6 @@ class Driven:
             As for `strengths`.
         """
         values = self.strengths(checks.number("time", time))
-        return self.combined(values)
-
-    def combined(self, values: Iterable[float]) -> Operator:
-        """Return Σ_k values[k] H_k."""
         total = Operator("0", qubits=self._qubits)
         for value, (_, operator) in zip(values, self._terms, strict=True):
             total = total + value * operator
@@ -246,15 +242,11 @@ class Driven:
 
     def _static(self, formula: Formula, parts: Sequence[DrivenPart], time: float, steps: int) -> Rotations:
         values = np.array([self.strengths(0.0)])
-        identity = Operator("1", qubits=self._qubits) * self.identity(values[0])
+        identity = Operator("1", qubits=self._qubits) * math.fsum(
+            value * operator.identity_coefficient for value, (_, operator) in zip(values[0], self._terms, strict=True)
+        )
         operators = [Operator.from_masks(part.x, part.z, part.coefficients(values)[0], self._qubits) for part in parts]
         return formula.rotations(Partition([*operators, identity]), time, steps)
-
-    def identity(self, values: Iterable[float]) -> float:
-        """Return the coefficient of the identity for strengths `values`."""
-        return math.fsum(
-            value * operator.identity_coefficient for value, (_, operator) in zip(values, self._terms, strict=True)
-        )
 
     def __len__(self) -> int:
         return len(self._terms)

@@ -16,6 +16,7 @@ import numpy as np
 import numpy.typing as npt
 
 from trueturn import _native
+from trueturn.operator import Operator
 from trueturn.reference import schedule as planning
 from trueturn.reference.bessel import bessel_values, least_degree, truncation
 from trueturn.rotations import Rotations
@@ -47,10 +48,12 @@ class Stepper:
     """
 
     def __init__(self, driven: Driven, start: npt.NDArray[Any], threads: int) -> None:
-        self._driven = driven
+        self._qubits = driven.qubits
         self.threads = threads
-        bare = [operator.without_identity() for _, operator in driven.terms]
-        self._intervals = [operator.spectral_interval() if len(operator) else (0.0, 0.0) for operator in bare]
+        self._bare = [operator.without_identity() for _, operator in driven.terms]
+        self._constants = [operator.identity_coefficient for _, operator in driven.terms]
+        self._sizes = [operator.one_norm() for _, operator in driven.terms]
+        self._intervals = [operator.spectral_interval() if len(operator) else (0.0, 0.0) for operator in self._bare]
         self.vector: Vector = start.astype(np.complex128)
         self._previous = np.empty_like(self.vector)
         self._sum = np.empty_like(self.vector)
@@ -73,11 +76,12 @@ class Stepper:
             (value * low, value * high) if value >= 0.0 else (value * high, value * low)
             for value, (low, high) in zip(values, self._intervals, strict=True)
         ]
-        pad = 2.0**-50 * math.fsum(
-            abs(value) * operator.one_norm() for value, (_, operator) in zip(values, self._driven.terms, strict=True)
-        )
-        pad *= len(ends) + 2
+        pad = 2.0**-50 * (len(ends) + 2) * self._size(values)
         return math.fsum(low for low, _ in ends) - pad, math.fsum(high for _, high in ends) + pad
+
+    def _size(self, values: Sequence[float]) -> float:
+        """Return Σ_k |values[k]| Σ|c|, which bounds the sum of |coefficients|."""
+        return math.fsum(abs(value) * size for value, size in zip(values, self._sizes, strict=True))
 
     def apply(self, values: Sequence[float], length: float, allowed: float) -> None:
         """Apply exp(-i length Σ_k values[k] H_k); cutting the expansion costs at most `allowed`.
@@ -87,30 +91,24 @@ class Stepper:
         Coefficients Σ_k values[k] c_k are rounded: by at most (m + 1) u Σ_k |values[k] c_k| for m terms, which moves the
         exponential by as much times |length|.
         """
-        operator = self._driven.combined(values)
-        constant = operator.identity_coefficient
-        bare = operator.without_identity()
-        blur = (
-            (len(self._intervals) + 1)
-            * 2.0**-53
-            * math.fsum(
-                abs(value) * part.one_norm() for value, (_, part) in zip(values, self._driven.terms, strict=True)
-            )
-        )
+        blur = (len(values) + 1) * 2.0**-53 * self._size(values)
         bound = blur * abs(length)
-        turn = constant * length
-        if len(bare) and length != 0.0:
+        turn = length * math.fsum(value * share for value, share in zip(values, self._constants, strict=True))
+        operator = Operator("0", qubits=self._qubits)
+        for value, part in zip(values, self._bare, strict=True):
+            operator = operator + value * part
+        if len(operator) and length != 0.0:
             low, high = self._interval(values)
             centre = low + 0.5 * (high - low)
-            bound += self._expand(bare, centre, max(high - centre, centre - low), length, allowed)
+            bound += self._expand(operator, centre, max(high - centre, centre - low), length, allowed)
             turn += centre * length
         if turn:
-            circuit = Rotations([], [], [], operator.qubits, phase=-turn)
+            circuit = Rotations([], [], [], self._qubits, phase=-turn)
             _native.evolve(self.vector, circuit._circuit, self.threads, None)
             bound += 2.0**-53 * (5.0 + 4.0 * abs(turn))
         self.bound += (1.0 + self.bound) * bound
 
-    def _expand(self, operator: Any, centre: float, half: float, length: float, allowed: float) -> float:
+    def _expand(self, operator: Operator, centre: float, half: float, length: float, allowed: float) -> float:
         signed = math.copysign(1.0, length)
         least = max(half * abs(length) * (1.0 + 2.0**-48), _LEAST)
         x = 2.0 ** (math.ceil(_GRID * math.log2(least) + 1e-9) / _GRID)
