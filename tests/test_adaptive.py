@@ -144,11 +144,25 @@ def test_steps_follow_a_pulse_and_beat_equal_steps_at_equal_cost():
     assert during < 0.5 * before
 
 
-def test_a_pulse_is_not_stepped_over_when_the_first_step_is_short():
+def test_steps_grow_threefold_where_nothing_is_wrong():
     run = adaptive(STRANG, tt.Partition([tt.Operator("X_0")]), tt.State.product("0"), 50.0, 1e-6)
     # one part: no error but rounding, so steps grow threefold each and are few
     assert len(run.steps) <= 2 + math.ceil(math.log(50.0 / 0.5, MOST_FACTOR)) + 1
     assert run.state.expectation(tt.Operator("Z_0")) == pytest.approx(math.cos(100.0), abs=1e-12)
+
+
+def test_a_short_pulse_is_stepped_over_unless_steps_are_kept_short():
+    # quiet but for a pulse of area 50 · 0.01 √π = 0.886, the angle θ of its rotation; <Z> is cos 2θ
+    pulse = Call(lambda t: 50.0 * math.exp(-(((t - 2.2) / 0.01) ** 2)))
+    driven = Driven([(pulse, tt.Operator("X_0")), (1e-3, tt.Operator("Z_0"))])
+    turned = math.cos(2 * 50.0 * 0.01 * math.sqrt(math.pi))
+    left = []
+    for longest in (None, 0.004):
+        run = adaptive(STRANG, driven, tt.State.product("0"), 4.0, 1e-3, longest_step=longest)
+        left.append(run.state.expectation(tt.Operator("Z_0")))
+        assert longest is None or run.steps.max() <= longest
+    assert left[0] > 0.99  # the warning of the docstring is real
+    assert left[1] == pytest.approx(turned, abs=2 * HONESTY * 4e-3 + 0.01)  # and 0.01 for the field along Z
 
 
 def test_no_time_is_no_step():
@@ -215,6 +229,7 @@ def test_a_pair_may_be_given():
         ({"tolerance": 1e-16}, errors.ToleranceError, "tolerance 1e-16 is met by no step|is not met by"),
         ({"first_step": 0.0}, errors.ArgumentError, "first_step: is not positive"),
         ({"first_step": math.nan}, errors.ArgumentError, "first_step: is not a finite"),
+        ({"longest_step": -1.0}, errors.ArgumentError, "longest_step: is not positive"),
         ({"most_steps": 0}, errors.ArgumentError, "most_steps: is not a whole number"),
         ({"most_steps": 3}, errors.ToleranceError, "most_steps: tolerance 0.001 is not met by 3 steps"),
         ({"system": PT, "rule": "pairs"}, errors.PartitionError, "rule: is unknown"),

@@ -61,13 +61,13 @@ def test_the_list_of_recorded_formulas_is_complete(published):
 
 def test_common_practice_strang_is_the_midpoint_rule():
     h = Driven([(Sinusoid(0.7, 1.3, phase=0.2), Z)])
-    circuit = h.rotations(tt.formula("strang"), time=0.5, steps=1, start=0.3)
+    circuit = h.rotations(tt.formula("strang"), "terms", time=0.5, steps=1, start=0.3)
     # one cosine and two products: some 8 u
     assert circuit.angles.tolist() == pytest.approx([0.5 * 0.7 * math.cos(1.3 * 0.55 + 0.2)], rel=8 * UNIT)
 
 
 def test_a_first_order_step_freezes_strengths_at_its_end():
-    circuit = Driven([(Ramp(0.0, 1.0), Z)]).rotations(tt.formula("lie"), time=2.0, steps=1)
+    circuit = Driven([(Ramp(0.0, 1.0), Z)]).rotations(tt.formula("lie"), "terms", time=2.0, steps=1)
     assert circuit.angles.tolist() == [4.0]
 
 
@@ -86,12 +86,12 @@ def test_runs_merge_across_stages_and_steps():
     # McLachlan 1995 counting of tests/published README: r m (L - 1) + 1 parts for r steps of m stages, L parts
     for name, stages in [("strang", 2), ("suzuki-4", 10)]:
         single = Driven([(Sinusoid(1.0, 2.0), tt.Operator(f"{letter}_0")) for letter in "XYZ"])
-        assert single.rotations(tt.formula(name), time=1.0, steps=7).count == 7 * stages * 2 + 1
+        assert single.rotations(tt.formula(name), "terms", time=1.0, steps=7).count == 7 * stages * 2 + 1
 
 
 def test_one_part_is_one_run_whatever_the_steps():
     h = Driven([(Ramp(0.0, 1.0), Z)])
-    circuit = h.rotations(tt.formula("strang"), time=2.0, steps=64)
+    circuit = h.rotations(tt.formula("strang"), "terms", time=2.0, steps=64)
     assert circuit.count == 1
     # the midpoint rule is exact for a ramp: ∫ t dt = 2; 64 sums of readings that are exact binary fractions
     assert circuit.angles.tolist() == [2.0]
@@ -112,7 +112,9 @@ def test_constant_strengths_give_the_circuit_of_the_static_formula(operator, ste
 
 
 def test_a_callable_that_is_constant_gives_the_same_as_a_constant():
-    called = Driven([(lambda t: 1.0, part) for part in P3_PARTS]).rotations(tt.formula("suzuki-4"), time=1.0, steps=5)
+    called = Driven([(lambda t: 1.0, part) for part in P3_PARTS]).rotations(
+        tt.formula("suzuki-4"), "terms", time=1.0, steps=5
+    )
     static = tt.formula("suzuki-4").rotations(P3, 1.0, 5)
     assert len(static.blocks) > 1 and called.count == static.count
     # static angles are rounded twice; driven ones in weight, step, coefficient, products and sums: 8 roundings
@@ -120,7 +122,7 @@ def test_a_callable_that_is_constant_gives_the_same_as_a_constant():
 
 
 def test_constants_keep_their_steps_as_repeated_blocks():
-    circuit = Driven([(0.5, X), (Constant(2), Z)]).rotations(tt.formula("strang"), time=1.0, steps=10**9)
+    circuit = Driven([(0.5, X), (Constant(2), Z)]).rotations(tt.formula("strang"), "terms", time=1.0, steps=10**9)
     assert circuit.count == 2 * 10**9 + 1
     half, whole = tt.Operator("0.5 X_0"), tt.Operator("2.0 Z_0")
     assert circuit == tt.formula("strang").rotations(tt.Partition([half, whole]), 1.0, 10**9)
@@ -128,7 +130,7 @@ def test_constants_keep_their_steps_as_repeated_blocks():
 
 def test_identity_terms_become_the_phase_by_the_same_quadrature():
     h = Driven([(Ramp(1.0, 2.0), tt.Operator("Z_0 + 3")), (0.5, tt.Operator("X_0 - 1"))])
-    circuit = h.rotations(tt.formula("strang"), time=2.0, steps=4, start=1.0)
+    circuit = h.rotations(tt.formula("strang"), "terms", time=2.0, steps=4, start=1.0)
     # midpoints integrate a ramp exactly: 3 (2 + (9 - 1)) - 0.5 · 2 = 29; eight terms, each rounded four times
     assert circuit.phase == pytest.approx(-29.0, rel=32 * UNIT)
 
@@ -144,17 +146,17 @@ def test_negative_weights_sample_outside_and_need_a_drive_there():
         return Driven([(Call(math.cos, domain=domain), X), (1.0, Z)])
 
     with pytest.raises(errors.ArgumentError, match=r"time: needs the drive at 0\.375 to 1\.25, .* from 0\.0 to 1\.0"):
-        cosine((0.0, 1.0)).rotations(formula, time=1.0, steps=4)
-    assert cosine((0.375, 1.25)).rotations(formula, time=1.0, steps=4).count
+        cosine((0.0, 1.0)).rotations(formula, "terms", time=1.0, steps=4)
+    assert cosine((0.375, 1.25)).rotations(formula, "terms", time=1.0, steps=4).count
     with pytest.raises(errors.ArgumentError, match="time: needs the drive"):
-        cosine((0.375, 1.2499)).rotations(formula, time=1.0, steps=4)
+        cosine((0.375, 1.2499)).rotations(formula, "terms", time=1.0, steps=4)
     # forward runs only: inside, and edges that rounding alone oversteps are taken as the edges
-    assert cosine((0.0, 1.0)).rotations(tt.formula("lie"), time=1.0, steps=10).count == 20
-    assert cosine((0.1, 1.0)).rotations(tt.formula("lie"), time=0.9, steps=7, start=0.1).count == 14
+    assert cosine((0.0, 1.0)).rotations(tt.formula("lie"), "terms", time=1.0, steps=10).count == 20
+    assert cosine((0.1, 1.0)).rotations(tt.formula("lie"), "terms", time=0.9, steps=7, start=0.1).count == 14
 
 
 def test_time_runs_backwards():
-    circuit = PT.rotations(tt.formula("suzuki-4"), time=-1.0, steps=16, start=1.0)
+    circuit = PT.rotations(tt.formula("suzuki-4"), "terms", time=-1.0, steps=16, start=1.0)
     exact = evolution(pt, 0.0, 1.0, pieces=4).conj().T
     # the recorded error of 16 steps forwards, 7.46e-7, which a symmetric formula has backwards too
     assert abs(distance(multiplied(circuit), exact) - 7.457609e-07) <= 1e-6 * 7.5e-07 + 300 * UNIT
@@ -166,10 +168,10 @@ def test_time_runs_backwards():
 def test_strings_of_a_part_commute_at_unequal_times_or_are_refused():
     mixed = Driven([(math.cos, tt.Operator("X_0 + Z_0"))])
     with pytest.raises(errors.PartitionError, match=r"rule: X_0 and Z_0 of term 0 do not commute.*'commuting'"):
-        mixed.rotations(tt.formula("strang"))
-    # at one time alone the part f(t) X + g(t) X commutes with itself; strings decide, not values
+        mixed.rotations(tt.formula("strang"), "terms", 1.0, 1)
+    # a single driven term commutes with itself at unequal times, but it is no product of rotations
     with pytest.raises(errors.PartitionError, match="do not commute"):
-        mixed.rotations(tt.formula("strang"), tt.Partition([tt.Operator("X_0 + Z_0")]))
+        mixed.rotations(tt.formula("strang"), tt.Partition([tt.Operator("X_0 + Z_0")]), 1.0, 1)
     assert mixed.rotations(tt.formula("strang"), "commuting", 1.0, 2).count == 5
 
 
@@ -196,7 +198,7 @@ def test_rules_agree_where_they_make_the_same_parts():
 )
 def test_bad_rules_are_refused(rule, pieces):
     with pytest.raises(errors.PartitionError) as caught:
-        Driven([(1.0, X), (math.cos, Z)]).rotations(tt.formula("lie"), rule)
+        Driven([(1.0, X), (math.cos, Z)]).rotations(tt.formula("lie"), rule, 1.0, 1)
     for piece in pieces:
         assert piece in str(caught.value)
 
@@ -209,7 +211,7 @@ def test_freezing_adds_up_the_terms():
     assert h.qubits == 2 and len(h) == 3 and h.domain == (-math.inf, math.inf)
     assert h.at(2.0) == math.fsum([math.cos(4.0), 4.0]) * tt.Operator("X_0", qubits=2)
     assert h.at(0.0) == tt.Operator("Z_0 Z_1 + 2 + X_0")
-    assert h.strings() == tt.Operator("Z_0 Z_1 + 2 + 2 X_0")
+    assert h.strings() == tt.Operator("Z_0 Z_1 + 2 + 2 X_0")  # Σ |c|
     assert distance(oracle.dense(PT.at(0.3)), pt(0.3)) <= 40 * UNIT  # eleven terms below 2, a few roundings each
 
 
@@ -244,11 +246,24 @@ def test_what_is_no_list_of_pairs_is_refused(terms):
 def test_bad_circuits_are_refused(arguments, argument):
     h = Driven([(Ramp(0.0, 1e290), X), (1.0, Z)])
     with pytest.raises(errors.ArgumentError) as caught:
-        h.rotations(**{"formula": tt.formula("strang"), "time": 1.0, **arguments})
+        h.rotations(**{"formula": tt.formula("strang"), "rule": "terms", "time": 1.0, "steps": 1, **arguments})
     assert caught.value.argument == argument
 
 
 def test_rotations_above_the_limit_are_refused_before_any_is_made():
     h = Driven([(math.cos, X), (1.0, Z)])
     with pytest.raises(errors.ArgumentError, match=r"steps: make 20000001 rotations.*4999999 steps or fewer"):
-        h.rotations(tt.formula("strang"), time=1.0, steps=10**7)
+        h.rotations(tt.formula("strang"), "terms", time=1.0, steps=10**7)
+
+
+def test_a_hamiltonian_of_identity_alone_is_a_phase():
+    h = Driven([(Ramp(0.0, 2.0), tt.Operator("3"))])
+    circuit = h.rotations(tt.formula("strang"), "terms", time=1.0, steps=4)
+    assert circuit.count == 0 and circuit.phase == -3.0  # exact: binary fractions all along
+
+
+def test_strengths_that_are_zero_cost_nothing():
+    h = Driven([(Samples([0, 1, 2], [0, 0, 1], "hold"), X), (1.0, Z)])
+    circuit = h.rotations(tt.formula("strang"), "terms", time=2.0, steps=2)
+    # parts X, Z; the strength of X is 0 at 0.5 and at 1.5: nothing but Z is left
+    assert circuit.z_masks.tolist() == [1, 1] and circuit.angles.tolist() == [1.0, 1.0]

@@ -80,7 +80,7 @@ def test_one_spin_in_a_rotating_field_follows_rabi(splitting, drive, frequency):
     slips = []
     for steps in (256, 512):
         state = tt.State.product("0")
-        state.apply(h.rotations(tt.formula("strang"), time=3.0, steps=steps))
+        state.apply(h.rotations(tt.formula("strang"), "terms", time=3.0, steps=steps))
         slips.append(gap(state, found.states[1].amplitudes))
     assert slips[0] < 0.01 and slips[0] / slips[1] == pytest.approx(4, abs=0.05)
 
@@ -99,7 +99,7 @@ def test_a_linear_sweep_follows_landau_and_zener(coupling, rate, span):
     stayed = []
     for steps in (20_000, 40_000):
         state = tt.State.product("0")
-        state.apply(sweep.rotations(tt.formula("strang"), time=2 * span, steps=steps, start=-span))
+        state.apply(sweep.rotations(tt.formula("strang"), "terms", time=2 * span, steps=steps, start=-span))
         stayed.append(0.5 * (1 + state.expectation(Z)))
     halving = abs(stayed[1] - stayed[0])  # order 2: the finer run is off by a third of it
     assert halving < 1e-3
@@ -114,7 +114,7 @@ def test_the_reference_and_circuits_agree_on_a_sweep():
     sweep = Driven([(Ramp(-3.0, 1.0), Z), (0.7, X)])
     found = driven_reference(sweep, tt.State.product("0"), 6.0, 1e-9)
     state = tt.State.product("0")
-    state.apply(sweep.rotations(tt.formula("suzuki-6"), time=6.0, steps=200))
+    state.apply(sweep.rotations(tt.formula("suzuki-6"), "terms", time=6.0, steps=200))
     # a sixth-order run of steps 0.03 with norms of 3: (0.1)^6 · 6 / 0.03 is 2e-4 at the very most; measured far below
     assert gap(state, found.states[0].amplitudes) <= found.error[6.0] + 1e-8
 

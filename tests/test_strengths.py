@@ -80,7 +80,7 @@ def test_any_class_with_the_three_members_serves():
 )
 def test_results_that_are_no_number_are_refused(result, pieces):
     h = Driven([(lambda time: result, X)])
-    for ask in (lambda: h.at(0.5), lambda: h.rotations(tt.formula("strang"), time=1.0)):
+    for ask in (lambda: h.at(0.5), lambda: h.rotations(tt.formula("strang"), "terms", time=1.0, steps=1)):
         with pytest.raises(errors.ArgumentError) as caught:
             ask()
         for piece in pieces:

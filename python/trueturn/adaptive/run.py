@@ -103,6 +103,7 @@ def adaptive(
     rule: str | Partition = "terms",
     start: float = 0.0,
     first_step: float | None = None,
+    longest_step: float | None = None,
     most_steps: int = 10_000,
     progress: Progress | None = None,
     threads: int | None = None,
@@ -129,6 +130,8 @@ def adaptive(
         Time at the start, which matters to a driven Hamiltonian only.
     first_step : float, optional
         Length to try first, positive; by default one in which Σ\\|c\\| turns by 1/2, at most the whole time.
+    longest_step : float, optional
+        No step is longer; a drive with short pulses needs it, lest a long step reads the clock on both sides of one.
     most_steps : int, optional
         Steps to try, refused ones included.
     progress : callable, optional
@@ -194,7 +197,8 @@ def adaptive(
     _memory.require(3 * state.amplitudes.nbytes, "adaptive", lambda n: 3 * state.dtype.itemsize << n)
     now, trial, judge = state.copy(), state.copy(), state.copy()
     ruler = Ruler(total)
-    wanted = _first_step(first_step, circuits, ruler)
+    longest = math.inf if longest_step is None else _length("longest_step", longest_step)
+    wanted = min(longest, _first_step(first_step, circuits, ruler))
     history: list[AdaptiveStep] = []
     lengths: list[float] = []
     applied = 0
@@ -217,7 +221,7 @@ def adaptive(
         accepted = estimate <= rate * abs(length)
         history.append(AdaptiveStep(elapsed, length, estimate, accepted))
         ratio = (rate * abs(length) / estimate) ** (1.0 / low.order) if estimate else math.inf
-        wanted = abs(length) * min(MOST_FACTOR, max(LEAST_FACTOR, SAFETY * ratio))
+        wanted = min(longest, abs(length) * min(MOST_FACTOR, max(LEAST_FACTOR, SAFETY * ratio)))
         if accepted:
             now, trial = trial, now
             lengths.append(length)
@@ -258,10 +262,14 @@ def _first_step(given: object, circuits: Circuits, ruler: Ruler) -> float:
     if given is None:
         size = circuits.size()
         return min(whole, 0.5 / size) if size else whole
-    length = checks.number("first_step", given)
+    return min(_length("first_step", given), whole)
+
+
+def _length(argument: str, given: object) -> float:
+    length = checks.number(argument, given)
     if length <= 0.0:
-        checks.refuse("first_step", "is not positive", given, "give a length")
-    return min(length, whole)
+        checks.refuse(argument, "is not positive", given, "give a length")
+    return length
 
 
 def _not_met(rate: float, what: str, history: Sequence[AdaptiveStep], knob: str) -> ToleranceError:

@@ -176,9 +176,9 @@ class Driven:
     def rotations(
         self,
         formula: Formula,
-        rule: str | Partition = "terms",
-        time: float = 1.0,
-        steps: int = 1,
+        rule: str | Partition,
+        time: float,
+        steps: int,
         start: float = 0.0,
     ) -> Rotations:
         """Build the circuit of `steps` equal steps from time `start` to `start + time`.
