@@ -65,8 +65,7 @@ def formulas(*, special: bool = False) -> tuple[str, ...]:
 
     Examples
     --------
-    >>> import trueturn as tt
-    >>> tt.formulas()[:3]
+    >>> formulas()[:3]
     ('lie', 'strang', 'suzuki-4')
     """
     return tuple(name for name, entry in _ENTRIES.items() if special or not entry.requires)
@@ -110,7 +109,7 @@ def formula_entry(name: str) -> Entry:
     Examples
     --------
     >>> formula_entry("blanes-moan-4").a[0]
-    Fraction(396018482155978, 5000000000000000)
+    Fraction(792036964311957, 10000000000000000)
     """
     if isinstance(name, str):
         if name in _ENTRIES:
