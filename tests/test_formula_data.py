@@ -45,7 +45,7 @@ PUBLISHED_IDS = {
 }
 """Sources as in each formula's `source` and in ``published/formulas.toml``, all from memory."""
 EVERY = tt.formulas(special=True)
-HEAVY = ("kahan-li-10-s31", "kahan-li-10-s33", "sofroniou-spaletta-10")
+HEAVY = ("suzuki-8", "kahan-li-10-s31", "kahan-li-10-s33", "sofroniou-spaletta-10")
 MARKED = [pytest.param(name, marks=pytest.mark.heavy) if name in HEAVY else name for name in EVERY]
 
 
