@@ -226,7 +226,7 @@ def test_init_writes_the_template_once(tmp_path: Path, capsys) -> None:
 def test_formulas_lists_names_orders_and_sources(capsys) -> None:
     assert cli.run(["formulas"]) == 0
     out = capsys.readouterr().out
-    assert "strang" in out and "suzuki-4" in out and "source" in out
+    assert "strang" in out and "suzuki-4" in out and "Sources" in out
     assert cli.run(["formulas", "--json"]) == 0
     document = json.loads(capsys.readouterr().out)
     assert {"name": "strang", "order": 2, "stages": 2} in [

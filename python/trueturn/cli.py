@@ -19,6 +19,7 @@ import click
 
 if TYPE_CHECKING:
     from trueturn.audit.job import Job, Progress
+    from trueturn.partition import Partition
     from trueturn.reference import Reference
 
 __all__ = ["commands", "main", "run"]
@@ -117,30 +118,29 @@ def init(path: Path, force: bool) -> int:
 
 
 @commands.command()
+@click.argument("job", required=False, type=JOB)
 @AS_JSON
-def formulas(as_json: bool) -> int:
-    """List the formulas: name, order, stages, source."""
+def formulas(job: Path | None, as_json: bool) -> int:
+    """List the formulas: order, stages, symmetry, leading error at equal cost, source.
+
+    With JOB the list shows how many rotations a step takes for its Hamiltonian, for each rule of its candidates.
+    """
     from trueturn.formulas import formula
     from trueturn.formulas import formulas as all_names
+    from trueturn.formulas.listing import document, page
 
-    known = [formula(name) for name in all_names()]
+    partitions: dict[str, Partition] = {}
+    if job is not None:
+        from trueturn.audit.job import read_job
+
+        task = read_job(job)
+        for candidate in task.candidates:
+            partitions.setdefault(str(candidate.rule), candidate.partition(task.operator))
+    known = [formula(name) for name in all_names(special=True)]
     if as_json:
-        records = [
-            {"name": one.name, "order": one.order, "stages": len(one.stages), "source": one.source} for one in known
-        ]
-        say_json({"kind": "trueturn formulas", "formulas": records})
-        return 0
-    from rich.table import Table
-    from rich.text import Text
-
-    table = Table(box=None, padding=(0, 2, 0, 0), header_style="dim")
-    table.add_column("name", no_wrap=True)
-    for heading in ("order", "stages"):
-        table.add_column(heading, justify="right")
-    table.add_column("source")
-    for one in known:
-        table.add_row(Text(one.name), str(one.order), str(len(one.stages)), Text(one.source))
-    say_rich(lambda width: table)
+        say_json(document(known, partitions))
+    else:
+        say_rich(lambda width: page(known, partitions))
     return 0
 
 

@@ -19,8 +19,9 @@ from typing import TYPE_CHECKING
 from trueturn.audit.candidate import Candidate
 from trueturn.audit.job_system import Start, read_start, read_system
 from trueturn.audit.job_table import Table, nearest
-from trueturn.errors import JobError
+from trueturn.errors import FormulaError, JobError
 from trueturn.formulas import Formula, formula, formulas
+from trueturn.formulas.structure import require_structure
 from trueturn.operator import Operator
 from trueturn.partition_rules import RULES
 
@@ -314,16 +315,17 @@ def read_candidates(file: Table, operator: Operator, required: bool) -> tuple[Ca
         rule = section.choice("rule", tuple(RULES), default="commuting")
         candidate = Candidate(known_formula(section, name), rule=rule, steps=read_steps(section))
         with section.blame("rule"):
-            candidate.partition(operator)
+            require_structure(candidate.formula, candidate.partition(operator))
         candidates.append(candidate)
     return tuple(candidates)
 
 
 def known_formula(section: Table, name: str) -> Formula:
     """Find a formula by name; an unknown one is refused with the nearest that is known."""
-    if name not in formulas():
-        raise section.error("formula", "unknown", nearest(name, formulas()), name)
-    return formula(name)
+    try:
+        return formula(name)
+    except FormulaError as error:
+        raise section.error("formula", "unknown", nearest(name, formulas(special=True)), name) from error
 
 
 def read_steps(section: Table) -> int | str:

@@ -2,26 +2,25 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 from fractions import Fraction
-from numbers import Real
+from functools import cached_property
 from operator import index
-from typing import ClassVar, Literal, TypeAlias
+from os import PathLike
+from typing import ClassVar
 
 from trueturn.errors import ArgumentError, FormulaError
+from trueturn.formulas.arguments import checked_error, checked_steps, checked_time
+from trueturn.formulas.leading import error_coefficient, exponentials_per_step
 from trueturn.formulas.merging import ANGLE_ROUNDINGS, rotations_of
 from trueturn.formulas.order import MOST_ORDER, measured_order
-from trueturn.formulas.weights import Number, exact_weights
+from trueturn.formulas.structure import require_known, require_structure
+from trueturn.formulas.weights import DIRECTIONS, Direction, ExactStage, Number, composed, exact_weights, split
 from trueturn.partition import Partition
 from trueturn.rotations import Rotations
 
 __all__ = ["Direction", "Formula", "Stage"]
-
-Direction: TypeAlias = Literal["forward", "reverse"]
-
-MOST_STEPS = 2**53
 
 
 @dataclass(frozen=True)
@@ -55,12 +54,17 @@ class Formula:
         In the order in which they act; at least one.
     source : str
         Where the weights come from.
+    requires : str
+        The structure that the weights lean on, in words; empty (the default) where any partition will do.
+        Without that structure `rotations` refuses.
+    special_order : int, optional
+        The order where that structure holds, as the source claims it; `order` is that on general operators.
 
     Raises
     ------
     FormulaError
-        Empty name, no stages, a weight that is not finite, weights that do not sum to 1, or a claimed order
-        that is out of range or not reached.
+        Empty name, no stages, a weight that is not finite, weights that do not sum to 1, a claimed order
+        that is out of range or not reached, or a structure that cannot be checked.
 
     Notes
     -----
@@ -83,6 +87,8 @@ class Formula:
     order: int
     stages: tuple[Stage, ...]
     source: str
+    requires: str = ""
+    special_order: int | None = None
 
     def __post_init__(self) -> None:
         if not isinstance(self.name, str) or not self.name.strip():
@@ -91,6 +97,7 @@ class Formula:
                 name=str(self.name),
                 choices=(),
             )
+        require_known(self.requires, self.name)
         object.__setattr__(self, "stages", tuple(self.stages))
         self._check_weights()
         object.__setattr__(self, "order", self._checked_order(self.order))
@@ -133,9 +140,7 @@ class Formula:
         >>> jump.order
         4
         """
-        halves = [weight / 2 for weight in exact_weights("weights", weights, name)]
-        pairs = [(half, direction) for half in halves for direction in _DIRECTIONS]
-        return cls._measured(name, order, pairs, source)
+        return cls._measured(name, order, composed(weights, name), source)
 
     @classmethod
     def splitting(
@@ -187,28 +192,10 @@ class Formula:
         >>> tt.Formula.splitting([0.5, 0.5], [1.0], name="leapfrog").stages == tt.formula("strang").stages
         True
         """
-        a_exact, b_exact = exact_weights("a", a, name), exact_weights("b", b, name)
-        if len(a_exact) - len(b_exact) not in (0, 1):
-            raise FormulaError(
-                f"a, b: do not fit in length ({len(a_exact)}, {len(b_exact)}); give as many, or one a more",
-                name=name,
-                choices=(),
-            )
-        exponents = [value for pair in zip(a_exact, b_exact, strict=False) for value in pair]
-        exponents += a_exact[len(b_exact) :]
-        weights: list[Fraction] = []
-        for exponent in exponents[:-1]:
-            weights.append(exponent - (weights[-1] if weights else 0))
-        half = len(weights) // 2
-        if exponents == exponents[::-1]:  # keep the symmetry exact where sums miss 1 in the last digit
-            weights[len(weights) - half :] = weights[:half][::-1]
-        pairs = [(weight, _DIRECTIONS[number % 2]) for number, weight in enumerate(weights) if weight]
-        return cls._measured(name, order, pairs, source)
+        return cls._measured(name, order, split(a, b, name), source)
 
     @classmethod
-    def _measured(
-        cls, name: str, order: int | None, pairs: Sequence[tuple[Fraction, Direction]], source: str
-    ) -> Formula:
+    def _measured(cls, name: str, order: int | None, pairs: Sequence[ExactStage], source: str) -> Formula:
         stages = tuple(Stage(float(weight), direction) for weight, direction in pairs)
         if order is None:
             first_order = cls(name, 1, stages, source)
@@ -225,6 +212,71 @@ class Formula:
             stage.weight == mirror.weight and stage.direction != mirror.direction
             for stage, mirror in zip(self.stages, reversed(self.stages), strict=True)
         )
+
+    @cached_property
+    def error_coefficient(self) -> float:
+        """The C of ‖S(τ) − exp(−iτH)‖ → C τ^(order + 1), on three fixed general operators of norm 1.
+
+        Defined in `trueturn.formulas.leading`. Computed when first asked for, in up to a second for formulas
+        of many stages.
+        """
+        return error_coefficient(self.exact_stages(), self.order)
+
+    @cached_property
+    def leading_error(self) -> float:
+        """The error at equal cost: L with error ≈ (L / N)^order in unit time with N exponentials of parts.
+
+        L = (exponentials per step) · C^(1/order), with C the `error_coefficient` and three parts of norm 1; see
+        `trueturn.formulas.leading`. Of two formulas of one order the smaller L is the better one; of
+        different orders compare `exponentials_for`.
+
+        Examples
+        --------
+        >>> import trueturn as tt
+        >>> tt.formula("blanes-moan-4").leading_error < tt.formula("suzuki-4").leading_error
+        True
+        """
+        return float(exponentials_per_step(self.exact_stages()) * self.error_coefficient ** (1 / self.order))
+
+    def exponentials_for(self, error: float) -> float:
+        """Estimate how many exponentials of parts reach `error` in unit time: `leading_error` · error^(-1/order).
+
+        Parameters
+        ----------
+        error : float
+            Above zero.
+
+        Returns
+        -------
+        float
+            For three general parts of norm 1, and by the leading term alone: below a few steps of the formula
+            it is no more than a trend.
+
+        Raises
+        ------
+        ArgumentError
+            `error` is not a finite number above zero.
+
+        Examples
+        --------
+        >>> import trueturn as tt
+        >>> tt.formula("strang").exponentials_for(1e-6) > tt.formula("blanes-moan-6").exponentials_for(1e-6)
+        True
+        """
+        return float(self.leading_error * checked_error(error) ** (-1 / self.order))
+
+    @classmethod
+    def read(cls, path: str | PathLike[str]) -> Formula:
+        """Read a formula from a TOML file that holds one; see `trueturn.formulas.read_formulas`.
+
+        Raises
+        ------
+        JobError
+            As for `read_formulas`, or the file holds more than one formula.
+        """
+        from trueturn.formulas.reading import read_formula
+
+        return read_formula(path)
 
     def exact_stages(self) -> list[tuple[Fraction, bool]]:
         """List the weights as the exact fractions that they are, and whether each stage is a reverse one."""
@@ -253,6 +305,8 @@ class Formula:
         ArgumentError
             `partition` is no Partition, `time` not finite or so long that an angle overflows, or `steps` not
             an integer from 1 to 2**53.
+        FormulaError
+            `partition` lacks the structure that the formula `requires`.
 
         Notes
         -----
@@ -273,7 +327,8 @@ class Formula:
                 argument="partition",
                 value=partition,
             )
-        return rotations_of(self.exact_stages(), partition, _time(time), _steps(steps))
+        require_structure(self, partition)
+        return rotations_of(self.exact_stages(), partition, checked_time(time), checked_steps(steps))
 
     def __repr__(self) -> str:
         kind = "symmetric" if self.symmetric else "not symmetric"
@@ -284,7 +339,7 @@ class Formula:
         if not self.stages:
             raise FormulaError("stages: is empty (()); give at least one stage", name=self.name, choices=())
         for number, stage in enumerate(self.stages):
-            if not isinstance(stage, Stage) or stage.direction not in _DIRECTIONS:
+            if not isinstance(stage, Stage) or stage.direction not in DIRECTIONS:
                 raise FormulaError(
                     f"stages: entry {number} is no stage ({stage!r}); "
                     "write Stage(weight, 'forward') or Stage(weight, 'reverse')",
@@ -317,37 +372,3 @@ class Formula:
                 choices=(),
             )
         return order
-
-
-_DIRECTIONS: tuple[Direction, Direction] = ("forward", "reverse")
-
-
-def _time(time: object) -> float:
-    if isinstance(time, Real) and not isinstance(time, bool):
-        try:
-            number = float(time)
-        except OverflowError:
-            number = math.inf
-        if math.isfinite(number):
-            return number
-    raise ArgumentError(
-        f"time: is not a finite number ({time!r}); give a real number, negative to run backwards",
-        argument="time",
-        value=time,
-    )
-
-
-def _steps(steps: object) -> int:
-    try:
-        if isinstance(steps, bool):
-            raise TypeError
-        number = index(steps)  # type: ignore[arg-type]
-    except TypeError:
-        number = 0
-    if not 1 <= number <= MOST_STEPS:
-        raise ArgumentError(
-            f"steps: is not an integer from 1 to 2**53 ({steps!r}); give a number of equal steps, such as 10",
-            argument="steps",
-            value=steps,
-        )
-    return number

@@ -32,7 +32,7 @@ from dataclasses import dataclass
 from fractions import Fraction
 from functools import cache, lru_cache
 
-__all__ = ["MOST_ORDER", "WEIGHT_SLACK", "Shortfall", "measured_order"]
+__all__ = ["MOST_ORDER", "WEIGHT_SLACK", "Shortfall", "leading_words", "measured_order"]
 
 MOST_ORDER = 12
 """Orders above this are not measured; 2**12 words are followed for a formula without structure."""
@@ -81,22 +81,45 @@ def measured_order(stages: Sequence[tuple[Fraction, bool]], at_most: int = MOST_
     About stages × 6 × 2**degree integer products; with Strang pairs the base falls from 2 to 1.6
     and the number of factors is halved. Degrees are tried in steps, so a low order costs little.
     """
+    factors, stride = _factors(stages)
+    for degree in [*range(3, at_most, 4), at_most]:
+        shortfall = _first_failure(factors, degree, stride)
+        if shortfall is not None:
+            return shortfall.degree - 1, shortfall
+    return at_most, None
+
+
+def leading_words(stages: Sequence[tuple[Fraction, bool]], degree: int) -> tuple[int, list[tuple[_Word, float]]]:
+    """Return by how much each word of one degree differs from exp(Y_1).
+
+    Returns
+    -------
+    stride : int
+        2 where the stages are Strang steps, whose logarithm defines the letters Y_1, Y_3, …; otherwise 1, with
+        letters from the logarithm of a forward stage.
+    words : list of (tuple of int, float)
+        The word, first in time first, and its coefficient less the ideal one.
+    """
+    factors, stride = _factors(stages)
+    found = zip(_words(degree, stride), _product(factors, degree, stride), strict=True)
+    return stride, [(word, float(Fraction(value - _ideal(word), _ONE))) for word, value in found if sum(word) == degree]
+
+
+def _factors(stages: Sequence[tuple[Fraction, bool]]) -> tuple[tuple[_Signed, ...], int]:
+    """Join Strang pairs where all stages are such pairs; the stride of the letters is then 2."""
     weights = [weight for weight, _ in stages]
     paired = (
         len(stages) % 2 == 0
         and weights[::2] == weights[1::2]
         and all(reverse == bool(number % 2) for number, (_, reverse) in enumerate(stages))
     )
-    factors: list[_Signed] = (
-        [(2 * weight, 1) for weight in weights[::2]]
-        if paired
-        else [(weight, -1 if reverse else 1) for weight, reverse in stages]
-    )
-    for degree in [*range(3, at_most, 4), at_most]:
-        shortfall = _first_failure(tuple(factors), degree, 2 if paired else 1)
-        if shortfall is not None:
-            return shortfall.degree - 1, shortfall
-    return at_most, None
+    if paired:
+        return tuple((2 * weight, 1) for weight in weights[::2]), 2
+    return tuple((weight, -1 if reverse else 1) for weight, reverse in stages), 1
+
+
+def _ideal(word: _Word) -> int:
+    return _ONE // math.factorial(len(word)) if all(letter == 1 for letter in word) else 0
 
 
 @lru_cache(maxsize=64)
@@ -108,8 +131,7 @@ def _first_failure(factors: tuple[_Signed, ...], degree: int, stride: int) -> Sh
     high = _product([(abs(weight) + slack, 1) for weight, _ in factors], degree, stride)
     worst: dict[int, int] = {}
     for word, found, below, above in zip(words, value, low, high, strict=True):
-        ideal = _ONE // math.factorial(len(word)) if all(letter == 1 for letter in word) else 0
-        missing = abs(found - ideal)
+        missing = abs(found - _ideal(word))
         if missing > above - below + (1 << (_BITS // 2)):  # the last term: roundings of the integer products
             worst[sum(word)] = max(worst.get(sum(word), 0), missing)
     if not worst:
@@ -119,14 +141,27 @@ def _first_failure(factors: tuple[_Signed, ...], degree: int, stride: int) -> Sh
 
 
 def _product(factors: Sequence[_Signed], degree: int, stride: int) -> list[int]:
-    """Coefficients, times 2**200, of the product of the stages' exponentials, word by word."""
+    """Coefficients, times 2**200, of the product of the stages' exponentials, word by word.
+
+    A fractal formula repeats a few blocks over and over, so blocks are multiplied out once.
+    """
     splits = _splits(degree, stride)
-    known = {factor: _exponential(*factor, degree, stride) for factor in set(factors)}
-    total = [_ONE, *[0] * (len(splits) - 1)]
-    for factor in factors:
-        stage = known[factor]
-        total = [sum([total[left] * stage[right] for left, right in pairs]) >> _BITS for pairs in splits]
-    return total
+    known: dict[tuple[_Signed, ...], list[int]] = {
+        (factor,): _exponential(*factor, degree, stride) for factor in set(factors)
+    }
+
+    def product(block: tuple[_Signed, ...]) -> list[int]:
+        if block not in known:
+            pieces = next((count for count in (5, 3, 2) if len(block) % count == 0), len(block))
+            size = len(block) // pieces
+            total = product(block[:size])
+            for start in range(size, len(block), size):
+                factor = product(block[start : start + size])
+                total = [sum([total[left] * factor[right] for left, right in pairs]) >> _BITS for pairs in splits]
+            known[block] = total
+        return known[block]
+
+    return product(tuple(factors))
 
 
 def _exponential(weight: Fraction, even_sign: int, degree: int, stride: int) -> list[int]:

@@ -6,13 +6,17 @@ from collections.abc import Sequence
 from decimal import Decimal
 from fractions import Fraction
 from numbers import Rational, Real
-from typing import TypeAlias
+from typing import Literal, TypeAlias
 
 from trueturn.errors import FormulaError
 
-__all__ = ["Number", "exact_weights"]
+__all__ = ["DIRECTIONS", "Direction", "ExactStage", "Number", "composed", "exact_weights", "split"]
 
 Number: TypeAlias = "float | Fraction | Decimal | str"
+Direction: TypeAlias = Literal["forward", "reverse"]
+ExactStage: TypeAlias = tuple[Fraction, Direction]
+
+DIRECTIONS: tuple[Direction, Direction] = ("forward", "reverse")
 
 SUM_SLACK = 8
 """Weights may miss the sum 1 by 8 u Σ|w|: rounding each explains 1, digits in print the rest."""
@@ -50,3 +54,29 @@ def check_sum(argument: str, weights: Sequence[Fraction], name: str) -> None:
             name=name,
             choices=(),
         )
+
+
+def composed(weights: Sequence[Number], name: str) -> list[ExactStage]:
+    """List the stages of a composition of Strang steps, exactly."""
+    halves = [weight / 2 for weight in exact_weights("weights", weights, name)]
+    return [(half, direction) for half in halves for direction in DIRECTIONS]
+
+
+def split(a: Sequence[Number], b: Sequence[Number], name: str) -> list[ExactStage]:
+    """List the stages of a splitting method for two operators, exactly; stages of weight zero are left out."""
+    a_exact, b_exact = exact_weights("a", a, name), exact_weights("b", b, name)
+    if len(a_exact) - len(b_exact) not in (0, 1):
+        raise FormulaError(
+            f"a, b: do not fit in length ({len(a_exact)}, {len(b_exact)}); give as many, or one a more",
+            name=name,
+            choices=(),
+        )
+    exponents = [value for pair in zip(a_exact, b_exact, strict=False) for value in pair]
+    exponents += a_exact[len(b_exact) :]
+    weights: list[Fraction] = []
+    for exponent in exponents[:-1]:
+        weights.append(exponent - (weights[-1] if weights else 0))
+    half = len(weights) // 2
+    if exponents == exponents[::-1]:  # keep the symmetry exact where sums miss 1 in the last digit
+        weights[len(weights) - half :] = weights[:half][::-1]
+    return [(weight, DIRECTIONS[number % 2]) for number, weight in enumerate(weights) if weight]
