@@ -1,14 +1,16 @@
 """Prove product-formula circuits against a certified reference."""
 
-from trueturn import errors, lattice, model
+from trueturn import driven, errors, lattice, model
 from trueturn._build import build_info
 from trueturn._threads import threads
 from trueturn.accuracy import Bound, bound
+from trueturn.adaptive import AdaptiveRun, adaptive
 from trueturn.audit import Audit, Candidate, audit
 from trueturn.comparison import Comparison, compare
+from trueturn.driven import Driven, DrivenReference, driven_reference
 from trueturn.error_saving import Improved
 from trueturn.extrapolation import Extrapolation, extrapolate, multiproduct_weights, well_conditioned_steps
-from trueturn.formulas import Formula, formula, formulas
+from trueturn.formulas import Formula, formula, formulas, read_formulas
 from trueturn.ladders import saved_gates
 from trueturn.operator import Operator
 from trueturn.partition import Partition
@@ -18,11 +20,14 @@ from trueturn.state import State
 from trueturn.symmetry import Symmetries, Symmetry, symmetries
 
 __all__ = [
+    "AdaptiveRun",
     "Audit",
     "Bound",
     "Candidate",
     "Certificate",
     "Comparison",
+    "Driven",
+    "DrivenReference",
     "Extrapolation",
     "Formula",
     "Improved",
@@ -33,10 +38,13 @@ __all__ = [
     "State",
     "Symmetries",
     "Symmetry",
+    "adaptive",
     "audit",
     "bound",
     "build_info",
     "compare",
+    "driven",
+    "driven_reference",
     "errors",
     "extrapolate",
     "formula",
@@ -44,6 +52,7 @@ __all__ = [
     "lattice",
     "model",
     "multiproduct_weights",
+    "read_formulas",
     "reference",
     "saved_gates",
     "symmetries",
