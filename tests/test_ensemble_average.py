@@ -80,7 +80,7 @@ def test_values_are_those_of_the_samples_one_by_one():
 
 
 def test_errors_of_the_averaged_channel_and_bounds_stand_beside_each_other():
-    count = 4000
+    count = 1500
     found = DRIFT.average(START, Z, count, reference=spin_reference())
     estimate, limit = found.observables["z"], DRIFT.channel_bound()
     channel = channels.drift(SPIN, 1.0, 20)
@@ -106,6 +106,8 @@ def test_state_errors_of_single_samples_are_told_apart_from_the_channel():
         ours = circuits.matrix(DRIFT.sample(index)) @ START.amplitudes
         error = found.single_sample_state_errors[index]
         assert error == pytest.approx(np.linalg.norm(ours - target), abs=1e-9)  # the reference's 1e-10 and rounding
+    assert found.single_sample_state_error.mean == pytest.approx(found.single_sample_state_errors.mean(), rel=1e-14)
+    assert found.single_sample_state_error.bound is None
     # A sample may be further off than the bound on the average, which is why the two are told apart.
     assert found.single_sample_state_errors.max() > DRIFT.channel_bound().diamond
     text = repr(found)

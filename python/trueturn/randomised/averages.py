@@ -76,8 +76,11 @@ class Average:
     infidelity : Estimate or None
         1 - <ψ|ρ|ψ> of the averaged output ρ, given a reference state ψ. It is at most the trace distance, hence at
         most half the diamond norm.
+    single_sample_state_error : Estimate or None
+        ‖ψ_k - ψ‖ of single samples, phase kept: mean, and so on, without a bound, since the channel bound does not
+        apply to it.
     single_sample_state_errors : ndarray, shape (len(indices),), or None
-        ‖ψ_k - ψ‖ of each sample's own state, phase kept. The channel bound does not apply to these.
+        The same, sample by sample.
     channel_bound : ChannelBound or None
         Of the averaged channel.
     """
@@ -87,6 +90,7 @@ class Average:
     values: Mapping[str, npt.NDArray[np.float64]]
     observables: Mapping[str, Estimate]
     infidelity: Estimate | None
+    single_sample_state_error: Estimate | None
     single_sample_state_errors: npt.NDArray[np.float64] | None
     channel_bound: ChannelBound | None
     _rows: Mapping[int, Row] = field(repr=False, compare=False)
@@ -115,10 +119,13 @@ class Average:
                 )
         if self.channel_bound is not None:
             lines.append(f"  {self.channel_bound}")
-        if self.single_sample_state_errors is not None:
+        if self.single_sample_state_error is not None and self.single_sample_state_errors is not None:
             least, most = self.single_sample_state_errors.min(), self.single_sample_state_errors.max()
             caution = "" if self.channel_bound is None else "; the channel bound does not apply to single samples"
-            lines.append(f"  state error of single samples: {least:.3g} … {most:.3g}{caution}")
+            lines.append(
+                f"  state error of single samples: mean {self.single_sample_state_error.mean:.3g}, "
+                f"from {least:.3g} to {most:.3g}{caution}"
+            )
         return "\n".join(lines) + ">"
 
 
@@ -227,28 +234,37 @@ def _result(
     indices = tuple(sorted(rows))
     table = np.array([rows[index] for index in indices], dtype=np.float64)
     limit = ensemble.channel_bound()
+    length = max(1.0, state.norm())
     own = float(table[:, 0].max())
     unit = 2.0**-24 if state.dtype == np.dtype(np.complex64) else UNIT
     figures = {}
     for place, (name, operator) in enumerate(observables.items()):
         norm = norm_bound(operator)
-        rounding = expectation_shift(norm, own) + expectation_rounding(operator, state.qubits) * (unit / UNIT)
+        rounding = expectation_shift(norm, own, length) + expectation_rounding(operator, state.qubits) * (unit / UNIT)
         exact, slack = truth.expectation(name)
         figures[name] = _estimate(
-            table[:, FIXED_COLUMNS + place], exact, slack + rounding, None if limit is None else norm * limit.diamond
+            table[:, FIXED_COLUMNS + place],
+            exact,
+            slack + rounding,
+            None if limit is None else norm * length**2 * limit.diamond,
         )
-    infidelity = errors = None
+    infidelity = single = errors = None
     if truth.state is not None:
         errors = table[:, 1].copy()
-        # A projector has norm 1; the norm of a difference rounds like the state error of an audit.
-        slack = expectation_shift(1.0, own + truth.state_bound + UNIT * (136.0 + state.qubits))
-        infidelity = _estimate(table[:, 2], 0.0, slack, None if limit is None else limit.half_diamond)
+        # The norm of a difference is summed in blocks: 128 additions in a row, 3 levels, then a tree.
+        slack = own + truth.state_bound + UNIT * float(errors.max()) * (136.0 + state.qubits)
+        single = _estimate(errors, 0.0, slack, None)
+        # The infidelity is the expectation of a projector, of norm 1.
+        infidelity = _estimate(
+            table[:, 2], 0.0, expectation_shift(1.0, slack, length), None if limit is None else limit.half_diamond
+        )
     return Average(
         ensemble=ensemble,
         indices=indices,
         values={name: table[:, FIXED_COLUMNS + place].copy() for place, name in enumerate(observables)},
         observables=figures,
         infidelity=infidelity,
+        single_sample_state_error=single,
         single_sample_state_errors=errors,
         channel_bound=limit,
         _rows=dict(rows),

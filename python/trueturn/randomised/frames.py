@@ -178,8 +178,9 @@ def _segments(rotations: Rotations, every: int | None) -> Iterator[_Lists]:
         return
     if not _plain(rotations):
         for body, repeat in rotations.blocks:
+            pieces = list(_segments(body, every))
             for _ in range(repeat):
-                yield from _segments(body, every)
+                yield from pieces
         return
     x, z, angles = _lists(rotations)
     length = every or len(angles)

@@ -57,9 +57,10 @@ class Task:
         """Return one row for each sample."""
         work = State.from_array(self.start.copy())
         exact = None if self.exact is None else State.from_array(self.exact)
-        return [self._row(index, work, exact) for index in indices]
+        length = work.norm(threads=self.threads)
+        return [self._row(index, work, exact, length) for index in indices]
 
-    def _row(self, index: int, work: State, exact: State | None) -> Row:
+    def _row(self, index: int, work: State, exact: State | None, length: float) -> Row:
         circuit = self.ensemble.sample(index)
         np.copyto(work.amplitudes, self.start)
         work.apply(circuit, threads=self.threads)
@@ -68,7 +69,7 @@ class Task:
         if exact is not None:
             ours = work if work.dtype == exact.dtype else State.from_array(work.amplitudes.astype(exact.dtype))
             error = ours.distance(exact, threads=self.threads)
-            apart = ours.distance(exact, "free", threads=self.threads)
+            apart = ours.distance(exact, "free", threads=self.threads) / length
             # For unit vectors ‖ψ - e^{iα}φ‖² = 2 - 2|<ψ|φ>|, so 1 - |<ψ|φ>|² = d² (1 - d²/4), without cancellation.
             infidelity = apart**2 * (1.0 - apart**2 / 4.0)
         values = [work.expectation(operator, threads=self.threads) for operator in self.observables]
