@@ -106,6 +106,9 @@ def test_state_errors_of_single_samples_are_told_apart_from_the_channel():
         ours = circuits.matrix(DRIFT.sample(index)) @ START.amplitudes
         error = found.single_sample_state_errors[index]
         assert error == pytest.approx(np.linalg.norm(ours - target), abs=1e-9)  # the reference's 1e-10 and rounding
+    overlaps = [abs(np.vdot(target, circuits.matrix(DRIFT.sample(k)) @ START.amplitudes)) ** 2 for k in found.indices]
+    # Infidelities are some 0.02; taking d² without its correction would be off by 1e-4.
+    assert found.infidelity.mean == pytest.approx(1 - np.mean(overlaps), abs=1e-9)
     assert found.single_sample_state_error.mean == pytest.approx(found.single_sample_state_errors.mean(), rel=1e-14)
     assert found.single_sample_state_error.bound is None
     # A sample may be further off than the bound on the average, which is why the two are told apart.
@@ -120,7 +123,10 @@ def test_framed_circuits_are_compared_at_the_furthest_time_and_have_no_bound():
     found = randomised.framed(circuit, seed=1).average(START, Z, 10, reference=spin_reference())
     assert found.channel_bound is None and found.observables["z"].bound is None
     # All samples are one unitary: their spread is rounding, some 500 rotations of 5 u each.
-    assert found.observables["z"].spread <= 1e-12
+    z = found.observables["z"]
+    assert z.spread <= 1e-12
+    # Without sampling error the interval still holds the reference's bound and the rounding of the circuits.
+    assert z.error[1] >= abs(z.mean - z.exact) + spin_reference().expectation_bounds["z"][0] + 1e-14
     assert "does not apply" not in repr(found) and "state error of single samples" in repr(found)
 
 
