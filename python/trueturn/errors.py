@@ -12,6 +12,7 @@ from typing import Any
 __all__ = [
     "ArgumentError",
     "AuditError",
+    "EnsembleError",
     "FormulaError",
     "InternalError",
     "JobError",
@@ -133,6 +134,16 @@ class AuditError(TrueturnError, ValueError):
 
     reason: str
     limit: Any
+
+
+class EnsembleError(TrueturnError, RuntimeError):
+    """Samples of a randomised formula that were not finished: one failed, or the executor died.
+
+    `partial` is the average over the finished ones (None without any), `missing` numbers the others.
+    """
+
+    partial: Any
+    missing: tuple[int, ...]
 
 
 class JobError(TrueturnError, ValueError):

@@ -1,0 +1,296 @@
+"""What an ensemble does on average to one state, beside what is proven about its channel."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable, Mapping, Sequence
+from concurrent.futures import Executor
+from dataclasses import dataclass, field
+
+import numpy as np
+import numpy.typing as npt
+
+from trueturn import _threads
+from trueturn.errors import ArgumentError, EnsembleError, StateShapeError
+from trueturn.operator import Operator
+from trueturn.randomised.channel import ChannelBound
+from trueturn.randomised.checks import checked_operator, whole
+from trueturn.randomised.ensemble import Ensemble
+from trueturn.randomised.truth import Truth, truth_of
+from trueturn.randomised.work import FIXED_COLUMNS, Row, Task, run
+from trueturn.reference import Reference
+from trueturn.reference.certificate import UNIT, expectation_rounding, expectation_shift, norm_bound
+from trueturn.state import State, require_same_qubits
+
+__all__ = ["Average", "Estimate", "Progress", "averaged"]
+
+Progress = Callable[[int, int], object]
+
+STANDARD_ERRORS = 3.0
+"""Half-width of the sampling part of an error interval, in standard errors."""
+
+
+@dataclass(frozen=True)
+class Estimate:
+    """One figure of the averaged channel.
+
+    Attributes
+    ----------
+    mean : float
+        Over the samples.
+    standard_error : float
+        Of the mean: spread / √count; infinite for one sample.
+    spread : float
+        Standard deviation of single samples, with count - 1 in the denominator; infinite for one sample.
+    exact : float or None
+        The reference's value.
+    error : (float, float) or None
+        Interval for how far the averaged channel is from `exact`: measured ∓ (three standard errors + reference bound +
+        rounding), clipped at 0. The sampling part is a confidence statement, not a proof.
+    bound : float or None
+        Proven bound on the same error of the averaged channel: ‖O‖ · ‖E - U‖_⋄ for an observable (identity
+        removed, no factor 1/2), (1/2)‖E - U‖_⋄ for an infidelity. Not a bound on any sample.
+    """
+
+    mean: float
+    standard_error: float
+    spread: float
+    exact: float | None
+    error: tuple[float, float] | None
+    bound: float | None
+
+
+@dataclass(frozen=True, repr=False)
+class Average:
+    """Samples of an ensemble on one state, and what they say about the averaged channel.
+
+    Attributes
+    ----------
+    ensemble : Ensemble
+    indices : tuple of int
+        Samples that went in, ascending.
+    values : mapping of str to ndarray, shape (len(indices),), float64
+        Expectation of each observable in each sample.
+    observables : mapping of str to Estimate
+        Of the averaged channel.
+    infidelity : Estimate or None
+        1 - <ψ|ρ|ψ> of the averaged output ρ, given a reference state ψ. It is at most the trace distance, hence at
+        most half the diamond norm.
+    single_sample_state_error : Estimate or None
+        ‖ψ_k - ψ‖ of single samples, phase kept: mean, and so on, without a bound, since the channel bound does not
+        apply to it.
+    single_sample_state_errors : ndarray, shape (len(indices),), or None
+        The same, sample by sample.
+    channel_bound : ChannelBound or None
+        Of the averaged channel.
+    """
+
+    ensemble: Ensemble
+    indices: tuple[int, ...]
+    values: Mapping[str, npt.NDArray[np.float64]]
+    observables: Mapping[str, Estimate]
+    infidelity: Estimate | None
+    single_sample_state_error: Estimate | None
+    single_sample_state_errors: npt.NDArray[np.float64] | None
+    channel_bound: ChannelBound | None
+    _rows: Mapping[int, Row] = field(repr=False, compare=False)
+
+    @property
+    def count(self) -> int:
+        """Number of samples."""
+        return len(self.indices)
+
+    def __repr__(self) -> str:
+        lines = [f"<Average of {self.count} samples of {type(self.ensemble).__name__}, seed {self.ensemble.seed}"]
+        figures = dict(self.observables)
+        if self.infidelity is not None:
+            figures["infidelity"] = self.infidelity
+        for name, found in figures.items():
+            lines.append(
+                f"  {name}: mean {found.mean:.6g} ± {found.standard_error:.2g} (standard error); "
+                f"single samples spread by {found.spread:.2g}"
+            )
+            if found.error is not None:
+                low, high = found.error
+                limit = "" if found.bound is None else f"; proven ≤ {found.bound:.3g}"
+                lines.append(
+                    f"    averaged channel off by {low:.2g} … {high:.2g} "
+                    f"({STANDARD_ERRORS:g} standard errors and all bounds on both sides){limit}"
+                )
+        if self.channel_bound is not None:
+            lines.append(f"  {self.channel_bound}")
+        if self.single_sample_state_error is not None and self.single_sample_state_errors is not None:
+            least, most = self.single_sample_state_errors.min(), self.single_sample_state_errors.max()
+            caution = "" if self.channel_bound is None else "; the channel bound does not apply to single samples"
+            lines.append(
+                f"  state error of single samples: mean {self.single_sample_state_error.mean:.3g}, "
+                f"from {least:.3g} to {most:.3g}{caution}"
+            )
+        return "\n".join(lines) + ">"
+
+
+def averaged(
+    ensemble: Ensemble,
+    state: State,
+    observables: Mapping[str, Operator],
+    count: int,
+    reference: Reference | None,
+    executor: Executor | None,
+    progress: Progress | None,
+    threads: int | None,
+    done: Average | None,
+) -> Average:
+    """Measure the averaged channel; see `Ensemble.average`."""
+    total = whole("count", count, 1, "give how many samples to draw")
+    watched = {name: checked_operator(f"observables[{name!r}]", operator) for name, operator in observables.items()}
+    _check(ensemble, state, watched, executor)
+    truth = truth_of(ensemble, reference)
+    rows = _kept(ensemble, watched, truth, done)
+    if threads is None and executor is not None:
+        threads = 1
+    if threads is not None:
+        threads = _threads.resolve(threads)
+    exact = truth.state
+    task = Task(
+        ensemble,
+        state.amplitudes,
+        tuple(watched.values()),
+        None if exact is None else exact.amplitudes,
+        threads,
+    )
+    rows = {index: row for index, row in rows.items() if index < total}
+    already = len(rows)
+
+    def report(finished: int) -> None:
+        if progress is not None:
+            progress(already + finished, total)
+
+    fresh, failure = run(task, [index for index in range(total) if index not in rows], executor, report)
+    rows.update(fresh)
+    if failure is not None:
+        missing = tuple(index for index in range(total) if index not in rows)
+        raise EnsembleError(
+            f"executor: stopped after {len(rows)} of {total} samples "
+            f"({type(failure).__name__}: {failure}); samples {_ranges(missing)} are missing: run them with "
+            "done=error.partial and a working executor, or none",
+            partial=_result(ensemble, state, watched, truth, rows) if rows else None,
+            missing=missing,
+        ) from failure
+    return _result(ensemble, state, watched, truth, rows)
+
+
+def _check(ensemble: Ensemble, state: State, observables: Mapping[str, Operator], executor: object) -> None:
+    if not isinstance(state, State):
+        raise ArgumentError(
+            f"state: is no State ({type(state).__name__}); use State.product or another of its constructors",
+            argument="state",
+            value=state,
+        )
+    if state.qubits != ensemble.qubits:
+        raise StateShapeError(
+            f"state: has {state.qubits} qubits, the ensemble {ensemble.qubits}; give a start on {ensemble.qubits}",
+            shape=state.qubits,
+            expected=ensemble.qubits,
+        )
+    for name, operator in observables.items():
+        require_same_qubits(state, operator, f"observables[{name!r}]")
+    length = state.norm()
+    if not abs(length - 1.0) <= (1e-3 if state.dtype == np.dtype(np.complex64) else 1e-6):
+        raise ArgumentError(
+            f"state: is not normalised (norm {length:.6g}); divide it by its norm", argument="state", value=length
+        )
+    if executor is not None and not callable(getattr(executor, "submit", None)):
+        raise ArgumentError(
+            f"executor: has no submit ({executor!r}); give a concurrent.futures.Executor, or None",
+            argument="executor",
+            value=executor,
+        )
+
+
+def _kept(
+    ensemble: Ensemble, observables: Mapping[str, Operator], truth: Truth, done: Average | None
+) -> dict[int, Row]:
+    if done is None:
+        return {}
+    same = (
+        isinstance(done, Average)
+        and done.ensemble == ensemble
+        and list(done.observables) == list(observables)
+        and (done.infidelity is None) == (truth.state is None)
+    )
+    if not same:
+        raise ArgumentError(
+            "done: is no Average of this ensemble with the same observables and reference "
+            f"({type(done).__name__}); give the partial result of the same call, or None",
+            argument="done",
+            value=done,
+        )
+    return dict(done._rows)
+
+
+def _result(
+    ensemble: Ensemble, state: State, observables: Mapping[str, Operator], truth: Truth, rows: Mapping[int, Row]
+) -> Average:
+    indices = tuple(sorted(rows))
+    table = np.array([rows[index] for index in indices], dtype=np.float64)
+    limit = ensemble.channel_bound()
+    length = max(1.0, state.norm())
+    own = float(table[:, 0].max())
+    unit = 2.0**-24 if state.dtype == np.dtype(np.complex64) else UNIT
+    figures = {}
+    for place, (name, operator) in enumerate(observables.items()):
+        norm = norm_bound(operator)
+        rounding = expectation_shift(norm, own, length) + expectation_rounding(operator, state.qubits) * (unit / UNIT)
+        exact, slack = truth.expectation(name)
+        figures[name] = _estimate(
+            table[:, FIXED_COLUMNS + place],
+            exact,
+            slack + rounding,
+            None if limit is None else norm * length**2 * limit.diamond,
+        )
+    infidelity = single = errors = None
+    if truth.state is not None:
+        errors = table[:, 1].copy()
+        # The norm of a difference is summed in blocks: 128 additions in a row, 3 levels, then a tree.
+        slack = own + truth.state_bound + UNIT * float(errors.max()) * (136.0 + state.qubits)
+        single = _estimate(errors, 0.0, slack, None)
+        # The infidelity is the expectation of a projector, of norm 1.
+        infidelity = _estimate(
+            table[:, 2], 0.0, expectation_shift(1.0, slack, length), None if limit is None else limit.half_diamond
+        )
+    return Average(
+        ensemble=ensemble,
+        indices=indices,
+        values={name: table[:, FIXED_COLUMNS + place].copy() for place, name in enumerate(observables)},
+        observables=figures,
+        infidelity=infidelity,
+        single_sample_state_error=single,
+        single_sample_state_errors=errors,
+        channel_bound=limit,
+        _rows=dict(rows),
+    )
+
+
+def _estimate(values: npt.NDArray[np.float64], exact: float | None, slack: float, bound: float | None) -> Estimate:
+    """Sum exactly rounded, so that the order of the samples does not matter."""
+    count = len(values)
+    mean = math.fsum(values) / count
+    spread = math.sqrt(math.fsum((values - mean) ** 2) / (count - 1)) if count > 1 else math.inf
+    standard_error = spread / math.sqrt(count)
+    error = None
+    if exact is not None:
+        measured, width = abs(mean - exact), STANDARD_ERRORS * standard_error + slack
+        error = (max(0.0, measured - width), measured + width)
+    return Estimate(mean, standard_error, spread, exact, error, bound)
+
+
+def _ranges(indices: Sequence[int]) -> str:
+    """Write 0, 1, 2, 5 as "0-2, 5", the first few of many."""
+    spans: list[list[int]] = []
+    for index in indices:
+        if spans and spans[-1][1] == index - 1:
+            spans[-1][1] = index
+        else:
+            spans.append([index, index])
+    shown = [str(low) if low == high else f"{low}-{high}" for low, high in spans[:8]]
+    return ", ".join(shown) + (", …" if len(spans) > 8 else "")
