@@ -83,6 +83,18 @@ def test_the_leading_error_is_no_larger_than_that_of_published_splittings(publis
     assert found(4, stages, kind="splitting", starts=25).provenance.leading_error <= theirs
 
 
+def test_the_leading_error_is_the_leading_term_of_the_product_in_words_of_two_parts():
+    # One Strang step, by hand: the logarithm of exp(A/2) exp(B) exp(A/2) has the degree-3 term
+    # ∓[A,[A,B]]/24 ∓ [B,[A,B]]/12 (H. Yoshida, Phys. Lett. A 150, 262 (1990), from memory); the words AAB, ABA, BAA
+    # come with 1, -2, 1, and likewise for B.
+    expected = np.sqrt(6) * np.hypot(1 / 24, 1 / 12)
+    for kind in ("composition", "splitting"):
+        assert found(2, 1, kind=kind, starts=4).provenance.leading_error == pytest.approx(expected, rel=1e-12)
+    # and the triple jump has one error, whichever way it is written: weights of 1.7 to the fifth power, 40 u each
+    two = [found(4, 3, kind=kind).provenance.leading_error for kind in ("composition", "splitting")]
+    assert two[0] == pytest.approx(two[1], rel=1e-12)
+
+
 # Digits
 
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from decimal import Decimal, localcontext
 
 import numpy as np
 import pytest
@@ -14,7 +15,8 @@ from test_order import FOUR_PARTS, THREE_PARTS, measured_order, window
 from trueturn import errors
 from trueturn.formulas import Formula, Stage
 from trueturn.formulas import order as algebra
-from trueturn.formulas.processed import PROCESSED, Processed
+from trueturn.formulas.conditions import Conditions
+from trueturn.formulas.processed import _HALF_KERNEL, _PROCESSOR, PROCESSED, Processed
 
 FOUR = PROCESSED[0]
 
@@ -39,6 +41,19 @@ def test_the_effective_order_is_the_slope_of_the_error_and_above_the_kernels(pro
 @pytest.mark.parametrize("processed", PROCESSED, ids=lambda p: p.name)
 def test_the_effective_order_is_exact_and_not_just_reached(processed):
     assert algebra.measured_order(processed.exact_stages())[0] == processed.order
+
+
+def test_printed_digits_meet_every_order_condition():
+    # 34 decimals are printed: half a unit in each of 18 stages moves a condition by less than 18 · 2^4 / 2 units.
+    post = [Decimal(text) for text in _PROCESSOR]
+    half = [Decimal(text) for text in _HALF_KERNEL]
+    with localcontext() as context:
+        context.prec = 60
+        weights = [*(-weight for weight in reversed(post)), *half, *reversed(half), *post]
+        missed = Conditions(range(1, 5), 1).exact(weights, [1, -1] * 9)
+        assert max(map(abs, missed)) < Decimal("1.5e-32")
+        assert abs(sum(post)) < Decimal("4e-34")
+        assert max(map(abs, Conditions([5], 1).exact(weights, [1, -1] * 9))) > Decimal("1e-4")  # and no more
 
 
 @pytest.mark.parametrize("steps", [1, 2, 5])

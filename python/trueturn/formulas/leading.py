@@ -49,7 +49,7 @@ def error_root(degree: int, stride: int) -> npt.NDArray[np.float64]:
     words = lyndon_words(degree, stride)
     brackets = [_bracketed(word) for word in words]
     corner = np.array([[poly.get(word, 0.0) for poly in brackets] for word in words])
-    letters = _letters(degree)
+    letters = _letters(degree, stride)
     places = {word: row for row, word in enumerate(itertools.product(range(PARTS), repeat=degree))}
     columns = np.zeros((len(places), len(words)))
     for number, poly in enumerate(brackets):
@@ -77,12 +77,17 @@ def _bracketed(word: Word) -> Series:
 
 
 @cache
-def _letters(degree: int) -> list[Series]:
-    """Y_0 = nothing, Y_1, Y_2, … in words of the parts: the logarithm of exp(A_1) exp(A_2) …, degree by degree."""
-    less_one: Series = {}
-    for size in range(1, degree + 1):
-        for word in itertools.combinations_with_replacement(range(PARTS), size):
-            less_one[word] = 1 / math.prod(math.factorial(word.count(part)) for part in range(PARTS))
+def _letters(degree: int, stride: int) -> list[Series]:
+    """Y_0 = nothing, Y_1, Y_2, … in words of the parts, degree by degree.
+
+    They are the logarithm of one forward stage exp(A_1) exp(A_2) …, or of one Strang step where `stride` is 2.
+    """
+    forward = [(part, 1.0 / stride) for part in range(PARTS)]
+    product: Series = {(): 1.0}
+    for part, weight in forward if stride == 1 else [*forward, *reversed(forward)]:
+        exponential = {(part,) * size: weight**size / math.factorial(size) for size in range(degree + 1)}
+        product = _times(product, exponential, degree)
+    less_one = {word: value for word, value in product.items() if word}
     found: list[Series] = [{} for _ in range(degree + 1)]
     power: Series = {(): 1.0}
     for count in range(1, degree + 1):

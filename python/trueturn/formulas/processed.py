@@ -191,7 +191,7 @@ def _stages(digits: Sequence[str]) -> tuple[Stage, ...]:
 
 _FOUND = (
     "found here: order conditions of the whole up to degree 4 solved from 60 random starts (random.Random(1)) with the "
-    "leading error on two general parts made least; met to 1e-33 by the printed digits"
+    "leading error on two general parts made least; met to 1e-32 by the printed digits"
 )
 
 _HALF_KERNEL = (
