@@ -1,6 +1,6 @@
 """Prove product-formula circuits against a certified reference."""
 
-from trueturn import driven, errors, lattice, model
+from trueturn import driven, errors, lattice, model, randomised
 from trueturn._build import build_info
 from trueturn._threads import threads
 from trueturn.accuracy import Bound, bound
@@ -11,6 +11,9 @@ from trueturn.driven import Driven, DrivenReference, driven_reference
 from trueturn.error_saving import Improved
 from trueturn.extrapolation import Extrapolation, extrapolate, multiproduct_weights, well_conditioned_steps
 from trueturn.formulas import Formula, formula, formulas, read_formulas
+from trueturn.formulas.processed import Processed
+from trueturn.formulas.search import FoundFormula
+from trueturn.formulas.search_target import Instance, Target
 from trueturn.ladders import saved_gates
 from trueturn.operator import Operator
 from trueturn.partition import Partition
@@ -30,14 +33,18 @@ __all__ = [
     "DrivenReference",
     "Extrapolation",
     "Formula",
+    "FoundFormula",
     "Improved",
+    "Instance",
     "Operator",
     "Partition",
+    "Processed",
     "Reference",
     "Rotations",
     "State",
     "Symmetries",
     "Symmetry",
+    "Target",
     "adaptive",
     "audit",
     "bound",
@@ -52,6 +59,7 @@ __all__ = [
     "lattice",
     "model",
     "multiproduct_weights",
+    "randomised",
     "read_formulas",
     "reference",
     "saved_gates",

@@ -8,7 +8,7 @@ from fractions import Fraction
 from functools import cached_property
 from operator import index
 from os import PathLike
-from typing import ClassVar
+from typing import TYPE_CHECKING, ClassVar
 
 from trueturn.errors import ArgumentError, FormulaError
 from trueturn.formulas.arguments import checked_error, checked_steps, checked_time
@@ -19,6 +19,10 @@ from trueturn.formulas.structure import require_known, require_structure
 from trueturn.formulas.weights import DIRECTIONS, Direction, ExactStage, Number, composed, exact_weights, split
 from trueturn.partition import Partition
 from trueturn.rotations import Rotations
+
+if TYPE_CHECKING:
+    from trueturn.formulas.search import FoundFormula
+    from trueturn.formulas.search_target import Target
 
 __all__ = ["Direction", "Formula", "Stage"]
 
@@ -193,6 +197,65 @@ class Formula:
         True
         """
         return cls._measured(name, order, split(a, b, name), source)
+
+    @classmethod
+    def search(
+        cls,
+        order: int,
+        stages: int,
+        seed: int,
+        *,
+        for_: Target | None = None,
+        kind: str = "composition",
+        measure: str = "error",
+        starts: int = 200,
+        name: str | None = None,
+    ) -> FoundFormula:
+        """Search for a symmetric formula; the same arguments give the same formula.
+
+        Parameters
+        ----------
+        order : {2, 4, 6, 8}
+        stages : int
+            Strang steps of a composition, b-exponentials of a splitting: up to 40, and at least 1, 3, 7, 15 for
+            the four orders, the least numbers known to work. More leave parameters free.
+        seed : int
+            At least 0.
+        for_ : Target, optional
+            Tune the free parameters for a small instance and keep the outcome if it also wins on a larger one.
+        kind : {"composition", "splitting"}
+        measure : {"error", "weights"}
+            What is made least: the leading error on general operators, or Σ w².
+        starts : int, up to 100000, optional
+        name : str, optional
+
+        Returns
+        -------
+        FoundFormula
+            With forty decimals of every coefficient and its provenance.
+
+        Raises
+        ------
+        ArgumentError
+            An argument out of range; the message gives what is possible.
+        FormulaError
+            No start led to a solution.
+
+        Notes
+        -----
+        Milliseconds for each start; with a target some hundred runs of the small instance for each free
+        parameter. No claim is made that the optimum is global.
+
+        Examples
+        --------
+        >>> import trueturn as tt
+        >>> found = tt.Formula.search(2, 2, seed=1, kind="splitting", starts=10)
+        >>> found.a[0][:8], float(found.provenance.residual) < 1e-28
+        ('0.193183', True)
+        """
+        from trueturn.formulas.search import search
+
+        return search(order, stages, seed, for_=for_, kind=kind, measure=measure, starts=starts, name=name)
 
     @classmethod
     def _measured(cls, name: str, order: int | None, pairs: Sequence[ExactStage], source: str) -> Formula:
