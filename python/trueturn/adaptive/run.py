@@ -56,7 +56,7 @@ class AdaptiveStep(NamedTuple):
     accepted: bool
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, repr=False)
 class AdaptiveRun:
     """An evolution with steps of chosen lengths.
 
@@ -90,6 +90,13 @@ class AdaptiveRun:
     def refused(self) -> int:
         """Number of steps that were tried and refused."""
         return sum(not step.accepted for step in self.history)
+
+    def __repr__(self) -> str:
+        lengths = np.abs(self.steps)
+        return (
+            f"<AdaptiveRun: {lengths.size} steps of {lengths.min():.3g} to {lengths.max():.3g}, {self.refused} refused; "
+            f"error ~ {self.estimate:.2g} (estimated)>"
+        )
 
 
 def adaptive(

@@ -32,7 +32,7 @@ _GAUSS = (0.5 - math.sqrt(3.0) / 6.0, 0.5 + math.sqrt(3.0) / 6.0)
 _WEIGHTS = (0.25 + math.sqrt(3.0) / 6.0, 0.25 - math.sqrt(3.0) / 6.0)
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, repr=False)
 class DrivenReference:
     """An evolution under a driven Hamiltonian with an estimated error.
 
@@ -69,6 +69,12 @@ class DrivenReference:
     steps: int
     applications: int
     kind: str = "estimated"
+
+    def __repr__(self) -> str:
+        return (
+            f"<DrivenReference at {len(self.times)} times: {self.steps} steps, error ~ {max(self.error.values()):.2g} "
+            f"({self.kind})>"
+        )
 
 
 def driven_reference(
