@@ -3,31 +3,18 @@
 //! `cargo bench --no-default-features --bench action -- [QUBITS ...]` prints, for one and two threads, the best of five
 //! times as a multiple of S1, the one-thread engine pass that multiplies every amplitude by a constant.
 
-use std::time::Instant;
+mod clock;
 
 use _native::action::Action;
 use _native::apply::{chebyshev_sums, expectation};
-use _native::evolve::evolve;
 use _native::pauli::PauliString;
-use _native::rotations::Rotations;
 use _native::team::Control;
 use _native::terms::Terms;
+use clock::{best, sizes, sweep};
 use num_complex::Complex64;
 
 fn main() {
-    let asked: Vec<u32> = std::env::args().filter_map(|text| text.parse().ok()).collect();
-    for qubits in if asked.is_empty() { vec![14, 18, 20] } else { asked } {
-        report(qubits);
-    }
-}
-
-fn best(mut work: impl FnMut()) -> f64 {
-    let once = |work: &mut dyn FnMut()| {
-        let start = Instant::now();
-        work();
-        start.elapsed().as_secs_f64()
-    };
-    (0..5).map(|_| once(&mut work)).fold(f64::INFINITY, f64::min)
+    sizes(&[14, 18, 20]).into_iter().for_each(report);
 }
 
 fn report(qubits: u32) {
@@ -35,21 +22,17 @@ fn report(qubits: u32) {
     state[0].re = 1.0;
     let (mut previous, mut sum) = (state.clone(), state.clone());
     let control = Control::default();
-    let turn = Rotations::from_list(qubits, vec![], 1e-3).expect("a finite phase");
-    let sweep = best(|| {
-        evolve(&mut state, &turn, 1, &control).expect("no stop asked");
-    });
-    println!("{qubits} qubits: S1 = {:.3} ms, {:.3} ns an amplitude", 1e3 * sweep, 1e9 * sweep / state.len() as f64);
+    let sweep = sweep(qubits, &mut state);
     let bonds = (0..qubits).map(|q| 1u128 << q | 1u128 << ((q + 1) % qubits));
     let strings = bonds.flat_map(|bond| [(bond, 0), (bond, bond), (0, bond)].map(|(x, z)| (PauliString { x, z }, 1.0)));
     let ring = Terms::new(Some(qubits), strings).expect("strings within the qubits");
     let action = Action::new(&ring, 1.0, 0.0);
     let coefficients = vec![vec![0.1; 9]];
     for threads in [1, 2] {
-        let value = best(|| {
+        let value = best(5, || {
             expectation(&action, &mut state, threads, &control).expect("no stop asked");
         });
-        let terms = best(|| {
+        let terms = best(5, || {
             let mut sums = [&mut sum[..]];
             let done = chebyshev_sums(&action, &mut state, &mut previous, &mut sums, &coefficients, threads, &control);
             done.expect("no stop asked");

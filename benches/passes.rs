@@ -3,44 +3,31 @@
 //! `cargo bench --no-default-features --bench passes -- [QUBITS ...]` prints, for one and two threads, the best of nine
 //! times of each circuit as a multiple of S1, the one-thread engine pass that multiplies every amplitude by a constant.
 
-use std::time::Instant;
+mod clock;
 
 use _native::evolve::evolve;
 use _native::pauli::PauliString;
 use _native::rotations::{Rotation, Rotations};
 use _native::team::Control;
+use clock::{best, sizes, sweep};
 use num_complex::Complex64;
 
 fn main() {
-    let asked: Vec<u32> = std::env::args().filter_map(|text| text.parse().ok()).collect();
-    for qubits in if asked.is_empty() { vec![14, 18, 20, 24] } else { asked } {
-        report(qubits);
-    }
-}
-
-fn best(mut work: impl FnMut()) -> f64 {
-    let once = |work: &mut dyn FnMut()| {
-        let start = Instant::now();
-        work();
-        start.elapsed().as_secs_f64()
-    };
-    (0..9).map(|_| once(&mut work)).fold(f64::INFINITY, f64::min)
+    sizes(&[14, 18, 20, 24]).into_iter().for_each(report);
 }
 
 fn report(qubits: u32) {
     let mut state = vec![Complex64::new(0.0, 0.0); 1 << qubits];
     state[0].re = 1.0;
-    let turn = Rotations::from_list(qubits, vec![], 1e-3).expect("a finite phase");
-    let sweep = best(|| {
-        evolve(&mut state, &turn, 1, &Control::default()).expect("no stop asked");
-    });
-    println!("{qubits} qubits: S1 = {:.3} ms, {:.3} ns an amplitude", 1e3 * sweep, 1e9 * sweep / state.len() as f64);
+    let sweep = sweep(qubits, &mut state);
     println!("{:<28}{:>10}{:>8}{:>12}{:>12}", "circuit", "rotations", "passes", "1 thread", "2 threads");
     for (name, list) in circuits(qubits) {
         let circuit = Rotations::from_list(qubits, list, 0.0).expect("strings within the qubits");
         let mut passes = 0;
         let times = [1, 2].map(|threads| {
-            best(|| passes = evolve(&mut state, &circuit, threads, &Control::default()).expect("no stop asked").passes)
+            best(9, || {
+                passes = evolve(&mut state, &circuit, threads, &Control::default()).expect("no stop asked").passes
+            })
         });
         println!(
             "{name:<28}{:>10}{passes:>8}{:>9.2} S1{:>9.2} S1",

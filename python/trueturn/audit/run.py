@@ -13,15 +13,14 @@ from trueturn.audit.candidate import Candidate
 from trueturn.audit.measure import Bench, Measured
 from trueturn.audit.result import Audit, Row, Trial
 from trueturn.audit.search import least_steps
+from trueturn.audit.truth import Progress, positive_times, reference_for
 from trueturn.errors import ArgumentError, AuditError, FormulaError, ToleranceError
 from trueturn.operator import Operator
 from trueturn.partition import Partition
-from trueturn.reference import Reference, reference
 from trueturn.state import State, require_same_qubits
 
 __all__ = ["audit"]
 
-Progress = Callable[[str, float, float], object]
 QUANTITIES = ("observables", "state")
 READOUTS = ("along", "separate")
 
@@ -109,7 +108,7 @@ def audit(
     """
     began = clock.perf_counter()
     watched = dict(observables or {})
-    asked = _times(times)
+    asked = sorted(set(positive_times(times)))
     _check(operator, state, candidates, tolerance, quantity, watched, readout, relative_to, most_steps)
     workers = _threads.resolve(threads)
     partitions = [candidate.partition(operator) for candidate in candidates]
@@ -118,8 +117,17 @@ def audit(
         "audit",
         lambda n: (2 + (len(asked) if quantity == "state" else 1)) * (16 << n),
     )
-    truth = _reference(
-        operator, state, asked, tolerance, reference_tolerance, watched, reference_method, quantity, workers, progress
+    truth = reference_for(
+        operator,
+        state,
+        asked,
+        tolerance,
+        reference_tolerance,
+        watched,
+        method=reference_method,
+        keep="all" if quantity == "state" else "last",
+        threads=workers,
+        progress=progress,
     )
     seconds = {"reference": clock.perf_counter() - began}
     bench = Bench(state, asked, truth, tolerance, quantity, watched, relative_to, readout, workers)
@@ -214,54 +222,6 @@ def _bound(bench: Bench, candidate: Candidate, partition: Partition, steps: int)
     if found.value >= 1.0:
         return 2.0 * largest, "no two values of the observable are further apart"
     return 2.0 * largest * found.value, f"{source}, times twice the observable's norm"
-
-
-def _reference(
-    operator: Operator,
-    state: State,
-    times: Sequence[float],
-    tolerance: float,
-    asked: float | None,
-    observables: Mapping[str, Operator],
-    method: str,
-    quantity: str,
-    threads: int,
-    progress: Progress | None,
-) -> Reference:
-    keep = "all" if quantity == "state" else "last"
-
-    def certified(limit: float) -> Reference:
-        return reference(operator, state, times, limit, observables, method, keep, progress, threads=threads)
-
-    if asked is not None:
-        return certified(asked)
-    try:
-        return certified(min(1e-10, tolerance / 100.0))
-    except ToleranceError as refusal:
-        if refusal.achievable <= tolerance / 100.0:
-            return certified(refusal.achievable)
-        raise ToleranceError(
-            f"tolerance: cannot be judged in double precision ({tolerance:g}): the reference can be certified to "
-            f"{refusal.achievable:g} here, and a hundredth of the tolerance is needed; ask for "
-            f"{100.0 * refusal.achievable:.3g} or more, or a shorter time",
-            tolerance=tolerance,
-            achievable=100.0 * refusal.achievable,
-        ) from None
-
-
-def _times(times: float | Iterable[float]) -> list[float]:
-    given = [times] if isinstance(times, (int, float)) else list(times)
-    try:
-        found = sorted({float(time) for time in given})
-    except (TypeError, ValueError):
-        raise ArgumentError(
-            f"times: not numbers ({times!r}); give positive numbers", argument="times", value=times
-        ) from None
-    if not found or not all(0.0 < time < math.inf for time in found):
-        raise ArgumentError(
-            f"times: not positive and finite ({given!r}); give at least one time above 0", argument="times", value=times
-        )
-    return found
 
 
 def _check(

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Iterable, Mapping, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from fractions import Fraction
 
 import numpy as np
@@ -12,19 +12,19 @@ import numpy.typing as npt
 from trueturn import _memory, _threads
 from trueturn.audit.candidate import Candidate
 from trueturn.audit.measure import judge
+from trueturn.audit.truth import Progress, positive_times, reference_for
 from trueturn.errors import ArgumentError, AuditError, FormulaError, ToleranceError
 from trueturn.extrapolation.result import Extrapolation
 from trueturn.extrapolation.weights import checked_steps, combined_order, multiproduct_weights
 from trueturn.formulas import ANGLE_ROUNDINGS, Formula
 from trueturn.operator import Operator
 from trueturn.partition import Partition
-from trueturn.reference import Reference, reference
+from trueturn.reference import Reference
 from trueturn.reference.certificate import UNIT, expectation_rounding, expectation_shift, norm_bound
 from trueturn.state import State, require_same_qubits
 
 __all__ = ["extrapolate"]
 
-Progress = Callable[[str, float, float], object]
 Array = npt.NDArray[np.float64]
 
 
@@ -118,7 +118,7 @@ def extrapolate(
     """
     candidate = Candidate(formula, rule, 1)  # type: ignore[arg-type]
     counts = _steps(steps)
-    asked = _times(times)
+    asked = positive_times(times)
     watched = dict(observables or {})
     _check(candidate.formula, state, operator, watched, tolerance)
     workers = _threads.resolve(threads)
@@ -129,7 +129,9 @@ def extrapolate(
     weights = multiproduct_weights(counts, order)
     truth = None
     if tolerance is not None:
-        truth = _reference(operator, state, asked, tolerance, reference_tolerance, watched, workers, progress)
+        truth = reference_for(
+            operator, state, asked, tolerance, reference_tolerance, watched, threads=workers, progress=progress
+        )
     bench = _Bench(candidate.formula, partition, state, watched, workers)
     for place, k in enumerate(counts):
         if progress is not None:
@@ -239,25 +241,6 @@ def _measured(truth: Reference, name: str, values: Array, rounding: Array) -> Ar
     return np.stack([np.maximum(0.0, apart - slack), apart + slack], axis=1)
 
 
-def _reference(
-    operator: Operator,
-    state: State,
-    times: Sequence[float],
-    tolerance: float,
-    asked: float | None,
-    observables: Mapping[str, Operator],
-    threads: int,
-    progress: Progress | None,
-) -> Reference:
-    limit = min(1e-10, tolerance / 100.0) if asked is None else asked
-    try:
-        return reference(operator, state, times, limit, observables, progress=progress, threads=threads)
-    except ToleranceError as refusal:
-        if asked is not None or refusal.achievable > tolerance / 100.0:
-            raise
-        return reference(operator, state, times, refusal.achievable, observables, progress=progress, threads=threads)
-
-
 def _steps(steps: Iterable[int]) -> tuple[int, ...]:
     counts = checked_steps(steps)
     if len(counts) < 2:
@@ -268,23 +251,6 @@ def _steps(steps: Iterable[int]) -> tuple[int, ...]:
             value=steps,
         )
     return counts
-
-
-def _times(times: float | Iterable[float]) -> list[float]:
-    try:
-        if isinstance(times, str):
-            raise TypeError
-        single = not isinstance(times, Iterable) or getattr(times, "ndim", None) == 0
-        found = [float(time) for time in ([times] if single else times)]  # type: ignore[arg-type, union-attr]
-    except (TypeError, ValueError):
-        found = []
-    if not found or not all(0.0 < time < math.inf for time in found):
-        raise ArgumentError(
-            f"times: not positive finite numbers ({times!r}); give at least one time above 0",
-            argument="times",
-            value=times,
-        )
-    return found
 
 
 def _check(

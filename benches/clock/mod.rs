@@ -1,0 +1,38 @@
+//! Best-of-several times, and the sweep that they are compared with.
+
+use std::time::Instant;
+
+use _native::evolve::evolve;
+use _native::rotations::Rotations;
+use _native::team::Control;
+use num_complex::Complex64;
+
+/// Seconds of the fastest of several runs.
+pub fn best(runs: usize, mut work: impl FnMut()) -> f64 {
+    let once = |work: &mut dyn FnMut()| {
+        let start = Instant::now();
+        work();
+        start.elapsed().as_secs_f64()
+    };
+    (0..runs).map(|_| once(&mut work)).fold(f64::INFINITY, f64::min)
+}
+
+/// S1 in seconds: one thread multiplies every amplitude by a constant, in place. Prints it.
+pub fn sweep(qubits: u32, state: &mut [Complex64]) -> f64 {
+    let turn = Rotations::from_list(qubits, vec![], 1e-3).expect("a finite phase");
+    let seconds = best(9, || {
+        evolve(state, &turn, 1, &Control::default()).expect("no stop asked");
+    });
+    println!(
+        "{qubits} qubits: S1 = {:.3} ms, {:.3} ns an amplitude",
+        1e3 * seconds,
+        1e9 * seconds / state.len() as f64
+    );
+    seconds
+}
+
+/// The sizes on the command line, or the usual ones.
+pub fn sizes(usual: &[u32]) -> Vec<u32> {
+    let asked: Vec<u32> = std::env::args().filter_map(|text| text.parse().ok()).collect();
+    if asked.is_empty() { usual.to_vec() } else { asked }
+}
