@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from decimal import Decimal, localcontext
+from fractions import Fraction
 
 import numpy as np
 import pytest
@@ -33,7 +34,8 @@ def whole(processed):
 @pytest.mark.parametrize("processed", PROCESSED, ids=lambda p: p.name)
 def test_the_effective_order_is_the_slope_of_the_error_and_above_the_kernels(processed, parts):
     kernel = [(stage.weight, stage.direction) for stage in processed.kernel.stages]
-    for stages, order in ((whole(processed), processed.order), (kernel, processed.kernel.order)):
+    for floats, order in ((whole(processed), processed.order), (kernel, processed.kernel.order)):
+        stages = [(Fraction(weight), direction) for weight, direction in floats]
         assert abs(measured_order(stages, parts, window(stages, parts, order)) - order) < 0.15
     assert processed.order > algebra.measured_order(processed.kernel.exact_stages())[0]
 
