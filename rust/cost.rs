@@ -1,5 +1,7 @@
 //! What a circuit costs in two-qubit gates, counted without writing it out.
 
+use std::collections::VecDeque;
+
 use crate::rotations::{Block, Body, Rotation, Rotations};
 
 /// Two-qubit gates: 2(w-1) for a rotation of weight w, one ladder down and one up.
@@ -28,24 +30,26 @@ pub fn depth(rotations: &Rotations) -> u64 {
     free_at.into_iter().max().unwrap_or(0)
 }
 
-/// How many runs back a recurrence is looked for.
-const LONGEST_PERIOD: usize = 12;
+/// How many runs back a recurrence is looked for: as many as there are qubits, at least so many.
+const LEAST_PERIODS: usize = 12;
 
 fn advance(blocks: &[Block], free_at: &mut [u64]) {
     for block in blocks {
         let parts = if block.repeat > 1 { connected_parts(block) } else { vec![] };
-        let mut history: Vec<Vec<u64>> = Vec::new();
+        let longest = free_at.len().max(LEAST_PERIODS);
+        let mut history: VecDeque<Vec<u64>> = VecDeque::new();
         let mut left = block.repeat;
         while left > 0 {
             if block.repeat > 1 {
-                history.push(free_at.to_vec());
+                history.truncate(longest - 1);
+                history.push_front(free_at.to_vec());
             }
             match &block.body {
                 Body::List(list) => list.iter().for_each(|rotation| schedule(rotation, free_at)),
                 Body::Nested(blocks) => advance(blocks, free_at),
             }
             left -= 1;
-            let recent = history.iter().rev().take(LONGEST_PERIOD).enumerate();
+            let recent = history.iter().enumerate();
             let period = recent.map(|(back, was)| (back as u64 + 1, was)).find(|(_, was)| recurs(free_at, was, &parts));
             if let Some((period, was)) = period.filter(|(period, _)| left >= *period) {
                 for (now, was) in free_at.iter_mut().zip(was) {

@@ -83,7 +83,8 @@ fn partner(operations: &[Operation], rotation: &Rotation) -> Option<usize> {
             return None;
         }
         if operation.x() == rotation.string.x && operation.second.is_none() {
-            return Some(place);
+            // Two huge angles stay apart rather than overflow.
+            return (operation.first.angle.abs() + rotation.angle.abs()).is_finite().then_some(place);
         }
     }
     None
@@ -104,6 +105,11 @@ mod tests {
         assert_eq!(found[0].parity_mask(), 0b11);
         // YY = -XX ZZ: the angles subtract where ZZ = +1.
         assert_eq!(found[0].angles(), [0.3, 0.7]);
+    }
+
+    #[test]
+    fn angles_whose_sum_overflows_stay_apart() {
+        assert_eq!(joined(&[rotation(0b11, 0, 1e308), rotation(0b11, 0b11, 1e308)]).len(), 2);
     }
 
     #[test]

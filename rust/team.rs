@@ -94,6 +94,12 @@ impl Barrier {
     }
 }
 
+/// The system refused to start another thread.
+pub fn no_thread(workers: usize) -> Error {
+    let message = format!("threads: the system cannot start so many ({workers}); ask for fewer");
+    Error::Argument { argument: "threads", message }
+}
+
 fn panicked() -> Error {
     Error::Internal { message: "a worker panicked".into() }
 }
@@ -165,7 +171,7 @@ pub fn run(workers: usize, control: &Control, body: impl Fn(&Member) -> Result<(
         verdict: AtomicU8::new(CONTINUE),
     };
     let before = control.progress().0;
-    let one = |index: usize| {
+    let one = &|index: usize| {
         let member = Member { index, barrier: &barrier, control };
         catch_unwind(AssertUnwindSafe(|| body(&member))).unwrap_or_else(|_| {
             barrier.broken.store(true, Ordering::Relaxed);
@@ -173,7 +179,17 @@ pub fn run(workers: usize, control: &Control, body: impl Fn(&Member) -> Result<(
         })
     };
     let results = std::thread::scope(|scope| {
-        let others: Vec<_> = (1..workers).map(|index| scope.spawn(move || one(index))).collect();
+        let mut others = Vec::with_capacity(workers);
+        for index in 1..workers {
+            match std::thread::Builder::new().spawn_scoped(scope, move || one(index)) {
+                Ok(worker) => others.push(worker),
+                Err(_) => {
+                    barrier.broken.store(true, Ordering::Relaxed);
+                    others.into_iter().for_each(|worker| drop(worker.join()));
+                    return vec![Err(no_thread(workers))];
+                }
+            }
+        }
         let mut results = vec![one(0)];
         results.extend(others.into_iter().map(|other| other.join().unwrap_or_else(|_| Err(panicked()))));
         results

@@ -47,11 +47,12 @@ def _interrupted(qubits, signals):
         [sys.executable, "-c", CHILD, str(qubits)], stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True
     )
     assert child.stdout.readline().strip() == "running"
-    for _ in range(signals):
+    child.send_signal(signal.SIGINT)
+    # A second signal must find the first one heard: the acknowledgement says so.
+    while "stopping after the current pass" not in (line := child.stderr.readline()):
+        assert child.poll() is None or line, "the child ended without an acknowledgement"
+    if signals == 2:
         child.send_signal(signal.SIGINT)
-        # The next signal must find the first one heard: the acknowledgement says so.
-        while "stopping after the current pass" not in (line := child.stderr.readline()):
-            assert child.poll() is None or line, "the child ended without an acknowledgement"
     out, _ = child.communicate(timeout=120)
     return json.loads(out)
 
@@ -65,19 +66,16 @@ def test_one_interrupt_stops_after_the_pass_and_leaves_a_unit_vector():
 
 @pytest.mark.heavy
 def test_two_interrupts_stop_inside_the_pass_and_spoil_the_state():
-    # At 26 qubits one pass lasts long enough for the second signal to find it running.
-    child = subprocess.Popen(
-        [sys.executable, "-c", CHILD, "26"], stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True
-    )
-    assert child.stdout.readline().strip() == "running"
-    child.send_signal(signal.SIGINT)
-    while "stopping after the current pass" not in child.stderr.readline():
-        assert child.poll() is None
-    child.send_signal(signal.SIGINT)
-    out, _ = child.communicate(timeout=120)
-    found = json.loads(out)
-    assert found["ended"] == "interrupted"
-    assert "spoiled" in found.get("spoiled", "") and "make it again" in found["spoiled"]
+    # At 26 qubits one pass lasts a second or more, so that the second signal usually finds it running; where the first one
+    # came at its very end, the run has stopped in good order, and another try is due.
+    for _ in range(4):
+        found = _interrupted(26, 2)
+        assert found["ended"] == "interrupted"
+        if "spoiled" in found:
+            assert "make it again" in found["spoiled"]
+            return
+        assert abs(found["norm"] - 1.0) < 1e-9
+    pytest.fail("four times in a row the second signal found no pass running")
 
 
 def test_an_exception_in_the_progress_callback_stops_the_run_and_passes_through():

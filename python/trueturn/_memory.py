@@ -77,7 +77,7 @@ def readable(count: int) -> str:
     # Whole numbers, since an absurd request has more bytes than a float can count.
     tenths = count * 10 // 1024**power
     if tenths >= 10**8:
-        return f"10^{len(str(count)) - 1} B"
+        return f"10^{int((count.bit_length() - 1) * 0.30103)} B"
     value = tenths / 10
     return f"{value:.1f} {units[power]}"
 

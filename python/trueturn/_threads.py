@@ -6,6 +6,7 @@ import contextvars
 import os
 from collections.abc import Iterator
 from contextlib import contextmanager
+from numbers import Integral
 
 from trueturn.errors import ArgumentError
 
@@ -62,12 +63,12 @@ def resolve(asked: int | None) -> int:
         return min(LIMIT, os.cpu_count() or 1)
 
 
-def _checked(value: int, argument: str, shown: object = None) -> int:
-    if isinstance(value, bool) or not isinstance(value, int) or not 1 <= value <= LIMIT:
+def _checked(value: object, argument: str, shown: object = None) -> int:
+    if isinstance(value, bool) or not isinstance(value, Integral) or not 1 <= int(value) <= LIMIT:
         found = value if shown is None else shown
         raise ArgumentError(
             f"{argument}: not a thread count ({found!r}); give a whole number from 1 to {LIMIT}",
             argument=argument,
             value=found,
         )
-    return value
+    return int(value)

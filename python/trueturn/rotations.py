@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 import operator as _operator
 from collections.abc import Iterable, Sequence
 from typing import NamedTuple
@@ -202,15 +203,18 @@ class Rotations:
         """
         double = 2.0**-53
         count = self.count + (1 if self.phase else 0)
-        angles = angle_roundings * (self._circuit.angle_sum() + abs(self.phase)) + self._circuit.joined_angle_sum()
+        angles = self._circuit.joined_angle_sum()
+        if angle_roundings:
+            angles += angle_roundings * (self._circuit.angle_sum() + abs(self.phase))
         linear = 5.0 * unit * count + double * angles
-        return float(linear * np.exp(min(linear, 600.0)))
+        bound = float(linear * np.exp(min(linear, 600.0)))
+        return bound if math.isfinite(bound) else math.inf
 
     def __len__(self) -> int:
         return self.count
 
     def __eq__(self, other: object) -> bool:
-        """Equal blocks, repeats, strings, angles and phase; equality of what they do is a matter for `diagnose`."""
+        """Equal blocks, repeats, strings, angles and phase; circuits that do the same can still differ in these."""
         return isinstance(other, Rotations) and self._circuit.same_as(other._circuit)
 
     def __hash__(self) -> int:
@@ -265,7 +269,7 @@ def _whole(value: object) -> int | None:
 def _number(argument: str, value: float) -> float:
     try:
         return float(value)
-    except (TypeError, ValueError):
+    except (TypeError, ValueError, OverflowError):
         raise RotationError(f"{argument}: not a number ({value!r}); give radians", argument=argument) from None
 
 

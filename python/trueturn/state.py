@@ -115,7 +115,7 @@ class State:
         """
         whole = isinstance(index, (int, np.integer)) and not isinstance(index, bool)
         count = _whole("qubits", qubits, 0)
-        if not whole or not 0 <= index < 1 << count:
+        if not whole or index < 0 or int(index).bit_length() > count:
             raise ArgumentError(
                 f"index: no basis state of {count} qubits ({index!r}); give 0 to 2**{count} - 1",
                 argument="index",
@@ -427,7 +427,8 @@ def _allocate(what: str, qubits: int, dtype: npt.DTypeLike) -> npt.NDArray[Any]:
             expected="complex128 or complex64",
         )
     size = kind.itemsize
-    _memory.require(size << qubits, what, lambda n: size << n)
+    # More qubits than any address has bits are refused all the same, without writing such a number out.
+    _memory.require(size << min(qubits, 128), what, lambda n: size << n)
     return np.zeros(1 << qubits, dtype=kind)
 
 

@@ -91,6 +91,7 @@ pub fn apply<T: Real>(
     threads: usize,
     control: &Control,
 ) -> Result<Run> {
+    assert!(state.len() == 1 << action.qubits.max(GROUP_BITS) && out.len() == state.len());
     let isa = Isa::chosen()?;
     let workers = workers_for(threads, state.len());
     let (state, out) = (Shared::new(state), Shared::new(out));
@@ -113,6 +114,7 @@ pub fn expectation<T: Real>(
     threads: usize,
     control: &Control,
 ) -> Result<f64> {
+    assert!(state.len() == 1 << action.qubits.max(GROUP_BITS));
     let isa = Isa::chosen()?;
     let amplitudes = state.len();
     let shared = Shared::new(state);
@@ -143,6 +145,8 @@ pub fn chebyshev(
     threads: usize,
     control: &Control,
 ) -> Result<Run> {
+    let lengths = [previous.len()].into_iter().chain(sums.iter().map(|sum| sum.len()));
+    assert!(current.len() == 1 << action.qubits.max(GROUP_BITS) && lengths.into_iter().all(|l| l == current.len()));
     let isa = Isa::chosen()?;
     let terms = coefficients[0].len();
     let workers = workers_for(threads, current.len());

@@ -74,6 +74,7 @@ impl<T: Real> Work for Rotate<'_, T> {
     type Output = ();
     #[inline(always)]
     fn run(self) {
+        assert!(self.range.end <= self.rotation.units(self.state.groups()) && self.rotation.x < self.state.groups());
         if self.rotation.x == 0 {
             for_each_permutation!(self.rotation.m, rotate_alone, self);
         } else if self.rotation.d == 0 {

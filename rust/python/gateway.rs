@@ -9,7 +9,7 @@ use pyo3::prelude::*;
 
 use super::error::to_python;
 use crate::error::{Error, Result};
-use crate::team::Control;
+use crate::team::{Control, no_thread};
 use crate::terms::Check;
 
 /// Time between two looks for signals; an interrupt is heard within it.
@@ -18,6 +18,15 @@ const LOOK: Duration = Duration::from_millis(25);
 /// Amplitudes times passes below which work runs on the calling thread without a watcher: less than a look.
 const BRIEF: u64 = 1 << 22;
 
+/// What a run that is abandoned half-way leaves behind.
+#[derive(Clone, Copy, PartialEq, Eq)]
+pub enum Spoils {
+    /// A state of the caller's that holds nothing meaningful.
+    State,
+    /// Nothing that anybody sees.
+    Nothing,
+}
+
 /// Runs `work` without the interpreter lock while this thread looks for Ctrl-C and reports progress.
 ///
 /// The first Ctrl-C is acknowledged on stderr and stops the run after the current pass, the second at once. `progress` is
@@ -25,6 +34,7 @@ const BRIEF: u64 = 1 << 22;
 pub fn run<T: Send>(
     py: Python<'_>,
     weight: u64,
+    spoils: Spoils,
     progress: Option<&Py<PyAny>>,
     work: impl FnOnce(&Control) -> Result<T> + Send,
 ) -> PyResult<T> {
@@ -39,11 +49,14 @@ pub fn run<T: Send>(
     let (outcome, raised) = py.detach(|| {
         thread::scope(|scope| {
             let caller = thread::current();
-            let worker = scope.spawn(move || {
+            let carry = move || {
                 let outcome = guarded();
                 caller.unpark();
                 outcome
-            });
+            };
+            let Ok(worker) = thread::Builder::new().spawn_scoped(scope, carry) else {
+                return (Err(no_thread(1)), None);
+            };
             let mut raised = None;
             let mut reported = 0;
             while !worker.is_finished() {
@@ -55,8 +68,9 @@ pub fn run<T: Send>(
         })
     });
     match (outcome, raised) {
+        (Err(error @ Error::Internal { .. }), _) | (Err(error), None) => Err(to_python(py, error)),
         // A spoiled state must be told as such even where an exception is waiting.
-        (Err(error @ (Error::Abandoned | Error::Internal { .. })), _) | (Err(error), None) => Err(to_python(py, error)),
+        (Err(error @ Error::Abandoned), _) if spoils == Spoils::State => Err(to_python(py, error)),
         (_, Some(raised)) => Err(raised),
         (Ok(value), None) => Ok(value),
     }

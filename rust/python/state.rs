@@ -5,7 +5,7 @@ use pyo3::prelude::*;
 
 use super::arrays::{Amplitudes, borrow, borrow_double, slice};
 use super::error::to_python;
-use super::gateway::run;
+use super::gateway::{Spoils, run};
 use super::rotations::PyRotations;
 use super::terms::PyTerms;
 use crate::action::Action;
@@ -44,7 +44,7 @@ pub fn evolve(
     let circuit = &rotations.rotations;
     let done = either!(py, &mut amplitudes, state => {
         let weight = (state.len() as u64).saturating_mul(circuit.count().saturating_add(1));
-        run(py, weight, progress.as_ref(), |control| evolve_state(state, circuit, threads, control))?
+        run(py, weight, Spoils::State, progress.as_ref(), |control| evolve_state(state, circuit, threads, control))?
     });
     Ok((done.passes, done.workers))
 }
@@ -61,7 +61,7 @@ pub fn apply_terms(
     let (mut state, mut out) = (borrow_double(state)?, borrow_double(out)?);
     let (state, out) = (slice(py, &mut state)?, slice(py, &mut out)?);
     let weight = (state.len() * terms.terms.strings().len().max(1)) as u64;
-    run(py, weight, None, |control| {
+    run(py, weight, Spoils::Nothing, None, |control| {
         apply::apply(&Action::new(&terms.terms, 1.0, 0.0), state, out, threads, control).map(drop)
     })
 }
@@ -72,7 +72,7 @@ pub fn expectation(py: Python<'_>, terms: &PyTerms, state: &Bound<'_, PyAny>, th
     let mut amplitudes = borrow(state)?;
     either!(py, &mut amplitudes, state => {
         let weight = (state.len() * terms.terms.strings().len().max(1)) as u64;
-        run(py, weight, None, |control| {
+        run(py, weight, Spoils::Nothing, None, |control| {
             apply::expectation(&Action::new(&terms.terms, 1.0, 0.0), state, threads, control)
         })
     })
@@ -105,7 +105,7 @@ pub fn chebyshev_sums(
     let mut views = arrays.iter_mut().map(|array| slice(py, array)).collect::<PyResult<Vec<_>>>()?;
     let count = coefficients.first().map_or(0, Vec::len);
     let weight = (current.len() as u64).saturating_mul((count * terms.terms.strings().len().max(1)) as u64);
-    run(py, weight, progress.as_ref(), |control| {
+    run(py, weight, Spoils::Nothing, progress.as_ref(), |control| {
         let action = Action::new(&terms.terms, scale, shift);
         apply::chebyshev_sums(&action, current, previous, &mut views, &coefficients, threads, control).map(drop)
     })

@@ -63,6 +63,7 @@ class Bench:
     _bare: Mapping[str, Operator] = field(init=False)
     _constants: Mapping[str, float] = field(init=False)
     unit: float = field(init=False)
+    _length: float = field(init=False)
     _work: State = field(init=False)
     _expectation_rounding: Mapping[str, float] = field(init=False)
 
@@ -75,7 +76,9 @@ class Bench:
             for name, observable in self.observables.items()
         }
         # An identity term counts with the norm of the start on both sides, so that it cannot spoil the comparison.
-        squared = self.start.norm(threads=self.threads) ** 2
+        length = self.start.norm(threads=self.threads)
+        squared = length**2
+        self._length = max(1.0, length)
         self._bare = {name: observable.without_identity() for name, observable in self.observables.items()}
         self._constants = {name: o.identity_coefficient * squared for name, o in self.observables.items()}
         self._work = self.start.copy()
@@ -99,7 +102,7 @@ class Bench:
         spent = 0.0
         np.copyto(self._work.amplitudes, self.start.amplitudes)
         for place, circuit in enumerate(circuits):
-            own = circuit.rounding_bound(ANGLE_ROUNDINGS + _SEGMENT_ROUNDINGS, self.unit)
+            own = self._length * circuit.rounding_bound(ANGLE_ROUNDINGS + _SEGMENT_ROUNDINGS, self.unit)
             if self.readout == "along":
                 spent += own
             else:
@@ -127,8 +130,8 @@ class Bench:
         expected = float(self.reference.expectations[name][place])
         slack = (
             float(self.reference.expectation_bounds[name][place])
-            + expectation_shift(self.norms[name], rounding)
-            + self._expectation_rounding[name]
+            + expectation_shift(self.norms[name], rounding, self._length)
+            + self._length**2 * self._expectation_rounding[name]
         )
         scale = 1.0
         if self.relative_to == "norm":

@@ -163,7 +163,7 @@ def audit(
         energy_unit=energy_unit,
         assumptions=words.assumptions(state, readout, relative_to),
         proven=words.proven(truth),
-        measured=words.measured(quantity),
+        measured=words.measured(quantity, truth.certificate.proven),
         cautions=words.CAUTIONS,
         seconds=seconds,
     )
@@ -184,6 +184,12 @@ def _row(bench: Bench, candidate: Candidate, partition: Partition, most_steps: i
         steps = candidate.steps
     else:
         unit = bench.step_unit()
+        if most_steps < unit:
+            raise AuditError(
+                f"most_steps: below the coarsest grid that meets every time ({most_steps}); give {unit} or more",
+                reason="most_steps below the grid",
+                limit=unit,
+            )
         found = least_steps(run, bench.tolerance, candidate.formula.order, unit=unit, most_steps=most_steps)
         steps, accidental = found.steps, found.accidental
         note = words.search_note(found, bench.tolerance, most_steps)

@@ -20,13 +20,15 @@ class Search:
     """What a search found.
 
     `steps` is the answer or, where none was found, the largest count that was tried (`found` is then False).
-    `accidental` lists smaller counts that met the tolerance although a larger tested one did not.
+    `accidental` lists smaller counts that met the tolerance although a larger tested one did not. `cut_off` says that
+    the look at [r, 2r] went past `most_steps` and was not made in full.
     """
 
     steps: int
     found: bool
     trials: tuple[Trial, ...]
     accidental: tuple[int, ...]
+    cut_off: bool = False
 
 
 def least_steps(
@@ -61,6 +63,7 @@ def least_steps(
 class _Searcher:
     def __init__(self, run: Callable[[int], Trial], tolerance: float, order: int, unit: int, most: int) -> None:
         self.run, self.tolerance, self.order, self.unit, self.most = run, tolerance, order, unit, most
+        self.cut_off = False
         self.trials: dict[int, Trial] = {}
 
     def meets(self, count: int) -> bool:
@@ -84,7 +87,7 @@ class _Searcher:
         passed = sorted(c for c, trial in self.trials.items() if trial.verdict == "meets")
         accidental = tuple(c * self.unit for c in passed if not found or c < count)
         trials = tuple(self.trials[c] for c in sorted(self.trials))
-        return Search(count * self.unit, found, trials, accidental)
+        return Search(count * self.unit, found, trials, accidental, self.cut_off)
 
     def _grow(self, failing: int) -> int | None:
         """Return a count above `failing` that meets the tolerance, and leave all failures on the way as trials."""
@@ -142,6 +145,8 @@ class _Searcher:
         """Run the probes in [answer, 2 answer]; return the largest count there that fails, or 0."""
         probes = {answer + 1, *(round(answer * probe) for probe in _PROBES)}
         for count in sorted(probes):
-            if count <= self.most and not self.meets(count):
+            if count > self.most:
+                self.cut_off = True
+            elif not self.meets(count):
                 break
         return max((c for c in self.trials if answer < c <= 2 * answer and not self.meets(c)), default=0)

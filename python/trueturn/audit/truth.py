@@ -65,12 +65,19 @@ def reference_for(
         return reference(operator, state, times, limit, observables, method, keep, progress, threads=threads)
 
     if asked is not None:
-        return certified(asked)
+        try:
+            return certified(asked)
+        except ToleranceError as refusal:
+            raise ToleranceError(
+                f"reference_{refusal}", tolerance=refusal.tolerance, achievable=refusal.achievable
+            ) from None
     try:
         return certified(min(1e-10, tolerance / 100.0))
     except ToleranceError as refusal:
         if refusal.achievable <= tolerance / 100.0:
             return certified(refusal.achievable)
+        if not math.isfinite(refusal.achievable):
+            raise
         raise ToleranceError(
             f"tolerance: cannot be judged in double precision ({tolerance:g}): the reference can be certified to "
             f"{refusal.achievable:g} here, and a hundredth of the tolerance is needed; ask for "

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
-from trueturn.audit.figures import upper
+from trueturn.audit.figures import plain, upper
 from trueturn.audit.result import Row
 from trueturn.audit.search import Search
 from trueturn.reference import Reference
@@ -52,12 +52,13 @@ def proven(reference: Reference) -> tuple[str, ...]:
     return (*found, *certificate.notes)
 
 
-def measured(quantity: str) -> tuple[str, ...]:
+def measured(quantity: str, reference_proven: bool) -> tuple[str, ...]:
     """Return what was only measured."""
     what = "state distance" if quantity == "state" else "observables"
     return (
         f"The error intervals: the {what} of candidate and reference were both computed and compared; the interval holds "
-        "the true error of this circuit on this start state.",
+        "the true error of this circuit on this start state"
+        + ("." if reference_proven else ", as far as the estimated part of the reference's bound does."),
         "The least step counts: the smallest that met the tolerance together with every tested count up to its double.",
     )
 
@@ -70,11 +71,11 @@ def recommendation(rows: Sequence[Row], tolerance: float) -> tuple[Row | None, s
     if not fitting:
         closest = min(rows, key=lambda row: row.error[1])
         return None, (
-            f"No candidate is shown to meet {tolerance:g}; the closest is {closest.label} with {_steps(closest.steps)}, "
+            f"No candidate is shown to meet {plain(tolerance)}; the closest is {closest.label} with {_steps(closest.steps)}, "
             f"whose error is at most {upper(closest.error[1])}."
         )
     best = fitting[0]
-    reason = f"{best.label} with {_steps(best.steps)} meets {tolerance:g} with {_gates(best)}"
+    reason = f"{best.label} with {_steps(best.steps)} meets {plain(tolerance)} with {_gates(best)}"
     if len(fitting) == 1:
         others = "it is the only candidate" if len(rows) == 1 else "no other candidate meets it"
         return best, f"{reason}; {others}."
@@ -103,6 +104,8 @@ def search_note(search: Search, tolerance: float, most_steps: int) -> str:
             )
         else:
             parts.append(f"no step count up to {min(most_steps, last.steps)} meets the tolerance")
+    if search.found and search.cut_off:
+        parts.append(f"step counts above {most_steps} were not tried, so the look at its double is not complete")
     if search.accidental:
         counts = ", ".join(map(str, search.accidental))
         parts.append(f"met by accident at {counts}: a larger tested step count misses")

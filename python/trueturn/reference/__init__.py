@@ -145,6 +145,8 @@ def reference(
             record.take(0.0, begin)
         if keep == "all" or not ascending:
             kept[0.0] = begin
+        del begin
+
     for time, vector in steps:
         now = State.from_array(vector)
         for record in records.values():

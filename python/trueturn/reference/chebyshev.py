@@ -14,12 +14,16 @@ from trueturn.reference.certificate import Certificate
 from trueturn.reference.schedule import Schedule, schedule
 from trueturn.reference.spectrum import spectral_report
 from trueturn.rotations import Rotations
+from trueturn.state import State
 
 __all__ = ["evolve"]
 
 Vector = npt.NDArray[np.complex128]
 Step = tuple[float, Vector]
 Tick = Callable[[int, int], object]
+
+# Times that share an expansion, each at the price of one vector.
+_GROUP = 4
 
 _NOTES = (
     "Truncation: the sum of the dropped Bessel coefficients on a proven spectral interval.",
@@ -65,7 +69,8 @@ def evolve(
     _memory.require((2 + kept) * size, "reference", lambda n: (2 + kept) * (16 << n))
     room = _memory.available_bytes()
     spare = 0 if room is None else max(0, room // 2 - (2 + kept) * size) // size
-    group = max(1, min(len(times), 1 + spare))
+    # The same grouping wherever memory is not scarce, so that results keep their bits from machine to machine.
+    group = max(1, min(len(times), _GROUP, 1 + spare))
     report = spectral_report(operator)
     plan = schedule(operator, (report.low, report.high), times, tolerance, group)
     bounds = {time: pair for time, pair in plan.bounds().items() if time in set(times)}
@@ -118,7 +123,7 @@ def _carry_out(
         done += expansion.degree
         for target, vector in zip(expansion.targets, used, strict=True):
             turn = Rotations([], [], [], operator.qubits, phase=-plan.centre * (target - expansion.start))
-            _native.evolve(vector, turn._circuit, threads, None)
+            State.from_array(vector).apply(turn, threads=threads)
             if target in wanted:
                 yield target, vector
         current, sums[len(used) - 1] = used[-1], current
