@@ -35,7 +35,32 @@ def permutation(names, n):
     return made
 
 
-def expected(matrix, n):
+def annihilator(q, n):
+    """Orbital q in the Jordan-Wigner picture: |1> is an electron."""
+    before = " ".join(f"Z_{k}" for k in range(q))
+    return (oracle.pauli(f"{before} X_{q}", n) + 1j * oracle.pauli(f"{before} Y_{q}", n)) / 2
+
+
+def electron_spins(n):
+    raising = sum(annihilator(q, n).conj().T @ annihilator(q + 1, n) for q in range(0, n, 2))
+    lowering = raising.conj().T
+    z = (raising @ lowering - lowering @ raising) / 2
+    return (raising + lowering) / 2, (raising - lowering) / 2j, z
+
+
+def fermion_move(sites, signs, n):
+    """The unitary that sends c†_q to its sign times c†_{new q}, made from occupations."""
+    new = [2 * sites[q // 2] + q % 2 for q in range(n)]
+    made = np.zeros((2**n, 2**n))
+    for state in range(2**n):
+        order = [new[q] for q in range(n) if state >> q & 1]
+        swaps = sum(a > b for k, a in enumerate(order) for b in order[k + 1 :])
+        minus = swaps + sum(signs[q // 2] for q in range(n) if state >> q & 1)
+        made[sum(1 << q for q in order), state] = (-1) ** minus
+    return made
+
+
+def expected(matrix, n, electronic):
     """Every symmetry decided with matrices alone."""
     x, y, z = (total(letter, n) for letter in "XYZ")
     flip = product("Y", n)
@@ -55,6 +80,11 @@ def expected(matrix, n):
         up = sum(oracle.pauli(f"Z_{q}", n) for q in range(0, n, 2))
         down = sum(oracle.pauli(f"Z_{q}", n) for q in range(1, n, 2))
         found["electron spin z"] = commute(matrix, up - down)
+    if electronic:
+        ex, ey, ez = electron_spins(n)
+        found["electron spin x"] = commute(matrix, ex)
+        found["electron spin y"] = commute(matrix, ey)
+        found["electron spin squared"] = commute(matrix, ex @ ex + ey @ ey + ez @ ez)
     if n > 1:
         found["reflection"] = commute(matrix, permutation([n - 1 - q for q in range(n)], n))
     return found
@@ -73,6 +103,7 @@ MODELS = [
     tt.model.ising(tt.lattice.chain(3), zz=-1, x=0.7, z=0.1),
     tt.model.hubbard(tt.lattice.chain(3), hopping=1.0, repulsion=4.0),
     tt.model.hubbard(tt.lattice.ring(3), hopping=1.0, repulsion=4.0, potential=0.3),
+    tt.model.hubbard(tt.lattice.ring(2), hopping=1.0, repulsion=4.0),
     tt.Operator("X_0 Y_1 - Y_0 X_1"),
     tt.Operator("X_0 Y_1 Z_2 + Y_0 Z_1 X_2 + Z_0 X_1 Y_2 - Y_0 X_1 Z_2 - X_0 Z_1 Y_2 - Z_0 Y_1 X_2"),
     tt.Operator("Z_0 Z_2 + Z_1 Z_3 + 0.5 X_0 + 0.5 X_2 + 0.2 X_1 + 0.2 X_3"),
@@ -85,18 +116,59 @@ def check(h):
     partition = tt.Partition.of(h, "commuting")
     found = symmetries(h, partition)
     matrices = [oracle.dense(h), *map(oracle.dense, partition.parts)]
-    rows = [expected(matrix, h.qubits) for matrix in matrices]
+    n = h.qubits
+    electronic = n % 2 == 0 and commute(matrices[0], total("Z", n))
+    rows = [expected(matrix, n, electronic) for matrix in matrices]
     for name, kept in rows[0].items():
         assert found[name].kept == kept, name
         assert found[name].parts == tuple(row[name] for row in rows[1:]), name
-    shifts = [row.name for row in found if row.name.startswith("translation by ")]
-    assert len(found) == len(rows[0]) + len(shifts)
+    shifts = [row.name for row in found if row.name.startswith("translation by ") and "(" not in row.name]
+    rectangles = [row.name for row in found if row.name.startswith("translation by ") and "(" in row.name]
+    fermions = [row.name for row in found if row.name.startswith("fermion ")]
+    assert len(found) == len(rows[0]) + len(shifts) + len(rectangles) + len(fermions)
+    check_rectangles(found, matrices, n)
+    check_fermions(found, fermions, matrices, n, electronic)
     assert len(shifts) == (h.qubits > 1)
     for name in shifts:
         shift = int(name.removeprefix("translation by "))
         moves = [translations(matrix, h.qubits) for matrix in matrices]
         assert shift == min(moves[0], default=1)
         assert (found[name].kept, *found[name].parts) == tuple(shift in each for each in moves)
+
+
+def check_rectangles(found, matrices, n):
+    """Each kept translation of columns has its row: the least of each rectangle."""
+    columns = {}
+    for rows, width in [(rows, n // rows) for rows in range(2, n) if n % rows == 0]:
+        for d in [d for d in range(1, width) if width % d == 0]:
+            names = [q // width * width + (q % width + d) % width for q in range(n)]
+            kept = [commute(matrix, permutation(names, n)) for matrix in matrices]
+            if kept[0]:
+                columns[f"translation by {d} column{'s' * (d > 1)} ({rows} × {width})"] = tuple(kept[1:])
+                break
+    assert {row.name: row.parts for row in found if "column" in row.name and "fermion" not in row.name} == columns
+
+
+def check_fermions(found, names, matrices, n, electronic):
+    sites = n // 2
+    if not electronic or sites < 2:
+        assert not names
+        return
+    for name in names:
+        if "column" in name or "row" in name:
+            assert name.endswith("2 × 2 sites)") and sites == 4
+            step = 2 if "row" in name else None
+            new = [(s + 2) % 4 if step else s ^ 1 for s in range(4)]
+            crossed = [s >= 2 if step else s % 2 for s in range(4)]
+        elif "reflection" in name:
+            new, crossed = [sites - 1 - s for s in range(sites)], [False] * sites
+        else:
+            step = int(name.split()[3])
+            new, crossed = [(s + step) % sites for s in range(sites)], [s + step >= sites for s in range(sites)]
+        signs = crossed if "antiperiodic" in name else [False] * sites
+        kept = [commute(matrix, fermion_move(new, signs, n)) for matrix in matrices]
+        assert (found[name].kept, *found[name].parts) == tuple(kept), name
+    assert sum("column" not in name and "row" not in name for name in names) == 2
 
 
 @pytest.mark.parametrize("h", MODELS)
@@ -140,6 +212,7 @@ def test_known_models_have_the_symmetries_of_the_textbooks():
     assert ising & (spins | everything) == {"parity x", "translation by 1", "reflection", "conjugation"}
     hubbard = set(symmetries(tt.model.hubbard(tt.lattice.square(2, 2), hopping=1.0, repulsion=4.0)).kept)
     assert {"particle number", "electron spin z", "parity z", "conjugation"} <= hubbard
+    assert {"electron spin x", "electron spin y", "electron spin squared"} <= hubbard
     assert not hubbard & {"spin x", "spin y", "spin squared"}
 
 
@@ -204,7 +277,7 @@ def test_endangered_names_what_a_partition_breaks():
     bond = symmetries(h, tt.Partition.of(h, "bond"))
     assert bond.endangered == ("translation by 1",)
     assert bond["translation by 1"].broken_by == (0, 1)
-    assert [row.name for row in bond] == [row.name for row in bond.rows] and len(bond) == 13
+    assert [row.name for row in bond] == [row.name for row in bond.rows] and len(bond) == 19
 
 
 def test_the_table_reads_as_printed():
@@ -260,6 +333,12 @@ H = tt.Operator("X_0 X_1 + Z_0")
             lambda: symmetries(H, tt.Partition([tt.Operator("X_0 X_1")])),
             errors.PartitionError,
             ["parts: do not sum", "Z_0 lacks 1.0"],
+        ),
+        (lambda: symmetries(H, lattice=2), errors.ArgumentError, ["lattice:", "(2)", "lattice.ring(4)"]),
+        (
+            lambda: symmetries(H, lattice=tt.lattice.ring(3)),
+            errors.ArgumentError,
+            ["lattice:", "2 qubits (ring(3) of 3 sites)", "up and down"],
         ),
         (lambda: symmetries(H, also=[1]), errors.ArgumentError, ["also:", "([1])", "{name:"]),
         (lambda: symmetries(H, also={"spin z": H}), errors.ArgumentError, ["also:", "('spin z')", "another"]),

@@ -14,115 +14,27 @@ Everything is decided in the Pauli algebra, on as many qubits as operators have:
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator, Mapping, Sequence
-from dataclasses import dataclass
-
-import numpy as np
+from collections.abc import Callable, Mapping, Sequence
 
 from trueturn import _arguments, _memory
+from trueturn import _symmetry_electrons as electrons
+from trueturn._symmetry_relabelled import relabelling, relabellings
+from trueturn._symmetry_rows import Symmetries, Symmetry, row
 from trueturn.errors import ArgumentError, OperatorError, PartitionError
+from trueturn.lattice import Lattice
 from trueturn.operator import Operator
 from trueturn.partition import Partition
 
 __all__ = ["Symmetries", "Symmetry", "symmetries"]
 
-_RELATIVE = 2.0**-50  # coefficients equal up to eight units in the last place of the largest
 Relabelling = Mapping[int, int]
-
-
-@dataclass(frozen=True)
-class Symmetry:
-    """One symmetry: whether the Hamiltonian and each part keep it.
-
-    Attributes
-    ----------
-    name : str
-    meaning : str
-        What is conserved, or what is done to the qubits.
-    kept : bool
-        By the Hamiltonian.
-    parts : tuple of bool
-        By each part, in order; empty when no partition was given.
-    quantity : Operator or None
-        The conserved operator; None for relabellings and time reversals.
-    """
-
-    name: str
-    meaning: str
-    kept: bool
-    parts: tuple[bool, ...]
-    quantity: Operator | None
-
-    @property
-    def broken_by(self) -> tuple[int, ...]:
-        """Numbers of the parts that break it."""
-        return tuple(number for number, keeps in enumerate(self.parts) if not keeps)
-
-
-@dataclass(frozen=True)
-class Symmetries:
-    """Symmetries of a Hamiltonian and of the parts of a partition; prints as a table.
-
-    Attributes
-    ----------
-    rows : tuple of Symmetry
-    """
-
-    rows: tuple[Symmetry, ...]
-
-    @property
-    def kept(self) -> tuple[str, ...]:
-        """Names of those that the Hamiltonian has."""
-        return tuple(row.name for row in self.rows if row.kept)
-
-    @property
-    def endangered(self) -> tuple[str, ...]:
-        """Names of those that the Hamiltonian has and some part breaks."""
-        return tuple(row.name for row in self.rows if row.kept and row.broken_by)
-
-    def __getitem__(self, name: str) -> Symmetry:
-        for row in self.rows:
-            if row.name == name:
-                return row
-        names = tuple(row.name for row in self.rows)
-        raise ArgumentError(
-            f"name: is unknown ({name!r}); choose one of {', '.join(map(repr, names))}",
-            argument="name",
-            value=name,
-            choices=names,
-        )
-
-    def __iter__(self) -> Iterator[Symmetry]:
-        return iter(self.rows)
-
-    def __len__(self) -> int:
-        return len(self.rows)
-
-    def __repr__(self) -> str:
-        with_parts = any(row.parts for row in self.rows)
-        table = [("symmetry", "Hamiltonian", "parts") if with_parts else ("symmetry", "Hamiltonian")]
-        for row in self.rows:
-            cells = (row.name, "keeps" if row.kept else "breaks")
-            table.append((*cells, _parts_text(row)) if with_parts else cells)
-        widths = [max(map(len, column)) for column in zip(*table, strict=True)]
-        lines = ["  ".join(cell.ljust(width) for cell, width in zip(cells, widths, strict=True)) for cells in table]
-        return "\n".join(line.rstrip() for line in lines)
-
-
-def _parts_text(row: Symmetry) -> str:
-    broken = row.broken_by
-    if not broken:
-        return "all keep"
-    shown = ", ".join(map(str, broken[:8])) + (", …" if len(broken) > 8 else "")
-    count = "all" if len(broken) == len(row.parts) else f"{len(broken)} of {len(row.parts)}"
-    warning = "" if not row.kept else "; may drift" if row.quantity is not None else "; may be lost"
-    return f"{count} break ({shown}){warning}"
 
 
 def symmetries(
     operator: Operator,
     partition: Partition | None = None,
     *,
+    lattice: Lattice | None = None,
     also: Mapping[str, Operator | Relabelling] | None = None,
 ) -> Symmetries:
     """Find which symmetries a Hamiltonian has, and which of them each part keeps.
@@ -132,6 +44,10 @@ def symmetries(
     operator : Operator
     partition : Partition, optional
         Of this operator.
+    lattice : Lattice, optional
+        Whose sites are the qubits, or pairs of qubits (2s, 2s + 1) as in `trueturn.model.hubbard`. Its translations
+        and reflections, those that map bonds to bonds, are then looked at in place of the ones below: as moves of
+        qubits, or of electrons.
     also : mapping of str to Operator or mapping of int to int, optional
         Further symmetries to look at: a quantity that may be conserved, or a relabelling {old: new} that
         permutes the qubits.
@@ -145,12 +61,23 @@ def symmetries(
           as ``spin z`` as far as conservation goes.
         - ``electron spin z``: Σ over pairs of qubits (2s, 2s+1) of (Z_{2s+1} - Z_{2s})/4, up before down as in
           `trueturn.model.hubbard`; for even n only.
+        - ``electron spin x``, ``electron spin y``, ``electron spin squared``: of the same electrons, from
+          S+ = Σ c†_up c_down; for even n and a kept particle number.
         - ``spin x``, ``spin y``, ``spin z``: Σ X_q/2 and so on, of n spins 1/2.
         - ``spin squared``: (Σ X/2)² + (Σ Y/2)² + (Σ Z/2)².
         - ``parity x``, ``parity y``, ``parity z``: the product of X (Y, Z) over all qubits.
         - ``translation by d``: qubit q becomes q + d modulo n; d is the least divisor of n below n that is a
           symmetry, or 1 when there is none; for n of at least 2.
+        - ``translation by d columns (r × c)``: the same of columns, with qubit number row c + column; where the
+          Hamiltonian keeps it, for each n = r c. ``translation by d rows (r × c)`` beside it where it is the
+          translation of the ring above.
         - ``reflection``: qubit q becomes n - 1 - q; for n of at least 2.
+        - ``fermion translation by d (sites)``, ``fermion translation by d columns (r × c sites)``, ``fermion reflection
+          (sites)``: the same with n/2 sites of electrons and with the signs of fermions, periodic. ``antiperiodic``
+          in the name: with a further sign for electrons that cross the boundary, looked at where the periodic one is
+          not kept. For at least two sites and a kept particle number, and not where `lattice` has n sites.
+        - with a lattice in two dimensions, ``reflection of rows (r × c)``, ``reflection of columns (r × c)`` and, of
+          a square, ``reflection in the diagonal (r × c)``.
         - ``conjugation``: time reversal without spin, complex conjugation in the Z basis.
         - ``spin-flip time reversal``: conjugation followed by Y on all qubits.
         - those of `also`.
@@ -162,12 +89,15 @@ def symmetries(
     PartitionError
         `partition` is not a Partition, or does not sum to the operator.
     ArgumentError
-        `also` is not a mapping, or a name in it is taken.
+        `lattice` is not a Lattice, or has neither n nor n/2 sites; `also` is not a mapping, or a name in it is taken.
 
     Notes
     -----
     Brackets count as vanished as in `Operator.bracket_vanishes`; a relabelled operator as equal when no coefficient
-    differs by more than 2⁻⁵⁰ times the largest. A sum of parts can have a symmetry that no part has, and
+    differs by more than 2⁻⁵⁰ times the largest. Rows of electrons and rows of spins are two pictures of the same
+    qubits; which one is meant, the model decides. A boundary whose sign depends on the parity of the particle
+    number (as where a ring of spins becomes fermions) is no symmetry of the whole operator, and is not looked for in
+    single sectors. A sum of parts can have a symmetry that no part has, and
     never lacks one that all parts have. Cost is small beside anything done with states: the
     total spin squared has 3 n²/2 strings, and its bracket is left out where all three components are kept.
 
@@ -180,20 +110,28 @@ def symmetries(
     >>> found["spin z"].kept, found["spin z"].broken_by
     (True, (0, 1))
     >>> print(found)
-    symmetry                 Hamiltonian  parts
-    particle number          keeps        2 of 3 break (0, 1); may drift
-    electron spin z          breaks       2 of 3 break (0, 1)
-    spin x                   breaks       2 of 3 break (1, 2)
-    spin y                   breaks       2 of 3 break (0, 2)
-    spin z                   keeps        2 of 3 break (0, 1); may drift
-    spin squared             keeps        all break (0, 1, 2); may drift
-    parity x                 breaks       1 of 3 break (2)
-    parity y                 breaks       1 of 3 break (2)
-    parity z                 keeps        all keep
-    translation by 1         keeps        all keep
-    reflection               keeps        all keep
-    conjugation              keeps        all keep
-    spin-flip time reversal  breaks       1 of 3 break (2)
+    symmetry                          Hamiltonian  parts
+    particle number                   keeps        2 of 3 break (0, 1); may drift
+    electron spin z                   breaks       2 of 3 break (0, 1)
+    electron spin x                   breaks       all break (0, 1, 2)
+    electron spin y                   breaks       all break (0, 1, 2)
+    electron spin squared             breaks       2 of 3 break (0, 1)
+    spin x                            breaks       2 of 3 break (1, 2)
+    spin y                            breaks       2 of 3 break (0, 2)
+    spin z                            keeps        2 of 3 break (0, 1); may drift
+    spin squared                      keeps        all break (0, 1, 2); may drift
+    parity x                          breaks       1 of 3 break (2)
+    parity y                          breaks       1 of 3 break (2)
+    parity z                          keeps        all keep
+    translation by 1                  keeps        all keep
+    translation by 1 column (2 × 2)   keeps        all keep
+    reflection                        keeps        all keep
+    fermion translation by 1 (sites)  breaks       2 of 3 break (0, 1)
+    fermion reflection (sites)        breaks       2 of 3 break (0, 1)
+    conjugation                       keeps        all keep
+    spin-flip time reversal           breaks       1 of 3 break (2)
+    electron, fermion: qubits 2s and 2s + 1 are the up and down orbitals of site s (Jordan-Wigner)
+    spin x, y, z, squared: another picture, in which each qubit is a spin 1/2
     """
     if not isinstance(operator, Operator):
         raise OperatorError(
@@ -207,18 +145,14 @@ def symmetries(
         )
     if partition is not None:
         partition.require_sum(operator)
+    _require_fitting(lattice, operator.qubits)
     judged = [operator, *(partition.parts if partition is not None else ())]
-    rows = [*_conserved(judged), *_relabellings(judged), *_reversals(judged)]
-    for name, symmetry in _further(also, [row.name for row in rows]).items():
+    rows = _conserved(judged)
+    electronic = operator.qubits % 2 == 0 and rows[0].kept
+    rows += [*relabellings(judged, lattice, electronic), *_reversals(judged)]
+    for name, symmetry in _further(also, [each.name for each in rows]).items():
         rows.append(_custom(name, symmetry, judged))
     return Symmetries(tuple(rows))
-
-
-def _row(
-    name: str, meaning: str, judged: list[Operator], keeps: Callable[[Operator], bool], quantity: Operator | None = None
-) -> Symmetry:
-    kept, *parts = map(keeps, judged)
-    return Symmetry(name, meaning, kept, tuple(parts), quantity)
 
 
 def _conserved(judged: list[Operator]) -> list[Symmetry]:
@@ -229,6 +163,8 @@ def _conserved(judged: list[Operator]) -> list[Symmetry]:
     if n % 2 == 0:
         staggered = _total("z", n, [-0.25, 0.25] * (n // 2))
         rows.append(_quantity("electron spin z", "half of up minus down, on even and odd qubits", staggered, judged))
+        if rows[0].kept:
+            rows += _electron_spins(rows[1], judged)
     components = [
         _quantity(f"spin {axis}", f"Σ {axis.upper()}/2 over all qubits", spin, judged) for axis, spin in spins.items()
     ]
@@ -241,7 +177,7 @@ def _conserved(judged: list[Operator]) -> list[Symmetry]:
 
 
 def _quantity(name: str, meaning: str, quantity: Operator, judged: list[Operator]) -> Symmetry:
-    return _row(name, meaning, judged, _commuting_with(quantity), quantity)
+    return row(name, meaning, judged, _commuting_with(quantity), quantity)
 
 
 def _commuting_with(quantity: Operator) -> Callable[[Operator], bool]:
@@ -275,26 +211,38 @@ def _squared(qubits: int, touching: Sequence[int]) -> Operator:
     return Operator.from_masks(x, z, [0.5] * (3 * len(pairs)) + [0.75 * qubits], qubits)
 
 
-def _relabellings(judged: list[Operator]) -> list[Symmetry]:
+def _electron_spins(component: Symmetry, judged: list[Operator]) -> list[Symmetry]:
+    """Spare the bracket of the square as `_spin_squared` does; pairs of sites away from an operator commute with it."""
     n = judged[0].qubits
-    if n < 2:
-        return []
-    shifts = {d: {q: (q + d) % n for q in range(n)} for d in range(1, n) if n % d == 0}
-    shift = next((d for d, names in shifts.items() if _same_after(judged[0], names)), 1)
-    mirror = {q: n - 1 - q for q in range(n)}
-    return [
-        _relabelling(f"translation by {shift}", f"qubit q becomes q + {shift} modulo {n}", shifts[shift], judged),
-        _relabelling("reflection", f"qubit q becomes {n - 1} - q", mirror, judged),
+    rows = [
+        _quantity(f"electron spin {axis}", "from S+ = Σ c†_up c_down of electrons", electrons.spin(axis, n), judged)
+        for axis in "xy"
     ]
+    known = [all(each) for each in zip(*((each.kept, *each.parts) for each in (component, *rows)), strict=True)]
+    kept, *parts = (
+        sure or electrons.spin_squared(n, operator.support()).bracket_vanishes(operator)
+        for sure, operator in zip(known, judged, strict=True)
+    )
+    total = electrons.spin_squared(n, range(n))
+    return [*rows, Symmetry("electron spin squared", "total spin of electrons, S(S + 1)", kept, tuple(parts), total)]
 
 
-def _relabelling(name: str, meaning: str, names: Relabelling, judged: list[Operator]) -> Symmetry:
-    return _row(name, meaning, judged, lambda operator: _same_after(operator, names))
-
-
-def _same_after(operator: Operator, names: Relabelling) -> bool:
-    largest = float(np.max(np.abs(operator.coefficients), initial=0.0))
-    return operator.relabel(names).near(operator, _RELATIVE * largest)
+def _require_fitting(lattice: object, qubits: int) -> None:
+    if lattice is None:
+        return
+    if not isinstance(lattice, Lattice):
+        raise ArgumentError(
+            f"lattice: is not a Lattice ({lattice!r}); make one with trueturn.lattice, for example lattice.ring(4)",
+            argument="lattice",
+            value=lattice,
+        )
+    if lattice.sites != qubits and 2 * lattice.sites != qubits:
+        raise ArgumentError(
+            f"lattice: does not fit {qubits} qubits ({lattice.name} of {lattice.sites} sites); "
+            "give one with a site for each qubit, or for each two (up and down) of electrons",
+            argument="lattice",
+            value=lattice,
+        )
 
 
 def _reversals(judged: list[Operator]) -> list[Symmetry]:
@@ -307,8 +255,8 @@ def _reversals(judged: list[Operator]) -> list[Symmetry]:
         return all((int(x) | int(z)).bit_count() % 2 == 0 for x, z in strings)
 
     return [
-        _row("conjugation", "complex conjugation in the Z basis", judged, real),
-        _row("spin-flip time reversal", "complex conjugation, then Y on all qubits", judged, even),
+        row("conjugation", "complex conjugation in the Z basis", judged, real),
+        row("spin-flip time reversal", "complex conjugation, then Y on all qubits", judged, even),
     ]
 
 
@@ -345,4 +293,4 @@ def _custom(name: str, symmetry: object, judged: list[Operator]) -> Symmetry:
             f"also: {name!r} does not permute qubits ({dict(symmetry)!r}); name each new qubit once, and among the old",
             argument="also",
         )
-    return _relabelling(name, "given relabelling", dict(zip(old, new, strict=True)), judged)
+    return relabelling(name, "given relabelling", dict(zip(old, new, strict=True)), judged)
