@@ -89,10 +89,10 @@ def test_the_mean_over_samples_is_that_of_the_averaged_channel(name):
     assert farthest > 2.0
 
 
-def outcomes(ensemble, draws=400):
+def outcomes(ensemble, count=400):
     """The distinct circuits among many samples, multiplied out."""
     found = {}
-    for circuit in ensemble.samples(draws):
+    for circuit in ensemble.samples(count):
         key = tuple(zip(circuit.x_masks, circuit.z_masks, circuit.angles, strict=True))
         found.setdefault(key, circuits.matrix(circuit))
     return found
@@ -189,16 +189,16 @@ def test_neighbouring_runs_of_one_part_merge_across_steps():
 
 def test_qdrift_draws_terms_in_proportion_to_their_size():
     operator = tt.Operator("0.5 X_0 - 0.3 Y_0 + 0.2 Z_0 + 7")
-    samples, repeats = 4000, 25
-    unit = 1.0 * 2.0 / samples
+    draws, repeats = 4000, 25
+    unit = 1.0 * 2.0 / draws
     drawn = Counter()
-    for circuit in randomised.qdrift(operator, 2.0, samples, seed=5).samples(repeats):
+    for circuit in randomised.qdrift(operator, 2.0, draws, seed=5).samples(repeats):
         for x, z, angle in zip(circuit.x_masks, circuit.z_masks, circuit.angles, strict=True):
             times = angle / unit
             assert abs(times - round(times)) <= 1e-9 and (times < 0) == ((x, z) == (1, 1))
             drawn[x, z] += abs(round(times))
         assert circuit.phase == -14.0
-    total = samples * repeats
+    total = draws * repeats
     assert sum(drawn.values()) == total
     for string, chance in {(1, 0): 0.5, (1, 1): 0.3, (0, 1): 0.2}.items():
         # A mean of `total` values 0 or 1.
@@ -273,8 +273,8 @@ def test_random_orders_refuse(family, arguments, kind, message):
 @pytest.mark.parametrize(
     ("arguments", "message"),
     [
-        ({"samples": 0}, r"samples: is not a whole number from 1 \(0\)"),
-        ({"samples": 10**8}, "samples: makes too many rotations"),
+        ({"draws": 0}, r"draws: is not a whole number from 1 \(0\)"),
+        ({"draws": 10**8}, "draws: makes too many rotations"),
         ({"seed": "a"}, r"seed: is not a whole number from 0 \('a'\)"),
         ({"time": np.inf}, "time: is not a finite number"),
         ({"time": 1e308, "operator": tt.Operator("3 X_0")}, "time: makes an angle too large"),
@@ -288,7 +288,7 @@ def test_random_orders_refuse(family, arguments, kind, message):
 )
 def test_qdrift_refuses(arguments, message):
     with pytest.raises(tt.errors.ArgumentError, match=message):
-        randomised.qdrift(**({"operator": SPIN, "time": 1.0, "samples": 5, "seed": 0} | arguments))
+        randomised.qdrift(**({"operator": SPIN, "time": 1.0, "draws": 5, "seed": 0} | arguments))
 
 
 def test_what_is_no_operator_or_on_other_qubits_is_refused():
@@ -296,12 +296,27 @@ def test_what_is_no_operator_or_on_other_qubits_is_refused():
         randomised.qdrift("X_0", 1.0, 5, seed=0)
     with pytest.raises(tt.errors.OperatorError, match="tail: acts on 2 qubits and the partition on 1"):
         randomised.partly("lie", AXES, tt.Operator("X_1"), 1.0, 1, 1, seed=0)
-    with pytest.raises(tt.errors.ArgumentError, match="samples: is not a whole number from 1"):
+    with pytest.raises(tt.errors.ArgumentError, match="draws: is not a whole number from 1"):
         randomised.partly("lie", AXES, TAIL, 1.0, 1, 0, seed=0)
     with pytest.raises(tt.errors.ArgumentError, match="time: makes an angle too large"):
         randomised.partly("lie", AXES, 10 * TAIL, 1e308, 1, 1, seed=0)
     with pytest.raises(tt.errors.ArgumentError, match="cutoff: is not a finite number"):
         randomised.divided(SPIN, np.nan)
+
+
+def test_draws_in_a_circuit_and_circuits_have_names_of_their_own():
+    """`draws` counts rotations in one circuit, `samples` and `count` circuits."""
+    drift = randomised.qdrift(SPIN, time=1.0, draws=7, seed=0)
+    assert drift.draws == 7 and not hasattr(drift, "count")
+    assert randomised.partly("lie", LARGE, TAIL, time=1.0, steps=1, draws=6, seed=0).draws == 6
+    assert (
+        randomised.qdrift_bound(one_norm=1.0, time=1.0, draws=randomised.least_qdrift_draws(1.0, 1.0, 0.1)).half_diamond
+        <= 0.1
+    )
+    for make in (randomised.qdrift, randomised.qdrift_bound):
+        with pytest.raises(TypeError, match="samples"):
+            make(SPIN, time=1.0, samples=7)
+    assert len(drift.samples(3)) == drift.average(tt.State.product("0"), {}, 3).count == 3
 
 
 @pytest.mark.parametrize("index", [-1, 0.5, True])

@@ -156,7 +156,7 @@ def divided(operator: Operator, cutoff: float) -> tuple[Operator, Operator]:
 
 
 def partly(
-    formula: Formula | str, partition: Partition, tail: Operator, time: float, steps: int, samples: int, seed: int
+    formula: Formula | str, partition: Partition, tail: Operator, time: float, steps: int, draws: int, seed: int
 ) -> Partly:
     """Apply a product formula to large parts, and draw a tail of small terms by qDRIFT wherever its turn comes.
 
@@ -171,7 +171,7 @@ def partly(
         Total time, in inverse units of the coefficients; may be negative.
     steps : int
         At least 1.
-    samples : int
+    draws : int
         Rotations drawn each time the tail's turn comes, at least 1. That is once a step for lie and strang; see
         `Partly.places`.
     seed : int
@@ -202,7 +202,7 @@ def partly(
     >>> from trueturn import randomised
     >>> large, tail = randomised.divided(tt.Operator("Z_0 Z_1 + 0.9 X_0 + 0.01 Y_0 + 0.02 X_1"), 0.1)
     >>> parts = tt.Partition.of(large, "commuting")
-    >>> mixed = randomised.partly("strang", parts, tail, time=1.0, steps=10, samples=3, seed=5)
+    >>> mixed = randomised.partly("strang", parts, tail, time=1.0, steps=10, draws=3, seed=5)
     >>> mixed.places
     10
     """
@@ -216,12 +216,12 @@ def partly(
         )
     length = finite("time", time, "give a real number, negative to run backwards")
     count = whole("steps", steps, 1, "give a number of equal steps, such as 10")
-    draws = whole("samples", samples, 1, "give how many rotations to draw")
+    drawn = whole("draws", draws, 1, "give how many rotations to draw")
     number = whole("seed", seed, 0, "give an integer of at least 0")
     for size in (parts.identity + small.identity_coefficient, small.without_identity().one_norm()):
         if not math.isfinite(size * length):
             raise refuse_long_time(length)
     stages = count * len(rule.stages)
-    require_size("samples", draws, stages * draws if len(small) else 0)
-    require_size("steps", count, stages * (sum(map(len, parts.parts)) + (draws if len(small) else 0)))
-    return Partly(rule, parts, small, length, count, draws, number)
+    require_size("draws", drawn, stages * drawn if len(small) else 0)
+    require_size("steps", count, stages * (sum(map(len, parts.parts)) + (drawn if len(small) else 0)))
+    return Partly(rule, parts, small, length, count, drawn, number)
