@@ -210,6 +210,25 @@ def test_samples_that_fail_are_named_and_the_others_kept():
     assert stopped.value.partial.indices == (0, 1, 2, 3, 4)
 
 
+def test_a_sample_that_fails_costs_none_of_its_chunk():
+    """200 samples go out in chunks of 4, with threads as with processes, whatever the exception."""
+    context, seen = multiprocessing.get_context("spawn"), []
+    for kind, names, wrong in (
+        (doomed.Failing, (5, 8), "RuntimeError: no sample 5"),
+        (doomed.Stubborn, (7, 100, 199), r"Unpicklable: no sample (7|100|199)"),
+    ):
+        failing = kind(SPIN, 1.0, 20, 3)
+        with ThreadPoolExecutor(2) as threads, ProcessPoolExecutor(1, mp_context=context) as processes:
+            for executor in (threads, processes):
+                with pytest.raises(tt.errors.EnsembleError, match=wrong) as stopped:
+                    failing.average(START, Z, 200, executor=executor, progress=lambda *now: seen.append(now))
+                assert stopped.value.missing == names and seen[-1] == (200 - len(names), 200)
+                kept = stopped.value.partial
+                assert kept.indices == tuple(k for k in range(200) if k not in names)
+                plain = DRIFT.average(START, Z, 200)
+                assert np.array_equal(kept.values["z"], plain.values["z"][list(kept.indices)])
+
+
 def test_an_exception_of_the_progress_callback_passes_through():
     def stop(finished, total):
         raise KeyError(f"{finished} of {total}")
