@@ -238,11 +238,72 @@ def test_partly_draws_the_tail_once_a_step_and_leaves_the_rest_in_place():
             assert held[x, z] == pytest.approx(c, rel=1e-14)
 
 
+@pytest.mark.parametrize(("formula", "places"), [("lie", 4), ("strang", 4), ("suzuki-4", 20)])
+def test_without_large_terms_the_tail_has_as_many_places_as_with_them(formula, places):
+    nothing, tail = randomised.divided(TAIL + 0.5 * tt.Operator("1", qubits=1), 10.0)
+    alone = randomised.partly(formula, tt.Partition.of(nothing, "single"), tail, 2.0, 4, 3, seed=1)
+    assert alone.places == randomised.partly(formula, AXES, tail, 2.0, 4, 3, seed=1).places == places
+    circuit = alone.sample(0)
+    assert circuit.phase == -1.0
+    if places == 4:
+        # One place a step: 3 rotations by λ t / (4 · 3) = 0.7 · 2 / 12 each, none split, joined in equal neighbours.
+        turns = np.abs(circuit.angles) / (0.7 * 2.0 / 12)
+        assert np.abs(turns - np.round(turns)).max() <= 1e-12 and round(turns.sum()) == 12 and turns.max() < 3.5
+
+
 def test_an_operator_of_the_identity_alone_is_a_phase():
     circuit = randomised.qdrift(tt.Operator("2.0", qubits=1), 1.5, 10, seed=0).sample(0)
     assert (circuit.count, circuit.phase) == (0, -3.0)
     nothing = randomised.qdrift(tt.Operator("2.0", qubits=1), 1.5, 10, seed=0).channel_bound()
     assert nothing.half_diamond == 0.0
+
+
+def takers():
+    """Everything that takes a whole number, by the number's name."""
+    lie, start = tt.formula("lie"), tt.State.product("0")
+    drift = randomised.qdrift(SPIN, 1.0, 3, seed=0)
+    circuit = lie.rotations(AXES, 1.0, 2)
+    return {
+        "permuted seed": lambda n: randomised.permuted(lie, AXES, 1.0, 3, seed=n),
+        "permuted steps": lambda n: randomised.permuted(lie, AXES, 1.0, n, seed=0),
+        "directed seed": lambda n: randomised.directed(lie, AXES, 1.0, 3, seed=n),
+        "directed steps": lambda n: randomised.directed(lie, AXES, 1.0, n, seed=0),
+        "qdrift seed": lambda n: randomised.qdrift(SPIN, 1.0, 3, seed=n),
+        "qdrift draws": lambda n: randomised.qdrift(SPIN, 1.0, n, seed=0),
+        "partly seed": lambda n: randomised.partly(lie, LARGE, TAIL, 1.0, 3, 2, seed=n),
+        "partly steps": lambda n: randomised.partly(lie, LARGE, TAIL, 1.0, n, 2, seed=0),
+        "partly draws": lambda n: randomised.partly(lie, LARGE, TAIL, 1.0, 3, n, seed=0),
+        "framed seed": lambda n: randomised.framed(circuit, seed=n),
+        "framed every": lambda n: randomised.framed(circuit, seed=0, every=n),
+        "sample index": drift.sample,
+        "samples count": drift.samples,
+        "average count": lambda n: drift.average(start, {}, n).single_sample_state_errors,
+        "average threads": lambda n: drift.average(start, {}, 2, threads=n).single_sample_state_errors,
+        "qdrift_bound draws": lambda n: randomised.qdrift_bound(1.0, 1.0, n),
+        "random_direction_bound parts": lambda n: randomised.random_direction_bound(n, 1.0, 1.0, 3),
+        "random_direction_bound steps": lambda n: randomised.random_direction_bound(3, 1.0, 1.0, n),
+    }
+
+
+@pytest.mark.parametrize("name", takers())
+def test_whole_numbers_are_the_same_everywhere(name):
+    take = takers()[name]
+    for number in (np.int64(2), np.int8(2), np.uint64(2), np.array(2)):
+        assert take(number) == take(2)
+    for number in (
+        2.0,
+        np.float64(2.0),
+        "2",
+        True,
+        np.True_,
+        np.array([2]),
+        np.array([2, 2]),
+        2 + 0j,
+        -1,
+        np.int64(-1),
+    ):
+        with pytest.raises(tt.errors.ArgumentError, match=f"{name.split()[1]}: "):
+            take(number)
 
 
 def bad(**changed):

@@ -14,7 +14,7 @@ from trueturn import _threads
 from trueturn.errors import ArgumentError, EnsembleError, StateShapeError
 from trueturn.operator import Operator
 from trueturn.randomised.channel import ChannelBound
-from trueturn.randomised.checks import checked_operator, whole
+from trueturn.randomised.checks import as_int, checked_operator, whole
 from trueturn.randomised.ensemble import Ensemble
 from trueturn.randomised.truth import Truth, truth_of
 from trueturn.randomised.work import FIXED_COLUMNS, Row, Task, run
@@ -149,7 +149,7 @@ def averaged(
     if threads is None and executor is not None:
         threads = 1
     if threads is not None:
-        threads = _threads.resolve(threads)
+        threads = _threads.resolve(as_int(threads))
     exact = truth.state
     task = Task(
         ensemble,

@@ -53,7 +53,12 @@ class Partly(Ensemble):
 
     @property
     def _tail_place(self) -> int:
-        return len(self.partition.parts)
+        """Number of the tail among the parts.
+
+        Without large terms an empty part stands before it, so that the tail's runs do not merge over all steps into
+        a single place.
+        """
+        return max(1, len(self.partition.parts))
 
     @property
     def qubits(self) -> int:
@@ -104,7 +109,7 @@ class Partly(Ensemble):
                 for part, weight in runs:
                     if part == self._tail_place:
                         self._sampler.write(columns, generator, weight * step, self.draws)
-                    else:
+                    elif part < len(self.partition.parts):
                         writer.write(columns, part, weight)
         phase = 0.0 - (self.partition.identity + self.tail.identity_coefficient) * self.total_time
         return columns.rotations(self.qubits, phase, self.total_time)
@@ -172,8 +177,8 @@ def partly(
     steps : int
         At least 1.
     draws : int
-        Rotations drawn each time the tail's turn comes, at least 1. That is once a step for lie and strang; see
-        `Partly.places`.
+        Rotations drawn each time the tail's turn comes, at least 1. That is once a step for lie and strang, with
+        large terms or without; see `Partly.places`.
     seed : int
         At least 0.
 
