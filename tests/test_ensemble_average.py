@@ -8,6 +8,7 @@ from concurrent.futures import ProcessPoolExecutor, ThreadPoolExecutor
 
 import numpy as np
 import pytest
+import scipy.stats
 
 import channels
 import circuits
@@ -15,6 +16,7 @@ import doomed
 import oracle
 import trueturn as tt
 from trueturn import randomised
+from trueturn.randomised.estimates import CONFIDENCE, estimated, sampling_width
 
 SPIN = tt.Operator("0.6 X_0 + 0.4 Z_0")
 DRIFT = randomised.qdrift(SPIN, 1.0, 20, seed=3)
@@ -142,7 +144,44 @@ def test_a_reference_at_several_times_is_read_at_the_ensembles_own():
 def test_one_sample_has_no_standard_error():
     found = DRIFT.average(START, Z, 1, reference=spin_reference())
     assert found.observables["z"].standard_error == math.inf
-    assert found.observables["z"].error[0] == 0.0 and found.observables["z"].error[1] == math.inf
+    # All that is certain is the range of <Z>, 2, and the bounds on norm, reference and rounding, 1e-8 in all.
+    z = found.observables["z"]
+    assert z.error[0] == 0.0 and 2.0 <= z.error[1] - abs(z.mean - z.exact) <= 2.0 + 1e-8
+
+
+@pytest.mark.parametrize("count", [2, 3, 5, 20])
+def test_intervals_hold_the_exact_error_of_the_averaged_channel_as_often_as_stated(count):
+    """Each is missed with probability 0.003 at most, so that 300 seeds miss m or more with that of a binomial tail."""
+    reference = spin_reference()
+    target = oracle.evolution(SPIN, 1.0) @ START.amplitudes
+    for draws in (4, 20):
+        channel = channels.drift(SPIN, 1.0, draws)
+        z = channels.expectation(channel, START.amplitudes, oracle.dense(Z["z"]))
+        off = abs(z - channels.expectation(channels.ideal(SPIN, 1.0), START.amplitudes, oracle.dense(Z["z"])))
+        infidelity = 1 - channels.expectation(channel, START.amplitudes, np.outer(target, target.conj()))
+        missed = {"z": 0, "infidelity": 0}
+        for seed in range(300):
+            found = randomised.qdrift(SPIN, 1.0, draws, seed).average(START, Z, count, reference=reference)
+            low, high = found.observables["z"].error
+            missed["z"] += not low <= off <= high
+            low, high = found.infidelity.error
+            missed["infidelity"] += not low <= infidelity <= high
+        allowed = scipy.stats.binom.ppf(1 - 1e-9, 300, 1 - CONFIDENCE)
+        assert allowed <= 11 and max(missed.values()) <= allowed
+
+
+def test_intervals_hold_where_rare_samples_matter_and_narrow_with_their_number():
+    """Values 0 and, one in 50, 1: few samples see no spread at all, which multiples of it take for certainty."""
+    generator = np.random.default_rng(8)
+    for count in (2, 3, 5, 20, 100):
+        values = (generator.random((2000, count)) < 0.02).astype(float)
+        missed = sum(not low <= 0.02 <= high for low, high in (estimated(v, 1.0, 0.0, 0.0, None).error for v in values))
+        assert missed <= scipy.stats.binom.ppf(1 - 1e-9, 2000, 1 - CONFIDENCE)
+    log = math.log(5 / 0.003)
+    assert sampling_width(2, 0.0, 3.0) == 3.0
+    assert sampling_width(20, 0.5, 1.0) == pytest.approx(math.sqrt(log / 40), rel=1e-12)
+    # With many samples the spread is what counts: 3.9 standard errors.
+    assert sampling_width(10**8, 0.1, 1.0) == pytest.approx(0.1 * math.sqrt(2 * log / 10**8), rel=1e-2)
 
 
 def test_single_precision_widens_the_interval():

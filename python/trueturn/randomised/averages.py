@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Callable, Mapping, Sequence
 from concurrent.futures import Executor
 from dataclasses import dataclass, field
@@ -16,48 +15,16 @@ from trueturn.operator import Operator
 from trueturn.randomised.channel import ChannelBound
 from trueturn.randomised.checks import as_int, checked_operator, whole
 from trueturn.randomised.ensemble import Ensemble
+from trueturn.randomised.estimates import CONFIDENCE, Estimate, estimated
 from trueturn.randomised.truth import Truth, truth_of
 from trueturn.randomised.work import FIXED_COLUMNS, Row, Task, run
 from trueturn.reference import Reference
 from trueturn.reference.certificate import UNIT, expectation_rounding, expectation_shift, norm_bound
 from trueturn.state import State, require_same_qubits
 
-__all__ = ["Average", "Estimate", "Progress", "averaged"]
+__all__ = ["Average", "Progress", "averaged"]
 
 Progress = Callable[[int, int], object]
-
-STANDARD_ERRORS = 3.0
-"""Half-width of the sampling part of an error interval, in standard errors."""
-
-
-@dataclass(frozen=True)
-class Estimate:
-    """One figure of the averaged channel.
-
-    Attributes
-    ----------
-    mean : float
-        Over the samples.
-    standard_error : float
-        Of the mean: spread / √count; infinite for one sample.
-    spread : float
-        Standard deviation of single samples, with count - 1 in the denominator; infinite for one sample.
-    exact : float or None
-        The reference's value.
-    error : (float, float) or None
-        Interval for how far the averaged channel is from `exact`: measured ∓ (three standard errors + reference bound +
-        rounding), clipped at 0. The sampling part is a confidence statement, not a proof.
-    bound : float or None
-        Proven bound on the same error of the averaged channel: ‖O‖ · ‖E - U‖_⋄ for an observable (identity
-        removed, no factor 1/2), (1/2)‖E - U‖_⋄ for an infidelity. Not a bound on any sample.
-    """
-
-    mean: float
-    standard_error: float
-    spread: float
-    exact: float | None
-    error: tuple[float, float] | None
-    bound: float | None
 
 
 @dataclass(frozen=True, repr=False)
@@ -115,7 +82,7 @@ class Average:
                 limit = "" if found.bound is None else f"; proven ≤ {found.bound:.3g}"
                 lines.append(
                     f"    averaged channel off by {low:.2g} … {high:.2g} "
-                    f"({STANDARD_ERRORS:g} standard errors and all bounds on both sides){limit}"
+                    f"({CONFIDENCE:.1%} confidence in the sampling, all bounds included){limit}"
                 )
         if self.channel_bound is not None:
             lines.append(f"  {self.channel_bound}")
@@ -242,8 +209,9 @@ def _result(
         norm = norm_bound(operator)
         rounding = expectation_shift(norm, own, length) + expectation_rounding(operator, state.qubits) * (unit / UNIT)
         exact, slack = truth.expectation(name)
-        figures[name] = _estimate(
+        figures[name] = estimated(
             table[:, FIXED_COLUMNS + place],
+            2.0 * norm * length**2,
             exact,
             slack + rounding,
             None if limit is None else norm * length**2 * limit.diamond,
@@ -253,10 +221,10 @@ def _result(
         errors = table[:, 1].copy()
         # The norm of a difference is summed in blocks: 128 additions in a row, 3 levels, then a tree.
         slack = own + truth.state_bound + UNIT * float(errors.max()) * (136.0 + state.qubits)
-        single = _estimate(errors, 0.0, slack, None)
+        single = estimated(errors, 2.0 * length, 0.0, slack, None)
         # The infidelity is the expectation of a projector, of norm 1.
-        infidelity = _estimate(
-            table[:, 2], 0.0, expectation_shift(1.0, slack, length), None if limit is None else limit.half_diamond
+        infidelity = estimated(
+            table[:, 2], 1.0, 0.0, expectation_shift(1.0, slack, length), None if limit is None else limit.half_diamond
         )
     return Average(
         ensemble=ensemble,
@@ -269,19 +237,6 @@ def _result(
         channel_bound=limit,
         _rows=dict(rows),
     )
-
-
-def _estimate(values: npt.NDArray[np.float64], exact: float | None, slack: float, bound: float | None) -> Estimate:
-    """Sum exactly rounded, so that the order of the samples does not matter."""
-    count = len(values)
-    mean = math.fsum(values) / count
-    spread = math.sqrt(math.fsum((values - mean) ** 2) / (count - 1)) if count > 1 else math.inf
-    standard_error = spread / math.sqrt(count)
-    error = None
-    if exact is not None:
-        measured, width = abs(mean - exact), STANDARD_ERRORS * standard_error + slack
-        error = (max(0.0, measured - width), measured + width)
-    return Estimate(mean, standard_error, spread, exact, error, bound)
 
 
 def _ranges(indices: Sequence[int]) -> str:
