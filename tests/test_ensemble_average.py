@@ -2,8 +2,11 @@
 
 from __future__ import annotations
 
+import copy
+import dataclasses
 import math
 import multiprocessing
+import re
 from concurrent.futures import ProcessPoolExecutor, ThreadPoolExecutor
 
 import numpy as np
@@ -329,3 +332,40 @@ def halved():
 def test_averages_refuse(arguments, kind, message):
     with pytest.raises(kind, match=message):
         DRIFT.average(**({"state": START, "observables": Z, "count": 3} | arguments))
+
+
+def shifted(reference):
+    """The same up to the last bit of an expectation."""
+    values = {"z": np.nextafter(reference.expectations["z"], 2.0)}
+    return dataclasses.replace(reference, expectations=values)
+
+
+def test_samples_of_another_start_observable_or_reference_are_not_mixed_in():
+    reference = spin_reference()
+    done = DRIFT.average(START, Z, 2, reference=reference)
+    given = {"state": START, "observables": Z, "count": 4, "done": done, "reference": reference}
+    whole = DRIFT.average(START, Z, 4, reference=reference)
+    assert same(DRIFT.average(**given), whole)
+    # Copies that went through another process, and a reference made once more, are the same.
+    again = {"done": copy.deepcopy(done), "state": START.copy(), "reference": spin_reference()}
+    assert same(DRIFT.average(**(given | again)), whole)
+    for change, wrong in (
+        ({"state": tt.State.product("1")}, "has another start (amplitudes with SHA-256 "),
+        ({"state": tt.State.product("0", dtype=np.complex64)}, "has another start"),
+        ({"observables": {"z": tt.Operator("X_0")}}, "has other observables ({'z': "),
+        ({"observables": {"z": 2.0 * Z["z"]}}, "has other observables"),
+        ({"observables": {"y": Z["z"]}}, "has other observables"),
+        ({"reference": None}, "has another reference (of time 1.0)"),
+        ({"reference": spin_reference(None)}, "has another reference"),
+        ({"reference": shifted(reference)}, "has another reference"),
+        ({"reference": tt.reference(SPIN, tt.State.product("1"), [1.0], observables=Z)}, "has another reference"),
+        ({"done": DRIFT.average(START, Z, 2)}, "has another reference (none)"),
+    ):
+        with pytest.raises(tt.errors.ArgumentError, match=re.escape(f"done: {wrong}")) as refused:
+            DRIFT.average(**(given | change))
+        assert "; give the partial result of the same call, or None" in str(refused.value)
+    # A circuit in frames has no time of its own: the reference's time tells them apart.
+    framed = randomised.framed(tt.formula("lie").rotations(tt.Partition.of(SPIN, "single"), 1.0, 5), seed=1)
+    done = framed.average(START, Z, 2, reference=reference)
+    with pytest.raises(tt.errors.ArgumentError, match=r"done: has another reference \(of time 1.0\)"):
+        framed.average(START, Z, 4, reference=tt.reference(SPIN, START, [2.0], observables=Z), done=done)

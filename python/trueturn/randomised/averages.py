@@ -16,6 +16,7 @@ from trueturn.randomised.channel import ChannelBound
 from trueturn.randomised.checks import as_int, checked_operator, whole
 from trueturn.randomised.ensemble import Ensemble
 from trueturn.randomised.estimates import CONFIDENCE, Estimate, estimated
+from trueturn.randomised.origin import Origin, origin_of
 from trueturn.randomised.truth import Truth, truth_of
 from trueturn.randomised.work import FIXED_COLUMNS, Row, Task, run
 from trueturn.reference import Reference
@@ -61,6 +62,7 @@ class Average:
     single_sample_state_errors: npt.NDArray[np.float64] | None
     channel_bound: ChannelBound | None
     _rows: Mapping[int, Row] = field(repr=False, compare=False)
+    _origin: Origin = field(repr=False, compare=False)
 
     @property
     def count(self) -> int:
@@ -112,7 +114,8 @@ def averaged(
     watched = {name: checked_operator(f"observables[{name!r}]", operator) for name, operator in observables.items()}
     _check(ensemble, state, watched, executor)
     truth = truth_of(ensemble, reference)
-    rows = _kept(ensemble, watched, truth, done)
+    origin = origin_of(ensemble, state, watched, truth)
+    rows = _kept(origin, done)
     if threads is None and executor is not None:
         threads = 1
     if threads is not None:
@@ -140,10 +143,10 @@ def averaged(
             f"executor: stopped after {len(rows)} of {total} samples "
             f"({type(failure).__name__}: {failure}); samples {_ranges(missing)} are missing: run them with "
             "done=error.partial and a working executor, or none",
-            partial=_result(ensemble, state, watched, truth, rows) if rows else None,
+            partial=_result(origin, state, truth, rows) if rows else None,
             missing=missing,
         ) from failure
-    return _result(ensemble, state, watched, truth, rows)
+    return _result(origin, state, truth, rows)
 
 
 def _check(ensemble: Ensemble, state: State, observables: Mapping[str, Operator], executor: object) -> None:
@@ -174,30 +177,32 @@ def _check(ensemble: Ensemble, state: State, observables: Mapping[str, Operator]
         )
 
 
-def _kept(
-    ensemble: Ensemble, observables: Mapping[str, Operator], truth: Truth, done: Average | None
-) -> dict[int, Row]:
+def _kept(origin: Origin, done: Average | None) -> dict[int, Row]:
     if done is None:
         return {}
-    same = (
-        isinstance(done, Average)
-        and done.ensemble == ensemble
-        and list(done.observables) == list(observables)
-        and (done.infidelity is None) == (truth.state is None)
-    )
-    if not same:
-        raise ArgumentError(
-            "done: is no Average of this ensemble with the same observables and reference "
-            f"({type(done).__name__}); give the partial result of the same call, or None",
-            argument="done",
-            value=done,
+
+    def refused(wrong: str) -> ArgumentError:
+        return ArgumentError(
+            f"done: {wrong}; give the partial result of the same call, or None", argument="done", value=done
         )
+
+    if not isinstance(done, Average):
+        raise refused(f"is no Average of this ensemble ({type(done).__name__})")
+    other = origin.difference(done._origin)
+    if other == "ensemble":
+        raise refused(f"is no Average of this ensemble (but of {done.ensemble!r})")
+    if other == "observables":
+        raise refused(f"has other observables ({dict(done._origin.observables)!r})")
+    if other == "start":
+        raise refused(f"has another start (amplitudes with SHA-256 {done._origin.start[:16]}…)")
+    if other == "reference":
+        held = done._origin.truth
+        raise refused("has another reference " + ("(none)" if held is None else f"(of time {held[0]!r})"))
     return dict(done._rows)
 
 
-def _result(
-    ensemble: Ensemble, state: State, observables: Mapping[str, Operator], truth: Truth, rows: Mapping[int, Row]
-) -> Average:
+def _result(origin: Origin, state: State, truth: Truth, rows: Mapping[int, Row]) -> Average:
+    ensemble, observables = origin.ensemble, dict(origin.observables)
     indices = tuple(sorted(rows))
     table = np.array([rows[index] for index in indices], dtype=np.float64)
     limit = ensemble.channel_bound()
@@ -236,6 +241,7 @@ def _result(
         single_sample_state_errors=errors,
         channel_bound=limit,
         _rows=dict(rows),
+        _origin=origin,
     )
 
 
