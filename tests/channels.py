@@ -44,21 +44,21 @@ def permuted(formula, partition, time, steps, lift=superoperator):
     return np.linalg.matrix_power(one, steps)
 
 
-def drift_step(operator, time, samples, probabilities=None, lift=superoperator):
+def drift_step(operator, time, draws, probabilities=None, lift=superoperator):
     bare = operator.without_identity()
     if probabilities is None:
         probabilities = np.abs(bare.coefficients) / bare.one_norm()
     total = 0.0
     for x, z, c, p in zip(bare.x_masks, bare.z_masks, bare.coefficients, probabilities, strict=True):
-        total = total + p * lift(oracle.rotation(x, z, c * time / (samples * p), operator.qubits))
+        total = total + p * lift(oracle.rotation(x, z, c * time / (draws * p), operator.qubits))
     return total
 
 
-def drift(operator, time, samples, probabilities=None, lift=superoperator):
-    return np.linalg.matrix_power(drift_step(operator, time, samples, probabilities, lift), samples)
+def drift(operator, time, draws, probabilities=None, lift=superoperator):
+    return np.linalg.matrix_power(drift_step(operator, time, draws, probabilities, lift), draws)
 
 
-def partly(formula, partition, tail, time, steps, samples, lift=superoperator):
+def partly(formula, partition, tail, time, steps, draws, lift=superoperator):
     """The tail is the last part; where its two runs meet inside a step they are one place."""
     parts = [*partition.parts, tail]
     runs = []
@@ -72,10 +72,8 @@ def partly(formula, partition, tail, time, steps, samples, lift=superoperator):
     one = None
     for place, weight in runs:
         length = weight * time / steps
-        if place == len(parts) - 1:
-            now = drift(tail, length, samples, lift=lift)
-        else:
-            now = lift(oracle.evolution(parts[place], length))
+        drawn = place == len(parts) - 1
+        now = drift(tail, length, draws, lift=lift) if drawn else lift(oracle.evolution(parts[place], length))
         one = now if one is None else now @ one
     return np.linalg.matrix_power(one, steps)
 

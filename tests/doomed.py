@@ -29,6 +29,23 @@ class Failing(Drift):
         return super().sample(index)
 
 
+class Unpicklable(Exception):
+    """An exception that reaches no other process: its arguments are not those it is made from."""
+
+    def __init__(self, number, why):
+        super().__init__(f"{why} {number}")
+
+
+@dataclass(frozen=True)
+class Stubborn(Drift):
+    """qDRIFT whose samples 7, 100 and 199 fail with an exception that cannot be unpickled."""
+
+    def sample(self, index):
+        if index in (7, 100, 199):
+            raise Unpicklable(index, "no sample")
+        return super().sample(index)
+
+
 class Dying(Executor):
     """Runs a few tasks and dies: later ones stay behind with an error, or are refused."""
 

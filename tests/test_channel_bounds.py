@@ -28,11 +28,11 @@ def test_qdrift_on_one_qubit_has_the_published_distance_and_bound(published):
     memory, distances computed in tests/published/bounds.toml. Tolerance: that of the file."""
     values = check(published, "qdrift_one_qubit")
     assert values["N"] == [10, 100, 1000]
-    for samples, distance, limit in zip(values["N"], values["half_diamond"], values["bound"], strict=True):
-        found = randomised.qdrift(ONE_QUBIT, 1.0, samples, seed=0).channel_bound()
+    for draws, distance, limit in zip(values["N"], values["half_diamond"], values["bound"], strict=True):
+        found = randomised.qdrift(ONE_QUBIT, 1.0, draws, seed=0).channel_bound()
         assert found.half_diamond == pytest.approx(limit, rel=1e-12)
         assert found.diamond == 2 * found.half_diamond
-        difference = channels.drift(ONE_QUBIT, 1.0, samples) - channels.ideal(ONE_QUBIT, 1.0)
+        difference = channels.drift(ONE_QUBIT, 1.0, draws) - channels.ideal(ONE_QUBIT, 1.0)
         assert channels.one_qubit_diamond(difference) / 2 == pytest.approx(distance, rel=values["tol"])
 
 
@@ -40,7 +40,7 @@ def test_qdrift_sample_counts_on_p3_are_the_published_ones(published):
     """The same paper; P3 as 7 Pauli terms with λ = 4.3. The simple count is ceil(2 λ² t² / ε)."""
     values = check(published, "qdrift_counts_p3")
     for (time, tolerance), simple, exact in zip(values["t_eps"], values["N_simple"], values["N_exact"], strict=True):
-        assert randomised.least_qdrift_samples(4.3, time, tolerance) == exact
+        assert randomised.least_qdrift_draws(4.3, time, tolerance) == exact
         assert np.ceil(2 * 4.3**2 * time**2 / tolerance) == simple
         assert randomised.qdrift_bound(4.3, time, exact).half_diamond <= tolerance
         assert randomised.qdrift_bound(4.3, time, exact - 1).half_diamond > tolerance
@@ -110,24 +110,24 @@ def test_random_orders_stay_within_their_bounds(problem, formula):
 
 @given(problem=problems(), seed=st.integers(0, 1000), importance=st.booleans())
 def test_qdrift_stays_within_its_bound(problem, seed, importance):
-    operator, samples = problem
+    operator, draws = problem
     terms = len(operator.without_identity())
     chances = np.random.default_rng(seed).dirichlet(np.full(terms, 3.0)) if importance else None
     if chances is not None and chances.min() < 1e-3:
         return
-    limit = randomised.qdrift(operator, 1.0, 4 * samples, seed=0, probabilities=chances).channel_bound()
-    difference = channels.drift(operator, 1.0, 4 * samples, chances) - channels.ideal(operator, 1.0)
+    limit = randomised.qdrift(operator, 1.0, 4 * draws, seed=0, probabilities=chances).channel_bound()
+    difference = channels.drift(operator, 1.0, 4 * draws, chances) - channels.ideal(operator, 1.0)
     assert_below(difference, limit, tight=importance)
 
 
-@given(problem=problems(), formula=st.sampled_from(["lie", "strang", "suzuki-4"]), samples=st.integers(1, 5))
-def test_partly_random_formulas_stay_within_their_bound(problem, formula, samples):
+@given(problem=problems(), formula=st.sampled_from(["lie", "strang", "suzuki-4"]), draws=st.integers(1, 5))
+def test_partly_random_formulas_stay_within_their_bound(problem, formula, draws):
     operator, steps = problem
     sizes = np.abs(operator.without_identity().coefficients)
     large, tail = randomised.divided(operator, float(np.median(sizes)))
     partition = tt.Partition.of(large, "single")
-    limit = randomised.partly(formula, partition, tail, 1.0, steps, samples, seed=0).channel_bound()
-    exact = channels.partly(tt.formula(formula), partition, tail, 1.0, steps, samples)
+    limit = randomised.partly(formula, partition, tail, 1.0, steps, draws, seed=0).channel_bound()
+    exact = channels.partly(tt.formula(formula), partition, tail, 1.0, steps, draws)
     assert_below(exact - channels.ideal(operator, 1.0), limit, tight=True)
 
 
@@ -167,12 +167,12 @@ def test_what_is_printed_names_both_normalisations_and_the_average():
     [
         (lambda: randomised.qdrift_bound(-1.0, 1.0, 10), r"one_norm: is negative \(-1.0\)"),
         (lambda: randomised.qdrift_bound(1.0, np.inf, 10), r"time: is not a finite number \(inf\)"),
-        (lambda: randomised.qdrift_bound(1.0, 1.0, 0), r"samples: is not a whole number from 1 \(0\)"),
+        (lambda: randomised.qdrift_bound(1.0, 1.0, 0), r"draws: is not a whole number from 1 \(0\)"),
         (lambda: randomised.random_direction_bound(3, -0.5, 1.0, 4), r"largest: is negative"),
         (lambda: randomised.random_direction_bound(3, 0.5, 1.0, 1.5), r"steps: is not a whole number from 1 \(1.5\)"),
         (lambda: randomised.random_direction_bound(-1, 0.5, 1.0, 1), r"parts: is not a whole number from 0"),
-        (lambda: randomised.least_qdrift_samples(1.0, 1.0, 0.0), r"tolerance: is not positive"),
-        (lambda: randomised.least_qdrift_samples(1.0, 1e8, 1e-9), r"tolerance: needs more than 2\*\*53 samples"),
+        (lambda: randomised.least_qdrift_draws(1.0, 1.0, 0.0), r"tolerance: is not positive"),
+        (lambda: randomised.least_qdrift_draws(1.0, 1e8, 1e-9), r"tolerance: needs more than 2\*\*53 draws"),
     ],
 )
 def test_bounds_refuse_numbers_out_of_range(call, message):

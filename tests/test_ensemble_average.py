@@ -2,12 +2,16 @@
 
 from __future__ import annotations
 
+import copy
+import dataclasses
 import math
 import multiprocessing
+import re
 from concurrent.futures import ProcessPoolExecutor, ThreadPoolExecutor
 
 import numpy as np
 import pytest
+import scipy.stats
 
 import channels
 import circuits
@@ -15,6 +19,7 @@ import doomed
 import oracle
 import trueturn as tt
 from trueturn import randomised
+from trueturn.randomised.estimates import CONFIDENCE, estimated, sampling_width
 
 SPIN = tt.Operator("0.6 X_0 + 0.4 Z_0")
 DRIFT = randomised.qdrift(SPIN, 1.0, 20, seed=3)
@@ -142,7 +147,44 @@ def test_a_reference_at_several_times_is_read_at_the_ensembles_own():
 def test_one_sample_has_no_standard_error():
     found = DRIFT.average(START, Z, 1, reference=spin_reference())
     assert found.observables["z"].standard_error == math.inf
-    assert found.observables["z"].error[0] == 0.0 and found.observables["z"].error[1] == math.inf
+    # All that is certain is the range of <Z>, 2, and the bounds on norm, reference and rounding, 1e-8 in all.
+    z = found.observables["z"]
+    assert z.error[0] == 0.0 and 2.0 <= z.error[1] - abs(z.mean - z.exact) <= 2.0 + 1e-8
+
+
+@pytest.mark.parametrize("count", [2, 3, 5, 20])
+def test_intervals_hold_the_exact_error_of_the_averaged_channel_as_often_as_stated(count):
+    """Each is missed with probability 0.003 at most, so that 300 seeds miss m or more with that of a binomial tail."""
+    reference = spin_reference()
+    target = oracle.evolution(SPIN, 1.0) @ START.amplitudes
+    for draws in (4, 20):
+        channel = channels.drift(SPIN, 1.0, draws)
+        z = channels.expectation(channel, START.amplitudes, oracle.dense(Z["z"]))
+        off = abs(z - channels.expectation(channels.ideal(SPIN, 1.0), START.amplitudes, oracle.dense(Z["z"])))
+        infidelity = 1 - channels.expectation(channel, START.amplitudes, np.outer(target, target.conj()))
+        missed = {"z": 0, "infidelity": 0}
+        for seed in range(300):
+            found = randomised.qdrift(SPIN, 1.0, draws, seed).average(START, Z, count, reference=reference)
+            low, high = found.observables["z"].error
+            missed["z"] += not low <= off <= high
+            low, high = found.infidelity.error
+            missed["infidelity"] += not low <= infidelity <= high
+        allowed = scipy.stats.binom.ppf(1 - 1e-9, 300, 1 - CONFIDENCE)
+        assert allowed <= 11 and max(missed.values()) <= allowed
+
+
+def test_intervals_hold_where_rare_samples_matter_and_narrow_with_their_number():
+    """Values 0 and, one in 50, 1: few samples see no spread at all, which multiples of it take for certainty."""
+    generator = np.random.default_rng(8)
+    for count in (2, 3, 5, 20, 100):
+        values = (generator.random((2000, count)) < 0.02).astype(float)
+        missed = sum(not low <= 0.02 <= high for low, high in (estimated(v, 1.0, 0.0, 0.0, None).error for v in values))
+        assert missed <= scipy.stats.binom.ppf(1 - 1e-9, 2000, 1 - CONFIDENCE)
+    log = math.log(5 / 0.003)
+    assert sampling_width(2, 0.0, 3.0) == 3.0
+    assert sampling_width(20, 0.5, 1.0) == pytest.approx(math.sqrt(log / 40), rel=1e-12)
+    # With many samples the spread is what counts: 3.9 standard errors.
+    assert sampling_width(10**8, 0.1, 1.0) == pytest.approx(0.1 * math.sqrt(2 * log / 10**8), rel=1e-2)
 
 
 def test_single_precision_widens_the_interval():
@@ -210,6 +252,27 @@ def test_samples_that_fail_are_named_and_the_others_kept():
     assert stopped.value.partial.indices == (0, 1, 2, 3, 4)
 
 
+def test_a_sample_that_fails_costs_none_of_its_chunk():
+    """200 samples go out in chunks of 4, with threads as with processes, whatever the exception.
+
+    The message quotes the first fault to come back, which is that of any failing sample."""
+    context, seen = multiprocessing.get_context("spawn"), []
+    for kind, names, wrong in (
+        (doomed.Failing, (5, 8), "RuntimeError: no sample (5|8)"),
+        (doomed.Stubborn, (7, 100, 199), r"Unpicklable: no sample (7|100|199)"),
+    ):
+        failing = kind(SPIN, 1.0, 20, 3)
+        with ThreadPoolExecutor(2) as threads, ProcessPoolExecutor(1, mp_context=context) as processes:
+            for executor in (threads, processes):
+                with pytest.raises(tt.errors.EnsembleError, match=wrong) as stopped:
+                    failing.average(START, Z, 200, executor=executor, progress=lambda *now: seen.append(now))
+                assert stopped.value.missing == names and seen[-1] == (200 - len(names), 200)
+                kept = stopped.value.partial
+                assert kept.indices == tuple(k for k in range(200) if k not in names)
+                plain = DRIFT.average(START, Z, 200)
+                assert np.array_equal(kept.values["z"], plain.values["z"][list(kept.indices)])
+
+
 def test_an_exception_of_the_progress_callback_passes_through():
     def stop(finished, total):
         raise KeyError(f"{finished} of {total}")
@@ -271,3 +334,40 @@ def halved():
 def test_averages_refuse(arguments, kind, message):
     with pytest.raises(kind, match=message):
         DRIFT.average(**({"state": START, "observables": Z, "count": 3} | arguments))
+
+
+def shifted(reference):
+    """The same up to the last bit of an expectation."""
+    values = {"z": np.nextafter(reference.expectations["z"], 2.0)}
+    return dataclasses.replace(reference, expectations=values)
+
+
+def test_samples_of_another_start_observable_or_reference_are_not_mixed_in():
+    reference = spin_reference()
+    done = DRIFT.average(START, Z, 2, reference=reference)
+    given = {"state": START, "observables": Z, "count": 4, "done": done, "reference": reference}
+    whole = DRIFT.average(START, Z, 4, reference=reference)
+    assert same(DRIFT.average(**given), whole)
+    # Copies that went through another process, and a reference made once more, are the same.
+    again = {"done": copy.deepcopy(done), "state": START.copy(), "reference": spin_reference()}
+    assert same(DRIFT.average(**(given | again)), whole)
+    for change, wrong in (
+        ({"state": tt.State.product("1")}, "has another start (amplitudes with SHA-256 "),
+        ({"state": tt.State.product("0", dtype=np.complex64)}, "has another start"),
+        ({"observables": {"z": tt.Operator("X_0")}}, "has other observables ({'z': "),
+        ({"observables": {"z": 2.0 * Z["z"]}}, "has other observables"),
+        ({"observables": {"y": Z["z"]}}, "has other observables"),
+        ({"reference": None}, "has another reference (of time 1.0)"),
+        ({"reference": spin_reference(None)}, "has another reference"),
+        ({"reference": shifted(reference)}, "has another reference"),
+        ({"reference": tt.reference(SPIN, tt.State.product("1"), [1.0], observables=Z)}, "has another reference"),
+        ({"done": DRIFT.average(START, Z, 2)}, "has another reference (none)"),
+    ):
+        with pytest.raises(tt.errors.ArgumentError, match=re.escape(f"done: {wrong}")) as refused:
+            DRIFT.average(**(given | change))
+        assert "; give the partial result of the same call, or None" in str(refused.value)
+    # A circuit in frames has no time of its own: the reference's time tells them apart.
+    framed = randomised.framed(tt.formula("lie").rotations(tt.Partition.of(SPIN, "single"), 1.0, 5), seed=1)
+    done = framed.average(START, Z, 2, reference=reference)
+    with pytest.raises(tt.errors.ArgumentError, match=r"done: has another reference \(of time 1.0\)"):
+        framed.average(START, Z, 4, reference=tt.reference(SPIN, START, [2.0], observables=Z), done=done)

@@ -89,10 +89,10 @@ def test_the_mean_over_samples_is_that_of_the_averaged_channel(name):
     assert farthest > 2.0
 
 
-def outcomes(ensemble, draws=400):
+def outcomes(ensemble, count=400):
     """The distinct circuits among many samples, multiplied out."""
     found = {}
-    for circuit in ensemble.samples(draws):
+    for circuit in ensemble.samples(count):
         key = tuple(zip(circuit.x_masks, circuit.z_masks, circuit.angles, strict=True))
         found.setdefault(key, circuits.matrix(circuit))
     return found
@@ -189,16 +189,16 @@ def test_neighbouring_runs_of_one_part_merge_across_steps():
 
 def test_qdrift_draws_terms_in_proportion_to_their_size():
     operator = tt.Operator("0.5 X_0 - 0.3 Y_0 + 0.2 Z_0 + 7")
-    samples, repeats = 4000, 25
-    unit = 1.0 * 2.0 / samples
+    draws, repeats = 4000, 25
+    unit = 1.0 * 2.0 / draws
     drawn = Counter()
-    for circuit in randomised.qdrift(operator, 2.0, samples, seed=5).samples(repeats):
+    for circuit in randomised.qdrift(operator, 2.0, draws, seed=5).samples(repeats):
         for x, z, angle in zip(circuit.x_masks, circuit.z_masks, circuit.angles, strict=True):
             times = angle / unit
             assert abs(times - round(times)) <= 1e-9 and (times < 0) == ((x, z) == (1, 1))
             drawn[x, z] += abs(round(times))
         assert circuit.phase == -14.0
-    total = samples * repeats
+    total = draws * repeats
     assert sum(drawn.values()) == total
     for string, chance in {(1, 0): 0.5, (1, 1): 0.3, (0, 1): 0.2}.items():
         # A mean of `total` values 0 or 1.
@@ -238,11 +238,72 @@ def test_partly_draws_the_tail_once_a_step_and_leaves_the_rest_in_place():
             assert held[x, z] == pytest.approx(c, rel=1e-14)
 
 
+@pytest.mark.parametrize(("formula", "places"), [("lie", 4), ("strang", 4), ("suzuki-4", 20)])
+def test_without_large_terms_the_tail_has_as_many_places_as_with_them(formula, places):
+    nothing, tail = randomised.divided(TAIL + 0.5 * tt.Operator("1", qubits=1), 10.0)
+    alone = randomised.partly(formula, tt.Partition.of(nothing, "single"), tail, 2.0, 4, 3, seed=1)
+    assert alone.places == randomised.partly(formula, AXES, tail, 2.0, 4, 3, seed=1).places == places
+    circuit = alone.sample(0)
+    assert circuit.phase == -1.0
+    if places == 4:
+        # One place a step: 3 rotations by λ t / (4 · 3) = 0.7 · 2 / 12 each, none split, joined in equal neighbours.
+        turns = np.abs(circuit.angles) / (0.7 * 2.0 / 12)
+        assert np.abs(turns - np.round(turns)).max() <= 1e-12 and round(turns.sum()) == 12 and turns.max() < 3.5
+
+
 def test_an_operator_of_the_identity_alone_is_a_phase():
     circuit = randomised.qdrift(tt.Operator("2.0", qubits=1), 1.5, 10, seed=0).sample(0)
     assert (circuit.count, circuit.phase) == (0, -3.0)
     nothing = randomised.qdrift(tt.Operator("2.0", qubits=1), 1.5, 10, seed=0).channel_bound()
     assert nothing.half_diamond == 0.0
+
+
+def takers():
+    """Everything that takes a whole number, by the number's name."""
+    lie, start = tt.formula("lie"), tt.State.product("0")
+    drift = randomised.qdrift(SPIN, 1.0, 3, seed=0)
+    circuit = lie.rotations(AXES, 1.0, 2)
+    return {
+        "permuted seed": lambda n: randomised.permuted(lie, AXES, 1.0, 3, seed=n),
+        "permuted steps": lambda n: randomised.permuted(lie, AXES, 1.0, n, seed=0),
+        "directed seed": lambda n: randomised.directed(lie, AXES, 1.0, 3, seed=n),
+        "directed steps": lambda n: randomised.directed(lie, AXES, 1.0, n, seed=0),
+        "qdrift seed": lambda n: randomised.qdrift(SPIN, 1.0, 3, seed=n),
+        "qdrift draws": lambda n: randomised.qdrift(SPIN, 1.0, n, seed=0),
+        "partly seed": lambda n: randomised.partly(lie, LARGE, TAIL, 1.0, 3, 2, seed=n),
+        "partly steps": lambda n: randomised.partly(lie, LARGE, TAIL, 1.0, n, 2, seed=0),
+        "partly draws": lambda n: randomised.partly(lie, LARGE, TAIL, 1.0, 3, n, seed=0),
+        "framed seed": lambda n: randomised.framed(circuit, seed=n),
+        "framed every": lambda n: randomised.framed(circuit, seed=0, every=n),
+        "sample index": drift.sample,
+        "samples count": drift.samples,
+        "average count": lambda n: drift.average(start, {}, n).single_sample_state_errors,
+        "average threads": lambda n: drift.average(start, {}, 2, threads=n).single_sample_state_errors,
+        "qdrift_bound draws": lambda n: randomised.qdrift_bound(1.0, 1.0, n),
+        "random_direction_bound parts": lambda n: randomised.random_direction_bound(n, 1.0, 1.0, 3),
+        "random_direction_bound steps": lambda n: randomised.random_direction_bound(3, 1.0, 1.0, n),
+    }
+
+
+@pytest.mark.parametrize("name", takers())
+def test_whole_numbers_are_the_same_everywhere(name):
+    take = takers()[name]
+    for number in (np.int64(2), np.int8(2), np.uint64(2), np.array(2)):
+        assert take(number) == take(2)
+    for number in (
+        2.0,
+        np.float64(2.0),
+        "2",
+        True,
+        np.True_,
+        np.array([2]),
+        np.array([2, 2]),
+        2 + 0j,
+        -1,
+        np.int64(-1),
+    ):
+        with pytest.raises(tt.errors.ArgumentError, match=f"{name.split()[1]}: "):
+            take(number)
 
 
 def bad(**changed):
@@ -273,8 +334,8 @@ def test_random_orders_refuse(family, arguments, kind, message):
 @pytest.mark.parametrize(
     ("arguments", "message"),
     [
-        ({"samples": 0}, r"samples: is not a whole number from 1 \(0\)"),
-        ({"samples": 10**8}, "samples: makes too many rotations"),
+        ({"draws": 0}, r"draws: is not a whole number from 1 \(0\)"),
+        ({"draws": 10**8}, "draws: makes too many rotations"),
         ({"seed": "a"}, r"seed: is not a whole number from 0 \('a'\)"),
         ({"time": np.inf}, "time: is not a finite number"),
         ({"time": 1e308, "operator": tt.Operator("3 X_0")}, "time: makes an angle too large"),
@@ -288,7 +349,7 @@ def test_random_orders_refuse(family, arguments, kind, message):
 )
 def test_qdrift_refuses(arguments, message):
     with pytest.raises(tt.errors.ArgumentError, match=message):
-        randomised.qdrift(**({"operator": SPIN, "time": 1.0, "samples": 5, "seed": 0} | arguments))
+        randomised.qdrift(**({"operator": SPIN, "time": 1.0, "draws": 5, "seed": 0} | arguments))
 
 
 def test_what_is_no_operator_or_on_other_qubits_is_refused():
@@ -296,12 +357,27 @@ def test_what_is_no_operator_or_on_other_qubits_is_refused():
         randomised.qdrift("X_0", 1.0, 5, seed=0)
     with pytest.raises(tt.errors.OperatorError, match="tail: acts on 2 qubits and the partition on 1"):
         randomised.partly("lie", AXES, tt.Operator("X_1"), 1.0, 1, 1, seed=0)
-    with pytest.raises(tt.errors.ArgumentError, match="samples: is not a whole number from 1"):
+    with pytest.raises(tt.errors.ArgumentError, match="draws: is not a whole number from 1"):
         randomised.partly("lie", AXES, TAIL, 1.0, 1, 0, seed=0)
     with pytest.raises(tt.errors.ArgumentError, match="time: makes an angle too large"):
         randomised.partly("lie", AXES, 10 * TAIL, 1e308, 1, 1, seed=0)
     with pytest.raises(tt.errors.ArgumentError, match="cutoff: is not a finite number"):
         randomised.divided(SPIN, np.nan)
+
+
+def test_draws_in_a_circuit_and_circuits_have_names_of_their_own():
+    """`draws` counts rotations in one circuit, `samples` and `count` circuits."""
+    drift = randomised.qdrift(SPIN, time=1.0, draws=7, seed=0)
+    assert drift.draws == 7 and not hasattr(drift, "count")
+    assert randomised.partly("lie", LARGE, TAIL, time=1.0, steps=1, draws=6, seed=0).draws == 6
+    assert (
+        randomised.qdrift_bound(one_norm=1.0, time=1.0, draws=randomised.least_qdrift_draws(1.0, 1.0, 0.1)).half_diamond
+        <= 0.1
+    )
+    for make in (randomised.qdrift, randomised.qdrift_bound):
+        with pytest.raises(TypeError, match="samples"):
+            make(SPIN, time=1.0, samples=7)
+    assert len(drift.samples(3)) == drift.average(tt.State.product("0"), {}, 3).count == 3
 
 
 @pytest.mark.parametrize("index", [-1, 0.5, True])

@@ -14,10 +14,11 @@ Each gives an `Ensemble`: `Ensemble.sample` makes its circuits, `Ensemble.averag
 
 from __future__ import annotations
 
-from trueturn.randomised.averages import Average, Estimate
-from trueturn.randomised.channel import ChannelBound, least_qdrift_samples, qdrift_bound, random_direction_bound
+from trueturn.randomised.averages import Average
+from trueturn.randomised.channel import ChannelBound, least_qdrift_draws, qdrift_bound, random_direction_bound
 from trueturn.randomised.drift import Drift, qdrift
 from trueturn.randomised.ensemble import Ensemble
+from trueturn.randomised.estimates import Estimate
 from trueturn.randomised.frames import Framed, framed
 from trueturn.randomised.mixed import Partly, divided, partly
 from trueturn.randomised.orders import Directed, Permuted, directed, permuted
@@ -35,7 +36,7 @@ __all__ = [
     "directed",
     "divided",
     "framed",
-    "least_qdrift_samples",
+    "least_qdrift_draws",
     "partly",
     "permuted",
     "qdrift",

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Callable, Mapping, Sequence
 from concurrent.futures import Executor
 from dataclasses import dataclass, field
@@ -14,50 +13,19 @@ from trueturn import _threads
 from trueturn.errors import ArgumentError, EnsembleError, StateShapeError
 from trueturn.operator import Operator
 from trueturn.randomised.channel import ChannelBound
-from trueturn.randomised.checks import checked_operator, whole
+from trueturn.randomised.checks import as_int, checked_operator, whole
 from trueturn.randomised.ensemble import Ensemble
+from trueturn.randomised.estimates import CONFIDENCE, Estimate, estimated
+from trueturn.randomised.origin import Origin, origin_of
 from trueturn.randomised.truth import Truth, truth_of
 from trueturn.randomised.work import FIXED_COLUMNS, Row, Task, run
 from trueturn.reference import Reference
 from trueturn.reference.certificate import UNIT, expectation_rounding, expectation_shift, norm_bound
 from trueturn.state import State, require_same_qubits
 
-__all__ = ["Average", "Estimate", "Progress", "averaged"]
+__all__ = ["Average", "Progress", "averaged"]
 
 Progress = Callable[[int, int], object]
-
-STANDARD_ERRORS = 3.0
-"""Half-width of the sampling part of an error interval, in standard errors."""
-
-
-@dataclass(frozen=True)
-class Estimate:
-    """One figure of the averaged channel.
-
-    Attributes
-    ----------
-    mean : float
-        Over the samples.
-    standard_error : float
-        Of the mean: spread / √count; infinite for one sample.
-    spread : float
-        Standard deviation of single samples, with count - 1 in the denominator; infinite for one sample.
-    exact : float or None
-        The reference's value.
-    error : (float, float) or None
-        Interval for how far the averaged channel is from `exact`: measured ∓ (three standard errors + reference bound +
-        rounding), clipped at 0. The sampling part is a confidence statement, not a proof.
-    bound : float or None
-        Proven bound on the same error of the averaged channel: ‖O‖ · ‖E - U‖_⋄ for an observable (identity
-        removed, no factor 1/2), (1/2)‖E - U‖_⋄ for an infidelity. Not a bound on any sample.
-    """
-
-    mean: float
-    standard_error: float
-    spread: float
-    exact: float | None
-    error: tuple[float, float] | None
-    bound: float | None
 
 
 @dataclass(frozen=True, repr=False)
@@ -94,6 +62,7 @@ class Average:
     single_sample_state_errors: npt.NDArray[np.float64] | None
     channel_bound: ChannelBound | None
     _rows: Mapping[int, Row] = field(repr=False, compare=False)
+    _origin: Origin = field(repr=False, compare=False)
 
     @property
     def count(self) -> int:
@@ -115,7 +84,7 @@ class Average:
                 limit = "" if found.bound is None else f"; proven ≤ {found.bound:.3g}"
                 lines.append(
                     f"    averaged channel off by {low:.2g} … {high:.2g} "
-                    f"({STANDARD_ERRORS:g} standard errors and all bounds on both sides){limit}"
+                    f"({CONFIDENCE:.1%} confidence in the sampling, all bounds included){limit}"
                 )
         if self.channel_bound is not None:
             lines.append(f"  {self.channel_bound}")
@@ -145,11 +114,12 @@ def averaged(
     watched = {name: checked_operator(f"observables[{name!r}]", operator) for name, operator in observables.items()}
     _check(ensemble, state, watched, executor)
     truth = truth_of(ensemble, reference)
-    rows = _kept(ensemble, watched, truth, done)
+    origin = origin_of(ensemble, state, watched, truth)
+    rows = _kept(origin, done)
     if threads is None and executor is not None:
         threads = 1
     if threads is not None:
-        threads = _threads.resolve(threads)
+        threads = _threads.resolve(as_int(threads))
     exact = truth.state
     task = Task(
         ensemble,
@@ -173,10 +143,10 @@ def averaged(
             f"executor: stopped after {len(rows)} of {total} samples "
             f"({type(failure).__name__}: {failure}); samples {_ranges(missing)} are missing: run them with "
             "done=error.partial and a working executor, or none",
-            partial=_result(ensemble, state, watched, truth, rows) if rows else None,
+            partial=_result(origin, state, truth, rows) if rows else None,
             missing=missing,
         ) from failure
-    return _result(ensemble, state, watched, truth, rows)
+    return _result(origin, state, truth, rows)
 
 
 def _check(ensemble: Ensemble, state: State, observables: Mapping[str, Operator], executor: object) -> None:
@@ -207,30 +177,32 @@ def _check(ensemble: Ensemble, state: State, observables: Mapping[str, Operator]
         )
 
 
-def _kept(
-    ensemble: Ensemble, observables: Mapping[str, Operator], truth: Truth, done: Average | None
-) -> dict[int, Row]:
+def _kept(origin: Origin, done: Average | None) -> dict[int, Row]:
     if done is None:
         return {}
-    same = (
-        isinstance(done, Average)
-        and done.ensemble == ensemble
-        and list(done.observables) == list(observables)
-        and (done.infidelity is None) == (truth.state is None)
-    )
-    if not same:
-        raise ArgumentError(
-            "done: is no Average of this ensemble with the same observables and reference "
-            f"({type(done).__name__}); give the partial result of the same call, or None",
-            argument="done",
-            value=done,
+
+    def refused(wrong: str) -> ArgumentError:
+        return ArgumentError(
+            f"done: {wrong}; give the partial result of the same call, or None", argument="done", value=done
         )
+
+    if not isinstance(done, Average):
+        raise refused(f"is no Average of this ensemble ({type(done).__name__})")
+    other = origin.difference(done._origin)
+    if other == "ensemble":
+        raise refused(f"is no Average of this ensemble (but of {done.ensemble!r})")
+    if other == "observables":
+        raise refused(f"has other observables ({dict(done._origin.observables)!r})")
+    if other == "start":
+        raise refused(f"has another start (amplitudes with SHA-256 {done._origin.start[:16]}…)")
+    if other == "reference":
+        held = done._origin.truth
+        raise refused("has another reference " + ("(none)" if held is None else f"(of time {held[0]!r})"))
     return dict(done._rows)
 
 
-def _result(
-    ensemble: Ensemble, state: State, observables: Mapping[str, Operator], truth: Truth, rows: Mapping[int, Row]
-) -> Average:
+def _result(origin: Origin, state: State, truth: Truth, rows: Mapping[int, Row]) -> Average:
+    ensemble, observables = origin.ensemble, dict(origin.observables)
     indices = tuple(sorted(rows))
     table = np.array([rows[index] for index in indices], dtype=np.float64)
     limit = ensemble.channel_bound()
@@ -242,8 +214,9 @@ def _result(
         norm = norm_bound(operator)
         rounding = expectation_shift(norm, own, length) + expectation_rounding(operator, state.qubits) * (unit / UNIT)
         exact, slack = truth.expectation(name)
-        figures[name] = _estimate(
+        figures[name] = estimated(
             table[:, FIXED_COLUMNS + place],
+            2.0 * norm * length**2,
             exact,
             slack + rounding,
             None if limit is None else norm * length**2 * limit.diamond,
@@ -253,10 +226,10 @@ def _result(
         errors = table[:, 1].copy()
         # The norm of a difference is summed in blocks: 128 additions in a row, 3 levels, then a tree.
         slack = own + truth.state_bound + UNIT * float(errors.max()) * (136.0 + state.qubits)
-        single = _estimate(errors, 0.0, slack, None)
+        single = estimated(errors, 2.0 * length, 0.0, slack, None)
         # The infidelity is the expectation of a projector, of norm 1.
-        infidelity = _estimate(
-            table[:, 2], 0.0, expectation_shift(1.0, slack, length), None if limit is None else limit.half_diamond
+        infidelity = estimated(
+            table[:, 2], 1.0, 0.0, expectation_shift(1.0, slack, length), None if limit is None else limit.half_diamond
         )
     return Average(
         ensemble=ensemble,
@@ -268,20 +241,8 @@ def _result(
         single_sample_state_errors=errors,
         channel_bound=limit,
         _rows=dict(rows),
+        _origin=origin,
     )
-
-
-def _estimate(values: npt.NDArray[np.float64], exact: float | None, slack: float, bound: float | None) -> Estimate:
-    """Sum exactly rounded, so that the order of the samples does not matter."""
-    count = len(values)
-    mean = math.fsum(values) / count
-    spread = math.sqrt(math.fsum((values - mean) ** 2) / (count - 1)) if count > 1 else math.inf
-    standard_error = spread / math.sqrt(count)
-    error = None
-    if exact is not None:
-        measured, width = abs(mean - exact), STANDARD_ERRORS * standard_error + slack
-        error = (max(0.0, measured - width), measured + width)
-    return Estimate(mean, standard_error, spread, exact, error, bound)
 
 
 def _ranges(indices: Sequence[int]) -> str:

@@ -19,7 +19,7 @@ from trueturn.randomised.checks import finite, whole
 
 __all__ = [
     "ChannelBound",
-    "least_qdrift_samples",
+    "least_qdrift_draws",
     "qdrift_bound",
     "random_direction_bound",
 ]
@@ -64,7 +64,7 @@ class ChannelBound:
         )
 
 
-def qdrift_bound(one_norm: float, time: float, samples: int) -> ChannelBound:
+def qdrift_bound(one_norm: float, time: float, draws: int) -> ChannelBound:
     """Bound the channel of qDRIFT: (1/2)‖E - U‖_⋄ ≤ (2 λ² t² / N) exp(2 λ |t| / N).
 
     Parameters
@@ -72,7 +72,7 @@ def qdrift_bound(one_norm: float, time: float, samples: int) -> ChannelBound:
     one_norm : float
         λ = Σ|c| without the identity.
     time : float
-    samples : int
+    draws : int
         N, at least 1.
 
     Returns
@@ -82,7 +82,7 @@ def qdrift_bound(one_norm: float, time: float, samples: int) -> ChannelBound:
     Raises
     ------
     ArgumentError
-        `one_norm` is negative, a number is not finite, or `samples` not a whole number from 1.
+        `one_norm` is negative, a number is not finite, or `draws` not a whole number from 1.
 
     Notes
     -----
@@ -95,16 +95,16 @@ def qdrift_bound(one_norm: float, time: float, samples: int) -> ChannelBound:
 
     Examples
     --------
-    >>> round(qdrift_bound(one_norm=1.0, time=1.0, samples=100).half_diamond, 6)
+    >>> round(qdrift_bound(one_norm=1.0, time=1.0, draws=100).half_diamond, 6)
     0.020404
     """
     strength = _strength(one_norm) * abs(finite("time", time, "give a real number"))
-    count = whole("samples", samples, 1, "give how many rotations to draw")
+    count = whole("draws", draws, 1, "give how many rotations to draw")
     return clipped(qdrift_diamond(strength, count) / 2.0, "qDRIFT, (2 λ² t² / N) exp(2 λ t / N)", CAMPBELL)
 
 
-def least_qdrift_samples(one_norm: float, time: float, tolerance: float) -> int:
-    """Return the least number of samples for which `qdrift_bound` gives a half diamond norm within a tolerance.
+def least_qdrift_draws(one_norm: float, time: float, tolerance: float) -> int:
+    """Return the least number of draws for which `qdrift_bound` gives a half diamond norm within a tolerance.
 
     Parameters
     ----------
@@ -121,11 +121,11 @@ def least_qdrift_samples(one_norm: float, time: float, tolerance: float) -> int:
     Raises
     ------
     ArgumentError
-        A number is not finite or out of range, or more than 2**53 samples would be needed.
+        A number is not finite or out of range, or more than 2**53 draws would be needed.
 
     Examples
     --------
-    >>> least_qdrift_samples(one_norm=4.3, time=1.0, tolerance=1e-2)
+    >>> least_qdrift_draws(one_norm=4.3, time=1.0, tolerance=1e-2)
     3707
     """
     strength = _strength(one_norm) * abs(finite("time", time, "give a real number"))
@@ -143,7 +143,7 @@ def least_qdrift_samples(one_norm: float, time: float, tolerance: float) -> int:
         high *= 2
         if high > 2**53:
             raise ArgumentError(
-                f"tolerance: needs more than 2**53 samples ({tolerance!r}); ask for more, or a shorter time",
+                f"tolerance: needs more than 2**53 draws ({tolerance!r}); ask for more, or a shorter time",
                 argument="tolerance",
                 value=tolerance,
             )
@@ -199,10 +199,10 @@ def random_direction_bound(parts: int, largest: float, time: float, steps: int) 
     return clipped(diamond / 2.0, "randomised first order, x⁴/r³ exp(2x/r) + 2x³/(3r²) exp(x/r)", CHILDS)
 
 
-def qdrift_diamond(strength: float, samples: int) -> float:
+def qdrift_diamond(strength: float, draws: int) -> float:
     """Return the qDRIFT bound without the factor 1/2, for λ|t| = `strength`; may be infinite."""
-    turn = 2.0 * strength / samples
-    return samples * 2.0 * drift_tail(turn) * ROUNDING
+    turn = 2.0 * strength / draws
+    return draws * 2.0 * drift_tail(turn) * ROUNDING
 
 
 def drift_step(turns: Sequence[float], probabilities: Sequence[float], total: float) -> float:

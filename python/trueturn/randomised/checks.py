@@ -5,6 +5,9 @@ from __future__ import annotations
 import math
 from numbers import Real
 from operator import index
+from typing import Any
+
+import numpy as np
 
 from trueturn.errors import ArgumentError, OperatorError
 from trueturn.formulas import Formula, formula
@@ -13,6 +16,7 @@ from trueturn.partition import Partition
 
 __all__ = [
     "WRITTEN_OUT_LIMIT",
+    "as_int",
     "checked_formula",
     "checked_operator",
     "checked_partition",
@@ -28,14 +32,20 @@ WRITTEN_OUT_LIMIT = 10**7
 MOST = 2**53
 
 
-def whole(argument: str, value: object, least: int, remedy: str) -> int:
-    """Return a whole number from `least` to 2**53; truth values are refused."""
+def as_int(value: Any) -> Any:
+    """Return whole numbers of any make (NumPy's too, not truth values or floats) as int, all else as it is."""
+    if isinstance(value, bool | np.bool_):
+        return value
     try:
-        if isinstance(value, bool):
-            raise TypeError
-        number = index(value)  # type: ignore[arg-type]
+        return index(value)
     except TypeError:
-        number = least - 1
+        return value
+
+
+def whole(argument: str, value: object, least: int, remedy: str) -> int:
+    """Return a whole number from `least` to 2**53, of a seed from `least` on; what else counts, see `as_int`."""
+    found = as_int(value)
+    number: int = found if isinstance(found, int) and not isinstance(found, bool) else least - 1
     if number < least or (number > MOST and argument != "seed"):
         raise ArgumentError(
             f"{argument}: is not a whole number from {least} ({value!r}); {remedy}", argument=argument, value=value

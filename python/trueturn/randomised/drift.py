@@ -48,19 +48,19 @@ class TermSampler:
         ends = np.cumsum(weights / weights.max()) if len(weights) else weights
         self._ends = ends / ends[-1] if len(ends) else ends
 
-    def write(self, columns: Columns, generator: np.random.Generator, time: Fraction, samples: int) -> None:
-        """Append `samples` draws for an evolution of length `time`; equal neighbours merge."""
+    def write(self, columns: Columns, generator: np.random.Generator, time: Fraction, draws: int) -> None:
+        """Append `draws` rotations for an evolution of length `time`; equal neighbours merge."""
         if not self._x:
             return
-        draws = np.searchsorted(self._ends, generator.random(samples), side="right")
-        draws = np.minimum(draws, len(self._x) - 1)
-        starts = np.flatnonzero(np.concatenate([[True], draws[1:] != draws[:-1]]))
-        lengths = np.diff(np.append(starts, samples))
+        terms = np.searchsorted(self._ends, generator.random(draws), side="right")
+        terms = np.minimum(terms, len(self._x) - 1)
+        starts = np.flatnonzero(np.concatenate([[True], terms[1:] != terms[:-1]]))
+        lengths = np.diff(np.append(starts, draws))
         angles: dict[tuple[int, int], float] = {}
-        for term, repeat in zip(draws[starts].tolist(), lengths.tolist(), strict=True):
+        for term, repeat in zip(terms[starts].tolist(), lengths.tolist(), strict=True):
             angle = angles.get((term, repeat))
             if angle is None:
-                angle = angles[term, repeat] = rounded(repeat * self._rates[term] * time / samples)
+                angle = angles[term, repeat] = rounded(repeat * self._rates[term] * time / draws)
             columns.x.append(self._x[term])
             columns.z.append(self._z[term])
             columns.angles.append(angle)
@@ -72,7 +72,7 @@ class Drift(Ensemble):
 
     hamiltonian: Operator
     total_time: float
-    count: int
+    draws: int
     seed: int
     probabilities: tuple[float, ...] | None = None
     _sampler: TermSampler = field(init=False, repr=False, compare=False)
@@ -99,26 +99,26 @@ class Drift(Ensemble):
         """Bound the distance of the averaged channel from exp(-iHt); see `qdrift_bound` and `drift_step`."""
         bare = self.hamiltonian.without_identity()
         if self.probabilities is None:
-            return qdrift_bound(bare.one_norm(), self.total_time, self.count)
+            return qdrift_bound(bare.one_norm(), self.total_time, self.draws)
         total = math.fsum(self.probabilities)
         chances = [p / total for p in self.probabilities]
-        step = abs(self.total_time) / self.count
+        step = abs(self.total_time) / self.draws
         turns = [abs(value) * step / p for value, p in zip(bare.coefficients.tolist(), chances, strict=True)]
-        diamond = self.count * drift_step(turns, chances, bare.one_norm() * step)
+        diamond = self.draws * drift_step(turns, chances, bare.one_norm() * step)
         theorem = "qDRIFT with given probabilities, second-order remainders of both channels added up"
         return clipped(diamond / 2.0, theorem, f"derived in trueturn.randomised.channel after {CAMPBELL}")
 
     def _draw(self, generator: np.random.Generator) -> Rotations:
         columns = Columns()
-        self._sampler.write(columns, generator, Fraction(self.total_time), self.count)
+        self._sampler.write(columns, generator, Fraction(self.total_time), self.draws)
         phase = 0.0 - self.hamiltonian.identity_coefficient * self.total_time
         return columns.rotations(self.qubits, phase, self.total_time)
 
 
 def qdrift(
-    operator: Operator, time: float, samples: int, seed: int, *, probabilities: Sequence[float] | None = None
+    operator: Operator, time: float, draws: int, seed: int, *, probabilities: Sequence[float] | None = None
 ) -> Drift:
-    """Draw `samples` rotations, each of one term, so that their average follows exp(-i operator t).
+    """Draw `draws` rotations, each of one term, so that their average follows exp(-i operator t).
 
     Parameters
     ----------
@@ -126,7 +126,7 @@ def qdrift(
         The identity term becomes the exact global phase.
     time : float
         In inverse units of the coefficients; may be negative.
-    samples : int
+    draws : int
         N, rotations drawn for one circuit, at least 1. (How many circuits to draw is up to `Ensemble.samples`.)
     seed : int
         At least 0.
@@ -145,8 +145,8 @@ def qdrift(
     OperatorError
         `operator` is no Operator.
     ArgumentError
-        `time` is not finite or makes an angle overflow, `samples` or `seed` is no whole number in range,
-        `samples` above 10**7, or `probabilities` do not fit the terms, are not positive or do not sum to 1.
+        `time` is not finite or makes an angle overflow, `draws` or `seed` is no whole number in range,
+        `draws` above 10**7, or `probabilities` do not fit the terms, are not positive or do not sum to 1.
 
     References
     ----------
@@ -159,7 +159,7 @@ def qdrift(
     --------
     >>> import trueturn as tt
     >>> from trueturn import randomised
-    >>> drift = randomised.qdrift(tt.Operator("0.6 X_0 - 0.4 Z_0"), time=1.0, samples=100, seed=1)
+    >>> drift = randomised.qdrift(tt.Operator("0.6 X_0 - 0.4 Z_0"), time=1.0, draws=100, seed=1)
     >>> drift.sample(0).count <= 100
     True
     >>> drift.channel_bound().half_diamond < 0.0205
@@ -167,9 +167,9 @@ def qdrift(
     """
     hamiltonian = checked_operator("operator", operator)
     length = finite("time", time, "give a real number, negative to run backwards")
-    count = whole("samples", samples, 1, "give how many rotations to draw")
+    count = whole("draws", draws, 1, "give how many rotations to draw")
     number = whole("seed", seed, 0, "give an integer of at least 0")
-    require_size("samples", count, count)
+    require_size("draws", count, count)
     bare = hamiltonian.without_identity()
     if not math.isfinite(hamiltonian.identity_coefficient * length) or not math.isfinite(bare.one_norm() * length):
         raise refuse_long_time(length)

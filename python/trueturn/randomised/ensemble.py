@@ -130,7 +130,7 @@ class Ensemble(ABC):
             Of each sample. Default 1 with an executor, otherwise as for `State.apply`.
         done : Average, optional
             Samples at hand already, such as `EnsembleError.partial`, of the same ensemble, start, observables
-            and reference; only the others run.
+            and reference, all of which are compared; only the others run.
 
         Returns
         -------

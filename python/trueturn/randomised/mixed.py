@@ -53,7 +53,12 @@ class Partly(Ensemble):
 
     @property
     def _tail_place(self) -> int:
-        return len(self.partition.parts)
+        """Number of the tail among the parts.
+
+        Without large terms an empty part stands before it, so that the tail's runs do not merge over all steps into
+        a single place.
+        """
+        return max(1, len(self.partition.parts))
 
     @property
     def qubits(self) -> int:
@@ -104,7 +109,7 @@ class Partly(Ensemble):
                 for part, weight in runs:
                     if part == self._tail_place:
                         self._sampler.write(columns, generator, weight * step, self.draws)
-                    else:
+                    elif part < len(self.partition.parts):
                         writer.write(columns, part, weight)
         phase = 0.0 - (self.partition.identity + self.tail.identity_coefficient) * self.total_time
         return columns.rotations(self.qubits, phase, self.total_time)
@@ -156,7 +161,7 @@ def divided(operator: Operator, cutoff: float) -> tuple[Operator, Operator]:
 
 
 def partly(
-    formula: Formula | str, partition: Partition, tail: Operator, time: float, steps: int, samples: int, seed: int
+    formula: Formula | str, partition: Partition, tail: Operator, time: float, steps: int, draws: int, seed: int
 ) -> Partly:
     """Apply a product formula to large parts, and draw a tail of small terms by qDRIFT wherever its turn comes.
 
@@ -171,9 +176,9 @@ def partly(
         Total time, in inverse units of the coefficients; may be negative.
     steps : int
         At least 1.
-    samples : int
-        Rotations drawn each time the tail's turn comes, at least 1. That is once a step for lie and strang; see
-        `Partly.places`.
+    draws : int
+        Rotations drawn each time the tail's turn comes, at least 1. That is once a step for lie and strang, with
+        large terms or without; see `Partly.places`.
     seed : int
         At least 0.
 
@@ -202,7 +207,7 @@ def partly(
     >>> from trueturn import randomised
     >>> large, tail = randomised.divided(tt.Operator("Z_0 Z_1 + 0.9 X_0 + 0.01 Y_0 + 0.02 X_1"), 0.1)
     >>> parts = tt.Partition.of(large, "commuting")
-    >>> mixed = randomised.partly("strang", parts, tail, time=1.0, steps=10, samples=3, seed=5)
+    >>> mixed = randomised.partly("strang", parts, tail, time=1.0, steps=10, draws=3, seed=5)
     >>> mixed.places
     10
     """
@@ -216,12 +221,12 @@ def partly(
         )
     length = finite("time", time, "give a real number, negative to run backwards")
     count = whole("steps", steps, 1, "give a number of equal steps, such as 10")
-    draws = whole("samples", samples, 1, "give how many rotations to draw")
+    drawn = whole("draws", draws, 1, "give how many rotations to draw")
     number = whole("seed", seed, 0, "give an integer of at least 0")
     for size in (parts.identity + small.identity_coefficient, small.without_identity().one_norm()):
         if not math.isfinite(size * length):
             raise refuse_long_time(length)
     stages = count * len(rule.stages)
-    require_size("samples", draws, stages * draws if len(small) else 0)
-    require_size("steps", count, stages * (sum(map(len, parts.parts)) + (draws if len(small) else 0)))
-    return Partly(rule, parts, small, length, count, draws, number)
+    require_size("draws", drawn, stages * drawn if len(small) else 0)
+    require_size("steps", count, stages * (sum(map(len, parts.parts)) + (drawn if len(small) else 0)))
+    return Partly(rule, parts, small, length, count, drawn, number)

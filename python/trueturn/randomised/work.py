@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import pickle
+import traceback
 from collections.abc import Callable, Sequence
 from concurrent.futures import Executor, Future, as_completed
 from typing import Any
@@ -53,12 +55,22 @@ class Task:
         self.exact = exact
         self.threads = threads
 
-    def __call__(self, indices: Sequence[int]) -> list[Row]:
-        """Return one row for each sample."""
+    def __call__(self, indices: Sequence[int]) -> tuple[dict[int, Row], Exception | None]:
+        """Return the rows of the samples that succeed, and what the first of the others raised.
+
+        The fault is returned, not raised, so that a sample that fails costs none of its neighbours.
+        """
         work = State.from_array(self.start.copy())
         exact = None if self.exact is None else State.from_array(self.exact)
         length = work.norm(threads=self.threads)
-        return [self._row(index, work, exact, length) for index in indices]
+        rows: dict[int, Row] = {}
+        failure: Exception | None = None
+        for index in indices:
+            try:
+                rows[index] = self._row(index, work, exact, length)
+            except Exception as fault:
+                failure = failure or _portable(fault)
+        return rows, failure
 
     def _row(self, index: int, work: State, exact: State | None, length: float) -> Row:
         circuit = self.ensemble.sample(index)
@@ -74,6 +86,19 @@ class Task:
             infidelity = apart**2 * (1.0 - apart**2 / 4.0)
         values = [work.expectation(operator, threads=self.threads) for operator in self.observables]
         return (circuit.rounding_bound(ANGLE_ROUNDINGS, unit), error, infidelity, *values)
+
+
+def _portable(fault: Exception) -> Exception:
+    """Return a fault that reaches another process: itself, or its words where it cannot be pickled.
+
+    The traceback stays behind on the way, so a note keeps its text.
+    """
+    fault.add_note("".join(traceback.format_exception(fault)))
+    try:
+        pickle.loads(pickle.dumps(fault))
+    except Exception:
+        return RuntimeError(f"{type(fault).__name__}: {fault}")
+    return fault
 
 
 def run(
@@ -98,34 +123,39 @@ def run(
     rows : dict of int to Row
         The finished samples.
     failure : exception or None
-        The first that stopped others; of the executor, or of a sample.
+        The first; of the executor, or of a sample. Without an executor it stops the samples after it.
     """
     rows: dict[int, Row] = {}
     if executor is None:
         for index in indices:
             try:
-                rows[index] = task([index])[0]
-            except Exception as fault:
+                found, fault = task([index])
+            except Exception as loss:
+                return rows, loss
+            if fault is not None:
                 return rows, fault
+            rows.update(found)
             report(len(rows))
         return rows, None
     size = max(1, -(-len(indices) // _CHUNKS))
     failure: Exception | None = None
-    pending: dict[Future[list[Row]], Sequence[int]] = {}
+    pending: list[Future[tuple[dict[int, Row], Exception | None]]] = []
     try:
         for start in range(0, len(indices), size):
             chunk = indices[start : start + size]
             try:
-                pending[executor.submit(task, chunk)] = chunk
+                pending.append(executor.submit(task, chunk))
             except Exception as refusal:  # broken or shut down: an executor of any make raises what it likes
                 failure = refusal
                 break
         for future in as_completed(pending):
             try:
-                rows.update(zip(pending[future], future.result(), strict=True))
+                found, fault = future.result()
             except Exception as loss:
                 failure = failure or loss
                 continue
+            rows.update(found)
+            failure = failure or fault
             report(len(rows))
     except BaseException:
         for future in pending:
