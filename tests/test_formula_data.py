@@ -16,6 +16,7 @@ from circuits import P3, distance, matrix
 from test_order import THREE_PARTS, one_step_error
 from trueturn import errors
 from trueturn.formulas import FAMILIES, formula_entry
+from trueturn.formulas.leading import exponentials_per_step
 from trueturn.formulas.order import measured_order
 from trueturn.formulas.structure import NEAR_INTEGRABLE, NYSTROM
 
@@ -99,6 +100,38 @@ def test_errors_on_problem_p3_are_the_recorded_ones(name, steps, scheme):
     # 7 digits are recorded; each of N rotations is an 8 x 8 product, about 8 u; 1e-13 as the data's note says
     floor = max(1e-13, 8 * circuit.count * UNIT)
     assert abs(distance(matrix(circuit), exact) - expected) <= 1e-6 * expected + floor
+
+
+def recorded_interval(entry, steps):
+    """The recorded error of P3, give or take half a unit of its last digit and the floor that the record names."""
+    value = Decimal(entry[f"p3_error_r{steps}"])
+    slack = 0.5 * 10.0 ** value.as_tuple().exponent + 1e-13
+    return float(value) - slack, float(value) + slack
+
+
+@pytest.mark.parametrize("steps", [4, 8])
+@pytest.mark.parametrize("order", [2, 4, 6, 8])
+def test_ratios_at_equal_cost_on_p3_are_the_recorded_ones(order, steps, scheme):
+    """Error times exponentials**order, for every two formulas of one order.
+
+    Cost in the record: alternating sweeps over three parts share a part at each turn, so each adds two exponentials.
+    """
+    names = [name for name in PUBLISHED_IDS if scheme(name)["order"] == order]
+    # at 1e-12 the floor takes a tenth of the error, which is too much to rank by
+    names = [name for name in names if float(scheme(name)[f"p3_error_r{steps}"]) > 1e-12]
+    exact = oracle.evolution(P3.operator(), 1.0)
+    ours, low, high = {}, {}, {}
+    for name in names:
+        per_step = exponentials_per_step(tt.formula(name).exact_stages())
+        circuit = tt.formula(name).rotations(P3, 1.0, steps)
+        ours[name] = distance(matrix(circuit), exact) * (steps * per_step) ** order
+        low[name], high[name] = (
+            end * (steps * 2 * scheme(name)["sweep_count"]) ** order for end in recorded_interval(scheme(name), steps)
+        )
+    assert len(names) >= {2: 2, 4: 6, 6: 5, 8: 2}[order]
+    for one in names:
+        for other in names:
+            assert low[one] / high[other] <= ours[one] / ours[other] <= high[one] / low[other]
 
 
 # Order conditions, from scratch: words in two letters
