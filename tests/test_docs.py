@@ -37,6 +37,14 @@ def test_every_call_that_the_readme_names_exists():
         operator.attrgetter(path[1:])(tt)
 
 
+def test_the_entry_that_the_developers_page_shows_makes_a_formula():
+    from trueturn.formulas import entry
+
+    (code,) = re.findall(r"```python\n(Entry.*?)```", (ROOT / "DEVELOPERS.md").read_text(encoding="utf-8"), re.DOTALL)
+    made = eval(code, vars(entry)).formula()
+    assert made.order == 4 and made.symmetric and f'"{made.name}"' in code
+
+
 def test_every_public_name_has_a_docstring_and_is_exported_once():
     assert sorted(set(tt.__all__)) == sorted(tt.__all__)
     for name in tt.__all__:
