@@ -16,8 +16,9 @@ __all__ = ["document", "page"]
 
 GENERAL = (
     "leading error: L, with error ≈ (L / N)^order in unit time and N exponentials of parts, measured on three fixed "
-    "general parts of norm 1. ★ on the efficiency front: fewest exponentials for the errors named. stages: runs over "
-    "all parts in a step. Any even order of Suzuki's family up to 12 has a name (suzuki-10)."
+    "general parts of norm 1. ★ on the efficiency front: reaches the errors named with the fewest exponentials, in "
+    "whole steps run on those parts; equal costs share. stages: runs over all parts in a step. Any even order of "
+    "Suzuki's family up to 12 has a name (suzuki-10)."
 )
 PER_STEP = (
     "rotations each further step adds to a long circuit for this job, by rule; – where the formula is refused. "
