@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import io
+import operator
 import os
 import re
 import subprocess
@@ -26,6 +27,22 @@ def test_the_readme_example_prints_what_the_readme_says(tmp_path, monkeypatch):
         exec(compile(code, "README.md", "exec"), {})
     assert out.getvalue().rstrip() == printed.rstrip()
     assert (tmp_path / "audit" / "report.html").exists()
+
+
+def test_every_call_that_the_readme_names_exists():
+    # spans of code and fenced blocks alike; `trueturn.formulas` is a function, so nothing lies behind it
+    named = sorted(set(re.findall(r"(?<![\w./])(?:tt|trueturn)((?:\.[A-Za-z_]\w*)+)\(", README)))
+    assert {".read_formulas", ".formula"} <= set(named)
+    for path in named:
+        operator.attrgetter(path[1:])(tt)
+
+
+def test_the_entry_that_the_developers_page_shows_makes_a_formula():
+    from trueturn.formulas import entry
+
+    (code,) = re.findall(r"```python\n(Entry.*?)```", (ROOT / "DEVELOPERS.md").read_text(encoding="utf-8"), re.DOTALL)
+    made = eval(code, vars(entry)).formula()
+    assert made.order == 4 and made.symmetric and f'"{made.name}"' in code
 
 
 def test_every_public_name_has_a_docstring_and_is_exported_once():

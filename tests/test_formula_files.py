@@ -121,6 +121,7 @@ def test_a_missing_file_is_refused(tmp_path):
 
 def test_a_single_formula_is_not_read_from_a_file_of_several(write):
     with pytest.raises(
-        errors.JobError, match=r"^formula: holds 3 formulas \(jump, leapfrog, one way\); read them with"
+        errors.JobError,
+        match=r"^formula: holds 3 formulas \(jump, leapfrog, one way\); read them with trueturn.read_formulas$",
     ):
         tt.Formula.read(write(SEVERAL))

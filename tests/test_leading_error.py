@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 import math
 
 import numpy as np
@@ -10,7 +11,7 @@ import scipy.linalg
 
 import trueturn as tt
 from trueturn import errors
-from trueturn.formulas.comparison import ERRORS, best_for, rotations_per_step
+from trueturn.formulas.comparison import ERRORS, best_for, fewest_exponentials, rotations_per_step
 from trueturn.formulas.leading import error_coefficient, exponentials_per_step, sample_parts
 
 
@@ -94,13 +95,59 @@ def test_a_bad_error_is_refused(error):
         tt.formula("strang").exponentials_for(error)
 
 
-def test_the_front_holds_the_cheapest_formula_for_each_error_and_no_other():
+def plain_costs(formula, most):
+    """(exponentials, distance) for 1, 2, 3, … whole steps, by a plain loop with nothing merged but for the count."""
+    parts = sample_parts()
+    exact = scipy.linalg.expm(-1j * sum(parts))
+    order = {"forward": range(len(parts)), "reverse": range(len(parts))[::-1]}
+    visits = [number for stage in formula.stages for number in order[stage.direction]]
+    steps = 1
+    while True:
+        whole = visits * steps
+        cost = 1 + sum(left != right for left, right in itertools.pairwise(whole))
+        if cost > most:
+            return
+        made = {}
+        one = np.eye(len(exact))
+        for stage in formula.stages:
+            for number in order[stage.direction]:
+                key = stage.weight, number
+                if key not in made:
+                    made[key] = scipy.linalg.expm(-1j * stage.weight / steps * parts[number])
+                one = made[key] @ one
+        total = np.eye(len(exact))
+        for _ in range(steps):
+            total = one @ total
+        yield cost, np.linalg.norm(total - exact, 2)
+        steps += 1
+
+
+def test_the_front_holds_the_formulas_of_fewest_exponentials_by_whole_steps_that_are_run():
     known = [tt.formula(name) for name in tt.formulas(special=True)]
     front = best_for(known)
-    assert sorted(error for won in front.values() for error in won) == sorted(ERRORS)
-    for name, won in front.items():
-        for error in won:
-            mine = tt.formula(name).exponentials_for(error)
-            assert all(mine <= other.exponentials_for(error) for other in known if not other.requires)
+    general = [one for one in known if not one.requires]
+    most = 512
+    runs = {one.name: list(plain_costs(one, most)) for one in general}
+    for at, error in enumerate(ERRORS):
+        needed = {name: min((c for c, d in pairs if d <= error), default=math.inf) for name, pairs in runs.items()}
+        least = min(needed.values())
+        assert least <= most
+        assert {name for name, won in front.items() if error in won} == {n for n, c in needed.items() if c == least}
+        for one in general:
+            assert fewest_exponentials(one, most)[at] == needed[one.name]
+        # Some 1500 products of 16 x 16 unitaries round like sqrt(1500) * 16 u = 7e-14 at most; nothing is that near.
+        assert all(abs(d - error) > 1e-13 for pairs in runs.values() for c, d in pairs if c <= least)
     assert not any(tt.formula(name).requires for name in front)
+
+
+def test_half_a_step_wins_nothing_and_equal_costs_share():
+    known = [tt.formula(name) for name in ("kahan-li-8", "kahan-li-8b", "blanes-moan-6")]
+    assert known[2].exponentials_for(1e-5) < known[0].exponentials_for(1e-5)  # two steps are 81, the law says 53
+    assert [fewest_exponentials(one, 100)[4] for one in known] == [69, 69, 81]
+    front = best_for(known)
+    assert 1e-5 in front["kahan-li-8"] and 1e-5 in front["kahan-li-8b"] and 1e-5 not in front["blanes-moan-6"]
+
+
+def test_an_error_out_of_reach_has_no_winner():
+    assert best_for([tt.formula("lie")]) == {"lie": (0.1, 0.01, 0.001)}  # 3 exponentials a step, error 0.66 / steps
     assert best_for([]) == {}

@@ -330,7 +330,7 @@ class Formula:
 
     @classmethod
     def read(cls, path: str | PathLike[str]) -> Formula:
-        """Read a formula from a TOML file that holds one; see `trueturn.formulas.read_formulas`.
+        """Read a formula from a TOML file that holds one; see `trueturn.read_formulas`.
 
         Raises
         ------

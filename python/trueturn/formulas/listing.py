@@ -16,12 +16,13 @@ __all__ = ["document", "page"]
 
 GENERAL = (
     "leading error: L, with error ≈ (L / N)^order in unit time and N exponentials of parts, measured on three fixed "
-    "general parts of norm 1. ★ on the efficiency front: fewest exponentials for the errors named. stages: runs over "
-    "all parts in a step. Any even order of Suzuki's family up to 12 has a name (suzuki-10)."
+    "general parts of norm 1. ★ on the efficiency front: reaches the errors named with the fewest exponentials, in "
+    "whole steps run on those parts; equal costs share. stages: runs over all parts in a step. Any even order of "
+    "Suzuki's family up to 12 has a name (suzuki-10)."
 )
 PER_STEP = (
-    "rotations each further step adds to a long circuit for this job, by rule; – where the formula is refused. "
-    "Sources: trueturn formulas."
+    "rotations a step: those that each further step adds to a long circuit for this job, by rule; – where the formula "
+    "is refused."
 )
 
 
@@ -50,40 +51,43 @@ def document(known: Sequence[Formula], partitions: Mapping[str, Partition]) -> d
 
 
 def page(known: Sequence[Formula], partitions: Mapping[str, Partition]) -> RenderableType:
-    """Lay formulas out: a table, what its columns mean, then special requirements and sources."""
+    """Lay formulas out: a line each, with a job a second one, what they mean, then requirements and sources."""
     from rich.console import Group
     from rich.padding import Padding
-    from rich.table import Table
     from rich.text import Text
 
-    best = best_for(known)
-    table = Table(box=None, padding=(0, 2, 0, 0), header_style="dim")
-    table.add_column("name", no_wrap=True)
-    headings = ("order", "stages", *(() if partitions else ("symmetric",)), "leading error", *partitions)
-    for heading in headings:
-        table.add_column(Text(heading), justify="right", no_wrap=heading not in ("leading error",))
-    if not partitions:
-        table.add_column("best for errors", no_wrap=True)
-    for one in known:
-        cells = [one.name, str(one.order), str(len(one.stages))]
-        if not partitions:
-            cells.append("yes" if one.symmetric else "no")
-        cells.append(three_digits(one.leading_error))
-        for parts in partitions.values():
-            count = rotations_per_step(one, parts)
-            cells.append("–" if count is None else str(count))
-        if not partitions:
-            cells.append(f"★ {span(best[one.name])}" if one.name in best else "")
-        table.add_row(*map(Text, cells))
-    below: list[RenderableType] = [Text(), Text(PER_STEP if partitions else GENERAL)]
+    rows = _rows(known)
+    lines: list[RenderableType] = [Text(row, style="dim") for row in rows[:2]]
+    for one, row in zip(known, rows[2:], strict=True):
+        lines.append(Text(row))
+        if partitions:
+            counts = {rule: rotations_per_step(one, parts) for rule, parts in partitions.items()}
+            told = (f"{rule} {'–' if count is None else count}" for rule, count in counts.items())
+            lines.append(Padding(Text(f"rotations a step: {', '.join(told)}", style="dim"), (0, 0, 0, 4)))
+    lines += [Text(), Text(GENERAL + (f" {PER_STEP}" if partitions else ""))]
     for one in known:
         if one.requires:
-            below.append(Text(f"{one.name} requires {one.requires}; order {one.special_order} there."))
-    if not partitions:
-        below += [Text(), Text("Sources", style="bold")]
-        for source, names in _by_source(known).items():
-            below += [Text(", ".join(names)), Padding(Text(source, style="dim"), (0, 0, 0, 4))]
-    return Group(table, *below)
+            lines.append(Text(f"{one.name} requires {one.requires}; order {one.special_order} there."))
+    lines += [Text(), Text("Sources", style="bold")]
+    for source, names in _by_source(known).items():
+        lines += [Text(", ".join(names)), Padding(Text(source, style="dim"), (0, 0, 0, 4))]
+    return Group(*lines)
+
+
+def _rows(known: Sequence[Formula]) -> list[str]:
+    """Write the columns that all formulas have, under two lines of headings; names to the left, the rest right."""
+    best = best_for(known)
+    cells = [("", "", "", "", "leading", ""), ("name", "order", "stages", "symmetric", "error", "best for errors")]
+    for one in known:
+        symmetric = "yes" if one.symmetric else "no"
+        won = f"★ {span(best[one.name])}" if one.name in best else ""
+        figures = (str(one.order), str(len(one.stages)), symmetric, three_digits(one.leading_error))
+        cells.append((one.name, *figures, won))
+    widths = [max(map(len, column)) for column in zip(*cells, strict=True)]
+    return [
+        "  ".join([row[0].ljust(widths[0]), *map(str.rjust, row[1:-1], widths[1:-1]), row[-1]]).rstrip()
+        for row in cells
+    ]
 
 
 def _by_source(known: Sequence[Formula]) -> dict[str, list[str]]:

@@ -79,7 +79,7 @@ def read_formula(path: str | PathLike[str]) -> Formula:
     if len(found) > 1:
         names = ", ".join(one.name for one in found)
         what = f"holds {len(found)} formulas ({names})"
-        raise _error(Path(fspath(path)), "formula", what, "read them with trueturn.formulas.read_formulas")
+        raise _error(Path(fspath(path)), "formula", what, "read them with trueturn.read_formulas")
     return found[0]
 
 

@@ -17,6 +17,7 @@ __all__ = ["BEGIN", "END", "markdown", "replaced"]
 
 BEGIN = "<!-- formulas: begin; made by: python -m trueturn.formulas.table README.md -->"
 END = "<!-- formulas: end -->"
+ESCAPED = r"\|"
 HEADINGS = ("name", "order", "stages", "symmetric", "leading error", "best for errors", "source")
 
 
@@ -37,7 +38,7 @@ def markdown() -> str:
     best = best_for(known)
     lines = [f"| {' | '.join(HEADINGS)} |", "| --- | ---: | ---: | --- | ---: | --- | --- |"]
     for one in known:
-        source = one.source.replace("|", "\\|")
+        source = one.source
         if one.requires:
             source += f". Requires {one.requires}; order {one.special_order} there"
         cells = (
@@ -49,7 +50,7 @@ def markdown() -> str:
             span(best.get(one.name, ())) or "–",
             source,
         )
-        lines.append(f"| {' | '.join(cells)} |")
+        lines.append(f"| {' | '.join(cell.replace('|', ESCAPED) for cell in cells)} |")
     return "\n".join(lines)
 
 
