@@ -364,7 +364,7 @@ class Partition:
         >>> partition = tt.Partition([tt.Operator("Z_0"), tt.Operator("Z_0"), tt.Operator("X_0")])
         >>> found = partition.improved("lie")
         >>> print(found.gain, round(found.measured_gain))
-        inf 100
+        inf 64
         """
         from trueturn.error_saving import improve
 
