@@ -240,6 +240,36 @@ def test_a_small_tuning_gains_on_the_heisenberg_ring(scheme):
     assert best_published(partition, scheme) / target.large.error(formula) > 1.2
 
 
+def test_provenance_says_when_tuning_was_not_kept():
+    # Tuned on a chain of three; on the chain of four in a field three times stronger the outcome does not win.
+    chains = [
+        tt.Partition.of(tt.model.ising(tt.lattice.chain(sites), zz=-1.0, x=field), "axis")
+        for sites, field in ((3, 0.9), (4, 2.7))
+    ]
+    target = Target(*(Instance(chain, 2.0, 4) for chain in chains))
+    formula = tt.Formula.search(4, 4, 2, kind="splitting", starts=10, for_=target)
+    untuned = tt.Formula.search(4, 4, 2, kind="splitting", starts=10)
+    assert formula.stages == untuned.stages
+    record = formula.provenance
+    assert record.large_error == record.untuned_large_error
+    assert "tuned, not kept: no gain on the large instance" in record.measure
+    assert "tuned, not kept" in formula.source
+    assert "then the error on the small instance" not in formula.source
+    # On an equal field it wins, and that is said.
+    equal = tt.Partition.of(tt.model.ising(tt.lattice.chain(4), zz=-1.0, x=0.9), "axis")
+    kept = tt.Formula.search(
+        4, 4, 2, kind="splitting", starts=10, for_=Target(Instance(chains[0], 2.0, 4), Instance(equal, 2.0, 4))
+    )
+    assert kept.provenance.large_error < kept.provenance.untuned_large_error
+    assert "then the error on the small instance" in kept.source and "not kept" not in kept.source
+
+
+def test_integers_of_numpy_are_integers():
+    ours = tt.Formula.search(np.int64(4), np.int32(3), np.uint8(7), kind="splitting", starts=np.int64(12))
+    assert ours == tt.Formula.search(4, 3, 7, kind="splitting", starts=12)
+    assert "seed=7," in ours.source and type(ours.provenance.seed) is int
+
+
 def test_tuning_for_an_observable_uses_every_readout():
     watched = {sites: tt.Operator(" + ".join(f"Z_{k}" for k in range(sites))) for sites in (3, 4)}
     instances = [
@@ -290,6 +320,8 @@ def test_the_error_over_all_inputs_is_the_frobenius_norm_of_the_difference():
         (4, True, 1, {}, "stages", ["(True)", "3 to 40"]),
         (4, 5, 1.5, {}, "seed", ["(1.5)", "integer"]),
         (4, 5, -1, {}, "seed", ["(-1)", "at least 0"]),
+        (4, 5, np.bool_(True), {}, "seed", ["integer"]),
+        (4, 5, np.array([1, 2]), {}, "seed", ["integer"]),
         (4, 5, "1", {}, "seed", ["('1')", "integer"]),
         (4, 5, 1, {"kind": "nystrom"}, "kind", ["('nystrom')", "'composition' or 'splitting'"]),
         (4, 5, 1, {"measure": "norm"}, "measure", ["('norm')", "'error' or 'weights'"]),

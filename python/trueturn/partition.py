@@ -341,7 +341,8 @@ class Partition:
         Returns
         -------
         Improved
-            The partition in its new order, and the figure before and after, which never rises.
+            The partition in its new order, and the figure before and after, which never rises; on up to 10 qubits
+            also the measured error of one real step, and orders for which that rises are not taken.
 
         Raises
         ------
@@ -361,8 +362,9 @@ class Partition:
         --------
         >>> import trueturn as tt
         >>> partition = tt.Partition([tt.Operator("Z_0"), tt.Operator("Z_0"), tt.Operator("X_0")])
-        >>> print(partition.improved("lie"))
-        leading error (norm) 2 -> 0, inf times less; the best of all orders
+        >>> found = partition.improved("lie")
+        >>> print(found.gain, round(found.measured_gain))
+        inf 64
         """
         from trueturn.error_saving import improve
 

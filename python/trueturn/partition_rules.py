@@ -11,10 +11,9 @@ from collections.abc import Callable, Iterable, Sequence
 import numpy as np
 
 from trueturn.edge_colouring import colour_edges
-from trueturn.error_saving import EVALUATIONS, search
+from trueturn.error_saving import EVALUATIONS, improve
 from trueturn.errors import PartitionError
 from trueturn.ladders import gate_saving_order
-from trueturn.leading_error import LeadingError
 from trueturn.operator import Operator
 from trueturn.vertex_colouring import STRATEGIES, colour_strings
 
@@ -78,8 +77,10 @@ def _error_saving(terms: Operator) -> Groups:
     groups = _commuting(terms)
     if len(groups) < 2:
         return groups
+    from trueturn.partition import Partition  # imports this module
+
     try:
-        error = LeadingError([subset(terms, group) for group in groups], "strang")
+        found = improve(Partition([subset(terms, group) for group in groups]), "strang", "norm", 0, EVALUATIONS)
     except PartitionError as refused:
         raise PartitionError(
             f"rule: 'error-saving' meets too many nested brackets ({len(groups)} parts, {len(terms)} terms); "
@@ -87,7 +88,7 @@ def _error_saving(terms: Operator) -> Groups:
             argument="rule",
             choices=("commuting",),
         ) from refused
-    return [groups[part] for part in search(error.one_norm, len(groups), seed=0, evaluations=EVALUATIONS).order]
+    return [groups[part] for part in found.order]
 
 
 def _axis(terms: Operator) -> Groups:

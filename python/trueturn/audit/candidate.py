@@ -6,6 +6,7 @@ from dataclasses import dataclass
 
 from trueturn.errors import ArgumentError
 from trueturn.formulas import Formula, formula
+from trueturn.formulas.processed import Processed
 from trueturn.operator import Operator
 from trueturn.partition import Partition
 
@@ -18,8 +19,9 @@ class Candidate:
 
     Parameters
     ----------
-    formula : str or Formula
-        A registered name (`trueturn.formulas()`) or a formula of the user's own.
+    formula : str, Formula or Processed
+        A registered name (`trueturn.formulas()`), a formula of the user's own, or a processed one
+        (`trueturn.formulas.processed`), whose processor acts at the start and at every readout.
     rule : str or Partition
         How the Hamiltonian is split into parts: a rule of `Partition.of`, or a ready partition.
     steps : int or "least"
@@ -38,16 +40,16 @@ class Candidate:
     'strang, bond'
     """
 
-    formula: Formula
+    formula: Formula | Processed
     rule: str | Partition = "commuting"
     steps: int | str = "least"
 
     def __post_init__(self) -> None:
         if isinstance(self.formula, str):
             object.__setattr__(self, "formula", formula(self.formula))
-        if not isinstance(self.formula, Formula):
+        if not isinstance(self.formula, (Formula, Processed)):
             raise ArgumentError(
-                f"formula: neither a name nor a Formula ({self.formula!r}); see trueturn.formulas()",
+                f"formula: neither a name nor a Formula nor a Processed ({self.formula!r}); see trueturn.formulas()",
                 argument="formula",
                 value=self.formula,
             )

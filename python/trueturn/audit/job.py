@@ -313,9 +313,10 @@ def read_candidates(file: Table, operator: Operator, required: bool) -> tuple[Ca
         section.only(("formula", "rule", "steps"))
         name = section.text("formula", 'formula = "strang"')
         rule = section.choice("rule", tuple(RULES), default="commuting")
-        candidate = Candidate(known_formula(section, name), rule=rule, steps=read_steps(section))
+        chosen = known_formula(section, name)
+        candidate = Candidate(chosen, rule=rule, steps=read_steps(section))
         with section.blame("rule"):
-            require_structure(candidate.formula, candidate.partition(operator))
+            require_structure(chosen, candidate.partition(operator))
         candidates.append(candidate)
     return tuple(candidates)
 

@@ -15,6 +15,7 @@ from trueturn.audit.result import Audit, Row, Trial
 from trueturn.audit.search import least_steps
 from trueturn.audit.truth import Progress, positive_times, reference_for
 from trueturn.errors import ArgumentError, AuditError, FormulaError, ToleranceError
+from trueturn.formulas import Formula
 from trueturn.operator import Operator
 from trueturn.partition import Partition
 from trueturn.state import State, require_same_qubits
@@ -217,6 +218,8 @@ def _row(bench: Bench, candidate: Candidate, partition: Partition, most_steps: i
 def _bound(bench: Bench, candidate: Candidate, partition: Partition, steps: int) -> tuple[float | None, str]:
     """Return a proven bound on the row's error and its source, or None and the reason."""
     try:
+        if not isinstance(candidate.formula, Formula):
+            return None, f"no theorem at hand covers {candidate.formula.name}"
         found = bound(candidate.formula, partition, bench.times[-1], steps)
     except FormulaError:
         return None, f"no theorem at hand covers {candidate.formula.name}"

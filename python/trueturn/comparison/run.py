@@ -14,6 +14,7 @@ from trueturn.comparison.result import Comparison, Point, efficient, unit_words
 from trueturn.errors import ArgumentError, AuditError, FormulaError, PartitionError, ToleranceError
 from trueturn.formulas import Formula
 from trueturn.formulas import formulas as known_formulas
+from trueturn.formulas.processed import Processed
 from trueturn.operator import Operator
 from trueturn.partition import Partition
 from trueturn.reference import Reference, reference
@@ -37,7 +38,7 @@ def compare(
     operator: Operator,
     state: State,
     time: float,
-    formulas: Iterable[str | Formula] | None = None,
+    formulas: Iterable[str | Formula | Processed] | None = None,
     rule: str | Partition = "commuting",
     budgets: Iterable[int] | None = None,
     observables: Mapping[str, Operator] | None = None,
@@ -58,7 +59,7 @@ def compare(
         Start; not written.
     time : float
         Positive, in inverse units of the coefficients.
-    formulas : iterable of str or Formula, optional
+    formulas : iterable of str, Formula or Processed, optional
         Default: all that are registered; those that cannot be run on these parts are then left out with the reason.
     rule : str or Partition
         How the Hamiltonian is split into parts, the same for all.
@@ -166,9 +167,9 @@ def compare(
 
 
 def _candidates(
-    partition: Partition, formulas: Iterable[str | Formula] | None, rule: str | Partition, time: float
+    partition: Partition, formulas: Iterable[str | Formula | Processed] | None, rule: str | Partition, time: float
 ) -> tuple[list[Candidate], dict[str, str]]:
-    if isinstance(formulas, (str, Formula)):
+    if isinstance(formulas, (str, Formula, Processed)):
         formulas = [formulas]
     given = known_formulas() if formulas is None else list(formulas)
     chosen: list[Candidate] = []

@@ -120,6 +120,13 @@ def extrapolate(
     counts = _steps(steps)
     asked = positive_times(times)
     watched = dict(observables or {})
+    if not isinstance(candidate.formula, Formula):
+        raise FormulaError(
+            f"formula: is a processed one ({candidate.formula.name!r}), and the powers of the step in its error are not "
+            "known to be even; use a symmetric formula, such as 'strang'",
+            name=candidate.formula.name,
+            choices=(),
+        )
     _check(candidate.formula, state, operator, watched, tolerance)
     workers = _threads.resolve(threads)
     partition = candidate.partition(operator)

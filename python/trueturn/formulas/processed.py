@@ -223,5 +223,9 @@ PROCESSED = (
 """Processed formulas that come with the package.
 
 The kernel of ``processed-4`` is as long as three Strang steps, like the triple jump, which is the only symmetric
-formula of order 4 of that length without a processor; its error at equal cost is some ten times smaller.
+formula of order 4 of that length without a processor. On a problem of three parts of three qubits, runs of 10 to 40
+steps to time 1 have 3.4 to 6.1 times less error than the triple jump with equally many stages, processor included. The
+longer steps of ``blanes-moan-4`` have a smaller error still, 4 to 8 times at equally many stages.
+
+`Candidate` and `compare` take them like formulas.
 """

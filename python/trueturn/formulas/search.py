@@ -13,6 +13,8 @@ from dataclasses import dataclass
 from decimal import Decimal, localcontext
 from fractions import Fraction
 from itertools import pairwise
+from operator import index
+from typing import SupportsIndex
 
 import numpy as np
 import numpy.typing as npt
@@ -50,7 +52,7 @@ class Provenance:
     free_parameters : int
         Unknowns that the order conditions leave open; they are given to six decimals exactly.
     measure : str
-        What was made least.
+        What was made least; also whether tuning for a target was kept.
     residual : Decimal
         The largest miss of any order condition by the printed digits.
     leading_error : float
@@ -132,8 +134,12 @@ def search(
     best = solutions[0]
     told = "leading error on general operators" if measure == "error" else "sum of squared weights"
     if for_ is not None:
-        best, figures = _tuned(problem, solutions[:KEPT], for_)
-        told += ", then the error on the small instance of the target"
+        best, figures, won = _tuned(problem, solutions[:KEPT], for_)
+        told += (
+            ", then the error on the small instance of the target"
+            if won
+            else " (tuned, not kept: no gain on the large instance)"
+        )
     refined = problem.refine(best)
     if refined is None or refined[1] > Decimal(10) ** -30:
         raise FormulaError(
@@ -168,8 +174,8 @@ def _solutions(
     return [half for _, half in sorted(found, key=lambda pair: (round(pair[0], 12), *np.round(pair[1], 6)))]
 
 
-def _tuned(problem: Problem, candidates: list[Array], target: Target) -> tuple[Array, dict[str, float]]:
-    """Tune on the small instance; keep the outcome only where it wins on the large one too."""
+def _tuned(problem: Problem, candidates: list[Array], target: Target) -> tuple[Array, dict[str, float], bool]:
+    """Tune on the small instance; keep the outcome, and say so, only where it wins on the large one too."""
 
     def on(instance_error: Callable[[list[tuple[Fraction, bool]]], float]) -> Callable[[Array], float]:
         return lambda half: instance_error(_stages(problem, [Fraction(float(value)) for value in half]))
@@ -181,14 +187,16 @@ def _tuned(problem: Problem, candidates: list[Array], target: Target) -> tuple[A
         for half in candidates
     ]
     best = _rounded(problem, min(tuned, key=small))
-    if large(best) >= large(untuned):
+    won = large(best) < large(untuned)
+    if not won:
         best = untuned
-    return best, {
+    figures = {
         "small_error": small(best),
         "large_error": large(best),
         "untuned_small_error": small(untuned),
         "untuned_large_error": large(untuned),
     }
+    return best, figures, won
 
 
 def _rounded(problem: Problem, half: Array) -> Array:
@@ -241,27 +249,37 @@ def _checked(
     if measure not in ("error", "weights"):
         raise _wrong("measure", "is unknown", measure, "choose 'error' or 'weights'")
     orders = ", ".join(map(str, LEAST_STAGES))
-    if not _whole(order) or order not in LEAST_STAGES:
-        odd = _whole(order) and int(order) % 2 == 1  # type: ignore[call-overload]
+    degree = _integer(order)
+    if degree not in LEAST_STAGES:
+        odd = degree is not None and degree % 2 == 1
         problem = "is odd, and symmetric formulas have even orders" if odd else "is not an order that is searched"
         raise _wrong("order", problem, order, f"choose one of {orders}")
-    least = LEAST_STAGES[order]
-    if not _whole(stages) or not least <= stages <= MOST_STAGES:  # type: ignore[operator]
+    least = LEAST_STAGES[degree]
+    count = _integer(stages)
+    if count is None or not least <= count <= MOST_STAGES:
         raise _wrong(
             "stages",
-            f"do not suffice for order {order} or are too many",
+            f"do not suffice for order {degree} or are too many",
             stages,
             f"the least number known to work is {least}; give {least} to {MOST_STAGES}",
         )
-    if not _whole(seed) or seed < 0:  # type: ignore[operator]
+    number = _integer(seed)
+    if number is None or number < 0:
         raise _wrong("seed", "is not an integer of at least 0", seed, "give one, such as 1")
-    if not _whole(starts) or not 1 <= starts <= MOST_STARTS:  # type: ignore[operator]
+    tries = _integer(starts)
+    if tries is None or not 1 <= tries <= MOST_STARTS:
         raise _wrong("starts", "is not a number of starts", starts, f"give an integer from 1 to {MOST_STARTS}")
-    return order, stages, seed, starts  # type: ignore[return-value]
+    return degree, count, number, tries
 
 
-def _whole(value: object) -> bool:
-    return isinstance(value, int) and not isinstance(value, bool)
+def _integer(value: object) -> int | None:
+    """Give an integer of any kind, numpy's included, as an int; None for anything else."""
+    if isinstance(value, (bool, np.bool_)) or not isinstance(value, SupportsIndex):
+        return None
+    try:
+        return index(value)
+    except TypeError:  # an array of several
+        return None
 
 
 def _wrong(argument: str, problem: str, value: object, remedy: str) -> ArgumentError:
