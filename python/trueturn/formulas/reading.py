@@ -49,7 +49,7 @@ def read_formulas(path: str | PathLike[str]) -> tuple[Formula, ...]:
     ------
     JobError
         The file is missing or not TOML; a key is unknown, missing or of the wrong type; a name is empty, taken
-        by a registered formula or given twice; weights do not sum to 1; a claimed order is not reached.
+        by a registered formula or given twice; weights do not sum to 1; a claimed order is not the true one.
         `path` and `key` say where, and an error of the formula itself is attached as its cause.
     """
     path = Path(fspath(path))
@@ -139,7 +139,8 @@ def _made(path: Path, place: str, entry: Mapping[str, Any]) -> Formula:
     weights = exact_weights("stages", [stage[0] for stage in stages], name)
     listed = tuple(Stage(float(weight), stage[1]) for weight, stage in zip(weights, stages, strict=True))
     if order is None:
-        order, _ = measured_order([(Fraction(stage.weight), stage.direction == "reverse") for stage in listed])
+        reached, _ = measured_order([(Fraction(stage.weight), stage.direction == "reverse") for stage in listed])
+        order = max(reached, 1)
     return Formula(name, order, listed, source)
 
 
