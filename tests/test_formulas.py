@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from decimal import Decimal
 
 import pytest
 
@@ -128,6 +129,19 @@ STRANG = tt.formula("strang")
         (lambda: tt.Formula.composition([0.5, 0.6], name="n"), ["weights:", "(1.1)", "divide by the sum"]),
         (lambda: tt.Formula.composition([1], name=""), ["name:", "('')", "not empty"]),
         (lambda: tt.Formula.composition([1], name="n", order=4), ["4 claimed, 2 measured", "give order=2"]),
+        (lambda: tt.Formula("n", 1, 3, "s"), ["stages: is no sequence of stages", "(3)", "give a tuple of Stage"]),
+        (lambda: tt.Formula("n", 1, "ab", "s"), ["stages: is no sequence of stages", "('ab')", "give a tuple"]),
+        (
+            lambda: tt.Formula.composition(["1e400", "-1e400", "1"], name="n"),
+            ["weights: entry 0 is above 1e100 in size"],
+        ),
+        (
+            lambda: tt.Formula.composition(["1e3000000"], name="n"),
+            ["weights: entry 0 is not a finite", "('1e3000000')"],
+        ),
+        (lambda: tt.Formula.composition(["1E-3000000"], name="n"), ["weights: entry 0 is not a finite"]),
+        (lambda: tt.Formula.composition([Decimal("1e3000000")], name="n"), ["weights: entry 0 is not a finite"]),
+        (lambda: tt.Formula.composition([10**5000], name="n"), ["entry 0 is above 1e100", "thousands of digits"]),
         (lambda: tt.Formula.composition([1], name="n", order=0), ["order:", "(0)", "1 to 12"]),
         (lambda: tt.Formula.composition([1], name="n", order=14), ["order:", "(14)", "1 to 12"]),
         (lambda: tt.Formula.composition([1], name="n", order=2.0), ["order:", "(2.0)", "1 to 12"]),

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from functools import cached_property
@@ -103,6 +103,12 @@ class Formula:
                 choices=(),
             )
         require_known(self.requires, self.name)
+        if isinstance(self.stages, str) or not isinstance(self.stages, Iterable):
+            raise FormulaError(
+                f"stages: is no sequence of stages ({self.stages!r}); give a tuple of Stage(weight, direction)",
+                name=self.name,
+                choices=(),
+            )
         object.__setattr__(self, "stages", tuple(self.stages))
         self._check_weights()
         object.__setattr__(self, "order", self._checked_order(self.order))
