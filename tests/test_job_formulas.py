@@ -1,4 +1,4 @@
-"""Job files whose candidates take formulas of the user's own from a file."""
+"""Job files whose candidates take formulas of the user's own from a file, and jobs beyond all limits."""
 
 from __future__ import annotations
 
@@ -78,3 +78,9 @@ def test_a_mistake_in_a_formula_file_is_told_with_both_keys(read, mine) -> None:
     with pytest.raises(JobError, match=message) as caught:
         read(*OWN)
     assert isinstance(caught.value.__cause__, JobError) and caught.value.__cause__.path == str(mine)
+
+
+@pytest.mark.parametrize("value", ["1" * 5000, "[" * 20000], ids=["digits", "nested"])
+def test_a_job_beyond_all_limits_is_refused(read, value) -> None:
+    with pytest.raises(JobError, match=r"^job file: cannot be read \(.*\); write shorter numbers and fewer nested"):
+        read("steps = 4", f"steps = {value}")

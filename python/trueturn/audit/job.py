@@ -266,6 +266,9 @@ def parse_toml(text: str, path: str) -> dict[str, object]:
         what = reason[:1].lower() + reason[1:]
         message = f"job file: not valid TOML at {where}: {what} ({line.strip()[:60]!r}); mend that line"
         raise JobError(message, path=path, key="") from error
+    except (ValueError, RecursionError) as error:  # integers of thousands of digits, brackets nested a thousand deep
+        message = f"job file: cannot be read ({str(error)[:60]}); write shorter numbers and fewer nested brackets"
+        raise JobError(message, path=path, key="") from error
 
 
 def read_times(target: Table) -> tuple[float, ...]:
