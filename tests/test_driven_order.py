@@ -70,9 +70,9 @@ def test_an_order_is_lost_when_strengths_freeze_before_the_clock_advances():
 
 def test_common_practice_symmetric_formulas_have_even_order():
     # E. Hairer, C. Lubich, G. Wanner, Geometric Numerical Integration (2006), theorem II.3.2; from memory. Weights
-    # without an order condition, order 1 claimed: symmetry alone makes it 2, and 4 where the third is met.
+    # without an order condition: symmetry alone makes it 2, and 4 where the third is met.
     for formula, order in [
-        (tt.Formula.composition([0.3, 0.4, 0.3], name="palindrome", order=1), 2),
+        (tt.Formula.composition([0.3, 0.4, 0.3], name="palindrome"), 2),
         (triple_jump(), 4),
     ]:
         assert formula.symmetric

@@ -217,9 +217,11 @@ def test_single_precision_widens_the_rounding_and_stays_true():
         assert found.rounding[name][0] > 1e-7
 
 
-def test_a_symmetric_formula_with_a_modest_claim_is_taken_at_the_next_even_order():
-    modest = tt.Formula("modest", 1, tt.formula("strang").stages, "test")
-    assert extrapolate(CHAIN, START, 0.5, modest, steps=(1, 2), observables=WATCHED).order == 4
+def test_a_symmetric_formula_with_a_modest_claim_is_refused():
+    with pytest.raises(
+        errors.FormulaError, match=r"order: is below the true one \(1 claimed, 2 measured\); give order=2"
+    ):
+        tt.Formula("modest", 1, tt.formula("strang").stages, "test")
 
 
 def extrapolated(**changes):

@@ -14,10 +14,13 @@ import oracle
 import trueturn as tt
 from circuits import P3, distance, matrix
 from test_order import THREE_PARTS, one_step_error
-from trueturn import errors
+from trueturn import errors, randomised
+from trueturn.driven import Driven, Ramp
+from trueturn.driven.circuits import Clock
 from trueturn.formulas import FAMILIES, formula_entry
 from trueturn.formulas.leading import exponentials_per_step
 from trueturn.formulas.order import measured_order
+from trueturn.formulas.search_target import Instance
 from trueturn.formulas.structure import NEAR_INTEGRABLE, NYSTROM
 
 UNIT = 2.0**-53
@@ -266,6 +269,31 @@ def test_special_sets_serve_partitions_with_their_structure():
     assert distance(matrix(circuit), oracle.evolution(commuting.operator(), 1.0)) <= 23 * 16 * UNIT
     perturbed = tt.Partition([tt.Operator("X_0 X_1"), tt.Operator("0.1 Z_0", qubits=2)])
     assert tt.formula("laskar-robutel-2").rotations(perturbed, 1.0, 4).count == 4 * 4 + 1
+
+
+def test_special_sets_are_refused_where_no_fixed_parts_keep_their_structure():
+    formula = tt.formula("laskar-robutel-2")
+    small = tt.Partition([tt.Operator("X_0 X_1"), tt.Operator("0.1 Z_0", qubits=2)])
+    large, tail = tt.Partition([small.parts[0]]), small.parts[1]
+    ramp = Driven([(Ramp(0.0, rate=1.0), small.parts[0]), (0.1, small.parts[1])])
+    for refused, where in (
+        (lambda: ramp.rotations(formula, "terms", 1.0, 2), "strengths that change with time do not keep that"),
+        (lambda: Clock(formula, 2), "strengths that change with time do not keep that"),
+        (lambda: randomised.permuted(formula, small, 1.0, 2, 0), "parts whose order is drawn do not keep that"),
+        (lambda: randomised.directed(formula, small, 1.0, 2, 0), "parts whose order is drawn do not keep that"),
+        (lambda: randomised.partly(formula, large, tail, 1.0, 2, 1, 0), "a part that is drawn term by term does not"),
+    ):
+        with pytest.raises(errors.FormulaError) as caught:
+            refused()
+        assert str(caught.value).startswith(f"formula: laskar-robutel-2 requires {NEAR_INTEGRABLE}, and {where}")
+        assert str(caught.value).endswith("; choose a formula that requires nothing")
+    with pytest.raises(errors.FormulaError, match=r"^partition: lacks what laskar-robutel-2 requires"):
+        Instance(P3, 1.0, 1).error(formula)
+
+
+def test_special_sets_run_where_the_strengths_stand_still():
+    constant = Driven([(1.0, tt.Operator("X_0 X_1")), (0.1, tt.Operator("Z_0", qubits=2))])
+    assert constant.rotations(tt.formula("laskar-robutel-2"), "terms", 1.0, 4).count == 4 * 4 + 1
 
 
 def slope(error, coarse):

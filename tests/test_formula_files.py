@@ -108,6 +108,46 @@ def test_a_bad_file_is_refused_with_path_and_key(write, text, key, message):
     assert ";" in str(caught.value)
 
 
+@pytest.mark.parametrize(
+    ("text", "message"),
+    [
+        (f'name = "suzuki-99"\n{JUMP}', "name: is kept for Suzuki's family ('suzuki-99'); choose another"),
+        (f'name = "j"\nsymmetric = 1\n{JUMP}', "symmetric: is of the wrong type (1); write symmetric = true or"),
+        (f'name = "j"\nsymmetric = false\n{JUMP}', "symmetric: is false (false claimed; the stages are a palindrome)"),
+        (
+            'name = "j"\nsymmetric = true\nstages = [[0.5, "forward"], [0.5, "forward"]]',
+            "symmetric: is false (true claimed; a stage and its mirror image have the same direction); make one",
+        ),
+        (f"name = 1{'0' * 5000}", "formula file: cannot be read (Exceeds the limit"),
+        (f"name = {'[' * 20000}", "formula file: cannot be read ("),
+        (f'name = "j"\nweights = [{"1" * 4000}]', "weights: entry 0 is above 1e100 in size (1111"),
+    ],
+    ids=["kept", "type", "false", "direction", "digits", "nested", "large"],
+)
+def test_a_false_claim_and_a_file_beyond_all_limits_are_refused(write, text, message):
+    with pytest.raises(errors.JobError) as caught:
+        read_formulas(write(text))
+    assert str(caught.value).startswith(message)
+    assert len(str(caught.value)) < 300
+
+
+def test_symmetry_is_checked_against_the_stages(write):
+    assert tt.Formula.read(write(f'name = "suzuki-like"\nsymmetric = true\n{JUMP}')).symmetric
+    assert not tt.Formula.read(write('name = "l"\nsymmetric = false\nstages = [[1, "forward"]]')).symmetric
+    # the last weight is cut in its last digit
+    cut = 'name = "j"\nsymmetric = true\nweights = ["0.268330000000001", "0.463339999999999", "0.26833"]'
+    with pytest.raises(errors.JobError) as caught:
+        tt.Formula.read(write(cut))
+    assert str(caught.value).startswith("symmetric: is false (true claimed; stages 1 and 6 have the weights 0.13416500")
+    assert str(caught.value).endswith("; give mirrored weights the same digits, or take the key out")
+    assert caught.value.key == "symmetric"
+
+
+def test_what_is_no_path_is_refused():
+    with pytest.raises(errors.ArgumentError, match=r"path: is no path \(3\); give the name of a TOML file"):
+        read_formulas(3)
+
+
 def test_a_formula_that_is_refused_stays_attached_as_the_cause(write):
     with pytest.raises(errors.JobError) as caught:
         read_formulas(write(f'name = "j"\norder = 6\n{JUMP}'))

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from decimal import Decimal
 
 import pytest
 
@@ -10,6 +11,7 @@ import oracle
 import trueturn as tt
 from circuits import P3, P3_PARTS, distance, matrix
 from trueturn import errors
+from trueturn.formulas.order import measured_order
 
 UNIT = 2.0**-53
 # Common practice: facts that any product formula must show
@@ -46,8 +48,26 @@ def test_symmetry_is_read_off_the_stages():
 
 def test_order_is_measured_where_none_is_claimed():
     assert tt.Formula.composition([0.25, 0.75], name="lopsided").order == 2
-    assert tt.Formula.composition([0.5, 0.5], name="two strangs", order=1).order == 1  # a modest claim stands
     assert tt.Formula.splitting([1.0], [1.0], name="lie again").stages == tt.formula("lie").stages
+
+
+@pytest.mark.parametrize(("name", "claimed"), [("strang", 1), ("blanes-moan-4", 1), ("suzuki-6", 5), ("suzuki-10", 8)])
+def test_a_claim_below_the_true_order_is_refused(name, claimed):
+    # the leading error is read at the order: below the true one it would be 0
+    formula = tt.formula(name)
+    message = (
+        rf"order: is below the true one \({claimed} claimed, {formula.order} measured\); give order={formula.order}"
+    )
+    with pytest.raises(errors.FormulaError, match=message):
+        tt.Formula("modest", claimed, formula.stages, "test")
+    assert tt.Formula("true", formula.order, formula.stages, "test").order == formula.order
+
+
+def test_special_sets_keep_the_order_that_is_measured_on_general_parts():
+    for name in ("blanes-moan-nystrom-6", "laskar-robutel-2"):
+        formula = tt.formula(name)
+        assert formula.order == measured_order(formula.exact_stages())[0] < formula.special_order
+        assert formula.error_coefficient > 0
 
 
 def test_splitting_keeps_the_direction_of_stages_when_a_weight_is_zero():
@@ -109,6 +129,19 @@ STRANG = tt.formula("strang")
         (lambda: tt.Formula.composition([0.5, 0.6], name="n"), ["weights:", "(1.1)", "divide by the sum"]),
         (lambda: tt.Formula.composition([1], name=""), ["name:", "('')", "not empty"]),
         (lambda: tt.Formula.composition([1], name="n", order=4), ["4 claimed, 2 measured", "give order=2"]),
+        (lambda: tt.Formula("n", 1, 3, "s"), ["stages: is no sequence of stages", "(3)", "give a tuple of Stage"]),
+        (lambda: tt.Formula("n", 1, "ab", "s"), ["stages: is no sequence of stages", "('ab')", "give a tuple"]),
+        (
+            lambda: tt.Formula.composition(["1e400", "-1e400", "1"], name="n"),
+            ["weights: entry 0 is above 1e100 in size"],
+        ),
+        (
+            lambda: tt.Formula.composition(["1e3000000"], name="n"),
+            ["weights: entry 0 is not a finite", "('1e3000000')"],
+        ),
+        (lambda: tt.Formula.composition(["1E-3000000"], name="n"), ["weights: entry 0 is not a finite"]),
+        (lambda: tt.Formula.composition([Decimal("1e3000000")], name="n"), ["weights: entry 0 is not a finite"]),
+        (lambda: tt.Formula.composition([10**5000], name="n"), ["entry 0 is above 1e100", "thousands of digits"]),
         (lambda: tt.Formula.composition([1], name="n", order=0), ["order:", "(0)", "1 to 12"]),
         (lambda: tt.Formula.composition([1], name="n", order=14), ["order:", "(14)", "1 to 12"]),
         (lambda: tt.Formula.composition([1], name="n", order=2.0), ["order:", "(2.0)", "1 to 12"]),

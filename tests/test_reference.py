@@ -352,7 +352,7 @@ def test_one_time_may_be_any_kind_of_number(times):
         (
             {"state": State.from_array(np.ones(4, complex))},
             ArgumentError,
-            r"^state: not normalised \(norm 2\)",
+            r"^state: is not normalised \(norm 2\)",
         ),
         ({"threads": 0}, ArgumentError, r"^threads: not a thread count \(0\)"),
     ],

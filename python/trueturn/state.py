@@ -454,11 +454,24 @@ def _umask() -> int:
 
 
 def require_same_qubits(state: State, operator: Operator, argument: str) -> None:
-    """Refuse an operator on another number of qubits than the state."""
+    """Refuse what is no state or no operator, and an operator on another number of qubits than the state."""
+    _require("state", state, State, "make one by State.product or another of its constructors")
+    _require(argument, operator, Operator, "make one from text: Operator('Z_0', qubits=…)")
     if operator.qubits != state.qubits:
         raise StateShapeError(
             f"{argument}: acts on {operator.qubits} qubits, the state on {state.qubits}; "
             f"build it with qubits={state.qubits}",
             shape=operator.qubits,
             expected=state.qubits,
+        )
+
+
+def require_normalised(state: State) -> None:
+    """Refuse a state whose norm is not 1 within 1e-6 (1e-3 for complex64)."""
+    norm = state.norm()
+    if not abs(norm - 1.0) <= (1e-3 if state.dtype == np.dtype(np.complex64) else 1e-6):
+        raise ArgumentError(
+            f"state: is not normalised (norm {norm:.9g}); divide its amplitudes by their norm",
+            argument="state",
+            value=norm,
         )

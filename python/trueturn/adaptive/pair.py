@@ -2,8 +2,11 @@
 
 from __future__ import annotations
 
+from fractions import Fraction
+
 from trueturn.errors import ArgumentError, FormulaError
 from trueturn.formulas import Formula, Stage, formula
+from trueturn.formulas.order import measured_order
 
 __all__ = ["higher_formula", "pair_of"]
 
@@ -69,11 +72,11 @@ def higher_formula(lower: Formula) -> Formula:
     if lower.order % 2:
         halves = [Stage(0.5 * stage.weight, stage.direction) for stage in lower.stages]
         mirrored = [Stage(s.weight, "reverse" if s.direction == "forward" else "forward") for s in reversed(halves)]
-        stages, order = (*halves, *mirrored), lower.order + 1
+        stages = (*halves, *mirrored)
     else:
         odd = lower.order + 1
         outer = 1.0 / (4.0 - 4.0 ** (1.0 / odd))
         copies = (outer, outer, 1.0 - 4.0 * outer, outer, outer)
         stages = tuple(Stage(copy * stage.weight, stage.direction) for copy in copies for stage in lower.stages)
-        order = lower.order + (2 if lower.symmetric else 1)
+    order, _ = measured_order([(Fraction(stage.weight), stage.direction == "reverse") for stage in stages])
     return Formula(f"{lower.name}, raised", order, stages, f"made of {lower.name}: {lower.source}")

@@ -19,7 +19,7 @@ from trueturn.formulas import Formula
 from trueturn.operator import Operator
 from trueturn.partition import Partition
 from trueturn.rotations import Rotations
-from trueturn.state import State, require_same_qubits
+from trueturn.state import State, require_normalised, require_same_qubits
 
 __all__ = ["AdaptiveRun", "AdaptiveStep", "adaptive"]
 
@@ -124,7 +124,7 @@ def adaptive(
         `higher_formula` of it.
     system : Partition or Driven
     state : State
-        At the start; not written.
+        At the start; not written. Its norm must be 1 within 1e-6 (1e-3 for complex64).
     time : float
         Total time; negative to run backwards. Kept exactly: the last step fits.
     tolerance : float
@@ -153,7 +153,7 @@ def adaptive(
     Raises
     ------
     ArgumentError
-        A number out of range, a system of another kind, a drive that is not defined where it is sampled.
+        A number or the norm out of range, a system or state of another kind, a drive that is not defined where it is sampled.
     FormulaError
         No formula of higher order, or a pair whose second is not of higher order.
     StateShapeError
@@ -252,6 +252,7 @@ def _check_state(circuits: Circuits, state: State, observable: Operator | None) 
     require_same_qubits(state, Operator("0", qubits=circuits.qubits), "system")
     if observable is not None:
         require_same_qubits(state, observable, "observable")
+    require_normalised(state)
 
 
 def _rate(tolerance: object) -> float:

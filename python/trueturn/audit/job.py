@@ -20,7 +20,7 @@ from trueturn.audit.candidate import Candidate
 from trueturn.audit.job_system import Start, read_start, read_system
 from trueturn.audit.job_table import Table, nearest
 from trueturn.errors import FormulaError, JobError
-from trueturn.formulas import Formula, formula, formulas
+from trueturn.formulas import Formula, formula, formulas, read_formulas
 from trueturn.formulas.structure import require_structure
 from trueturn.operator import Operator
 from trueturn.partition_rules import RULES
@@ -220,7 +220,7 @@ def parse_job(text: str, path: Path | None, candidates_required: bool) -> Job:
         remedy = 'add [target.observables] with a line such as edge = "Z_0", or set quantity = "state"'
         raise target.error("observables", "missing", remedy)
 
-    candidates = read_candidates(file, operator, candidates_required)
+    candidates = read_candidates(file, operator, folder, candidates_required)
     reference = Table(file.table("reference").values if "reference" in file else {}, "reference", shown)
     reference.only(("tolerance", "method"))
     output = Table(file.table("output").values if "output" in file else {}, "output", shown)
@@ -266,6 +266,9 @@ def parse_toml(text: str, path: str) -> dict[str, object]:
         what = reason[:1].lower() + reason[1:]
         message = f"job file: not valid TOML at {where}: {what} ({line.strip()[:60]!r}); mend that line"
         raise JobError(message, path=path, key="") from error
+    except (ValueError, RecursionError) as error:  # integers of thousands of digits, brackets nested a thousand deep
+        message = f"job file: cannot be read ({str(error)[:60]}); write shorter numbers and fewer nested brackets"
+        raise JobError(message, path=path, key="") from error
 
 
 def read_times(target: Table) -> tuple[float, ...]:
@@ -300,7 +303,7 @@ def read_observables(target: Table, qubits: int) -> dict[str, Operator]:
     return observables
 
 
-def read_candidates(file: Table, operator: Operator, required: bool) -> tuple[Candidate, ...]:
+def read_candidates(file: Table, operator: Operator, folder: Path, required: bool) -> tuple[Candidate, ...]:
     """Read every `[[candidate]]`, and try its rule on the operator."""
     entries = file.values.get("candidate", [])
     if not isinstance(entries, list) or not all(isinstance(entry, dict) for entry in entries):
@@ -310,10 +313,10 @@ def read_candidates(file: Table, operator: Operator, required: bool) -> tuple[Ca
     candidates = []
     for index, entry in enumerate(entries, start=1):
         section = Table(entry, f"candidate[{index}]", file.path)
-        section.only(("formula", "rule", "steps"))
+        section.only(("formula", "formula_file", "rule", "steps"))
         name = section.text("formula", 'formula = "strang"')
+        chosen = own_formula(section, name, folder) if "formula_file" in section else known_formula(section, name)
         rule = section.choice("rule", tuple(RULES), default="commuting")
-        chosen = known_formula(section, name)
         candidate = Candidate(chosen, rule=rule, steps=read_steps(section))
         with section.blame("rule"):
             require_structure(chosen, candidate.partition(operator))
@@ -327,6 +330,19 @@ def known_formula(section: Table, name: str) -> Formula:
         return formula(name)
     except FormulaError as error:
         raise section.error("formula", "unknown", nearest(name, formulas(special=True)), name) from error
+
+
+def own_formula(section: Table, name: str, folder: Path) -> Formula:
+    """Find a formula in the file that `formula_file` names; what is wrong in there is told with its own key."""
+    file = section.text("formula_file", 'formula_file = "mine.toml"')
+    try:
+        found = {one.name: one for one in read_formulas(folder / file)}
+    except JobError as error:
+        full = section.full("formula_file")
+        raise JobError(f"{full}: {file}: {error}", path=section.path, key=full) from error
+    if name not in found:
+        raise section.error("formula", f"not in {file}", nearest(name, tuple(found)), name)
+    return found[name]
 
 
 def read_steps(section: Table) -> int | str:

@@ -7,6 +7,7 @@ import time as clock
 from collections.abc import Callable, Iterable, Mapping, Sequence
 
 from trueturn import _memory, _threads
+from trueturn._observables import named_operators
 from trueturn.accuracy.bounds import bound
 from trueturn.audit import words
 from trueturn.audit.candidate import Candidate
@@ -108,7 +109,7 @@ def audit(
     'meets'
     """
     began = clock.perf_counter()
-    watched = dict(observables or {})
+    watched = named_operators(observables)
     asked = sorted(set(positive_times(times)))
     _check(operator, state, candidates, tolerance, quantity, watched, readout, relative_to, most_steps)
     workers = _threads.resolve(threads)

@@ -8,6 +8,7 @@ from dataclasses import replace
 from operator import index
 
 from trueturn import _memory, _threads
+from trueturn._observables import named_operators
 from trueturn.audit.candidate import Candidate
 from trueturn.audit.measure import Bench
 from trueturn.comparison.result import Comparison, Point, efficient, unit_words
@@ -116,7 +117,7 @@ def compare(
     >>> [found.at_budget(budget)[0].formula for budget in found.budgets]
     ['strang', 'suzuki-4']
     """
-    watched = dict(observables or {})
+    watched = named_operators(observables)
     asked = quantity if quantity is not None else "observables" if watched else "state"
     moment = _check(operator, state, time, watched, asked, cost)
     workers = _threads.resolve(threads)

@@ -21,6 +21,7 @@ from trueturn.driven.parts import DrivenPart
 from trueturn.driven.strengths import value_of
 from trueturn.errors import ArgumentError
 from trueturn.formulas import Formula
+from trueturn.formulas.structure import require_nothing
 from trueturn.rotations import WRITTEN_OUT_LIMIT, Rotations
 
 if TYPE_CHECKING:
@@ -53,6 +54,11 @@ class Clock:
     runs : list of (part, {reading: weight})
         In order of time; no two neighbours of one part.
 
+    Raises
+    ------
+    FormulaError
+        The formula requires a structure of its parts, which strengths that change with time need not keep.
+
     Examples
     --------
     >>> import trueturn as tt
@@ -61,6 +67,7 @@ class Clock:
     """
 
     def __init__(self, formula: Formula, parts: int) -> None:
+        require_nothing(formula, "strengths that change with time do not keep that")
         self.stages: list[tuple[Fraction, Fraction]] = []
         self.runs: list[Run] = []
         now = Fraction(0)

@@ -208,6 +208,8 @@ class Driven:
             no finite number there, angles too large for a float, or more than 10**7 rotations.
         PartitionError
             Strings of a part that do not commute, an unknown rule, a partition of other strings.
+        FormulaError
+            The formula requires a structure of its parts, and a strength changes with time or they lack it.
         MemoryRefusedError
             The rotations do not fit: about 100 bytes each while they are made.
 

@@ -10,13 +10,14 @@ import numpy as np
 import numpy.typing as npt
 
 from trueturn import _memory, _native, _threads
+from trueturn._observables import named_operators
 from trueturn.driven import checks
 from trueturn.driven.hamiltonian import Driven
 from trueturn.driven.stepper import Stepper
 from trueturn.errors import ArgumentError, ToleranceError
 from trueturn.operator import Operator
 from trueturn.reference.certificate import expectation_rounding, expectation_shift, norm_bound
-from trueturn.state import State, require_same_qubits
+from trueturn.state import State, require_normalised, require_same_qubits
 
 __all__ = ["DrivenReference", "driven_reference"]
 
@@ -154,7 +155,7 @@ def driven_reference(
     >>> found.kind, found.error[4.0] < 1e-9
     ('estimated', True)
     """
-    watched = dict(observables or {})
+    watched = named_operators(observables)
     asked, begin = _times(times), checks.number("start", start)
     _check(driven, state, tolerance, watched)
     if min(asked) < begin < max(asked):
@@ -331,7 +332,4 @@ def _check(driven: Driven, state: State, tolerance: float, observables: Mapping[
             tolerance=tolerance,
             achievable=1e-9,
         )
-    norm = state.norm()
-    slack = 1e-3 if state.dtype == np.dtype(np.complex64) else 1e-6
-    if abs(norm - 1.0) > slack:
-        checks.refuse("state", "is not normalised", norm, "divide its amplitudes by their norm")
+    require_normalised(state)

@@ -10,6 +10,7 @@ import numpy as np
 import numpy.typing as npt
 
 from trueturn import _memory, _threads
+from trueturn._observables import named_operators
 from trueturn.audit.candidate import Candidate
 from trueturn.audit.measure import judge
 from trueturn.audit.truth import Progress, positive_times, reference_for
@@ -119,7 +120,7 @@ def extrapolate(
     candidate = Candidate(formula, rule, 1)  # type: ignore[arg-type]
     counts = _steps(steps)
     asked = positive_times(times)
-    watched = dict(observables or {})
+    watched = named_operators(observables)
     if not isinstance(candidate.formula, Formula):
         raise FormulaError(
             f"formula: is a processed one ({candidate.formula.name!r}), and the powers of the step in its error are not "

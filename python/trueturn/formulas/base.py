@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from functools import cached_property
@@ -53,7 +53,8 @@ class Formula:
     ----------
     name : str
     order : int
-        Claimed order, 1 to 12: the error of one step falls as step**(order + 1).
+        Claimed order, 1 to 12: the error of one step falls as step**(order + 1). It must be the measured one,
+        neither more nor less, on general operators; at 12 it is not measured whether it is more.
     stages : tuple of Stage
         In the order in which they act; at least one.
     source : str
@@ -68,7 +69,7 @@ class Formula:
     ------
     FormulaError
         Empty name, no stages, a weight that is not finite, weights that do not sum to 1, a claimed order
-        that is out of range or not reached, or a structure that cannot be checked.
+        that is out of range, not reached or below the true one, or a structure that cannot be checked.
 
     Notes
     -----
@@ -102,6 +103,12 @@ class Formula:
                 choices=(),
             )
         require_known(self.requires, self.name)
+        if isinstance(self.stages, str) or not isinstance(self.stages, Iterable):
+            raise FormulaError(
+                f"stages: is no sequence of stages ({self.stages!r}); give a tuple of Stage(weight, direction)",
+                name=self.name,
+                choices=(),
+            )
         object.__setattr__(self, "stages", tuple(self.stages))
         self._check_weights()
         object.__setattr__(self, "order", self._checked_order(self.order))
@@ -261,8 +268,8 @@ class Formula:
     def _measured(cls, name: str, order: int | None, pairs: Sequence[ExactStage], source: str) -> Formula:
         stages = tuple(Stage(float(weight), direction) for weight, direction in pairs)
         if order is None:
-            first_order = cls(name, 1, stages, source)
-            order, _ = measured_order(first_order.exact_stages())
+            reached, _ = measured_order([(Fraction(stage.weight), stage.direction == "reverse") for stage in stages])
+            order = max(reached, 1)
         return cls(name, order, stages, source)
 
     @property
@@ -425,8 +432,16 @@ class Formula:
                 name=self.name,
                 choices=(),
             )
-        reached, shortfall = measured_order(self.exact_stages(), order)
-        if shortfall is not None:
+        # one degree more than claimed: leading errors are read at the order, so it must be the true one
+        reached, shortfall = measured_order(self.exact_stages(), min(order + 1, MOST_ORDER))
+        if reached > order:
+            reached, _ = measured_order(self.exact_stages())
+            raise FormulaError(
+                f"order: is below the true one ({order} claimed, {reached} measured); give order={reached}",
+                name=self.name,
+                choices=(),
+            )
+        if shortfall is not None and reached < order:
             raise FormulaError(
                 f"order: is not reached ({order} claimed, {reached} measured; a condition of degree "
                 f"{shortfall.degree} is missed by {shortfall.residual:.1e}); correct the digits, "

@@ -4,6 +4,7 @@
     name = "my-4"
     order = 4                                        # optional; measured either way
     source = "my notebook"                           # optional
+    symmetric = true                                 # optional; checked against the stages
     weights = ["1.3512071919596576", "-1.7024143839193153", "1.3512071919596576"]
 
 Instead of `weights` (a composition of Strang steps) a formula may give `a` and `b` (a splitting method for two
@@ -21,14 +22,15 @@ from os import PathLike, fspath
 from pathlib import Path
 from typing import Any
 
-from trueturn.errors import FormulaError, JobError
+from trueturn.errors import ArgumentError, FormulaError, JobError
+from trueturn.formulas import suzuki
 from trueturn.formulas.base import Formula, Stage
 from trueturn.formulas.order import measured_order
 from trueturn.formulas.weights import DIRECTIONS, exact_weights
 
 __all__ = ["read_formula", "read_formulas"]
 
-KEYS = ("name", "order", "source", "weights", "a", "b", "stages")
+KEYS = ("name", "order", "source", "weights", "a", "b", "stages", "symmetric")
 SHAPES = ({"weights"}, {"a", "b"}, {"stages"})
 
 
@@ -49,10 +51,17 @@ def read_formulas(path: str | PathLike[str]) -> tuple[Formula, ...]:
     ------
     JobError
         The file is missing or not TOML; a key is unknown, missing or of the wrong type; a name is empty, taken
-        by a registered formula or given twice; weights do not sum to 1; a claimed order is not reached.
-        `path` and `key` say where, and an error of the formula itself is attached as its cause.
+        by a registered formula or given twice; weights do not sum to 1; a claimed order or symmetry is not the true
+        one. `path` and `key` say where, and an error of the formula itself is attached as its cause.
+    ArgumentError
+        `path` is no path.
     """
-    path = Path(fspath(path))
+    try:
+        path = Path(fspath(path))
+    except TypeError:
+        raise ArgumentError(
+            f"path: is no path ({path!r}); give the name of a TOML file", argument="path", value=path
+        ) from None
     document = _document(path)
     entries = document.get("formula", [document])
     if "formula" in document:
@@ -90,6 +99,10 @@ def _document(path: Path) -> dict[str, Any]:
         what, remedy, cause = f"is not UTF-8 text (byte {error.start})", "save it as UTF-8", error
     except tomllib.TOMLDecodeError as error:
         what, remedy, cause = f"is not valid TOML ({error})", "mend that place", error  # type: ignore[assignment]
+    except (ValueError, RecursionError) as error:
+        # integers of thousands of digits, and brackets nested a thousand deep
+        what, remedy = f"cannot be read ({str(error)[:60]})", "write shorter numbers and fewer nested brackets"
+        cause = error  # type: ignore[assignment]
     except OSError as error:
         what, remedy = f"cannot be read ({error.strerror or error})", "check the path and its permissions"
         cause = error  # type: ignore[assignment]
@@ -108,6 +121,9 @@ def _read_one(path: Path, place: str, entry: Mapping[str, Any]) -> Formula:
             raise _error(path, place + key, "is missing", f"add {key} = {example}")
         if not isinstance(value, kind) or isinstance(value, bool):
             raise _error(path, place + key, f"is of the wrong type ({value!r})", f"write {key} = {example}")
+    if not isinstance(entry.get("symmetric", True), bool):
+        wrong = f"is of the wrong type ({entry['symmetric']!r})"
+        raise _error(path, place + "symmetric", wrong, "write symmetric = true or symmetric = false")
     given = set(entry) & set().union(*SHAPES)
     if given not in SHAPES:
         what = f"has {' and '.join(sorted(given))}" if given else "has no weights"
@@ -115,14 +131,36 @@ def _read_one(path: Path, place: str, entry: Mapping[str, Any]) -> Formula:
         raise _error(path, place + (sorted(given)[0] if given else "weights"), what, remedy)
     from trueturn.formulas import formulas
 
-    if entry["name"] in formulas(special=True) or entry["name"].startswith("suzuki-"):
+    family = suzuki.NAME.fullmatch(entry["name"])
+    if entry["name"] in formulas(special=True) or (family and suzuki.entry(int(family[1])) is not None):
         raise _error(path, place + "name", f"is the name of a known formula ({entry['name']!r})", "choose another")
+    if family:
+        raise _error(path, place + "name", f"is kept for Suzuki's family ({entry['name']!r})", "choose another")
     try:
-        return _made(path, place, entry)
+        made = _made(path, place, entry)
     except FormulaError as error:
         argument, _, text = str(error).partition(": ")
         key = place + argument.split(",")[0]
         raise JobError(f"{key}: {text}", path=str(path), key=key) from error
+    if "symmetric" in entry and entry["symmetric"] != made.symmetric:
+        wrong, remedy = _asymmetry(made)
+        raise _error(path, place + "symmetric", wrong, remedy)
+    return made
+
+
+def _asymmetry(formula: Formula) -> tuple[str, str]:
+    """Say why the claim about symmetry is false, and what to do."""
+    if formula.symmetric:
+        return "is false (false claimed; the stages are a palindrome)", "write symmetric = true, or take the key out"
+    pairs = list(zip(formula.stages, reversed(formula.stages), strict=True))
+    for number, (stage, mirror) in enumerate(pairs, start=1):
+        if stage.weight != mirror.weight:
+            where = (
+                f"stages {number} and {len(pairs) + 1 - number} have the weights {stage.weight!r}, {mirror.weight!r}"
+            )
+            return f"is false (true claimed; {where})", "give mirrored weights the same digits, or take the key out"
+    what = "is false (true claimed; a stage and its mirror image have the same direction)"
+    return what, "make one forward and the other reverse, or take the key out"
 
 
 def _made(path: Path, place: str, entry: Mapping[str, Any]) -> Formula:
@@ -139,7 +177,8 @@ def _made(path: Path, place: str, entry: Mapping[str, Any]) -> Formula:
     weights = exact_weights("stages", [stage[0] for stage in stages], name)
     listed = tuple(Stage(float(weight), stage[1]) for weight, stage in zip(weights, stages, strict=True))
     if order is None:
-        order, _ = measured_order([(Fraction(stage.weight), stage.direction == "reverse") for stage in listed])
+        reached, _ = measured_order([(Fraction(stage.weight), stage.direction == "reverse") for stage in listed])
+        order = max(reached, 1)
     return Formula(name, order, listed, source)
 
 

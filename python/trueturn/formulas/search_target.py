@@ -10,7 +10,9 @@ from fractions import Fraction
 import numpy as np
 
 from trueturn.errors import ArgumentError
+from trueturn.formulas.base import Formula
 from trueturn.formulas.merging import rotations_of
+from trueturn.formulas.structure import require_structure
 from trueturn.operator import Operator
 from trueturn.partition import Partition
 from trueturn.reference import Reference, reference
@@ -105,7 +107,15 @@ class Instance:
         return self._start.qubits
 
     def error(self, formula: object) -> float:
-        """Measure the error of a formula, or of anything with `rotations` and `exact_stages`, on this instance."""
+        """Measure the error of a formula, or of anything with `rotations` and `exact_stages`, on this instance.
+
+        Raises
+        ------
+        FormulaError
+            The partition lacks the structure that the formula requires.
+        """
+        if isinstance(formula, Formula):
+            require_structure(formula, self.partition)
         return self.stages_error(formula.exact_stages())  # type: ignore[attr-defined]
 
     def stages_error(self, stages: Sequence[tuple[Fraction, bool]]) -> float:

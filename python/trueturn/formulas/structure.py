@@ -16,7 +16,7 @@ from trueturn.partition import Partition
 if TYPE_CHECKING:
     from trueturn.formulas.base import Formula
 
-__all__ = ["NEAR_INTEGRABLE", "NYSTROM", "require_known", "require_structure"]
+__all__ = ["NEAR_INTEGRABLE", "NYSTROM", "require_known", "require_nothing", "require_structure"]
 
 NYSTROM = "two parts A, B with [A, [A, [A, B]]] = 0"
 """Runge-Kutta-Nyström sets: A a potential and B a kinetic energy quadratic in momentum.
@@ -63,6 +63,16 @@ def require_structure(formula: Formula, partition: Partition) -> None:
         raise FormulaError(
             f"partition: lacks what {formula.name} requires ({formula.requires}; here {len(partition.parts)} parts), "
             f"and without it the order is only {formula.order}; choose a formula that requires nothing",
+            name=formula.name,
+            choices=(),
+        )
+
+
+def require_nothing(formula: Formula, where: str) -> None:
+    """Refuse a formula that requires any structure, `where` parts are not those of one fixed partition."""
+    if formula.requires:
+        raise FormulaError(
+            f"formula: {formula.name} requires {formula.requires}, and {where}; choose a formula that requires nothing",
             name=formula.name,
             choices=(),
         )

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import math
+import re
 from collections.abc import Sequence
 from decimal import Decimal
 from fractions import Fraction
@@ -22,6 +24,36 @@ SUM_SLACK = 8
 """Weights may miss the sum 1 by 8 u Σ|w|: rounding each explains 1, digits in print the rest."""
 
 
+MOST_WEIGHT = 10**100
+"""Rounding such weights to floats leaves nothing of a sum of 1, and sums of them are still floats."""
+
+_EXPONENT = re.compile(r"e[+-]?0*([0-9_]+)\s*", re.IGNORECASE)
+_MOST_DIGITS = 3  # of an exponent; the exact fraction of one of seven takes seconds
+
+
+def _exact(value: object) -> Fraction:
+    """Turn one number or text into a fraction; a ValueError where it is none or its exponent is beyond all floats."""
+    if not isinstance(value, (Real, Rational, Decimal, str)) or isinstance(value, bool):
+        raise ValueError
+    if isinstance(value, str) and (found := _EXPONENT.search(value)) and len(found[1]) > _MOST_DIGITS:
+        raise ValueError
+    if isinstance(value, Decimal) and value.is_finite() and len(str(abs(value.adjusted()))) > _MOST_DIGITS:
+        raise ValueError
+    exact = Fraction(value if isinstance(value, (Rational, Decimal, str)) else float(value))
+    if abs(exact) > MOST_WEIGHT:
+        raise OverflowError
+    return exact
+
+
+def shown(value: object) -> str:
+    """Write a value for a message, cut to sixty characters."""
+    try:
+        text = repr(value)
+    except ValueError:  # an integer of more digits than Python writes
+        return "an integer of thousands of digits"
+    return text if len(text) <= 60 else text[:59] + "…"
+
+
 def exact_weights(argument: str, values: Sequence[Number], name: str) -> list[Fraction]:
     """Turn numbers or decimal texts into the exact fractions that they are; check that they sum to 1."""
     remedy = "give finite numbers, or decimal digits as text"
@@ -29,14 +61,17 @@ def exact_weights(argument: str, values: Sequence[Number], name: str) -> list[Fr
         raise FormulaError(f"{argument}: is not a list of weights ({values!r}); {remedy}", name=name, choices=())
     exact: list[Fraction] = []
     for number, value in enumerate(values):
-        wanted = isinstance(value, (Real, Rational, Decimal, str)) and not isinstance(value, bool)
         try:
-            if not wanted:
-                raise ValueError
-            exact.append(Fraction(value if isinstance(value, (Rational, Decimal, str)) else float(value)))
-        except (ValueError, OverflowError, ZeroDivisionError):
+            exact.append(_exact(value))
+        except OverflowError:
+            infinite = isinstance(value, (float, Decimal)) and not math.isfinite(value)
+            what = "not a finite number" if infinite else "above 1e100 in size"
             raise FormulaError(
-                f"{argument}: entry {number} is not a finite number ({value!r}); {remedy}",
+                f"{argument}: entry {number} is {what} ({shown(value)}); {remedy}", name=name, choices=()
+            ) from None
+        except (ValueError, ZeroDivisionError):
+            raise FormulaError(
+                f"{argument}: entry {number} is not a finite number ({shown(value)}); {remedy}",
                 name=name,
                 choices=(),
             ) from None

@@ -21,7 +21,7 @@ from trueturn.randomised.truth import Truth, truth_of
 from trueturn.randomised.work import FIXED_COLUMNS, Row, Task, run
 from trueturn.reference import Reference
 from trueturn.reference.certificate import UNIT, expectation_rounding, expectation_shift, norm_bound
-from trueturn.state import State, require_same_qubits
+from trueturn.state import State, require_normalised, require_same_qubits
 
 __all__ = ["Average", "Progress", "averaged"]
 
@@ -111,6 +111,12 @@ def averaged(
 ) -> Average:
     """Measure the averaged channel; see `Ensemble.average`."""
     total = whole("count", count, 1, "give how many samples to draw")
+    if not isinstance(observables, Mapping):
+        raise ArgumentError(
+            f"observables: is no mapping ({observables!r}); give one of names to operators, {{}} for none",
+            argument="observables",
+            value=observables,
+        )
     watched = {name: checked_operator(f"observables[{name!r}]", operator) for name, operator in observables.items()}
     _check(ensemble, state, watched, executor)
     truth = truth_of(ensemble, reference)
@@ -164,11 +170,7 @@ def _check(ensemble: Ensemble, state: State, observables: Mapping[str, Operator]
         )
     for name, operator in observables.items():
         require_same_qubits(state, operator, f"observables[{name!r}]")
-    length = state.norm()
-    if not abs(length - 1.0) <= (1e-3 if state.dtype == np.dtype(np.complex64) else 1e-6):
-        raise ArgumentError(
-            f"state: is not normalised (norm {length:.6g}); divide it by its norm", argument="state", value=length
-        )
+    require_normalised(state)
     if executor is not None and not callable(getattr(executor, "submit", None)):
         raise ArgumentError(
             f"executor: has no submit ({executor!r}); give a concurrent.futures.Executor, or None",

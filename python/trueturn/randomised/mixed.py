@@ -11,6 +11,7 @@ import numpy as np
 from trueturn.errors import OperatorError
 from trueturn.formulas import Formula
 from trueturn.formulas.merging import Run, merged_runs, repeated
+from trueturn.formulas.structure import require_nothing
 from trueturn.operator import Operator
 from trueturn.partition import Partition
 from trueturn.randomised.channel import CAMPBELL, ChannelBound, clipped, qdrift_diamond
@@ -190,7 +191,7 @@ def partly(
     Raises
     ------
     FormulaError
-        The name of no formula.
+        The name of no formula, or one that requires a structure of its parts.
     OperatorError
         `tail` is no Operator, or acts on other qubits than the partition.
     ArgumentError
@@ -212,6 +213,7 @@ def partly(
     10
     """
     rule, parts = checked_formula(formula), checked_partition(partition)
+    require_nothing(rule, "a part that is drawn term by term does not keep that")
     small = checked_operator("tail", tail)
     if small.qubits != parts.qubits:
         raise OperatorError(

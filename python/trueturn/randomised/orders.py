@@ -12,6 +12,7 @@ import numpy as np
 
 from trueturn.formulas import Formula
 from trueturn.formulas.merging import Run, merged_runs
+from trueturn.formulas.structure import require_nothing
 from trueturn.operator import Operator
 from trueturn.partition import Partition
 from trueturn.randomised.channel import CHILDS, ChannelBound, clipped, random_direction_bound
@@ -122,7 +123,7 @@ def permuted(formula: Formula | str, partition: Partition, time: float, steps: i
     Raises
     ------
     FormulaError
-        The name of no formula.
+        The name of no formula, or one that requires a structure of its parts.
     ArgumentError
         `partition` is no Partition, `time` not finite, `steps` or `seed` no whole number in range, or a sample would
         have more than 10**7 rotations.
@@ -193,6 +194,7 @@ def _checked(
     formula: Formula | str, partition: Partition, time: float, steps: int, seed: int
 ) -> tuple[Formula, Partition, float, int, int]:
     rule, parts = checked_formula(formula), checked_partition(partition)
+    require_nothing(rule, "parts whose order is drawn do not keep that")
     length = finite("time", time, "give a real number, negative to run backwards")
     count = whole("steps", steps, 1, "give a number of equal steps, such as 10")
     number = whole("seed", seed, 0, "give an integer of at least 0")

@@ -11,6 +11,7 @@ import numpy as np
 import numpy.typing as npt
 
 from trueturn import _threads
+from trueturn._observables import named_operators
 from trueturn.errors import ArgumentError, OperatorError, ToleranceError
 from trueturn.operator import Operator
 from trueturn.reference import chebyshev, dense, krylov
@@ -20,7 +21,7 @@ from trueturn.reference.certificate import (
     expectation_shift,
     norm_bound,
 )
-from trueturn.state import State, require_same_qubits
+from trueturn.state import State, require_normalised, require_same_qubits
 
 __all__ = ["Certificate", "Reference", "reference"]
 
@@ -118,7 +119,7 @@ def reference(
     >>> print(f"{found.expectations['z'][0]:.8f}")
     0.49018714
     """
-    watched = dict(observables or {})
+    watched = named_operators(observables)
     asked = _times(times)
     _check(operator, state, tolerance, watched, method, keep)
     workers = _threads.resolve(threads)
@@ -280,9 +281,9 @@ def _check(
     method: str,
     keep: str,
 ) -> None:
+    require_same_qubits(state, operator, "operator")
     if len(operator) == 0:
         raise OperatorError("operator: has no terms (0.0); give a Hamiltonian with at least one", argument="operator")
-    require_same_qubits(state, operator, "operator")
     for name, observable in observables.items():
         require_same_qubits(state, observable, f"observables[{name!r}]")
     if method not in METHODS:
@@ -303,11 +304,4 @@ def _check(
             tolerance=tolerance,
             achievable=1e-10,
         )
-    norm = state.norm()
-    slack = 1e-3 if state.dtype == np.dtype(np.complex64) else 1e-6
-    if abs(norm - 1.0) > slack:
-        raise ArgumentError(
-            f"state: not normalised (norm {norm:.9g}); divide its amplitudes by their norm",
-            argument="state",
-            value=norm,
-        )
+    require_normalised(state)
