@@ -266,6 +266,32 @@ def test_bad_input_is_refused_by_class_and_remedy(case):
     assert np.array_equal(before, START.amplitudes)
 
 
+def test_numbers_of_numpy_are_numbers():
+    found = tt.audit(
+        CHAIN,
+        START,
+        np.float64(1.0),
+        [tt.Candidate("lie", steps=np.int64(3))],
+        np.float32(1e-1),
+        observables=WATCHED,
+        threads=np.int64(1),
+    )
+    assert found.rows[0].steps == 3
+
+
+def test_things_of_the_wrong_kind_are_refused_by_name():
+    lie = [tt.Candidate("lie", steps=3)]
+    for call, message in (
+        (lambda: tt.audit("Z_0", START, 1.0, lie, 0.1, observables=WATCHED), "operator: "),
+        (lambda: tt.audit(CHAIN, START.amplitudes, 1.0, lie, 0.1, observables=WATCHED), "state: "),
+        (lambda: tt.audit(CHAIN, START, 1.0, lie, 0.1, observables={"m": "Z_0"}), "observables"),
+        (lambda: tt.audit(CHAIN, START, 1.0, lie[0], 0.1, observables=WATCHED), "candidates: "),
+        (lambda: tt.reference("Z_0", START, 1.0), "operator: "),
+    ):
+        with pytest.raises(tt.errors.TrueturnError, match=message):
+            call()
+
+
 @pytest.mark.parametrize("steps", [0, -1, 2.5, "many", True, None])
 def test_impossible_step_counts_are_refused(steps):
     with pytest.raises(tt.errors.ArgumentError, match=r"steps: not a positive whole number .*least"):

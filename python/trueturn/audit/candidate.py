@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from numbers import Integral
 
 from trueturn.errors import ArgumentError
 from trueturn.formulas import Formula, formula
@@ -53,6 +54,8 @@ class Candidate:
                 argument="formula",
                 value=self.formula,
             )
+        if isinstance(self.steps, Integral) and not isinstance(self.steps, bool):
+            object.__setattr__(self, "steps", int(self.steps))
         whole = isinstance(self.steps, int) and not isinstance(self.steps, bool)
         if self.steps != "least" and not (whole and int(self.steps) >= 1):
             raise ArgumentError(

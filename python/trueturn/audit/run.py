@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 import time as clock
 from collections.abc import Callable, Iterable, Mapping, Sequence
+from numbers import Real
 
 from trueturn import _memory, _threads
 from trueturn._observables import named_operators
@@ -245,7 +246,7 @@ def _check(
     relative_to: str | None,
     most_steps: int,
 ) -> None:
-    if isinstance(tolerance, bool) or not isinstance(tolerance, (int, float)) or not 0.0 < tolerance < math.inf:
+    if isinstance(tolerance, bool) or not isinstance(tolerance, Real) or not 0.0 < float(tolerance) < math.inf:
         raise ToleranceError(
             f"tolerance: not a positive number ({tolerance!r}); 1e-8 and above can usually be judged",
             tolerance=tolerance,
@@ -275,7 +276,7 @@ def _check(
             argument="most_steps",
             value=most_steps,
         )
-    if not candidates or not all(isinstance(candidate, Candidate) for candidate in candidates):
+    if not isinstance(candidates, Sequence) or not candidates or not all(isinstance(c, Candidate) for c in candidates):
         raise AuditError(
             f"candidates: no list of Candidate ({candidates!r}); give at least one",
             reason="no candidates",

@@ -58,5 +58,5 @@ def origin_of(ensemble: Ensemble, state: State, observables: Mapping[str, Operat
 def _digest(state: State) -> str:
     amplitudes = np.ascontiguousarray(state.amplitudes)
     found = hashlib.sha256(amplitudes.dtype.str.encode())
-    found.update(amplitudes.view(np.uint8))
+    found.update(amplitudes.view(np.uint8).data)
     return found.hexdigest()
