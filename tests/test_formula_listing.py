@@ -12,6 +12,7 @@ import trueturn as tt
 from trueturn import cli, errors
 from trueturn.audit.job import read_job
 from trueturn.formulas.comparison import best_for, span
+from trueturn.formulas.listing import document
 from trueturn.formulas.table import BEGIN, END, markdown, replaced
 
 README = Path(__file__).parent.parent / "README.md"
@@ -125,3 +126,9 @@ def test_a_job_takes_a_formula_made_on_demand_and_refuses_a_special_one_early(jo
 def test_a_missing_job_is_refused(tmp_path, capsys):
     assert cli.run(["formulas", str(tmp_path / "absent.toml")]) == 2
     assert "no such file" in capsys.readouterr().err
+
+
+def test_processed_formulas_are_listed_with_what_they_cost_once():
+    (processed,) = document([tt.formula("strang")], {})["processed"]
+    assert processed["name"] == "processed-4" and processed["order"] == 4
+    assert (processed["stages"], processed["stages_once"]) == (6, 12)

@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING, Any
 
 from trueturn.formulas.base import Formula
 from trueturn.formulas.comparison import best_for, rotations_per_step, span, three_digits
+from trueturn.formulas.processed import PROCESSED
 from trueturn.partition import Partition
 
 if TYPE_CHECKING:
@@ -47,6 +48,19 @@ def document(known: Sequence[Formula], partitions: Mapping[str, Partition]) -> d
             }
             for one in known
         ],
+        "processed": [
+            {
+                "name": one.name,
+                "order": one.order,
+                "stages": len(one.kernel.stages),
+                "stages_once": len(one.pre) + len(one.post),
+                "source": one.source,
+                "rotations_per_step": {
+                    rule: rotations_per_step(one.kernel, parts) for rule, parts in partitions.items()
+                },
+            }
+            for one in PROCESSED
+        ],
     }
 
 
@@ -68,6 +82,13 @@ def page(known: Sequence[Formula], partitions: Mapping[str, Partition]) -> Rende
     for one in known:
         if one.requires:
             lines.append(Text(f"{one.name} requires {one.requires}; order {one.special_order} there."))
+    lines += [Text(), Text("Processed: a step of a lower order between a pre- and a post-step", style="bold")]
+    for pair in PROCESSED:
+        once = len(pair.pre) + len(pair.post)
+        line = f"{pair.name}: order {pair.order}, {len(pair.kernel.stages)} stages a step and {once} once"
+        for rule, parts in partitions.items():
+            line += f"; {rule}: {rotations_per_step(pair.kernel, parts)} rotations a step"
+        lines += [Text(line), Padding(Text(pair.source, style="dim"), (0, 0, 0, 4))]
     lines += [Text(), Text("Sources", style="bold")]
     for source, names in _by_source(known).items():
         lines += [Text(", ".join(names)), Padding(Text(source, style="dim"), (0, 0, 0, 4))]
