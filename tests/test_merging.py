@@ -13,6 +13,7 @@ import trueturn as tt
 from circuits import P3, distance, matrix, plain
 from trueturn.formulas import Stage
 from trueturn.formulas.merging import merged_runs, repeated
+from trueturn.formulas.order import measured_order
 
 UNIT = 2.0**-53
 
@@ -70,12 +71,10 @@ def test_merged_runs_are_the_fully_expanded_list_merged_as_a_whole(stages, parts
 def test_merging_never_changes_what_the_circuit_does(stages, steps, seed):
     total = sum(weight for weight, _ in stages)
     closing = [(1.0 - total, False)] if total != 1.0 else []
-    formula = tt.Formula(
-        "drawn",
-        1,
-        tuple(Stage(weight, "reverse" if back else "forward") for weight, back in [*stages, *closing]),
-        "drawn",
-    )
+    drawn = [*stages, *closing]
+    order = measured_order([(Fraction(weight), back) for weight, back in drawn])[0]
+    directed = tuple(Stage(weight, "reverse" if back else "forward") for weight, back in drawn)
+    formula = tt.Formula("drawn", order, directed, "drawn")
     partition = (P3, SHARING)[seed % 2].shuffled(seed)
     circuit = formula.rotations(partition, 0.7, steps)
     # both sides: at most 7 stages · 4 steps · 8 rotations of 8 x 8 products and expm, 64 u each
