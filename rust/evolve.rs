@@ -5,33 +5,88 @@ use num_complex::Complex;
 use crate::error::{Error, Result};
 use crate::kernel::Isa;
 use crate::kernel::carry::Carrier;
-use crate::kernel::lanes::{GROUP_BITS, Real};
+use crate::kernel::lanes::Real;
 use crate::kernel::shared::Shared;
-use crate::passes::{HighPhase, Pass, PhasePass, plan};
-use crate::rotations::{Block, Body, Rotations};
+use crate::passes::{Pass, UNROLLED_LENGTH, UNROLLED_REPEATS, least_qubits, plan};
+use crate::pauli::PauliString;
+use crate::rotations::{Block, Body, Rotation, Rotations};
 use crate::team::{Control, Run, run, workers_for};
 
-/// A planned block.
-enum Planned<T> {
-    Passes(Vec<Pass<T>>, u64),
-    Nested(Vec<Planned<T>>, u64),
+/// Planned blocks and how often they run.
+#[derive(Clone, Debug)]
+pub struct Planned<T: Real> {
+    repeat: u64,
+    content: Content<T>,
+}
+
+#[derive(Clone, Debug)]
+enum Content<T: Real> {
+    Passes(Vec<Pass<T>>),
+    Nested(Vec<Planned<T>>),
 }
 
 impl<T: Real> Planned<T> {
-    fn of(qubits: u32, block: &Block) -> Self {
-        match &block.body {
-            Body::List(list) => Self::Passes(plan(qubits, list), block.repeat),
-            Body::Nested(blocks) => Self::Nested(blocks.iter().map(|b| Self::of(qubits, b)).collect(), block.repeat),
+    /// Plans a circuit, its global phase last.
+    pub fn circuit(rotations: &Rotations) -> Self {
+        let qubits = rotations.qubits().max(least_qubits::<T>());
+        let mut content = Self::blocks(qubits, rotations.blocks());
+        if rotations.phase() != 0.0 {
+            let identity = Rotation { string: PauliString { x: 0, z: 0 }, angle: -rotations.phase() };
+            content.push(Self { repeat: 1, content: Content::Passes(plan(qubits, &[identity])) });
+        }
+        Self { repeat: 1, content: Content::Nested(content) }
+    }
+
+    /// Without blocks that do nothing, so that the last one has the last pass.
+    fn blocks(qubits: u32, blocks: &[Block]) -> Vec<Self> {
+        blocks.iter().map(|block| Self::block(qubits, block)).filter(|block| block.passes() > 0).collect()
+    }
+
+    fn block(qubits: u32, block: &Block) -> Self {
+        let (body, repeat) = (&block.body, block.repeat);
+        match body {
+            Body::List(list) if repeat > 1 && list.len() <= UNROLLED_LENGTH => {
+                let times = |count: u64| {
+                    let copies: Vec<Rotation> = (0..count).flat_map(|_| list.iter().copied()).collect();
+                    Content::Passes(plan(qubits, &copies))
+                };
+                let parts = [(repeat / UNROLLED_REPEATS, UNROLLED_REPEATS), (1, repeat % UNROLLED_REPEATS)];
+                let parts = parts.into_iter().filter(|(repeat, count)| repeat * count > 0);
+                let parts = parts.map(|(repeat, count)| Self { repeat, content: times(count) }).collect();
+                Self { repeat: 1, content: Content::Nested(parts) }
+            }
+            Body::List(list) => Self { repeat, content: Content::Passes(plan(qubits, list)) },
+            Body::Nested(blocks) => Self { repeat, content: Content::Nested(Self::blocks(qubits, blocks)) },
         }
     }
 
-    fn passes(&self) -> u64 {
-        match self {
-            Self::Passes(passes, repeat) => (passes.len() as u64).saturating_mul(*repeat),
-            Self::Nested(blocks, repeat) => {
-                blocks.iter().fold(0, |sum: u64, b| sum.saturating_add(b.passes())).saturating_mul(*repeat)
+    /// Passes in all, saturating.
+    pub fn passes(&self) -> u64 {
+        let once = match &self.content {
+            Content::Passes(passes) => passes.len() as u64,
+            Content::Nested(blocks) => blocks.iter().fold(0, |sum: u64, block| sum.saturating_add(block.passes())),
+        };
+        once.saturating_mul(self.repeat)
+    }
+
+    /// Carries everything out; `last` says that nothing follows.
+    fn carry_out(&self, carrier: &mut Carrier<T>, last: bool) -> Result<()> {
+        for round in 1..=self.repeat {
+            let last = last && round == self.repeat;
+            match &self.content {
+                Content::Passes(passes) => {
+                    for (place, pass) in passes.iter().enumerate() {
+                        carrier.pass(pass, last && place + 1 == passes.len())?;
+                    }
+                }
+                Content::Nested(blocks) => {
+                    for (place, block) in blocks.iter().enumerate() {
+                        block.carry_out(carrier, last && place + 1 == blocks.len())?;
+                    }
+                }
             }
         }
+        Ok(())
     }
 }
 
@@ -49,27 +104,23 @@ pub fn evolve<T: Real>(
 ) -> Result<Run> {
     require_length(amplitudes.len(), rotations.qubits())?;
     let isa = Isa::chosen()?;
-    padded(amplitudes, |amplitudes| {
-        let qubits = amplitudes.len().ilog2();
-        let blocks: Vec<Planned<T>> = rotations.blocks().iter().map(|block| Planned::of(qubits, block)).collect();
-        let phase = global_phase(rotations.phase());
-        let passes = blocks.iter().fold(u64::from(phase.is_some()), |sum, block| sum.saturating_add(block.passes()));
-        control.expect(control.progress().0.saturating_add(passes));
-        let workers = workers_for(threads, amplitudes.len());
-        let state = Shared::new(amplitudes);
-        run(workers, control, |member| {
-            let mut carrier = Carrier::new(isa, member, &state);
-            carry_out(&mut carrier, &blocks)?;
-            phase.as_ref().map_or(Ok(()), |phase| carrier.pass(phase))
-        })
-    })
+    let planned = Planned::<T>::circuit(rotations);
+    carry_out(isa, &planned, amplitudes, threads, control)
 }
 
-/// exp(i phase) as a pass, or None for phase 0.
-fn global_phase<T: Real>(phase: f64) -> Option<Pass<T>> {
-    let (sin, cos) = libm::sincos(phase);
-    let everywhere = HighPhase { z: 0, cos_sin: (cos, -sin) };
-    (phase != 0.0).then(|| Pass::Phase(PhasePass { table: vec![], high: vec![everywhere], crossing: vec![] }))
+fn carry_out<T: Real>(
+    isa: Isa,
+    planned: &Planned<T>,
+    amplitudes: &mut [Complex<T>],
+    threads: usize,
+    control: &Control,
+) -> Result<Run> {
+    padded(amplitudes, 1 << least_qubits::<T>(), |amplitudes| {
+        control.expect(control.progress().0.saturating_add(planned.passes()));
+        let workers = workers_for(threads, amplitudes.len());
+        let state = Shared::new(amplitudes);
+        run(workers, control, |member| planned.carry_out(&mut Carrier::new(isa, member, &state), true))
+    })
 }
 
 /// Refuses a state whose length is not 2^qubits.
@@ -86,9 +137,8 @@ pub fn require_length(length: usize, qubits: u32) -> Result<()> {
     })
 }
 
-/// Lets `work` see at least one whole group: shorter states are extended by zeros, which no string mixes in.
-pub fn padded<T: Real, R>(amplitudes: &mut [Complex<T>], work: impl FnOnce(&mut [Complex<T>]) -> R) -> R {
-    let least = 1 << GROUP_BITS;
+/// Lets `work` see at least `least` amplitudes: shorter states are extended by zeros, which no string mixes in.
+pub fn padded<T: Real, R>(amplitudes: &mut [Complex<T>], least: usize, work: impl FnOnce(&mut [Complex<T>]) -> R) -> R {
     if amplitudes.len() >= least {
         return work(amplitudes);
     }
@@ -100,27 +150,9 @@ pub fn padded<T: Real, R>(amplitudes: &mut [Complex<T>], work: impl FnOnce(&mut 
     result
 }
 
-/// Carries out planned blocks, repeats and all.
-fn carry_out<T: Real>(carrier: &mut Carrier<T>, blocks: &[Planned<T>]) -> Result<()> {
-    for block in blocks {
-        match block {
-            Planned::Passes(passes, repeat) => {
-                for _ in 0..*repeat {
-                    passes.iter().try_for_each(|pass| carrier.pass(pass))?;
-                }
-            }
-            Planned::Nested(blocks, repeat) => (0..*repeat).try_for_each(|_| carry_out(carrier, blocks))?,
-        }
-    }
-    Ok(())
-}
-
 #[cfg(test)]
 mod tests {
     use super::*;
-    use crate::kernel::rotate::Rotate;
-    use crate::pauli::PauliString;
-    use crate::rotations::Rotation;
     use num_complex::Complex64;
 
     /// A small generator of reproducible numbers in [0, 1): the constants of Knuth's linear congruential MMIX generator.
@@ -182,19 +214,16 @@ mod tests {
 
     #[test]
     fn every_instruction_set_gives_the_same_bits() {
-        let (list, start) = (random_list(14, 24, 5), random_state(14, 2));
-        let lane_rotations = |isa: Isa| {
-            let mut state = start.clone();
-            let shared = Shared::new(&mut state);
-            for pass in plan::<f64>(14, &list) {
-                if let Pass::Single(rotation) = &pass {
-                    let range = 0..rotation.units(shared.groups());
-                    isa.run(Rotate { state: &shared, range, rotation, flip: 0, other_angle: 0 });
-                }
-            }
-            state
-        };
-        let baseline = lane_rotations(Isa::BASELINE);
-        assert!(Isa::available().into_iter().all(|isa| lane_rotations(isa) == baseline));
+        for qubits in [5, 14, 17] {
+            let (list, start) = (random_list(qubits, 60, 5), random_state(qubits, 2));
+            let planned = Planned::<f64>::circuit(&Rotations::from_list(qubits, list, 0.3).unwrap());
+            let end = |isa: Isa| {
+                let mut state = start.clone();
+                carry_out(isa, &planned, &mut state, 1, &Control::default()).unwrap();
+                state
+            };
+            let baseline = end(Isa::BASELINE);
+            assert!(Isa::available().into_iter().all(|isa| end(isa) == baseline));
+        }
     }
 }

@@ -1,90 +1,319 @@
-//! One rotation, or two that act as one.
+//! Rotations that act as one.
 //!
-//! Two commuting strings with the same x mask differ by a diagonal string: P_2 = ±P_1 Z^d with d = z_1 ^ z_2. So
+//! Commuting strings with the same x mask send every index to the same partner. So with `s_j = ±1`, the sign that string j
+//! has at an index,
 //!
 //! ```text
-//! exp(-i (α P_1 + β P_2)) = cos(α ± σ β) - i sin(α ± σ β) P_1,   σ = (-1)^{parity of the index & d},
+//! exp(-i Σ_j θ_j P_j) = cos H - i sin H · P,   H = Σ_j θ_j s_j,
 //! ```
 //!
-//! one rotation whose angle depends on a parity that both partners of a pair share. XX and YY on a bond are the common
-//! case: α + β where the two qubits differ, α - β where they agree. Joining them halves the work of a Heisenberg step.
+//! one rotation whose angle depends on a few parities of the index. Eight strings of a fermionic double excitation cost
+//! one; XX and YY on a bond cost one. ZZ on the same bond only adds a phase by the parity that XX and YY see too, so a
+//! whole bond costs one. Worked example on three qubits, bond 0-1: where qubits 0 and 1 agree (000, 011, 100, 111),
+//! XX = 1 on the pair and YY = -1, so equal strengths leave H = 0 and only ZZ acts, by a phase; where they differ
+//! (001 ↔ 010, 101 ↔ 110) H = 2θ. Take that phase out of everything, and half of the amplitudes are not touched at all.
+//!
+//! Diagonal strings commute with one another: a run of them is one operation, however long.
 
-use crate::pauli::PauliString;
+use num_complex::Complex64;
+
 use crate::rotations::Rotation;
 
 /// How far back a partner is looked for.
 const LOOK_BACK: usize = 64;
+/// Parities that the angle of one operation may depend on.
+pub const PARITIES: usize = 4;
 
-/// exp(-i (first.angle P_1 + second.angle P_2)), the second with the same x mask as the first and commuting with it.
-#[derive(Clone, Copy, Debug)]
+/// exp(-i Σ θ_j P_j) of strings that commute: those that mix share one x mask, the others are diagonal.
+#[derive(Clone, Debug, Default)]
 pub struct Operation {
-    /// The only or the first rotation.
-    pub first: Rotation,
-    /// The one that joined it.
-    pub second: Option<Rotation>,
+    /// Strings with x ≠ 0.
+    pub mixing: Vec<Rotation>,
+    /// Strings with x = 0; beside mixing ones, only the string whose parity tells their angles apart.
+    pub diagonal: Vec<Rotation>,
 }
 
 impl Operation {
-    /// The x mask.
-    pub fn x(&self) -> u128 {
-        self.first.string.x
+    fn of(rotation: Rotation) -> Self {
+        let mut operation = Self::default();
+        operation.list_for(&rotation).push(rotation);
+        operation
     }
 
-    /// Whether the operation commutes with a string, term by term.
-    pub fn commutes_with(&self, string: PauliString) -> bool {
-        self.strings().all(|own| own.commutes_with(string))
+    fn list_for(&mut self, rotation: &Rotation) -> &mut Vec<Rotation> {
+        if rotation.string.x == 0 { &mut self.diagonal } else { &mut self.mixing }
+    }
+
+    /// The x mask.
+    pub fn x(&self) -> u64 {
+        self.mixing.first().map_or(0, |rotation| rotation.string.x as u64)
+    }
+
+    /// How many rotations it stands for.
+    pub fn count(&self) -> usize {
+        self.mixing.len() + self.diagonal.len()
+    }
+
+    fn rotations(&self) -> impl Iterator<Item = &Rotation> {
+        self.mixing.iter().chain(&self.diagonal)
+    }
+
+    fn commutes_with(&self, rotation: &Rotation) -> bool {
+        self.rotations().all(|own| own.string.commutes_with(rotation.string))
     }
 
     /// Whether all strings of one commute with all of the other.
     pub fn commutes_with_all_of(&self, other: &Self) -> bool {
-        other.strings().all(|string| self.commutes_with(string))
+        if self.mixing.is_empty() && other.mixing.is_empty() {
+            return true;
+        }
+        other.rotations().all(|rotation| self.commutes_with(rotation))
     }
 
-    fn strings(&self) -> impl Iterator<Item = PauliString> {
-        [Some(self.first.string), self.second.map(|second| second.string)].into_iter().flatten()
+    /// Whether the mixing strings depend on the parity of `mask` at most, as a bond's do, so that its diagonal string may
+    /// join them.
+    fn depends_only_on(&self, mask: u128) -> bool {
+        let fits = |r: &Rotation| (r.string.z == 0 || r.string.z == mask) && r.string.y_count() & 1 == 0;
+        self.mixing.iter().all(fits)
+            && self.diagonal.iter().all(|r| r.string.z == mask)
+            && (self.x() as u128 & mask).count_ones() & 1 == 0
     }
 
-    /// The mask d whose parity tells the two angles apart, 0 where there is one rotation.
-    pub fn parity_mask(&self) -> u128 {
-        self.second.map_or(0, |second| self.first.string.z ^ second.string.z)
+    fn admits(&self, rotation: &Rotation) -> bool {
+        // Huge angles stay apart rather than overflow.
+        if !self.rotations().map(|own| own.angle.abs()).chain([rotation.angle.abs()]).sum::<f64>().is_finite() {
+            return false;
+        }
+        let string = rotation.string;
+        match (self.mixing.first(), string.x) {
+            (None, 0) => true,
+            (None, _) => false,
+            (Some(_), 0) => self.depends_only_on(string.z),
+            (Some(first), x) if first.string.x == x && self.commutes_with(rotation) => match self.diagonal.first() {
+                Some(phase) => string.z == 0 || string.z == phase.string.z,
+                None => {
+                    let masks = self.mixing.iter().map(|own| own.string.z as u64).chain([string.z as u64]);
+                    independent(masks).len() <= PARITIES
+                }
+            },
+            _ => false,
+        }
     }
 
-    /// The angle where the parity of `index & parity_mask` is even, and where it is odd.
-    pub fn angles(&self) -> [f64; 2] {
-        let Some(second) = self.second else {
-            return [self.first.angle; 2];
+    fn take(&mut self, rotation: Rotation) {
+        let list = self.list_for(&rotation);
+        match list.iter_mut().find(|own| own.string == rotation.string) {
+            Some(own) => own.angle += rotation.angle,
+            None => list.push(rotation),
+        }
+    }
+
+    /// What the operation does, in numbers.
+    pub fn action(&self) -> Action {
+        let Some(first) = self.mixing.first() else {
+            return Action::Diagonal(self.diagonal.iter().map(|r| (r.string.z as u64, r.angle)).collect());
         };
-        // i^{y_2} X^x Z^{z_2} = i^{y_2 - y_1} (i^{y_1} X^x Z^{z_1}) Z^d; commuting strings have y_2 - y_1 even.
-        let turns = second.string.y_count() + 3 * self.first.string.y_count();
-        let signed = if turns & 2 == 0 { second.angle } else { -second.angle };
-        [self.first.angle + signed, self.first.angle - signed]
+        let real = first.string.y_count() & 1 == 1;
+        let x = first.string.x as u64;
+        let masks = independent(self.mixing.iter().map(|r| r.string.z as u64));
+        match self.diagonal.first() {
+            None if self.mixing.len() == 1 && first.angle.tan().abs() <= 1.0 => {
+                let (sin, cos) = libm::sincos(first.angle);
+                let sine = sin / cos * sign_at_zero(first);
+                Action::Turn { real, mask: first.string.z as u64, tangent: sine, cosine: cos }
+            }
+            None => {
+                let entry = |parities: usize| {
+                    let (sin, cos) = libm::sincos(self.angle(&masks, parities));
+                    (cos, sin)
+                };
+                let entries = (0..1 << masks.len()).map(entry).collect();
+                Action::Table { real, masks, entries }
+            }
+            Some(phase) => self.bond(x, phase),
+        }
+    }
+
+    /// H where the parities of the index with `masks` are the bits of `parities`.
+    fn angle(&self, masks: &[u64], parities: usize) -> f64 {
+        self.mixing
+            .iter()
+            .map(|rotation| {
+                let odd = coordinates(masks, rotation.string.z as u64) & parities;
+                let sign = sign_at_zero(rotation);
+                rotation.angle * if odd.count_ones() & 1 == 1 { -sign } else { sign }
+            })
+            .sum()
+    }
+
+    fn bond(&self, x: u64, phase: &Rotation) -> Action {
+        let mask = phase.string.z as u64;
+        debug_assert!(x & mask != x || x.count_ones() & 1 == 0);
+        let masks = [mask];
+        let (even, odd, turn) = (self.angle(&masks, 0), self.angle(&masks, 1), phase.angle);
+        let unit = |angle: f64| {
+            let (sin, cos) = libm::sincos(angle);
+            Complex64::new(cos, sin)
+        };
+        if even == 0.0 && 2.0 * turn == odd {
+            let gamma = 0.5 * (Complex64::new(1.0, 0.0) - unit(2.0 * turn + odd));
+            return Action::Exchange { mask, gamma, factor: unit(-turn) };
+        }
+        let (sin, cos) = libm::sincos(even);
+        if sin.abs() <= cos.abs() {
+            let scale = 0.5 / cos;
+            let (plus, minus) = (unit(2.0 * turn - odd) * scale, unit(2.0 * turn + odd) * scale);
+            return Action::Bond { mask, plus, minus, tangent: sin / cos, factor: unit(-turn) * cos };
+        }
+        let entry = |angle: f64, turn: f64| {
+            let (sin, cos) = libm::sincos(angle);
+            (unit(turn) * cos, unit(turn) * Complex64::new(0.0, -sin))
+        };
+        Action::Complex { mask, entries: [entry(even, -turn), entry(odd, turn)] }
     }
 }
 
-/// Joins rotations in pairs where the order of the list allows; diagonal ones stay single.
+/// The sign of -i θ P at index 0 once the factor -i (or 1, for an odd number of Y) is taken out: P sends amplitude `k ^ x` to
+/// k with `i^y (-1)^{parity of (k ^ x) & z}`.
+fn sign_at_zero(rotation: &Rotation) -> f64 {
+    let string = rotation.string;
+    let turns = string.y_count() / 2 + (string.x & string.z).count_ones();
+    if turns & 1 == 1 { -1.0 } else { 1.0 }
+}
+
+/// What an operation does to amplitude a at index k and to its partner b at `k ^ x`.
+#[derive(Clone, Debug, PartialEq)]
+pub enum Action {
+    /// Phases exp(-i θ (-1)^{parity of k & z}) for pairs (z, θ).
+    Diagonal(Vec<(u64, f64)>),
+    /// factor · (a + γ (b - a)) where the parity of `k & mask` is odd, factor · a where it is even.
+    Exchange {
+        /// Mask of the parity.
+        mask: u64,
+        /// γ.
+        gamma: Complex64,
+        /// Factor of everything.
+        factor: Complex64,
+    },
+    /// factor · (plus (a + b) + minus (a - b)) where the parity is odd, factor · (a - i tangent b) where it is even.
+    Bond {
+        /// Mask of the parity.
+        mask: u64,
+        /// Factor of the sum.
+        plus: Complex64,
+        /// Factor of the difference.
+        minus: Complex64,
+        /// Tangent of the even angle.
+        tangent: f64,
+        /// Factor of everything.
+        factor: Complex64,
+    },
+    /// cosine · (a + w t b): t = ± tangent by the parity of `k & mask`, w = 1 if `real`, else -i.
+    Turn {
+        /// Whether the partner enters with a real factor.
+        real: bool,
+        /// Mask of the sign.
+        mask: u64,
+        /// t where the parity is even.
+        tangent: f64,
+        /// Factor of everything.
+        cosine: f64,
+    },
+    /// c a + w s b, where bit j of the place in `entries` is the parity of `k & masks[j]`, w = 1 if `real`, else -i.
+    Table {
+        /// Whether the partner enters with a real factor.
+        real: bool,
+        /// Masks of the parities.
+        masks: Vec<u64>,
+        /// (c, s) by parities.
+        entries: Vec<(f64, f64)>,
+    },
+    /// c a + s b by the parity of `k & mask`.
+    Complex {
+        /// Mask of the parity.
+        mask: u64,
+        /// (c, s) for even and odd parity.
+        entries: [(Complex64, Complex64); 2],
+    },
+}
+
+/// A largest independent subset over GF(2), in order of appearance.
+fn independent(masks: impl Iterator<Item = u64>) -> Vec<u64> {
+    let (mut kept, mut reduced): (Vec<u64>, Vec<u64>) = (vec![], vec![]);
+    for mask in masks {
+        let rest = reduced.iter().fold(mask, |rest, own| rest.min(rest ^ own));
+        if rest != 0 {
+            reduced.push(rest);
+            reduced.sort_unstable_by(|a, b| b.cmp(a));
+            kept.push(mask);
+        }
+    }
+    kept
+}
+
+/// Which of the independent `masks` add up to `mask`, as bits.
+fn coordinates(masks: &[u64], mask: u64) -> usize {
+    let sum =
+        |choice: usize| masks.iter().enumerate().fold(0, |s, (j, m)| if choice >> j & 1 == 1 { s ^ m } else { s });
+    (0..1usize << masks.len()).find(|&choice| sum(choice) == mask).unwrap_or(0)
+}
+
+/// Joins rotations where the order of the list allows.
 pub fn joined(list: &[Rotation]) -> Vec<Operation> {
     let mut operations: Vec<Operation> = Vec::with_capacity(list.len());
     for &rotation in list {
         match partner(&operations, &rotation) {
-            Some(place) => operations[place].second = Some(rotation),
-            None => operations.push(Operation { first: rotation, second: None }),
+            Some(place) => operations[place].take(rotation),
+            None => operations.push(Operation::of(rotation)),
         }
     }
+    complete_bonds(&mut operations);
+    operations.retain(|operation| operation.count() > 0);
     operations
 }
 
-/// The nearest earlier operation that the rotation may join: it commutes with that one and with all in between.
+/// The nearest earlier operation that the rotation may join: it commutes with all in between.
 fn partner(operations: &[Operation], rotation: &Rotation) -> Option<usize> {
-    if rotation.string.x == 0 {
-        return None;
-    }
     for (place, operation) in operations.iter().enumerate().rev().take(LOOK_BACK) {
-        if !operation.commutes_with(rotation.string) {
+        if operation.admits(rotation) {
+            return Some(place);
+        }
+        if !operation.commutes_with(rotation) {
             return None;
         }
-        if operation.x() == rotation.string.x && operation.second.is_none() {
-            // Two huge angles stay apart rather than overflow.
-            return (operation.first.angle.abs() + rotation.angle.abs()).is_finite().then_some(place);
+    }
+    None
+}
+
+/// Moves ZZ strings out of diagonal runs to the XX and YY of their bonds, where nothing stands between.
+fn complete_bonds(operations: &mut [Operation]) {
+    for place in 0..operations.len() {
+        let bond = &operations[place];
+        let masks = independent(bond.mixing.iter().map(|r| r.string.z as u64));
+        let &[mask] = &masks[..] else { continue };
+        if !bond.diagonal.is_empty() || bond.mixing.len() < 2 || !bond.depends_only_on(u128::from(mask)) {
+            continue;
+        }
+        let before = (place.saturating_sub(LOOK_BACK)..place).rev();
+        let after = place + 1..operations.len().min(place + LOOK_BACK);
+        let found = [nearest(operations, before, mask), nearest(operations, after, mask)].into_iter().flatten().next();
+        if let Some((from, which)) = found {
+            let phase = operations[from].diagonal.swap_remove(which);
+            operations[place].diagonal.push(phase);
+        }
+    }
+}
+
+/// The first place, and the place in it, of the diagonal string `mask` that commutes with all passed on the way.
+fn nearest(operations: &[Operation], way: impl Iterator<Item = usize>, mask: u64) -> Option<(usize, usize)> {
+    for place in way {
+        let operation = &operations[place];
+        if operation.mixing.is_empty() {
+            if let Some(which) = operation.diagonal.iter().position(|r| r.string.z as u64 == mask) {
+                return Some((place, which));
+            }
+        } else if operation.mixing.iter().any(|r| (r.string.x as u64 & mask).count_ones() & 1 == 1) {
+            return None;
         }
     }
     None
@@ -93,18 +322,52 @@ fn partner(operations: &[Operation], rotation: &Rotation) -> Option<usize> {
 #[cfg(test)]
 mod tests {
     use super::*;
+    use crate::pauli::PauliString;
 
     fn rotation(x: u128, z: u128, angle: f64) -> Rotation {
         Rotation { string: PauliString { x, z }, angle }
     }
 
+    fn counts(list: &[Rotation]) -> Vec<usize> {
+        joined(list).iter().map(Operation::count).collect()
+    }
+
     #[test]
-    fn xx_and_yy_on_a_bond_join_and_their_angles_follow_the_parity() {
-        let found = joined(&[rotation(0b11, 0, 0.5), rotation(0b11, 0b11, 0.2)]);
-        assert_eq!(found.len(), 1);
-        assert_eq!(found[0].parity_mask(), 0b11);
-        // YY = -XX ZZ: the angles subtract where ZZ = +1.
-        assert_eq!(found[0].angles(), [0.3, 0.7]);
+    fn xx_and_yy_on_a_bond_join_and_act_where_the_qubits_differ() {
+        let found = joined(&[rotation(0b11, 0, 0.5), rotation(0b11, 0b11, 0.5)]);
+        let Action::Table { real: false, masks, entries } = found[0].action() else { panic!("a table was due") };
+        assert_eq!((masks, entries[0]), (vec![0b11], (1.0, 0.0)));
+        assert_eq!(entries[1], (1.0_f64.cos(), 1.0_f64.sin()));
+    }
+
+    #[test]
+    fn a_whole_bond_is_one_operation_in_either_order() {
+        let bond = [rotation(0b11, 0, 0.5), rotation(0b11, 0b11, 0.5), rotation(0, 0b11, 0.5)];
+        let reversed: Vec<_> = bond.iter().rev().copied().collect();
+        for list in [&bond[..], &reversed] {
+            let found = joined(list);
+            assert_eq!(found.len(), 1);
+            assert!(matches!(found[0].action(), Action::Exchange { mask: 0b11, .. }));
+        }
+        let unequal = [rotation(0b11, 0, 0.5), rotation(0b11, 0b11, 0.4), rotation(0, 0b11, 0.3)];
+        assert!(matches!(joined(&unequal)[0].action(), Action::Bond { .. }));
+    }
+
+    #[test]
+    fn many_strings_of_one_x_mask_join_up_to_four_parities() {
+        let strings: Vec<_> = [0u128, 0b0011, 0b0101, 0b1001, 0b0110, 0b1010, 0b1100, 0b1111]
+            .iter()
+            .map(|z| rotation(0b1111, *z, 0.1))
+            .collect();
+        assert_eq!(counts(&strings), [8]);
+        let wide: Vec<_> = (0..6).map(|j| rotation(1, 1 << (j + 1), 0.1)).collect();
+        assert_eq!(counts(&wide), [4, 2]);
+    }
+
+    #[test]
+    fn equal_strings_add_their_angles() {
+        let found = joined(&[rotation(1, 0, 0.25), rotation(2, 0, 0.5), rotation(1, 0, 0.5)]);
+        assert_eq!(found[0].mixing, [rotation(1, 0, 0.75)]);
     }
 
     #[test]
@@ -114,9 +377,8 @@ mod tests {
 
     #[test]
     fn nothing_moves_past_what_it_anticommutes_with() {
-        let found = joined(&[rotation(0b11, 0, 0.5), rotation(0b110, 0, 0.1), rotation(0b11, 0b11, 0.2)]);
-        assert_eq!(found.len(), 3);
-        let apart = joined(&[rotation(0b11, 0, 0.5), rotation(0b11000, 0, 0.1), rotation(0b11, 0b11, 0.2)]);
-        assert_eq!(apart.len(), 2);
+        assert_eq!(counts(&[rotation(0b11, 0, 0.5), rotation(0, 0b10, 0.1), rotation(0b11, 0b11, 0.2)]), [1, 1, 1]);
+        assert_eq!(counts(&[rotation(0b11, 0, 0.5), rotation(0b11000, 0, 0.1), rotation(0b11, 0b11, 0.2)]), [2, 1]);
+        assert_eq!(counts(&[rotation(0, 0b1, 0.5), rotation(0b1, 0, 0.1), rotation(0, 0b1, 0.2)]), [1, 1, 1]);
     }
 }

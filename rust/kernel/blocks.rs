@@ -1,9 +1,7 @@
 //! Sums and products on one block of groups that stays in first-level cache.
 
-use num_complex::Complex;
-
 use super::Work;
-use super::lanes::{LANES, LaneString, Real, for_each_permutation, mixed, permuted};
+use super::lanes::{LANES, LaneString, Real, for_each_permutation, permuted};
 
 /// out += factor · P in for the groups of one block; `source` is the block that the string's high bits select.
 pub struct Accumulate<'a, T> {
@@ -73,55 +71,6 @@ impl<T: Real> Work for Gain<'_, T> {
     fn run(self) {
         for (out, part) in self.out.iter_mut().zip(self.part) {
             *out = std::array::from_fn(|l| out[l] + part[l]);
-        }
-    }
-}
-
-/// A complex factor for each of the four amplitudes of a group, laid out for the loops: out = keep · own + weights · swapped.
-#[derive(Clone, Copy, Debug)]
-pub struct LaneFactors<T> {
-    keep: [T; LANES],
-    weights: [T; LANES],
-}
-
-impl<T: Real> LaneFactors<T> {
-    /// Factor `of(a)` for the amplitude at position a.
-    pub fn new(of: impl Fn(usize) -> Complex<f64>) -> Self {
-        let signed = |l: usize| if l & 1 == 0 { -of(l >> 1).im } else { of(l >> 1).im };
-        Self {
-            keep: std::array::from_fn(|l| T::from_f64(of(l >> 1).re)),
-            weights: std::array::from_fn(|l| T::from_f64(signed(l))),
-        }
-    }
-
-    #[inline(always)]
-    fn times(&self, own: &[T; LANES]) -> [T; LANES] {
-        mixed::<T, 1>(&self.keep, own, &self.weights, own)
-    }
-}
-
-/// a ← all · table · a on a block; an empty table stands for ones.
-pub struct Multiply<'a, T> {
-    /// The amplitudes.
-    pub block: &'a mut [[T; LANES]],
-    /// Factors for each group, or nothing.
-    pub table: &'a [LaneFactors<T>],
-    /// One factor for all.
-    pub all: LaneFactors<T>,
-}
-
-impl<T: Real> Work for Multiply<'_, T> {
-    type Output = ();
-    #[inline(always)]
-    fn run(self) {
-        let mask = self.block.len() - 1;
-        for q in 0..self.block.len() {
-            // See the note on loop indices at the top.
-            let own = &mut self.block[q & mask];
-            *own = match self.table.get(q & mask) {
-                Some(factors) => self.all.times(&factors.times(own)),
-                None => self.all.times(own),
-            };
         }
     }
 }

@@ -1,152 +1,165 @@
-//! Carries the passes of [`crate::passes`] out: each worker its share of groups, blocks or cosets, in place.
+//! Carries the passes of [`crate::passes`] out: each worker its share of cosets, in place.
+//!
+//! Between the first and the last pass of a run the state is kept as vectors of real and of imaginary parts in turn; the
+//! first tiles of the first pass split what they load, the last tiles of the last pass interleave what they store.
 
-use num_complex::Complex;
-
-use super::blocks::{LaneFactors, Multiply};
-use super::lanes::{GROUP_BITS, LANES, Real};
-use super::rotate::{LaneRotation, Rotate};
-use super::shared::{Shared, as_groups_mut};
-use super::{Isa, Work};
-use crate::error::Result;
-use crate::passes::{BLOCK_BITS, COSET_BITS, CosetRotation, FusedPass, Pass, PhasePass, high_phase};
+use super::Isa;
+use super::VectorWork;
+use super::lanes::Real;
+use super::shared::Shared;
+use super::tile::{Ahead, Place, Tiles};
+use super::vector::Vector;
+use crate::error::{Error, Result};
+use crate::passes::Pass;
+use crate::passes::diagonal::CosetFactors;
 use crate::team::Member;
 
-/// Groups that a worker handles between two looks at the flags.
-const PIECE: usize = 1 << 13;
-
-/// Groups of a coset that stay in first-level cache: 2^10 amplitudes.
-const INNER_GROUPS: usize = 1 << (10 - GROUP_BITS);
+/// Bytes of a state above which the next coset is fetched ahead: below, everything stays in cache anyway.
+const FETCH_FROM: usize = 1 << 23;
+/// Amplitudes that a worker handles between two looks at the flags, at least.
+const PIECE: usize = 1 << 15;
 
 /// One worker's hands on a state.
 pub struct Carrier<'a, T: Real> {
     isa: Isa,
     member: &'a Member<'a>,
     state: &'a Shared<'a, T>,
-    coset: Vec<Complex<T>>,
+    coset: Vec<T::Line>,
+    factors: Vec<CosetFactors<T>>,
+    entries: Vec<usize>,
+    interleaved: bool,
 }
 
 impl<'a, T: Real> Carrier<'a, T> {
     /// Hands on `state` for one member of a team, all of whose members carry out the same passes in the same order.
     pub fn new(isa: Isa, member: &'a Member<'a>, state: &'a Shared<'a, T>) -> Self {
-        Self { isa, member, state, coset: vec![] }
+        Self { isa, member, state, coset: vec![], factors: vec![], entries: vec![], interleaved: true }
     }
 
-    /// Carries out this member's share of a pass and waits for the others.
+    /// Carries out this member's share of a pass and waits for the others. `last` says that no other pass follows.
     ///
     /// # Errors
-    /// As [`Member::pass_done`] and [`Member::each_piece`].
-    pub fn pass(&mut self, pass: &Pass<T>) -> Result<()> {
-        match pass {
-            Pass::Single(rotation) => self.single(rotation)?,
-            Pass::Phase(phase) => self.phase(phase)?,
-            Pass::Fused(fused) => self.fused(fused)?,
+    /// As [`Member::pass_done`] and [`Member::each_piece`]. After a stop the state is interleaved.
+    pub fn pass(&mut self, pass: &Pass<T>, last: bool) -> Result<()> {
+        self.carry_out(pass, last)?;
+        self.interleaved = last;
+        let done = self.member.pass_done();
+        if matches!(done, Err(Error::Cancelled { .. })) && !self.interleaved {
+            self.restore()?;
         }
-        self.member.pass_done()
+        done
     }
 
-    fn single(&self, rotation: &LaneRotation<T>) -> Result<()> {
-        self.member.each_piece(rotation.units(self.state.groups()), PIECE, |range| {
-            self.isa.run(Rotate { state: self.state, range, rotation, flip: 0, other_angle: 0 });
-        })
-    }
-
-    fn phase(&self, phase: &PhasePass<T>) -> Result<()> {
-        let groups = self.state.groups().min(1 << (BLOCK_BITS - GROUP_BITS));
-        let bits = groups.ilog2() + GROUP_BITS;
-        self.member.each_piece(self.state.groups() / groups, PIECE / groups, |blocks| {
-            for block in blocks {
-                // SAFETY: each block number belongs to one piece of one worker.
-                let amplitudes = unsafe { self.state.groups_mut(block * groups, groups) };
-                let high = block << bits >> BLOCK_BITS;
-                if !phase.high.is_empty() || !phase.table.is_empty() {
-                    let all = high_phase(&phase.high, high);
-                    let all = LaneFactors::new(|_| all);
-                    self.isa.run(Multiply { block: &mut *amplitudes, table: &phase.table, all });
-                }
-                let block = Shared::over(amplitudes);
-                for (low, parts) in &phase.crossing {
-                    let rotation = LaneRotation::diagonal(*low, high_phase(parts, high));
-                    let range = 0..groups;
-                    self.isa.run(Rotate { state: &block, range, rotation: &rotation, flip: 0, other_angle: 0 });
-                }
+    /// Interleaves this member's share of the state.
+    fn restore(&mut self) -> Result<()> {
+        self.interleaved = true;
+        let reals = 2usize << T::LANE_BITS;
+        self.member.each_piece(self.state.reals() / reals, PIECE >> T::LANE_BITS, |vectors| {
+            // SAFETY: pieces are disjoint and in bounds; `Interleave` asks for no more than that.
+            unsafe {
+                let start = self.state.at(vectors.start * reals);
+                self.isa.run_vectors(Interleave { start, vectors: vectors.len() });
             }
         })
     }
 
-    fn fused(&mut self, pass: &FusedPass<T>) -> Result<()> {
-        let size = 1usize << COSET_BITS;
-        let groups = size >> GROUP_BITS;
-        let (isa, state, member) = (self.isa, self.state, self.member);
-        self.coset.resize(size, Complex::new(T::default(), T::default()));
-        let coset = as_groups_mut(&mut self.coset);
-        member.each_piece(state.groups() / groups, 8, |numbers| {
-            for number in numbers {
-                let rep = pass.representative(number);
-                if pass.contiguous {
-                    // SAFETY: coset `number` is the block of groups that starts at its representative; cosets are disjoint
-                    // and each belongs to one piece of one worker.
-                    let block = unsafe { state.groups_mut(rep >> GROUP_BITS, groups) };
-                    rotate_coset(isa, block, pass, rep);
-                } else {
-                    let offsets = &pass.offsets;
-                    isa.run(Move { state, coset: &mut *coset, offsets, rep, way: Way::In });
-                    rotate_coset(isa, coset, pass, rep);
-                    isa.run(Move { state, coset: &mut *coset, offsets, rep, way: Way::Out });
-                }
+    fn carry_out(&mut self, pass: &Pass<T>, last: bool) -> Result<()> {
+        let size = 1usize << pass.space.dimension();
+        let amplitudes = self.state.reals() / 2;
+        if !pass.offsets.is_empty() {
+            self.coset.resize(size << 1 >> T::LANE_BITS, T::Line::default());
+        }
+        self.factors.resize_with(self.factors.len().max(pass.work.diagonals.len()), CosetFactors::default);
+        let fetching = amplitudes * 2 * size_of::<T>() >= FETCH_FROM;
+        let member = self.member;
+        member.each_piece(amplitudes / size, (PIECE / size).max(1), |numbers| {
+            let mut next = pass.space.representative(numbers.start);
+            for number in numbers.clone() {
+                let rep = next;
+                next = pass.space.representative((number + 1).min(numbers.end - 1));
+                // SAFETY: each coset number belongs to one piece of one worker, and cosets are disjoint.
+                unsafe { self.coset(pass, rep, fetching.then_some(next), last) };
             }
         })
     }
-}
 
-/// Applies the rotations of a pass to one coset, as many in a row as possible to one first-level block after the other.
-fn rotate_coset<T: Real>(isa: Isa, block: &mut [[T; LANES]], pass: &FusedPass<T>, rep: usize) {
-    let groups = block.len();
-    let inner = groups.min(INNER_GROUPS);
-    let block = Shared::over(block);
-    let parity = |mask: usize| (rep & mask).count_ones() as usize & 1;
-    let apply = |CosetRotation { rotation, z, d }: &CosetRotation<T>, part: usize, parts: usize| {
-        let units = rotation.units(groups) / parts;
-        let range = part * units..(part + 1) * units;
-        isa.run(Rotate { state: &block, range, rotation, flip: parity(*z), other_angle: parity(*d) });
-    };
-    let stays = |member: &CosetRotation<T>| member.rotation.stays_within(inner);
-    for run in pass.rotations.chunk_by(|one, next| stays(one) && stays(next)) {
-        let parts = if stays(&run[0]) { groups / inner } else { 1 };
-        for part in 0..parts {
-            run.iter().for_each(|member| apply(member, part, parts));
+    /// Applies a pass to the coset of `rep`, and fetches that of `next`.
+    ///
+    /// # Safety
+    /// Nobody else uses the amplitudes of the coset meanwhile.
+    unsafe fn coset(&mut self, pass: &Pass<T>, rep: usize, next: Option<usize>, last: bool) {
+        let work = &pass.work;
+        for (diagonal, room) in work.diagonals.iter().zip(&mut self.factors) {
+            diagonal.prepare(rep, room);
+        }
+        let contiguous = pass.offsets.is_empty();
+        // SAFETY: representatives are indices of the state.
+        let outside = |rep: usize| unsafe {
+            if contiguous {
+                Place { start: self.state.at(2 * rep), scattered: None, interleaved: false }
+            } else {
+                let scattered = Some((rep, &pass.offsets[..], pass.run_bits));
+                Place { start: self.state.at(0), scattered, interleaved: false }
+            }
+        };
+        let own = outside(rep);
+        let inside = if contiguous {
+            own
+        } else {
+            Place { start: self.coset.as_mut_ptr().cast(), scattered: None, interleaved: false }
+        };
+        let (first_from, last_to) =
+            (Place { interleaved: self.interleaved, ..own }, Place { interleaved: last, ..own });
+        let runs = work.runs();
+        let mut before = 0;
+        for stage in &work.stages {
+            let vectors = 1usize << (pass.space.dimension() - T::LANE_BITS);
+            for part in (0..vectors).step_by(1 << stage.part_bits) {
+                for (place, run) in stage.runs.iter().enumerate() {
+                    let number = before + place;
+                    let ahead = next.map(|next| Ahead { next: outside(next), first: number, step: runs });
+                    let tiles = Tiles {
+                        run,
+                        part,
+                        rep,
+                        from: if number == 0 { first_from } else { inside },
+                        to: if number + 1 == runs { last_to } else { inside },
+                        diagonals: &work.diagonals,
+                        factors: &self.factors,
+                        ahead,
+                        entries: &mut self.entries,
+                    };
+                    // SAFETY: the places hold one coset each, nobody else uses them by this function's contract, and the
+                    // operations were prepared for this space.
+                    unsafe { self.isa.run_vectors(tiles) };
+                }
+            }
+            before += stage.runs.len();
         }
     }
 }
 
-/// Which way a coset moves.
-#[derive(Clone, Copy)]
-enum Way {
-    In,
-    Out,
+/// Turns pairs of vectors into interleaved amplitudes, in place.
+struct Interleave<T> {
+    start: *mut T,
+    vectors: usize,
 }
 
-/// Moves a coset between the state and the buffer, run by run.
-struct Move<'a, T: Real> {
-    state: &'a Shared<'a, T>,
-    coset: &'a mut [[T; LANES]],
-    offsets: &'a [usize],
-    rep: usize,
-    way: Way,
-}
-
-impl<T: Real> Work for Move<'_, T> {
+impl<T: Real> VectorWork<T> for Interleave<T> {
     type Output = ();
+
+    /// # Safety
+    /// Besides the instruction set: `start` points to `vectors` pairs of vectors that nobody else uses.
     #[inline(always)]
-    fn run(self) {
-        const RUN_GROUPS: usize = FusedPass::<f64>::RUN >> GROUP_BITS;
-        let (runs, _) = self.coset.as_chunks_mut::<RUN_GROUPS>();
-        for (own, offset) in runs.iter_mut().zip(self.offsets) {
-            // SAFETY: the runs of a coset are disjoint, cosets are disjoint, and each belongs to one piece of one worker;
-            // `run` is the only piece of the state in use here.
-            let run = unsafe { self.state.groups_mut((self.rep ^ offset) >> GROUP_BITS, RUN_GROUPS) };
-            match self.way {
-                Way::In => own.copy_from_slice(run),
-                Way::Out => run.copy_from_slice(own),
+    unsafe fn run<V: Vector<Element = T>>(self) {
+        let lanes = 1usize << T::LANE_BITS;
+        for vector in 0..self.vectors {
+            // SAFETY: by contract.
+            unsafe {
+                let address = self.start.add(2 * lanes * vector);
+                let (first, second) = V::interleave(V::load(address), V::load(address.add(lanes)));
+                first.store(address);
+                second.store(address.add(lanes));
             }
         }
     }

@@ -16,15 +16,41 @@
 
 use std::ops::{Add, AddAssign, Mul, Neg, Sub};
 
+use super::vector::{Portable, Vector};
+
 /// Reals in a group: four amplitudes.
 pub const LANES: usize = 8;
 /// Amplitudes in a group, as a power of two.
 pub const GROUP_BITS: u32 = 2;
 
+/// Lanes of one vector, aligned to a cache line.
+#[derive(Clone, Copy, Debug, PartialEq)]
+#[repr(C, align(64))]
+pub struct Line<T, const LANES: usize>(pub [T; LANES]);
+
+impl<T: Copy + Default, const LANES: usize> Default for Line<T, LANES> {
+    fn default() -> Self {
+        Self([T::default(); LANES])
+    }
+}
+
+impl<T, const LANES: usize> AsRef<[T]> for Line<T, LANES> {
+    fn as_ref(&self) -> &[T] {
+        &self.0
+    }
+}
+
+impl<T, const LANES: usize> AsMut<[T]> for Line<T, LANES> {
+    fn as_mut(&mut self) -> &mut [T] {
+        &mut self.0
+    }
+}
+
 /// f64 or f32.
 pub trait Real:
     Copy
     + Default
+    + std::fmt::Debug
     + PartialEq
     + Send
     + Sync
@@ -35,6 +61,18 @@ pub trait Real:
     + Mul<Output = Self>
     + Neg<Output = Self>
 {
+    /// Amplitudes in a vector, as a power of two.
+    const LANE_BITS: u32;
+    /// One vector in memory.
+    type Line: Copy + Default + std::fmt::Debug + PartialEq + Send + Sync + AsRef<[Self]> + AsMut<[Self]>;
+    /// Vectors of every processor.
+    type Portable: Vector<Element = Self>;
+    /// Vectors of AVX2.
+    #[cfg(target_arch = "x86_64")]
+    type Avx2: Vector<Element = Self>;
+    /// Vectors of AVX-512.
+    #[cfg(target_arch = "x86_64")]
+    type Avx512: Vector<Element = Self>;
     /// Rounds to this type.
     fn from_f64(value: f64) -> Self;
     /// Widens without loss.
@@ -42,6 +80,13 @@ pub trait Real:
 }
 
 impl Real for f64 {
+    type Line = Line<Self, 8>;
+    const LANE_BITS: u32 = 3;
+    type Portable = Portable<Self, 8>;
+    #[cfg(target_arch = "x86_64")]
+    type Avx2 = super::x86_64::Double256;
+    #[cfg(target_arch = "x86_64")]
+    type Avx512 = super::x86_64::Double512;
     #[inline(always)]
     fn from_f64(value: f64) -> Self {
         value
@@ -53,6 +98,13 @@ impl Real for f64 {
 }
 
 impl Real for f32 {
+    type Line = Line<Self, 16>;
+    const LANE_BITS: u32 = 4;
+    type Portable = Portable<Self, 16>;
+    #[cfg(target_arch = "x86_64")]
+    type Avx2 = super::x86_64::Single256;
+    #[cfg(target_arch = "x86_64")]
+    type Avx512 = super::x86_64::Single512;
     #[inline(always)]
     fn from_f64(value: f64) -> Self {
         value as f32
@@ -160,18 +212,6 @@ pub(super) fn parity(masked: usize) -> usize {
 #[inline(always)]
 pub(super) fn permuted<T: Real, const M: usize>(lanes: &[T; LANES]) -> [T; LANES] {
     std::array::from_fn(|l| lanes[l ^ M])
-}
-
-/// `keep · own + weights · permuted(other)` lane by lane, the two products rounded, then the sum.
-#[inline(always)]
-pub(super) fn mixed<T: Real, const M: usize>(
-    keep: &[T; LANES],
-    own: &[T; LANES],
-    weights: &[T; LANES],
-    other: &[T; LANES],
-) -> [T; LANES] {
-    let other = permuted::<T, M>(other);
-    std::array::from_fn(|l| keep[l] * own[l] + weights[l] * other[l])
 }
 
 /// Compiles one body for the eight lane permutations and picks by `m`.

@@ -19,12 +19,16 @@ pub mod carry;
 pub mod image;
 pub mod lanes;
 pub mod reduce;
-pub mod rotate;
 pub mod shared;
+pub mod tile;
+pub mod vector;
 #[cfg(target_arch = "x86_64")]
 mod x86_64;
 
 use std::sync::OnceLock;
+
+use self::lanes::Real;
+use self::vector::Vector;
 
 use crate::error::{Error, Result};
 
@@ -34,6 +38,17 @@ pub trait Work {
     type Output;
     /// Runs the loop. Implementations must be `#[inline(always)]`, or they are not compiled for the chosen set.
     fn run(self) -> Self::Output;
+}
+
+/// A loop over vectors, written once for the vectors of every instruction set.
+pub trait VectorWork<T: Real> {
+    /// What the loop returns.
+    type Output;
+    /// Runs the loop. Implementations must be `#[inline(always)]`, or they are not compiled for the chosen set.
+    ///
+    /// # Safety
+    /// The processor has the instruction set of `V`; the work may ask for more.
+    unsafe fn run<V: Vector<Element = T>>(self) -> Self::Output;
 }
 
 /// An instruction set that this processor has. Values other than [`Isa::BASELINE`] exist only where it was detected.
@@ -66,7 +81,11 @@ impl Isa {
             if avx2 {
                 found.push(Self(Level::Avx2));
             }
-            if avx2 && is_x86_feature_detected!("avx512f") && is_x86_feature_detected!("avx512dq") {
+            let wider = is_x86_feature_detected!("avx512f")
+                && is_x86_feature_detected!("avx512dq")
+                && is_x86_feature_detected!("avx512vl")
+                && is_x86_feature_detected!("avx512bw");
+            if avx2 && wider {
                 found.push(Self(Level::Avx512));
             }
         }
@@ -118,6 +137,24 @@ impl Isa {
             // SAFETY: as above.
             #[cfg(target_arch = "x86_64")]
             Level::Avx512 => unsafe { x86_64::avx512(work) },
+        }
+    }
+
+    /// Runs a loop over vectors with those of this instruction set.
+    ///
+    /// # Safety
+    /// What the work asks for besides the instruction set.
+    #[inline]
+    pub unsafe fn run_vectors<T: Real, W: VectorWork<T>>(self, work: W) -> W::Output {
+        match self.0 {
+            // SAFETY: the portable vectors need no instruction set; the rest is the caller's word.
+            Level::Baseline => unsafe { work.run::<T::Portable>() },
+            // SAFETY: a value of this level is only made in `available`, after the features were detected.
+            #[cfg(target_arch = "x86_64")]
+            Level::Avx2 => unsafe { x86_64::avx2_vectors(work) },
+            // SAFETY: as above.
+            #[cfg(target_arch = "x86_64")]
+            Level::Avx512 => unsafe { x86_64::avx512_vectors(work) },
         }
     }
 }

@@ -37,6 +37,23 @@ impl<'a, T: Real> Shared<'a, T> {
         self.reals / LANES
     }
 
+    /// Number of reals.
+    #[inline(always)]
+    pub fn reals(&self) -> usize {
+        self.reals
+    }
+
+    /// Address of real number `place`.
+    ///
+    /// # Safety
+    /// `place < self.reals()`; what is read and written through the address follows the rules of [`Shared::group`].
+    #[inline(always)]
+    pub unsafe fn at(&self, place: usize) -> *mut T {
+        debug_assert!(place < self.reals);
+        // SAFETY: in bounds by contract.
+        unsafe { self.start.add(place) }
+    }
+
     /// The lanes of one group, to read and write.
     ///
     /// # Safety

@@ -1,0 +1,324 @@
+//! What happens to a coset while it is in cache: runs over its tiles.
+//!
+//! A *tile* is eight vectors of amplitudes, `base ^ comb[t]` for t = 0 … 7, held in registers as sixteen vectors of real
+//! and imaginary parts. The eight differ by a span of three directions, so every operation whose x mask lies in that span
+//! (and in the lanes of a vector) only mixes the registers of one tile: load, apply several operations, store. With the
+//! directions e_0 + e_1, e_1 + e_2, e_2 + e_3 three bonds share one load.
+//!
+//! Bases are walked in an order that keeps what the signs of the operations depend on in the outer loop: parities are
+//! computed there, once for all bases of the inner loop.
+
+use num_complex::Complex64;
+
+use super::diagonal::Diagonal;
+use super::space::{Space, Span, subsets};
+use crate::kernel::lanes::Real;
+use crate::operation::{Action, Operation, PARITIES};
+
+/// Directions of a tile.
+pub const TILE_BITS: u32 = 3;
+/// Vectors in a tile.
+pub const TILE: usize = 1 << TILE_BITS;
+/// Amplitudes of a part of a coset that stays in first-level cache, as a power of two.
+const INNER_BITS: u32 = 10;
+/// Products of cosines smaller than this are multiplied in before more are put off.
+const SMALLEST_FACTOR: f64 = 1e-18;
+
+/// Which arithmetic an operation needs on the registers of a tile.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Form {
+    /// a + γ (b - a) for active registers.
+    Exchange,
+    /// Sums and differences for active registers, a - i t b for the others.
+    Bond,
+    /// a + w t b.
+    Turn,
+    /// c a + w s b.
+    Table,
+    /// a + γ (b - a) with γ by lane.
+    LaneExchange,
+    /// c a + s b with complex c and s by lane.
+    Complex,
+    /// A number times everything.
+    Scale,
+    /// Phases from the tables of a diagonal.
+    Diagonal,
+}
+
+/// An operation on the registers of a tile.
+#[derive(Clone, Debug)]
+pub struct TileOperation<T: Real> {
+    /// The arithmetic.
+    pub form: Form,
+    /// Whether partners enter with a real factor (`Turn`, `Table`).
+    pub real: bool,
+    /// Register t mixes with register t ^ x.
+    pub x: usize,
+    /// Lane l mixes with lane l ^ m.
+    pub m: usize,
+    /// Coefficients that are the same for all lanes; the place of the tables for `Diagonal`.
+    pub numbers: [T; 5],
+    /// Place among the diagonals of the pass.
+    pub diagonal: usize,
+    /// Coefficients by lane: `width` lines for each entry.
+    pub lines: Vec<T::Line>,
+    /// Lines of an entry.
+    pub width: usize,
+    /// Parity masks over the vectors of a coset, one for each bit of an entry's number.
+    pub masks: Vec<usize>,
+    /// Parity masks over representatives.
+    pub coset_masks: Vec<usize>,
+    /// What register t adds to the entry's number, by exclusive or.
+    pub register_entry: [usize; TILE],
+    /// Registers in the odd class, for entry 0 and 1.
+    pub active: [u8; 2],
+    /// Entries that leave everything as it is.
+    pub idle: u16,
+}
+
+/// One traversal of a coset, tile by tile.
+#[derive(Clone, Debug)]
+pub struct TileRun<T: Real> {
+    /// Vectors of a tile, relative to its base.
+    pub comb: [usize; TILE],
+    /// Bases that change the parities of operations.
+    pub outer: Vec<usize>,
+    /// Bases that do not.
+    pub inner: Vec<usize>,
+    /// What to apply, in order.
+    pub operations: Vec<TileOperation<T>>,
+}
+
+/// Runs that go over one part of the coset after the other.
+#[derive(Clone, Debug)]
+pub struct Stage<T: Real> {
+    /// Vectors in a part, as a power of two.
+    pub part_bits: u32,
+    /// The runs.
+    pub runs: Vec<TileRun<T>>,
+}
+
+/// All that happens inside the cosets of a pass.
+#[derive(Clone, Debug)]
+pub struct Work<T: Real> {
+    /// In order.
+    pub stages: Vec<Stage<T>>,
+    /// Diagonals that the runs refer to.
+    pub diagonals: Vec<Diagonal<T>>,
+}
+
+/// A group of operations that share tiles.
+struct Gathering<'a> {
+    span: Span,
+    operations: Vec<&'a Operation>,
+}
+
+/// Sorts the operations of a pass into runs and prepares them.
+pub fn prepare<T: Real>(space: &Space, operations: &[&Operation]) -> Work<T> {
+    let gathered = gather::<T>(space, operations);
+    let mut work = Work { stages: vec![], diagonals: vec![] };
+    let mut factor = Complex64::new(1.0, 0.0);
+    let last = gathered.len() - 1;
+    for (place, Gathering { span, operations }) in gathered.into_iter().enumerate() {
+        let tile = Space::new(span.filled(TILE_BITS));
+        let mut run = Vec::with_capacity(operations.len());
+        for operation in &operations {
+            match operation.action() {
+                Action::Diagonal(terms) => {
+                    let taken = std::mem::replace(&mut factor, Complex64::new(1.0, 0.0));
+                    work.diagonals.push(Diagonal::new(&terms, space, taken));
+                    run.push(TileOperation {
+                        diagonal: work.diagonals.len() - 1,
+                        ..TileOperation::plain(Form::Diagonal)
+                    });
+                }
+                action => {
+                    let (prepared, own) = TileOperation::new(space, &tile, operation.x(), &action);
+                    factor *= own;
+                    run.push(prepared);
+                }
+            }
+            if factor.norm() < SMALLEST_FACTOR {
+                run.push(TileOperation::scale(std::mem::replace(&mut factor, Complex64::new(1.0, 0.0))));
+            }
+        }
+        if place == last && factor != Complex64::new(1.0, 0.0) {
+            run.push(TileOperation::scale(factor));
+        }
+        work.append(space.dimension() - T::LANE_BITS, &tile, run);
+    }
+    work
+}
+
+/// Greedy: a run takes every later operation that fits its span and commutes with all that it skipped.
+fn gather<'a, T: Real>(space: &Space, operations: &[&'a Operation]) -> Vec<Gathering<'a>> {
+    let mut left = operations.to_vec();
+    let mut found = vec![];
+    loop {
+        let mut span = Span::of_low_bits(0);
+        let (mut taken, mut skipped): (Vec<&Operation>, Vec<&Operation>) = (vec![], vec![]);
+        for operation in left {
+            let x = (space.coordinates(operation.x()) >> T::LANE_BITS) as u64;
+            if skipped.iter().all(|s| s.commutes_with_all_of(operation)) && span.admit(x, TILE_BITS) {
+                taken.push(operation);
+            } else {
+                skipped.push(operation);
+            }
+        }
+        found.push(Gathering { span, operations: taken });
+        if skipped.is_empty() {
+            return found;
+        }
+        left = skipped;
+    }
+}
+
+impl<T: Real> Work<T> {
+    fn append(&mut self, coset_bits: u32, tile: &Space, operations: Vec<TileOperation<T>>) {
+        let inner_bits = (INNER_BITS - T::LANE_BITS).min(coset_bits);
+        let part_bits = if tile.highest() < inner_bits { inner_bits } else { coset_bits };
+        let bases = tile.complement(part_bits);
+        let signs = operations.iter().flat_map(|operation| &operation.masks).fold(0, |all, mask| all | mask);
+        let mut comb = [0; TILE];
+        comb.iter_mut().enumerate().for_each(|(t, place)| *place = tile.vector(t) as usize);
+        let run = TileRun { comb, outer: subsets(bases & signs), inner: subsets(bases & !signs), operations };
+        match self.stages.last_mut() {
+            Some(stage) if stage.part_bits == part_bits => stage.runs.push(run),
+            _ => self.stages.push(Stage { part_bits, runs: vec![run] }),
+        }
+    }
+
+    /// Number of runs.
+    pub fn runs(&self) -> usize {
+        self.stages.iter().map(|stage| stage.runs.len()).sum()
+    }
+}
+
+fn is_odd(masked: usize) -> bool {
+    masked.count_ones() & 1 == 1
+}
+
+impl<T: Real> TileOperation<T> {
+    fn plain(form: Form) -> Self {
+        Self {
+            form,
+            real: false,
+            x: 0,
+            m: 0,
+            numbers: [T::default(); 5],
+            diagonal: 0,
+            lines: vec![],
+            width: 0,
+            masks: vec![],
+            coset_masks: vec![],
+            register_entry: [0; TILE],
+            active: [0, u8::MAX],
+            idle: 0,
+        }
+    }
+
+    fn scale(factor: Complex64) -> Self {
+        let mut operation = Self::plain(Form::Scale);
+        operation.set_numbers(&[factor.re, factor.im]);
+        operation
+    }
+
+    fn set_numbers(&mut self, values: &[f64]) {
+        self.numbers.iter_mut().zip(values).for_each(|(own, value)| *own = T::from_f64(*value));
+    }
+
+    /// An operation that mixes, in the coordinates of a coset and a tile, and the factor of everything that it leaves to do.
+    fn new(space: &Space, tile: &Space, x: u64, action: &Action) -> (Self, Complex64) {
+        let local = space.coordinates(x);
+        let m = local & ((1 << T::LANE_BITS) - 1);
+        let x = tile.coordinates((local >> T::LANE_BITS) as u64);
+        let sees_lanes = |mask: &u64| space.dual(*mask) & ((1 << T::LANE_BITS) - 1) != 0;
+        let lanes = match action {
+            Action::Exchange { mask, .. } | Action::Bond { mask, .. } => m != 0 || sees_lanes(mask),
+            _ => false,
+        };
+        let one = Complex64::new(1.0, 0.0);
+        let (mut operation, factor) = match action {
+            Action::Exchange { mask, gamma, factor } if lanes => {
+                let entry = |odd: bool| if odd { vec![gamma.re, gamma.im] } else { vec![0.0, 0.0] };
+                (Self::by_parity(Form::LaneExchange, space, tile, &[*mask], |parities| entry(parities == 1)), *factor)
+            }
+            Action::Exchange { mask, gamma, factor } => {
+                let mut operation = Self::by_parity(Form::Exchange, space, tile, &[*mask], |_| vec![]);
+                operation.set_numbers(&[gamma.re, gamma.im]);
+                (operation, *factor)
+            }
+            Action::Bond { mask, plus, minus, tangent, factor } if lanes => {
+                let odd = vec![(plus + minus).re, (plus + minus).im, (plus - minus).re, (plus - minus).im];
+                let even = vec![1.0, 0.0, 0.0, -tangent];
+                let entry = |parities: usize| if parities == 1 { odd.clone() } else { even.clone() };
+                (Self::by_parity(Form::Complex, space, tile, &[*mask], entry), *factor)
+            }
+            Action::Bond { mask, plus, minus, tangent, factor } => {
+                let mut operation = Self::by_parity(Form::Bond, space, tile, &[*mask], |_| vec![]);
+                operation.set_numbers(&[plus.re, plus.im, minus.re, minus.im, *tangent]);
+                (operation, *factor)
+            }
+            Action::Turn { mask, tangent, cosine, .. } => {
+                let signed = |parities: usize| vec![if parities == 1 { -tangent } else { *tangent }];
+                (Self::by_parity(Form::Turn, space, tile, &[*mask], signed), one * cosine)
+            }
+            Action::Table { masks, entries, .. } => {
+                let entry = |parities: usize| vec![entries[parities].0, entries[parities].1];
+                (Self::by_parity(Form::Table, space, tile, masks, entry), one)
+            }
+            Action::Complex { mask, entries } => {
+                let entry = |parities: usize| {
+                    let (c, s) = entries[parities];
+                    vec![c.re, c.im, s.re, s.im]
+                };
+                (Self::by_parity(Form::Complex, space, tile, &[*mask], entry), one)
+            }
+            Action::Diagonal(_) => unreachable!("diagonal operations have tables of their own"),
+        };
+        operation.real = matches!(action, Action::Turn { real: true, .. } | Action::Table { real: true, .. });
+        (operation.x, operation.m) = (x, m);
+        if let (Action::Table { entries, .. }, true) = (action, operation.parities_are_lane_free()) {
+            let idle = |(e, entry): (usize, &(f64, f64))| u16::from(*entry == (1.0, 0.0)) << e;
+            operation.idle = entries.iter().enumerate().map(idle).sum();
+        }
+        (operation, factor)
+    }
+
+    fn parities_are_lane_free(&self) -> bool {
+        // Each line then holds one value.
+        self.lines.iter().all(|line| line.as_ref().iter().all(|value| *value == line.as_ref()[0]))
+    }
+
+    /// Lines of coefficients by parities of the index, laid out for registers and lanes.
+    fn by_parity(form: Form, space: &Space, tile: &Space, masks: &[u64], entry: impl Fn(usize) -> Vec<f64>) -> Self {
+        debug_assert!(masks.len() <= PARITIES);
+        let locals: Vec<usize> = masks.iter().map(|mask| space.dual(*mask)).collect();
+        let vectors: Vec<usize> = locals.iter().map(|local| local >> T::LANE_BITS).collect();
+        let bits = |odd: &dyn Fn(usize) -> bool| (0..masks.len()).map(|j| usize::from(odd(j)) << j).sum::<usize>();
+        let mut operation = Self::plain(form);
+        for t in 0..TILE {
+            let vector = tile.vector(t) as usize;
+            operation.register_entry[t] = bits(&|j| is_odd(vector & vectors[j]));
+        }
+        operation.width = entry(0).len();
+        let width = operation.width;
+        operation.lines = vec![T::Line::default(); width << masks.len()];
+        if width > 0 {
+            for number in 0..1usize << masks.len() {
+                for lane in 0..1usize << T::LANE_BITS {
+                    let values = entry(number ^ bits(&|j| is_odd(lane & locals[j])));
+                    for (line, value) in operation.lines[number * width..].iter_mut().zip(values) {
+                        line.as_mut()[lane] = T::from_f64(value);
+                    }
+                }
+            }
+        }
+        let odd = |t: usize| u8::from(operation.register_entry[t] & 1 == 1) << t;
+        let active = (0..TILE).map(odd).sum::<u8>();
+        operation.active = [active, !active];
+        operation.masks = vectors;
+        operation.coset_masks = masks.iter().map(|mask| if space.leaves(*mask) { *mask as usize } else { 0 }).collect();
+        operation
+    }
+}
