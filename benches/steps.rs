@@ -12,17 +12,17 @@ use std::env;
 use _native::evolve::evolve;
 use _native::rotations::{Rotation, Rotations};
 use _native::team::Control;
-use clock::{best, sizes, sweep};
-use num_complex::{Complex, Complex64};
+use clock::{aligned, best, room, sizes, sweep};
+use num_complex::Complex64;
 
 fn main() {
     sizes(&[20, 24]).into_iter().for_each(report);
 }
 
 fn report(qubits: u32) {
-    let mut state = vec![Complex64::new(0.0, 0.0); 1 << qubits];
-    state[0].re = 1.0;
-    let sweep = sweep(qubits, &mut state);
+    let mut room = room(qubits);
+    let state = aligned(&mut room);
+    let sweep = sweep(qubits, state);
     let only = env::var("TRUETURN_BENCH_ONLY").unwrap_or_default();
     println!(
         "{:<28}{:>10}{:>8}{:>9}{:>9}{:>11}{:>11}{:>11}",
@@ -33,15 +33,15 @@ fn report(qubits: u32) {
         let row = once.times(8).expect("no phase");
         let mut passes = 0;
         let steps = [1, 2].map(|threads| {
-            best(5, || passes = evolve(&mut state, &once, threads, &Control::default()).expect("no stop asked").passes)
+            best(5, || passes = evolve(state, &once, threads, &Control::default()).expect("no stop asked").passes)
         });
         let rows = [1, 2].map(|threads| {
             let eight = best(2, || {
-                evolve(&mut state, &row, threads, &Control::default()).expect("no stop asked");
+                evolve(state, &row, threads, &Control::default()).expect("no stop asked");
             });
             eight / 8.0
         });
-        let single = unfused(&mut state, &list);
+        let single = unfused(state, &list);
         print!("{name:<28}{:>10}{passes:>8}", list.len());
         print!("{:>9.2}{:>9.2}{:>11.2}{:>11.2}", steps[0] / sweep, steps[1] / sweep, rows[0] / sweep, rows[1] / sweep);
         println!("{:>11.1}", single / sweep);
@@ -49,7 +49,7 @@ fn report(qubits: u32) {
 }
 
 /// Time of the list one rotation at a time, on one thread.
-fn unfused(state: &mut [Complex<f64>], list: &[Rotation]) -> f64 {
+fn unfused(state: &mut [Complex64], list: &[Rotation]) -> f64 {
     let qubits = state.len().ilog2();
     let circuits: Vec<Rotations> =
         list.iter().map(|r| Rotations::from_list(qubits, vec![*r], 0.0).expect("strings within the qubits")).collect();

@@ -45,14 +45,14 @@ impl<T: Real> Place<'_, T> {
     }
 }
 
-/// What to fetch while a run is at work: every `step`-th line of the next coset, from line `first` on.
+/// What to fetch while a run is at work: every `step`-th vector of the next coset, from `first` on.
 #[derive(Clone, Copy)]
 pub struct Ahead<'a, T> {
     /// The next coset.
     pub next: Place<'a, T>,
-    /// First line of each tile's share.
+    /// First vector of each tile's share.
     pub first: usize,
-    /// Distance of lines.
+    /// Distance of vectors.
     pub step: usize,
 }
 
@@ -90,20 +90,31 @@ macro_rules! registers {
 
 /// Calls a body with a constant register mask where the vector type wants it.
 macro_rules! by_mask {
-    ($v:ty, $x:expr, $body:ident ( $($argument:expr),* )) => {
+    ($v:ty, $x:expr, $body:ident $(<$lanes:literal>)? ( $($argument:expr),* )) => {
         if <$v>::UNROLLED {
             match $x {
-                0 => $body::<$v>($($argument,)* 0),
-                1 => $body::<$v>($($argument,)* 1),
-                2 => $body::<$v>($($argument,)* 2),
-                3 => $body::<$v>($($argument,)* 3),
-                4 => $body::<$v>($($argument,)* 4),
-                5 => $body::<$v>($($argument,)* 5),
-                6 => $body::<$v>($($argument,)* 6),
-                _ => $body::<$v>($($argument,)* 7),
+                0 => $body::<$v $(, $lanes)?>($($argument,)* 0),
+                1 => $body::<$v $(, $lanes)?>($($argument,)* 1),
+                2 => $body::<$v $(, $lanes)?>($($argument,)* 2),
+                3 => $body::<$v $(, $lanes)?>($($argument,)* 3),
+                4 => $body::<$v $(, $lanes)?>($($argument,)* 4),
+                5 => $body::<$v $(, $lanes)?>($($argument,)* 5),
+                6 => $body::<$v $(, $lanes)?>($($argument,)* 6),
+                _ => $body::<$v $(, $lanes)?>($($argument,)* 7),
             }
         } else {
-            $body::<$v>($($argument,)* $x)
+            $body::<$v $(, $lanes)?>($($argument,)* $x)
+        }
+    };
+}
+
+/// Calls a body that exchanges lanes only where the operation mixes lanes.
+macro_rules! by_mask_and_lanes {
+    ($v:ty, $operation:expr, $body:ident ( $($argument:expr),* )) => {
+        if $operation.m == 0 {
+            by_mask!($v, $operation.x, $body<false>($($argument),*))
+        } else {
+            by_mask!($v, $operation.x, $body<true>($($argument),*))
         }
     };
 }
@@ -162,25 +173,27 @@ impl<T: Real> TileOperation<T> {
     /// `entry` comes from [`TileOperation::entry`].
     #[inline(always)]
     unsafe fn lines(&self, entry: usize, t: usize) -> *const T {
-        let place = (entry ^ self.register_entry[t]) * self.width;
+        // Widths are powers of two, so scaled numbers combine as the numbers do.
+        let place = (entry << self.width_bits) ^ self.register_line[t];
         // SAFETY: entries have as many bits as there are masks, and `lines` holds all of them.
         unsafe { self.lines.as_ptr().add(place).cast() }
     }
 }
 
-/// Asks for this tile's share of the next coset's lines.
+/// Asks for this tile's share of the next coset's vectors.
 ///
 /// # Safety
 /// `tile` is below the number of tiles of the coset.
 #[inline(always)]
 unsafe fn fetch<V: Vector>(ahead: &Ahead<V::Element>, tile: usize) {
     let lanes = 1usize << V::Element::LANE_BITS;
-    let line = 64 / size_of::<V::Element>();
     let mut number = ahead.first;
-    while number < 2 * TILE * lanes / line {
+    while number < TILE {
         // SAFETY: by contract.
-        let address = unsafe { ahead.next.address(TILE * tile + number * line / (2 * lanes)) };
-        V::prefetch(address.wrapping_add(number * line % (2 * lanes)));
+        let address = unsafe { ahead.next.address(TILE * tile + number) };
+        // A vector's real and imaginary parts fill one cache line each.
+        V::prefetch(address);
+        V::prefetch(address.wrapping_add(lanes));
         number += ahead.step;
     }
 }
@@ -257,12 +270,13 @@ unsafe fn apply<V: Vector>(
         match (operation.form, operation.real) {
             (Form::Exchange, _) => by_mask!(V, operation.x, exchange(re, im, operation, operation.active[entry & 1])),
             (Form::Bond, _) => by_mask!(V, operation.x, bond(re, im, operation, operation.active[entry & 1])),
-            (Form::Turn, false) => by_mask!(V, operation.x, turn(re, im, operation, entry)),
-            (Form::Turn, true) => by_mask!(V, operation.x, turn_real(re, im, operation, entry)),
-            (Form::Table, false) => by_mask!(V, operation.x, table(re, im, operation, entry)),
-            (Form::Table, true) => by_mask!(V, operation.x, table_real(re, im, operation, entry)),
-            (Form::LaneExchange, _) => by_mask!(V, operation.x, lane_exchange(re, im, operation, entry)),
-            (Form::Complex, _) => by_mask!(V, operation.x, complex(re, im, operation, entry)),
+            (Form::Mix, _) => by_mask_and_lanes!(V, operation, mix(re, im, operation)),
+            (Form::Turn, false) => by_mask_and_lanes!(V, operation, turn(re, im, operation, entry)),
+            (Form::Turn, true) => by_mask_and_lanes!(V, operation, turn_real(re, im, operation, entry)),
+            (Form::Table, false) => by_mask_and_lanes!(V, operation, table(re, im, operation, entry)),
+            (Form::Table, true) => by_mask_and_lanes!(V, operation, table_real(re, im, operation, entry)),
+            (Form::LaneExchange, _) => by_mask_and_lanes!(V, operation, lane_exchange(re, im, operation, entry)),
+            (Form::Complex, _) => by_mask_and_lanes!(V, operation, complex(re, im, operation, entry)),
             (Form::Scale, _) => scale::<V>(re, im, operation),
             (Form::Diagonal, _) => {
                 let place = operation.diagonal;
@@ -342,15 +356,45 @@ unsafe fn bond<V: Vector>(
     }
 }
 
+/// a - i t b with one t for all.
+///
+/// # Safety
+/// The instruction set is there.
+#[inline(always)]
+unsafe fn mix<V: Vector, const LANES: bool>(
+    re: &mut Registers<V>,
+    im: &mut Registers<V>,
+    operation: &TileOperation<V::Element>,
+    x: usize,
+) {
+    let m = if LANES { operation.m } else { 0 };
+    // SAFETY: by contract.
+    unsafe {
+        let tangent = V::splat(operation.numbers[0]);
+        registers!(t => {
+            let u = (t ^ x) & 7;
+            if t <= u {
+                let (a, b, c, d) = (re[t], im[t], re[u], im[u]);
+                let (e, f) = if LANES { (c.exchange(m), d.exchange(m)) } else { (c, d) };
+                (re[t], im[t]) = (a.add(tangent.mul(f)), b.sub(tangent.mul(e)));
+                if t < u {
+                    let (e, f) = if LANES { (a.exchange(m), b.exchange(m)) } else { (a, b) };
+                    (re[u], im[u]) = (c.add(tangent.mul(f)), d.sub(tangent.mul(e)));
+                }
+            }
+        });
+    }
+}
+
 /// Defines a body that computes each register from itself, its partner and the lines of its entry.
 macro_rules! by_partner {
-    ($(#[$attribute:meta])* $name:ident, $lines:ident, $a:ident, $b:ident, $c:ident, $d:ident => $result:expr) => {
+    ($(#[$attribute:meta])* $name:ident if $used:ident, $lines:ident, $a:ident, $b:ident, $c:ident, $d:ident => $result:expr) => {
         $(#[$attribute])*
         ///
         /// # Safety
         /// The instruction set is there, and the entry is one of the operation's.
         #[inline(always)]
-        unsafe fn $name<V: Vector>(
+        unsafe fn $name<V: Vector, const LANES: bool>(
             re: &mut Registers<V>,
             im: &mut Registers<V>,
             operation: &TileOperation<V::Element>,
@@ -363,22 +407,35 @@ macro_rules! by_partner {
                 // SAFETY: as for the whole body.
                 unsafe { $result }
             }
-            let m = operation.m;
+            let m = if LANES { operation.m } else { 0 };
             // SAFETY: by contract.
             unsafe {
                 registers!(t => {
                     let u = (t ^ x) & 7;
-                    if t <= u && operation.idle >> (entry ^ operation.register_entry[t]) & 1 == 0 {
+                    if t <= u && $used(operation, entry, t) {
                         let (a, b, c, d) = (re[t], im[t], re[u], im[u]);
-                        (re[t], im[t]) = one(operation.lines(entry, t), a, b, c.exchange(m), d.exchange(m));
+                        let (e, f) = if LANES { (c.exchange(m), d.exchange(m)) } else { (c, d) };
+                        (re[t], im[t]) = one(operation.lines(entry, t), a, b, e, f);
                         if t < u {
-                            (re[u], im[u]) = one(operation.lines(entry, u), c, d, a.exchange(m), b.exchange(m));
+                            let (e, f) = if LANES { (a.exchange(m), b.exchange(m)) } else { (a, b) };
+                            (re[u], im[u]) = one(operation.lines(entry, u), c, d, e, f);
                         }
                     }
                 });
             }
         }
     };
+}
+
+#[inline(always)]
+fn always<T: Real>(_operation: &TileOperation<T>, _entry: usize, _t: usize) -> bool {
+    true
+}
+
+/// Whether the entry that register `t` sees changes anything.
+#[inline(always)]
+fn is_busy<T: Real>(operation: &TileOperation<T>, entry: usize, t: usize) -> bool {
+    operation.idle >> (entry ^ operation.register_entry[t]) & 1 == 0
 }
 
 /// Line `n` of an entry.
@@ -393,42 +450,42 @@ unsafe fn line<V: Vector>(lines: *const V::Element, n: usize) -> V {
 
 by_partner!(
     /// a - i t b.
-    turn, lines, a, b, c, d => {
+    turn if always, lines, a, b, c, d => {
         let t = line::<V>(lines, 0);
         (a.add(t.mul(d)), b.sub(t.mul(c)))
     }
 );
 by_partner!(
     /// a + t b.
-    turn_real, lines, a, b, c, d => {
+    turn_real if always, lines, a, b, c, d => {
         let t = line::<V>(lines, 0);
         (a.add(t.mul(c)), b.add(t.mul(d)))
     }
 );
 by_partner!(
     /// c a - i s b.
-    table, lines, a, b, c, d => {
+    table if is_busy, lines, a, b, c, d => {
         let (cosine, sine) = (line::<V>(lines, 0), line::<V>(lines, 1));
         (cosine.mul(a).add(sine.mul(d)), cosine.mul(b).sub(sine.mul(c)))
     }
 );
 by_partner!(
     /// c a + s b.
-    table_real, lines, a, b, c, d => {
+    table_real if is_busy, lines, a, b, c, d => {
         let (cosine, sine) = (line::<V>(lines, 0), line::<V>(lines, 1));
         (cosine.mul(a).add(sine.mul(c)), cosine.mul(b).add(sine.mul(d)))
     }
 );
 by_partner!(
     /// a + γ (b - a) with γ by lane.
-    lane_exchange, lines, a, b, c, d => {
+    lane_exchange if always, lines, a, b, c, d => {
         let (re, im) = product(line::<V>(lines, 0), line::<V>(lines, 1), c.sub(a), d.sub(b));
         (a.add(re), b.add(im))
     }
 );
 by_partner!(
     /// c a + s b with complex c and s by lane.
-    complex, lines, a, b, c, d => {
+    complex if always, lines, a, b, c, d => {
         let own = product(line::<V>(lines, 0), line::<V>(lines, 1), a, b);
         let other = product(line::<V>(lines, 2), line::<V>(lines, 3), c, d);
         (own.0.add(other.0), own.1.add(other.1))
@@ -462,6 +519,8 @@ unsafe fn diagonal<V: Vector>(
     comb: &[usize; TILE],
 ) {
     let low_vectors = LOW_BITS - V::Element::LANE_BITS;
+    // The compiler would compute all eight addresses for every tile, whether or not it has a diagonal operation.
+    let base = std::hint::black_box(base);
     // SAFETY: by contract: the high part of a vector number is below the number of high factors, its low part below that of
     // table vectors.
     unsafe {

@@ -31,6 +31,8 @@ pub enum Form {
     Exchange,
     /// Sums and differences for active registers, a - i t b for the others.
     Bond,
+    /// a - i t b with one t for all.
+    Mix,
     /// a + w t b.
     Turn,
     /// c a + w s b.
@@ -60,16 +62,18 @@ pub struct TileOperation<T: Real> {
     pub numbers: [T; 5],
     /// Place among the diagonals of the pass.
     pub diagonal: usize,
-    /// Coefficients by lane: `width` lines for each entry.
+    /// Coefficients by lane, some lines for each entry.
     pub lines: Vec<T::Line>,
-    /// Lines of an entry.
-    pub width: usize,
+    /// Lines of an entry, as a power of two.
+    pub width_bits: u32,
     /// Parity masks over the vectors of a coset, one for each bit of an entry's number.
     pub masks: Vec<usize>,
     /// Parity masks over representatives.
     pub coset_masks: Vec<usize>,
     /// What register t adds to the entry's number, by exclusive or.
     pub register_entry: [usize; TILE],
+    /// The same, counted in lines.
+    pub register_line: [usize; TILE],
     /// Registers in the odd class, for entry 0 and 1.
     pub active: [u8; 2],
     /// Entries that leave everything as it is.
@@ -208,10 +212,11 @@ impl<T: Real> TileOperation<T> {
             numbers: [T::default(); 5],
             diagonal: 0,
             lines: vec![],
-            width: 0,
+            width_bits: 0,
             masks: vec![],
             coset_masks: vec![],
             register_entry: [0; TILE],
+            register_line: [0; TILE],
             active: [0, u8::MAX],
             idle: 0,
         }
@@ -259,6 +264,11 @@ impl<T: Real> TileOperation<T> {
                 operation.set_numbers(&[plus.re, plus.im, minus.re, minus.im, *tangent]);
                 (operation, *factor)
             }
+            Action::Turn { mask: 0, tangent, cosine, .. } => {
+                let mut operation = Self::plain(Form::Mix);
+                operation.set_numbers(&[*tangent]);
+                (operation, one * cosine)
+            }
             Action::Turn { mask, tangent, cosine, .. } => {
                 let signed = |parities: usize| vec![if parities == 1 { -tangent } else { *tangent }];
                 (Self::by_parity(Form::Turn, space, tile, &[*mask], signed), one * cosine)
@@ -301,8 +311,10 @@ impl<T: Real> TileOperation<T> {
             let vector = tile.vector(t) as usize;
             operation.register_entry[t] = bits(&|j| is_odd(vector & vectors[j]));
         }
-        operation.width = entry(0).len();
-        let width = operation.width;
+        let width = entry(0).len();
+        debug_assert!(width == 0 || width.is_power_of_two());
+        operation.width_bits = width.max(1).ilog2();
+        operation.register_line = operation.register_entry.map(|number| number << operation.width_bits);
         operation.lines = vec![T::Line::default(); width << masks.len()];
         if width > 0 {
             for number in 0..1usize << masks.len() {
