@@ -1,164 +1,225 @@
-//! An operator sorted for being applied to a state block by block; [`crate::apply`] does it.
+//! An operator sorted for its application to a state: out = (scale · H + shift) ψ.
 //!
-//! The output is made block by block in first-level cache. Terms are sorted by the high bits of their x mask: all of one
-//! sort read the same source block. Inside, terms join as far as one pass over the block can carry them:
+//! Terms with one x mask read the same amplitude, so they are one *addend*: a coefficient that depends on a few parities
+//! of the index, times the amplitude at `k ^ x`. XX and YY of a bond cost one, and nothing where they cancel; all diagonal
+//! terms together are one real number for each index ([`DiagonalSum`]).
 //!
-//! - terms with the same low masks share one coefficient for the block, the sum of theirs with the signs that the high
-//!   bits give;
-//! - strings with the same low x mask whose signs depend on one parity of the block index at most (XX and YY on a bond) add
-//!   up to one string with weights for either parity;
-//! - diagonal strings on low bits alone add up to a table, made once.
-//!
-//! So one traversal of the output serves all terms, and the recurrence T_{k+1} = 2 H' T_k - T_{k-1} with its accumulations
-//! is folded into the same traversal. Joined terms are summed in groups of eight and the groups then added, so that a term
-//! passes through at most 8 + (joined terms / 8) additions; [`Action::rounding`] counts them for the certificate.
+//! As for rotations ([`crate::passes`]), addends are sorted into passes over cosets: a coset of the state is taken into
+//! cache, and a tile of eight vectors of the result stays in registers while all addends of the pass are added to it. The first
+//! pass works on contiguous blocks and has the diagonal; later ones add to what is there. Worked example on three qubits,
+//! H = X_0 + X_2 with blocks of two qubits: the first pass adds X_0 inside {0 … 3} and {4 … 7}, the second adds X_2 inside the
+//! cosets of the span of 0b001 and 0b100.
 
-use crate::kernel::lanes::{Factor, GROUP_BITS, LANES, LaneString, Real};
+use crate::kernel::lanes::Real;
+use crate::operation::{PARITIES, coordinates, independent, sign_at_zero};
+use crate::passes::diagonal::DiagonalSum;
+use crate::passes::space::{Space, Span};
+use crate::passes::tiles::{TILE, TILE_BITS};
+use crate::passes::{least_qubits, run_offsets};
+use crate::rotations::Rotation;
 use crate::terms::Terms;
 
-/// Low bits of a block: the sum, its part and the source fit in first-level cache together.
-pub const BLOCK_BITS: u32 = 9;
-/// Terms added up before they join the sum.
-pub const PART: usize = 8;
+/// Dimension of a coset.
+const COSET_BITS: u32 = 13;
+/// Tiles, as a power of two, over which the parities of addends are prepared at once.
+pub const STRETCH_BITS: u32 = 4;
 
-/// Strings with the same low masks.
-struct Share<T> {
-    /// Their low part with factor 1 or i.
-    unit: LaneString<T>,
-    /// High z mask and signed coefficient of each.
-    terms: Vec<(usize, f64)>,
-}
-
-impl<T> Share<T> {
-    /// Σ ± coefficient, the signs being those of the high bits of the source block.
-    fn coefficient(&self, source: usize) -> f64 {
-        let signed = |(z, c): &(usize, f64)| if (source & z).count_ones() & 1 == 1 { -c } else { *c };
-        self.terms.iter().map(signed).sum()
-    }
-}
-
-/// Strings that one pass over a block carries: they move lanes and groups alike, and at most one parity of the group index
-/// other than none gives their signs.
-pub struct Item<T> {
-    shares: Vec<Share<T>>,
-}
-
-impl<T: Real> Item<T> {
-    fn admits(&self, unit: &LaneString<T>) -> bool {
-        let first = &self.shares[0].unit;
-        let parities = self.shares.iter().map(|share| share.unit.z).chain([unit.z]).filter(|&z| z != 0);
-        let mut parities = parities.collect::<Vec<_>>();
-        parities.dedup();
-        first.m == unit.m && first.x == unit.x && parities.len() <= 1
-    }
-
-    /// The sum of the shares as one string, for a source block.
-    pub fn joined(&self, source: usize) -> LaneString<T> {
-        let scaled = |share: &Share<T>| share.unit.scaled(T::from_f64(share.coefficient(source)));
-        let mut shares = self.shares.iter();
-        let first = shares.next().map(scaled);
-        shares.map(scaled).fold(first, |sum, next| sum.map(|sum| sum.plus(&next))).unwrap_or_else(LaneString::nothing)
-    }
-}
-
-/// Items that read the same source block.
-pub struct Source<T> {
-    /// High bits of the x masks.
+/// A coefficient by parities times the amplitude at `k ^ x`.
+#[derive(Clone, Debug)]
+pub struct Addend<T: Real> {
+    /// Vector v takes from vector v ^ x of the coset.
     pub x: usize,
-    /// What reads it.
-    pub items: Vec<Item<T>>,
+    /// Lane l takes from lane l ^ m.
+    pub m: usize,
+    /// The coefficient carries a factor i.
+    pub imaginary: bool,
+    /// Parity masks over the vectors of a coset, one for each bit of an entry's number.
+    pub masks: Vec<usize>,
+    /// Parity masks over representatives.
+    pub coset_masks: Vec<usize>,
+    /// What register t of a tile adds to the entry's number, by exclusive or.
+    pub register_entry: [usize; TILE],
+    /// Whether all registers see the same entry.
+    pub uniform: bool,
+    /// What tile q of a stretch adds to the entry's number.
+    pub tile_entry: [u8; 1 << STRETCH_BITS],
+    /// Coefficients where all lanes share them.
+    pub values: [T; 1 << PARITIES],
+    /// Coefficients by lane, where they do not; else empty.
+    pub lines: Vec<T::Line>,
+    /// Entries that are zero.
+    pub idle: u16,
+}
+
+/// Addends that work on one coset at a time.
+#[derive(Clone, Debug)]
+pub struct ActionPass<T: Real> {
+    /// The space whose cosets it works on.
+    pub space: Space,
+    /// See [`crate::passes::Pass::offsets`].
+    pub offsets: Vec<usize>,
+    /// See [`crate::passes::Pass::run_bits`].
+    pub run_bits: u32,
+    /// What is added.
+    pub addends: Vec<Addend<T>>,
+    /// The diagonal, in the first pass.
+    pub diagonal: Option<DiagonalSum<T>>,
 }
 
 /// An operator `scale · H + shift`, ready to be applied.
-pub struct Action<T> {
+pub struct Action<T: Real> {
     /// Qubits of the operator.
     pub qubits: u32,
-    /// All strings but those of `diagonal`.
-    pub sources: Vec<Source<T>>,
-    /// Diagonal strings on low bits alone.
-    pub diagonal: Option<Diagonal<T>>,
+    /// Passes over the state, at least one.
+    pub passes: Vec<ActionPass<T>>,
+    rounding: f64,
 }
 
-/// Diagonal strings on low bits alone, added up.
-pub struct Diagonal<T> {
-    strings: usize,
-    size: f64,
-    /// Their sum for each lane of a block.
-    pub table: Vec<[T; LANES]>,
+/// Terms with one x mask and one kind of coefficient, depending on at most [`PARITIES`] parities.
+struct Gathered {
+    x: u64,
+    imaginary: bool,
+    masks: Vec<u64>,
+    terms: Vec<Rotation>,
+}
+
+impl Gathered {
+    fn size(&self) -> f64 {
+        self.terms.iter().map(|term| term.angle.abs()).sum()
+    }
+
+    /// The coefficient where the parities of the index with the masks are the bits of `parities`.
+    fn coefficient(&self, parities: usize) -> f64 {
+        let one = |term: &Rotation| {
+            let odd = coordinates(&self.masks, term.string.z as u64) & parities;
+            term.angle * if odd.count_ones() & 1 == 1 { -1.0 } else { 1.0 } * sign_at_zero(term)
+        };
+        self.terms.iter().map(one).sum()
+    }
+}
+
+fn gather(terms: &Terms, scale: f64) -> (Vec<Gathered>, Vec<(u64, f64)>) {
+    let (mut gathered, mut diagonal): (Vec<Gathered>, Vec<(u64, f64)>) = (vec![], vec![]);
+    for (string, coefficient) in terms.iter() {
+        let term = Rotation { string, angle: scale * coefficient };
+        let (x, z, imaginary) = (string.x as u64, string.z as u64, string.y_count() & 1 == 1);
+        if x == 0 {
+            diagonal.push((z, term.angle));
+            continue;
+        }
+        let joins = |own: &&mut Gathered| {
+            own.x == x
+                && own.imaginary == imaginary
+                && independent(own.masks.iter().copied().chain([z])).len() <= PARITIES
+        };
+        match gathered.iter_mut().rev().find(joins) {
+            Some(own) => {
+                own.masks = independent(own.masks.iter().copied().chain([z]));
+                own.terms.push(term);
+            }
+            None => gathered.push(Gathered { x, imaginary, masks: independent([z].into_iter()), terms: vec![term] }),
+        }
+    }
+    (gathered, diagonal)
 }
 
 impl<T: Real> Action<T> {
     /// Prepares `scale · terms + shift`.
     pub fn new(terms: &Terms, scale: f64, shift: f64) -> Self {
-        let mut action = Self { qubits: terms.qubits(), sources: vec![], diagonal: None };
-        let low = (1u64 << BLOCK_BITS) - 1;
-        let masks = terms.strings().iter().map(|s| (s.x as u64, s.z as u64, s.y_count()));
-        let scaled = masks.zip(terms.coefficients().iter().map(|coefficient| scale * coefficient));
-        let all = scaled.chain((shift != 0.0).then_some(((0, 0, 0), shift)));
-        let (diagonal, others): (Vec<_>, Vec<_>) = all.partition(|((x, z, _), _)| *x == 0 && z & !low == 0);
-        for ((x, z, y_count), coefficient) in others {
-            action.add(x, z, y_count, coefficient);
+        let qubits = terms.qubits().max(least_qubits::<T>());
+        let (limit, run_bits) = (COSET_BITS.min(qubits), T::LANE_BITS + 2);
+        let (mut left, mut diagonal) = gather(terms, scale);
+        if shift != 0.0 {
+            diagonal.push((0, shift));
         }
-        if !diagonal.is_empty() {
-            action.diagonal =
-                Some(action.tabulated(&diagonal.iter().map(|((_, z, _), c)| (*z, *c)).collect::<Vec<_>>()));
+        let mut passes: Vec<ActionPass<T>> = vec![];
+        let mut members: Vec<Vec<Gathered>> = vec![];
+        while passes.is_empty() || !left.is_empty() {
+            let start = if passes.is_empty() { limit } else { run_bits.min(limit) };
+            let mut span = Span::of_low_bits(start);
+            let (taken, skipped): (Vec<_>, Vec<_>) = left.into_iter().partition(|own| span.admit(own.x, limit));
+            left = skipped;
+            let space = Space::new(span.filled(limit));
+            let addends = taken.iter().map(|own| Addend::new(&space, own)).collect();
+            let sum = (passes.is_empty() && !diagonal.is_empty()).then(|| DiagonalSum::new(&diagonal, &space));
+            let offsets = run_offsets(&space, run_bits);
+            passes.push(ActionPass { space, offsets, run_bits, addends, diagonal: sum });
+            members.push(taken);
         }
-        action
-    }
-
-    fn add(&mut self, x: u64, z: u64, y_count: u32, coefficient: f64) {
-        let low = (1u64 << BLOCK_BITS) - 1;
-        let (signed, unit) = match Factor::Real(coefficient).times_i_power(y_count) {
-            Factor::Real(value) => (value, Factor::Real(1.0)),
-            Factor::Imaginary(value) => (value, Factor::Imaginary(1.0)),
-        };
-        let unit = LaneString::new(x & low, z & low, unit);
-        let source = (x >> BLOCK_BITS) as usize;
-        let place = self.sources.iter().position(|s| s.x == source).unwrap_or_else(|| {
-            self.sources.push(Source { x: source, items: vec![] });
-            self.sources.len() - 1
-        });
-        let term = ((z >> BLOCK_BITS) as usize, signed);
-        let items = &mut self.sources[place].items;
-        match items.iter_mut().find(|item| item.admits(&unit)) {
-            None => items.push(Item { shares: vec![Share { unit, terms: vec![term] }] }),
-            Some(item) => match item.shares.iter_mut().find(|share| share.unit == unit) {
-                Some(share) => share.terms.push(term),
-                None => item.shares.push(Share { unit, terms: vec![term] }),
-            },
-        }
-    }
-
-    fn tabulated(&self, strings: &[(u64, f64)]) -> Diagonal<T> {
-        let groups = 1usize << (self.qubits.clamp(GROUP_BITS, BLOCK_BITS) - GROUP_BITS);
-        let value = |index: u64| -> f64 {
-            strings.iter().map(|(z, c)| if (index & z).count_ones() & 1 == 1 { -c } else { *c }).sum()
-        };
-        let lanes = |q: usize| std::array::from_fn(|l| T::from_f64(value((q * LANES / 2 + l / 2) as u64)));
-        Diagonal {
-            strings: strings.len(),
-            size: strings.iter().map(|(_, c)| c.abs()).sum(),
-            table: (0..groups).map(lanes).collect(),
-        }
+        let rounding = rounding(&passes, &members, &diagonal);
+        Self { qubits: terms.qubits(), passes, rounding }
     }
 
     /// Bound on the 2-norm of the rounding error of one application to a unit vector, in units of the roundoff.
     ///
-    /// Each term is rounded once when scaled, once for each sum of coefficients or weights it enters, once when multiplied,
-    /// and once for each addition of amplitudes that it passes through; the error is at most the sum of |coefficient| times
-    /// that number, since a string only permutes amplitudes and changes their phase by a power of i.
+    /// Each term is rounded once when scaled, once for each sum of coefficients that it enters, once when multiplied, and once
+    /// for each addition of amplitudes that it passes through; the error is at most the sum of |coefficient| times that
+    /// number, since a string only permutes amplitudes and changes their phase by a power of i.
     pub fn rounding(&self) -> f64 {
-        let items: Vec<&Item<T>> = self.sources.iter().flat_map(|source| &source.items).collect();
-        let parts = items.len().div_ceil(PART) + 1;
-        let weigh = |(place, item): (usize, &&Item<T>)| {
-            let additions = (PART - place % PART) + (parts - place / PART);
-            let one = |share: &Share<T>| {
-                let size: f64 = share.terms.iter().map(|(_, coefficient)| coefficient.abs()).sum();
-                size * (2 + share.terms.len() + item.shares.len() + additions) as f64
-            };
-            item.shares.iter().map(one).sum::<f64>()
+        self.rounding
+    }
+}
+
+fn rounding<T: Real>(passes: &[ActionPass<T>], members: &[Vec<Gathered>], diagonal: &[(u64, f64)]) -> f64 {
+    let count = |pass: usize| passes[pass].addends.len() + usize::from(passes[pass].diagonal.is_some());
+    let later = |pass: usize| passes.len() - pass;
+    let mixed = members.iter().enumerate().flat_map(|(pass, taken)| {
+        let places = taken.iter().enumerate();
+        places.map(move |(place, own)| own.size() * (2 + own.terms.len() + count(pass) - place + later(pass)) as f64)
+    });
+    let steps = passes[0].diagonal.as_ref().map_or(0, DiagonalSum::additions);
+    let size: f64 = diagonal.iter().map(|(_, coefficient)| coefficient.abs()).sum();
+    mixed.sum::<f64>() + size * (2 + diagonal.len() + steps + count(0) + later(0)) as f64
+}
+
+fn is_odd(masked: usize) -> bool {
+    masked.count_ones() & 1 == 1
+}
+
+impl<T: Real> Addend<T> {
+    fn new(space: &Space, gathered: &Gathered) -> Self {
+        let local = space.coordinates(gathered.x);
+        let lane_mask = (1usize << T::LANE_BITS) - 1;
+        let duals: Vec<usize> = gathered.masks.iter().map(|mask| space.dual(*mask)).collect();
+        let masks: Vec<usize> = duals.iter().map(|dual| dual >> T::LANE_BITS).collect();
+        let entry = |vector: usize| -> usize {
+            masks.iter().enumerate().map(|(j, mask)| usize::from(is_odd(vector & mask)) << j).sum()
         };
-        let diagonal = self.diagonal.as_ref().map_or(0.0, |d| d.size * (2 + d.strings + parts) as f64);
-        items.iter().enumerate().map(weigh).sum::<f64>() + diagonal
+        let register_entry: [usize; TILE] = std::array::from_fn(entry);
+        let tile_entry = std::array::from_fn(|q| entry(q << TILE_BITS) as u8);
+        let coefficients: Vec<f64> = (0..1 << masks.len()).map(|parities| gathered.coefficient(parities)).collect();
+        let m = local & lane_mask;
+        let by_lane = m != 0 || duals.iter().any(|dual| dual & lane_mask != 0);
+        let mut values = [T::default(); 1 << PARITIES];
+        values.iter_mut().zip(&coefficients).for_each(|(value, c)| *value = T::from_f64(*c));
+        let mut lines = vec![];
+        let mut idle = 0;
+        if by_lane {
+            lines = vec![T::Line::default(); coefficients.len()];
+            for (number, line) in lines.iter_mut().enumerate() {
+                for (lane, value) in line.as_mut().iter_mut().enumerate() {
+                    let odd = |(j, dual): (usize, &usize)| usize::from(is_odd(lane & dual)) << j;
+                    let own: usize = duals.iter().enumerate().map(odd).sum();
+                    *value = T::from_f64(coefficients[number ^ own]);
+                }
+            }
+        } else {
+            idle = coefficients.iter().enumerate().map(|(e, c)| u16::from(*c == 0.0) << e).sum();
+        }
+        // Tiles of a stretch are told apart by `tile_entry`, those of different stretches by the masks.
+        let within = (1usize << (TILE_BITS + STRETCH_BITS)) - 1;
+        Self {
+            x: local >> T::LANE_BITS,
+            m,
+            imaginary: gathered.imaginary,
+            coset_masks: gathered.masks.iter().map(|z| if space.leaves(*z) { *z as usize } else { 0 }).collect(),
+            register_entry,
+            uniform: register_entry == [register_entry[0]; TILE],
+            tile_entry,
+            values,
+            lines,
+            idle,
+            masks: masks.iter().map(|mask| mask & !within).collect(),
+        }
     }
 }

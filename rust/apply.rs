@@ -4,20 +4,15 @@ use num_complex::{Complex, Complex64};
 
 use crate::action::Action;
 use crate::error::{Error, Result};
-use crate::evolve::require_length;
-use crate::kernel::image;
-use crate::kernel::lanes::{GROUP_BITS, Real};
+use crate::evolve::{padded, require_length};
+use crate::kernel::act;
+use crate::kernel::lanes::Real;
+use crate::passes::least_qubits;
 use crate::team::{Control, Run};
 
-/// A state of at least one group: shorter ones are extended by zeros.
-fn extended<T: Real>(state: &[Complex<T>]) -> Vec<Complex<T>> {
-    let mut longer = state.to_vec();
-    longer.resize(state.len().max(1 << GROUP_BITS), Complex::new(T::default(), T::default()));
-    longer
-}
-
-fn is_short<T>(state: &[Complex<T>]) -> bool {
-    state.len() < 1 << GROUP_BITS
+/// Amplitudes of the shortest state that actions work on.
+fn least<T: Real>() -> usize {
+    1 << least_qubits::<T>()
 }
 
 /// out ← action |state>.
@@ -33,34 +28,25 @@ pub fn apply<T: Real>(
 ) -> Result<Run> {
     require_length(state.len(), action.qubits)?;
     require_length(out.len(), action.qubits)?;
-    if is_short(state) {
-        let (mut longer, mut longer_out) = (extended(state), extended(out));
-        let run = image::apply(action, &mut longer, &mut longer_out, threads, control)?;
-        out.copy_from_slice(&longer_out[..state.len()]);
-        return Ok(run);
-    }
-    image::apply(action, state, out, threads, control)
+    padded(state, least::<T>(), |state| {
+        padded(out, least::<T>(), |out| act::apply(action, state, out, threads, control))
+    })
 }
 
-/// `<state| action |state>`.
+/// `<state| action |state>` for each of several actions.
 ///
 /// # Errors
-/// A length that does not fit.
-pub fn expectation<T: Real>(
-    action: &Action<T>,
+/// A length that does not fit; a stop on request.
+pub fn expectations<T: Real>(
+    actions: &[Action<T>],
     state: &mut [Complex<T>],
     threads: usize,
     control: &Control,
-) -> Result<f64> {
-    require_length(state.len(), action.qubits)?;
-    let mut longer;
-    let state = if is_short(state) {
-        longer = extended(state);
-        &mut longer[..]
-    } else {
-        state
-    };
-    image::expectation(action, state, threads, control)
+) -> Result<Vec<f64>> {
+    for action in actions {
+        require_length(state.len(), action.qubits)?;
+    }
+    padded(state, least::<T>(), |state| act::expectations(actions, state, threads, control))
 }
 
 /// Sums Σ_k a_k (-i)^k T_k(H') |start> for several lists of coefficients at once, where `action` is 2 H'.
@@ -86,25 +72,125 @@ pub fn chebyshev_sums(
     if terms == 0 || coefficients.len() != sums.len() || coefficients.iter().any(|list| list.len() != terms) {
         return Err(Error::Internal { message: "lists of Chebyshev coefficients of unequal lengths".into() });
     }
-    if is_short(current) {
-        let (mut current, mut previous) = (extended(current), extended(previous));
-        let mut longer: Vec<Vec<Complex64>> = sums.iter().map(|sum| extended(sum)).collect();
-        let mut views: Vec<&mut [Complex64]> = longer.iter_mut().map(Vec::as_mut_slice).collect();
-        let run = image::chebyshev(action, &mut current, &mut previous, &mut views, coefficients, threads, control)?;
-        sums.iter_mut().zip(&longer).for_each(|(sum, longer)| sum.copy_from_slice(&longer[..sum.len()]));
-        return Ok(run);
-    }
-    image::chebyshev(action, current, previous, sums, coefficients, threads, control)
+    let least = least::<f64>();
+    padded(current, least, |current| {
+        padded(previous, least, |previous| {
+            let own = sums.first().map_or(least, |sum| sum.len());
+            if own >= least {
+                return act::chebyshev(action, current, previous, sums, coefficients, threads, control);
+            }
+            let mut longer = vec![vec![Complex64::default(); least]; sums.len()];
+            let mut views: Vec<&mut [Complex64]> = longer.iter_mut().map(Vec::as_mut_slice).collect();
+            let run = act::chebyshev(action, current, previous, &mut views, coefficients, threads, control)?;
+            sums.iter_mut().zip(&longer).for_each(|(sum, longer)| sum.copy_from_slice(&longer[..own]));
+            Ok(run)
+        })
+    })
 }
 
 #[cfg(test)]
 mod tests {
     use super::*;
+    use crate::pauli::PauliString;
+    use crate::terms::Terms;
+
+    /// A generator of reproducible numbers: the constants of Knuth's linear congruential MMIX generator.
+    fn numbers(seed: u64) -> impl FnMut() -> f64 {
+        let mut state = seed;
+        move || {
+            state = state.wrapping_mul(6364136223846793005).wrapping_add(1442695040888963407);
+            (state >> 11) as f64 / (1u64 << 53) as f64 - 0.5
+        }
+    }
+
+    fn operator(qubits: u32, count: usize) -> Terms {
+        let mut next = numbers(u64::from(qubits));
+        let all = (1u128 << qubits) - 1;
+        let strings: Vec<_> = (0..count)
+            .map(|i| {
+                let (x, z) = ((1e9 * (next() + 0.5)) as u128, (1e9 * (next() + 0.5)) as u128);
+                // Repeated x masks, diagonal strings, and both kinds of coefficients.
+                let x = if i % 4 == 0 { 0 } else { (x % 7 * 0b1011) & all };
+                (PauliString { x, z: z & all }, next())
+            })
+            .collect();
+        Terms::new(Some(qubits), strings).unwrap()
+    }
+
+    fn naive(terms: &Terms, state: &[Complex64]) -> Vec<Complex64> {
+        let mut out = vec![Complex64::default(); state.len()];
+        for (string, coefficient) in terms.iter() {
+            for (k, out) in out.iter_mut().enumerate() {
+                let from = k ^ string.x as usize;
+                let sign = if (from as u128 & string.z).count_ones() & 1 == 1 { -1.0 } else { 1.0 };
+                *out += coefficient * sign * Complex64::new(0.0, 1.0).powu(string.y_count()) * state[from];
+            }
+        }
+        out
+    }
+
+    fn state(qubits: u32) -> Vec<Complex64> {
+        let mut next = numbers(77);
+        (0..1 << qubits).map(|_| Complex64::new(next(), next()) / 2.0_f64.powi(qubits as i32).sqrt()).collect()
+    }
+
+    fn distance(left: &[Complex64], right: &[Complex64]) -> f64 {
+        left.iter().zip(right).map(|(a, b)| (a - b).norm_sqr()).sum::<f64>().sqrt()
+    }
 
     #[test]
-    fn a_short_state_is_extended_and_cut_back() {
-        let state = [Complex64::new(1.0, 0.0), Complex64::new(0.0, 2.0)];
-        assert_eq!(extended(&state).len(), 4);
-        assert!(is_short(&state));
+    fn images_and_expectations_are_those_of_the_definition() {
+        for qubits in [1, 2, 4, 6, 9, 14, 16] {
+            let terms = operator(qubits, 40);
+            let action = Action::<f64>::new(&terms, 1.0, 0.25);
+            let mut start = state(qubits);
+            let mut expected = naive(&terms, &start);
+            expected.iter_mut().zip(&start).for_each(|(out, own)| *out += 0.25 * own);
+            let limit = 1.2e-16 * (action.rounding() + 10.0 * 40.0);
+            for threads in [1, 3] {
+                let mut out = vec![Complex64::default(); start.len()];
+                let control = Control::default();
+                apply(&action, &mut start, &mut out, threads, &control).unwrap();
+                assert!(distance(&out, &expected) < limit, "{qubits}: {:e}", distance(&out, &expected));
+                let value: Complex64 = start.iter().zip(&expected).map(|(a, b)| a.conj() * b).sum();
+                let both = [Action::<f64>::new(&terms, 1.0, 0.25), Action::new(&terms, -2.0, 0.0)];
+                let found = expectations(&both, &mut start, threads, &control).unwrap();
+                assert!((found[0] - value.re).abs() < limit);
+                let norm: f64 = start.iter().map(|a| a.norm_sqr()).sum();
+                assert!((found[1] + 2.0 * (value.re - 0.25 * norm)).abs() < 3.0 * limit);
+            }
+        }
+    }
+
+    #[test]
+    fn the_recurrence_is_that_of_the_definition_for_odd_and_even_lengths() {
+        for (qubits, terms) in [(2, 5), (8, 4), (15, 2), (15, 7)] {
+            let operator = operator(qubits, 12);
+            let action = Action::<f64>::new(&operator, 0.4, 0.1);
+            let coefficients: Vec<Vec<f64>> =
+                (1..3).map(|s| (0..terms).map(|k| 1.0 / f64::from(s + k)).collect()).collect();
+            let start = state(qubits);
+            let half = |v: &[Complex64]| -> Vec<Complex64> {
+                naive(&operator, v).iter().zip(v).map(|(image, own)| 0.5 * (0.4 * image + 0.1 * own)).collect()
+            };
+            let mut chain = vec![start.clone(), half(&start)];
+            for k in 2..terms as usize {
+                let next = half(&chain[k - 1]).iter().zip(&chain[k - 2]).map(|(a, b)| 2.0 * a - b).collect();
+                chain.push(next);
+            }
+            let turn = Complex64::new(0.0, -1.0);
+            let (mut current, mut previous) = (start.clone(), start.clone());
+            let mut found = [start.clone(), start.clone()];
+            let mut views: Vec<&mut [Complex64]> = found.iter_mut().map(Vec::as_mut_slice).collect();
+            chebyshev_sums(&action, &mut current, &mut previous, &mut views, &coefficients, 2, &Control::default())
+                .unwrap();
+            for (found, list) in found.iter().zip(&coefficients) {
+                let expected: Vec<Complex64> = (0..start.len())
+                    .map(|k| list.iter().enumerate().map(|(n, a)| *a * turn.powu(n as u32) * chain[n][k]).sum())
+                    .collect();
+                // Seven terms, each image rounded as said, errors at most doubled a term.
+                assert!(distance(found, &expected) < 128.0 * 1.2e-16 * (action.rounding() + 400.0), "{qubits} {terms}");
+            }
+        }
     }
 }

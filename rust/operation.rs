@@ -175,7 +175,7 @@ impl Operation {
 
 /// The sign of -i θ P at index 0 once the factor -i (or 1, for an odd number of Y) is taken out: P sends amplitude `k ^ x` to
 /// k with `i^y (-1)^{parity of (k ^ x) & z}`.
-fn sign_at_zero(rotation: &Rotation) -> f64 {
+pub fn sign_at_zero(rotation: &Rotation) -> f64 {
     let string = rotation.string;
     let turns = string.y_count() / 2 + (string.x & string.z).count_ones();
     if turns & 1 == 1 { -1.0 } else { 1.0 }
@@ -238,7 +238,7 @@ pub enum Action {
 }
 
 /// A largest independent subset over GF(2), in order of appearance.
-fn independent(masks: impl Iterator<Item = u64>) -> Vec<u64> {
+pub fn independent(masks: impl Iterator<Item = u64>) -> Vec<u64> {
     let (mut kept, mut reduced): (Vec<u64>, Vec<u64>) = (vec![], vec![]);
     for mask in masks {
         let rest = reduced.iter().fold(mask, |rest, own| rest.min(rest ^ own));
@@ -252,7 +252,7 @@ fn independent(masks: impl Iterator<Item = u64>) -> Vec<u64> {
 }
 
 /// Which of the independent `masks` add up to `mask`, as bits.
-fn coordinates(masks: &[u64], mask: u64) -> usize {
+pub fn coordinates(masks: &[u64], mask: u64) -> usize {
     let sum =
         |choice: usize| masks.iter().enumerate().fold(0, |s, (j, m)| if choice >> j & 1 == 1 { s ^ m } else { s });
     (0..1usize << masks.len()).find(|&choice| sum(choice) == mask).unwrap_or(0)

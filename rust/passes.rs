@@ -120,15 +120,19 @@ impl<T: Real> Pass<T> {
     fn new(span: Span, limit: u32, run_bits: u32, members: &[&Operation]) -> Self {
         let dimension = span.dimension().max(LEAST_COSET_BITS.min(limit));
         let space = Space::new(span.filled(dimension));
-        let offsets = if space.is_contiguous() {
-            vec![]
-        } else {
-            (0..1usize << (space.dimension() - run_bits)).map(|run| space.vector(run << run_bits) as usize).collect()
-        };
+        let offsets = run_offsets(&space, run_bits);
         let work = tiles::prepare(&space, members);
         let rotations = members.iter().map(|operation| operation.count()).sum();
         Self { space, offsets, run_bits, work, rotations }
     }
+}
+
+/// Where the contiguous runs of a coset start, relative to its representative; nothing where cosets are contiguous.
+pub fn run_offsets(space: &Space, run_bits: u32) -> Vec<usize> {
+    if space.is_contiguous() {
+        return vec![];
+    }
+    (0..1usize << (space.dimension() - run_bits)).map(|run| space.vector(run << run_bits) as usize).collect()
 }
 
 #[cfg(test)]

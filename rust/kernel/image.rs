@@ -1,197 +1,391 @@
-//! Images of a state under an [`Action`], block by block, and what is made of them.
+//! Images of a state under an [`Action`], and what is made of them: a vector, an expectation, a Chebyshev recurrence.
+//!
+//! One coset of the state at a time lies in cache as vectors of real and imaginary parts. For each tile of eight vectors of
+//! the result the addends are summed in registers; what becomes of the sum is the [`Ending`].
 
-use num_complex::{Complex, Complex64};
+use super::lanes::Real;
+use super::tile::{Ahead, Place, fetch, product, registers};
+use super::vector::Vector;
+use super::{Isa, VectorWork};
+use crate::action::{ActionPass, Addend, STRETCH_BITS};
+use crate::passes::diagonal::{CosetSums, LOW_BITS};
+use crate::passes::tiles::{TILE, TILE_BITS};
 
-use super::Isa;
-use super::blocks::{Accumulate, Gain, Weigh};
-use super::lanes::{Factor, GROUP_BITS, LANES, LaneString, Real};
-use super::reduce::Dot;
-use super::shared::Shared;
-use crate::action::{Action, BLOCK_BITS, PART};
-use crate::error::Result;
-use crate::sums::{collect_blocks, pairwise};
-use crate::team::{Control, Member, Run, run, workers_for};
-
-/// Groups in a block of a state of `groups` groups.
-fn block_groups(groups: usize) -> usize {
-    groups.min(1 << (BLOCK_BITS - GROUP_BITS))
+/// A real number, or i times one.
+#[derive(Clone, Copy, Debug)]
+pub struct Turned<T> {
+    /// The number.
+    pub value: T,
+    /// Whether it is multiplied by i.
+    pub imaginary: bool,
 }
 
-/// Writes block `block` of the image of `state` into `out`; `part` is room of the same size.
+/// sum += own · result + source · state.
+#[derive(Clone, Copy)]
+pub struct Gain<'a, T> {
+    /// Where the sum lies.
+    pub sum: Place<'a, T>,
+    /// Factor of the result.
+    pub own: Turned<T>,
+    /// Factor of the state, if it enters.
+    pub source: Option<Turned<T>>,
+}
+
+/// What the sum of a tile starts with.
+#[derive(Clone, Copy, PartialEq)]
+pub enum Start {
+    /// Nothing.
+    Zero,
+    /// What lies in the result's place.
+    Old,
+    /// Minus that.
+    MinusOld,
+}
+
+/// What becomes of the result.
+#[derive(Clone, Copy)]
+pub enum Ending<'a, T> {
+    /// It is stored, halved if asked, and then enters sums.
+    Store {
+        /// Where it lies.
+        out: Place<'a, T>,
+        /// What it starts with.
+        start: Start,
+        /// Whether it is halved at the end.
+        halved: bool,
+        /// Sums that it enters.
+        gains: &'a [Gain<'a, T>],
+    },
+    /// Its inner product with the state is added to the room's.
+    Dot,
+}
+
+/// A worker's room.
+pub struct Room<T: Real> {
+    sums: CosetSums<T>,
+    entries: Vec<usize>,
+    /// Real part of the inner product, by lane.
+    pub dot: [f64; 16],
+}
+
+impl<T: Real> Default for Room<T> {
+    fn default() -> Self {
+        Self { sums: CosetSums::default(), entries: vec![], dot: [0.0; 16] }
+    }
+}
+
+/// Sums of one coset, from `source` (vectors of real and imaginary parts in turn).
 ///
 /// # Safety
-/// Nobody writes to `state` meanwhile.
-unsafe fn image<T: Real>(
-    action: &Action<T>,
+/// `source` and all places hold one coset of the pass's space each; nobody writes to the source, and nobody else uses the
+/// other places.
+pub unsafe fn coset_image<T: Real>(
     isa: Isa,
-    state: &Shared<T>,
-    block: usize,
-    out: &mut [[T; LANES]],
-    part: &mut [[T; LANES]],
+    pass: &ActionPass<T>,
+    source: *const T,
+    rep: usize,
+    ending: Ending<T>,
+    ahead: &[Ahead<T>],
+    room: &mut Room<T>,
 ) {
-    let groups = out.len();
-    let zero = [T::default(); LANES];
-    let mut waiting = 0;
-    match &action.diagonal {
-        None => out.fill(zero),
-        Some(diagonal) => {
-            // SAFETY: blocks below the number of blocks are in bounds, and nobody writes, by this function's contract.
-            let own = unsafe { state.groups_ref(block * groups, groups) };
-            isa.run(Weigh { out, source: own, weights: &diagonal.table });
-        }
+    if let Some(diagonal) = &pass.diagonal {
+        diagonal.prepare(rep, &mut room.sums);
     }
-    part.fill(zero);
-    for source in &action.sources {
-        let from = block ^ source.x;
-        // SAFETY: as above.
-        let amplitudes = unsafe { state.groups_ref(from * groups, groups) };
-        for item in &source.items {
-            isa.run(Accumulate { out: part, source: amplitudes, string: &item.joined(from) });
-            waiting += 1;
-            if waiting == PART {
-                isa.run(Gain { out, part });
-                part.fill(zero);
-                waiting = 0;
+    // SAFETY: the contract is handed on.
+    unsafe { isa.run_vectors(Image { pass, source, rep, ending, ahead, room }) }
+}
+
+struct Image<'a, T: Real> {
+    pass: &'a ActionPass<T>,
+    source: *const T,
+    rep: usize,
+    ending: Ending<'a, T>,
+    ahead: &'a [Ahead<'a, T>],
+    room: &'a mut Room<T>,
+}
+
+impl<T: Real> VectorWork<T> for Image<'_, T> {
+    type Output = ();
+
+    /// # Safety
+    /// As [`coset_image`], and the instruction set is there.
+    #[inline(always)]
+    unsafe fn run<V: Vector<Element = T>>(self) {
+        let Image { pass, source, rep, ending, ahead, room } = self;
+        let tiles = 1usize << (pass.space.dimension() - T::LANE_BITS - TILE_BITS);
+        room.entries.resize(pass.addends.len(), 0);
+        for tile in 0..tiles {
+            let base = tile << TILE_BITS;
+            let in_stretch = tile & ((1 << STRETCH_BITS) - 1);
+            if in_stretch == 0 {
+                for (entry, addend) in room.entries.iter_mut().zip(&pass.addends) {
+                    *entry = addend.entry(base, rep);
+                }
+            }
+            // SAFETY: by this function's contract; bases are vectors of the coset.
+            unsafe {
+                for ahead in ahead {
+                    fetch::<V>(ahead, tile);
+                }
+                let (mut re, mut im) = start_of::<V>(&ending, base);
+                if pass.diagonal.is_some() {
+                    add_diagonal::<V>(&mut re, &mut im, pass, &room.sums, source, base);
+                }
+                for (addend, entry) in pass.addends.iter().zip(&room.entries) {
+                    let entry = entry ^ usize::from(addend.tile_entry[in_stretch]);
+                    let from = source.add(((base ^ addend.x) & !(TILE - 1)) << (T::LANE_BITS + 1));
+                    add::<V>(&mut re, &mut im, addend, entry, from);
+                }
+                finish::<V>(&re, &im, &ending, source, base, &mut room.dot);
             }
         }
     }
-    if waiting > 0 {
-        isa.run(Gain { out, part });
+}
+
+impl<T: Real> Addend<T> {
+    /// Number of the entry at the first tile of a stretch.
+    #[inline(always)]
+    fn entry(&self, base: usize, rep: usize) -> usize {
+        let mut entry = 0;
+        for (j, (mask, coset)) in self.masks.iter().zip(&self.coset_masks).enumerate() {
+            entry |= (((base & mask).count_ones() ^ (rep & coset).count_ones()) as usize & 1) << j;
+        }
+        entry
     }
 }
 
-/// Calls `take(block, image)` for this worker's share of blocks.
-fn each_block<T: Real>(
-    action: &Action<T>,
-    isa: Isa,
-    member: &Member,
-    state: &Shared<T>,
-    mut take: impl FnMut(usize, &mut [[T; LANES]]),
-) -> Result<()> {
-    let groups = block_groups(state.groups());
-    let mut out = vec![[T::default(); LANES]; groups];
-    let mut part = out.clone();
-    member.each_piece(state.groups() / groups, 8, |blocks| {
-        for block in blocks {
-            // SAFETY: the callers of this function write to other arrays than `state` while it runs.
-            unsafe { image(action, isa, state, block, &mut out, &mut part) };
-            take(block, &mut out);
-        }
-    })
-}
-
-/// out ← action |state>, both of at least one group and of the right length.
+/// What the registers start with.
 ///
-/// # Errors
-/// A stop on request, after which `out` is unfinished.
-pub fn apply<T: Real>(
-    action: &Action<T>,
-    state: &mut [Complex<T>],
-    out: &mut [Complex<T>],
-    threads: usize,
-    control: &Control,
-) -> Result<Run> {
-    assert!(state.len() == 1 << action.qubits.max(GROUP_BITS) && out.len() == state.len());
-    let isa = Isa::chosen()?;
-    let workers = workers_for(threads, state.len());
-    let (state, out) = (Shared::new(state), Shared::new(out));
-    run(workers, control, |member| {
-        each_block(action, isa, member, &state, |block, image| {
-            // SAFETY: each block belongs to one worker, and `out` is not `state`.
-            unsafe { out.groups_mut(block * image.len(), image.len()) }.copy_from_slice(image);
-        })?;
-        member.pass_done()
-    })
-}
-
-/// `<state| action |state>` of a state of at least one group and of the right length.
-///
-/// # Errors
-/// A stop on request.
-pub fn expectation<T: Real>(
-    action: &Action<T>,
-    state: &mut [Complex<T>],
-    threads: usize,
-    control: &Control,
-) -> Result<f64> {
-    assert!(state.len() == 1 << action.qubits.max(GROUP_BITS));
-    let isa = Isa::chosen()?;
-    let amplitudes = state.len();
-    let shared = Shared::new(state);
-    let groups = block_groups(shared.groups());
-    let partial = collect_blocks(shared.groups() / groups, amplitudes, threads, control, |block| {
-        let mut out = vec![[T::default(); LANES]; groups];
-        let mut part = out.clone();
-        // SAFETY: the state is only read here, by every worker.
-        let own = unsafe {
-            image(action, isa, &shared, block, &mut out, &mut part);
-            shared.groups_ref(block * groups, groups)
-        };
-        isa.run(Dot { left: own, right: &out }).0
-    })?;
-    Ok(pairwise(&partial))
-}
-
-/// The recurrence behind [`crate::apply::chebyshev_sums`], on states of at least one group and of the right length.
-///
-/// # Errors
-/// A stop on request.
-pub fn chebyshev(
-    action: &Action<f64>,
-    current: &mut [Complex64],
-    previous: &mut [Complex64],
-    sums: &mut [&mut [Complex64]],
-    coefficients: &[Vec<f64>],
-    threads: usize,
-    control: &Control,
-) -> Result<Run> {
-    let lengths = [previous.len()].into_iter().chain(sums.iter().map(|sum| sum.len()));
-    assert!(current.len() == 1 << action.qubits.max(GROUP_BITS) && lengths.into_iter().all(|l| l == current.len()));
-    let isa = Isa::chosen()?;
-    let terms = coefficients[0].len();
-    let workers = workers_for(threads, current.len());
-    control.expect(control.progress().0 + terms as u64);
-    let buffers = [Shared::new(current), Shared::new(previous)];
-    let sums: Vec<Shared<f64>> = sums.iter_mut().map(|sum| Shared::new(sum)).collect();
-    run(workers, control, |member| {
-        // Term 0: the sums start as a_0 |start>.
-        member.each_piece(buffers[0].groups(), 1 << 12, |range| {
-            // SAFETY: each range of groups belongs to one worker; the start is only read.
-            let start = unsafe { buffers[0].groups_ref(range.start, range.len()) };
-            for (sum, list) in sums.iter().zip(coefficients) {
-                // SAFETY: as above, and the sums are distinct arrays.
-                let sum = unsafe { sum.groups_mut(range.start, range.len()) };
-                for (sum, start) in sum.iter_mut().zip(start) {
-                    *sum = start.map(|value| list[0] * value);
+/// # Safety
+/// As [`coset_image`].
+#[inline(always)]
+unsafe fn start_of<V: Vector>(ending: &Ending<V::Element>, base: usize) -> ([V; TILE], [V; TILE]) {
+    // SAFETY: by contract.
+    unsafe {
+        let zero = V::splat(V::Element::default());
+        let (mut re, mut im) = ([zero; TILE], [zero; TILE]);
+        if let Ending::Store { out, start, .. } = ending
+            && *start != Start::Zero
+        {
+            registers!(t => {
+                let address = out.address(base + t);
+                (re[t], im[t]) = pair::<V>(address);
+                if *start == Start::MinusOld {
+                    (re[t], im[t]) = (zero.sub(re[t]), zero.sub(im[t]));
                 }
+            });
+        }
+        (re, im)
+    }
+}
+
+/// A vector of real parts and the vector of imaginary parts behind it.
+///
+/// # Safety
+/// The address holds both.
+#[inline(always)]
+unsafe fn pair<V: Vector>(address: *const V::Element) -> (V, V) {
+    // SAFETY: by contract.
+    unsafe { (V::load(address), V::load(address.add(1 << V::Element::LANE_BITS))) }
+}
+
+/// Adds diagonal · state.
+///
+/// # Safety
+/// As [`coset_image`].
+#[inline(always)]
+unsafe fn add_diagonal<V: Vector>(
+    re: &mut [V; TILE],
+    im: &mut [V; TILE],
+    pass: &ActionPass<V::Element>,
+    sums: &CosetSums<V::Element>,
+    source: *const V::Element,
+    base: usize,
+) {
+    let Some(diagonal) = &pass.diagonal else { return };
+    let low_vectors = LOW_BITS - V::Element::LANE_BITS;
+    // SAFETY: by contract: the high part of a vector number is below the number of high values, its low part below that of
+    // table lines; a tile does not cross high values, since it is at most as large as a low table.
+    unsafe {
+        let high = base >> low_vectors;
+        let first = base & ((1 << low_vectors) - 1);
+        let sum = sums.high.get_unchecked(high);
+        let (value, table) = (V::splat(sum.value), diagonal.low.as_ptr().add(sum.low + first));
+        registers!(t => {
+            let mut factor = V::load(table.add(t).cast()).add(value);
+            for (number, group) in diagonal.groups.iter().enumerate() {
+                let part = V::splat(*sums.groups.get_unchecked(number * sums.high.len() + high));
+                factor = factor.add(part.mul(V::load(group.sign(first + t))));
             }
-        })?;
-        member.pass_done()?;
-        for term in 1..terms {
-            let (read, write) = (&buffers[(term + 1) & 1], &buffers[term & 1]);
-            let turned: Vec<LaneString<f64>> = coefficients
-                .iter()
-                .map(|list| LaneString::new(0, 0, Factor::Real(list[term]).times_i_power((3 * term as u32) & 3)))
-                .collect();
-            each_block(action, isa, member, read, |block, image| {
-                let place = block * image.len();
-                // SAFETY: `write` is not `read`, and each block belongs to one worker.
-                let next = unsafe { write.groups_mut(place, image.len()) };
-                for (next, image) in next.iter_mut().zip(image.iter()) {
-                    *next = if term == 1 {
-                        image.map(|value| 0.5 * value)
-                    } else {
-                        std::array::from_fn(|l| image[l] - next[l])
-                    };
+            let (a, b) = pair::<V>(source.add((base + t) << (V::Element::LANE_BITS + 1)));
+            (re[t], im[t]) = (re[t].add(factor.mul(a)), im[t].add(factor.mul(b)));
+        });
+    }
+}
+
+/// Adds one addend; `from` is the tile that it reads.
+///
+/// # Safety
+/// The instruction set is there, the entry is one of the addend's, and `from` holds a tile.
+#[inline(always)]
+unsafe fn add<V: Vector>(
+    re: &mut [V; TILE],
+    im: &mut [V; TILE],
+    addend: &Addend<V::Element>,
+    entry: usize,
+    from: *const V::Element,
+) {
+    let x = addend.x & (TILE - 1);
+    let stride = V::Element::LANE_BITS + 1;
+    // SAFETY: by contract.
+    unsafe {
+        if !addend.lines.is_empty() {
+            let m = addend.m;
+            registers!(t => {
+                let coefficient = V::load(addend.lines.as_ptr().add(entry ^ addend.register_entry[t]).cast());
+                let (a, b) = pair::<V>(from.add((t ^ x) << stride));
+                accumulate(&mut re[t], &mut im[t], coefficient, a.exchange(m), b.exchange(m), addend.imaginary);
+            });
+        } else if addend.uniform {
+            let entry = entry ^ addend.register_entry[0];
+            if addend.idle >> entry & 1 == 1 {
+                return;
+            }
+            let coefficient = V::splat(addend.values[entry & 15]);
+            if addend.imaginary {
+                registers!(t => {
+                    let (a, b) = pair::<V>(from.add((t ^ x) << stride));
+                    (re[t], im[t]) = (re[t].sub(coefficient.mul(b)), im[t].add(coefficient.mul(a)));
+                });
+            } else {
+                registers!(t => {
+                    let (a, b) = pair::<V>(from.add((t ^ x) << stride));
+                    (re[t], im[t]) = (re[t].add(coefficient.mul(a)), im[t].add(coefficient.mul(b)));
+                });
+            }
+        } else {
+            registers!(t => {
+                let entry = entry ^ addend.register_entry[t];
+                if addend.idle >> entry & 1 == 0 {
+                    let coefficient = V::splat(addend.values[entry & 15]);
+                    let (a, b) = pair::<V>(from.add((t ^ x) << stride));
+                    accumulate(&mut re[t], &mut im[t], coefficient, a, b, addend.imaginary);
                 }
-                for (sum, string) in sums.iter().zip(&turned) {
-                    // SAFETY: as above; the sums are distinct arrays.
-                    let out = unsafe { sum.groups_mut(place, image.len()) };
-                    isa.run(Accumulate { out, source: next, string });
-                }
-            })?;
-            member.pass_done()?;
+            });
         }
-        Ok(())
-    })
+    }
+}
+
+/// += c (a + i b), or i c (a + i b).
+///
+/// # Safety
+/// The instruction set is there.
+#[inline(always)]
+unsafe fn accumulate<V: Vector>(re: &mut V, im: &mut V, c: V, a: V, b: V, imaginary: bool) {
+    // SAFETY: by contract.
+    unsafe {
+        if imaginary {
+            (*re, *im) = (re.sub(c.mul(b)), im.add(c.mul(a)));
+        } else {
+            (*re, *im) = (re.add(c.mul(a)), im.add(c.mul(b)));
+        }
+    }
+}
+
+/// Does with the result what the ending says.
+///
+/// # Safety
+/// As [`coset_image`].
+#[inline(always)]
+unsafe fn finish<V: Vector>(
+    re: &[V; TILE],
+    im: &[V; TILE],
+    ending: &Ending<V::Element>,
+    source: *const V::Element,
+    base: usize,
+    dot: &mut [f64; 16],
+) {
+    let lanes = 1usize << V::Element::LANE_BITS;
+    // SAFETY: by contract.
+    unsafe {
+        match ending {
+            Ending::Store { out, halved, gains, .. } => {
+                let half = V::splat(V::Element::from_f64(0.5));
+                registers!(t => {
+                    let (mut a, mut b) = (re[t], im[t]);
+                    if *halved {
+                        (a, b) = (half.mul(a), half.mul(b));
+                    }
+                    let address = out.address(base + t);
+                    let (first, second) = if out.interleaved { V::interleave(a, b) } else { (a, b) };
+                    first.store(address);
+                    second.store(address.add(lanes));
+                    for gain in gains.iter() {
+                        let address = gain.sum.address(base + t);
+                        let (mut c, mut d) = pair::<V>(address);
+                        accumulate(&mut c, &mut d, V::splat(gain.own.value), a, b, gain.own.imaginary);
+                        if let Some(factor) = gain.source {
+                            let (e, f) = pair::<V>(source.add((base + t) << (V::Element::LANE_BITS + 1)));
+                            accumulate(&mut c, &mut d, V::splat(factor.value), e, f, factor.imaginary);
+                        }
+                        c.store(address);
+                        d.store(address.add(lanes));
+                    }
+                });
+            }
+            Ending::Dot => {
+                let zero = V::splat(V::Element::default());
+                let mut sum = zero;
+                registers!(t => {
+                    let (a, b) = pair::<V>(source.add((base + t) << (V::Element::LANE_BITS + 1)));
+                    sum = sum.add(a.mul(re[t])).add(b.mul(im[t]));
+                });
+                let mut values = [V::Element::default(); 16];
+                sum.store(values.as_mut_ptr());
+                dot.iter_mut().zip(values).for_each(|(total, value)| *total += value.to_f64());
+            }
+        }
+    }
+}
+
+/// Copies vectors between places, splitting or interleaving amplitudes and multiplying by a number on the way.
+pub struct Copy<'a, T> {
+    /// Where they come from.
+    pub from: Place<'a, T>,
+    /// Where they go; may be where they come from.
+    pub to: Place<'a, T>,
+    /// How many vectors of real (and of imaginary) parts.
+    pub vectors: usize,
+    /// (c, s): the factor c + i s.
+    pub factor: Option<(T, T)>,
+}
+
+impl<T: Real> VectorWork<T> for Copy<'_, T> {
+    type Output = ();
+
+    /// # Safety
+    /// Besides the instruction set: both places hold that many vectors; nobody else uses the second meanwhile or writes to
+    /// the first.
+    #[inline(always)]
+    unsafe fn run<V: Vector<Element = T>>(self) {
+        let lanes = 1usize << T::LANE_BITS;
+        for vector in 0..self.vectors {
+            // SAFETY: by contract.
+            unsafe {
+                let (mut a, mut b) = pair::<V>(self.from.address(vector));
+                if self.from.interleaved {
+                    (a, b) = V::split(a, b);
+                }
+                if let Some((c, s)) = self.factor {
+                    (a, b) = product(V::splat(c), V::splat(s), a, b);
+                }
+                if self.to.interleaved {
+                    (a, b) = V::interleave(a, b);
+                }
+                let address = self.to.address(vector);
+                a.store(address);
+                b.store(address.add(lanes));
+            }
+        }
+    }
 }

@@ -14,7 +14,7 @@
 //! All unsafe code of the crate is in this folder: the calls into feature-enabled functions here, and the disjoint
 //! access of several workers to one array in [`shared`].
 
-pub mod blocks;
+pub mod act;
 pub mod carry;
 pub mod image;
 pub mod lanes;

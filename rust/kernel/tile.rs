@@ -29,7 +29,7 @@ impl<T: Real> Place<'_, T> {
     /// # Safety
     /// `v` is below the number of vectors of the coset that this place was made for.
     #[inline(always)]
-    unsafe fn address(&self, v: usize) -> *mut T {
+    pub unsafe fn address(&self, v: usize) -> *mut T {
         match self.scattered {
             // SAFETY: in bounds by contract.
             None => unsafe { self.start.add(v << (T::LANE_BITS + 1)) },
@@ -87,6 +87,8 @@ macro_rules! registers {
         $({ let $t: usize = $register; $body })*
     };
 }
+
+pub(super) use registers;
 
 /// Calls a body with a constant register mask where the vector type wants it.
 macro_rules! by_mask {
@@ -185,7 +187,7 @@ impl<T: Real> TileOperation<T> {
 /// # Safety
 /// `tile` is below the number of tiles of the coset.
 #[inline(always)]
-unsafe fn fetch<V: Vector>(ahead: &Ahead<V::Element>, tile: usize) {
+pub unsafe fn fetch<V: Vector>(ahead: &Ahead<V::Element>, tile: usize) {
     let lanes = 1usize << V::Element::LANE_BITS;
     let mut number = ahead.first;
     while number < TILE {
@@ -291,7 +293,7 @@ unsafe fn apply<V: Vector>(
 /// # Safety
 /// The instruction set is there.
 #[inline(always)]
-unsafe fn product<V: Vector>(c: V, s: V, a: V, b: V) -> (V, V) {
+pub unsafe fn product<V: Vector>(c: V, s: V, a: V, b: V) -> (V, V) {
     // SAFETY: by contract.
     unsafe { (c.mul(a).sub(s.mul(b)), c.mul(b).add(s.mul(a))) }
 }

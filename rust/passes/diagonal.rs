@@ -34,29 +34,23 @@ impl Flip {
     }
 }
 
-/// exp(-i θ) with the flip of its sign.
+/// A number whose sign flips: an angle, or a coefficient.
 #[derive(Clone, Copy, Debug)]
-struct Term {
+struct Signed<N> {
     flip: Flip,
-    phase: Complex64,
+    value: N,
 }
 
-impl Term {
-    fn at(&self, high: usize, rep: usize) -> Complex64 {
-        if self.flip.is_odd(high, rep) { self.phase.conj() } else { self.phase }
-    }
-}
-
-/// Phases with one low mask.
+/// Numbers with one low mask.
 #[derive(Clone, Debug)]
-pub struct Group<T: Real> {
+pub struct Group<T: Real, N> {
     mask: usize,
-    terms: Vec<Term>,
+    terms: Vec<Signed<N>>,
     /// Signs by lane, for vectors of even and of odd parity.
     signs: [T::Line; 2],
 }
 
-impl<T: Real> Group<T> {
+impl<T: Real, N> Group<T, N> {
     fn new(mask: usize) -> Self {
         let mut signs = [T::Line::default(); 2];
         for (parity, line) in signs.iter_mut().enumerate() {
@@ -74,17 +68,107 @@ impl<T: Real> Group<T> {
     }
 }
 
+/// Diagonal strings with a number each, sorted by what they see of a coset.
+struct Sorted {
+    low_bits: u32,
+    high_size: usize,
+    low: Vec<(usize, Signed<f64>)>,
+    flips: Vec<Flip>,
+    grouped: Vec<(usize, Signed<f64>)>,
+    high_fixed: Vec<Signed<f64>>,
+    high_moving: Vec<Signed<f64>>,
+    scalars: Vec<Signed<f64>>,
+}
+
+impl Sorted {
+    fn new(terms: &[(u64, f64)], space: &Space) -> Self {
+        let low_bits = LOW_BITS.min(space.dimension());
+        let (mut low, mut high, mut scalars, mut flips): (Vec<(usize, Signed<f64>)>, Vec<_>, Vec<_>, Vec<Flip>) =
+            Default::default();
+        for &(z, value) in terms {
+            let local = space.dual(z);
+            let flip = Flip { high: local >> low_bits, coset: if space.leaves(z) { z as usize } else { 0 } };
+            let signed = Signed { flip, value };
+            match (local & ((1 << low_bits) - 1), flip.high) {
+                (0, 0) => scalars.push(signed),
+                (0, _) => high.push(signed),
+                (mask, _) => {
+                    if !flip.is_fixed() && !flips.contains(&flip) {
+                        flips.push(flip);
+                    }
+                    low.push((mask, signed));
+                }
+            }
+        }
+        let mut grouped = vec![];
+        if flips.len() > FLIPS {
+            flips.clear();
+            (low, grouped) = low.into_iter().partition(|(_, signed)| signed.flip.is_fixed());
+        }
+        let (high_fixed, high_moving) = high.into_iter().partition(|signed: &Signed<f64>| signed.flip.coset == 0);
+        let high_size = 1usize << (space.dimension() - low_bits);
+        Self { low_bits, high_size, low, flips, grouped, high_fixed, high_moving, scalars }
+    }
+
+    /// Calls `take(pattern of flips, low coordinates, sum of the signed numbers)` for all entries of the low tables.
+    fn each_low_sum(&self, mut take: impl FnMut(usize, usize, f64)) {
+        let place = |flip: &Flip| self.flips.iter().position(|own| own == flip).map_or(0, |j| 1 << j);
+        let bits: Vec<usize> = self.low.iter().map(|(_, signed)| place(&signed.flip)).collect();
+        for pattern in 0..1usize << self.flips.len() {
+            for index in 0..1usize << self.low_bits {
+                let one = |((mask, signed), bit): (&(usize, Signed<f64>), &usize)| {
+                    if is_odd(mask & index) ^ (bit & pattern != 0) { -signed.value } else { signed.value }
+                };
+                take(pattern, index, self.low.iter().zip(&bits).map(one).sum());
+            }
+        }
+    }
+
+    fn groups<T: Real, N>(&self, number: impl Fn(f64) -> N) -> Vec<Group<T, N>> {
+        let mut groups: Vec<Group<T, N>> = vec![];
+        for (mask, Signed { flip, value }) in &self.grouped {
+            let place = groups.iter().position(|group| group.mask == *mask).unwrap_or_else(|| {
+                groups.push(Group::new(*mask));
+                groups.len() - 1
+            });
+            groups[place].terms.push(Signed { flip: *flip, value: number(*value) });
+        }
+        groups
+    }
+}
+
+/// Which low table the flips select.
+fn pattern(flips: &[Flip], high: usize, rep: usize) -> usize {
+    flips.iter().enumerate().map(|(j, flip)| usize::from(flip.is_odd(high, rep)) << j).sum()
+}
+
+impl Signed<Complex64> {
+    fn at(&self, high: usize, rep: usize) -> Complex64 {
+        if self.flip.is_odd(high, rep) { self.value.conj() } else { self.value }
+    }
+}
+
+impl Signed<f64> {
+    fn at(&self, high: usize, rep: usize) -> f64 {
+        if self.flip.is_odd(high, rep) { -self.value } else { self.value }
+    }
+
+    fn phase(&self) -> Signed<Complex64> {
+        Signed { flip: self.flip, value: unit(self.value) }
+    }
+}
+
 /// A diagonal operation in the coordinates of a space.
 #[derive(Clone, Debug)]
 pub struct Diagonal<T: Real> {
     /// For each pattern of flips and each vector of low coordinates: cosine lanes, then sine lanes.
     pub low: Vec<T::Line>,
     flips: Vec<Flip>,
-    high_static: Vec<Complex64>,
-    high: Vec<Term>,
-    scalars: Vec<Term>,
+    high_fixed: Vec<Complex64>,
+    high: Vec<Signed<Complex64>>,
+    scalars: Vec<Signed<Complex64>>,
     /// Phases that depend on low and high coordinates in more ways than the tables hold.
-    pub groups: Vec<Group<T>>,
+    pub groups: Vec<Group<T, Complex64>>,
     factor: Complex64,
 }
 
@@ -120,49 +204,25 @@ fn is_odd(masked: usize) -> bool {
 impl<T: Real> Diagonal<T> {
     /// From pairs (z, θ) and a factor of everything.
     pub fn new(terms: &[(u64, f64)], space: &Space, factor: Complex64) -> Self {
-        let low_bits = LOW_BITS.min(space.dimension());
-        let low_mask = (1usize << low_bits) - 1;
-        let high_size = 1usize << (space.dimension() - low_bits);
-        let (mut low, mut high, mut scalars) = (vec![], vec![], vec![]);
-        let mut flips: Vec<Flip> = vec![];
-        for &(z, angle) in terms {
-            let local = space.dual(z);
-            let coset = if space.leaves(z) { z as usize } else { 0 };
-            let flip = Flip { high: local >> low_bits, coset };
-            match (local & low_mask, flip.high) {
-                (0, 0) => scalars.push(Term { flip, phase: unit(angle) }),
-                (0, _) => high.push(Term { flip, phase: unit(angle) }),
-                (mask, _) => {
-                    if !flip.is_fixed() && !flips.contains(&flip) {
-                        flips.push(flip);
-                    }
-                    low.push((mask, flip, angle));
-                }
-            }
-        }
-        let mut groups: Vec<Group<T>> = vec![];
-        if flips.len() > FLIPS {
-            flips.clear();
-            let (moving, fixed): (Vec<_>, Vec<_>) = low.into_iter().partition(|(_, flip, _)| !flip.is_fixed());
-            low = fixed;
-            for (mask, flip, angle) in moving {
-                let term = Term { flip, phase: unit(angle) };
-                let place = groups.iter().position(|group| group.mask == mask).unwrap_or_else(|| {
-                    groups.push(Group::new(mask));
-                    groups.len() - 1
-                });
-                groups[place].terms.push(term);
-            }
-        }
-        let (fixed, moving): (Vec<_>, Vec<_>) = high.into_iter().partition(|term: &Term| term.flip.coset == 0);
+        let sorted = Sorted::new(terms, space);
+        let vectors = 1usize << (sorted.low_bits - T::LANE_BITS);
+        let mut low = vec![T::Line::default(); (2 * vectors) << sorted.flips.len()];
+        sorted.each_low_sum(|pattern, index, angle| {
+            let line = 2 * (pattern * vectors + (index >> T::LANE_BITS));
+            let (lane, phase) = (index & ((1 << T::LANE_BITS) - 1), unit(angle));
+            low[line].as_mut()[lane] = T::from_f64(phase.re);
+            low[line + 1].as_mut()[lane] = T::from_f64(phase.im);
+        });
+        let phases = |list: &[Signed<f64>]| list.iter().map(Signed::phase).collect::<Vec<_>>();
+        let fixed = phases(&sorted.high_fixed);
         let product = |high: usize| fixed.iter().fold(Complex64::new(1.0, 0.0), |p, term| p * term.at(high, 0));
         Self {
-            low: low_tables::<T>(&low, &flips, low_bits),
-            flips,
-            high_static: (0..high_size).map(product).collect(),
-            high: moving,
-            scalars,
-            groups,
+            low,
+            high_fixed: (0..sorted.high_size).map(product).collect(),
+            high: phases(&sorted.high_moving),
+            scalars: phases(&sorted.scalars),
+            groups: sorted.groups(unit),
+            flips: sorted.flips,
             factor,
         }
     }
@@ -172,15 +232,14 @@ impl<T: Real> Diagonal<T> {
         let scalar = self.scalars.iter().fold(self.factor, |p, term| p * term.at(0, rep));
         let lines = self.low.len() >> self.flips.len();
         room.high.clear();
-        for (high, fixed) in self.high_static.iter().enumerate() {
+        for (high, fixed) in self.high_fixed.iter().enumerate() {
             let factor = self.high.iter().fold(fixed * scalar, |p, term| p * term.at(high, rep));
-            let bit = |(j, flip): (usize, &Flip)| usize::from(flip.is_odd(high, rep)) << j;
-            let pattern: usize = self.flips.iter().enumerate().map(bit).sum();
-            room.high.push(HighFactor { re: T::from_f64(factor.re), im: T::from_f64(factor.im), low: pattern * lines });
+            let low = pattern(&self.flips, high, rep) * lines;
+            room.high.push(HighFactor { re: T::from_f64(factor.re), im: T::from_f64(factor.im), low });
         }
         room.groups.clear();
         for group in &self.groups {
-            for high in 0..self.high_static.len() {
+            for high in 0..self.high_fixed.len() {
                 let phase = group.terms.iter().map(|term| term.at(high, rep)).reduce(|p, q| p * q);
                 let phase = phase.unwrap_or(Complex64::new(1.0, 0.0));
                 room.groups.push([T::from_f64(phase.re), T::from_f64(phase.im)]);
@@ -189,26 +248,79 @@ impl<T: Real> Diagonal<T> {
     }
 }
 
-fn low_tables<T: Real>(terms: &[(usize, Flip, f64)], flips: &[Flip], low_bits: u32) -> Vec<T::Line> {
-    let mut lines = vec![T::Line::default(); 2 << (flips.len() as u32 + low_bits - T::LANE_BITS)];
-    let bits: Vec<usize> =
-        terms.iter().map(|(_, flip, _)| flips.iter().position(|own| own == flip).map_or(0, |j| 1 << j)).collect();
-    for pattern in 0..1usize << flips.len() {
-        for index in 0..1usize << low_bits {
-            let angle: f64 = terms
-                .iter()
-                .zip(&bits)
-                .map(
-                    |((mask, _, angle), bit)| if is_odd(mask & index) ^ (bit & pattern != 0) { -angle } else { *angle },
-                )
-                .sum();
-            let (place, lane) = ((pattern << low_bits | index) >> T::LANE_BITS, index & ((1 << T::LANE_BITS) - 1));
-            let phase = unit(angle);
-            lines[2 * place].as_mut()[lane] = T::from_f64(phase.re);
-            lines[2 * place + 1].as_mut()[lane] = T::from_f64(phase.im);
+/// A sum of diagonal strings in the coordinates of a space: the same tables with sums in place of products.
+#[derive(Clone, Debug)]
+pub struct DiagonalSum<T: Real> {
+    /// For each pattern of flips and each vector of low coordinates: one line.
+    pub low: Vec<T::Line>,
+    flips: Vec<Flip>,
+    high_fixed: Vec<f64>,
+    high: Vec<Signed<f64>>,
+    scalars: Vec<Signed<f64>>,
+    /// Values that depend on low and high coordinates in more ways than the tables hold.
+    pub groups: Vec<Group<T, f64>>,
+}
+
+/// What is added for one value of the high coordinates.
+#[derive(Clone, Copy, Debug, Default)]
+pub struct HighSum<T> {
+    /// The value.
+    pub value: T,
+    /// First line of the low table.
+    pub low: usize,
+}
+
+/// A worker's room for the values of one coset.
+#[derive(Clone, Debug, Default)]
+pub struct CosetSums<T> {
+    /// By high coordinate.
+    pub high: Vec<HighSum<T>>,
+    /// By group, then by high coordinate.
+    pub groups: Vec<T>,
+}
+
+impl<T: Real> DiagonalSum<T> {
+    /// From pairs (z, coefficient).
+    pub fn new(terms: &[(u64, f64)], space: &Space) -> Self {
+        let sorted = Sorted::new(terms, space);
+        let vectors = 1usize << (sorted.low_bits - T::LANE_BITS);
+        let mut low = vec![T::Line::default(); vectors << sorted.flips.len()];
+        sorted.each_low_sum(|pattern, index, value| {
+            let lane = index & ((1 << T::LANE_BITS) - 1);
+            low[pattern * vectors + (index >> T::LANE_BITS)].as_mut()[lane] = T::from_f64(value);
+        });
+        let fixed = |high: usize| sorted.high_fixed.iter().map(|term| term.at(high, 0)).sum::<f64>();
+        Self {
+            low,
+            high_fixed: (0..sorted.high_size).map(fixed).collect(),
+            groups: sorted.groups(|value| value),
+            flips: sorted.flips,
+            high: sorted.high_moving,
+            scalars: sorted.scalars,
         }
     }
-    lines
+
+    /// Most numbers that enter one entry of the diagonal one after the other.
+    pub fn additions(&self) -> usize {
+        self.groups.len() + 3
+    }
+
+    /// The values of the coset of `rep`.
+    pub fn prepare(&self, rep: usize, room: &mut CosetSums<T>) {
+        let scalar: f64 = self.scalars.iter().map(|term| term.at(0, rep)).sum();
+        let lines = self.low.len() >> self.flips.len();
+        room.high.clear();
+        for (high, fixed) in self.high_fixed.iter().enumerate() {
+            let value = self.high.iter().fold(fixed + scalar, |sum, term| sum + term.at(high, rep));
+            room.high.push(HighSum { value: T::from_f64(value), low: pattern(&self.flips, high, rep) * lines });
+        }
+        room.groups.clear();
+        for group in &self.groups {
+            for high in 0..self.high_fixed.len() {
+                room.groups.push(T::from_f64(group.terms.iter().map(|term| term.at(high, rep)).sum()));
+            }
+        }
+    }
 }
 
 #[cfg(test)]

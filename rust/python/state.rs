@@ -73,7 +73,7 @@ pub fn expectation(py: Python<'_>, terms: &PyTerms, state: &Bound<'_, PyAny>, th
     either!(py, &mut amplitudes, state => {
         let weight = (state.len() * terms.terms.strings().len().max(1)) as u64;
         run(py, weight, Spoils::Nothing, None, |control| {
-            apply::expectation(&Action::new(&terms.terms, 1.0, 0.0), state, threads, control)
+            Ok(apply::expectations(&[Action::new(&terms.terms, 1.0, 0.0)], state, threads, control)?[0])
         })
     })
 }

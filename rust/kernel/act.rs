@@ -1,0 +1,305 @@
+//! Carries an [`Action`] out: each worker its share of cosets, pass by pass.
+
+use std::sync::atomic::{AtomicU64, Ordering};
+
+use num_complex::{Complex, Complex64};
+
+use super::Isa;
+use super::image::{Copy, Ending, Gain, Room, Start, Turned, coset_image};
+use super::lanes::Real;
+use super::shared::Shared;
+use super::tile::{Ahead, Place};
+use crate::action::{Action, ActionPass};
+use crate::error::Result;
+use crate::passes::least_qubits;
+use crate::sums::pairwise;
+use crate::team::{Control, Member, Run, run, workers_for};
+
+/// Bytes of a state above which the next coset is fetched ahead.
+const FETCH_FROM: usize = 1 << 23;
+/// Vectors that a worker copies between two looks at the flags.
+const PIECE: usize = 1 << 12;
+
+/// One coset's place in a state.
+fn place<'a, T: Real>(pass: &'a ActionPass<T>, state: &Shared<T>, rep: usize, interleaved: bool) -> Place<'a, T> {
+    // SAFETY: representatives are indices of the state.
+    unsafe {
+        if pass.offsets.is_empty() {
+            Place { start: state.at(2 * rep), scattered: None, interleaved }
+        } else {
+            let scattered = Some((rep, &pass.offsets[..], pass.run_bits));
+            Place { start: state.at(0), scattered, interleaved }
+        }
+    }
+}
+
+/// A worker's buffer for one coset.
+struct Buffer<T: Real>(Vec<T::Line>);
+
+impl<T: Real> Buffer<T> {
+    fn new(pass: &ActionPass<T>) -> Self {
+        Self(vec![T::Line::default(); 2 << (pass.space.dimension() - T::LANE_BITS)])
+    }
+
+    /// Copies a coset here, as vectors of real and imaginary parts.
+    ///
+    /// # Safety
+    /// The place holds a coset of this buffer's size that nobody writes to.
+    unsafe fn fill(&mut self, isa: Isa, from: Place<T>) -> *const T {
+        let start = self.0.as_mut_ptr().cast();
+        let to = Place { start, scattered: None, interleaved: false };
+        // SAFETY: by contract, and the buffer is this worker's own.
+        unsafe { isa.run_vectors(Copy { from, to, vectors: self.0.len() / 2, factor: None }) };
+        start
+    }
+}
+
+/// Calls `work(number, rep, next rep)` for this member's cosets of a pass.
+fn each_coset<T: Real>(
+    member: &Member,
+    pass: &ActionPass<T>,
+    state: &Shared<T>,
+    mut work: impl FnMut(usize, usize, Option<usize>),
+) -> Result<()> {
+    let cosets = state.reals() / 2 >> pass.space.dimension();
+    let fetching = state.reals() * size_of::<T>() >= FETCH_FROM;
+    member.each_piece(cosets, 4, |numbers| {
+        for number in numbers.clone() {
+            let next = pass.space.representative((number + 1).min(numbers.end - 1));
+            work(number, pass.space.representative(number), fetching.then_some(next));
+        }
+    })
+}
+
+fn require_size<T: Real>(action: &Action<T>, lengths: impl IntoIterator<Item = usize>) {
+    let size = 1usize << action.qubits.max(least_qubits::<T>());
+    assert!(lengths.into_iter().all(|length| length == size), "states are extended and checked by the caller");
+}
+
+/// out ← action |state>, of the right and least length.
+///
+/// # Errors
+/// A stop on request, after which `out` is unfinished.
+pub fn apply<T: Real>(
+    action: &Action<T>,
+    state: &mut [Complex<T>],
+    out: &mut [Complex<T>],
+    threads: usize,
+    control: &Control,
+) -> Result<Run> {
+    require_size(action, [state.len(), out.len()]);
+    let isa = Isa::chosen()?;
+    let workers = workers_for(threads, state.len());
+    let (state, out) = (Shared::new(state), Shared::new(out));
+    run(workers, control, |member| {
+        let mut room = Room::default();
+        let last = action.passes.len() - 1;
+        for (number, pass) in action.passes.iter().enumerate() {
+            let mut buffer = Buffer::new(pass);
+            let start = if number == 0 { Start::Zero } else { Start::Old };
+            each_coset(member, pass, &state, |_, rep, next| {
+                let ending =
+                    Ending::Store { out: place(pass, &out, rep, number == last), start, halved: false, gains: &[] };
+                let ahead = next.map(|next| {
+                    let ahead = |place| Ahead { next: place, first: 0, step: 1 };
+                    [ahead(place(pass, &state, next, true)), ahead(place(pass, &out, next, false))]
+                });
+                let ahead = ahead.as_ref().map_or(&[][..], |both| &both[..]);
+                // SAFETY: each coset belongs to one worker, `out` is not `state`, and the state is only read.
+                unsafe {
+                    let source = buffer.fill(isa, place(pass, &state, rep, true));
+                    coset_image(isa, pass, source, rep, ending, ahead, &mut room);
+                }
+            })?;
+            member.pass_done()?;
+        }
+        Ok(())
+    })
+}
+
+/// `<state| action |state>` for several actions, of the right and least length. The first passes share one traversal.
+///
+/// # Errors
+/// A stop on request.
+pub fn expectations<T: Real>(
+    actions: &[Action<T>],
+    state: &mut [Complex<T>],
+    threads: usize,
+    control: &Control,
+) -> Result<Vec<f64>> {
+    let isa = Isa::chosen()?;
+    let workers = workers_for(threads, state.len());
+    for action in actions {
+        require_size(action, [state.len()]);
+    }
+    let Some(most) = actions.iter().map(|action| action.passes.len()).max() else { return Ok(vec![]) };
+    let cosets = |action: &Action<T>| state.len() >> action.passes[0].space.dimension();
+    let partial: Vec<Vec<AtomicU64>> = actions
+        .iter()
+        .map(|action| (0..action.passes.len() * cosets(action)).map(|_| AtomicU64::new(0)).collect())
+        .collect();
+    let state = Shared::new(state);
+    run(workers, control, |member| {
+        let mut room = Room::default();
+        for number in 0..most {
+            let chosen: Vec<usize> = (0..actions.len()).filter(|&which| number < actions[which].passes.len()).collect();
+            // First passes have the same space, the contiguous one; later ones are taken one by one.
+            for group in chosen.chunks(if number == 0 { chosen.len() } else { 1 }) {
+                let pass = &actions[group[0]].passes[number];
+                let mut buffer = Buffer::new(pass);
+                each_coset(member, pass, &state, |coset, rep, next| {
+                    let ahead = next.map(|next| [Ahead { next: place(pass, &state, next, true), first: 0, step: 1 }]);
+                    let ahead = ahead.as_ref().map_or(&[][..], |one| &one[..]);
+                    // SAFETY: the state is only read.
+                    let source = unsafe { buffer.fill(isa, place(pass, &state, rep, true)) };
+                    for (place, &which) in group.iter().enumerate() {
+                        room.dot = [0.0; 16];
+                        let own = &actions[which].passes[number];
+                        let ahead = if place == 0 { ahead } else { &[] };
+                        // SAFETY: as above; the source is this worker's buffer.
+                        unsafe { coset_image(isa, own, source, rep, Ending::Dot, ahead, &mut room) };
+                        let cosets = partial[which].len() / actions[which].passes.len();
+                        let value = pairwise(&room.dot).to_bits();
+                        partial[which][number * cosets + coset].store(value, Ordering::Relaxed);
+                    }
+                })?;
+                member.pass_done()?;
+            }
+        }
+        Ok(())
+    })?;
+    let total = |values: Vec<AtomicU64>| {
+        pairwise(&values.into_iter().map(|bits| f64::from_bits(bits.into_inner())).collect::<Vec<_>>())
+    };
+    Ok(partial.into_iter().map(total).collect())
+}
+
+/// The recurrence behind [`crate::apply::chebyshev_sums`], on states of the right and least length.
+///
+/// The vectors are kept as real and imaginary parts in turn for the whole run. Every second term enters the sums together
+/// with the one before it, which is at hand as the source of the recurrence.
+///
+/// # Errors
+/// A stop on request, after which all arrays are unfinished.
+pub fn chebyshev(
+    action: &Action<f64>,
+    current: &mut [Complex64],
+    previous: &mut [Complex64],
+    sums: &mut [&mut [Complex64]],
+    coefficients: &[Vec<f64>],
+    threads: usize,
+    control: &Control,
+) -> Result<Run> {
+    require_size(action, [current.len(), previous.len()].into_iter().chain(sums.iter().map(|sum| sum.len())));
+    let isa = Isa::chosen()?;
+    let terms = coefficients[0].len();
+    let workers = workers_for(threads, current.len());
+    control.expect(control.progress().0 + (terms - 1) as u64 * action.passes.len() as u64 + 2);
+    let buffers = [Shared::new(current), Shared::new(previous)];
+    let sums: Vec<Shared<f64>> = sums.iter_mut().map(|sum| Shared::new(sum)).collect();
+    run(workers, control, |member| {
+        begin(member, isa, &buffers[0], &sums, coefficients)?;
+        let mut room = Room::default();
+        let last = action.passes.len() - 1;
+        for term in 1..terms {
+            let (read, write) = (&buffers[(term + 1) & 1], &buffers[term & 1]);
+            let due = term & 1 == 0 || term + 1 == terms;
+            for (number, pass) in action.passes.iter().enumerate() {
+                let mut buffer = (!pass.offsets.is_empty()).then(|| Buffer::new(pass));
+                let start = match (number, term) {
+                    (0, 1) => Start::Zero,
+                    (0, _) => Start::MinusOld,
+                    _ => Start::Old,
+                };
+                let gaining = number == last && due;
+                let mut gains: Vec<Gain<f64>> = Vec::with_capacity(sums.len());
+                let mut ahead: Vec<Ahead<f64>> = Vec::with_capacity(sums.len() + 2);
+                each_coset(member, pass, read, |_, rep, next| {
+                    gains.clear();
+                    ahead.clear();
+                    if gaining {
+                        gains.extend(sums.iter().zip(coefficients).map(|(sum, list)| Gain {
+                            sum: place(pass, sum, rep, false),
+                            own: turned(list, term),
+                            source: (term & 1 == 0).then(|| turned(list, term - 1)),
+                        }));
+                    }
+                    if let Some(next) = next {
+                        let later = if gaining { &sums[..] } else { &[] };
+                        let arrays = [read, write].into_iter().chain(later);
+                        ahead.extend(arrays.map(|a| Ahead { next: place(pass, a, next, false), first: 0, step: 1 }));
+                    }
+                    let out = place(pass, write, rep, false);
+                    let ending = Ending::Store { out, start, halved: number == last && term == 1, gains: &gains };
+                    // SAFETY: each coset belongs to one worker; the arrays are distinct, and `read` is only read.
+                    unsafe {
+                        let from = place(pass, read, rep, false);
+                        let source = match &mut buffer {
+                            None => from.start,
+                            Some(buffer) => buffer.fill(isa, from),
+                        };
+                        coset_image(isa, pass, source, rep, ending, &ahead, &mut room);
+                    }
+                })?;
+                member.pass_done()?;
+            }
+        }
+        end(member, isa, &sums)
+    })
+}
+
+/// (-i)^term times the coefficient of the term.
+fn turned(list: &[f64], term: usize) -> Turned<f64> {
+    let sign = if matches!(term & 3, 1 | 2) { -1.0 } else { 1.0 };
+    Turned { value: sign * list[term], imaginary: term & 1 == 1 }
+}
+
+/// Splits the start into real and imaginary parts, and begins the sums with the first term.
+fn begin(
+    member: &Member,
+    isa: Isa,
+    start: &Shared<f64>,
+    sums: &[Shared<f64>],
+    coefficients: &[Vec<f64>],
+) -> Result<()> {
+    each_vector(member, start, |from, vectors| {
+        for (sum, list) in sums.iter().zip(coefficients) {
+            let factor = Some((list[0], 0.0));
+            // SAFETY: pieces belong to one worker each, and the arrays are distinct.
+            unsafe {
+                isa.run_vectors(Copy { from: whole(start, from, true), to: whole(sum, from, false), vectors, factor })
+            };
+        }
+        // SAFETY: as above; a vector is read before it is written.
+        unsafe {
+            let (from, to) = (whole(start, from, true), whole(start, from, false));
+            isa.run_vectors(Copy { from, to, vectors, factor: None });
+        }
+    })?;
+    member.pass_done()
+}
+
+/// Interleaves the sums.
+fn end(member: &Member, isa: Isa, sums: &[Shared<f64>]) -> Result<()> {
+    for sum in sums {
+        each_vector(member, sum, |from, vectors| {
+            // SAFETY: pieces belong to one worker each; a vector is read before it is written.
+            unsafe {
+                let (from, to) = (whole(sum, from, false), whole(sum, from, true));
+                isa.run_vectors(Copy { from, to, vectors, factor: None });
+            }
+        })?;
+    }
+    member.pass_done()
+}
+
+fn each_vector(member: &Member, state: &Shared<f64>, mut work: impl FnMut(usize, usize)) -> Result<()> {
+    member.each_piece(state.reals() >> (f64::LANE_BITS + 1), PIECE, |vectors| work(vectors.start, vectors.len()))
+}
+
+/// The state from a vector on.
+fn whole(state: &Shared<f64>, vector: usize, interleaved: bool) -> Place<'static, f64> {
+    // SAFETY: vectors are cut from the state.
+    let start = unsafe { state.at(vector << (f64::LANE_BITS + 1)) };
+    Place { start, scattered: None, interleaved }
+}
