@@ -138,7 +138,7 @@ pub fn steps(qubits: u32) -> Vec<Named> {
         ("25 double excitations", excitations(qubits, true)),
         ("200 random strings", random(qubits, 200)),
     ];
-    if qubits % 4 == 0 {
+    if qubits.is_multiple_of(4) {
         all.push(("fermions on 2 rows", fermions(qubits)));
     }
     all

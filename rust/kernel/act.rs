@@ -61,7 +61,7 @@ fn each_coset<T: Real>(
     state: &Shared<T>,
     mut work: impl FnMut(usize, usize, Option<usize>),
 ) -> Result<()> {
-    let cosets = state.reals() / 2 >> pass.space.dimension();
+    let cosets = (state.reals() / 2) >> pass.space.dimension();
     let fetching = state.reals() * size_of::<T>() >= FETCH_FROM;
     member.each_piece(cosets, 4, |numbers| {
         for number in numbers.clone() {

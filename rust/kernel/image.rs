@@ -3,8 +3,9 @@
 //! One coset of the state at a time lies in cache as vectors of real and imaginary parts. For each tile of eight vectors of
 //! the result the addends are summed in registers; what becomes of the sum is the [`Ending`].
 
+use super::bodies::{product, registers};
 use super::lanes::Real;
-use super::tile::{Ahead, Place, fetch, product, registers};
+use super::tile::{Ahead, Place, fetch};
 use super::vector::Vector;
 use super::{Isa, VectorWork};
 use crate::action::{ActionPass, Addend, STRETCH_BITS};

@@ -1,20 +1,24 @@
 //! Inner loops on amplitudes, compiled once for each instruction set and chosen at run time.
 //!
-//! Everything in this folder works on *lanes*: eight real numbers, that is four neighbouring amplitudes as
-//! (re, im) pairs. The trick that makes one loop serve every Pauli string: inside a group of lanes a string only permutes
-//! lanes by an exclusive or, and the swap of real and imaginary part that a factor i needs is an exclusive or with 1. So
-//! with `m = 2 (x & 3) + imaginary` the partner of lane `l` is lane `l ^ m`, signs sit in a table of weights, and one of
-//! eight compiled variants does the whole job (see [`lanes`]).
+//! What is done to amplitudes is written over [`vector::Vector`], about ten operations on eight doubles (or sixteen
+//! singles), with one implementation for each instruction set: arrays for every processor, two registers of AVX2, one of
+//! AVX-512. [`Isa::run_vectors`] inlines a loop into a function that enables the instruction set. No operation is a fused
+//! multiply-add and all have the same number of lanes, so every instruction set gives the same bits.
 //!
-//! The bodies are plain Rust over `[T; 8]`, always inlined into a function that enables an instruction set, and the
-//! compiler vectorises them there ([`Isa::run`]). No body uses a fused multiply-add and none depends on the vector
-//! length, so every instruction set gives the same bits. Tried and left out: explicit intrinsics for one rotation at a
-//! time (no gain over this form, which is bound by memory).
+//! | file | holds |
+//! | --- | --- |
+//! | [`vector`], `x86_64` | the vectors |
+//! | [`bodies`], [`tile`] | what an operation does to the registers of a tile; the loop over tiles |
+//! | [`carry`] | the passes of a circuit over a state |
+//! | [`image`], [`act`] | sums of an operator's terms; applications, expectations and the Chebyshev recurrence |
+//! | [`reduce`] | norms, overlaps and distances: plain loops, left to the compiler |
+//! | [`shared`] | one array that several workers write, each its own part |
 //!
-//! All unsafe code of the crate is in this folder: the calls into feature-enabled functions here, and the disjoint
-//! access of several workers to one array in [`shared`].
+//! All unsafe code of the crate is in this folder: calls into feature-enabled functions, loads and stores of vectors, and the
+//! disjoint access of several workers to one array.
 
 pub mod act;
+pub mod bodies;
 pub mod carry;
 pub mod image;
 pub mod lanes;

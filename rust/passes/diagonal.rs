@@ -83,8 +83,9 @@ struct Sorted {
 impl Sorted {
     fn new(terms: &[(u64, f64)], space: &Space) -> Self {
         let low_bits = LOW_BITS.min(space.dimension());
-        let (mut low, mut high, mut scalars, mut flips): (Vec<(usize, Signed<f64>)>, Vec<_>, Vec<_>, Vec<Flip>) =
-            Default::default();
+        let mut low: Vec<(usize, Signed<f64>)> = vec![];
+        let mut flips: Vec<Flip> = vec![];
+        let (mut high, mut scalars) = (vec![], vec![]);
         for &(z, value) in terms {
             let local = space.dual(z);
             let flip = Flip { high: local >> low_bits, coset: if space.leaves(z) { z as usize } else { 0 } };

@@ -118,23 +118,23 @@ struct Gathering<'a> {
 }
 
 /// Sorts the operations of a pass into runs and prepares them.
+///
+/// Factors of everything that the operations leave to do are multiplied up. The product goes into the tables of a diagonal
+/// operation where the pass has one, else to the end of the last run; before it gets too small it is applied on the way.
 pub fn prepare<T: Real>(space: &Space, operations: &[&Operation]) -> Work<T> {
-    let gathered = gather::<T>(space, operations);
+    let one = Complex64::new(1.0, 0.0);
     let mut work = Work { stages: vec![], diagonals: vec![] };
-    let mut factor = Complex64::new(1.0, 0.0);
-    let last = gathered.len() - 1;
-    for (place, Gathering { span, operations }) in gathered.into_iter().enumerate() {
+    let mut diagonals: Vec<Vec<(u64, f64)>> = vec![];
+    let mut factor = one;
+    let mut runs: Vec<(Space, Vec<TileOperation<T>>)> = vec![];
+    for Gathering { span, operations } in gather::<T>(space, operations) {
         let tile = Space::new(span.filled(TILE_BITS));
         let mut run = Vec::with_capacity(operations.len());
-        for operation in &operations {
+        for operation in operations {
             match operation.action() {
                 Action::Diagonal(terms) => {
-                    let taken = std::mem::replace(&mut factor, Complex64::new(1.0, 0.0));
-                    work.diagonals.push(Diagonal::new(&terms, space, taken));
-                    run.push(TileOperation {
-                        diagonal: work.diagonals.len() - 1,
-                        ..TileOperation::plain(Form::Diagonal)
-                    });
+                    run.push(TileOperation { diagonal: diagonals.len(), ..TileOperation::plain(Form::Diagonal) });
+                    diagonals.push(terms);
                 }
                 action => {
                     let (prepared, own) = TileOperation::new(space, &tile, operation.x(), &action);
@@ -143,12 +143,18 @@ pub fn prepare<T: Real>(space: &Space, operations: &[&Operation]) -> Work<T> {
                 }
             }
             if factor.norm() < SMALLEST_FACTOR {
-                run.push(TileOperation::scale(std::mem::replace(&mut factor, Complex64::new(1.0, 0.0))));
+                run.push(TileOperation::scale(std::mem::replace(&mut factor, one)));
             }
         }
-        if place == last && factor != Complex64::new(1.0, 0.0) {
-            run.push(TileOperation::scale(factor));
-        }
+        runs.push((tile, run));
+    }
+    if let (true, Some((_, run))) = (diagonals.is_empty() && factor != one, runs.last_mut()) {
+        run.push(TileOperation::scale(std::mem::replace(&mut factor, one)));
+    }
+    for terms in diagonals {
+        work.diagonals.push(Diagonal::new(&terms, space, std::mem::replace(&mut factor, one)));
+    }
+    for (tile, run) in runs {
         work.append(space.dimension() - T::LANE_BITS, &tile, run);
     }
     work
