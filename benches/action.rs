@@ -24,15 +24,15 @@ fn report(qubits: u32) {
     let bonds = (0..qubits).map(|q| 1u128 << q | 1u128 << ((q + 1) % qubits));
     let strings = bonds.flat_map(|bond| [(bond, 0), (bond, bond), (0, bond)].map(|(x, z)| (PauliString { x, z }, 1.0)));
     let ring = Terms::new(Some(qubits), strings).expect("strings within the qubits");
-    let action = [Action::new(&ring, 1.0, 0.0)];
+    let action = Action::new(&ring, 1.0, 0.0);
     let coefficients = vec![vec![0.1; 9]];
     for threads in [1, 2] {
         let value = best(5, || {
-            expectations(&action, state, threads, &control).expect("no stop asked");
+            expectations(&[&ring], state, threads, &control).expect("no stop asked");
         });
         let terms = best(5, || {
             let mut sums = [&mut *sum];
-            let done = chebyshev_sums(&action[0], state, previous, &mut sums, &coefficients, threads, &control);
+            let done = chebyshev_sums(&action, state, previous, &mut sums, &coefficients, threads, &control);
             done.expect("no stop asked");
         });
         println!(

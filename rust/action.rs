@@ -126,38 +126,71 @@ fn gather(terms: &Terms, scale: f64) -> (Vec<Gathered>, Vec<(u64, f64)>) {
 impl<T: Real> Action<T> {
     /// Prepares `scale · terms + shift`.
     pub fn new(terms: &Terms, scale: f64, shift: f64) -> Self {
-        let qubits = terms.qubits().max(least_qubits::<T>());
-        let (limit, run_bits) = (COSET_BITS.min(qubits), T::LANE_BITS + 2);
-        let (mut left, mut diagonal) = gather(terms, scale);
+        let mut actions = Self::prepared(&[terms], scale, shift);
+        actions.remove(0)
+    }
+
+    /// Prepares several operators on one number of qubits so that all have their passes over the same spaces.
+    pub fn together(operators: &[&Terms]) -> Vec<Self> {
+        Self::prepared(operators, 1.0, 0.0)
+    }
+
+    fn prepared(operators: &[&Terms], scale: f64, shift: f64) -> Vec<Self> {
+        let qubits = operators.iter().map(|terms| terms.qubits()).max().unwrap_or(0).max(least_qubits::<T>());
+        let (mut left, mut diagonals): (Vec<_>, Vec<_>) = operators.iter().map(|terms| gather(terms, scale)).unzip();
         if shift != 0.0 {
-            diagonal.push((0, shift));
+            diagonals.iter_mut().for_each(|diagonal: &mut Vec<(u64, f64)>| diagonal.push((0, shift)));
         }
-        let mut passes: Vec<ActionPass<T>> = vec![];
-        let mut members: Vec<Vec<Gathered>> = vec![];
-        while passes.is_empty() || !left.is_empty() {
-            let start = if passes.is_empty() { limit } else { run_bits.min(limit) };
-            let mut span = Span::of_low_bits(start);
-            let (taken, skipped): (Vec<_>, Vec<_>) = left.into_iter().partition(|own| span.admit(own.x, limit));
-            left = skipped;
-            let space = Space::new(span.filled(limit));
-            let addends = taken.iter().map(|own| Addend::new(&space, own)).collect();
-            let sum = (passes.is_empty() && !diagonal.is_empty()).then(|| DiagonalSum::new(&diagonal, &space));
-            let offsets = run_offsets(&space, run_bits);
-            passes.push(ActionPass { space, offsets, run_bits, addends, diagonal: sum });
-            members.push(taken);
+        let new = |terms: &&Terms| Self { qubits: terms.qubits(), passes: vec![], rounding: 0.0 };
+        let mut actions: Vec<Self> = operators.iter().map(new).collect();
+        let mut members: Vec<Vec<Vec<Gathered>>> = operators.iter().map(|_| vec![]).collect();
+        let mut first = true;
+        while first || left.iter().any(|gathered| !gathered.is_empty()) {
+            let (space, taken) = next_space::<T>(qubits, first, &mut left);
+            for (((action, taken), diagonal), members) in
+                actions.iter_mut().zip(taken).zip(&diagonals).zip(&mut members)
+            {
+                action.push(space.clone(), &taken, diagonal);
+                members.push(taken);
+            }
+            first = false;
         }
-        let rounding = rounding(&passes, &members, &diagonal);
-        Self { qubits: terms.qubits(), passes, rounding }
+        for ((action, members), diagonal) in actions.iter_mut().zip(&members).zip(&diagonals) {
+            action.rounding = rounding(&action.passes, members, diagonal);
+        }
+        actions
+    }
+
+    fn push(&mut self, space: Space, taken: &[Gathered], diagonal: &[(u64, f64)]) {
+        let run_bits = T::LANE_BITS + 2;
+        let addends = taken.iter().map(|own| Addend::new(&space, own)).collect();
+        let sum = (self.passes.is_empty() && !diagonal.is_empty()).then(|| DiagonalSum::new(diagonal, &space));
+        let offsets = run_offsets(&space, run_bits);
+        self.passes.push(ActionPass { space, offsets, run_bits, addends, diagonal: sum });
     }
 
     /// Bound on the 2-norm of the rounding error of one application to a unit vector, in units of the roundoff.
     ///
     /// Each term is rounded once when scaled, once for each sum of coefficients that it enters, once when multiplied, and once
     /// for each addition of amplitudes that it passes through; the error is at most the sum of |coefficient| times that
-    /// number, since a string only permutes amplitudes and changes their phase by a power of i.
+    /// number, since a string only permutes amplitudes and changes their phase by a power of i. A unit vector that a
+    /// recurrence subtracts is rounded once a pass.
     pub fn rounding(&self) -> f64 {
         self.rounding
     }
+}
+
+/// The space of the next pass, and what of each operator it takes.
+fn next_space<T: Real>(qubits: u32, first: bool, left: &mut [Vec<Gathered>]) -> (Space, Vec<Vec<Gathered>>) {
+    let (limit, run_bits) = (COSET_BITS.min(qubits), T::LANE_BITS + 2);
+    let mut span = Span::of_low_bits(if first { limit } else { run_bits.min(limit) });
+    let mut taken = Vec::with_capacity(left.len());
+    for gathered in left {
+        let (own, rest) = std::mem::take(gathered).into_iter().partition(|own: &Gathered| span.admit(own.x, limit));
+        *gathered = rest;
+        taken.push(own);
+    }
+    (Space::new(span.filled(limit)), taken)
 }
 
 fn rounding<T: Real>(passes: &[ActionPass<T>], members: &[Vec<Gathered>], diagonal: &[(u64, f64)]) -> f64 {
@@ -169,7 +202,7 @@ fn rounding<T: Real>(passes: &[ActionPass<T>], members: &[Vec<Gathered>], diagon
     });
     let steps = passes[0].diagonal.as_ref().map_or(0, DiagonalSum::additions);
     let size: f64 = diagonal.iter().map(|(_, coefficient)| coefficient.abs()).sum();
-    mixed.sum::<f64>() + size * (2 + diagonal.len() + steps + count(0) + later(0)) as f64
+    passes.len() as f64 + mixed.sum::<f64>() + size * (2 + diagonal.len() + steps + count(0) + later(0)) as f64
 }
 
 fn is_odd(masked: usize) -> bool {

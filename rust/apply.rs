@@ -9,6 +9,7 @@ use crate::kernel::act;
 use crate::kernel::lanes::Real;
 use crate::passes::least_qubits;
 use crate::team::{Control, Run};
+use crate::terms::Terms;
 
 /// Amplitudes of the shortest state that actions work on.
 fn least<T: Real>() -> usize {
@@ -33,19 +34,20 @@ pub fn apply<T: Real>(
     })
 }
 
-/// `<state| action |state>` for each of several actions.
+/// `<state| operator |state>` for each of several operators, in shared traversals of the state.
 ///
 /// # Errors
 /// A length that does not fit; a stop on request.
 pub fn expectations<T: Real>(
-    actions: &[Action<T>],
+    operators: &[&Terms],
     state: &mut [Complex<T>],
     threads: usize,
     control: &Control,
 ) -> Result<Vec<f64>> {
-    for action in actions {
-        require_length(state.len(), action.qubits)?;
+    for operator in operators {
+        require_length(state.len(), operator.qubits())?;
     }
+    let actions = &Action::<T>::together(operators)[..];
     padded(state, least::<T>(), |state| act::expectations(actions, state, threads, control))
 }
 
@@ -92,7 +94,6 @@ pub fn chebyshev_sums(
 mod tests {
     use super::*;
     use crate::pauli::PauliString;
-    use crate::terms::Terms;
 
     /// A generator of reproducible numbers: the constants of Knuth's linear congruential MMIX generator.
     fn numbers(seed: u64) -> impl FnMut() -> f64 {
@@ -153,11 +154,13 @@ mod tests {
                 apply(&action, &mut start, &mut out, threads, &control).unwrap();
                 assert!(distance(&out, &expected) < limit, "{qubits}: {:e}", distance(&out, &expected));
                 let value: Complex64 = start.iter().zip(&expected).map(|(a, b)| a.conj() * b).sum();
-                let both = [Action::<f64>::new(&terms, 1.0, 0.25), Action::new(&terms, -2.0, 0.0)];
-                let found = expectations(&both, &mut start, threads, &control).unwrap();
-                assert!((found[0] - value.re).abs() < limit);
                 let norm: f64 = start.iter().map(|a| a.norm_sqr()).sum();
-                assert!((found[1] + 2.0 * (value.re - 0.25 * norm)).abs() < 3.0 * limit);
+                let single = Terms::new(Some(qubits), [(PauliString { x: 1, z: 1 }, 3.0)]).unwrap();
+                let turned = naive(&single, &start);
+                let own: Complex64 = start.iter().zip(&turned).map(|(a, b)| a.conj() * b).sum();
+                let found = expectations(&[&terms, &single], &mut start, threads, &control).unwrap();
+                assert!((found[0] + 0.25 * norm - value.re).abs() < 2.0 * limit);
+                assert!((found[1] - own.re).abs() < limit);
             }
         }
     }

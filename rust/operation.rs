@@ -31,12 +31,14 @@ pub struct Operation {
     pub mixing: Vec<Rotation>,
     /// Strings with x = 0; beside mixing ones, only the string whose parity tells their angles apart.
     pub diagonal: Vec<Rotation>,
+    /// Sum of |θ_1| + |θ_2| over the equal strings that merged.
+    merged: f64,
 }
 
 impl Operation {
     fn of(rotation: Rotation) -> Self {
         let mut operation = Self::default();
-        operation.list_for(&rotation).push(rotation);
+        operation.take(rotation);
         operation
     }
 
@@ -103,7 +105,11 @@ impl Operation {
     fn take(&mut self, rotation: Rotation) {
         let list = self.list_for(&rotation);
         match list.iter_mut().find(|own| own.string == rotation.string) {
-            Some(own) => own.angle += rotation.angle,
+            Some(own) => {
+                let sizes = own.angle.abs() + rotation.angle.abs();
+                own.angle += rotation.angle;
+                self.merged += sizes;
+            }
             None => list.push(rotation),
         }
     }
@@ -132,6 +138,23 @@ impl Operation {
             }
             Some(phase) => self.bond(x, phase),
         }
+    }
+
+    /// Bounds for one application to a unit vector: the 2-norm of the rounding error in units of the roundoff of amplitudes,
+    /// and that of adding up angles in units of the roundoff of doubles. `docs/engine.md` derives the numbers.
+    pub fn rounding(&self) -> (f64, f64) {
+        let units = match self.action() {
+            Action::Diagonal(terms) => 5.0 * terms.len() as f64,
+            Action::Exchange { .. } => 18.0,
+            Action::Bond { .. } => 21.0,
+            Action::Turn { .. } => 8.0,
+            Action::Table { .. } => 5.0,
+            Action::Complex { .. } => 10.0,
+        };
+        // Angles of mixing strings are added up, those of diagonal strings become phases one by one.
+        let sums = if self.mixing.is_empty() { 0 } else { self.count() - 1 };
+        let angles: f64 = self.rotations().map(|rotation| rotation.angle.abs()).sum();
+        (units, self.merged + sums as f64 * angles)
     }
 
     /// H where the parities of the index with `masks` are the bits of `parities`.
@@ -299,7 +322,7 @@ fn complete_bonds(operations: &mut [Operation]) {
         let found = [nearest(operations, before, mask), nearest(operations, after, mask)].into_iter().flatten().next();
         if let Some((from, which)) = found {
             let phase = operations[from].diagonal.swap_remove(which);
-            operations[place].diagonal.push(phase);
+            operations[place].take(phase);
         }
     }
 }

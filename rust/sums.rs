@@ -12,7 +12,7 @@ use crate::kernel::Isa;
 use crate::kernel::lanes::{GROUP_BITS, LANES, Real};
 use crate::kernel::reduce::{Dot, SquaredDistance};
 use crate::kernel::shared::as_groups;
-use crate::team::{Control, run, workers_for};
+use crate::team::{Control, no_thread, run, workers_for};
 
 /// Amplitudes in a block, as a power of two.
 pub const BLOCK_BITS: u32 = 10;
@@ -94,6 +94,22 @@ pub fn overlap<T: Real>(left: &[Complex<T>], right: &[Complex<T>], threads: usiz
     let re = over_pairs(left, right, threads, |left, right| isa.run(Dot { left, right }).0)?;
     let im = over_pairs(left, right, threads, |left, right| isa.run(Dot { left, right }).1)?;
     Ok(Complex::new(re, im))
+}
+
+/// Sets all amplitudes to zero; each worker writes a contiguous share, the one that it works on later.
+///
+/// # Errors
+/// A thread cannot be started.
+pub fn clear<T: Real>(state: &mut [Complex<T>], threads: usize) -> Result<()> {
+    let workers = workers_for(threads, state.len());
+    let share = state.len().div_ceil(workers).max(1);
+    std::thread::scope(|scope| {
+        for part in state.chunks_mut(share) {
+            let zero = move || part.fill(Complex::new(T::default(), T::default()));
+            std::thread::Builder::new().spawn_scoped(scope, zero).map_err(|_| no_thread(workers))?;
+        }
+        Ok(())
+    })
 }
 
 /// The square of the 2-norm of each block.

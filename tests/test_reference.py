@@ -190,13 +190,13 @@ def test_few_places_for_sums_do_not_change_what_is_certified():
         assert all(sum(bounds[time]) <= 1e-10 for time in times)
 
 
-@pytest.mark.parametrize("time", [1e4, 1e6, 1e12, 1e300])
+@pytest.mark.parametrize("time", [1e5, 1e6, 1e12, 1e300])
 def test_times_beyond_certification_are_refused_with_what_can_be_had(time):
     spin = Operator("0.7 X_0 + 0.3 Z_0")
     with pytest.raises(ToleranceError, match="shorter time") as refusal:
         reference(spin, State.product("0"), time)
     assert refusal.value.tolerance == 1e-10
-    if time == 1e4:
+    if time == 1e5:
         allowed = refusal.value.achievable
         assert reference(spin, State.product("0"), time, allowed).certificate.largest <= allowed
 

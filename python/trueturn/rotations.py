@@ -194,19 +194,18 @@ class Rotations:
 
         Notes
         -----
-        With a' = c a + w b rounded after each product and sum, a rotation's arithmetic costs at most 2 u (|c| + |s|) ≤
-        2√2 u in the 2-norm, and a sine and cosine within one unit in the last place cost 2 u: 5 u bounds both. Phase
-        passes multiply factors together at √5 u and 2 u each (Brent, Percival, Zimmermann, Math. Comp. 76, 1469 (2007)),
-        below 5 u for each string. An angle off by k roundings costs k u |θ|; where the engine joins two rotations about
-        strings with one x mask, adding their angles costs u (|θ_1| + |θ_2|). The global phase counts as one rotation. A
-        factor exp(bound) covers products of errors.
+        The engine joins rotations into operations; each kind costs a number of roundoffs that `docs/engine.md` derives:
+        5 for a diagonal string, 8 for a string that mixes, 5 for up to 16 strings with one x mask, 18 or 21 for a whole
+        bond of three. An angle off by k roundings costs k u |θ|, and each addition of angles of strings that mix u times
+        their size. The global phase is a diagonal string. A factor exp(bound) covers products of errors.
         """
         double = 2.0**-53
-        count = self.count + (1 if self.phase else 0)
-        angles = self._circuit.joined_angle_sum()
+        units, angles = self._circuit.rounding_units()
+        if self.phase:
+            units += 5.0
         if angle_roundings:
             angles += angle_roundings * (self._circuit.angle_sum() + abs(self.phase))
-        linear = 5.0 * unit * count + double * angles
+        linear = unit * units + double * angles
         bound = float(linear * np.exp(min(linear, 600.0)))
         return bound if math.isfinite(bound) else math.inf
 

@@ -13,7 +13,7 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
-from trueturn import _memory, _native, _threads
+from trueturn import _allocation, _memory, _native, _threads
 from trueturn._product import site_amplitudes
 from trueturn.errors import (
     ArgumentError,
@@ -303,7 +303,27 @@ class State:
             The operator acts on another number of qubits.
         """
         _require("operator", operator, Operator, "make one from text: Operator('Z_0', qubits=…)")
-        return _native.expectation(operator._terms, self.amplitudes, _threads.resolve(threads))
+        return self.expectations([operator], threads=threads).item()
+
+    def expectations(
+        self, operators: Sequence[Operator], *, threads: int | None = None
+    ) -> npt.NDArray[np.float64]:
+        """Return <ψ|operator|ψ> for each of several operators, shape (len(operators),).
+
+        They share the traversals of the state: two or three for all of them together, whatever their number. For the
+        single terms of an operator give ``[term for term in operator.terms()]``.
+
+        Raises
+        ------
+        StateShapeError
+            An operator acts on another number of qubits.
+        ArgumentError
+            An entry is no Operator.
+        """
+        for operator in operators:
+            _require("operator", operator, Operator, "make one from text: Operator('Z_0', qubits=…)")
+        terms = [operator._terms for operator in operators]
+        return np.array(_native.expectations(terms, self.amplitudes, _threads.resolve(threads)))
 
     def variance(self, operator: Operator, *, threads: int | None = None) -> float:
         """Return ‖(operator - mean) ψ‖², the variance for a unit vector.
@@ -408,7 +428,9 @@ class State:
             A second state vector does not fit.
         """
         _memory.require(self._array.nbytes, "copy", 2)
-        return State._over(self.amplitudes.copy())
+        room = _allocation.amplitudes(self._array.size, self._array.dtype)
+        np.copyto(room, self.amplitudes)
+        return State._over(room)
 
     def __repr__(self) -> str:
         spoiled = ", spoiled" if self._spoiled else ""
@@ -429,7 +451,7 @@ def _allocate(what: str, qubits: int, dtype: npt.DTypeLike) -> npt.NDArray[Any]:
     size = kind.itemsize
     # More qubits than any address has bits are refused all the same, without writing such a number out.
     _memory.require(size << min(qubits, 128), what, lambda n: size << n)
-    return np.zeros(1 << qubits, dtype=kind)
+    return _allocation.amplitudes(1 << qubits, kind)
 
 
 def _require(argument: str, value: object, kind: type, remedy: str) -> None:

@@ -5,7 +5,7 @@ use std::sync::atomic::{AtomicU64, Ordering};
 use num_complex::{Complex, Complex64};
 
 use super::Isa;
-use super::image::{Copy, Ending, Gain, Room, Start, Turned, coset_image};
+use super::image::{Copy, Ending, Gain, Old, Room, Turned, coset_image};
 use super::lanes::Real;
 use super::shared::Shared;
 use super::tile::{Ahead, Place};
@@ -96,10 +96,10 @@ pub fn apply<T: Real>(
         let last = action.passes.len() - 1;
         for (number, pass) in action.passes.iter().enumerate() {
             let mut buffer = Buffer::new(pass);
-            let start = if number == 0 { Start::Zero } else { Start::Old };
+            let old = if number == 0 { Old::Dropped } else { Old::Added };
             each_coset(member, pass, &state, |_, rep, next| {
                 let ending =
-                    Ending::Store { out: place(pass, &out, rep, number == last), start, halved: false, gains: &[] };
+                    Ending::Store { out: place(pass, &out, rep, number == last), old, halved: false, gains: &[] };
                 let ahead = next.map(|next| {
                     let ahead = |place| Ahead { next: place, first: 0, step: 1 };
                     [ahead(place(pass, &state, next, true)), ahead(place(pass, &out, next, false))]
@@ -117,7 +117,8 @@ pub fn apply<T: Real>(
     })
 }
 
-/// `<state| action |state>` for several actions, of the right and least length. The first passes share one traversal.
+/// `<state| action |state>` for actions that were prepared together, of the right and least length. They share all
+/// traversals of the state.
 ///
 /// # Errors
 /// A stop on request.
@@ -129,49 +130,42 @@ pub fn expectations<T: Real>(
 ) -> Result<Vec<f64>> {
     let isa = Isa::chosen()?;
     let workers = workers_for(threads, state.len());
-    for action in actions {
-        require_size(action, [state.len()]);
-    }
-    let Some(most) = actions.iter().map(|action| action.passes.len()).max() else { return Ok(vec![]) };
-    let cosets = |action: &Action<T>| state.len() >> action.passes[0].space.dimension();
-    let partial: Vec<Vec<AtomicU64>> = actions
-        .iter()
-        .map(|action| (0..action.passes.len() * cosets(action)).map(|_| AtomicU64::new(0)).collect())
-        .collect();
+    actions.iter().for_each(|action| require_size(action, [state.len()]));
+    let Some(first) = actions.first() else { return Ok(vec![]) };
+    let cosets = state.len() >> first.passes[0].space.dimension();
+    let passes = first.passes.len();
+    let partial: Vec<AtomicU64> = (0..actions.len() * passes * cosets).map(|_| AtomicU64::new(0)).collect();
     let state = Shared::new(state);
     run(workers, control, |member| {
         let mut room = Room::default();
-        for number in 0..most {
-            let chosen: Vec<usize> = (0..actions.len()).filter(|&which| number < actions[which].passes.len()).collect();
-            // First passes have the same space, the contiguous one; later ones are taken one by one.
-            for group in chosen.chunks(if number == 0 { chosen.len() } else { 1 }) {
-                let pass = &actions[group[0]].passes[number];
-                let mut buffer = Buffer::new(pass);
-                each_coset(member, pass, &state, |coset, rep, next| {
-                    let ahead = next.map(|next| [Ahead { next: place(pass, &state, next, true), first: 0, step: 1 }]);
+        for number in 0..passes {
+            let own = |action: &'_ Action<T>| -> bool {
+                let pass = &action.passes[number];
+                !pass.addends.is_empty() || pass.diagonal.is_some()
+            };
+            let pass = &first.passes[number];
+            let mut buffer = Buffer::new(pass);
+            each_coset(member, pass, &state, |coset, rep, next| {
+                let mut ahead = next.map(|next| [Ahead { next: place(pass, &state, next, true), first: 0, step: 1 }]);
+                // SAFETY: the state is only read.
+                let source = unsafe { buffer.fill(isa, place(pass, &state, rep, true)) };
+                for (which, action) in actions.iter().enumerate().filter(|(_, action)| own(action)) {
+                    room.dot = [0.0; 16];
+                    let ahead = ahead.take();
                     let ahead = ahead.as_ref().map_or(&[][..], |one| &one[..]);
-                    // SAFETY: the state is only read.
-                    let source = unsafe { buffer.fill(isa, place(pass, &state, rep, true)) };
-                    for (place, &which) in group.iter().enumerate() {
-                        room.dot = [0.0; 16];
-                        let own = &actions[which].passes[number];
-                        let ahead = if place == 0 { ahead } else { &[] };
-                        // SAFETY: as above; the source is this worker's buffer.
-                        unsafe { coset_image(isa, own, source, rep, Ending::Dot, ahead, &mut room) };
-                        let cosets = partial[which].len() / actions[which].passes.len();
-                        let value = pairwise(&room.dot).to_bits();
-                        partial[which][number * cosets + coset].store(value, Ordering::Relaxed);
-                    }
-                })?;
-                member.pass_done()?;
-            }
+                    let pass = &action.passes[number];
+                    // SAFETY: as above; the source is this worker's buffer.
+                    unsafe { coset_image(isa, pass, source, rep, Ending::Dot, ahead, &mut room) };
+                    let place = (which * passes + number) * cosets + coset;
+                    partial[place].store(pairwise(&room.dot).to_bits(), Ordering::Relaxed);
+                }
+            })?;
+            member.pass_done()?;
         }
         Ok(())
     })?;
-    let total = |values: Vec<AtomicU64>| {
-        pairwise(&values.into_iter().map(|bits| f64::from_bits(bits.into_inner())).collect::<Vec<_>>())
-    };
-    Ok(partial.into_iter().map(total).collect())
+    let values: Vec<f64> = partial.into_iter().map(|bits| f64::from_bits(bits.into_inner())).collect();
+    Ok(values.chunks(passes * cosets).map(pairwise).collect())
 }
 
 /// The recurrence behind [`crate::apply::chebyshev_sums`], on states of the right and least length.
@@ -206,10 +200,10 @@ pub fn chebyshev(
             let due = term & 1 == 0 || term + 1 == terms;
             for (number, pass) in action.passes.iter().enumerate() {
                 let mut buffer = (!pass.offsets.is_empty()).then(|| Buffer::new(pass));
-                let start = match (number, term) {
-                    (0, 1) => Start::Zero,
-                    (0, _) => Start::MinusOld,
-                    _ => Start::Old,
+                let old = match (number, term) {
+                    (0, 1) => Old::Dropped,
+                    (0, _) => Old::Subtracted,
+                    _ => Old::Added,
                 };
                 let gaining = number == last && due;
                 let mut gains: Vec<Gain<f64>> = Vec::with_capacity(sums.len());
@@ -230,7 +224,7 @@ pub fn chebyshev(
                         ahead.extend(arrays.map(|a| Ahead { next: place(pass, a, next, false), first: 0, step: 1 }));
                     }
                     let out = place(pass, write, rep, false);
-                    let ending = Ending::Store { out, start, halved: number == last && term == 1, gains: &gains };
+                    let ending = Ending::Store { out, old, halved: number == last && term == 1, gains: &gains };
                     // SAFETY: each coset belongs to one worker; the arrays are distinct, and `read` is only read.
                     unsafe {
                         let from = place(pass, read, rep, false);

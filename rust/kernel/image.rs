@@ -21,7 +21,7 @@ pub struct Turned<T> {
     pub imaginary: bool,
 }
 
-/// sum += own · result + source · state.
+/// sum += source · state + own · result.
 #[derive(Clone, Copy)]
 pub struct Gain<'a, T> {
     /// Where the sum lies.
@@ -32,15 +32,15 @@ pub struct Gain<'a, T> {
     pub source: Option<Turned<T>>,
 }
 
-/// What the sum of a tile starts with.
+/// What becomes of the numbers in the result's place. They are added last, so that they are rounded once.
 #[derive(Clone, Copy, PartialEq)]
-pub enum Start {
-    /// Nothing.
-    Zero,
-    /// What lies in the result's place.
-    Old,
-    /// Minus that.
-    MinusOld,
+pub enum Old {
+    /// They are overwritten.
+    Dropped,
+    /// They are added.
+    Added,
+    /// They are subtracted.
+    Subtracted,
 }
 
 /// What becomes of the result.
@@ -50,8 +50,8 @@ pub enum Ending<'a, T> {
     Store {
         /// Where it lies.
         out: Place<'a, T>,
-        /// What it starts with.
-        start: Start,
+        /// What becomes of the numbers there.
+        old: Old,
         /// Whether it is halved at the end.
         halved: bool,
         /// Sums that it enters.
@@ -128,7 +128,8 @@ impl<T: Real> VectorWork<T> for Image<'_, T> {
                 for ahead in ahead {
                     fetch::<V>(ahead, tile);
                 }
-                let (mut re, mut im) = start_of::<V>(&ending, base);
+                let zero = V::splat(T::default());
+                let (mut re, mut im) = ([zero; TILE], [zero; TILE]);
                 if pass.diagonal.is_some() {
                     add_diagonal::<V>(&mut re, &mut im, pass, &room.sums, source, base);
                 }
@@ -152,31 +153,6 @@ impl<T: Real> Addend<T> {
             entry |= (((base & mask).count_ones() ^ (rep & coset).count_ones()) as usize & 1) << j;
         }
         entry
-    }
-}
-
-/// What the registers start with.
-///
-/// # Safety
-/// As [`coset_image`].
-#[inline(always)]
-unsafe fn start_of<V: Vector>(ending: &Ending<V::Element>, base: usize) -> ([V; TILE], [V; TILE]) {
-    // SAFETY: by contract.
-    unsafe {
-        let zero = V::splat(V::Element::default());
-        let (mut re, mut im) = ([zero; TILE], [zero; TILE]);
-        if let Ending::Store { out, start, .. } = ending
-            && *start != Start::Zero
-        {
-            registers!(t => {
-                let address = out.address(base + t);
-                (re[t], im[t]) = pair::<V>(address);
-                if *start == Start::MinusOld {
-                    (re[t], im[t]) = (zero.sub(re[t]), zero.sub(im[t]));
-                }
-            });
-        }
-        (re, im)
     }
 }
 
@@ -310,25 +286,30 @@ unsafe fn finish<V: Vector>(
     // SAFETY: by contract.
     unsafe {
         match ending {
-            Ending::Store { out, halved, gains, .. } => {
+            Ending::Store { out, old, halved, gains } => {
                 let half = V::splat(V::Element::from_f64(0.5));
                 registers!(t => {
+                    let address = out.address(base + t);
                     let (mut a, mut b) = (re[t], im[t]);
+                    if *old != Old::Dropped {
+                        let (c, d) = pair::<V>(address);
+                        (a, b) = if *old == Old::Added { (a.add(c), b.add(d)) } else { (a.sub(c), b.sub(d)) };
+                    }
                     if *halved {
                         (a, b) = (half.mul(a), half.mul(b));
                     }
-                    let address = out.address(base + t);
                     let (first, second) = if out.interleaved { V::interleave(a, b) } else { (a, b) };
                     first.store(address);
                     second.store(address.add(lanes));
                     for gain in gains.iter() {
                         let address = gain.sum.address(base + t);
                         let (mut c, mut d) = pair::<V>(address);
-                        accumulate(&mut c, &mut d, V::splat(gain.own.value), a, b, gain.own.imaginary);
+                        // The earlier term first: partial sums are then those of the series.
                         if let Some(factor) = gain.source {
                             let (e, f) = pair::<V>(source.add((base + t) << (V::Element::LANE_BITS + 1)));
                             accumulate(&mut c, &mut d, V::splat(factor.value), e, f, factor.imaginary);
                         }
+                        accumulate(&mut c, &mut d, V::splat(gain.own.value), a, b, gain.own.imaginary);
                         c.store(address);
                         d.store(address.add(lanes));
                     }

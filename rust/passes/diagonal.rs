@@ -111,8 +111,8 @@ impl Sorted {
         Self { low_bits, high_size, low, flips, grouped, high_fixed, high_moving, scalars }
     }
 
-    /// Calls `take(pattern of flips, low coordinates, sum of the signed numbers)` for all entries of the low tables.
-    fn each_low_sum(&self, mut take: impl FnMut(usize, usize, f64)) {
+    /// Calls `take(pattern of flips, low coordinates, numbers with their signs)` for all entries of the low tables.
+    fn each_low_entry(&self, mut take: impl FnMut(usize, usize, &mut dyn Iterator<Item = f64>)) {
         let place = |flip: &Flip| self.flips.iter().position(|own| own == flip).map_or(0, |j| 1 << j);
         let bits: Vec<usize> = self.low.iter().map(|(_, signed)| place(&signed.flip)).collect();
         for pattern in 0..1usize << self.flips.len() {
@@ -120,7 +120,7 @@ impl Sorted {
                 let one = |((mask, signed), bit): (&(usize, Signed<f64>), &usize)| {
                     if is_odd(mask & index) ^ (bit & pattern != 0) { -signed.value } else { signed.value }
                 };
-                take(pattern, index, self.low.iter().zip(&bits).map(one).sum());
+                take(pattern, index, &mut self.low.iter().zip(&bits).map(one));
             }
         }
     }
@@ -208,9 +208,11 @@ impl<T: Real> Diagonal<T> {
         let sorted = Sorted::new(terms, space);
         let vectors = 1usize << (sorted.low_bits - T::LANE_BITS);
         let mut low = vec![T::Line::default(); (2 * vectors) << sorted.flips.len()];
-        sorted.each_low_sum(|pattern, index, angle| {
+        sorted.each_low_entry(|pattern, index, angles| {
             let line = 2 * (pattern * vectors + (index >> T::LANE_BITS));
-            let (lane, phase) = (index & ((1 << T::LANE_BITS) - 1), unit(angle));
+            let lane = index & ((1 << T::LANE_BITS) - 1);
+            // A product of phases, not the phase of a sum: huge angles then lose nothing.
+            let phase = angles.map(unit).reduce(|p, q| p * q).unwrap_or(Complex64::new(1.0, 0.0));
             low[line].as_mut()[lane] = T::from_f64(phase.re);
             low[line + 1].as_mut()[lane] = T::from_f64(phase.im);
         });
@@ -286,9 +288,9 @@ impl<T: Real> DiagonalSum<T> {
         let sorted = Sorted::new(terms, space);
         let vectors = 1usize << (sorted.low_bits - T::LANE_BITS);
         let mut low = vec![T::Line::default(); vectors << sorted.flips.len()];
-        sorted.each_low_sum(|pattern, index, value| {
+        sorted.each_low_entry(|pattern, index, values| {
             let lane = index & ((1 << T::LANE_BITS) - 1);
-            low[pattern * vectors + (index >> T::LANE_BITS)].as_mut()[lane] = T::from_f64(value);
+            low[pattern * vectors + (index >> T::LANE_BITS)].as_mut()[lane] = T::from_f64(values.sum());
         });
         let fixed = |high: usize| sorted.high_fixed.iter().map(|term| term.at(high, 0)).sum::<f64>();
         Self {

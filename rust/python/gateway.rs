@@ -102,21 +102,23 @@ pub fn run_checked<T: Send>(py: Python<'_>, work: impl FnOnce(Check) -> Result<T
 
 /// One look: signals first, then progress if it moved.
 fn watch(control: &Control, progress: Option<&Py<PyAny>>, raised: &mut Option<PyErr>, reported: &mut u64) {
+    let undisturbed = raised.is_none();
     Python::attach(|py| {
-        if let Err(interrupt) = py.check_signals() {
+        let mut stop = |failure: PyErr| {
             control.request_stop();
-            if raised.is_none() && interrupt.is_instance_of::<PyKeyboardInterrupt>(py) {
+            if raised.is_none() && failure.is_instance_of::<PyKeyboardInterrupt>(py) {
                 acknowledge(py);
             }
-            raised.get_or_insert(interrupt);
-        }
+            raised.get_or_insert(failure);
+        };
+        let signals = py.check_signals();
+        let calm = signals.is_ok();
+        signals.unwrap_or_else(&mut stop);
         let (done, total) = control.progress();
-        if let (Some(callback), true, None) = (progress, done != *reported, raised.as_ref()) {
+        if let (Some(callback), true, true) = (progress, done != *reported, calm && undisturbed) {
             *reported = done;
-            if let Err(failure) = callback.call1(py, (done, total)) {
-                control.request_stop();
-                *raised = Some(failure);
-            }
+            // Ctrl-C can also be heard inside the callback.
+            callback.call1(py, (done, total)).map(drop).unwrap_or_else(stop);
         }
     });
 }

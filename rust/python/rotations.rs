@@ -121,14 +121,22 @@ impl PyRotations {
         crate::cost::depth(&self.rotations)
     }
 
-    /// Σ |θ| over the rotations that the engine joins in pairs, for rounding bounds.
-    fn joined_angle_sum(&self) -> f64 {
-        let mut sum = 0.0;
+    /// Bounds on the rounding of all operations that the engine makes of the circuit, see
+    /// [`Operation::rounding`](crate::operation::Operation::rounding): in roundoffs of amplitudes, and of doubles.
+    fn rounding_units(&self) -> (f64, f64) {
+        let (mut units, mut angles) = (0.0, 0.0);
         self.rotations.for_each_list(&mut |list, times| {
-            let pairs = joined(list).into_iter().filter_map(|operation| Some((operation.first, operation.second?)));
-            sum += times as f64 * pairs.map(|(one, two)| one.angle.abs() + two.angle.abs()).sum::<f64>();
+            // Equal strings of repeats that are planned together may merge.
+            let together = times.min(crate::passes::UNROLLED_REPEATS) as f64;
+            for (own, sum) in joined(list).iter().map(|operation| operation.rounding()) {
+                units += times as f64 * own;
+                angles += times as f64 * sum;
+            }
+            if together > 1.0 {
+                angles += times as f64 * together * list.iter().map(|rotation| rotation.angle.abs()).sum::<f64>();
+            }
         });
-        sum
+        (units, angles)
     }
 
     /// Σ |θ|, for rounding bounds.

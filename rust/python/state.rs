@@ -14,6 +14,7 @@ use crate::evolve::evolve as evolve_state;
 use crate::kernel::Isa;
 use crate::kernel::lanes::Real;
 use crate::sums;
+use crate::terms::Terms;
 
 /// Evaluates an expression for either precision.
 macro_rules! either {
@@ -49,6 +50,15 @@ pub fn evolve(
     Ok((done.passes, done.workers))
 }
 
+/// Sets all amplitudes to zero, each worker its own share first.
+#[pyfunction]
+pub fn clear(py: Python<'_>, state: &Bound<'_, PyAny>, threads: usize) -> PyResult<()> {
+    let mut amplitudes = borrow(state)?;
+    either!(py, &mut amplitudes, state => {
+        py.detach(|| sums::clear(state, threads)).map_err(|error| to_python(py, error))
+    })
+}
+
 /// out ← operator |state>, both complex128.
 #[pyfunction]
 pub fn apply_terms(
@@ -66,15 +76,20 @@ pub fn apply_terms(
     })
 }
 
-/// `<state| operator |state>`.
+/// `<state| operator |state>` for each of several operators, in shared traversals.
 #[pyfunction]
-pub fn expectation(py: Python<'_>, terms: &PyTerms, state: &Bound<'_, PyAny>, threads: usize) -> PyResult<f64> {
+pub fn expectations(
+    py: Python<'_>,
+    operators: Vec<PyRef<'_, PyTerms>>,
+    state: &Bound<'_, PyAny>,
+    threads: usize,
+) -> PyResult<Vec<f64>> {
+    let operators: Vec<&Terms> = operators.iter().map(|own| &*own.terms).collect();
+    let strings = operators.iter().map(|terms| terms.strings().len()).sum::<usize>();
     let mut amplitudes = borrow(state)?;
     either!(py, &mut amplitudes, state => {
-        let weight = (state.len() * terms.terms.strings().len().max(1)) as u64;
-        run(py, weight, Spoils::Nothing, None, |control| {
-            Ok(apply::expectations(&[Action::new(&terms.terms, 1.0, 0.0)], state, threads, control)?[0])
-        })
+        let weight = (state.len() as u64).saturating_mul(strings.max(1) as u64);
+        run(py, weight, Spoils::Nothing, None, |control| apply::expectations(&operators, state, threads, control))
     })
 }
 

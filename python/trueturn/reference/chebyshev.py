@@ -8,7 +8,7 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
-from trueturn import _memory, _native
+from trueturn import _allocation, _memory, _native
 from trueturn.operator import Operator
 from trueturn.reference.certificate import Certificate
 from trueturn.reference.schedule import Schedule, schedule
@@ -96,18 +96,20 @@ def _carry_out(
     threads: int,
     progress: Tick | None,
 ) -> Iterator[Step]:
-    current: Vector = start.astype(np.complex128)
-    previous = np.empty_like(current)
+    current: Vector = _allocation.amplitudes(start.size, np.complex128)
+    np.copyto(current, start)
+    previous = _allocation.amplitudes(start.size, np.complex128)
     sums: list[Vector] = []
     scale = 2.0 / plan.half_width
     done = 0
     for expansion in plan.expansions:
-        sums.extend(np.empty_like(current) for _ in range(len(expansion.targets) - len(sums)))
+        missing = range(len(expansion.targets) - len(sums))
+        sums.extend(_allocation.amplitudes(start.size, np.complex128) for _ in missing)
         used = sums[: len(expansion.targets)]
 
-        def tick(passes: int, _total: int, done: int = done) -> None:
+        def tick(passes: int, total: int, done: int = done, degree: int = expansion.degree) -> None:
             if progress is not None:
-                progress(min(done + passes, plan.applications), plan.applications)
+                progress(done + degree * passes // max(total, 1), plan.applications)
 
         _native.chebyshev_sums(
             operator._terms,
