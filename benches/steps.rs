@@ -2,17 +2,18 @@
 //!
 //! `cargo bench --no-default-features --bench steps -- [QUBITS ...]` prints, for one and two threads, the best time of each
 //! list as a multiple of S1, the one-thread loop that multiplies every amplitude by a constant, the time of the same list
-//! one rotation at a time, and the time of a step among 64 in a row.
+//! one rotation at a time, the time of a step among eight in a row, and the arithmetic limit: the time that its products and
+//! sums alone take one thread, at the rate at which registers multiply and add in the same run.
 
 mod clock;
 mod lists;
 
 use std::env;
 
-use _native::evolve::evolve;
+use _native::evolve::{Planned, evolve};
 use _native::rotations::{Rotation, Rotations};
 use _native::team::Control;
-use clock::{aligned, best, room, sizes, sweep};
+use clock::{aligned, best, peak, room, sizes, sweep};
 use num_complex::Complex64;
 
 fn main() {
@@ -22,11 +23,12 @@ fn main() {
 fn report(qubits: u32) {
     let mut room = room(qubits);
     let state = aligned(&mut room);
-    let sweep = sweep(qubits, state);
+    let sweep = sweep(state);
+    let peak = peak::<f64>();
     let only = env::var("TRUETURN_BENCH_ONLY").unwrap_or_default();
     println!(
-        "{:<28}{:>10}{:>8}{:>9}{:>9}{:>11}{:>11}{:>11}",
-        "list", "rotations", "passes", "1 thread", "2", "in a row 1", "2", "unfused 1"
+        "{:<28}{:>10}{:>8}{:>9}{:>9}{:>11}{:>8}{:>11}{:>12}",
+        "list", "rotations", "passes", "1 thread", "2", "in a row 1", "2", "unfused 1", "arithmetic"
     );
     for (name, list) in lists::steps(qubits).into_iter().filter(|(name, _)| name.contains(&only)) {
         let once = Rotations::from_list(qubits, list.clone(), 0.0).expect("strings within the qubits");
@@ -43,8 +45,13 @@ fn report(qubits: u32) {
         });
         let single = unfused(state, &list);
         print!("{name:<28}{:>10}{passes:>8}", list.len());
-        print!("{:>9.2}{:>9.2}{:>11.2}{:>11.2}", steps[0] / sweep, steps[1] / sweep, rows[0] / sweep, rows[1] / sweep);
-        println!("{:>11.1}", single / sweep);
+        let mut operations = 0.0;
+        Planned::<f64>::circuit(&once).each_list(1, &mut |passes, _| {
+            operations += passes.iter().map(|pass| pass.work.arithmetic()).sum::<f64>();
+        });
+        let arithmetic = operations * state.len() as f64 / peak;
+        print!("{:>9.2}{:>9.2}{:>11.2}{:>8.2}", steps[0] / sweep, steps[1] / sweep, rows[0] / sweep, rows[1] / sweep);
+        println!("{:>11.1}{:>12.2}", single / sweep, arithmetic / sweep);
     }
 }
 

@@ -69,6 +69,15 @@ impl<T: Real> Planned<T> {
         once.saturating_mul(self.repeat)
     }
 
+    /// Calls `take(passes, times)` for each planned list, with the number of times that it runs in all (saturating).
+    pub fn each_list(&self, times: u64, take: &mut impl FnMut(&[Pass<T>], u64)) {
+        let times = times.saturating_mul(self.repeat);
+        match &self.content {
+            Content::Passes(passes) => take(passes, times),
+            Content::Nested(blocks) => blocks.iter().for_each(|block| block.each_list(times, take)),
+        }
+    }
+
     /// Carries everything out; `last` says that nothing follows.
     fn carry_out(&self, carrier: &mut Carrier<T>, last: bool) -> Result<()> {
         for round in 1..=self.repeat {
@@ -195,6 +204,68 @@ mod tests {
                 // Both sides round at most 5 u a rotation (docs of the Python engine bound), 40 rotations, u = 1.1e-16.
                 assert!(distance < 2.0 * 40.0 * 5.0 * 1.2e-16, "{qubits} qubits: {distance:e}");
             }
+        }
+    }
+
+    /// Bonds of all kinds, hopping with strings between, excitations, couplings of all pairs, in both orders.
+    fn structured_list(qubits: u32) -> Vec<Rotation> {
+        let mut list = vec![];
+        let mut push = |x: u128, z: u128, angle: f64| list.push(Rotation { string: PauliString { x, z }, angle });
+        for q in 0..qubits {
+            let partner = (q + 1 + q % 3) % qubits;
+            let bond = 1u128 << q | 1u128 << partner;
+            let between = ((1u128 << q.max(partner)) - 1) & !((2u128 << q.min(partner)) - 1);
+            match q % 5 {
+                0 => [(bond, 0, 0.3), (bond, bond, 0.3), (0, bond, 0.3)].map(|(x, z, a)| push(x, z, a)),
+                1 => [(0, bond, 0.2), (bond, bond, 0.4), (bond, 0, -0.3)].map(|(x, z, a)| push(x, z, a)),
+                2 => [(bond, between, 0.7), (bond, between | bond, 0.7), (0, bond, 2.0)].map(|(x, z, a)| push(x, z, a)),
+                3 => [(bond, 1 << q, 0.4), (bond, 1 << partner, -0.4), (1 << q, 0, 1.4)].map(|(x, z, a)| push(x, z, a)),
+                _ => [(bond, 0, 1.2), (bond, bond, -0.4), (0, bond, 0.9)].map(|(x, z, a)| push(x, z, a)),
+            };
+        }
+        for a in 0..qubits {
+            (0..a).for_each(|b| push(0, 1 << a | 1 << b, 0.01 * f64::from(a + b)));
+        }
+        for k in 0..8u128 {
+            let ends = 1u128 | 1 << (qubits / 3) | 1 << (qubits / 2) | 1 << (qubits - 1);
+            let own = [1u128, 1 << (qubits / 3), 8];
+            let z = (0..3).filter(|j| k >> j & 1 == 1).fold(0, |z, j| z ^ own[j]);
+            push(ends, z, 0.1);
+        }
+        let back: Vec<Rotation> = list.iter().rev().copied().collect();
+        list.into_iter().chain(back).collect()
+    }
+
+    #[test]
+    fn structured_lists_do_what_the_twin_does_and_keep_the_norm() {
+        for qubits in [6, 9, 12, 16, 17] {
+            let list = structured_list(qubits);
+            let start = random_state(qubits, 11);
+            let mut slow = start.clone();
+            list.iter().for_each(|rotation| crate::twin::rotate(&mut slow, rotation));
+            let mut fast = start.clone();
+            let circuit = Rotations::from_list(qubits, list.clone(), 0.0).unwrap();
+            evolve(&mut fast, &circuit, 2, &Control::default()).unwrap();
+            let distance = fast.iter().zip(&slow).map(|(a, b)| (a - b).norm_sqr()).sum::<f64>().sqrt();
+            assert!(distance < 2e-16 * list.len() as f64 + 1e-14, "{qubits} qubits: {distance:e}");
+            let norm = |state: &[Complex64]| state.iter().map(|a| a.norm_sqr()).sum::<f64>();
+            assert!((norm(&fast) / norm(&start) - 1.0).abs() < 1e-14 * 2.0, "{qubits} qubits");
+        }
+    }
+
+    #[test]
+    fn repeats_planned_together_do_what_single_ones_do() {
+        let (qubits, list) = (16, structured_list(16)[..60].to_vec());
+        let step = Rotations::from_list(qubits, list, 0.1).unwrap();
+        let start = random_state(qubits, 4);
+        for repeat in [1u64, 3, 4, 7] {
+            let (mut one_by_one, mut at_once) = (start.clone(), start.clone());
+            for _ in 0..repeat {
+                evolve(&mut one_by_one, &step, 1, &Control::default()).unwrap();
+            }
+            evolve(&mut at_once, &step.times(repeat).unwrap(), 1, &Control::default()).unwrap();
+            let distance = one_by_one.iter().zip(&at_once).map(|(a, b)| (a - b).norm_sqr()).sum::<f64>().sqrt();
+            assert!(distance < repeat as f64 * (2.0 * 2e-16 * 61.0) + 2e-14, "{repeat}: {distance:e}");
         }
     }
 

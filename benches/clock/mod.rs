@@ -1,8 +1,14 @@
 //! Best-of-several times, and the sweep that they are compared with.
 
+// Each bench uses a part.
+#![allow(dead_code)]
+
 use std::time::Instant;
 
-use num_complex::Complex64;
+use _native::kernel::Isa;
+use _native::kernel::lanes::Real;
+use _native::kernel::peak::arithmetic;
+use num_complex::Complex;
 
 /// Seconds of the fastest of several runs.
 pub fn best(runs: usize, mut work: impl FnMut()) -> f64 {
@@ -16,24 +22,30 @@ pub fn best(runs: usize, mut work: impl FnMut()) -> f64 {
 
 /// Room for a state whose first amplitude can lie on a cache line, as the package allocates states; see [`aligned`]. Large
 /// pages are up to the allocator: `GLIBC_TUNABLES=glibc.malloc.hugetlb=1` asks for them.
-pub fn room(qubits: u32) -> Vec<Complex64> {
-    vec![Complex64::new(0.0, 0.0); (1 << qubits) + 4]
+pub fn room<T: Real>(qubits: u32) -> Vec<Complex<T>> {
+    vec![Complex::new(T::default(), T::default()); (1 << qubits) + SPARE]
 }
 
+/// Amplitudes of a cache line, at most.
+const SPARE: usize = 8;
+
 /// The state inside its room: |0…0>.
-pub fn aligned(room: &mut [Complex64]) -> &mut [Complex64] {
+pub fn aligned<T: Real>(room: &mut [Complex<T>]) -> &mut [Complex<T>] {
     let start = room.as_ptr().align_offset(64);
-    let end = room.len() - 4 + start;
+    let end = room.len() - SPARE + start;
     let state = &mut room[start..end];
-    state[0].re = 1.0;
+    state[0].re = T::from_f64(1.0);
     state
 }
 
 /// S1 in seconds: one thread multiplies every amplitude by a number, in place, in a plain loop. Prints it.
-pub fn sweep(qubits: u32, state: &mut [Complex64]) -> f64 {
+pub fn sweep<T: Real>(state: &mut [Complex<T>]) -> f64 {
+    let qubits = state.len().ilog2();
     let seconds = best(9, || {
-        let by = std::hint::black_box(1.0);
-        state.iter_mut().for_each(|amplitude| *amplitude *= by);
+        let by = std::hint::black_box(T::from_f64(1.0));
+        for amplitude in state.iter_mut() {
+            (amplitude.re, amplitude.im) = (amplitude.re * by, amplitude.im * by);
+        }
     });
     println!(
         "{qubits} qubits: S1 = {:.3} ms, {:.3} ns an amplitude",
@@ -41,6 +53,15 @@ pub fn sweep(qubits: u32, state: &mut [Complex64]) -> f64 {
         1e9 * seconds / state.len() as f64
     );
     seconds
+}
+
+/// Products and sums of reals that one thread does in a second, in registers. Prints it with the instruction set.
+pub fn peak<T: Real>() -> f64 {
+    let isa = Isa::chosen().expect("a known instruction set");
+    let mut done = 0;
+    let seconds = best(5, || done = arithmetic::<T>(isa, 2_000_000));
+    println!("{}: {:.1} G real operations a second on one thread", isa.name(), 1e-9 * done as f64 / seconds);
+    done as f64 / seconds
 }
 
 /// The sizes on the command line, or the usual ones.

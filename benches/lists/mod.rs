@@ -1,5 +1,8 @@
 //! The lists of rotations that the benches run: one Strang step each of Hamiltonians from the literature, and random strings.
 
+// Each bench uses a part.
+#![allow(dead_code)]
+
 use _native::pauli::PauliString;
 use _native::rotations::Rotation;
 

@@ -17,6 +17,7 @@ from trueturn.formulas.search_target import Instance, Target
 from trueturn.ladders import saved_gates
 from trueturn.operator import Operator
 from trueturn.partition import Partition
+from trueturn.pass_plan import MemoryPass, PassPlan
 from trueturn.reference import Certificate, Reference, reference
 from trueturn.rotations import Rotations
 from trueturn.state import State
@@ -36,8 +37,10 @@ __all__ = [
     "FoundFormula",
     "Improved",
     "Instance",
+    "MemoryPass",
     "Operator",
     "Partition",
+    "PassPlan",
     "Processed",
     "Reference",
     "Rotations",

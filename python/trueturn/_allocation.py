@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import mmap
 from typing import Any
 
@@ -32,10 +33,8 @@ def amplitudes(count: int, dtype: npt.DTypeLike) -> npt.NDArray[Any]:
     else:
         memory = mmap.mmap(-1, size + boundary)
         if hasattr(mmap, "MADV_HUGEPAGE"):
-            try:
+            with contextlib.suppress(OSError):  # a kernel without them
                 memory.madvise(mmap.MADV_HUGEPAGE)
-            except OSError:  # a kernel without them
-                pass
         room = np.frombuffer(memory, dtype=np.uint8)
     start = -room.ctypes.data % boundary
     array = room[start : start + size].view(kind)

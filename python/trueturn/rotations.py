@@ -13,6 +13,7 @@ import numpy.typing as npt
 from trueturn import _native
 from trueturn.errors import RotationError
 from trueturn.operator import Operator
+from trueturn.pass_plan import PassPlan, pass_plan
 
 __all__ = ["Block", "Rotations"]
 
@@ -181,6 +182,28 @@ class Rotations:
         A rotation of weight w holds its qubits for 2(w-1) gates in a row; it starts as soon as all of them are free.
         """
         return self._circuit.two_qubit_depth()
+
+    def plan(self, dtype: npt.DTypeLike = np.complex128) -> PassPlan:
+        """Show how `State.apply` will carry the circuit out.
+
+        Passes over the state, rotations in each, and the time that they should take on one thread. Costs planning, and at the
+        first call some tens of milliseconds to measure this machine.
+
+        Raises
+        ------
+        ArgumentError
+            The circuit acts on more than 62 qubits.
+
+        Examples
+        --------
+        >>> import trueturn as tt
+        >>> ring = tt.model.heisenberg(tt.lattice.ring(20), 1.0)
+        >>> step = tt.formula("strang").rotations(tt.Partition.of(ring, "bond"), 0.1, 1)
+        >>> plan = step.plan()
+        >>> plan.rotations, plan.passes
+        (90, 3)
+        """
+        return pass_plan(self._circuit, dtype)
 
     def rounding_bound(self, angle_roundings: int = 0, unit: float = 2.0**-53) -> float:
         """Return a bound on the 2-norm error that rounding adds when a unit vector is evolved.

@@ -305,9 +305,7 @@ class State:
         _require("operator", operator, Operator, "make one from text: Operator('Z_0', qubits=…)")
         return self.expectations([operator], threads=threads).item()
 
-    def expectations(
-        self, operators: Sequence[Operator], *, threads: int | None = None
-    ) -> npt.NDArray[np.float64]:
+    def expectations(self, operators: Sequence[Operator], *, threads: int | None = None) -> npt.NDArray[np.float64]:
         """Return <ψ|operator|ψ> for each of several operators, shape (len(operators),).
 
         They share the traversals of the state: two or three for all of them together, whatever their number. For the

@@ -12,6 +12,7 @@
 //! | [`carry`] | the passes of a circuit over a state |
 //! | [`image`], [`act`] | sums of an operator's terms; applications, expectations and the Chebyshev recurrence |
 //! | [`reduce`] | norms, overlaps and distances: plain loops, left to the compiler |
+//! | [`peak`] | the arithmetic limit, for benches |
 //! | [`shared`] | one array that several workers write, each its own part |
 //!
 //! All unsafe code of the crate is in this folder: calls into feature-enabled functions, loads and stores of vectors, and the
@@ -22,6 +23,7 @@ pub mod bodies;
 pub mod carry;
 pub mod image;
 pub mod lanes;
+pub mod peak;
 pub mod reduce;
 pub mod shared;
 pub mod tile;

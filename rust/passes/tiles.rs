@@ -198,6 +198,17 @@ impl<T: Real> Work<T> {
         }
     }
 
+    /// Products and sums of reals for each amplitude, on average.
+    pub fn arithmetic(&self) -> f64 {
+        let runs = self.stages.iter().flat_map(|stage| &stage.runs);
+        runs.flat_map(|run| &run.operations).map(|operation| operation.arithmetic(&self.diagonals)).sum()
+    }
+
+    /// Number of operations on tiles.
+    pub fn operations(&self) -> usize {
+        self.stages.iter().flat_map(|stage| &stage.runs).map(|run| run.operations.len()).sum()
+    }
+
     /// Number of runs.
     pub fn runs(&self) -> usize {
         self.stages.iter().map(|stage| stage.runs.len()).sum()
@@ -209,6 +220,25 @@ fn is_odd(masked: usize) -> bool {
 }
 
 impl<T: Real> TileOperation<T> {
+    /// Products and sums of reals for each amplitude, on average.
+    fn arithmetic(&self, diagonals: &[Diagonal<T>]) -> f64 {
+        match self.form {
+            // Half of the amplitudes, in pairs: 4 sums, a product of complex numbers (6), 2 sums.
+            Form::Exchange => 0.5 * 0.5 * 12.0,
+            // Half in pairs with 8 sums and two complex products, half with 4 operations each.
+            Form::Bond => 0.5 * 0.5 * 20.0 + 0.5 * 4.0,
+            Form::Mix | Form::Turn => 4.0,
+            Form::Table => {
+                let entries = 1usize << self.masks.len();
+                6.0 * (1.0 - f64::from(self.idle.count_ones()) / entries as f64)
+            }
+            Form::LaneExchange => 10.0,
+            Form::Complex => 14.0,
+            Form::Scale => 6.0,
+            Form::Diagonal => 12.0 + 8.0 * diagonals[self.diagonal].groups.len() as f64,
+        }
+    }
+
     fn plain(form: Form) -> Self {
         Self {
             form,

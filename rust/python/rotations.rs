@@ -5,6 +5,8 @@ use pyo3::prelude::*;
 
 use super::error::to_python;
 use crate::error::{Error, Result};
+use crate::evolve::Planned;
+use crate::kernel::lanes::Real;
 use crate::operation::joined;
 use crate::pauli::PauliString;
 use crate::rotations::{Body, Rotation, Rotations};
@@ -121,6 +123,12 @@ impl PyRotations {
         crate::cost::depth(&self.rotations)
     }
 
+    /// What the engine makes of the circuit: for each planned list the times that it runs, and for each of its passes the
+    /// rotations, the dimension of its cosets, whether these are contiguous, its runs over tiles and its operations.
+    fn passes(&self, single: bool) -> Vec<PlannedList> {
+        if single { planned_lists::<f32>(&self.rotations) } else { planned_lists::<f64>(&self.rotations) }
+    }
+
     /// Bounds on the rounding of all operations that the engine makes of the circuit, see
     /// [`Operation::rounding`](crate::operation::Operation::rounding): in roundoffs of amplitudes, and of doubles.
     fn rounding_units(&self) -> (f64, f64) {
@@ -147,4 +155,19 @@ impl PyRotations {
         });
         sum
     }
+}
+
+/// Times, and the figures of each pass.
+type PlannedList = (u64, Vec<(usize, u32, bool, usize, usize)>);
+
+fn planned_lists<T: Real>(rotations: &Rotations) -> Vec<PlannedList> {
+    let mut found = vec![];
+    Planned::<T>::circuit(rotations).each_list(1, &mut |passes, times| {
+        let figures = passes.iter().map(|pass| {
+            let contiguous = pass.offsets.is_empty();
+            (pass.rotations, pass.space.dimension(), contiguous, pass.work.runs(), pass.work.operations())
+        });
+        found.push((times, figures.collect()));
+    });
+    found
 }
