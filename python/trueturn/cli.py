@@ -17,6 +17,8 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
+from trueturn.commands.bound import bound
+
 if TYPE_CHECKING:
     from trueturn.audit.job import Job, Progress
     from trueturn.partition import Partition
@@ -40,6 +42,9 @@ def commands() -> None:
 
     Exit status: 0 meets, 1 misses, 4 undecided, 2 bad input, 3 refused for memory, 130 interrupted.
     """
+
+
+commands.add_command(bound)
 
 
 @commands.command()

@@ -49,7 +49,7 @@ class Job:
     operator : Operator
         The Hamiltonian.
     start : Start
-        The start state; `start.state()` makes it.
+        The start state; `start.state()` makes it. Neither sites nor file where the job was read without one.
     times : tuple of float
         Ascending and above zero.
     tolerance : float
@@ -140,7 +140,7 @@ class Job:
         )
 
 
-def read_job(path: str | Path, *, candidates_required: bool = True) -> Job:
+def read_job(path: str | Path, *, candidates_required: bool = True, start_required: bool = True) -> Job:
     """Read and check a job file.
 
     Parameters
@@ -149,6 +149,8 @@ def read_job(path: str | Path, *, candidates_required: bool = True) -> Job:
         The TOML file. Paths in it are taken from its own folder.
     candidates_required : bool
         Whether a job without candidates is an error; a reference needs none.
+    start_required : bool
+        Whether a job without `[start]` is an error; bounds need none.
 
     Returns
     -------
@@ -172,7 +174,7 @@ def read_job(path: str | Path, *, candidates_required: bool = True) -> Job:
     except OSError as error:
         message = f"job file: cannot be read ({error.strerror or error}); check the path and its permissions"
         raise JobError(message, path=str(path), key="") from error
-    return parse_job(text, path, candidates_required)
+    return parse_job(text, path, candidates_required, start_required)
 
 
 def template() -> str:
@@ -191,7 +193,7 @@ def built_in_job() -> Job:
     return parse_job(template(), None, True)
 
 
-def parse_job(text: str, path: Path | None, candidates_required: bool) -> Job:
+def parse_job(text: str, path: Path | None, candidates_required: bool, start_required: bool = True) -> Job:
     """Check the text of a job file; `path` is where it came from."""
     shown = str(path) if path is not None else ""
     file = Table(parse_toml(text, shown), "", shown)
@@ -201,11 +203,12 @@ def parse_job(text: str, path: Path | None, candidates_required: bool) -> Job:
         ("start", "a section [start]"),
         ("target", "[target]"),
     ):
-        file.require(key, example)
+        if key != "start" or start_required:
+            file.require(key, example)
     folder = path.parent if path is not None else Path()
 
     operator = read_system(file.table("system"), folder)
-    start = read_start(file.table("start"), operator.qubits, folder)
+    start = read_start(file.table("start"), operator.qubits, folder) if "start" in file else Start(None, None)
     target = file.table("target")
     target.only(("times", "time", "tolerance", "quantity", "readout", "relative_to", "observables"))
     times = read_times(target)

@@ -1,0 +1,1 @@
+"""Commands of the command line that stand in files of their own."""
