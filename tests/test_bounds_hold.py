@@ -121,6 +121,12 @@ def test_on_two_parts_the_expansion_of_strang_is_proposition_10():
     assert found[1].remainder / 3 == pytest.approx(outer.value / 12 + inner.value / 24, rel=1e-10)
 
 
+def test_run_backwards_the_expansion_of_lie_is_proposition_9():
+    step, _ = expanded(tt.formula("lie"), circuits.P3)
+    back = expansions(step[::-1], circuits.P3.operator(), 1, norms.thorough, norms.thorough)
+    assert back[0].remainder / 2 == pytest.approx(tt.bound("lie", circuits.P3, 1.0, 1).value, rel=1e-10)
+
+
 def test_order_conditions_come_out_as_rounding_and_the_leading_term_does_not():
     for name in ("strang", "suzuki-4", "yoshida-6"):
         formula = tt.formula(name)
