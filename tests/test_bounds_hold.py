@@ -33,7 +33,9 @@ def errors(formula, partition, time, steps):
 
 def check(formula, partition, time, steps, ratios):
     for inputs, error in zip(("worst", "random"), errors(formula, partition, time, steps), strict=True):
-        for found in tt.bound(formula, partition, time, steps, inputs=inputs).alternatives:
+        first = tt.bound(formula, partition, time, steps, inputs=inputs)
+        # All that apply, except for long formulas, whose sums over all tuples take longest.
+        for found in first.alternatives if formula.order <= 4 else (first,):
             assert error <= found.value + DENSE_ROUNDING, found
             if error > 1e3 * DENSE_ROUNDING:
                 ratios.setdefault((inputs, found.theorem.split(" (cut")[0]), []).append(error / found.value)

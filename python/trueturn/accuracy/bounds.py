@@ -165,8 +165,9 @@ def bound(
 
     All hold for every unitarily invariant norm; with ‖·‖_F/√(2^n), exact on sums of strings, they are those for random
     inputs [2]_. Nested brackets come from the Pauli algebra and norms from what `Bound.route` names, so a value is
-    an upper bound of the theorem's own. The weights of the formula count as the
-    doubles that they are in the expansion; theorems that assume exact order conditions get an allowance for them. Derivations: docs/error-bounds.md.
+    an upper bound of the theorem's own. The weights of the formula count as the doubles that they are in the
+    expansion; theorems that assume exact order conditions get an allowance for them. Derivations:
+    docs/error-bounds.md.
 
     References
     ----------

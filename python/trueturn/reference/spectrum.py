@@ -194,7 +194,7 @@ def _times_power(value: float, exponent: int, outward: float) -> float:
     return result if math.ldexp(result, -exponent) == value else math.nextafter(result, outward)
 
 
-def _by_groups(terms: Sequence[Scaled], effort: float) -> tuple[float, float]:
+def _by_groups(terms: Sequence[Scaled], effort: float = 1.0) -> tuple[float, float]:
     if len(terms) > GROUP_TERMS:
         return -triangle(terms), triangle(terms)
     x_masks, z_masks, coefficients = zip(*terms, strict=True)
@@ -223,7 +223,7 @@ def _by_groups(terms: Sequence[Scaled], effort: float) -> tuple[float, float]:
     return sum_down(lows), sum_up(highs)
 
 
-def _by_clusters(terms: Sequence[Scaled], qubits: int, effort: float) -> tuple[float, float]:
+def _by_clusters(terms: Sequence[Scaled], qubits: int, effort: float = 1.0) -> tuple[float, float]:
     size = 10 if qubits >= 18 else 8 if qubits >= 13 else 6
     while True:
         clusters, left_over = _clusters.plan(terms, size)
