@@ -182,7 +182,7 @@ def bound(
     >>> parts = tt.Partition([tt.Operator("X_0"), tt.Operator("Z_0")])
     >>> found = tt.bound("strang", parts, time=0.1, steps=1)
     >>> round(found.value, 9), found.route
-    (0.0005, 'dense')
+    (0.0005, 'triangle inequality')
     >>> tt.bound("suzuki-4", parts, time=0.1, steps=1).value < 1e-6
     True
     """
