@@ -199,3 +199,57 @@ pub fn inverted(moves: &[u32]) -> Vec<u32> {
     moves.iter().enumerate().for_each(|(qubit, &target)| back[target as usize] = qubit as u32);
     back
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    /// Reproducible turns: the constants of Knuth's linear congruential MMIX generator.
+    fn turns(qubits: u32, count: usize, seed: u64) -> Vec<Turn> {
+        let mut state = seed;
+        let mut next = || {
+            state = state.wrapping_mul(6364136223846793005).wrapping_add(1442695040888963407);
+            u128::from(state >> 24)
+        };
+        let inside = (1u128 << qubits) - 1;
+        let mut one = || Turn {
+            string: PauliString {
+                x: (next() | next() << 40 | next() << 80) & inside,
+                z: (next() | next() << 50) & inside,
+            },
+            turns: (next() & 7) as u8,
+        };
+        (0..count).map(|_| one()).collect()
+    }
+
+    #[test]
+    fn a_product_and_its_inverse_are_the_identity_with_phase_zero() {
+        for (qubits, seed) in [(1, 1), (3, 2), (20, 3), (100, 4)] {
+            let mut clifford = Clifford::identity(qubits);
+            let list = turns(qubits, 60, seed);
+            list.iter().for_each(|&turn| clifford.turn(turn));
+            let forward = clifford.clone();
+            list.iter().rev().for_each(|turn| clifford.turn(turn.inverse()));
+            assert_eq!(clifford.scalar_phase(), Some(0));
+            let (synthesis, phase) = forward.turns();
+            let mut made = Clifford::identity(qubits);
+            synthesis.iter().for_each(|&turn| made.turn(turn));
+            made.phase(phase);
+            assert_eq!(made, forward);
+            made.phase(1);
+            assert_ne!(made, forward);
+        }
+    }
+
+    #[test]
+    fn the_hadamard_gate_squares_to_one() {
+        let z = PauliString { x: 0, z: 1 };
+        let x = PauliString { x: 1, z: 0 };
+        let mut clifford = Clifford::identity(1);
+        for _ in 0..2 {
+            [z, x, z].into_iter().for_each(|string| clifford.turn(Turn { string, turns: 1 }));
+            clifford.phase(2);
+        }
+        assert_eq!(clifford.scalar_phase(), Some(0));
+    }
+}

@@ -17,6 +17,7 @@ mod expressions;
 mod gates;
 mod lexer;
 mod library;
+mod loops;
 mod modifiers;
 mod parser;
 mod powers;
@@ -40,7 +41,7 @@ use reader::{Pulse, Reader, Stop};
 use refusal::Refusal;
 
 /// Gates that any text may make beyond its own, and that each byte of it adds.
-const EXPANSION: (u64, u64) = (1 << 20, 16);
+const EXPANSION: (u64, u64) = (1 << 18, 16);
 
 /// How to read.
 #[derive(Clone, Debug, Default)]
@@ -53,7 +54,7 @@ pub struct Options<'o> {
     pub prepare: Option<Named>,
     /// Gates that change the basis before measurement.
     pub basis: Option<Named>,
-    /// Gates that loops, bodies and modifiers may make; None is 2^20 and 16 for each byte.
+    /// Gates that loops, bodies and modifiers may make; None is 2^18 and 16 for each byte.
     pub limit: Option<u64>,
 }
 

@@ -206,7 +206,7 @@ class Rotations:
         Raises
         ------
         RotationError
-            `k` is not a whole number from 0 to 2**63, or a frame would write out more than 2**21 rotations.
+            `k` is not a whole number from 0 to 2**63, or a frame would write out more than about 2**19 rotations.
         """
         count = _whole(k)
         if count is None or not 0 <= count <= 2**63:

@@ -183,7 +183,7 @@ impl Witness {
         }
         // The linear part: l (u ⊕ s) = l u + l s - 2 l u s, and s = parity or 1 - parity.
         let share = if flip {
-            self.shift_phase(2 * linear & 7);
+            self.shift_phase((2 * linear) & 7);
             (4 - linear) & 3
         } else {
             linear

@@ -12,15 +12,8 @@ use crate::qasm::{Keep, Named, Options, read};
 type Range = (bool, u64, u64);
 
 /// What was read: preparation, evolution, basis; version; registers; gates; notes; marks; what stayed a rotation.
-type Found = (
-    [PyRotations; 3],
-    u32,
-    Vec<(String, u32, u32)>,
-    u64,
-    Vec<(u32, String)>,
-    Vec<(u32, u32, String)>,
-    &'static str,
-);
+type Found =
+    ([PyRotations; 3], u32, Vec<(String, u32, u32)>, u64, Vec<(u32, String)>, Vec<(u32, u32, String)>, &'static str);
 
 const WAYS: [(&str, Keep); 3] =
     [("clifford", Keep::Nothing), ("diagonal", Keep::Diagonal), ("rotations", Keep::Rotations)];

@@ -75,7 +75,8 @@ pub struct Builder {
 /// The nearest multiple of π/4, if the angle is as close as rounding explains: 4 units in the last place.
 fn eighths(angle: f64) -> Option<u8> {
     let turns = (angle / FRAC_PI_4).round();
-    let near = turns != 0.0 && turns.abs() < 1e6 && (angle - turns * FRAC_PI_4).abs() <= 4.0 * f64::EPSILON * angle.abs();
+    let near =
+        turns != 0.0 && turns.abs() < 1e6 && (angle - turns * FRAC_PI_4).abs() <= 4.0 * f64::EPSILON * angle.abs();
     near.then(|| (turns as i64).rem_euclid(8) as u8)
 }
 
@@ -173,7 +174,7 @@ impl Builder {
             Move::Angle(x, z, weights) => {
                 let angle = angle(weights);
                 // A gate of one angle, such as rz(0), is kept as written; parts of others that vanish are none.
-                if angle != 0.0 || weights == &HALF {
+                if angle != 0.0 || (parameters.len() == 1 && weights == &HALF) {
                     self.rotate(string(*x, *z), angle, parameters.is_empty());
                 }
             }

@@ -10,6 +10,8 @@ use super::modifiers::{Applied, Product, controls, modified};
 use super::refusal::{Place, Refusal};
 use super::syntax::{Call, Definition, Expression, Modifier, Statement};
 
+/// Rotations that one gate with modifiers may take: fifteen controls.
+const MOST_ROTATIONS: u64 = 1 << 16;
 /// Gates that call each other, counted from the innermost.
 const DEEPEST: u32 = 200;
 
@@ -128,9 +130,9 @@ impl<'a> Gates<'a> {
         let remedy = if self.library.contains_key(name) && !(self.stdgates || self.qelib1) {
             format!("it is in {own}, so add: include \"{own}\";")
         } else if let Some(near) = self.nearest(name) {
-            format!("it is not in {own} and has no definition before this line; did you mean {near}?")
+            format!("it is not in {own}; define it before this line, or did you mean {near}?")
         } else {
-            format!("it is not in {own}, so define it before this line")
+            format!("it is not in {own}; define it before this line")
         };
         Err(place.refuse(format!("no gate of this name ({name}); {remedy}")))
     }
@@ -160,7 +162,8 @@ impl<'a> Gates<'a> {
                 Statement::Call(call) => call,
                 Statement::Barrier(_) | Statement::Remark(_) => continue,
                 _ => {
-                    let message = format!("the body of gate {name} holds something else than gates ({name}); take it out");
+                    let message =
+                        format!("the body of gate {name} holds something else than gates ({name}); take it out");
                     return Err(place.refuse(message));
                 }
             };
@@ -251,12 +254,18 @@ impl<'a> Gates<'a> {
         self.plain(&mut builder, gate, arguments, &names, false, place)?;
         let mut product = finished(builder, self.limit, place)?;
         if let Gate::Own(_) = gate {
-            let read = product.read(qubits, place)?;
-            if read.frame().is_none() && read.count() <= product.list.len() as u64 {
-                product = Product::of(&read, self.limit).unwrap_or(product);
+            // The first way of reading that leaves no Clifford keeps ladders together.
+            for keep in [Keep::Nothing, Keep::Diagonal, Keep::Rotations] {
+                let mut builder = Builder::new(qubits, keep);
+                self.plain(&mut builder, gate, arguments, &names, false, place)?;
+                let read = builder.finish().map_err(|error| place.refuse(error.to_string()))?;
+                if read.frame().is_none() && read.count() <= product.list.len() as u64 {
+                    product = Product::of(&read, self.limit).unwrap_or(product);
+                    break;
+                }
             }
         }
-        let mut product = modified(product, qubits, modifiers, self.limit.min(1 << 20), place)?;
+        let mut product = modified(product, qubits, modifiers, self.limit.min(MOST_ROTATIONS), place)?;
         self.spend(product.list.len() as u64, place)?;
         if undo {
             product = product.inverse();
@@ -300,7 +309,10 @@ impl<'a> Gates<'a> {
             };
             // A fault inside depends on the values of this call, so both places matter; the call's is the user's.
             let inside = |refusal: Refusal| {
-                place.refuse(format!("in gate {}, line {}: {}", own.definition.name, refusal.place.line, refusal.message))
+                place.refuse(format!(
+                    "in gate {}, line {}: {}",
+                    own.definition.name, refusal.place.line, refusal.message
+                ))
             };
             let values = self.arguments(call, &names).map_err(inside)?;
             let modifiers = self.modifiers(call, &names).map_err(inside)?;
@@ -349,7 +361,8 @@ pub fn require_arguments(name: &str, wanted: usize, call: &Call) -> Outcome<()> 
     if given == wanted {
         return Ok(());
     }
-    Err(call.place.refuse(format!("{name} takes {wanted} angles ({given} given); give {wanted}")))
+    let angles = if wanted == 1 { "angle" } else { "angles" };
+    Err(call.place.refuse(format!("{name} takes {wanted} {angles} ({given} given); give {wanted}")))
 }
 
 pub fn require_qubits(call: &Call, own: usize, controls: u64) -> Outcome<()> {
@@ -358,7 +371,8 @@ pub fn require_qubits(call: &Call, own: usize, controls: u64) -> Outcome<()> {
         return Ok(());
     }
     let with = if controls > 0 { " with its controls" } else { "" };
-    Err(call.place.refuse(format!("{}{with} takes {wanted} qubits ({given} given); give {wanted}", call.name)))
+    let qubits = if wanted == 1 { "qubit" } else { "qubits" };
+    Err(call.place.refuse(format!("{}{with} takes {wanted} {qubits} ({given} given); give {wanted}", call.name)))
 }
 
 /// Edits that turn one word into another, up to 2.

@@ -9,7 +9,7 @@ use super::parser::Parser;
 use super::refusal::{Place, Refusal};
 use super::registers::{Registers, Symbol, Wires};
 use super::sources::{Files, QELIB1, STDGATES};
-use super::syntax::{Call, Expression, Operand, Range, Statement};
+use super::syntax::{Call, Expression, Operand, Statement};
 
 type Outcome<T> = Result<T, Refusal>;
 
@@ -114,7 +114,11 @@ impl<'a> Reader<'a> {
                 let text = match self.files.get(name) {
                     Some(Ok(text)) => text,
                     Some(Err(why)) => return Err(place.refuse(format!("cannot be included ({name}); {why}")).into()),
-                    None => return Err(place.refuse(format!("cannot be included ({name}); write its name plainly")).into()),
+                    None => {
+                        return Err(place
+                            .refuse(format!("cannot be included ({name}); write its name plainly"))
+                            .into());
+                    }
                 };
                 self.opened.push(name);
                 if self.opened.len() > 100 {
@@ -145,7 +149,8 @@ impl<'a> Reader<'a> {
         let [prepare, basis] = self.named;
         let inside = |named: Option<Named>| named.is_some_and(|range| range.holds(self.gate_count, line.into()));
         // Lines count in the circuit's own file.
-        let own = place.source == 0 || matches!((prepare, basis), (Some(Named::Gates(..)) | None, Some(Named::Gates(..)) | None));
+        let own = place.source == 0
+            || matches!((prepare, basis), (Some(Named::Gates(..)) | None, Some(Named::Gates(..)) | None));
         let part = match (own && inside(prepare), own && inside(basis)) {
             (true, true) => {
                 return Err(place.refuse("prepare and basis name the same gate; name each gate once"));
@@ -166,7 +171,7 @@ impl<'a> Reader<'a> {
         Ok(())
     }
 
-    fn carry_out(&mut self, statement: &Statement<'a>, pulse: Pulse) -> Result<(), Stop> {
+    pub fn carry_out(&mut self, statement: &Statement<'a>, pulse: Pulse) -> Result<(), Stop> {
         self.statements += 1;
         if self.statements & 0xfff == 0 {
             pulse().map_err(Stop::Cancelled)?;
@@ -225,9 +230,9 @@ impl<'a> Reader<'a> {
                     self.registers.wires(operand)?;
                 }
             }
-            Statement::Measure { qubits, target, place } => {
+            Statement::Measure { qubits, target, declares, place } => {
                 only_top(*place, "measure")?;
-                self.measure(qubits, target.as_ref(), *place)?;
+                self.measure(qubits, target.as_deref(), *declares, *place)?;
             }
             Statement::For { variable, range, body, place } => self.repeat(variable, range, body, *place, pulse)?,
             Statement::Remark(place) => self.note(*place, "pragmas and annotations are left out"),
@@ -268,15 +273,15 @@ impl<'a> Reader<'a> {
         let mut width = None;
         for operand in &call.operands {
             let found = self.registers.wires(operand)?;
-            if let Wires::Many(many) = &found {
-                if *width.get_or_insert(many.len()) != many.len() {
-                    let message = format!(
-                        "registers of different sizes in one gate ({} and {} qubits); use registers of one size",
-                        width.unwrap_or(0),
-                        many.len()
-                    );
-                    return Err(operand.place.refuse(message));
-                }
+            if let Wires::Many(many) = &found
+                && *width.get_or_insert(many.len()) != many.len()
+            {
+                let message = format!(
+                    "registers of different sizes in one gate ({} and {} qubits); use registers of one size",
+                    width.unwrap_or(0),
+                    many.len()
+                );
+                return Err(operand.place.refuse(message));
             }
             wires.push(found);
         }
@@ -295,7 +300,10 @@ impl<'a> Reader<'a> {
             for &qubit in &on {
                 if used >> qubit & 1 == 1 {
                     let shown = self.registers.shown(qubit);
-                    return Err(call.place.refuse(format!("{} is applied to one qubit twice ({shown}); use different qubits", call.name)));
+                    return Err(call.place.refuse(format!(
+                        "{} is applied to one qubit twice ({shown}); use different qubits",
+                        call.name
+                    )));
                 }
                 used |= 1 << qubit;
             }
@@ -311,17 +319,23 @@ impl<'a> Reader<'a> {
         Ok(())
     }
 
-    fn measure(&mut self, qubits: &Operand, target: Option<&Operand>, place: Place) -> Outcome<()> {
+    fn measure(
+        &mut self,
+        qubits: &Operand<'a>,
+        target: Option<&Operand<'a>>,
+        declares: bool,
+        place: Place,
+    ) -> Outcome<()> {
         let found = match self.registers.wires(qubits)? {
             Wires::One(one) => vec![one],
             Wires::Many(many) => many,
         };
         if let Some(target) = target {
-            // bit c = measure q; declares its bit on the way.
-            let bits = match self.registers.bits(target) {
-                Err(_) if target.index.is_none() && self.registers.value(target.name).is_none() => found.len() as u64,
-                other => other?,
-            };
+            if declares {
+                let bits = Symbol::Bits(found.len() as u64);
+                self.registers.declare(target.name, bits, &self.gates, target.place)?;
+            }
+            let bits = self.registers.bits(target)?;
             if bits != found.len() as u64 {
                 let message = format!("measure of {} qubits into {bits} bits; use registers of one size", found.len());
                 return Err(place.refuse(message));
@@ -329,65 +343,6 @@ impl<'a> Reader<'a> {
         }
         found.into_iter().for_each(|qubit| self.measured |= 1 << qubit);
         self.note(place, "measurements at the end are left out: what is read is the unitary before them");
-        Ok(())
-    }
-
-    fn repeat(
-        &mut self,
-        variable: &'a str,
-        range: &Range<'a>,
-        body: &[Statement<'a>],
-        place: Place,
-        pulse: Pulse,
-    ) -> Result<(), Stop> {
-        let set = self.registers.set_values(range, place)?;
-        let (start, step, count) = match (range, &set) {
-            (Range::Span(span), _) => self.registers.span(span)?,
-            (_, Some(set)) => (0, 1, set.len() as u64),
-            _ => (0, 1, 0),
-        };
-        if count == 0 {
-            return Ok(());
-        }
-        self.registers.open();
-        let outcome = if count > 1 && !body.iter().any(|statement| statement.mentions(variable)) {
-            self.repeat_once(body, count, place, pulse)
-        } else {
-            self.gates.spend(count.saturating_mul(body.len().max(1) as u64), place)?;
-            (0..count).try_for_each(|at| {
-                let value = match &set {
-                    Some(set) => set[at as usize],
-                    // Both ends are 64-bit numbers and this lies between them.
-                    None => start.wrapping_add((at as i64).wrapping_mul(step)),
-                };
-                self.registers.close();
-                self.registers.open();
-                self.registers.set(variable, value);
-                body.iter().try_for_each(|statement| self.carry_out(statement, pulse))
-            })
-        };
-        self.registers.close();
-        outcome
-    }
-
-    /// A body that does the same each time is read once and becomes a block.
-    fn repeat_once(&mut self, body: &[Statement<'a>], count: u64, place: Place, pulse: Pulse) -> Result<(), Stop> {
-        self.gates.spend(body.len() as u64, place)?;
-        let fresh = Builder::new(self.registers.qubits, self.parts[self.part].keep());
-        let outer = std::mem::replace(&mut self.parts[self.part], fresh);
-        let outcome = body.iter().try_for_each(|statement| self.carry_out(statement, pulse));
-        let inner = std::mem::replace(&mut self.parts[self.part], outer);
-        outcome?;
-        let builder = &mut self.parts[self.part];
-        builder.turned = [0, 1].map(|which| builder.turned[which].saturating_add(inner.turned[which]));
-        let refused = |error: crate::error::Error| place.refuse(format!("a loop of {count} repeats: {error}"));
-        let mut once = inner.finish().map_err(refused)?;
-        if once.qubits() < self.registers.qubits {
-            once = once.widened(self.registers.qubits);
-        }
-        let many = once.times(count).map_err(refused)?;
-        builder.widen(self.registers.qubits.max(builder.qubits()));
-        builder.append(&many);
         Ok(())
     }
 }

@@ -52,7 +52,9 @@ impl<'a> Parser<'a> {
             _ => return Err(self.unexpected("a statement")),
         }
         match (start.text, self.version) {
-            ("OPENQASM", _) => Err(start.place.refuse("OPENQASM stands before everything else; move this line to the top")),
+            ("OPENQASM", _) => {
+                Err(start.place.refuse("OPENQASM stands before everything else; move this line to the top"))
+            }
             ("include", _) => self.include(),
             ("qreg" | "creg", _) | ("qubit" | "bit", 3) => self.register(),
             ("const", 3) => self.constant(),
@@ -65,7 +67,7 @@ impl<'a> Parser<'a> {
                 Ok(Statement::Barrier(operands))
             }
             ("delay", 3) => self.delay(),
-            ("measure", _) => self.measure(None),
+            ("measure", _) => self.measure(None, false),
             ("for", 3) => self.repeat(),
             (word, _) => {
                 if let Some((_, what)) = UNSUPPORTED.iter().find(|(name, _)| *name == word) {
@@ -122,7 +124,8 @@ impl<'a> Parser<'a> {
             if !self.is("measure") {
                 return Err(unsupported(self.token.place, "bit", "a variable"));
             }
-            return self.measure(Some(Operand { name: name.text, machine: None, index: None, place: name.place }));
+            let target = Operand { name: name.text, machine: None, index: None, place: name.place };
+            return self.measure(Some(target), true);
         }
         self.end("the declaration")?;
         let (name, place) = (name.text, name.place);
@@ -203,7 +206,7 @@ impl<'a> Parser<'a> {
     }
 
     /// `measure q -> c;`, or what follows `c =`.
-    fn measure(&mut self, mut target: Option<Operand<'a>>) -> Outcome<Statement<'a>> {
+    fn measure(&mut self, mut target: Option<Operand<'a>>, declares: bool) -> Outcome<Statement<'a>> {
         let word = self.take()?;
         let qubits = self.operand()?;
         if target.is_none() && self.took("->")? {
@@ -213,7 +216,7 @@ impl<'a> Parser<'a> {
             return Err(self.unexpected("'->' and a classical register"));
         }
         self.end("the measurement")?;
-        Ok(Statement::Measure { qubits, target, place: word.place })
+        Ok(Statement::Measure { qubits, target: target.map(Box::new), declares, place: word.place })
     }
 
     fn repeat(&mut self) -> Outcome<Statement<'a>> {
@@ -235,11 +238,7 @@ impl<'a> Parser<'a> {
         } else {
             return Err(self.unexpected("a range such as [0:9] or a set such as {1, 2}"));
         };
-        let body = if self.is("{") {
-            self.block("the loop's range")?
-        } else {
-            vec![self.deeper(Self::statement)?]
-        };
+        let body = if self.is("{") { self.block("the loop's range")? } else { vec![self.deeper(Self::statement)?] };
         Ok(Statement::For { variable: variable.text, range, body, place: word.place })
     }
 
@@ -294,7 +293,7 @@ impl<'a> Parser<'a> {
                 return Err(unsupported(place, name, "an assignment"));
             }
             let index = index.map(super::syntax::Index::One);
-            return self.measure(Some(Operand { name, machine: None, index, place }));
+            return self.measure(Some(Operand { name, machine: None, index, place }), false);
         }
         if plain && self.token.kind == Kind::Sign && self.token.text.ends_with('=') {
             return Err(unsupported(place, name, "an assignment"));

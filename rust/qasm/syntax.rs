@@ -82,16 +82,44 @@ pub enum Range<'a> {
 #[derive(Debug)]
 pub enum Statement<'a> {
     Include(&'a str, Place),
-    Qubits { name: &'a str, size: Option<Expression<'a>>, place: Place },
-    Bits { name: &'a str, size: Option<Expression<'a>>, place: Place },
-    Constant { kind: &'a str, name: &'a str, value: Expression<'a>, place: Place },
-    Alias { name: &'a str, parts: Vec<Operand<'a>>, place: Place },
+    Qubits {
+        name: &'a str,
+        size: Option<Expression<'a>>,
+        place: Place,
+    },
+    Bits {
+        name: &'a str,
+        size: Option<Expression<'a>>,
+        place: Place,
+    },
+    Constant {
+        kind: &'a str,
+        name: &'a str,
+        value: Expression<'a>,
+        place: Place,
+    },
+    Alias {
+        name: &'a str,
+        parts: Vec<Operand<'a>>,
+        place: Place,
+    },
     Gate(Rc<Definition<'a>>),
     Call(Call<'a>),
     Barrier(Vec<Operand<'a>>),
     Delay(Vec<Operand<'a>>, Place),
-    Measure { qubits: Operand<'a>, target: Option<Operand<'a>>, place: Place },
-    For { variable: &'a str, range: Range<'a>, body: Vec<Statement<'a>>, place: Place },
+    /// `declares` where the target is a new register of bits: `bit c = measure q;`.
+    Measure {
+        qubits: Operand<'a>,
+        target: Option<Box<Operand<'a>>>,
+        declares: bool,
+        place: Place,
+    },
+    For {
+        variable: &'a str,
+        range: Range<'a>,
+        body: Vec<Statement<'a>>,
+        place: Place,
+    },
     Remark(Place),
     End,
 }

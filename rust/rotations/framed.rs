@@ -13,8 +13,11 @@ use crate::error::Result;
 use crate::frame::Frame;
 use crate::pauli::PauliString;
 
-/// Rotations that repeats of a block may be written out to where its frame changes it from repeat to repeat.
-const WRITTEN_OUT: u64 = 1 << 21;
+/// Size to which repeats may be written out where a frame changes them from repeat to repeat: rotations, and
+/// [`LIST_SIZE`] for each list.
+const WRITTEN_OUT: u64 = 1 << 19;
+/// What a list takes beside its rotations, in rotations.
+const LIST_SIZE: u64 = 4;
 
 impl Rotations {
     /// This circuit followed by a frame.
@@ -82,7 +85,7 @@ impl Rotations {
                     "k",
                     format!(
                         "k: the circuit ends in a Clifford or relabelling that changes its strings from repeat to \
-                         repeat, and {repeat} repeats come back to none within {WRITTEN_OUT} rotations; \
+                         repeat, and {repeat} repeats come back to none within about {WRITTEN_OUT} rotations; \
                          use fewer repeats"
                     ),
                 ));
@@ -142,10 +145,10 @@ impl Rotations {
         strings.len()
     }
 
-    /// Rotations held in memory.
+    /// Rotations held in memory, and what holds them.
     fn written_size(&self) -> u64 {
         let mut size = 0u64;
-        self.for_each_list(&mut |list, _| size += list.len() as u64);
+        self.for_each_list(&mut |list, _| size += list.len() as u64 + LIST_SIZE);
         size
     }
 }

@@ -106,7 +106,7 @@ def read_qasm(
         and some rotation, the one with the fewest different strings; the first where there is none. The unitary is the
         same in each.
     expansion_limit : int, optional
-        Gates that loops over their variable, gate bodies and modifiers may make. Default: 2**20, and 16 more for each
+        Gates that loops over their variable, gate bodies and modifiers may make. Default: 2**18, and 16 more for each
         byte of text.
 
     Returns
