@@ -4,7 +4,11 @@ from __future__ import annotations
 
 from hypothesis import strategies as st
 
-FIXED = {1: ["x", "y", "z", "h", "s", "sdg", "t", "tdg", "sx", "id"], 2: ["cx", "cy", "cz", "ch", "swap"], 3: ["ccx", "cswap"]}
+FIXED = {
+    1: ["x", "y", "z", "h", "s", "sdg", "t", "tdg", "sx", "id"],
+    2: ["cx", "cy", "cz", "ch", "swap"],
+    3: ["ccx", "cswap"],
+}
 TURNED = {
     ("rx", 1): 1,
     ("ry", 1): 1,
@@ -33,7 +37,20 @@ let both = b ++ a[0:0];
 """
 
 numbers = st.sampled_from(
-    ["0.3", "-1.25", "pi/2", "-pi/4", "c", "2*c - 0.5", "sqrt(2.0)**3", "sin(c)*tau", "-0.5**2", "1e-3", "3*pi/2", "0.0"]
+    [
+        "0.3",
+        "-1.25",
+        "pi/2",
+        "-pi/4",
+        "c",
+        "2*c - 0.5",
+        "sqrt(2.0)**3",
+        "sin(c)*tau",
+        "-0.5**2",
+        "1e-3",
+        "3*pi/2",
+        "0.0",
+    ]
 )
 
 

@@ -30,7 +30,8 @@ def strang_text(steps, sign=1):
     """Half of the fields, the bond, half of the fields: invented by hand, not written by trueturn."""
     tau = 1.0 / steps
     field = f"rx({sign * tau / 2!r}) q;"
-    return f"{HEAD}for int k in [1:{steps}] {{ {field} cx q[0], q[1]; rz({2 * tau!r}) q[1]; cx q[0], q[1]; {field} }}\nc = measure q;\n"
+    bond = f"cx q[0], q[1]; rz({2 * tau!r}) q[1]; cx q[0], q[1];"
+    return f"{HEAD}for int k in [1:{steps}] {{ {field} {bond} {field} }}\nc = measure q;\n"
 
 
 @pytest.fixture

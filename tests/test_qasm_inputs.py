@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import subprocess
 import sys
 import time
@@ -10,13 +11,13 @@ from pathlib import Path
 import numpy as np
 import openqasm3
 import pytest
-from circuits import matrix
 from hypothesis import given, settings
 from hypothesis import strategies as st
-from qasm_oracle import unitary
-from qasm_programs import programs
 
 import trueturn as tt
+from circuits import matrix
+from qasm_oracle import unitary
+from qasm_programs import programs
 from trueturn.errors import ArgumentError, QasmError
 
 CASES = Path(__file__).parent / "published" / "qasm_cases"
@@ -49,7 +50,12 @@ def routed(rng, logical, qubits, gates):
         x, y = places[a], places[b]
         moved.append(f"cx q[{x}], q[{y}]; rz({angle!r}) q[{y}]; cx q[{x}], q[{y}]; rx({angle / 3!r}) q[{x}];")
     marks = f"// trueturn: start_layout = {start}\n// trueturn: end_layout = {places}\n"
-    return (f"{V3}qubit[{logical}] q;" + "".join(plain), V3 + marks + f"qubit[{qubits}] q;" + "".join(moved), start, places)
+    return (
+        f"{V3}qubit[{logical}] q;" + "".join(plain),
+        V3 + marks + f"qubit[{qubits}] q;" + "".join(moved),
+        start,
+        places,
+    )
 
 
 def swap_by_cx(a, b):
@@ -184,10 +190,12 @@ def test_files_are_included_from_the_folder_of_the_circuit_only(tmp_path):
         assert caught.value.line == 3
     with pytest.raises(QasmError, match=r"cannot be included \(none.inc\); it cannot be read"):
         read("none.inc")
-    with pytest.raises(QasmError, match="broken.inc: line 3, column 19: cx takes 2 qubits") as caught:
+    with pytest.raises(QasmError, match=r"broken\.inc: line 3, column 19: cx takes 2 qubits") as caught:
         read("broken.inc")
     assert (caught.value.path, caught.value.line) == ("broken.inc", 3)
-    assert "a circuit given as text includes the standard libraries only" in str(refused('include "mine.inc";\nqubit q;'))
+    assert "a circuit given as text includes the standard libraries only" in str(
+        refused('include "mine.inc";\nqubit q;')
+    )
 
 
 # --- harm ---
@@ -292,6 +300,13 @@ MESSAGES = {
     "gphase(0.1);": "no qubits are declared",
     "qubit q; let a = q[0:-1:1];": "no entry of the register (q[1])",
     "qubit[2] q; gate g(t) a { rz(1/t) a; } g(0) q[0];": "in gate g, line 3: a division by zero",
+    "qubit[2] q; h q[1:0];": "an operand of no qubits",
+    "qubit[2] def;": "a word of the language cannot be a name (def)",
+    "qubit q; gate g a { barrier b; x a; }": "gate g has no qubit of this name (b)",
+    "qubit q; for int i in [0:2]": "expected the body of the loop",
+    "qubit q; ctrl @x q;": "expected '@' after a modifier",
+    "qubit q; @ x q;": "expected a statement",
+    "qubit q; @remark": "expected a statement after an annotation",
     "qubit q; §": "a character that the language does not have",
 }
 
@@ -321,10 +336,8 @@ def test_mutated_texts_are_read_or_refused_and_never_more_freely_than_by_the_sta
 
 @given(st.text(max_size=60))
 def test_any_text_is_read_or_refused(text):
-    try:
+    with contextlib.suppress(QasmError):
         tt.read_qasm(f"{text};")
-    except QasmError:
-        pass
 
 
 def test_truncated_texts_are_refused_or_shorter():

@@ -8,13 +8,13 @@ from pathlib import Path
 import mpmath
 import numpy as np
 import pytest
-from circuits import matrix
 from hypothesis import given, settings
 from hypothesis import strategies as st
-from qasm_oracle import BUILT_IN, QELIB1, STDGATES, applied, controlled, principal_power, unitary
-from qasm_programs import programs
 
 import trueturn as tt
+from circuits import matrix
+from qasm_oracle import BUILT_IN, QELIB1, STDGATES, applied, controlled, principal_power, unitary
+from qasm_programs import programs
 from trueturn.errors import MemoryRefusedError, QasmError
 
 CASES = Path(__file__).parent / "published" / "qasm_cases"
@@ -113,7 +113,10 @@ def test_every_gate_takes_every_modifier(version, head, name, definition):
         "inv @ ctrl @ ": controlled(own.conj().T),
     }
     if name not in ("ch", "cu"):  # their rotations do not commute
-        expected |= {"pow(0.3) @ ": principal_power(own, 0.3), "ctrl @ pow(-0.5) @ ": controlled(principal_power(own, -0.5))}
+        expected |= {
+            "pow(0.3) @ ": principal_power(own, 0.3),
+            "ctrl @ pow(-0.5) @ ": controlled(principal_power(own, -0.5)),
+        }
     for modifiers, result in expected.items():
         _, text = call_text(version, head, name, definition, ANGLES, modifiers)
         circuit = tt.read_qasm(text)
@@ -171,7 +174,9 @@ def test_a_change_of_basis_is_recognised_however_it_is_spelled(hadamard):
 
 def test_rotations_by_quarter_turns_stay_what_the_circuit_is_made_of():
     # A kicked chain at the self-dual point: all angles are multiples of pi/4, and nothing is a change of basis.
-    step = "".join(f"cx q[{k}], q[{k + 1}]; rz(pi/2) q[{k + 1}]; cx q[{k}], q[{k + 1}];" for k in range(3)) + "rx(pi/2) q;"
+    step = (
+        "".join(f"cx q[{k}], q[{k + 1}]; rz(pi/2) q[{k + 1}]; cx q[{k}], q[{k + 1}];" for k in range(3)) + "rx(pi/2) q;"
+    )
     circuit = tt.read_circuit(f"{V3}qubit[4] q;" + 5 * step)
     assert circuit.quarter_turns == "rotations"
     assert circuit.evolution.count == 35
@@ -226,7 +231,15 @@ def test_exact_phases_add_up_over_many_gates():
 @given(st.integers(0, 3), st.integers(0, 2**16))
 def test_sparse_and_dense_cliffords_keep_their_phase(extra, seed):
     rng = np.random.default_rng(seed)
-    names = ["h q[{0}];", "s q[{0}];", "cx q[{0}], q[{1}];", "cz q[{1}], q[{0}];", "sx q[{0}];", "swap q[{0}], q[{1}];", "y q[{1}];"]
+    names = [
+        "h q[{0}];",
+        "s q[{0}];",
+        "cx q[{0}], q[{1}];",
+        "cz q[{1}], q[{0}];",
+        "sx q[{0}];",
+        "swap q[{0}], q[{1}];",
+        "y q[{1}];",
+    ]
     gates = [names[rng.integers(len(names))].format(*rng.permutation(3)[:2]) for _ in range(20 + extra)]
     text = f"{V3}qubit[3] q;" + "".join(gates)
     circuit = tt.read_qasm(text)

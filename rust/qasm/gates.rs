@@ -160,7 +160,11 @@ impl<'a> Gates<'a> {
         for (at, statement) in definition.body.iter().enumerate() {
             let call = match statement {
                 Statement::Call(call) => call,
-                Statement::Barrier(_) | Statement::Remark(_) => continue,
+                Statement::Barrier(operands) => {
+                    operands.iter().try_for_each(|operand| local(&definition, operand).map(drop))?;
+                    continue;
+                }
+                Statement::Remark(_) => continue,
                 _ => {
                     let message =
                         format!("the body of gate {name} holds something else than gates ({name}); take it out");

@@ -19,7 +19,7 @@ pub enum Kind {
     Machine(u32),
     /// An operator or a bracket.
     Sign,
-    /// A line that starts with `#pragma`, `pragma` or `@`, to its end.
+    /// A pragma, or an annotation such as `@name`, to the end of its line.
     Remark,
     /// After the last token.
     End,
@@ -152,7 +152,7 @@ impl<'a> Lexer<'a> {
             }
             '0'..='9' => self.number(place)?,
             '.' if self.byte(1).is_ascii_digit() => self.number(place)?,
-            '@' if self.at == self.line_start || self.text[self.line_start..self.at].trim().is_empty() => self.remark(),
+            '@' if rest[1..].starts_with(starts_name) => self.remark(),
             letter if starts_name(letter) => {
                 let length = rest.find(|c: char| !goes_on(c)).unwrap_or(rest.len());
                 match &rest[..length] {

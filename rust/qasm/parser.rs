@@ -11,6 +11,57 @@ use super::syntax::{Expression, Index, Operand, Span};
 const DEEPEST: u32 = 100;
 const LONGEST: u32 = 1000;
 
+/// Words that version 3 keeps for itself, beside types.
+const RESERVED: [&str; 47] = [
+    "OPENQASM",
+    "include",
+    "defcalgrammar",
+    "def",
+    "cal",
+    "defcal",
+    "gate",
+    "extern",
+    "box",
+    "let",
+    "break",
+    "continue",
+    "if",
+    "else",
+    "end",
+    "return",
+    "for",
+    "while",
+    "in",
+    "switch",
+    "case",
+    "default",
+    "nop",
+    "pragma",
+    "input",
+    "output",
+    "const",
+    "readonly",
+    "mutable",
+    "qreg",
+    "qubit",
+    "creg",
+    "array",
+    "void",
+    "gphase",
+    "inv",
+    "pow",
+    "ctrl",
+    "negctrl",
+    "durationof",
+    "delay",
+    "reset",
+    "measure",
+    "barrier",
+    "true",
+    "false",
+    "im",
+];
+
 pub struct Parser<'a> {
     pub lexer: Lexer<'a>,
     pub token: Token<'a>,
@@ -84,6 +135,10 @@ impl<'a> Parser<'a> {
                 "no identifier of version 2, which start with a lower-case letter ({}); rename it",
                 token.text
             )));
+        }
+        if self.version == 3 && (RESERVED.contains(&token.text) || is_type(token.text)) && what.starts_with("a name") {
+            let message = format!("a word of the language cannot be a name ({}); choose another", token.text);
+            return Err(token.place.refuse(message));
         }
         Ok(token)
     }

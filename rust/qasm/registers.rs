@@ -174,7 +174,16 @@ impl<'a> Registers<'a> {
                 let stop = span.stop.as_ref().map_or(Ok(last), |stop| within(self.whole(stop, place)?))?;
                 let step = span.step.as_ref().map_or(Ok(1), |step| self.whole(step, place))?;
                 let count = steps(start, step, stop, place)?;
+                if count == 0 {
+                    return Err(place.refuse(format!(
+                        "an operand of no qubits ({}[{start}:{step}:{stop}]); check its range",
+                        operand.name
+                    )));
+                }
                 Ok(Wires::Many((0..count as i64).map(|at| all[(start + at * step) as usize]).collect()))
+            }
+            Some(Index::Set(set)) if set.is_empty() => {
+                Err(place.refuse(format!("an operand of no qubits ({}[{{}}]); name some", operand.name)))
             }
             Some(Index::Set(set)) => {
                 let one = |index| Ok(all[entry(operand.name, self.whole(index, place)?, all.len(), place)?]);

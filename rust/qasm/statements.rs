@@ -46,6 +46,9 @@ impl<'a> Parser<'a> {
             Kind::End => return Ok(Statement::End),
             Kind::Remark => {
                 self.take()?;
+                if start.text.starts_with('@') && (self.token.kind == Kind::End || self.is("}")) {
+                    return Err(self.unexpected("a statement after an annotation"));
+                }
                 return Ok(Statement::Remark(start.place));
             }
             Kind::Name => {}
@@ -238,7 +241,11 @@ impl<'a> Parser<'a> {
         } else {
             return Err(self.unexpected("a range such as [0:9] or a set such as {1, 2}"));
         };
-        let body = if self.is("{") { self.block("the loop's range")? } else { vec![self.deeper(Self::statement)?] };
+        let body = match self.token.kind {
+            Kind::End => return Err(self.unexpected("the body of the loop")),
+            _ if self.is("{") => self.block("the loop's range")?,
+            _ => vec![self.deeper(Self::statement)?],
+        };
         Ok(Statement::For { variable: variable.text, range, body, place: word.place })
     }
 

@@ -105,7 +105,9 @@ class Candidate:
         """
         if not isinstance(circuit, Rotations):
             raise ArgumentError(
-                f"circuit: no Rotations ({circuit!r}); make one by trueturn.read_qasm", argument="circuit", value=circuit
+                f"circuit: no Rotations ({circuit!r}); make one by trueturn.read_qasm",
+                argument="circuit",
+                value=circuit,
             )
         return cls(GivenCircuit(name, circuit), rule="single", steps=1)
 
