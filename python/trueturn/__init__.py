@@ -6,6 +6,7 @@ from trueturn._threads import threads
 from trueturn.accuracy import Bound, bound, steps_by_bound
 from trueturn.adaptive import AdaptiveRun, adaptive
 from trueturn.audit import Audit, Candidate, audit
+from trueturn.circuits.reading import Circuit, read_circuit, read_qasm
 from trueturn.comparison import Comparison, compare
 from trueturn.driven import Driven, DrivenReference, driven_reference
 from trueturn.error_saving import Improved
@@ -28,6 +29,7 @@ __all__ = [
     "Bound",
     "Candidate",
     "Certificate",
+    "Circuit",
     "Comparison",
     "Driven",
     "DrivenReference",
@@ -60,7 +62,9 @@ __all__ = [
     "model",
     "multiproduct_weights",
     "randomised",
+    "read_circuit",
     "read_formulas",
+    "read_qasm",
     "reference",
     "saved_gates",
     "steps_by_bound",

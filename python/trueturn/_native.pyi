@@ -18,6 +18,7 @@ __all__ = [
     "instruction_sets",
     "overlap",
     "pairwise_sum",
+    "read_qasm",
     "squared_norms",
 ]
 
@@ -67,6 +68,16 @@ class Rotations:
     def count(self) -> int: ...
     def then(self, next: Rotations) -> Rotations: ...
     def times(self, repeat: int) -> Rotations: ...
+    def with_frame(
+        self,
+        x: Sequence[int],
+        z: Sequence[int],
+        turns: Sequence[int],
+        eighths: int,
+        relabelling: Sequence[int],
+    ) -> Rotations: ...
+    def frame(self) -> tuple[Rotations, list[int]] | None: ...
+    def narrowed(self, qubits: int) -> Rotations | None: ...
     def inverse(self) -> Rotations: ...
     def same_as(self, other: Rotations) -> bool: ...
     def blocks(self) -> list[tuple[Rotations, int]]: ...
@@ -101,5 +112,24 @@ def chebyshev_sums(
 def overlap(left: npt.NDArray[Any], right: npt.NDArray[Any], threads: int) -> complex: ...
 def distance(left: npt.NDArray[Any], right: npt.NDArray[Any], factor: complex, threads: int) -> float: ...
 def squared_norms(state: npt.NDArray[Any], threads: int) -> npt.NDArray[np.float64]: ...
+
+_Range = tuple[bool, int, int]
+
+def read_qasm(
+    text: str,
+    folder: str | None,
+    keep: str,
+    prepare: _Range | None,
+    basis: _Range | None,
+    limit: int | None,
+) -> tuple[
+    list[Rotations],
+    int,
+    list[tuple[str, int, int]],
+    int,
+    list[tuple[int, str]],
+    list[tuple[int, int, str]],
+    str,
+]: ...
 def pairwise_sum(values: Sequence[float]) -> float: ...
 def instruction_sets() -> tuple[list[str], str]: ...

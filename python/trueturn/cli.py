@@ -48,20 +48,43 @@ commands.add_command(bound)
 
 
 @commands.command()
-@click.argument("job", required=False, type=JOB)
+@click.argument("files", nargs=-1, type=JOB, metavar="[JOB | CIRCUIT... --job JOB]")
+@click.option("--job", type=JOB, metavar="JOB", help="Judge the circuits of OpenQASM files against this job.")
+@click.option("--prepare", metavar="RANGE", help='Gates of a circuit that prepare the start: "0:120" or "lines 4-9".')
+@click.option("--basis", metavar="RANGE", help="Gates that change the basis before measurement, likewise.")
 @click.option("--into", type=JOB, metavar="FOLDER", help="Write report.html, audit.json and audit.csv there.")
 @AS_JSON
 @THREADS
-def audit(job: Path | None, into: Path | None, as_json: bool, threads: int | None) -> int:
-    """Judge the candidates of JOB and recommend one.
+def audit(
+    files: tuple[Path, ...],
+    job: Path | None,
+    prepare: str | None,
+    basis: str | None,
+    into: Path | None,
+    as_json: bool,
+    threads: int | None,
+) -> int:
+    """Judge the candidates of JOB and recommend one, or judge circuits against JOB.
 
     JOB is a TOML file; `trueturn init` writes one to start from. Without JOB the built-in scenario runs: an
-    invented ladder of 18 spins after a field quench.
+    invented ladder of 18 spins after a field quench. With --job the files are OpenQASM circuits, taken to evolve to
+    the job's last time; the job's own candidates are left out.
     """
     from trueturn.audit.job import built_in_job, read_job
     from trueturn.audit.report import require_replaceable, terminal_table, to_dict
 
-    task = built_in_job() if job is None else read_job(job)
+    if job is not None:
+        if not files:
+            raise click.UsageError("--job goes with circuits: trueturn audit CIRCUIT.qasm --job JOB.toml")
+        from trueturn.circuits.auditing import job_for_circuits
+
+        task, notes = job_for_circuits(read_job(job, candidates_required=False), files, prepare, basis)
+        for note in notes:
+            print(f"trueturn: {note}", file=sys.stderr)
+    elif len(files) > 1 or prepare is not None or basis is not None:
+        raise click.UsageError("circuits need a job: trueturn audit CIRCUIT.qasm --job JOB.toml")
+    else:
+        task = read_job(files[0]) if files else built_in_job()
     folder = into or task.folder
     if folder is not None:
         require_replaceable(folder)

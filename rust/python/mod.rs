@@ -3,6 +3,7 @@
 mod arrays;
 mod error;
 mod gateway;
+pub mod qasm;
 pub mod rotations;
 pub mod state;
 pub mod terms;
@@ -12,6 +13,8 @@ use pyo3::prelude::*;
 /// The compiled core of trueturn; users import `trueturn`, never this.
 #[pymodule]
 mod _native {
+    #[pymodule_export]
+    use super::qasm::read_qasm;
     #[pymodule_export]
     use super::rotations::PyRotations;
     #[pymodule_export]

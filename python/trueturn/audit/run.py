@@ -11,7 +11,7 @@ from trueturn import _memory, _threads
 from trueturn._observables import named_operators
 from trueturn.accuracy.bounds import bound
 from trueturn.audit import words
-from trueturn.audit.candidate import Candidate
+from trueturn.audit.candidate import Candidate, GivenCircuit
 from trueturn.audit.measure import Bench, Measured
 from trueturn.audit.result import Audit, Row, Trial
 from trueturn.audit.search import least_steps
@@ -113,6 +113,7 @@ def audit(
     watched = named_operators(observables)
     asked = sorted(set(positive_times(times)))
     _check(operator, state, candidates, tolerance, quantity, watched, readout, relative_to, most_steps)
+    _check_circuits(state, candidates, asked)
     workers = _threads.resolve(threads)
     partitions = [candidate.partition(operator) for candidate in candidates]
     _memory.require(
@@ -285,6 +286,27 @@ def _check(
     require_same_qubits(state, operator, "operator")
     for name, observable in observables.items():
         require_same_qubits(state, observable, f"observables[{name!r}]")
+
+
+def _check_circuits(state: State, candidates: Sequence[Candidate], times: Sequence[float]) -> None:
+    """Circuits that are run as they are end at one time, on the qubits of the state."""
+    for candidate in candidates:
+        if not isinstance(candidate.formula, GivenCircuit):
+            continue
+        if len(times) > 1:
+            raise AuditError(
+                f"times: a circuit is read out at its end only ({candidate.formula.name}, {len(times)} times); "
+                "give the one time that it evolves to",
+                reason="a circuit at several times",
+                limit=1,
+            )
+        if candidate.formula.circuit.qubits != state.qubits:
+            raise AuditError(
+                f"candidates: {candidate.formula.name} acts on {candidate.formula.circuit.qubits} qubits, "
+                f"the state has {state.qubits}; give layouts that list the qubits of the system",
+                reason="a circuit on other qubits",
+                limit=state.qubits,
+            )
 
 
 def _choice(argument: str, value: object, choices: Sequence[object]) -> ArgumentError:

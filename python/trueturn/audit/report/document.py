@@ -11,6 +11,7 @@ from collections.abc import Iterable, Mapping
 from typing import TYPE_CHECKING, Any
 
 from trueturn._build import build_info
+from trueturn.audit.candidate import Candidate, GivenCircuit
 from trueturn.audit.report import words
 
 if TYPE_CHECKING:
@@ -96,11 +97,10 @@ def position(audit: Audit, row: Row) -> int:
 
 def row_data(row: Row) -> dict[str, Any]:
     """Give one candidate's record."""
-    rule = row.candidate.rule
     return {
         "label": row.label,
         "formula": row.candidate.formula.name,
-        "rule": rule if isinstance(rule, str) else "own parts",
+        "rule": rule_words(row.candidate),
         "steps_asked": row.candidate.steps,
         "steps": row.steps,
         "error": limits(row.error),
@@ -116,6 +116,13 @@ def row_data(row: Row) -> dict[str, Any]:
         "points": [point_data(point) for point in row.points],
         "trials": [trial_data(trial) for trial in row.trials],
     }
+
+
+def rule_words(candidate: Candidate) -> str:
+    """Name how the parts were made."""
+    if isinstance(candidate.formula, GivenCircuit):
+        return "as read"
+    return candidate.rule if isinstance(candidate.rule, str) else "own parts"
 
 
 def point_data(point: PointError) -> dict[str, Any]:
