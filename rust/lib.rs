@@ -6,6 +6,7 @@
 //! | [`terms`] | real sums of strings: parsing, printing, sums, products, brackets |
 //! | [`rotations`] | a circuit: ordered rotations in repeated blocks, and a global phase |
 //! | [`cost`] | two-qubit gates and depth, without writing a circuit out |
+//! | [`gates`] | circuits as gates of a device, written or counted |
 //! | [`operation`] | two commuting rotations with one x mask act as one |
 //! | [`passes`] | the planner: which rotations share one traversal of memory |
 //! | [`evolve`] | carries the passes out on a state vector |
@@ -23,6 +24,7 @@ pub mod apply;
 pub mod cost;
 pub mod error;
 pub mod evolve;
+pub mod gates;
 pub mod kernel;
 pub mod operation;
 pub mod passes;
