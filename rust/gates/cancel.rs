@@ -180,3 +180,70 @@ fn ends(on_qubit: &[VecDeque<usize>], kept: &[Option<Item>], qubit: usize) -> Op
     let free = whole(&on_qubit[usize::from(one)]) && other.is_none_or(|other| whole(&on_qubit[usize::from(other)]));
     (first != last && free && closing.undoes(*gate)).then_some((*gate, first, last))
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    fn gates(run: impl FnOnce(&mut Canceller<'_>) -> Result<()>) -> Vec<Item> {
+        let mut items = Vec::new();
+        let mut out = Canceller::new(&mut items, 4);
+        run(&mut out).unwrap();
+        out.finish().unwrap();
+        items
+    }
+
+    #[test]
+    fn gates_cancel_past_those_that_commute_and_no_others() {
+        let passing = [Gate::Cx(0, 2), Gate::Cx(3, 1), Gate::Rz(0, 0.1), Gate::Rx(1, 0.2), Gate::H(2)];
+        let left = gates(|out| {
+            out.gate(Gate::Cx(0, 1))?;
+            passing.iter().try_for_each(|&gate| out.gate(gate))?;
+            out.gate(Gate::Cx(0, 1))
+        });
+        assert_eq!(left, passing.map(Item::Gate));
+        for blocking in
+            [Gate::H(0), Gate::Rz(1, 0.1), Gate::Rx(0, 0.1), Gate::Cx(1, 0), Gate::Cz(0, 1), Gate::Swap(1, 2)]
+        {
+            let left =
+                gates(|out| [Gate::Cx(0, 1), blocking, Gate::Cx(0, 1)].into_iter().try_for_each(|g| out.gate(g)));
+            assert_eq!(left.len(), 3, "{blocking:?}");
+        }
+    }
+
+    #[test]
+    fn what_the_ends_of_a_body_undo_moves_out_and_meets_its_surroundings() {
+        let body = [Gate::H(0), Gate::Cx(0, 1), Gate::Rz(1, 0.1), Gate::Cx(0, 1), Gate::H(0)].map(Item::Gate);
+        let left = gates(|out| {
+            out.gate(Gate::H(0))?;
+            out.body(5, body.to_vec())?;
+            out.gate(Gate::Cx(0, 1))
+        });
+        let inside = Loop { repeat: 5, items: vec![Item::Gate(Gate::Rz(1, 0.1))], qubits: vec![1] };
+        let gate = |gate| Item::Gate(gate);
+        assert_eq!(
+            left,
+            [
+                gate(Gate::Cx(0, 1)),
+                Item::Loop(Box::new(inside)),
+                gate(Gate::Cx(0, 1)),
+                gate(Gate::H(0)),
+                gate(Gate::Cx(0, 1))
+            ]
+        );
+    }
+
+    #[test]
+    fn a_long_stream_keeps_every_rotation() {
+        let count = 5 * WINDOW;
+        let left = gates(|out| {
+            (0..count).try_for_each(|k| {
+                [Gate::H(0), Gate::Rz(0, k as f64), Gate::H(0)].into_iter().try_for_each(|g| out.gate(g))
+            })
+        });
+        let angles: Vec<f64> =
+            left.iter().filter_map(|item| if let Item::Gate(gate) = item { gate.angle() } else { None }).collect();
+        assert_eq!(angles, (0..count).map(|k| k as f64).collect::<Vec<_>>());
+        assert_eq!(left.len(), count + 2);
+    }
+}

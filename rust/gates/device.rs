@@ -193,3 +193,35 @@ impl Layout {
         (0..self.logical.len() as u16).map(home).collect()
     }
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn swaps_take_every_token_home_along_edges() {
+        let device = Device::new(6, &[(0, 1), (1, 2), (2, 3), (1, 4), (4, 5)]);
+        for homes in [[0, 1, 2, 3, 4, 5], [5, 4, 3, 2, 1, 0], [1, 2, 3, 4, 5, 0], [0, 1, 3, 2, 4, 5]] {
+            let mut now = homes;
+            for (a, b) in device.swaps_home(&homes).unwrap() {
+                assert!(device.joins(a, b));
+                now.swap(usize::from(a), usize::from(b));
+            }
+            assert_eq!(now, [0, 1, 2, 3, 4, 5]);
+        }
+    }
+
+    #[test]
+    fn a_layout_follows_swaps_and_knows_its_way_back() {
+        let start = Layout::new(vec![2, 0, 1], 5);
+        let mut now = start.clone();
+        now.swap(0, 3);
+        now.swap(2, 0);
+        assert_eq!(now.physical, [0, 3, 1]);
+        let homes = now.homes(&start);
+        let mut seen = homes.clone();
+        seen.sort_unstable();
+        assert_eq!(seen, [0, 1, 2, 3, 4]);
+        assert_eq!((homes[0], homes[3], homes[1], homes[4]), (2, 0, 1, 4));
+    }
+}

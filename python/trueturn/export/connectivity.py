@@ -45,7 +45,7 @@ def edges_of(connectivity: object, qubits: int) -> tuple[int, Edges | None]:
         count, edges = connectivity.sites, connectivity.bonds
     else:
         edges = _pairs(connectivity)
-        count = 1 + max((max(pair) for pair in edges), default=-1)
+        count = 1 + max((max(pair) for pair in edges), default=0)
     if count < qubits:
         raise _refuse(f"has {count} qubits, the circuit {qubits}", count, "join at least as many as the circuit has")
     return count, edges
