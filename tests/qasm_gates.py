@@ -25,7 +25,10 @@ FIXED = {
 """First argument of a gate is the low bit of its matrix index."""
 
 GENERATORS = {"rx": _X, "ry": _Y, "rz": _Z, "rzz": np.kron(_Z, _Z)}
-LIBRARY = {2: set("cx h s sdg rx ry rz cz".split()), 3: set("cx h s sdg rx ry rz cz swap".split())}
+LIBRARY = {
+    2: set(["cx", "h", "s", "sdg", "rx", "ry", "rz", "cz"]),
+    3: set(["cx", "h", "s", "sdg", "rx", "ry", "rz", "cz", "swap"]),
+}
 GATE = re.compile(r"(\w+)(?:\((.*)\))? (q\[\d+\](?:, q\[\d+\])*);")
 
 
@@ -108,7 +111,7 @@ def rotations(text):
     strings = {(x, z): string(x, z, qubits) for x in range(2**qubits) for z in range(2**qubits)}
     found = []
     for name, angle, places in gates:
-        if angle is None or abs(angle) == pi / 2 and name == "rx":
+        if angle is None or (abs(angle) == pi / 2 and name == "rx"):
             clifford = apply(clifford, matrix(name, angle), places, qubits)
             continue
         conjugated = clifford.conj().T @ apply(clifford, GENERATORS[name], places, qubits)

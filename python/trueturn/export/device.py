@@ -64,7 +64,7 @@ class Device:
     order: str = "ascending"
     join_pairs: bool = True
     native: str = "cx"
-    connectivity: None | str | Lattice | Sequence[tuple[int, int]] = None
+    connectivity: str | Lattice | Sequence[tuple[int, int]] | None = None
     layout: Sequence[int] | None = None
     routing: str = "fewest"
     two_qubit_error: float | None = None
