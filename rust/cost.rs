@@ -4,9 +4,10 @@ use std::collections::VecDeque;
 
 use crate::rotations::{Block, Body, Rotation, Rotations};
 
-/// Two-qubit gates: 2(w-1) for a rotation of weight w, one ladder down and one up.
+/// Two-qubit gates: 2(w-1) for a rotation of weight w, one ladder down and one up; those of a frame's Clifford included, while
+/// its relabelling takes none.
 pub fn two_qubit_gates(rotations: &Rotations) -> u64 {
-    let mut sum = 0u64;
+    let mut sum: u64 = rotations.frame().map_or(0, |frame| frame.rotations().iter().map(ladder_gates).sum());
     rotations.for_each_list(&mut |list, times| {
         let once: u64 = list.iter().map(ladder_gates).sum();
         sum = sum.saturating_add(once.saturating_mul(times));
@@ -27,6 +28,8 @@ fn ladder_gates(rotation: &Rotation) -> u64 {
 pub fn depth(rotations: &Rotations) -> u64 {
     let mut free_at = vec![0u64; rotations.qubits() as usize];
     advance(rotations.blocks(), &mut free_at);
+    let last = rotations.frame().map_or(vec![], |frame| frame.rotations());
+    last.iter().for_each(|rotation| schedule(rotation, &mut free_at));
     free_at.into_iter().max().unwrap_or(0)
 }
 

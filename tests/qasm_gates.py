@@ -25,10 +25,8 @@ FIXED = {
 """First argument of a gate is the low bit of its matrix index."""
 
 GENERATORS = {"rx": _X, "ry": _Y, "rz": _Z, "rzz": np.kron(_Z, _Z)}
-LIBRARY = {
-    2: set(["cx", "h", "s", "sdg", "rx", "ry", "rz", "cz"]),
-    3: set(["cx", "h", "s", "sdg", "rx", "ry", "rz", "cz", "swap"]),
-}
+COMMON = {"cx", "h", "s", "sdg", "rx", "ry", "rz", "cz"}
+LIBRARY = {2: COMMON, 3: COMMON | {"swap"}}
 GATE = re.compile(r"(\w+)(?:\((.*)\))? (q\[\d+\](?:, q\[\d+\])*);")
 
 

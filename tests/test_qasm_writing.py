@@ -15,24 +15,39 @@ from hypothesis import strategies as st
 import oracle
 import qasm_gates
 import trueturn as tt
-from strategies import circuits, gate_options, pair_circuits
+from strategies import circuits, gate_options, pair_circuits, pauli_strings
 from trueturn.errors import ArgumentError, RotationError
 
 UNIT = 2.0**-53
 
 
 def dense(circuit):
-    matrix = np.exp(1j * circuit.phase) * np.eye(2**circuit.qubits, dtype=complex)
-    for x, z, angle in zip(circuit.x_masks, circuit.z_masks, circuit.angles, strict=True):
-        matrix = oracle.rotation(int(x), int(z), angle, circuit.qubits) @ matrix
-    return matrix
+    matrix = np.exp(1j * (circuit.phase + circuit.frame.phase)) * np.eye(2**circuit.qubits, dtype=complex)
+    for one in (circuit, circuit.frame):
+        for x, z, angle in zip(one.x_masks, one.z_masks, one.angles, strict=True):
+            matrix = oracle.rotation(int(x), int(z), angle, circuit.qubits) @ matrix
+    index = np.arange(2**circuit.qubits)
+    moved = sum((index >> qubit & 1) << target for qubit, target in enumerate(circuit.relabelling))
+    done = np.empty_like(matrix)
+    done[moved] = matrix
+    return done
+
+
+@st.composite
+def framed(draw, inner):
+    """A circuit that ends in a Clifford and a relabelling."""
+    circuit = draw(inner)
+    strings = draw(st.lists(pauli_strings(circuit.qubits), max_size=5))
+    turns = [draw(st.integers(-3, 3)) * np.pi / 4 for _ in strings]
+    clifford = tt.Rotations([x for x, _ in strings], [z for _, z in strings], turns, circuit.qubits, np.pi / 4)
+    return circuit.with_frame(clifford, draw(st.permutations(range(circuit.qubits))))
 
 
 def tolerance(circuit, gates):
     """Each gate, and each rotation of the oracle, errs by at most 8 u in any entry of a 2-norm column; a phase φ, summed in
     another order, by u times the sum of its parts."""
     parts = abs(circuit.phase) + float(np.abs(circuit.angles).sum())
-    return UNIT * (8 * (gates + circuit.count) + 4 * parts + 8)
+    return UNIT * (8 * (gates + circuit.count + circuit.frame.count) + 4 * parts + 8)
 
 
 def assert_same(text, circuit, phase_kept):
@@ -52,6 +67,16 @@ def test_the_unitary_is_that_of_the_circuit_phase_included(circuit, device):
 @given(st.one_of(circuits(max_qubits=4), pair_circuits()), gate_options)
 def test_version_2_gives_the_unitary_up_to_its_phase(circuit, device):
     assert_same(circuit.qasm(2, **device), circuit, phase_kept=False)
+
+
+@given(framed(st.one_of(circuits(max_qubits=4, max_count=5), pair_circuits())), gate_options)
+def test_a_frame_is_written_as_clifford_gates_and_swaps(circuit, device):
+    text = circuit.qasm(3, **device)
+    assert_same(text, circuit, phase_kept=True)
+    assert_same(circuit.qasm(2, **device), circuit, phase_kept=False)
+    rotations = sum(angle is not None and abs(angle) != np.pi / 2 for _, angle, _ in qasm_gates.statements(text)[3])
+    assert rotations <= circuit.count
+    assert circuit.cost(**device).rotations <= circuit.count
 
 
 def test_eight_qubits_with_long_strings_agree_too():
@@ -92,7 +117,8 @@ def devices(draw, qubits):
 
 @given(st.data())
 def test_routed_circuits_use_joined_qubits_only_and_do_the_same(data):
-    circuit = data.draw(st.one_of(circuits(max_qubits=4, max_count=6), pair_circuits()))
+    plain = st.one_of(circuits(max_qubits=4, max_count=6), pair_circuits())
+    circuit = data.draw(st.one_of(plain, framed(plain)))
     device = data.draw(devices(circuit.qubits)) | data.draw(gate_options)
     text = circuit.qasm(**device)
     cost = circuit.cost(**device)

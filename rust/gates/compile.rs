@@ -1,13 +1,17 @@
 //! From rotations to gates, one after the other; repeated blocks stay repeated.
 
 use std::collections::HashMap;
+use std::f64::consts::FRAC_PI_4;
 
 use super::cancel::{Canceller, Sink};
 use super::device::{Device, Layout};
 use super::gate::{Gate, Item};
 use super::ladder::{Gathering, Shape, along, anywhere, controlled_not_along};
 use super::pair::{Role, groups, letter, renaming};
+use crate::clifford::Turn;
 use crate::error::{Error, Result};
+use crate::frame::Frame;
+use crate::pauli::PauliString;
 use crate::rotations::{Block, Body, Rotation, Rotations};
 use crate::terms::Check;
 
@@ -64,6 +68,16 @@ pub struct Options {
     pub layout: Layout,
 }
 
+impl Options {
+    /// Whether every qubit is where its number says and all are joined, so that no layout need be stated.
+    fn in_place(&self) -> bool {
+        let itself = |(qubit, &place): (usize, &u16)| qubit == usize::from(place);
+        self.device.is_none()
+            && self.layout.physical.len() == self.qubits
+            && self.layout.physical.iter().enumerate().all(itself)
+    }
+}
+
 /// Writes a circuit as gates into a sink and returns where the logical qubits end.
 ///
 /// # Errors
@@ -78,6 +92,9 @@ pub fn compile(circuit: &Rotations, options: &Options, sink: &mut dyn Sink, chec
     };
     let mut out = Canceller::new(sink, options.qubits);
     compiler.blocks(circuit.blocks(), &mut out)?;
+    if let Some(frame) = circuit.frame() {
+        compiler.frame(frame, &mut out)?;
+    }
     out.finish()?;
     Ok(compiler.layout)
 }
@@ -148,45 +165,91 @@ impl Compiler<'_> {
     }
 
     fn alone(&mut self, rotation: &Rotation, out: &mut Canceller<'_>) -> Result<()> {
-        let support = rotation.string.support();
+        let string = rotation.string;
         let angle = doubled(rotation.angle)?;
-        match support.count_ones() {
-            0 => return Ok(()), // a global phase, see `global_phase`
-            1 => {
-                let qubit = support.trailing_zeros();
-                let at = self.layout.physical[qubit as usize];
-                return out.gate(match letter(rotation.string, qubit) {
-                    1 => Gate::Rx(at, angle),
-                    2 => Gate::Ry(at, angle),
-                    _ => Gate::Rz(at, angle),
-                });
-            }
-            _ => {}
+        if string.weight() != 1 {
+            return self.around(string, out, |root, partner| match partner {
+                Some(partner) => vec![Gate::Zz(partner, root, angle)],
+                None => vec![Gate::Rz(root, angle)],
+            });
         }
-        let mut qubits: Vec<u32> = (0..self.logical).filter(|qubit| support >> qubit & 1 == 1).collect();
+        let qubit = string.support().trailing_zeros();
+        let at = self.layout.physical[qubit as usize];
+        out.gate(match letter(string, qubit) {
+            1 => Gate::Rx(at, angle),
+            2 => Gate::Ry(at, angle),
+            _ => Gate::Rz(at, angle),
+        })
+    }
+
+    /// Gates between a ladder and its inverse; `centre` gets the qubit with the parity, and where the device has a native
+    /// exp(-i θ Z Z), the last rung's other end instead of that rung. The identity is a global phase: no gates.
+    fn around(
+        &mut self,
+        string: PauliString,
+        out: &mut Canceller<'_>,
+        centre: impl FnOnce(u16, Option<u16>) -> Vec<Gate>,
+    ) -> Result<()> {
+        let mut qubits: Vec<u32> = (0..self.logical).filter(|qubit| string.support() >> qubit & 1 == 1).collect();
+        if qubits.is_empty() {
+            return Ok(());
+        }
         if self.options.order == Order::ZFirst {
-            qubits.sort_by_key(|&qubit| [0u8, 1, 2, 0][usize::from(letter(rotation.string, qubit))]);
+            qubits.sort_by_key(|&qubit| [0u8, 1, 2, 0][usize::from(letter(string, qubit))]);
         }
-        let Gathering { mut rungs, root } = self.gathering((rotation.string.x, rotation.string.z), &qubits, out)?;
+        let Gathering { mut rungs, root } = self.gathering((string.x, string.z), &qubits, out)?;
         let partner = if self.options.native == Native::Zz { rungs.pop().map(|(control, _)| control) } else { None };
-        let bases: Vec<Gate> = qubits.iter().filter_map(|&qubit| self.basis(rotation, qubit)).collect();
+        let bases: Vec<Gate> = qubits.iter().filter_map(|&qubit| self.basis(string, qubit)).collect();
         bases.iter().try_for_each(|&gate| out.gate(gate))?;
         rungs.iter().try_for_each(|&(control, target)| self.cx(control, target, out))?;
-        out.gate(match partner {
-            Some(partner) => Gate::Zz(partner, root, angle),
-            None => Gate::Rz(root, angle),
-        })?;
+        centre(root, partner).into_iter().try_for_each(|gate| out.gate(gate))?;
         rungs.iter().rev().try_for_each(|&(control, target)| self.cx(control, target, out))?;
         bases.iter().rev().filter_map(|gate| gate.inverse()).try_for_each(|gate| out.gate(gate))
     }
 
-    fn basis(&self, rotation: &Rotation, qubit: u32) -> Option<Gate> {
+    fn basis(&self, string: PauliString, qubit: u32) -> Option<Gate> {
         let at = self.layout.physical[qubit as usize];
-        match letter(rotation.string, qubit) {
+        match letter(string, qubit) {
             1 => Some(Gate::H(at)),
             2 => Some(Gate::Quarter(at)),
             _ => None,
         }
+    }
+
+    /// The Clifford that follows the rotations, and the relabelling: swaps where the file is about logical qubits, a change
+    /// of the layout where it is about physical ones.
+    fn frame(&mut self, frame: &Frame, out: &mut Canceller<'_>) -> Result<()> {
+        for &Turn { string, turns } in frame.turns() {
+            // exp(-i t π/4 Z) is S^t up to a phase, on two qubits with a controlled NOT around it.
+            self.around(string, out, |root, partner| {
+                let inner = match turns % 4 {
+                    0 => vec![],
+                    1 => vec![Gate::S(root)],
+                    2 => vec![Gate::S(root); 2],
+                    _ => vec![Gate::Sdg(root)],
+                };
+                let rung = partner.map(|control| Gate::Cx(control, root));
+                rung.into_iter().chain(inner).chain(rung).collect()
+            })?;
+        }
+        let moves = frame.relabelling();
+        if self.options.in_place() {
+            let mut homes = moves.to_vec();
+            for place in 0..homes.len() {
+                while homes[place] as usize != place {
+                    let home = homes[place] as usize;
+                    homes.swap(place, home);
+                    out.gate(Gate::Swap(place as u16, home as u16))?;
+                }
+            }
+            return Ok(());
+        }
+        let mut physical = self.layout.physical.clone();
+        for (qubit, &target) in moves.iter().enumerate() {
+            physical[target as usize] = self.layout.physical[qubit];
+        }
+        self.layout = Layout::new(physical, self.options.qubits);
+        Ok(())
     }
 
     fn gathering(&mut self, key: (u128, u128), qubits: &[u32], out: &mut Canceller<'_>) -> Result<Gathering> {
@@ -334,7 +397,7 @@ fn doubled(angle: f64) -> Result<f64> {
     })
 }
 
-/// The global phase of a circuit, its identity strings included, in radians.
+/// The global phase that a circuit has over its gates, in radians: its own, that of identity strings, that of a frame.
 pub fn global_phase(circuit: &Rotations) -> f64 {
     let mut phase = circuit.phase();
     circuit.for_each_list(&mut |list, times| {
@@ -342,5 +405,9 @@ pub fn global_phase(circuit: &Rotations) -> f64 {
             phase -= rotation.angle * times as f64;
         }
     });
-    phase
+    let eighths = circuit.frame().map_or(0, |frame| {
+        let turned: u32 = frame.turns().iter().map(|turn| u32::from(turn.turns)).sum();
+        (u32::from(frame.eighths()) + 7 * turned) % 8
+    });
+    phase + f64::from(eighths) * FRAC_PI_4
 }
