@@ -9,7 +9,7 @@ from trueturn.audit import Audit, Candidate, audit
 from trueturn.comparison import Comparison, compare
 from trueturn.driven import Driven, DrivenReference, driven_reference
 from trueturn.error_saving import Improved
-from trueturn.export import Cost, CostTable, Device, compare_costs
+from trueturn.export import Cost, CostTable, compare_costs
 from trueturn.extrapolation import Extrapolation, extrapolate, multiproduct_weights, well_conditioned_steps
 from trueturn.formulas import Formula, formula, formulas, read_formulas
 from trueturn.formulas.processed import Processed
@@ -32,7 +32,6 @@ __all__ = [
     "Comparison",
     "Cost",
     "CostTable",
-    "Device",
     "Driven",
     "DrivenReference",
     "Extrapolation",

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 from trueturn import _memory, _native
 from trueturn.errors import RotationError
-from trueturn.export.device import Device, Placed
+from trueturn.export.hardware import Hardware, Placed
 from trueturn.ladders import is_list
 from trueturn.rotations import Rotations
 
@@ -79,9 +79,9 @@ class Cost:
         return tuple(said)
 
 
-def cost_of(circuit: Rotations, device: Device) -> Cost:
+def cost_of(circuit: Rotations, hardware: Hardware) -> Cost:
     """Count the gates of a circuit on a device; see `Rotations.cost`."""
-    return written_as(circuit, device.placed(circuit.qubits))[0]
+    return written_as(circuit, hardware.placed(circuit.qubits))[0]
 
 
 def written_as(circuit: Rotations, placed: Placed) -> tuple[Cost, _native.GateOptions]:
@@ -102,7 +102,7 @@ def written_as(circuit: Rotations, placed: Placed) -> tuple[Cost, _native.GateOp
 def _counted(circuit: Rotations, placed: Placed, options: _native.GateOptions, routing: str) -> Cost:
     numbers, end = _native.gate_counts(circuit._circuit, options)
     controlled, zz, swaps, one_qubit, clifford, t_like, other, depth, two_qubit_depth = numbers
-    device = placed.device
+    hardware = placed.hardware
     two_qubit = min(controlled + zz + 3 * swaps, 2**64 - 1)
     return Cost(
         two_qubit_gates=two_qubit,
@@ -114,9 +114,9 @@ def _counted(circuit: Rotations, placed: Placed, options: _native.GateOptions, r
         rotations=min(clifford + t_like + other, 2**64 - 1),
         clifford_rotations=clifford,
         t_rotations=t_like,
-        t_count=t_like + t_count(other, device.synthesis_error),
-        synthesis_error=device.synthesis_error,
-        success=_success(device, two_qubit, one_qubit, circuit.qubits),
+        t_count=t_like + t_count(other, hardware.synthesis_error),
+        synthesis_error=hardware.synthesis_error,
+        success=_success(hardware, two_qubit, one_qubit, circuit.qubits),
         routing=routing,
         start_layout=placed.layout,
         end_layout=tuple(end),
@@ -155,8 +155,8 @@ def t_count(rotations: int, synthesis_error: float) -> int:
     return max(0, math.ceil(rotations * 3.0 * (math.log2(rotations) - math.log2(synthesis_error))))
 
 
-def _success(device: Device, two_qubit: int, one_qubit: int, qubits: int) -> float | None:
-    rates = (device.two_qubit_error, device.one_qubit_error, device.readout_error)
+def _success(hardware: Hardware, two_qubit: int, one_qubit: int, qubits: int) -> float | None:
+    rates = (hardware.two_qubit_error, hardware.one_qubit_error, hardware.readout_error)
     if all(rate is None for rate in rates):
         return None
     return math.exp(

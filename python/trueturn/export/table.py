@@ -9,7 +9,7 @@ from typing import Any
 from trueturn.audit.figures import count
 from trueturn.errors import ArgumentError
 from trueturn.export.cost import Cost, cost_of
-from trueturn.export.device import Device
+from trueturn.export.hardware import Hardware
 from trueturn.rotations import Rotations
 
 __all__ = ["CostTable", "compare_costs"]
@@ -85,5 +85,5 @@ def compare_costs(circuits: Mapping[str, Rotations], **device: Any) -> CostTable
             argument="circuits",
             value=circuits,
         )
-    target = Device.of(device)
+    target = Hardware.of(device)
     return CostTable({name: cost_of(circuit, target) for name, circuit in circuits.items()})
