@@ -19,6 +19,7 @@ from trueturn.operator import Operator
 from trueturn.partition import Partition
 from trueturn.reference import Certificate, Reference, reference
 from trueturn.rotations import Rotations
+from trueturn.scaling import PowerLaw, fit_steps
 from trueturn.state import State
 from trueturn.symmetry import Symmetries, Symmetry, symmetries
 
@@ -38,6 +39,7 @@ __all__ = [
     "Instance",
     "Operator",
     "Partition",
+    "PowerLaw",
     "Processed",
     "Reference",
     "Rotations",
@@ -54,6 +56,7 @@ __all__ = [
     "driven_reference",
     "errors",
     "extrapolate",
+    "fit_steps",
     "formula",
     "formulas",
     "lattice",
