@@ -186,7 +186,7 @@ class PowerLaw:
 
     def __call__(self, size: float) -> float:
         """Return the value on the curve."""
-        return self.prefactor * _positive("size", size) ** self.exponent
+        return float(self.prefactor * _positive("size", size) ** self.exponent)
 
     @property
     def residuals(self) -> tuple[float, ...]:
