@@ -124,7 +124,7 @@ def device_budget(
     >>> found = device_budget(chain, 0.5, ["lie", "strang"], magnetisation, 0.05, two_qubit_error=1e-5,
     ...     algorithmic={"lie": lambda r: 0.3 / r, "strang": lambda r: 0.2 / r**2})
     >>> found.best.label, found.best.steps, found.verdict
-    ('strang, commuting', 13, 'meets')
+    ('strang, commuting', 7, 'meets')
     """
     chosen = checked_candidates(candidates)
     moment = checked_problem(operator, time, observable, tolerance, state)
