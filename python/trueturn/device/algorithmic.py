@@ -146,4 +146,8 @@ class Measurements:
             return ErrorLaw("fitted", f"at most {nearest(ceiling)} wherever measured", width, lambda _: ceiling)
         law = PowerLaw.fit([count for count, _ in clear], [high for _, high in clear], variable="r", what="error")
         raised = math.exp(max(law.residuals))
-        return ErrorLaw("fitted", f"{law!r}, raised to {raised:.3f} times", width, lambda count: raised * law(count))
+        words = (
+            f"{nearest(raised * law.prefactor)} r^{nearest(law.exponent)} over {len(clear)} counts from "
+            f"{clear[0][0]} to {clear[-1][0]}"
+        )
+        return ErrorLaw("fitted", words, width, lambda steps: raised * law(steps))

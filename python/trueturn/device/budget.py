@@ -136,7 +136,7 @@ def device_budget(
     low, high = bare.spectral_interval()
     width = high - low
     scale = shot_scale(bare.one_norm(), checked_variance(variance), sure)
-    fixed = min(width, width * (allowed or 0.0)) + (0.0 if shots is None else scale / math.sqrt(shots))
+    synthesis, shot = width * (allowed or 0.0), (0.0 if shots is None else scale / math.sqrt(shots))
     measurements = None
     if state is not None:
         measurements = Measurements(operator, state, moment, observable, tolerance, threads, progress)
@@ -153,7 +153,7 @@ def device_budget(
             left_out[candidate.label] = str(refusal)
             continue
         counts = Counts(candidate, partition, moment, observable, gates or Rotations.two_qubit_gates)
-        plans.append(Plan(candidate, partition, law, counts, width, fixed, most_steps))
+        plans.append(Plan(candidate, partition, law, counts, width, synthesis, shot, most_steps))
     if given:
         known = ", ".join(f"{candidate.label!r}" for candidate in chosen)
         raise ArgumentError(
@@ -167,9 +167,7 @@ def device_budget(
             name=chosen[0].label,
             choices=(),
         )
-    spent = [
-        _spending(plan, rate, float(tolerance), shots, scale, allowed, moment, measurements, gates) for plan in plans
-    ]
+    spent = [_spending(plan, rate, float(tolerance), scale, allowed, moment, measurements, gates) for plan in plans]
     # With perfect gates every total can be made as small as any: then the fewest gates that meet come first.
     rows = tuple(
         sorted(spent, key=lambda row: (row.verdict != "meets", row.gates_in_cone) if rate == 0.0 else (row.total, 0))
@@ -214,16 +212,14 @@ def _spending(
     plan: Plan,
     rate: float,
     tolerance: float,
-    shots: int | None,
     scale: float,
     synthesis_error: float | None,
     time: float,
     measurements: Measurements | None,
     gates: Callable[[Rotations], int] | None,
 ) -> Spending:
-    slack = tolerance - plan.fixed
     steps = plan.best_steps(rate)
-    fewest = plan.fewest_steps(rate, steps, slack)
+    fewest = plan.fewest_steps(rate, steps, tolerance)
     if rate == 0.0 and fewest is not None:
         steps = fewest  # with perfect gates more steps only cost
     algorithmic, kind, measured = plan.law(steps), plan.law.kind, None
@@ -232,9 +228,8 @@ def _spending(
         # The larger of both: an error that happens to vanish at one step count is no accuracy.
         if measured[1] >= algorithmic:
             algorithmic, kind = measured[1], "measured"
-    noise, inside = plan.noise(steps, rate), plan.counts(steps)
-    shot = 0.0 if shots is None else scale / math.sqrt(shots)
-    total = algorithmic + noise + plan.fixed
+    inside = plan.counts(steps)
+    total = plan.total(steps, rate, algorithmic)
     circuit = plan.candidate.formula.rotations(plan.partition, time, steps)
     return Spending(
         candidate=plan.candidate,
@@ -245,14 +240,14 @@ def _spending(
         algorithmic_kind=kind,
         law=plan.law.words,
         measured=measured,
-        gates=noise,
-        synthesis=plan.fixed - shot,
-        shots=shot,
+        gates=plan.noise(steps, rate),
+        synthesis=plan.synthesis,
+        shots=plan.shots,
         total=total,
         two_qubit_gates=(gates or Rotations.two_qubit_gates)(circuit),
         gates_in_cone=inside.gates,
         t_count=None if synthesis_error is None else t_gates(inside.general, inside.tees, synthesis_error),
-        needed_shots=fitting_shots(scale, tolerance - (total - shot)),
-        allowed_error=plan.allowed_error(slack),
+        needed_shots=fitting_shots(scale, tolerance - (total - plan.shots)),
+        allowed_error=plan.allowed_error(tolerance),
         verdict="meets" if total <= tolerance else "misses",
     )

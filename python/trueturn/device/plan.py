@@ -24,38 +24,50 @@ _RATES_PER_DECADE = 4
 
 @dataclass
 class Plan:
-    """One candidate with its error law and its gate counts; `fixed` are the shares that no step count changes."""
+    """One candidate with its error law and its gate counts.
+
+    `synthesis` and `shots` are the shares that no step count changes. All but the shots are capped together at `width`,
+    since no two expectations differ by more; where the cap is reached, the result is no better than a guess.
+    """
 
     candidate: Candidate
     partition: Partition
     law: ErrorLaw
     counts: Counts
     width: float
-    fixed: float
+    synthesis: float
+    shots: float
     most: int
 
     def noise(self, steps: int, rate: float) -> float:
         return self.width * gate_share(self.counts(steps).gates, rate)
 
-    def varying(self, steps: int, rate: float) -> float:
-        return self.law(steps) + self.noise(steps, rate)
+    def total(self, steps: int, rate: float, algorithmic: float | None = None) -> float:
+        """Return the sum of all shares; `algorithmic` stands in for the law where something is known at `steps`."""
+        error = self.law(steps) if algorithmic is None else algorithmic
+        return min(self.width, error + self.noise(steps, rate) + self.synthesis) + self.shots
 
     def best_steps(self, rate: float) -> int:
-        """Return where algorithm and gates together are least."""
-        return least_at(lambda r: self.varying(r, rate), lambda r: self.noise(r, rate), self.most)
+        """Return where the total is least; 1 where it never gets below the cap."""
+        return least_at(
+            lambda r: self.total(r, rate),
+            lambda r: min(self.width, self.noise(r, rate) + self.synthesis) + self.shots,
+            self.most,
+        )
 
-    def fewest_steps(self, rate: float, best: int, slack: float) -> int | None:
-        """Return the smallest count up to `best` whose error is within `slack`; errors fall up to there."""
-        if self.varying(best, rate) > slack:
+    def fewest_steps(self, rate: float, best: int, tolerance: float) -> int | None:
+        """Return the smallest count up to `best` whose total is within the tolerance; totals fall up to there."""
+        if self.total(best, rate) > tolerance:
             return None
         low, high = 0, best
         while high - low > 1:
             middle = (low + high) // 2
-            low, high = (low, middle) if self.varying(middle, rate) <= slack else (middle, high)
+            low, high = (low, middle) if self.total(middle, rate) <= tolerance else (middle, high)
         return high
 
-    def allowed_error(self, slack: float) -> float | None:
-        """Return the largest rate at which some step count stays within `slack`."""
+    def allowed_error(self, tolerance: float) -> float | None:
+        """Return the largest rate at which some step count stays within the tolerance."""
+        slack = tolerance - self.synthesis - self.shots
 
         def rate(left: float, steps: int) -> float:
             return largest_gate_error(self.counts(steps).gates, left / self.width) if left > 0.0 else 0.0
@@ -80,7 +92,7 @@ def _crossover(lower: Plan, higher: Plan) -> Crossover:
 
     def lead(rate: float) -> float:
         """Return by how much the higher order is better; 0 where neither is better than a guess."""
-        ours, theirs = (min(plan.width, plan.varying(plan.best_steps(rate), rate)) for plan in (higher, lower))
+        ours, theirs = (plan.total(plan.best_steps(rate), rate) for plan in (higher, lower))
         return theirs - ours if abs(theirs - ours) > 1e-9 * lower.width else 0.0
 
     first, last = (math.log10(rate) for rate in _RATES)

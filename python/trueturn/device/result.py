@@ -43,7 +43,7 @@ class Spending:
     shots : float
         Statistical share at the confidence of the budget; 0 where no number of shots is given.
     total : float
-        Their sum.
+        Their sum, all but the shots capped at W: no two expectations differ by more.
     two_qubit_gates, gates_in_cone : int
         Of the whole circuit, and those whose noise can reach the observable.
     t_count : int or None

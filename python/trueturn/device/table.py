@@ -7,6 +7,7 @@ from textwrap import wrap
 from typing import TYPE_CHECKING, Any
 
 from trueturn.audit.figures import count, interval, nearest, plain, upper
+from trueturn.device.words import steps_words
 
 if TYPE_CHECKING:
     from trueturn.device.result import Budget, Spending
@@ -14,7 +15,7 @@ if TYPE_CHECKING:
 __all__ = ["document", "written"]
 
 GAP = "  "
-KINDS = {"proven": "proven bound", "measured": "as measured", "fitted": "by the fitted law", "given": "given"}
+KINDS = {"proven": "by proven bound", "measured": "as measured", "fitted": "by fitted law", "given": "as given"}
 
 
 def written(budget: Budget, width: int) -> str:
@@ -30,7 +31,7 @@ def written(budget: Budget, width: int) -> str:
             else f", rotations synthesised to {plain(budget.synthesis_error)} together"
         )
     )
-    lines = [*wrap(what, width), "", *wrap(budget.statement, width), "", *_grid(budget), ""]
+    lines = [*wrap(what, width), "", *wrap(budget.statement, width), "", *_grid(budget, width), ""]
     for row in budget.rows:
         lines += wrap(_remark(row), width, subsequent_indent="  ")
     lines += [line for crossover in budget.crossovers for line in wrap(str(crossover), width, subsequent_indent="  ")]
@@ -68,17 +69,20 @@ def document(budget: Budget) -> dict[str, Any]:
     }
 
 
-def _grid(budget: Budget) -> list[str]:
-    heads = ["", "steps", "algorithm", "gates", "synthesis", "shots", "total", "in cone", "T gates", "verdict"]
+def _grid(budget: Budget, width: int) -> list[str]:
+    """Lay the shares out; counts of gates move to the remarks where the width does not hold them."""
+    heads = ["", "steps", "algorithm", "gates", "synthesis", "shots", "total", "verdict", "in cone", "T gates"]
     cells = [_cells(row) for row in budget.rows]
-    if budget.synthesis_error is None:
-        heads, cells = _without(heads, (4, 8)), [_without(line, (4, 8)) for line in cells]
-    widths = [max(map(len, column)) for column in zip(heads, *cells, strict=True)]
+    idle = {4, 9} if budget.synthesis_error is None else set()
+    for unused in (idle, {*idle, 8, 9}):
+        kept = [[line[place] for place in range(len(heads)) if place not in unused] for line in (heads, *cells)]
+        widths = [max(map(len, column)) for column in zip(*kept, strict=True)]
+        if sum(widths) + len(GAP) * (len(widths) - 1) <= width:
+            break
     lines = []
-    for line in (heads, *cells):
-        first, *middle, last = line
-        padded = [cell.rjust(width) for cell, width in zip(middle, widths[1:-1], strict=True)]
-        lines.append(GAP.join([first.ljust(widths[0]), *padded, last]).rstrip())
+    for first, *others in kept:
+        padded = [cell.rjust(width) for cell, width in zip(others, widths[1:], strict=True)]
+        lines.append(GAP.join([first.ljust(widths[0]), *padded]).rstrip())
     return lines
 
 
@@ -91,24 +95,23 @@ def _cells(row: Spending) -> list[str]:
         upper(row.synthesis),
         upper(row.shots) if row.shots else "-",
         upper(row.total, 3),
+        row.verdict,
         count(row.gates_in_cone),
         "-" if row.t_count is None else count(row.t_count),
-        row.verdict,
     ]
 
 
-def _without(line: list[str], places: tuple[int, ...]) -> list[str]:
-    return [cell for place, cell in enumerate(line) if place not in places]
-
-
 def _remark(row: Spending) -> str:
-    parts = [f"algorithm {KINDS[row.algorithmic_kind]}"]
+    kind = KINDS[row.algorithmic_kind]
     if row.measured is not None:
-        parts[0] += f", {interval(*row.measured)} was measured"
-    parts.append(f"law: {row.law}")
-    parts.append(f"{count(row.two_qubit_gates)} two-qubit gates in all")
+        kind += f", {interval(*row.measured)} at {steps_words(row.steps)}"
+    law = "" if row.algorithmic_kind == "given" else f" ({row.law})"
+    parts = [f"algorithm {kind}{law}"]
+    parts.append(f"{count(row.gates_in_cone)} of {count(row.two_qubit_gates)} two-qubit gates in the cone")
+    if row.t_count is not None:
+        parts.append(f"{count(row.t_count)} T gates")
     if row.fewest_steps is not None and row.fewest_steps < row.steps:
-        parts.append(f"{count(row.fewest_steps)} steps suffice by the law")
+        parts.append(f"{steps_words(row.fewest_steps)} suffice by the law")
     parts.append(
         "no number of shots is enough" if row.needed_shots is None else f"{count(row.needed_shots)} shots are enough"
     )

@@ -7,7 +7,7 @@ from collections.abc import Sequence
 from trueturn.audit.figures import count, nearest, plain, upper
 from trueturn.device.result import Spending
 
-__all__ = ["ASSUMPTIONS", "statement"]
+__all__ = ["ASSUMPTIONS", "statement", "steps_words"]
 
 ASSUMPTIONS = (
     "Each two-qubit gate in the causal cone fails independently with the given probability, and a failure may do anything "
@@ -24,40 +24,42 @@ def statement(rows: Sequence[Spending], tolerance: float, width: float, rate: fl
             fewer = (
                 ""
                 if row.fewest_steps is None or row.fewest_steps == row.steps
-                else f"; by its law {count(row.fewest_steps)} steps suffice"
+                else f"; by its law {steps_words(row.fewest_steps)} suffice"
             )
+            merit = "least total" if rate > 0.0 else "fewest gates"
             return (
-                f"{row.label} with {count(row.steps)} steps has the least total of those that meet {plain(tolerance)}: "
+                f"{row.label} with {steps_words(row.steps)} has the {merit} of those that meet {plain(tolerance)}: total "
                 f"{upper(row.total, 3)}{fewer}."
             )
     best = rows[0]
-    fixed = best.synthesis + best.shots
     if best.shots > tolerance:
-        return (
-            f"No step count meets {plain(tolerance)}: shots alone are off by up to {nearest(best.shots)}; "
-            f"{_shots_words(best)}."
+        needed = (
+            "with the other shares no number of shots is enough"
+            if best.needed_shots is None
+            else f"{count(best.needed_shots)} are needed, with {best.label}"
         )
+        return f"No step count meets {plain(tolerance)}: shots alone are off by up to {nearest(best.shots)}; {needed}."
     if best.synthesis > tolerance:
         return f"No step count meets {plain(tolerance)}: synthesis alone is off by up to {nearest(best.synthesis)}."
+    rates = [(row.allowed_error, row.label) for row in rows if row.allowed_error is not None]
+    if rates:
+        enough, label = max(rates)
+        remedy = f"A two-qubit error rate of {nearest(enough)} instead of {plain(rate)} would do, with {label}."
+    else:
+        remedy = "Not even perfect gates would do within the step counts searched."
+    if best.total - best.shots >= width:
+        return f"No step count meets {plain(tolerance)}, and none is better than a guess. {remedy}"
     shares = (
         f"algorithm {nearest(best.algorithmic)}, gates {nearest(best.gates)}"
         + (f", synthesis {nearest(best.synthesis)}" if best.synthesis else "")
         + (f", shots {nearest(best.shots)}" if best.shots else "")
     )
-    useless = " That is no better than a guess." if best.total - fixed >= width else ""
-    rates = [(row.allowed_error, row.label) for row in rows if row.allowed_error is not None]
-    if rates:
-        needed, label = max(rates)
-        remedy = f" A two-qubit error rate of {nearest(needed)} instead of {plain(rate)} would do, with {label}."
-    else:
-        remedy = " Not even perfect gates would do within the step counts searched."
     return (
         f"No step count meets {plain(tolerance)}. The least total is {upper(best.total, 3)}, by {best.label} with "
-        f"{count(best.steps)} steps ({shares}).{useless}{remedy}"
+        f"{steps_words(best.steps)} ({shares}). {remedy}"
     )
 
 
-def _shots_words(row: Spending) -> str:
-    if row.needed_shots is None:
-        return "and with the other shares no number of shots is enough"
-    return f"{count(row.needed_shots)} shots are needed"
+def steps_words(steps: int) -> str:
+    """Write a step count."""
+    return f"{count(steps)} step{'s' if steps > 1 else ''}"

@@ -8,32 +8,17 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from trueturn.audit.report.canvas import GRID, INK, MARKERS, MUTED, PAPER, SERIES, logarithmic, own_settings
-from trueturn.errors import ArgumentError
+from trueturn.audit.report.canvas import GRID, INK, MARKERS, MUTED, SERIES, logarithmic, written
 
 if TYPE_CHECKING:
     from trueturn.scaling.result import Scaling
 
 __all__ = ["drawn"]
 
-ENDINGS = (".svg", ".png", ".pdf")
-
 
 def drawn(scaling: Scaling, path: Path, beyond: Sequence[float]) -> Path:
     """Draw a scaling into a file; see `Scaling.plot`."""
-    ending = path.suffix.lower()
-    if ending not in ENDINGS:
-        raise ArgumentError(
-            f"path: no ending of a picture ({path.name!r}); use {', '.join(ENDINGS)}", argument="path", value=path
-        )
-    with own_settings():
-        from matplotlib.figure import Figure
-
-        figure = Figure(figsize=(7.6, 4.9), layout="constrained", facecolor=PAPER)
-        _paint(scaling, figure, beyond)
-        undated: Any = {"Date": None} if ending == ".svg" else {"CreationDate": None} if ending == ".pdf" else None
-        figure.savefig(path, format=ending[1:], dpi=160, facecolor=PAPER, metadata=undated)
-    return path
+    return written(path, (7.6, 4.9), lambda figure: _paint(scaling, figure, beyond))
 
 
 def _paint(scaling: Scaling, figure: Any, beyond: Sequence[float]) -> None:
