@@ -7,6 +7,7 @@ from trueturn.accuracy import Bound, bound
 from trueturn.adaptive import AdaptiveRun, adaptive
 from trueturn.audit import Audit, Candidate, audit
 from trueturn.comparison import Comparison, compare
+from trueturn.device import Budget, CausalCone, causal_cone, device_budget
 from trueturn.driven import Driven, DrivenReference, driven_reference
 from trueturn.error_saving import Improved
 from trueturn.export import Cost, CostTable, compare_costs
@@ -20,6 +21,7 @@ from trueturn.operator import Operator
 from trueturn.partition import Partition
 from trueturn.reference import Certificate, Reference, reference
 from trueturn.rotations import Rotations
+from trueturn.scaling import Case, PowerLaw, Scaling, fit_steps, step_scaling
 from trueturn.state import State
 from trueturn.symmetry import Symmetries, Symmetry, symmetries
 
@@ -27,7 +29,10 @@ __all__ = [
     "AdaptiveRun",
     "Audit",
     "Bound",
+    "Budget",
     "Candidate",
+    "Case",
+    "CausalCone",
     "Certificate",
     "Comparison",
     "Cost",
@@ -41,9 +46,11 @@ __all__ = [
     "Instance",
     "Operator",
     "Partition",
+    "PowerLaw",
     "Processed",
     "Reference",
     "Rotations",
+    "Scaling",
     "State",
     "Symmetries",
     "Symmetry",
@@ -52,12 +59,15 @@ __all__ = [
     "audit",
     "bound",
     "build_info",
+    "causal_cone",
     "compare",
     "compare_costs",
+    "device_budget",
     "driven",
     "driven_reference",
     "errors",
     "extrapolate",
+    "fit_steps",
     "formula",
     "formulas",
     "lattice",
@@ -67,6 +77,7 @@ __all__ = [
     "read_formulas",
     "reference",
     "saved_gates",
+    "step_scaling",
     "symmetries",
     "threads",
     "well_conditioned_steps",

@@ -144,6 +144,36 @@ def formulas(job: Path | None, as_json: bool) -> int:
     return 0
 
 
+@commands.command()
+@click.argument("job", type=JOB)
+@click.option(
+    "--errors",
+    type=click.Choice(["measured", "proven"]),
+    default="measured",
+    help="Algorithmic errors: measured from the start state (default), or proven bounds without a state.",
+)
+@AS_JSON
+@THREADS
+def budget(job: Path, errors: str, as_json: bool, threads: int | None) -> int:
+    """Weigh the error of each formula of JOB against the noise of its [device].
+
+    For each observable at the last time: the step count of the least total error, and whether it meets the tolerance.
+    """
+    from trueturn.audit.job import read_job
+    from trueturn.device.job import job_budgets, job_document
+
+    task = read_job(job)
+    with progress_bar() as progress:
+        found = job_budgets(task, errors, threads=threads, progress=progress)
+    if as_json:
+        say_json(job_document(task, found))
+    else:
+        from rich.text import Text
+
+        say_rich(lambda width: Text("\n\n".join(f"{name}\n{one.table(width)}" for name, one in found.items())))
+    return STATUS["meets" if all(one.verdict == "meets" for one in found.values()) else "misses"]
+
+
 def reference_document(task: Job, found: Reference) -> dict[str, Any]:
     """Give a reference as plain data."""
     proof = found.certificate
