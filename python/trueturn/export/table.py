@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import asdict, dataclass
+from textwrap import wrap
 from typing import Any
 
 from trueturn.audit.figures import count
@@ -14,6 +15,7 @@ from trueturn.rotations import Rotations
 
 __all__ = ["CostTable", "compare_costs"]
 
+WIDTH = 100
 HEADINGS = ("two-qubit gates", "unsaved", "swaps", "two-qubit depth", "depth", "rotations", "T count", "success")
 
 
@@ -48,7 +50,7 @@ class CostTable:
             cells = [line[place] for place in kept]
             rows.append("  ".join([cells[0].ljust(widths[0]), *map(str.rjust, cells[1:], widths[1:])]).rstrip())
         said = dict.fromkeys(sentence for cost in self.rows.values() for sentence in cost.assumptions)
-        return "\n".join([*rows, *said])
+        return "\n".join([*rows, *(line for sentence in said for line in wrap(sentence, WIDTH))])
 
 
 def compare_costs(circuits: Mapping[str, Rotations], **device: Any) -> CostTable:
