@@ -162,6 +162,7 @@ def test_every_key_of_the_device_reaches_the_hardware():
         ('connectivity = "grid"\nrows = 2', r"device.rows: goes with a grid"),
         ('connectivity = "line"\nrows = 2\ncolumns = 2', r"device.rows: goes with a grid"),
         ("layout = [0, 1]", r"device.layout: has 2 entries for 4 qubits"),
+        ('layout = "serach"', r"device.layout: unknown \('serach'\); did you mean 'search'"),
         ("one_qubit_error = 2", r"device.one_qubit_error: no probability below 1"),
         ('readout_error = "x"', r"device.readout_error: not a number but a text"),
     ],

@@ -21,6 +21,7 @@ __all__ = [
     "instruction_sets",
     "overlap",
     "pairwise_sum",
+    "rung_counts",
     "squared_norms",
     "write_gates",
 ]
@@ -108,6 +109,7 @@ _Counts = tuple[int, int, int, int, int, int, int, int, int]
 def gate_counts(circuit: Rotations, options: GateOptions) -> tuple[_Counts, list[int]]: ...
 def write_gates(circuit: Rotations, options: GateOptions, loops: bool, write: Callable[[str], object]) -> None: ...
 def global_phase(circuit: Rotations) -> float: ...
+def rung_counts(circuit: Rotations) -> list[float]: ...
 
 _Progress = Callable[[int, int], object]
 

@@ -411,3 +411,22 @@ pub fn global_phase(circuit: &Rotations) -> f64 {
     });
     phase + f64::from(eighths) * FRAC_PI_4
 }
+
+/// How often each pair of qubits is a rung of an ascending ladder, row by row.
+pub fn rung_counts(circuit: &Rotations) -> Vec<f64> {
+    let qubits = circuit.qubits() as usize;
+    let mut counts = vec![0.0; qubits * qubits];
+    circuit.for_each_list(&mut |list, times| {
+        for rotation in list {
+            let mut left = rotation.string.support();
+            while left & left.wrapping_sub(1) != 0 {
+                let one = left.trailing_zeros() as usize;
+                left &= left - 1;
+                let next = left.trailing_zeros() as usize;
+                counts[one * qubits + next] += times as f64;
+                counts[next * qubits + one] += times as f64;
+            }
+        }
+    });
+    counts
+}

@@ -14,7 +14,7 @@ use pyo3::prelude::*;
 #[pymodule]
 mod _native {
     #[pymodule_export]
-    use super::gates::{PyGateOptions, gate_counts, global_phase, write_gates};
+    use super::gates::{PyGateOptions, gate_counts, global_phase, rung_counts, write_gates};
     #[pymodule_export]
     use super::rotations::PyRotations;
     #[pymodule_export]
