@@ -6,6 +6,7 @@ from trueturn._threads import threads
 from trueturn.accuracy import Bound, bound
 from trueturn.adaptive import AdaptiveRun, adaptive
 from trueturn.audit import Audit, Candidate, audit
+from trueturn.circuits.reading import Circuit, read_circuit, read_qasm
 from trueturn.comparison import Comparison, compare
 from trueturn.device import Budget, CausalCone, causal_cone, device_budget
 from trueturn.driven import Driven, DrivenReference, driven_reference
@@ -34,6 +35,7 @@ __all__ = [
     "Case",
     "CausalCone",
     "Certificate",
+    "Circuit",
     "Comparison",
     "Cost",
     "CostTable",
@@ -74,7 +76,9 @@ __all__ = [
     "model",
     "multiproduct_weights",
     "randomised",
+    "read_circuit",
     "read_formulas",
+    "read_qasm",
     "reference",
     "saved_gates",
     "step_scaling",

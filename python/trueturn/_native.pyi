@@ -21,6 +21,7 @@ __all__ = [
     "instruction_sets",
     "overlap",
     "pairwise_sum",
+    "read_qasm",
     "rung_counts",
     "squared_norms",
     "write_gates",
@@ -80,6 +81,7 @@ class Rotations:
         relabelling: Sequence[int],
     ) -> Rotations: ...
     def frame(self) -> tuple[Rotations, list[int]] | None: ...
+    def narrowed(self, qubits: int) -> Rotations | None: ...
     def inverse(self) -> Rotations: ...
     def same_as(self, other: Rotations) -> bool: ...
     def blocks(self) -> list[tuple[Rotations, int]]: ...
@@ -135,5 +137,24 @@ def chebyshev_sums(
 def overlap(left: npt.NDArray[Any], right: npt.NDArray[Any], threads: int) -> complex: ...
 def distance(left: npt.NDArray[Any], right: npt.NDArray[Any], factor: complex, threads: int) -> float: ...
 def squared_norms(state: npt.NDArray[Any], threads: int) -> npt.NDArray[np.float64]: ...
+
+_Range = tuple[bool, int, int]
+
+def read_qasm(
+    text: str,
+    folder: str | None,
+    keep: str,
+    prepare: _Range | None,
+    basis: _Range | None,
+    limit: int | None,
+) -> tuple[
+    list[Rotations],
+    int,
+    list[tuple[str, int, int]],
+    int,
+    list[tuple[int, str]],
+    list[tuple[int, int, str]],
+    str,
+]: ...
 def pairwise_sum(values: Sequence[float]) -> float: ...
 def instruction_sets() -> tuple[list[str], str]: ...
