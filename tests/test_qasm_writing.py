@@ -15,7 +15,7 @@ from hypothesis import strategies as st
 import oracle
 import qasm_gates
 import trueturn as tt
-from strategies import circuits, gate_options, pair_circuits, pauli_strings
+from strategies import circuits, framed, gate_options, pair_circuits
 from trueturn.errors import ArgumentError, RotationError
 
 UNIT = 2.0**-53
@@ -31,16 +31,6 @@ def dense(circuit):
     done = np.empty_like(matrix)
     done[moved] = matrix
     return done
-
-
-@st.composite
-def framed(draw, inner):
-    """A circuit that ends in a Clifford and a relabelling."""
-    circuit = draw(inner)
-    strings = draw(st.lists(pauli_strings(circuit.qubits), max_size=5))
-    turns = [draw(st.integers(-3, 3)) * np.pi / 4 for _ in strings]
-    clifford = tt.Rotations([x for x, _ in strings], [z for _, z in strings], turns, circuit.qubits, np.pi / 4)
-    return circuit.with_frame(clifford, draw(st.permutations(range(circuit.qubits))))
 
 
 def tolerance(circuit, gates):
