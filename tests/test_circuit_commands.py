@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import json
+import re
+from pathlib import Path
 
 import pytest
 
@@ -196,3 +198,11 @@ def test_what_cannot_be_written_is_refused(write, tmp_path, capsys, arguments, c
     assert cli.run([arguments[0], str(write(**changes)), *arguments[1:], *into]) == 2
     assert message in capsys.readouterr().err
     assert [entry.name for entry in tmp_path.iterdir()] == ["job.toml"]
+
+
+def test_the_page_shows_what_its_example_prints(tmp_path, monkeypatch, capsys):
+    page = (Path(__file__).parent.parent / "docs" / "circuits-out.md").read_text(encoding="utf-8")
+    code, printed = re.search(r"```python\n(.*?)```\n```\n(.*?)```", page, re.DOTALL).groups()
+    monkeypatch.chdir(tmp_path)
+    exec(compile(code, "circuits-out.md", "exec"), {})
+    assert capsys.readouterr().out == printed
