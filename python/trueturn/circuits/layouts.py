@@ -49,9 +49,7 @@ def marked_layouts(marks: Iterable[tuple[int, int, str]]) -> tuple[Layout | None
         numbers = re.fullmatch(r"\[((?:\s*\d{1,6}\s*,)*\s*\d{1,6}\s*)\]", value)
         layout = tuple(int(number) for number in numbers[1].split(",")) if numbers is not None else ()
         if not equals or not layout or len(set(layout)) != len(layout):
-            message = (
-                f"circuit: line {line}, column {column}: no list of different qubits ({text}); write {name} = [2, 0, 1]"
-            )
+            message = f"circuit: line {line}, column {column}: no list of different qubits ({text}); write {name} = [2, 0, 1]"
             raise QasmError(message, path="", line=line, column=column)
         if name in found:
             message = f"circuit: line {line}, column {column}: {name} is said twice; keep one of them"
@@ -82,11 +80,7 @@ class Layouts:
             A layout names a qubit that the circuit does not have, the layouts differ in length, or a qubit that the start
             layout does not list is used.
         """
-        if (
-            self.start is None
-            and self.end is None
-            and not any(part.relabelling != tuple(range(self.qubits)) for part in parts)
-        ):
+        if self.start is None and self.end is None and not any(part.relabelling != tuple(range(self.qubits)) for part in parts):
             return parts
         for name, layout in zip(NAMES, (self.start, self.end), strict=True):
             if layout is not None and max(layout) >= self.qubits:
