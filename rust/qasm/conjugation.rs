@@ -75,8 +75,7 @@ pub struct Builder {
 /// The nearest multiple of π/4, if the angle is as close as rounding explains: 4 units in the last place.
 fn eighths(angle: f64) -> Option<u8> {
     let turns = (angle / FRAC_PI_4).round();
-    let near =
-        turns != 0.0 && turns.abs() < 1e6 && (angle - turns * FRAC_PI_4).abs() <= 4.0 * f64::EPSILON * angle.abs();
+    let near = turns != 0.0 && turns.abs() < 1e6 && (angle - turns * FRAC_PI_4).abs() <= 4.0 * f64::EPSILON * angle.abs();
     near.then(|| (turns as i64).rem_euclid(8) as u8)
 }
 

@@ -64,9 +64,7 @@ impl Context<'_> {
             ("tau" | "τ", 3) => TAU,
             ("euler" | "ℇ", 3) => E,
             _ => {
-                return Err(
-                    place.refuse(format!("no constant of this name ({name}); declare it by const, or write pi"))
-                );
+                return Err(place.refuse(format!("no constant of this name ({name}); declare it by const, or write pi")));
             }
         }))
     }

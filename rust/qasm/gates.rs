@@ -160,8 +160,7 @@ impl<'a> Gates<'a> {
                 Statement::Call(call) => call,
                 Statement::Barrier(_) | Statement::Remark(_) => continue,
                 _ => {
-                    let message =
-                        format!("the body of gate {name} holds something else than gates ({name}); take it out");
+                    let message = format!("the body of gate {name} holds something else than gates ({name}); take it out");
                     return Err(place.refuse(message));
                 }
             };
@@ -301,10 +300,7 @@ impl<'a> Gates<'a> {
             };
             // A fault inside depends on the values of this call, so both places matter; the call's is the user's.
             let inside = |refusal: Refusal| {
-                place.refuse(format!(
-                    "in gate {}, line {}: {}",
-                    own.definition.name, refusal.place.line, refusal.message
-                ))
+                place.refuse(format!("in gate {}, line {}: {}", own.definition.name, refusal.place.line, refusal.message))
             };
             let values = self.arguments(call, &names).map_err(inside)?;
             let modifiers = self.modifiers(call, &names).map_err(inside)?;

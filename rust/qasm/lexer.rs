@@ -43,8 +43,8 @@ pub struct Mark<'a> {
 const MARK: &str = "trueturn:";
 /// Longest first, so that the first that fits is the right one.
 const SIGNS: [&str; 22] = [
-    "**=", "<<=", ">>=", "==", "!=", "<=", ">=", "->", "++", "**", "<<", ">>", "&&", "||", "+=", "-=", "*=", "/=",
-    "^=", "&=", "|=", "%=",
+    "**=", "<<=", ">>=", "==", "!=", "<=", ">=", "->", "++", "**", "<<", ">>", "&&", "||", "+=", "-=", "*=", "/=", "^=",
+    "&=", "|=", "%=",
 ];
 
 /// Reads one source from its start.
@@ -136,8 +136,7 @@ impl<'a> Lexer<'a> {
         };
         let (kind, length) = match first {
             '"' | '\'' => {
-                let Some(length) = rest[1..].find([first, '\n']).filter(|&end| rest[1 + end..].starts_with(first))
-                else {
+                let Some(length) = rest[1..].find([first, '\n']).filter(|&end| rest[1 + end..].starts_with(first)) else {
                     return Err(place.refuse("a text is opened and not closed on its line; close the quotes"));
                 };
                 self.at += length + 2;

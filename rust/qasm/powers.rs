@@ -96,10 +96,7 @@ fn unrolled(circuit: &crate::rotations::Rotations, repeat: u64) -> Option<Produc
 
 fn commuting(list: &[Rotation]) -> bool {
     list.len() <= 1 << MOST_GENERATORS
-        && list
-            .iter()
-            .enumerate()
-            .all(|(place, one)| list[..place].iter().all(|other| one.string.commutes_with(other.string)))
+        && list.iter().enumerate().all(|(place, one)| list[..place].iter().all(|other| one.string.commutes_with(other.string)))
 }
 
 fn scaled(mut product: Product, exponent: f64) -> Product {
@@ -148,10 +145,9 @@ fn commuting_power(product: &Product, exponent: f64) -> Option<Product> {
     let sign = |m: usize, sector: usize| if (m & sector).count_ones() & 1 == 1 { -1.0 } else { 1.0 };
     let mut spectrum: Vec<f64> = (0..all.len())
         .map(|sector| {
-            let turned = members
-                .iter()
-                .zip(&product.list)
-                .map(|(&m, rotation)| rotation.angle * sign(m, sector) * if all[m].1 { -1.0 } else { 1.0 });
+            let turned = members.iter().zip(&product.list).map(|(&m, rotation)| {
+                rotation.angle * sign(m, sector) * if all[m].1 { -1.0 } else { 1.0 }
+            });
             exponent * principal(product.phase - turned.sum::<f64>())
         })
         .collect();

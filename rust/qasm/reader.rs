@@ -114,9 +114,7 @@ impl<'a> Reader<'a> {
                 let text = match self.files.get(name) {
                     Some(Ok(text)) => text,
                     Some(Err(why)) => return Err(place.refuse(format!("cannot be included ({name}); {why}")).into()),
-                    None => {
-                        return Err(place.refuse(format!("cannot be included ({name}); write its name plainly")).into());
-                    }
+                    None => return Err(place.refuse(format!("cannot be included ({name}); write its name plainly")).into()),
                 };
                 self.opened.push(name);
                 if self.opened.len() > 100 {
@@ -147,8 +145,7 @@ impl<'a> Reader<'a> {
         let [prepare, basis] = self.named;
         let inside = |named: Option<Named>| named.is_some_and(|range| range.holds(self.gate_count, line.into()));
         // Lines count in the circuit's own file.
-        let own = place.source == 0
-            || matches!((prepare, basis), (Some(Named::Gates(..)) | None, Some(Named::Gates(..)) | None));
+        let own = place.source == 0 || matches!((prepare, basis), (Some(Named::Gates(..)) | None, Some(Named::Gates(..)) | None));
         let part = match (own && inside(prepare), own && inside(basis)) {
             (true, true) => {
                 return Err(place.refuse("prepare and basis name the same gate; name each gate once"));
@@ -298,10 +295,7 @@ impl<'a> Reader<'a> {
             for &qubit in &on {
                 if used >> qubit & 1 == 1 {
                     let shown = self.registers.shown(qubit);
-                    return Err(call.place.refuse(format!(
-                        "{} is applied to one qubit twice ({shown}); use different qubits",
-                        call.name
-                    )));
+                    return Err(call.place.refuse(format!("{} is applied to one qubit twice ({shown}); use different qubits", call.name)));
                 }
                 used |= 1 << qubit;
             }

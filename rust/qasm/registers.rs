@@ -95,9 +95,7 @@ impl<'a> Registers<'a> {
     /// A new register of qubits.
     pub fn add_qubits(&mut self, name: &'a str, size: i64, gates: &Gates, place: Place) -> Outcome<()> {
         if self.machine {
-            return Err(
-                place.refuse(format!("declared beside qubits of the machine, such as $0 ({name}); use one kind"))
-            );
+            return Err(place.refuse(format!("declared beside qubits of the machine, such as $0 ({name}); use one kind")));
         }
         let start = self.qubits;
         let room = i64::from(MOST_QUBITS - start);
@@ -242,8 +240,5 @@ fn entry(name: &str, at: i64, size: usize, place: Place) -> Outcome<usize> {
     if (0..size).contains(&found) {
         return Ok(found as usize);
     }
-    Err(place.refuse(format!(
-        "no entry of the register ({name}[{at}]); it has {size}, from {name}[0] to {name}[{}]",
-        size - 1
-    )))
+    Err(place.refuse(format!("no entry of the register ({name}[{at}]); it has {size}, from {name}[0] to {name}[{}]", size - 1)))
 }

@@ -52,9 +52,7 @@ impl<'a> Parser<'a> {
             _ => return Err(self.unexpected("a statement")),
         }
         match (start.text, self.version) {
-            ("OPENQASM", _) => {
-                Err(start.place.refuse("OPENQASM stands before everything else; move this line to the top"))
-            }
+            ("OPENQASM", _) => Err(start.place.refuse("OPENQASM stands before everything else; move this line to the top")),
             ("include", _) => self.include(),
             ("qreg" | "creg", _) | ("qubit" | "bit", 3) => self.register(),
             ("const", 3) => self.constant(),
@@ -237,7 +235,11 @@ impl<'a> Parser<'a> {
         } else {
             return Err(self.unexpected("a range such as [0:9] or a set such as {1, 2}"));
         };
-        let body = if self.is("{") { self.block("the loop's range")? } else { vec![self.deeper(Self::statement)?] };
+        let body = if self.is("{") {
+            self.block("the loop's range")?
+        } else {
+            vec![self.deeper(Self::statement)?]
+        };
         Ok(Statement::For { variable: variable.text, range, body, place: word.place })
     }
 

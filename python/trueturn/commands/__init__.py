@@ -1,1 +1,1 @@
-"""Commands that have a file of their own; `trueturn.cli` registers them."""
+"""Commands of `trueturn` that have a file of their own; `trueturn.cli` registers them."""
