@@ -13,6 +13,7 @@
 //! | [`compile`] | rotation by rotation into gates |
 //! | [`cancel`] | gates that undo each other go |
 //! | [`text`], [`count`] | what becomes of the gates |
+//! | [`totals`] | the global phase; which qubits interact |
 //!
 //! Everything is one stream, so that what is counted is what would be written. Repeated blocks are never written out here.
 
@@ -24,3 +25,4 @@ pub mod gate;
 pub mod ladder;
 pub mod pair;
 pub mod text;
+pub mod totals;
