@@ -9,6 +9,7 @@
 //! | [`frame`] | what a circuit ends with beside rotations: a Clifford and a relabelling |
 //! | [`qasm`] | reads OpenQASM 2 and 3 into rotations |
 //! | [`cost`] | two-qubit gates and depth, without writing a circuit out |
+//! | [`gates`] | circuits as gates of a device, written or counted |
 //! | [`operation`] | two commuting rotations with one x mask act as one |
 //! | [`passes`] | the planner: which rotations share one traversal of memory |
 //! | [`evolve`] | carries the passes out on a state vector |
@@ -29,6 +30,7 @@ pub mod cost;
 pub mod error;
 pub mod evolve;
 pub mod frame;
+pub mod gates;
 pub mod kernel;
 pub mod operation;
 pub mod passes;

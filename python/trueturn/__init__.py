@@ -8,8 +8,10 @@ from trueturn.adaptive import AdaptiveRun, adaptive
 from trueturn.audit import Audit, Candidate, audit
 from trueturn.circuits.reading import Circuit, read_circuit, read_qasm
 from trueturn.comparison import Comparison, compare
+from trueturn.device import Budget, CausalCone, causal_cone, device_budget
 from trueturn.driven import Driven, DrivenReference, driven_reference
 from trueturn.error_saving import Improved
+from trueturn.export import Cost, CostTable, compare_costs
 from trueturn.extrapolation import Extrapolation, extrapolate, multiproduct_weights, well_conditioned_steps
 from trueturn.formulas import Formula, formula, formulas, read_formulas
 from trueturn.formulas.processed import Processed
@@ -20,6 +22,7 @@ from trueturn.operator import Operator
 from trueturn.partition import Partition
 from trueturn.reference import Certificate, Reference, reference
 from trueturn.rotations import Rotations
+from trueturn.scaling import Case, PowerLaw, Scaling, fit_steps, step_scaling
 from trueturn.state import State
 from trueturn.symmetry import Symmetries, Symmetry, symmetries
 
@@ -27,10 +30,15 @@ __all__ = [
     "AdaptiveRun",
     "Audit",
     "Bound",
+    "Budget",
     "Candidate",
+    "Case",
+    "CausalCone",
     "Certificate",
     "Circuit",
     "Comparison",
+    "Cost",
+    "CostTable",
     "Driven",
     "DrivenReference",
     "Extrapolation",
@@ -40,9 +48,11 @@ __all__ = [
     "Instance",
     "Operator",
     "Partition",
+    "PowerLaw",
     "Processed",
     "Reference",
     "Rotations",
+    "Scaling",
     "State",
     "Symmetries",
     "Symmetry",
@@ -51,11 +61,15 @@ __all__ = [
     "audit",
     "bound",
     "build_info",
+    "causal_cone",
     "compare",
+    "compare_costs",
+    "device_budget",
     "driven",
     "driven_reference",
     "errors",
     "extrapolate",
+    "fit_steps",
     "formula",
     "formulas",
     "lattice",
@@ -67,6 +81,7 @@ __all__ = [
     "read_qasm",
     "reference",
     "saved_gates",
+    "step_scaling",
     "steps_by_bound",
     "symmetries",
     "threads",

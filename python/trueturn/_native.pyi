@@ -7,6 +7,7 @@ import numpy as np
 import numpy.typing as npt
 
 __all__ = [
+    "GateOptions",
     "Rotations",
     "Terms",
     "application_rounding",
@@ -15,11 +16,15 @@ __all__ = [
     "distance",
     "evolve",
     "expectation",
+    "gate_counts",
+    "global_phase",
     "instruction_sets",
     "overlap",
     "pairwise_sum",
     "read_qasm",
+    "rung_counts",
     "squared_norms",
+    "write_gates",
 ]
 
 @final
@@ -87,6 +92,27 @@ class Rotations:
     def two_qubit_depth(self) -> int: ...
     def angle_sum(self) -> float: ...
     def joined_angle_sum(self) -> float: ...
+
+@final
+class GateOptions:
+    def __new__(
+        cls,
+        shape: str,
+        order: str,
+        join: bool,
+        native: str,
+        qubits: int,
+        edges: Sequence[tuple[int, int]] | None,
+        routing: str,
+        layout: Sequence[int],
+    ) -> GateOptions: ...
+
+_Counts = tuple[int, int, int, int, int, int, int, int, int]
+
+def gate_counts(circuit: Rotations, options: GateOptions) -> tuple[_Counts, list[int]]: ...
+def write_gates(circuit: Rotations, options: GateOptions, loops: bool, write: Callable[[str], object]) -> None: ...
+def global_phase(circuit: Rotations) -> float: ...
+def rung_counts(circuit: Rotations) -> list[float]: ...
 
 _Progress = Callable[[int, int], object]
 

@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 import operator as _operator
 from collections.abc import Iterable, Sequence
-from typing import NamedTuple
+from typing import TYPE_CHECKING, Any, NamedTuple
 
 import numpy as np
 import numpy.typing as npt
@@ -13,6 +13,11 @@ import numpy.typing as npt
 from trueturn import _native
 from trueturn.errors import RotationError
 from trueturn.operator import Operator
+
+if TYPE_CHECKING:
+    import os
+
+    from trueturn.export import Cost
 
 __all__ = ["Block", "Rotations"]
 
@@ -250,6 +255,97 @@ class Rotations:
         A rotation of weight w holds its qubits for 2(w-1) gates in a row; it starts as soon as all of them are free.
         """
         return self._circuit.two_qubit_depth()
+
+    def cost(self, **device: Any) -> Cost:
+        """Return what the circuit costs as gates, counted without writing it out.
+
+        Parameters
+        ----------
+        **device
+            The fields of `trueturn.export.Hardware`: ladder, order, join_pairs, native, connectivity, layout, routing,
+            two_qubit_error, one_qubit_error, readout_error, synthesis_error.
+
+        Returns
+        -------
+        Cost
+            The counts are those of the file that `write_qasm` writes with the same options.
+
+        Raises
+        ------
+        ArgumentError
+            An unknown option or word, a connectivity that does not hold the circuit or is disconnected.
+        RotationError
+            An angle too large to be doubled.
+        MemoryRefusedError
+            The gates of repeated bodies do not fit.
+
+        Examples
+        --------
+        >>> import trueturn as tt
+        >>> bond = Rotations(x=[0b11, 0b11, 0], z=[0, 0b11, 0b11], angles=[0.1, 0.1, 0.1], qubits=2)
+        >>> cost = bond.times(1000).cost()
+        >>> cost.unsaved_two_qubit_gates, cost.two_qubit_gates  # XX + YY + ZZ: 6 alone, 3 together
+        (6000, 3000)
+        """
+        from trueturn.export.cost import cost_of
+        from trueturn.export.hardware import Hardware
+
+        return cost_of(self, Hardware.of(device))
+
+    def write_qasm(self, path: str | os.PathLike[str], version: int = 3, *, comment: str = "", **device: Any) -> Cost:
+        """Write the circuit as OpenQASM and return what it costs.
+
+        Parameters
+        ----------
+        path : str or path
+            Written under a temporary name and renamed when complete.
+        version : {3, 2}
+            In version 3 repeated blocks are loops; version 2 has none and writes them out.
+        comment : str
+            Lines for the head of the file.
+        **device
+            As for `cost`.
+
+        Returns
+        -------
+        Cost
+
+        Raises
+        ------
+        ArgumentError
+            As for `cost`; or the file cannot be written, an old one then being left as it was.
+
+        Notes
+        -----
+        Only gates of the version's standard library, or defined in the file. Angles have all their digits. The
+        rotations keep their order and their angles; only strings that are the identity join the global phase, which
+        version 3 writes as ``gphase`` and version 2, which leaves it open, as a comment.
+
+        With a connectivity the file is about physical qubits; the comments ``trueturn: start_layout`` and ``trueturn:
+        end_layout`` say which of them hold the qubits.
+        """
+        from trueturn.export.hardware import Hardware
+        from trueturn.export.qasm import write_qasm
+
+        return write_qasm(self, path, version, comment, Hardware.of(device))
+
+    def qasm(self, version: int = 3, *, comment: str = "", **device: Any) -> str:
+        r"""Return the text that `write_qasm` writes.
+
+        Examples
+        --------
+        >>> step = Rotations(x=[0b0], z=[0b11], angles=[0.25], qubits=2)
+        >>> print(step.times(100).qasm().partition("qubit[2] q;\n")[2], end="")
+        cx q[0], q[1];
+        for int step0 in [1:100] {
+          rz(0.5) q[1];
+        }
+        cx q[0], q[1];
+        """
+        from trueturn.export.hardware import Hardware
+        from trueturn.export.qasm import qasm_text
+
+        return qasm_text(self, version, comment, Hardware.of(device))
 
     def rounding_bound(self, angle_roundings: int = 0, unit: float = 2.0**-53) -> float:
         """Return a bound on the 2-norm error that rounding adds when a unit vector is evolved.

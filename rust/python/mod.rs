@@ -2,6 +2,7 @@
 
 mod arrays;
 mod error;
+pub mod gates;
 mod gateway;
 pub mod qasm;
 pub mod rotations;
@@ -13,6 +14,8 @@ use pyo3::prelude::*;
 /// The compiled core of trueturn; users import `trueturn`, never this.
 #[pymodule]
 mod _native {
+    #[pymodule_export]
+    use super::gates::{PyGateOptions, gate_counts, global_phase, rung_counts, write_gates};
     #[pymodule_export]
     use super::qasm::read_qasm;
     #[pymodule_export]

@@ -1,1 +1,1 @@
-"""Commands of the command line that stand in files of their own."""
+"""Commands of `trueturn` that have a file of their own; `trueturn.cli` registers them."""
