@@ -3,7 +3,7 @@
 from trueturn import driven, errors, lattice, model, randomised
 from trueturn._build import build_info
 from trueturn._threads import threads
-from trueturn.accuracy import Bound, bound
+from trueturn.accuracy import Bound, SimulatedSeries, bound, simulated_hamiltonian, simulated_series
 from trueturn.adaptive import AdaptiveRun, adaptive
 from trueturn.audit import Audit, Candidate, audit
 from trueturn.comparison import Comparison, compare
