@@ -3,7 +3,23 @@
 from trueturn import driven, errors, lattice, model, randomised
 from trueturn._build import build_info
 from trueturn._threads import threads
-from trueturn.accuracy import Bound, SimulatedSeries, bound, simulated_hamiltonian, simulated_series
+from trueturn.accuracy import (
+    Bound,
+    ErrorCurve,
+    ErrorInterval,
+    ErrorSplit,
+    Prediction,
+    ProductErrors,
+    SimulatedSeries,
+    bound,
+    error_curves,
+    operator_error,
+    product_errors,
+    rms_error,
+    simulated_hamiltonian,
+    simulated_series,
+    split_error,
+)
 from trueturn.adaptive import AdaptiveRun, adaptive
 from trueturn.audit import Audit, Candidate, audit
 from trueturn.comparison import Comparison, compare
@@ -31,6 +47,9 @@ __all__ = [
     "Comparison",
     "Driven",
     "DrivenReference",
+    "ErrorCurve",
+    "ErrorInterval",
+    "ErrorSplit",
     "Extrapolation",
     "Formula",
     "FoundFormula",
@@ -38,9 +57,12 @@ __all__ = [
     "Instance",
     "Operator",
     "Partition",
+    "Prediction",
     "Processed",
+    "ProductErrors",
     "Reference",
     "Rotations",
+    "SimulatedSeries",
     "State",
     "Symmetries",
     "Symmetry",
@@ -52,6 +74,7 @@ __all__ = [
     "compare",
     "driven",
     "driven_reference",
+    "error_curves",
     "errors",
     "extrapolate",
     "formula",
@@ -59,10 +82,16 @@ __all__ = [
     "lattice",
     "model",
     "multiproduct_weights",
+    "operator_error",
+    "product_errors",
     "randomised",
     "read_formulas",
     "reference",
+    "rms_error",
     "saved_gates",
+    "simulated_hamiltonian",
+    "simulated_series",
+    "split_error",
     "symmetries",
     "threads",
     "well_conditioned_steps",

@@ -12,6 +12,7 @@ import numpy.typing as npt
 
 from trueturn import _memory
 from trueturn.accuracy.circuit_matrix import circuit_matrix
+from trueturn.accuracy.finest import FINEST
 from trueturn.errors import ArgumentError, StateShapeError, ToleranceError
 from trueturn.formulas.arguments import checked_time
 from trueturn.operator import Operator
@@ -36,7 +37,6 @@ __all__ = [
 DENSE_QUBITS = 10
 """Up to here whole matrices are formed: 16 MiB each, and some seconds for a norm."""
 
-FINEST = 1e-12
 _VECTORS = 6  # input, image of the circuit, and the reference's own: accumulator, two of the recurrence, result
 
 Vector = npt.NDArray[np.complex128]
@@ -114,9 +114,7 @@ class PlannedEvolution:
         return max(self.ahead.bound, self.back.bound)
 
 
-def exact_evolution(
-    operator: Operator, time: float, *, dense: bool, threads: int
-) -> DenseEvolution | PlannedEvolution:
+def exact_evolution(operator: Operator, time: float, *, dense: bool, threads: int) -> DenseEvolution | PlannedEvolution:
     """Prepare exp(-iHt), as a matrix or as a plan of certified evolutions as fine as double precision allows.
 
     Raises

@@ -186,9 +186,9 @@ def split_error(
     )
 
 
-def _least_squares(matrix: object, target: np.ndarray[tuple[int], np.dtype[np.float64]]) -> np.ndarray[
-    tuple[int], np.dtype[np.float64]
-]:
+def _least_squares(
+    matrix: object, target: np.ndarray[tuple[int], np.dtype[np.float64]]
+) -> np.ndarray[tuple[int], np.dtype[np.float64]]:
     from scipy.sparse.linalg import lsmr  # slow to import, and few need it
 
     found: np.ndarray[tuple[int], np.dtype[np.float64]] = lsmr(

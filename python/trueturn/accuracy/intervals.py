@@ -62,7 +62,9 @@ class ErrorInterval(tuple[float, float]):
         return self[1]
 
     def __repr__(self) -> str:
-        sure = "proven" if self.proven else "not proven" if self.confidence is None else f"{self.confidence:g} confidence"
+        sure = (
+            "proven" if self.proven else "not proven" if self.confidence is None else f"{self.confidence:g} confidence"
+        )
         return f"ErrorInterval({self.low!r}, {self.high!r}, {self.kind}, {sure})"
 
 

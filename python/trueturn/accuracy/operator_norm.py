@@ -129,7 +129,7 @@ def operator_error(
     >>> circuit = tt.formula("strang").rotations(parts, 1.0, 10)
     >>> low, high = tt.operator_error(circuit, tt.Operator("X_0 + Z_0"), 1.0)
     >>> f"{low:.6f} {high:.6f}"
-    '0.002740 0.002740'
+    '0.002741 0.002741'
     """
     circuit, hamiltonian, span = require_circuit(rotations, operator, time)
     chosen = checked_method(method, circuit.qubits)

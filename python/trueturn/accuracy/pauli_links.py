@@ -81,7 +81,9 @@ class Links:
         """Return the most bonds between two qubits of a mask; `qubits` where two of them are not connected."""
         found = self._diameters.get(support)
         if found is None:
-            found = self._diameters[support] = max((self._radius(qubit, support) for qubit in _bits(support)), default=0)
+            found = self._diameters[support] = max(
+                (self._radius(qubit, support) for qubit in _bits(support)), default=0
+            )
         return found
 
     def _radius(self, qubit: int, support: int) -> int:

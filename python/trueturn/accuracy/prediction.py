@@ -23,10 +23,10 @@ from typing import TYPE_CHECKING
 
 from trueturn import _threads
 from trueturn._observables import named_operators
-from trueturn.errors import ArgumentError, ToleranceError
+from trueturn.accuracy.finest import FINEST, finest_reference
+from trueturn.errors import ArgumentError
 from trueturn.formulas.arguments import checked_steps, checked_time
 from trueturn.operator import Operator
-from trueturn.reference import Reference, reference
 from trueturn.reference.certificate import norm_bound
 from trueturn.state import State, require_same_qubits
 
@@ -34,8 +34,6 @@ if TYPE_CHECKING:
     from trueturn.accuracy.simulated import SimulatedSeries
 
 __all__ = ["Prediction", "predict"]
-
-_FINEST = 1e-12
 
 
 @dataclass(frozen=True)
@@ -137,9 +135,10 @@ def predict(
     power = (series.leading_degree or 1) - 1
     workers = _threads.resolve(threads)
     reach = error.one_norm() * abs(span)
-    shift = (3.0 * _FINEST) ** (1.0 / 3.0) / reach
+    shift = (3.0 * FINEST) ** (1.0 / 3.0) / reach
     ahead, behind = (
-        _certified(hamiltonian + error * (sign * shift), state, span, watched, workers) for sign in (1.0, -1.0)
+        finest_reference(hamiltonian + error * (sign * shift), state, span, watched, threads=workers)
+        for sign in (1.0, -1.0)
     )
     scale = abs(span) ** power
     cut = shift**2 * reach**3 / 6.0
@@ -159,15 +158,3 @@ def predict(
 def _prediction(name: str, time: float, power: int, scale: float, value: float, slack: float) -> Prediction:
     low, high = scale * max(0.0, value - slack), scale * (value + slack)
     return Prediction(name, time, power, scale * value, (low, high if math.isfinite(high) else math.inf))
-
-
-def _certified(
-    operator: Operator, state: State, time: float, observables: Mapping[str, Operator], threads: int
-) -> Reference:
-    """Evolve as finely as double precision certifies."""
-    try:
-        return reference(operator, state, time, _FINEST, observables, threads=threads)
-    except ToleranceError as refusal:
-        if not math.isfinite(refusal.achievable):
-            raise
-        return reference(operator, state, time, refusal.achievable, observables, threads=threads)
