@@ -43,15 +43,11 @@ ORACLE = 1e-12
 @pytest.mark.parametrize("time", [0.5, -0.5, 1.0])
 def test_x_and_z_split_on_one_qubit_err_by_the_closed_form(method, formula, time):
     # exp(-iτZ) exp(-iτX) = c² - i(cs X + cs Z + s² Y), and U = cos √2τ - i sin √2τ (X + Z)/√2. Both have determinant
-    # 1, so ‖S - U‖ = 2 sin(θ/2) with cos θ = Re tr(S†U)/2. For Strang, exp(-iτX/2) exp(-iτZ) exp(-iτX/2) is
-    # cos²τ - i(... ), traced the same way below.
+    # 1, so ‖S - U‖ = 2 sin(θ/2) with cos θ = Re tr(S†U)/2.
     c, s = math.cos(time), math.sin(time)
     u, v = math.cos(math.sqrt(2) * time), math.sin(math.sqrt(2) * time) / math.sqrt(2)
-    if formula == "lie":
-        cosine = c * c * u + 2 * c * s * v
-    else:
-        # e^{-iτX/2} e^{-iτZ} e^{-iτX/2} = c² - i(c s X + s Z): c·cos τ from the X turns, s Z passes them unchanged
-        cosine = c * c * u + (c * s + s) * v
+    # e^{-iτX/2} e^{-iτZ} e^{-iτX/2} = c² - i(cs X + s Z), since Z passes the X turns by inverting one of them
+    cosine = c * c * u + (2 * c * s if formula == "lie" else c * s + s) * v
     exact = 2 * math.sin(0.5 * math.acos(cosine))
     parts = tt.Partition([tt.Operator("X_0"), tt.Operator("Z_0")])
     circuit = tt.formula(formula).rotations(parts, time, 1)
@@ -227,7 +223,7 @@ def test_the_worst_case_of_the_mean_is_an_exponential_variable():
     for samples, chance in ((1, 0.2), (5, 0.1), (40, 0.05)):
         means = generator.standard_gamma(samples, size=20_000) / samples
         below, above = mean_interval(1.0, samples, 1, chance)
-        fails = np.mean((1.0 < means * below) | (1.0 > means * above))
+        fails = np.mean((means * below > 1.0) | (means * above < 1.0))
         assert 0 < fails <= chance
 
 
@@ -409,5 +405,5 @@ def test_dense_is_refused_beyond_its_qubits_and_not_chosen_there(monkeypatch):
 @pytest.mark.parametrize("method", ["dense", "confidence"])
 def test_what_does_not_fit_is_refused_before_anything_is_made(monkeypatch, method):
     monkeypatch.setattr("trueturn._memory.available_bytes", lambda: 1 << 9)
-    with pytest.raises(errors.MemoryRefusedError, match="^operator_error: does not fit in memory"):
+    with pytest.raises(errors.MemoryRefusedError, match=r"^operator_error: does not fit in memory"):
         tt.operator_error(P3_STRANG, P3, 1.0, method=method)
