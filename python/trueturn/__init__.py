@@ -17,6 +17,7 @@ from trueturn.formulas.search_target import Instance, Target
 from trueturn.ladders import saved_gates
 from trueturn.operator import Operator
 from trueturn.partition import Partition
+from trueturn.planning import Plan, PlanRow, plan
 from trueturn.reference import Certificate, Reference, reference
 from trueturn.rotations import Rotations
 from trueturn.state import State
@@ -38,6 +39,8 @@ __all__ = [
     "Instance",
     "Operator",
     "Partition",
+    "Plan",
+    "PlanRow",
     "Processed",
     "Reference",
     "Rotations",
@@ -59,6 +62,7 @@ __all__ = [
     "lattice",
     "model",
     "multiproduct_weights",
+    "plan",
     "randomised",
     "read_formulas",
     "reference",

@@ -203,13 +203,18 @@ def prepare(
     most_steps: int,
     threads: int | None,
     progress: Progress | None,
+    partitions: Sequence[Partition] | None = None,
 ) -> Setting:
-    """Check everything that `audit` takes, and compute the reference; parameters and errors are those of `audit`."""
+    """Check everything that `audit` takes, and compute the reference; parameters and errors are those of `audit`.
+
+    `partitions` are those of the candidates, where they are known.
+    """
     watched = named_operators(observables)
     asked = sorted(set(positive_times(times)))
     _check(operator, state, candidates, tolerance, quantity, watched, readout, relative_to, most_steps)
     workers = _threads.resolve(threads)
-    partitions = tuple(candidate.partition(operator) for candidate in candidates)
+    if partitions is None:
+        partitions = [candidate.partition(operator) for candidate in candidates]
     _memory.require(
         (2 + (len(asked) if quantity == "state" else 1)) * (16 << state.qubits),
         "audit",
@@ -228,7 +233,7 @@ def prepare(
         progress=progress,
     )
     bench = Bench(state, asked, truth, tolerance, quantity, watched, relative_to, readout, workers)
-    return Setting(bench, operator, partitions)
+    return Setting(bench, operator, tuple(partitions))
 
 
 def _check(

@@ -87,12 +87,13 @@ class Runs:
         passing = [steps for steps in self.measured if steps > max(missing, default=0)]
         steps = min(passing) if passing else max(self.measured)
         accidental = tuple(sorted(count for count in self.measured if count not in missing and count < steps))
-        return Chosen(steps, accidental, "interrupted before the search ended: fewer steps may do", verified=False)
+        untried = "fewer steps may do" if passing else "more steps were not tried"
+        return Chosen(steps, accidental, f"interrupted before the search ended: {untried}", verified=False)
 
-    def row(self, chosen: Chosen) -> Row:
-        """Make the row of a step count that was run."""
+    def row(self, chosen: Chosen, *, bounded: bool = True) -> Row:
+        """Make the row of a step count that was run; `bounded` asks for a proven bound, which may take its time."""
         found = self.measured[chosen.steps]
-        limit, source = self._bound(chosen.steps)
+        limit, source = self._bound(chosen.steps) if bounded else (None, "not computed")
         return Row(
             candidate=self.candidate,
             label=self.candidate.label,

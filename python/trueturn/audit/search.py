@@ -13,6 +13,7 @@ __all__ = ["Search", "least_steps"]
 # Past the answer r the search looks at r + 1, about √2 r and 2 r, in units of the readout grid.
 _PROBES = (math.sqrt(2.0), 2.0)
 _FASTEST_GROWTH = 8.0
+_FARTHEST_JUMP = 512.0
 # Within this of a whole number, the slope through the last two failures shows the order at which the error falls here: the
 # claimed one, or a higher one for a state or an observable that does not see the leading error.
 _WHOLE = 0.05
@@ -57,7 +58,8 @@ def least_steps(
     Notes
     -----
     Runs cost in proportion to their steps. Counts grow towards the predicted answer by at most 8 times a run until the
-    fitted order is a whole number not below the claimed one, then straight to it; near the answer the two nearest trials are interpolated. A typical search costs 7 to 9 times one run at the answer, most of
+    fitted order is a whole number not below the claimed one, then straight to it (by at most 512 times); near the answer
+    the two nearest trials are interpolated. A typical search costs 7 to 9 times one run at the answer, most of
     it for the look at [r, 2r] that the definition asks for.
     """
     return _Searcher(run, tolerance, order, unit, max(1, most_steps // unit)).search()
@@ -124,7 +126,7 @@ class _Searcher:
             slope = math.log(drop) / math.log(count / before)
             order = round(slope)
             if order >= self.order and abs(slope / order - 1.0) < _WHOLE:
-                return order, math.inf
+                return order, _FARTHEST_JUMP
         return self.order, _FASTEST_GROWTH
 
     def _narrow(self, failing: int, passing: int) -> int:
