@@ -26,6 +26,8 @@ class PlanRow(Row):
     costs : mapping of str to float
         ``two_qubit_gates``, ``depth``, ``rotations``, ``t_count`` where a synthesis error was given, ``wall_time``
         (seconds that the simulation of this step count took here), and the user's own.
+    trial_costs : tuple of float
+        What each of `trials` costs, in the first cost of `Plan.cost`.
     verified : bool
         Whether `steps` is the least as defined: it meets, the count before it misses, and what was tested up to its double
         meets. False where the search was interrupted or found nothing.
@@ -46,6 +48,7 @@ class PlanRow(Row):
     ordering: str
     same_as: str
     costs: Mapping[str, float]
+    trial_costs: tuple[float, ...]
     verified: bool
     fitted_order: float | None
     bound_steps: int | None
@@ -101,6 +104,8 @@ class Plan(Audit):
         Ways that cannot be run, with the reason.
     """
 
+    rows: tuple[PlanRow, ...]
+    recommended: PlanRow | None
     synthesis_error: float | None
     cost: tuple[str, ...]
     compared: tuple[str, ...]

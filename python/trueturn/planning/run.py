@@ -21,7 +21,7 @@ from trueturn.partition import Partition
 from trueturn.planning import words
 from trueturn.planning.costs import OwnCost, Prices, chosen_costs
 from trueturn.planning.proven import distance_for, fitted_order, proven_steps
-from trueturn.planning.ranking import Priced, front, ranked, undominated
+from trueturn.planning.ranking import front, marked, ranked
 from trueturn.planning.result import Plan, PlanRow
 from trueturn.planning.ways import AnyFormula, Way, ways
 from trueturn.state import State
@@ -170,14 +170,9 @@ def plan(
     if progress is not None:
         progress("done", len(found), len(found))
     prices = Prices(names, own, distance_for(setting.bench, for_synthesis) if for_synthesis else None)
-    rows, points = sought.rows(prices)
+    rows = sought.rows(prices)
     compared = names if len(names) > 1 else tuple(name for name in rows[0].costs if name != "wall_time")
-    meeting = [place for place, row in enumerate(rows) if row.verdict == "meets"]
-    marks = undominated([rows[place].costs for place in meeting], compared)
-    for place, mark in zip(meeting, marks, strict=True):
-        rows[place] = replace(rows[place], efficient=mark)
-    order = ranked(rows, names)
-    rows = [rows[place] for place in order]
+    rows = ranked(marked(rows, compared), names)
     audited = setting.concluded(rows, seconds, title=title, start=start, energy_unit=energy_unit)
     facts: dict[str, Any] = {entry.name: getattr(audited, entry.name) for entry in fields(Audit)}
     facts |= {
@@ -192,7 +187,7 @@ def plan(
         synthesis_error=for_synthesis,
         cost=names,
         compared=compared,
-        front=front([row.label for row in rows], [points[place] for place in order]),
+        front=front(rows),
         evolutions=sought.evolutions,
         interrupted=sought.interrupted,
         unsearched=tuple(way.label for way in found[len(sought.found) :]),
@@ -252,12 +247,12 @@ class _Sought:
         self._first[key] = _Found(way, runs, chosen, row, proven)
         self.found.append(self._first[key])
 
-    def rows(self, prices: Prices) -> tuple[list[PlanRow], list[list[Priced]]]:
-        """Return the rows, and for each its step counts with cost and error."""
-        rows, points = [], []
+    def rows(self, prices: Prices) -> list[PlanRow]:
+        """Return the rows, priced, in the order of the search; none is marked as efficient yet."""
+        rows = []
         for way, runs, chosen, row, (proven, source), same_as in self.found:
             costs = {
-                steps: prices.of(found.circuit, runs.seconds[steps]) for steps, found in sorted(runs.measured.items())
+                steps: prices.of(runs.measured[steps].circuit, runs.seconds[steps]) for steps in sorted(runs.measured)
             }
             facts = {entry.name: getattr(row, entry.name) for entry in fields(Row)} | {"label": way.label}
             rows.append(
@@ -267,6 +262,7 @@ class _Sought:
                     ordering=way.ordering,
                     same_as=same_as,
                     costs=costs[chosen.steps],
+                    trial_costs=tuple(found[prices.names[0]] for found in costs.values()),
                     verified=chosen.verified,
                     fitted_order=fitted_order(runs, chosen.steps),
                     bound_steps=proven,
@@ -275,13 +271,7 @@ class _Sought:
                     efficient=False,
                 )
             )
-            points.append(
-                [
-                    (steps, costs[steps][prices.names[0]], found.trial.error)
-                    for steps, found in sorted(runs.measured.items())
-                ]
-            )
-        return rows, points
+        return rows
 
 
 def _synthesis(given: float | None, tolerance: float, names: Sequence[str]) -> float | None:

@@ -26,7 +26,18 @@ if TYPE_CHECKING:
     from trueturn.audit.result import Audit, Row
     from trueturn.operator import Operator
 
-__all__ = ["closing", "complete", "framed", "listing", "page", "section", "small", "system_words", "verdict"]
+__all__ = [
+    "class_of",
+    "closing",
+    "complete",
+    "framed",
+    "listing",
+    "page",
+    "section",
+    "small",
+    "system_words",
+    "verdict",
+]
 
 TERMS_SHOWN = 24
 POLICY = "default-src 'none'; style-src 'unsafe-inline'"
