@@ -12,7 +12,7 @@ import numpy as np
 from trueturn.errors import ArgumentError
 from trueturn.rotations import Rotations
 
-__all__ = ["COSTS", "Prices", "cost_words", "t_count"]
+__all__ = ["COSTS", "Prices", "chosen_costs", "cost_words", "short_words", "t_count"]
 
 COSTS: Mapping[str, str] = {
     "two_qubit_gates": "two-qubit gates",
@@ -20,6 +20,11 @@ COSTS: Mapping[str, str] = {
     "rotations": "rotations",
     "t_count": "T gates",
     "wall_time": "seconds of simulation",
+}
+SHORT: Mapping[str, str] = {
+    "two_qubit_gates": "2-qubit gates",
+    "t_count": "T gates",
+    "wall_time": "seconds",
 }
 OwnCost = Callable[[Rotations], float]
 GATES_PER_HALVING = 3.0
@@ -32,6 +37,11 @@ _SAME_ANGLE = 8.0 * 2.0**-53
 def cost_words(name: str) -> str:
     """Name what a cost counts."""
     return COSTS.get(name, name)
+
+
+def short_words(name: str) -> str:
+    """Name a cost over a column."""
+    return SHORT.get(name, name)
 
 
 def t_count(circuit: Rotations, error: float) -> int:

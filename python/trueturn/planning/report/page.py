@@ -20,7 +20,7 @@ from trueturn.audit.report.page import (
 )
 from trueturn.audit.report.tables import names
 from trueturn.planning import words
-from trueturn.planning.costs import cost_words
+from trueturn.planning.costs import cost_words, short_words
 from trueturn.planning.report.pictures import MOST_NAMED, costs_picture, front_picture
 
 if TYPE_CHECKING:
@@ -46,19 +46,21 @@ def page(plan: Plan) -> str:
 
 
 def table(plan: Plan) -> str:
-    """Write one way a row."""
+    """Write one way a row; those that share the runs of another are named below."""
     costs = [*plan.cost, *(name for name in plan.rows[0].costs if name not in plan.cost)]
-    heads = [("", "n"), ("formula and rule", ""), ("steps", "n"), ("error", "")]
-    heads += [(cost_words(name), "n") for name in costs]
-    heads += [("proven steps", "n"), ("verdict", "")]
+    heads = [("", "n"), ("formula and rule", ""), ("steps", "n"), ("error", ""), ("verdict", "")]
+    heads += [(short_words(name), "n") for name in costs]
     head = "".join(f'<th scope="col"{class_of(kind)}>{escape(text)}</th>' for text, kind in heads)
-    rows = "\n".join(row_cells(rank, row, plan, costs) for rank, row in enumerate(plan.rows, start=1))
+    ranks = [(rank, row) for rank, row in enumerate(plan.rows, start=1) if not row.same_as]
+    rows = "\n".join(row_cells(rank, row, plan, costs) for rank, row in ranks)
     sources = list(dict.fromkeys(row.bound_steps_source for row in plan.rows))
     notes = [f"Efficient: {words.efficient_words(plan)}", *words.grounds(plan)]
     notes.append(
-        "Proven steps are the least for which the theorem's bound meets the tolerance, with how many times the measured "
-        f"count they are: {'; '.join(sources)}."
+        "Proven: the least step count for which a theorem's bound meets the tolerance, and how many times the measured "
+        f"one it is ({'; '.join(sources)}). r^-p: how the error falls from the least step count r to 2r."
     )
+    same = [f"{row.label} = {row.same_as}" for row in plan.rows if row.same_as]
+    notes += [f"Same parts in the same order: {'; '.join(same)}."] if same else []
     notes += words.left_out(plan)
     return framed(head, rows) + "\n" + "\n".join(f'<p class="small">{escape(note)}</p>' for note in notes)
 
@@ -66,19 +68,20 @@ def table(plan: Plan) -> str:
 def row_cells(rank: int, row: PlanRow, plan: Plan, costs: list[str]) -> str:
     """Write the cells of one row."""
     formula, rule = names(row)
-    same = f"same parts as {row.same_as}" if row.same_as else ""
-    marks = "efficient" if row.efficient else ""
-    fall = "" if row.fitted_order is None else f"error falls as steps^-{row.fitted_order:.2f} beyond"
+    places = {shared.worst_words(other, plan) for other in plan.rows}
+    place = shared.worst_words(row, plan) if len(places) > 1 else ""
+    fall = "" if row.fitted_order is None else f"∝ r^-{row.fitted_order:.2f}"
+    proven = f"proven: {words.bound_words(row)}" if row.bound_steps is not None else ""
     cells = [
         f'<td class="n">{rank}</td>',
-        f"<td>{escape(formula)}{small(rule, same, row.note)}</td>",
-        f'<td class="n">{escape(shared.steps_words(row))}{small("" if row.verified else "not verified")}</td>',
-        f'<td class="e">{escape(words.error_words(row, plan))}{small(shared.worst_words(row, plan), fall)}</td>',
+        f'<td class="e">{escape(formula)}{small(rule)}</td>',
+        f'<td class="n">{escape(shared.steps_words(row))}{small(proven, "" if row.verified else "not verified")}</td>',
+        f'<td class="e">{escape(words.error_words(row, plan))}{small(place, fall)}</td>',
+        f'<td class="v {escape(row.verdict)}">{escape(row.verdict)}{small("efficient" if row.efficient else "")}</td>',
         *(f'<td class="n">{escape(words.figure(name, row.costs[name]))}</td>' for name in costs),
-        f'<td class="n">{escape(words.bound_words(row))}</td>',
-        f'<td class="v {escape(row.verdict)}">{escape(row.verdict)}{small(marks)}</td>',
     ]
-    return f"<tr{class_of('chosen' if row is plan.recommended else '')}>{''.join(cells)}</tr>"
+    line = f"<tr{class_of('chosen' if row is plan.recommended else '')}>{''.join(cells)}</tr>"
+    return line + (f'\n<tr><td></td><td colspan="{len(cells) - 1}">{small(row.note)}</td></tr>' if row.note else "")
 
 
 def pictures(plan: Plan) -> str:

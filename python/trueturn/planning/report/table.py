@@ -15,19 +15,13 @@ from trueturn.audit.figures import count
 from trueturn.audit.report import words as shared
 from trueturn.audit.report.tables import MARKS, STYLES, aligned, column_widths, plain_text, total_width
 from trueturn.planning import words
+from trueturn.planning.costs import short_words
 
 if TYPE_CHECKING:
     from trueturn.planning.result import Plan, PlanRow
 
 __all__ = ["plain_table", "terminal_table"]
 
-HEADS = {
-    "two_qubit_gates": "2-qubit gates",
-    "depth": "depth",
-    "rotations": "rotations",
-    "t_count": "T gates",
-    "wall_time": "seconds",
-}
 MOST_REMARKS = 6
 
 
@@ -77,7 +71,7 @@ def laid_out(rows: list[PlanRow], plan: Plan, names: list[str], full: bool) -> t
         "",
         "steps",
         "error",
-        *(HEADS.get(name, name) for name in names),
+        *(short_words(name) for name in names),
         "proven steps",
         "verdict" if full else "",
     ]
