@@ -33,6 +33,7 @@ from trueturn.formulas.search_target import Instance, Target
 from trueturn.ladders import saved_gates
 from trueturn.operator import Operator
 from trueturn.partition import Partition
+from trueturn.planning import Plan, PlanRow, plan
 from trueturn.reference import Certificate, Reference, reference
 from trueturn.rotations import Rotations
 from trueturn.state import State
@@ -57,6 +58,8 @@ __all__ = [
     "Instance",
     "Operator",
     "Partition",
+    "Plan",
+    "PlanRow",
     "Prediction",
     "Processed",
     "ProductErrors",
@@ -83,6 +86,7 @@ __all__ = [
     "model",
     "multiproduct_weights",
     "operator_error",
+    "plan",
     "product_errors",
     "randomised",
     "read_formulas",
