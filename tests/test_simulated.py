@@ -108,6 +108,23 @@ def test_random_hamiltonians_agree_with_the_logarithm(operator, seed, name):
     assert gap < (majorant_tail(0.1, 9) + 2e-14) / step
 
 
+@pytest.mark.parametrize("rule", ["axis", "bond", "single", "commuting"])
+@pytest.mark.parametrize("name", ["lie", "strang", "suzuki-4"])
+def test_five_qubits_agree_with_the_logarithm(rule, name):
+    chain = tt.model.heisenberg(tt.lattice.ring(5), 1.0, z=[0.3, -0.6, 0.5, 0.1, -0.4])
+    partition, formula = tt.Partition.of(chain, rule), tt.formula(name)
+    series = tt.simulated_series(formula, partition, 7)
+    step = 0.01
+    five = sum(step**k * oracle.dense(series.terms[k]) for k in range(5))
+    gap = np.linalg.norm(exact(formula, partition, step) - five, 2)
+    next_two = np.linalg.norm(oracle.dense(series.at(step)) - five, 2)
+    # what is cut after degree 5 is its next two terms, up to terms smaller by τ times a strength of 10 at a qubit;
+    # rounding of the logarithm is 1e-14 over τ
+    assert gap == pytest.approx(next_two, rel=0.5, abs=2e-12)
+    # and the terms of degree p + 1 and on stand far above that
+    assert np.linalg.norm(oracle.dense(series.terms[0]) - five, 2) > 100 * (gap + 2e-12)
+
+
 @pytest.mark.parametrize("kind", ["lie", "strang"])
 def test_the_leading_error_is_that_of_the_closed_sums(kind):
     # an independent derivation: sums of brackets with factors 1/2, and 1/12 and 1/24

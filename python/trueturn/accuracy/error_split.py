@@ -25,13 +25,18 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from typing import TYPE_CHECKING
 
 import numpy as np
+import numpy.typing as npt
 
 from trueturn.accuracy.pauli_links import Links
 from trueturn.errors import ArgumentError, OperatorError
 from trueturn.operator import Operator
 from trueturn.randomised.checks import as_int, checked_operator
+
+if TYPE_CHECKING:
+    import scipy.sparse
 
 __all__ = ["ErrorSplit", "split_error"]
 
@@ -186,12 +191,10 @@ def split_error(
     )
 
 
-def _least_squares(
-    matrix: object, target: np.ndarray[tuple[int], np.dtype[np.float64]]
-) -> np.ndarray[tuple[int], np.dtype[np.float64]]:
+def _least_squares(matrix: scipy.sparse.csr_matrix, target: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]:
     from scipy.sparse.linalg import lsmr  # slow to import, and few need it
 
-    found: np.ndarray[tuple[int], np.dtype[np.float64]] = lsmr(
+    found: npt.NDArray[np.float64] = lsmr(
         matrix, target, atol=_PRECISION, btol=_PRECISION, conlim=0.0, maxiter=_MOST_ITERATIONS
     )[0]
     return found

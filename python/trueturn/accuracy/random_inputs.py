@@ -132,14 +132,16 @@ def rms_error(
     measured = math.sqrt(math.fsum(squares) / count)
     lowest, highest = max(0.0, measured - difference.slack), measured + difference.slack
     chance = 1.0 - level - spent
-    low = lowest * math.sqrt(mean_interval(1.0, count, 1, chance)[0])
-    high = highest * math.sqrt(mean_interval(1.0, count, 1, chance)[1])
+    if largest is not None:
+        chance /= 2.0  # half for the step that gives K, half for the one that uses it
+    below, above = mean_interval(1.0, count, 1, chance)
     if largest is not None and largest > 0.0:
-        first_low = lowest * math.sqrt(mean_interval(1.0, count, 1, chance / 2.0)[0])
-        spread = max(1, math.floor(2.0**circuit.qubits * (first_low / largest) ** 2 * (1.0 - 1e-9)))
+        least = lowest**2 * below
+        spread = math.floor(2.0**circuit.qubits * least / largest**2 * (1.0 - 1e-9))
         if spread > 1:
-            below, above = mean_interval(1.0, count, spread, chance / 2.0)
-            low, high = lowest * math.sqrt(below), highest * math.sqrt(above)
+            below, above = mean_interval(1.0, count, spread, chance)
+    low, high = lowest * math.sqrt(below), highest * math.sqrt(above)
+    if largest is not None:
         high = min(high, largest)
     note = _SAMPLING_NOTE.format(level, count)
     return ErrorInterval(min(low, high), high, kind="confidence", proven=False, confidence=level, notes=(note,))
