@@ -361,6 +361,31 @@ def test_an_interrupt_keeps_the_best_so_far(stop_after):
     assert "Interrupted" in repr(found)
 
 
+def test_a_way_that_is_sure_to_cost_more_is_given_up_where_thoroughness_is_not_asked_for():
+    rules = ["axis", "bond"]
+    whole = tt.plan(CHAIN, START, 1.0, FORMULAS, rules, 1e-4, "state")
+    found = tt.plan(CHAIN, START, 1.0, FORMULAS, rules, 1e-4, "state", thorough=False)
+    assert found.evolutions < whole.evolutions and found.rows[0].steps == whole.rows[0].steps
+    answers = {row.label: row for row in whole.rows}
+    given_up = [row for row in found.rows if "given up" in row.note]
+    assert {row.candidate.formula.name for row in given_up} >= {"lie"}
+    for row in found.rows:
+        if row in given_up:
+            assert not row.verified
+            missing = max(trial.steps for trial in row.trials if trial.verdict != "meets")
+            assert missing < answers[row.label].steps
+            # All of its costs at a count that misses, and so at its answer, are above those of a row that meets.
+            assert any(
+                other.verdict == "meets"
+                and all(other.costs[name] < answers[row.label].costs[name] for name in found.compared)
+                for other in found.rows
+            )
+        else:
+            assert row.steps == answers[row.label].steps
+    # What is given up was not efficient.
+    assert [row.label for row in found.rows if row.efficient] == [row.label for row in whole.rows if row.efficient]
+
+
 def test_an_interrupt_before_anything_was_measured_passes_through():
     def progress(stage, done, total):
         raise KeyboardInterrupt

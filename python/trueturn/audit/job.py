@@ -158,6 +158,7 @@ class Job:
             orderings=task.orderings,
             cost=task.cost,
             synthesis_error=task.synthesis_error,
+            thorough=task.thorough,
             readout=self.readout,
             relative_to=self.relative_to,
             reference_tolerance=self.reference_tolerance,

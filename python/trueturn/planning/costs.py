@@ -88,6 +88,14 @@ class Prices(NamedTuple):
     own: Mapping[str, OwnCost]
     synthesis: float | None
 
+    @property
+    def compared(self) -> tuple[str, ...]:
+        """The costs by which one way beats another: those that are named, or of a single one all that are reproducible."""
+        if len(self.names) > 1:
+            return self.names
+        t_gates = ("t_count",) if self.synthesis is not None else ()
+        return ("two_qubit_gates", "depth", "rotations", *t_gates, *self.own)
+
     def of(self, circuit: Rotations, seconds: float) -> dict[str, float]:
         """Return every cost of a circuit; `seconds` is what its run took."""
         found: dict[str, float] = {

@@ -30,7 +30,7 @@ class PlanRow(Row):
         What each of `trials` costs, in the first cost of `Plan.cost`.
     verified : bool
         Whether `steps` is the least as defined: it meets, the count before it misses, and what was tested up to its double
-        meets. False where the search was interrupted or found nothing.
+        meets. False where the search was interrupted or given up, or found nothing.
     fitted_order : float or None
         How fast the error falls from `steps` to the largest count that was run: -d log(error) / d log(steps), between
         the upper ends of the intervals. None where that is all rounding.
