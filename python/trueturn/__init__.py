@@ -9,6 +9,7 @@ from trueturn.audit import Audit, Candidate, audit
 from trueturn.comparison import Comparison, compare
 from trueturn.driven import Driven, DrivenReference, driven_reference
 from trueturn.error_saving import Improved
+from trueturn.export import Cost, CostTable, Device, compare_costs
 from trueturn.extrapolation import Extrapolation, extrapolate, multiproduct_weights, well_conditioned_steps
 from trueturn.formulas import Formula, formula, formulas, read_formulas
 from trueturn.formulas.processed import Processed
@@ -30,6 +31,9 @@ __all__ = [
     "Candidate",
     "Certificate",
     "Comparison",
+    "Cost",
+    "CostTable",
+    "Device",
     "Driven",
     "DrivenReference",
     "Extrapolation",
@@ -53,6 +57,7 @@ __all__ = [
     "bound",
     "build_info",
     "compare",
+    "compare_costs",
     "driven",
     "driven_reference",
     "errors",
