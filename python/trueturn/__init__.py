@@ -7,9 +7,10 @@ from trueturn.accuracy import Bound, bound, steps_by_bound
 from trueturn.adaptive import AdaptiveRun, adaptive
 from trueturn.audit import Audit, Candidate, audit
 from trueturn.comparison import Comparison, compare
+from trueturn.device import Budget, CausalCone, causal_cone, device_budget
 from trueturn.driven import Driven, DrivenReference, driven_reference
 from trueturn.error_saving import Improved
-from trueturn.export import Cost, CostTable, Device, compare_costs
+from trueturn.export import Cost, CostTable, compare_costs
 from trueturn.extrapolation import Extrapolation, extrapolate, multiproduct_weights, well_conditioned_steps
 from trueturn.formulas import Formula, formula, formulas, read_formulas
 from trueturn.formulas.processed import Processed
@@ -21,6 +22,7 @@ from trueturn.partition import Partition
 from trueturn.planning import Plan, PlanRow, plan
 from trueturn.reference import Certificate, Reference, reference
 from trueturn.rotations import Rotations
+from trueturn.scaling import Case, PowerLaw, Scaling, fit_steps, step_scaling
 from trueturn.state import State
 from trueturn.symmetry import Symmetries, Symmetry, symmetries
 
@@ -28,12 +30,14 @@ __all__ = [
     "AdaptiveRun",
     "Audit",
     "Bound",
+    "Budget",
     "Candidate",
+    "Case",
+    "CausalCone",
     "Certificate",
     "Comparison",
     "Cost",
     "CostTable",
-    "Device",
     "Driven",
     "DrivenReference",
     "Extrapolation",
@@ -45,9 +49,11 @@ __all__ = [
     "Partition",
     "Plan",
     "PlanRow",
+    "PowerLaw",
     "Processed",
     "Reference",
     "Rotations",
+    "Scaling",
     "State",
     "Symmetries",
     "Symmetry",
@@ -56,12 +62,15 @@ __all__ = [
     "audit",
     "bound",
     "build_info",
+    "causal_cone",
     "compare",
     "compare_costs",
+    "device_budget",
     "driven",
     "driven_reference",
     "errors",
     "extrapolate",
+    "fit_steps",
     "formula",
     "formulas",
     "lattice",
@@ -72,6 +81,7 @@ __all__ = [
     "read_formulas",
     "reference",
     "saved_gates",
+    "step_scaling",
     "steps_by_bound",
     "symmetries",
     "threads",

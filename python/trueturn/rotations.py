@@ -262,7 +262,7 @@ class Rotations:
         Parameters
         ----------
         **device
-            The fields of `trueturn.Device`: ladder, order, join_pairs, native, connectivity, layout, routing,
+            The fields of `trueturn.export.Hardware`: ladder, order, join_pairs, native, connectivity, layout, routing,
             two_qubit_error, one_qubit_error, readout_error, synthesis_error.
 
         Returns
@@ -288,9 +288,9 @@ class Rotations:
         (6000, 3000)
         """
         from trueturn.export.cost import cost_of
-        from trueturn.export.device import Device
+        from trueturn.export.hardware import Hardware
 
-        return cost_of(self, Device.of(device))
+        return cost_of(self, Hardware.of(device))
 
     def write_qasm(self, path: str | os.PathLike[str], version: int = 3, *, comment: str = "", **device: Any) -> Cost:
         """Write the circuit as OpenQASM and return what it costs.
@@ -324,10 +324,10 @@ class Rotations:
         With a connectivity the file is about physical qubits; the comments ``trueturn: start_layout`` and ``trueturn:
         end_layout`` say which of them hold the qubits.
         """
-        from trueturn.export.device import Device
+        from trueturn.export.hardware import Hardware
         from trueturn.export.qasm import write_qasm
 
-        return write_qasm(self, path, version, comment, Device.of(device))
+        return write_qasm(self, path, version, comment, Hardware.of(device))
 
     def qasm(self, version: int = 3, *, comment: str = "", **device: Any) -> str:
         """Return the text that `write_qasm` writes.
@@ -344,10 +344,10 @@ class Rotations:
         cx q[0], q[1];
         <BLANKLINE>
         """
-        from trueturn.export.device import Device
+        from trueturn.export.hardware import Hardware
         from trueturn.export.qasm import qasm_text
 
-        return qasm_text(self, version, comment, Device.of(device))
+        return qasm_text(self, version, comment, Hardware.of(device))
 
     def rounding_bound(self, angle_roundings: int = 0, unit: float = 2.0**-53) -> float:
         """Return a bound on the 2-norm error that rounding adds when a unit vector is evolved.

@@ -54,13 +54,13 @@ impl Counts {
     }
 }
 
-/// How many times π/4 an angle is: a whole number within 4 units in the last place, or None.
+/// How many times π/4 an angle is: a whole number within 16 roundings, or None.
 ///
-/// A rounded multiple of a rounded π is off by no more; the error, below 1e-15 of the angle, is far below any synthesis.
+/// A rounded multiple of a rounded π is off by no more; the error, below 2e-15 of the angle, is far below any synthesis.
 fn eighth_turns(angle: f64) -> Option<u64> {
     let turns = angle / std::f64::consts::FRAC_PI_4;
     let nearest = turns.round();
-    let near = nearest.abs() < 1e6 && (turns - nearest).abs() <= 4.0 * f64::EPSILON * nearest.abs();
+    let near = nearest.abs() < 1e6 && (turns - nearest).abs() <= 8.0 * f64::EPSILON * nearest.abs();
     near.then_some(nearest.abs() as u64)
 }
 

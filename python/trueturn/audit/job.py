@@ -17,6 +17,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING
 
 from trueturn.audit.candidate import Candidate
+from trueturn.audit.job_device import Device, read_device
 from trueturn.audit.job_system import Start, read_start, read_system
 from trueturn.audit.job_table import Table, nearest
 from trueturn.errors import FormulaError, JobError
@@ -33,7 +34,7 @@ if TYPE_CHECKING:
 
 __all__ = ["Job", "built_in_job", "read_job", "template"]
 
-SECTIONS = ("system", "start", "target", "candidate", "plan", "reference", "output", "run")
+SECTIONS = ("system", "start", "target", "candidate", "plan", "device", "reference", "output", "run")
 METHODS = ("chebyshev", "krylov", "dense")
 EXAMPLE_CANDIDATE = '[[candidate]] with formula = "strang", rule = "commuting", steps = "least"'
 
@@ -72,6 +73,8 @@ class Job:
     most_steps : int
         Where a search for the least step count gives up.
     title, energy_unit : str
+    device : Device or None
+        What the circuits run on; None where the job does not say.
     """
 
     path: Path | None
@@ -92,6 +95,7 @@ class Job:
     most_steps: int
     title: str
     energy_unit: str
+    device: Device | None = None
 
     def audit(self, threads: int | None = None, progress: Progress | None = None) -> Audit:
         """Run the audit.
@@ -296,6 +300,7 @@ def parse_job(text: str, path: Path | None, candidates_required: bool) -> Job:
         most_steps=run.whole("most_steps", "most_steps = 100000") if "most_steps" in run else 1_000_000,
         title=run.text("title", 'title = "My quench"') if "title" in run else (path.stem if path else ""),
         energy_unit=run.text("energy_unit", 'energy_unit = "J"') if "energy_unit" in run else "",
+        device=read_device(file, operator.qubits),
     )
 
 

@@ -6,12 +6,13 @@ import math
 from dataclasses import dataclass
 
 from trueturn import _memory, _native
+from trueturn.device.shares import t_gates
 from trueturn.errors import RotationError
-from trueturn.export.device import Device, Placed
+from trueturn.export.hardware import Hardware, Placed
 from trueturn.ladders import is_list
 from trueturn.rotations import Rotations
 
-__all__ = ["Cost", "cost_of", "t_count", "written_as"]
+__all__ = ["Cost", "cost_of", "written_as"]
 
 BYTES_PER_GATE = 64  # a gate of a repeated body while its ends are compared: itself, twice, and its place on two qubits
 
@@ -36,7 +37,9 @@ class Cost:
     clifford_rotations, t_rotations : int
         Those with θ a multiple of π/4, which take no T gate, and with θ an odd multiple of π/8, which take one.
     t_count : int
-        T gates when every other rotation is synthesised with its share of `synthesis_error`; see `t_count` below.
+        T gates where the R other rotations are synthesised, each to ε = synthesis_error / R, so that together they are
+        off by no more than `synthesis_error` in the operator norm (triangle inequality): 3 log2(1/ε) each, rounded up
+        (Ross, Selinger 2016, the leading term of the typical count).
     synthesis_error : float
     success : float or None
         Probability that no gate and no readout fails; None where the device states no rate.
@@ -45,6 +48,11 @@ class Cost:
     start_layout, end_layout : tuple of int
         Entry q is the physical qubit that holds qubit q.
     physical_qubits : int
+
+    References
+    ----------
+    N. J. Ross, P. Selinger, "Optimal ancilla-free Clifford+T approximation of z-rotations", Quantum Inf. Comput. 16,
+    901 (2016), abstract.
     """
 
     two_qubit_gates: int
@@ -68,8 +76,8 @@ class Cost:
     def assumptions(self) -> tuple[str, ...]:
         """What these figures take for granted, in sentences."""
         said = [
-            "T count: 3 log2(1/ε) for each rotation that is neither Clifford nor T-like, the leading term of a typical "
-            "count (Ross, Selinger 2016), with ε the synthesis error divided by the number of such rotations."
+            "T count: 3 log2(1/ε), rounded up, for each rotation that is neither Clifford nor T-like: the leading term of "
+            "the typical count (Ross, Selinger 2016), ε being the synthesis error divided by their number."
         ]
         if self.success is not None:
             said.append(
@@ -79,9 +87,9 @@ class Cost:
         return tuple(said)
 
 
-def cost_of(circuit: Rotations, device: Device) -> Cost:
+def cost_of(circuit: Rotations, hardware: Hardware) -> Cost:
     """Count the gates of a circuit on a device; see `Rotations.cost`."""
-    return written_as(circuit, device.placed(circuit.qubits))[0]
+    return written_as(circuit, hardware.placed(circuit.qubits))[0]
 
 
 def written_as(circuit: Rotations, placed: Placed) -> tuple[Cost, _native.GateOptions]:
@@ -102,7 +110,7 @@ def written_as(circuit: Rotations, placed: Placed) -> tuple[Cost, _native.GateOp
 def _counted(circuit: Rotations, placed: Placed, options: _native.GateOptions, routing: str) -> Cost:
     numbers, end = _native.gate_counts(circuit._circuit, options)
     controlled, zz, swaps, one_qubit, clifford, t_like, other, depth, two_qubit_depth = numbers
-    device = placed.device
+    hardware = placed.hardware
     two_qubit = min(controlled + zz + 3 * swaps, 2**64 - 1)
     return Cost(
         two_qubit_gates=two_qubit,
@@ -114,9 +122,9 @@ def _counted(circuit: Rotations, placed: Placed, options: _native.GateOptions, r
         rotations=min(clifford + t_like + other, 2**64 - 1),
         clifford_rotations=clifford,
         t_rotations=t_like,
-        t_count=t_like + t_count(other, device.synthesis_error),
-        synthesis_error=device.synthesis_error,
-        success=_success(device, two_qubit, one_qubit, circuit.qubits),
+        t_count=t_gates(other, t_like, hardware.synthesis_error),
+        synthesis_error=hardware.synthesis_error,
+        success=_success(hardware, two_qubit, one_qubit, circuit.qubits),
         routing=routing,
         start_layout=placed.layout,
         end_layout=tuple(end),
@@ -124,39 +132,8 @@ def _counted(circuit: Rotations, placed: Placed, options: _native.GateOptions, r
     )
 
 
-def t_count(rotations: int, synthesis_error: float) -> int:
-    """Return the T gates for rotations by general angles, rounded up.
-
-    Parameters
-    ----------
-    rotations : int
-        R of them.
-    synthesis_error : float
-        For all together, in the operator norm: each gets an equal share ε = synthesis_error / R, and the triangle
-        inequality adds the shares up.
-
-    Returns
-    -------
-    int
-        R · 3 log2(1/ε).
-
-    References
-    ----------
-    N. J. Ross, P. Selinger, "Optimal ancilla-free Clifford+T approximation of z-rotations", Quantum Inf. Comput. 16,
-    901 (2016), abstract: 3 log2(1/ε) + O(log log(1/ε)) in the typical case. The leading term is taken.
-
-    Examples
-    --------
-    >>> t_count(1, 1e-3), t_count(100, 1e-3)
-    (30, 4983)
-    """
-    if rotations == 0:
-        return 0
-    return max(0, math.ceil(rotations * 3.0 * (math.log2(rotations) - math.log2(synthesis_error))))
-
-
-def _success(device: Device, two_qubit: int, one_qubit: int, qubits: int) -> float | None:
-    rates = (device.two_qubit_error, device.one_qubit_error, device.readout_error)
+def _success(hardware: Hardware, two_qubit: int, one_qubit: int, qubits: int) -> float | None:
+    rates = (hardware.two_qubit_error, hardware.one_qubit_error, hardware.readout_error)
     if all(rate is None for rate in rates):
         return None
     return math.exp(

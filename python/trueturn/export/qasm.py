@@ -14,7 +14,7 @@ from trueturn import _native
 from trueturn._build import build_info
 from trueturn.errors import ArgumentError
 from trueturn.export.cost import Cost, written_as
-from trueturn.export.device import Device, Placed
+from trueturn.export.hardware import Hardware, Placed
 from trueturn.rotations import Rotations
 
 __all__ = ["qasm_text", "write_qasm"]
@@ -25,11 +25,13 @@ SHORTEST = {"one": len("h q[0];\n"), "two": len("cx q[0], q[1];\n")}
 TEXT_LIMIT = 10**8
 
 
-def write_qasm(circuit: Rotations, path: str | os.PathLike[str], version: int, comment: str, device: Device) -> Cost:
+def write_qasm(
+    circuit: Rotations, path: str | os.PathLike[str], version: int, comment: str, hardware: Hardware
+) -> Cost:
     """Write a circuit to a file; see `Rotations.write_qasm`."""
     _require_version(version)
     target = Path(path)
-    placed = device.placed(circuit.qubits)
+    placed = hardware.placed(circuit.qubits)
     cost, options = written_as(circuit, placed)
     folder = target.resolve().parent
     if target.is_dir() or not folder.is_dir():
@@ -54,10 +56,10 @@ def write_qasm(circuit: Rotations, path: str | os.PathLike[str], version: int, c
     return cost
 
 
-def qasm_text(circuit: Rotations, version: int, comment: str, device: Device) -> str:
+def qasm_text(circuit: Rotations, version: int, comment: str, hardware: Hardware) -> str:
     """Return a circuit as text; see `Rotations.qasm`."""
     _require_version(version)
-    placed = device.placed(circuit.qubits)
+    placed = hardware.placed(circuit.qubits)
     cost, options = written_as(circuit, placed)
     if version == 2 and _least_bytes(cost) > TEXT_LIMIT:
         raise ArgumentError(
@@ -97,7 +99,7 @@ def _head(circuit: Rotations, version: int, comment: str, placed: Placed, cost: 
         + ("." if version == 3 else "; OpenQASM 2 leaves the global phase open: not written."),
         "// Conventions: qubit k of a string is q[k] at the start, and bit k of an amplitude's index; a gate's angle is"
         " 2 theta.",
-        f"// Ladders: {placed.device.ladder}, {placed.device.order}. Two-qubit gates: {cost.two_qubit_gates}"
+        f"// Ladders: {placed.hardware.ladder}, {placed.hardware.order}. Two-qubit gates: {cost.two_qubit_gates}"
         f" (swaps: {cost.swaps}, three each), depth in them: {cost.two_qubit_depth}.",
     ]
     if not placed.is_plain:
@@ -107,7 +109,7 @@ def _head(circuit: Rotations, version: int, comment: str, placed: Placed, cost: 
             f"// trueturn: end_layout = {list(cost.end_layout)}",
         ]
     lines.append("")
-    if placed.device.native == "zz":
+    if placed.hardware.native == "zz":
         lines.append("gate rzz(theta) a, b { cx a, b; rz(theta) b; cx a, b; }")
     if version == 2 and cost.swaps:
         lines.append("gate swap a, b { cx a, b; cx b, a; cx a, b; }")

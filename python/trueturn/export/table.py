@@ -4,16 +4,18 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import asdict, dataclass
+from textwrap import wrap
 from typing import Any
 
 from trueturn.audit.figures import count
 from trueturn.errors import ArgumentError
 from trueturn.export.cost import Cost, cost_of
-from trueturn.export.device import Device
+from trueturn.export.hardware import Hardware
 from trueturn.rotations import Rotations
 
 __all__ = ["CostTable", "compare_costs"]
 
+WIDTH = 100
 HEADINGS = ("two-qubit gates", "unsaved", "swaps", "two-qubit depth", "depth", "rotations", "T count", "success")
 
 
@@ -48,7 +50,7 @@ class CostTable:
             cells = [line[place] for place in kept]
             rows.append("  ".join([cells[0].ljust(widths[0]), *map(str.rjust, cells[1:], widths[1:])]).rstrip())
         said = dict.fromkeys(sentence for cost in self.rows.values() for sentence in cost.assumptions)
-        return "\n".join([*rows, *said])
+        return "\n".join([*rows, *(line for sentence in said for line in wrap(sentence, WIDTH))])
 
 
 def compare_costs(circuits: Mapping[str, Rotations], **device: Any) -> CostTable:
@@ -85,5 +87,5 @@ def compare_costs(circuits: Mapping[str, Rotations], **device: Any) -> CostTable
             argument="circuits",
             value=circuits,
         )
-    target = Device.of(device)
+    target = Hardware.of(device)
     return CostTable({name: cost_of(circuit, target) for name, circuit in circuits.items()})

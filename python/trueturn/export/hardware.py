@@ -17,7 +17,7 @@ from trueturn.export.connectivity import Edges, edges_of, require_connected
 from trueturn.ladders import LADDERS as ORDERS
 from trueturn.lattice import Lattice
 
-__all__ = ["NATIVES", "ROUTINGS", "SHAPES", "Device", "Placed"]
+__all__ = ["NATIVES", "ROUTINGS", "SHAPES", "Hardware", "Placed"]
 
 SHAPES = ("staircase", "balanced", "hub")
 NATIVES = ("cx", "cz", "zz")
@@ -26,7 +26,7 @@ RATES = ("two_qubit_error", "one_qubit_error", "readout_error")
 
 
 @dataclass(frozen=True)
-class Device:
+class Hardware:
     """How circuits become gates, and how often gates fail.
 
     Parameters
@@ -87,7 +87,7 @@ class Device:
             object.__setattr__(self, "connectivity", tuple(self.connectivity))
 
     @classmethod
-    def of(cls, options: dict[str, Any]) -> Device:
+    def of(cls, options: dict[str, Any]) -> Hardware:
         """Make a device from keywords; an unknown one is refused with the nearest that is known."""
         names = [entry.name for entry in dataclasses.fields(cls)]
         for name in options:
@@ -122,7 +122,7 @@ class Device:
 class Placed:
     """A device with the physical qubits of one circuit settled."""
 
-    device: Device
+    hardware: Hardware
     qubits: int
     edges: Edges | None = field(repr=False)
     layout: tuple[int, ...]
@@ -134,18 +134,18 @@ class Placed:
 
     def routings(self) -> tuple[str, ...]:
         """Return the ways of routing to choose from."""
-        if self.device.routing != "fewest":
-            return (self.device.routing,)
+        if self.hardware.routing != "fewest":
+            return (self.hardware.routing,)
         return ("bridges",) if self.edges is None else ("bridges", "swaps")
 
     def options(self, routing: str) -> _native.GateOptions:
         """Return the options for the core."""
-        device = self.device
+        hardware = self.hardware
         return _native.GateOptions(
-            shape=device.ladder,
-            order=device.order,
-            join=device.join_pairs,
-            native=device.native,
+            shape=hardware.ladder,
+            order=hardware.order,
+            join=hardware.join_pairs,
+            native=hardware.native,
             qubits=self.qubits,
             edges=self.edges,
             routing=routing,
