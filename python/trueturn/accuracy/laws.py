@@ -13,7 +13,7 @@ from functools import lru_cache
 
 from trueturn.accuracy import analytic, norms
 from trueturn.accuracy.commutators import MOST_TUPLES, first_order_sum, nested_commutator_sum, second_order_sums
-from trueturn.accuracy.norms import NormRule
+from trueturn.accuracy.norms import Norm, NormRule
 from trueturn.accuracy.remainder import Expansion, expansions, layers
 from trueturn.formulas import Formula
 from trueturn.formulas.merging import merged_runs

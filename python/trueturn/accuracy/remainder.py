@@ -32,7 +32,7 @@ from fractions import Fraction
 
 from trueturn import _memory
 from trueturn._native import Terms
-from trueturn.accuracy.norms import Norm, NormRule, joined_routes
+from trueturn.accuracy.norms import Norm, NormRule, joined_routes, quick
 from trueturn.operator import Operator
 
 __all__ = ["MOST_STRINGS", "Expansion", "expansions", "layers"]
