@@ -14,7 +14,6 @@ from trueturn.audit.measure import Bench, Measured
 from trueturn.audit.result import Row, Trial
 from trueturn.audit.search import least_steps
 from trueturn.errors import AuditError, FormulaError
-from trueturn.formulas import Formula
 from trueturn.partition import Partition
 
 __all__ = ["Chosen", "Runs", "error_per_distance"]
@@ -116,8 +115,6 @@ class Runs:
         """Return a proven bound on the error at a step count and its source, or None and the reason."""
         bench, formula = self.bench, self.candidate.formula
         try:
-            if not isinstance(formula, Formula):
-                return None, f"no theorem at hand covers {formula.name}"
             found = bound(formula, self.partition, bench.times[-1], steps)
         except FormulaError:
             return None, f"no theorem at hand covers {formula.name}"

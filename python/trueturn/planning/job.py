@@ -18,7 +18,7 @@ from trueturn.planning.ways import ORDERINGS
 
 __all__ = ["PlanTask", "plan_of_candidates", "read_plan"]
 
-KEYS = ("formulas", "formula_file", "rules", "orderings", "cost", "synthesis_error", "thorough")
+KEYS = ("formulas", "formula_file", "rules", "orderings", "cost", "synthesis_error", "thorough", "bounds")
 
 
 @dataclass(frozen=True)
@@ -31,6 +31,7 @@ class PlanTask:
     cost: tuple[str, ...] = ("two_qubit_gates",)
     synthesis_error: float | None = None
     thorough: bool = True
+    bounds: bool = True
 
 
 def read_plan(
@@ -68,6 +69,7 @@ def read_plan(
         tuple(cost) or PlanTask.cost,
         share,
         section.flag("thorough", True),
+        section.flag("bounds", True),
     )
 
 

@@ -14,10 +14,12 @@ from trueturn.audit.run import prepare
 from trueturn.audit.runs import Runs
 from trueturn.audit.truth import Progress
 from trueturn.errors import ArgumentError, ToleranceError
+from trueturn.export.hardware import Hardware
 from trueturn.operator import Operator
 from trueturn.partition import Partition
 from trueturn.planning import words
 from trueturn.planning.costs import OwnCost, Prices, chosen_costs
+from trueturn.planning.noise import Noise
 from trueturn.planning.proven import distance_for
 from trueturn.planning.ranking import front, marked, ranked
 from trueturn.planning.result import Plan
@@ -48,7 +50,9 @@ def plan(
     orderings: str | Iterable[str] = "given",
     cost: str | OwnCost | Iterable[str | OwnCost] = "two_qubit_gates",
     synthesis_error: float | None = None,
+    device: Mapping[str, Any] | Hardware | None = None,
     thorough: bool = True,
+    bounds: bool = True,
     readout: str = "along",
     relative_to: str | None = None,
     reference_tolerance: float | None = None,
@@ -90,10 +94,17 @@ def plan(
     synthesis_error : float, optional
         The part of `tolerance`, in the same unit, that is set aside for the synthesis of rotations from Clifford and
         T gates. Default: none, or a tenth of `tolerance` where ``"t_count"`` is asked for.
+    device : mapping or Hardware, optional
+        Options of `Rotations.cost`: gates are then counted as the circuit is written for it, with savings and routing, instead
+        of 2(w-1) for each rotation. With ``two_qubit_error`` and ``quantity="observables"`` rows say what failing gates may
+        add, and a tolerance below that at any step count is refused. Its own `synthesis_error` is not used here.
     thorough : bool
         False gives up a way as soon as it misses the tolerance at a step count that costs more than another way that meets
         it, in every compared cost. Formulas of high order are then searched first. Not by wall time, which is only known
         after a run.
+    bounds : bool
+        False leaves the proven bounds out. They are computed after all searches; those of high orders on many parts can take
+        minutes.
     readout, relative_to, reference_tolerance, reference_method, most_steps, threads, progress, title, start, energy_unit
         As in `audit`.
 
@@ -135,6 +146,7 @@ def plan(
     """
     began = clock.perf_counter()
     names, own = chosen_costs(cost)
+    hardware = device if device is None or isinstance(device, Hardware) else Hardware.of(_options(device))
     for_synthesis = _synthesis(synthesis_error, tolerance, names)
     found, left_out = ways(operator, formulas, rule, orderings)
     if not thorough:
@@ -157,8 +169,12 @@ def plan(
         partitions=[way.partition for way in found],
     )
     seconds = {"reference": clock.perf_counter() - began}
-    prices = Prices(names, own, distance_for(setting.bench, for_synthesis) if for_synthesis else None)
-    sought = Sought(prices, most_steps, thorough)
+    prices = Prices(names, own, distance_for(setting.bench, for_synthesis) if for_synthesis else None, hardware)
+    noise = None
+    if hardware is not None and hardware.two_qubit_error and quantity == "observables":
+        noise = Noise(setting.bench, hardware)
+        noise.require_room(found, setting.bench.tolerance)
+    sought = Sought(prices, noise, most_steps, thorough)
     for number, way in enumerate(found):
 
         def tell(steps: int, label: str = way.label, number: int = number) -> None:
@@ -171,9 +187,15 @@ def plan(
     seconds["search"] = clock.perf_counter() - began - seconds["reference"]
     if not sought.found:
         raise KeyboardInterrupt
+
+    def tell_bound(label: str, done: int) -> None:
+        if progress is not None:
+            progress(f"{label}: proven bound", done, len(sought.found))
+
+    rows = ranked(marked(sought.rows(bounds, tell_bound), prices.compared), names)
+    seconds["bounds"] = clock.perf_counter() - began - seconds["reference"] - seconds["search"]
     if progress is not None:
         progress("done", len(found), len(found))
-    rows = ranked(marked(sought.rows(), prices.compared), names)
     audited = setting.concluded(rows, seconds, title=title, start=start, energy_unit=energy_unit)
     facts: dict[str, Any] = {entry.name: getattr(audited, entry.name) for entry in fields(Audit)}
     facts |= {
@@ -215,3 +237,15 @@ def _synthesis(given: float | None, tolerance: float, names: Sequence[str]) -> f
             achievable=float(given),
         )
     return float(given)
+
+
+def _options(device: object) -> dict[str, Any]:
+    """Return the options of a device as keywords."""
+    if isinstance(device, Mapping) and all(isinstance(name, str) for name in device):
+        return dict(device)
+    raise ArgumentError(
+        f"device: neither a mapping nor a Hardware ({device!r}); give options of Rotations.cost, such as "
+        "{'connectivity': 'line'}",
+        argument="device",
+        value=device,
+    )

@@ -7,12 +7,14 @@ from collections.abc import Callable
 from dataclasses import dataclass, field, fields, replace
 from typing import NamedTuple
 
+from trueturn.audit.figures import upper
 from trueturn.audit.result import Row
 from trueturn.audit.runs import Chosen, Runs
 from trueturn.formulas import Formula
 from trueturn.formulas.processed import Processed
 from trueturn.partition import Partition
 from trueturn.planning.costs import Prices
+from trueturn.planning.noise import Noise
 from trueturn.planning.proven import fitted_order, proven_steps
 from trueturn.planning.result import PlanRow
 from trueturn.planning.ways import Way
@@ -27,7 +29,7 @@ class Dominated(Exception):
 
 
 class Found(NamedTuple):
-    """A way that was searched: its runs, the step count chosen, the row of an audit, and the proven step count.
+    """A way that was searched: its runs and the step count chosen.
 
     `same_as` is the label of the way that it shares its runs with, or empty.
     """
@@ -35,8 +37,6 @@ class Found(NamedTuple):
     way: Way
     runs: Runs
     chosen: Chosen
-    row: Row
-    proven: tuple[int | None, str]
     same_as: str = ""
 
 
@@ -45,6 +45,7 @@ class Sought:
     """The ways that were searched, in their order. Ways with the same formula and parts share their runs."""
 
     prices: Prices
+    noise: Noise | None
     most_steps: int
     thorough: bool
     found: list[Found] = field(default_factory=list)
@@ -61,8 +62,7 @@ class Sought:
         key = (way.candidate.formula, way.partition)
         known = self._first.get(key)
         if known is not None:
-            row = replace(known.row, candidate=way.candidate)
-            self.found.append(known._replace(way=way, row=row, same_as=known.way.label))
+            self.found.append(known._replace(way=way, same_as=known.way.label))
             return
 
         def about_to_run(steps: int) -> None:
@@ -80,12 +80,7 @@ class Sought:
             chosen = runs.best_so_far("interrupted before the search ended")
         if chosen is None:
             return
-        try:
-            row, proven = runs.row(chosen), proven_steps(runs)
-        except KeyboardInterrupt:
-            self.interrupted = True
-            row, proven = runs.row(chosen, bounded=False), (None, UNBOUNDED)
-        self._first[key] = Found(way, runs, chosen, row, proven)
+        self._first[key] = Found(way, runs, chosen)
         self.found.append(self._first[key])
 
     def _require_hope(self, runs: Runs) -> None:
@@ -95,35 +90,65 @@ class Sought:
             return
         least = self.prices.of(runs.measured[missing].circuit, math.inf)
         for other in self._first.values():
-            if other.row.verdict != "meets":
+            answer = other.runs.measured[other.chosen.steps]
+            if answer.trial.verdict != "meets":
                 continue
-            costs = self.prices.of(other.runs.measured[other.row.steps].circuit, math.inf)
+            costs = self.prices.of(answer.circuit, math.inf)
             if all(costs[name] < least[name] for name in self.prices.compared):
                 raise Dominated(f"given up: {missing} steps miss and cost more than {other.way.label}, which meets")
 
-    def rows(self) -> list[PlanRow]:
-        """Return the rows, priced, in the order of the search; none is marked as efficient yet."""
-        rows = []
-        for way, runs, chosen, row, (proven, source), same_as in self.found:
-            costs = {
-                steps: self.prices.of(runs.measured[steps].circuit, runs.seconds[steps])
-                for steps in sorted(runs.measured)
-            }
-            facts = {entry.name: getattr(row, entry.name) for entry in fields(Row)} | {"label": way.label}
+    def rows(self, bounds: bool, tell: Callable[[str, int], None]) -> list[PlanRow]:
+        """Return the rows, priced, in the order of the search; none is marked as efficient yet.
+
+        `bounds` asks for proven bounds. After an interrupt, which means that the user is in a hurry, and from one while they
+        are computed, those that are missing are left out.
+        """
+        why = "not asked for" if not bounds else UNBOUNDED if self.interrupted else ""
+        rows: list[PlanRow] = []
+        for number, (way, runs, chosen, same_as) in enumerate(self.found):
+            row = runs.row(chosen, bounded=False)
+            proven: tuple[int | None, str] = None, why
+            if same_as:
+                twin = next(other for other in rows if other.label == same_as)
+                row = replace(row, bound=twin.bound, bound_source=twin.bound_source)
+                proven = twin.bound_steps, twin.bound_steps_source
+            elif not why:
+                try:
+                    tell(way.label, number)
+                    row, proven = runs.row(chosen), proven_steps(runs)
+                except KeyboardInterrupt:
+                    self.interrupted = True
+                    why = UNBOUNDED
+                    proven = None, why
             rows.append(
-                PlanRow(
-                    **facts,
-                    rule=way.rule,
-                    ordering=way.ordering,
-                    same_as=same_as,
-                    costs=costs[chosen.steps],
-                    trial_costs=tuple(found[self.prices.names[0]] for found in costs.values()),
-                    verified=chosen.verified,
-                    fitted_order=fitted_order(runs, chosen.steps),
-                    bound_steps=proven,
-                    bound_steps_source=source,
-                    overpays=proven / chosen.steps if proven is not None and chosen.verified else None,
-                    efficient=False,
-                )
+                self._row(replace(row, candidate=way.candidate, label=way.label), way, runs, chosen, same_as, proven)
             )
         return rows
+
+    def _row(
+        self, row: Row, way: Way, runs: Runs, chosen: Chosen, same_as: str, proven: tuple[int | None, str]
+    ) -> PlanRow:
+        costs = {
+            steps: self.prices.of(runs.measured[steps].circuit, runs.seconds[steps]) for steps in sorted(runs.measured)
+        }
+        steps, source = proven
+        noise = None if self.noise is None else self.noise.of(runs.measured[chosen.steps].circuit)
+        notes = [row.note] if row.note else []
+        if noise is not None and row.verdict == "meets" and row.error[1] + noise > runs.bench.tolerance:
+            notes.append(f"failing gates may add {upper(noise)}, which leaves no room for the error of the circuit")
+        facts = {entry.name: getattr(row, entry.name) for entry in fields(Row)} | {"note": "; ".join(notes)}
+        return PlanRow(
+            **facts,
+            rule=way.rule,
+            ordering=way.ordering,
+            same_as=same_as,
+            costs=costs[chosen.steps],
+            trial_costs=tuple(found[self.prices.names[0]] for found in costs.values()),
+            verified=chosen.verified,
+            fitted_order=fitted_order(runs, chosen.steps),
+            bound_steps=steps,
+            bound_steps_source=source,
+            overpays=steps / chosen.steps if steps is not None and chosen.verified else None,
+            noise=noise,
+            efficient=False,
+        )
