@@ -35,6 +35,7 @@ if TYPE_CHECKING:
 __all__ = ["Job", "built_in_job", "read_job", "template"]
 
 SECTIONS = ("system", "start", "target", "candidate", "plan", "device", "reference", "output", "run")
+NORMED = {"state": "states", "operator": "circuits"}
 METHODS = ("chebyshev", "krylov", "dense")
 EXAMPLE_CANDIDATE = '[[candidate]] with formula = "strang", rule = "commuting", steps = "least"'
 
@@ -51,12 +52,12 @@ class Job:
         The job file; None for the built-in job.
     operator : Operator
         The Hamiltonian.
-    start : Start
-        The start state; `start.state()` makes it.
+    start : Start or None
+        The start state; `start.state()` makes it. None where it is left out, for ``quantity="operator"`` alone.
     times : tuple of float
         Ascending and above zero.
     tolerance : float
-    quantity : "observables" or "state"
+    quantity : "observables", "state" or "operator"
     readout : "along" or "separate"
     relative_to : None or "norm"
     observables : mapping of str to Operator
@@ -79,7 +80,7 @@ class Job:
 
     path: Path | None
     operator: Operator
-    start: Start
+    start: Start | None
     times: tuple[float, ...]
     tolerance: float
     quantity: str
@@ -115,7 +116,7 @@ class Job:
 
         return audit(
             self.operator,
-            self.start.state(),
+            None if self.start is None else self.start.state(),
             self.times,
             self.candidates,
             self.tolerance,
@@ -129,7 +130,7 @@ class Job:
             threads=self.threads if threads is None else threads,
             progress=progress,
             title=self.title,
-            start=self.start.words,
+            start="" if self.start is None else self.start.words,
             energy_unit=self.energy_unit,
         )
 
@@ -152,7 +153,7 @@ class Job:
             )
         return plan(
             self.operator,
-            self.start.state(),
+            None if self.start is None else self.start.state(),
             self.times,
             task.formulas,
             task.rules,
@@ -173,9 +174,25 @@ class Job:
             threads=self.threads if threads is None else threads,
             progress=progress,
             title=self.title,
-            start=self.start.words,
+            start="" if self.start is None else self.start.words,
             energy_unit=self.energy_unit,
         )
+
+    def _required_start(self) -> Start:
+        """Return the start that a reference needs.
+
+        Raises
+        ------
+        JobError
+            There is none.
+        """
+        if self.start is None:
+            raise JobError(
+                "start: missing; a reference evolves a state: add a section [start]",
+                path=str(self.path or ""),
+                key="start",
+            )
+        return self.start
 
     def reference(self, threads: int | None = None, progress: Progress | None = None) -> Reference:
         """Compute only the certified reference; the parameters are those of `audit`."""
@@ -183,7 +200,7 @@ class Job:
 
         return reference(
             self.operator,
-            self.start.state(),
+            self._required_start().state(),
             self.times,
             tolerance=1e-10 if self.reference_tolerance is None else self.reference_tolerance,
             observables=self.observables,
@@ -251,23 +268,25 @@ def parse_job(text: str, path: Path | None, candidates_required: bool) -> Job:
     file.only(SECTIONS)
     for key, example in (
         ("system", "a section [system]"),
-        ("start", "a section [start]"),
         ("target", "[target]"),
     ):
         file.require(key, example)
     folder = path.parent if path is not None else Path()
 
     operator = read_system(file.table("system"), folder)
-    start = read_start(file.table("start"), operator.qubits, folder)
     target = file.table("target")
+    every_start = target.values.get("quantity") == "operator"
+    if not every_start:
+        file.require("start", 'a section [start], or quantity = "operator" in [target] for every start at once')
+    start = read_start(file.table("start"), operator.qubits, folder) if "start" in file else None
     target.only(("times", "time", "tolerance", "quantity", "readout", "relative_to", "observables"))
     times = read_times(target)
     tolerance = target.positive("tolerance", "tolerance = 0.01")
-    quantity = target.choice("quantity", ("observables", "state"), default="observables")
+    quantity = target.choice("quantity", ("observables", "state", "operator"), default="observables")
     readout = target.choice("readout", ("along", "separate"), default="along")
     relative_to = target.choice("relative_to", ("norm",)) if "relative_to" in target else None
-    if relative_to is not None and quantity == "state":
-        raise target.error("relative_to", "has no meaning for states, whose norm is 1", "take it out")
+    if relative_to is not None and quantity != "observables":
+        raise target.error("relative_to", f"has no meaning for {NORMED[quantity]}, whose norm is 1", "take it out")
     observables = read_observables(target, operator.qubits)
     if quantity == "observables" and not observables:
         remedy = 'add [target.observables] with a line such as edge = "Z_0", or set quantity = "state"'

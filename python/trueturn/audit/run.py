@@ -10,26 +10,29 @@ from numbers import Real
 
 from trueturn import _memory, _threads
 from trueturn._observables import named_operators
+from trueturn.accuracy.difference import DENSE_QUBITS
 from trueturn.audit import words
 from trueturn.audit.candidate import Candidate
 from trueturn.audit.measure import Bench
+from trueturn.audit.operator_measure import OperatorBench
 from trueturn.audit.result import Audit, Row
 from trueturn.audit.runs import Chosen, Runs
 from trueturn.audit.truth import Progress, positive_times, reference_for
 from trueturn.errors import ArgumentError, AuditError, ToleranceError
 from trueturn.operator import Operator
 from trueturn.partition import Partition
+from trueturn.randomised.checks import checked_operator
 from trueturn.state import State, require_same_qubits
 
 __all__ = ["audit"]
 
-QUANTITIES = ("observables", "state")
+QUANTITIES = ("observables", "state", "operator")
 READOUTS = ("along", "separate")
 
 
 def audit(
     operator: Operator,
-    state: State,
+    state: State | None,
     times: float | Iterable[float],
     candidates: Sequence[Candidate],
     tolerance: float,
@@ -53,15 +56,17 @@ def audit(
     ----------
     operator : Operator
         The Hamiltonian; ħ = 1.
-    state : State
-        Start; not written.
+    state : State or None
+        Start; not written. With ``quantity="operator"`` every start counts, and None will do.
     times : float or iterable of float
         Positive, in inverse units of the coefficients.
     candidates : sequence of Candidate
     tolerance : float
         On the largest error over times and observables; absolute.
-    quantity : "observables" or "state"
-        Largest |<O>_S - <O>| over `observables`, or ‖ψ_S - ψ‖ with the global phase kept.
+    quantity : "observables", "state" or "operator"
+        Largest |<O>_S - <O>| over `observables`; ‖ψ_S - ψ‖ with the global phase kept; or ‖S - exp(-iHt)‖ in the spectral
+        norm, for all starts at once: by whole matrices up to 10 qubits, else by power iteration, whose upper ends hold with
+        a probability of at least 0.999 each (`operator_error`).
     observables : mapping of str to Operator
         Needed for ``quantity="observables"``.
     readout : "along" or "separate"
@@ -72,6 +77,7 @@ def audit(
         Error bound asked of the reference state. Default 1e-10, or a hundredth of `tolerance` where that is less; where
         double precision cannot certify so much but can certify a hundredth of `tolerance`, what it can.
     reference_method : "chebyshev", "krylov" or "dense"
+        Not asked for ``quantity="operator"``, which takes dense up to 10 qubits and Chebyshev beyond.
     most_steps : int
         Where a search for the least step count gives up.
     threads : int, optional
@@ -92,7 +98,8 @@ def audit(
         The tolerance is not positive, or below what double precision can certify.
     MemoryRefusedError
         The vectors needed do not fit: start, reference and one work vector at a time, and for
-        ``quantity="state"`` one reference state for each time.
+        ``quantity="state"`` one reference state for each time. For ``quantity="operator"`` six vectors, or up to 10 qubits
+        six matrices and one for each time.
 
     Notes
     -----
@@ -176,20 +183,20 @@ class Setting:
             readout=bench.readout,
             observables=bench.observables,
             operator=self.operator,
-            start=start or f"a given state vector of {bench.start.qubits} qubits",
+            start=words.start(start, bench.start, bench.quantity),
             title=title,
             energy_unit=energy_unit,
-            assumptions=words.assumptions(bench.start, bench.readout, bench.relative_to),
+            assumptions=words.assumptions(bench.start, bench.readout, bench.relative_to, bench.quantity),
             proven=words.proven(truth),
             measured=words.measured(bench.quantity, truth.certificate.proven),
-            cautions=words.CAUTIONS,
+            cautions=words.cautions(bench.quantity),
             seconds=seconds,
         )
 
 
 def prepare(
     operator: Operator,
-    state: State,
+    state: State | None,
     times: float | Iterable[float],
     candidates: Sequence[Candidate],
     tolerance: float,
@@ -209,20 +216,20 @@ def prepare(
 
     `partitions` are those of the candidates, where they are known.
     """
-    watched = named_operators(observables)
+    watched = {} if quantity == "operator" else named_operators(observables)
     asked = sorted(set(positive_times(times)))
-    _check(operator, state, candidates, tolerance, quantity, watched, readout, relative_to, most_steps)
+    start = _start(state, operator, quantity)
+    _check(operator, start, candidates, tolerance, quantity, watched, readout, relative_to, most_steps)
     workers = _threads.resolve(threads)
     if partitions is None:
         partitions = [candidate.partition(operator) for candidate in candidates]
-    _memory.require(
-        (2 + (len(asked) if quantity == "state" else 1)) * (16 << state.qubits),
-        "audit",
-        lambda n: (2 + (len(asked) if quantity == "state" else 1)) * (16 << n),
-    )
+    vectors = {"observables": 3, "state": 2 + len(asked), "operator": 6}[quantity]
+    _memory.require(vectors * (16 << start.qubits), "audit", vectors)
+    if quantity == "operator":
+        reference_method = "dense" if start.qubits <= DENSE_QUBITS else "chebyshev"
     truth = reference_for(
         operator,
-        state,
+        start,
         asked,
         tolerance,
         reference_tolerance,
@@ -232,8 +239,22 @@ def prepare(
         threads=workers,
         progress=progress,
     )
-    bench = Bench(state, asked, truth, tolerance, quantity, watched, relative_to, readout, workers)
+    given = (start, asked, truth, tolerance, quantity, watched, relative_to, readout, workers)
+    bench = OperatorBench(*given, operator) if quantity == "operator" else Bench(*given)
     return Setting(bench, operator, tuple(partitions))
+
+
+def _start(state: State | None, operator: Operator, quantity: str) -> State:
+    """Return the start; where every start counts, any will do for the reference."""
+    if state is not None:
+        return state
+    if quantity != "operator":
+        raise ArgumentError(
+            f"state: missing (None) where quantity={quantity!r}; give a start, or quantity='operator' for all at once",
+            argument="state",
+            value=None,
+        )
+    return State.computational(0, checked_operator("operator", operator).qubits)
 
 
 def _check(
@@ -259,10 +280,11 @@ def _check(
         raise _choice("readout", readout, READOUTS)
     if relative_to not in (None, "norm"):
         raise _choice("relative_to", relative_to, (None, "norm"))
-    if relative_to == "norm" and quantity == "state":
+    if relative_to == "norm" and quantity != "observables":
         raise AuditError(
-            "relative_to: a state error has no norm to divide by (quantity='state'); leave it out",
-            reason="relative_to with a state error",
+            f"relative_to: {'a state' if quantity == 'state' else 'an operator'} error has no norm to divide by "
+            f"(quantity={quantity!r}); leave it out",
+            reason=f"relative_to with {quantity} errors",
             limit=None,
         )
     if quantity == "observables" and not observables:

@@ -119,8 +119,9 @@ class Runs:
         except FormulaError:
             return None, f"no theorem at hand covers {formula.name}"
         source = f"{found.theorem}, {found.source}"
-        if bench.quantity == "state":
-            return (found.value, source) if found.value < 2.0 else (2.0, "no two unit vectors are further apart")
+        if bench.quantity != "observables":
+            what = "unit vectors" if bench.quantity == "state" else "unitary matrices"
+            return (found.value, source) if found.value < 2.0 else (2.0, f"no two {what} are further apart")
         # No two values of an observable are further apart than 2 ‖O‖.
         per_distance = error_per_distance(bench)
         if found.value >= 1.0:
@@ -131,7 +132,8 @@ class Runs:
 def error_per_distance(bench: Bench) -> float:
     """Return c such that the error of a circuit is at most c times its spectral-norm distance from exp(-iHt).
 
-    For a state c is 1. For observables |<O>_S - <O>| ≤ 2 ‖O‖ ‖S - U‖ with unitary S and U, the identity removed.
+    For a state or the operator c is 1. For observables |<O>_S - <O>| ≤ 2 ‖O‖ ‖S - U‖ with unitary S and U, the identity
+    removed.
     """
     if bench.quantity != "observables":
         return 1.0

@@ -39,7 +39,7 @@ p / (p + ln(R / (share ε))): 0.05, 0.1, 0.18 for orders p = 1, 2, 4 with R = 10
 
 def plan(
     operator: Operator,
-    state: State,
+    state: State | None,
     times: float | Iterable[float],
     formulas: AnyFormula | Iterable[AnyFormula] | None,
     rule: str | Partition | Iterable[str | Partition],
@@ -70,8 +70,8 @@ def plan(
     ----------
     operator : Operator
         The Hamiltonian; ħ = 1.
-    state : State
-        Start; not written.
+    state : State or None
+        Start; not written. None will do with ``quantity="operator"``.
     times : float or iterable of float
         Positive, in inverse units of the coefficients.
     formulas : str, Formula or Processed, an iterable of them, or None

@@ -186,8 +186,8 @@ def trials(audit: Audit) -> str:
 
 def over_time(audit: Audit) -> str:
     """Draw the figures over time."""
-    if audit.quantity == "state":
-        caption = "State error at the requested times, with the tolerance as a broken line."
+    if audit.quantity != "observables":
+        caption = f"{audit.quantity.capitalize()} error at the requested times, with the tolerance as a broken line."
     else:
         caption = (
             "Above: the reference as a line, with its certified band (often thinner than the line), and each "
