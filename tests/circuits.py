@@ -53,3 +53,14 @@ def plain(formula, partition, time, steps):
 
 def distance(a, b):
     return np.linalg.norm(a - b, 2)
+
+
+def product(formula, partition, time, steps):
+    """The circuit by eigenvectors of each part, stage after stage: no merging, no rotations."""
+    known = [np.linalg.eigh(oracle.dense(part)) for part in partition.parts]
+    one = np.eye(2**partition.qubits, dtype=complex)
+    for weight, reverse in formula.exact_stages():
+        for values, vectors in reversed(known) if reverse else known:
+            phases = np.exp(-1j * float(weight) * time / steps * values)
+            one = (vectors * phases) @ (vectors.conj().T @ one)
+    return np.exp(-1j * partition.identity * time) * np.linalg.matrix_power(one, steps)

@@ -17,6 +17,7 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
+from trueturn.commands.bound import bound
 from trueturn.commands.circuits import cost, export
 from trueturn.commands.options import AS_JSON, JOB, THREADS
 
@@ -40,6 +41,7 @@ def commands() -> None:
     """
 
 
+commands.add_command(bound)
 commands.add_command(cost)
 commands.add_command(export)
 

@@ -244,9 +244,7 @@ def steps_by_bound(
     return high
 
 
-def _checked(
-    formula: object, partition: object, time: object, method: object, inputs: object
-) -> tuple[_Question, str]:
+def _checked(formula: object, partition: object, time: object, method: object, inputs: object) -> tuple[_Question, str]:
     if isinstance(formula, str):
         formula = known_formula(formula)
     if not isinstance(formula, (Formula, Processed)):

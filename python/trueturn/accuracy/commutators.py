@@ -10,8 +10,8 @@ from trueturn.operator import Operator
 
 __all__ = ["MOST_TUPLES", "first_order_sum", "nested_commutator_sum", "second_order_sums"]
 
-MOST_TUPLES = 60_000
-"""Tuples of parts above which `nested_commutator_sum` is not attempted: a few seconds."""
+MOST_TUPLES = 5_000
+"""Tuples of parts above which the sum over all of them is not attempted unasked: a second."""
 
 _PAD = 1.0 + 1e-12  # sums and products of doubles; brackets of two or three parts lose less
 

@@ -39,6 +39,7 @@ DERIVED = "derived in docs/error-bounds.md"
 LIE = (((1.0, "forward"),), ((1.0, "reverse"),))
 STRANG = ((0.5, "forward"), (0.5, "reverse"))
 
+
 @dataclass(frozen=True)
 class Law:
     """One bound as a function of time and steps.

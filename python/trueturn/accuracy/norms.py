@@ -31,8 +31,14 @@ MANY_TERMS = 50_000
 MOST_DENSE_WORK = 3 * 10**8
 """Cubes of dimensions that dense algebra may take for all norms of one bound."""
 
+CALL_WORK = 40_000
+"""The same for the least that one such norm takes, about a millisecond."""
+
 FEW_NORMS = 8
 """Norms by clusters that one bound may take beyond small systems, each up to seconds."""
+
+EFFORT = 1 / 32
+"""Of `spectral_report`: a fraction of a second for a norm beyond small systems, and a few per cent looser."""
 
 # Sums of up to 2^26 numbers, pairwise or exact, and a square root: far below one part in 10^14.
 _ROUNDING = 1.0 + 1e-14
@@ -71,7 +77,7 @@ def thorough(operator: Operator) -> Norm:
     simple = quick(operator)
     if len(operator) == 1 or (operator.qubits > SMALL_QUBITS and len(operator) > MANY_TERMS):
         return simple
-    report = spectral_report(operator)
+    report = spectral_report(operator, EFFORT)
     exact = _largest(report)
     if exact.value >= simple.value and exact.route != "dense":
         return simple
@@ -91,5 +97,6 @@ def joined_routes(routes: Iterable[str]) -> str:
 
 def affordable(count: int, qubits: int) -> NormRule:
     """Choose the thorough rule where `count` norms by it take seconds, else the quick one."""
-    fits = count << 3 * qubits <= MOST_DENSE_WORK if qubits <= SMALL_QUBITS else count <= FEW_NORMS
+    each = max(1 << 3 * qubits, CALL_WORK)
+    fits = count * each <= MOST_DENSE_WORK if qubits <= SMALL_QUBITS else count <= FEW_NORMS
     return thorough if fits else quick

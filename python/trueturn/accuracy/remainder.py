@@ -37,8 +37,8 @@ from trueturn.operator import Operator
 
 __all__ = ["MOST_STRINGS", "Expansion", "expansions", "layers"]
 
-MOST_STRINGS = 20_000_000
-"""Strings in all brackets together, some twenty seconds; degrees that would need more are given up."""
+MOST_STRINGS = 12_000_000
+"""Strings in all brackets together, up to some ten seconds; degrees that would need more are given up."""
 
 CALL = 40
 """Strings that could be worked through in the time of one call."""
@@ -210,27 +210,28 @@ def expansions(
 
     Notes
     -----
-    About J q² brackets for J layers. A degree is given up when the strings so far, carried on over all layers, exceed
-    `MOST_STRINGS`.
+    About J q² brackets for J layers. A degree is given up, with those above it, when the strings so far and those that the
+    layers to come need at this rate exceed `MOST_STRINGS`.
     """
     memory = _memory.allowed_bytes()
     zero = _Known((hamiltonian - hamiltonian)._terms, 0.0, 0)
     series = [zero] * (order + 1)
     remainders: list[list[Norm]] = [[] for _ in series]
-    strings = 0
+    spent = [0] * len(series)
     for place, operator in enumerate(step, start=1):
         layer = _Layer(operator, memory)
         powers = _powers(series, layer)
         for q in range(1, len(series) + 1):
-            for point in _control_points(powers, q):
-                found = layer.bracket(point)
-                strings += CALL + len(found.terms)
-                remainders[q - 1].append(_normed(found, remainder_norm))
-        strings += sum(CALL + len(known.terms) for row in powers for known in row)
+            points = [layer.bracket(point) for point in _control_points(powers, q)]
+            remainders[q - 1] += [_normed(point, remainder_norm) for point in points]
+            diagonal = [powers[q - 1 - j][j] for j in range(q)]
+            work = sum(CALL + len(known.terms) for known in points + diagonal)
+            spent[q - 1] += work
+            if q > 1 and sum(spent[:q]) + work * (len(step) - place) > MOST_STRINGS:
+                series = series[: q - 1]
+                break
         series = [_combined([(1.0, powers[d - j][j]) for j in range(d + 1)]) for d in range(len(series))]
         series[0] = _combined([(1.0, series[0]), (1.0, layer.known)])
-        while len(series) > 1 and strings * len(step) > MOST_STRINGS * max(place, len(step) // 4):
-            series.pop()
     series[0] = _combined([(1.0, series[0]), (-1.0, _Layer(hamiltonian, memory).known)])
     leading = [_normed(known, leading_norm if d >= order else remainder_norm) for d, known in enumerate(series)]
     return tuple(_expansion(leading[:q], remainders[q - 1], order) for q in range(1, len(series) + 1))

@@ -53,7 +53,8 @@ class Job:
     operator : Operator
         The Hamiltonian.
     start : Start or None
-        The start state; `start.state()` makes it. None where it is left out, for ``quantity="operator"`` alone.
+        The start state; `start.state()` makes it. None where it is left out, for ``quantity="operator"``
+        or with ``start_required=False``.
     times : tuple of float
         Ascending and above zero.
     tolerance : float
@@ -210,7 +211,7 @@ class Job:
         )
 
 
-def read_job(path: str | Path, *, candidates_required: bool = True) -> Job:
+def read_job(path: str | Path, *, candidates_required: bool = True, start_required: bool = True) -> Job:
     """Read and check a job file.
 
     Parameters
@@ -219,6 +220,8 @@ def read_job(path: str | Path, *, candidates_required: bool = True) -> Job:
         The TOML file. Paths in it are taken from its own folder.
     candidates_required : bool
         Whether a job without candidates is an error; a reference needs none.
+    start_required : bool
+        Whether a job without `[start]` is an error; bounds need none.
 
     Returns
     -------
@@ -242,7 +245,7 @@ def read_job(path: str | Path, *, candidates_required: bool = True) -> Job:
     except OSError as error:
         message = f"job file: cannot be read ({error.strerror or error}); check the path and its permissions"
         raise JobError(message, path=str(path), key="") from error
-    return parse_job(text, path, candidates_required)
+    return parse_job(text, path, candidates_required, start_required)
 
 
 def template() -> str:
@@ -261,7 +264,7 @@ def built_in_job() -> Job:
     return parse_job(template(), None, True)
 
 
-def parse_job(text: str, path: Path | None, candidates_required: bool) -> Job:
+def parse_job(text: str, path: Path | None, candidates_required: bool, start_required: bool = True) -> Job:
     """Check the text of a job file; `path` is where it came from."""
     shown = str(path) if path is not None else ""
     file = Table(parse_toml(text, shown), "", shown)
@@ -276,7 +279,7 @@ def parse_job(text: str, path: Path | None, candidates_required: bool) -> Job:
     operator = read_system(file.table("system"), folder)
     target = file.table("target")
     every_start = target.values.get("quantity") == "operator"
-    if not every_start:
+    if start_required and not every_start:
         file.require("start", 'a section [start], or quantity = "operator" in [target] for every start at once')
     start = read_start(file.table("start"), operator.qubits, folder) if "start" in file else None
     target.only(("times", "time", "tolerance", "quantity", "readout", "relative_to", "observables"))
