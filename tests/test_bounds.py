@@ -17,7 +17,9 @@ def terms(operator):
 
 
 LIE, STRANG = tt.formula("lie"), tt.formula("strang")
-SINGLE = tt.Partition([tt.Operator.from_masks([x], [z], [c], 3) for part in circuits.P3_PARTS for x, z, c in terms(part)])
+SINGLE = tt.Partition(
+    [tt.Operator.from_masks([x], [z], [c], 3) for part in circuits.P3_PARTS for x, z, c in terms(part)]
+)
 # Norms on three qubits are dense ones, padded outward to 2^-38 of Σ|c|, which is a few times the norm.
 PADDING = 1e-10
 
@@ -85,7 +87,9 @@ def test_the_two_constants_of_the_second_order_bound_are_not_exchanged(published
 def test_the_order_of_parts_enters_the_published_sums_as_published(published):
     first, second = check(published, "prop9_p3"), check(published, "prop10_p3")
     back = tt.Partition(circuits.P3_PARTS[::-1])
-    assert tt.bound("lie", back, 1.0, 1).value == pytest.approx(first["commutator_sum_reversed_fragments"] / 2, rel=PADDING)
+    assert tt.bound("lie", back, 1.0, 1).value == pytest.approx(
+        first["commutator_sum_reversed_fragments"] / 2, rel=PADDING
+    )
     reverse = second["A_reversed_fragments"] / 12 + second["B_reversed_fragments"] / 24
     assert tt.bound("strang", back, 1.0, 1).value == pytest.approx(reverse, rel=PADDING)
 
@@ -116,7 +120,9 @@ def test_step_counts_without_commutators_are_the_published_ones(published):
         low, high = 0, 2**40
         while high - low > 1:
             middle = (low + high) // 2
-            low, high = (low, middle) if analytic.counted_bound(level, strength, 10.0, middle) <= 1e-3 else (middle, high)
+            low, high = (
+                (low, middle) if analytic.counted_bound(level, strength, 10.0, middle) <= 1e-3 else (middle, high)
+            )
         assert abs(high - expected) <= values["abs_tol"]
 
 
@@ -126,7 +132,9 @@ def test_random_input_bounds_on_p3_are_the_published_ones(published):
     for formula, rms, limit in zip((LIE, STRANG), values["rms"], values["rms_bound"], strict=True):
         found = tt.bound(formula, circuits.P3, 1.0, values["r"], inputs="random")
         assert found.value == pytest.approx(limit, rel=PADDING) and found.inputs == "random"
-        difference = circuits.product(formula, circuits.P3, 1.0, values["r"]) - oracle.evolution(circuits.P3.operator(), 1)
+        difference = circuits.product(formula, circuits.P3, 1.0, values["r"]) - oracle.evolution(
+            circuits.P3.operator(), 1
+        )
         assert np.linalg.norm(difference) / np.sqrt(8) == pytest.approx(rms, rel=values["tol"])
 
 
@@ -201,14 +209,32 @@ def test_a_huge_time_gives_infinity_instead_of_an_overflow():
     ("arguments", "options", "error", "message"),
     [
         (("lei", circuits.P3, 1.0, 1), {}, "FormulaError", r"did you mean 'lie'"),
-        ((7, circuits.P3, 1.0, 1), {}, "FormulaError", r"formula: bounds are not defined for this \(int\); give a name, a"),
+        (
+            (7, circuits.P3, 1.0, 1),
+            {},
+            "FormulaError",
+            r"formula: bounds are not defined for this \(int\); give a name, a",
+        ),
         (("laskar-robutel-2", circuits.P3, 1.0, 1), {}, "FormulaError", "partition: lacks what"),
         (("lie", "P3", 1.0, 1), {}, "ArgumentError", "partition: is not a Partition"),
         (("lie", circuits.P3, np.nan, 1), {}, "ArgumentError", "time: is not a finite number"),
         (("lie", circuits.P3, np.inf, 1), {}, "ArgumentError", "time: is not a finite number"),
-        *((("lie", circuits.P3, 1.0, steps), {}, "ArgumentError", "steps: is not an integer") for steps in (0, -3, 1.5, True)),
-        (("lie", circuits.P3, 1.0, 1), {"method": "best"}, "ArgumentError", r"method: unknown \('best'\); give one of 'comm"),
-        (("lie", circuits.P3, 1.0, 1), {"inputs": 3}, "ArgumentError", r"inputs: unknown \(3\); give one of 'worst', 'ran"),
+        *(
+            (("lie", circuits.P3, 1.0, steps), {}, "ArgumentError", "steps: is not an integer")
+            for steps in (0, -3, 1.5, True)
+        ),
+        (
+            ("lie", circuits.P3, 1.0, 1),
+            {"method": "best"},
+            "ArgumentError",
+            r"method: unknown \('best'\); give one of 'comm",
+        ),
+        (
+            ("lie", circuits.P3, 1.0, 1),
+            {"inputs": 3},
+            "ArgumentError",
+            r"inputs: unknown \(3\); give one of 'worst', 'ran",
+        ),
         (
             ("lie", circuits.P3, 1.0, 1),
             {"method": "analytic", "inputs": "random"},
@@ -224,7 +250,9 @@ def test_bad_input_is_named_with_its_remedy(arguments, options, error, message):
 
 def test_an_ensemble_is_sent_to_its_channel_bound():
     ensemble = tt.randomised.directed("lie", circuits.P3, time=1.0, steps=5, seed=1)
-    with pytest.raises(tt.errors.FormulaError, match=r"not defined for this \(Directed\).*channel_bound\(\) bounds its aver"):
+    with pytest.raises(
+        tt.errors.FormulaError, match=r"not defined for this \(Directed\).*channel_bound\(\) bounds its aver"
+    ):
         tt.bound(ensemble, circuits.P3, 1.0, 5)
 
 

@@ -66,6 +66,22 @@ def test_least_steps_are_those_of_brute_force_over_dense_matrices(quantity):
         assert row.verified and row.verdict == "meets"
 
 
+def test_least_steps_for_every_start_at_once_need_none():
+    found = tt.plan(CHAIN, None, 1.0, FORMULAS, "axis", 2e-2, "operator")
+    exact = oracle.evolution(CHAIN, 1.0)
+    for row in found.rows:
+        formula, partition = row.candidate.formula, row.candidate.partition(CHAIN)
+
+        def error(steps, formula=formula, partition=partition):
+            step = dense_step(formula, partition, 1.0 / steps)
+            return np.linalg.norm(np.linalg.matrix_power(step, steps) - exact, 2)
+
+        assert row.steps == brute_least(error, 2e-2, row.steps + 2), row.label
+        # The state error of any start is no larger, and the bound is on this very distance.
+        assert row.bound_steps >= row.steps
+        assert dense_error(formula, partition, CHAIN, START.amplitudes, 1.0, row.steps) <= 2e-2
+
+
 @settings(max_examples=20)
 @given(
     operator=strategies.operators(max_qubits=3, max_terms=5, min_terms=2),
@@ -446,6 +462,7 @@ def plan_with(**changes):
     ("changes", "error", "message"),
     [
         ({"quantity": "observables"}, tt.errors.AuditError, r"^observables: empty"),
+        ({"state": None}, tt.errors.ArgumentError, r"^state: missing \(None\) where quantity='state'"),
         ({"quantity": "speed"}, tt.errors.ArgumentError, r"^quantity: unknown \('speed'\); give one of"),
         ({"formulas": []}, tt.errors.AuditError, r"^formulas: empty; name at least one"),
         ({"formulas": "stang"}, tt.errors.FormulaError, r"strang"),

@@ -179,8 +179,8 @@ class Job:
             energy_unit=self.energy_unit,
         )
 
-    def _required_start(self) -> Start:
-        """Return the start that a reference needs.
+    def required_start(self) -> Start:
+        """Return the start, for what evolves a state.
 
         Raises
         ------
@@ -189,7 +189,7 @@ class Job:
         """
         if self.start is None:
             raise JobError(
-                "start: missing; a reference evolves a state: add a section [start]",
+                "start: missing; a state is evolved here: add a section [start]",
                 path=str(self.path or ""),
                 key="start",
             )
@@ -201,7 +201,7 @@ class Job:
 
         return reference(
             self.operator,
-            self._required_start().state(),
+            self.required_start().state(),
             self.times,
             tolerance=1e-10 if self.reference_tolerance is None else self.reference_tolerance,
             observables=self.observables,
