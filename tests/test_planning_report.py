@@ -208,7 +208,7 @@ def test_a_job_with_nothing_to_plan_is_told_so(job):
 
 
 def test_the_section_of_the_template_is_a_valid_one(job):
-    commented = template()[template().index("# [plan]") : template().index("[reference]")]
+    commented = template()[template().index("# [plan]") :].partition("\n\n")[0]
     lines = [line.removeprefix("# ") for line in commented.splitlines() if "formula_file" not in line]
     job.write_text(JOB[: JOB.index("[plan]")] + "\n".join(lines) + "\n")
     assert read_job(job, candidates_required=False).planned.rules == ("commuting", "axis")

@@ -19,12 +19,15 @@ from trueturn.accuracy import (
     simulated_hamiltonian,
     simulated_series,
     split_error,
+    steps_by_bound,
 )
 from trueturn.adaptive import AdaptiveRun, adaptive
 from trueturn.audit import Audit, Candidate, audit
 from trueturn.comparison import Comparison, compare
+from trueturn.device import Budget, CausalCone, causal_cone, device_budget
 from trueturn.driven import Driven, DrivenReference, driven_reference
 from trueturn.error_saving import Improved
+from trueturn.export import Cost, CostTable, compare_costs
 from trueturn.extrapolation import Extrapolation, extrapolate, multiproduct_weights, well_conditioned_steps
 from trueturn.formulas import Formula, formula, formulas, read_formulas
 from trueturn.formulas.processed import Processed
@@ -36,6 +39,7 @@ from trueturn.partition import Partition
 from trueturn.planning import Plan, PlanRow, plan
 from trueturn.reference import Certificate, Reference, reference
 from trueturn.rotations import Rotations
+from trueturn.scaling import Case, PowerLaw, Scaling, fit_steps, step_scaling
 from trueturn.state import State
 from trueturn.symmetry import Symmetries, Symmetry, symmetries
 
@@ -43,9 +47,14 @@ __all__ = [
     "AdaptiveRun",
     "Audit",
     "Bound",
+    "Budget",
     "Candidate",
+    "Case",
+    "CausalCone",
     "Certificate",
     "Comparison",
+    "Cost",
+    "CostTable",
     "Driven",
     "DrivenReference",
     "ErrorCurve",
@@ -60,11 +69,13 @@ __all__ = [
     "Partition",
     "Plan",
     "PlanRow",
+    "PowerLaw",
     "Prediction",
     "Processed",
     "ProductErrors",
     "Reference",
     "Rotations",
+    "Scaling",
     "SimulatedSeries",
     "State",
     "Symmetries",
@@ -74,12 +85,16 @@ __all__ = [
     "audit",
     "bound",
     "build_info",
+    "causal_cone",
     "compare",
+    "compare_costs",
+    "device_budget",
     "driven",
     "driven_reference",
     "error_curves",
     "errors",
     "extrapolate",
+    "fit_steps",
     "formula",
     "formulas",
     "lattice",
@@ -96,6 +111,8 @@ __all__ = [
     "simulated_hamiltonian",
     "simulated_series",
     "split_error",
+    "step_scaling",
+    "steps_by_bound",
     "symmetries",
     "threads",
     "well_conditioned_steps",

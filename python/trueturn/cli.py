@@ -17,6 +17,10 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
+from trueturn.commands.bound import bound
+from trueturn.commands.circuits import cost, export
+from trueturn.commands.options import AS_JSON, JOB, THREADS
+
 if TYPE_CHECKING:
     from trueturn.audit.job import Job, Progress
     from trueturn.partition import Partition
@@ -26,11 +30,6 @@ __all__ = ["commands", "main", "run"]
 
 STATUS = {"meets": 0, "misses": 1, "undecided": 4}
 BAD_INPUT, NO_MEMORY, BUG, INTERRUPTED = 2, 3, 70, 130
-JOB = click.Path(path_type=Path)
-THREADS = click.option(
-    "--threads", type=click.IntRange(min=1), metavar="N", help="Threads to use; results do not depend on it."
-)
-AS_JSON = click.option("--json", "as_json", is_flag=True, help="Print one JSON object and nothing else.")
 
 
 @click.group(context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100})
@@ -40,6 +39,11 @@ def commands() -> None:
 
     Exit status: 0 meets, 1 misses, 4 undecided, 2 bad input, 3 refused for memory, 130 interrupted.
     """
+
+
+commands.add_command(bound)
+commands.add_command(cost)
+commands.add_command(export)
 
 
 @commands.command()
@@ -177,6 +181,36 @@ def formulas(job: Path | None, as_json: bool) -> int:
     else:
         say_rich(lambda width: page(known, partitions))
     return 0
+
+
+@commands.command()
+@click.argument("job", type=JOB)
+@click.option(
+    "--errors",
+    type=click.Choice(["measured", "proven"]),
+    default="measured",
+    help="Algorithmic errors: measured from the start state (default), or proven bounds without a state.",
+)
+@AS_JSON
+@THREADS
+def budget(job: Path, errors: str, as_json: bool, threads: int | None) -> int:
+    """Weigh the error of each formula of JOB against the noise of its [device].
+
+    For each observable at the last time: the step count of the least total error, and whether it meets the tolerance.
+    """
+    from trueturn.audit.job import read_job
+    from trueturn.device.job import job_budgets, job_document
+
+    task = read_job(job)
+    with progress_bar() as progress:
+        found = job_budgets(task, errors, threads=threads, progress=progress)
+    if as_json:
+        say_json(job_document(task, found))
+    else:
+        from rich.text import Text
+
+        say_rich(lambda width: Text("\n\n".join(f"{name}\n{one.table(width)}" for name, one in found.items())))
+    return STATUS["meets" if all(one.verdict == "meets" for one in found.values()) else "misses"]
 
 
 def reference_document(task: Job, found: Reference) -> dict[str, Any]:

@@ -1,6 +1,6 @@
 """Error science: proven bounds, effective Hamiltonians, measured errors."""
 
-from trueturn.accuracy.bounds import Bound, bound
+from trueturn.accuracy.bounds import Bound, bound, steps_by_bound
 from trueturn.accuracy.curves import ErrorCurve, error_curves
 from trueturn.accuracy.error_split import ErrorSplit, split_error
 from trueturn.accuracy.intervals import ErrorInterval
@@ -26,4 +26,5 @@ __all__ = [
     "simulated_hamiltonian",
     "simulated_series",
     "split_error",
+    "steps_by_bound",
 ]

@@ -17,6 +17,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING
 
 from trueturn.audit.candidate import Candidate
+from trueturn.audit.job_device import Device, read_device
 from trueturn.audit.job_system import Start, read_start, read_system
 from trueturn.audit.job_table import Table, nearest
 from trueturn.errors import FormulaError, JobError
@@ -33,7 +34,7 @@ if TYPE_CHECKING:
 
 __all__ = ["Job", "built_in_job", "read_job", "template"]
 
-SECTIONS = ("system", "start", "target", "candidate", "plan", "reference", "output", "run")
+SECTIONS = ("system", "start", "target", "candidate", "plan", "device", "reference", "output", "run")
 NORMED = {"state": "states", "operator": "circuits"}
 METHODS = ("chebyshev", "krylov", "dense")
 EXAMPLE_CANDIDATE = '[[candidate]] with formula = "strang", rule = "commuting", steps = "least"'
@@ -52,7 +53,8 @@ class Job:
     operator : Operator
         The Hamiltonian.
     start : Start or None
-        The start state; `start.state()` makes it. None where it is left out, for ``quantity="operator"`` alone.
+        The start state; `start.state()` makes it. None where it is left out, for ``quantity="operator"``
+        or with ``start_required=False``.
     times : tuple of float
         Ascending and above zero.
     tolerance : float
@@ -73,6 +75,8 @@ class Job:
     most_steps : int
         Where a search for the least step count gives up.
     title, energy_unit : str
+    device : Device or None
+        What the circuits run on; None where the job does not say.
     """
 
     path: Path | None
@@ -93,6 +97,7 @@ class Job:
     most_steps: int
     title: str
     energy_unit: str
+    device: Device | None = None
 
     def audit(self, threads: int | None = None, progress: Progress | None = None) -> Audit:
         """Run the audit.
@@ -159,6 +164,9 @@ class Job:
             orderings=task.orderings,
             cost=task.cost,
             synthesis_error=task.synthesis_error,
+            device=None if self.device is None else self.device.hardware,
+            thorough=task.thorough,
+            bounds=task.bounds,
             readout=self.readout,
             relative_to=self.relative_to,
             reference_tolerance=self.reference_tolerance,
@@ -171,8 +179,8 @@ class Job:
             energy_unit=self.energy_unit,
         )
 
-    def _required_start(self) -> Start:
-        """Return the start that a reference needs.
+    def required_start(self) -> Start:
+        """Return the start, for what evolves a state.
 
         Raises
         ------
@@ -181,7 +189,7 @@ class Job:
         """
         if self.start is None:
             raise JobError(
-                "start: missing; a reference evolves a state: add a section [start]",
+                "start: missing; a state is evolved here: add a section [start]",
                 path=str(self.path or ""),
                 key="start",
             )
@@ -193,7 +201,7 @@ class Job:
 
         return reference(
             self.operator,
-            self._required_start().state(),
+            self.required_start().state(),
             self.times,
             tolerance=1e-10 if self.reference_tolerance is None else self.reference_tolerance,
             observables=self.observables,
@@ -203,7 +211,7 @@ class Job:
         )
 
 
-def read_job(path: str | Path, *, candidates_required: bool = True) -> Job:
+def read_job(path: str | Path, *, candidates_required: bool = True, start_required: bool = True) -> Job:
     """Read and check a job file.
 
     Parameters
@@ -212,6 +220,8 @@ def read_job(path: str | Path, *, candidates_required: bool = True) -> Job:
         The TOML file. Paths in it are taken from its own folder.
     candidates_required : bool
         Whether a job without candidates is an error; a reference needs none.
+    start_required : bool
+        Whether a job without `[start]` is an error; bounds need none.
 
     Returns
     -------
@@ -235,7 +245,7 @@ def read_job(path: str | Path, *, candidates_required: bool = True) -> Job:
     except OSError as error:
         message = f"job file: cannot be read ({error.strerror or error}); check the path and its permissions"
         raise JobError(message, path=str(path), key="") from error
-    return parse_job(text, path, candidates_required)
+    return parse_job(text, path, candidates_required, start_required)
 
 
 def template() -> str:
@@ -254,7 +264,7 @@ def built_in_job() -> Job:
     return parse_job(template(), None, True)
 
 
-def parse_job(text: str, path: Path | None, candidates_required: bool) -> Job:
+def parse_job(text: str, path: Path | None, candidates_required: bool, start_required: bool = True) -> Job:
     """Check the text of a job file; `path` is where it came from."""
     shown = str(path) if path is not None else ""
     file = Table(parse_toml(text, shown), "", shown)
@@ -269,7 +279,7 @@ def parse_job(text: str, path: Path | None, candidates_required: bool) -> Job:
     operator = read_system(file.table("system"), folder)
     target = file.table("target")
     every_start = target.values.get("quantity") == "operator"
-    if not every_start:
+    if start_required and not every_start:
         file.require("start", 'a section [start], or quantity = "operator" in [target] for every start at once')
     start = read_start(file.table("start"), operator.qubits, folder) if "start" in file else None
     target.only(("times", "time", "tolerance", "quantity", "readout", "relative_to", "observables"))
@@ -314,6 +324,7 @@ def parse_job(text: str, path: Path | None, candidates_required: bool) -> Job:
         most_steps=run.whole("most_steps", "most_steps = 100000") if "most_steps" in run else 1_000_000,
         title=run.text("title", 'title = "My quench"') if "title" in run else (path.stem if path else ""),
         energy_unit=run.text("energy_unit", 'energy_unit = "J"') if "energy_unit" in run else "",
+        device=read_device(file, operator.qubits),
     )
 
 

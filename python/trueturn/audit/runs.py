@@ -14,7 +14,6 @@ from trueturn.audit.measure import Bench, Measured
 from trueturn.audit.result import Row, Trial
 from trueturn.audit.search import least_steps
 from trueturn.errors import AuditError, FormulaError
-from trueturn.formulas import Formula
 from trueturn.partition import Partition
 
 __all__ = ["Chosen", "Runs", "error_per_distance"]
@@ -76,8 +75,8 @@ class Runs:
             found.steps, found.accidental, words.search_note(found, tolerance, most_steps), verified=found.found
         )
 
-    def best_so_far(self) -> Chosen | None:
-        """Choose from the runs of a search that was interrupted; None where nothing was run.
+    def best_so_far(self, stopped: str) -> Chosen | None:
+        """Choose from the runs of a search that was stopped, with the reason; None where nothing was run.
 
         The smallest step count that meets the tolerance and above which no run misses it, else the largest that was run.
         """
@@ -88,7 +87,7 @@ class Runs:
         steps = min(passing) if passing else max(self.measured)
         accidental = tuple(sorted(count for count in self.measured if count not in missing and count < steps))
         untried = "fewer steps may do" if passing else "more steps were not tried"
-        return Chosen(steps, accidental, f"interrupted before the search ended: {untried}", verified=False)
+        return Chosen(steps, accidental, f"{stopped}: {untried}", verified=False)
 
     def row(self, chosen: Chosen, *, bounded: bool = True) -> Row:
         """Make the row of a step count that was run; `bounded` asks for a proven bound, which may take its time."""
@@ -116,8 +115,6 @@ class Runs:
         """Return a proven bound on the error at a step count and its source, or None and the reason."""
         bench, formula = self.bench, self.candidate.formula
         try:
-            if not isinstance(formula, Formula):
-                return None, f"no theorem at hand covers {formula.name}"
             found = bound(formula, self.partition, bench.times[-1], steps)
         except FormulaError:
             return None, f"no theorem at hand covers {formula.name}"

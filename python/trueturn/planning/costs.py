@@ -3,16 +3,16 @@
 from __future__ import annotations
 
 import difflib
-import math
 from collections.abc import Callable, Iterable, Mapping
+from dataclasses import replace
 from typing import NamedTuple
 
-import numpy as np
-
 from trueturn.errors import ArgumentError
+from trueturn.export.cost import cost_of
+from trueturn.export.hardware import Hardware
 from trueturn.rotations import Rotations
 
-__all__ = ["COSTS", "Prices", "chosen_costs", "cost_words", "short_words", "t_count"]
+__all__ = ["COSTS", "Prices", "chosen_costs", "cost_words", "short_words"]
 
 COSTS: Mapping[str, str] = {
     "two_qubit_gates": "two-qubit gates",
@@ -27,11 +27,6 @@ SHORT: Mapping[str, str] = {
     "wall_time": "seconds",
 }
 OwnCost = Callable[[Rotations], float]
-GATES_PER_HALVING = 3.0
-"""T gates for each halving of the error of one synthesised rotation [1]."""
-
-# An angle counts as a multiple of π/8 where rounding alone could have moved it there: some roundings of an angle near it.
-_SAME_ANGLE = 8.0 * 2.0**-53
 
 
 def cost_words(name: str) -> str:
@@ -44,59 +39,47 @@ def short_words(name: str) -> str:
     return SHORT.get(name, name)
 
 
-def t_count(circuit: Rotations, error: float) -> int:
-    """Return the number of T gates when every rotation is synthesised from Clifford and T gates.
-
-    Parameters
-    ----------
-    circuit : Rotations
-    error : float
-        Bound on the spectral-norm error of all synthesised rotations together; each gets an equal share.
-
-    Notes
-    -----
-    exp(-i θ P) is a Clifford gate for θ a multiple of π/4 and takes one T gate for an odd multiple of π/8. Any other takes
-    3 log₂(1/ε) T gates at error ε [1]: the leading term, what grows as log log(1/ε) is left out. Errors of R rotations add
-    up to at most their sum, so each gets error/R.
-
-    References
-    ----------
-    .. [1] N. J. Ross, P. Selinger, Optimal ancilla-free Clifford+T approximation of z-rotations,
-       Quantum Inf. Comput. 16, 901 (2016), abstract.
-    """
-    single = synthesised = 0
-    for body, repeat in circuit.blocks:
-        eighths = body.angles / (math.pi / 8.0)
-        whole = np.rint(eighths)
-        exact = np.abs(eighths - whole) <= _SAME_ANGLE * np.maximum(1.0, np.abs(whole))
-        acts = np.array([x | z != 0 for x, z in zip(body.x_masks, body.z_masks, strict=True)], dtype=bool)
-        single += repeat * int(np.count_nonzero(acts & exact & (whole % 2 == 1)))
-        synthesised += repeat * int(np.count_nonzero(acts & ~exact))
-    if synthesised == 0:
-        return single
-    each = max(1, math.ceil(GATES_PER_HALVING * math.log2(max(1.0, synthesised / error))))
-    return single + synthesised * each
-
-
 class Prices(NamedTuple):
     """Which costs a plan is ranked by, the first of them before the others, and what they need.
 
-    `synthesis` is the spectral-norm error that all synthesised rotations share; without it no T gates are counted.
+    `synthesis` is the spectral-norm error that all synthesised rotations share; without it no T gates are counted. With
+    `hardware` gates are those of the circuit as it is written for it, else 2(w-1) for each rotation of weight w.
     """
 
     names: tuple[str, ...]
     own: Mapping[str, OwnCost]
     synthesis: float | None
+    hardware: Hardware | None = None
+
+    @property
+    def compared(self) -> tuple[str, ...]:
+        """The costs by which one way beats another: those that are named, or of a single one all that are reproducible."""
+        if len(self.names) > 1:
+            return self.names
+        t_gates = ("t_count",) if self.synthesis is not None else ()
+        return ("two_qubit_gates", "depth", "rotations", *t_gates, *self.own)
 
     def of(self, circuit: Rotations, seconds: float) -> dict[str, float]:
         """Return every cost of a circuit; `seconds` is what its run took."""
-        found: dict[str, float] = {
-            "two_qubit_gates": circuit.two_qubit_gates(),
-            "depth": circuit.depth(),
-            "rotations": circuit.count,
-        }
-        if self.synthesis is not None:
-            found["t_count"] = t_count(circuit, self.synthesis)
+        found: dict[str, float]
+        written = None
+        if self.hardware is not None or self.synthesis is not None:
+            hardware = self.hardware or Hardware()
+            written = cost_of(circuit, replace(hardware, synthesis_error=self.synthesis or hardware.synthesis_error))
+        if self.hardware is not None and written is not None:
+            found = {
+                "two_qubit_gates": written.two_qubit_gates,
+                "depth": written.two_qubit_depth,
+                "rotations": written.rotations,
+            }
+        else:
+            found = {
+                "two_qubit_gates": circuit.two_qubit_gates(),
+                "depth": circuit.depth(),
+                "rotations": circuit.count,
+            }
+        if self.synthesis is not None and written is not None:
+            found["t_count"] = written.t_count
         found["wall_time"] = seconds
         return found | {name: float(price(circuit)) for name, price in self.own.items()}
 

@@ -18,7 +18,7 @@ from trueturn.planning.ways import ORDERINGS
 
 __all__ = ["PlanTask", "plan_of_candidates", "read_plan"]
 
-KEYS = ("formulas", "formula_file", "rules", "orderings", "cost", "synthesis_error")
+KEYS = ("formulas", "formula_file", "rules", "orderings", "cost", "synthesis_error", "thorough", "bounds")
 
 
 @dataclass(frozen=True)
@@ -30,6 +30,8 @@ class PlanTask:
     orderings: tuple[str, ...] = ("given",)
     cost: tuple[str, ...] = ("two_qubit_gates",)
     synthesis_error: float | None = None
+    thorough: bool = True
+    bounds: bool = True
 
 
 def read_plan(
@@ -66,6 +68,8 @@ def read_plan(
         tuple(orderings) or PlanTask.orderings,
         tuple(cost) or PlanTask.cost,
         share,
+        section.flag("thorough", True),
+        section.flag("bounds", True),
     )
 
 

@@ -4,15 +4,12 @@ from __future__ import annotations
 
 import math
 
-from trueturn.accuracy.bounds import bound
+from trueturn.accuracy.bounds import bound, steps_by_bound
 from trueturn.audit.measure import Bench
 from trueturn.audit.runs import Runs, error_per_distance
-from trueturn.errors import FormulaError
-from trueturn.formulas import Formula
+from trueturn.errors import FormulaError, ToleranceError
 
-__all__ = ["proven_steps"]
-
-MOST_STEPS = 2**53
+__all__ = ["distance_for", "fitted_order", "proven_steps"]
 
 
 def distance_for(bench: Bench, error: float) -> float:
@@ -27,31 +24,18 @@ def distance_for(bench: Bench, error: float) -> float:
 def proven_steps(runs: Runs) -> tuple[int | None, str]:
     """Return the least step count whose proven bound meets the tolerance and its source, or None and the reason.
 
-    The bound is on the circuit in exact arithmetic at the last time: errors at earlier times on the same grid, and at shorter
-    times in as many steps, have smaller ones.
+    The bound is on the circuit in exact arithmetic at the last time: at earlier times on the same grid, and at shorter times in
+    as many steps, it is smaller. It falls as steps grow, so the least count that fits the grid is the next one on it.
     """
     bench, formula = runs.bench, runs.candidate.formula
-    if not isinstance(formula, Formula):
-        return None, f"no theorem at hand covers {formula.name}"
-    distance = distance_for(bench, bench.tolerance)
-    unit = bench.step_unit()
-
-    def meets(count: int) -> bool:
-        return bound(formula, runs.partition, bench.times[-1], count * unit).value <= distance
-
+    time, unit = bench.times[-1], bench.step_unit()
     try:
-        found = bound(formula, runs.partition, bench.times[-1], unit)
-    except FormulaError:
-        return None, f"no theorem at hand covers {formula.name}"
-    failing, passing = 0, 1
-    while not meets(passing):
-        failing, passing = passing, 2 * passing
-        if passing * unit > MOST_STEPS:
-            return None, f"{found.theorem} asks for more than {MOST_STEPS:g} steps"
-    while passing - failing > 1:
-        middle = (failing + passing) // 2
-        failing, passing = (failing, middle) if meets(middle) else (middle, passing)
-    return passing * unit, f"{found.theorem}, {found.source}"
+        least = steps_by_bound(formula, runs.partition, time, distance_for(bench, bench.tolerance))
+        steps = -(-least // unit) * unit
+        found = bound(formula, runs.partition, time, steps)
+    except (FormulaError, ToleranceError) as refusal:
+        return None, str(refusal)
+    return steps, f"{found.theorem}, {found.source}"
 
 
 def fitted_order(runs: Runs, steps: int) -> float | None:

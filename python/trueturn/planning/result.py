@@ -30,7 +30,7 @@ class PlanRow(Row):
         What each of `trials` costs, in the first cost of `Plan.cost`.
     verified : bool
         Whether `steps` is the least as defined: it meets, the count before it misses, and what was tested up to its double
-        meets. False where the search was interrupted or found nothing.
+        meets. False where the search was interrupted or given up, or found nothing.
     fitted_order : float or None
         How fast the error falls from `steps` to the largest count that was run: -d log(error) / d log(steps), between
         the upper ends of the intervals. None where that is all rounding.
@@ -40,6 +40,9 @@ class PlanRow(Row):
         The theorem, or why there is no such count.
     overpays : float or None
         `bound_steps` over `steps`.
+    noise : float or None
+        What failing two-qubit gates may add to the error of an observable, at most, by the model of `trueturn.planning.noise`;
+        None without a device that states their rate. Not part of `error` or `verdict`, which are about the ideal circuit.
     efficient : bool
         Meets, and no other row that meets is at most as costly in every cost of `Plan.compared` and less so in one.
     """
@@ -54,6 +57,7 @@ class PlanRow(Row):
     bound_steps: int | None
     bound_steps_source: str
     overpays: float | None
+    noise: float | None
     efficient: bool
 
 

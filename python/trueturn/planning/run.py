@@ -4,26 +4,27 @@ from __future__ import annotations
 
 import math
 import time as clock
-from collections.abc import Callable, Iterable, Mapping, Sequence
-from dataclasses import dataclass, field, fields, replace
+from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import fields
 from numbers import Real
-from typing import Any, NamedTuple
+from typing import Any
 
-from trueturn.audit.result import Audit, Row
+from trueturn.audit.result import Audit
 from trueturn.audit.run import prepare
-from trueturn.audit.runs import Chosen, Runs
+from trueturn.audit.runs import Runs
 from trueturn.audit.truth import Progress
 from trueturn.errors import ArgumentError, ToleranceError
-from trueturn.formulas import Formula
-from trueturn.formulas.processed import Processed
+from trueturn.export.hardware import Hardware
 from trueturn.operator import Operator
 from trueturn.partition import Partition
 from trueturn.planning import words
 from trueturn.planning.costs import OwnCost, Prices, chosen_costs
-from trueturn.planning.proven import distance_for, fitted_order, proven_steps
+from trueturn.planning.noise import Noise
+from trueturn.planning.proven import distance_for
 from trueturn.planning.ranking import front, marked, ranked
-from trueturn.planning.result import Plan, PlanRow
-from trueturn.planning.ways import AnyFormula, Way, ways
+from trueturn.planning.result import Plan
+from trueturn.planning.sought import Sought
+from trueturn.planning.ways import AnyFormula, ways
 from trueturn.state import State
 
 __all__ = ["plan"]
@@ -34,7 +35,6 @@ SYNTHESIS_SHARE = 0.1
 More of it makes each rotation cheaper by a logarithm and the circuit longer by (1 - share)^(-1/order). The product is least at
 p / (p + ln(R / (share ε))): 0.05, 0.1, 0.18 for orders p = 1, 2, 4 with R = 10^4 rotations and ε = 10^-3; it is flat there.
 """
-UNBOUNDED = "interrupted before it was computed"
 
 
 def plan(
@@ -50,6 +50,9 @@ def plan(
     orderings: str | Iterable[str] = "given",
     cost: str | OwnCost | Iterable[str | OwnCost] = "two_qubit_gates",
     synthesis_error: float | None = None,
+    device: Mapping[str, Any] | Hardware | None = None,
+    thorough: bool = True,
+    bounds: bool = True,
     readout: str = "along",
     relative_to: str | None = None,
     reference_tolerance: float | None = None,
@@ -91,6 +94,17 @@ def plan(
     synthesis_error : float, optional
         The part of `tolerance`, in the same unit, that is set aside for the synthesis of rotations from Clifford and
         T gates. Default: none, or a tenth of `tolerance` where ``"t_count"`` is asked for.
+    device : mapping or Hardware, optional
+        Options of `Rotations.cost`: gates are then counted as the circuit is written for it, with savings and routing, instead
+        of 2(w-1) for each rotation. With ``two_qubit_error`` and ``quantity="observables"`` rows say what failing gates may
+        add, and a tolerance below that at any step count is refused. Its own `synthesis_error` is not used here.
+    thorough : bool
+        False gives up a way as soon as it misses the tolerance at a step count that costs more than another way that meets
+        it, in every compared cost. Formulas of high order are then searched first. Not by wall time, which is only known
+        after a run.
+    bounds : bool
+        False leaves the proven bounds out. They are computed after all searches; those of high orders on many parts can take
+        minutes.
     readout, relative_to, reference_tolerance, reference_method, most_steps, threads, progress, title, start, energy_unit
         As in `audit`.
 
@@ -132,8 +146,11 @@ def plan(
     """
     began = clock.perf_counter()
     names, own = chosen_costs(cost)
+    hardware = device if device is None or isinstance(device, Hardware) else Hardware.of(_options(device))
     for_synthesis = _synthesis(synthesis_error, tolerance, names)
     found, left_out = ways(operator, formulas, rule, orderings)
+    if not thorough:
+        found.sort(key=lambda way: -way.candidate.formula.order)
     setting = prepare(
         operator,
         state,
@@ -152,7 +169,12 @@ def plan(
         partitions=[way.partition for way in found],
     )
     seconds = {"reference": clock.perf_counter() - began}
-    sought = _Sought(most_steps)
+    prices = Prices(names, own, distance_for(setting.bench, for_synthesis) if for_synthesis else None, hardware)
+    noise = None
+    if hardware is not None and hardware.two_qubit_error and quantity == "observables":
+        noise = Noise(setting.bench, hardware)
+        noise.require_room(found, setting.bench.tolerance)
+    sought = Sought(prices, noise, most_steps, thorough)
     for number, way in enumerate(found):
 
         def tell(steps: int, label: str = way.label, number: int = number) -> None:
@@ -165,12 +187,15 @@ def plan(
     seconds["search"] = clock.perf_counter() - began - seconds["reference"]
     if not sought.found:
         raise KeyboardInterrupt
+
+    def tell_bound(label: str, done: int) -> None:
+        if progress is not None:
+            progress(f"{label}: proven bound", done, len(sought.found))
+
+    rows = ranked(marked(sought.rows(bounds, tell_bound), prices.compared), names)
+    seconds["bounds"] = clock.perf_counter() - began - seconds["reference"] - seconds["search"]
     if progress is not None:
         progress("done", len(found), len(found))
-    prices = Prices(names, own, distance_for(setting.bench, for_synthesis) if for_synthesis else None)
-    rows = sought.rows(prices)
-    compared = names if len(names) > 1 else tuple(name for name in rows[0].costs if name != "wall_time")
-    rows = ranked(marked(rows, compared), names)
     audited = setting.concluded(rows, seconds, title=title, start=start, energy_unit=energy_unit)
     facts: dict[str, Any] = {entry.name: getattr(audited, entry.name) for entry in fields(Audit)}
     facts |= {
@@ -184,92 +209,13 @@ def plan(
         **facts,
         synthesis_error=for_synthesis,
         cost=names,
-        compared=compared,
+        compared=prices.compared,
         front=front(rows),
         evolutions=sought.evolutions,
         interrupted=sought.interrupted,
         unsearched=tuple(way.label for way in found[len(sought.found) :]),
         left_out=left_out,
     )
-
-
-class _Found(NamedTuple):
-    """A way that was searched: its runs, the step count chosen, the row of an audit, and the proven step count.
-
-    `same_as` is the label of the way that it shares its runs with, or empty.
-    """
-
-    way: Way
-    runs: Runs
-    chosen: Chosen
-    row: Row
-    proven: tuple[int | None, str]
-    same_as: str = ""
-
-
-@dataclass
-class _Sought:
-    """The ways that were searched, in their order. Ways with the same formula and parts share their runs."""
-
-    most_steps: int
-    found: list[_Found] = field(default_factory=list)
-    interrupted: bool = False
-    _first: dict[tuple[Formula | Processed, Partition], _Found] = field(default_factory=dict)
-
-    @property
-    def evolutions(self) -> int:
-        """How many circuits were run."""
-        return sum(len(entry.runs.measured) for entry in self._first.values())
-
-    def search(self, way: Way, runs: Runs, tell: Callable[[int], None]) -> None:
-        """Search one way; an interrupt is noted and leaves the best that was found, if any."""
-        key = (way.candidate.formula, way.partition)
-        known = self._first.get(key)
-        if known is not None:
-            row = replace(known.row, candidate=way.candidate)
-            self.found.append(known._replace(way=way, row=row, same_as=known.way.label))
-            return
-        chosen: Chosen | None
-        try:
-            chosen = runs.search(self.most_steps, tell)
-        except KeyboardInterrupt:
-            self.interrupted = True
-            chosen = runs.best_so_far()
-        if chosen is None:
-            return
-        try:
-            row, proven = runs.row(chosen), proven_steps(runs)
-        except KeyboardInterrupt:
-            self.interrupted = True
-            row, proven = runs.row(chosen, bounded=False), (None, UNBOUNDED)
-        self._first[key] = _Found(way, runs, chosen, row, proven)
-        self.found.append(self._first[key])
-
-    def rows(self, prices: Prices) -> list[PlanRow]:
-        """Return the rows, priced, in the order of the search; none is marked as efficient yet."""
-        rows = []
-        for way, runs, chosen, row, (proven, source), same_as in self.found:
-            costs = {
-                steps: prices.of(runs.measured[steps].circuit, runs.seconds[steps]) for steps in sorted(runs.measured)
-            }
-            facts = {entry.name: getattr(row, entry.name) for entry in fields(Row)} | {"label": way.label}
-            rows.append(
-                PlanRow(
-                    **facts,
-                    rule=way.rule,
-                    ordering=way.ordering,
-                    same_as=same_as,
-                    costs=costs[chosen.steps],
-                    trial_costs=tuple(found[prices.names[0]] for found in costs.values()),
-                    verified=chosen.verified,
-                    fitted_order=fitted_order(runs, chosen.steps),
-                    bound_steps=proven,
-                    bound_steps_source=source,
-                    overpays=proven / chosen.steps if proven is not None and chosen.verified else None,
-                    efficient=False,
-                )
-            )
-        return rows
 
 
 def _synthesis(given: float | None, tolerance: float, names: Sequence[str]) -> float | None:
@@ -291,3 +237,15 @@ def _synthesis(given: float | None, tolerance: float, names: Sequence[str]) -> f
             achievable=float(given),
         )
     return float(given)
+
+
+def _options(device: object) -> dict[str, Any]:
+    """Return the options of a device as keywords."""
+    if isinstance(device, Mapping) and all(isinstance(name, str) for name in device):
+        return dict(device)
+    raise ArgumentError(
+        f"device: neither a mapping nor a Hardware ({device!r}); give options of Rotations.cost, such as "
+        "{'connectivity': 'line'}",
+        argument="device",
+        value=device,
+    )

@@ -36,6 +36,7 @@ COLUMNS = (
     "wall_time",
     "bound_steps",
     "overpays",
+    "noise",
     "bound_steps_source",
     "bound",
     "bound_source",
@@ -84,6 +85,7 @@ def row_data(rank: int, row: PlanRow) -> dict[str, Any]:
         "bound_steps": row.bound_steps,
         "bound_steps_source": row.bound_steps_source,
         "overpays": number(row.overpays),
+        "noise": number(row.noise),
         "efficient": row.efficient,
     }
 
