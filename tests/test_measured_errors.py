@@ -335,6 +335,11 @@ BAD = {
         r"^iterations: is not a whole number from 1 \(0\)",
     ),
     "bound": (lambda: tt.operator_error(ONE, X0, 1.0, bound="1"), errors.ArgumentError, "^bound: is not a finite"),
+    "random bound": (
+        lambda: tt.operator_error(P3_STRANG, P3, 1.0, bound=tt.bound(STRANG, circuits.P3, 1.0, 8, inputs="random")),
+        errors.ArgumentError,
+        r"^bound: is one for random inputs \(0\.0\d+\); give one with inputs='worst'",
+    ),
     "negative bound": (lambda: tt.operator_error(ONE, X0, 1.0, bound=-1), errors.ArgumentError, "^bound: is negative"),
     "samples": (lambda: tt.rms_error(ONE, X0, 1.0, samples=0), errors.ArgumentError, "^samples: is not a whole"),
     "seed": (lambda: tt.rms_error(ONE, X0, 1.0, seed=-1), errors.ArgumentError, "^seed: is not a whole"),
