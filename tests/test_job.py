@@ -232,9 +232,9 @@ BAD = [
     ("times = [0.5, 1.0]", "time = 0", "target.time", "not above zero (0.0);"),
     (
         "tolerance = 0.01",
-        'tolerance = 0.01\nquantity = "operator"',
+        'tolerance = 0.01\nquantity = "energy"',
         "target.quantity",
-        "unknown ('operator'); known:",
+        "unknown ('energy'); known:",
     ),
     ("tolerance = 0.01", 'tolerance = 0.01\nquantity = "stat"', "target.quantity", "did you mean state?"),
     (

@@ -3,7 +3,24 @@
 from trueturn import driven, errors, lattice, model, randomised
 from trueturn._build import build_info
 from trueturn._threads import threads
-from trueturn.accuracy import Bound, bound, steps_by_bound
+from trueturn.accuracy import (
+    Bound,
+    ErrorCurve,
+    ErrorInterval,
+    ErrorSplit,
+    Prediction,
+    ProductErrors,
+    SimulatedSeries,
+    bound,
+    error_curves,
+    operator_error,
+    product_errors,
+    rms_error,
+    simulated_hamiltonian,
+    simulated_series,
+    split_error,
+    steps_by_bound,
+)
 from trueturn.adaptive import AdaptiveRun, adaptive
 from trueturn.audit import Audit, Candidate, audit
 from trueturn.circuits.reading import Circuit, read_circuit, read_qasm
@@ -20,6 +37,7 @@ from trueturn.formulas.search_target import Instance, Target
 from trueturn.ladders import saved_gates
 from trueturn.operator import Operator
 from trueturn.partition import Partition
+from trueturn.planning import Plan, PlanRow, plan
 from trueturn.reference import Certificate, Reference, reference
 from trueturn.rotations import Rotations
 from trueturn.scaling import Case, PowerLaw, Scaling, fit_steps, step_scaling
@@ -41,6 +59,9 @@ __all__ = [
     "CostTable",
     "Driven",
     "DrivenReference",
+    "ErrorCurve",
+    "ErrorInterval",
+    "ErrorSplit",
     "Extrapolation",
     "Formula",
     "FoundFormula",
@@ -48,11 +69,16 @@ __all__ = [
     "Instance",
     "Operator",
     "Partition",
+    "Plan",
+    "PlanRow",
     "PowerLaw",
+    "Prediction",
     "Processed",
+    "ProductErrors",
     "Reference",
     "Rotations",
     "Scaling",
+    "SimulatedSeries",
     "State",
     "Symmetries",
     "Symmetry",
@@ -67,6 +93,7 @@ __all__ = [
     "device_budget",
     "driven",
     "driven_reference",
+    "error_curves",
     "errors",
     "extrapolate",
     "fit_steps",
@@ -75,12 +102,19 @@ __all__ = [
     "lattice",
     "model",
     "multiproduct_weights",
+    "operator_error",
+    "plan",
+    "product_errors",
     "randomised",
     "read_circuit",
     "read_formulas",
     "read_qasm",
     "reference",
+    "rms_error",
     "saved_gates",
+    "simulated_hamiltonian",
+    "simulated_series",
+    "split_error",
     "step_scaling",
     "steps_by_bound",
     "symmetries",

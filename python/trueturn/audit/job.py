@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import re
 import tomllib
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from importlib import resources
 from itertools import pairwise
@@ -28,11 +28,14 @@ from trueturn.partition_rules import RULES
 
 if TYPE_CHECKING:
     from trueturn.audit.result import Audit
+    from trueturn.planning.job import PlanTask
+    from trueturn.planning.result import Plan
     from trueturn.reference import Reference
 
 __all__ = ["Job", "built_in_job", "read_job", "template"]
 
-SECTIONS = ("system", "start", "target", "candidate", "device", "reference", "output", "run")
+SECTIONS = ("system", "start", "target", "candidate", "plan", "device", "reference", "output", "run")
+NORMED = {"state": "states", "operator": "circuits"}
 METHODS = ("chebyshev", "krylov", "dense")
 EXAMPLE_CANDIDATE = '[[candidate]] with formula = "strang", rule = "commuting", steps = "least"'
 
@@ -49,17 +52,20 @@ class Job:
         The job file; None for the built-in job.
     operator : Operator
         The Hamiltonian.
-    start : Start
-        The start state; `start.state()` makes it. Neither sites nor file where the job was read without one.
+    start : Start or None
+        The start state; `start.state()` makes it. None where it is left out, for ``quantity="operator"``
+        or with ``start_required=False``.
     times : tuple of float
         Ascending and above zero.
     tolerance : float
-    quantity : "observables" or "state"
+    quantity : "observables", "state" or "operator"
     readout : "along" or "separate"
     relative_to : None or "norm"
     observables : mapping of str to Operator
     candidates : tuple of Candidate
         Empty only when read with ``candidates_required=False``.
+    planned : PlanTask or None
+        What `[plan]` asks for; without it the formulas and rules of the candidates. None where there is neither.
     reference_tolerance : float or None
         None leaves the choice to `trueturn.audit.run.audit`.
     reference_method : str
@@ -75,7 +81,7 @@ class Job:
 
     path: Path | None
     operator: Operator
-    start: Start
+    start: Start | None
     times: tuple[float, ...]
     tolerance: float
     quantity: str
@@ -83,6 +89,7 @@ class Job:
     relative_to: str | None
     observables: Mapping[str, Operator]
     candidates: tuple[Candidate, ...]
+    planned: PlanTask | None
     reference_tolerance: float | None
     reference_method: str
     folder: Path | None
@@ -110,7 +117,7 @@ class Job:
 
         return audit(
             self.operator,
-            self.start.state(),
+            None if self.start is None else self.start.state(),
             self.times,
             self.candidates,
             self.tolerance,
@@ -124,9 +131,69 @@ class Job:
             threads=self.threads if threads is None else threads,
             progress=progress,
             title=self.title,
-            start=self.start.words,
+            start="" if self.start is None else self.start.words,
             energy_unit=self.energy_unit,
         )
+
+    def plan(self, threads: int | None = None, progress: Progress | None = None) -> Plan:
+        """Search the ways of `planned` for their least step counts; the parameters are those of `audit`.
+
+        Raises
+        ------
+        JobError
+            There is nothing to search: neither `[plan]` nor a candidate.
+        """
+        from trueturn.planning.run import plan
+
+        task = self.planned
+        if task is None:
+            raise JobError(
+                'plan: missing; add a section [plan] with formulas = ["strang", "suzuki-4"], or candidates',
+                path=str(self.path or ""),
+                key="plan",
+            )
+        return plan(
+            self.operator,
+            None if self.start is None else self.start.state(),
+            self.times,
+            task.formulas,
+            task.rules,
+            self.tolerance,
+            quantity=self.quantity,
+            observables=self.observables,
+            orderings=task.orderings,
+            cost=task.cost,
+            synthesis_error=task.synthesis_error,
+            device=None if self.device is None else self.device.hardware,
+            thorough=task.thorough,
+            bounds=task.bounds,
+            readout=self.readout,
+            relative_to=self.relative_to,
+            reference_tolerance=self.reference_tolerance,
+            reference_method=self.reference_method,
+            most_steps=self.most_steps,
+            threads=self.threads if threads is None else threads,
+            progress=progress,
+            title=self.title,
+            start="" if self.start is None else self.start.words,
+            energy_unit=self.energy_unit,
+        )
+
+    def required_start(self) -> Start:
+        """Return the start, for what evolves a state.
+
+        Raises
+        ------
+        JobError
+            There is none.
+        """
+        if self.start is None:
+            raise JobError(
+                "start: missing; a state is evolved here: add a section [start]",
+                path=str(self.path or ""),
+                key="start",
+            )
+        return self.start
 
     def reference(self, threads: int | None = None, progress: Progress | None = None) -> Reference:
         """Compute only the certified reference; the parameters are those of `audit`."""
@@ -134,7 +201,7 @@ class Job:
 
         return reference(
             self.operator,
-            self.start.state(),
+            self.required_start().state(),
             self.times,
             tolerance=1e-10 if self.reference_tolerance is None else self.reference_tolerance,
             observables=self.observables,
@@ -204,30 +271,32 @@ def parse_job(text: str, path: Path | None, candidates_required: bool, start_req
     file.only(SECTIONS)
     for key, example in (
         ("system", "a section [system]"),
-        ("start", "a section [start]"),
         ("target", "[target]"),
     ):
-        if key != "start" or start_required:
-            file.require(key, example)
+        file.require(key, example)
     folder = path.parent if path is not None else Path()
 
     operator = read_system(file.table("system"), folder)
-    start = read_start(file.table("start"), operator.qubits, folder) if "start" in file else Start(None, None)
     target = file.table("target")
+    every_start = target.values.get("quantity") == "operator"
+    if start_required and not every_start:
+        file.require("start", 'a section [start], or quantity = "operator" in [target] for every start at once')
+    start = read_start(file.table("start"), operator.qubits, folder) if "start" in file else None
     target.only(("times", "time", "tolerance", "quantity", "readout", "relative_to", "observables"))
     times = read_times(target)
     tolerance = target.positive("tolerance", "tolerance = 0.01")
-    quantity = target.choice("quantity", ("observables", "state"), default="observables")
+    quantity = target.choice("quantity", ("observables", "state", "operator"), default="observables")
     readout = target.choice("readout", ("along", "separate"), default="along")
     relative_to = target.choice("relative_to", ("norm",)) if "relative_to" in target else None
-    if relative_to is not None and quantity == "state":
-        raise target.error("relative_to", "has no meaning for states, whose norm is 1", "take it out")
+    if relative_to is not None and quantity != "observables":
+        raise target.error("relative_to", f"has no meaning for {NORMED[quantity]}, whose norm is 1", "take it out")
     observables = read_observables(target, operator.qubits)
     if quantity == "observables" and not observables:
         remedy = 'add [target.observables] with a line such as edge = "Z_0", or set quantity = "state"'
         raise target.error("observables", "missing", remedy)
 
     candidates = read_candidates(file, operator, folder, candidates_required)
+    planned = read_planned(file, operator, tolerance, folder, candidates)
     reference = Table(file.table("reference").values if "reference" in file else {}, "reference", shown)
     reference.only(("tolerance", "method"))
     output = Table(file.table("output").values if "output" in file else {}, "output", shown)
@@ -245,6 +314,7 @@ def parse_job(text: str, path: Path | None, candidates_required: bool, start_req
         relative_to=relative_to,
         observables=observables,
         candidates=candidates,
+        planned=planned,
         reference_tolerance=(
             reference.positive("tolerance", "tolerance = 1e-10") if "tolerance" in reference else None
         ),
@@ -323,7 +393,7 @@ def read_candidates(file: Table, operator: Operator, folder: Path, required: boo
         section = Table(entry, f"candidate[{index}]", file.path)
         section.only(("formula", "formula_file", "rule", "steps"))
         name = section.text("formula", 'formula = "strang"')
-        chosen = own_formula(section, name, folder) if "formula_file" in section else known_formula(section, name)
+        chosen = find_formula(section, "formula", name, folder)
         rule = section.choice("rule", tuple(RULES), default="commuting")
         candidate = Candidate(chosen, rule=rule, steps=read_steps(section))
         with section.blame("rule"):
@@ -332,15 +402,31 @@ def read_candidates(file: Table, operator: Operator, folder: Path, required: boo
     return tuple(candidates)
 
 
-def known_formula(section: Table, name: str) -> Formula:
-    """Find a formula by name; an unknown one is refused with the nearest that is known."""
+def read_planned(
+    file: Table, operator: Operator, tolerance: float, folder: Path, candidates: Sequence[Candidate]
+) -> PlanTask | None:
+    """Read `[plan]`, or make a plan of the candidates, if there are any."""
+    from trueturn.planning.job import plan_of_candidates, read_plan
+
+    if "plan" in file:
+        return read_plan(file.table("plan"), operator, tolerance, folder, find_formula)
+    return plan_of_candidates(candidates) if candidates else None
+
+
+def find_formula(section: Table, key: str, name: str, folder: Path) -> Formula:
+    """Find the formula that a key names: in the file of `formula_file`, where there is one, else by its name.
+
+    An unknown one is refused with the nearest that is known.
+    """
+    if "formula_file" in section:
+        return own_formula(section, key, name, folder)
     try:
         return formula(name)
     except FormulaError as error:
-        raise section.error("formula", "unknown", nearest(name, formulas(special=True)), name) from error
+        raise section.error(key, "unknown", nearest(name, formulas(special=True)), name) from error
 
 
-def own_formula(section: Table, name: str, folder: Path) -> Formula:
+def own_formula(section: Table, key: str, name: str, folder: Path) -> Formula:
     """Find a formula in the file that `formula_file` names; what is wrong in there is told with its own key."""
     file = section.text("formula_file", 'formula_file = "mine.toml"')
     try:
@@ -349,7 +435,7 @@ def own_formula(section: Table, name: str, folder: Path) -> Formula:
         full = section.full("formula_file")
         raise JobError(f"{full}: {file}: {error}", path=section.path, key=full) from error
     if name not in found:
-        raise section.error("formula", f"not in {file}", nearest(name, tuple(found)), name)
+        raise section.error(key, f"not in {file}", nearest(name, tuple(found)), name)
     return found[name]
 
 

@@ -19,10 +19,10 @@ from trueturn.reference.certificate import UNIT, expectation_rounding, expectati
 from trueturn.rotations import Rotations
 from trueturn.state import State
 
-__all__ = ["Bench", "Measured", "judge"]
+__all__ = ["SEGMENT_ROUNDINGS", "Bench", "Measured", "judge"]
 
 # A segment's time is a difference of two requested times: one more rounding in each angle.
-_SEGMENT_ROUNDINGS = 1
+SEGMENT_ROUNDINGS = 1
 
 
 @dataclass(frozen=True)
@@ -89,20 +89,17 @@ class Bench:
 
     def measure(self, candidate: Candidate, partition: Partition, steps: int) -> Measured:
         """Run a candidate with `steps` steps and compare it with the reference at every time."""
+        circuits = self.circuits(candidate, partition, steps)
+        whole = circuits[-1]
         if self.readout == "along":
-            counts = steps_at(self.times, steps)
-            circuits = self._segments(candidate, partition, counts)
             whole = circuits[0]
             for circuit in circuits[1:]:
                 whole = whole + circuit
-        else:
-            circuits = [candidate.formula.rotations(partition, time, steps) for time in self.times]
-            whole = circuits[-1]
         points: list[PointError] = []
         spent = 0.0
         np.copyto(self._work.amplitudes, self.start.amplitudes)
         for place, circuit in enumerate(circuits):
-            own = self._length * circuit.rounding_bound(ANGLE_ROUNDINGS + _SEGMENT_ROUNDINGS, self.unit)
+            own = self._length * circuit.rounding_bound(ANGLE_ROUNDINGS + SEGMENT_ROUNDINGS, self.unit)
             if self.readout == "along":
                 spent += own
             else:
@@ -114,7 +111,11 @@ class Bench:
         trial = Trial(steps, error, judge(error, self.tolerance), whole.two_qubit_gates())
         return Measured(trial, tuple(points), spent, whole)
 
-    def _segments(self, candidate: Candidate, partition: Partition, counts: Sequence[int]) -> list[Rotations]:
+    def circuits(self, candidate: Candidate, partition: Partition, steps: int) -> list[Rotations]:
+        """Return the circuits that are run: from time to time along one, or from 0 to each time."""
+        if self.readout != "along":
+            return [candidate.formula.rotations(partition, time, steps) for time in self.times]
+        counts = steps_at(self.times, steps)
         circuits = []
         for now, was, count, before in zip(self.times, [0.0, *self.times[:-1]], counts, [0, *counts[:-1]], strict=True):
             circuits.append(candidate.formula.rotations(partition, now - was, count - before))

@@ -21,8 +21,9 @@ Interval = tuple[float, float]
 class PointError:
     """The error of one figure at one time.
 
-    `name` is the observable, or ``"state"``. `value` is what the candidate gives and `reference` what the reference
-    gives (both ``nan`` for the state, which has no single value); `error` is the interval that holds the true error.
+    `name` is the observable, ``"state"`` or ``"operator"``. `value` is what the candidate gives and `reference` what the
+    reference gives (both ``nan`` for the latter two, which have no single value); `error` is the interval that holds the
+    true error.
     """
 
     time: float
@@ -108,7 +109,7 @@ class Audit:
     verdict : str
         ``"meets"`` where some row does; else ``"undecided"`` where some row is; else ``"misses"``.
     reference : Reference
-    quantity : "observables" or "state"
+    quantity : "observables", "state" or "operator"
     tolerance : float
     relative_to : None or "norm"
     times : tuple of float

@@ -5,12 +5,13 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 from trueturn.audit.figures import plain, upper
+from trueturn.audit.operator_measure import CONFIDENCE
 from trueturn.audit.result import Row
 from trueturn.audit.search import Search
 from trueturn.reference import Reference
 from trueturn.state import State
 
-__all__ = ["CAUTIONS", "assumptions", "measured", "proven", "recommendation", "search_note"]
+__all__ = ["CAUTIONS", "assumptions", "cautions", "measured", "proven", "recommendation", "search_note", "start"]
 
 CAUTIONS = (
     "The verdict is about the ideal circuit. It does not validate hardware: gate errors, drifts, crosstalk and readout "
@@ -21,19 +22,39 @@ CAUTIONS = (
     "Gate counts take 2(w-1) two-qubit gates for a rotation on w qubits with all qubits connected, before any "
     "compilation or routing.",
 )
+_FOR_EVERY_START = (
+    "It holds for every start state at these times; a given start usually errs by less and would need fewer steps."
+)
 
 
-def assumptions(state: State, readout: str, relative_to: str | None) -> tuple[str, ...]:
+def cautions(quantity: str) -> tuple[str, ...]:
+    """Return what to mind."""
+    if quantity != "operator":
+        return CAUTIONS
+    return (CAUTIONS[0], _FOR_EVERY_START, *CAUTIONS[2:])
+
+
+def start(given: str, state: State, quantity: str) -> str:
+    """Return the start state in words."""
+    if quantity == "operator":
+        return "every state"
+    return given or f"a given state vector of {state.qubits} qubits"
+
+
+def assumptions(state: State, readout: str, relative_to: str | None, quantity: str) -> tuple[str, ...]:
     """Return what was taken as given."""
-    single = state.dtype.itemsize == 8
+    single = state.dtype.itemsize == 8 and quantity != "operator"
     how = (
         "One circuit of equal steps to the last time, read on the way at each time."
         if readout == "along"
         else "A circuit of its own for each time, each with the stated number of steps."
     )
     scale = "Errors are divided by a proven bound on each observable's norm." if relative_to else "Errors are absolute."
+    exactly = "The Hamiltonian is exactly as given; the start is any unit vector"
+    if quantity != "operator":
+        exactly = "The Hamiltonian and the start state are exactly as given"
     return (
-        "The Hamiltonian and the start state are exactly as given; ħ = 1.",
+        f"{exactly}; ħ = 1.",
         how,
         scale,
         f"Candidates ran in {'single' if single else 'double'} precision on a noiseless state vector.",
@@ -54,12 +75,25 @@ def proven(reference: Reference) -> tuple[str, ...]:
 
 def measured(quantity: str, reference_proven: bool) -> tuple[str, ...]:
     """Return what was only measured."""
+    least = (
+        "The least step counts: the smallest that met the tolerance together with every tested count up to its double."
+    )
+    if quantity == "operator":
+        if reference_proven:
+            how = (
+                "The error intervals: the lower end is proven, by a vector on which candidate and exact evolution differ "
+                f"so much; each upper end holds with a probability of at least {CONFIDENCE:g} over a random start of power "
+                "iteration."
+            )
+        else:
+            how = "The error intervals: whole matrices of candidate and exact evolution, with rounding estimated."
+        return how, least
     what = "state distance" if quantity == "state" else "observables"
     return (
         f"The error intervals: the {what} of candidate and reference were both computed and compared; the interval holds "
         "the true error of this circuit on this start state"
         + ("." if reference_proven else ", as far as the estimated part of the reference's bound does."),
-        "The least step counts: the smallest that met the tolerance together with every tested count up to its double.",
+        least,
     )
 
 

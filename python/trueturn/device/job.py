@@ -66,7 +66,7 @@ def job_budgets(
             shots=job.device.shots,
             synthesis_error=job.device.synthesis_error,
             confidence=job.device.confidence,
-            state=job.start.state() if errors == "measured" else None,
+            state=job.required_start().state() if errors == "measured" else None,
             most_steps=job.most_steps,
             threads=job.threads if threads is None else threads,
             progress=progress,

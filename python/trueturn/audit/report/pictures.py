@@ -76,7 +76,7 @@ def trials_picture(audit: Audit, name: str, label: str, place: Callable[[Trial],
             fontsize=9.5,
         )
         axes.set_xlabel(label)
-        axes.set_ylabel(f"error in the {'state' if audit.quantity == 'state' else 'observables'}")
+        axes.set_ylabel(f"error in the {audit.quantity}")
         axes.margins(y=0.1)
         axes.grid(color=GRID, linewidth=0.6)
         logarithmic(axes.xaxis, whole=True)
@@ -89,11 +89,11 @@ def trials_picture(audit: Audit, name: str, label: str, place: Callable[[Trial],
 
 def time_picture(audit: Audit) -> str:
     """Draw each observable of each candidate against the reference over time, and how far they are apart."""
-    if audit.quantity == "state":
+    if audit.quantity != "observables":
         return draw(
             "picture-time",
             (10.6, 3.6),
-            "State error of each candidate over time",
+            f"{audit.quantity.capitalize()} error of each candidate over time",
             lambda figure: states(audit, figure),
         )
     names = shown_observables(audit)
@@ -190,7 +190,7 @@ def differences(audit: Audit, name: str, axes: Any) -> None:
 
 
 def states(audit: Audit, figure: Any) -> None:
-    """Draw the state error of each candidate over time, with the tolerance."""
+    """Draw the state or operator error of each candidate over time, with the tolerance."""
     axes = figure.add_subplot()
     axes.set_yscale("log")
     floor = floor_of(audit)
@@ -205,7 +205,7 @@ def states(audit: Audit, figure: Any) -> None:
         axes.errorbar([point.time for point in row.points], middles, yerr=arms, label=label, **style)
     axes.axhline(audit.tolerance, color=INK, linewidth=1.0, linestyle=(0, (5, 3)))
     axes.set_xlabel("time")
-    axes.set_ylabel("state error")
+    axes.set_ylabel(f"{audit.quantity} error")
     axes.grid(color=GRID, linewidth=0.6)
     logarithmic(axes.yaxis)
     figure.legend(loc="outside upper left", ncols=4, fontsize=9.5)

@@ -32,8 +32,8 @@ def tolerance_words(audit: Audit) -> str:
     """Say what is asked of a candidate, to follow "keep the" or to stand alone."""
     tolerance = plain(audit.tolerance)
     when = f"at t = {plain(audit.times[0])}" if len(audit.times) == 1 else f"at each of {len(audit.times)} times"
-    if audit.quantity == "state":
-        return f"state error within {tolerance} {when}"
+    if audit.quantity != "observables":
+        return f"{audit.quantity} error within {tolerance} {when}"
     share = " of its norm" if audit.relative_to == "norm" else ""
     which = "the observable" if len(audit.observables) == 1 else f"each of {len(audit.observables)} observables"
     return f"error within {tolerance}{share} on {which} {when}"
@@ -66,7 +66,7 @@ def worst_words(row: Row, audit: Audit) -> str:
     point = worst(row)
     if point is None:
         return ""
-    if audit.quantity == "state":
+    if audit.quantity != "observables":
         return f"t = {plain(point.time)}"
     return f"{point.name}, t = {plain(point.time)}"
 
