@@ -109,7 +109,7 @@ def test_a_job_for_every_start_needs_no_start(tmp_path, capsys):
     assert json.loads(capsys.readouterr().out)["target"]["quantity"] == "operator"
     assert read_job(path).start is None
     assert cli.run(["reference", str(path)]) == 2
-    assert "start: missing; a reference evolves a state" in capsys.readouterr().err
+    assert "start: missing; a state is evolved here" in capsys.readouterr().err
 
 
 def test_a_job_may_have_a_start_and_its_mistakes_are_told(tmp_path):

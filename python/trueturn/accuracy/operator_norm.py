@@ -242,6 +242,12 @@ def _checked_bound(bound: object) -> tuple[float, str] | None:
     if bound is None:
         return None
     if isinstance(bound, Bound):
+        if bound.inputs != "worst":
+            raise ArgumentError(
+                f"bound: is one for {bound.inputs} inputs ({bound.value:g}); give one with inputs='worst'",
+                argument="bound",
+                value=bound,
+            )
         return bound.value, f"The upper end is proven: {bound.theorem}, {bound.source}."
     value = finite("bound", bound, "give a proven upper bound, or leave it out")
     if value < 0.0:

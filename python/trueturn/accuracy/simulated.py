@@ -23,6 +23,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from trueturn.accuracy.lie_series import logarithm_of_exponentials, logarithm_of_letters
+from trueturn.accuracy.norms import SMALL_QUBITS, quick, thorough
 from trueturn.errors import ArgumentError, AuditError
 from trueturn.formulas import Formula, formula
 from trueturn.formulas.order import logarithm_words
@@ -31,7 +32,6 @@ from trueturn.formulas.structure import require_structure
 from trueturn.operator import Operator
 from trueturn.partition import Partition
 from trueturn.randomised.checks import as_int, checked_partition, finite
-from trueturn.reference.certificate import norm_bound
 
 if TYPE_CHECKING:
     from trueturn.accuracy.error_split import ErrorSplit
@@ -43,7 +43,6 @@ __all__ = ["MOST_DEGREE", "SimulatedSeries", "TermSize", "simulated_hamiltonian"
 MOST_DEGREE = 12
 """Formulas are measured up to this order; long before it the operators outgrow patience on more than a few qubits."""
 
-_SMALL_QUBITS = 8
 _FEW_TERMS = 100
 _NOISE = 1e-15
 
@@ -60,8 +59,8 @@ class TermSize:
     one_norm : float
         Sum of |coefficients|; bounds the spectral norm.
     norm_bound : float
-        A proven upper bound on the spectral norm, the identity removed: from a spectral interval on up to 8 qubits or
-        100 strings, else the sum of |coefficients|.
+        A proven upper bound on the spectral norm, the identity removed: by every route of `trueturn.accuracy.norms` on
+        up to 8 qubits or 100 strings, else by anticommuting groups.
     root_mean_square : float
         √Σc², the Frobenius norm over 2^(n/2).
     """
@@ -311,13 +310,12 @@ def _power(step: float, power: int) -> float:
 
 def _size(degree: int, term: Operator, factor: float) -> TermSize:
     bare = term.without_identity()
-    bound = norm_bound(bare) if len(bare) and (bare.qubits <= _SMALL_QUBITS or len(bare) <= _FEW_TERMS) else None
-    one_norm = bare.one_norm()
+    rule = thorough if bare.qubits <= SMALL_QUBITS or len(bare) <= _FEW_TERMS else quick
     return TermSize(
         degree=degree,
         strings=len(bare),
-        one_norm=factor * one_norm,
-        norm_bound=factor * (one_norm if bound is None else bound),
+        one_norm=factor * bare.one_norm(),
+        norm_bound=factor * rule(bare).value,
         root_mean_square=factor * math.sqrt(math.fsum(np.square(bare.coefficients))),
     )
 

@@ -68,7 +68,7 @@ def audit(
         norm, for all starts at once: by whole matrices up to 10 qubits, else by power iteration, whose upper ends hold with
         a probability of at least 0.999 each (`operator_error`).
     observables : mapping of str to Operator
-        Needed for ``quantity="observables"``.
+        Needed for ``quantity="observables"``; not used for ``"operator"``.
     readout : "along" or "separate"
         One circuit of `steps` equal steps to the last time, read on the way; or a circuit of `steps` steps for each time.
     relative_to : None or "norm"
