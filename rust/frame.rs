@@ -73,6 +73,27 @@ impl Frame {
         self.clifford.pull(move_string(string, &inverted(&self.relabelling)))
     }
 
+    /// The frame on more qubits, which it leaves alone.
+    pub fn widened(&self, qubits: u32) -> Self {
+        let mut wider = self.clone();
+        wider.clifford.widen(qubits);
+        wider.relabelling.extend(self.relabelling.len() as u32..qubits);
+        wider
+    }
+
+    /// The frame on the first qubits only; None where it does something to others.
+    pub fn narrowed(&self, qubits: u32) -> Option<Self> {
+        let outside = if qubits >= 128 { 0 } else { u128::MAX << qubits };
+        let moved = self.relabelling.iter().enumerate().skip(qubits as usize).any(|(at, &to)| at != to as usize);
+        if moved || self.turns.iter().any(|turn| turn.string.support() & outside != 0) {
+            return None;
+        }
+        let mut clifford = Clifford::identity(qubits);
+        self.turns.iter().for_each(|&turn| clifford.turn(turn));
+        clifford.phase(self.eighths);
+        Some(Self::new(clifford, self.relabelling[..qubits as usize].to_vec()))
+    }
+
     /// This frame, then the next one.
     pub fn then(&self, next: &Self) -> Self {
         let back = inverted(&self.relabelling);

@@ -37,6 +37,7 @@ pub mod passes;
 pub mod pauli;
 #[cfg(feature = "python")]
 pub mod python;
+pub mod qasm;
 pub mod relabel;
 pub mod rotations;
 pub mod sums;

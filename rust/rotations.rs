@@ -11,6 +11,8 @@ use crate::error::{Error, Result};
 use crate::frame::Frame;
 use crate::pauli::PauliString;
 
+pub(crate) use framed::mapped;
+
 /// exp(-i angle P).
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub struct Rotation {

@@ -7,7 +7,6 @@ uses is understood: one register, one gate a line, one-line gate definitions, lo
 from __future__ import annotations
 
 import re
-from math import pi
 
 import numpy as np
 
@@ -68,9 +67,7 @@ def statements(text):
 
 
 def number(text):
-    """An angle: pi/2, -pi/2, or a decimal, which must have a point."""
-    if text in ("pi/2", "-pi/2"):
-        return pi / 2 if text[0] == "p" else -pi / 2
+    """An angle: a decimal, which must have a point."""
     assert re.fullmatch(r"-?\d+\.\d+(e-?\d+)?", text), text
     return float(text)
 
@@ -109,7 +106,7 @@ def rotations(text):
     strings = {(x, z): string(x, z, qubits) for x in range(2**qubits) for z in range(2**qubits)}
     found = []
     for name, angle, places in gates:
-        if angle is None or (abs(angle) == pi / 2 and name == "rx"):
+        if angle is None:
             clifford = apply(clifford, matrix(name, angle), places, qubits)
             continue
         conjugated = clifford.conj().T @ apply(clifford, GENERATORS[name], places, qubits)

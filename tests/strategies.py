@@ -98,3 +98,13 @@ gate_options = st.fixed_dictionaries(
     }
 )
 """How circuits become gates: keywords of `Rotations.cost`."""
+
+
+@st.composite
+def framed(draw, inner):
+    """A circuit that ends in a Clifford and a relabelling."""
+    circuit = draw(inner)
+    strings = draw(st.lists(pauli_strings(circuit.qubits), max_size=5))
+    turns = [draw(st.integers(-3, 3)) * np.pi / 4 for _ in strings]
+    clifford = Rotations([x for x, _ in strings], [z for _, z in strings], turns, circuit.qubits, np.pi / 4)
+    return circuit.with_frame(clifford, draw(st.permutations(range(circuit.qubits))))

@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import json
+import re
+from pathlib import Path
 
 import pytest
 
@@ -162,6 +164,7 @@ def test_every_key_of_the_device_reaches_the_hardware():
         ('connectivity = "grid"\nrows = 2', r"device.rows: goes with a grid"),
         ('connectivity = "line"\nrows = 2\ncolumns = 2', r"device.rows: goes with a grid"),
         ("layout = [0, 1]", r"device.layout: has 2 entries for 4 qubits"),
+        ('layout = "serach"', r"device.layout: unknown \('serach'\); did you mean 'search'"),
         ("one_qubit_error = 2", r"device.one_qubit_error: no probability below 1"),
         ('readout_error = "x"', r"device.readout_error: not a number but a text"),
     ],
@@ -195,3 +198,11 @@ def test_what_cannot_be_written_is_refused(write, tmp_path, capsys, arguments, c
     assert cli.run([arguments[0], str(write(**changes)), *arguments[1:], *into]) == 2
     assert message in capsys.readouterr().err
     assert [entry.name for entry in tmp_path.iterdir()] == ["job.toml"]
+
+
+def test_the_page_shows_what_its_example_prints(tmp_path, monkeypatch, capsys):
+    page = (Path(__file__).parent.parent / "docs" / "circuits-out.md").read_text(encoding="utf-8")
+    code, printed = re.search(r"```python\n(.*?)```\n```\n(.*?)```", page, re.DOTALL).groups()
+    monkeypatch.chdir(tmp_path)
+    exec(compile(code, "circuits-out.md", "exec"), {})
+    assert capsys.readouterr().out == printed

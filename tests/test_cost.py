@@ -149,6 +149,40 @@ def test_the_cheaper_routing_is_taken():
     assert far.cost(connectivity="line", routing="bridges").two_qubit_gates == 18
 
 
+def test_a_searched_layout_puts_a_ring_on_a_grid():
+    """A ring of six is a cycle of the 2 x 4 grid: no swap, no bridge. By number it is none."""
+    ring = tt.model.heisenberg(tt.lattice.ring(6), coupling=1.0)
+    circuit = tt.formula("strang").rotations(tt.Partition.of(ring, "bond"), 1.0, 100)
+    grid = tt.lattice.square(2, 4)
+    searched = circuit.cost(connectivity=grid, layout="search")
+    assert searched.two_qubit_gates == circuit.cost().two_qubit_gates
+    assert circuit.cost(connectivity=grid).two_qubit_gates > searched.two_qubit_gates
+    assert sorted(set(searched.start_layout)) == sorted(searched.start_layout)
+    with pytest.raises(ArgumentError, match=r"layout: unknown \('serach'\); did you mean 'search'"):
+        circuit.cost(layout="serach")
+
+
+def test_a_searched_layout_leaves_parts_that_are_cut_off():
+    circuit = tt.Rotations([0b111], [0], [0.1], 3)
+    broken = [(0, 1), (2, 3), (3, 4)]
+    assert set(circuit.cost(connectivity=broken, layout="search").start_layout) == {2, 3, 4}
+    with pytest.raises(ArgumentError, match=r"connectivity: disconnected \(no way from qubit 0 to qubit 2\)"):
+        circuit.cost(connectivity=broken)
+    with pytest.raises(
+        ArgumentError, match=r"connectivity: disconnected \(its largest part has 2 qubits, the circuit 3\)"
+    ):
+        circuit.cost(connectivity=[(0, 1), (2, 3)], layout="search")
+
+
+@given(st.one_of(circuits(max_count=6), pair_circuits()), st.sampled_from(["line", "grid", "ring"]))
+def test_a_searched_layout_never_costs_more(circuit, connectivity):
+    searched = circuit.cost(connectivity=connectivity, layout="search")
+    assert searched.two_qubit_gates <= circuit.cost(connectivity=connectivity).two_qubit_gates
+    text = circuit.qasm(connectivity=connectivity, layout="search")
+    assert qasm_gates.counts(text)[0] == searched.two_qubit_gates
+    assert f"start_layout = {list(searched.start_layout)}" in text
+
+
 def test_word_and_lattice_describe_the_same_device():
     circuit = tt.Rotations([0b100000001], [0b10000], [0.1], 9)
     assert circuit.cost(connectivity="grid") == circuit.cost(connectivity=tt.lattice.square(3, 3))

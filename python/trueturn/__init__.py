@@ -23,6 +23,7 @@ from trueturn.accuracy import (
 )
 from trueturn.adaptive import AdaptiveRun, adaptive
 from trueturn.audit import Audit, Candidate, audit
+from trueturn.circuits.reading import Circuit, read_circuit, read_qasm
 from trueturn.comparison import Comparison, compare
 from trueturn.device import Budget, CausalCone, causal_cone, device_budget
 from trueturn.driven import Driven, DrivenReference, driven_reference
@@ -52,6 +53,7 @@ __all__ = [
     "Case",
     "CausalCone",
     "Certificate",
+    "Circuit",
     "Comparison",
     "Cost",
     "CostTable",
@@ -104,7 +106,9 @@ __all__ = [
     "plan",
     "product_errors",
     "randomised",
+    "read_circuit",
     "read_formulas",
+    "read_qasm",
     "reference",
     "rms_error",
     "saved_gates",

@@ -20,6 +20,7 @@ __all__ = [
     "ModelError",
     "OperatorError",
     "PartitionError",
+    "QasmError",
     "RotationError",
     "StateBusyError",
     "StateLayoutError",
@@ -77,6 +78,14 @@ class RotationError(TrueturnError, ValueError):
     """Angles or repeats that make no circuit."""
 
     argument: str
+
+
+class QasmError(TrueturnError, ValueError):
+    """An OpenQASM text that is no unitary circuit with known values, or a file that cannot be read."""
+
+    path: str
+    line: int
+    column: int
 
 
 class FormulaError(TrueturnError, ValueError):

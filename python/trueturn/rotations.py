@@ -330,19 +330,17 @@ class Rotations:
         return write_qasm(self, path, version, comment, Hardware.of(device))
 
     def qasm(self, version: int = 3, *, comment: str = "", **device: Any) -> str:
-        """Return the text that `write_qasm` writes.
+        r"""Return the text that `write_qasm` writes.
 
         Examples
         --------
         >>> step = Rotations(x=[0b0], z=[0b11], angles=[0.25], qubits=2)
-        >>> print(step.times(100).qasm().partition("qubit")[2])
-        [2] q;
+        >>> print(step.times(100).qasm().partition("qubit[2] q;\n")[2], end="")
         cx q[0], q[1];
         for int step0 in [1:100] {
           rz(0.5) q[1];
         }
         cx q[0], q[1];
-        <BLANKLINE>
         """
         from trueturn.export.hardware import Hardware
         from trueturn.export.qasm import qasm_text

@@ -199,7 +199,7 @@ impl Compiler<'_> {
         }
         let Gathering { mut rungs, root } = self.gathering((string.x, string.z), &qubits, out)?;
         let partner = if self.options.native == Native::Zz { rungs.pop().map(|(control, _)| control) } else { None };
-        let bases: Vec<Gate> = qubits.iter().filter_map(|&qubit| self.basis(string, qubit)).collect();
+        let bases: Vec<Gate> = qubits.iter().flat_map(|&qubit| self.basis(string, qubit)).collect();
         bases.iter().try_for_each(|&gate| out.gate(gate))?;
         rungs.iter().try_for_each(|&(control, target)| self.cx(control, target, out))?;
         centre(root, partner).into_iter().try_for_each(|gate| out.gate(gate))?;
@@ -207,12 +207,13 @@ impl Compiler<'_> {
         bases.iter().rev().filter_map(|gate| gate.inverse()).try_for_each(|gate| out.gate(gate))
     }
 
-    fn basis(&self, string: PauliString, qubit: u32) -> Option<Gate> {
+    /// Gates after which the string has Z on the qubit: V† Z V = X for V = H, and Y for V = H S†.
+    fn basis(&self, string: PauliString, qubit: u32) -> Vec<Gate> {
         let at = self.layout.physical[qubit as usize];
         match letter(string, qubit) {
-            1 => Some(Gate::H(at)),
-            2 => Some(Gate::Quarter(at)),
-            _ => None,
+            1 => vec![Gate::H(at)],
+            2 => vec![Gate::Sdg(at), Gate::H(at)],
+            _ => vec![],
         }
     }
 
@@ -410,4 +411,23 @@ pub fn global_phase(circuit: &Rotations) -> f64 {
         (u32::from(frame.eighths()) + 7 * turned) % 8
     });
     phase + f64::from(eighths) * FRAC_PI_4
+}
+
+/// How often each pair of qubits is a rung of an ascending ladder, row by row.
+pub fn rung_counts(circuit: &Rotations) -> Vec<f64> {
+    let qubits = circuit.qubits() as usize;
+    let mut counts = vec![0.0; qubits * qubits];
+    circuit.for_each_list(&mut |list, times| {
+        for rotation in list {
+            let mut left = rotation.string.support();
+            while left & left.wrapping_sub(1) != 0 {
+                let one = left.trailing_zeros() as usize;
+                left &= left - 1;
+                let next = left.trailing_zeros() as usize;
+                counts[one * qubits + next] += times as f64;
+                counts[next * qubits + one] += times as f64;
+            }
+        }
+    });
+    counts
 }

@@ -1,4 +1,6 @@
 //! The gates that a circuit is written in: all of them in the standard library of OpenQASM 3, or defined from it.
+//!
+//! Rotations are never used as Clifford gates, so that a reader need not guess which rx(π/2) is meant as which.
 
 /// A gate on physical qubits; angles as OpenQASM takes them, twice the θ of exp(-i θ P).
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -9,10 +11,6 @@ pub enum Gate {
     S(u16),
     /// diag(1, -i).
     Sdg(u16),
-    /// rx(π/2), which turns Y into Z: rx(π/2)† Z rx(π/2) = Y.
-    Quarter(u16),
-    /// rx(-π/2).
-    QuarterBack(u16),
     /// exp(-i angle X/2).
     Rx(u16, f64),
     /// exp(-i angle Y/2).
@@ -44,7 +42,7 @@ impl Gate {
     /// The first qubit, and the second where there is one.
     pub fn qubits(self) -> (u16, Option<u16>) {
         match self {
-            Self::H(q) | Self::S(q) | Self::Sdg(q) | Self::Quarter(q) | Self::QuarterBack(q) => (q, None),
+            Self::H(q) | Self::S(q) | Self::Sdg(q) => (q, None),
             Self::Rx(q, _) | Self::Ry(q, _) | Self::Rz(q, _) => (q, None),
             Self::Cx(a, b) | Self::Cz(a, b) | Self::Swap(a, b) | Self::Zz(a, b, _) => (a, Some(b)),
         }
@@ -56,8 +54,6 @@ impl Gate {
             Self::H(_) | Self::Cx(..) | Self::Cz(..) | Self::Swap(..) => Some(self),
             Self::S(q) => Some(Self::Sdg(q)),
             Self::Sdg(q) => Some(Self::S(q)),
-            Self::Quarter(q) => Some(Self::QuarterBack(q)),
-            Self::QuarterBack(q) => Some(Self::Quarter(q)),
             Self::Rx(..) | Self::Ry(..) | Self::Rz(..) | Self::Zz(..) => None,
         }
     }
@@ -76,7 +72,7 @@ impl Gate {
     pub fn axis(self, qubit: u16) -> Axis {
         match self {
             Self::S(_) | Self::Sdg(_) | Self::Rz(..) | Self::Cz(..) | Self::Zz(..) => Axis::Z,
-            Self::Quarter(_) | Self::QuarterBack(_) | Self::Rx(..) => Axis::X,
+            Self::Rx(..) => Axis::X,
             Self::Cx(control, _) => {
                 if qubit == control {
                     Axis::Z

@@ -76,12 +76,13 @@ pub fn letter(string: PauliString, qubit: u32) -> u8 {
 ///
 /// Returns the gates and the signs of V first V†, V second V† and V third V† against Z, X and Y.
 pub fn renaming(first: u8, second: u8, qubit: u16) -> (Vec<Gate>, [f64; 3]) {
+    let (h, sdg) = (Gate::H(qubit), Gate::Sdg(qubit));
     let (gates, z, x) = match (first, second) {
-        (1, 3) => (vec![Gate::H(qubit)], 1.0, 1.0),
-        (1, _) => (vec![Gate::Quarter(qubit), Gate::H(qubit)], 1.0, 1.0),
-        (2, 1) => (vec![Gate::Quarter(qubit)], 1.0, 1.0),
-        (2, _) => (vec![Gate::H(qubit), Gate::Quarter(qubit)], -1.0, 1.0),
-        (_, 2) => (vec![Gate::Sdg(qubit)], 1.0, 1.0),
+        (1, 3) => (vec![h], 1.0, 1.0),
+        (1, _) => (vec![h, sdg], 1.0, -1.0),
+        (2, 1) => (vec![sdg, h, sdg], 1.0, 1.0),
+        (2, _) => (vec![sdg, h], 1.0, 1.0),
+        (_, 2) => (vec![sdg], 1.0, 1.0),
         _ => (vec![], 1.0, 1.0),
     };
     // Y = i X Z keeps its handedness: the third axis turns round where the first two stand the other way round.

@@ -76,8 +76,6 @@ fn statement(gate: Gate) -> String {
         Gate::H(q) => format!("h q[{q}];"),
         Gate::S(q) => format!("s q[{q}];"),
         Gate::Sdg(q) => format!("sdg q[{q}];"),
-        Gate::Quarter(q) => format!("rx(pi/2) q[{q}];"),
-        Gate::QuarterBack(q) => format!("rx(-pi/2) q[{q}];"),
         Gate::Rx(q, angle) => format!("rx({}) q[{q}];", real(angle)),
         Gate::Ry(q, angle) => format!("ry({}) q[{q}];", real(angle)),
         Gate::Rz(q, angle) => format!("rz({}) q[{q}];", real(angle)),

@@ -125,3 +125,9 @@ pub fn write_gates(
 pub fn global_phase(circuit: &PyRotations) -> f64 {
     crate::gates::compile::global_phase(&circuit.rotations)
 }
+
+/// How often each pair of qubits is a rung of an ascending ladder, row by row.
+#[pyfunction]
+pub fn rung_counts(circuit: &PyRotations) -> Vec<f64> {
+    crate::gates::compile::rung_counts(&circuit.rotations)
+}

@@ -4,6 +4,7 @@ mod arrays;
 mod error;
 pub mod gates;
 mod gateway;
+pub mod qasm;
 pub mod rotations;
 pub mod state;
 pub mod terms;
@@ -14,7 +15,9 @@ use pyo3::prelude::*;
 #[pymodule]
 mod _native {
     #[pymodule_export]
-    use super::gates::{PyGateOptions, gate_counts, global_phase, write_gates};
+    use super::gates::{PyGateOptions, gate_counts, global_phase, rung_counts, write_gates};
+    #[pymodule_export]
+    use super::qasm::read_qasm;
     #[pymodule_export]
     use super::rotations::PyRotations;
     #[pymodule_export]

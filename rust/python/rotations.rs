@@ -103,6 +103,11 @@ impl PyRotations {
         Ok(Some((clifford, frame.relabelling().to_vec())))
     }
 
+    /// The circuit on its first qubits only; None where it does something to others.
+    fn narrowed(&self, qubits: u32) -> Option<Self> {
+        self.rotations.narrowed(qubits).map(|rotations| Self { rotations })
+    }
+
     fn inverse(&self) -> Self {
         Self { rotations: self.rotations.inverse() }
     }

@@ -3,6 +3,7 @@
 //! With R the blocks and F the frame of a circuit, F_2 R_2 F_1 R_1 = (F_2 F_1) (F_1† R_2 F_1) R_1: what follows a frame is
 //! pulled back through it, which turns each string into another one up to a sign and keeps blocks and repeats.
 
+use std::collections::HashSet;
 use std::f64::consts::FRAC_PI_4;
 use std::sync::Arc;
 
@@ -113,6 +114,32 @@ impl Rotations {
         }
         let plain = Self::checked(qubits, blocks, phase)?;
         Ok(Self { frame: Some(Arc::new(frame)), ..plain })
+    }
+
+    /// The same circuit with more qubits, which it leaves alone.
+    pub(crate) fn widened(self, qubits: u32) -> Self {
+        let frame = self.frame.map(|frame| Arc::new(frame.widened(qubits)));
+        Self { qubits, frame, ..self }
+    }
+
+    /// The same circuit on its first qubits only; None where it does something to others.
+    pub fn narrowed(&self, qubits: u32) -> Option<Self> {
+        let outside = if qubits >= 128 { 0 } else { u128::MAX << qubits };
+        let mut inside = true;
+        self.for_each_list(&mut |list, _| inside &= list.iter().all(|one| one.string.support() & outside == 0));
+        let frame = match &self.frame {
+            Some(frame) => Some(Arc::new(frame.narrowed(qubits)?)),
+            None => None,
+        };
+        let keeps = inside && qubits <= self.qubits;
+        keeps.then(|| Self { qubits, blocks: self.blocks.clone(), phase: self.phase, frame })
+    }
+
+    /// How many different strings there are.
+    pub fn distinct_strings(&self) -> usize {
+        let mut strings = HashSet::new();
+        self.for_each_list(&mut |list, _| strings.extend(list.iter().map(|rotation| rotation.string)));
+        strings.len()
     }
 
     /// Rotations held in memory.

@@ -5,12 +5,12 @@ from __future__ import annotations
 import difflib
 import math
 import operator
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
 
 from trueturn.errors import ArgumentError
 from trueturn.lattice import Lattice
 
-__all__ = ["WORDS", "Edges", "edges_of", "require_connected"]
+__all__ = ["WORDS", "Edges", "edges_of", "first_apart", "require_connected"]
 
 WORDS = ("all", "line", "ring", "grid")
 """Connectivities that have a name."""
@@ -87,24 +87,27 @@ def _pairs(connectivity: object) -> Edges:
     return tuple(made)
 
 
-def require_connected(count: int, edges: Edges, layout: Iterable[int]) -> None:
-    """Refuse a device on which two qubits of the circuit cannot meet."""
+def first_apart(count: int, edges: Edges, layout: Sequence[int]) -> int | None:
+    """Return the first physical qubit of a layout that cannot meet the others; None where all can."""
     neighbours: list[list[int]] = [[] for _ in range(count)]
     for a, b in edges:
         neighbours[a].append(b)
         neighbours[b].append(a)
-    used = list(layout)
-    if not used:
-        return
-    reached, waiting = {used[0]}, [used[0]]
+    reached, waiting = set(layout[:1]), list(layout[:1])
     while waiting:
         for place in neighbours[waiting.pop()]:
             if place not in reached:
                 reached.add(place)
                 waiting.append(place)
-    apart = next((place for place in used if place not in reached), None)
+    return next((place for place in layout if place not in reached), None)
+
+
+def require_connected(count: int, edges: Edges, layout: Sequence[int]) -> None:
+    """Refuse a device on which two qubits of the circuit cannot meet."""
+    apart = first_apart(count, edges, layout)
     if apart is not None:
-        raise _refuse("disconnected", f"no way from qubit {used[0]} to qubit {apart}", "add edges, or choose a layout")
+        remedy = 'add edges, give a layout, or layout="search"'
+        raise _refuse("disconnected", f"no way from qubit {layout[0]} to qubit {apart}", remedy)
 
 
 def _refuse(wrong: str, value: object, remedy: str) -> ArgumentError:

@@ -93,21 +93,23 @@ def cost_of(circuit: Rotations, hardware: Hardware) -> Cost:
 
 
 def written_as(circuit: Rotations, placed: Placed) -> tuple[Cost, _native.GateOptions]:
-    """Return the cost and the options that it holds for: the routing with the fewest two-qubit gates."""
+    """Return the cost and the options that it holds for: routing and layout with the fewest two-qubit gates."""
     if not math.isfinite(_native.global_phase(circuit._circuit)):
         raise RotationError("phase: grows out of range with the identity strings; use smaller angles", argument="phase")
     _require_memory(circuit)
     best: tuple[Cost, _native.GateOptions] | None = None
-    for routing in placed.routings():
-        options = placed.options(routing)
-        made = _counted(circuit, placed, options, routing)
+    for routing, layout in placed.attempts(circuit):
+        options = placed.options(routing, layout)
+        made = _counted(circuit, placed, options, routing, layout)
         if best is None or made.two_qubit_gates < best[0].two_qubit_gates:
             best = made, options
     assert best is not None
     return best
 
 
-def _counted(circuit: Rotations, placed: Placed, options: _native.GateOptions, routing: str) -> Cost:
+def _counted(
+    circuit: Rotations, placed: Placed, options: _native.GateOptions, routing: str, layout: tuple[int, ...]
+) -> Cost:
     numbers, end = _native.gate_counts(circuit._circuit, options)
     controlled, zz, swaps, one_qubit, clifford, t_like, other, depth, two_qubit_depth = numbers
     hardware = placed.hardware
@@ -126,7 +128,7 @@ def _counted(circuit: Rotations, placed: Placed, options: _native.GateOptions, r
         synthesis_error=hardware.synthesis_error,
         success=_success(hardware, two_qubit, one_qubit, circuit.qubits),
         routing=routing,
-        start_layout=placed.layout,
+        start_layout=layout,
         end_layout=tuple(end),
         physical_qubits=placed.qubits,
     )

@@ -6,16 +6,17 @@ import dataclasses
 import difflib
 import math
 import operator
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass, field
 from numbers import Real
 from typing import Any
 
 from trueturn import _native
 from trueturn.errors import ArgumentError
-from trueturn.export.connectivity import Edges, edges_of, require_connected
+from trueturn.export.connectivity import Edges, edges_of, first_apart, require_connected
 from trueturn.ladders import LADDERS as ORDERS
 from trueturn.lattice import Lattice
+from trueturn.rotations import Rotations
 
 __all__ = ["NATIVES", "ROUTINGS", "SHAPES", "Hardware", "Placed"]
 
@@ -43,8 +44,9 @@ class Hardware:
         The two-qubit gate. With ``"zz"``, exp(-i θ Z Z) for any θ is one gate beside cx.
     connectivity : None, {"all", "line", "ring", "grid"}, Lattice, or iterable of (int, int), optional
         Which physical qubits are joined. None and ``"all"``: all of them.
-    layout : sequence of int, optional
-        Entry q is the physical qubit that holds qubit q at the start; default q itself.
+    layout : sequence of int or "search", optional
+        Entry q is the physical qubit that holds qubit q at the start; default q itself. ``"search"`` looks for a layout
+        that keeps interacting qubits close, and takes it where the circuit then needs fewer two-qubit gates.
     routing : {"fewest", "bridges", "swaps"}
         For strings on qubits that are not joined: ladders over the qubits between, which moves nothing, or swaps,
         or whichever of the two takes fewer two-qubit gates for the circuit.
@@ -65,7 +67,7 @@ class Hardware:
     join_pairs: bool = True
     native: str = "cx"
     connectivity: str | Lattice | Sequence[tuple[int, int]] | None = None
-    layout: Sequence[int] | None = None
+    layout: Sequence[int] | str | None = None
     routing: str = "fewest"
     two_qubit_error: float | None = None
     one_qubit_error: float | None = None
@@ -75,6 +77,8 @@ class Hardware:
     def __post_init__(self) -> None:
         for name, choices in (("ladder", SHAPES), ("order", ORDERS), ("native", NATIVES), ("routing", ROUTINGS)):
             _require_choice(name, getattr(self, name), choices)
+        if isinstance(self.layout, str):
+            _require_choice("layout", self.layout, ("search",))
         if not isinstance(self.join_pairs, bool):
             raise _refuse("join_pairs", "not True or False", self.join_pairs, "give one of the two")
         for name in RATES:
@@ -107,13 +111,13 @@ class Hardware:
         """
         count, edges = edges_of(self.connectivity, qubits)
         layout = tuple(range(qubits))
-        if self.layout is not None:
+        if self.layout is not None and self.layout != "search":
             layout = _layout(self.layout, qubits)
             if edges is None:
                 count = max((*layout, qubits - 1)) + 1
         if any(place >= count for place in layout):
             raise _refuse("layout", f"leaves the device of {count} qubits", max(layout), f"use 0 to {count - 1}")
-        if edges is not None:
+        if edges is not None and self.layout != "search":
             require_connected(count, edges, layout)
         return Placed(self, count, edges, layout)
 
@@ -132,13 +136,20 @@ class Placed:
         """Whether every qubit is where its number says and all are joined."""
         return self.edges is None and self.layout == tuple(range(self.qubits))
 
-    def routings(self) -> tuple[str, ...]:
-        """Return the ways of routing to choose from."""
-        if self.hardware.routing != "fewest":
-            return (self.hardware.routing,)
-        return ("bridges",) if self.edges is None else ("bridges", "swaps")
+    def attempts(self, circuit: Rotations) -> Iterator[tuple[str, tuple[int, ...]]]:
+        """Yield the routings and start layouts to choose from."""
+        layouts = [self.layout]
+        if self.edges is not None and self.hardware.layout == "search":
+            from trueturn.export.placement import searched_layout
 
-    def options(self, routing: str) -> _native.GateOptions:
+            if first_apart(self.qubits, self.edges, self.layout) is not None:
+                layouts.clear()
+            layouts.append(searched_layout(circuit, self.qubits, self.edges))
+        routing = self.hardware.routing
+        routings = (routing,) if routing != "fewest" else ("bridges",) if self.edges is None else ("bridges", "swaps")
+        return ((routing, layout) for layout in dict.fromkeys(layouts) for routing in routings)
+
+    def options(self, routing: str, layout: tuple[int, ...]) -> _native.GateOptions:
         """Return the options for the core."""
         hardware = self.hardware
         return _native.GateOptions(
@@ -149,7 +160,7 @@ class Placed:
             qubits=self.qubits,
             edges=self.edges,
             routing=routing,
-            layout=self.layout,
+            layout=layout,
         )
 
 

@@ -97,8 +97,9 @@ def _head(circuit: Rotations, version: int, comment: str, placed: Placed, cost: 
         " exp(i phase).",
         f"// phase = {phase} radians"
         + ("." if version == 3 else "; OpenQASM 2 leaves the global phase open: not written."),
-        "// Conventions: qubit k of a string is q[k] at the start, and bit k of an amplitude's index; a gate's angle is"
-        " 2 theta.",
+        f"// Qubit k of a string is q[{'k' if placed.is_plain else 'start_layout[k]'}] at the start; an index of"
+        " amplitudes has the first qubit as its lowest bit.",
+        "// rx, ry, rz and rzz are the rotations, by an angle of 2 theta; all other gates are Clifford gates.",
         f"// Ladders: {placed.hardware.ladder}, {placed.hardware.order}. Two-qubit gates: {cost.two_qubit_gates}"
         f" (swaps: {cost.swaps}, three each), depth in them: {cost.two_qubit_depth}.",
     ]
