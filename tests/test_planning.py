@@ -194,6 +194,7 @@ def plan_row(number, given_costs, verdict="meets", trials=()):
         bound_steps_source="",
         overpays=None,
         noise=None,
+        room=verdict == "meets",
         efficient=False,
     )
 
@@ -343,7 +344,22 @@ def test_noise_is_what_failing_gates_of_the_cone_may_add():
         # No more than if every gate of the circuit were in the cone of the observable with the largest norm.
         most = 2.0 * max(norm_bound(one) for one in WATCHED.values()) * (1 - (1 - rate) ** gates)
         assert 0.0 < row.noise <= most * (1 + 1e-9)
-        assert ("failing gates" in row.note) == (row.error[1] + row.noise > 1e-2)
+        assert row.room is (row.error[1] + row.noise <= 1e-2) and row.room is ("failing gates" not in row.note)
+
+
+def test_rows_without_room_for_noise_rank_behind_those_that_have_it_and_are_not_recommended():
+    plain = tt.plan(CHAIN, START, 1.0, FORMULAS, "axis", 1e-2, "observables", WATCHED)
+    seen = set()
+    for rate in (1e-6, 3e-6, 1e-5, 3e-5, 1e-4):
+        found = tt.plan(
+            CHAIN, START, 1.0, FORMULAS, "axis", 1e-2, "observables", WATCHED, device={"two_qubit_error": rate}
+        )
+        rooms = [row.room for row in found.rows]
+        assert rooms == sorted(rooms, reverse=True) and found.verdict == plain.verdict == "meets"
+        assert found.recommended is (found.rows[0] if rooms[0] else None)
+        assert rooms[0] or "has room for the noise" in found.reason
+        seen |= set(rooms)
+    assert seen == {True, False}
 
 
 def test_every_ordering_is_tried_and_named():

@@ -21,7 +21,11 @@ def ranked(rows: Sequence[PlanRow], cost: Sequence[str]) -> list[PlanRow]:
         place = _CLASSES.index(row.verdict)
         if place:
             return place, (row.error[1],)
-        return place, (*(row.costs[name] for name in cost), row.costs["two_qubit_gates"], row.costs["rotations"])
+        return -int(row.room), (
+            *(row.costs[name] for name in cost),
+            row.costs["two_qubit_gates"],
+            row.costs["rotations"],
+        )
 
     return sorted(rows, key=key)
 

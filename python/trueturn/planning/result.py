@@ -43,6 +43,8 @@ class PlanRow(Row):
     noise : float or None
         What failing two-qubit gates may add to the error of an observable, at most, by the model of `trueturn.planning.noise`;
         None without a device that states their rate. Not part of `error` or `verdict`, which are about the ideal circuit.
+    room : bool
+        Meets, and would with `noise` added to the upper end of its error.
     efficient : bool
         Meets, and no other row that meets is at most as costly in every cost of `Plan.compared` and less so in one.
     """
@@ -58,6 +60,7 @@ class PlanRow(Row):
     bound_steps_source: str
     overpays: float | None
     noise: float | None
+    room: bool
     efficient: bool
 
 
@@ -82,7 +85,8 @@ class Plan(Audit):
     """Ways to build a circuit, ranked; made by `plan`.
 
     An `Audit` whose rows stand in the order of their rank: those that meet the tolerance by the first of `cost`, ties by the
-    others; then the undecided, then those that miss, by their error. `recommended` is the first row where it meets.
+    others, first those that have room for the noise of the device; then the undecided, then those that miss, by their error.
+    `recommended` is the first row where it meets and has room.
 
     Attributes
     ----------

@@ -200,7 +200,7 @@ def plan(
     facts: dict[str, Any] = {entry.name: getattr(audited, entry.name) for entry in fields(Audit)}
     facts |= {
         "tolerance": float(tolerance),
-        "recommended": rows[0] if rows[0].verdict == "meets" else None,
+        "recommended": rows[0] if rows[0].room else None,
         "reason": words.reason(rows, names, tolerance),
         "assumptions": (*audited.assumptions, words.budget_words(tolerance, for_synthesis)),
         "cautions": (*words.CAUTIONS, *audited.cautions),

@@ -133,9 +133,10 @@ class Sought:
         }
         steps, source = proven
         noise = None if self.noise is None else self.noise.of(runs.measured[chosen.steps].circuit)
+        room = row.verdict == "meets" and row.error[1] + (noise or 0.0) <= runs.bench.tolerance
         notes = [row.note] if row.note else []
-        if noise is not None and row.verdict == "meets" and row.error[1] + noise > runs.bench.tolerance:
-            notes.append(f"failing gates may add {upper(noise)}, which leaves no room for the error of the circuit")
+        if noise is not None and row.verdict == "meets" and not room:
+            notes.append(f"failing gates may add {upper(noise)}, for which the error leaves no room")
         facts = {entry.name: getattr(row, entry.name) for entry in fields(Row)} | {"note": "; ".join(notes)}
         return PlanRow(
             **facts,
@@ -150,5 +151,6 @@ class Sought:
             bound_steps_source=source,
             overpays=steps / chosen.steps if steps is not None and chosen.verified else None,
             noise=noise,
+            room=room,
             efficient=False,
         )

@@ -55,13 +55,22 @@ def reason(rows: Sequence[PlanRow], cost: Sequence[str], tolerance: float) -> st
             f"No way is shown to meet {plain(tolerance)}; the closest is {best.label} with {steps}, "
             f"whose error is at most {upper(best.error[1])}" + (f" ({best.note})." if best.note else ".")
         )
+    if not best.room:
+        closest = min(
+            (row for row in rows if row.verdict == "meets"), key=lambda row: row.error[1] + (row.noise or 0.0)
+        )
+        return (
+            f"No way that meets {plain(tolerance)} has room for the noise of the device; the closest is {closest.label}, "
+            f"with an error of at most {upper(closest.error[1])} and at most {upper(closest.noise or 0.0)} from failing gates. "
+            "trueturn budget weighs noise against steps."
+        )
     by = cost[0]
     text = f"{best.label} with {steps} meets {plain(tolerance)} with {amount(by, best.costs[by])}"
-    following = next((row for row in rows[1:] if row.verdict == "meets" and row.costs[by] > best.costs[by]), None)
+    following = next((row for row in rows[1:] if row.room and row.costs[by] > best.costs[by]), None)
     if following is not None:
         text += f", the fewest here; next is {following.label} with {amount(by, following.costs[by])}"
     elif len(rows) > 1:
-        equal = sum(row.verdict == "meets" for row in rows) - 1
+        equal = sum(row.room for row in rows) - 1
         text += f"; {equal} more cost the same" if equal else "; no other way meets it"
     return f"{text}."
 

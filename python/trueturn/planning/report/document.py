@@ -86,6 +86,7 @@ def row_data(rank: int, row: PlanRow) -> dict[str, Any]:
         "bound_steps_source": row.bound_steps_source,
         "overpays": number(row.overpays),
         "noise": number(row.noise),
+        "room": row.room,
         "efficient": row.efficient,
     }
 
