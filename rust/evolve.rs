@@ -1,13 +1,17 @@
 //! Applies a circuit to a state vector in place.
 
+use std::f64::consts::FRAC_PI_4;
+
 use num_complex::Complex;
 
 use crate::error::{Error, Result};
+use crate::frame::Frame;
 use crate::kernel::Isa;
 use crate::kernel::carry::Carrier;
 use crate::kernel::lanes::{GROUP_BITS, Real};
 use crate::kernel::shared::Shared;
 use crate::passes::{HighPhase, Pass, PhasePass, plan};
+use crate::relabel;
 use crate::rotations::{Block, Body, Rotations};
 use crate::team::{Control, Run, run, workers_for};
 
@@ -35,7 +39,7 @@ impl<T: Real> Planned<T> {
     }
 }
 
-/// Applies `rotations` and their global phase to `amplitudes`, on up to `threads` workers.
+/// Applies `rotations`, their frame and their global phase to `amplitudes`, on up to `threads` workers.
 ///
 /// Cost: see [`crate::passes`]. The result has the same bits for every number of threads and every instruction set.
 ///
@@ -49,11 +53,17 @@ pub fn evolve<T: Real>(
 ) -> Result<Run> {
     require_length(amplitudes.len(), rotations.qubits())?;
     let isa = Isa::chosen()?;
-    padded(amplitudes, |amplitudes| {
+    let moves = rotations.frame().map_or(&[][..], Frame::relabelling);
+    let trades = relabel::passes(moves);
+    let turned = padded(amplitudes, |amplitudes| {
         let qubits = amplitudes.len().ilog2();
-        let blocks: Vec<Planned<T>> = rotations.blocks().iter().map(|block| Planned::of(qubits, block)).collect();
-        let phase = global_phase(rotations.phase());
-        let passes = blocks.iter().fold(u64::from(phase.is_some()), |sum, block| sum.saturating_add(block.passes()));
+        let last = rotations.frame().map(|frame| Block { body: Body::List(frame.rotations().into()), repeat: 1 });
+        let blocks = rotations.blocks().iter().chain(&last).map(|block| Planned::of(qubits, block));
+        let blocks: Vec<Planned<T>> = blocks.collect();
+        let eighths = rotations.frame().map_or(0, Frame::eighths);
+        let phase = global_phase(rotations.phase() + f64::from(eighths) * FRAC_PI_4);
+        let own = u64::from(phase.is_some()) + trades;
+        let passes = blocks.iter().fold(own, |sum, block| sum.saturating_add(block.passes()));
         control.expect(control.progress().0.saturating_add(passes));
         let workers = workers_for(threads, amplitudes.len());
         let state = Shared::new(amplitudes);
@@ -62,7 +72,9 @@ pub fn evolve<T: Real>(
             carry_out(&mut carrier, &blocks)?;
             phase.as_ref().map_or(Ok(()), |phase| carrier.pass(phase))
         })
-    })
+    })?;
+    relabel::relabel(amplitudes, moves, control)?;
+    Ok(Run { passes: turned.passes + trades, ..turned })
 }
 
 /// exp(i phase) as a pass, or None for phase 0.

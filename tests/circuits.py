@@ -16,7 +16,7 @@ P3 = tt.Partition(P3_PARTS)
 
 
 def matrix(rotations):
-    """Multiply the rotations out, first in time rightmost, with the phase."""
+    """Multiply the rotations out, first in time rightmost, with the phase and the frame."""
     total = np.exp(1j * rotations.phase) * np.eye(2**rotations.qubits)
     for block in rotations.blocks:
         if len(block.rotations.blocks) == 1 and block.rotations.blocks[0].repeat == 1:
@@ -27,7 +27,18 @@ def matrix(rotations):
         else:
             once = matrix(block.rotations)
         total = np.linalg.matrix_power(once, block.repeat) @ total
-    return total
+    if rotations.frame.count or rotations.frame.phase:
+        total = matrix(rotations.frame) @ total
+    return relabelling_matrix(rotations.relabelling) @ total
+
+
+def relabelling_matrix(moves):
+    """Send qubit q to `moves[q]`."""
+    size = 2 ** len(moves)
+    made = np.zeros((size, size))
+    for index in range(size):
+        made[sum((index >> qubit & 1) << target for qubit, target in enumerate(moves)), index] = 1.0
+    return made
 
 
 def plain(formula, partition, time, steps):

@@ -10,6 +10,7 @@ from trueturn.comparison import Comparison, compare
 from trueturn.device import Budget, CausalCone, causal_cone, device_budget
 from trueturn.driven import Driven, DrivenReference, driven_reference
 from trueturn.error_saving import Improved
+from trueturn.export import Cost, CostTable, compare_costs
 from trueturn.extrapolation import Extrapolation, extrapolate, multiproduct_weights, well_conditioned_steps
 from trueturn.formulas import Formula, formula, formulas, read_formulas
 from trueturn.formulas.processed import Processed
@@ -34,6 +35,8 @@ __all__ = [
     "CausalCone",
     "Certificate",
     "Comparison",
+    "Cost",
+    "CostTable",
     "Driven",
     "DrivenReference",
     "Extrapolation",
@@ -58,6 +61,7 @@ __all__ = [
     "build_info",
     "causal_cone",
     "compare",
+    "compare_costs",
     "device_budget",
     "driven",
     "driven_reference",

@@ -7,6 +7,7 @@ import numpy as np
 import numpy.typing as npt
 
 __all__ = [
+    "GateOptions",
     "Rotations",
     "Terms",
     "application_rounding",
@@ -15,10 +16,13 @@ __all__ = [
     "distance",
     "evolve",
     "expectation",
+    "gate_counts",
+    "global_phase",
     "instruction_sets",
     "overlap",
     "pairwise_sum",
     "squared_norms",
+    "write_gates",
 ]
 
 @final
@@ -66,6 +70,15 @@ class Rotations:
     def count(self) -> int: ...
     def then(self, next: Rotations) -> Rotations: ...
     def times(self, repeat: int) -> Rotations: ...
+    def with_frame(
+        self,
+        x: Sequence[int],
+        z: Sequence[int],
+        turns: Sequence[int],
+        eighths: int,
+        relabelling: Sequence[int],
+    ) -> Rotations: ...
+    def frame(self) -> tuple[Rotations, list[int]] | None: ...
     def inverse(self) -> Rotations: ...
     def same_as(self, other: Rotations) -> bool: ...
     def blocks(self) -> list[tuple[Rotations, int]]: ...
@@ -75,6 +88,26 @@ class Rotations:
     def two_qubit_depth(self) -> int: ...
     def angle_sum(self) -> float: ...
     def joined_angle_sum(self) -> float: ...
+
+@final
+class GateOptions:
+    def __new__(
+        cls,
+        shape: str,
+        order: str,
+        join: bool,
+        native: str,
+        qubits: int,
+        edges: Sequence[tuple[int, int]] | None,
+        routing: str,
+        layout: Sequence[int],
+    ) -> GateOptions: ...
+
+_Counts = tuple[int, int, int, int, int, int, int, int, int]
+
+def gate_counts(circuit: Rotations, options: GateOptions) -> tuple[_Counts, list[int]]: ...
+def write_gates(circuit: Rotations, options: GateOptions, loops: bool, write: Callable[[str], object]) -> None: ...
+def global_phase(circuit: Rotations) -> float: ...
 
 _Progress = Callable[[int, int], object]
 

@@ -17,6 +17,9 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
+from trueturn.commands.circuits import cost, export
+from trueturn.commands.options import AS_JSON, JOB, THREADS
+
 if TYPE_CHECKING:
     from trueturn.audit.job import Job, Progress
     from trueturn.partition import Partition
@@ -26,11 +29,6 @@ __all__ = ["commands", "main", "run"]
 
 STATUS = {"meets": 0, "misses": 1, "undecided": 4}
 BAD_INPUT, NO_MEMORY, BUG, INTERRUPTED = 2, 3, 70, 130
-JOB = click.Path(path_type=Path)
-THREADS = click.option(
-    "--threads", type=click.IntRange(min=1), metavar="N", help="Threads to use; results do not depend on it."
-)
-AS_JSON = click.option("--json", "as_json", is_flag=True, help="Print one JSON object and nothing else.")
 
 
 @click.group(context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100})
@@ -40,6 +38,10 @@ def commands() -> None:
 
     Exit status: 0 meets, 1 misses, 4 undecided, 2 bad input, 3 refused for memory, 130 interrupted.
     """
+
+
+commands.add_command(cost)
+commands.add_command(export)
 
 
 @commands.command()

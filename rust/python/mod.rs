@@ -2,6 +2,7 @@
 
 mod arrays;
 mod error;
+pub mod gates;
 mod gateway;
 pub mod rotations;
 pub mod state;
@@ -12,6 +13,8 @@ use pyo3::prelude::*;
 /// The compiled core of trueturn; users import `trueturn`, never this.
 #[pymodule]
 mod _native {
+    #[pymodule_export]
+    use super::gates::{PyGateOptions, gate_counts, global_phase, write_gates};
     #[pymodule_export]
     use super::rotations::PyRotations;
     #[pymodule_export]

@@ -251,7 +251,7 @@ def parse_job(text: str, path: Path | None, candidates_required: bool) -> Job:
         most_steps=run.whole("most_steps", "most_steps = 100000") if "most_steps" in run else 1_000_000,
         title=run.text("title", 'title = "My quench"') if "title" in run else (path.stem if path else ""),
         energy_unit=run.text("energy_unit", 'energy_unit = "J"') if "energy_unit" in run else "",
-        device=read_device(file),
+        device=read_device(file, operator.qubits),
     )
 
 
