@@ -3,7 +3,7 @@
 from trueturn import driven, errors, lattice, model, randomised
 from trueturn._build import build_info
 from trueturn._threads import threads
-from trueturn.accuracy import Bound, bound
+from trueturn.accuracy import Bound, bound, steps_by_bound
 from trueturn.adaptive import AdaptiveRun, adaptive
 from trueturn.audit import Audit, Candidate, audit
 from trueturn.comparison import Comparison, compare
@@ -78,6 +78,7 @@ __all__ = [
     "reference",
     "saved_gates",
     "step_scaling",
+    "steps_by_bound",
     "symmetries",
     "threads",
     "well_conditioned_steps",
