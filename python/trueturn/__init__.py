@@ -19,6 +19,7 @@ from trueturn.formulas.search_target import Instance, Target
 from trueturn.ladders import saved_gates
 from trueturn.operator import Operator
 from trueturn.partition import Partition
+from trueturn.planning import Plan, PlanRow, plan
 from trueturn.reference import Certificate, Reference, reference
 from trueturn.rotations import Rotations
 from trueturn.scaling import Case, PowerLaw, Scaling, fit_steps, step_scaling
@@ -46,6 +47,8 @@ __all__ = [
     "Instance",
     "Operator",
     "Partition",
+    "Plan",
+    "PlanRow",
     "PowerLaw",
     "Processed",
     "Reference",
@@ -73,6 +76,7 @@ __all__ = [
     "lattice",
     "model",
     "multiproduct_weights",
+    "plan",
     "randomised",
     "read_formulas",
     "reference",

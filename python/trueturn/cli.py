@@ -79,6 +79,41 @@ def audit(job: Path | None, into: Path | None, as_json: bool, threads: int | Non
 
 @commands.command()
 @click.argument("job", type=JOB)
+@click.option("--into", type=JOB, metavar="FOLDER", help="Write plan.html, plan.json and plan.csv there.")
+@AS_JSON
+@THREADS
+def plan(job: Path, into: Path | None, as_json: bool, threads: int | None) -> int:
+    """Find the least steps of every formula and rule of JOB, and rank them by cost.
+
+    The section [plan] says what is searched and what counts; without it, the formulas and rules of the candidates. Ctrl-C
+    ends the search with the best so far.
+    """
+    from trueturn.audit.job import read_job
+    from trueturn.planning.report import require_replaceable, terminal_table, to_dict
+
+    task = read_job(job, candidates_required=False)
+    if into is not None:
+        require_replaceable(into)
+    with progress_bar() as progress:
+        found = task.plan(threads=threads, progress=progress)
+    if as_json:
+        say_json(to_dict(found))
+    else:
+        say_rich(lambda width: terminal_table(found, width))
+    if into is not None:
+        found.write(into)
+        if not as_json:
+            say(f"Report: {into / 'plan.html'}")
+    elif not as_json:
+        say("For the report with pictures, add: --into FOLDER")
+    if found.interrupted:
+        print("trueturn: interrupted", file=sys.stderr)
+        return INTERRUPTED
+    return STATUS[found.verdict]
+
+
+@commands.command()
+@click.argument("job", type=JOB)
 @AS_JSON
 @THREADS
 def reference(job: Path, as_json: bool, threads: int | None) -> int:

@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import re
 import tomllib
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from importlib import resources
 from itertools import pairwise
@@ -28,11 +28,13 @@ from trueturn.partition_rules import RULES
 
 if TYPE_CHECKING:
     from trueturn.audit.result import Audit
+    from trueturn.planning.job import PlanTask
+    from trueturn.planning.result import Plan
     from trueturn.reference import Reference
 
 __all__ = ["Job", "built_in_job", "read_job", "template"]
 
-SECTIONS = ("system", "start", "target", "candidate", "device", "reference", "output", "run")
+SECTIONS = ("system", "start", "target", "candidate", "plan", "device", "reference", "output", "run")
 METHODS = ("chebyshev", "krylov", "dense")
 EXAMPLE_CANDIDATE = '[[candidate]] with formula = "strang", rule = "commuting", steps = "least"'
 
@@ -60,6 +62,8 @@ class Job:
     observables : mapping of str to Operator
     candidates : tuple of Candidate
         Empty only when read with ``candidates_required=False``.
+    planned : PlanTask or None
+        What `[plan]` asks for; without it the formulas and rules of the candidates. None where there is neither.
     reference_tolerance : float or None
         None leaves the choice to `trueturn.audit.run.audit`.
     reference_method : str
@@ -83,6 +87,7 @@ class Job:
     relative_to: str | None
     observables: Mapping[str, Operator]
     candidates: tuple[Candidate, ...]
+    planned: PlanTask | None
     reference_tolerance: float | None
     reference_method: str
     folder: Path | None
@@ -116,6 +121,48 @@ class Job:
             self.tolerance,
             quantity=self.quantity,
             observables=self.observables,
+            readout=self.readout,
+            relative_to=self.relative_to,
+            reference_tolerance=self.reference_tolerance,
+            reference_method=self.reference_method,
+            most_steps=self.most_steps,
+            threads=self.threads if threads is None else threads,
+            progress=progress,
+            title=self.title,
+            start=self.start.words,
+            energy_unit=self.energy_unit,
+        )
+
+    def plan(self, threads: int | None = None, progress: Progress | None = None) -> Plan:
+        """Search the ways of `planned` for their least step counts; the parameters are those of `audit`.
+
+        Raises
+        ------
+        JobError
+            There is nothing to search: neither `[plan]` nor a candidate.
+        """
+        from trueturn.planning.run import plan
+
+        task = self.planned
+        if task is None:
+            raise JobError(
+                'plan: missing; add a section [plan] with formulas = ["strang", "suzuki-4"], or candidates',
+                path=str(self.path or ""),
+                key="plan",
+            )
+        return plan(
+            self.operator,
+            self.start.state(),
+            self.times,
+            task.formulas,
+            task.rules,
+            self.tolerance,
+            quantity=self.quantity,
+            observables=self.observables,
+            orderings=task.orderings,
+            cost=task.cost,
+            synthesis_error=task.synthesis_error,
+            thorough=task.thorough,
             readout=self.readout,
             relative_to=self.relative_to,
             reference_tolerance=self.reference_tolerance,
@@ -225,6 +272,7 @@ def parse_job(text: str, path: Path | None, candidates_required: bool) -> Job:
         raise target.error("observables", "missing", remedy)
 
     candidates = read_candidates(file, operator, folder, candidates_required)
+    planned = read_planned(file, operator, tolerance, folder, candidates)
     reference = Table(file.table("reference").values if "reference" in file else {}, "reference", shown)
     reference.only(("tolerance", "method"))
     output = Table(file.table("output").values if "output" in file else {}, "output", shown)
@@ -242,6 +290,7 @@ def parse_job(text: str, path: Path | None, candidates_required: bool) -> Job:
         relative_to=relative_to,
         observables=observables,
         candidates=candidates,
+        planned=planned,
         reference_tolerance=(
             reference.positive("tolerance", "tolerance = 1e-10") if "tolerance" in reference else None
         ),
@@ -320,7 +369,7 @@ def read_candidates(file: Table, operator: Operator, folder: Path, required: boo
         section = Table(entry, f"candidate[{index}]", file.path)
         section.only(("formula", "formula_file", "rule", "steps"))
         name = section.text("formula", 'formula = "strang"')
-        chosen = own_formula(section, name, folder) if "formula_file" in section else known_formula(section, name)
+        chosen = find_formula(section, "formula", name, folder)
         rule = section.choice("rule", tuple(RULES), default="commuting")
         candidate = Candidate(chosen, rule=rule, steps=read_steps(section))
         with section.blame("rule"):
@@ -329,15 +378,31 @@ def read_candidates(file: Table, operator: Operator, folder: Path, required: boo
     return tuple(candidates)
 
 
-def known_formula(section: Table, name: str) -> Formula:
-    """Find a formula by name; an unknown one is refused with the nearest that is known."""
+def read_planned(
+    file: Table, operator: Operator, tolerance: float, folder: Path, candidates: Sequence[Candidate]
+) -> PlanTask | None:
+    """Read `[plan]`, or make a plan of the candidates, if there are any."""
+    from trueturn.planning.job import plan_of_candidates, read_plan
+
+    if "plan" in file:
+        return read_plan(file.table("plan"), operator, tolerance, folder, find_formula)
+    return plan_of_candidates(candidates) if candidates else None
+
+
+def find_formula(section: Table, key: str, name: str, folder: Path) -> Formula:
+    """Find the formula that a key names: in the file of `formula_file`, where there is one, else by its name.
+
+    An unknown one is refused with the nearest that is known.
+    """
+    if "formula_file" in section:
+        return own_formula(section, key, name, folder)
     try:
         return formula(name)
     except FormulaError as error:
-        raise section.error("formula", "unknown", nearest(name, formulas(special=True)), name) from error
+        raise section.error(key, "unknown", nearest(name, formulas(special=True)), name) from error
 
 
-def own_formula(section: Table, name: str, folder: Path) -> Formula:
+def own_formula(section: Table, key: str, name: str, folder: Path) -> Formula:
     """Find a formula in the file that `formula_file` names; what is wrong in there is told with its own key."""
     file = section.text("formula_file", 'formula_file = "mine.toml"')
     try:
@@ -346,7 +411,7 @@ def own_formula(section: Table, name: str, folder: Path) -> Formula:
         full = section.full("formula_file")
         raise JobError(f"{full}: {file}: {error}", path=section.path, key=full) from error
     if name not in found:
-        raise section.error("formula", f"not in {file}", nearest(name, tuple(found)), name)
+        raise section.error(key, f"not in {file}", nearest(name, tuple(found)), name)
     return found[name]
 
 

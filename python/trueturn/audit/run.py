@@ -4,20 +4,19 @@ from __future__ import annotations
 
 import math
 import time as clock
-from collections.abc import Callable, Iterable, Mapping, Sequence
+from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import dataclass
 from numbers import Real
 
 from trueturn import _memory, _threads
 from trueturn._observables import named_operators
-from trueturn.accuracy.bounds import bound
 from trueturn.audit import words
 from trueturn.audit.candidate import Candidate
-from trueturn.audit.measure import Bench, Measured
-from trueturn.audit.result import Audit, Row, Trial
-from trueturn.audit.search import least_steps
+from trueturn.audit.measure import Bench
+from trueturn.audit.result import Audit, Row
+from trueturn.audit.runs import Chosen, Runs
 from trueturn.audit.truth import Progress, positive_times, reference_for
-from trueturn.errors import ArgumentError, AuditError, FormulaError, ToleranceError
-from trueturn.formulas import Formula
+from trueturn.errors import ArgumentError, AuditError, ToleranceError
 from trueturn.operator import Operator
 from trueturn.partition import Partition
 from trueturn.state import State, require_same_qubits
@@ -110,11 +109,112 @@ def audit(
     'meets'
     """
     began = clock.perf_counter()
+    setting = prepare(
+        operator,
+        state,
+        times,
+        candidates,
+        tolerance,
+        quantity,
+        observables,
+        readout,
+        relative_to=relative_to,
+        reference_tolerance=reference_tolerance,
+        reference_method=reference_method,
+        most_steps=most_steps,
+        threads=threads,
+        progress=progress,
+    )
+    seconds = {"reference": clock.perf_counter() - began}
+    rows = []
+    for number, (candidate, partition) in enumerate(zip(candidates, setting.partitions, strict=True)):
+        started = clock.perf_counter()
+
+        def tell(steps: int, candidate: Candidate = candidate, number: int = number) -> None:
+            if progress is not None:
+                progress(f"{candidate.label}: {steps} steps", number, len(candidates))
+
+        runs = Runs(setting.bench, candidate, partition)
+        if isinstance(candidate.steps, int):
+            tell(candidate.steps)
+            runs.run(candidate.steps)
+            chosen = Chosen(candidate.steps)
+        else:
+            chosen = runs.search(most_steps, tell)
+        rows.append(runs.row(chosen))
+        seconds[f"candidate {number + 1}"] = clock.perf_counter() - started
+    if progress is not None:
+        progress("done", len(candidates), len(candidates))
+    return setting.concluded(rows, seconds, title=title, start=start, energy_unit=energy_unit)
+
+
+@dataclass(frozen=True)
+class Setting:
+    """What candidates are judged against: all of an audit but its rows."""
+
+    bench: Bench
+    operator: Operator
+    partitions: tuple[Partition, ...]
+
+    def concluded(
+        self, rows: Sequence[Row], seconds: Mapping[str, float], *, title: str, start: str, energy_unit: str
+    ) -> Audit:
+        """Put the rows, at least one, and all that is said about them together."""
+        bench, truth = self.bench, self.bench.reference
+        recommended, reason = words.recommendation(rows, bench.tolerance)
+        verdicts = {row.verdict for row in rows}
+        return Audit(
+            rows=tuple(rows),
+            recommended=recommended,
+            reason=reason,
+            verdict=next(verdict for verdict in ("meets", "undecided", "misses") if verdict in verdicts),
+            reference=truth,
+            quantity=bench.quantity,
+            tolerance=bench.tolerance,
+            relative_to=bench.relative_to,
+            times=tuple(bench.times),
+            readout=bench.readout,
+            observables=bench.observables,
+            operator=self.operator,
+            start=start or f"a given state vector of {bench.start.qubits} qubits",
+            title=title,
+            energy_unit=energy_unit,
+            assumptions=words.assumptions(bench.start, bench.readout, bench.relative_to),
+            proven=words.proven(truth),
+            measured=words.measured(bench.quantity, truth.certificate.proven),
+            cautions=words.CAUTIONS,
+            seconds=seconds,
+        )
+
+
+def prepare(
+    operator: Operator,
+    state: State,
+    times: float | Iterable[float],
+    candidates: Sequence[Candidate],
+    tolerance: float,
+    quantity: str,
+    observables: Mapping[str, Operator] | None,
+    readout: str,
+    *,
+    relative_to: str | None,
+    reference_tolerance: float | None,
+    reference_method: str,
+    most_steps: int,
+    threads: int | None,
+    progress: Progress | None,
+    partitions: Sequence[Partition] | None = None,
+) -> Setting:
+    """Check everything that `audit` takes, and compute the reference; parameters and errors are those of `audit`.
+
+    `partitions` are those of the candidates, where they are known.
+    """
     watched = named_operators(observables)
     asked = sorted(set(positive_times(times)))
     _check(operator, state, candidates, tolerance, quantity, watched, readout, relative_to, most_steps)
     workers = _threads.resolve(threads)
-    partitions = [candidate.partition(operator) for candidate in candidates]
+    if partitions is None:
+        partitions = [candidate.partition(operator) for candidate in candidates]
     _memory.require(
         (2 + (len(asked) if quantity == "state" else 1)) * (16 << state.qubits),
         "audit",
@@ -132,107 +232,8 @@ def audit(
         threads=workers,
         progress=progress,
     )
-    seconds = {"reference": clock.perf_counter() - began}
     bench = Bench(state, asked, truth, tolerance, quantity, watched, relative_to, readout, workers)
-    rows = []
-    for number, (candidate, partition) in enumerate(zip(candidates, partitions, strict=True)):
-        started = clock.perf_counter()
-
-        def tell(steps: int, candidate: Candidate = candidate, number: int = number) -> None:
-            if progress is not None:
-                progress(f"{candidate.label}: {steps} steps", number, len(candidates))
-
-        rows.append(_row(bench, candidate, partition, most_steps, tell))
-        seconds[f"candidate {number + 1}"] = clock.perf_counter() - started
-    if progress is not None:
-        progress("done", len(candidates), len(candidates))
-    recommended, reason = words.recommendation(rows, tolerance)
-    verdicts = {row.verdict for row in rows}
-    return Audit(
-        rows=tuple(rows),
-        recommended=recommended,
-        reason=reason,
-        verdict=next(verdict for verdict in ("meets", "undecided", "misses") if verdict in verdicts),
-        reference=truth,
-        quantity=quantity,
-        tolerance=tolerance,
-        relative_to=relative_to,
-        times=tuple(asked),
-        readout=readout,
-        observables=watched,
-        operator=operator,
-        start=start or f"a given state vector of {state.qubits} qubits",
-        title=title,
-        energy_unit=energy_unit,
-        assumptions=words.assumptions(state, readout, relative_to),
-        proven=words.proven(truth),
-        measured=words.measured(quantity, truth.certificate.proven),
-        cautions=words.CAUTIONS,
-        seconds=seconds,
-    )
-
-
-def _row(bench: Bench, candidate: Candidate, partition: Partition, most_steps: int, tell: Callable[[int], None]) -> Row:
-    runs: dict[int, Measured] = {}
-
-    def run(steps: int) -> Trial:
-        tell(steps)
-        runs[steps] = bench.measure(candidate, partition, steps)
-        return runs[steps].trial
-
-    note = ""
-    accidental: tuple[int, ...] = ()
-    if isinstance(candidate.steps, int):
-        run(candidate.steps)
-        steps = candidate.steps
-    else:
-        unit = bench.step_unit()
-        if most_steps < unit:
-            raise AuditError(
-                f"most_steps: below the coarsest grid that meets every time ({most_steps}); give {unit} or more",
-                reason="most_steps below the grid",
-                limit=unit,
-            )
-        found = least_steps(run, bench.tolerance, candidate.formula.order, unit=unit, most_steps=most_steps)
-        steps, accidental = found.steps, found.accidental
-        note = words.search_note(found, bench.tolerance, most_steps)
-    chosen = runs[steps]
-    limit, source = _bound(bench, candidate, partition, steps)
-    return Row(
-        candidate=candidate,
-        label=candidate.label,
-        steps=steps,
-        error=chosen.trial.error,
-        bound=limit,
-        bound_source=source,
-        rotations=chosen.circuit.count,
-        two_qubit_gates=chosen.trial.two_qubit_gates,
-        depth=chosen.circuit.depth(),
-        verdict=chosen.trial.verdict,
-        rounding=chosen.rounding,
-        points=chosen.points,
-        trials=tuple(runs[count].trial for count in sorted(runs)),
-        accidental=accidental,
-        note=note,
-    )
-
-
-def _bound(bench: Bench, candidate: Candidate, partition: Partition, steps: int) -> tuple[float | None, str]:
-    """Return a proven bound on the row's error and its source, or None and the reason."""
-    try:
-        if not isinstance(candidate.formula, Formula):
-            return None, f"no theorem at hand covers {candidate.formula.name}"
-        found = bound(candidate.formula, partition, bench.times[-1], steps)
-    except FormulaError:
-        return None, f"no theorem at hand covers {candidate.formula.name}"
-    source = f"{found.theorem}, {found.source}"
-    if bench.quantity == "state":
-        return (found.value, source) if found.value < 2.0 else (2.0, "no two unit vectors are further apart")
-    # |<O>_S - <O>| ≤ 2 ‖O‖ ‖S - U‖ for unitary S and U, the identity removed; and never more than 2 ‖O‖.
-    largest = 1.0 if bench.relative_to == "norm" else max(bench.norms.values())
-    if found.value >= 1.0:
-        return 2.0 * largest, "no two values of the observable are further apart"
-    return 2.0 * largest * found.value, f"{source}, times twice the observable's norm"
+    return Setting(bench, operator, tuple(partitions))
 
 
 def _check(

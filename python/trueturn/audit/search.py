@@ -13,6 +13,10 @@ __all__ = ["Search", "least_steps"]
 # Past the answer r the search looks at r + 1, about √2 r and 2 r, in units of the readout grid.
 _PROBES = (math.sqrt(2.0), 2.0)
 _FASTEST_GROWTH = 8.0
+_FARTHEST_JUMP = 512.0
+# Within this of a whole number, the slope through the last two failures shows the order at which the error falls here: the
+# claimed one, or a higher one for a state or an observable that does not see the leading error.
+_WHOLE = 0.05
 
 
 @dataclass(frozen=True)
@@ -62,8 +66,9 @@ def least_steps(
 
     Notes
     -----
-    Runs cost in proportion to their steps. Counts grow towards the predicted answer by at most 8 times a run; near the
-    answer the two nearest trials are interpolated. A typical search costs 7 to 9 times one run at the answer, most of
+    Runs cost in proportion to their steps. Counts grow towards the predicted answer by at most 8 times a run until the
+    fitted order is a whole number not below the claimed one, then straight to it (by at most 512 times); near the answer
+    the two nearest trials are interpolated. A typical search costs 7 to 9 times one run at the answer, most of
     it for the look at [r, 2r] that the definition asks for.
     """
     return _Searcher(run, tolerance, order, unit, max(1, most_steps // unit), max(1, first // unit)).search()
@@ -121,8 +126,20 @@ class _Searcher:
 
     def _predicted(self, count: int) -> int:
         error = max(self.trials[count].error[1], self.tolerance)
-        factor: float = min(_FASTEST_GROWTH, (error / self.tolerance) ** (1.0 / self.order))
+        order, fastest = self._fitted(count)
+        factor: float = min(fastest, (error / self.tolerance) ** (1.0 / order))
         return max(count + 1, math.ceil(count * factor))
+
+    def _fitted(self, count: int) -> tuple[float, float]:
+        """Return the order to extrapolate with from a failing count, and how far at most."""
+        before = max((c for c in self.trials if c < count), default=0)
+        if before and self.trials[count].error[0] > 0.0:
+            drop = self.trials[before].error[1] / self.trials[count].error[1]
+            slope = math.log(drop) / math.log(count / before)
+            order = round(slope)
+            if order >= self.order and abs(slope / order - 1.0) < _WHOLE:
+                return order, _FARTHEST_JUMP
+        return self.order, _FASTEST_GROWTH
 
     def _narrow(self, failing: int, passing: int) -> int:
         """Return the end of the interval (failing, passing] where a failing count is followed by a passing one."""

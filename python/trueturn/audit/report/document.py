@@ -7,7 +7,7 @@ import hashlib
 import io
 import json
 import math
-from collections.abc import Iterable, Mapping
+from collections.abc import Iterable, Mapping, Sequence
 from typing import TYPE_CHECKING, Any
 
 from trueturn._build import build_info
@@ -17,7 +17,7 @@ if TYPE_CHECKING:
     from trueturn.audit.result import Audit, PointError, Row, Trial
     from trueturn.operator import Operator
 
-__all__ = ["SCHEMA", "build_facts", "csv_text", "json_text", "to_dict"]
+__all__ = ["COLUMNS", "SCHEMA", "build_facts", "csv_text", "json_text", "record", "row_data", "to_dict", "written"]
 
 SCHEMA = 1
 TERMS_IN_FULL = 20_000
@@ -204,21 +204,30 @@ def json_text(document: Mapping[str, Any]) -> str:
 
 def csv_text(audit: Audit) -> str:
     """Write one line a candidate, with a heading."""
+    return written([record(audit, row) for row in audit.rows], COLUMNS)
+
+
+def record(audit: Audit, row: Row) -> dict[str, Any]:
+    """Give one candidate's line of the table."""
+    worst = words.worst(row)
+    found = row_data(row)
+    low, high = found["error"]
+    return found | {
+        "error_low": low,
+        "error_high": high,
+        "tolerance": audit.tolerance,
+        "recommended": "yes" if row is audit.recommended else "no",
+        "worst_figure": worst.name if worst else "",
+        "worst_time": worst.time if worst else "",
+        "accidental_steps": " ".join(map(str, row.accidental)),
+    }
+
+
+def written(records: Iterable[Mapping[str, Any]], columns: Sequence[str]) -> str:
+    """Write records as lines of a CSV table with a heading; what does not exist stays empty."""
     page = io.StringIO()
-    writer = csv.DictWriter(page, COLUMNS, lineterminator="\n")
+    writer = csv.DictWriter(page, columns, lineterminator="\n")
     writer.writeheader()
-    for row in audit.rows:
-        record = row_data(row)
-        worst = words.worst(row)
-        low, high = record["error"]
-        record |= {
-            "error_low": low,
-            "error_high": high,
-            "tolerance": audit.tolerance,
-            "recommended": "yes" if row is audit.recommended else "no",
-            "worst_figure": worst.name if worst else "",
-            "worst_time": worst.time if worst else "",
-            "accidental_steps": " ".join(map(str, row.accidental)),
-        }
-        writer.writerow({key: "" if record[key] is None else record[key] for key in COLUMNS})
+    for line in records:
+        writer.writerow({key: "" if line[key] is None else line[key] for key in columns})
     return page.getvalue()

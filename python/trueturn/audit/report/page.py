@@ -26,7 +26,18 @@ if TYPE_CHECKING:
     from trueturn.audit.result import Audit, Row
     from trueturn.operator import Operator
 
-__all__ = ["page"]
+__all__ = [
+    "class_of",
+    "closing",
+    "complete",
+    "framed",
+    "listing",
+    "page",
+    "section",
+    "small",
+    "system_words",
+    "verdict",
+]
 
 TERMS_SHOWN = 24
 POLICY = "default-src 'none'; style-src 'unsafe-inline'"
@@ -54,7 +65,22 @@ def page(audit: Audit) -> str:
     str
         A complete HTML document.
     """
-    title = audit.title or "Audit"
+    subtitle = f"Product-formula circuits against a certified reference: {system_words(audit)}."
+    return complete(
+        audit.title or "Audit",
+        subtitle,
+        [
+            verdict(audit),
+            section("Candidates", table(audit)),
+            section("Error and cost", trials(audit)),
+            section("Over time", over_time(audit)),
+            *closing(audit),
+        ],
+    )
+
+
+def complete(title: str, subtitle: str, sections: Iterable[str]) -> str:
+    """Make a complete HTML document of a title and sections."""
     style = resources.files("trueturn.audit.report").joinpath("page.css").read_text(encoding="utf-8")
     parts = [
         '<!DOCTYPE html>\n<html lang="en">\n<head>\n<meta charset="utf-8"/>',
@@ -62,19 +88,22 @@ def page(audit: Audit) -> str:
         f'<meta http-equiv="Content-Security-Policy" content="{POLICY}"/>',
         f"<title>{escape(title)}</title>\n<style>\n{style}</style>\n</head>\n<body>",
         f"<header>\n<h1>{escape(title)}</h1>",
-        f'<p class="sub">Product-formula circuits against a certified reference: {system_words(audit)}.</p>',
+        f'<p class="sub">{escape(subtitle)}</p>',
         "</header>\n<main>",
-        verdict(audit),
-        section("Candidates", table(audit)),
-        section("Error and cost", trials(audit)),
-        section("Over time", over_time(audit)),
+        *sections,
+        "</main>\n</body>\n</html>\n",
+    ]
+    return "\n".join(parts)
+
+
+def closing(audit: Audit) -> list[str]:
+    """Write the sections that every report ends with: what it rests on, and what is needed to make it again."""
+    return [
         section("What the verdict rests on", grounds(audit)),
         section("Reference and certificate", certificate(audit)),
         section("Inputs", inputs(audit)),
         section("Made with", made_with(audit)),
-        "</main>\n</body>\n</html>\n",
     ]
-    return "\n".join(parts)
 
 
 def section(heading: str, body: str) -> str:
@@ -88,11 +117,11 @@ def system_words(audit: Audit) -> str:
     return f"{audit.operator.qubits} qubits, {count(terms)} terms"
 
 
-def verdict(audit: Audit) -> str:
-    """Write the answer."""
+def verdict(audit: Audit, headline: str | None = None) -> str:
+    """Write the answer; `headline` stands for the one of an audit."""
     return (
         f'<div class="verdict {escape(audit.verdict)}">\n'
-        f"<p><strong>{escape(audit.verdict)}</strong> – {escape(words.headline(audit))}.</p>\n"
+        f"<p><strong>{escape(audit.verdict)}</strong> – {escape(headline or words.headline(audit))}.</p>\n"
         f'<p class="run">{escape(words.recommendation(audit))}</p>\n'
         f'<p class="small">{escape(words.HARDWARE)}</p>\n</div>'
     )

@@ -6,6 +6,7 @@ rotations, and where the error is largest) moves to a second line, so that eight
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from io import StringIO
 from textwrap import wrap
 from typing import TYPE_CHECKING
@@ -19,7 +20,18 @@ from trueturn.audit.report import words
 if TYPE_CHECKING:
     from trueturn.audit.result import Audit, Row
 
-__all__ = ["plain_table", "terminal_table"]
+__all__ = [
+    "GAP",
+    "MARKS",
+    "STYLES",
+    "aligned",
+    "column_widths",
+    "names",
+    "plain_table",
+    "plain_text",
+    "terminal_table",
+    "total_width",
+]
 
 MARKS = {"meets": "✓", "misses": "✗", "undecided": "?"}
 STYLES = {"meets": "bold green", "misses": "bold red", "undecided": "bold yellow"}
@@ -41,9 +53,14 @@ def plain_table(audit: Audit, width: int = 100) -> str:
     -------
     str
     """
+    return plain_text(terminal_table(audit, width), width)
+
+
+def plain_text(laid_out: RenderableType, width: int) -> str:
+    """Write what was laid out for a terminal as plain text."""
     page = StringIO()
     console = Console(file=page, width=width, color_system=None, force_terminal=False, legacy_windows=False)
-    console.print(terminal_table(audit, width))
+    console.print(laid_out)
     return "\n".join(line.rstrip() for line in page.getvalue().splitlines())
 
 
@@ -134,11 +151,11 @@ def total_width(heads: list[str], cells: list[list[str]]) -> int:
     return sum(widths) + GAP * (len(widths) - 1)
 
 
-def aligned(line: list[str], widths: list[int], styles: list[str]) -> Text:
+def aligned(line: list[str], widths: list[int], styles: list[str], counts: Sequence[int] = COUNTS) -> Text:
     """Set the cells of a line in their columns: counts to the right, the rest to the left."""
     text = Text()
     for index, (cell, width, style) in enumerate(zip(line, widths, styles, strict=True)):
-        right = index in COUNTS and index != len(line) - 1
+        right = index in counts and index != len(line) - 1
         text.append(cell.rjust(width) if right else cell.ljust(width), style=style)
         if index < len(line) - 1:
             text.append(" " * GAP)
