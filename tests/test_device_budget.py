@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import math
+import re
 
 import numpy as np
 import pytest
@@ -13,6 +14,7 @@ from hypothesis import strategies as st
 import circuits
 import oracle
 import trueturn as tt
+from trueturn.device.algorithmic import ErrorLaw, Measurements
 from trueturn.device.shares import gate_share
 from trueturn.errors import ArgumentError, FormulaError, OperatorError, StateShapeError
 
@@ -166,6 +168,27 @@ def test_measured_errors_are_those_of_dense_matrices_and_the_total_covers_them()
         assert row.gates == pytest.approx(found.width * gate_share(row.gates_in_cone, 3e-5), rel=1e-12)
         assert row.gates_in_cone <= row.two_qubit_gates
     assert list(found.rows) == sorted(found.rows, key=lambda row: row.total)
+
+
+def test_a_fitted_law_lies_above_the_points_that_it_was_fitted_to():
+    measurements = Measurements(CHAIN, START, 1.1, MIDDLE, 0.05, None, None)
+    candidate = tt.Candidate("strang", "axis")
+    parts = candidate.partition(CHAIN)
+    law = measurements.law(candidate, parts, 2.0, 10**6)
+    first, last = map(int, re.search(r"from (\d+) to (\d+)", law.words).groups())
+    # The counts that are run: 1, then 1.5 times as many, and at least one more.
+    counts = [1]
+    while counts[-1] < last:
+        counts.append(max(counts[-1] + 1, int(1.5 * counts[-1])))
+    ratios = [law(count) / measurements.error(candidate, parts, count)[1] for count in counts if count >= first]
+    assert len(ratios) >= 6 and min(ratios) == pytest.approx(1.0, abs=1e-9)
+
+
+def test_a_measured_error_above_the_law_counts(monkeypatch):
+    hopeful = ErrorLaw("fitted", "too good", 2.0, lambda steps: 1e-3 / steps)
+    monkeypatch.setattr(Measurements, "law", lambda *arguments: hopeful)
+    row = tt.device_budget(CHAIN, 1.1, ["lie"], MIDDLE, 0.05, two_qubit_error=3e-5, state=START).best
+    assert row.algorithmic_kind == "measured" and row.algorithmic == row.measured[1] > hopeful(row.steps)
 
 
 def test_without_a_state_bounds_are_taken_at_any_size():
