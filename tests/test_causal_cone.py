@@ -172,6 +172,20 @@ def test_what_has_no_cone_is_refused(arguments, error, message):
         tt.causal_cone(*arguments)
 
 
+@given(
+    repeated_circuits(), watched, starts, st.permutations(range(QUBITS)), st.sampled_from(["commutation", "support"])
+)
+def test_frames_and_relabellings_are_followed(circuit, observable, sites, moves, by):
+    clifford = Rotations([0b00011, 0b00100], [0b00001, 0b01100], [np.pi / 4, -np.pi / 4], QUBITS)
+    framed = circuit.with_frame(clifford, moves)
+    cone = tt.causal_cone(framed, observable, by)
+    whole = expectation(framed, observable, sites)
+    reduced = expectation(cone.rotations, cone.observable, cone.start(sites))
+    # As above; the frame is exact in one and four rotations about rounded π/4 at most in the other.
+    slack = 2**-53 * observable.one_norm() * (10 * (circuit.count + 30) + 300)
+    assert abs(whole - reduced) <= 2 * slack
+
+
 def test_noise_outside_of_the_cone_is_not_seen():
     """Failures of gates that the cone leaves out change nothing, failures inside do: density matrices of four qubits."""
     import oracle

@@ -86,8 +86,8 @@ def test_a_bent_line_is_noticed_and_a_straight_one_is_not():
 def test_the_largest_size_is_held_out_and_compared():
     exact = PowerLaw.fit(SIZES, [5.0 * size**2 for size in SIZES])
     held = exact.held_out()
-    assert held is not None and held.inside and held.prediction.size == 12.0
-    assert held.prediction.value == pytest.approx(720.0, rel=1e-12) and held.measured == pytest.approx(720.0)
+    assert held is not None and held.inside and held.forecast.size == 12.0
+    assert held.forecast.value == pytest.approx(720.0, rel=1e-12) and held.measured == pytest.approx(720.0)
     jump = PowerLaw.fit(SIZES, [5.0 * size**2 * (1.0 if size < 12 else 2.0) for size in SIZES])
     held = jump.held_out()
     assert held is not None and not held.inside and "Without it" in " ".join(jump.cautions())

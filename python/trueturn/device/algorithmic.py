@@ -12,8 +12,7 @@ from trueturn.audit.candidate import Candidate
 from trueturn.audit.figures import nearest
 from trueturn.audit.measure import Bench
 from trueturn.audit.truth import Progress, reference_for
-from trueturn.errors import ArgumentError, FormulaError
-from trueturn.formulas import Formula
+from trueturn.errors import ArgumentError
 from trueturn.operator import Operator
 from trueturn.partition import Partition
 from trueturn.scaling import FEWEST_POINTS, PowerLaw
@@ -59,15 +58,9 @@ def proven_law(candidate: Candidate, partition: Partition, time: float, width: f
     Raises
     ------
     FormulaError
-        No bound at hand covers the formula.
+        The parts lack a structure that the formula requires.
     """
     formula = candidate.formula
-    if not isinstance(formula, Formula):
-        raise FormulaError(
-            f"formula: no proven bound at hand for {formula.name!r}; give a state to measure with, or the error",
-            name=formula.name,
-            choices=(),
-        )
     source = bound(formula, partition, time, 1)
     return ErrorLaw(
         "proven",

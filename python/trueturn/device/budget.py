@@ -24,9 +24,9 @@ from trueturn.device.checks import (
     positive,
 )
 from trueturn.device.counts import Counts
-from trueturn.device.plan import Plan, crossovers
 from trueturn.device.result import Budget, Spending
 from trueturn.device.shares import fitting_shots, shot_scale, t_gates
+from trueturn.device.weighing import Weighed, crossovers
 from trueturn.device.words import ASSUMPTIONS, statement
 from trueturn.errors import ArgumentError, FormulaError
 from trueturn.formulas import Formula
@@ -140,7 +140,7 @@ def device_budget(
     measurements = None
     if state is not None:
         measurements = Measurements(operator, state, moment, observable, tolerance, threads, progress)
-    plans: list[Plan] = []
+    weighed: list[Weighed] = []
     left_out: dict[str, str] = {}
     given = dict(algorithmic or {})
     for place, candidate in enumerate(chosen):
@@ -153,7 +153,7 @@ def device_budget(
             left_out[candidate.label] = str(refusal)
             continue
         counts = Counts(candidate, partition, moment, observable, gates or Rotations.two_qubit_gates)
-        plans.append(Plan(candidate, partition, law, counts, width, synthesis, shot, most_steps))
+        weighed.append(Weighed(candidate, partition, law, counts, width, synthesis, shot, most_steps))
     if given:
         known = ", ".join(f"{candidate.label!r}" for candidate in chosen)
         raise ArgumentError(
@@ -161,13 +161,13 @@ def device_budget(
             argument="algorithmic",
             value=next(iter(given)),
         )
-    if not plans:
+    if not weighed:
         raise FormulaError(
             f"candidates: no algorithmic error for any of them ({'; '.join(left_out.values())})",
             name=chosen[0].label,
             choices=(),
         )
-    spent = [_spending(plan, rate, float(tolerance), scale, allowed, moment, measurements, gates) for plan in plans]
+    spent = [_spending(one, rate, float(tolerance), scale, allowed, moment, measurements, gates) for one in weighed]
     # With perfect gates every total can be made as small as any: then the fewest gates that meet come first.
     rows = tuple(
         sorted(spent, key=lambda row: (row.verdict != "meets", row.gates_in_cone) if rate == 0.0 else (row.total, 0))
@@ -177,7 +177,7 @@ def device_budget(
         rows=rows,
         verdict="meets" if meets else "misses",
         statement=statement(rows, float(tolerance), width, rate),
-        crossovers=crossovers(plans),
+        crossovers=crossovers(weighed),
         left_out=left_out,
         tolerance=float(tolerance),
         time=moment,
@@ -209,7 +209,7 @@ def _law(
 
 
 def _spending(
-    plan: Plan,
+    one: Weighed,
     rate: float,
     tolerance: float,
     scale: float,
@@ -218,36 +218,36 @@ def _spending(
     measurements: Measurements | None,
     gates: Callable[[Rotations], int] | None,
 ) -> Spending:
-    steps = plan.best_steps(rate)
-    fewest = plan.fewest_steps(rate, steps, tolerance)
+    steps = one.best_steps(rate)
+    fewest = one.fewest_steps(rate, steps, tolerance)
     if rate == 0.0 and fewest is not None:
         steps = fewest  # with perfect gates more steps only cost
-    algorithmic, kind, measured = plan.law(steps), plan.law.kind, None
+    algorithmic, kind, measured = one.law(steps), one.law.kind, None
     if kind == "fitted" and measurements is not None and steps <= _MOST_MEASURED:
-        measured = measurements.error(plan.candidate, plan.partition, steps)
+        measured = measurements.error(one.candidate, one.partition, steps)
         # The larger of both: an error that happens to vanish at one step count is no accuracy.
         if measured[1] >= algorithmic:
             algorithmic, kind = measured[1], "measured"
-    inside = plan.counts(steps)
-    total = plan.total(steps, rate, algorithmic)
-    circuit = plan.candidate.formula.rotations(plan.partition, time, steps)
+    inside = one.counts(steps)
+    total = one.total(steps, rate, algorithmic)
+    circuit = one.candidate.formula.rotations(one.partition, time, steps)
     return Spending(
-        candidate=plan.candidate,
-        label=plan.candidate.label,
+        candidate=one.candidate,
+        label=one.candidate.label,
         steps=steps,
         fewest_steps=fewest,
         algorithmic=algorithmic,
         algorithmic_kind=kind,
-        law=plan.law.words,
+        law=one.law.words,
         measured=measured,
-        gates=plan.noise(steps, rate),
-        synthesis=plan.synthesis,
-        shots=plan.shots,
+        gates=one.noise(steps, rate),
+        synthesis=one.synthesis,
+        shots=one.shots,
         total=total,
         two_qubit_gates=(gates or Rotations.two_qubit_gates)(circuit),
         gates_in_cone=inside.gates,
         t_count=None if synthesis_error is None else t_gates(inside.general, inside.tees, synthesis_error),
-        needed_shots=fitting_shots(scale, tolerance - (total - plan.shots)),
-        allowed_error=plan.allowed_error(tolerance),
+        needed_shots=fitting_shots(scale, tolerance - (total - one.shots)),
+        allowed_error=one.allowed_error(tolerance),
         verdict="meets" if total <= tolerance else "misses",
     )

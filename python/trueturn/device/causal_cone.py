@@ -101,7 +101,8 @@ def causal_cone(rotations: Rotations, observable: Operator, by: str = "commutati
     -----
     Exact for the circuit, whatever the angles: for every state, the expectation of the observable after the reduced
     circuit in the state reduced to the kept qubits is that after the whole one. Time: at most 2n + 1 times the rotations
-    of the blocks; repeats cost nothing.
+    of the blocks; repeats cost nothing. A Clifford frame of the circuit becomes rotations of the reduced one, and a
+    relabelling renames the observable, so that `CausalCone.qubits` are named as at the start.
 
     Examples
     --------
@@ -130,6 +131,8 @@ def causal_cone(rotations: Rotations, observable: Operator, by: str = "commutati
             f"observable: no Operator on the {rotations.qubits} qubits of the circuit ({what}); give one that is",
             argument="observable",
         )
+    # A relabelling moves the observable, not the state; a Clifford frame is a few more rotations at the end.
+    observable = observable.relabel({now: before for before, now in enumerate(rotations.relabelling)})
     seen = _Seen(by == "support")
     strings = list(zip(observable.x_masks.tolist(), observable.z_masks.tolist(), strict=True))
     for x, z in strings:
@@ -139,14 +142,15 @@ def causal_cone(rotations: Rotations, observable: Operator, by: str = "commutati
             "observable: acts on no qubit; give one that is more than a number",
             argument="observable",
         )
-    kept = seen.backwards(_tree(rotations))
+    parts = [(_tree(body), repeat) for body, repeat in (*rotations.blocks, *rotations.frame.blocks)]
+    kept = seen.backwards(_Blocks(parts))
     places = tuple(qubit for qubit in range(rotations.qubits) if seen.qubits >> qubit & 1)
     squeeze = _Squeeze(places)
     reduced = _circuit(kept, squeeze) + Rotations([], [], [], len(places), phase=rotations.phase)
     watched = Operator.from_masks(
         [squeeze(x) for x, _ in strings], [squeeze(z) for _, z in strings], observable.coefficients, len(places)
     )
-    return CausalCone(reduced, watched, places, rotations.count - reduced.count)
+    return CausalCone(reduced, watched, places, rotations.count + rotations.frame.count - reduced.count)
 
 
 Rotation = tuple[int, int, float]

@@ -1,6 +1,6 @@
 """How step counts grow with size, time or tolerance: measured, fitted, extrapolated."""
 
-from trueturn.scaling.power_law import FEWEST_POINTS, HeldOut, PowerLaw, Prediction, fit_steps
+from trueturn.scaling.power_law import FEWEST_POINTS, Forecast, HeldOut, PowerLaw, fit_steps
 from trueturn.scaling.result import Extrapolated, Point, Scaling
 from trueturn.scaling.run import Case, step_scaling
 
@@ -8,10 +8,10 @@ __all__ = [
     "FEWEST_POINTS",
     "Case",
     "Extrapolated",
+    "Forecast",
     "HeldOut",
     "Point",
     "PowerLaw",
-    "Prediction",
     "Scaling",
     "fit_steps",
     "step_scaling",

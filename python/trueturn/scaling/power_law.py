@@ -27,7 +27,7 @@ import numpy.typing as npt
 from trueturn.audit.figures import nearest, outward
 from trueturn.errors import ArgumentError
 
-__all__ = ["FEWEST_POINTS", "HeldOut", "PowerLaw", "Prediction", "fit_steps"]
+__all__ = ["FEWEST_POINTS", "Forecast", "HeldOut", "PowerLaw", "fit_steps"]
 
 FEWEST_POINTS = 3
 """Two points always lie on a power law; the third is the first that can contradict it."""
@@ -37,7 +37,7 @@ Floats = npt.NDArray[np.float64]
 
 
 @dataclass(frozen=True)
-class Prediction:
+class Forecast:
     """What a law says at one size.
 
     Attributes
@@ -76,13 +76,13 @@ class HeldOut:
 
     Attributes
     ----------
-    prediction : Prediction
+    forecast : Forecast
     measured : float
     inside : bool
-        The measured value lies within ``prediction.interval``.
+        The measured value lies within ``forecast.interval``.
     """
 
-    prediction: Prediction
+    forecast: Forecast
     measured: float
     inside: bool
 
@@ -212,7 +212,7 @@ class PowerLaw:
         half = self._student(level) * self.spread * math.sqrt(1.0 / len(self.sizes) + self._centre**2 / self._width)
         return self.prefactor * math.exp(-half), self.prefactor * math.exp(half)
 
-    def predict(self, size: float, level: float = 0.95) -> Prediction:
+    def predict(self, size: float, level: float = 0.95) -> Forecast:
         """Return the law's value at a size, with its bands, and whether that is an extrapolation.
 
         Raises
@@ -232,7 +232,7 @@ class PowerLaw:
         variance = 1.0 / len(self.sizes) + (math.log(at) - self._centre) ** 2 / self._width
         band, whole = (quantile * self.spread * math.sqrt(v) for v in (variance, 1.0 + variance))
         reach = max(1.0, at / self.sizes[-1], self.sizes[0] / at)
-        return Prediction(
+        return Forecast(
             at,
             value,
             (value * math.exp(-band), value * _growth(band)),
@@ -307,8 +307,8 @@ class PowerLaw:
         held = self.held_out(level)
         if held is not None and not held.inside:
             found.append(
-                f"Without it, {self.variable} {held.prediction.size:.6g} would have been predicted as "
-                f"{outward(*held.prediction.interval, 3)}, but {nearest(held.measured, 4)} was measured."
+                f"Without it, {self.variable} {held.forecast.size:.6g} would have been predicted as "
+                f"{outward(*held.forecast.interval, 3)}, but {nearest(held.measured, 4)} was measured."
             )
         if len(self.sizes) == FEWEST_POINTS:
             found.append("Three points leave one degree of freedom: the bands are wide and nothing tests the law.")

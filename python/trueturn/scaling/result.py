@@ -14,7 +14,7 @@ from trueturn.errors import ArgumentError
 
 if TYPE_CHECKING:
     from trueturn.audit.candidate import Candidate
-    from trueturn.scaling.power_law import PowerLaw, Prediction
+    from trueturn.scaling.power_law import Forecast, PowerLaw
     from trueturn.scaling.run import Case
 
 __all__ = ["Extrapolated", "Point", "Scaling"]
@@ -58,8 +58,8 @@ class Extrapolated:
     Attributes
     ----------
     formula : str
-    prediction : Prediction
-        Fitted, not proven; `prediction.extrapolated` tells whether the size is outside of the measured ones.
+    forecast : Forecast
+        Fitted, not proven; `forecast.extrapolated` tells whether the size is outside of the measured ones.
     steps : int
         The predicted count, rounded up.
     proven : int or None
@@ -69,7 +69,7 @@ class Extrapolated:
     """
 
     formula: str
-    prediction: Prediction
+    forecast: Forecast
     steps: int
     proven: int | None
     proven_source: str
@@ -89,6 +89,9 @@ class Scaling:
     case : callable
         Makes the `Case` of a size.
     variable : str
+    quantity : str or None
+        As asked: ``"observables"``, ``"state"``, ``"operator"``, or None for the first where a case has observables, else
+        the second.
     """
 
     points: tuple[Point, ...]
@@ -96,6 +99,7 @@ class Scaling:
     candidates: tuple[Candidate, ...]
     case: Callable[[float], Case]
     variable: str
+    quantity: str | None
 
     @property
     def sizes(self) -> tuple[float, ...]:
@@ -130,12 +134,12 @@ class Scaling:
         from trueturn.scaling.proven import proven_steps
         from trueturn.scaling.run import checked_case
 
-        predictions = {name: law.predict(size, level) for name, law in self.laws.items()}
+        forecasts = {name: law.predict(size, level) for name, law in self.laws.items()}
         case = checked_case(self.case, size)
-        watched = tuple((case.observables or {}).values())
+        watched = tuple((case.observables or {}).values()) if self.quantity in (None, "observables") else ()
         found = []
         for candidate in self.candidates:
-            said = predictions[candidate.formula.name]
+            said = forecasts[candidate.formula.name]
             proven, source = proven_steps(candidate, case.operator, case.time, case.tolerance, watched)
             found.append(Extrapolated(candidate.formula.name, said, math.ceil(said.value), proven, source))
         return tuple(found)
@@ -203,7 +207,7 @@ class Scaling:
 
 
 def _words(entry: Extrapolated) -> str:
-    said = entry.prediction
+    said = entry.forecast
     kind = f"extrapolated {said.reach:.3g} times beyond the measured sizes" if said.extrapolated else "interpolated"
     fitted = (
         f"{nearest(said.value)} steps, {outward(*said.interval, 3)} at {100 * said.level:g} % ({kind}, not proven); "

@@ -7,8 +7,9 @@ from dataclasses import dataclass
 
 from trueturn import _threads
 from trueturn._observables import named_operators
+from trueturn.accuracy import operator_error
 from trueturn.audit.candidate import Candidate
-from trueturn.audit.measure import Bench
+from trueturn.audit.measure import Bench, judge
 from trueturn.audit.result import Trial
 from trueturn.audit.search import least_steps
 from trueturn.audit.truth import Progress, positive_times, reference_for
@@ -22,6 +23,9 @@ from trueturn.scaling.result import Point, Scaling
 from trueturn.state import State, require_same_qubits
 
 __all__ = ["Case", "step_scaling"]
+
+Measure = Callable[[Candidate, Partition, int], Trial]
+QUANTITIES = ("observables", "state", "operator")
 
 # A search starts a little below what the law of the smaller sizes says: mostly the first run misses and the next is right.
 _BELOW = 0.95
@@ -40,9 +44,8 @@ class Case:
     tolerance : float
         On the error, absolute.
     state : State, optional
-        Start; needed to measure, not to extrapolate.
+        Start; needed to measure errors of observables or of the state, not to extrapolate.
     observables : mapping of str to Operator, optional
-        Without them the error is that of the state.
     """
 
     operator: Operator
@@ -57,6 +60,7 @@ def step_scaling(
     sizes: Iterable[float],
     formulas: Sequence[str | Formula | Processed],
     rule: str = "commuting",
+    quantity: str | None = None,
     *,
     variable: str = "qubits",
     most_steps: int = 1_000_000,
@@ -74,6 +78,9 @@ def step_scaling(
     formulas : sequence of str, Formula or Processed
     rule : str
         How each Hamiltonian is split into parts.
+    quantity : "observables", "state" or "operator", optional
+        Largest |<O>_S - <O>|, ‖ψ_S - ψ‖, or ‖S - exp(-iHt)‖ as by `operator_error`. Default: observables where a case has
+        some, else the state.
     variable : str
         Name of what varies, for tables and pictures.
     most_steps : int
@@ -90,9 +97,9 @@ def step_scaling(
     Raises
     ------
     ArgumentError
-        Too few sizes, no formulas, or `case` gives no Case.
+        Too few sizes, no formulas, an unknown quantity, or `case` gives no Case.
     AuditError
-        A case without a state, or a search that found no step count.
+        A case without the state or the observables that the quantity needs, or a search that found no step count.
     ToleranceError, MemoryRefusedError, StateShapeError
         As for an audit.
 
@@ -123,17 +130,23 @@ def step_scaling(
         raise ArgumentError(
             f"formulas: {what} ({', '.join(names)}); give each formula once", argument="formulas", value=formulas
         )
+    if quantity not in (None, *QUANTITIES):
+        raise ArgumentError(
+            f"quantity: unknown ({quantity!r}); give one of {', '.join(map(repr, QUANTITIES))}",
+            argument="quantity",
+            value=quantity,
+        )
     workers = _threads.resolve(threads)
     points: list[Point] = []
     total = len(ordered) * len(candidates)
     for size in ordered:
         found = checked_case(case, size)
-        bench = _bench(found, size, workers)
+        measure = _measure(found, size, quantity, workers)
         for candidate in candidates:
             if progress is not None:
                 progress(f"{variable} {size:g}: {candidate.formula.name}", len(points), total)
             known = [point for point in points if point.formula == candidate.formula.name]
-            points.append(_least(bench, candidate, found.operator, size, known, most_steps))
+            points.append(_least(measure, candidate, found, size, known, most_steps))
     if progress is not None:
         progress("done", total, total)
     return Scaling(
@@ -145,6 +158,7 @@ def step_scaling(
         candidates=tuple(candidates),
         case=case,
         variable=variable,
+        quantity=quantity,
     )
 
 
@@ -175,37 +189,52 @@ def _sizes(sizes: Iterable[float]) -> list[float]:
     return ordered
 
 
-def _bench(case: Case, size: float, threads: int) -> Bench:
-    if case.state is None:
+def _measure(case: Case, size: float, quantity: str | None, threads: int) -> Measure:
+    """Return what runs a candidate with some steps and gives the trial."""
+    times = positive_times(case.time)
+    watched = named_operators(case.observables) if quantity in (None, "observables") else {}
+    asked = quantity or ("observables" if watched else "state")
+    if asked == "operator":
+
+        def distance(candidate: Candidate, partition: Partition, steps: int) -> Trial:
+            circuit = candidate.formula.rotations(partition, times[0], steps)
+            low, high = operator_error(
+                circuit, case.operator, times[0], angle_roundings=Formula.ANGLE_ROUNDINGS, threads=threads
+            )
+            return Trial(steps, (low, high), judge((low, high), case.tolerance), circuit.two_qubit_gates())
+
+        return distance
+    missing = "state" if case.state is None else "observables" if asked == "observables" and not watched else ""
+    if case.state is None or missing:
         raise AuditError(
-            f"case: has no state to measure with (at {size:g}); give state=", reason="no state", limit=None
+            f"case: has no {missing} to measure with (at {size:g}); give {missing}=", reason=f"no {missing}", limit=None
         )
     require_same_qubits(case.state, case.operator, "operator")
-    watched = named_operators(case.observables)
     for name, observable in watched.items():
         require_same_qubits(case.state, observable, f"observables[{name!r}]")
-    quantity = "observables" if watched else "state"
-    times = positive_times(case.time)
-    keep = "all" if quantity == "state" else "last"
+    keep = "all" if asked == "state" else "last"
     truth = reference_for(
         case.operator, case.state, times, case.tolerance, None, watched, keep=keep, threads=threads, progress=None
     )
-    return Bench(case.state, times, truth, case.tolerance, quantity, watched, None, "along", threads)
+    bench = Bench(case.state, times, truth, case.tolerance, asked, watched, None, "along", threads)
+    return lambda candidate, partition, steps: bench.measure(candidate, partition, steps).trial
 
 
 def _least(
-    bench: Bench, candidate: Candidate, operator: Operator, size: float, known: Sequence[Point], most_steps: int
+    measure: Measure, candidate: Candidate, case: Case, size: float, known: Sequence[Point], most_steps: int
 ) -> Point:
-    partition: Partition = candidate.partition(operator)
-
-    def run(steps: int) -> Trial:
-        return bench.measure(candidate, partition, steps).trial
-
+    partition = candidate.partition(case.operator)
     first = 1
     if len({point.size for point in known}) >= FEWEST_POINTS:
         law = fit_steps([point.size for point in known], [point.steps for point in known])
         first = max(1, min(most_steps, int(_BELOW * law(size))))
-    found = least_steps(run, bench.tolerance, candidate.formula.order, most_steps=most_steps, first=first)
+    found = least_steps(
+        lambda steps: measure(candidate, partition, steps),
+        case.tolerance,
+        candidate.formula.order,
+        most_steps=most_steps,
+        first=first,
+    )
     if not found.found:
         raise AuditError(
             f"most_steps: too few for {candidate.label} at {size:g} ({most_steps}, tried {found.steps}); give more, a "

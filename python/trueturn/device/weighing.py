@@ -15,7 +15,7 @@ from trueturn.device.result import Crossover
 from trueturn.device.shares import gate_share, largest_gate_error
 from trueturn.partition import Partition
 
-__all__ = ["Plan", "crossovers"]
+__all__ = ["Weighed", "crossovers"]
 
 # Rates between which formulas are compared: beyond, gates are perfect for all practical purposes, or useless.
 _RATES = (1e-12, 0.5)
@@ -23,7 +23,7 @@ _RATES_PER_DECADE = 4
 
 
 @dataclass
-class Plan:
+class Weighed:
     """One candidate with its error law and its gate counts.
 
     `synthesis` and `shots` are the shares that no step count changes. All but the shots are capped together at `width`,
@@ -77,22 +77,22 @@ class Plan:
         return found if found > 0.0 else None
 
 
-def crossovers(plans: Sequence[Plan]) -> tuple[Crossover, ...]:
+def crossovers(weighed: Sequence[Weighed]) -> tuple[Crossover, ...]:
     """Compare every candidate of one order with every candidate of the next order that there is."""
 
-    def order(plan: Plan) -> int:
-        return plan.candidate.formula.order
+    def order(one: Weighed) -> int:
+        return one.candidate.formula.order
 
-    groups = [list(group) for _, group in groupby(sorted(plans, key=order), key=order)]
+    groups = [list(group) for _, group in groupby(sorted(weighed, key=order), key=order)]
     return tuple(_crossover(*pair) for one, other in pairwise(groups) for pair in product(one, other))
 
 
-def _crossover(lower: Plan, higher: Plan) -> Crossover:
+def _crossover(lower: Weighed, higher: Weighed) -> Crossover:
     """Walk from bad gates to good ones until the higher order wins, then halve the step on a logarithmic scale."""
 
     def lead(rate: float) -> float:
         """Return by how much the higher order is better; 0 where neither is better than a guess."""
-        ours, theirs = (plan.total(plan.best_steps(rate), rate) for plan in (higher, lower))
+        ours, theirs = (one.total(one.best_steps(rate), rate) for one in (higher, lower))
         return theirs - ours if abs(theirs - ours) > 1e-9 * lower.width else 0.0
 
     first, last = (math.log10(rate) for rate in _RATES)
