@@ -7,6 +7,7 @@ from trueturn.accuracy import Bound, bound
 from trueturn.adaptive import AdaptiveRun, adaptive
 from trueturn.audit import Audit, Candidate, audit
 from trueturn.comparison import Comparison, compare
+from trueturn.diagnosis import Diagnosis, Finding, diagnose
 from trueturn.driven import Driven, DrivenReference, driven_reference
 from trueturn.error_saving import Improved
 from trueturn.extrapolation import Extrapolation, extrapolate, multiproduct_weights, well_conditioned_steps
@@ -29,9 +30,11 @@ __all__ = [
     "Candidate",
     "Certificate",
     "Comparison",
+    "Diagnosis",
     "Driven",
     "DrivenReference",
     "Extrapolation",
+    "Finding",
     "Formula",
     "FoundFormula",
     "Improved",
@@ -50,6 +53,7 @@ __all__ = [
     "bound",
     "build_info",
     "compare",
+    "diagnose",
     "driven",
     "driven_reference",
     "errors",

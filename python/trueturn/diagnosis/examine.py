@@ -1,0 +1,249 @@
+"""From a circuit and a Hamiltonian to a diagnosis."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from trueturn.diagnosis.describe import describe
+from trueturn.diagnosis.frames import moved_to_the_end
+from trueturn.diagnosis.readings import Reading, readings
+from trueturn.diagnosis.result import Character, Diagnosis, Finding
+from trueturn.diagnosis.structure import STILL, Hamiltonian, Plan, Structure
+from trueturn.diagnosis.totals import Sheet, support
+from trueturn.diagnosis.unfolding import Unfolded, unfold
+from trueturn.formulas import formula
+from trueturn.operator import Operator
+from trueturn.rotations import Rotations
+
+__all__ = ["examine"]
+
+UNIT = 2.0**-53
+MOST_MISTAKES = 3
+"""More mistakes than this at once are not a diagnosis but a guess."""
+SOME = 1e-9
+
+
+@dataclass(frozen=True)
+class Case:
+    """One way to write the circuit down, with its totals and readings."""
+
+    rotations: Rotations
+    unfolded: Unfolded
+    sheet: Sheet
+    readings: tuple[Reading, ...]
+    residual: tuple[str, ...] = ()
+    moved: int = 0
+
+    @property
+    def cost(self) -> float:
+        """How much there is to explain."""
+        return self.readings[0].cost + (1.0 if self.residual else 0.0)
+
+
+def examine(rotations: Rotations, operator: Operator, time: float, tolerance: float) -> Diagnosis:
+    """Diagnose; the arguments are checked already."""
+    hamiltonian = Hamiltonian(operator)
+    case = _case(rotations, hamiltonian, time, tolerance)
+    if case.cost:
+        for nearest in (False, True):
+            moved = moved_to_the_end(rotations, nearest) if case.cost else None
+            if moved is None:
+                continue
+            other = _case(moved.rotations, hamiltonian, time, tolerance)
+            other = replace(other, residual=moved.residual, moved=moved.gates)
+            if other.cost < case.cost - 0.5 and not (nearest and other.cost):
+                case = other
+    structure = _chosen(case, hamiltonian)
+    remarks = _remarks(case, structure, rotations, hamiltonian, time)
+    reason = "" if not case.cost else _undetermined(case, structure, hamiltonian, time)
+    mistakes: list[Finding] = []
+    if case.cost and not reason:
+        mistakes = describe(case.rotations, case.unfolded, case.sheet, structure, time, case.residual)
+    matches: bool | None = None if reason else not mistakes
+    return Diagnosis(
+        matches=matches,
+        findings=(*mistakes, *remarks),
+        character=_character(structure, bool(reason)),
+        reason=reason,
+        deviation=_deviation(case.sheet),
+        qubits=rotations.qubits,
+        rotations=rotations.count,
+        time=time,
+    )
+
+
+def _case(rotations: Rotations, hamiltonian: Hamiltonian, time: float, tolerance: float) -> Case:
+    unfolded = unfold(rotations)
+    roundings = (unfolded.counts + 4.0) * UNIT * unfolded.sizes
+    sheet = Sheet(
+        found=dict(zip(unfolded.masks, unfolded.totals.tolist(), strict=True)),
+        wanted={mask: c * time for mask, c in zip(hamiltonian.masks, hamiltonian.coefficients, strict=True)},
+        slack=dict(zip(unfolded.masks, roundings.tolist(), strict=True)),
+        tolerance=tolerance,
+    )
+    return Case(rotations, unfolded, sheet, tuple(readings(sheet, rotations.qubits)))
+
+
+def _chosen(case: Case, hamiltonian: Hamiltonian) -> Structure:
+    """Choose among readings that leave equally much: the one whose order of rotations is the most usual."""
+    structures = [Structure(case.unfolded, hamiltonian, reading) for reading in case.readings]
+    if len(structures) == 1:
+        return structures[0]
+
+    def unusual(structure: Structure) -> float:
+        plan = structure.plans[0] if structure.plans else None
+        if plan is None:
+            return 0.45
+        return (0.0 if plan.given else 0.2 if plan.rule else 0.4) + min(plan.unexplained, 10) * 0.01
+
+    return min(structures, key=lambda structure: structure.reading.cost + unusual(structure))
+
+
+def _undetermined(case: Case, structure: Structure, hamiltonian: Hamiltonian, time: float) -> str:
+    """Say why the circuit does not determine the answer; empty where it does."""
+    reading = structure.reading
+    advice = "; where the state fits in memory, an audit decides"
+    if _only_whole_turns(case, hamiltonian):
+        return f"the angle totals agree with c·t only modulo π, so that several circuits would look like this{advice}"
+    if reading.cost >= 2 and _random_sample(case, hamiltonian, time):
+        return (
+            "the circuit looks like one random sample (equal angles, counts like drawn ones); only the average over "
+            f"samples follows exp(-iHt){advice}"
+        )
+    if len(reading.groups) > MOST_MISTAKES:
+        return (
+            f"the angle totals differ in {sum(len(g.found or g.wanted) for g in reading.groups)} strings in no common "
+            f"way: blocks resynthesised beyond recognition, or a circuit for something else{advice}"
+        )
+    kinds = {group.kind for group in reading.groups}
+    if "extra" in kinds and len(reading.groups) > 1:
+        extra = [group for group in reading.groups if group.kind == "extra"]
+        others = [group for group in reading.groups if group.kind != "extra"]
+        touched = [support(mask) for group in others for mask in (*group.found, *group.wanted)]
+        if any(support(mask) & one for group in extra for mask in group.found for one in touched):
+            return (
+                "strings of the Hamiltonian are off on the very qubits where others were added, as when a block of "
+                f"gates is resynthesised{advice}"
+            )
+    return ""
+
+
+def _only_whole_turns(case: Case, hamiltonian: Hamiltonian) -> bool:
+    sheet = case.sheet
+    off = False
+    for mask in {**sheet.found, **sheet.wanted}:
+        rest = sheet.found.get(mask, 0.0) - sheet.wanted.get(mask, 0.0)
+        if abs(rest) <= sheet.allowed(mask):
+            continue
+        turns = round(rest / math.pi)
+        if not turns or abs(rest - turns * math.pi) > sheet.allowed(mask) + 4 * UNIT * abs(rest):
+            return False
+        off = True
+    return off
+
+
+def _random_sample(case: Case, hamiltonian: Hamiltonian, time: float) -> bool:
+    """Whether angles and counts are those of rotations drawn with chances |c| and equal angles.
+
+    Then Σ|θ| is Σ|c t| exactly, every sign is right, every angle is a multiple of one, and the counts lie within six
+    standard deviations of χ².
+    """
+    sheet, unfolded = case.sheet, case.unfolded
+    whole = sum(abs(value) for value in sheet.wanted.values())
+    if not whole or any(
+        mask not in sheet.wanted or total * sheet.wanted[mask] < 0 for mask, total in sheet.found.items()
+    ):
+        return False
+    if abs(float(unfolded.sizes.sum()) - whole) > max(sheet.tolerance, 1e-12) * whole:
+        return False
+    angles = np.abs(unfolded.word.angles)
+    unit = float(angles.min())
+    multiples = angles / unit
+    if np.any(np.abs(multiples - np.rint(multiples)) > 1e-6 * multiples):
+        return False
+    draws = whole / unit
+    chances = np.array([abs(value) / whole for value in sheet.wanted.values()])
+    counts = np.array([abs(sheet.found.get(mask, 0.0)) / unit for mask in sheet.wanted])
+    freedom = len(chances) - 1
+    chi_squared = float(np.sum((counts - draws * chances) ** 2 / (draws * chances)))
+    return chi_squared <= freedom + 6.0 * math.sqrt(2.0 * max(freedom, 1))
+
+
+def _remarks(
+    case: Case, structure: Structure, rotations: Rotations, hamiltonian: Hamiltonian, time: float
+) -> list[Finding]:
+    """Say what does not make the circuit wrong, yet is worth knowing."""
+    remarks = []
+    if case.cost:
+        return remarks
+    plan = structure.plans[0] if structure.plans else None
+    if plan is not None:
+        merged = plan.circuit(hamiltonian, time)
+        if merged.count < case.unfolded.counts.sum():
+            saved = int(case.unfolded.counts.sum()) - merged.count
+            remarks.append(
+                Finding(
+                    kind="half-steps not merged",
+                    mistake=False,
+                    text="Equal strings meet without being merged; the circuit is right, and longer than needed.",
+                    evidence=(f"{rotations.count} rotations, {merged.count} once merged",),
+                    change=f"Merge them and save {saved} rotations.",
+                    fixed=merged,
+                )
+            )
+    phase = 0.0 - hamiltonian.operator.identity_coefficient * time
+    off = math.remainder(case.unfolded.phase - phase, 2 * math.pi)
+    if abs(off) > SOME * max(1.0, abs(phase)) and not case.moved:
+        remarks.append(
+            Finding(
+                kind="global phase",
+                mistake=False,
+                text="The global phase is not that of exp(-iHt); no measurement can tell.",
+                evidence=(f"phase {case.unfolded.phase!r}, where the identity of the Hamiltonian gives {phase!r}",),
+                change=f"Set the phase to {phase!r}.",
+                fixed=None,
+            )
+        )
+    return remarks
+
+
+def _deviation(sheet: Sheet) -> float:
+    strings = {**sheet.found, **sheet.wanted}
+    return max((abs(sheet.found.get(mask, 0.0) - sheet.wanted.get(mask, 0.0)) for mask in strings), default=0.0)
+
+
+def _character(structure: Structure, doubtful: bool) -> Character:
+    """Say which formula it is, as far as the order of the rotations shows."""
+    if structure.neighbours is None:
+        return Character(None, None, None, None, None, None, "Too many strings to compare the order of rotations.")
+    if not any(others.size for others in structure.neighbours):
+        text = "All strings commute: any order of the rotations is exact."
+        return Character(None, None, None, True, 0.0, None, text)
+    moments = structure.moments
+    largest = float(moments.max()) if moments.size else None
+    symmetric = None if largest is None else largest < STILL
+    plan = None if doubtful else next(iter(structure.plans), None)
+    if plan is None:
+        order = None if symmetric is None else 2 if symmetric else 1
+        shown = "" if largest is None else f" (largest second moment {largest:.3g})"
+        text = "No formula of the library explains the order of the rotations; " + (
+            "its second moments vanish, as those of symmetric formulas of order 2 and more do."
+            if symmetric
+            else f"its second moments do not vanish{shown}: first-order character."
+        )
+        return Character(None, None, order, symmetric, largest, None, text)
+    name = plan.model.method.name
+    order = formula(name).order
+    rule = plan.rule or None
+    where = (
+        "" if rule is None else f", strings in the order of {rule!r}" + ("" if plan.given else " with parts reordered")
+    )
+    text = f"The rotations run as {name} (order {order}) in {_counted(plan)}{where}."
+    return Character(name, plan.steps, order, symmetric, largest, rule, text)
+
+
+def _counted(plan: Plan) -> str:
+    return "1 step" if plan.steps == 1 else f"{plan.steps} equal steps"
