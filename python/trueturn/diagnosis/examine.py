@@ -11,11 +11,13 @@ from trueturn.diagnosis.describe import describe
 from trueturn.diagnosis.frames import moved_to_the_end
 from trueturn.diagnosis.readings import Reading, readings
 from trueturn.diagnosis.result import Character, Diagnosis, Finding
-from trueturn.diagnosis.structure import STILL, Hamiltonian, Plan, Structure
+from trueturn.diagnosis.ordering import clashes, settle
+from trueturn.diagnosis.structure import MOST_STRINGS, STILL, Hamiltonian, Plan, Structure
 from trueturn.diagnosis.totals import Sheet, support
-from trueturn.diagnosis.unfolding import Unfolded, unfold
+from trueturn.diagnosis.unfolding import Mask, Unfolded, unfold
 from trueturn.formulas import formula
 from trueturn.operator import Operator
+from trueturn.partition_rules import string_text
 from trueturn.rotations import Rotations
 
 __all__ = ["examine"]
@@ -34,13 +36,14 @@ class Case:
     unfolded: Unfolded
     sheet: Sheet
     readings: tuple[Reading, ...]
+    hidden: tuple[Mask, ...] = ()
     residual: tuple[str, ...] = ()
     moved: int = 0
 
     @property
     def cost(self) -> float:
         """How much there is to explain."""
-        return self.readings[0].cost + (1.0 if self.residual else 0.0)
+        return self.readings[0].cost + (1.0 if self.residual else 0.0) + (1.0 if self.hidden else 0.0)
 
 
 def examine(rotations: Rotations, operator: Operator, time: float, tolerance: float) -> Diagnosis:
@@ -84,7 +87,21 @@ def _case(rotations: Rotations, hamiltonian: Hamiltonian, time: float, tolerance
         slack=dict(zip(unfolded.masks, roundings.tolist(), strict=True)),
         tolerance=tolerance,
     )
-    return Case(rotations, unfolded, sheet, tuple(readings(sheet, rotations.qubits)))
+    return Case(rotations, unfolded, sheet, tuple(readings(sheet, rotations.qubits)), _hidden(unfolded, sheet, rotations))
+
+
+def _hidden(unfolded: Unfolded, sheet: Sheet, rotations: Rotations) -> tuple[Mask, ...]:
+    """List strings that the Hamiltonian lacks, whose angles sum to nothing and yet do not cancel where they stand."""
+    doubtful = [
+        string
+        for string, mask in enumerate(unfolded.masks)
+        if mask not in sheet.wanted
+        and abs(unfolded.totals[string]) <= sheet.allowed(mask) < float(unfolded.sizes[string])
+    ]
+    if not doubtful or len(unfolded.masks) > MOST_STRINGS:
+        return tuple(unfolded.masks[string] for string in doubtful)
+    settled = settle(unfolded.word, clashes(unfolded.masks, rotations.qubits))
+    return tuple(unfolded.masks[string] for string in doubtful if settled.places[string].size)
 
 
 def _chosen(case: Case, hamiltonian: Hamiltonian) -> Structure:
@@ -97,7 +114,8 @@ def _chosen(case: Case, hamiltonian: Hamiltonian) -> Structure:
         plan = structure.plans[0] if structure.plans else None
         if plan is None:
             return 0.45
-        return (0.0 if plan.given else 0.2 if plan.rule else 0.4) + min(plan.unexplained, 10) * 0.01
+        usual = 0.0 if plan.given else 0.2 if plan.rule else 0.4
+        return usual + 0.01 * plan.place + 0.01 * min(plan.unexplained, 10)
 
     return min(structures, key=lambda structure: structure.reading.cost + unusual(structure))
 
@@ -106,6 +124,9 @@ def _undetermined(case: Case, structure: Structure, hamiltonian: Hamiltonian, ti
     """Say why the circuit does not determine the answer; empty where it does."""
     reading = structure.reading
     advice = "; where the state fits in memory, an audit decides"
+    if case.hidden:
+        names = ", ".join(string_text(*mask) for mask in case.hidden[:4])
+        return f"strings that the Hamiltonian lacks turn forth and back ({names}), as in a change of basis{advice}"
     if _only_whole_turns(case, hamiltonian):
         return f"the angle totals agree with c·t only modulo π, so that several circuits would look like this{advice}"
     if reading.cost >= 2 and _random_sample(case, hamiltonian, time):

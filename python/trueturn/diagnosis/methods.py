@@ -56,12 +56,19 @@ class Method:
 
     def steps_with(self, count: int, before: bool, after: bool) -> int | None:
         """Find the number of steps in which a string has `count` merged rotations."""
-        one, two, three = (self.pattern(steps, before, after)[0].size for steps in (1, 2, 3))
+        one, two, three = _counts(self, before, after)
         if count == one:
             return 1
         if three > two and count >= two and (count - two) % (three - two) == 0:
             return 2 + (count - two) // (three - two)
         return None
+
+
+@cache
+def _counts(method: Method, before: bool, after: bool) -> tuple[int, int, int]:
+    """Rotations of a string in one, two and three steps."""
+    one, two, three = (method.pattern(steps, before, after)[0].size for steps in (1, 2, 3))
+    return one, two, three
 
 
 @cache

@@ -17,7 +17,7 @@ import numpy.typing as npt
 
 from trueturn.diagnosis.unfolding import Ints, Mask, Reals, Word
 
-__all__ = ["Settled", "clashes", "gaps", "order_moments", "settle"]
+__all__ = ["Settled", "clashes", "order_moments", "settle"]
 
 ROWS = 512
 ROUNDS = 64
@@ -102,16 +102,6 @@ def _merged(strings: Ints, angles: Reals, neighbours: Sequence[Ints]) -> tuple[l
             merged_places.append(own)
             merged_angles.append(angles[own])
     return merged_places, merged_angles
-
-
-def gaps(own: Ints, angles: Reals, fixed: Ints) -> Reals:
-    """Add up the angles of one string in each gap between the rotations of another.
-
-    Returns
-    -------
-    ndarray, shape (len(fixed) + 1,)
-    """
-    return np.bincount(np.searchsorted(fixed, own), weights=angles, minlength=fixed.size + 1)
 
 
 def order_moments(settled: Settled, neighbours: Sequence[Ints], most: int = 4096) -> Reals:

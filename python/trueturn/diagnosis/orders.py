@@ -36,11 +36,14 @@ class Fit:
         Whether the parts stand as the rule puts them, and not in an order found in the circuit.
     order : tuple of int
         Numbers of terms.
+    place : int
+        Place of the rule in the list of rules.
     """
 
     rule: str
     given: bool
     order: tuple[int, ...]
+    place: int
 
 
 class RuleOrders:
@@ -67,7 +70,7 @@ class RuleOrders:
         one, two = one[known], two[known]
         earlier = ranks[one] < ranks[two]
         for given in (True, False):
-            for rule in self.rules:
+            for place, rule in enumerate(self.rules):
                 groups = self._of(rule)
                 if groups is None:
                     continue
@@ -75,7 +78,7 @@ class RuleOrders:
                 places = np.empty(len(order), dtype=np.intp)
                 places[list(order)] = np.arange(len(order))
                 if np.array_equal(places[one] < places[two], earlier):
-                    yield Fit(rule, given, order)
+                    yield Fit(rule, given, order, place)
 
     def all_given(self) -> Iterator[Fit]:
         """List the rules as they are."""

@@ -15,8 +15,7 @@ import numpy as np
 import numpy.typing as npt
 
 from trueturn.diagnosis.character import Model, first_order, last_order, recognised
-from trueturn.diagnosis.methods import stage_places
-from trueturn.diagnosis.ordering import Settled, clashes, gaps, order_moments, settle
+from trueturn.diagnosis.ordering import Settled, clashes, order_moments, settle
 from trueturn.diagnosis.orders import Fit, RuleOrders, partition_in_order
 from trueturn.diagnosis.readings import Reading
 from trueturn.diagnosis.unfolding import Ints, Mask, Reals, Unfolded
@@ -26,9 +25,13 @@ from trueturn.rotations import Rotations
 
 __all__ = ["Hamiltonian", "Plan", "Structure"]
 
-GAP_SLACK = 1e-6
-COMPARED = 8
+SLACK = 1e-6
+COMPARED = 12
 """Anticommuting strings that a damaged one is compared with."""
+UNUSUAL = 0.3
+"""What an order costs that no rule gives as it stands, in the same measure."""
+SCALING = 0.1
+"""What it costs to suppose that a damaged string is off by one factor everywhere, in shares of its angle."""
 MOST_STRINGS = 20_000
 MOST_PAIRS = 20_000_000
 STILL = 1e-9
@@ -72,11 +75,12 @@ class Plan:
         Rule that the order comes from; empty where it comes from the circuit.
     given : bool
         Whether that rule's parts stand in its own order.
-    unexplained : int
-        Places where damaged strings turn by another angle than they should.
-    settled : Settled
+    unexplained : float
+        Shares of their angles that damaged strings turn elsewhere than they should.
     judged : tuple of int
-        What it was recognised by.
+        Sound strings that it was recognised by.
+    place : int
+        Place of the rule in the list of rules; the usual ones stand first.
     """
 
     model: Model
@@ -84,9 +88,9 @@ class Plan:
     order: tuple[int, ...]
     rule: str
     given: bool
-    unexplained: int
-    settled: Settled
+    unexplained: float
     judged: tuple[int, ...]
+    place: int
 
     def circuit(self, hamiltonian: Hamiltonian, time: float, steps: int | None = None) -> Rotations:
         """Build the circuit that was meant."""
@@ -113,6 +117,8 @@ class Structure:
         self.reading = reading
         masks = [reading.mask(mask) for mask in unfolded.masks]
         self.masks = masks
+        self._known: dict[tuple[object, ...], float] = {}
+        self._clock_angles: dict[int, Reals] = {}
         self.terms = np.array([hamiltonian.numbers.get(mask, -1) for mask in masks], dtype=np.intp)
         wrong = {mask for group in reading.groups for mask in (*group.found, *group.wanted)}
         present = np.bincount(unfolded.word.strings, minlength=len(masks)) > 0
@@ -150,7 +156,12 @@ class Structure:
         if not found and self.damaged:
             found = list(self._plans_of(self.sound, self.damaged))
         symmetric = bool(self.moments.size) and float(self.moments.max()) < STILL
-        return sorted(found, key=lambda plan: (symmetric and not plan.model.method.symmetric, plan.unexplained))
+
+        def doubt(plan: Plan) -> tuple[bool, float]:
+            asymmetric = symmetric and not plan.model.method.symmetric
+            return asymmetric, round(plan.unexplained + (0.0 if plan.given else UNUSUAL), 6)
+
+        return sorted(found, key=doubt)
 
     def _plans_of(self, judged: Sequence[int], others: Sequence[int]) -> Iterator[Plan]:
         assert self.neighbours is not None
@@ -162,14 +173,14 @@ class Structure:
         judged = [string for string in judged if settled.places[string].size]
         if not judged:
             return
-        for order in self._orders(settled, strings, bool(others)):
+        for order in dict.fromkeys(self._orders(settled, strings, bool(others))):
             for model in recognised(settled, self.neighbours, judged, order):
                 steps = model.steps * self._stretch()
                 if abs(steps - round(steps)) > 1e-6 * steps:
                     continue
                 for fit in self._full_orders(model, judged):
-                    unexplained = self._unexplained(model, fit.order, settled, judged)
-                    yield Plan(model, round(steps), fit.order, fit.rule, fit.given, unexplained, settled, tuple(judged))
+                    unexplained = self._unexplained(model, fit.order, judged)
+                    yield Plan(model, round(steps), fit.order, fit.rule, fit.given, unexplained, tuple(judged), fit.place)
 
     def _orders(self, settled: Settled, strings: list[int], doubtful: bool) -> Iterator[tuple[int, ...]]:
         """Orders to compare with: that of the first rotations, and where those are doubtful further ones."""
@@ -196,74 +207,102 @@ class Structure:
         if not self.missing:
             known = [int(self.terms[string]) for string in model.order]
             if len(known) == size:
-                fits.append(Fit("", False, tuple(known)))
-            else:
-                first = {int(self.terms[s]): int(np.argmax(self._unfolded.word.strings == s)) for s in self.damaged}
-                fits += self._inserted(model, first)
+                fits.append(Fit("", False, tuple(known), 0))
+            if self.damaged:
+                fits += self._inserted(model, judged)
         return fits
 
-    def _inserted(self, model: Model, first: dict[int, int]) -> list[Fit]:
-        """Put damaged strings among the sound ones where the circuit has them first."""
-        places = {}
-        for string in model.order:
-            places[int(self.terms[string])] = int(np.argmax(self._unfolded.word.strings == string))
-        places.update(first)
-        order = tuple(sorted(places, key=places.__getitem__))
-        return [Fit("", False, order)] if len(order) == len(self.hamiltonian.masks) else []
-
-    def _unexplained(self, model: Model, order: tuple[int, ...], settled: Settled, judged: Sequence[int]) -> int:
-        """Count the gaps between sound strings in which damaged ones turn by other angles than the plan has."""
-        found = 0
+    def _inserted(self, model: Model, judged: Sequence[int]) -> list[Fit]:
+        """Put each damaged string among the sound ones where it explains most of its rotations."""
+        word = self._unfolded.word
+        first = {string: int(np.argmax(word.strings == string)) for string in self.damaged}
+        sound = set(judged)
+        order = [string for string in model.order if string in sound]
+        ranks = {string: rank for rank, string in enumerate(order)}
+        places: list[tuple[float, int, int]] = [(float(rank), 0, string) for string, rank in ranks.items()]
         for string in self.damaged:
-            given, ideal = self._gap_angles(model, order, settled, judged, string)
-            if given is None or ideal is None:
-                return MOST_PAIRS
-            found += least_deviation(given, ideal)
-        return found
+            marks = [-0.5, *(ranks[clock] + 0.5 for clock in self._clocks(string, sound))]
+            costs = []
+            for mark in sorted(marks):
+                earlier = {clock: ranks[clock] < mark for clock in self._clocks(string, sound)}
+                costs.append((round(self._unlike(model, judged, string, earlier), 6), mark))
+            places.append((min(costs)[1], first[string], string))
+        terms = tuple(int(self.terms[string]) for _, _, string in sorted(places))
+        return [Fit("", False, terms, 0)] if len(terms) == len(self.hamiltonian.masks) else []
+
+    def _clocks(self, string: int, sound: set[int]) -> list[int]:
+        """Sound strings that anticommute with one, at most `COMPARED` of them."""
+        assert self.neighbours is not None
+        return [int(other) for other in self.neighbours[string] if int(other) in sound][:COMPARED]
+
+    def _unexplained(self, model: Model, order: tuple[int, ...], judged: Sequence[int]) -> float:
+        """Add up which shares of their angles damaged strings turn elsewhere than the plan has them."""
+        found = 0.0
+        for string in self.damaged:
+            found += self._unlike(model, judged, string, self._earlier(order, judged, string))
+        return round(found, 6)
 
     def deviations(self, plan: Plan, string: int) -> int:
-        """Count the gaps in which a damaged string turns by another share of its total than the plan has."""
-        given, ideal = self._gap_angles(plan.model, plan.order, plan.settled, plan.judged, string)
-        return 0 if given is None or ideal is None else scaled_deviation(given, ideal)
+        """Count where a damaged string turns by another share of its total than the plan has."""
+        earlier = self._earlier(plan.order, plan.judged, string)
+        return scaled_deviation(*self._clocked(plan.model, plan.judged, string, earlier))
 
-    def _gap_angles(
-        self, model: Model, order: tuple[int, ...], settled: Settled, judged: Sequence[int], string: int
-    ) -> tuple[Reals, Reals] | tuple[None, None]:
-        """Give the angles of a damaged string between sound ones, and those it should have there.
+    def _earlier(self, order: tuple[int, ...], judged: Sequence[int], string: int) -> dict[int, bool]:
+        """Say which clocks of a string stand before it in an order of terms."""
+        ranks = {term: rank for rank, term in enumerate(order)}
+        own = ranks[int(self.terms[string])]
+        return {clock: ranks[int(self.terms[clock])] < own for clock in self._clocks(string, set(judged))}
 
-        None where the sound strings would not have merged as they have in this order.
+    def _unlike(self, model: Model, judged: Sequence[int], string: int, earlier: dict[int, bool]) -> float:
+        """Give the share of its angle that a damaged string turns elsewhere; kept, since plans ask for the same."""
+        key = (model.method.name, model.steps, string, tuple(judged), tuple(earlier.items()))
+        if key not in self._known:
+            self._known[key] = unlike(*self._clocked(model, judged, string, earlier))
+        return self._known[key]
+
+    def _clocked(
+        self, model: Model, judged: Sequence[int], string: int, earlier: dict[int, bool]
+    ) -> tuple[Reals, Reals]:
+        """Give the angles of a damaged string by the time on the clocks of sound ones, and those it should have.
+
+        A clock is a sound string that anticommutes with it: its time is the share of its total that it has turned.
+        Merging moves no rotation past such a string, so that it does not matter how either was merged.
         """
-        assert self.neighbours is not None
-        method, steps, size = model.method, model.steps, len(order)
-        ranks = np.empty(size, dtype=np.intp)
-        ranks[list(order)] = np.arange(size)
+        method, steps = model.method, model.steps
         word = self._unfolded.word
         mine = np.flatnonzero(word.strings == string)
-        term = int(self.terms[string])
-        stages = np.arange(steps * method.weights.size)
         shares = np.tile(method.weights, steps) / steps
-        own = stage_places(method, steps, stages, int(ranks[term]), size)
-        sound, kept = set(judged), set(model.order)
+        forward = np.tile(method.forward, steps)
+        angle = self.hamiltonian.coefficients[int(self.terms[string])] * self._length(judged)
+        fine = 64.0 * shares.size
+        begun = np.cumsum(shares) - shares
         given, ideal = [np.zeros(0)], [np.zeros(0)]
-        angle = self.hamiltonian.coefficients[term] * self._length(judged[0], settled)
-        for other in [int(one) for one in self.neighbours[string] if int(one) in sound][:COMPARED]:
-            stages_of, _ = method.pattern(steps, *self._sides(other, kept, ranks))
-            if stages_of.size != settled.places[other].size:
-                return None, None
-            theirs = stage_places(method, steps, stages_of, int(ranks[self.terms[other]]), size)
-            given.append(gaps(mine, word.angles[mine], settled.places[other]))
-            ideal.append(gaps(own, shares * angle, theirs))
+        for clock, before in earlier.items():
+            turned = self._turned(clock)
+            found = turned[mine] / turned[-1]
+            meant = begun + np.where(forward == before, shares, 0.0)
+            marks = np.floor(np.concatenate([found, meant]) * fine + 0.37)
+            _, bins = np.unique(marks, return_inverse=True)
+            size = int(bins.max()) + 1
+            given.append(np.bincount(bins[: found.size], weights=word.angles[mine], minlength=size))
+            ideal.append(np.bincount(bins[found.size :], weights=shares * angle, minlength=size))
         return np.concatenate(given), np.concatenate(ideal)
 
-    def _sides(self, string: int, kept: set[int], ranks: Ints) -> tuple[bool, bool]:
-        assert self.neighbours is not None
-        own = ranks[self.terms[string]]
-        known = np.array([ranks[self.terms[one]] for one in self.neighbours[string] if int(one) in kept])
-        return bool(np.any(known < own)), bool(np.any(known > own))
+    def _turned(self, clock: int) -> Reals:
+        """Give the angle that a string has turned by at each place of the word."""
+        if clock not in self._clock_angles:
+            if len(self._clock_angles) >= COMPARED:
+                self._clock_angles.clear()
+            word = self._unfolded.word
+            self._clock_angles[clock] = np.cumsum(np.where(word.strings == clock, word.angles, 0.0))
+        return self._clock_angles[clock]
 
-    def _length(self, string: int, settled: Settled) -> float:
-        """Time that the shortened word takes, by a sound string."""
-        return float(settled.angles[string].sum()) / self.hamiltonian.coefficients[int(self.terms[string])]
+    def _length(self, judged: Sequence[int]) -> float:
+        """Time that the shortened word takes, by the sound string that turns most."""
+        word = self._unfolded.word
+        short = np.bincount(word.strings, weights=word.angles, minlength=len(self.masks))[list(judged)]
+        most = int(np.argmax(np.abs(short)))
+        return float(short[most]) / self.hamiltonian.coefficients[int(self.terms[judged[most]])]
 
     def _stretch(self) -> float:
         """Full length over that of the shortened word, by the sound string that turns most."""
@@ -276,13 +315,17 @@ class Structure:
         return float(totals[most] / short[most]) if short[most] else 1.0
 
 
-def least_deviation(given: Reals, ideal: Reals) -> int:
-    """Count the entries that differ, as they are or once scaled to the same sum (which costs one)."""
-    if not given.size:
-        return 0
-    slack = GAP_SLACK * max(float(np.max(np.abs(ideal))), 5e-324)
-    plain = int(np.count_nonzero(np.abs(given - ideal) > slack))
-    return min(plain, 1 + scaled_deviation(given, ideal))
+def unlike(given: Reals, ideal: Reals) -> float:
+    """Give the share of angles that differ, as they are or, at a price, once scaled to the same sum."""
+    whole = float(np.abs(ideal).sum())
+    if not whole:
+        return 0.0
+    plain = float(np.abs(given - ideal).sum())
+    total = float(ideal.sum())
+    if not total:
+        return plain / whole
+    scaled = ideal * (float(given.sum()) / total)
+    return min(plain / whole, SCALING + float(np.abs(given - scaled).sum()) / max(float(np.abs(scaled).sum()), 5e-324))
 
 
 def scaled_deviation(given: Reals, ideal: Reals) -> int:
@@ -291,5 +334,5 @@ def scaled_deviation(given: Reals, ideal: Reals) -> int:
     if not total or not given.size:
         return 0
     scaled = ideal * (float(given.sum()) / total)
-    slack = GAP_SLACK * max(float(np.max(np.abs(scaled))), float(np.max(np.abs(given))), 5e-324)
+    slack = SLACK * max(float(np.max(np.abs(scaled))), float(np.max(np.abs(given))), 5e-324)
     return int(np.count_nonzero(np.abs(given - scaled) > slack))
