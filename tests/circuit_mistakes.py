@@ -86,9 +86,7 @@ def a_model(draw):
     chosen = sorted(strings)
     draw.shuffle(chosen)
     return (
-        tt.Operator.from_masks(
-            [x for x, _ in chosen], [z for _, z in chosen], draw.uniform(-1, 1, len(chosen)), n
-        ),
+        tt.Operator.from_masks([x for x, _ in chosen], [z for _, z in chosen], draw.uniform(-1, 1, len(chosen)), n),
         False,
     )
 
@@ -111,9 +109,7 @@ def a_right_circuit(draw, shuffled=0.15):
 
 
 def written_out(rotations):
-    return tt.Rotations(
-        rotations.x_masks, rotations.z_masks, rotations.angles, rotations.qubits, rotations.phase
-    )
+    return tt.Rotations(rotations.x_masks, rotations.z_masks, rotations.angles, rotations.qubits, rotations.phase)
 
 
 def columns(rotations):

@@ -17,6 +17,8 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
+from trueturn.commands.diagnose import diagnose
+
 if TYPE_CHECKING:
     from trueturn.audit.job import Job, Progress
     from trueturn.partition import Partition
@@ -142,6 +144,9 @@ def formulas(job: Path | None, as_json: bool) -> int:
     else:
         say_rich(lambda width: page(known, partitions))
     return 0
+
+
+commands.add_command(diagnose)
 
 
 def reference_document(task: Job, found: Reference) -> dict[str, Any]:

@@ -7,15 +7,14 @@ circuit is built again from the formula, the number of steps and the order that 
 
 from __future__ import annotations
 
-import math
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 
 from trueturn.audit.figures import plain
 from trueturn.diagnosis.readings import Reading
 from trueturn.diagnosis.result import Finding
 from trueturn.diagnosis.structure import Hamiltonian, Plan, Structure
 from trueturn.diagnosis.totals import Group, Sheet, letter_pairs, support
-from trueturn.diagnosis.unfolding import Mask, Unfolded, edited, unfold
+from trueturn.diagnosis.unfolding import Mask, Unfolded, edited
 from trueturn.partition_rules import string_text
 from trueturn.rotations import Rotations
 
@@ -31,11 +30,12 @@ def describe(
     unfolded: Unfolded,
     sheet: Sheet,
     structure: Structure,
+    rivals: Sequence[Reading],
     time: float,
     residual: Sequence[str],
 ) -> list[Finding]:
-    """Name the mistakes of a circuit whose totals are off."""
-    return _Describer(rotations, unfolded, sheet, structure, time, residual).findings()
+    """Name the mistakes of a circuit whose totals are off; rivals are readings that fit as well."""
+    return _Describer(rotations, unfolded, sheet, structure, rivals, time, residual).findings()
 
 
 class _Describer:
@@ -45,6 +45,7 @@ class _Describer:
         unfolded: Unfolded,
         sheet: Sheet,
         structure: Structure,
+        rivals: Sequence[Reading],
         time: float,
         residual: Sequence[str],
     ) -> None:
@@ -53,10 +54,10 @@ class _Describer:
         self.structure = structure
         self.hamiltonian: Hamiltonian = structure.hamiltonian
         self.reading: Reading = structure.reading
+        self.rivals = rivals
         self.time = time
         self.residual = tuple(residual)
         self.plan: Plan | None = structure.plans[0] if structure.plans else None
-        self.counts = dict(zip(structure.masks, unfolded.counts.tolist(), strict=True))
         self.string_of = {mask: string for string, mask in enumerate(structure.masks)}
         self.totals: list[float] = unfolded.totals.tolist()
         self.phase = 0.0 - self.hamiltonian.operator.identity_coefficient * time
@@ -82,7 +83,7 @@ class _Describer:
     # --- circuits
 
     def _needs_rebuilding(self) -> bool:
-        return any(self._irregular(group) for group in self.reading.groups)
+        return self._steps_wrong() or any(self._irregular(group) for group in self.reading.groups)
 
     def _irregular(self, group: Group) -> bool:
         """Whether a group cannot be mended where its rotations stand."""
@@ -118,10 +119,10 @@ class _Describer:
                 else:
                     rewritten[mask] = (group.wanted[place], group.factor)
 
-        def change(mask: Mask, angle: float) -> tuple[Mask, float] | None:
+        def change(mask: Mask) -> tuple[Mask, float] | None:
             mask = self.reading.mask(mask)
             new = rewritten.get(mask, (mask, 1.0))
-            return None if new is None else (new[0], angle * new[1] / factor)
+            return None if new is None else (new[0], new[1] / factor)
 
         return edited(self.rotations, change, self.phase)
 
@@ -142,41 +143,15 @@ class _Describer:
         )
 
     def _relabelled(self, mended: Rotations) -> Finding:
-        reading = self.reading
+        kind, text, fact, change = _reading_words(self.reading, self.rotations.qubits)
         off = sum(mask not in self.sheet.wanted for mask in self.sheet.found)
-        evidence = (f"{off} of {len(self.sheet.found)} strings are not in the Hamiltonian as they stand",)
-        if reading.kind == "reversed":
-            return Finding(
-                "qubits reversed",
-                True,
-                "The qubits are numbered in reverse order.",
-                (*evidence, "with qubit q read as qubit n-1-q the angle totals fit"),
-                "Reverse the order of the qubits.",
-                mended,
-            )
-        if reading.kind == "permuted":
-            moved = [f"{q}→{name}" for q, name in enumerate(reading.names) if q != name]
-            return Finding(
-                "qubits permuted",
-                True,
-                "The qubits are permuted.",
-                (*evidence, f"with qubits read as {', '.join(moved)} the angle totals fit"),
-                f"Rename the qubits: {', '.join(moved)}.",
-                mended,
-            )
-        letters = reading.exchange
-        turned = " and ".join(letters) if len(letters) == 2 else "→".join((*letters, letters[0]))
-        qubits = _qubits(reading.where)
-        everywhere = len(qubits) == self.rotations.qubits
-        where = "on every qubit" if everywhere else f"on qubit {', '.join(map(str, qubits))}"
-        return Finding(
-            "letters exchanged",
-            True,
-            f"{turned} are exchanged {where}: a basis change is wrong.",
-            (*evidence, "with the letters exchanged back the angle totals fit"),
-            f"Mend the basis change {where}.",
-            mended,
+        others = tuple(
+            (_reading_words(rival, self.rotations.qubits)[3], edited(self.rotations, _renaming(rival), self.phase))
+            for rival in self.rivals[:SHOWN]
+            if rival.kind != "given" and rival.factor == 1.0 and not rival.groups
         )
+        evidence = (f"{off} of {len(self.sheet.found)} strings are not in the Hamiltonian as they stand", fact)
+        return Finding(kind, True, text, evidence, change, mended, alternatives=others, certain=not self.rivals)
 
     def _steps_wrong(self) -> bool:
         """Whether the common factor reads as a number of steps: a whole one, and no plain factor of two."""
@@ -226,7 +201,9 @@ class _Describer:
         else:
             text = f"All angles are {shown(factor)} times what they should be."
             what = ("angles scaled", text, f"Multiply all angles by {shown(1 / factor)}, or check the time.")
-        return Finding(what[0], True, what[1], evidence, what[2], mended, alternatives=alternatives)
+        return Finding(
+            what[0], True, what[1], evidence, what[2], mended, alternatives=alternatives, certain=not alternatives
+        )
 
     # --- what is wrong with some strings
 
@@ -240,6 +217,11 @@ class _Describer:
             rule = f" in the order of {self.plan.rule!r}" if self.plan.rule else ""
             name = self.plan.model.method.name
             evidence += (f"the other strings run as {name} in {self.plan.steps} steps{rule}",)
+        others = self._other_places(group) if mended is not None else ()
+        placed = group.kind in ("missing", "letters", "place") and irregular
+        guessed = placed and self.plan is not None and not self.plan.given
+        if guessed and mended is not None:
+            change += " No rule gives this order of parts, so the place is a guess."
         return Finding(
             kind,
             True,
@@ -248,7 +230,8 @@ class _Describer:
             change if mended is not None else UNKNOWN,
             mended,
             strings,
-            self._other_places(group) if mended is not None else (),
+            others,
+            certain=not (others or guessed),
         )
 
     def _words(self, group: Group) -> tuple[str, str, str]:
@@ -269,8 +252,7 @@ class _Describer:
             return "term misplaced", f"{names} acts on {_text(group.found[0])} instead.", "Move it to its qubits."
         factor = group.factor
         if self._irregular(group):
-            extra = max(self.counts[mask] / max(self._expected(mask), 1.0) for mask in group.found)
-            if abs(factor - 2.0) <= WHOLE and abs(extra - 2.0) < 0.3:
+            if abs(factor - 2.0) <= WHOLE and len(group.found) == 1:
                 return "term repeated", f"{names} appears twice in every step.", "Take one of the two out."
             if self._at_seams(group):
                 text = f"Half-steps of {names} are merged wrongly: the total is {shown(factor)} times c·t."
@@ -287,11 +269,6 @@ class _Describer:
     def _fact(self, mask: Mask) -> str:
         wanted = self.sheet.wanted.get(mask, 0.0)
         return f"{_text(mask)}: total {shown(self._total(mask))}, where c·t is {shown(wanted)}"
-
-    def _expected(self, mask: Mask) -> float:
-        """Rotations that the plan's circuit has about a string, when no string before or after it lets them merge."""
-        assert self.plan is not None
-        return float(self.plan.model.method.weights.size * self.plan.steps)
 
     def _at_seams(self, group: Group) -> bool:
         """Whether all strings of the group stand at an end of the order, where half-steps meet."""
@@ -326,6 +303,35 @@ class _Describer:
         return tuple(found)
 
 
+def _renaming(reading: Reading) -> Callable[[Mask], tuple[Mask, float]]:
+    return lambda mask: (reading.mask(mask), 1.0)
+
+
+def _reading_words(reading: Reading, qubits: int) -> tuple[str, str, str, str]:
+    """Word a reading: kind, what is wrong, evidence, change."""
+    if reading.kind == "reversed":
+        return (
+            "qubits reversed",
+            "The qubits are numbered in reverse order.",
+            "with qubit q read as qubit n-1-q the angle totals fit",
+            "Reverse the order of the qubits.",
+        )
+    if reading.kind == "permuted":
+        moved = ", ".join(f"{q}→{name}" for q, name in enumerate(reading.names) if q != name)
+        fact = f"with qubits read as {moved} the angle totals fit"
+        return "qubits permuted", "The qubits are permuted.", fact, f"Rename the qubits: {moved}."
+    letters = reading.exchange
+    turned = " and ".join(letters) if len(letters) == 2 else "→".join((*letters, letters[0]))
+    where = ", ".join(map(str, _qubits(reading.where)))
+    on = "on every qubit" if reading.where.bit_count() == qubits else f"on qubit {where}"
+    return (
+        "letters exchanged",
+        f"{turned} are exchanged {on}: a basis change is wrong.",
+        "with the letters exchanged back the angle totals fit",
+        f"Exchange {turned} {on}.",
+    )
+
+
 def shown(value: float) -> str:
     """Write a number to eight digits, or as shortly as these can be read back."""
     return plain(float(f"{value:.8g}"))
@@ -351,11 +357,3 @@ def _qubits(mask: int) -> list[int]:
 def _span(mask: Mask) -> int:
     qubits = _qubits(support(mask))
     return qubits[-1] - qubits[0] if len(qubits) > 1 else 0
-
-
-def totals_fit(rotations: Rotations, sheet: Sheet) -> bool:
-    """Whether a mended circuit has the totals wanted."""
-    made = unfold(rotations)
-    found = dict(zip(made.masks, made.totals.tolist(), strict=True))
-    strings = {**found, **sheet.wanted}
-    return all(math.isclose(found.get(m, 0.0), sheet.wanted.get(m, 0.0), abs_tol=sheet.allowed(m)) for m in strings)

@@ -9,12 +9,12 @@ import numpy as np
 
 from trueturn.diagnosis.describe import describe
 from trueturn.diagnosis.frames import moved_to_the_end
+from trueturn.diagnosis.ordering import clashes, settle
 from trueturn.diagnosis.readings import Reading, readings
 from trueturn.diagnosis.result import Character, Diagnosis, Finding
-from trueturn.diagnosis.ordering import clashes, settle
 from trueturn.diagnosis.structure import MOST_STRINGS, STILL, Hamiltonian, Plan, Structure
 from trueturn.diagnosis.totals import Sheet, support
-from trueturn.diagnosis.unfolding import Mask, Unfolded, unfold
+from trueturn.diagnosis.unfolding import Mask, Unfolded, edited, unfold
 from trueturn.formulas import formula
 from trueturn.operator import Operator
 from trueturn.partition_rules import string_text
@@ -26,6 +26,8 @@ UNIT = 2.0**-53
 MOST_MISTAKES = 3
 """More mistakes than this at once are not a diagnosis but a guess."""
 SOME = 1e-9
+RIVAL = 0.1
+"""Readings whose doubt differs by less are not told apart."""
 
 
 @dataclass(frozen=True)
@@ -38,6 +40,7 @@ class Case:
     readings: tuple[Reading, ...]
     hidden: tuple[Mask, ...] = ()
     residual: tuple[str, ...] = ()
+    relabelled: tuple[tuple[int, int], ...] = ()
     moved: int = 0
 
     @property
@@ -49,25 +52,15 @@ class Case:
 def examine(rotations: Rotations, operator: Operator, time: float, tolerance: float) -> Diagnosis:
     """Diagnose; the arguments are checked already."""
     hamiltonian = Hamiltonian(operator)
-    case = _case(rotations, hamiltonian, time, tolerance)
-    if case.cost:
-        for nearest in (False, True):
-            moved = moved_to_the_end(rotations, nearest) if case.cost else None
-            if moved is None:
-                continue
-            other = _case(moved.rotations, hamiltonian, time, tolerance)
-            other = replace(other, residual=moved.residual, moved=moved.gates)
-            if other.cost < case.cost - 0.5 and not (nearest and other.cost):
-                case = other
-    structure = _chosen(case, hamiltonian)
+    case = _best_case(rotations, hamiltonian, time, tolerance)
+    structure, rivals = _chosen(case, hamiltonian)
     remarks = _remarks(case, structure, rotations, hamiltonian, time)
-    reason = "" if not case.cost else _undetermined(case, structure, hamiltonian, time)
+    reason = _undetermined(case, structure) if case.cost else ""
     mistakes: list[Finding] = []
     if case.cost and not reason:
-        mistakes = describe(case.rotations, case.unfolded, case.sheet, structure, time, case.residual)
-    matches: bool | None = None if reason else not mistakes
+        mistakes = describe(case.rotations, case.unfolded, case.sheet, structure, rivals, time, case.residual)
     return Diagnosis(
-        matches=matches,
+        matches=None if reason else not mistakes,
         findings=(*mistakes, *remarks),
         character=_character(structure, bool(reason)),
         reason=reason,
@@ -76,6 +69,33 @@ def examine(rotations: Rotations, operator: Operator, time: float, tolerance: fl
         rotations=rotations.count,
         time=time,
     )
+
+
+def _best_case(rotations: Rotations, hamiltonian: Hamiltonian, time: float, tolerance: float) -> Case:
+    """Take the circuit as it is, or with its Clifford gates moved to the end where that leaves less to explain."""
+    frame: Rotations | None = getattr(rotations, "frame", None)  # circuits read from a file may end in one
+    framed = frame is not None and frame.count > 0
+    moved_qubits = any(q != to for q, to in enumerate(getattr(rotations, "relabelling", ())))
+    plain = edited(rotations, _as_it_is, rotations.phase) if framed or moved_qubits else rotations
+    case = _case(plain, hamiltonian, time, tolerance)
+    if frame is not None and framed:
+        left = moved_to_the_end(frame)
+        if left is not None:
+            case = replace(case, residual=left.residual, relabelled=left.relabelled)
+            plain = plain + edited(frame, _as_it_is, 0.0)
+    for nearest in (False, True):
+        moved = moved_to_the_end(plain, nearest) if case.cost else None
+        if moved is None:
+            continue
+        other = _case(moved.rotations, hamiltonian, time, tolerance)
+        other = replace(other, residual=moved.residual, relabelled=moved.relabelled, moved=moved.gates)
+        if other.cost < case.cost - 0.5 and not (nearest and other.cost):
+            case = other
+    return case
+
+
+def _as_it_is(mask: Mask) -> tuple[Mask, float]:
+    return mask, 1.0
 
 
 def _case(rotations: Rotations, hamiltonian: Hamiltonian, time: float, tolerance: float) -> Case:
@@ -87,7 +107,9 @@ def _case(rotations: Rotations, hamiltonian: Hamiltonian, time: float, tolerance
         slack=dict(zip(unfolded.masks, roundings.tolist(), strict=True)),
         tolerance=tolerance,
     )
-    return Case(rotations, unfolded, sheet, tuple(readings(sheet, rotations.qubits)), _hidden(unfolded, sheet, rotations))
+    return Case(
+        rotations, unfolded, sheet, tuple(readings(sheet, rotations.qubits)), _hidden(unfolded, sheet, rotations)
+    )
 
 
 def _hidden(unfolded: Unfolded, sheet: Sheet, rotations: Rotations) -> tuple[Mask, ...]:
@@ -104,32 +126,42 @@ def _hidden(unfolded: Unfolded, sheet: Sheet, rotations: Rotations) -> tuple[Mas
     return tuple(unfolded.masks[string] for string in doubtful if settled.places[string].size)
 
 
-def _chosen(case: Case, hamiltonian: Hamiltonian) -> Structure:
-    """Choose among readings that leave equally much: the one whose order of rotations is the most usual."""
+def _chosen(case: Case, hamiltonian: Hamiltonian) -> tuple[Structure, list[Reading]]:
+    """Choose among readings that leave equally much: the one whose order of rotations is the most usual.
+
+    Returns
+    -------
+    Structure
+    list of Reading
+        Others that do as well.
+    """
     structures = [Structure(case.unfolded, hamiltonian, reading) for reading in case.readings]
     if len(structures) == 1:
-        return structures[0]
+        return structures[0], []
 
-    def unusual(structure: Structure) -> float:
+    def doubt(structure: Structure) -> float:
         plan = structure.plans[0] if structure.plans else None
         if plan is None:
-            return 0.45
+            return structure.reading.cost + 0.45
         usual = 0.0 if plan.given else 0.2 if plan.rule else 0.4
-        return usual + 0.01 * plan.place + 0.01 * min(plan.unexplained, 10)
+        return structure.reading.cost + usual + 0.01 * plan.place + 0.01 * min(plan.unexplained, 10.0)
 
-    return min(structures, key=lambda structure: structure.reading.cost + unusual(structure))
+    ranked = sorted(((doubt(structure), place) for place, structure in enumerate(structures)))
+    least = ranked[0][0]
+    rivals = [structures[place].reading for value, place in ranked[1:] if value < least + RIVAL]
+    return structures[ranked[0][1]], rivals
 
 
-def _undetermined(case: Case, structure: Structure, hamiltonian: Hamiltonian, time: float) -> str:
+def _undetermined(case: Case, structure: Structure) -> str:
     """Say why the circuit does not determine the answer; empty where it does."""
     reading = structure.reading
     advice = "; where the state fits in memory, an audit decides"
     if case.hidden:
         names = ", ".join(string_text(*mask) for mask in case.hidden[:4])
         return f"strings that the Hamiltonian lacks turn forth and back ({names}), as in a change of basis{advice}"
-    if _only_whole_turns(case, hamiltonian):
+    if _only_whole_turns(case.sheet):
         return f"the angle totals agree with c·t only modulo π, so that several circuits would look like this{advice}"
-    if reading.cost >= 2 and _random_sample(case, hamiltonian, time):
+    if reading.cost >= 2 and _random_sample(case):
         return (
             "the circuit looks like one random sample (equal angles, counts like drawn ones); only the average over "
             f"samples follows exp(-iHt){advice}"
@@ -152,8 +184,8 @@ def _undetermined(case: Case, structure: Structure, hamiltonian: Hamiltonian, ti
     return ""
 
 
-def _only_whole_turns(case: Case, hamiltonian: Hamiltonian) -> bool:
-    sheet = case.sheet
+def _only_whole_turns(sheet: Sheet) -> bool:
+    """Whether every total that is off is off by a multiple of π."""
     off = False
     for mask in {**sheet.found, **sheet.wanted}:
         rest = sheet.found.get(mask, 0.0) - sheet.wanted.get(mask, 0.0)
@@ -166,7 +198,7 @@ def _only_whole_turns(case: Case, hamiltonian: Hamiltonian) -> bool:
     return off
 
 
-def _random_sample(case: Case, hamiltonian: Hamiltonian, time: float) -> bool:
+def _random_sample(case: Case) -> bool:
     """Whether angles and counts are those of rotations drawn with chances |c| and equal angles.
 
     Then Σ|θ| is Σ|c t| exactly, every sign is right, every angle is a multiple of one, and the counts lie within six
@@ -197,7 +229,7 @@ def _remarks(
     case: Case, structure: Structure, rotations: Rotations, hamiltonian: Hamiltonian, time: float
 ) -> list[Finding]:
     """Say what does not make the circuit wrong, yet is worth knowing."""
-    remarks = []
+    remarks: list[Finding] = []
     if case.cost:
         return remarks
     plan = structure.plans[0] if structure.plans else None
@@ -215,6 +247,20 @@ def _remarks(
                     fixed=merged,
                 )
             )
+    moves = list(case.relabelled)
+    moves += [(q, to) for q, to in enumerate(getattr(rotations, "relabelling", ())) if q != to]
+    if moves:
+        shown = ", ".join(f"{old} on {new}" for old, new in moves)
+        remarks.append(
+            Finding(
+                kind="qubits relabelled",
+                mistake=False,
+                text="The circuit ends with its qubits relabelled, as routing leaves them.",
+                evidence=(f"at the end, qubits are elsewhere: {shown}",),
+                change="Read the qubits where they are, or state the layout at the end (end_layout).",
+                fixed=case.rotations,
+            )
+        )
     phase = 0.0 - hamiltonian.operator.identity_coefficient * time
     off = math.remainder(case.unfolded.phase - phase, 2 * math.pi)
     if abs(off) > SOME * max(1.0, abs(phase)) and not case.moved:

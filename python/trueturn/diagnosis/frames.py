@@ -9,6 +9,7 @@ end. Where the circuit undid what it did, that is the identity.
 from __future__ import annotations
 
 import math
+from dataclasses import dataclass
 
 import numpy as np
 
@@ -81,6 +82,23 @@ class _Frame:
                 left.append(f"{'X' if is_x else 'Z'}_{qubit}")
         return tuple(left)
 
+    def relabelled(self) -> tuple[tuple[int, int], ...]:
+        """Give (from, to) of each qubit moved, where the gates do nothing else; empty otherwise.
+
+        With C† X_q C = X_p, what qubit p held is on qubit q afterwards.
+        """
+        moves = []
+        for (qubit, is_x), (x, z, power) in sorted(self._images.items()):
+            bits = x if is_x else z
+            if power % 4 or bits.bit_count() != 1 or (z if is_x else x):
+                return ()
+            source = bits.bit_length() - 1
+            if self._of(qubit, not is_x)[1 if is_x else 0] != bits:
+                return ()
+            if is_x and source != qubit:
+                moves.append((source, qubit))
+        return tuple(moves)
+
 
 def _times(left: _Signed, right: _Signed) -> _Signed:
     """Multiply i^a X^x Z^z by i^b X^x' Z^z': moving Z^z past X^x' costs a sign for each shared qubit."""
@@ -91,6 +109,7 @@ def _times(left: _Signed, right: _Signed) -> _Signed:
     )
 
 
+@dataclass(frozen=True)
 class Moved:
     """A circuit with its Clifford gates moved to the end.
 
@@ -101,12 +120,16 @@ class Moved:
     gates : int
         How many Clifford gates were moved.
     residual : tuple of str
-        One-qubit operators that the product of the moved gates does not leave as they are; empty when it is the
-        identity but for a phase.
+        One-qubit operators that the product of the moved gates does not leave as they are; empty where it is the
+        identity or a relabelling, but for a phase.
+    relabelled : tuple of (int, int)
+        (from, to) of the qubits that the product of the gates moves, where it does nothing but that.
     """
 
-    def __init__(self, rotations: Rotations, gates: int, residual: tuple[str, ...]) -> None:
-        self.rotations, self.gates, self.residual = rotations, gates, residual
+    rotations: Rotations
+    gates: int
+    residual: tuple[str, ...]
+    relabelled: tuple[tuple[int, int], ...]
 
 
 def moved_to_the_end(rotations: Rotations, nearest: bool = False) -> Moved | None:
@@ -158,4 +181,6 @@ def moved_to_the_end(rotations: Rotations, nearest: bool = False) -> Moved | Non
         x.append(image[0])
         z.append(image[1])
         kept.append(sign * angle)
-    return Moved(Rotations(x, z, kept, rotations.qubits, rotations.phase), gates, frame.residual())
+    moves = frame.relabelled()
+    left_over = () if moves else frame.residual()
+    return Moved(Rotations(x, z, kept, rotations.qubits, rotations.phase), gates, left_over, moves)

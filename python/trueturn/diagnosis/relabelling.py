@@ -21,6 +21,7 @@ MOST = 24
 VISITS = 300
 """Colourings that are refined before the search gives up."""
 
+_Key = tuple[int, tuple[tuple[int, tuple[tuple[int, int], ...], int], ...]]
 _String = tuple[int, tuple[tuple[int, int], ...]]  # class of the coefficient; (qubit, letter) pairs
 
 
@@ -124,20 +125,22 @@ def _idle_apart(strings: Sequence[_String], qubits: int) -> list[int]:
 def _refined(
     here: Sequence[_String], there: Sequence[_String], left: list[int], right: list[int]
 ) -> tuple[list[int], list[int]]:
+    """Split colours by what the strings on each qubit look like, until nothing splits any more."""
     count = 0
     while True:
-        names: dict[object, int] = {}
-        sides = []
-        for strings, colours in ((here, left), (there, right)):
-            seen: list[list[object]] = [[] for _ in colours]
-            for group, letters in strings:
-                key = (group, tuple(sorted((letter, colours[qubit]) for qubit, letter in letters)))
-                for qubit, letter in letters:
-                    seen[qubit].append((key, letter))
-            sides.append([(colour, tuple(sorted(own))) for colour, own in zip(colours, seen, strict=True)])  # type: ignore[type-var]
-        for key in sorted(set(sides[0]) | set(sides[1])):  # type: ignore[type-var]
-            names[key] = len(names)
-        left, right = [names[key] for key in sides[0]], [names[key] for key in sides[1]]
+        keys = _keys(here, left), _keys(there, right)
+        names = {key: name for name, key in enumerate(sorted({*keys[0], *keys[1]}))}
+        left, right = [names[key] for key in keys[0]], [names[key] for key in keys[1]]
         if len(names) == count:
             return left, right
         count = len(names)
+
+
+def _keys(strings: Sequence[_String], colours: Sequence[int]) -> list[_Key]:
+    """Give for each qubit its colour, and the strings on it by class, colours and its own letter."""
+    seen: list[list[tuple[int, tuple[tuple[int, int], ...], int]]] = [[] for _ in colours]
+    for group, letters in strings:
+        look = tuple(sorted((letter, colours[qubit]) for qubit, letter in letters))
+        for qubit, letter in letters:
+            seen[qubit].append((group, look, letter))
+    return [(colour, tuple(sorted(own))) for colour, own in zip(colours, seen, strict=True)]

@@ -36,6 +36,9 @@ class Finding:
         The Pauli strings concerned, in the Hamiltonian's labels; empty where all are.
     alternatives : tuple of (str, Rotations)
         Other changes that would explain the same evidence.
+    certain : bool
+        False where the circuit leaves several changes open: `fixed` is the most usual one, `alternatives` are others
+        (not all of them where the place of a rotation is open).
     """
 
     kind: str
@@ -46,6 +49,7 @@ class Finding:
     fixed: Rotations | None = field(repr=False)
     strings: tuple[str, ...] = ()
     alternatives: tuple[tuple[str, Rotations], ...] = field(default=(), repr=False)
+    certain: bool = True
 
 
 @dataclass(frozen=True)
@@ -148,6 +152,7 @@ class Diagnosis:
                     "evidence": list(finding.evidence),
                     "change": finding.change,
                     "mended": finding.fixed is not None,
+                    "certain": finding.certain,
                     "strings": list(finding.strings),
                     "alternatives": [text for text, _ in finding.alternatives],
                 }
@@ -166,7 +171,7 @@ class Diagnosis:
         for finding in self.findings:
             lines += ["", f"{'✗' if finding.mistake else '·'} {finding.text}"]
             lines += [f"    {fact}" for fact in finding.evidence]
-            lines += [f"    → {finding.change}"]
+            lines += [f"    → {finding.change}" + ("" if finding.certain else " (the likeliest of several that fit)")]
             lines += [f"    or: {text}" for text, _ in finding.alternatives]
         lines += ["", self.character.text]
         return "\n".join(lines)

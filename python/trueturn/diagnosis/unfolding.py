@@ -79,14 +79,16 @@ def unfold(rotations: Rotations) -> Unfolded:
     """Turn a circuit into arrays; time and memory grow with what it stores, not with what it repeats."""
     masks, nodes = read_nodes(rotations)
     size = len(masks)
-    totals, sizes, counts = np.zeros((3, size))
+    totals: Reals = np.zeros(size)
+    sizes: Reals = np.zeros(size)
+    counts: Reals = np.zeros(size)
     _add_up(nodes, 1.0, totals, sizes, counts)
     for cap in (2**63, *CAPS):
         kept = _capped(nodes, cap)
         if cap == CAPS[-1] or _length(kept) <= WRITTEN_OUT:
             break
     word = _word(kept)
-    short = np.bincount(word.strings, weights=word.angles, minlength=size)
+    short: Reals = np.bincount(word.strings, weights=word.angles, minlength=size).astype(np.float64)
     phase = rotations.phase
     if (0, 0) in masks:
         place = masks.index((0, 0))
@@ -95,7 +97,8 @@ def unfold(rotations: Rotations) -> Unfolded:
         strings = word.strings[keep]
         word = Word(strings - (strings > place), word.angles[keep])
         masks = masks[:place] + masks[place + 1 :]
-        totals, sizes, counts, short = (np.delete(values, place) for values in (totals, sizes, counts, short))
+        totals, sizes = np.delete(totals, place), np.delete(sizes, place)
+        counts, short = np.delete(counts, place), np.delete(short, place)
     return Unfolded(masks, totals, sizes, counts, word, totals - short, phase)
 
 
@@ -107,42 +110,47 @@ def read_nodes(rotations: Rotations) -> tuple[list[Mask], tuple[Node, ...]]:
         blocks = body.blocks
         if len(blocks) > 1 or (blocks and blocks[0].repeat > 1):
             return Node(repeat, None, None, tuple(node(*block) for block in blocks))
-        pairs = zip(body.x_masks.tolist(), body.z_masks.tolist(), strict=True)
-        strings = np.array([numbers.setdefault(pair, len(numbers)) for pair in pairs], dtype=np.intp)
-        return Node(repeat, strings, np.asarray(body.angles, dtype=np.float64))
+        x, z, angles = body._written_out()
+        strings = np.array([numbers.setdefault(pair, len(numbers)) for pair in zip(x, z, strict=True)], dtype=np.intp)
+        return Node(repeat, strings, np.asarray(angles, dtype=np.float64))
 
     nodes = tuple(node(*block) for block in rotations.blocks)
     return list(numbers), nodes
 
 
-def edited(rotations: Rotations, change: Callable[[Mask, float], tuple[Mask, float] | None], phase: float) -> Rotations:
+def edited(rotations: Rotations, change: Callable[[Mask], tuple[Mask, float] | None], phase: float) -> Rotations:
     """Rewrite every rotation where it stands, repeats untouched.
 
     Parameters
     ----------
     rotations : Rotations
     change : callable
-        From masks and angle to masks and angle; None drops the rotation.
+        From a string to the new string and the factor of its angle; None drops its rotations. Asked once a string.
     phase : float
         Global phase of the result.
     """
+    masks, nodes = read_nodes(rotations)
+    new = [change(mask) for mask in masks]
+    kept = np.array([one is not None for one in new], dtype=bool)
+    factors = np.array([1.0 if one is None else one[1] for one in new])
+    x, z = np.empty(len(new), dtype=object), np.empty(len(new), dtype=object)
+    x[:] = [0 if one is None else one[0][0] for one in new]
+    z[:] = [0 if one is None else one[0][1] for one in new]
 
-    def body(old: Rotations) -> Rotations:
-        blocks = old.blocks
-        if len(blocks) > 1 or (blocks and blocks[0].repeat > 1):
-            made = Rotations([], [], [], old.qubits)
-            for block in blocks:
-                made = made + body(block.rotations).times(block.repeat)
+    def body(node: Node) -> Rotations:
+        if node.strings is None or node.angles is None:
+            made = Rotations([], [], [], rotations.qubits)
+            for inner in node.inside:
+                made = made + body(inner).times(inner.repeat)
             return made
-        triples = zip(old.x_masks.tolist(), old.z_masks.tolist(), old.angles.tolist(), strict=True)
-        new = [found for x, z, angle in triples if (found := change((x, z), angle)) is not None]
-        x = [mask[0] for mask, _ in new]
-        z = [mask[1] for mask, _ in new]
-        return Rotations(x, z, [angle for _, angle in new], old.qubits)
+        stays = kept[node.strings]
+        strings = node.strings[stays]
+        angles = node.angles[stays] * factors[strings]
+        return Rotations(x[strings].tolist(), z[strings].tolist(), angles, rotations.qubits)
 
     made = Rotations([], [], [], rotations.qubits, phase=phase)
-    for block in rotations.blocks:
-        made = made + body(block.rotations).times(block.repeat)
+    for node in nodes:
+        made = made + body(node).times(node.repeat)
     return made
 
 
