@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 
@@ -342,5 +342,3 @@ def seeded(kind, seed):
         return None
     return right, circuit, broken
 
-
-__all__ = ["MISTAKES", "Right", "a_right_circuit", "distance", "replace", "seeded", "unitary", "written_out"]

@@ -162,9 +162,13 @@ class Diagnosis:
 
     def __str__(self) -> str:
         marks = {True: "✓ MATCHES", False: "✗ DOES NOT MATCH", None: "? CANNOT TELL"}
+        within = upper(self.deviation)
+        mistaken = f"angle totals are off by up to {within} rad for t = {plain(self.time)}."
+        if {finding.kind for finding in self.mistakes} == {"residual Clifford"}:
+            mistaken = "the angle totals are right, and yet the circuit does something else at the end."
         head = {
-            True: f"every angle total is c·t for t = {plain(self.time)}, within {upper(self.deviation)} rad.",
-            False: f"angle totals are off by up to {upper(self.deviation)} rad for t = {plain(self.time)}.",
+            True: f"every angle total is c·t for t = {plain(self.time)}, within {within} rad.",
+            False: mistaken,
             None: self.reason,
         }
         lines = [f"{marks[self.matches]}  {head[self.matches]}"]
