@@ -341,4 +341,3 @@ def seeded(kind, seed):
     if distance(circuit, broken) < 1e-9:
         return None
     return right, circuit, broken
-

@@ -69,7 +69,9 @@ def conjugated(draw, circuit):
     while rest:
         size = int(draw.integers(1, 8))
         run, rest = rest[:size], rest[size:]
-        gates = [(int(x), int(z)) for x, z in draw.integers(0, 2**circuit.qubits, (int(draw.integers(1, 4)), 2)) if x or z]
+        gates = [
+            (int(x), int(z)) for x, z in draw.integers(0, 2**circuit.qubits, (int(draw.integers(1, 4)), 2)) if x or z
+        ]
         out += [(gate, QUARTER) for gate in gates]
         for mask, angle in run:
             for gate in gates:

@@ -114,16 +114,22 @@ def order_moments(settled: Settled, neighbours: Sequence[Ints], most: int = 4096
     Returns
     -------
     ndarray
-        |m| of each pair; of `most` of them, spread evenly, where there are more.
+        |m| of each pair; of `most` of them, spread evenly, where there are more. Strings whose total is nothing but
+        rounding have none.
     """
     pairs = [(p, int(q)) for p, others in enumerate(neighbours) for q in others if p < q]
     chosen = pairs[:: max(1, -(-len(pairs) // most))]
+    shares = {string: own for string, angles in enumerate(settled.angles) if (own := _shares(angles)) is not None}
     found = []
     for p, q in chosen:
-        total_p, total_q = float(settled.angles[p].sum()), float(settled.angles[q].sum())
-        if total_p == 0.0 or total_q == 0.0:
-            continue
-        before = np.concatenate([[0.0], np.cumsum(settled.angles[q])])
-        earlier = before[np.searchsorted(settled.places[q], settled.places[p])]
-        found.append(abs(float(settled.angles[p] @ (total_q - 2 * earlier)) / (total_p * total_q)))
+        if p in shares and q in shares:
+            before = np.concatenate([[0.0], np.cumsum(shares[q])])
+            earlier = before[np.searchsorted(settled.places[q], settled.places[p])]
+            found.append(abs(float(shares[p] @ (1.0 - 2.0 * earlier))))
     return np.array(found)
+
+
+def _shares(angles: Reals) -> Reals | None:
+    """Divide by the total; None where that is lost in rounding."""
+    total = float(angles.sum())
+    return angles / total if abs(total) > 1e-9 * float(np.abs(angles).sum()) else None
