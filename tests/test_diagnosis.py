@@ -2,7 +2,11 @@
 
 from __future__ import annotations
 
+import io
 import json
+import re
+from contextlib import redirect_stdout
+from pathlib import Path
 
 import numpy as np
 import pytest
@@ -364,3 +368,15 @@ def test_the_command_ends_with_the_answer(tmp_path, monkeypatch, capsys, time, s
     assert capsys.readouterr().out.startswith("✓ MATCHES" if matches else "✗ DOES NOT MATCH")
     assert cli.run([*command, "--json"]) == status
     assert json.loads(capsys.readouterr().out)["matches"] is matches
+
+
+def test_the_page_on_a_broken_circuit_prints_what_it_says():
+    page = (Path(__file__).parent.parent / "docs" / "broken-circuit.md").read_text(encoding="utf-8")
+    names: dict[str, object] = {}
+    blocks = re.findall(r"```python\n(.*?)```\n```\n(.*?)```", page, re.DOTALL)
+    assert len(blocks) == page.count("```python")
+    for code, printed in blocks:
+        out = io.StringIO()
+        with redirect_stdout(out):
+            exec(compile(code, "broken-circuit.md", "exec"), names)
+        assert out.getvalue().rstrip() == printed.rstrip()
