@@ -91,12 +91,7 @@ class _Describer:
             return True
         if group.kind in ("letters", "place"):
             return any(mask in self.sheet.wanted for mask in group.found)
-        return group.kind == "factor" and self.plan is not None and self._deviations(group) > 0
-
-    def _deviations(self, group: Group) -> int:
-        if self.plan is None:
-            return 0
-        return max(self.structure.deviations(self.plan, self.string_of[mask]) for mask in group.found)
+        return group.kind == "factor" and self.structure.uneven(group)
 
     def _rebuilt(self) -> Rotations | None:
         if self.plan is None:

@@ -8,6 +8,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from trueturn.diagnosis.describe import describe
+from trueturn.diagnosis.frames import MOST as MOST_MOVED
 from trueturn.diagnosis.frames import moved_to_the_end
 from trueturn.diagnosis.ordering import clashes, settle
 from trueturn.diagnosis.readings import Reading, readings
@@ -83,8 +84,9 @@ def _best_case(rotations: Rotations, hamiltonian: Hamiltonian, time: float, tole
         if left is not None:
             case = replace(case, residual=left.residual, relabelled=left.relabelled)
             plain = plain + edited(frame, _as_it_is, 0.0)
-    for nearest in (False, True):
-        moved = moved_to_the_end(plain, nearest) if case.cost else None
+    merged = _merged(plain) if case.cost else plain
+    for source, nearest in ((plain, False), (merged, False), (plain, True), (merged, True)):
+        moved = moved_to_the_end(source, nearest) if case.cost else None
         if moved is None:
             continue
         other = _case(moved.rotations, hamiltonian, time, tolerance)
@@ -92,6 +94,22 @@ def _best_case(rotations: Rotations, hamiltonian: Hamiltonian, time: float, tole
         if other.cost < case.cost - 0.5 and not (nearest and other.cost):
             case = other
     return case
+
+
+def _merged(rotations: Rotations) -> Rotations:
+    """Merge what can merge, so that gates cut in two are seen whole; long circuits stay as they are."""
+    if not 0 < rotations.count <= MOST_MOVED:
+        return rotations
+    unfolded = unfold(rotations)
+    settled = settle(unfolded.word, clashes(unfolded.masks, rotations.qubits))
+    listed = [
+        (place, unfolded.masks[string], angle)
+        for string, (places, angles) in enumerate(zip(settled.places, settled.angles, strict=True))
+        for place, angle in zip(places.tolist(), angles.tolist(), strict=True)
+    ]
+    listed.sort()
+    x, z = [mask[0] for _, mask, _ in listed], [mask[1] for _, mask, _ in listed]
+    return Rotations(x, z, [angle for _, _, angle in listed], rotations.qubits, unfolded.phase)
 
 
 def _as_it_is(mask: Mask) -> tuple[Mask, float]:
@@ -171,7 +189,17 @@ def _undetermined(case: Case, structure: Structure) -> str:
             f"the angle totals differ in {sum(len(g.found or g.wanted) for g in reading.groups)} strings in no common "
             f"way: blocks resynthesised beyond recognition, or a circuit for something else{advice}"
         )
+    if case.residual and (reading.groups or reading.kind != "given" or reading.factor != 1.0):
+        return (
+            f"Clifford gates are left over ({', '.join(case.residual[:4])} changed), and angle totals are off{advice}"
+        )
     kinds = {group.kind for group in reading.groups}
+    odd = [group for group in reading.groups if group.kind == "factor" and structure.uneven(group)]
+    if len(odd) > 1 or sum(group.kind == "extra" for group in reading.groups) > 1:
+        return (
+            "several strings are off, each by another amount and not alike in every step, as when blocks of gates are "
+            f"resynthesised{advice}"
+        )
     if "extra" in kinds and len(reading.groups) > 1:
         extra = [group for group in reading.groups if group.kind == "extra"]
         others = [group for group in reading.groups if group.kind != "extra"]

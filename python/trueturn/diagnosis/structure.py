@@ -18,6 +18,7 @@ from trueturn.diagnosis.character import Model, first_order, last_order, recogni
 from trueturn.diagnosis.ordering import Settled, clashes, order_moments, settle
 from trueturn.diagnosis.orders import Fit, RuleOrders, partition_in_order
 from trueturn.diagnosis.readings import Reading
+from trueturn.diagnosis.totals import Group
 from trueturn.diagnosis.unfolding import Ints, Mask, Reals, Unfolded
 from trueturn.formulas import formula
 from trueturn.operator import Operator
@@ -245,6 +246,13 @@ class Structure:
         for string in self.damaged:
             found += self._unlike(model, judged, string, self._earlier(order, judged, string))
         return round(found, 6)
+
+    def uneven(self, group: Group) -> bool:
+        """Whether strings off by a factor are so by different ones in different places."""
+        if not self.plans:
+            return False
+        numbers = {mask: string for string, mask in enumerate(self.masks)}
+        return any(self.deviations(self.plans[0], numbers[mask]) > 0 for mask in group.found)
 
     def deviations(self, plan: Plan, string: int) -> int:
         """Count where a damaged string turns by another share of its total than the plan has."""
