@@ -13,6 +13,7 @@ from trueturn.diagnosis.frames import moved_to_the_end
 from trueturn.diagnosis.ordering import clashes, settle
 from trueturn.diagnosis.readings import Reading, readings
 from trueturn.diagnosis.result import Character, Diagnosis, Finding
+from trueturn.diagnosis.slips import slip_place, turned_behind
 from trueturn.diagnosis.structure import MOST_STRINGS, STILL, Hamiltonian, Plan, Structure
 from trueturn.diagnosis.totals import Sheet, support
 from trueturn.diagnosis.unfolding import Mask, Unfolded, edited, unfold
@@ -60,6 +61,8 @@ def examine(rotations: Rotations, operator: Operator, time: float, tolerance: fl
     mistakes: list[Finding] = []
     if case.cost and not reason:
         mistakes = describe(case.rotations, case.unfolded, case.sheet, structure, rivals, time, case.residual)
+    if reason and (slip := _slip(rotations, hamiltonian, time, tolerance)) is not None:
+        mistakes, reason, remarks = [slip], "", []
     return Diagnosis(
         matches=None if reason else not mistakes,
         findings=(*mistakes, *remarks),
@@ -69,6 +72,36 @@ def examine(rotations: Rotations, operator: Operator, time: float, tolerance: fl
         qubits=rotations.qubits,
         rotations=rotations.count,
         time=time,
+    )
+
+
+def _slip(rotations: Rotations, hamiltonian: Hamiltonian, time: float, tolerance: float) -> Finding | None:
+    """Look for one place behind which every string is turned by the Clifford gates left over."""
+    frame: Rotations | None = getattr(rotations, "frame", None)
+    plain = rotations
+    if frame is not None and frame.count:
+        plain = edited(rotations, _as_it_is, rotations.phase) + edited(frame, _as_it_is, 0.0)
+    moved = moved_to_the_end(plain)
+    if moved is None or not (moved.residual or moved.relabelled):
+        return None
+    unfolded = unfold(moved.rotations)
+    sheet = _sheet(unfolded, hamiltonian, time, tolerance)
+    images = dict(zip(unfolded.masks, moved.back(unfolded.masks), strict=True))
+    place = slip_place(moved.rotations, images, sheet)
+    if place is None:
+        return None
+    left = ", ".join(moved.residual) or "qubits"
+    phase = 0.0 - hamiltonian.operator.identity_coefficient * time
+    return Finding(
+        kind="basis change",
+        mistake=True,
+        text=f"A Clifford gate is lost or wrong before rotation {place}: from there on every string is turned.",
+        evidence=(
+            f"the product of the Clifford gates changes {left}",
+            f"with the strings from rotation {place} on turned back, all angle totals are c·t",
+        ),
+        change=f"Mend the basis change before rotation {place} (Clifford gates not counted).",
+        fixed=turned_behind(moved.rotations, images, place, phase),
     )
 
 
@@ -118,15 +151,19 @@ def _as_it_is(mask: Mask) -> tuple[Mask, float]:
 
 def _case(rotations: Rotations, hamiltonian: Hamiltonian, time: float, tolerance: float) -> Case:
     unfolded = unfold(rotations)
+    sheet = _sheet(unfolded, hamiltonian, time, tolerance)
+    return Case(
+        rotations, unfolded, sheet, tuple(readings(sheet, rotations.qubits)), _hidden(unfolded, sheet, rotations)
+    )
+
+
+def _sheet(unfolded: Unfolded, hamiltonian: Hamiltonian, time: float, tolerance: float) -> Sheet:
     roundings = (unfolded.counts + 4.0) * UNIT * unfolded.sizes
-    sheet = Sheet(
+    return Sheet(
         found=dict(zip(unfolded.masks, unfolded.totals.tolist(), strict=True)),
         wanted={mask: c * time for mask, c in zip(hamiltonian.masks, hamiltonian.coefficients, strict=True)},
         slack=dict(zip(unfolded.masks, roundings.tolist(), strict=True)),
         tolerance=tolerance,
-    )
-    return Case(
-        rotations, unfolded, sheet, tuple(readings(sheet, rotations.qubits)), _hidden(unfolded, sheet, rotations)
     )
 
 

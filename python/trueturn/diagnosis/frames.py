@@ -9,6 +9,7 @@ end. Where the circuit undid what it did, that is the identity.
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -130,6 +131,14 @@ class Moved:
     gates: int
     residual: tuple[str, ...]
     relabelled: tuple[tuple[int, int], ...]
+    _product: tuple[tuple[Mask, int], ...] = ()
+
+    def back(self, masks: Sequence[Mask]) -> list[tuple[Mask, float]]:
+        """Turn strings P into C P C†, with C the product of the moved gates; new strings and signs."""
+        frame = _Frame()
+        for mask, quarters in reversed(self._product):
+            frame.then(mask, -quarters)
+        return [frame.image(mask) for mask in masks]
 
 
 def moved_to_the_end(rotations: Rotations, nearest: bool = False) -> Moved | None:
@@ -159,7 +168,7 @@ def moved_to_the_end(rotations: Rotations, nearest: bool = False) -> Moved | Non
     x: list[int] = []
     z: list[int] = []
     kept: list[float] = []
-    gates = 0
+    gates: list[tuple[Mask, int]] = []
     columns = zip(
         rotations.x_masks.tolist(),
         rotations.z_masks.tolist(),
@@ -173,7 +182,7 @@ def moved_to_the_end(rotations: Rotations, nearest: bool = False) -> Moved | Non
         mask = (x_mask, z_mask)
         if is_clifford or (nearest and turns):
             frame.then(mask, turns)
-            gates += 1
+            gates.append((mask, turns))
             if is_clifford:
                 continue
             angle = rest
@@ -183,4 +192,5 @@ def moved_to_the_end(rotations: Rotations, nearest: bool = False) -> Moved | Non
         kept.append(sign * angle)
     moves = frame.relabelled()
     left_over = () if moves else frame.residual()
-    return Moved(Rotations(x, z, kept, rotations.qubits, rotations.phase), gates, left_over, moves)
+    rest = Rotations(x, z, kept, rotations.qubits, rotations.phase)
+    return Moved(rest, len(gates), left_over, moves, tuple(gates))
