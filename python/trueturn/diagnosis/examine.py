@@ -9,13 +9,13 @@ import numpy as np
 
 from trueturn.diagnosis.describe import describe
 from trueturn.diagnosis.frames import MOST as MOST_MOVED
-from trueturn.diagnosis.frames import moved_to_the_end
+from trueturn.diagnosis.frames import QUARTER, moved_to_the_end
 from trueturn.diagnosis.ordering import clashes, settle
 from trueturn.diagnosis.readings import Reading, readings
 from trueturn.diagnosis.result import Character, Diagnosis, Finding
 from trueturn.diagnosis.slips import slip_place, turned_behind
 from trueturn.diagnosis.structure import MOST_STRINGS, STILL, Hamiltonian, Plan, Structure
-from trueturn.diagnosis.totals import Sheet, support
+from trueturn.diagnosis.totals import Group, Sheet, support
 from trueturn.diagnosis.unfolding import Mask, Unfolded, edited, unfold
 from trueturn.formulas import formula
 from trueturn.operator import Operator
@@ -230,6 +230,8 @@ def _undetermined(case: Case, structure: Structure) -> str:
         return (
             f"Clifford gates are left over ({', '.join(case.residual[:4])} changed), and angle totals are off{advice}"
         )
+    if len(reading.groups) > 1 and any(_quarter_turns(case.sheet, group) for group in reading.groups):
+        return f"several strings are off, some by quarter turns alone, as in a set of native gates{advice}"
     kinds = {group.kind for group in reading.groups}
     odd = [group for group in reading.groups if group.kind == "factor" and structure.uneven(group)]
     if len(odd) > 1 or sum(group.kind == "extra" for group in reading.groups) > 1:
@@ -247,6 +249,16 @@ def _undetermined(case: Case, structure: Structure) -> str:
                 f"gates is resynthesised{advice}"
             )
     return ""
+
+
+def _quarter_turns(sheet: Sheet, group: Group) -> bool:
+    """Whether the totals of a group are multiples of π/4 above zero, as those of Clifford gates are."""
+    totals = [sheet.found[mask] for mask in group.found if mask in sheet.found]
+    turns = [round(total / QUARTER) for total in totals]
+    return any(
+        turn != 0 and abs(total - turn * QUARTER) <= SOME * abs(total)
+        for total, turn in zip(totals, turns, strict=True)
+    )
 
 
 def _only_whole_turns(sheet: Sheet) -> bool:
