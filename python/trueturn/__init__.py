@@ -26,6 +26,7 @@ from trueturn.audit import Audit, Candidate, audit
 from trueturn.circuits.reading import Circuit, read_circuit, read_qasm
 from trueturn.comparison import Comparison, compare
 from trueturn.device import Budget, CausalCone, causal_cone, device_budget
+from trueturn.diagnosis import Diagnosis, Finding, diagnose
 from trueturn.driven import Driven, DrivenReference, driven_reference
 from trueturn.error_saving import Improved
 from trueturn.export import Cost, CostTable, compare_costs
@@ -57,12 +58,14 @@ __all__ = [
     "Comparison",
     "Cost",
     "CostTable",
+    "Diagnosis",
     "Driven",
     "DrivenReference",
     "ErrorCurve",
     "ErrorInterval",
     "ErrorSplit",
     "Extrapolation",
+    "Finding",
     "Formula",
     "FoundFormula",
     "Improved",
@@ -91,6 +94,7 @@ __all__ = [
     "compare",
     "compare_costs",
     "device_budget",
+    "diagnose",
     "driven",
     "driven_reference",
     "error_curves",

@@ -19,6 +19,7 @@ import click
 
 from trueturn.commands.bound import bound
 from trueturn.commands.circuits import cost, export
+from trueturn.commands.diagnose import diagnose
 from trueturn.commands.options import AS_JSON, JOB, THREADS
 
 if TYPE_CHECKING:
@@ -43,6 +44,7 @@ def commands() -> None:
 
 commands.add_command(bound)
 commands.add_command(cost)
+commands.add_command(diagnose)
 commands.add_command(export)
 
 
