@@ -11,7 +11,9 @@ from trueturn import _memory, _threads
 from trueturn._observables import named_operators
 from trueturn.accuracy.bounds import bound
 from trueturn.audit import words
+from trueturn.audit.base_candidate import BaseCandidate
 from trueturn.audit.candidate import Candidate
+from trueturn.audit.implementation import Implementation
 from trueturn.audit.measure import Bench, Measured
 from trueturn.audit.result import Audit, Row, Trial
 from trueturn.audit.search import least_steps
@@ -32,7 +34,7 @@ def audit(
     operator: Operator,
     state: State,
     times: float | Iterable[float],
-    candidates: Sequence[Candidate],
+    candidates: Sequence[BaseCandidate],
     tolerance: float,
     quantity: str = "observables",
     observables: Mapping[str, Operator] | None = None,
@@ -59,6 +61,8 @@ def audit(
     times : float or iterable of float
         Positive, in inverse units of the coefficients.
     candidates : sequence of Candidate
+        Formulas with a rule and steps; `Candidate.from_rotations` and `Candidate.from_callable` make candidates of given
+        circuits and of a user's own implementation.
     tolerance : float
         On the largest error over times and observables; absolute.
     quantity : "observables" or "state"
@@ -93,7 +97,7 @@ def audit(
         The tolerance is not positive, or below what double precision can certify.
     MemoryRefusedError
         The vectors needed do not fit: start, reference and one work vector at a time, and for
-        ``quantity="state"`` one reference state for each time.
+        ``quantity="state"`` one reference state for each time, and two more for an implementation of the user's.
 
     Notes
     -----
@@ -114,12 +118,10 @@ def audit(
     asked = sorted(set(positive_times(times)))
     _check(operator, state, candidates, tolerance, quantity, watched, readout, relative_to, most_steps)
     workers = _threads.resolve(threads)
-    partitions = [candidate.partition(operator) for candidate in candidates]
-    _memory.require(
-        (2 + (len(asked) if quantity == "state" else 1)) * (16 << state.qubits),
-        "audit",
-        lambda n: (2 + (len(asked) if quantity == "state" else 1)) * (16 << n),
-    )
+    partitions = [candidate.prepare(operator, asked) for candidate in candidates]
+    vectors = 2 + (len(asked) if quantity == "state" else 1)
+    vectors += 2 * any(isinstance(candidate, Implementation) for candidate in candidates)
+    _memory.require(vectors * (16 << state.qubits), "audit", vectors)
     truth = reference_for(
         operator,
         state,
@@ -138,7 +140,7 @@ def audit(
     for number, (candidate, partition) in enumerate(zip(candidates, partitions, strict=True)):
         started = clock.perf_counter()
 
-        def tell(steps: int, candidate: Candidate = candidate, number: int = number) -> None:
+        def tell(steps: int, candidate: BaseCandidate = candidate, number: int = number) -> None:
             if progress is not None:
                 progress(f"{candidate.label}: {steps} steps", number, len(candidates))
 
@@ -164,7 +166,7 @@ def audit(
         start=start or f"a given state vector of {state.qubits} qubits",
         title=title,
         energy_unit=energy_unit,
-        assumptions=words.assumptions(state, readout, relative_to),
+        assumptions=words.assumptions(state, readout, relative_to, candidates),
         proven=words.proven(truth),
         measured=words.measured(quantity, truth.certificate.proven),
         cautions=words.CAUTIONS,
@@ -172,7 +174,9 @@ def audit(
     )
 
 
-def _row(bench: Bench, candidate: Candidate, partition: Partition, most_steps: int, tell: Callable[[int], None]) -> Row:
+def _row(
+    bench: Bench, candidate: BaseCandidate, partition: Partition | None, most_steps: int, tell: Callable[[int], None]
+) -> Row:
     runs: dict[int, Measured] = {}
 
     def run(steps: int) -> Trial:
@@ -193,10 +197,11 @@ def _row(bench: Bench, candidate: Candidate, partition: Partition, most_steps: i
                 reason="most_steps below the grid",
                 limit=unit,
             )
-        found = least_steps(run, bench.tolerance, candidate.formula.order, unit=unit, most_steps=most_steps)
+        found = least_steps(run, bench.tolerance, candidate.order, unit=unit, most_steps=most_steps)
         steps, accidental = found.steps, found.accidental
         note = words.search_note(found, bench.tolerance, most_steps)
     chosen = runs[steps]
+    circuit = chosen.circuit
     limit, source = _bound(bench, candidate, partition, steps)
     return Row(
         candidate=candidate,
@@ -205,26 +210,29 @@ def _row(bench: Bench, candidate: Candidate, partition: Partition, most_steps: i
         error=chosen.trial.error,
         bound=limit,
         bound_source=source,
-        rotations=chosen.circuit.count,
+        rotations=None if circuit is None else circuit.count,
         two_qubit_gates=chosen.trial.two_qubit_gates,
-        depth=chosen.circuit.depth(),
+        depth=None if circuit is None else circuit.depth(),
         verdict=chosen.trial.verdict,
         rounding=chosen.rounding,
         points=chosen.points,
         trials=tuple(runs[count].trial for count in sorted(runs)),
         accidental=accidental,
-        note=note,
+        note="; ".join(filter(None, (note, chosen.note))),
     )
 
 
-def _bound(bench: Bench, candidate: Candidate, partition: Partition, steps: int) -> tuple[float | None, str]:
+def _bound(bench: Bench, candidate: BaseCandidate, partition: Partition | None, steps: int) -> tuple[float | None, str]:
     """Return a proven bound on the row's error and its source, or None and the reason."""
+    uncovered = f"no theorem at hand covers {candidate.name}"
+    if not isinstance(candidate, Candidate):
+        return None, "no formula, so no theorem on its error"
+    if partition is None or not isinstance(candidate.formula, Formula):
+        return None, uncovered
     try:
-        if not isinstance(candidate.formula, Formula):
-            return None, f"no theorem at hand covers {candidate.formula.name}"
         found = bound(candidate.formula, partition, bench.times[-1], steps)
     except FormulaError:
-        return None, f"no theorem at hand covers {candidate.formula.name}"
+        return None, uncovered
     source = f"{found.theorem}, {found.source}"
     if bench.quantity == "state":
         return (found.value, source) if found.value < 2.0 else (2.0, "no two unit vectors are further apart")
@@ -238,7 +246,7 @@ def _bound(bench: Bench, candidate: Candidate, partition: Partition, steps: int)
 def _check(
     operator: Operator,
     state: State,
-    candidates: Sequence[Candidate],
+    candidates: Sequence[BaseCandidate],
     tolerance: float,
     quantity: str,
     observables: Mapping[str, Operator],
@@ -276,7 +284,11 @@ def _check(
             argument="most_steps",
             value=most_steps,
         )
-    if not isinstance(candidates, Sequence) or not candidates or not all(isinstance(c, Candidate) for c in candidates):
+    if (
+        not isinstance(candidates, Sequence)
+        or not candidates
+        or not all(isinstance(candidate, BaseCandidate) for candidate in candidates)
+    ):
         raise AuditError(
             f"candidates: no list of Candidate ({candidates!r}); give at least one",
             reason="no candidates",

@@ -96,12 +96,11 @@ def position(audit: Audit, row: Row) -> int:
 
 def row_data(row: Row) -> dict[str, Any]:
     """Give one candidate's record."""
-    rule = row.candidate.rule
     return {
         "label": row.label,
-        "formula": row.candidate.formula.name,
-        "rule": rule if isinstance(rule, str) else "own parts",
-        "steps_asked": row.candidate.steps,
+        "formula": row.candidate.name,
+        "rule": row.candidate.rule_words,
+        "steps_asked": "as given" if row.candidate.steps_words == "as given" else row.candidate.steps,
         "steps": row.steps,
         "error": limits(row.error),
         "bound": number(row.bound),
