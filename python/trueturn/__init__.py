@@ -1,11 +1,12 @@
 """Prove product-formula circuits against a certified reference."""
 
-from trueturn import driven, errors, lattice, model, randomised
+from trueturn import chemistry, driven, errors, lattice, model, randomised
 from trueturn._build import build_info
 from trueturn._threads import threads
 from trueturn.accuracy import Bound, bound
 from trueturn.adaptive import AdaptiveRun, adaptive
 from trueturn.audit import Audit, Candidate, audit
+from trueturn.chemistry import read_fcidump
 from trueturn.comparison import Comparison, compare
 from trueturn.driven import Driven, DrivenReference, driven_reference
 from trueturn.error_saving import Improved
@@ -49,6 +50,7 @@ __all__ = [
     "audit",
     "bound",
     "build_info",
+    "chemistry",
     "compare",
     "driven",
     "driven_reference",
@@ -60,6 +62,7 @@ __all__ = [
     "model",
     "multiproduct_weights",
     "randomised",
+    "read_fcidump",
     "read_formulas",
     "reference",
     "saved_gates",

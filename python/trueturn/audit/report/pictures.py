@@ -39,7 +39,7 @@ def trials_picture(audit: Audit, name: str, label: str, place: Callable[[Row, Tr
         axes = figure.add_subplot()
         axes.set_xscale("log")
         axes.set_yscale("log")
-        shown = [at for row in audit.rows for trial in row.trials if (at := place(row, trial) or 0) > 0]
+        shown = [count for row in audit.rows for trial in row.trials if (count := place(row, trial) or 0) > 0]
         if not shown:
             axes.text(0.5, 0.5, f"no candidate has any {label}", transform=axes.transAxes, ha="center")
             axes.set_axis_off()
@@ -48,7 +48,7 @@ def trials_picture(audit: Audit, name: str, label: str, place: Callable[[Row, Tr
         axes.set_xlim(min(shown) / room, max(shown) * room)
         floor = floor_of(audit)
         for index, row in enumerate(audit.rows):
-            placed = [(at, trial) for trial in row.trials if (at := place(row, trial) or 0) > 0]
+            placed = [(count, trial) for trial in row.trials if (count := place(row, trial) or 0) > 0]
             if not placed:
                 continue
             at = [position for position, _ in placed]
