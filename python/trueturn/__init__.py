@@ -19,6 +19,7 @@ from trueturn.ladders import saved_gates
 from trueturn.operator import Operator
 from trueturn.partition import Partition
 from trueturn.reference import Certificate, Reference, reference
+from trueturn.reference.verification import Verification, verify
 from trueturn.rotations import Rotations
 from trueturn.state import State
 from trueturn.symmetry import Symmetries, Symmetry, symmetries
@@ -46,6 +47,7 @@ __all__ = [
     "Symmetries",
     "Symmetry",
     "Target",
+    "Verification",
     "adaptive",
     "audit",
     "bound",
@@ -68,5 +70,6 @@ __all__ = [
     "saved_gates",
     "symmetries",
     "threads",
+    "verify",
     "well_conditioned_steps",
 ]

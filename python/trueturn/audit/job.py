@@ -124,8 +124,25 @@ class Job:
             energy_unit=self.energy_unit,
         )
 
-    def reference(self, threads: int | None = None, progress: Progress | None = None) -> Reference:
-        """Compute only the certified reference; the parameters are those of `audit`."""
+    def reference(
+        self,
+        threads: int | None = None,
+        progress: Progress | None = None,
+        *,
+        into: Path | None = None,
+        keep: str = "last",
+    ) -> Reference:
+        """Compute only the certified reference.
+
+        Parameters
+        ----------
+        threads, progress
+            As for `audit`.
+        into : Path, optional
+            Write a reference folder there.
+        keep : "last" or "all"
+            Which states to keep, or with `into` to write.
+        """
         from trueturn.reference import reference
 
         return reference(
@@ -135,8 +152,12 @@ class Job:
             tolerance=1e-10 if self.reference_tolerance is None else self.reference_tolerance,
             observables=self.observables,
             method=self.reference_method,
+            keep=keep,
             threads=self.threads if threads is None else threads,
             progress=progress,
+            into=into,
+            title=self.title,
+            start=self.start.words,
         )
 
 

@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from typing import TYPE_CHECKING
 
+from trueturn._terms_file import one_a_line
 from trueturn.audit.figures import count, interval, outward, plain, upper
 
 if TYPE_CHECKING:
@@ -129,7 +130,7 @@ def operator_lines(operator: Operator, limit: int | None = None) -> list[str]:
 
 def terms_of(operator: Operator) -> list[str]:
     """Write every term of an operator as text that reads back."""
-    return str(operator).replace(" + ", "\n").replace(" - ", "\n-").split("\n")
+    return one_a_line(str(operator))
 
 
 def value_words(value: float) -> str:
