@@ -49,6 +49,21 @@ def random_integrals(n, seed, spins=1):
     return float(draw.normal()), one, two
 
 
+def write_spin_orbitals(path, constant, one, two, electrons=(1, 1)):
+    """Write spin-dependent integrals over spin orbitals, odd numbers up and even ones down."""
+    n = len(one[0])
+    lines = [f"&FCI NORB={2 * n}, NELEC={sum(electrons)}, MS2={electrons[0] - electrons[1]}, UHF=.TRUE. &END"]
+    for s, t in np.ndindex(2, 2):
+        for i, j, k, m in np.ndindex(n, n, n, n):
+            places = 2 * i + s + 1, 2 * j + s + 1, 2 * k + t + 1, 2 * m + t + 1
+            lines.append(" ".join(map(str, (float(two[s, t][i, j, k, m]), *places))))
+    for s in (0, 1):
+        for i, j in np.ndindex(n, n):
+            lines.append(f"{float(one[s][i, j])!r} {2 * i + s + 1} {2 * j + s + 1} 0 0")
+    path.write_text("\n".join([*lines, f"{constant!r} 0 0 0 0"]) + "\n")
+    return path
+
+
 def write_fcidump(path, constant, one, two, electrons=(1, 1), unrestricted=False):
     """Write integrals as text, every digit, all images of each (so the reader sees symmetric ones repeated)."""
     n = len(one[0])

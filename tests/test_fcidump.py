@@ -79,6 +79,18 @@ def test_unrestricted_integrals_give_the_hamiltonian_of_fermion_matrices(n, tmp_
     assert np.abs(found - fermions.hamiltonian(*drawn)).max() < 1e-10
 
 
+@pytest.mark.parametrize("n", [1, 2, 3])
+def test_numbered_spin_orbitals_give_the_hamiltonian_that_six_blocks_give(n, tmp_path):
+    drawn = fermions.random_integrals(n, seed=n, spins=2)
+    blocks = fermions.write_fcidump(tmp_path / "u", *drawn, (1, 0), unrestricted=True)
+    numbered = fermions.write_spin_orbitals(tmp_path / "s", *drawn, (1, 0))
+    found = read_integrals(numbered, spin_orbitals=True)
+    assert found.electrons == (1, 0)
+    assert found.operator() == tt.read_fcidump(blocks)
+    with pytest.raises(tt.errors.IntegralsError, match="or say spin_orbitals=True if odd and even orbital numbers"):
+        tt.read_fcidump(numbered)
+
+
 HEADER = "&FCI NORB=2, NELEC=2, MS2=0 &END\n"
 BODY = "0.5 1 1 1 1\n-1.0 1 1 0 0\n0.7 0 0 0 0\n"
 PLAIN = HEADER + BODY
@@ -150,6 +162,21 @@ def test_mistakes_are_refused_at_their_line(text, line, message, tmp_path):
     with pytest.raises(tt.errors.IntegralsError, match=message) as refused:
         tt.read_fcidump(written(tmp_path, text))
     assert refused.value.line == line and refused.value.path == "case.fcidump" and len(str(refused.value)) < 400
+
+
+@pytest.mark.parametrize(
+    ("text", "line", "message"),
+    [
+        (HEADER + "0.5 1 2 1 1\n0.0 0 0 0 0\n", 2, "pairs spin orbitals of different spins"),
+        (HEADER + "0.5 1 2 0 0\n0.0 0 0 0 0\n", 2, "pairs spin orbitals of different spins"),
+        (PLAIN.replace("NORB=2", "NORB=3"), 1, r"NORB is odd \(3\), but spin orbitals come in pairs"),
+        (PLAIN.replace("NELEC=2", "NELEC=4"), 1, "NELEC = 4 does not fit: NORB = 2 orbitals hold 0 to 2"),
+    ],
+)
+def test_mistakes_in_numbered_spin_orbitals_are_refused_at_their_line(text, line, message, tmp_path):
+    with pytest.raises(tt.errors.IntegralsError, match=message) as refused:
+        tt.read_fcidump(written(tmp_path, text), spin_orbitals=True)
+    assert refused.value.line == line
 
 
 def test_a_huge_number_of_orbitals_is_refused_at_once_and_before_memory_is_taken(tmp_path):

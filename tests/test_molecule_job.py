@@ -45,6 +45,7 @@ def test_a_job_reads_the_molecule_and_its_reference_has_the_published_dynamics(t
     ("system", "options"),
     [
         ('encoding = "parity"', {"encoding": "parity"}),
+        ("spin_orbitals = false", {}),
         ('encoding = "bravyi-kitaev"\norder = "blocked"', {"encoding": "bravyi-kitaev", "order": "blocked"}),
     ],
 )

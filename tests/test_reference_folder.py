@@ -214,6 +214,7 @@ def forged(key, value):
         (forged(["certificate", "error_bound"], [0.0, 1e-12, 1e-12]), "certificate", "is not truncation plus rounding"),
         (forged(["inputs", "tolerance"], 1e-16), "certificate", "above 1e-16"),
         (forged(["inputs", "times"], [0.0, 1.5, "x"]), "schema", "times: no number"),
+        (forged(["inputs", "tolerance"], 10**400), "schema", "tolerance: no number"),
         (forged(["inputs", "hamiltonian"], ["Z_9"]), "schema", "hamiltonian:"),
         (forged(["inputs", "hamiltonian"], 3), "schema", "hamiltonian: not a list of terms"),
         (forged(["inputs", "start"], None), "schema", "start: missing"),

@@ -197,15 +197,16 @@ class State:
         """
         try:
             held = np.load(path, mmap_mode="r", allow_pickle=False)
+            if isinstance(held, np.ndarray):
+                _memory.require(held.nbytes, "load", 1)
+                held = np.load(path, allow_pickle=False)  # read, not mapped: pages of the file would count as ours
         except (OSError, ValueError, EOFError) as failure:
             raise ArgumentError(
                 f"path: cannot be read as an NPY file ({os.fspath(path)}: {failure}); give a file that State.save wrote",
                 argument="path",
                 value=path,
             ) from None
-        if isinstance(held, np.ndarray):
-            _memory.require(held.nbytes, "load", 1)
-        return cls.from_array(np.array(held, order="C"))
+        return cls.from_array(np.ascontiguousarray(held))
 
     def save(self, path: str | os.PathLike[str]) -> None:
         """Write the amplitudes to an NPY file, under a temporary name that is renamed when complete."""

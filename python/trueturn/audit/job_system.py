@@ -32,7 +32,7 @@ STRENGTHS = {
     "hubbard": (("hopping", "repulsion"), ("potential",)),
 }
 ON_BONDS = ("zz", "xx", "yy", "coupling", "hopping")
-FCIDUMP = ("encoding", "frozen", "window", "order", "drop_parity_qubits")
+FCIDUMP = ("encoding", "frozen", "window", "order", "drop_parity_qubits", "spin_orbitals")
 WORDS = ("0", "1", "+", "-", "+i", "-i")
 
 
@@ -112,9 +112,10 @@ def read_molecule(section: Table, folder: Path) -> Operator:
     if "order" in section:
         options["order"] = section.choice("order", ("interleaved", "blocked"))
     encoding = section.choice("encoding", ENCODINGS, default="jordan-wigner")
-    drop = section.flag("drop_parity_qubits", False)
+    for key in ("drop_parity_qubits", "spin_orbitals"):
+        options[key] = section.flag(key, False)
     with section.blame("", fallback="fcidump"):
-        return read_fcidump(path, encoding, drop_parity_qubits=drop, **options)
+        return read_fcidump(path, encoding, **options)
 
 
 def read_orbitals(section: Table, key: str) -> int | list[int]:

@@ -13,7 +13,7 @@ from collections.abc import Iterator, Mapping, Sequence
 from contextlib import contextmanager
 from typing import Any
 
-from trueturn.errors import JobError, TrueturnError
+from trueturn.errors import JobError, MemoryRefusedError, TrueturnError
 
 __all__ = ["Table", "clip", "nearest"]
 
@@ -71,7 +71,7 @@ class Table:
         """
         try:
             yield
-        except JobError:
+        except (JobError, MemoryRefusedError):  # a refusal for memory has an exit status of its own
             raise
         except TrueturnError as error:
             name, text = split_name(str(error))

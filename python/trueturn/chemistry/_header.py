@@ -35,7 +35,10 @@ class Header:
 
     Attributes
     ----------
-    orbitals : int
+    norb : int
+        NORB, the largest index.
+    spin_orbitals : bool
+        Whether indices number spin orbitals, up and down in turn, rather than orbitals.
     electrons : (int, int) or None
         Spin up and down, from NELEC and MS2; None where NELEC is missing, or is odd without MS2.
     unrestricted : Line or None
@@ -44,10 +47,16 @@ class Header:
         Where the header ends.
     """
 
-    orbitals: int
+    norb: int
+    spin_orbitals: bool
     electrons: tuple[int, int] | None
     unrestricted: Line | None
     closing: Line
+
+    @property
+    def orbitals(self) -> int:
+        """Number of orbitals, each for both spins."""
+        return self.norb // 2 if self.spin_orbitals else self.norb
 
 
 def fault(line: Line, wrong: str, remedy: str) -> NoReturn:
@@ -59,7 +68,7 @@ def fault(line: Line, wrong: str, remedy: str) -> NoReturn:
     )
 
 
-def read_header(lines: Iterator[Line], path: str) -> Header:
+def read_header(lines: Iterator[Line], path: str, spin_orbitals: bool) -> Header:
     """Read lines up to the end of the header, and check what they state.
 
     Raises
@@ -85,7 +94,7 @@ def read_header(lines: Iterator[Line], path: str) -> Header:
         if closing:
             if closing[1].strip():
                 fault(line, f"text after the end of the header ({closing[1].strip()})", "begin a new line after &END")
-            return _checked(opening, line, values, places)
+            return _checked(opening, line, values, places, spin_orbitals)
         line = next(lines, None)
         rest = "" if line is None else line.text
     fault(last, "the file ends inside the header", "close it with &END or a slash")
@@ -115,30 +124,37 @@ def _entries(line: Line, body: str, key: str, values: dict[str, list[str]], plac
     return key
 
 
-def _checked(opening: Line, closing: Line, values: dict[str, list[str]], places: dict[str, Line]) -> Header:
-    orbitals = _whole("NORB", values, places)
-    if orbitals is None:
+def _checked(
+    opening: Line, closing: Line, values: dict[str, list[str]], places: dict[str, Line], spin_orbitals: bool
+) -> Header:
+    norb = _whole("NORB", values, places)
+    if norb is None:
         fault(opening, "NORB, the number of orbitals, is missing from the header", "add NORB=…")
-    if orbitals < 1:
-        fault(places["NORB"], f"NORB is not above zero ({orbitals})", "give the number of orbitals")
+    if norb < 1:
+        fault(places["NORB"], f"NORB is not above zero ({norb})", "give the number of orbitals")
+    if spin_orbitals and norb % 2:
+        fault(places["NORB"], f"NORB is odd ({norb}), but spin orbitals come in pairs", "leave spin_orbitals out")
     symmetries = _whole_list("ORBSYM", values, places)
-    if symmetries is not None and symmetries != orbitals:
-        wrong = f"ORBSYM has {symmetries} entries for NORB = {orbitals} orbitals"
+    if symmetries is not None and symmetries != norb:
+        wrong = f"ORBSYM has {symmetries} entries for NORB = {norb} orbitals"
         fault(places["ORBSYM"], wrong, "mend either, or leave ORBSYM out: it is not used")
     unrestricted = None
     for name in ("UHF", "IUHF"):
         if any(re.fullmatch(r"\.?T\w*\.?|[+-]?0*[1-9]\d*", value, re.IGNORECASE) for value in values.get(name, [])):
             unrestricted = places[name]
-    return Header(orbitals, _electrons(orbitals, values, places), unrestricted, closing)
+    electrons = _electrons(norb // 2 if spin_orbitals else norb, norb, values, places)
+    return Header(norb, spin_orbitals, electrons, unrestricted, closing)
 
 
-def _electrons(orbitals: int, values: dict[str, list[str]], places: dict[str, Line]) -> tuple[int, int] | None:
+def _electrons(
+    orbitals: int, norb: int, values: dict[str, list[str]], places: dict[str, Line]
+) -> tuple[int, int] | None:
     count, spin = _whole("NELEC", values, places), _whole("MS2", values, places)
     if count is None:
         return None
     line = places["NELEC"]
     if not 0 <= count <= 2 * orbitals:
-        fault(line, f"NELEC = {count} does not fit: NORB = {orbitals} orbitals hold 0 to {2 * orbitals}", "mend either")
+        fault(line, f"NELEC = {count} does not fit: NORB = {norb} orbitals hold 0 to {2 * orbitals}", "mend either")
     if spin is None:
         return None if count % 2 else (count // 2, count // 2)
     if (count + spin) % 2 or abs(spin) > min(count, 2 * orbitals - count):

@@ -17,12 +17,11 @@ from pathlib import Path
 from typing import Any
 
 import numpy as np
-import numpy.typing as npt
 
 from trueturn import _memory
 from trueturn.chemistry._header import Header, Line, fault, read_header
 from trueturn.chemistry.encodings import checked_sector
-from trueturn.chemistry.integrals import SYMMETRIC_TO, Integrals, Orbitals, Order, pair_table
+from trueturn.chemistry.integrals import SYMMETRIC_TO, Integrals, Orbitals, Order, Reals, pair_table
 from trueturn.operator import Operator
 
 __all__ = ["read_fcidump", "read_integrals"]
@@ -42,6 +41,7 @@ def read_fcidump(
     order: Order | None = None,
     drop_parity_qubits: bool = False,
     electrons: tuple[int, int] | None = None,
+    spin_orbitals: bool = False,
 ) -> Operator:
     """Read a molecule's Hamiltonian from an FCIDUMP file.
 
@@ -60,6 +60,9 @@ def read_fcidump(
         Leave out the two qubits that hold the parities of the electrons with spin up and of all.
     electrons : (int, int), optional
         Numbers of electrons with spin up and down. Default: as NELEC and MS2 of the file say.
+    spin_orbitals : bool
+        The file's indices number spin orbitals, odd ones up and even ones down, so that NORB is twice the number of
+        orbitals. Some programs write unrestricted integrals so; the file does not tell.
 
     Returns
     -------
@@ -99,11 +102,13 @@ def read_fcidump(
     ...     print(tt.read_fcidump(file))
     -0.625 + 0.375 Z_0 + 0.375 Z_1 + 0.125 Z_0 Z_1
     """
-    found = read_integrals(path, electrons=electrons).active(frozen, window)
+    found = read_integrals(path, electrons=electrons, spin_orbitals=spin_orbitals).active(frozen, window)
     return found.operator(encoding, order=order, drop_parity_qubits=drop_parity_qubits)
 
 
-def read_integrals(path: str | os.PathLike[str], *, electrons: tuple[int, int] | None = None) -> Integrals:
+def read_integrals(
+    path: str | os.PathLike[str], *, electrons: tuple[int, int] | None = None, spin_orbitals: bool = False
+) -> Integrals:
     """Read the integrals of an FCIDUMP file; see `read_fcidump`.
 
     Parameters
@@ -111,6 +116,8 @@ def read_integrals(path: str | os.PathLike[str], *, electrons: tuple[int, int] |
     path : str or path-like
     electrons : (int, int), optional
         Numbers of electrons with spin up and down. Default: as NELEC and MS2 of the file say.
+    spin_orbitals : bool
+        Whether the file's indices number spin orbitals, odd ones up and even ones down.
 
     Returns
     -------
@@ -124,17 +131,29 @@ def read_integrals(path: str | os.PathLike[str], *, electrons: tuple[int, int] |
     name = Path(path).name
     with open(path, encoding="utf-8", errors="replace", newline=None) as file:
         lines = _lines(file, name)
-        header = read_header(lines, name)
+        header = read_header(lines, name, spin_orbitals)
         if electrons is not None:
             electrons = checked_sector(electrons, 2 * header.orbitals)
-        table = _Table(header, 3 if header.unrestricted else 1)
+        table = _Table(header, 3 if header.unrestricted and not spin_orbitals else 1)
         constant = table.fill(lines)
-    one, two = table.one, table.two
-    if header.unrestricted is None:
-        one, two = one * 2, two * 3
+    if spin_orbitals:
+        one, two = _by_spin(table.one[0], table.two[0])
+    elif header.unrestricted is None:
+        one, two = table.one * 2, table.two * 3
     else:
-        two = [two[0], two[2], two[1]]
+        one, two = table.one, [table.two[0], table.two[2], table.two[1]]
     return Integrals(constant, (one[0], one[1]), (two[0], two[1], two[2]), electrons or header.electrons)
+
+
+def _by_spin(one: Reals, two: Reals) -> tuple[list[Reals], list[Reals]]:
+    """Sort integrals over spin orbitals, up and down in turn, by spin: up, down; up up, up down, down down."""
+    i, j = np.triu_indices(len(one) // 2)
+    table = pair_table(len(one))
+    up, down = table[2 * i, 2 * j], table[2 * i + 1, 2 * j + 1]
+    blocks = [
+        np.ascontiguousarray(two[np.ix_(rows, columns)]) for rows, columns in ((up, up), (up, down), (down, down))
+    ]
+    return [one[0::2, 0::2].copy(), one[1::2, 1::2].copy()], blocks
 
 
 def _lines(file: Any, name: str) -> Iterator[Line]:
@@ -152,14 +171,14 @@ class _Table:
 
     header: Header
     blocks: int
-    one: list[npt.NDArray[np.float64]] = field(init=False)
-    two: list[npt.NDArray[np.float64]] = field(init=False)
+    one: list[Reals] = field(init=False)
+    two: list[Reals] = field(init=False)
     last: Line | None = None
     block: int = 0
     anything: bool = False
 
     def __post_init__(self) -> None:
-        n = self.header.orbitals
+        n = self.header.norb
         pairs = n * (n + 1) // 2
         _memory.require(8 * self.blocks * pairs * pairs + 24 * n * n, "read_fcidump")
         self.two = [np.full((pairs, pairs), np.nan) for _ in range(self.blocks)]
@@ -207,8 +226,8 @@ class _Table:
             if not (column.isascii() and column.isdigit()):
                 fault(line, f"{column} is no orbital index", _COLUMNS)
             index = int(column) if len(column) < 10 else 10**9
-            if index > self.header.orbitals:
-                wrong = f"orbital index {column[:20]} is above NORB = {self.header.orbitals}"
+            if index > self.header.norb:
+                wrong = f"orbital index {column[:20]} is above NORB = {self.header.norb}"
                 fault(line, wrong, "number orbitals from 1 to NORB")
             indices.append(index)
         p, q, r, s = indices
@@ -218,17 +237,25 @@ class _Table:
         block = self._expect(line, (0, 1, 2), "a two-electron integral")
         row, column = self._pair[p - 1][q - 1], self._pair[r - 1][s - 1]
         table = self.two[block]
+        self._same_spin(line, value, (p, q), (r, s))
         self._set(line, table, (row, column), value)
         if block != 2:
             table[column, row] = table[row, column]
 
-    def _one_electron(self, line: Line, value: float, i: int, j: int) -> None:
+    def _one_electron(self, line: Line, value: float, p: int, q: int) -> None:
         block = self._expect(line, (3, 4), "a one-electron integral") - 3 if self.blocks > 1 else 0
         table = self.one[block]
-        self._set(line, table, (i - 1, j - 1), value)
-        table[j - 1, i - 1] = table[i - 1, j - 1]
+        self._same_spin(line, value, (p, q))
+        self._set(line, table, (p - 1, q - 1), value)
+        table[q - 1, p - 1] = table[p - 1, q - 1]
 
-    def _set(self, line: Line, table: npt.NDArray[np.float64], place: tuple[int, int], value: float) -> None:
+    def _same_spin(self, line: Line, value: float, *pairs: tuple[int, int]) -> None:
+        """Refuse an integral between spin orbitals of different spins."""
+        if self.header.spin_orbitals and abs(value) > SYMMETRIC_TO and any((p - q) % 2 for p, q in pairs):
+            remedy = "odd numbers must be spin up and even ones down; else leave spin_orbitals out"
+            fault(line, "pairs spin orbitals of different spins", remedy)
+
+    def _set(self, line: Line, table: Reals, place: tuple[int, int], value: float) -> None:
         self.anything = True
         held = float(table[place])
         if abs(held - value) > SYMMETRIC_TO:  # never true of NaN
@@ -266,5 +293,6 @@ class _Table:
         fault(
             self.header.unrestricted,
             f"UHF is set, so the integrals must come in six blocks by spin, but {what}",
-            "take UHF out if both spins share the integrals, else close each block with 0.0 0 0 0 0",
+            "take UHF out if both spins share the integrals, close each block with 0.0 0 0 0 0, or say spin_orbitals=True "
+            "if odd and even orbital numbers are the two spins",
         )

@@ -16,7 +16,7 @@ from trueturn.chemistry.fermions import StringSum, add_pair_products, add_pairs,
 from trueturn.errors import ArgumentError
 from trueturn.operator import Operator
 
-__all__ = ["Integrals", "Orbitals", "pair_table"]
+__all__ = ["SYMMETRIC_TO", "Integrals", "Orbitals", "Order", "Reals", "pair_table"]
 
 Reals: TypeAlias = npt.NDArray[np.float64]
 Orbitals: TypeAlias = "int | Iterable[int]"

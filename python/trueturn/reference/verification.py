@@ -8,6 +8,7 @@ import json
 import math
 import os
 from collections.abc import Callable, Iterator
+from contextlib import suppress
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -241,13 +242,12 @@ class _Record:
 
     def read_table(self, path: Path) -> npt.NDArray[np.float64]:
         """Return the numbers of the table."""
-        with path.open(encoding="utf-8", newline="") as file:
-            rows = list(csv.reader(file))
         heads = columns(list(self.observables))
-        try:
+        rows: list[list[str]] = []
+        found: npt.NDArray[np.float64] = np.zeros(0)
+        with path.open(encoding="utf-8", newline="") as file, suppress(ValueError, csv.Error):
+            rows = list(csv.reader(file))
             found = np.array([[float(cell) for cell in row] for row in rows[1:]])
-        except ValueError:
-            found = np.zeros(0)
         if not rows or rows[0] != heads or found.shape != (len(self.times), len(heads)):
             raise _Malformed(f"{EXPECTATIONS} has not the columns and lines that the inputs ask for")
         return found
@@ -331,8 +331,11 @@ def _mapping(document: dict[str, Any], key: str) -> dict[str, Any]:
 
 def _number(document: dict[str, Any], key: str) -> float:
     found = document.get(key)
-    if isinstance(found, bool) or not isinstance(found, (int, float)) or not math.isfinite(found):
-        raise _Malformed(f"{key}: no number")
+    try:
+        if isinstance(found, bool) or not isinstance(found, (int, float)) or not math.isfinite(found):
+            raise _Malformed(f"{key}: no number")
+    except OverflowError:  # a whole number of hundreds of digits
+        raise _Malformed(f"{key}: no number") from None
     return float(found)
 
 
