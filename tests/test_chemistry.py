@@ -116,7 +116,7 @@ def test_an_active_space_is_the_block_of_the_whole_where_frozen_orbitals_are_fil
     path = fermions.write_fcidump(
         tmp_path_factory.mktemp("dump") / "a", constant, one, two, (2, 2), unrestricted=unrestricted
     )
-    whole = oracle.dense(tt.read_fcidump(path))
+    whole = tt.read_fcidump(path).dense()
     small = tt.read_fcidump(path, frozen=[1], window=[3, 0])
     # Orbital 1 is qubits 2 and 3; orbitals 3 and 0, in this order, become qubits 0 to 3.
     to_whole = {0: 6, 1: 7, 2: 0, 3: 1}
@@ -127,7 +127,7 @@ def test_an_active_space_is_the_block_of_the_whole_where_frozen_orbitals_are_fil
         # The order of fermion operators differs: count exchanges, the frozen pair being even.
         signs.append((-1) ** sum(a > b for place, a in enumerate(filled) for b in filled[place + 1 :]))
     block = np.outer(signs, signs) * whole[np.ix_(places, places)]
-    assert np.abs(oracle.dense(small) - block).max() < ROUNDING
+    assert np.abs(small.dense() - block).max() < ROUNDING
 
 
 def test_freezing_by_count_takes_the_lowest_orbitals_and_the_next_for_the_window():

@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+import re
+from pathlib import Path
+
 import numpy as np
 import pytest
 import scipy.sparse.linalg
@@ -130,3 +133,17 @@ def test_npy_files_go_both_ways(tmp_path):
     assert np.array_equal(np.load(tmp_path / "ours.npy", allow_pickle=False), state.amplitudes)
     np.save(tmp_path / "theirs.npy", state.amplitudes)
     assert tt.State.load(tmp_path / "theirs.npy").distance(state) == 0.0
+
+
+def test_the_page_on_other_libraries_runs_as_written():
+    text = (Path(__file__).parent.parent / "docs" / "other-libraries.md").read_text(encoding="utf-8")
+    scope = {}
+    for code in re.findall(r"```python\n(.*?)```", text, re.DOTALL):
+        exec(compile(code, "other-libraries.md", "exec"), scope)
+    exact = np.linalg.eigvalsh(oracle.dense(scope["ring"]))[0]
+    assert scope["ground"] == pytest.approx(exact, abs=1e-12)
+    assert abs(np.linalg.norm(scope["later"]) - 1.0) < 1e-12
+    own, ours = scope["found"].rows
+    # The same circuit, run twice; some 500 products of vectors of length 1 round below 1e-12.
+    assert [p.value for p in own.points] == pytest.approx([p.value for p in ours.points], abs=1e-12)
+    assert own.two_qubit_gates is None and ours.two_qubit_gates > 0

@@ -2,13 +2,16 @@
 
 from __future__ import annotations
 
+import re
 import shutil
+import tomllib
 from pathlib import Path
 
 import pytest
 
 import trueturn as tt
 from trueturn.audit.job import read_job
+from trueturn.audit.job_system import FCIDUMP
 
 HYDROGEN = Path(__file__).parent / "published" / "h2_sto3g.fcidump"
 REST = """
@@ -58,6 +61,12 @@ def test_windows_and_dropped_qubits_in_a_job(tmp_path):
     rest = REST.format(start="01").replace('pair = "0.25 - 0.25 Z_2 - 0.25 Z_3 + 0.25 Z_2 Z_3"', 'z = "Z_0"')
     text = 'fcidump = "h2.fcidump"\nencoding = "parity"\ndrop_parity_qubits = true\nfrozen = 0\nwindow = [0, 1]'
     assert job(tmp_path, text, rest).operator == tt.read_fcidump(HYDROGEN, "parity", drop_parity_qubits=True)
+
+
+def test_the_page_on_molecules_names_keys_that_exist():
+    text = (Path(__file__).parent.parent / "docs" / "chemistry.md").read_text(encoding="utf-8")
+    (block,) = re.findall(r"```toml\n(.*?)```", text, re.DOTALL)
+    assert set(tomllib.loads(block)["system"]) <= {"fcidump", *FCIDUMP}
 
 
 @pytest.mark.parametrize(
