@@ -113,6 +113,7 @@ def written(tmp_path, text):
         PLAIN.rstrip("\n"),
         PLAIN.replace("&FCI", "$fci").replace("&END", "$end"),
         PLAIN.replace(" &END", "\n ORBSYM=2*1\n ISYM=1 NPROP(1)=1,1 IUHF=0 UHF=.FALSE.\n/"),
+        PLAIN.replace(" &END", ", THR=1.0E-5, 'none' OCC=2.0,2*0.d0 &END"),
         PLAIN + "0.3 2 0 0 0\n",
         PLAIN.replace("-1.0 1 1 0 0\n", "-1.0 1 1 0 0\n-1.00000000000001 1 1 0 0\n"),
     ],

@@ -14,9 +14,14 @@ __all__ = ["Header", "Line", "fault", "read_header"]
 _OPEN = re.compile(r"\s*[&$]FCI\b", re.IGNORECASE)
 _CLOSE = re.compile(r"(?:[&$]END\b|/)(.*)$", re.IGNORECASE)
 _ENTRY = re.compile(
-    r"\s*(?:(?P<key>[A-Za-z_]\w*(?:\(\d+\))?)\s*=|(?P<value>(?:\d+\*)?(?:[+-]?\d+(?![\w.])|\.[TF]\w*\.?|[TF]\b|'[^']*'|\"[^\"]*\"))|,)",
-    re.IGNORECASE,
+    r"""\s*(?:
+        (?P<key>[A-Za-z_]\w*(?:\(\d+\))?)\s*=
+        |(?P<value>(?:\d+\*)?(?:(?P<number>[+-]?(?:\d+\.?\d*|\.\d+)(?:[ED][+-]?\d+)?)(?![\w.])|\.[TF]\w*\.?|[TF]\b|'[^']*'|"[^"]*"))
+        |,)""",
+    re.IGNORECASE | re.VERBOSE,
 )
+# Keys of whole numbers. Programs add keys of their own, some with other numbers.
+_WHOLE_NUMBERS = ("NORB", "NELEC", "MS2", "ISYM", "ORBSYM")
 _SHOWN = 60
 
 
@@ -106,7 +111,8 @@ def _entries(line: Line, body: str, key: str, values: dict[str, list[str]], plac
     body = body.rstrip()
     while place < len(body):
         found = _ENTRY.match(body, place)
-        if found is None or (found["value"] and not key):
+        broken = found is not None and found["number"] and not found["number"].lstrip("+-").isdigit()
+        if found is None or (found["value"] and not key) or (broken and key in _WHOLE_NUMBERS):
             piece = body[place:].split()[0]
             fault(
                 line,

@@ -265,7 +265,7 @@ class _Record:
                 # A root, a sum and a few products on either side.
                 if not claimed >= least * (1.0 - 16.0 * UNIT):
                     return Check(name, False, f"the bound of {label} at t = {time!r} is less than the state's implies")
-        return Check(name, True, f"{len(self.times)} times, {len(self.observables)} observables")
+        return Check(name, True, f"times: {len(self.times)}, observables: {len(self.observables)}")
 
     def state_checks(
         self, path: Path, time: float, table: npt.NDArray[np.float64] | None, threads: int
@@ -314,7 +314,7 @@ class _Record:
             if not abs(value - row[2 + 2 * place]) <= allowed:
                 wrong = f"{label} is {value!r} in the state and {row[2 + 2 * place]!r} in {EXPECTATIONS}"
                 return Check(f"{name}: expectations", False, wrong)
-        return Check(f"{name}: expectations", True, f"{len(self.observables)} as in {EXPECTATIONS}")
+        return Check(f"{name}: expectations", True, f"as in {EXPECTATIONS} (observables: {len(self.observables)})")
 
 
 def _within(name: str, off: float, allowed: float) -> Check:
