@@ -298,6 +298,21 @@ def test_a_disk_that_fills_leaves_the_old_folder_as_it_was(limit, folder):
     assert [path.name for path in folder.parent.iterdir()] == ["folder"]
 
 
+def test_a_rename_that_fails_at_the_very_end_puts_the_old_folder_back(folder, monkeypatch):
+    before = contents(folder)
+    rename = Path.rename
+
+    def failing(self, target):
+        if self.name == "new":
+            raise OSError("invented failure")
+        return rename(self, target)
+
+    monkeypatch.setattr(Path, "rename", failing)
+    with pytest.raises(OSError, match="invented failure"):
+        made(folder, "last")
+    assert contents(folder) == before and [path.name for path in folder.parent.iterdir()] == ["folder"]
+
+
 def test_an_interrupt_on_the_way_leaves_the_old_folder_as_it_was(folder):
     before = contents(folder)
 
@@ -389,3 +404,16 @@ def test_the_command_line_writes_and_verifies(tmp_path, capsys):
     assert not document["holds"] and [c["name"] for c in document["checks"] if not c["holds"]] == ["state_1.npy"]
     assert run(["verify", str(tmp_path)]) == 2
     assert "holds no manifest.json" in capsys.readouterr().err
+
+
+@pytest.mark.parametrize("method", ["chebyshev", "krylov", "dense"])
+@pytest.mark.parametrize("times", [[-0.5, -1.0], [0.7, 0.7], [0.0]], ids=["backwards", "repeated", "start alone"])
+@pytest.mark.parametrize("dtype", [np.complex128, np.complex64])
+def test_folders_of_every_method_times_and_precision_verify(method, times, dtype, tmp_path):
+    start = tt.State.product("0+1-0", dtype=dtype)
+    found = tt.reference(CHAIN, start, times, 1e-9, WATCHED, method, "all", into=tmp_path / "a")
+    verified = tt.verify(tmp_path / "a")
+    assert verified.holds, verified
+    assert len(found.states) == 1
+    written = {path.name for path in (tmp_path / "a").glob("state_*.npy")}
+    assert len(written) == len(set(times))
