@@ -46,22 +46,22 @@ def files(tmp_path):
 def test_the_circuit_errs_as_the_formula_that_it_is(files):
     circuit = tt.read_qasm(files / "good.qasm")
     parts = tt.Partition([tt.Operator("0.5 X_0 + 0.5 X_1", qubits=2), tt.Operator("1.0 Z_0 Z_1", qubits=2)])
-    candidates = [tt.Candidate.of_circuit(circuit, "good.qasm"), tt.Candidate("strang", parts, steps=20)]
+    candidates = [tt.Candidate.from_rotations("good.qasm", circuit), tt.Candidate("strang", parts, steps=20)]
     start = tt.State.computational(0, 2)
     found = tt.audit(PAIR, start, 1.0, candidates, 0.01, observables=Z0)
     read, formula = found.rows
-    assert (read.label, read.steps, read.verdict) == ("good.qasm, as read", 1, "meets")
+    assert (read.label, read.steps, read.verdict) == ("good.qasm", 1, "meets")
     # Both intervals hold the same true error.
     assert read.error[0] <= formula.error[1] and formula.error[0] <= read.error[1]
-    assert read.bound is None and "good.qasm" in read.bound_source
-    assert found.to_dict()["rows"][0]["rule"] == "as read"
+    assert read.bound is None and "no formula" in read.bound_source
+    assert found.to_dict()["rows"][0]["steps_asked"] == "as given"
 
 
 def test_the_command_judges_circuits_and_tells_what_was_left_out(files, capsys):
     assert cli.run(["audit", str(files / "good.qasm"), "--job", str(files / "job.toml"), "--json"]) == 0
     out, err = capsys.readouterr()
     document = json.loads(out)
-    assert [row["label"] for row in document["rows"]] == ["good.qasm, as read"]
+    assert [row["label"] for row in document["rows"]] == ["good.qasm"]
     assert document["target"]["times"] == [1.0]
     assert "good.qasm: line 6: measurements at the end are left out" in err
     assert "only the last time of the job is judged, 1" in err
@@ -83,16 +83,17 @@ def test_preparation_is_named_on_the_command_line(files, capsys):
 
 def test_what_cannot_be_judged_is_refused(files, capsys):
     circuit = tt.Rotations([1], [0], [0.25], 3)
-    candidate = tt.Candidate.of_circuit(circuit)
+    candidate = tt.Candidate.from_rotations("wide", circuit)
+    three = tt.Operator("X_0", qubits=3)
     start = tt.State.computational(0, 2)
-    with pytest.raises(AuditError, match="candidates: circuit acts on 3 qubits, the state has 2"):
+    with pytest.raises(AuditError, match="candidates: the circuit 'wide' acts on 3 qubits, the Hamiltonian on 2"):
         tt.audit(PAIR, start, 1.0, [candidate], 0.01, observables=Z0)
-    with pytest.raises(AuditError, match="times: a circuit is read out at its end only"):
-        tt.audit(PAIR, start, [0.5, 1.0], [candidate], 0.01, observables=Z0)
-    with pytest.raises(ArgumentError, match="circuit: no Rotations"):
-        tt.Candidate.of_circuit("good.qasm")
-    with pytest.raises(ArgumentError, match="steps: a circuit is run as it is"):
-        tt.Candidate(candidate.formula, steps=2)
+    with pytest.raises(AuditError, match="candidates: the circuit 'wide' reaches one time"):
+        tt.audit(three, tt.State.computational(0, 3), [0.5, 1.0], [candidate], 0.01, quantity="state")
+    with pytest.raises(ArgumentError, match="circuit: no circuit"):
+        tt.Candidate.from_rotations("a name", "good.qasm")
+    with pytest.raises(ArgumentError, match="formula: neither a name"):
+        tt.Candidate(candidate)
     assert cli.run(["audit", "--job", str(files / "job.toml")]) == 2
     assert cli.run(["audit", str(files / "good.qasm"), str(files / "bad.qasm")]) == 2
     (files / "broken.qasm").write_text(strang_text(2).replace("rz(", "rzz("))

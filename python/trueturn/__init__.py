@@ -1,6 +1,6 @@
 """Prove product-formula circuits against a certified reference."""
 
-from trueturn import driven, errors, lattice, model, randomised
+from trueturn import chemistry, driven, errors, lattice, model, randomised
 from trueturn._build import build_info
 from trueturn._threads import threads
 from trueturn.accuracy import (
@@ -23,6 +23,7 @@ from trueturn.accuracy import (
 )
 from trueturn.adaptive import AdaptiveRun, adaptive
 from trueturn.audit import Audit, Candidate, audit
+from trueturn.chemistry import read_fcidump
 from trueturn.circuits.reading import Circuit, read_circuit, read_qasm
 from trueturn.comparison import Comparison, compare
 from trueturn.device import Budget, CausalCone, causal_cone, device_budget
@@ -40,6 +41,7 @@ from trueturn.operator import Operator
 from trueturn.partition import Partition
 from trueturn.planning import Plan, PlanRow, plan
 from trueturn.reference import Certificate, Reference, reference
+from trueturn.reference.verification import Verification, verify
 from trueturn.rotations import Rotations
 from trueturn.scaling import Case, PowerLaw, Scaling, fit_steps, step_scaling
 from trueturn.state import State
@@ -86,11 +88,13 @@ __all__ = [
     "Symmetries",
     "Symmetry",
     "Target",
+    "Verification",
     "adaptive",
     "audit",
     "bound",
     "build_info",
     "causal_cone",
+    "chemistry",
     "compare",
     "compare_costs",
     "device_budget",
@@ -111,6 +115,7 @@ __all__ = [
     "product_errors",
     "randomised",
     "read_circuit",
+    "read_fcidump",
     "read_formulas",
     "read_qasm",
     "reference",
@@ -123,5 +128,6 @@ __all__ = [
     "steps_by_bound",
     "symmetries",
     "threads",
+    "verify",
     "well_conditioned_steps",
 ]

@@ -141,9 +141,13 @@ def plan(job: Path, into: Path | None, as_json: bool, threads: int | None) -> in
 
 @commands.command()
 @click.argument("job", type=JOB)
+@click.option("--into", type=JOB, metavar="FOLDER", help="Write manifest.json, expectations.csv and state_*.npy there.")
+@click.option(
+    "--states", type=click.Choice(["all", "last"]), default="all", help="Which states to write; all by default."
+)
 @AS_JSON
 @THREADS
-def reference(job: Path, as_json: bool, threads: int | None) -> int:
+def reference(job: Path, into: Path | None, states: str, as_json: bool, threads: int | None) -> int:
     """Compute only the certified reference of JOB.
 
     Prints the expectations of its observables at its times, and the certificate.
@@ -151,13 +155,36 @@ def reference(job: Path, as_json: bool, threads: int | None) -> int:
     from trueturn.audit.job import read_job
 
     task = read_job(job, candidates_required=False)
+    keep = "last" if into is None else states
     with progress_bar() as progress:
-        found = task.reference(threads=threads, progress=progress)
+        found = task.reference(threads=threads, progress=progress, into=into, keep=keep)
     if as_json:
         say_json(reference_document(task, found))
     else:
         say_reference(task, found)
+        if into is not None:
+            say(f"Folder: {into}")
     return 0
+
+
+@commands.command()
+@click.argument("folder", type=JOB)
+@AS_JSON
+@THREADS
+def verify(folder: Path, as_json: bool, threads: int | None) -> int:
+    """Verify a reference FOLDER: nothing altered or missing, norm and energy conserved within the certificate.
+
+    Exit status 0 where every check holds, 1 where one does not.
+    """
+    from trueturn.reference.verification import verify as verified
+
+    with progress_bar() as progress:
+        found = verified(folder, threads=threads, progress=progress)
+    if as_json:
+        say_json(found.to_dict())
+    else:
+        say(repr(found))
+    return 0 if found.holds else 1
 
 
 @commands.command()
@@ -198,7 +225,7 @@ def formulas(job: Path | None, as_json: bool) -> int:
         from trueturn.audit.job import read_job
 
         task = read_job(job)
-        for candidate in task.candidates:
+        for candidate in task.formula_candidates:
             partitions.setdefault(str(candidate.rule), candidate.partition(task.operator))
     known = [formula(name) for name in all_names(special=True)]
     if as_json:
@@ -240,23 +267,15 @@ def budget(job: Path, errors: str, as_json: bool, threads: int | None) -> int:
 
 def reference_document(task: Job, found: Reference) -> dict[str, Any]:
     """Give a reference as plain data."""
-    proof = found.certificate
+    from trueturn.reference.folder import certificate_data
+
     return {
         "kind": "trueturn reference",
         "schema": 1,
         "title": task.title,
         "times": [float(time) for time in found.times],
         "expectations": {name: [float(value) for value in values] for name, values in found.expectations.items()},
-        "certificate": {
-            "method": proof.method,
-            "proven": bool(proof.proven),
-            "error_bound": [float(proof.error_bound[time]) for time in found.times],
-            "truncation": [float(proof.truncation[time]) for time in found.times],
-            "rounding": [float(proof.rounding[time]) for time in found.times],
-            "spectral_interval": [float(end) for end in proof.spectral_interval],
-            "applications": int(proof.applications),
-            "notes": list(proof.notes),
-        },
+        "certificate": certificate_data(found.certificate, found.times),
     }
 
 

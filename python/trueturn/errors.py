@@ -14,6 +14,7 @@ __all__ = [
     "AuditError",
     "EnsembleError",
     "FormulaError",
+    "IntegralsError",
     "InternalError",
     "JobError",
     "MemoryRefusedError",
@@ -160,6 +161,13 @@ class JobError(TrueturnError, ValueError):
 
     path: str
     key: str
+
+
+class IntegralsError(TrueturnError, ValueError):
+    """A file of integrals that is malformed, cut off, or contradicts itself; `line` counts from 1."""
+
+    path: str
+    line: int
 
 
 class InternalError(TrueturnError, RuntimeError):

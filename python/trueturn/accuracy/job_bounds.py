@@ -65,7 +65,7 @@ def job_bounds(task: Job) -> tuple[BoundRow, ...]:
     time = task.times[-1]
     unit = grid_unit(task.times) if task.readout == "along" else 1
     rows = []
-    for candidate in task.candidates:
+    for candidate in task.formula_candidates:
         partition = candidate.partition(task.operator)
         formula = candidate.formula
 

@@ -9,22 +9,21 @@ from __future__ import annotations
 
 import re
 import tomllib
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from importlib import resources
-from itertools import pairwise
 from pathlib import Path
 from typing import TYPE_CHECKING
 
+from trueturn.audit.base_candidate import BaseCandidate
 from trueturn.audit.candidate import Candidate
+from trueturn.audit.job_candidates import read_candidates, read_planned
 from trueturn.audit.job_device import Device, read_device
 from trueturn.audit.job_system import Start, read_start, read_system
-from trueturn.audit.job_table import Table, nearest
-from trueturn.errors import FormulaError, JobError
-from trueturn.formulas import Formula, formula, formulas, read_formulas
-from trueturn.formulas.structure import require_structure
+from trueturn.audit.job_table import Table
+from trueturn.audit.job_target import read_target
+from trueturn.errors import JobError
 from trueturn.operator import Operator
-from trueturn.partition_rules import RULES
 
 if TYPE_CHECKING:
     from trueturn.audit.result import Audit
@@ -35,9 +34,7 @@ if TYPE_CHECKING:
 __all__ = ["Job", "built_in_job", "read_job", "template"]
 
 SECTIONS = ("system", "start", "target", "candidate", "plan", "device", "reference", "output", "run")
-NORMED = {"state": "states", "operator": "circuits"}
 METHODS = ("chebyshev", "krylov", "dense")
-EXAMPLE_CANDIDATE = '[[candidate]] with formula = "strang", rule = "commuting", steps = "least"'
 
 Progress = Callable[[str, float, float], None]
 
@@ -62,7 +59,7 @@ class Job:
     readout : "along" or "separate"
     relative_to : None or "norm"
     observables : mapping of str to Operator
-    candidates : tuple of Candidate
+    candidates : tuple of Candidate, or GivenCircuit where files of circuits took their place
         Empty only when read with ``candidates_required=False``.
     planned : PlanTask or None
         What `[plan]` asks for; without it the formulas and rules of the candidates. None where there is neither.
@@ -88,7 +85,7 @@ class Job:
     readout: str
     relative_to: str | None
     observables: Mapping[str, Operator]
-    candidates: tuple[Candidate, ...]
+    candidates: tuple[BaseCandidate, ...]
     planned: PlanTask | None
     reference_tolerance: float | None
     reference_method: str
@@ -98,6 +95,11 @@ class Job:
     title: str
     energy_unit: str
     device: Device | None = None
+
+    @property
+    def formula_candidates(self) -> tuple[Candidate, ...]:
+        """The candidates that are formulas: those that theorems, plans and files of circuits know of."""
+        return tuple(candidate for candidate in self.candidates if isinstance(candidate, Candidate))
 
     def audit(self, threads: int | None = None, progress: Progress | None = None) -> Audit:
         """Run the audit.
@@ -195,19 +197,41 @@ class Job:
             )
         return self.start
 
-    def reference(self, threads: int | None = None, progress: Progress | None = None) -> Reference:
-        """Compute only the certified reference; the parameters are those of `audit`."""
+    def reference(
+        self,
+        threads: int | None = None,
+        progress: Progress | None = None,
+        *,
+        into: Path | None = None,
+        keep: str = "last",
+    ) -> Reference:
+        """Compute only the certified reference.
+
+        Parameters
+        ----------
+        threads, progress
+            As for `audit`.
+        into : Path, optional
+            Write a reference folder there.
+        keep : "last" or "all"
+            Which states to keep, or with `into` to write.
+        """
         from trueturn.reference import reference
 
+        start = self.required_start()
         return reference(
             self.operator,
-            self.required_start().state(),
+            start.state(),
             self.times,
             tolerance=1e-10 if self.reference_tolerance is None else self.reference_tolerance,
             observables=self.observables,
             method=self.reference_method,
+            keep=keep,
             threads=self.threads if threads is None else threads,
             progress=progress,
+            into=into,
+            title=self.title,
+            start=start.words,
         )
 
 
@@ -277,26 +301,13 @@ def parse_job(text: str, path: Path | None, candidates_required: bool, start_req
     folder = path.parent if path is not None else Path()
 
     operator = read_system(file.table("system"), folder)
-    target = file.table("target")
-    every_start = target.values.get("quantity") == "operator"
-    if start_required and not every_start:
+    section = file.table("target")
+    if start_required and section.values.get("quantity") != "operator":
         file.require("start", 'a section [start], or quantity = "operator" in [target] for every start at once')
     start = read_start(file.table("start"), operator.qubits, folder) if "start" in file else None
-    target.only(("times", "time", "tolerance", "quantity", "readout", "relative_to", "observables"))
-    times = read_times(target)
-    tolerance = target.positive("tolerance", "tolerance = 0.01")
-    quantity = target.choice("quantity", ("observables", "state", "operator"), default="observables")
-    readout = target.choice("readout", ("along", "separate"), default="along")
-    relative_to = target.choice("relative_to", ("norm",)) if "relative_to" in target else None
-    if relative_to is not None and quantity != "observables":
-        raise target.error("relative_to", f"has no meaning for {NORMED[quantity]}, whose norm is 1", "take it out")
-    observables = read_observables(target, operator.qubits)
-    if quantity == "observables" and not observables:
-        remedy = 'add [target.observables] with a line such as edge = "Z_0", or set quantity = "state"'
-        raise target.error("observables", "missing", remedy)
-
+    target = read_target(section, operator.qubits)
     candidates = read_candidates(file, operator, folder, candidates_required)
-    planned = read_planned(file, operator, tolerance, folder, candidates)
+    planned = read_planned(file, operator, target.tolerance, folder, candidates)
     reference = Table(file.table("reference").values if "reference" in file else {}, "reference", shown)
     reference.only(("tolerance", "method"))
     output = Table(file.table("output").values if "output" in file else {}, "output", shown)
@@ -307,12 +318,7 @@ def parse_job(text: str, path: Path | None, candidates_required: bool, start_req
         path=path,
         operator=operator,
         start=start,
-        times=times,
-        tolerance=tolerance,
-        quantity=quantity,
-        readout=readout,
-        relative_to=relative_to,
-        observables=observables,
+        **target._asdict(),
         candidates=candidates,
         planned=planned,
         reference_tolerance=(
@@ -347,103 +353,3 @@ def parse_toml(text: str, path: str) -> dict[str, object]:
     except (ValueError, RecursionError) as error:  # integers of thousands of digits, brackets nested a thousand deep
         message = f"job file: cannot be read ({str(error)[:60]}); write shorter numbers and fewer nested brackets"
         raise JobError(message, path=path, key="") from error
-
-
-def read_times(target: Table) -> tuple[float, ...]:
-    """Read `times`, or `time` for a single one; ascending and above zero."""
-    if ("times" in target) == ("time" in target):
-        wrong = "given together with time" if "times" in target else "missing"
-        raise target.error("times", wrong, "write times = [0.5, 1.0], or time = 1.0 for a single one")
-    if "time" in target:
-        return (target.positive("time", "time = 1.0"),)
-    example = "times = [0.5, 1.0]"
-    values = target.values["times"]
-    if not isinstance(values, list):
-        raise target.error("times", "not a list", f"write {example}, or time = 1.0", values)
-    if not values:
-        raise target.error("times", "empty", f"write {example}")
-    times = [target.checked_number("times", value, example, index) for index, value in enumerate(values)]
-    if times[0] <= 0 or any(later <= earlier for earlier, later in pairwise(times)):
-        raise target.error("times", "not ascending from above zero", f"write for instance {example}", times)
-    return tuple(times)
-
-
-def read_observables(target: Table, qubits: int) -> dict[str, Operator]:
-    """Read `[target.observables]`: names with operator text on the qubits of the system."""
-    if "observables" not in target:
-        return {}
-    section = target.table("observables")
-    observables = {}
-    for name in section.values:
-        text = section.text(name, f'{name} = "Z_0 Z_1"')
-        with section.blame(name):
-            observables[name] = Operator(text, qubits=qubits)
-    return observables
-
-
-def read_candidates(file: Table, operator: Operator, folder: Path, required: bool) -> tuple[Candidate, ...]:
-    """Read every `[[candidate]]`, and try its rule on the operator."""
-    entries = file.values.get("candidate", [])
-    if not isinstance(entries, list) or not all(isinstance(entry, dict) for entry in entries):
-        raise file.error("candidate", "not a list of sections", f"write {EXAMPLE_CANDIDATE}")
-    if not entries and required:
-        raise file.error("candidate", "missing", f"add {EXAMPLE_CANDIDATE}")
-    candidates = []
-    for index, entry in enumerate(entries, start=1):
-        section = Table(entry, f"candidate[{index}]", file.path)
-        section.only(("formula", "formula_file", "rule", "steps"))
-        name = section.text("formula", 'formula = "strang"')
-        chosen = find_formula(section, "formula", name, folder)
-        rule = section.choice("rule", tuple(RULES), default="commuting")
-        candidate = Candidate(chosen, rule=rule, steps=read_steps(section))
-        with section.blame("rule"):
-            require_structure(chosen, candidate.partition(operator))
-        candidates.append(candidate)
-    return tuple(candidates)
-
-
-def read_planned(
-    file: Table, operator: Operator, tolerance: float, folder: Path, candidates: Sequence[Candidate]
-) -> PlanTask | None:
-    """Read `[plan]`, or make a plan of the candidates, if there are any."""
-    from trueturn.planning.job import plan_of_candidates, read_plan
-
-    if "plan" in file:
-        return read_plan(file.table("plan"), operator, tolerance, folder, find_formula)
-    return plan_of_candidates(candidates) if candidates else None
-
-
-def find_formula(section: Table, key: str, name: str, folder: Path) -> Formula:
-    """Find the formula that a key names: in the file of `formula_file`, where there is one, else by its name.
-
-    An unknown one is refused with the nearest that is known.
-    """
-    if "formula_file" in section:
-        return own_formula(section, key, name, folder)
-    try:
-        return formula(name)
-    except FormulaError as error:
-        raise section.error(key, "unknown", nearest(name, formulas(special=True)), name) from error
-
-
-def own_formula(section: Table, key: str, name: str, folder: Path) -> Formula:
-    """Find a formula in the file that `formula_file` names; what is wrong in there is told with its own key."""
-    file = section.text("formula_file", 'formula_file = "mine.toml"')
-    try:
-        found = {one.name: one for one in read_formulas(folder / file)}
-    except JobError as error:
-        full = section.full("formula_file")
-        raise JobError(f"{full}: {file}: {error}", path=section.path, key=full) from error
-    if name not in found:
-        raise section.error(key, f"not in {file}", nearest(name, tuple(found)), name)
-    return found[name]
-
-
-def read_steps(section: Table) -> int | str:
-    """Read `steps`: a positive whole number or ``"least"``."""
-    value = section.values.get("steps", "least")
-    if value == "least":
-        return "least"
-    if isinstance(value, str):
-        raise section.error("steps", "neither a number nor least", 'write steps = 20 or steps = "least"', value)
-    return section.whole("steps", 'steps = 20 or steps = "least"')

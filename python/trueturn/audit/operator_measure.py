@@ -8,10 +8,9 @@ from dataclasses import dataclass, field
 from trueturn import _memory
 from trueturn.accuracy.difference import DENSE_QUBITS, DenseEvolution, PlannedEvolution, exact_evolution
 from trueturn.accuracy.operator_norm import norm_of_difference
-from trueturn.audit.candidate import Candidate
-from trueturn.audit.measure import SEGMENT_ROUNDINGS, Bench, Measured, judge
+from trueturn.audit.base_candidate import BaseCandidate, circuits_from_start
+from trueturn.audit.measure import Bench, Measured, judge
 from trueturn.audit.result import PointError, Trial
-from trueturn.formulas import ANGLE_ROUNDINGS
 from trueturn.operator import Operator
 from trueturn.partition import Partition
 from trueturn.reference.certificate import UNIT
@@ -44,13 +43,11 @@ class OperatorBench(Bench):
             _memory.require((6 + len(self.times)) * 16 << 2 * self.operator.qubits, "audit")
         self._exact = [exact_evolution(self.operator, time, dense=dense, threads=self.threads) for time in self.times]
 
-    def measure(self, candidate: Candidate, partition: Partition, steps: int) -> Measured:
+    def measure(self, candidate: BaseCandidate, partition: Partition | None, steps: int) -> Measured:
         """Compare a candidate's circuits with the exact evolution at every time."""
-        circuits = self.circuits(candidate, partition, steps)
-        if self.readout == "along":
-            for place in range(1, len(circuits)):
-                circuits[place] = circuits[place - 1] + circuits[place]
-        roundings = ANGLE_ROUNDINGS + SEGMENT_ROUNDINGS
+        legs = self.legs(candidate, partition, steps)
+        roundings = max(leg.angle_roundings for leg in legs)
+        circuits = [circuit for circuit in circuits_from_start(legs) if circuit is not None]
         points = tuple(
             PointError(time, "operator", float("nan"), float("nan"), self._error(circuit, exact, roundings))
             for time, circuit, exact in zip(self.times, circuits, self._exact, strict=True)

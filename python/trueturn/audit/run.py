@@ -12,7 +12,8 @@ from trueturn import _memory, _threads
 from trueturn._observables import named_operators
 from trueturn.accuracy.difference import DENSE_QUBITS
 from trueturn.audit import words
-from trueturn.audit.candidate import Candidate, GivenCircuit
+from trueturn.audit.base_candidate import BaseCandidate
+from trueturn.audit.implementation import Implementation
 from trueturn.audit.measure import Bench
 from trueturn.audit.operator_measure import OperatorBench
 from trueturn.audit.result import Audit, Row
@@ -34,7 +35,7 @@ def audit(
     operator: Operator,
     state: State | None,
     times: float | Iterable[float],
-    candidates: Sequence[Candidate],
+    candidates: Sequence[BaseCandidate],
     tolerance: float,
     quantity: str = "observables",
     observables: Mapping[str, Operator] | None = None,
@@ -61,6 +62,8 @@ def audit(
     times : float or iterable of float
         Positive, in inverse units of the coefficients.
     candidates : sequence of Candidate
+        Formulas with a rule and steps; `Candidate.from_rotations` and `Candidate.from_callable` make candidates of given
+        circuits and of a user's own implementation, whose operator error is not judged.
     tolerance : float
         On the largest error over times and observables; absolute.
     quantity : "observables", "state" or "operator"
@@ -98,8 +101,8 @@ def audit(
         The tolerance is not positive, or below what double precision can certify.
     MemoryRefusedError
         The vectors needed do not fit: start, reference and one work vector at a time, and for
-        ``quantity="state"`` one reference state for each time. For ``quantity="operator"`` six vectors, or up to 10 qubits
-        six matrices and one for each time.
+        ``quantity="state"`` one reference state for each time, and two more for an implementation of the user's. For
+        ``quantity="operator"`` six vectors, or up to 10 qubits six matrices and one for each time.
 
     Notes
     -----
@@ -137,7 +140,7 @@ def audit(
     for number, (candidate, partition) in enumerate(zip(candidates, setting.partitions, strict=True)):
         started = clock.perf_counter()
 
-        def tell(steps: int, candidate: Candidate = candidate, number: int = number) -> None:
+        def tell(steps: int, candidate: BaseCandidate = candidate, number: int = number) -> None:
             if progress is not None:
                 progress(f"{candidate.label}: {steps} steps", number, len(candidates))
 
@@ -161,7 +164,7 @@ class Setting:
 
     bench: Bench
     operator: Operator
-    partitions: tuple[Partition, ...]
+    partitions: tuple[Partition | None, ...]
 
     def concluded(
         self, rows: Sequence[Row], seconds: Mapping[str, float], *, title: str, start: str, energy_unit: str
@@ -186,7 +189,9 @@ class Setting:
             start=words.start(start, bench.start, bench.quantity),
             title=title,
             energy_unit=energy_unit,
-            assumptions=words.assumptions(bench.start, bench.readout, bench.relative_to, bench.quantity),
+            assumptions=words.assumptions(
+                bench.start, bench.readout, bench.relative_to, bench.quantity, [row.candidate for row in rows]
+            ),
             proven=words.proven(truth),
             measured=words.measured(bench.quantity, truth.certificate.proven),
             cautions=words.cautions(bench.quantity),
@@ -198,7 +203,7 @@ def prepare(
     operator: Operator,
     state: State | None,
     times: float | Iterable[float],
-    candidates: Sequence[Candidate],
+    candidates: Sequence[BaseCandidate],
     tolerance: float,
     quantity: str,
     observables: Mapping[str, Operator] | None,
@@ -210,7 +215,7 @@ def prepare(
     most_steps: int,
     threads: int | None,
     progress: Progress | None,
-    partitions: Sequence[Partition] | None = None,
+    partitions: Sequence[Partition | None] | None = None,
 ) -> Setting:
     """Check everything that `audit` takes, and compute the reference; parameters and errors are those of `audit`.
 
@@ -220,11 +225,11 @@ def prepare(
     asked = sorted(set(positive_times(times)))
     start = _start(state, operator, quantity)
     _check(operator, start, candidates, tolerance, quantity, watched, readout, relative_to, most_steps)
-    _check_circuits(start, candidates, asked)
     workers = _threads.resolve(threads)
     if partitions is None:
-        partitions = [candidate.partition(operator) for candidate in candidates]
+        partitions = [candidate.prepare(operator, asked) for candidate in candidates]
     vectors = {"observables": 3, "state": 2 + len(asked), "operator": 6}[quantity]
+    vectors += 2 * any(isinstance(candidate, Implementation) for candidate in candidates)
     _memory.require(vectors * (16 << start.qubits), "audit", vectors)
     if quantity == "operator":
         reference_method = "dense" if start.qubits <= DENSE_QUBITS else "chebyshev"
@@ -261,7 +266,7 @@ def _start(state: State | None, operator: Operator, quantity: str) -> State:
 def _check(
     operator: Operator,
     state: State,
-    candidates: Sequence[Candidate],
+    candidates: Sequence[BaseCandidate],
     tolerance: float,
     quantity: str,
     observables: Mapping[str, Operator],
@@ -300,36 +305,27 @@ def _check(
             argument="most_steps",
             value=most_steps,
         )
-    if not isinstance(candidates, Sequence) or not candidates or not all(isinstance(c, Candidate) for c in candidates):
+    if (
+        not isinstance(candidates, Sequence)
+        or not candidates
+        or not all(isinstance(c, BaseCandidate) for c in candidates)
+    ):
         raise AuditError(
             f"candidates: no list of Candidate ({candidates!r}); give at least one",
             reason="no candidates",
             limit=None,
         )
+    own = next((candidate for candidate in candidates if isinstance(candidate, Implementation)), None)
+    if quantity == "operator" and own is not None:
+        raise AuditError(
+            f"quantity: the operator error needs a circuit, and {own.name!r} is a function; "
+            "ask for quantity='state' or 'observables'",
+            reason="operator error of an implementation",
+            limit=None,
+        )
     require_same_qubits(state, operator, "operator")
     for name, observable in observables.items():
         require_same_qubits(state, observable, f"observables[{name!r}]")
-
-
-def _check_circuits(state: State, candidates: Sequence[Candidate], times: Sequence[float]) -> None:
-    """Circuits that are run as they are end at one time, on the qubits of the state."""
-    for candidate in candidates:
-        if not isinstance(candidate.formula, GivenCircuit):
-            continue
-        if len(times) > 1:
-            raise AuditError(
-                f"times: a circuit is read out at its end only ({candidate.formula.name}, {len(times)} times); "
-                "give the one time that it evolves to",
-                reason="a circuit at several times",
-                limit=1,
-            )
-        if candidate.formula.circuit.qubits != state.qubits:
-            raise AuditError(
-                f"candidates: {candidate.formula.name} acts on {candidate.formula.circuit.qubits} qubits, "
-                f"the state has {state.qubits}; give layouts that list the qubits of the system",
-                reason="a circuit on other qubits",
-                limit=state.qubits,
-            )
 
 
 def _choice(argument: str, value: object, choices: Sequence[object]) -> ArgumentError:

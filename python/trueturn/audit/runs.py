@@ -9,12 +9,14 @@ from typing import NamedTuple
 
 from trueturn.accuracy.bounds import bound
 from trueturn.audit import words
+from trueturn.audit.base_candidate import BaseCandidate
 from trueturn.audit.candidate import Candidate
 from trueturn.audit.measure import Bench, Measured
 from trueturn.audit.result import Row, Trial
 from trueturn.audit.search import least_steps
 from trueturn.errors import AuditError, FormulaError
 from trueturn.partition import Partition
+from trueturn.rotations import Rotations
 
 __all__ = ["Chosen", "Runs", "error_per_distance"]
 
@@ -36,8 +38,8 @@ class Runs:
     """What was run of one formula on one partition; a step count runs once however often it is asked for."""
 
     bench: Bench
-    candidate: Candidate
-    partition: Partition
+    candidate: BaseCandidate
+    partition: Partition | None
     measured: dict[int, Measured] = field(default_factory=dict)
     seconds: dict[int, float] = field(default_factory=dict)
 
@@ -48,6 +50,12 @@ class Runs:
             self.measured[steps] = self.bench.measure(self.candidate, self.partition, steps)
             self.seconds[steps] = clock.perf_counter() - began
         return self.measured[steps].trial
+
+    def circuit(self, steps: int) -> Rotations:
+        """Return the circuit of a step count that was run, for a candidate whose circuits are known, such as a formula."""
+        circuit = self.measured[steps].circuit
+        assert circuit is not None
+        return circuit
 
     def search(self, most_steps: int, tell: Callable[[int], None]) -> Chosen:
         """Search for the least step count.
@@ -70,7 +78,7 @@ class Runs:
             return self.run(steps)
 
         tolerance = self.bench.tolerance
-        found = least_steps(run, tolerance, self.candidate.formula.order, unit=unit, most_steps=most_steps)
+        found = least_steps(run, tolerance, self.candidate.order, unit=unit, most_steps=most_steps)
         return Chosen(
             found.steps, found.accidental, words.search_note(found, tolerance, most_steps), verified=found.found
         )
@@ -92,6 +100,7 @@ class Runs:
     def row(self, chosen: Chosen, *, bounded: bool = True) -> Row:
         """Make the row of a step count that was run; `bounded` asks for a proven bound, which may take its time."""
         found = self.measured[chosen.steps]
+        circuit = found.circuit
         limit, source = self._bound(chosen.steps) if bounded else (None, "not computed")
         return Row(
             candidate=self.candidate,
@@ -100,24 +109,26 @@ class Runs:
             error=found.trial.error,
             bound=limit,
             bound_source=source,
-            rotations=found.circuit.count,
+            rotations=None if circuit is None else circuit.count,
             two_qubit_gates=found.trial.two_qubit_gates,
-            depth=found.circuit.depth(),
+            depth=None if circuit is None else circuit.depth(),
             verdict=found.trial.verdict,
             rounding=found.rounding,
             points=found.points,
             trials=tuple(self.measured[count].trial for count in sorted(self.measured)),
             accidental=chosen.accidental,
-            note=chosen.note,
+            note="; ".join(filter(None, (chosen.note, found.note))),
         )
 
     def _bound(self, steps: int) -> tuple[float | None, str]:
         """Return a proven bound on the error at a step count and its source, or None and the reason."""
-        bench, formula = self.bench, self.candidate.formula
+        bench = self.bench
+        if not isinstance(self.candidate, Candidate) or self.partition is None:
+            return None, "no formula, so no theorem on its error"
         try:
-            found = bound(formula, self.partition, bench.times[-1], steps)
+            found = bound(self.candidate.formula, self.partition, bench.times[-1], steps)
         except FormulaError:
-            return None, f"no theorem at hand covers {formula.name}"
+            return None, f"no theorem at hand covers {self.candidate.name}"
         source = f"{found.theorem}, {found.source}"
         if bench.quantity != "observables":
             what = "unit vectors" if bench.quantity == "state" else "unitary matrices"

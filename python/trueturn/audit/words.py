@@ -2,9 +2,12 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 
+from trueturn.audit.base_candidate import BaseCandidate
 from trueturn.audit.figures import plain, upper
+from trueturn.audit.implementation import Implementation
 from trueturn.audit.operator_measure import CONFIDENCE
 from trueturn.audit.result import Row
 from trueturn.audit.search import Search
@@ -41,7 +44,9 @@ def start(given: str, state: State, quantity: str) -> str:
     return given or f"a given state vector of {state.qubits} qubits"
 
 
-def assumptions(state: State, readout: str, relative_to: str | None, quantity: str) -> tuple[str, ...]:
+def assumptions(
+    state: State, readout: str, relative_to: str | None, quantity: str, candidates: Sequence[BaseCandidate]
+) -> tuple[str, ...]:
     """Return what was taken as given."""
     single = state.dtype.itemsize == 8 and quantity != "operator"
     how = (
@@ -50,15 +55,19 @@ def assumptions(state: State, readout: str, relative_to: str | None, quantity: s
         else "A circuit of its own for each time, each with the stated number of steps."
     )
     scale = "Errors are divided by a proven bound on each observable's norm." if relative_to else "Errors are absolute."
+    own = ", ".join(candidate.name for candidate in candidates if isinstance(candidate, Implementation))
     exactly = "The Hamiltonian is exactly as given; the start is any unit vector"
     if quantity != "operator":
         exactly = "The Hamiltonian and the start state are exactly as given"
-    return (
+    taken = (
         f"{exactly}; ħ = 1.",
         how,
         scale,
         f"Candidates ran in {'single' if single else 'double'} precision on a noiseless state vector.",
     )
+    if not own:
+        return taken
+    return (*taken, f"What {own} computed is judged as it came back, its own rounding included; its cost is not known.")
 
 
 def proven(reference: Reference) -> tuple[str, ...]:
@@ -99,24 +108,37 @@ def measured(quantity: str, reference_proven: bool) -> tuple[str, ...]:
 
 def recommendation(rows: Sequence[Row], tolerance: float) -> tuple[Row | None, str]:
     """Return the row to use and why, in one sentence."""
-    fitting = sorted(
-        (row for row in rows if row.verdict == "meets"), key=lambda row: (row.two_qubit_gates, row.rotations)
-    )
+    fitting = sorted((row for row in rows if row.verdict == "meets"), key=_cost)
     if not fitting:
         closest = min(rows, key=lambda row: row.error[1])
         return None, (
-            f"No candidate is shown to meet {plain(tolerance)}; the closest is {closest.label} with {_steps(closest.steps)}, "
+            f"No candidate is shown to meet {plain(tolerance)}; the closest is {_run_of(closest)}, "
             f"whose error is at most {upper(closest.error[1])}."
         )
     best = fitting[0]
-    reason = f"{best.label} with {_steps(best.steps)} meets {plain(tolerance)} with {_gates(best)}"
+    if best.two_qubit_gates is None:
+        return best, f"{_run_of(best)} meets {plain(tolerance)}; its cost is not known, so nothing is called cheapest."
+    reason = f"{_run_of(best)} meets {plain(tolerance)} with {_gates(best)}"
     if len(fitting) == 1:
         others = "it is the only candidate" if len(rows) == 1 else "no other candidate meets it"
         return best, f"{reason}; {others}."
     return best, f"{reason}, the fewest here; next is {fitting[1].label} with {_gates(fitting[1])}."
 
 
+def _cost(row: Row) -> tuple[float, float]:
+    """Order by two-qubit gates, then rotations; what is not known comes last."""
+    if row.two_qubit_gates is None or row.rotations is None:
+        return math.inf, math.inf
+    return row.two_qubit_gates, row.rotations
+
+
+def _run_of(row: Row) -> str:
+    return row.label if row.candidate.steps_words == "as given" else f"{row.label} with {_steps(row.steps)}"
+
+
 def _gates(row: Row) -> str:
+    if row.two_qubit_gates is None:
+        return "unknown cost"
     if row.two_qubit_gates:
         return f"{row.two_qubit_gates} two-qubit gate{'' if row.two_qubit_gates == 1 else 's'}"
     return f"no two-qubit gates and {row.rotations} rotation{'' if row.rotations == 1 else 's'}"

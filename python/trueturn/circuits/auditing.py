@@ -35,7 +35,7 @@ def job_for_circuits(
     candidates, notes = [], []
     for path in paths:
         circuit = read_circuit(path, prepare=prepare, basis=basis, quarter_turns=quarter_turns)
-        candidates.append(Candidate.of_circuit(circuit.evolution, path.name))
+        candidates.append(Candidate.from_rotations(path.name, circuit.evolution))
         notes += [f"{path.name}: {note}" for note in circuit.notes]
     if len(job.times) > 1:
         notes.append(f"circuits are read out at their end: only the last time of the job is judged, {job.times[-1]:g}")

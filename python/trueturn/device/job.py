@@ -52,7 +52,7 @@ def job_budgets(
     if not job.observables:
         remedy = 'a budget is for expectations: add [target.observables] with a line such as edge = "Z_0"'
         raise JobError(f"target.observables: missing; {remedy}", path=path, key="target.observables")
-    candidates = tuple(dict.fromkeys(replace(candidate, steps="least") for candidate in job.candidates))
+    candidates = tuple(dict.fromkeys(replace(candidate, steps="least") for candidate in job.formula_candidates))
     found = {}
     for name, observable in job.observables.items():
         scale = norm_bound(observable) if job.relative_to == "norm" else 1.0

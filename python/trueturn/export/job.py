@@ -23,7 +23,7 @@ def job_hardware(job: Job) -> Hardware:
 
 def job_labels(job: Job) -> list[str]:
     """Return a name for each candidate: formula and rule, and its number where two share them."""
-    labels = [candidate.label for candidate in job.candidates]
+    labels = [candidate.label for candidate in job.formula_candidates]
     return [f"{number} {label}" if labels.count(label) > 1 else label for number, label in enumerate(labels, start=1)]
 
 
@@ -36,7 +36,7 @@ def job_candidate(job: Job, name: str | None) -> int:
         No candidate or several have this name, or None is given and there are several.
     """
     labels = job_labels(job)
-    formulas = [candidate.formula.name for candidate in job.candidates]
+    formulas = [candidate.formula.name for candidate in job.formula_candidates]
     if name is None:
         if len(labels) == 1:
             return 0
@@ -70,7 +70,7 @@ def job_circuit(job: Job, place: int, steps: int | None) -> Rotations:
     AuditError
         The circuit is read on the way and a time falls between its steps.
     """
-    candidate = job.candidates[place]
+    candidate = job.formula_candidates[place]
     count = candidate.steps if steps is None else steps
     if not isinstance(count, int):
         key = f"candidate[{place + 1}].steps"
@@ -91,7 +91,7 @@ def job_circuit(job: Job, place: int, steps: int | None) -> Rotations:
 
 def circuit_words(job: Job, place: int, steps: int | None) -> str:
     """Say in words what a circuit of a job is, for the head of a file."""
-    candidate = job.candidates[place]
+    candidate = job.formula_candidates[place]
     count = candidate.steps if steps is None else steps
     return "\n".join(
         [

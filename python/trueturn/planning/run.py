@@ -9,9 +9,10 @@ from dataclasses import fields
 from numbers import Real
 from typing import Any
 
+from trueturn.accuracy.proven_steps import allowed_distance
 from trueturn.audit.result import Audit
 from trueturn.audit.run import prepare
-from trueturn.audit.runs import Runs
+from trueturn.audit.runs import Runs, error_per_distance
 from trueturn.audit.truth import Progress
 from trueturn.errors import ArgumentError, ToleranceError
 from trueturn.export.hardware import Hardware
@@ -20,7 +21,6 @@ from trueturn.partition import Partition
 from trueturn.planning import words
 from trueturn.planning.costs import OwnCost, Prices, chosen_costs
 from trueturn.planning.noise import Noise
-from trueturn.planning.proven import distance_for
 from trueturn.planning.ranking import front, marked, ranked
 from trueturn.planning.result import Plan
 from trueturn.planning.sought import Sought
@@ -169,7 +169,8 @@ def plan(
         partitions=[way.partition for way in found],
     )
     seconds = {"reference": clock.perf_counter() - began}
-    prices = Prices(names, own, distance_for(setting.bench, for_synthesis) if for_synthesis else None, hardware)
+    distance = allowed_distance(for_synthesis, error_per_distance(setting.bench)) if for_synthesis else None
+    prices = Prices(names, own, distance, hardware)
     noise = None
     if hardware is not None and hardware.two_qubit_error and quantity == "observables":
         noise = Noise(setting.bench, hardware)

@@ -7,15 +7,15 @@ from collections.abc import Callable
 from dataclasses import dataclass, field, fields, replace
 from typing import NamedTuple
 
+from trueturn.accuracy.proven_steps import allowed_distance, proven_steps
 from trueturn.audit.figures import upper
 from trueturn.audit.result import Row
-from trueturn.audit.runs import Chosen, Runs
+from trueturn.audit.runs import Chosen, Runs, error_per_distance
 from trueturn.formulas import Formula
 from trueturn.formulas.processed import Processed
 from trueturn.partition import Partition
 from trueturn.planning.costs import Prices
 from trueturn.planning.noise import Noise
-from trueturn.planning.proven import fitted_order, proven_steps
 from trueturn.planning.result import PlanRow
 from trueturn.planning.ways import Way
 
@@ -88,12 +88,12 @@ class Sought:
         missing = max((steps for steps, run in runs.measured.items() if run.trial.verdict != "meets"), default=0)
         if not missing:
             return
-        least = self.prices.of(runs.measured[missing].circuit, math.inf)
+        least = self.prices.of(runs.circuit(missing), math.inf)
         for other in self._first.values():
             answer = other.runs.measured[other.chosen.steps]
             if answer.trial.verdict != "meets":
                 continue
-            costs = self.prices.of(answer.circuit, math.inf)
+            costs = self.prices.of(other.runs.circuit(other.chosen.steps), math.inf)
             if all(costs[name] < least[name] for name in self.prices.compared):
                 raise Dominated(f"given up: {missing} steps miss and cost more than {other.way.label}, which meets")
 
@@ -115,7 +115,7 @@ class Sought:
             elif not why:
                 try:
                     tell(way.label, number)
-                    row, proven = runs.row(chosen), proven_steps(runs)
+                    row, proven = runs.row(chosen), _proven(way, runs)
                 except KeyboardInterrupt:
                     self.interrupted = True
                     why = UNBOUNDED
@@ -128,11 +128,9 @@ class Sought:
     def _row(
         self, row: Row, way: Way, runs: Runs, chosen: Chosen, same_as: str, proven: tuple[int | None, str]
     ) -> PlanRow:
-        costs = {
-            steps: self.prices.of(runs.measured[steps].circuit, runs.seconds[steps]) for steps in sorted(runs.measured)
-        }
+        costs = {steps: self.prices.of(runs.circuit(steps), runs.seconds[steps]) for steps in sorted(runs.measured)}
         steps, source = proven
-        noise = None if self.noise is None else self.noise.of(runs.measured[chosen.steps].circuit)
+        noise = None if self.noise is None else self.noise.of(runs.circuit(chosen.steps))
         room = row.verdict == "meets" and row.error[1] + (noise or 0.0) <= runs.bench.tolerance
         notes = [row.note] if row.note else []
         if noise is not None and row.verdict == "meets" and not room:
@@ -146,7 +144,7 @@ class Sought:
             costs=costs[chosen.steps],
             trial_costs=tuple(found[self.prices.names[0]] for found in costs.values()),
             verified=chosen.verified,
-            fitted_order=fitted_order(runs, chosen.steps),
+            fitted_order=_fitted_order(runs, chosen.steps),
             bound_steps=steps,
             bound_steps_source=source,
             overpays=steps / chosen.steps if steps is not None and chosen.verified else None,
@@ -154,3 +152,19 @@ class Sought:
             room=room,
             efficient=False,
         )
+
+
+def _proven(way: Way, runs: Runs) -> tuple[int | None, str]:
+    """Return the step count that theorems prove for a way, on the grid of the times, and its source."""
+    bench = runs.bench
+    distance = allowed_distance(bench.tolerance, error_per_distance(bench))
+    return proven_steps(way.candidate.formula, way.partition, bench.times[-1], distance, bench.step_unit())
+
+
+def _fitted_order(runs: Runs, steps: int) -> float | None:
+    """Return how fast the error falls from a step count to the largest that was run, or None where rounding hides it."""
+    last = max(runs.measured)
+    first, final = (runs.measured[count].trial.error for count in (steps, last))
+    if last <= steps or first[0] <= 0.0 or final[0] <= 0.0:
+        return None
+    return math.log(first[1] / final[1]) / math.log(last / steps)

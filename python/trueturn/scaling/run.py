@@ -243,6 +243,7 @@ def _least(
             limit=most_steps,
         )
     chosen = next(trial for trial in found.trials if trial.steps == found.steps)
+    assert chosen.two_qubit_gates is not None  # candidates are formulas, whose gates are known
     return Point(
         candidate.formula.name,
         size,

@@ -11,8 +11,8 @@ from collections.abc import Iterable, Mapping, Sequence
 from typing import TYPE_CHECKING, Any
 
 from trueturn._build import build_info
-from trueturn.audit.candidate import Candidate, GivenCircuit
 from trueturn.audit.report import words
+from trueturn.reference.folder import certificate_data
 
 if TYPE_CHECKING:
     from trueturn.audit.result import Audit, PointError, Row, Trial
@@ -99,9 +99,9 @@ def row_data(row: Row) -> dict[str, Any]:
     """Give one candidate's record."""
     return {
         "label": row.label,
-        "formula": row.candidate.formula.name,
-        "rule": rule_words(row.candidate),
-        "steps_asked": row.candidate.steps,
+        "formula": row.candidate.name,
+        "rule": row.candidate.rule_words,
+        "steps_asked": "as given" if row.candidate.steps_words == "as given" else row.candidate.steps,
         "steps": row.steps,
         "error": limits(row.error),
         "bound": number(row.bound),
@@ -116,13 +116,6 @@ def row_data(row: Row) -> dict[str, Any]:
         "points": [point_data(point) for point in row.points],
         "trials": [trial_data(trial) for trial in row.trials],
     }
-
-
-def rule_words(candidate: Candidate) -> str:
-    """Name how the parts were made."""
-    if isinstance(candidate.formula, GivenCircuit):
-        return "as read"
-    return candidate.rule if isinstance(candidate.rule, str) else "own parts"
 
 
 def point_data(point: PointError) -> dict[str, Any]:
@@ -148,27 +141,14 @@ def trial_data(trial: Trial) -> dict[str, Any]:
 
 def reference_data(audit: Audit) -> dict[str, Any]:
     """Give the reference: expectations and certificate."""
-    reference, certificate = audit.reference, audit.reference.certificate
+    reference = audit.reference
     return {
         "times": [float(time) for time in reference.times],
         "expectations": {name: numbers(values) for name, values in reference.expectations.items()},
         "expectation_bounds": {name: numbers(values) for name, values in reference.expectation_bounds.items()},
         "summary": words.certificate_line(audit),
-        "method": certificate.method,
-        "proven": bool(certificate.proven),
-        "error_bound": in_order(certificate.error_bound, reference.times),
-        "truncation": in_order(certificate.truncation, reference.times),
-        "rounding": in_order(certificate.rounding, reference.times),
-        "spectral_interval": [float(end) for end in certificate.spectral_interval],
-        "spectral_route": certificate.spectral_route,
-        "applications": int(certificate.applications),
-        "notes": list(certificate.notes),
+        **certificate_data(reference.certificate, reference.times),
     }
-
-
-def in_order(values: Mapping[float, float], times: tuple[float, ...]) -> list[float | None]:
-    """Give a mapping over times as a list in the order of `times`."""
-    return [number(float(values[time])) for time in times]
 
 
 def operator_data(operator: Operator) -> dict[str, Any]:

@@ -20,7 +20,6 @@ from trueturn.audit.report.pictures import (
     steps_picture,
     time_picture,
 )
-from trueturn.audit.report.tables import names
 
 if TYPE_CHECKING:
     from trueturn.audit.result import Audit, Row
@@ -153,17 +152,15 @@ def class_of(kind: str) -> str:
 
 def row_cells(row: Row, audit: Audit, sources: list[str]) -> str:
     """Write the cells of one candidate."""
-    formula, rule = names(row)
     place = words.worst_words(row, audit)
-    asked = "least" if row.candidate.steps == "least" else "given"
     cells = [
-        f"<td>{escape(formula)}{small(rule, row.note)}</td>",
-        f'<td class="n">{escape(words.steps_words(row))}{small(asked)}</td>',
+        f"<td>{escape(row.candidate.name)}{small(row.candidate.rule_words, row.note)}</td>",
+        f'<td class="n">{escape(words.steps_words(row))}{small(row.candidate.steps_words)}</td>',
         f'<td class="e">{escape(words.error_words(row, audit))}{small(place)}</td>',
         f"<td>{escape(words.bound_words(row))}<sup>[{sources.index(row.bound_source) + 1}]</sup></td>",
-        f'<td class="n">{count(row.two_qubit_gates)}</td>',
-        f'<td class="n">{count(row.depth)}</td>',
-        f'<td class="n">{count(row.rotations)}</td>',
+        f'<td class="n">{words.cost_words(row.two_qubit_gates)}</td>',
+        f'<td class="n">{words.cost_words(row.depth)}</td>',
+        f'<td class="n">{words.cost_words(row.rotations)}</td>',
         f'<td class="v {escape(row.verdict)}">{escape(row.verdict)}</td>',
     ]
     return f"<tr{class_of('chosen' if row is audit.recommended else '')}>{''.join(cells)}</tr>"
@@ -252,7 +249,7 @@ def inputs(audit: Audit) -> str:
         ("asked", words.tolerance_words(audit)),
     ]
     for row in audit.rows:
-        facts.append(("candidate", f"{row.label}, steps: {row.candidate.steps}"))
+        facts.append(("candidate", f"{row.label}, steps: {words.asked_words(row)}"))
     operators = [("Hamiltonian", audit.operator), *audit.observables.items()]
     blocks = "\n".join(
         f'<p class="small">{escape(name)}</p>\n<pre class="terms">{escape(shown_terms(operator))}</pre>'

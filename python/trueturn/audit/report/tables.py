@@ -14,11 +14,10 @@ from typing import TYPE_CHECKING
 from rich.console import Console, Group, RenderableType
 from rich.text import Text
 
-from trueturn.audit.figures import count
 from trueturn.audit.report import words
 
 if TYPE_CHECKING:
-    from trueturn.audit.result import Audit, Row
+    from trueturn.audit.result import Audit
 
 __all__ = [
     "GAP",
@@ -26,7 +25,6 @@ __all__ = [
     "STYLES",
     "aligned",
     "column_widths",
-    "names",
     "plain_table",
     "plain_text",
     "terminal_table",
@@ -98,9 +96,9 @@ def candidate_lines(audit: Audit, width: int) -> list[Text]:
             words.steps_words(row),
             words.error_words(row, audit),
             words.bound_words(row),
-            count(row.two_qubit_gates),
-            count(row.depth),
-            count(row.rotations),
+            words.cost_words(row.two_qubit_gates),
+            words.cost_words(row.depth),
+            words.cost_words(row.rotations),
             f"{MARKS[row.verdict]} {row.verdict}",
         ]
         for row in audit.rows
@@ -160,9 +158,3 @@ def aligned(line: list[str], widths: list[int], styles: list[str], counts: Seque
         if index < len(line) - 1:
             text.append(" " * GAP)
     return text
-
-
-def names(row: Row) -> tuple[str, str]:
-    """Take the formula and the rule from a row's label."""
-    formula, _, rule = row.label.rpartition(", ")
-    return (formula, rule) if formula else (row.label, "")

@@ -5,8 +5,7 @@ from __future__ import annotations
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from trueturn.audit.report import require_replaceable as replaceable
-from trueturn.audit.report import write_files
+from trueturn import _folders
 from trueturn.audit.report.document import json_text
 from trueturn.planning.report.document import csv_text, to_dict
 from trueturn.planning.report.table import plain_table, terminal_table
@@ -17,11 +16,12 @@ if TYPE_CHECKING:
 __all__ = ["FILES", "plain_table", "require_replaceable", "terminal_table", "to_dict", "write_folder"]
 
 FILES = ("plan.html", "plan.json", "plan.csv")
+_KIND = ("plan", "plan.json", FILES.__contains__)
 
 
 def require_replaceable(folder: Path) -> None:
     """Refuse a place where a plan folder cannot be written without losing something; see `trueturn.audit.report`."""
-    replaceable(folder, FILES, "plan")
+    _folders.require_replaceable(folder, *_KIND)
 
 
 def write_folder(plan: Plan, folder: Path) -> Path:
@@ -34,6 +34,7 @@ def write_folder(plan: Plan, folder: Path) -> Path:
     """
     from trueturn.planning.report.page import page
 
-    require_replaceable(folder)
-    texts = (page(plan), json_text(to_dict(plan)), csv_text(plan))
-    return write_files(folder, dict(zip(FILES, texts, strict=True)), "plan")
+    with _folders.replacing(folder, *_KIND) as fresh:
+        texts = (page(plan), json_text(to_dict(plan)), csv_text(plan))
+        _folders.write_texts(fresh, dict(zip(FILES, texts, strict=True)))
+    return folder

@@ -18,7 +18,6 @@ from trueturn.audit.report.page import (
     system_words,
     verdict,
 )
-from trueturn.audit.report.tables import names
 from trueturn.planning import words
 from trueturn.planning.costs import cost_words, short_words
 from trueturn.planning.report.pictures import MOST_NAMED, costs_picture, front_picture
@@ -67,7 +66,8 @@ def table(plan: Plan) -> str:
 
 def row_cells(rank: int, row: PlanRow, plan: Plan, costs: list[str]) -> str:
     """Write the cells of one row."""
-    formula, rule = names(row)
+    formula = row.candidate.name
+    rule = row.label.removeprefix(f"{formula}, ")
     places = {shared.worst_words(other, plan) for other in plan.rows}
     place = shared.worst_words(row, plan) if len(places) > 1 else ""
     fall = "" if row.fitted_order is None else f"∝ r^-{row.fitted_order:.2f}"
