@@ -201,8 +201,9 @@ def test_a_reference_needs_no_candidates(read) -> None:
 
 def test_rules_are_those_of_the_library() -> None:
     from trueturn.partition import Partition
+    from trueturn.partition_rules import RULES
 
-    for rule in job_module.RULES:
+    for rule in RULES:
         assert Partition.of(Operator("1.0 Z_0 Z_1 + 0.5 X_0"), rule).parts
 
 
