@@ -182,6 +182,35 @@ def test_what_costs_too_much_is_left_out_by_name():
     assert not any("all tuples" in one.theorem for one in found.alternatives)
 
 
+@pytest.mark.parametrize("name", ["lie", "strang", "suzuki-4"])
+def test_bounds_with_less_effort_hold_and_say_what_is_left_out(name):
+    exact = exact_error(tt.formula(name), circuits.P3, 0.5, 4)
+    values = []
+    for effort, method in ((1.0, "commutator"), (1e-3, "commutator"), (1e-9, "analytic")):
+        found = tt.bound(name, circuits.P3, 0.5, 4, effort=effort)
+        values.append(found.value)
+        assert found.method == method
+        assert any("too many strings" in one for one in found.left_out) == (
+            method == "analytic" or found.value > values[0]
+        )
+        at_random = tt.bound(name, circuits.P3, 0.5, 4, effort=effort, inputs="random")
+        assert at_random.value <= found.value and at_random.inputs == "random"
+    assert exact < values[0] <= values[1] < values[2]
+
+
+def test_an_operator_of_many_strings_is_bounded_within_its_share_of_the_work():
+    random = np.random.default_rng(1)
+    masks = random.integers(0, 2**14, (2, 1000)).tolist()
+    crowd = tt.Partition.of(tt.Operator.from_masks(*masks, random.normal(size=1000), 14), "commuting")
+    found = tt.bound("strang", crowd, 0.01, 10, effort=1 / 16)
+    assert "the theorem for strang: its brackets have too many strings" in found.left_out
+    less = tt.bound("suzuki-4", crowd, 0.01, 10, effort=1 / 16)
+    assert less.method == "analytic" and "merged nested commutators: too many strings" in less.left_out
+    for effort in (0.0, -1.0, float("nan"), True, "much"):
+        with pytest.raises(tt.errors.ArgumentError, match="effort: is not a positive number"):
+            tt.bound("strang", crowd, 0.01, 10, effort=effort)
+
+
 @pytest.mark.parametrize("name", ["lie", "strang", "blanes-moan-4", "suzuki-6"])
 @pytest.mark.parametrize("method", ["commutator", "tightest"])
 def test_least_steps_meet_the_tolerance_and_one_less_does_not(name, method):

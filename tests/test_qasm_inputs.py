@@ -295,6 +295,7 @@ MESSAGES = {
     "qubit q; rz(0.0**-1) q;": "a power of zero below 0",
     "qubit q; for float t in [0:1] { x q; }": "a loop over something else than whole numbers",
     "qubit[3] q; pow(0.5) @ cswap q[0], q[1], q[2]; g q;": "no gate of this name (g)",
+    "qubit q; gate g a { pow(2) @ h; }": "expected a qubit or a register",
     "qubit q; h p;": "no register of this name (p)",
     "qubit q; h(0.1) q;": "h takes 0 angles (1 given)",
     "gphase(0.1);": "no qubits are declared",

@@ -308,7 +308,8 @@ impl<'a> Parser<'a> {
         if self.is("[") {
             return Err(unsupported(self.token.place, name, "a gate with a duration"));
         }
-        let operands = if self.is(";") { vec![] } else { self.operands()? };
+        // Only a global phase acts on no qubit.
+        let operands = if name == "gphase" && self.is(";") { vec![] } else { self.operands()? };
         self.end(&format!("the gate {name}"))?;
         Ok(Statement::Call(Call { modifiers, name, arguments, operands, place }))
     }

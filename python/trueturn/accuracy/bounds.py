@@ -68,7 +68,11 @@ class Bound:
     @property
     def left_out(self) -> tuple[str, ...]:
         """Bounds that apply but cost too much to compute, with the reason."""
-        return () if self._question is None else left_out(self._question.formula, self._question.partition)
+        return (
+            ()
+            if self._question is None
+            else left_out(self._question.formula, self._question.partition, self._question.effort)
+        )
 
 
 @dataclass(frozen=True)
@@ -79,13 +83,14 @@ class _Question:
     partition: Partition
     time: float
     inputs: str
+    effort: float
 
     def laws(self, method: str) -> tuple[Law, ...]:
         random = self.inputs == "random"
         methods = [COMMUTATOR, WIDE, ANALYTIC] if method == TIGHTEST else [method]
         if random and method == TIGHTEST:
             methods.remove(ANALYTIC)
-        return tuple(law for one in methods for law in laws(self.formula, self.partition, random, one))
+        return tuple(law for one in methods for law in laws(self.formula, self.partition, random, one, self.effort))
 
     def error(self, method: str, steps: int) -> float:
         return min(law.error(self.time, steps) for law in self.laws(method))
@@ -98,7 +103,7 @@ class _Question:
             method=law.method,
             inputs=self.inputs,
             route=law.route,
-            _question=_Asked(self.formula, self.partition, self.time, self.inputs, steps),
+            _question=_Asked(self.formula, self.partition, self.time, self.inputs, self.effort, steps),
         )
 
 
@@ -120,6 +125,7 @@ def bound(
     *,
     method: str = COMMUTATOR,
     inputs: str = "worst",
+    effort: float = 1.0,
 ) -> Bound:
     """Return a proven bound on the error of `steps` equal steps of a formula.
 
@@ -139,6 +145,9 @@ def bound(
     inputs : {"worst", "random"}, optional
         ``"worst"``: the spectral norm of S - exp(-iHt), which no input exceeds. ``"random"``: the root mean square
         over random inputs, ‖S - exp(-iHt)‖_F/√(2^n).
+    effort : float, optional
+        Share of the usual work, above 0: brackets are cut earlier and norms are looser with less, tighter with more. The
+        value is proven all the same, and the same on every machine.
 
     Returns
     -------
@@ -151,8 +160,8 @@ def bound(
         An unknown name, a formula whose structure the partition lacks, or what is no single circuit (randomised
         ensembles have `channel_bound`, which bounds their average).
     ArgumentError
-        `partition` is no Partition, `time` not finite, `steps` not a whole number from 1, or `method` or `inputs`
-        unknown.
+        `partition` is no Partition, `time` not finite, `steps` not a whole number from 1, `method` or `inputs`
+        unknown, or `effort` not a positive number.
 
     Notes
     -----
@@ -186,7 +195,7 @@ def bound(
     >>> tt.bound("suzuki-4", parts, time=0.1, steps=1).value < 1e-6
     True
     """
-    asked, method = _checked(formula, partition, time, method, inputs)
+    asked, method = _checked(formula, partition, time, method, inputs, effort)
     count = checked_steps(steps)
     law = min(asked.laws(method), key=lambda one: one.error(asked.time, count))
     return asked.bound(law, count)
@@ -200,12 +209,13 @@ def steps_by_bound(
     *,
     method: str = COMMUTATOR,
     inputs: str = "worst",
+    effort: float = 1.0,
 ) -> int:
     """Return the smallest number of equal steps whose proven bound is within a tolerance.
 
     Parameters
     ----------
-    formula, partition, time, method, inputs
+    formula, partition, time, method, inputs, effort
         As for `bound`.
     tolerance : float
         Above zero, on the same distance.
@@ -233,7 +243,7 @@ def steps_by_bound(
     >>> tt.steps_by_bound("strang", parts, time=1.0, tolerance=1e-3)
     23
     """
-    asked, method = _checked(formula, partition, time, method, inputs)
+    asked, method = _checked(formula, partition, time, method, inputs, effort)
     limit = _checked_tolerance(tolerance)
     if asked.error(method, MOST_STEPS) > limit:
         raise _unreachable(limit, asked, method)
@@ -246,7 +256,9 @@ def steps_by_bound(
     return high
 
 
-def _checked(formula: object, partition: object, time: object, method: object, inputs: object) -> tuple[_Question, str]:
+def _checked(
+    formula: object, partition: object, time: object, method: object, inputs: object, effort: object
+) -> tuple[_Question, str]:
     if isinstance(formula, str):
         formula = known_formula(formula)
     if not isinstance(formula, (Formula, Processed)):
@@ -276,9 +288,15 @@ def _checked(formula: object, partition: object, time: object, method: object, i
             argument="method",
             value=method,
         )
+    if isinstance(effort, bool) or not isinstance(effort, Real) or not 0.0 < float(effort) < math.inf:
+        raise ArgumentError(
+            f"effort: is not a positive number ({effort!r}); give a share of the usual work, such as 0.1",
+            argument="effort",
+            value=effort,
+        )
     if isinstance(formula, Formula):
         require_structure(formula, partition)
-    return _Question(formula, partition, checked_time(time), str(inputs)), str(method)
+    return _Question(formula, partition, checked_time(time), str(inputs), float(effort)), str(method)
 
 
 def _checked_tolerance(tolerance: object) -> float:

@@ -8,7 +8,7 @@ from collections.abc import Sequence
 from trueturn.accuracy.norms import Norm, NormRule, joined_routes
 from trueturn.operator import Operator
 
-__all__ = ["MOST_TUPLES", "first_order_sum", "nested_commutator_sum", "second_order_sums"]
+__all__ = ["MOST_TUPLES", "TooManyStrings", "first_order_sum", "nested_commutator_sum", "second_order_sums"]
 
 MOST_TUPLES = 5_000
 """Tuples of parts above which the sum over all of them is not attempted unasked: a second."""
@@ -31,18 +31,50 @@ def _total(norms: Sequence[Norm]) -> Norm:
     return Norm(math.fsum(norm.value for norm in norms) * _PAD, joined_routes(n.route for n in norms if n.value > 0.0))
 
 
-def first_order_sum(parts: Sequence[Operator], rule: NormRule) -> Norm:
-    """Return Σ_k ‖[G_k, A_k]‖ with G_k = A_{k+1} + … + A_m."""
-    return _total([rule(rest.bracket(part)) for part, rest in _rests(parts)])
+class TooManyStrings(Exception):
+    """The brackets have more strings than allowed."""
 
 
-def second_order_sums(parts: Sequence[Operator], rule: NormRule) -> tuple[Norm, Norm]:
-    """Return Σ_k ‖[G_k, [G_k, A_k]]‖ and Σ_k ‖[A_k, [A_k, G_k]]‖ with G_k = A_{k+1} + … + A_m."""
-    outer, inner = [], []
+class _Allowance:
+    """The strings that are left to spend."""
+
+    def __init__(self, strings: float) -> None:
+        self.strings = strings
+
+    def spent_on(self, bracket: Operator) -> Operator:
+        self.strings -= len(bracket)
+        if self.strings < 0:
+            raise TooManyStrings
+        return bracket
+
+
+def first_order_sum(parts: Sequence[Operator], rule: NormRule, most_strings: float = math.inf) -> Norm:
+    """Return Σ_k ‖[G_k, A_k]‖ with G_k = A_{k+1} + … + A_m.
+
+    Raises
+    ------
+    TooManyStrings
+        As soon as the brackets have more than `most_strings` together.
+    """
+    found, allowance = [], _Allowance(most_strings)
     for part, rest in _rests(parts):
-        once = rest.bracket(part)
-        outer.append(rule(rest.bracket(once)))
-        inner.append(rule(part.bracket(once)))
+        found.append(rule(allowance.spent_on(rest.bracket(part))))
+    return _total(found)
+
+
+def second_order_sums(parts: Sequence[Operator], rule: NormRule, most_strings: float = math.inf) -> tuple[Norm, Norm]:
+    """Return Σ_k ‖[G_k, [G_k, A_k]]‖ and Σ_k ‖[A_k, [A_k, G_k]]‖ with G_k = A_{k+1} + … + A_m.
+
+    Raises
+    ------
+    TooManyStrings
+        As soon as the brackets have more than `most_strings` together.
+    """
+    outer, inner, allowance = [], [], _Allowance(most_strings)
+    for part, rest in _rests(parts):
+        once = allowance.spent_on(rest.bracket(part))
+        outer.append(rule(allowance.spent_on(rest.bracket(once))))
+        inner.append(rule(allowance.spent_on(part.bracket(once))))
     return _total(outer), _total(inner)
 
 

@@ -8,13 +8,20 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable
-from dataclasses import dataclass
-from functools import lru_cache
+from contextlib import suppress
+from dataclasses import dataclass, replace
+from functools import lru_cache, partial
 
 from trueturn.accuracy import analytic, norms
-from trueturn.accuracy.commutators import MOST_TUPLES, first_order_sum, nested_commutator_sum, second_order_sums
+from trueturn.accuracy.commutators import (
+    MOST_TUPLES,
+    TooManyStrings,
+    first_order_sum,
+    nested_commutator_sum,
+    second_order_sums,
+)
 from trueturn.accuracy.norms import NormRule
-from trueturn.accuracy.remainder import Expansion, expansions, layers
+from trueturn.accuracy.remainder import MOST_STRINGS, Expansion, expansions, layers
 from trueturn.formulas import Formula
 from trueturn.formulas.merging import merged_runs
 from trueturn.formulas.order import WEIGHT_SLACK
@@ -56,6 +63,8 @@ class Law:
         (time, steps) -> float; falls as steps grow.
     detail : callable, optional
         (time, steps) -> str, added to the theorem.
+    left_out : str
+        What would be tighter and costs too much; empty where there is nothing.
     """
 
     method: str
@@ -64,6 +73,7 @@ class Law:
     route: str
     error: Callable[[float, int], float]
     detail: Callable[[float, int], str] = lambda time, steps: ""
+    left_out: str = ""
 
 
 def weights_of(one: Formula | Processed) -> tuple[tuple[float, str], ...]:
@@ -73,7 +83,9 @@ def weights_of(one: Formula | Processed) -> tuple[tuple[float, str], ...]:
 
 
 @lru_cache(maxsize=64)
-def laws(one: Formula | Processed, partition: Partition, random: bool, method: str) -> tuple[Law, ...]:
+def laws(
+    one: Formula | Processed, partition: Partition, random: bool, method: str, effort: float = 1.0
+) -> tuple[Law, ...]:
     """Make the laws of one method.
 
     Parameters
@@ -85,27 +97,43 @@ def laws(one: Formula | Processed, partition: Partition, random: bool, method: s
     method : str
         ``"commutator"``: the published theorem for lie and strang, the expansion for all others. ``"wide"``: those
         commutator bounds that the former leaves out. ``"analytic"``.
+    effort : float
+        Share of the usual work.
     """
     weights = weights_of(one)
     published = weights in LIE or weights == STRANG
     if method == ANALYTIC:
         return _analytic(one, partition)
     if method == COMMUTATOR:
-        return (_published(weights, partition, random),) if published else _expanded(one, partition, random)
-    found = _expanded(one, partition, random) if published else ()
-    found += _all_tuples(one, partition, random)
+        return _best_known(one, partition, random, effort)
+    found = _expanded(one, partition, random, effort) if published else ()
+    found += _all_tuples(one, partition, random, effort)
     if weights in LIE and len(partition.parts) == 2 and not random:
-        found += (_boundary(partition),)
+        with suppress(TooManyStrings):
+            found += (_boundary(partition, effort),)
     return found
 
 
-def left_out(one: Formula | Processed, partition: Partition) -> tuple[str, ...]:
-    """Name the bounds that apply and were not computed, and why."""
+def _best_known(one: Formula | Processed, partition: Partition, random: bool, effort: float) -> tuple[Law, ...]:
+    """The published theorem where there is one and its brackets are within reach, else the expansion."""
+    weights = weights_of(one)
+    if weights not in LIE and weights != STRANG:
+        return _expanded(one, partition, random, effort)
+    try:
+        return (_published(weights, partition, random, effort),)
+    except TooManyStrings:
+        note = f"the theorem for {one.name}: its brackets have too many strings"
+        return tuple(replace(law, left_out=note) for law in _expanded(one, partition, random, effort))
+
+
+def left_out(one: Formula | Processed, partition: Partition, effort: float = 1.0) -> tuple[str, ...]:
+    """Name the bounds that apply and were not computed with this share of the usual work, and why."""
     notes = []
     tuples = len(partition.parts) ** (one.order + 1)
-    if tuples > MOST_TUPLES:
+    if tuples > MOST_TUPLES * effort:
         notes.append(f"sum over all tuples of parts: {len(partition.parts)}^{one.order + 1} of them, too many")
-    return tuple(notes)
+    notes += [law.left_out for law in laws(one, partition, False, COMMUTATOR, effort) if law.left_out]
+    return tuple(dict.fromkeys(notes))
 
 
 def _weight_error(one: Formula | Processed, partition: Partition) -> float:
@@ -121,11 +149,11 @@ def _weight_error(one: Formula | Processed, partition: Partition) -> float:
     return len(weights) * largest * WEIGHT_SLACK * math.fsum(part.one_norm() for part in partition.parts)
 
 
-def _published(weights: tuple[tuple[float, str], ...], partition: Partition, random: bool) -> Law:
+def _published(weights: tuple[tuple[float, str], ...], partition: Partition, random: bool, effort: float) -> Law:
     parts = partition.parts
     source = f"{CHILDS}; for random inputs {ZHAO}" if random else CHILDS
     if weights in LIE:
-        total = first_order_sum(parts, _rule(len(parts), partition, random))
+        total = first_order_sum(parts, _rule(len(parts), partition, random, effort), MOST_STRINGS * effort)
         return Law(
             COMMUTATOR,
             "Proposition 9 (first order)",
@@ -133,7 +161,7 @@ def _published(weights: tuple[tuple[float, str], ...], partition: Partition, ran
             total.route,
             lambda time, steps: 0.5 * _product(total.value, time, steps, 1),
         )
-    outer, inner = second_order_sums(parts, _rule(2 * len(parts), partition, random))
+    outer, inner = second_order_sums(parts, _rule(2 * len(parts), partition, random, effort), MOST_STRINGS * effort)
     size = (outer.value / 12.0 + inner.value / 24.0) * (1.0 + 1e-12)
     return Law(
         COMMUTATOR,
@@ -144,15 +172,19 @@ def _published(weights: tuple[tuple[float, str], ...], partition: Partition, ran
     )
 
 
-def _expanded(one: Formula | Processed, partition: Partition, random: bool) -> tuple[Law, ...]:
+def _expanded(one: Formula | Processed, partition: Partition, random: bool, effort: float) -> tuple[Law, ...]:
     """The expansion of `trueturn.accuracy.remainder`, in both directions where they differ, cut where it is least."""
     runs = merged_runs(one.exact_stages(), len(partition.parts))
     step = layers(runs, partition.parts)
     hamiltonian = partition.operator().without_identity()
-    leading: NormRule = norms.frobenius if random else norms.thorough
+    leading: NormRule = norms.frobenius if random else partial(norms.thorough, effort=effort)
     remainder: NormRule = norms.frobenius if random else norms.quick
     ways = [step] if step == step[::-1] else [step, step[::-1]]
-    found = [each for way in ways for each in expansions(way, hamiltonian, one.order, leading, remainder)]
+    found = [each for way in ways for each in expansions(way, hamiltonian, one.order, leading, remainder, effort)]
+    if not found:
+        # A bound for every input bounds their mean too.
+        note = "merged nested commutators: too many strings"
+        return tuple(replace(law, left_out=note) for law in _analytic(one, partition))
 
     def best(time: float, steps: int) -> Expansion:
         return min(found, key=lambda each: each.error(time, steps))
@@ -167,16 +199,17 @@ def _expanded(one: Formula | Processed, partition: Partition, random: bool) -> t
             max(found, key=lambda each: each.degree).route,
             lambda time, steps: best(time, steps).error(time, steps),
             lambda time, steps: f" (cut at degree {best(time, steps).degree} of {reached})",
+            f"brackets beyond degree {reached}: too many strings" if reached <= one.order else "",
         ),
     )
 
 
-def _all_tuples(one: Formula | Processed, partition: Partition, random: bool) -> tuple[Law, ...]:
+def _all_tuples(one: Formula | Processed, partition: Partition, random: bool, effort: float) -> tuple[Law, ...]:
     parts, order = partition.parts, one.order
     tuples = len(parts) ** (order + 1)
-    if tuples > MOST_TUPLES:
+    if tuples > MOST_TUPLES * effort:
         return ()
-    total = nested_commutator_sum(parts, order, _rule(tuples, partition, random))
+    total = nested_commutator_sum(parts, order, _rule(tuples, partition, random, effort))
     weights = weights_of(one)
     # The theorem is for weights up to 1 in size; larger ones scale the time.
     reach = len(weights) * max(1.0, *(abs(weight) for weight, _ in weights))
@@ -193,12 +226,12 @@ def _all_tuples(one: Formula | Processed, partition: Partition, random: bool) ->
     )
 
 
-def _boundary(partition: Partition) -> Law:
+def _boundary(partition: Partition, effort: float) -> Law:
     """First order on two parts: second order between two boundary terms, with either part outside."""
     found = []
     for parts in (partition.parts, partition.parts[::-1]):
-        outer, inner = second_order_sums(parts, _rule(4, partition, False))
-        ends = norms.thorough(parts[0])
+        outer, inner = second_order_sums(parts, _rule(4, partition, False, effort), MOST_STRINGS * effort)
+        ends = norms.thorough(parts[0], effort)
         found.append((outer.value / 12.0 + inner.value / 24.0, ends.value, (outer.route, inner.route, ends.route)))
 
     def error(time: float, steps: int) -> float:
@@ -245,8 +278,8 @@ def _analytic(one: Formula | Processed, partition: Partition) -> tuple[Law, ...]
     return tuple(found)
 
 
-def _rule(count: int, partition: Partition, random: bool) -> NormRule:
-    return norms.frobenius if random else norms.affordable(count, partition.qubits)
+def _rule(count: int, partition: Partition, random: bool, effort: float) -> NormRule:
+    return norms.frobenius if random else norms.affordable(count, partition.qubits, effort)
 
 
 def _product(size: float, time: float, steps: int, order: int) -> float:

@@ -10,6 +10,7 @@ from __future__ import annotations
 import math
 from collections.abc import Callable, Iterable
 from dataclasses import dataclass
+from functools import partial
 
 import numpy as np
 
@@ -70,14 +71,17 @@ def quick(operator: Operator) -> Norm:
     return Norm(value * _ROUNDING, ANTICOMMUTING if groups < len(operator) else TRIANGLE)
 
 
-def thorough(operator: Operator) -> Norm:
-    """Bound a spectral norm by every route that fits: dense algebra, commuting groups, clusters, anticommuting groups."""
+def thorough(operator: Operator, effort: float = 1.0) -> Norm:
+    """Bound a spectral norm by every route that fits: dense algebra, commuting groups, clusters, anticommuting groups.
+
+    `effort` is the share of the usual work that groups and clusters may take.
+    """
     if len(operator) == 0:
         return Norm(0.0, TRIANGLE)
     simple = quick(operator)
-    if len(operator) == 1 or (operator.qubits > SMALL_QUBITS and len(operator) > MANY_TERMS):
+    if len(operator) == 1 or (operator.qubits > SMALL_QUBITS and len(operator) > MANY_TERMS * effort):
         return simple
-    report = spectral_report(operator, EFFORT)
+    report = spectral_report(operator, EFFORT * effort)
     exact = _largest(report)
     if exact.value >= simple.value and exact.route != "dense":
         return simple
@@ -95,8 +99,8 @@ def joined_routes(routes: Iterable[str]) -> str:
     return ", ".join(dict.fromkeys(routes))
 
 
-def affordable(count: int, qubits: int) -> NormRule:
-    """Choose the thorough rule where `count` norms by it take seconds, else the quick one."""
+def affordable(count: int, qubits: int, effort: float = 1.0) -> NormRule:
+    """Choose the thorough rule where `count` norms by it take seconds, or that share of them, else the quick one."""
     each = max(1 << 3 * qubits, CALL_WORK)
-    fits = count * each <= MOST_DENSE_WORK if qubits <= SMALL_QUBITS else count <= FEW_NORMS
-    return thorough if fits else quick
+    fits = count * each <= MOST_DENSE_WORK * effort if qubits <= SMALL_QUBITS else count <= FEW_NORMS
+    return partial(thorough, effort=effort) if fits else quick

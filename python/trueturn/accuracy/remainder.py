@@ -188,9 +188,14 @@ def _sum(operators: Sequence[Operator]) -> Operator:
 
 
 def expansions(
-    step: Sequence[Operator], hamiltonian: Operator, order: int, leading_norm: NormRule, remainder_norm: NormRule
+    step: Sequence[Operator],
+    hamiltonian: Operator,
+    order: int,
+    leading_norm: NormRule,
+    remainder_norm: NormRule,
+    effort: float = 1.0,
 ) -> tuple[Expansion, ...]:
-    """Expand one step for q = 1 … order + 1, or fewer where more would take too many strings.
+    """Expand one step for q = 1 … order + 1, or fewer, even none, where more would take too many strings.
 
     Parameters
     ----------
@@ -202,16 +207,18 @@ def expansions(
         That of the formula. The K_d below it are rounding errors, whose norms are not worth much work.
     leading_norm, remainder_norm : callable
         The norm for K_order, and that for the rest.
+    effort : float
+        Share of `MOST_STRINGS` that may be worked through.
 
     Returns
     -------
     tuple of Expansion
-        By q, at least that for q = 1.
+        By q; empty where already q = 1 takes too many strings.
 
     Notes
     -----
     About J q² brackets for J layers. A degree is given up, with those above it, when the strings so far and those that the
-    layers to come need at this rate exceed `MOST_STRINGS`.
+    layers to come need at this rate exceed `MOST_STRINGS` times the effort.
     """
     memory = _memory.allowed_bytes()
     zero = _Known((hamiltonian - hamiltonian)._terms, 0.0, 0)
@@ -227,9 +234,11 @@ def expansions(
             diagonal = [powers[q - 1 - j][j] for j in range(q)]
             work = sum(CALL + len(known.terms) for known in points + diagonal)
             spent[q - 1] += work
-            if q > 1 and sum(spent[:q]) + work * (len(step) - place) > MOST_STRINGS:
+            if sum(spent[:q]) + work * (len(step) - place) > MOST_STRINGS * effort:
                 series = series[: q - 1]
                 break
+        if not series:
+            return ()
         series = [_combined([(1.0, powers[d - j][j]) for j in range(d + 1)]) for d in range(len(series))]
         series[0] = _combined([(1.0, series[0]), (1.0, layer.known)])
     series[0] = _combined([(1.0, series[0]), (-1.0, _Layer(hamiltonian, memory).known)])

@@ -97,11 +97,11 @@ class Runs:
         untried = "fewer steps may do" if passing else "more steps were not tried"
         return Chosen(steps, accidental, f"{stopped}: {untried}", verified=False)
 
-    def row(self, chosen: Chosen, *, bounded: bool = True) -> Row:
-        """Make the row of a step count that was run; `bounded` asks for a proven bound, which may take its time."""
+    def row(self, chosen: Chosen, effort: float) -> Row:
+        """Make the row of a step count that was run, with a proven bound of this effort (see `bound`), none for 0."""
         found = self.measured[chosen.steps]
         circuit = found.circuit
-        limit, source = self._bound(chosen.steps) if bounded else (None, "not computed")
+        limit, source = self._bound(chosen.steps, effort) if effort > 0.0 else (None, "not computed")
         return Row(
             candidate=self.candidate,
             label=self.candidate.label,
@@ -120,16 +120,16 @@ class Runs:
             note="; ".join(filter(None, (chosen.note, found.note))),
         )
 
-    def _bound(self, steps: int) -> tuple[float | None, str]:
+    def _bound(self, steps: int, effort: float) -> tuple[float | None, str]:
         """Return a proven bound on the error at a step count and its source, or None and the reason."""
         bench = self.bench
         if not isinstance(self.candidate, Candidate) or self.partition is None:
             return None, "no formula, so no theorem on its error"
         try:
-            found = bound(self.candidate.formula, self.partition, bench.times[-1], steps)
+            found = bound(self.candidate.formula, self.partition, bench.times[-1], steps, effort=effort)
         except FormulaError:
             return None, f"no theorem at hand covers {self.candidate.name}"
-        source = f"{found.theorem}, {found.source}"
+        source = "; ".join((f"{found.theorem}, {found.source}", *(f"left out: {one}" for one in found.left_out)))
         if bench.quantity != "observables":
             what = "unit vectors" if bench.quantity == "state" else "unitary matrices"
             return (found.value, source) if found.value < 2.0 else (2.0, f"no two {what} are further apart")

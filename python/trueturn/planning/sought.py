@@ -106,7 +106,7 @@ class Sought:
         why = "not asked for" if not bounds else UNBOUNDED if self.interrupted else ""
         rows: list[PlanRow] = []
         for number, (way, runs, chosen, same_as) in enumerate(self.found):
-            row = runs.row(chosen, bounded=False)
+            row = runs.row(chosen, 0.0)
             proven: tuple[int | None, str] = None, why
             if same_as:
                 twin = next(other for other in rows if other.label == same_as)
@@ -115,7 +115,7 @@ class Sought:
             elif not why:
                 try:
                     tell(way.label, number)
-                    row, proven = runs.row(chosen), _proven(way, runs)
+                    row, proven = runs.row(chosen, 1.0), _proven(way, runs)
                 except KeyboardInterrupt:
                     self.interrupted = True
                     why = UNBOUNDED
