@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from operator import attrgetter
 from pathlib import Path
 
 import click
@@ -29,13 +28,13 @@ def diagnose(circuit: Path, job: Path, time: float | None, tolerance: float, as_
 
     No state vector is needed. Exit status: 0 matches, 1 does not match, 4 cannot tell, 2 bad input.
     """
-    import trueturn
     from trueturn.audit.job import read_job
+    from trueturn.circuits.reading import read_qasm
     from trueturn.cli import say, say_json
+    from trueturn.diagnosis import diagnose as diagnosed
 
-    task = read_job(job, candidates_required=False)
-    rotations = attrgetter("read_qasm")(trueturn)(circuit)
-    found = trueturn.diagnose(rotations, task.operator, task.times[-1] if time is None else time, tolerance=tolerance)
+    task = read_job(job, candidates_required=False, start_required=False)
+    found = diagnosed(read_qasm(circuit), task.operator, task.times[-1] if time is None else time, tolerance=tolerance)
     if as_json:
         say_json(found.to_dict())
     else:

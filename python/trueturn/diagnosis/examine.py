@@ -77,9 +77,9 @@ def examine(rotations: Rotations, operator: Operator, time: float, tolerance: fl
 
 def _slip(rotations: Rotations, hamiltonian: Hamiltonian, time: float, tolerance: float) -> Finding | None:
     """Look for one place behind which every string is turned by the Clifford gates left over."""
-    frame: Rotations | None = getattr(rotations, "frame", None)
+    frame = rotations.frame
     plain = rotations
-    if frame is not None and frame.count:
+    if frame.count:
         plain = edited(rotations, _as_it_is, rotations.phase) + edited(frame, _as_it_is, 0.0)
     moved = moved_to_the_end(plain)
     if moved is None or not (moved.residual or moved.relabelled):
@@ -107,12 +107,12 @@ def _slip(rotations: Rotations, hamiltonian: Hamiltonian, time: float, tolerance
 
 def _best_case(rotations: Rotations, hamiltonian: Hamiltonian, time: float, tolerance: float) -> Case:
     """Take the circuit as it is, or with its Clifford gates moved to the end where that leaves less to explain."""
-    frame: Rotations | None = getattr(rotations, "frame", None)  # circuits read from a file may end in one
-    framed = frame is not None and frame.count > 0
-    moved_qubits = any(q != to for q, to in enumerate(getattr(rotations, "relabelling", ())))
+    frame = rotations.frame  # circuits read from a file may end in one
+    framed = frame.count > 0
+    moved_qubits = any(q != to for q, to in enumerate(rotations.relabelling))
     plain = edited(rotations, _as_it_is, rotations.phase) if framed or moved_qubits else rotations
     case = _case(plain, hamiltonian, time, tolerance)
-    if frame is not None and framed:
+    if framed:
         left = moved_to_the_end(frame)
         if left is not None:
             case = replace(case, residual=left.residual, relabelled=left.relabelled)
@@ -325,7 +325,7 @@ def _remarks(
                 )
             )
     moves = list(case.relabelled)
-    moves += [(q, to) for q, to in enumerate(getattr(rotations, "relabelling", ())) if q != to]
+    moves += [(q, to) for q, to in enumerate(rotations.relabelling) if q != to]
     if moves:
         shown = ", ".join(f"{old} on {new}" for old, new in moves)
         remarks.append(
