@@ -21,11 +21,12 @@ from trueturn.commands.bound import bound
 from trueturn.commands.circuits import cost, export
 from trueturn.commands.diagnose import diagnose
 from trueturn.commands.options import AS_JSON, JOB, THREADS
+from trueturn.commands.plans import budget, plan
+from trueturn.commands.references import reference, verify
 
 if TYPE_CHECKING:
-    from trueturn.audit.job import Job, Progress
+    from trueturn.audit.job import Progress
     from trueturn.partition import Partition
-    from trueturn.reference import Reference
 
 __all__ = ["commands", "main", "run"]
 
@@ -43,9 +44,13 @@ def commands() -> None:
 
 
 commands.add_command(bound)
+commands.add_command(budget)
 commands.add_command(cost)
 commands.add_command(diagnose)
 commands.add_command(export)
+commands.add_command(plan)
+commands.add_command(reference)
+commands.add_command(verify)
 
 
 @commands.command()
@@ -105,89 +110,6 @@ def audit(
 
 
 @commands.command()
-@click.argument("job", type=JOB)
-@click.option("--into", type=JOB, metavar="FOLDER", help="Write plan.html, plan.json and plan.csv there.")
-@AS_JSON
-@THREADS
-def plan(job: Path, into: Path | None, as_json: bool, threads: int | None) -> int:
-    """Find the least steps of every formula and rule of JOB, and rank them by cost.
-
-    The section [plan] says what is searched and what counts; without it, the formulas and rules of the candidates. Ctrl-C
-    ends the search with the best so far.
-    """
-    from trueturn.audit.job import read_job
-    from trueturn.planning.report import require_replaceable, terminal_table, to_dict
-
-    task = read_job(job, candidates_required=False)
-    if into is not None:
-        require_replaceable(into)
-    with progress_bar() as progress:
-        found = task.plan(threads=threads, progress=progress)
-    if as_json:
-        say_json(to_dict(found))
-    else:
-        say_rich(lambda width: terminal_table(found, width))
-    if into is not None:
-        found.write(into)
-        if not as_json:
-            say(f"Report: {into / 'plan.html'}")
-    elif not as_json:
-        say("For the report with pictures, add: --into FOLDER")
-    if found.interrupted:
-        print("trueturn: interrupted", file=sys.stderr)
-        return INTERRUPTED
-    return STATUS[found.verdict]
-
-
-@commands.command()
-@click.argument("job", type=JOB)
-@click.option("--into", type=JOB, metavar="FOLDER", help="Write manifest.json, expectations.csv and state_*.npy there.")
-@click.option(
-    "--states", type=click.Choice(["all", "last"]), default="all", help="Which states to write; all by default."
-)
-@AS_JSON
-@THREADS
-def reference(job: Path, into: Path | None, states: str, as_json: bool, threads: int | None) -> int:
-    """Compute only the certified reference of JOB.
-
-    Prints the expectations of its observables at its times, and the certificate.
-    """
-    from trueturn.audit.job import read_job
-
-    task = read_job(job, candidates_required=False)
-    keep = "last" if into is None else states
-    with progress_bar() as progress:
-        found = task.reference(threads=threads, progress=progress, into=into, keep=keep)
-    if as_json:
-        say_json(reference_document(task, found))
-    else:
-        say_reference(task, found)
-        if into is not None:
-            say(f"Folder: {into}")
-    return 0
-
-
-@commands.command()
-@click.argument("folder", type=JOB)
-@AS_JSON
-@THREADS
-def verify(folder: Path, as_json: bool, threads: int | None) -> int:
-    """Verify a reference FOLDER: nothing altered or missing, norm and energy conserved within the certificate.
-
-    Exit status 0 where every check holds, 1 where one does not.
-    """
-    from trueturn.reference.verification import verify as verified
-
-    with progress_bar() as progress:
-        found = verified(folder, threads=threads, progress=progress)
-    if as_json:
-        say_json(found.to_dict())
-    else:
-        say(repr(found))
-    return 0 if found.holds else 1
-
-
-@commands.command()
 @click.argument("path", required=False, default="job.toml", type=JOB)
 @click.option("--force", is_flag=True, help="Replace a file that exists.")
 def init(path: Path, force: bool) -> int:
@@ -233,74 +155,6 @@ def formulas(job: Path | None, as_json: bool) -> int:
     else:
         say_rich(lambda width: page(known, partitions))
     return 0
-
-
-@commands.command()
-@click.argument("job", type=JOB)
-@click.option(
-    "--errors",
-    type=click.Choice(["measured", "proven"]),
-    default="measured",
-    help="Algorithmic errors: measured from the start state (default), or proven bounds without a state.",
-)
-@AS_JSON
-@THREADS
-def budget(job: Path, errors: str, as_json: bool, threads: int | None) -> int:
-    """Weigh the error of each formula of JOB against the noise of its [device].
-
-    For each observable at the last time: the step count of the least total error, and whether it meets the tolerance.
-    """
-    from trueturn.audit.job import read_job
-    from trueturn.device.job import job_budgets, job_document
-
-    task = read_job(job)
-    with progress_bar() as progress:
-        found = job_budgets(task, errors, threads=threads, progress=progress)
-    if as_json:
-        say_json(job_document(task, found))
-    else:
-        from rich.text import Text
-
-        say_rich(lambda width: Text("\n\n".join(f"{name}\n{one.table(width)}" for name, one in found.items())))
-    return STATUS["meets" if all(one.verdict == "meets" for one in found.values()) else "misses"]
-
-
-def reference_document(task: Job, found: Reference) -> dict[str, Any]:
-    """Give a reference as plain data."""
-    from trueturn.reference.folder import certificate_data
-
-    return {
-        "kind": "trueturn reference",
-        "schema": 1,
-        "title": task.title,
-        "times": [float(time) for time in found.times],
-        "expectations": {name: [float(value) for value in values] for name, values in found.expectations.items()},
-        "certificate": certificate_data(found.certificate, found.times),
-    }
-
-
-def say_reference(task: Job, found: Reference) -> None:
-    """Print times, expectations and the certificate for people."""
-    from rich.console import Group
-    from rich.table import Table
-    from rich.text import Text
-
-    from trueturn.audit.figures import count, outward, plain, upper
-
-    proof = found.certificate
-    table = Table(box=None, padding=(0, 2, 0, 0), header_style="dim")
-    for heading in ("time", *found.expectations, "state error ≤"):
-        table.add_column(Text(heading), justify="right")
-    for index, time in enumerate(found.times):
-        values = [f"{float(series[index]):+.10f}" for series in found.expectations.values()]
-        table.add_row(plain(float(time)), *values, upper(float(proof.error_bound[time])))
-    low, high = proof.spectral_interval
-    lines = [
-        f"{proof.method}, {'proven' if proof.proven else 'estimated, not proven'}; "
-        f"{count(proof.applications)} operator applications; spectrum within {outward(low, high)}.",
-        *proof.notes,
-    ]
-    say_rich(lambda width: Group(Text(task.title, style="bold"), Text(), table, Text(), Text("\n".join(lines))))
 
 
 def say(text: str) -> None:

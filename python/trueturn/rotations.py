@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import math
-import operator as _operator
 from collections.abc import Iterable, Sequence
 from typing import TYPE_CHECKING, Any, NamedTuple
 
@@ -11,6 +10,7 @@ import numpy as np
 import numpy.typing as npt
 
 from trueturn import _native
+from trueturn import _rotation_arguments as checked
 from trueturn.errors import RotationError
 from trueturn.operator import Operator
 
@@ -77,7 +77,11 @@ class Rotations:
         phase: float = 0.0,
     ) -> None:
         self._circuit = _native.Rotations.from_list(
-            _masks("x", x), _masks("z", z), _angles(angles), _qubits(qubits), _number("phase", phase)
+            checked.masks("x", x),
+            checked.masks("z", z),
+            checked.angles(angles),
+            checked.qubits(qubits),
+            checked.number("phase", phase),
         )
 
     @classmethod
@@ -150,7 +154,7 @@ class Rotations:
         >>> Rotations([1], [0], [0.25], qubits=2).with_frame(relabelling=[1, 0]).relabelling
         (1, 0)
         """
-        moves = _permutation(relabelling, self.qubits)
+        moves = checked.permutation(relabelling, self.qubits)
         if clifford is None:
             return Rotations._wrap(self._circuit.with_frame([], [], [], 0, moves))
         if (
@@ -164,19 +168,19 @@ class Rotations:
                 argument="clifford",
             )
         x, z, angles = clifford._written_out()
-        turns = [_eighths("clifford", angle) for angle in angles.tolist()]
-        eighths = _eighths("clifford", clifford.phase)
+        turns = [checked.eighths("clifford", angle) for angle in angles.tolist()]
+        eighths = checked.eighths("clifford", clifford.phase)
         return Rotations._wrap(self._circuit.with_frame(x, z, turns, eighths, moves))
 
     @property
     def x_masks(self) -> npt.NDArray[np.object_]:
         """x mask of each rotation, written out: shape (count,), Python ints (masks have up to 128 bits)."""
-        return _objects(self._written_out()[0])
+        return checked.object_array(self._written_out()[0])
 
     @property
     def z_masks(self) -> npt.NDArray[np.object_]:
         """z mask of each rotation, written out: shape (count,), Python ints."""
-        return _objects(self._written_out()[1])
+        return checked.object_array(self._written_out()[1])
 
     @property
     def angles(self) -> npt.NDArray[np.float64]:
@@ -213,7 +217,7 @@ class Rotations:
         RotationError
             `k` is not a whole number from 0 to 2**63, or a frame would write out more than about 2**19 rotations.
         """
-        count = _whole(k)
+        count = checked.whole_or_none(k)
         if count is None or not 0 <= count <= 2**63:
             raise RotationError(f"k: not a repeat count ({k!r}); give a whole number, 0 or more", argument="k")
         return Rotations._wrap(self._circuit.times(count))
@@ -393,82 +397,3 @@ class Rotations:
         frame = "" if found is None else f", frame={found[0].count}, relabelling={tuple(found[1])}"
         size = f"count={self.count}, qubits={self.qubits}, blocks={len(self.blocks)}"
         return f"Rotations({size}, phase={self.phase!r}{frame})"
-
-
-def _eighths(argument: str, angle: float) -> int:
-    """Return angle / (π/4) modulo 8; refuse what is further from a whole number than rounding explains."""
-    turns = round(angle / (math.pi / 4))
-    if abs(angle - turns * (math.pi / 4)) > 4 * math.ulp(angle):
-        raise RotationError(
-            f"{argument}: no multiple of π/4 ({angle!r}); give a Clifford, and rotations by other angles in a circuit of "
-            "their own",
-            argument=argument,
-        )
-    return turns % 8
-
-
-def _permutation(relabelling: Sequence[int] | None, qubits: int) -> list[int]:
-    if relabelling is None:
-        return list(range(qubits))
-    moves = [_whole(target) for target in relabelling] if isinstance(relabelling, Iterable) else [None]
-    if any(target is None for target in moves) or sorted(moves) != list(range(qubits)):  # type: ignore[type-var]
-        raise RotationError(
-            f"relabelling: no permutation of {qubits} qubits ({relabelling!r}); name each of 0 to {qubits - 1} once",
-            argument="relabelling",
-        )
-    return moves  # type: ignore[return-value]
-
-
-def _masks(argument: str, masks: Iterable[int]) -> list[int]:
-    try:
-        found = [_operator.index(mask) for mask in masks]
-    except TypeError:
-        raise RotationError(f"{argument}: not a sequence of whole numbers; give bit masks", argument=argument) from None
-    if any(not 0 <= mask < 1 << 128 for mask in found):
-        raise RotationError(
-            f"{argument}: a mask is negative or longer than 128 bits; give masks of qubits", argument=argument
-        )
-    return found
-
-
-def _angles(angles: Sequence[float] | npt.NDArray[np.float64]) -> npt.NDArray[np.float64]:
-    try:
-        if np.iscomplexobj(angles):
-            raise TypeError
-        found = np.ascontiguousarray(angles, dtype=np.float64)
-    except (TypeError, ValueError, OverflowError):
-        raise RotationError("angles: not real numbers; give radians", argument="angles") from None
-    if found.ndim != 1:
-        raise RotationError(
-            f"angles: not a list of real numbers (shape {found.shape}); give one angle per string", argument="angles"
-        )
-    return found
-
-
-def _qubits(qubits: int) -> int:
-    count = _whole(qubits)
-    if count is None or not 0 <= count <= 128:
-        raise RotationError(f"qubits: not a number of qubits ({qubits!r}); give 0 to 128", argument="qubits")
-    return count
-
-
-def _whole(value: object) -> int | None:
-    if isinstance(value, bool):
-        return None
-    try:
-        return _operator.index(value)  # type: ignore[arg-type]
-    except TypeError:
-        return None
-
-
-def _number(argument: str, value: float) -> float:
-    try:
-        return float(value)
-    except (TypeError, ValueError, OverflowError):
-        raise RotationError(f"{argument}: not a number ({value!r}); give radians", argument=argument) from None
-
-
-def _objects(values: list[int]) -> npt.NDArray[np.object_]:
-    array = np.empty(len(values), dtype=object)
-    array[:] = values
-    return array
