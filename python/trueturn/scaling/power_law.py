@@ -19,21 +19,17 @@ from __future__ import annotations
 import math
 from collections.abc import Iterable
 from dataclasses import dataclass, field
-from numbers import Real
 
 import numpy as np
-import numpy.typing as npt
 
 from trueturn.audit.figures import nearest, outward
 from trueturn.errors import ArgumentError
+from trueturn.scaling import _fit_arguments as checked
+from trueturn.scaling._fit_arguments import FEWEST_POINTS, Floats
 
 __all__ = ["FEWEST_POINTS", "Forecast", "HeldOut", "PowerLaw", "fit_steps"]
 
-FEWEST_POINTS = 3
-"""Two points always lie on a power law; the third is the first that can contradict it."""
-
 Interval = tuple[float, float]
-Floats = npt.NDArray[np.float64]
 
 
 @dataclass(frozen=True)
@@ -159,8 +155,8 @@ class PowerLaw:
         A value v rounded up from one spread evenly over (v - unit, v] has a deviation of unit/√12, in ln(v) unit/(v√12) to
         first order; `spread` is at least the root mean square of that.
         """
-        x, y = _points(sizes, values)
-        step = _number("unit", unit)
+        x, y = checked.points(sizes, values)
+        step = checked.number("unit", unit)
         if step < 0.0:
             raise ArgumentError(f"unit: negative ({unit!r}); give 0 or the rounding unit", argument="unit", value=unit)
         order = np.argsort(x, kind="stable")
@@ -186,7 +182,7 @@ class PowerLaw:
 
     def __call__(self, size: float) -> float:
         """Return the value on the curve."""
-        return float(self.prefactor * _positive("size", size) ** self.exponent)
+        return float(self.prefactor * checked.positive("size", size) ** self.exponent)
 
     @property
     def residuals(self) -> tuple[float, ...]:
@@ -226,7 +222,7 @@ class PowerLaw:
         >>> law.predict(100).extrapolated, law.predict(6).extrapolated
         (True, False)
         """
-        at = _positive("size", size)
+        at = checked.positive("size", size)
         value = self.prefactor * at**self.exponent
         quantile = self._student(level)
         variance = 1.0 / len(self.sizes) + (math.log(at) - self._centre) ** 2 / self._width
@@ -284,7 +280,7 @@ class PowerLaw:
         ArgumentError
             `level` is not between 0 and 1, or `draws` is below 100.
         """
-        tail = (1.0 - _level(level)) / 2.0
+        tail = (1.0 - checked.level(level)) / 2.0
         if isinstance(draws, bool) or not isinstance(draws, int) or draws < 100:
             raise ArgumentError(
                 f"draws: too few to tell quantiles ({draws!r}); give 100 or more", argument="draws", value=draws
@@ -317,7 +313,7 @@ class PowerLaw:
     def _student(self, level: float, lost: int = 2) -> float:
         from scipy.special import stdtrit
 
-        return float(stdtrit(len(self.sizes) - lost, 0.5 + _level(level) / 2.0))
+        return float(stdtrit(len(self.sizes) - lost, 0.5 + checked.level(level) / 2.0))
 
     def __repr__(self) -> str:
         low, high = self.interval()
@@ -354,75 +350,13 @@ def fit_steps(sizes: Iterable[float], steps: Iterable[int], variable: str = "siz
     >>> fit_steps([4, 6, 8, 10], [32, 72, 128, 200], "qubits")
     steps = 2.000 · qubits^2.000 (exponent [1.967, 2.033] at 95 %, fitted to 4 points, qubits 4 to 10)
     """
-    counts = _listed("steps", steps)
+    counts = checked.listed("steps", steps)
     for count in counts:
         if not float(count).is_integer() or count < 1:
             raise ArgumentError(
                 f"steps: not a step count ({count!r}); give whole numbers, 1 or more", argument="steps", value=count
             )
     return PowerLaw.fit(sizes, counts, unit=1.0, variable=variable, what="steps")
-
-
-def _points(sizes: Iterable[float], values: Iterable[float]) -> tuple[Floats, Floats]:
-    x, y = _listed("sizes", sizes), _listed("values", values)
-    if len(x) != len(y):
-        raise ArgumentError(
-            f"values: {len(y)} for {len(x)} sizes; give one value for each size", argument="values", value=len(y)
-        )
-    if len(set(x)) < FEWEST_POINTS:
-        raise ArgumentError(
-            f"sizes: too few points for a fit ({len(set(x))} different ones); give at least {FEWEST_POINTS}, better 5 or more",
-            argument="sizes",
-            value=len(set(x)),
-        )
-    return np.array(x), np.array(y)
-
-
-def _listed(argument: str, values: Iterable[float]) -> list[float]:
-    try:
-        if isinstance(values, (str, bytes)):
-            raise TypeError
-        entries = list(values)
-    except TypeError:
-        raise ArgumentError(
-            f"{argument}: no list of numbers ({values!r}); give one number for each point",
-            argument=argument,
-            value=values,
-        ) from None
-    return [_positive(argument, entry) for entry in entries]
-
-
-def _number(argument: str, value: object) -> float:
-    if isinstance(value, (Real, np.number)) and not isinstance(value, (bool, complex, np.complexfloating)):
-        try:
-            number = float(value)
-        except OverflowError:
-            number = math.inf
-        if math.isfinite(number):
-            return number
-    raise ArgumentError(f"{argument}: not a finite number ({value!r}); give one", argument=argument, value=value)
-
-
-def _positive(argument: str, value: object) -> float:
-    number = _number(argument, value)
-    if number <= 0.0:
-        raise ArgumentError(
-            f"{argument}: not above zero ({value!r}); a power law needs positive numbers",
-            argument=argument,
-            value=value,
-        )
-    return number
-
-
-def _level(level: object) -> float:
-    number = _number("level", level)
-    if not 0.0 < number < 1.0:
-        raise ArgumentError(
-            f"level: not between 0 and 1 ({level!r}); give a confidence level, such as 0.95",
-            argument="level",
-            value=level,
-        )
-    return number
 
 
 def _rounding(values: Floats, unit: float) -> float:
