@@ -176,3 +176,21 @@ def test_an_unknown_cost_is_shown_as_unknown_and_never_called_cheapest(tmp_path)
     line = next(line for line in plain_table(found).splitlines() if line.startswith("mine, in C"))
     assert line.count("–") >= 3
     assert "mine, in C" in page(alone)
+
+
+def test_given_circuits_are_judged_for_every_start_too_and_functions_are_refused():
+    parts = tt.Partition.of(CHAIN, "commuting")
+    formula = tt.Candidate("strang", parts, steps=4)
+    given = tt.Candidate.from_rotations(
+        "as given", {time: formula.formula.rotations(parts, time, steps) for time, steps in ((0.5, 2), (1.0, 4))}
+    )
+    first, second = tt.audit(CHAIN, None, [0.5, 1.0], [formula, given], 0.1, "operator").rows
+    # The same circuits but for rounding, which both intervals hold.
+    assert first.error[0] <= second.error[1] and second.error[0] <= first.error[1]
+    # Nothing merges across the readout of the formula's circuit; the given one is not read on the way.
+    assert (
+        second.bound is None and second.two_qubit_gates == given.circuit[1.0].two_qubit_gates() < first.two_qubit_gates
+    )
+    mine = tt.Candidate.from_callable("mine", lambda state, time, steps: state)
+    with pytest.raises(tt.errors.AuditError, match="the operator error needs a circuit, and 'mine' is a function"):
+        tt.audit(CHAIN, None, 1.0, [mine], 0.1, "operator")
