@@ -4,9 +4,10 @@ use std::collections::VecDeque;
 
 use crate::rotations::{Block, Body, Rotation, Rotations};
 
-/// Two-qubit gates: 2(w-1) for a rotation of weight w, one ladder down and one up.
+/// Two-qubit gates: 2(w-1) for a rotation of weight w, one ladder down and one up; those of a frame's Clifford included, while
+/// its relabelling takes none.
 pub fn two_qubit_gates(rotations: &Rotations) -> u64 {
-    let mut sum = 0u64;
+    let mut sum: u64 = rotations.frame().map_or(0, |frame| frame.rotations().iter().map(ladder_gates).sum());
     rotations.for_each_list(&mut |list, times| {
         let once: u64 = list.iter().map(ladder_gates).sum();
         sum = sum.saturating_add(once.saturating_mul(times));
@@ -27,6 +28,8 @@ fn ladder_gates(rotation: &Rotation) -> u64 {
 pub fn depth(rotations: &Rotations) -> u64 {
     let mut free_at = vec![0u64; rotations.qubits() as usize];
     advance(rotations.blocks(), &mut free_at);
+    let last = rotations.frame().map_or(vec![], |frame| frame.rotations());
+    last.iter().for_each(|rotation| schedule(rotation, &mut free_at));
     free_at.into_iter().max().unwrap_or(0)
 }
 
@@ -36,28 +39,35 @@ const LEAST_PERIODS: usize = 12;
 fn advance(blocks: &[Block], free_at: &mut [u64]) {
     for block in blocks {
         let parts = if block.repeat > 1 { connected_parts(block) } else { vec![] };
-        let longest = free_at.len().max(LEAST_PERIODS);
-        let mut history: VecDeque<Vec<u64>> = VecDeque::new();
-        let mut left = block.repeat;
-        while left > 0 {
-            if block.repeat > 1 {
-                history.truncate(longest - 1);
-                history.push_front(free_at.to_vec());
+        repeated(block.repeat, &parts, free_at, &mut |free_at| match &block.body {
+            Body::List(list) => list.iter().for_each(|rotation| schedule(rotation, free_at)),
+            Body::Nested(blocks) => advance(blocks, free_at),
+        });
+    }
+}
+
+/// Runs something `repeat` times on the times at which qubits become free; see [`depth`].
+///
+/// `parts` are the sets of qubits that one run connects; outside of them it changes nothing.
+pub(crate) fn repeated(repeat: u64, parts: &[Vec<usize>], free_at: &mut [u64], run: &mut dyn FnMut(&mut [u64])) {
+    let longest = free_at.len().max(LEAST_PERIODS);
+    let mut history: VecDeque<Vec<u64>> = VecDeque::new();
+    let mut left = repeat;
+    while left > 0 {
+        if repeat > 1 {
+            history.truncate(longest - 1);
+            history.push_front(free_at.to_vec());
+        }
+        run(free_at);
+        left -= 1;
+        let recent = history.iter().enumerate();
+        let period = recent.map(|(back, was)| (back as u64 + 1, was)).find(|(_, was)| recurs(free_at, was, parts));
+        if let Some((period, was)) = period.filter(|(period, _)| left >= *period) {
+            for (now, was) in free_at.iter_mut().zip(was) {
+                *now = now.saturating_add((*now - was).saturating_mul(left / period));
             }
-            match &block.body {
-                Body::List(list) => list.iter().for_each(|rotation| schedule(rotation, free_at)),
-                Body::Nested(blocks) => advance(blocks, free_at),
-            }
-            left -= 1;
-            let recent = history.iter().enumerate();
-            let period = recent.map(|(back, was)| (back as u64 + 1, was)).find(|(_, was)| recurs(free_at, was, &parts));
-            if let Some((period, was)) = period.filter(|(period, _)| left >= *period) {
-                for (now, was) in free_at.iter_mut().zip(was) {
-                    *now = now.saturating_add((*now - was).saturating_mul(left / period));
-                }
-                left %= period;
-                history.clear();
-            }
+            left %= period;
+            history.clear();
         }
     }
 }
@@ -74,16 +84,16 @@ fn schedule(rotation: &Rotation, free_at: &mut [u64]) {
 }
 
 /// Whether the times are earlier ones shifted by one constant in each part.
-fn recurs(now: &[u64], was: &[u64], parts: &[u128]) -> bool {
+fn recurs(now: &[u64], was: &[u64], parts: &[Vec<usize>]) -> bool {
     parts.iter().all(|part| {
-        let mut shifts = (0..now.len()).filter(|qubit| part >> qubit & 1 == 1).map(|qubit| now[qubit] - was[qubit]);
+        let mut shifts = part.iter().map(|&qubit| now[qubit] - was[qubit]);
         let first = shifts.next();
         shifts.all(|shift| Some(shift) == first)
     })
 }
 
 /// Sets of qubits that the block's ladders connect.
-fn connected_parts(block: &Block) -> Vec<u128> {
+fn connected_parts(block: &Block) -> Vec<Vec<usize>> {
     let mut parts: Vec<u128> = Vec::new();
     let mut join = |list: &[Rotation]| {
         for rotation in list.iter().filter(|rotation| ladder_gates(rotation) > 0) {
@@ -97,7 +107,7 @@ fn connected_parts(block: &Block) -> Vec<u128> {
         Body::List(list) => join(list),
         Body::Nested(blocks) => crate::rotations::visit_lists(blocks, 1, &mut |list, _| join(list)),
     }
-    parts
+    parts.into_iter().map(|part| (0..128).filter(|qubit| part >> qubit & 1 == 1).collect()).collect()
 }
 
 #[cfg(test)]

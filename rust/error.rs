@@ -31,6 +31,17 @@ pub enum Error {
         /// The whole message.
         message: String,
     },
+    /// OpenQASM text that is no unitary circuit with known values.
+    Qasm {
+        /// The included file at fault; empty for the circuit itself.
+        file: String,
+        /// One-based line.
+        line: u32,
+        /// One-based column, in characters.
+        column: u32,
+        /// What is wrong and what to do.
+        message: String,
+    },
     /// A setting out of range: a thread count, an environment variable.
     Argument {
         /// The argument or variable at fault.
@@ -87,6 +98,10 @@ impl fmt::Display for Error {
         match self {
             Self::Term { line, column, text, expected } => {
                 write!(f, "text: refused at line {line}, column {column} ({text:?}); {expected}")
+            }
+            Self::Qasm { file, line, column, message } => {
+                let file = if file.is_empty() { "circuit" } else { file };
+                write!(f, "{file}: line {line}, column {column}: {message}")
             }
             Self::Operator { message, .. }
             | Self::Rotation { message, .. }

@@ -1,14 +1,18 @@
 //! Applies a circuit to a state vector in place.
 
+use std::f64::consts::FRAC_PI_4;
+
 use num_complex::Complex;
 
 use crate::error::{Error, Result};
+use crate::frame::Frame;
 use crate::kernel::Isa;
 use crate::kernel::carry::Carrier;
 use crate::kernel::lanes::Real;
 use crate::kernel::shared::Shared;
 use crate::passes::{Pass, UNROLLED_LENGTH, UNROLLED_REPEATS, least_qubits, plan};
 use crate::pauli::PauliString;
+use crate::relabel;
 use crate::rotations::{Block, Body, Rotation, Rotations};
 use crate::team::{Control, Run, run, workers_for};
 
@@ -26,12 +30,15 @@ enum Content<T: Real> {
 }
 
 impl<T: Real> Planned<T> {
-    /// Plans a circuit, its global phase last.
+    /// Plans a circuit with the rotations of its frame, the global phase last; a relabelling of qubits is left to do.
     pub fn circuit(rotations: &Rotations) -> Self {
         let qubits = rotations.qubits().max(least_qubits::<T>());
         let mut content = Self::blocks(qubits, rotations.blocks());
-        if rotations.phase() != 0.0 {
-            let identity = Rotation { string: PauliString { x: 0, z: 0 }, angle: -rotations.phase() };
+        let clifford = rotations.frame().map(|frame| Block { body: Body::List(frame.rotations().into()), repeat: 1 });
+        content.extend(Self::blocks(qubits, clifford.as_slice()));
+        let phase = rotations.phase() + f64::from(rotations.frame().map_or(0, Frame::eighths)) * FRAC_PI_4;
+        if phase != 0.0 {
+            let identity = Rotation { string: PauliString { x: 0, z: 0 }, angle: -phase };
             content.push(Self { repeat: 1, content: Content::Passes(plan(qubits, &[identity])) });
         }
         Self { repeat: 1, content: Content::Nested(content) }
@@ -99,7 +106,7 @@ impl<T: Real> Planned<T> {
     }
 }
 
-/// Applies `rotations` and their global phase to `amplitudes`, on up to `threads` workers.
+/// Applies `rotations`, their frame and their global phase to `amplitudes`, on up to `threads` workers.
 ///
 /// Cost: see [`crate::passes`]. The result has the same bits for every number of threads and every instruction set.
 ///
@@ -114,7 +121,12 @@ pub fn evolve<T: Real>(
     require_length(amplitudes.len(), rotations.qubits())?;
     let isa = Isa::chosen()?;
     let planned = Planned::<T>::circuit(rotations);
-    carry_out(isa, &planned, amplitudes, threads, control)
+    let moves = rotations.frame().map_or(&[][..], Frame::relabelling);
+    let trades = relabel::passes(moves);
+    control.expect(control.progress().0.saturating_add(planned.passes()).saturating_add(trades));
+    let turned = carry_out(isa, &planned, amplitudes, threads, control)?;
+    relabel::relabel(amplitudes, moves, control)?;
+    Ok(Run { passes: turned.passes + trades, ..turned })
 }
 
 fn carry_out<T: Real>(
@@ -125,7 +137,6 @@ fn carry_out<T: Real>(
     control: &Control,
 ) -> Result<Run> {
     padded(amplitudes, 1 << least_qubits::<T>(), |amplitudes| {
-        control.expect(control.progress().0.saturating_add(planned.passes()));
         let workers = workers_for(threads, amplitudes.len());
         let state = Shared::new(amplitudes);
         run(workers, control, |member| planned.carry_out(&mut Carrier::new(isa, member, &state), true))

@@ -1,9 +1,17 @@
-//! What a circuit does: ordered Pauli rotations in repeated blocks, and a global phase. Never expanded.
+//! What a circuit does: ordered Pauli rotations in repeated blocks, a global phase, and a frame. Never expanded.
+//!
+//! The circuit is e^{iφ} F R: the blocks R first, then the frame F, a Clifford and a relabelling of qubits, which most
+//! circuits do not have. `framed` composes circuits with frames.
+
+mod framed;
 
 use std::sync::Arc;
 
 use crate::error::{Error, Result};
+use crate::frame::Frame;
 use crate::pauli::PauliString;
+
+pub(crate) use framed::mapped;
 
 /// exp(-i angle P).
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -49,6 +57,7 @@ pub struct Rotations {
     qubits: u32,
     blocks: Vec<Block>,
     phase: f64,
+    frame: Option<Arc<Frame>>,
 }
 
 impl Rotations {
@@ -82,7 +91,7 @@ impl Rotations {
             return Err(refuse("phase", format!("phase: not finite ({phase}); give finite radians")));
         }
         let blocks = if list.is_empty() { vec![] } else { vec![Block { body: Body::List(list.into()), repeat: 1 }] };
-        Ok(Self { qubits, blocks, phase })
+        Ok(Self { qubits, blocks, phase, frame: None })
     }
 
     /// A circuit from blocks of another one.
@@ -93,50 +102,11 @@ impl Rotations {
         Self::checked(qubits, blocks, phase)
     }
 
-    /// One circuit after the other.
-    ///
-    /// # Errors
-    /// The numbers of qubits differ, or the phases add up to more than a float holds.
-    pub fn then(&self, next: &Self) -> Result<Self> {
-        if self.qubits != next.qubits {
-            return Err(refuse(
-                "other",
-                format!(
-                    "other: acts on {} qubits, this one on {}; build both with the same qubits",
-                    next.qubits, self.qubits
-                ),
-            ));
-        }
-        let blocks = self.blocks.iter().chain(&next.blocks).cloned().collect();
-        Self::checked(self.qubits, blocks, self.phase + next.phase)
-    }
-
-    /// The circuit `repeat` times over, at no cost in memory. Zero repeats give the empty circuit.
-    ///
-    /// # Errors
-    /// The phase grows beyond what a float holds.
-    pub fn times(&self, repeat: u64) -> Result<Self> {
-        let blocks = match (repeat, self.blocks.as_slice()) {
-            (0, _) | (_, []) => vec![],
-            (1, blocks) => blocks.to_vec(),
-            (_, [one]) if one.repeat.checked_mul(repeat).is_some() => {
-                vec![Block { body: one.body.clone(), repeat: one.repeat * repeat }]
-            }
-            (_, blocks) => vec![Block { body: Body::Nested(blocks.into()), repeat }],
-        };
-        Self::checked(self.qubits, blocks, self.phase * repeat as f64)
-    }
-
-    /// The circuit that undoes this one.
-    pub fn inverse(&self) -> Self {
-        Self { qubits: self.qubits, blocks: inverted(&self.blocks), phase: -self.phase }
-    }
-
     fn checked(qubits: u32, blocks: Vec<Block>, phase: f64) -> Result<Self> {
         if !phase.is_finite() {
             return Err(refuse("phase", format!("phase: grows out of range ({phase}); use fewer repeats")));
         }
-        Ok(Self { qubits, blocks, phase })
+        Ok(Self { qubits, blocks, phase, frame: None })
     }
 
     /// Number of qubits.
@@ -149,9 +119,14 @@ impl Rotations {
         &self.blocks
     }
 
-    /// The global phase: the circuit is exp(i phase) times its rotations.
+    /// The global phase: the circuit is exp(i phase) times its rotations and its frame.
     pub fn phase(&self) -> f64 {
         self.phase
+    }
+
+    /// What follows the blocks, where it is not the identity.
+    pub fn frame(&self) -> Option<&Frame> {
+        self.frame.as_deref()
     }
 
     /// Rotations with all repeats, saturating at the largest integer.
@@ -177,19 +152,6 @@ impl Rotations {
 
 fn refuse(argument: &'static str, message: String) -> Error {
     Error::Rotation { argument, message }
-}
-
-fn inverted(blocks: &[Block]) -> Vec<Block> {
-    let invert = |block: &Block| {
-        let body = match &block.body {
-            Body::List(list) => {
-                Body::List(list.iter().rev().map(|r| Rotation { string: r.string, angle: -r.angle }).collect())
-            }
-            Body::Nested(blocks) => Body::Nested(inverted(blocks).into()),
-        };
-        Block { body, repeat: block.repeat }
-    };
-    blocks.iter().rev().map(invert).collect()
 }
 
 /// [`Rotations::for_each_list`] on bare blocks that run `times` times.

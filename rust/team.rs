@@ -41,6 +41,18 @@ impl Control {
         (self.passes_done.load(Ordering::Relaxed), self.passes_total.load(Ordering::Relaxed))
     }
 
+    /// Ends a pass that the calling thread made alone, and tells whether to go on.
+    ///
+    /// # Errors
+    /// [`Error::Cancelled`] after a request to stop.
+    pub fn pass_done(&self) -> Result<()> {
+        let passes_done = 1 + self.passes_done.fetch_add(1, Ordering::Relaxed);
+        match self.request.load(Ordering::Relaxed) {
+            CONTINUE => Ok(()),
+            _ => Err(Error::Cancelled { passes_done }),
+        }
+    }
+
     /// Says how many passes the run has.
     pub fn expect(&self, passes: u64) {
         self.passes_total.store(passes, Ordering::Relaxed);

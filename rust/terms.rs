@@ -7,10 +7,12 @@
 //! | `algebra` | sums, multiples, products, brackets, relabelling |
 //! | `locality` | the index from qubits to terms that keeps all of it fast for local operators |
 //! | `grouping` | pairwise commutation and greedy commuting groups |
+//! | `anticommuting` | a bound on the spectral norm from anticommuting groups |
 //!
 //! The order of terms is the order in which strings first occur in the input, always: results never depend on hashing.
 
 mod algebra;
+mod anticommuting;
 mod collect;
 mod grouping;
 mod locality;

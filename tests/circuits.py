@@ -16,7 +16,7 @@ P3 = tt.Partition(P3_PARTS)
 
 
 def matrix(rotations):
-    """Multiply the rotations out, first in time rightmost, with the phase."""
+    """Multiply the rotations out, first in time rightmost, with the phase and the frame."""
     total = np.exp(1j * rotations.phase) * np.eye(2**rotations.qubits)
     for block in rotations.blocks:
         if len(block.rotations.blocks) == 1 and block.rotations.blocks[0].repeat == 1:
@@ -27,7 +27,18 @@ def matrix(rotations):
         else:
             once = matrix(block.rotations)
         total = np.linalg.matrix_power(once, block.repeat) @ total
-    return total
+    if rotations.frame.count or rotations.frame.phase:
+        total = matrix(rotations.frame) @ total
+    return relabelling_matrix(rotations.relabelling) @ total
+
+
+def relabelling_matrix(moves):
+    """Send qubit q to `moves[q]`."""
+    size = 2 ** len(moves)
+    made = np.zeros((size, size))
+    for index in range(size):
+        made[sum((index >> qubit & 1) << target for qubit, target in enumerate(moves)), index] = 1.0
+    return made
 
 
 def plain(formula, partition, time, steps):
@@ -42,3 +53,14 @@ def plain(formula, partition, time, steps):
 
 def distance(a, b):
     return np.linalg.norm(a - b, 2)
+
+
+def product(formula, partition, time, steps):
+    """The circuit by eigenvectors of each part, stage after stage: no merging, no rotations."""
+    known = [np.linalg.eigh(oracle.dense(part)) for part in partition.parts]
+    one = np.eye(2**partition.qubits, dtype=complex)
+    for weight, reverse in formula.exact_stages():
+        for values, vectors in reversed(known) if reverse else known:
+            phases = np.exp(-1j * float(weight) * time / steps * values)
+            one = (vectors * phases) @ (vectors.conj().T @ one)
+    return np.exp(-1j * partition.identity * time) * np.linalg.matrix_power(one, steps)

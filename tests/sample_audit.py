@@ -6,6 +6,7 @@ import math
 from types import SimpleNamespace
 from typing import Any
 
+from trueturn.audit.candidate import Candidate
 from trueturn.audit.result import Audit, PointError, Row, Trial
 from trueturn.operator import Operator
 
@@ -52,7 +53,7 @@ def row(
             points.append(PointError(time, name, exact + share * largest, exact, interval(share * largest, width)))
     error = interval(largest, width)
     return Row(
-        candidate=SimpleNamespace(formula=SimpleNamespace(name=formula), rule=rule, steps=asked),  # type: ignore[arg-type]
+        candidate=Candidate(formula, rule, asked),
         label=f"{formula}, {rule}",
         steps=chosen,
         error=error,

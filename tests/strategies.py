@@ -62,3 +62,49 @@ def circuits(draw, max_qubits=5, max_count=12, qubits=None):
     return Rotations(
         [x for (x, _), _ in listed], [z for (_, z), _ in listed], [t for _, t in listed], count, draw(turns)
     )
+
+
+@st.composite
+def pair_circuits(draw, max_qubits=4):
+    """Circuits of mostly two-qubit strings, so that pairs join and ladders meet, with repeated and nested blocks."""
+    count = draw(st.integers(2, max_qubits))
+    angles = st.floats(-4, 4, allow_subnormal=False)
+    letters = st.sampled_from([(1, 0), (1, 1), (0, 1)])
+
+    def piece(drawn):
+        x = z = 0
+        for qubit, (has_x, has_z) in drawn.items():
+            x |= has_x << qubit
+            z |= has_z << qubit
+        return x, z
+
+    strings = st.dictionaries(st.integers(0, count - 1), letters, min_size=1, max_size=2).map(piece)
+    made = Rotations([], [], [], count, draw(angles))
+    for _ in range(draw(st.integers(1, 3))):
+        listed = draw(st.lists(st.tuples(strings, angles), max_size=7))
+        block = Rotations([x for (x, _), _ in listed], [z for (_, z), _ in listed], [t for _, t in listed], count)
+        if draw(st.booleans()):
+            block = (block + block.times(2)).times(draw(st.integers(0, 3)))
+        made = made + block.times(draw(st.integers(1, 4)))
+    return made
+
+
+gate_options = st.fixed_dictionaries(
+    {
+        "ladder": st.sampled_from(["staircase", "balanced", "hub"]),
+        "order": st.sampled_from(["ascending", "z-first"]),
+        "join_pairs": st.booleans(),
+        "native": st.sampled_from(["cx", "cz", "zz"]),
+    }
+)
+"""How circuits become gates: keywords of `Rotations.cost`."""
+
+
+@st.composite
+def framed(draw, inner):
+    """A circuit that ends in a Clifford and a relabelling."""
+    circuit = draw(inner)
+    strings = draw(st.lists(pauli_strings(circuit.qubits), max_size=5))
+    turns = [draw(st.integers(-3, 3)) * np.pi / 4 for _ in strings]
+    clifford = Rotations([x for x, _ in strings], [z for _, z in strings], turns, circuit.qubits, np.pi / 4)
+    return circuit.with_frame(clifford, draw(st.permutations(range(circuit.qubits))))

@@ -14,6 +14,7 @@ from pathlib import Path
 import pytest
 
 import trueturn as tt
+import trueturn.cli
 
 ROOT = Path(__file__).parent.parent
 README = (ROOT / "README.md").read_text(encoding="utf-8")
@@ -27,6 +28,23 @@ def test_the_readme_example_prints_what_the_readme_says(tmp_path, monkeypatch):
         exec(compile(code, "README.md", "exec"), {})
     assert out.getvalue().rstrip() == printed.rstrip()
     assert (tmp_path / "audit" / "report.html").exists()
+
+
+def test_the_second_example_of_the_readme_prints_what_it_says(tmp_path, monkeypatch):
+    section = README[README.index("## Plan, bound, write, read, diagnose") :]
+    (code, printed) = re.search(r"```python\n(.*?)```\n```\n(.*?)```", section, re.DOTALL).groups()
+    monkeypatch.chdir(tmp_path)
+    out = io.StringIO()
+    with redirect_stdout(out):
+        exec(compile(code, "README.md", "exec"), {})
+    assert out.getvalue().rstrip() == printed.rstrip()
+
+
+def test_the_index_of_the_pages_lists_them_all():
+    index = (ROOT / "docs" / "README.md").read_text(encoding="utf-8")
+    listed = re.findall(r"^- \[(.*?)\]\((.*?)\): \S", index, re.MULTILINE)
+    pages = sorted(page.name for page in (ROOT / "docs").glob("*.md") if page.name != "README.md")
+    assert listed == [(name, name) for name in pages]
 
 
 def test_every_call_that_the_readme_names_exists():
@@ -65,7 +83,7 @@ def test_pictures_are_not_imported_until_drawn():
     assert subprocess.run([sys.executable, "-c", code]).returncode == 0
 
 
-@pytest.mark.parametrize("command", ["audit", "reference", "init", "formulas"])
+@pytest.mark.parametrize("command", sorted(trueturn.cli.commands.commands))
 def test_the_commands_of_the_readme_exist(command):
     run = subprocess.run(
         [sys.executable, "-m", "trueturn", command, "--help"],

@@ -201,8 +201,9 @@ def test_a_reference_needs_no_candidates(read) -> None:
 
 def test_rules_are_those_of_the_library() -> None:
     from trueturn.partition import Partition
+    from trueturn.partition_rules import RULES
 
-    for rule in job_module.RULES:
+    for rule in RULES:
         assert Partition.of(Operator("1.0 Z_0 Z_1 + 0.5 X_0"), rule).parts
 
 
@@ -232,9 +233,9 @@ BAD = [
     ("times = [0.5, 1.0]", "time = 0", "target.time", "not above zero (0.0);"),
     (
         "tolerance = 0.01",
-        'tolerance = 0.01\nquantity = "operator"',
+        'tolerance = 0.01\nquantity = "energy"',
         "target.quantity",
-        "unknown ('operator'); known:",
+        "unknown ('energy'); known:",
     ),
     ("tolerance = 0.01", 'tolerance = 0.01\nquantity = "stat"', "target.quantity", "did you mean state?"),
     (
@@ -266,12 +267,12 @@ BAD = [
     ('edge = "Z_0"', 'edge = " "', "target.observables.edge", "empty; write edge ="),
     ('edge = "Z_0"', 'edge = "Z_7"', "target.observables.edge", "refused at line 1, column 1"),
     ('edge = "Z_0"', 'edge = "Z_0 +"', "target.observables.edge", "refused at line 1, column"),
-    (SYSTEM, "", "system", "needs exactly one of terms, file or model (none given);"),
+    (SYSTEM, "", "system", "needs exactly one of terms, file, fcidump or model (none given);"),
     (
         SYSTEM,
         SYSTEM + '\nmodel = "ising"',
         "system",
-        "needs exactly one of terms, file or model (terms and model given)",
+        "needs exactly one of terms, file, fcidump or model (terms and model given)",
     ),
     (SYSTEM, "terms = 3", "system.terms", "not a text but a whole number (3);"),
     (SYSTEM, 'terms = "X_0 Y_0"', "system.terms", "refused at line 1, column 1"),

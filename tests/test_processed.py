@@ -131,7 +131,7 @@ def test_an_audit_measures_a_processed_formula_and_names_it(tmp_path):
         low, high = point.error
         assert low - 1e-12 <= truth <= high + 1e-12  # 300 products of 8 x 8 matrices
         assert high - low < 1e-8
-    assert row.bound is None and row.bound_source == "no theorem at hand covers processed-4"
+    assert row.error[0] <= row.bound and row.bound_source.startswith("order 4, merged nested commutators")
     assert row.error[1] < found.rows[1].error[0]
     least = tt.audit(h, start, 1.0, [tt.Candidate(FOUR, P3)], 1e-6, "state").rows[0]
     assert least.verdict == "meets" and least.steps > 1

@@ -7,6 +7,7 @@ import numpy as np
 import numpy.typing as npt
 
 __all__ = [
+    "GateOptions",
     "Rotations",
     "Terms",
     "application_rounding",
@@ -16,10 +17,15 @@ __all__ = [
     "distance",
     "evolve",
     "expectations",
+    "gate_counts",
+    "global_phase",
     "instruction_sets",
     "overlap",
     "pairwise_sum",
+    "read_qasm",
+    "rung_counts",
     "squared_norms",
+    "write_gates",
 ]
 
 @final
@@ -49,6 +55,7 @@ class Terms:
     def bracket_vanishes(self, other: Terms, memory: int) -> bool: ...
     def first_anticommuting_pair(self) -> tuple[int, int] | None: ...
     def commuting_groups(self) -> npt.NDArray[np.int64]: ...
+    def anticommuting_norm(self) -> tuple[float, int]: ...
     def relabelled(self, new_names: Sequence[int]) -> Terms: ...
 
 _Columns = tuple[list[int], list[int], npt.NDArray[np.float64]]
@@ -67,6 +74,16 @@ class Rotations:
     def count(self) -> int: ...
     def then(self, next: Rotations) -> Rotations: ...
     def times(self, repeat: int) -> Rotations: ...
+    def with_frame(
+        self,
+        x: Sequence[int],
+        z: Sequence[int],
+        turns: Sequence[int],
+        eighths: int,
+        relabelling: Sequence[int],
+    ) -> Rotations: ...
+    def frame(self) -> tuple[Rotations, list[int]] | None: ...
+    def narrowed(self, qubits: int) -> Rotations | None: ...
     def inverse(self) -> Rotations: ...
     def same_as(self, other: Rotations) -> bool: ...
     def blocks(self) -> list[tuple[Rotations, int]]: ...
@@ -77,6 +94,27 @@ class Rotations:
     def angle_sum(self) -> float: ...
     def passes(self, single: bool) -> list[tuple[int, list[tuple[int, int, bool, int, int]]]]: ...
     def rounding_units(self) -> tuple[float, float]: ...
+
+@final
+class GateOptions:
+    def __new__(
+        cls,
+        shape: str,
+        order: str,
+        join: bool,
+        native: str,
+        qubits: int,
+        edges: Sequence[tuple[int, int]] | None,
+        routing: str,
+        layout: Sequence[int],
+    ) -> GateOptions: ...
+
+_Counts = tuple[int, int, int, int, int, int, int, int, int]
+
+def gate_counts(circuit: Rotations, options: GateOptions) -> tuple[_Counts, list[int]]: ...
+def write_gates(circuit: Rotations, options: GateOptions, loops: bool, write: Callable[[str], object]) -> None: ...
+def global_phase(circuit: Rotations) -> float: ...
+def rung_counts(circuit: Rotations) -> list[float]: ...
 
 _Progress = Callable[[int, int], object]
 
@@ -103,5 +141,24 @@ def chebyshev_sums(
 def overlap(left: npt.NDArray[Any], right: npt.NDArray[Any], threads: int) -> complex: ...
 def distance(left: npt.NDArray[Any], right: npt.NDArray[Any], factor: complex, threads: int) -> float: ...
 def squared_norms(state: npt.NDArray[Any], threads: int) -> npt.NDArray[np.float64]: ...
+
+_Range = tuple[bool, int, int]
+
+def read_qasm(
+    text: str,
+    folder: str | None,
+    keep: str,
+    prepare: _Range | None,
+    basis: _Range | None,
+    limit: int | None,
+) -> tuple[
+    list[Rotations],
+    int,
+    list[tuple[str, int, int]],
+    int,
+    list[tuple[int, str]],
+    list[tuple[int, int, str]],
+    str,
+]: ...
 def pairwise_sum(values: Sequence[float]) -> float: ...
 def instruction_sets() -> tuple[list[str], str]: ...

@@ -9,7 +9,7 @@ from pathlib import Path
 
 from trueturn.errors import OperatorError
 
-__all__ = ["read_text", "write_text"]
+__all__ = ["one_a_line", "read_text", "write_text"]
 
 _QUBITS_COMMENT = re.compile(r"^[ \t]*#[ \t]*qubits:[ \t]*(\S*)[ \t]*$", re.MULTILINE)
 
@@ -30,9 +30,14 @@ def read_text(path: Path) -> tuple[str, int | None]:
     return text, int(stated[1])
 
 
+def one_a_line(text: str) -> list[str]:
+    """Split the text of an operator into its terms, each with its sign."""
+    return text.replace(" + ", "\n").replace(" - ", "\n-").split("\n")
+
+
 def write_text(path: Path, text: str, qubits: int) -> None:
     """Write the terms of `text` one a line, under a temporary name that is renamed when complete."""
-    lines = text.replace(" + ", "\n").replace(" - ", "\n-")
+    lines = "\n".join(one_a_line(text))
     handle, temporary = tempfile.mkstemp(dir=path.parent, prefix=f".{path.name}.", suffix=".part")
     try:
         with os.fdopen(handle, "w", encoding="utf-8", newline="\n") as file:

@@ -17,20 +17,21 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
+from trueturn.commands.bound import bound
+from trueturn.commands.circuits import cost, export
+from trueturn.commands.diagnose import diagnose
+from trueturn.commands.options import AS_JSON, JOB, THREADS
+from trueturn.commands.plans import budget, plan
+from trueturn.commands.references import reference, verify
+
 if TYPE_CHECKING:
-    from trueturn.audit.job import Job, Progress
+    from trueturn.audit.job import Progress
     from trueturn.partition import Partition
-    from trueturn.reference import Reference
 
 __all__ = ["commands", "main", "run"]
 
 STATUS = {"meets": 0, "misses": 1, "undecided": 4}
 BAD_INPUT, NO_MEMORY, BUG, INTERRUPTED = 2, 3, 70, 130
-JOB = click.Path(path_type=Path)
-THREADS = click.option(
-    "--threads", type=click.IntRange(min=1), metavar="N", help="Threads to use; results do not depend on it."
-)
-AS_JSON = click.option("--json", "as_json", is_flag=True, help="Print one JSON object and nothing else.")
 
 
 @click.group(context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100})
@@ -42,21 +43,54 @@ def commands() -> None:
     """
 
 
+commands.add_command(bound)
+commands.add_command(budget)
+commands.add_command(cost)
+commands.add_command(diagnose)
+commands.add_command(export)
+commands.add_command(plan)
+commands.add_command(reference)
+commands.add_command(verify)
+
+
 @commands.command()
-@click.argument("job", required=False, type=JOB)
+@click.argument("files", nargs=-1, type=JOB, metavar="[JOB | CIRCUIT... --job JOB]")
+@click.option("--job", type=JOB, metavar="JOB", help="Judge the circuits of OpenQASM files against this job.")
+@click.option("--prepare", metavar="RANGE", help='Gates of a circuit that prepare the start: "0:120" or "lines 4-9".')
+@click.option("--basis", metavar="RANGE", help="Gates that change the basis before measurement, likewise.")
 @click.option("--into", type=JOB, metavar="FOLDER", help="Write report.html, audit.json and audit.csv there.")
 @AS_JSON
 @THREADS
-def audit(job: Path | None, into: Path | None, as_json: bool, threads: int | None) -> int:
-    """Judge the candidates of JOB and recommend one.
+def audit(
+    files: tuple[Path, ...],
+    job: Path | None,
+    prepare: str | None,
+    basis: str | None,
+    into: Path | None,
+    as_json: bool,
+    threads: int | None,
+) -> int:
+    """Judge the candidates of JOB and recommend one, or judge circuits against JOB.
 
     JOB is a TOML file; `trueturn init` writes one to start from. Without JOB the built-in scenario runs: an
-    invented ladder of 18 spins after a field quench.
+    invented ladder of 18 spins after a field quench. With --job the files are OpenQASM circuits, taken to evolve to
+    the job's last time; the job's own candidates are left out.
     """
     from trueturn.audit.job import built_in_job, read_job
     from trueturn.audit.report import require_replaceable, terminal_table, to_dict
 
-    task = built_in_job() if job is None else read_job(job)
+    if job is not None:
+        if not files:
+            raise click.UsageError("--job goes with circuits: trueturn audit CIRCUIT.qasm --job JOB.toml")
+        from trueturn.circuits.auditing import job_for_circuits
+
+        task, notes = job_for_circuits(read_job(job, candidates_required=False), files, prepare, basis)
+        for note in notes:
+            print(f"trueturn: {note}", file=sys.stderr)
+    elif len(files) > 1 or prepare is not None or basis is not None:
+        raise click.UsageError("circuits need a job: trueturn audit CIRCUIT.qasm --job JOB.toml")
+    else:
+        task = read_job(files[0]) if files else built_in_job()
     folder = into or task.folder
     if folder is not None:
         require_replaceable(folder)
@@ -73,27 +107,6 @@ def audit(job: Path | None, into: Path | None, as_json: bool, threads: int | Non
     elif not as_json:
         say("For the report with pictures, add: --into FOLDER")
     return STATUS[found.verdict]
-
-
-@commands.command()
-@click.argument("job", type=JOB)
-@AS_JSON
-@THREADS
-def reference(job: Path, as_json: bool, threads: int | None) -> int:
-    """Compute only the certified reference of JOB.
-
-    Prints the expectations of its observables at its times, and the certificate.
-    """
-    from trueturn.audit.job import read_job
-
-    task = read_job(job, candidates_required=False)
-    with progress_bar() as progress:
-        found = task.reference(threads=threads, progress=progress)
-    if as_json:
-        say_json(reference_document(task, found))
-    else:
-        say_reference(task, found)
-    return 0
 
 
 @commands.command()
@@ -134,7 +147,7 @@ def formulas(job: Path | None, as_json: bool) -> int:
         from trueturn.audit.job import read_job
 
         task = read_job(job)
-        for candidate in task.candidates:
+        for candidate in task.formula_candidates:
             partitions.setdefault(str(candidate.rule), candidate.partition(task.operator))
     known = [formula(name) for name in all_names(special=True)]
     if as_json:
@@ -142,52 +155,6 @@ def formulas(job: Path | None, as_json: bool) -> int:
     else:
         say_rich(lambda width: page(known, partitions))
     return 0
-
-
-def reference_document(task: Job, found: Reference) -> dict[str, Any]:
-    """Give a reference as plain data."""
-    proof = found.certificate
-    return {
-        "kind": "trueturn reference",
-        "schema": 1,
-        "title": task.title,
-        "times": [float(time) for time in found.times],
-        "expectations": {name: [float(value) for value in values] for name, values in found.expectations.items()},
-        "certificate": {
-            "method": proof.method,
-            "proven": bool(proof.proven),
-            "error_bound": [float(proof.error_bound[time]) for time in found.times],
-            "truncation": [float(proof.truncation[time]) for time in found.times],
-            "rounding": [float(proof.rounding[time]) for time in found.times],
-            "spectral_interval": [float(end) for end in proof.spectral_interval],
-            "applications": int(proof.applications),
-            "notes": list(proof.notes),
-        },
-    }
-
-
-def say_reference(task: Job, found: Reference) -> None:
-    """Print times, expectations and the certificate for people."""
-    from rich.console import Group
-    from rich.table import Table
-    from rich.text import Text
-
-    from trueturn.audit.figures import count, outward, plain, upper
-
-    proof = found.certificate
-    table = Table(box=None, padding=(0, 2, 0, 0), header_style="dim")
-    for heading in ("time", *found.expectations, "state error ≤"):
-        table.add_column(Text(heading), justify="right")
-    for index, time in enumerate(found.times):
-        values = [f"{float(series[index]):+.10f}" for series in found.expectations.values()]
-        table.add_row(plain(float(time)), *values, upper(float(proof.error_bound[time])))
-    low, high = proof.spectral_interval
-    lines = [
-        f"{proof.method}, {'proven' if proof.proven else 'estimated, not proven'}; "
-        f"{count(proof.applications)} operator applications; spectrum within {outward(low, high)}.",
-        *proof.notes,
-    ]
-    say_rich(lambda width: Group(Text(task.title, style="bold"), Text(), table, Text(), Text("\n".join(lines))))
 
 
 def say(text: str) -> None:

@@ -14,12 +14,14 @@ __all__ = [
     "AuditError",
     "EnsembleError",
     "FormulaError",
+    "IntegralsError",
     "InternalError",
     "JobError",
     "MemoryRefusedError",
     "ModelError",
     "OperatorError",
     "PartitionError",
+    "QasmError",
     "RotationError",
     "StateBusyError",
     "StateLayoutError",
@@ -77,6 +79,14 @@ class RotationError(TrueturnError, ValueError):
     """Angles or repeats that make no circuit."""
 
     argument: str
+
+
+class QasmError(TrueturnError, ValueError):
+    """An OpenQASM text that is no unitary circuit with known values, or a file that cannot be read."""
+
+    path: str
+    line: int
+    column: int
 
 
 class FormulaError(TrueturnError, ValueError):
@@ -151,6 +161,13 @@ class JobError(TrueturnError, ValueError):
 
     path: str
     key: str
+
+
+class IntegralsError(TrueturnError, ValueError):
+    """A file of integrals that is malformed, cut off, or contradicts itself; `line` counts from 1."""
+
+    path: str
+    line: int
 
 
 class InternalError(TrueturnError, RuntimeError):

@@ -32,7 +32,7 @@ from trueturn.errors import ArgumentError, RotationError
 from trueturn.operator import Operator
 from trueturn.rotations import Rotations
 
-__all__ = ["LADDERS", "gate_saving_order", "ladder_of", "saved_gates"]
+__all__ = ["LADDERS", "gate_saving_order", "is_list", "ladder_of", "saved_gates"]
 
 LADDERS = ("ascending", "z-first")
 """Orders in which a ladder takes the qubits of a string."""
@@ -120,7 +120,7 @@ def known_ladder(ladder: object) -> str:
 def _walk(circuit: Rotations, order: str) -> tuple[int, Ladder | None, Ladder | None]:
     """Saved gates of a circuit, and its first and last ladder (None when it has no rotation)."""
     blocks = circuit.blocks
-    if _is_list(circuit):
+    if is_list(circuit):
         strings = zip(circuit.x_masks, circuit.z_masks, strict=True)
         ladders = [ladder_of(int(x), int(z), order) for x, z in strings]
         if not ladders:
@@ -141,7 +141,7 @@ def _walk(circuit: Rotations, order: str) -> tuple[int, Ladder | None, Ladder | 
     return saved, first, last
 
 
-def _is_list(circuit: Rotations) -> bool:
+def is_list(circuit: Rotations) -> bool:
     """Whether a circuit is a plain list: its only block is a list again, itself without the phase."""
     blocks = circuit.blocks
     if len(blocks) != 1 or blocks[0].repeat != 1:

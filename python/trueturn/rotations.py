@@ -1,19 +1,24 @@
-"""What a circuit does: ordered Pauli rotations in repeated blocks."""
+"""What a circuit does: ordered Pauli rotations in repeated blocks, then a frame."""
 
 from __future__ import annotations
 
 import math
-import operator as _operator
 from collections.abc import Iterable, Sequence
-from typing import NamedTuple
+from typing import TYPE_CHECKING, Any, NamedTuple
 
 import numpy as np
 import numpy.typing as npt
 
 from trueturn import _native
+from trueturn import _rotation_arguments as checked
 from trueturn.errors import RotationError
 from trueturn.operator import Operator
 from trueturn.pass_plan import PassPlan, pass_plan
+
+if TYPE_CHECKING:
+    import os
+
+    from trueturn.export import Cost
 
 __all__ = ["Block", "Rotations"]
 
@@ -28,7 +33,7 @@ class Block(NamedTuple):
 
 
 class Rotations:
-    """Ordered rotations exp(-i θ P), repeated blocks of them, and a global phase; immutable.
+    """Ordered rotations exp(-i θ P), repeated blocks of them, a global phase and a final frame; immutable.
 
     Parameters
     ----------
@@ -50,6 +55,10 @@ class Rotations:
     -----
     Repeats are stored, never written out: a million steps cost what one costs.
 
+    The circuit is exp(i phase) T C R: the blocks R first, then the Clifford C (`frame`), then the relabelling T. Most
+    circuits have neither; those read from a file may. `inverse`, `times` and ``+`` pull the strings that follow a frame
+    back through it, exactly.
+
     Examples
     --------
     >>> step = Rotations(x=[0b01, 0b00], z=[0b00, 0b11], angles=[0.1, 0.2], qubits=2)
@@ -69,7 +78,11 @@ class Rotations:
         phase: float = 0.0,
     ) -> None:
         self._circuit = _native.Rotations.from_list(
-            _masks("x", x), _masks("z", z), _angles(angles), _qubits(qubits), _number("phase", phase)
+            checked.masks("x", x),
+            checked.masks("z", z),
+            checked.angles(angles),
+            checked.qubits(qubits),
+            checked.number("phase", phase),
         )
 
     @classmethod
@@ -99,14 +112,76 @@ class Rotations:
         return tuple(Block(Rotations._wrap(body), repeat) for body, repeat in self._circuit.blocks())
 
     @property
+    def frame(self) -> Rotations:
+        """The Clifford that follows the blocks: rotations by multiples of π/4, and its phase, a multiple of π/4.
+
+        Without rotations and of phase 0 where there is none.
+        """
+        found = self._circuit.frame()
+        if found is None:
+            return Rotations([], [], [], self.qubits)
+        return Rotations._wrap(found[0])
+
+    @property
+    def relabelling(self) -> tuple[int, ...]:
+        """Where each qubit is at the end: entry q is the qubit that holds what qubit q held; applied after `frame`."""
+        found = self._circuit.frame()
+        return tuple(range(self.qubits)) if found is None else tuple(found[1])
+
+    def with_frame(self, clifford: Rotations | None = None, relabelling: Sequence[int] | None = None) -> Rotations:
+        """Return this circuit followed by a Clifford and then a relabelling of qubits.
+
+        Parameters
+        ----------
+        clifford : Rotations, optional
+            Rotations by multiples of π/4 (up to 4 units in the last place), with a phase that is a multiple of π/4, and no
+            frame of its own. None does nothing.
+        relabelling : sequence of int, optional
+            Entry q is the qubit that qubit q becomes. None keeps all in place.
+
+        Returns
+        -------
+        Rotations
+            Its `frame` is the same operator written in a fixed way; a relabelling that the Clifford hides, such as three
+            cx for a swap, is found and moved to `relabelling`, and a frame that does nothing is dropped.
+
+        Raises
+        ------
+        RotationError
+            The numbers of qubits differ, an angle is no multiple of π/4, or `relabelling` is no permutation.
+
+        Examples
+        --------
+        >>> Rotations([1], [0], [0.25], qubits=2).with_frame(relabelling=[1, 0]).relabelling
+        (1, 0)
+        """
+        moves = checked.permutation(relabelling, self.qubits)
+        if clifford is None:
+            return Rotations._wrap(self._circuit.with_frame([], [], [], 0, moves))
+        if (
+            not isinstance(clifford, Rotations)
+            or clifford.qubits != self.qubits
+            or clifford._circuit.frame() is not None
+        ):
+            raise RotationError(
+                f"clifford: no Rotations without a frame on {self.qubits} qubits ({clifford!r}); "
+                "give rotations by multiples of π/4",
+                argument="clifford",
+            )
+        x, z, angles = clifford._written_out()
+        turns = [checked.eighths("clifford", angle) for angle in angles.tolist()]
+        eighths = checked.eighths("clifford", clifford.phase)
+        return Rotations._wrap(self._circuit.with_frame(x, z, turns, eighths, moves))
+
+    @property
     def x_masks(self) -> npt.NDArray[np.object_]:
         """x mask of each rotation, written out: shape (count,), Python ints (masks have up to 128 bits)."""
-        return _objects(self._written_out()[0])
+        return checked.object_array(self._written_out()[0])
 
     @property
     def z_masks(self) -> npt.NDArray[np.object_]:
         """z mask of each rotation, written out: shape (count,), Python ints."""
-        return _objects(self._written_out()[1])
+        return checked.object_array(self._written_out()[1])
 
     @property
     def angles(self) -> npt.NDArray[np.float64]:
@@ -135,12 +210,15 @@ class Rotations:
     def times(self, k: int) -> Rotations:
         """Return the circuit run `k` times over, at no cost in memory.
 
+        A frame that changes the strings of the next repeat makes as many different repeats as it takes to come back to
+        itself; those are written out.
+
         Raises
         ------
         RotationError
-            `k` is not a whole number from 0 to 2**63.
+            `k` is not a whole number from 0 to 2**63, or a frame would write out more than about 2**19 rotations.
         """
-        count = _whole(k)
+        count = checked.whole_or_none(k)
         if count is None or not 0 <= count <= 2**63:
             raise RotationError(f"k: not a repeat count ({k!r}); give a whole number, 0 or more", argument="k")
         return Rotations._wrap(self._circuit.times(count))
@@ -155,7 +233,7 @@ class Rotations:
         """Return Σ θ P over all rotations: the first moment of the circuit.
 
         For a consistent product formula it is t times the Hamiltonian without its identity term, whose share is
-        minus `phase`.
+        minus `phase`. A frame is left out.
 
         Returns
         -------
@@ -187,7 +265,7 @@ class Rotations:
         """Show how `State.apply` will carry the circuit out.
 
         Passes over the state, rotations in each, and the time that they should take on one thread. Costs planning, and at the
-        first call some tens of milliseconds to measure this machine.
+        first call some tens of milliseconds to measure this machine. A relabelling of qubits at the end is not counted.
 
         Raises
         ------
@@ -205,6 +283,97 @@ class Rotations:
         """
         return pass_plan(self._circuit, dtype)
 
+    def cost(self, **device: Any) -> Cost:
+        """Return what the circuit costs as gates, counted without writing it out.
+
+        Parameters
+        ----------
+        **device
+            The fields of `trueturn.export.Hardware`: ladder, order, join_pairs, native, connectivity, layout, routing,
+            two_qubit_error, one_qubit_error, readout_error, synthesis_error.
+
+        Returns
+        -------
+        Cost
+            The counts are those of the file that `write_qasm` writes with the same options.
+
+        Raises
+        ------
+        ArgumentError
+            An unknown option or word, a connectivity that does not hold the circuit or is disconnected.
+        RotationError
+            An angle too large to be doubled.
+        MemoryRefusedError
+            The gates of repeated bodies do not fit.
+
+        Examples
+        --------
+        >>> import trueturn as tt
+        >>> bond = Rotations(x=[0b11, 0b11, 0], z=[0, 0b11, 0b11], angles=[0.1, 0.1, 0.1], qubits=2)
+        >>> cost = bond.times(1000).cost()
+        >>> cost.unsaved_two_qubit_gates, cost.two_qubit_gates  # XX + YY + ZZ: 6 alone, 3 together
+        (6000, 3000)
+        """
+        from trueturn.export.cost import cost_of
+        from trueturn.export.hardware import Hardware
+
+        return cost_of(self, Hardware.of(device))
+
+    def write_qasm(self, path: str | os.PathLike[str], version: int = 3, *, comment: str = "", **device: Any) -> Cost:
+        """Write the circuit as OpenQASM and return what it costs.
+
+        Parameters
+        ----------
+        path : str or path
+            Written under a temporary name and renamed when complete.
+        version : {3, 2}
+            In version 3 repeated blocks are loops; version 2 has none and writes them out.
+        comment : str
+            Lines for the head of the file.
+        **device
+            As for `cost`.
+
+        Returns
+        -------
+        Cost
+
+        Raises
+        ------
+        ArgumentError
+            As for `cost`; or the file cannot be written, an old one then being left as it was.
+
+        Notes
+        -----
+        Only gates of the version's standard library, or defined in the file. Angles have all their digits. The
+        rotations keep their order and their angles; only strings that are the identity join the global phase, which
+        version 3 writes as ``gphase`` and version 2, which leaves it open, as a comment.
+
+        With a connectivity the file is about physical qubits; the comments ``trueturn: start_layout`` and ``trueturn:
+        end_layout`` say which of them hold the qubits.
+        """
+        from trueturn.export.hardware import Hardware
+        from trueturn.export.qasm import write_qasm
+
+        return write_qasm(self, path, version, comment, Hardware.of(device))
+
+    def qasm(self, version: int = 3, *, comment: str = "", **device: Any) -> str:
+        r"""Return the text that `write_qasm` writes.
+
+        Examples
+        --------
+        >>> step = Rotations(x=[0b0], z=[0b11], angles=[0.25], qubits=2)
+        >>> print(step.times(100).qasm().partition("qubit[2] q;\n")[2], end="")
+        cx q[0], q[1];
+        for int step0 in [1:100] {
+          rz(0.5) q[1];
+        }
+        cx q[0], q[1];
+        """
+        from trueturn.export.hardware import Hardware
+        from trueturn.export.qasm import qasm_text
+
+        return qasm_text(self, version, comment, Hardware.of(device))
+
     def rounding_bound(self, angle_roundings: int = 0, unit: float = 2.0**-53) -> float:
         """Return a bound on the 2-norm error that rounding adds when a unit vector is evolved.
 
@@ -220,14 +389,20 @@ class Rotations:
         The engine joins rotations into operations; each kind costs a number of roundoffs that `docs/engine.md` derives:
         5 for a diagonal string, 8 for a string that mixes, 5 for up to 16 strings with one x mask, 18 or 21 for a whole
         bond of three. An angle off by k roundings costs k u |θ|, and each addition of angles of strings that mix u times
-        their size. The global phase is a diagonal string. A factor exp(bound) covers products of errors.
+        their size. The global phase is a diagonal string; so is the phase of the frame, whose rotations by π/4 or π/2,
+        rounded, are off by u |θ| at most. A relabelling moves amplitudes whole. A factor exp(bound) covers products of
+        errors.
         """
         double = 2.0**-53
+        clifford = self.frame
         units, angles = self._circuit.rounding_units()
-        if self.phase:
-            units += 5.0
         if angle_roundings:
             angles += angle_roundings * (self._circuit.angle_sum() + abs(self.phase))
+        for part in (self, clifford):
+            units += 5.0 if part.phase else 0.0
+        turned, added = clifford._circuit.rounding_units()
+        units += turned
+        angles += added + clifford._circuit.angle_sum() + abs(clifford.phase)
         linear = unit * units + double * angles
         bound = float(linear * np.exp(min(linear, 600.0)))
         return bound if math.isfinite(bound) else math.inf
@@ -236,66 +411,14 @@ class Rotations:
         return self.count
 
     def __eq__(self, other: object) -> bool:
-        """Equal blocks, repeats, strings, angles and phase; circuits that do the same can still differ in these."""
+        """Equal blocks, repeats, strings, angles, phase and frame; circuits that do the same can still differ in these."""
         return isinstance(other, Rotations) and self._circuit.same_as(other._circuit)
 
     def __hash__(self) -> int:
         return hash((self.qubits, self.count, self.phase))
 
     def __repr__(self) -> str:
-        return f"Rotations(count={self.count}, qubits={self.qubits}, blocks={len(self.blocks)}, phase={self.phase!r})"
-
-
-def _masks(argument: str, masks: Iterable[int]) -> list[int]:
-    try:
-        found = [_operator.index(mask) for mask in masks]
-    except TypeError:
-        raise RotationError(f"{argument}: not a sequence of whole numbers; give bit masks", argument=argument) from None
-    if any(not 0 <= mask < 1 << 128 for mask in found):
-        raise RotationError(
-            f"{argument}: a mask is negative or longer than 128 bits; give masks of qubits", argument=argument
-        )
-    return found
-
-
-def _angles(angles: Sequence[float] | npt.NDArray[np.float64]) -> npt.NDArray[np.float64]:
-    try:
-        if np.iscomplexobj(angles):
-            raise TypeError
-        found = np.ascontiguousarray(angles, dtype=np.float64)
-    except (TypeError, ValueError, OverflowError):
-        raise RotationError("angles: not real numbers; give radians", argument="angles") from None
-    if found.ndim != 1:
-        raise RotationError(
-            f"angles: not a list of real numbers (shape {found.shape}); give one angle per string", argument="angles"
-        )
-    return found
-
-
-def _qubits(qubits: int) -> int:
-    count = _whole(qubits)
-    if count is None or not 0 <= count <= 128:
-        raise RotationError(f"qubits: not a number of qubits ({qubits!r}); give 0 to 128", argument="qubits")
-    return count
-
-
-def _whole(value: object) -> int | None:
-    if isinstance(value, bool):
-        return None
-    try:
-        return _operator.index(value)  # type: ignore[arg-type]
-    except TypeError:
-        return None
-
-
-def _number(argument: str, value: float) -> float:
-    try:
-        return float(value)
-    except (TypeError, ValueError, OverflowError):
-        raise RotationError(f"{argument}: not a number ({value!r}); give radians", argument=argument) from None
-
-
-def _objects(values: list[int]) -> npt.NDArray[np.object_]:
-    array = np.empty(len(values), dtype=object)
-    array[:] = values
-    return array
+        found = self._circuit.frame()
+        frame = "" if found is None else f", frame={found[0].count}, relabelling={tuple(found[1])}"
+        size = f"count={self.count}, qubits={self.qubits}, blocks={len(self.blocks)}"
+        return f"Rotations({size}, phase={self.phase!r}{frame})"

@@ -14,6 +14,7 @@ import numpy as np
 import numpy.typing as npt
 
 from trueturn import _allocation, _memory, _native, _threads
+from trueturn._arrays import shared_array
 from trueturn._product import site_amplitudes
 from trueturn.errors import (
     ArgumentError,
@@ -148,12 +149,13 @@ class State:
         return made
 
     @classmethod
-    def from_array(cls, array: npt.NDArray[Any]) -> State:
+    def from_array(cls, array: Any) -> State:
         """Return a state over an array of the caller's: no copy, the array itself is evolved.
 
         Parameters
         ----------
         array : ndarray, shape (2**n,), complex128 or complex64, C-contiguous, aligned, writeable
+            Or an array of another library that shares its memory by DLPack or the array interface.
 
         Raises
         ------
@@ -164,6 +166,15 @@ class State:
         ArgumentError
             An amplitude is not finite.
         """
+        try:
+            shared = shared_array(array)
+        except TypeError as failure:
+            raise StateTypeError(
+                f"array: {failure} ({type(array).__name__}); move it to the processor, or give a copy",
+                dtype=type(array),
+                expected="complex128 or complex64",
+            ) from None
+        array = array if shared is None else shared  # what shares no memory is refused by the core
         norms = _native.squared_norms(array, 1 if np.size(array) < 1 << 16 else _threads.resolve(None))
         if not np.isfinite(norms).all():
             raise ArgumentError(
@@ -186,15 +197,16 @@ class State:
         """
         try:
             held = np.load(path, mmap_mode="r", allow_pickle=False)
+            if isinstance(held, np.ndarray):
+                _memory.require(held.nbytes, "load", 1)
+                held = np.load(path, allow_pickle=False)  # read, not mapped: pages of the file would count as ours
         except (OSError, ValueError, EOFError) as failure:
             raise ArgumentError(
                 f"path: cannot be read as an NPY file ({os.fspath(path)}: {failure}); give a file that State.save wrote",
                 argument="path",
                 value=path,
             ) from None
-        if isinstance(held, np.ndarray):
-            _memory.require(held.nbytes, "load", 1)
-        return cls.from_array(np.array(held, order="C"))
+        return cls.from_array(np.ascontiguousarray(held))
 
     def save(self, path: str | os.PathLike[str]) -> None:
         """Write the amplitudes to an NPY file, under a temporary name that is renamed when complete."""
@@ -223,6 +235,20 @@ class State:
                 "state: spoiled by a second interrupt half-way through a pass; make it again from its start"
             )
         return self._array
+
+    @property
+    def __array_interface__(self) -> dict[str, Any]:
+        """Share the amplitudes with whatever reads NumPy's array interface; no copy."""
+        return dict(self.amplitudes.__array_interface__)
+
+    def __dlpack__(self, **options: Any) -> Any:
+        """Share the amplitudes by DLPack; no copy, unless the options ask for one."""
+        return self.amplitudes.__dlpack__(**options)
+
+    def __dlpack_device__(self) -> tuple[int, int]:
+        """The processor."""
+        device: tuple[int, int] = self.amplitudes.__dlpack_device__()
+        return device
 
     @property
     def qubits(self) -> int:

@@ -29,6 +29,10 @@ pub fn to_python(py: Python<'_>, error: Error) -> PyErr {
         Error::Operator { argument, .. } | Error::Rotation { argument, .. } | Error::Argument { argument, .. } => {
             details.set_item("argument", argument)
         }
+        Error::Qasm { file, line, column, .. } => details
+            .set_item("path", file)
+            .and_then(|()| details.set_item("line", line))
+            .and_then(|()| details.set_item("column", column)),
         Error::StateShape { found, expected } => {
             details.set_item("shape", found).and_then(|()| details.set_item("expected", expected))
         }
@@ -49,6 +53,7 @@ pub fn to_python(py: Python<'_>, error: Error) -> PyErr {
         Error::Term { .. } => "TermError",
         Error::Operator { .. } => "OperatorError",
         Error::Rotation { .. } => "RotationError",
+        Error::Qasm { .. } => "QasmError",
         Error::Argument { .. } => "ArgumentError",
         Error::StateShape { .. } => "StateShapeError",
         Error::StateType { .. } => "StateTypeError",

@@ -2,7 +2,9 @@
 
 mod arrays;
 mod error;
+pub mod gates;
 mod gateway;
+pub mod qasm;
 pub mod rotations;
 pub mod state;
 pub mod terms;
@@ -12,6 +14,10 @@ use pyo3::prelude::*;
 /// The compiled core of trueturn; users import `trueturn`, never this.
 #[pymodule]
 mod _native {
+    #[pymodule_export]
+    use super::gates::{PyGateOptions, gate_counts, global_phase, rung_counts, write_gates};
+    #[pymodule_export]
+    use super::qasm::read_qasm;
     #[pymodule_export]
     use super::rotations::PyRotations;
     #[pymodule_export]

@@ -1,11 +1,15 @@
 //! `trueturn._native.Rotations`: the circuit behind `trueturn.Rotations`.
 
+use std::f64::consts::FRAC_PI_4;
+
 use numpy::{PyArray1, PyReadonlyArray1};
 use pyo3::prelude::*;
 
 use super::error::to_python;
+use crate::clifford::{Clifford, Turn};
 use crate::error::{Error, Result};
 use crate::evolve::Planned;
+use crate::frame::Frame;
 use crate::kernel::lanes::Real;
 use crate::operation::joined;
 use crate::pauli::PauliString;
@@ -72,6 +76,38 @@ impl PyRotations {
 
     fn times(&self, py: Python<'_>, repeat: u64) -> PyResult<Self> {
         made(py, self.rotations.times(repeat))
+    }
+
+    /// The circuit followed by rotations by multiples of π/4, given as whole numbers, by a phase in the same unit, and by
+    /// a relabelling.
+    fn with_frame(
+        &self,
+        py: Python<'_>,
+        x: Vec<u128>,
+        z: Vec<u128>,
+        turns: Vec<u8>,
+        eighths: u8,
+        relabelling: Vec<u32>,
+    ) -> PyResult<Self> {
+        let mut clifford = Clifford::identity(self.rotations.qubits());
+        for ((x, z), turns) in x.into_iter().zip(z).zip(turns) {
+            clifford.turn(Turn { string: PauliString { x, z }, turns });
+        }
+        clifford.phase(eighths);
+        made(py, self.rotations.with_frame(&Frame::new(clifford, relabelling)))
+    }
+
+    /// The frame's Clifford as rotations with their phase, and where each qubit goes; None without a frame.
+    fn frame(&self, py: Python<'_>) -> PyResult<Option<(Self, Vec<u32>)>> {
+        let Some(frame) = self.rotations.frame() else { return Ok(None) };
+        let phase = f64::from(frame.eighths()) * FRAC_PI_4;
+        let clifford = made(py, Rotations::from_list(self.rotations.qubits(), frame.rotations(), phase))?;
+        Ok(Some((clifford, frame.relabelling().to_vec())))
+    }
+
+    /// The circuit on its first qubits only; None where it does something to others.
+    fn narrowed(&self, qubits: u32) -> Option<Self> {
+        self.rotations.narrowed(qubits).map(|rotations| Self { rotations })
     }
 
     fn inverse(&self) -> Self {

@@ -133,6 +133,11 @@ impl PyTerms {
         Ok(PyArray1::from_iter(py, groups.into_iter().map(|group| group as i64)))
     }
 
+    /// A bound on the spectral norm from groups of anticommuting strings, and the number of groups.
+    fn anticommuting_norm(&self, py: Python<'_>) -> PyResult<(f64, usize)> {
+        run_checked(py, |check| self.terms.anticommuting_norm(check))
+    }
+
     fn relabelled(&self, py: Python<'_>, new_names: Vec<u32>) -> PyResult<Self> {
         run_checked(py, |_| self.terms.relabelled(&new_names).map(Self::from))
     }

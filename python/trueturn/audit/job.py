@@ -12,28 +12,29 @@ import tomllib
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from importlib import resources
-from itertools import pairwise
 from pathlib import Path
 from typing import TYPE_CHECKING
 
+from trueturn.audit.base_candidate import BaseCandidate
 from trueturn.audit.candidate import Candidate
+from trueturn.audit.job_candidates import read_candidates, read_planned
+from trueturn.audit.job_device import Device, read_device
 from trueturn.audit.job_system import Start, read_start, read_system
-from trueturn.audit.job_table import Table, nearest
-from trueturn.errors import FormulaError, JobError
-from trueturn.formulas import Formula, formula, formulas, read_formulas
-from trueturn.formulas.structure import require_structure
+from trueturn.audit.job_table import Table
+from trueturn.audit.job_target import read_target
+from trueturn.errors import JobError
 from trueturn.operator import Operator
-from trueturn.partition_rules import RULES
 
 if TYPE_CHECKING:
     from trueturn.audit.result import Audit
+    from trueturn.planning.job import PlanTask
+    from trueturn.planning.result import Plan
     from trueturn.reference import Reference
 
 __all__ = ["Job", "built_in_job", "read_job", "template"]
 
-SECTIONS = ("system", "start", "target", "candidate", "reference", "output", "run")
+SECTIONS = ("system", "start", "target", "candidate", "plan", "device", "reference", "output", "run")
 METHODS = ("chebyshev", "krylov", "dense")
-EXAMPLE_CANDIDATE = '[[candidate]] with formula = "strang", rule = "commuting", steps = "least"'
 
 Progress = Callable[[str, float, float], None]
 
@@ -48,17 +49,20 @@ class Job:
         The job file; None for the built-in job.
     operator : Operator
         The Hamiltonian.
-    start : Start
-        The start state; `start.state()` makes it.
+    start : Start or None
+        The start state; `start.state()` makes it. None where it is left out, for ``quantity="operator"``
+        or with ``start_required=False``.
     times : tuple of float
         Ascending and above zero.
     tolerance : float
-    quantity : "observables" or "state"
+    quantity : "observables", "state" or "operator"
     readout : "along" or "separate"
     relative_to : None or "norm"
     observables : mapping of str to Operator
-    candidates : tuple of Candidate
+    candidates : tuple of Candidate, or GivenCircuit where files of circuits took their place
         Empty only when read with ``candidates_required=False``.
+    planned : PlanTask or None
+        What `[plan]` asks for; without it the formulas and rules of the candidates. None where there is neither.
     reference_tolerance : float or None
         None leaves the choice to `trueturn.audit.run.audit`.
     reference_method : str
@@ -68,18 +72,21 @@ class Job:
     most_steps : int
         Where a search for the least step count gives up.
     title, energy_unit : str
+    device : Device or None
+        What the circuits run on; None where the job does not say.
     """
 
     path: Path | None
     operator: Operator
-    start: Start
+    start: Start | None
     times: tuple[float, ...]
     tolerance: float
     quantity: str
     readout: str
     relative_to: str | None
     observables: Mapping[str, Operator]
-    candidates: tuple[Candidate, ...]
+    candidates: tuple[BaseCandidate, ...]
+    planned: PlanTask | None
     reference_tolerance: float | None
     reference_method: str
     folder: Path | None
@@ -87,6 +94,12 @@ class Job:
     most_steps: int
     title: str
     energy_unit: str
+    device: Device | None = None
+
+    @property
+    def formula_candidates(self) -> tuple[Candidate, ...]:
+        """The candidates that are formulas: those that theorems, plans and files of circuits know of."""
+        return tuple(candidate for candidate in self.candidates if isinstance(candidate, Candidate))
 
     def audit(self, threads: int | None = None, progress: Progress | None = None) -> Audit:
         """Run the audit.
@@ -106,7 +119,7 @@ class Job:
 
         return audit(
             self.operator,
-            self.start.state(),
+            None if self.start is None else self.start.state(),
             self.times,
             self.candidates,
             self.tolerance,
@@ -120,27 +133,109 @@ class Job:
             threads=self.threads if threads is None else threads,
             progress=progress,
             title=self.title,
-            start=self.start.words,
+            start="" if self.start is None else self.start.words,
             energy_unit=self.energy_unit,
         )
 
-    def reference(self, threads: int | None = None, progress: Progress | None = None) -> Reference:
-        """Compute only the certified reference; the parameters are those of `audit`."""
+    def plan(self, threads: int | None = None, progress: Progress | None = None) -> Plan:
+        """Search the ways of `planned` for their least step counts; the parameters are those of `audit`.
+
+        Raises
+        ------
+        JobError
+            There is nothing to search: neither `[plan]` nor a candidate.
+        """
+        from trueturn.planning.run import plan
+
+        task = self.planned
+        if task is None:
+            raise JobError(
+                'plan: missing; add a section [plan] with formulas = ["strang", "suzuki-4"], or candidates',
+                path=str(self.path or ""),
+                key="plan",
+            )
+        return plan(
+            self.operator,
+            None if self.start is None else self.start.state(),
+            self.times,
+            task.formulas,
+            task.rules,
+            self.tolerance,
+            quantity=self.quantity,
+            observables=self.observables,
+            orderings=task.orderings,
+            cost=task.cost,
+            synthesis_error=task.synthesis_error,
+            device=None if self.device is None else self.device.hardware,
+            thorough=task.thorough,
+            bounds=task.bounds,
+            readout=self.readout,
+            relative_to=self.relative_to,
+            reference_tolerance=self.reference_tolerance,
+            reference_method=self.reference_method,
+            most_steps=self.most_steps,
+            threads=self.threads if threads is None else threads,
+            progress=progress,
+            title=self.title,
+            start="" if self.start is None else self.start.words,
+            energy_unit=self.energy_unit,
+        )
+
+    def required_start(self) -> Start:
+        """Return the start, for what evolves a state.
+
+        Raises
+        ------
+        JobError
+            There is none.
+        """
+        if self.start is None:
+            raise JobError(
+                "start: missing; a state is evolved here: add a section [start]",
+                path=str(self.path or ""),
+                key="start",
+            )
+        return self.start
+
+    def reference(
+        self,
+        threads: int | None = None,
+        progress: Progress | None = None,
+        *,
+        into: Path | None = None,
+        keep: str = "last",
+    ) -> Reference:
+        """Compute only the certified reference.
+
+        Parameters
+        ----------
+        threads, progress
+            As for `audit`.
+        into : Path, optional
+            Write a reference folder there.
+        keep : "last" or "all"
+            Which states to keep, or with `into` to write.
+        """
         from trueturn.reference import reference
 
+        start = self.required_start()
         return reference(
             self.operator,
-            self.start.state(),
+            start.state(),
             self.times,
             tolerance=1e-10 if self.reference_tolerance is None else self.reference_tolerance,
             observables=self.observables,
             method=self.reference_method,
+            keep=keep,
             threads=self.threads if threads is None else threads,
             progress=progress,
+            into=into,
+            title=self.title,
+            start=start.words,
         )
 
 
-def read_job(path: str | Path, *, candidates_required: bool = True) -> Job:
+def read_job(path: str | Path, *, candidates_required: bool = True, start_required: bool = True) -> Job:
     """Read and check a job file.
 
     Parameters
@@ -149,6 +244,8 @@ def read_job(path: str | Path, *, candidates_required: bool = True) -> Job:
         The TOML file. Paths in it are taken from its own folder.
     candidates_required : bool
         Whether a job without candidates is an error; a reference needs none.
+    start_required : bool
+        Whether a job without `[start]` is an error; bounds need none.
 
     Returns
     -------
@@ -172,7 +269,7 @@ def read_job(path: str | Path, *, candidates_required: bool = True) -> Job:
     except OSError as error:
         message = f"job file: cannot be read ({error.strerror or error}); check the path and its permissions"
         raise JobError(message, path=str(path), key="") from error
-    return parse_job(text, path, candidates_required)
+    return parse_job(text, path, candidates_required, start_required)
 
 
 def template() -> str:
@@ -191,36 +288,26 @@ def built_in_job() -> Job:
     return parse_job(template(), None, True)
 
 
-def parse_job(text: str, path: Path | None, candidates_required: bool) -> Job:
+def parse_job(text: str, path: Path | None, candidates_required: bool, start_required: bool = True) -> Job:
     """Check the text of a job file; `path` is where it came from."""
     shown = str(path) if path is not None else ""
     file = Table(parse_toml(text, shown), "", shown)
     file.only(SECTIONS)
     for key, example in (
         ("system", "a section [system]"),
-        ("start", "a section [start]"),
         ("target", "[target]"),
     ):
         file.require(key, example)
     folder = path.parent if path is not None else Path()
 
     operator = read_system(file.table("system"), folder)
-    start = read_start(file.table("start"), operator.qubits, folder)
-    target = file.table("target")
-    target.only(("times", "time", "tolerance", "quantity", "readout", "relative_to", "observables"))
-    times = read_times(target)
-    tolerance = target.positive("tolerance", "tolerance = 0.01")
-    quantity = target.choice("quantity", ("observables", "state"), default="observables")
-    readout = target.choice("readout", ("along", "separate"), default="along")
-    relative_to = target.choice("relative_to", ("norm",)) if "relative_to" in target else None
-    if relative_to is not None and quantity == "state":
-        raise target.error("relative_to", "has no meaning for states, whose norm is 1", "take it out")
-    observables = read_observables(target, operator.qubits)
-    if quantity == "observables" and not observables:
-        remedy = 'add [target.observables] with a line such as edge = "Z_0", or set quantity = "state"'
-        raise target.error("observables", "missing", remedy)
-
+    section = file.table("target")
+    if start_required and section.values.get("quantity") != "operator":
+        file.require("start", 'a section [start], or quantity = "operator" in [target] for every start at once')
+    start = read_start(file.table("start"), operator.qubits, folder) if "start" in file else None
+    target = read_target(section, operator.qubits)
     candidates = read_candidates(file, operator, folder, candidates_required)
+    planned = read_planned(file, operator, target.tolerance, folder, candidates)
     reference = Table(file.table("reference").values if "reference" in file else {}, "reference", shown)
     reference.only(("tolerance", "method"))
     output = Table(file.table("output").values if "output" in file else {}, "output", shown)
@@ -231,13 +318,9 @@ def parse_job(text: str, path: Path | None, candidates_required: bool) -> Job:
         path=path,
         operator=operator,
         start=start,
-        times=times,
-        tolerance=tolerance,
-        quantity=quantity,
-        readout=readout,
-        relative_to=relative_to,
-        observables=observables,
+        **target._asdict(),
         candidates=candidates,
+        planned=planned,
         reference_tolerance=(
             reference.positive("tolerance", "tolerance = 1e-10") if "tolerance" in reference else None
         ),
@@ -247,6 +330,7 @@ def parse_job(text: str, path: Path | None, candidates_required: bool) -> Job:
         most_steps=run.whole("most_steps", "most_steps = 100000") if "most_steps" in run else 1_000_000,
         title=run.text("title", 'title = "My quench"') if "title" in run else (path.stem if path else ""),
         energy_unit=run.text("energy_unit", 'energy_unit = "J"') if "energy_unit" in run else "",
+        device=read_device(file, operator.qubits),
     )
 
 
@@ -269,87 +353,3 @@ def parse_toml(text: str, path: str) -> dict[str, object]:
     except (ValueError, RecursionError) as error:  # integers of thousands of digits, brackets nested a thousand deep
         message = f"job file: cannot be read ({str(error)[:60]}); write shorter numbers and fewer nested brackets"
         raise JobError(message, path=path, key="") from error
-
-
-def read_times(target: Table) -> tuple[float, ...]:
-    """Read `times`, or `time` for a single one; ascending and above zero."""
-    if ("times" in target) == ("time" in target):
-        wrong = "given together with time" if "times" in target else "missing"
-        raise target.error("times", wrong, "write times = [0.5, 1.0], or time = 1.0 for a single one")
-    if "time" in target:
-        return (target.positive("time", "time = 1.0"),)
-    example = "times = [0.5, 1.0]"
-    values = target.values["times"]
-    if not isinstance(values, list):
-        raise target.error("times", "not a list", f"write {example}, or time = 1.0", values)
-    if not values:
-        raise target.error("times", "empty", f"write {example}")
-    times = [target.checked_number("times", value, example, index) for index, value in enumerate(values)]
-    if times[0] <= 0 or any(later <= earlier for earlier, later in pairwise(times)):
-        raise target.error("times", "not ascending from above zero", f"write for instance {example}", times)
-    return tuple(times)
-
-
-def read_observables(target: Table, qubits: int) -> dict[str, Operator]:
-    """Read `[target.observables]`: names with operator text on the qubits of the system."""
-    if "observables" not in target:
-        return {}
-    section = target.table("observables")
-    observables = {}
-    for name in section.values:
-        text = section.text(name, f'{name} = "Z_0 Z_1"')
-        with section.blame(name):
-            observables[name] = Operator(text, qubits=qubits)
-    return observables
-
-
-def read_candidates(file: Table, operator: Operator, folder: Path, required: bool) -> tuple[Candidate, ...]:
-    """Read every `[[candidate]]`, and try its rule on the operator."""
-    entries = file.values.get("candidate", [])
-    if not isinstance(entries, list) or not all(isinstance(entry, dict) for entry in entries):
-        raise file.error("candidate", "not a list of sections", f"write {EXAMPLE_CANDIDATE}")
-    if not entries and required:
-        raise file.error("candidate", "missing", f"add {EXAMPLE_CANDIDATE}")
-    candidates = []
-    for index, entry in enumerate(entries, start=1):
-        section = Table(entry, f"candidate[{index}]", file.path)
-        section.only(("formula", "formula_file", "rule", "steps"))
-        name = section.text("formula", 'formula = "strang"')
-        chosen = own_formula(section, name, folder) if "formula_file" in section else known_formula(section, name)
-        rule = section.choice("rule", tuple(RULES), default="commuting")
-        candidate = Candidate(chosen, rule=rule, steps=read_steps(section))
-        with section.blame("rule"):
-            require_structure(chosen, candidate.partition(operator))
-        candidates.append(candidate)
-    return tuple(candidates)
-
-
-def known_formula(section: Table, name: str) -> Formula:
-    """Find a formula by name; an unknown one is refused with the nearest that is known."""
-    try:
-        return formula(name)
-    except FormulaError as error:
-        raise section.error("formula", "unknown", nearest(name, formulas(special=True)), name) from error
-
-
-def own_formula(section: Table, name: str, folder: Path) -> Formula:
-    """Find a formula in the file that `formula_file` names; what is wrong in there is told with its own key."""
-    file = section.text("formula_file", 'formula_file = "mine.toml"')
-    try:
-        found = {one.name: one for one in read_formulas(folder / file)}
-    except JobError as error:
-        full = section.full("formula_file")
-        raise JobError(f"{full}: {file}: {error}", path=section.path, key=full) from error
-    if name not in found:
-        raise section.error("formula", f"not in {file}", nearest(name, tuple(found)), name)
-    return found[name]
-
-
-def read_steps(section: Table) -> int | str:
-    """Read `steps`: a positive whole number or ``"least"``."""
-    value = section.values.get("steps", "least")
-    if value == "least":
-        return "least"
-    if isinstance(value, str):
-        raise section.error("steps", "neither a number nor least", 'write steps = 20 or steps = "least"', value)
-    return section.whole("steps", 'steps = 20 or steps = "least"')

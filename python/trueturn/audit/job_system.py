@@ -32,6 +32,7 @@ STRENGTHS = {
     "hubbard": (("hopping", "repulsion"), ("potential",)),
 }
 ON_BONDS = ("zz", "xx", "yy", "coupling", "hopping")
+FCIDUMP = ("encoding", "frozen", "window", "order", "drop_parity_qubits", "spin_orbitals")
 WORDS = ("0", "1", "+", "-", "+i", "-i")
 
 
@@ -70,13 +71,20 @@ class Start:
 
 def read_system(section: Table, folder: Path) -> Operator:
     """Read the Hamiltonian from `[system]`; a file is looked up from `folder`."""
-    given = [key for key in ("terms", "file", "model") if key in section]
+    given = [key for key in ("terms", "file", "fcidump", "model") if key in section]
     if len(given) != 1:
         found = " and ".join(given) if given else "none"
-        raise section.error("", f"needs exactly one of terms, file or model ({found} given)", "keep one of them")
+        raise section.error(
+            "", f"needs exactly one of terms, file, fcidump or model ({found} given)", "keep one of them"
+        )
     if given == ["model"]:
         return read_model(section)
-    section.only(("terms", "file", "qubits"), {key: "goes with a model only" for key in model_keys()})
+    if given == ["fcidump"]:
+        return read_molecule(section, folder)
+    foreign = {key: "goes with fcidump only" for key in FCIDUMP} | {
+        key: "goes with a model only" for key in model_keys()
+    }
+    section.only(("terms", "file", "qubits"), foreign)
     qubits = section.whole("qubits", "qubits = 8") if "qubits" in section else None
     if given == ["terms"]:
         text = section.text("terms", 'terms = "-1.0 Z_0 Z_1 + 0.5 X_0"')
@@ -90,6 +98,35 @@ def read_system(section: Table, folder: Path) -> Operator:
         return operator
     with section.blame("qubits"):
         return Operator.from_masks(operator.x_masks, operator.z_masks, operator.coefficients, qubits)
+
+
+def read_molecule(section: Table, folder: Path) -> Operator:
+    """Read the Hamiltonian of a molecule from an FCIDUMP file."""
+    from trueturn.chemistry import ENCODINGS, read_fcidump
+
+    foreign = {key: "goes with a model only" for key in model_keys()}
+    section.only(("fcidump", *FCIDUMP), foreign | {"qubits": "not used with fcidump, whose orbitals fix the qubits"})
+    path = folder / section.text("fcidump", 'fcidump = "molecule.fcidump"')
+    require_file(section, path, "fcidump")
+    options: dict[str, Any] = {key: read_orbitals(section, key) for key in ("frozen", "window") if key in section}
+    if "order" in section:
+        options["order"] = section.choice("order", ("interleaved", "blocked"))
+    encoding = section.choice("encoding", ENCODINGS, default="jordan-wigner")
+    for key in ("drop_parity_qubits", "spin_orbitals"):
+        options[key] = section.flag(key, False)
+    with section.blame("", fallback="fcidump"):
+        return read_fcidump(path, encoding, **options)
+
+
+def read_orbitals(section: Table, key: str) -> int | list[int]:
+    """Read orbitals: a count, or a list of numbers from 0."""
+    example = f"{key} = 2, or a list of orbitals counted from 0"
+    value = section.require(key, example)
+    if not isinstance(value, list):
+        return section.whole(key, example, least=0)
+    if not all(type(orbital) is int for orbital in value):
+        raise section.error(key, "not a list of whole numbers", f"write {example}", value)
+    return value
 
 
 def model_keys() -> tuple[str, ...]:
@@ -223,11 +260,11 @@ def read_sites(section: Table, key: str) -> list[Site]:
     return sites
 
 
-def require_file(section: Table, path: Path) -> None:
+def require_file(section: Table, path: Path, key: str = "file") -> None:
     """Refuse a path that is no file, naming it as the job does."""
     if not path.is_file():
         wrong = "is a folder" if path.is_dir() else "no such file"
-        raise section.error("file", wrong, "the path is taken from the job file's own folder", section.values["file"])
+        raise section.error(key, wrong, "the path is taken from the job file's own folder", section.values[key])
 
 
 def require_amplitudes(section: Table, path: Path, qubits: int) -> None:

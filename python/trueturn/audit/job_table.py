@@ -13,7 +13,7 @@ from collections.abc import Iterator, Mapping, Sequence
 from contextlib import contextmanager
 from typing import Any
 
-from trueturn.errors import JobError, TrueturnError
+from trueturn.errors import JobError, MemoryRefusedError, TrueturnError
 
 __all__ = ["Table", "clip", "nearest"]
 
@@ -64,20 +64,23 @@ class Table:
         return JobError(f"{full}: {wrong}{shown}; {remedy}", path=self.path, key=full)
 
     @contextmanager
-    def blame(self, key: str) -> Iterator[None]:
-        """Turn an error of the layers below into a `JobError` that names the key, with the cause attached."""
+    def blame(self, key: str, fallback: str = "") -> Iterator[None]:
+        """Turn an error of the layers below into a `JobError` that names the key, with the cause attached.
+
+        Without a key it is the one that the error itself names, or `fallback` where the table has none of that name.
+        """
         try:
             yield
-        except JobError:
+        except (JobError, MemoryRefusedError):  # a refusal for memory has an exit status of its own
             raise
         except TrueturnError as error:
             name, text = split_name(str(error))
-            if not key and name in self.values:
-                key = name
+            if not key:
+                key = name if name in self.values else fallback
             full = self.full(key) if key else self.name
             raise JobError(f"{full}: {text}", path=self.path, key=full) from error
         except OSError as error:
-            raise self.error(key, "cannot be read", "check the file", error.strerror or error) from error
+            raise self.error(key or fallback, "cannot be read", "check the file", error.strerror or error) from error
 
     def only(self, known: Sequence[str], foreign: Mapping[str, str] | None = None) -> None:
         """Refuse a key that is not known, with the nearest that is.

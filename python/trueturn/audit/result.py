@@ -8,7 +8,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
-    from trueturn.audit.candidate import Candidate
+    from trueturn.audit.base_candidate import BaseCandidate
     from trueturn.operator import Operator
     from trueturn.reference import Reference
 
@@ -21,8 +21,9 @@ Interval = tuple[float, float]
 class PointError:
     """The error of one figure at one time.
 
-    `name` is the observable, or ``"state"``. `value` is what the candidate gives and `reference` what the reference
-    gives (both ``nan`` for the state, which has no single value); `error` is the interval that holds the true error.
+    `name` is the observable, ``"state"`` or ``"operator"``. `value` is what the candidate gives and `reference` what the
+    reference gives (both ``nan`` for the latter two, which have no single value); `error` is the interval that holds the
+    true error.
     """
 
     time: float
@@ -34,12 +35,12 @@ class PointError:
 
 @dataclass(frozen=True)
 class Trial:
-    """One step count that was run: the largest error over times and observables, and what it costs."""
+    """One step count that was run: the largest error over times and observables, and what it costs (None: not known)."""
 
     steps: int
     error: Interval
     verdict: str
-    two_qubit_gates: int
+    two_qubit_gates: int | None
 
 
 @dataclass(frozen=True)
@@ -48,9 +49,9 @@ class Row:
 
     Attributes
     ----------
-    candidate : Candidate
+    candidate : Candidate, or what `Candidate.from_rotations` and `Candidate.from_callable` make
     label : str
-        Formula and partition rule, for tables: ``"strang, commuting"``.
+        Formula and partition rule, for tables: ``"strang, commuting"``; or the name of a circuit or an implementation.
     steps : int
         Steps to the last time (``readout="along"``) or to each time (``"separate"``). Where ``least`` was asked and
         no step count within the limit met the tolerance, the largest that was tried.
@@ -60,12 +61,14 @@ class Row:
         Proven upper bound on the same error, or None where no theorem at hand covers the formula.
     bound_source : str
         Theorem and paper of `bound`, or why there is none.
-    rotations, two_qubit_gates, depth : int
+    rotations, two_qubit_gates, depth : int or None
         Cost of the circuits of this candidate: rotations after merging, 2(w-1) two-qubit gates for a rotation of
-        weight w, and depth in two-qubit gates. For ``readout="separate"`` the cost of the longest circuit.
+        weight w, and depth in two-qubit gates. For ``readout="separate"`` the cost of the longest circuit. None for an
+        implementation of the user's, whose circuit is not known.
     verdict : "meets", "misses" or "undecided"
     rounding : float
-        Bound on the 2-norm error that rounding added to the candidate's state, included in `error`.
+        Bound on the 2-norm error that rounding added to the candidate's state, included in `error`. 0 for an
+        implementation of the user's: its rounding is part of what is judged.
     points : tuple of PointError
         Every figure at every requested time, at `steps`.
     trials : tuple of Trial
@@ -76,15 +79,15 @@ class Row:
         Anything the reader must know about this row; may be empty.
     """
 
-    candidate: Candidate
+    candidate: BaseCandidate
     label: str
     steps: int
     error: Interval
     bound: float | None
     bound_source: str
-    rotations: int
-    two_qubit_gates: int
-    depth: int
+    rotations: int | None
+    two_qubit_gates: int | None
+    depth: int | None
     verdict: str
     rounding: float
     points: tuple[PointError, ...]
@@ -108,7 +111,7 @@ class Audit:
     verdict : str
         ``"meets"`` where some row does; else ``"undecided"`` where some row is; else ``"misses"``.
     reference : Reference
-    quantity : "observables" or "state"
+    quantity : "observables", "state" or "operator"
     tolerance : float
     relative_to : None or "norm"
     times : tuple of float

@@ -4,35 +4,40 @@ from __future__ import annotations
 
 import math
 import time as clock
-from collections.abc import Callable, Iterable, Mapping, Sequence
+from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import dataclass
 from numbers import Real
 
 from trueturn import _memory, _threads
 from trueturn._observables import named_operators
-from trueturn.accuracy.bounds import bound
+from trueturn.accuracy.difference import DENSE_QUBITS
 from trueturn.audit import words
-from trueturn.audit.candidate import Candidate
-from trueturn.audit.measure import Bench, Measured
-from trueturn.audit.result import Audit, Row, Trial
-from trueturn.audit.search import least_steps
+from trueturn.audit.base_candidate import BaseCandidate
+from trueturn.audit.implementation import Implementation
+from trueturn.audit.measure import Bench
+from trueturn.audit.operator_measure import OperatorBench
+from trueturn.audit.result import Audit, Row
+from trueturn.audit.runs import Chosen, Runs
 from trueturn.audit.truth import Progress, positive_times, reference_for
-from trueturn.errors import ArgumentError, AuditError, FormulaError, ToleranceError
-from trueturn.formulas import Formula
+from trueturn.errors import ArgumentError, AuditError, ToleranceError
 from trueturn.operator import Operator
 from trueturn.partition import Partition
+from trueturn.randomised.checks import checked_operator
 from trueturn.state import State, require_same_qubits
 
 __all__ = ["audit"]
 
-QUANTITIES = ("observables", "state")
+QUANTITIES = ("observables", "state", "operator")
 READOUTS = ("along", "separate")
+BOUND_EFFORT = 1 / 16
+"""Share of the usual work that the proven bound of a row may take: half a second; `bound` itself gives tighter ones."""
 
 
 def audit(
     operator: Operator,
-    state: State,
+    state: State | None,
     times: float | Iterable[float],
-    candidates: Sequence[Candidate],
+    candidates: Sequence[BaseCandidate],
     tolerance: float,
     quantity: str = "observables",
     observables: Mapping[str, Operator] | None = None,
@@ -54,17 +59,21 @@ def audit(
     ----------
     operator : Operator
         The Hamiltonian; ħ = 1.
-    state : State
-        Start; not written.
+    state : State or None
+        Start; not written. With ``quantity="operator"`` every start counts, and None will do.
     times : float or iterable of float
         Positive, in inverse units of the coefficients.
     candidates : sequence of Candidate
+        Formulas with a rule and steps; `Candidate.from_rotations` and `Candidate.from_callable` make candidates of given
+        circuits and of a user's own implementation, whose operator error is not judged.
     tolerance : float
         On the largest error over times and observables; absolute.
-    quantity : "observables" or "state"
-        Largest |<O>_S - <O>| over `observables`, or ‖ψ_S - ψ‖ with the global phase kept.
+    quantity : "observables", "state" or "operator"
+        Largest |<O>_S - <O>| over `observables`; ‖ψ_S - ψ‖ with the global phase kept; or ‖S - exp(-iHt)‖ in the spectral
+        norm, for all starts at once: by whole matrices up to 10 qubits, else by power iteration, whose upper ends hold with
+        a probability of at least 0.999 each (`operator_error`).
     observables : mapping of str to Operator
-        Needed for ``quantity="observables"``.
+        Needed for ``quantity="observables"``; not used for ``"operator"``.
     readout : "along" or "separate"
         One circuit of `steps` equal steps to the last time, read on the way; or a circuit of `steps` steps for each time.
     relative_to : None or "norm"
@@ -73,6 +82,7 @@ def audit(
         Error bound asked of the reference state. Default 1e-10, or a hundredth of `tolerance` where that is less; where
         double precision cannot certify so much but can certify a hundredth of `tolerance`, what it can.
     reference_method : "chebyshev", "krylov" or "dense"
+        Not asked for ``quantity="operator"``, which takes dense up to 10 qubits and Chebyshev beyond.
     most_steps : int
         Where a search for the least step count gives up.
     threads : int, optional
@@ -93,7 +103,8 @@ def audit(
         The tolerance is not positive, or below what double precision can certify.
     MemoryRefusedError
         The vectors needed do not fit: start, reference and one work vector at a time, and for
-        ``quantity="state"`` one reference state for each time.
+        ``quantity="state"`` one reference state for each time, and two more for an implementation of the user's. For
+        ``quantity="operator"`` six vectors, or up to 10 qubits six matrices and one for each time.
 
     Notes
     -----
@@ -110,19 +121,123 @@ def audit(
     'meets'
     """
     began = clock.perf_counter()
-    watched = named_operators(observables)
-    asked = sorted(set(positive_times(times)))
-    _check(operator, state, candidates, tolerance, quantity, watched, readout, relative_to, most_steps)
-    workers = _threads.resolve(threads)
-    partitions = [candidate.partition(operator) for candidate in candidates]
-    _memory.require(
-        (2 + (len(asked) if quantity == "state" else 1)) * (16 << state.qubits),
-        "audit",
-        lambda n: (2 + (len(asked) if quantity == "state" else 1)) * (16 << n),
-    )
-    truth = reference_for(
+    setting = prepare(
         operator,
         state,
+        times,
+        candidates,
+        tolerance,
+        quantity,
+        observables,
+        readout,
+        relative_to=relative_to,
+        reference_tolerance=reference_tolerance,
+        reference_method=reference_method,
+        most_steps=most_steps,
+        threads=threads,
+        progress=progress,
+    )
+    seconds = {"reference": clock.perf_counter() - began}
+    rows = []
+    for number, (candidate, partition) in enumerate(zip(candidates, setting.partitions, strict=True)):
+        started = clock.perf_counter()
+
+        def tell(steps: int, candidate: BaseCandidate = candidate, number: int = number) -> None:
+            if progress is not None:
+                progress(f"{candidate.label}: {steps} steps", number, len(candidates))
+
+        runs = Runs(setting.bench, candidate, partition)
+        if isinstance(candidate.steps, int):
+            tell(candidate.steps)
+            runs.run(candidate.steps)
+            chosen = Chosen(candidate.steps)
+        else:
+            chosen = runs.search(most_steps, tell)
+        rows.append(runs.row(chosen, BOUND_EFFORT))
+        seconds[f"candidate {number + 1}"] = clock.perf_counter() - started
+    if progress is not None:
+        progress("done", len(candidates), len(candidates))
+    return setting.concluded(rows, seconds, title=title, start=start, energy_unit=energy_unit)
+
+
+@dataclass(frozen=True)
+class Setting:
+    """What candidates are judged against: all of an audit but its rows."""
+
+    bench: Bench
+    operator: Operator
+    partitions: tuple[Partition | None, ...]
+
+    def concluded(
+        self, rows: Sequence[Row], seconds: Mapping[str, float], *, title: str, start: str, energy_unit: str
+    ) -> Audit:
+        """Put the rows, at least one, and all that is said about them together."""
+        bench, truth = self.bench, self.bench.reference
+        recommended, reason = words.recommendation(rows, bench.tolerance)
+        verdicts = {row.verdict for row in rows}
+        return Audit(
+            rows=tuple(rows),
+            recommended=recommended,
+            reason=reason,
+            verdict=next(verdict for verdict in ("meets", "undecided", "misses") if verdict in verdicts),
+            reference=truth,
+            quantity=bench.quantity,
+            tolerance=bench.tolerance,
+            relative_to=bench.relative_to,
+            times=tuple(bench.times),
+            readout=bench.readout,
+            observables=bench.observables,
+            operator=self.operator,
+            start=words.start(start, bench.start, bench.quantity),
+            title=title,
+            energy_unit=energy_unit,
+            assumptions=words.assumptions(
+                bench.start, bench.readout, bench.relative_to, bench.quantity, [row.candidate for row in rows]
+            ),
+            proven=words.proven(truth),
+            measured=words.measured(bench.quantity, truth.certificate.proven),
+            cautions=words.cautions(bench.quantity),
+            seconds=seconds,
+        )
+
+
+def prepare(
+    operator: Operator,
+    state: State | None,
+    times: float | Iterable[float],
+    candidates: Sequence[BaseCandidate],
+    tolerance: float,
+    quantity: str,
+    observables: Mapping[str, Operator] | None,
+    readout: str,
+    *,
+    relative_to: str | None,
+    reference_tolerance: float | None,
+    reference_method: str,
+    most_steps: int,
+    threads: int | None,
+    progress: Progress | None,
+    partitions: Sequence[Partition | None] | None = None,
+) -> Setting:
+    """Check everything that `audit` takes, and compute the reference; parameters and errors are those of `audit`.
+
+    `partitions` are those of the candidates, where they are known.
+    """
+    watched = {} if quantity == "operator" else named_operators(observables)
+    asked = sorted(set(positive_times(times)))
+    start = _start(state, operator, quantity)
+    _check(operator, start, candidates, tolerance, quantity, watched, readout, relative_to, most_steps)
+    workers = _threads.resolve(threads)
+    if partitions is None:
+        partitions = [candidate.prepare(operator, asked) for candidate in candidates]
+    vectors = {"observables": 3, "state": 2 + len(asked), "operator": 6}[quantity]
+    vectors += 2 * any(isinstance(candidate, Implementation) for candidate in candidates)
+    _memory.require(vectors * (16 << start.qubits), "audit", vectors)
+    if quantity == "operator":
+        reference_method = "dense" if start.qubits <= DENSE_QUBITS else "chebyshev"
+    truth = reference_for(
+        operator,
+        start,
         asked,
         tolerance,
         reference_tolerance,
@@ -132,113 +247,28 @@ def audit(
         threads=workers,
         progress=progress,
     )
-    seconds = {"reference": clock.perf_counter() - began}
-    bench = Bench(state, asked, truth, tolerance, quantity, watched, relative_to, readout, workers)
-    rows = []
-    for number, (candidate, partition) in enumerate(zip(candidates, partitions, strict=True)):
-        started = clock.perf_counter()
-
-        def tell(steps: int, candidate: Candidate = candidate, number: int = number) -> None:
-            if progress is not None:
-                progress(f"{candidate.label}: {steps} steps", number, len(candidates))
-
-        rows.append(_row(bench, candidate, partition, most_steps, tell))
-        seconds[f"candidate {number + 1}"] = clock.perf_counter() - started
-    if progress is not None:
-        progress("done", len(candidates), len(candidates))
-    recommended, reason = words.recommendation(rows, tolerance)
-    verdicts = {row.verdict for row in rows}
-    return Audit(
-        rows=tuple(rows),
-        recommended=recommended,
-        reason=reason,
-        verdict=next(verdict for verdict in ("meets", "undecided", "misses") if verdict in verdicts),
-        reference=truth,
-        quantity=quantity,
-        tolerance=tolerance,
-        relative_to=relative_to,
-        times=tuple(asked),
-        readout=readout,
-        observables=watched,
-        operator=operator,
-        start=start or f"a given state vector of {state.qubits} qubits",
-        title=title,
-        energy_unit=energy_unit,
-        assumptions=words.assumptions(state, readout, relative_to),
-        proven=words.proven(truth),
-        measured=words.measured(quantity, truth.certificate.proven),
-        cautions=words.CAUTIONS,
-        seconds=seconds,
-    )
+    given = (start, asked, truth, tolerance, quantity, watched, relative_to, readout, workers)
+    bench = OperatorBench(*given, operator) if quantity == "operator" else Bench(*given)
+    return Setting(bench, operator, tuple(partitions))
 
 
-def _row(bench: Bench, candidate: Candidate, partition: Partition, most_steps: int, tell: Callable[[int], None]) -> Row:
-    runs: dict[int, Measured] = {}
-
-    def run(steps: int) -> Trial:
-        tell(steps)
-        runs[steps] = bench.measure(candidate, partition, steps)
-        return runs[steps].trial
-
-    note = ""
-    accidental: tuple[int, ...] = ()
-    if isinstance(candidate.steps, int):
-        run(candidate.steps)
-        steps = candidate.steps
-    else:
-        unit = bench.step_unit()
-        if most_steps < unit:
-            raise AuditError(
-                f"most_steps: below the coarsest grid that meets every time ({most_steps}); give {unit} or more",
-                reason="most_steps below the grid",
-                limit=unit,
-            )
-        found = least_steps(run, bench.tolerance, candidate.formula.order, unit=unit, most_steps=most_steps)
-        steps, accidental = found.steps, found.accidental
-        note = words.search_note(found, bench.tolerance, most_steps)
-    chosen = runs[steps]
-    limit, source = _bound(bench, candidate, partition, steps)
-    return Row(
-        candidate=candidate,
-        label=candidate.label,
-        steps=steps,
-        error=chosen.trial.error,
-        bound=limit,
-        bound_source=source,
-        rotations=chosen.circuit.count,
-        two_qubit_gates=chosen.trial.two_qubit_gates,
-        depth=chosen.circuit.depth(),
-        verdict=chosen.trial.verdict,
-        rounding=chosen.rounding,
-        points=chosen.points,
-        trials=tuple(runs[count].trial for count in sorted(runs)),
-        accidental=accidental,
-        note=note,
-    )
-
-
-def _bound(bench: Bench, candidate: Candidate, partition: Partition, steps: int) -> tuple[float | None, str]:
-    """Return a proven bound on the row's error and its source, or None and the reason."""
-    try:
-        if not isinstance(candidate.formula, Formula):
-            return None, f"no theorem at hand covers {candidate.formula.name}"
-        found = bound(candidate.formula, partition, bench.times[-1], steps)
-    except FormulaError:
-        return None, f"no theorem at hand covers {candidate.formula.name}"
-    source = f"{found.theorem}, {found.source}"
-    if bench.quantity == "state":
-        return (found.value, source) if found.value < 2.0 else (2.0, "no two unit vectors are further apart")
-    # |<O>_S - <O>| ≤ 2 ‖O‖ ‖S - U‖ for unitary S and U, the identity removed; and never more than 2 ‖O‖.
-    largest = 1.0 if bench.relative_to == "norm" else max(bench.norms.values())
-    if found.value >= 1.0:
-        return 2.0 * largest, "no two values of the observable are further apart"
-    return 2.0 * largest * found.value, f"{source}, times twice the observable's norm"
+def _start(state: State | None, operator: Operator, quantity: str) -> State:
+    """Return the start; where every start counts, any will do for the reference."""
+    if state is not None:
+        return state
+    if quantity != "operator":
+        raise ArgumentError(
+            f"state: missing (None) where quantity={quantity!r}; give a start, or quantity='operator' for all at once",
+            argument="state",
+            value=None,
+        )
+    return State.computational(0, checked_operator("operator", operator).qubits)
 
 
 def _check(
     operator: Operator,
     state: State,
-    candidates: Sequence[Candidate],
+    candidates: Sequence[BaseCandidate],
     tolerance: float,
     quantity: str,
     observables: Mapping[str, Operator],
@@ -258,10 +288,11 @@ def _check(
         raise _choice("readout", readout, READOUTS)
     if relative_to not in (None, "norm"):
         raise _choice("relative_to", relative_to, (None, "norm"))
-    if relative_to == "norm" and quantity == "state":
+    if relative_to == "norm" and quantity != "observables":
         raise AuditError(
-            "relative_to: a state error has no norm to divide by (quantity='state'); leave it out",
-            reason="relative_to with a state error",
+            f"relative_to: {'a state' if quantity == 'state' else 'an operator'} error has no norm to divide by "
+            f"(quantity={quantity!r}); leave it out",
+            reason=f"relative_to with {quantity} errors",
             limit=None,
         )
     if quantity == "observables" and not observables:
@@ -276,10 +307,22 @@ def _check(
             argument="most_steps",
             value=most_steps,
         )
-    if not isinstance(candidates, Sequence) or not candidates or not all(isinstance(c, Candidate) for c in candidates):
+    if (
+        not isinstance(candidates, Sequence)
+        or not candidates
+        or not all(isinstance(c, BaseCandidate) for c in candidates)
+    ):
         raise AuditError(
             f"candidates: no list of Candidate ({candidates!r}); give at least one",
             reason="no candidates",
+            limit=None,
+        )
+    own = next((candidate for candidate in candidates if isinstance(candidate, Implementation)), None)
+    if quantity == "operator" and own is not None:
+        raise AuditError(
+            f"quantity: the operator error needs a circuit, and {own.name!r} is a function; "
+            "ask for quantity='state' or 'observables'",
+            reason="operator error of an implementation",
             limit=None,
         )
     require_same_qubits(state, operator, "operator")

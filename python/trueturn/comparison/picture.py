@@ -6,11 +6,10 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from trueturn.audit.figures import plain
-from trueturn.audit.report.canvas import GRID, INK, MARKERS, MUTED, PAPER, SERIES, logarithmic, own_settings
+from trueturn.audit.report.canvas import GRID, INK, MARKERS, MUTED, PAPER, SERIES, logarithmic, written
 from trueturn.audit.report.pictures import bars, legend
 from trueturn.comparison.result import unit_words
 from trueturn.comparison.table import quantity_words, rule_words, shortened
-from trueturn.errors import ArgumentError
 
 if TYPE_CHECKING:
     from trueturn.comparison.result import Comparison
@@ -18,24 +17,11 @@ if TYPE_CHECKING:
 __all__ = ["drawn"]
 
 GREY = "#b4bbc4"
-ENDINGS = (".svg", ".png", ".pdf")
 
 
 def drawn(comparison: Comparison, path: Path) -> Path:
     """Draw a comparison into a file; see `Comparison.plot`."""
-    ending = path.suffix.lower()
-    if ending not in ENDINGS:
-        raise ArgumentError(
-            f"path: no ending of a picture ({path.name!r}); use {', '.join(ENDINGS)}", argument="path", value=path
-        )
-    with own_settings():
-        from matplotlib.figure import Figure
-
-        figure = Figure(figsize=(7.6, 4.9), layout="constrained", facecolor=PAPER)
-        _paint(comparison, figure)
-        undated: Any = {"Date": None} if ending == ".svg" else {"CreationDate": None} if ending == ".pdf" else None
-        figure.savefig(path, format=ending[1:], dpi=160, facecolor=PAPER, metadata=undated)
-    return path
+    return written(path, (7.6, 4.9), lambda figure: _paint(comparison, figure))
 
 
 def _paint(comparison: Comparison, figure: Any) -> None:

@@ -176,7 +176,7 @@ def unit_words(cost: str) -> str:
     return {"two_qubit_gates": "two-qubit gates"}.get(cost, cost)
 
 
-def efficient(points: Sequence[tuple[int, Interval]]) -> list[tuple[bool, bool]]:
+def efficient(points: Sequence[tuple[float, Interval]]) -> list[tuple[bool, bool]]:
     """Tell for each (cost, error interval) whether it is on the front, and whether it surely is.
 
     Notes

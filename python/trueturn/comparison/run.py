@@ -144,6 +144,7 @@ def compare(
             if progress is not None:
                 progress(f"{candidate.label}: {steps} steps", len(points), total)
             measured = bench.measure(candidate, partition, steps)
+            assert measured.circuit is not None
             points.append(
                 Point(candidate.formula.name, steps, price(measured.circuit), measured.trial.error, tuple(filled))
             )

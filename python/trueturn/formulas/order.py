@@ -32,7 +32,7 @@ from dataclasses import dataclass
 from fractions import Fraction
 from functools import cache, lru_cache
 
-__all__ = ["MOST_ORDER", "WEIGHT_SLACK", "Shortfall", "leading_words", "measured_order"]
+__all__ = ["MOST_ORDER", "WEIGHT_SLACK", "Shortfall", "leading_words", "logarithm_words", "measured_order"]
 
 MOST_ORDER = 12
 """Orders above this are not measured; 2**12 words are followed for a formula without structure."""
@@ -105,6 +105,42 @@ def leading_words(stages: Sequence[tuple[Fraction, bool]], degree: int) -> tuple
     return stride, [(word, float(Fraction(value - _ideal(word), _ONE))) for word, value in found if sum(word) == degree]
 
 
+def logarithm_words(stages: Sequence[tuple[Fraction, bool]], degree: int) -> dict[_Word, float]:
+    """Return the logarithm of the product of all stages, word by word.
+
+    Parameters
+    ----------
+    stages : sequence of (Fraction, bool)
+        Weight, and whether the stage is a reverse one.
+    degree : int
+        Highest degree, at least 1.
+
+    Returns
+    -------
+    dict of tuple of int to float
+        The coefficient of each word in the letters Y_k of a forward stage, first in time first; words whose
+        coefficient vanishes (is below 2**-150 in the integer arithmetic) are left out. Together they are a Lie
+        series: the coefficients of the Dynkin map applied to them are those of nested commutators.
+
+    Notes
+    -----
+    log(1 + W) = W - W²/2 + W³/3 - … in the integers of this module, cut after `degree`: about degree × 2**degree
+    products for each power of W.
+    """
+    words, splits = _words(degree, 1), _splits(degree, 1)
+    rest = _product(_signed(stages), degree, 1)
+    rest[0] = 0
+    power, total = rest, [0] * len(words)
+    for k in range(1, degree + 1):
+        total = [whole - (-1) ** k * term // k for whole, term in zip(total, power, strict=True)]
+        power = [sum([power[left] * rest[right] for left, right in pairs]) >> _BITS for pairs in splits]
+    return {word: float(Fraction(c, _ONE)) for word, c in zip(words, total, strict=True) if abs(c) > 1 << (_BITS - 150)}
+
+
+def _signed(stages: Sequence[tuple[Fraction, bool]]) -> tuple[_Signed, ...]:
+    return tuple((weight, -1 if reverse else 1) for weight, reverse in stages)
+
+
 def _factors(stages: Sequence[tuple[Fraction, bool]]) -> tuple[tuple[_Signed, ...], int]:
     """Join Strang pairs where all stages are such pairs; the stride of the letters is then 2."""
     weights = [weight for weight, _ in stages]
@@ -115,7 +151,7 @@ def _factors(stages: Sequence[tuple[Fraction, bool]]) -> tuple[tuple[_Signed, ..
     )
     if paired:
         return tuple((2 * weight, 1) for weight in weights[::2]), 2
-    return tuple((weight, -1 if reverse else 1) for weight, reverse in stages), 1
+    return _signed(stages), 1
 
 
 def _ideal(word: _Word) -> int:

@@ -9,9 +9,11 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 
+from trueturn.accuracy.analytic import power_series_bound
+from trueturn.accuracy.commutators import first_order_sum, second_order_sums
+from trueturn.accuracy.norms import Norm
 from trueturn.formulas import Formula
 from trueturn.operator import Operator
-from trueturn.randomised.channel import ROUNDING, exponential
 from trueturn.reference.certificate import norm_bound
 
 __all__ = ["operator_norm", "order_free_error", "split_error"]
@@ -40,18 +42,8 @@ def order_free_error(formula: Formula, strength: float, steps: int) -> float:
     strength : float
         Σ‖A_k‖ |t| over the parts.
     steps : int
-
-    Notes
-    -----
-    With x = W · strength / steps, the coefficients of both power series are at most those of eˣ, and the series agree
-    up to order p. So a step is off by at most 2 Σ_{n>p} xⁿ/n! ≤ 2 x^(p+1)/(p+1)! eˣ, and `steps` of them by
-    `steps` times that. Derived here; loose, as it knows nothing of commutators.
     """
-    x = math.fsum(abs(stage.weight) for stage in formula.stages) * strength / steps
-    if x > 1e3:
-        return math.inf
-    power = formula.order + 1
-    return steps * 2.0 * x**power / math.factorial(power) * exponential(x) * ROUNDING
+    return power_series_bound(math.fsum(abs(stage.weight) for stage in formula.stages), strength, formula.order, steps)
 
 
 def split_error(formula: Formula, parts: Sequence[Operator], time: float, steps: int) -> float:
@@ -74,21 +66,13 @@ def split_error(formula: Formula, parts: Sequence[Operator], time: float, steps:
     first = stages in (((1.0, "forward"),), ((1.0, "reverse"),))
     if not first and stages != ((0.5, "forward"), (0.5, "reverse")):
         return best
-    once, outer, inner = [], [], []
-    for place, part in enumerate(parts[:-1]):
-        rest = parts[place + 1]
-        for other in parts[place + 2 :]:
-            rest = rest + other
-        bracket = rest.bracket(part)
-        if not len(bracket):
-            continue
-        if first:
-            once.append(operator_norm(bracket))
-        else:
-            outer.append(operator_norm(rest.bracket(bracket)))
-            inner.append(operator_norm(part.bracket(bracket)))
     if first:
-        value = span**2 / (2.0 * steps) * math.fsum(once)
+        value = span**2 / (2.0 * steps) * first_order_sum(parts, _rule).value
     else:
-        value = span**3 / steps**2 * (math.fsum(outer) / 12.0 + math.fsum(inner) / 24.0)
+        outer, inner = second_order_sums(parts, _rule)
+        value = span**3 / steps**2 * (outer.value / 12.0 + inner.value / 24.0)
     return min(best, value * (1.0 + 1e-12))
+
+
+def _rule(operator: Operator) -> Norm:
+    return Norm(operator_norm(operator), "")

@@ -3,8 +3,11 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Iterable, Mapping, Sequence
+import os
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
+from contextlib import nullcontext
 from dataclasses import dataclass
+from pathlib import Path
 from typing import Any, NoReturn
 
 import numpy as np
@@ -14,13 +17,14 @@ from trueturn import _threads
 from trueturn._observables import named_operators
 from trueturn.errors import ArgumentError, OperatorError, ToleranceError
 from trueturn.operator import Operator
-from trueturn.reference import chebyshev, dense, krylov
+from trueturn.reference import chebyshev, dense, folder, krylov
 from trueturn.reference.certificate import (
     Certificate,
     expectation_rounding,
     expectation_shift,
     norm_bound,
 )
+from trueturn.reference.inputs import Inputs, inputs_of
 from trueturn.state import State, require_normalised, require_same_qubits
 
 __all__ = ["Certificate", "Reference", "reference"]
@@ -46,6 +50,8 @@ class Reference:
         How far each expectation can be from the exact one: ‖O‖ (2δ + δ²) plus rounding, δ the state's error
         bound and O without its identity term, whose share is that of the start exactly.
     certificate : Certificate
+    inputs : Inputs or None
+        What it was computed from; None where it was put together by hand.
     """
 
     times: tuple[float, ...]
@@ -53,6 +59,52 @@ class Reference:
     expectations: Mapping[str, npt.NDArray[np.float64]]
     expectation_bounds: Mapping[str, npt.NDArray[np.float64]]
     certificate: Certificate
+    inputs: Inputs | None = None
+
+    def write(self, into: str | os.PathLike[str], *, title: str = "", start: str = "") -> Path:
+        """Write a reference folder: manifest.json, expectations.csv and one state_*.npy for each state kept.
+
+        Parameters
+        ----------
+        into : str or path-like
+            An existing reference folder is replaced; any other folder that is not empty is refused.
+        title, start : str
+            Labels for the manifest: of the whole, and of the start state.
+
+        Returns
+        -------
+        Path
+            The folder, which `trueturn.verify` checks.
+
+        Raises
+        ------
+        ArgumentError
+            The place is taken by something else, has no room for the states, or a name of an observable cannot head a
+            column.
+        OSError
+            As raised by the system, such as a full disk; an existing folder is then as it was.
+
+        Notes
+        -----
+        Written beside the target under a temporary name and renamed when complete. States go out in pieces of 16 MiB, so a
+        state costs no second vector.
+        """
+        if self.inputs is None:
+            raise ArgumentError(
+                "reference: does not know what it was computed from (None); compute it by trueturn.reference",
+                argument="reference",
+                value=None,
+            )
+        place = Path(into)
+        last = max(self.times, key=abs)
+        kept = dict(zip(self.times if len(self.states) == len(self.times) else [last], self.states, strict=True))
+        folder.require_replaceable(place)
+        folder.require_room(place, len(kept), self.inputs.operator.qubits)
+        with folder.opened(place, self.times, list(self.expectations)) as writer:
+            for time, state in kept.items():
+                writer.add_state(time, state.amplitudes)
+            writer.finish(self, title, start)
+        return place
 
 
 def reference(
@@ -66,6 +118,9 @@ def reference(
     progress: Progress | None = None,
     *,
     threads: int | None = None,
+    into: str | os.PathLike[str] | None = None,
+    title: str = "",
+    start: str = "",
 ) -> Reference:
     """Evolve a state by exp(-i operator t) to each time, with a certificate.
 
@@ -88,6 +143,12 @@ def reference(
         Which states to keep.
     progress : callable, optional
         Called with ("reference", done, total); an exception of its own stops the run and passes through.
+    threads : int, optional
+    into : str or path-like, optional
+        Write a reference folder there (see `Reference.write`). With ``keep="all"`` each state then goes to disk when it is
+        reached, and only the last one is kept in memory.
+    title, start : str
+        Labels for the manifest of that folder.
 
     Returns
     -------
@@ -96,7 +157,7 @@ def reference(
     Raises
     ------
     ArgumentError
-        Times, method, keep or the norm of the state are out of range.
+        Times, method, keep or the norm of the state are out of range; or `into` is a place that cannot be written to.
     OperatorError
         The operator has no terms.
     StateShapeError
@@ -134,40 +195,56 @@ def reference(
             progress("reference", done, total)
 
     hook = None if progress is None else tick
-    certificate, steps = _run(mirrored, state, ascending, tolerance, method, keep, workers, hook)
+    place = None if into is None else Path(into)
+    if place is not None:
+        folder.require_names(list(watched))
+        folder.require_replaceable(place)
+        folder.require_room(place, len(set(asked)) if keep == "all" else 1, state.qubits)
+    in_memory = "last" if into is not None else keep
+    certificate, steps = _run(mirrored, state, ascending, tolerance, method, in_memory, workers, hook)
     if certificate.largest > tolerance:
         _refuse_tolerance(certificate, tolerance)
+    inputs = inputs_of(operator, state, watched, tolerance, workers)
     records = {name: _Record(observable, state, workers) for name, observable in watched.items()}
+    last = sign * ascending[-1] if ascending else 0.0
     kept: dict[float, State] = {}
-    last = ascending[-1] if ascending else 0.0
-    if 0.0 in asked:
-        begin = State.from_array(state.amplitudes.astype(np.complex128))
-        for record in records.values():
-            record.take(0.0, begin)
-        if keep == "all" or not ascending:
-            kept[0.0] = begin
-        del begin
+    with nullcontext() if place is None else folder.opened(place, asked, list(watched)) as writer:
+        for time, vector in _with_start(state, 0.0 in asked, ((sign * time, vector) for time, vector in steps)):
+            now = State.from_array(vector)
+            for record in records.values():
+                record.take(time, now)
+            if writer is not None and (keep == "all" or time == last):
+                writer.add_state(time, vector)
+            if time == last:
+                kept[time] = now
+            elif in_memory == "all":
+                kept[time] = State.from_array(vector if time == 0.0 else vector.copy())
+            del now, vector  # the start's own vector is not to outlive its turn
+        certificate = _resigned(certificate, sign, asked)
+        order = asked if in_memory == "all" else [last]
+        found = Reference(
+            times=tuple(asked),
+            states=[kept[time] for time in order],
+            expectations={name: np.array([record.values[time] for time in asked]) for name, record in records.items()},
+            expectation_bounds={
+                name: np.array([record.bound(certificate.error_bound[time]) for time in asked])
+                for name, record in records.items()
+            },
+            certificate=certificate,
+            inputs=inputs,
+        )
+        if writer is not None:
+            writer.finish(found, title, start)
+    return found
 
-    for time, vector in steps:
-        now = State.from_array(vector)
-        for record in records.values():
-            record.take(sign * time, now)
-        if keep == "all" and time != last:
-            kept[sign * time] = State.from_array(vector.copy())
-        elif time == last:
-            kept[sign * time] = now
-    certificate = _resigned(certificate, sign, asked)
-    order = asked if keep == "all" else [sign * last]
-    return Reference(
-        times=tuple(asked),
-        states=[kept[time] for time in order if time in kept],
-        expectations={name: np.array([record.values[time] for time in asked]) for name, record in records.items()},
-        expectation_bounds={
-            name: np.array([record.bound(certificate.error_bound[time]) for time in asked])
-            for name, record in records.items()
-        },
-        certificate=certificate,
-    )
+
+def _with_start(
+    state: State, wanted: bool, steps: Iterator[tuple[float, npt.NDArray[np.complex128]]]
+) -> Iterator[tuple[float, npt.NDArray[np.complex128]]]:
+    """Put the start, as a vector of its own, before the steps where time 0 is wanted too."""
+    if wanted:
+        yield 0.0, state.amplitudes.astype(np.complex128)
+    yield from steps
 
 
 def _run(

@@ -91,7 +91,8 @@ def dense_extremes(terms: Sequence[Scaled], qubits: int) -> tuple[float, float]:
     libraries.
 
     The last digits of the proposed value depend on library and threads. So that the bound does not, it is
-    moved outward to a multiple of 2^-32 of the power of two above Σ|c|.
+    moved outward to a multiple of 2^-32 of the power of two above Σ|c|; on n < 6 qubits, where fewer digits are
+    uncertain, of 2^(2 n - 44).
 
     References
     ----------
@@ -105,7 +106,7 @@ def dense_extremes(terms: Sequence[Scaled], qubits: int) -> tuple[float, float]:
     proposed = np.linalg.eigvalsh(matrix)
     low = _proved_low(matrix, float(proposed[0]), size, len(terms))
     high = -_proved_low(-matrix, -float(proposed[-1]), size, len(terms))
-    grid = 2.0 ** (math.frexp(size)[1] - 32)
+    grid = 2.0 ** (math.frexp(size)[1] - max(32, 44 - 2 * qubits))
     return max(-size, math.floor(low / grid) * grid), min(size, math.ceil(high / grid) * grid)
 
 

@@ -12,11 +12,11 @@ from trueturn import _allocation, _memory, _native
 from trueturn.operator import Operator
 from trueturn.reference.certificate import Certificate
 from trueturn.reference.schedule import Schedule, schedule
-from trueturn.reference.spectrum import spectral_report
+from trueturn.reference.spectrum import CLUSTER_COST, spectral_report
 from trueturn.rotations import Rotations
 from trueturn.state import State
 
-__all__ = ["evolve"]
+__all__ = ["carry_out", "evolve", "planned"]
 
 Vector = npt.NDArray[np.complex128]
 Step = tuple[float, Vector]
@@ -64,31 +64,73 @@ def evolve(
     MemoryRefusedError
         Three vectors beside the start do not fit.
     """
-    size = 16 * start.size
+    certificate, plan = planned(operator, start.size.bit_length() - 1, times, tolerance, keep_all=keep_all)
+    return certificate, carry_out(operator, start, set(times), plan, threads, progress)
+
+
+def planned(
+    operator: Operator,
+    qubits: int,
+    times: Sequence[float],
+    tolerance: float,
+    *,
+    keep_all: bool,
+    interval: tuple[float, float, str] | None = None,
+) -> tuple[Certificate, Schedule]:
+    """Plan an evolution without a start; the plan and its certificate hold for every one.
+
+    Parameters
+    ----------
+    operator, times, tolerance, keep_all
+        As for `evolve`.
+    qubits : int
+    interval : (float, float, str), optional
+        A proven spectral interval and how it was found, where one is at hand.
+
+    Raises
+    ------
+    ToleranceError, MemoryRefusedError
+        As for `evolve`.
+    """
+    size = 16 << qubits
     kept = len(times) if keep_all else 1
     _memory.require((2 + kept) * size, "reference", lambda n: (2 + kept) * (16 << n))
     room = _memory.available_bytes()
     spare = 0 if room is None else max(0, room // 2 - (2 + kept) * size) // size
     # The same grouping wherever memory is not scarce, so that results keep their bits from machine to machine.
     group = max(1, min(len(times), _GROUP, 1 + spare))
-    report = spectral_report(operator)
-    plan = schedule(operator, (report.low, report.high), times, tolerance, group)
+    if interval is None:
+        report = spectral_report(operator, _effort(operator, qubits, times[-1]))
+        interval = report.low, report.high, report.route
+    low, high, route = interval
+    plan = schedule(operator, (low, high), times, tolerance, group)
     bounds = {time: pair for time, pair in plan.bounds().items() if time in set(times)}
     certificate = Certificate(
         method="chebyshev",
         error_bound={time: cut + rounded for time, (cut, rounded) in bounds.items()},
         truncation={time: cut for time, (cut, _) in bounds.items()},
         rounding={time: rounded for time, (_, rounded) in bounds.items()},
-        spectral_interval=(report.low, report.high),
-        spectral_route=report.route,
+        spectral_interval=(low, high),
+        spectral_route=route,
         applications=plan.applications,
         proven=True,
         notes=_NOTES,
     )
-    return certificate, _carry_out(operator, start, set(times), plan, threads, progress)
+    return certificate, plan
 
 
-def _carry_out(
+def _effort(operator: Operator, qubits: int, time: float) -> float:
+    """Return the share of the usual work on the spectrum that is worth it: a twentieth of what the evolution takes.
+
+    An evolution takes about Σ|c| t + 30 applications, each about a tenth of a multiplication of a dense solution for each
+    term and amplitude. Depends on the question alone, so that results do.
+    """
+    applications = operator.one_norm() * abs(time) + 30.0
+    evolution = 0.1 * max(len(operator), 1) * applications * 2.0**qubits
+    return min(1.0, max(0.05 * evolution / CLUSTER_COST, 1e-6))
+
+
+def carry_out(
     operator: Operator,
     start: npt.NDArray[Any],
     wanted: set[float],
@@ -96,6 +138,7 @@ def _carry_out(
     threads: int,
     progress: Tick | None,
 ) -> Iterator[Step]:
+    """Carry a plan out, giving (time, vector) at each wanted time; the vectors change with the next step."""
     current: Vector = _allocation.amplitudes(start.size, np.complex128)
     np.copyto(current, start)
     previous = _allocation.amplitudes(start.size, np.complex128)

@@ -83,12 +83,14 @@ def spectral_interval(operator: Operator) -> tuple[float, float]:
     return report.low, report.high
 
 
-def spectral_report(operator: Operator) -> SpectralInterval:
+def spectral_report(operator: Operator, effort: float = 1.0) -> SpectralInterval:
     """Enclose the spectrum of an operator by several routes and take the tightest ends.
 
     Parameters
     ----------
     operator : Operator
+    effort : float
+        Share of the usual work that commuting groups and clusters may take; the interval is proved all the same.
 
     Returns
     -------
@@ -144,8 +146,8 @@ def spectral_report(operator: Operator) -> SpectralInterval:
         cluster = _clusters.Cluster.of(terms)
         routes.append(RouteInterval("dense", *dense_extremes(cluster.terms, cluster.qubits)))
     else:
-        routes.append(RouteInterval("commuting groups", *_by_groups(terms)))
-        routes.append(RouteInterval("clusters", *_by_clusters(terms, support.bit_count())))
+        routes.append(RouteInterval("commuting groups", *_by_groups(terms, effort)))
+        routes.append(RouteInterval("clusters", *_by_clusters(terms, support.bit_count(), effort)))
     routes = [_unscaled(route, identity, exponent) for route in routes]
     lowest = max(routes, key=lambda route: route.low)
     highest = min(routes, key=lambda route: route.high)
@@ -192,7 +194,7 @@ def _times_power(value: float, exponent: int, outward: float) -> float:
     return result if math.ldexp(result, -exponent) == value else math.nextafter(result, outward)
 
 
-def _by_groups(terms: Sequence[Scaled]) -> tuple[float, float]:
+def _by_groups(terms: Sequence[Scaled], effort: float = 1.0) -> tuple[float, float]:
     if len(terms) > GROUP_TERMS:
         return -triangle(terms), triangle(terms)
     x_masks, z_masks, coefficients = zip(*terms, strict=True)
@@ -200,16 +202,17 @@ def _by_groups(terms: Sequence[Scaled]) -> tuple[float, float]:
     groups: dict[int, list[Scaled]] = {}
     for term, group in zip(terms, native.commuting_groups().tolist(), strict=True):
         groups.setdefault(group, []).append(term)
-    allowance = GROUP_ENTRIES
+    allowance = int(GROUP_ENTRIES * effort)
+    most = min(RANK_CAP, allowance.bit_length() - 1)
     lows, highs = [], []
     pieces = [piece for group in groups.values() for piece in reversed(_clusters.components(group))]
     while pieces:
         piece = pieces.pop()
-        found = commuting_extremes(piece, min(RANK_CAP, allowance.bit_length() - 1))
+        found = commuting_extremes(piece, min(most, allowance.bit_length() - 1))
         if found is not None:
             low, high, listed = found
             allowance -= listed
-        elif allowance >= 1 << RANK_CAP:
+        elif allowance >= 1 << most and len(piece) > 1:
             half = len(piece) // 2
             pieces += [piece[half:], piece[:half]]
             continue
@@ -220,12 +223,12 @@ def _by_groups(terms: Sequence[Scaled]) -> tuple[float, float]:
     return sum_down(lows), sum_up(highs)
 
 
-def _by_clusters(terms: Sequence[Scaled], qubits: int) -> tuple[float, float]:
+def _by_clusters(terms: Sequence[Scaled], qubits: int, effort: float = 1.0) -> tuple[float, float]:
     size = 10 if qubits >= 18 else 8 if qubits >= 13 else 6
     while True:
         clusters, left_over = _clusters.plan(terms, size)
         distinct = set(clusters)
-        excess = sum(cluster.cost for cluster in distinct) / CLUSTER_COST
+        excess = sum(cluster.cost for cluster in distinct) / (CLUSTER_COST * effort)
         if excess <= 1 or size <= SMALLEST_CLUSTER:
             break
         # One qubit less is eight times cheaper for each cluster, though there are more of them.
@@ -234,7 +237,7 @@ def _by_clusters(terms: Sequence[Scaled], qubits: int) -> tuple[float, float]:
     lows = [known[cluster][0] for cluster in clusters]
     highs = [known[cluster][1] for cluster in clusters]
     if left_over:
-        low, high = _by_groups(left_over)
+        low, high = _by_groups(left_over, effort)
         lows.append(low)
         highs.append(high)
     return sum_down(lows), sum_up(highs)

@@ -2,15 +2,12 @@
 
 from __future__ import annotations
 
-import os
-import shutil
-import tempfile
 from pathlib import Path
 from typing import TYPE_CHECKING
 
+from trueturn import _folders
 from trueturn.audit.report.document import csv_text, json_text, to_dict
 from trueturn.audit.report.tables import plain_table, terminal_table
-from trueturn.errors import ArgumentError
 
 if TYPE_CHECKING:
     from trueturn.audit.result import Audit
@@ -18,6 +15,7 @@ if TYPE_CHECKING:
 __all__ = ["FILES", "plain_table", "require_replaceable", "terminal_table", "to_dict", "write_folder"]
 
 FILES = ("report.html", "audit.json", "audit.csv")
+_KIND = ("audit", "audit.json", FILES.__contains__)
 
 
 def require_replaceable(folder: Path) -> None:
@@ -33,22 +31,7 @@ def require_replaceable(folder: Path) -> None:
     ArgumentError
         Otherwise, or where the folder above it does not accept new files.
     """
-
-    def refuse(wrong: str, remedy: str) -> ArgumentError:
-        return ArgumentError(f"folder: {wrong} ({folder}); {remedy}", argument="folder", value=str(folder))
-
-    if folder.exists() and not folder.is_dir():
-        raise refuse("a file of this name exists", "choose another name")
-    if folder.is_dir():
-        names = sorted(entry.name for entry in folder.iterdir())
-        if names and "audit.json" not in names:
-            raise refuse("exists and is not an audit folder", "choose another name, or empty it first")
-        strangers = [name for name in names if name not in FILES]
-        if strangers:
-            raise refuse(f"holds {strangers[0]}, which is no part of an audit", "move it away, or choose another name")
-    above = next(place for place in folder.absolute().parents if place.exists())
-    if not above.is_dir() or not os.access(above, os.W_OK | os.X_OK):
-        raise refuse("cannot be made here", "choose a place that you may write to")
+    _folders.require_replaceable(folder, *_KIND)
 
 
 def write_folder(audit: Audit, folder: Path) -> Path:
@@ -72,25 +55,7 @@ def write_folder(audit: Audit, folder: Path) -> Path:
     """
     from trueturn.audit.report.page import page
 
-    require_replaceable(folder)
-    target = folder.resolve()
-    target.parent.mkdir(parents=True, exist_ok=True)
-    work = Path(tempfile.mkdtemp(prefix=f".{target.name}-", dir=target.parent))
-    try:
-        fresh, old = work / "new", work / "old"
-        fresh.mkdir()
+    with _folders.replacing(folder, *_KIND) as fresh:
         texts = (page(audit), json_text(to_dict(audit)), csv_text(audit))
-        for name, text in zip(FILES, texts, strict=True):
-            (fresh / name).write_text(text, encoding="utf-8", newline="\n")
-        require_replaceable(folder)
-        if target.exists():
-            target.rename(old)
-        try:
-            fresh.rename(target)
-        except OSError:
-            if old.exists():
-                old.rename(target)
-            raise
-    finally:
-        shutil.rmtree(work, ignore_errors=True)
+        _folders.write_texts(fresh, dict(zip(FILES, texts, strict=True)))
     return folder

@@ -11,9 +11,12 @@ import re
 import threading
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
+from pathlib import Path
 from typing import Any
 
-__all__ = ["GRID", "INK", "MARKERS", "MUTED", "PAPER", "SERIES", "draw", "logarithmic"]
+from trueturn.errors import ArgumentError
+
+__all__ = ["GRID", "INK", "MARKERS", "MUTED", "PAPER", "SERIES", "draw", "logarithmic", "written"]
 
 INK, MUTED, GRID, PAPER = "#1d2530", "#5f6b79", "#d5dae0", "#fdfdfb"
 # Dark and light in turn besides apart in hue, so that neighbours differ in grey too.
@@ -47,6 +50,7 @@ SETTINGS: Any = {
     "figure.facecolor": "none",
     "axes.facecolor": "none",
 }
+ENDINGS = (".svg", ".png", ".pdf")
 LOCK = threading.Lock()
 
 
@@ -90,6 +94,38 @@ def draw(name: str, size: tuple[float, float], label: str, paint: Callable[[Any]
         page = io.StringIO()
         figure.savefig(page, format="svg", metadata={"Date": None, "Creator": None}, transparent=True)
     return embedded(page.getvalue(), name, label)
+
+
+def written(path: Path, size: tuple[float, float], paint: Callable[[Any], None]) -> Path:
+    """Draw a figure into a file: the same bytes for the same input as SVG.
+
+    Parameters
+    ----------
+    path : Path
+        Ends in ``.svg``, ``.png`` or ``.pdf``.
+    size : (float, float)
+        Width and height in inches.
+    paint : callable
+        Receives the matplotlib `Figure`.
+
+    Raises
+    ------
+    ArgumentError
+        Another ending.
+    """
+    ending = path.suffix.lower()
+    if ending not in ENDINGS:
+        raise ArgumentError(
+            f"path: no ending of a picture ({path.name!r}); use {', '.join(ENDINGS)}", argument="path", value=path
+        )
+    with own_settings():
+        from matplotlib.figure import Figure
+
+        figure = Figure(figsize=size, layout="constrained", facecolor=PAPER)
+        paint(figure)
+        undated: Any = {"Date": None} if ending == ".svg" else {"CreationDate": None} if ending == ".pdf" else None
+        figure.savefig(path, format=ending[1:], dpi=160, facecolor=PAPER, metadata=undated)
+    return path
 
 
 def embedded(text: str, name: str, label: str) -> str:

@@ -7,17 +7,18 @@ import hashlib
 import io
 import json
 import math
-from collections.abc import Iterable, Mapping
+from collections.abc import Iterable, Mapping, Sequence
 from typing import TYPE_CHECKING, Any
 
 from trueturn._build import build_info
 from trueturn.audit.report import words
+from trueturn.reference.folder import certificate_data
 
 if TYPE_CHECKING:
     from trueturn.audit.result import Audit, PointError, Row, Trial
     from trueturn.operator import Operator
 
-__all__ = ["SCHEMA", "build_facts", "csv_text", "json_text", "to_dict"]
+__all__ = ["COLUMNS", "SCHEMA", "build_facts", "csv_text", "json_text", "record", "row_data", "to_dict", "written"]
 
 SCHEMA = 1
 TERMS_IN_FULL = 20_000
@@ -96,12 +97,11 @@ def position(audit: Audit, row: Row) -> int:
 
 def row_data(row: Row) -> dict[str, Any]:
     """Give one candidate's record."""
-    rule = row.candidate.rule
     return {
         "label": row.label,
-        "formula": row.candidate.formula.name,
-        "rule": rule if isinstance(rule, str) else "own parts",
-        "steps_asked": row.candidate.steps,
+        "formula": row.candidate.name,
+        "rule": row.candidate.rule_words,
+        "steps_asked": "as given" if row.candidate.steps_words == "as given" else row.candidate.steps,
         "steps": row.steps,
         "error": limits(row.error),
         "bound": number(row.bound),
@@ -141,27 +141,14 @@ def trial_data(trial: Trial) -> dict[str, Any]:
 
 def reference_data(audit: Audit) -> dict[str, Any]:
     """Give the reference: expectations and certificate."""
-    reference, certificate = audit.reference, audit.reference.certificate
+    reference = audit.reference
     return {
         "times": [float(time) for time in reference.times],
         "expectations": {name: numbers(values) for name, values in reference.expectations.items()},
         "expectation_bounds": {name: numbers(values) for name, values in reference.expectation_bounds.items()},
         "summary": words.certificate_line(audit),
-        "method": certificate.method,
-        "proven": bool(certificate.proven),
-        "error_bound": in_order(certificate.error_bound, reference.times),
-        "truncation": in_order(certificate.truncation, reference.times),
-        "rounding": in_order(certificate.rounding, reference.times),
-        "spectral_interval": [float(end) for end in certificate.spectral_interval],
-        "spectral_route": certificate.spectral_route,
-        "applications": int(certificate.applications),
-        "notes": list(certificate.notes),
+        **certificate_data(reference.certificate, reference.times),
     }
-
-
-def in_order(values: Mapping[float, float], times: tuple[float, ...]) -> list[float | None]:
-    """Give a mapping over times as a list in the order of `times`."""
-    return [number(float(values[time])) for time in times]
 
 
 def operator_data(operator: Operator) -> dict[str, Any]:
@@ -204,21 +191,30 @@ def json_text(document: Mapping[str, Any]) -> str:
 
 def csv_text(audit: Audit) -> str:
     """Write one line a candidate, with a heading."""
+    return written([record(audit, row) for row in audit.rows], COLUMNS)
+
+
+def record(audit: Audit, row: Row) -> dict[str, Any]:
+    """Give one candidate's line of the table."""
+    worst = words.worst(row)
+    found = row_data(row)
+    low, high = found["error"]
+    return found | {
+        "error_low": low,
+        "error_high": high,
+        "tolerance": audit.tolerance,
+        "recommended": "yes" if row is audit.recommended else "no",
+        "worst_figure": worst.name if worst else "",
+        "worst_time": worst.time if worst else "",
+        "accidental_steps": " ".join(map(str, row.accidental)),
+    }
+
+
+def written(records: Iterable[Mapping[str, Any]], columns: Sequence[str]) -> str:
+    """Write records as lines of a CSV table with a heading; what does not exist stays empty."""
     page = io.StringIO()
-    writer = csv.DictWriter(page, COLUMNS, lineterminator="\n")
+    writer = csv.DictWriter(page, columns, lineterminator="\n")
     writer.writeheader()
-    for row in audit.rows:
-        record = row_data(row)
-        worst = words.worst(row)
-        low, high = record["error"]
-        record |= {
-            "error_low": low,
-            "error_high": high,
-            "tolerance": audit.tolerance,
-            "recommended": "yes" if row is audit.recommended else "no",
-            "worst_figure": worst.name if worst else "",
-            "worst_time": worst.time if worst else "",
-            "accidental_steps": " ".join(map(str, row.accidental)),
-        }
-        writer.writerow({key: "" if record[key] is None else record[key] for key in COLUMNS})
+    for line in records:
+        writer.writerow({key: "" if line[key] is None else line[key] for key in columns})
     return page.getvalue()

@@ -20,13 +20,23 @@ from trueturn.audit.report.pictures import (
     steps_picture,
     time_picture,
 )
-from trueturn.audit.report.tables import names
 
 if TYPE_CHECKING:
     from trueturn.audit.result import Audit, Row
     from trueturn.operator import Operator
 
-__all__ = ["page"]
+__all__ = [
+    "class_of",
+    "closing",
+    "complete",
+    "framed",
+    "listing",
+    "page",
+    "section",
+    "small",
+    "system_words",
+    "verdict",
+]
 
 TERMS_SHOWN = 24
 POLICY = "default-src 'none'; style-src 'unsafe-inline'"
@@ -54,7 +64,22 @@ def page(audit: Audit) -> str:
     str
         A complete HTML document.
     """
-    title = audit.title or "Audit"
+    subtitle = f"Product-formula circuits against a certified reference: {system_words(audit)}."
+    return complete(
+        audit.title or "Audit",
+        subtitle,
+        [
+            verdict(audit),
+            section("Candidates", table(audit)),
+            section("Error and cost", trials(audit)),
+            section("Over time", over_time(audit)),
+            *closing(audit),
+        ],
+    )
+
+
+def complete(title: str, subtitle: str, sections: Iterable[str]) -> str:
+    """Make a complete HTML document of a title and sections."""
     style = resources.files("trueturn.audit.report").joinpath("page.css").read_text(encoding="utf-8")
     parts = [
         '<!DOCTYPE html>\n<html lang="en">\n<head>\n<meta charset="utf-8"/>',
@@ -62,19 +87,22 @@ def page(audit: Audit) -> str:
         f'<meta http-equiv="Content-Security-Policy" content="{POLICY}"/>',
         f"<title>{escape(title)}</title>\n<style>\n{style}</style>\n</head>\n<body>",
         f"<header>\n<h1>{escape(title)}</h1>",
-        f'<p class="sub">Product-formula circuits against a certified reference: {system_words(audit)}.</p>',
+        f'<p class="sub">{escape(subtitle)}</p>',
         "</header>\n<main>",
-        verdict(audit),
-        section("Candidates", table(audit)),
-        section("Error and cost", trials(audit)),
-        section("Over time", over_time(audit)),
+        *sections,
+        "</main>\n</body>\n</html>\n",
+    ]
+    return "\n".join(parts)
+
+
+def closing(audit: Audit) -> list[str]:
+    """Write the sections that every report ends with: what it rests on, and what is needed to make it again."""
+    return [
         section("What the verdict rests on", grounds(audit)),
         section("Reference and certificate", certificate(audit)),
         section("Inputs", inputs(audit)),
         section("Made with", made_with(audit)),
-        "</main>\n</body>\n</html>\n",
     ]
-    return "\n".join(parts)
 
 
 def section(heading: str, body: str) -> str:
@@ -88,11 +116,11 @@ def system_words(audit: Audit) -> str:
     return f"{audit.operator.qubits} qubits, {count(terms)} terms"
 
 
-def verdict(audit: Audit) -> str:
-    """Write the answer."""
+def verdict(audit: Audit, headline: str | None = None) -> str:
+    """Write the answer; `headline` stands for the one of an audit."""
     return (
         f'<div class="verdict {escape(audit.verdict)}">\n'
-        f"<p><strong>{escape(audit.verdict)}</strong> – {escape(words.headline(audit))}.</p>\n"
+        f"<p><strong>{escape(audit.verdict)}</strong> – {escape(headline or words.headline(audit))}.</p>\n"
         f'<p class="run">{escape(words.recommendation(audit))}</p>\n'
         f'<p class="small">{escape(words.HARDWARE)}</p>\n</div>'
     )
@@ -124,17 +152,15 @@ def class_of(kind: str) -> str:
 
 def row_cells(row: Row, audit: Audit, sources: list[str]) -> str:
     """Write the cells of one candidate."""
-    formula, rule = names(row)
     place = words.worst_words(row, audit)
-    asked = "least" if row.candidate.steps == "least" else "given"
     cells = [
-        f"<td>{escape(formula)}{small(rule, row.note)}</td>",
-        f'<td class="n">{escape(words.steps_words(row))}{small(asked)}</td>',
+        f"<td>{escape(row.candidate.name)}{small(row.candidate.rule_words, row.note)}</td>",
+        f'<td class="n">{escape(words.steps_words(row))}{small(row.candidate.steps_words)}</td>',
         f'<td class="e">{escape(words.error_words(row, audit))}{small(place)}</td>',
         f"<td>{escape(words.bound_words(row))}<sup>[{sources.index(row.bound_source) + 1}]</sup></td>",
-        f'<td class="n">{count(row.two_qubit_gates)}</td>',
-        f'<td class="n">{count(row.depth)}</td>',
-        f'<td class="n">{count(row.rotations)}</td>',
+        f'<td class="n">{words.cost_words(row.two_qubit_gates)}</td>',
+        f'<td class="n">{words.cost_words(row.depth)}</td>',
+        f'<td class="n">{words.cost_words(row.rotations)}</td>',
         f'<td class="v {escape(row.verdict)}">{escape(row.verdict)}</td>',
     ]
     return f"<tr{class_of('chosen' if row is audit.recommended else '')}>{''.join(cells)}</tr>"
@@ -157,8 +183,8 @@ def trials(audit: Audit) -> str:
 
 def over_time(audit: Audit) -> str:
     """Draw the figures over time."""
-    if audit.quantity == "state":
-        caption = "State error at the requested times, with the tolerance as a broken line."
+    if audit.quantity != "observables":
+        caption = f"{audit.quantity.capitalize()} error at the requested times, with the tolerance as a broken line."
     else:
         caption = (
             "Above: the reference as a line, with its certified band (often thinner than the line), and each "
@@ -223,7 +249,7 @@ def inputs(audit: Audit) -> str:
         ("asked", words.tolerance_words(audit)),
     ]
     for row in audit.rows:
-        facts.append(("candidate", f"{row.label}, steps: {row.candidate.steps}"))
+        facts.append(("candidate", f"{row.label}, steps: {words.asked_words(row)}"))
     operators = [("Hamiltonian", audit.operator), *audit.observables.items()]
     blocks = "\n".join(
         f'<p class="small">{escape(name)}</p>\n<pre class="terms">{escape(shown_terms(operator))}</pre>'

@@ -19,22 +19,27 @@ MOST_OBSERVABLES = 6
 
 def steps_picture(audit: Audit) -> str:
     """Draw the error of every step count that was run, with its interval and the tolerance."""
-    return trials_picture(audit, "steps", "steps", lambda trial: trial.steps)
+    return trials_picture(audit, "steps", "steps", _steps_of)
 
 
 def gates_picture(audit: Audit) -> str:
     """Draw the same errors against what they cost in two-qubit gates."""
-    return trials_picture(audit, "gates", "two-qubit gates", lambda trial: trial.two_qubit_gates)
+    return trials_picture(audit, "gates", "two-qubit gates", lambda _, trial: trial.two_qubit_gates)
 
 
-def trials_picture(audit: Audit, name: str, label: str, place: Callable[[Trial], int]) -> str:
+def _steps_of(row: Row, trial: Trial) -> int | None:
+    """A circuit as given has no steps."""
+    return None if row.candidate.steps_words == "as given" else trial.steps
+
+
+def trials_picture(audit: Audit, name: str, label: str, place: Callable[[Row, Trial], int | None]) -> str:
     """Draw error against a whole number, both logarithmic; full markers are the rows of the table."""
 
     def paint(figure: Any) -> None:
         axes = figure.add_subplot()
         axes.set_xscale("log")
         axes.set_yscale("log")
-        shown = [place(trial) for row in audit.rows for trial in row.trials if place(trial) > 0]
+        shown = [count for row in audit.rows for trial in row.trials if (count := place(row, trial) or 0) > 0]
         if not shown:
             axes.text(0.5, 0.5, f"no candidate has any {label}", transform=axes.transAxes, ha="center")
             axes.set_axis_off()
@@ -43,10 +48,11 @@ def trials_picture(audit: Audit, name: str, label: str, place: Callable[[Trial],
         axes.set_xlim(min(shown) / room, max(shown) * room)
         floor = floor_of(audit)
         for index, row in enumerate(audit.rows):
-            trials = [trial for trial in row.trials if place(trial) > 0]
-            if not trials:
+            placed = [(count, trial) for trial in row.trials if (count := place(row, trial) or 0) > 0]
+            if not placed:
                 continue
-            at = [place(trial) for trial in trials]
+            at = [position for position, _ in placed]
+            trials = [trial for _, trial in placed]
             middles, arms = bars([trial.error for trial in trials], floor)
             colour, marker = SERIES[index % len(SERIES)], MARKERS[index % len(MARKERS)]
             axes.plot(at, middles, color=colour, linewidth=1.0, alpha=0.55)
@@ -76,7 +82,7 @@ def trials_picture(audit: Audit, name: str, label: str, place: Callable[[Trial],
             fontsize=9.5,
         )
         axes.set_xlabel(label)
-        axes.set_ylabel(f"error in the {'state' if audit.quantity == 'state' else 'observables'}")
+        axes.set_ylabel(f"error in the {audit.quantity}")
         axes.margins(y=0.1)
         axes.grid(color=GRID, linewidth=0.6)
         logarithmic(axes.xaxis, whole=True)
@@ -89,11 +95,11 @@ def trials_picture(audit: Audit, name: str, label: str, place: Callable[[Trial],
 
 def time_picture(audit: Audit) -> str:
     """Draw each observable of each candidate against the reference over time, and how far they are apart."""
-    if audit.quantity == "state":
+    if audit.quantity != "observables":
         return draw(
             "picture-time",
             (10.6, 3.6),
-            "State error of each candidate over time",
+            f"{audit.quantity.capitalize()} error of each candidate over time",
             lambda figure: states(audit, figure),
         )
     names = shown_observables(audit)
@@ -190,7 +196,7 @@ def differences(audit: Audit, name: str, axes: Any) -> None:
 
 
 def states(audit: Audit, figure: Any) -> None:
-    """Draw the state error of each candidate over time, with the tolerance."""
+    """Draw the state or operator error of each candidate over time, with the tolerance."""
     axes = figure.add_subplot()
     axes.set_yscale("log")
     floor = floor_of(audit)
@@ -205,7 +211,7 @@ def states(audit: Audit, figure: Any) -> None:
         axes.errorbar([point.time for point in row.points], middles, yerr=arms, label=label, **style)
     axes.axhline(audit.tolerance, color=INK, linewidth=1.0, linestyle=(0, (5, 3)))
     axes.set_xlabel("time")
-    axes.set_ylabel("state error")
+    axes.set_ylabel(f"{audit.quantity} error")
     axes.grid(color=GRID, linewidth=0.6)
     logarithmic(axes.yaxis)
     figure.legend(loc="outside upper left", ncols=4, fontsize=9.5)

@@ -6,6 +6,7 @@ rotations, and where the error is largest) moves to a second line, so that eight
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from io import StringIO
 from textwrap import wrap
 from typing import TYPE_CHECKING
@@ -13,13 +14,22 @@ from typing import TYPE_CHECKING
 from rich.console import Console, Group, RenderableType
 from rich.text import Text
 
-from trueturn.audit.figures import count
 from trueturn.audit.report import words
 
 if TYPE_CHECKING:
-    from trueturn.audit.result import Audit, Row
+    from trueturn.audit.result import Audit
 
-__all__ = ["plain_table", "terminal_table"]
+__all__ = [
+    "GAP",
+    "MARKS",
+    "STYLES",
+    "aligned",
+    "column_widths",
+    "plain_table",
+    "plain_text",
+    "terminal_table",
+    "total_width",
+]
 
 MARKS = {"meets": "✓", "misses": "✗", "undecided": "?"}
 STYLES = {"meets": "bold green", "misses": "bold red", "undecided": "bold yellow"}
@@ -41,9 +51,14 @@ def plain_table(audit: Audit, width: int = 100) -> str:
     -------
     str
     """
+    return plain_text(terminal_table(audit, width), width)
+
+
+def plain_text(laid_out: RenderableType, width: int) -> str:
+    """Write what was laid out for a terminal as plain text."""
     page = StringIO()
     console = Console(file=page, width=width, color_system=None, force_terminal=False, legacy_windows=False)
-    console.print(terminal_table(audit, width))
+    console.print(laid_out)
     return "\n".join(line.rstrip() for line in page.getvalue().splitlines())
 
 
@@ -81,9 +96,9 @@ def candidate_lines(audit: Audit, width: int) -> list[Text]:
             words.steps_words(row),
             words.error_words(row, audit),
             words.bound_words(row),
-            count(row.two_qubit_gates),
-            count(row.depth),
-            count(row.rotations),
+            words.cost_words(row.two_qubit_gates),
+            words.cost_words(row.depth),
+            words.cost_words(row.rotations),
             f"{MARKS[row.verdict]} {row.verdict}",
         ]
         for row in audit.rows
@@ -134,18 +149,12 @@ def total_width(heads: list[str], cells: list[list[str]]) -> int:
     return sum(widths) + GAP * (len(widths) - 1)
 
 
-def aligned(line: list[str], widths: list[int], styles: list[str]) -> Text:
+def aligned(line: list[str], widths: list[int], styles: list[str], counts: Sequence[int] = COUNTS) -> Text:
     """Set the cells of a line in their columns: counts to the right, the rest to the left."""
     text = Text()
     for index, (cell, width, style) in enumerate(zip(line, widths, styles, strict=True)):
-        right = index in COUNTS and index != len(line) - 1
+        right = index in counts and index != len(line) - 1
         text.append(cell.rjust(width) if right else cell.ljust(width), style=style)
         if index < len(line) - 1:
             text.append(" " * GAP)
     return text
-
-
-def names(row: Row) -> tuple[str, str]:
-    """Take the formula and the rule from a row's label."""
-    formula, _, rule = row.label.rpartition(", ")
-    return (formula, rule) if formula else (row.label, "")

@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from typing import TYPE_CHECKING
 
+from trueturn._terms_file import one_a_line
 from trueturn.audit.figures import count, interval, outward, plain, upper
 
 if TYPE_CHECKING:
@@ -13,7 +14,9 @@ if TYPE_CHECKING:
 
 __all__ = [
     "HARDWARE",
+    "asked_words",
     "certificate_line",
+    "cost_words",
     "headline",
     "operator_lines",
     "recommendation",
@@ -32,8 +35,8 @@ def tolerance_words(audit: Audit) -> str:
     """Say what is asked of a candidate, to follow "keep the" or to stand alone."""
     tolerance = plain(audit.tolerance)
     when = f"at t = {plain(audit.times[0])}" if len(audit.times) == 1 else f"at each of {len(audit.times)} times"
-    if audit.quantity == "state":
-        return f"state error within {tolerance} {when}"
+    if audit.quantity != "observables":
+        return f"{audit.quantity} error within {tolerance} {when}"
     share = " of its norm" if audit.relative_to == "norm" else ""
     which = "the observable" if len(audit.observables) == 1 else f"each of {len(audit.observables)} observables"
     return f"error within {tolerance}{share} on {which} {when}"
@@ -66,7 +69,7 @@ def worst_words(row: Row, audit: Audit) -> str:
     point = worst(row)
     if point is None:
         return ""
-    if audit.quantity == "state":
+    if audit.quantity != "observables":
         return f"t = {plain(point.time)}"
     return f"{point.name}, t = {plain(point.time)}"
 
@@ -97,8 +100,21 @@ def bound_words(row: Row) -> str:
     return upper(row.bound)
 
 
+def cost_words(value: int | None) -> str:
+    """Write a cost, or a dash where it is not known."""
+    return "–" if value is None else count(value)
+
+
+def asked_words(row: Row) -> str:
+    """Write what was asked of the steps: a number, ``least``, or that the circuit is as given."""
+    candidate = row.candidate
+    return candidate.steps_words if candidate.steps_words == "as given" else str(candidate.steps)
+
+
 def steps_words(row: Row) -> str:
-    """Write the steps; a searched step count that failed is the largest tried."""
+    """Write the steps; a searched step count that failed is the largest tried, a circuit as given has none."""
+    if row.candidate.steps_words == "as given":
+        return "–"
     if row.candidate.steps == "least" and row.verdict != "meets":
         return f"to {count(row.steps)}"
     return count(row.steps)
@@ -114,7 +130,7 @@ def operator_lines(operator: Operator, limit: int | None = None) -> list[str]:
 
 def terms_of(operator: Operator) -> list[str]:
     """Write every term of an operator as text that reads back."""
-    return str(operator).replace(" + ", "\n").replace(" - ", "\n-").split("\n")
+    return one_a_line(str(operator))
 
 
 def value_words(value: float) -> str:

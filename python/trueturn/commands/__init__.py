@@ -1,0 +1,1 @@
+"""Commands of `trueturn` that have a file of their own; `trueturn.cli` registers them."""

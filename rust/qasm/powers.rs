@@ -1,0 +1,222 @@
+//! Powers of a gate that is written as a product of rotations.
+//!
+//! Whole powers repeat. Others are principal powers: with eigenvalues e^{iφ}, -π < φ ≤ π, those of the power are e^{ikφ}. Two
+//! cases cover the library and what is built from it by controls:
+//!
+//! - The strings commute. Each sign of their independent generators is an eigenspace, its φ is a sum of the angles with
+//!   signs, and the logarithm is again a sum of products of the generators, found by a Walsh-Hadamard transform.
+//! - One qubit. U = e^{iα} exp(-i β n·σ) has the eigenvalues e^{i(α ∓ β)} and keeps its axis n.
+//!
+//! Anything else is refused; a numerical logarithm of a larger matrix is no sum of few strings.
+
+use std::f64::consts::PI;
+
+use num_complex::Complex64;
+
+use super::modifiers::Product;
+use super::refusal::{Place, Refusal};
+use crate::pauli::PauliString;
+use crate::rotations::Rotation;
+
+/// Independent strings whose signs are all tried.
+const MOST_GENERATORS: usize = 12;
+
+pub fn power(
+    product: Product,
+    qubits: u32,
+    exponent: f64,
+    whole: bool,
+    limit: u64,
+    place: Place,
+) -> Result<Product, Refusal> {
+    let plain = product.read(qubits, place)?;
+    let read = if plain.frame().is_none() { Product::of(&plain, limit) } else { None };
+    let candidates = [read, Some(product)];
+    let mut candidates = candidates.into_iter().flatten();
+    if whole {
+        if let Some(found) = candidates.find(|product| commuting(&product.list)) {
+            return Ok(scaled(found, exponent));
+        }
+        let repeat = exponent.abs() as u64;
+        let refused = |error: crate::error::Error| place.refuse(format!("pow({exponent}): {error}"));
+        let many = plain.times(repeat).map_err(refused)?;
+        let out = Product::of(&many, limit).or_else(|| {
+            // A relabelling is left over: the frame as it is, gate by gate, is what the caller can use.
+            let short = repeat.saturating_mul(plain.count().max(1)) <= limit;
+            short.then(|| unrolled(&plain, repeat)).flatten()
+        });
+        let out = out.ok_or_else(|| {
+            place.refuse(format!("pow({exponent}): takes more than {limit} rotations; use a smaller exponent"))
+        })?;
+        return Ok(if exponent < 0.0 { out.inverse() } else { out });
+    }
+    for product in candidates {
+        if product.list.is_empty() {
+            return Ok(Product { list: vec![], phase: exponent * principal(product.phase) });
+        }
+        if commuting(&product.list) {
+            if let Some(found) = commuting_power(&product, exponent) {
+                return Ok(found);
+            }
+        } else if qubits == 1 {
+            return Ok(one_qubit_power(&product, exponent));
+        }
+    }
+    Err(place.refuse(format!(
+        "pow({exponent}): a power that is not whole, of a gate on {qubits} qubits whose rotations do not commute; \
+         write the root as a gate of its own"
+    )))
+}
+
+/// The relabelling as rotations: each trade of two qubits is exp(-i π/4 (XX + YY + ZZ)) and a phase.
+fn unrolled(circuit: &crate::rotations::Rotations, repeat: u64) -> Option<Product> {
+    let frame = circuit.frame()?;
+    let mut once = Product { list: circuit.written_out(1 << 21)?, phase: circuit.phase() };
+    once.list.extend(frame.rotations());
+    once.phase += f64::from(frame.eighths()) * PI / 4.0;
+    let mut moves = frame.relabelling().to_vec();
+    for qubit in 0..moves.len() {
+        while moves[qubit] as usize != qubit {
+            let target = moves[qubit] as usize;
+            let both = 1u128 << qubit | 1 << target;
+            for (x, z) in [(both, 0), (both, both), (0, both)] {
+                once.list.push(Rotation { string: PauliString { x, z }, angle: PI / 4.0 });
+            }
+            once.phase += PI / 4.0;
+            moves.swap(qubit, target);
+        }
+    }
+    let mut all = Product::default();
+    for _ in 0..repeat {
+        all.list.extend_from_slice(&once.list);
+        all.phase += once.phase;
+    }
+    Some(all)
+}
+
+fn commuting(list: &[Rotation]) -> bool {
+    list.len() <= 1 << MOST_GENERATORS
+        && list
+            .iter()
+            .enumerate()
+            .all(|(place, one)| list[..place].iter().all(|other| one.string.commutes_with(other.string)))
+}
+
+fn scaled(mut product: Product, exponent: f64) -> Product {
+    product.list.iter_mut().for_each(|rotation| rotation.angle *= exponent);
+    product.phase *= exponent;
+    product
+}
+
+/// The angle less a multiple of 2π, above -π and at most π; what is within rounding of -π counts as π.
+fn principal(angle: f64) -> f64 {
+    let turned = angle - 2.0 * PI * (angle / (2.0 * PI)).round();
+    if turned <= -PI + 1e-12 { turned + 2.0 * PI } else { turned }
+}
+
+/// Products of the generators in order, with their signs: element m is the product of generators in the mask m.
+fn elements(generators: &[PauliString]) -> Vec<(PauliString, bool)> {
+    let mut all = vec![(PauliString::IDENTITY, false)];
+    for generator in generators {
+        for place in 0..all.len() {
+            let (string, negative) = all[place];
+            let (product, turns) = string.times(*generator);
+            all.push((product, negative ^ (turns == 2)));
+        }
+    }
+    all
+}
+
+fn commuting_power(product: &Product, exponent: f64) -> Option<Product> {
+    let mut generators: Vec<PauliString> = Vec::new();
+    let mut all = elements(&[]);
+    let mut members = Vec::with_capacity(product.list.len());
+    for rotation in &product.list {
+        let place = all.iter().position(|(string, _)| *string == rotation.string).unwrap_or_else(|| {
+            generators.push(rotation.string);
+            all.len()
+        });
+        if generators.len() > MOST_GENERATORS {
+            return None;
+        }
+        if place == all.len() {
+            all = elements(&generators);
+        }
+        members.push(place);
+    }
+    // The eigenvalue of element m in sector λ is (-1)^{bits shared by m and λ}, its sign aside.
+    let sign = |m: usize, sector: usize| if (m & sector).count_ones() & 1 == 1 { -1.0 } else { 1.0 };
+    let mut spectrum: Vec<f64> = (0..all.len())
+        .map(|sector| {
+            let turned = members
+                .iter()
+                .zip(&product.list)
+                .map(|(&m, rotation)| rotation.angle * sign(m, sector) * if all[m].1 { -1.0 } else { 1.0 });
+            exponent * principal(product.phase - turned.sum::<f64>())
+        })
+        .collect();
+    transform(&mut spectrum);
+    let size = spectrum.len() as f64;
+    let mut made = Product { list: vec![], phase: spectrum[0] / size };
+    for ((string, negative), value) in all.iter().zip(&spectrum).skip(1) {
+        let angle = -value / size;
+        // Sums of at most 2^12 angles of size π vanish up to rounding.
+        if angle.abs() > 1e-15 {
+            made.list.push(Rotation { string: *string, angle: if *negative { -angle } else { angle } });
+        }
+    }
+    Some(made)
+}
+
+/// The Walsh-Hadamard transform without a factor, in place.
+fn transform(values: &mut [f64]) {
+    let mut half = 1;
+    while half < values.len() {
+        for start in (0..values.len()).step_by(2 * half) {
+            for place in start..start + half {
+                let (a, b) = (values[place], values[place + half]);
+                (values[place], values[place + half]) = (a + b, a - b);
+            }
+        }
+        half *= 2;
+    }
+}
+
+fn one_qubit_power(product: &Product, exponent: f64) -> Product {
+    // exp(-i θ P) as a quaternion: cos θ and the three sines; the product multiplies out without a phase.
+    let mut real = 1.0;
+    let mut axis = [0.0f64; 3];
+    for rotation in &product.list {
+        let (sin, cos) = rotation.angle.sin_cos();
+        let which = match (rotation.string.x, rotation.string.z) {
+            (0, _) => 2,
+            (_, 0) => 0,
+            _ => 1,
+        };
+        // (cos - i sin σ_w)(r - i a·σ) = … with σ_w σ_v = i ε σ_u.
+        let mut next = [cos * axis[0], cos * axis[1], cos * axis[2]];
+        next[which] += sin * real;
+        let (u, v) = ((which + 1) % 3, (which + 2) % 3);
+        next[v] += sin * axis[u];
+        next[u] -= sin * axis[v];
+        real = cos * real - sin * axis[which];
+        axis = next;
+    }
+    let length = axis.iter().map(|a| a * a).sum::<f64>().sqrt();
+    let beta = length.atan2(real);
+    let (low, high) = (principal(product.phase - beta), principal(product.phase + beta));
+    let turned = 0.5 * exponent * (high - low);
+    let phase = 0.5 * exponent * (high + low);
+    // exp(-i turned n·σ) = rz(a) ry(b) rz(c)
+    let (sin, cos) = turned.sin_cos();
+    let n = if length > 0.0 { axis.map(|a| a / length) } else { [0.0, 0.0, 1.0] };
+    let stay = Complex64::new(cos, -n[2] * sin);
+    let flip = Complex64::new(n[1] * sin, -n[0] * sin);
+    let middle = 2.0 * flip.norm().atan2(stay.norm());
+    let (sum, difference) = (-2.0 * stay.arg(), 2.0 * flip.arg());
+    let z = |angle: f64| Rotation { string: PauliString { x: 0, z: 1 }, angle: 0.5 * angle };
+    let y = Rotation { string: PauliString { x: 1, z: 1 }, angle: 0.5 * middle };
+    let mut list = vec![z(0.5 * (sum - difference)), y, z(0.5 * (sum + difference))];
+    list.retain(|rotation| rotation.angle != 0.0);
+    Product { list, phase }
+}
