@@ -178,6 +178,16 @@ impl<T: Real> Action<T> {
     pub fn rounding(&self) -> f64 {
         self.rounding
     }
+
+    /// The same for one operator among several that were prepared [`Action::together`], whatever the others are.
+    pub fn shared_rounding(terms: &Terms) -> f64 {
+        let (gathered, diagonal) = gather(terms, 1.0);
+        let additions = gathered.len() + 1;
+        let mixed = gathered.iter().map(|own| own.size() * (2 + own.terms.len() + additions) as f64).sum::<f64>();
+        let size: f64 = diagonal.iter().map(|(_, coefficient)| coefficient.abs()).sum();
+        // A diagonal is summed from numbers of four kinds and at most one for each of its terms.
+        mixed + size * (6 + 2 * diagonal.len() + additions) as f64
+    }
 }
 
 /// The space of the next pass, and what of each operator it takes.

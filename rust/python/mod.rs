@@ -22,8 +22,8 @@ mod _native {
     use super::rotations::PyRotations;
     #[pymodule_export]
     use super::state::{
-        application_rounding, apply_terms, chebyshev_sums, clear, distance, evolve, expectations, instruction_sets,
-        overlap, pairwise_sum, squared_norms,
+        application_rounding, apply_terms, chebyshev_sums, clear, distance, evolve, expectations, image_rounding,
+        instruction_sets, overlap, pairwise_sum, squared_norms,
     };
     #[pymodule_export]
     use super::terms::PyTerms;

@@ -99,6 +99,12 @@ pub fn application_rounding(terms: &PyTerms, scale: f64, shift: f64) -> f64 {
     Action::<f64>::new(&terms.terms, scale, shift).rounding()
 }
 
+/// Bound on the rounding of one image of a unit vector under an operator in [`expectations`], in units of the roundoff.
+#[pyfunction]
+pub fn image_rounding(terms: &PyTerms) -> f64 {
+    Action::<f64>::shared_rounding(&terms.terms)
+}
+
 /// Chebyshev sums from `current` (used up) with room `previous` into `sums`; see [`apply::chebyshev_sums`].
 #[pyfunction]
 #[allow(clippy::too_many_arguments)]

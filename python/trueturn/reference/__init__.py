@@ -205,14 +205,16 @@ def reference(
     if certificate.largest > tolerance:
         _refuse_tolerance(certificate, tolerance)
     inputs = inputs_of(operator, state, watched, tolerance, workers)
-    records = {name: _Record(observable, state, workers) for name, observable in watched.items()}
+    length = state.norm(threads=workers)
+    records = {name: _Record(observable, length, state.qubits) for name, observable in watched.items()}
     last = sign * ascending[-1] if ascending else 0.0
     kept: dict[float, State] = {}
     with nullcontext() if place is None else folder.opened(place, asked, list(watched)) as writer:
         for time, vector in _with_start(state, 0.0 in asked, ((sign * time, vector) for time, vector in steps)):
             now = State.from_array(vector)
-            for record in records.values():
-                record.take(time, now)
+            values = now.expectations([record.bare for record in records.values()], threads=workers)
+            for record, value in zip(records.values(), values, strict=True):
+                record.take(time, float(value))
             if writer is not None and (keep == "all" or time == last):
                 writer.add_state(time, vector)
             if time == last:
@@ -289,17 +291,17 @@ class _Record:
     only within its error bound, and that would have to be paid for with the size of the term.
     """
 
-    def __init__(self, observable: Operator, start: State, threads: int) -> None:
+    def __init__(self, observable: Operator, length: float, qubits: int) -> None:
         self.values: dict[float, float] = {}
-        self._bare = observable.without_identity()
-        self._threads = threads
-        self._length = start.norm(threads=threads)
+        self.bare = observable.without_identity()
+        self._length = length
         self._constant = observable.identity_coefficient * self._length**2
         self._norm = norm_bound(observable)
-        self._rounding = expectation_rounding(observable, start.qubits) * max(1.0, self._length) ** 2
+        self._rounding = expectation_rounding(observable, qubits) * max(1.0, self._length) ** 2
 
-    def take(self, time: float, state: State) -> None:
-        self.values[time] = self._constant + state.expectation(self._bare, threads=self._threads)
+    def take(self, time: float, value: float) -> None:
+        """Take down the expectation of the observable without its identity."""
+        self.values[time] = self._constant + value
 
     def bound(self, distance: float) -> float:
         return expectation_shift(self._norm, distance, max(1.0, self._length)) + self._rounding

@@ -67,8 +67,9 @@ def expectation_shift(norm: float, distance: float, length: float = 1.0) -> floa
 def expectation_rounding(observable: Operator, qubits: int) -> float:
     """Return a bound on the rounding of one expectation in a unit vector.
 
-    The image of the state costs what the engine counts for one application. The products of 2^9 amplitudes are added in
-    eight sums of 128, these in a tree of 3 levels, and the blocks in a tree of at most `qubits` levels.
+    The image of the state costs what the engine counts, whichever operators share the traversal. A product of amplitudes
+    is rounded once; it passes through at most 16 additions in a tile, 128 over the tiles of a coset, 4 over the lanes of a
+    vector, and a tree of at most `qubits` + 1 levels over cosets and passes.
     """
-    image = _native.application_rounding(observable._terms, 1.0, 0.0)
-    return 1.01 * UNIT * (image + (133.0 + qubits) * observable.one_norm())
+    image = _native.image_rounding(observable._terms)
+    return 1.01 * UNIT * (image + (150.0 + qubits) * observable.one_norm())

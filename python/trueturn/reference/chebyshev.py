@@ -120,14 +120,14 @@ def planned(
 
 
 def _effort(operator: Operator, qubits: int, time: float) -> float:
-    """Return the share of the usual work on the spectrum that is worth it: a twentieth of what the evolution takes.
+    """Return the share of the usual work on the spectrum that is worth it: a fiftieth of what the evolution takes.
 
     An evolution takes about Σ|c| t + 30 applications, each about a tenth of a multiplication of a dense solution for each
     term and amplitude. Depends on the question alone, so that results do.
     """
     applications = operator.one_norm() * abs(time) + 30.0
     evolution = 0.1 * max(len(operator), 1) * applications * 2.0**qubits
-    return min(1.0, max(0.05 * evolution / CLUSTER_COST, 1e-6))
+    return min(1.0, max(0.02 * evolution / CLUSTER_COST, 1e-6))
 
 
 def carry_out(
