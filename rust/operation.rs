@@ -123,10 +123,10 @@ impl Operation {
         let x = first.string.x as u64;
         let masks = independent(self.mixing.iter().map(|r| r.string.z as u64));
         match self.diagonal.first() {
-            None if self.mixing.len() == 1 && first.angle.tan().abs() <= 1.0 => {
+            None if self.mixing.len() == 1 && has_small_tangent(first.angle) => {
                 let (sin, cos) = libm::sincos(first.angle);
-                let sine = sin / cos * sign_at_zero(first);
-                Action::Turn { real, mask: first.string.z as u64, tangent: sine, cosine: cos }
+                let tangent = sin / cos * sign_at_zero(first);
+                Action::Turn { real, mask: first.string.z as u64, tangent, cosine: cos }
             }
             None => {
                 let entry = |parities: usize| {
@@ -194,6 +194,12 @@ impl Operation {
         };
         Action::Complex { mask, entries: [entry(even, -turn), entry(odd, turn)] }
     }
+}
+
+/// Whether |tan| is at most 1, by the portable sine and cosine.
+fn has_small_tangent(angle: f64) -> bool {
+    let (sin, cos) = libm::sincos(angle);
+    sin.abs() <= cos.abs()
 }
 
 /// The sign of -i θ P at index 0 once the factor -i (or 1, for an odd number of Y) is taken out: P sends amplitude `k ^ x` to

@@ -2,6 +2,11 @@
 //!
 //! A tile is eight vectors of real and eight of imaginary parts; see [`crate::passes::tiles`] for which amplitudes they are,
 //! and [`super::bodies`] for the arithmetic.
+//!
+//! Worked example on three qubits, with vectors of one amplitude, so that the state is one tile and register t holds amplitude
+//! t. The bond 0-1 with equal strengths has register mask x = 0b011 and is active where the parity of t & 0b011 is odd:
+//! registers 1 ↔ 2 and 5 ↔ 6 exchange γ (b - a), registers 0, 3, 4, 7 are not read. X_0 X_2 has x = 0b101 and mixes 0 ↔ 5, 1 ↔ 4,
+//! 2 ↔ 7, 3 ↔ 6 by re' = re + t im(partner), im' = im - t re(partner). Both act between one load and one store.
 
 use super::VectorWork;
 use super::bodies::{
