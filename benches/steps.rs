@@ -46,7 +46,7 @@ fn report(qubits: u32) {
         let single = unfused(state, &list);
         print!("{name:<28}{:>10}{passes:>8}", list.len());
         let mut operations = 0.0;
-        Planned::<f64>::circuit(&once).each_list(1, &mut |passes, _| {
+        Planned::<f64>::circuit(&once, &Control::default()).expect("no stop asked").each_list(1, &mut |passes, _| {
             operations += passes.iter().map(|pass| pass.work.arithmetic()).sum::<f64>();
         });
         let arithmetic = operations * state.len() as f64 / peak;

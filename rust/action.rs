@@ -10,6 +10,8 @@
 //! H = X_0 + X_2 with blocks of two qubits: the first pass adds X_0 inside {0 … 3} and {4 … 7}, the second adds X_2 inside the
 //! cosets of the span of 0b001 and 0b100.
 
+use std::sync::Arc;
+
 use crate::kernel::lanes::Real;
 use crate::operation::{PARITIES, coordinates, independent, sign_at_zero};
 use crate::passes::diagonal::DiagonalSum;
@@ -55,9 +57,9 @@ pub struct Addend<T: Real> {
 #[derive(Clone, Debug)]
 pub struct ActionPass<T: Real> {
     /// The space whose cosets it works on.
-    pub space: Space,
+    pub space: Arc<Space>,
     /// See [`crate::passes::Pass::offsets`].
-    pub offsets: Vec<usize>,
+    pub offsets: Arc<[usize]>,
     /// See [`crate::passes::Pass::run_bits`].
     pub run_bits: u32,
     /// What is added.
@@ -147,10 +149,12 @@ impl<T: Real> Action<T> {
         let mut first = true;
         while first || left.iter().any(|gathered| !gathered.is_empty()) {
             let (space, taken) = next_space::<T>(qubits, first, &mut left);
+            let offsets = run_offsets(&space, T::LANE_BITS + 2).into();
+            let space = Arc::new(space);
             for (((action, taken), diagonal), members) in
                 actions.iter_mut().zip(taken).zip(&diagonals).zip(&mut members)
             {
-                action.push(space.clone(), &taken, diagonal);
+                action.push(&space, &offsets, &taken, diagonal);
                 members.push(taken);
             }
             first = false;
@@ -161,11 +165,11 @@ impl<T: Real> Action<T> {
         actions
     }
 
-    fn push(&mut self, space: Space, taken: &[Gathered], diagonal: &[(u64, f64)]) {
+    fn push(&mut self, space: &Arc<Space>, offsets: &Arc<[usize]>, taken: &[Gathered], diagonal: &[(u64, f64)]) {
         let run_bits = T::LANE_BITS + 2;
-        let addends = taken.iter().map(|own| Addend::new(&space, own)).collect();
-        let sum = (self.passes.is_empty() && !diagonal.is_empty()).then(|| DiagonalSum::new(diagonal, &space));
-        let offsets = run_offsets(&space, run_bits);
+        let addends = taken.iter().map(|own| Addend::new(space, own)).collect();
+        let sum = (self.passes.is_empty() && !diagonal.is_empty()).then(|| DiagonalSum::new(diagonal, space));
+        let (space, offsets) = (Arc::clone(space), Arc::clone(offsets));
         self.passes.push(ActionPass { space, offsets, run_bits, addends, diagonal: sum });
     }
 

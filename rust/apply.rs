@@ -16,6 +16,11 @@ fn least<T: Real>() -> usize {
     1 << least_qubits::<T>()
 }
 
+/// Amplitudes times operators of a batch: with cosets of 2^13 amplitudes, 32 MiB of partial sums.
+const PARTIAL_SUMS: usize = 1 << 35;
+/// Operators in a batch, at most.
+const BATCH: usize = 64;
+
 /// out ← action |state>.
 ///
 /// # Errors
@@ -47,8 +52,15 @@ pub fn expectations<T: Real>(
     for operator in operators {
         require_length(state.len(), operator.qubits())?;
     }
-    let actions = &Action::<T>::together(operators)[..];
-    padded(state, least::<T>(), |state| act::expectations(actions, state, threads, control))
+    // Batches bound the memory of partial sums and prepared operators.
+    let batch = (PARTIAL_SUMS >> state.len().ilog2()).clamp(1, BATCH);
+    padded(state, least::<T>(), |state| {
+        let mut values = Vec::with_capacity(operators.len());
+        for operators in operators.chunks(batch) {
+            values.extend(act::expectations(&Action::<T>::together(operators), state, threads, control)?);
+        }
+        Ok(values)
+    })
 }
 
 /// Sums Σ_k a_k (-i)^k T_k(H') |start> for several lists of coefficients at once, where `action` is 2 H'.

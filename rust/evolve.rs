@@ -1,5 +1,6 @@
 //! Applies a circuit to a state vector in place.
 
+use std::borrow::Cow;
 use std::f64::consts::FRAC_PI_4;
 
 use num_complex::Complex;
@@ -31,40 +32,41 @@ enum Content<T: Real> {
 
 impl<T: Real> Planned<T> {
     /// Plans a circuit with the rotations of its frame, the global phase last; a relabelling of qubits is left to do.
-    pub fn circuit(rotations: &Rotations) -> Self {
+    ///
+    /// # Errors
+    /// A stop on request.
+    pub fn circuit(rotations: &Rotations, control: &Control) -> Result<Self> {
         let qubits = rotations.qubits().max(least_qubits::<T>());
-        let mut content = Self::blocks(qubits, rotations.blocks());
+        let mut content = Self::blocks(qubits, rotations.blocks(), control)?;
         let clifford = rotations.frame().map(|frame| Block { body: Body::List(frame.rotations().into()), repeat: 1 });
-        content.extend(Self::blocks(qubits, clifford.as_slice()));
+        content.extend(Self::blocks(qubits, clifford.as_slice(), control)?);
         let phase = rotations.phase() + f64::from(rotations.frame().map_or(0, Frame::eighths)) * FRAC_PI_4;
         if phase != 0.0 {
             let identity = Rotation { string: PauliString { x: 0, z: 0 }, angle: -phase };
-            content.push(Self { repeat: 1, content: Content::Passes(plan(qubits, &[identity])) });
+            content.push(Self { repeat: 1, content: Content::Passes(plan(qubits, &[identity], control)?) });
         }
-        Self { repeat: 1, content: Content::Nested(content) }
+        Ok(Self { repeat: 1, content: Content::Nested(content) })
     }
 
     /// Without blocks that do nothing, so that the last one has the last pass.
-    fn blocks(qubits: u32, blocks: &[Block]) -> Vec<Self> {
-        blocks.iter().map(|block| Self::block(qubits, block)).filter(|block| block.passes() > 0).collect()
+    fn blocks(qubits: u32, blocks: &[Block], control: &Control) -> Result<Vec<Self>> {
+        let planned: Result<Vec<Self>> = blocks.iter().map(|block| Self::block(qubits, block, control)).collect();
+        Ok(planned?.into_iter().filter(|block| block.passes() > 0).collect())
     }
 
-    fn block(qubits: u32, block: &Block) -> Self {
-        let (body, repeat) = (&block.body, block.repeat);
-        match body {
-            Body::List(list) if repeat > 1 && list.len() <= UNROLLED_LENGTH => {
-                let times = |count: u64| {
-                    let copies: Vec<Rotation> = (0..count).flat_map(|_| list.iter().copied()).collect();
-                    Content::Passes(plan(qubits, &copies))
-                };
-                let parts = [(repeat / UNROLLED_REPEATS, UNROLLED_REPEATS), (1, repeat % UNROLLED_REPEATS)];
-                let parts = parts.into_iter().filter(|(repeat, count)| repeat * count > 0);
-                let parts = parts.map(|(repeat, count)| Self { repeat, content: times(count) }).collect();
-                Self { repeat: 1, content: Content::Nested(parts) }
+    fn block(qubits: u32, block: &Block, control: &Control) -> Result<Self> {
+        let repeat = block.repeat;
+        let list = match &block.body {
+            Body::Nested(blocks) => {
+                return Ok(Self { repeat, content: Content::Nested(Self::blocks(qubits, blocks, control)?) });
             }
-            Body::List(list) => Self { repeat, content: Content::Passes(plan(qubits, list)) },
-            Body::Nested(blocks) => Self { repeat, content: Content::Nested(Self::blocks(qubits, blocks)) },
+            Body::List(list) => list,
+        };
+        let mut parts = vec![];
+        for (list, repeat) in together(list, repeat) {
+            parts.push(Self { repeat, content: Content::Passes(plan(qubits, &list, control)?) });
         }
+        Ok(Self { repeat: 1, content: Content::Nested(parts) })
     }
 
     /// Passes in all, saturating.
@@ -106,6 +108,16 @@ impl<T: Real> Planned<T> {
     }
 }
 
+/// What is planned at once of a list that repeats, and how often that runs: several repeats, then those that are left.
+pub fn together(list: &[Rotation], repeat: u64) -> Vec<(Cow<'_, [Rotation]>, u64)> {
+    if repeat <= 1 || list.len() > UNROLLED_LENGTH {
+        return vec![(Cow::Borrowed(list), repeat)];
+    }
+    let copies = |count: u64| Cow::Owned((0..count).flat_map(|_| list.iter().copied()).collect());
+    let parts = [(UNROLLED_REPEATS, repeat / UNROLLED_REPEATS), (repeat % UNROLLED_REPEATS, 1)];
+    parts.into_iter().filter(|(count, times)| count * times > 0).map(|(count, times)| (copies(count), times)).collect()
+}
+
 /// Applies `rotations`, their frame and their global phase to `amplitudes`, on up to `threads` workers.
 ///
 /// Cost: see [`crate::passes`]. The result has the same bits for every number of threads and every instruction set.
@@ -120,7 +132,7 @@ pub fn evolve<T: Real>(
 ) -> Result<Run> {
     require_length(amplitudes.len(), rotations.qubits())?;
     let isa = Isa::chosen()?;
-    let planned = Planned::<T>::circuit(rotations);
+    let planned = Planned::<T>::circuit(rotations, control)?;
     let moves = rotations.frame().map_or(&[][..], Frame::relabelling);
     let trades = relabel::passes(moves);
     control.expect(control.progress().0.saturating_add(planned.passes()).saturating_add(trades));
@@ -298,7 +310,9 @@ mod tests {
     fn every_instruction_set_gives_the_same_bits() {
         for qubits in [5, 14, 17] {
             let (list, start) = (random_list(qubits, 60, 5), random_state(qubits, 2));
-            let planned = Planned::<f64>::circuit(&Rotations::from_list(qubits, list, 0.3).unwrap());
+            let planned =
+                Planned::<f64>::circuit(&Rotations::from_list(qubits, list, 0.3).unwrap(), &Control::default())
+                    .unwrap();
             let end = |isa: Isa| {
                 let mut state = start.clone();
                 carry_out(isa, &planned, &mut state, 1, &Control::default()).unwrap();

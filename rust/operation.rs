@@ -81,9 +81,13 @@ impl Operation {
             && (self.x() as u128 & mask).count_ones() & 1 == 0
     }
 
+    /// Whether sums of the angles stay finite, a bond's twice over: huge angles stay apart rather than overflow.
+    fn fits(&self, rotation: &Rotation) -> bool {
+        (4.0 * self.rotations().map(|own| own.angle.abs()).chain([rotation.angle.abs()]).sum::<f64>()).is_finite()
+    }
+
     fn admits(&self, rotation: &Rotation) -> bool {
-        // Huge angles stay apart rather than overflow.
-        if !self.rotations().map(|own| own.angle.abs()).chain([rotation.angle.abs()]).sum::<f64>().is_finite() {
+        if !self.fits(rotation) {
             return false;
         }
         let string = rotation.string;
@@ -326,7 +330,8 @@ fn complete_bonds(operations: &mut [Operation]) {
         let before = (place.saturating_sub(LOOK_BACK)..place).rev();
         let after = place + 1..operations.len().min(place + LOOK_BACK);
         let found = [nearest(operations, before, mask), nearest(operations, after, mask)].into_iter().flatten().next();
-        if let Some((from, which)) = found {
+        let fits = |&(from, which): &(usize, usize)| operations[place].fits(&operations[from].diagonal[which]);
+        if let Some((from, which)) = found.filter(fits) {
             let phase = operations[from].diagonal.swap_remove(which);
             operations[place].take(phase);
         }
@@ -402,6 +407,13 @@ mod tests {
     #[test]
     fn angles_whose_sum_overflows_stay_apart() {
         assert_eq!(joined(&[rotation(0b11, 0, 1e308), rotation(0b11, 0b11, 1e308)]).len(), 2);
+        for sizes in [[5e307; 3], [0.8e308, 0.7e308, 1.2e308], [1e306, 1e306, 1.2e308]] {
+            let list = [rotation(0b11, 0, sizes[0]), rotation(0b11, 0b11, sizes[1]), rotation(0, 0b11, sizes[2])];
+            let mut state = vec![num_complex::Complex64::new(0.5, 0.0); 4];
+            let circuit = crate::rotations::Rotations::from_list(2, list.to_vec(), 0.0).unwrap();
+            crate::evolve::evolve(&mut state, &circuit, 1, &Default::default()).unwrap();
+            assert!(state.iter().all(|a| a.is_finite()), "{sizes:?}");
+        }
     }
 
     #[test]

@@ -34,9 +34,11 @@ pub mod diagonal;
 pub mod space;
 pub mod tiles;
 
+use crate::error::Result;
 use crate::kernel::lanes::Real;
 use crate::operation::{Operation, joined};
 use crate::rotations::Rotation;
+use crate::team::Control;
 use space::{Space, Span};
 use tiles::{TILE_BITS, Work};
 
@@ -50,7 +52,9 @@ const LEAST_COSET_BITS: u32 = 10;
 pub const UNROLLED_REPEATS: u64 = 4;
 /// Rotations in a body up to which that is done.
 pub const UNROLLED_LENGTH: usize = 4096;
-/// How many operations a pass may skip before it is closed.
+/// Operations in a pass, at most.
+const LONGEST_PASS: usize = 4096;
+/// How many operations a pass, or a run over tiles, may skip before it is closed.
 const LOOK_AHEAD: usize = 192;
 
 /// Qubits of the smallest state that passes work on; smaller ones are extended by zeros.
@@ -74,7 +78,10 @@ pub struct Pass<T: Real> {
 }
 
 /// Plans a list on `qubits` qubits. Every rotation of the list ends up in exactly one pass.
-pub fn plan<T: Real>(qubits: u32, list: &[Rotation]) -> Vec<Pass<T>> {
+///
+/// # Errors
+/// A stop on request.
+pub fn plan<T: Real>(qubits: u32, list: &[Rotation], control: &Control) -> Result<Vec<Pass<T>>> {
     let list = &joined(list)[..];
     let limit = if qubits <= WHOLE_BITS { qubits } else { COSET_BITS };
     let run_bits = T::LANE_BITS + 2;
@@ -86,6 +93,7 @@ pub fn plan<T: Real>(qubits: u32, list: &[Rotation]) -> Vec<Pass<T>> {
             first += 1;
             continue;
         }
+        control.go_on()?;
         let weight = |members: &[usize]| members.iter().map(|&place| list[place].count()).sum::<usize>();
         let low = gather(list, &taken, first, Span::of_low_bits(limit), limit);
         let spread = gather(list, &taken, first, Span::of_low_bits(run_bits.min(limit)), limit);
@@ -94,7 +102,7 @@ pub fn plan<T: Real>(qubits: u32, list: &[Rotation]) -> Vec<Pass<T>> {
         let members: Vec<&Operation> = members.iter().map(|&place| &list[place]).collect();
         passes.push(Pass::new(span, limit, run_bits, &members));
     }
-    passes
+    Ok(passes)
 }
 
 /// Places, from `first` on, of operations that fit the span and commute with all that were skipped before them; and the
@@ -108,9 +116,9 @@ fn gather(list: &[Operation], taken: &[bool], first: usize, mut span: Span, limi
             members.push(place);
         } else {
             skipped.push(operation);
-            if skipped.len() == LOOK_AHEAD {
-                break;
-            }
+        }
+        if skipped.len() == LOOK_AHEAD || members.len() == LONGEST_PASS {
+            break;
         }
     }
     (members, span)
@@ -145,7 +153,7 @@ mod tests {
     }
 
     fn members(list: &[Rotation], qubits: u32) -> Vec<usize> {
-        plan::<f64>(qubits, list).iter().map(|pass| pass.rotations).collect()
+        plan::<f64>(qubits, list, &Control::default()).unwrap().iter().map(|pass| pass.rotations).collect()
     }
 
     #[test]

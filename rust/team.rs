@@ -53,6 +53,17 @@ impl Control {
         }
     }
 
+    /// Learns, outside of passes, whether to go on.
+    ///
+    /// # Errors
+    /// [`Error::Cancelled`] after a request to stop.
+    pub fn go_on(&self) -> Result<()> {
+        match self.request.load(Ordering::Relaxed) {
+            CONTINUE => Ok(()),
+            _ => Err(Error::Cancelled { passes_done: self.passes_done.load(Ordering::Relaxed) }),
+        }
+    }
+
     /// Says how many passes the run has.
     pub fn expect(&self, passes: u64) {
         self.passes_total.store(passes, Ordering::Relaxed);

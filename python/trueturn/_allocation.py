@@ -31,7 +31,12 @@ def amplitudes(count: int, dtype: npt.DTypeLike) -> npt.NDArray[Any]:
     if size < _FROM:
         room = np.zeros(size + boundary, dtype=np.uint8)
     else:
-        memory = mmap.mmap(-1, size + boundary)
+        # Private: a shared mapping would be one memory with forked children, and gets no large pages.
+        private = {"flags": mmap.MAP_PRIVATE | mmap.MAP_ANONYMOUS} if hasattr(mmap, "MAP_PRIVATE") else {}
+        try:
+            memory = mmap.mmap(-1, size + boundary, **private)
+        except OSError as refused:
+            raise MemoryError(f"the system refused {size + boundary} bytes ({refused})") from None
         if hasattr(mmap, "MADV_HUGEPAGE"):
             with contextlib.suppress(OSError):  # a kernel without them
                 memory.madvise(mmap.MADV_HUGEPAGE)

@@ -100,7 +100,17 @@ def pass_plan(circuit: _native.Rotations, dtype: npt.DTypeLike) -> PassPlan:
             argument="plan",
             value=circuit.qubits,
         )
-    single = np.dtype(dtype) == np.dtype(np.complex64)
+    try:
+        kind = None if dtype is None else np.dtype(dtype)
+    except TypeError:
+        kind = None
+    if kind not in (np.dtype(np.complex64), np.dtype(np.complex128)):
+        raise ArgumentError(
+            f"dtype: amplitudes have none of this kind ({dtype}); give complex128 or complex64",
+            argument="dtype",
+            value=dtype,
+        )
+    single = kind == np.dtype(np.complex64)
     blocks = tuple(
         (
             times,

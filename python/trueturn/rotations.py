@@ -404,7 +404,7 @@ class Rotations:
         units += turned
         angles += added + clifford._circuit.angle_sum() + abs(clifford.phase)
         linear = unit * units + double * angles
-        bound = float(linear * np.exp(min(linear, 600.0)))
+        bound = float(linear) * math.exp(min(float(linear), 600.0))
         return bound if math.isfinite(bound) else math.inf
 
     def __len__(self) -> int:

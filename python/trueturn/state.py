@@ -334,8 +334,9 @@ class State:
     def expectations(self, operators: Sequence[Operator], *, threads: int | None = None) -> npt.NDArray[np.float64]:
         """Return <ψ|operator|ψ> for each of several operators, shape (len(operators),).
 
-        They share the traversals of the state: two or three for all of them together, whatever their number. For the
-        single terms of an operator give ``[term for term in operator.terms()]``.
+        They share the traversals of the state, up to 64 operators at a time: two or three for local operators, more where
+        their x masks are many and independent. The last bits of an expectation are the same whenever the same operators
+        are asked for together, in the same order.
 
         Raises
         ------

@@ -132,40 +132,41 @@ pub fn expectations<T: Real>(
     let workers = workers_for(threads, state.len());
     actions.iter().for_each(|action| require_size(action, [state.len()]));
     let Some(first) = actions.first() else { return Ok(vec![]) };
-    let cosets = state.len() >> first.passes[0].space.dimension();
-    let passes = first.passes.len();
-    let partial: Vec<AtomicU64> = (0..actions.len() * passes * cosets).map(|_| AtomicU64::new(0)).collect();
     let state = Shared::new(state);
-    run(workers, control, |member| {
-        let mut room = Room::default();
-        for number in 0..passes {
-            let own = |action: &'_ Action<T>| -> bool {
-                let pass = &action.passes[number];
-                !pass.addends.is_empty() || pass.diagonal.is_some()
-            };
-            let pass = &first.passes[number];
+    let mut totals: Vec<Vec<f64>> = vec![vec![]; actions.len()];
+    for (number, pass) in first.passes.iter().enumerate() {
+        let busy = |action: &Action<T>| {
+            let pass = &action.passes[number];
+            !pass.addends.is_empty() || pass.diagonal.is_some()
+        };
+        let busy: Vec<usize> = (0..actions.len()).filter(|&which| busy(&actions[which])).collect();
+        let cosets = (state.reals() / 2) >> pass.space.dimension();
+        let partial: Vec<AtomicU64> = (0..busy.len() * cosets).map(|_| AtomicU64::new(0)).collect();
+        run(workers, control, |member| {
+            let mut room = Room::default();
             let mut buffer = Buffer::new(pass);
             each_coset(member, pass, &state, |coset, rep, next| {
                 let mut ahead = next.map(|next| [Ahead { next: place(pass, &state, next, true), first: 0, step: 1 }]);
                 // SAFETY: the state is only read.
                 let source = unsafe { buffer.fill(isa, place(pass, &state, rep, true)) };
-                for (which, action) in actions.iter().enumerate().filter(|(_, action)| own(action)) {
+                for (slot, &which) in busy.iter().enumerate() {
                     room.dot = [0.0; 16];
                     let ahead = ahead.take();
                     let ahead = ahead.as_ref().map_or(&[][..], |one| &one[..]);
-                    let pass = &action.passes[number];
+                    let pass = &actions[which].passes[number];
                     // SAFETY: as above; the source is this worker's buffer.
                     unsafe { coset_image(isa, pass, source, rep, Ending::Dot, ahead, &mut room) };
-                    let place = (which * passes + number) * cosets + coset;
-                    partial[place].store(pairwise(&room.dot).to_bits(), Ordering::Relaxed);
+                    partial[slot * cosets + coset].store(pairwise(&room.dot).to_bits(), Ordering::Relaxed);
                 }
             })?;
-            member.pass_done()?;
+            member.pass_done()
+        })?;
+        let values: Vec<f64> = partial.into_iter().map(|bits| f64::from_bits(bits.into_inner())).collect();
+        for (&which, values) in busy.iter().zip(values.chunks(cosets)) {
+            totals[which].push(pairwise(values));
         }
-        Ok(())
-    })?;
-    let values: Vec<f64> = partial.into_iter().map(|bits| f64::from_bits(bits.into_inner())).collect();
-    Ok(values.chunks(passes * cosets).map(pairwise).collect())
+    }
+    Ok(totals.iter().map(|values| pairwise(values)).collect())
 }
 
 /// The recurrence behind [`crate::apply::chebyshev_sums`], on states of the right and least length.

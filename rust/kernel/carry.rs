@@ -16,9 +16,6 @@ use crate::team::Member;
 
 /// Bytes of a state above which the next coset is fetched ahead: below, everything stays in cache anyway.
 const FETCH_FROM: usize = 1 << 23;
-fn fetch_from() -> usize {
-    std::env::var("FF").ok().map_or(FETCH_FROM, |v| v.parse().unwrap())
-}
 /// Amplitudes that a worker handles between two looks at the flags, at least.
 const PIECE: usize = 1 << 15;
 
@@ -73,7 +70,7 @@ impl<'a, T: Real> Carrier<'a, T> {
             self.coset.resize(size << 1 >> T::LANE_BITS, T::Line::default());
         }
         self.factors.resize_with(self.factors.len().max(pass.work.diagonals.len()), CosetFactors::default);
-        let fetching = amplitudes * 2 * size_of::<T>() >= fetch_from();
+        let fetching = amplitudes * 2 * size_of::<T>() >= FETCH_FROM;
         let member = self.member;
         member.each_piece(amplitudes / size, (PIECE / size).max(1), |numbers| {
             let mut next = pass.space.representative(numbers.start);

@@ -10,6 +10,7 @@
 
 use num_complex::Complex64;
 
+use super::LOOK_AHEAD;
 use super::diagonal::Diagonal;
 use super::space::{Space, Span, subsets};
 use crate::kernel::lanes::Real;
@@ -167,14 +168,19 @@ fn gather<'a, T: Real>(space: &Space, operations: &[&'a Operation]) -> Vec<Gathe
     loop {
         let mut span = Span::of_low_bits(0);
         let (mut taken, mut skipped): (Vec<&Operation>, Vec<&Operation>) = (vec![], vec![]);
-        for operation in left {
+        let mut rest = left.into_iter();
+        for operation in rest.by_ref() {
             let x = (space.coordinates(operation.x()) >> T::LANE_BITS) as u64;
             if skipped.iter().all(|s| s.commutes_with_all_of(operation)) && span.admit(x, TILE_BITS) {
                 taken.push(operation);
             } else {
                 skipped.push(operation);
+                if skipped.len() == LOOK_AHEAD {
+                    break;
+                }
             }
         }
+        skipped.extend(rest);
         found.push(Gathering { span, operations: taken });
         if skipped.is_empty() {
             return found;
@@ -204,9 +210,10 @@ impl<T: Real> Work<T> {
         runs.flat_map(|run| &run.operations).map(|operation| operation.arithmetic(&self.diagonals)).sum()
     }
 
-    /// Number of operations on tiles.
+    /// Number of operations on tiles, without factors that were put off.
     pub fn operations(&self) -> usize {
-        self.stages.iter().flat_map(|stage| &stage.runs).map(|run| run.operations.len()).sum()
+        let runs = self.stages.iter().flat_map(|stage| &stage.runs);
+        runs.flat_map(|run| &run.operations).filter(|operation| operation.form != Form::Scale).count()
     }
 
     /// Number of runs.

@@ -6,14 +6,16 @@ use numpy::{PyArray1, PyReadonlyArray1};
 use pyo3::prelude::*;
 
 use super::error::to_python;
+use super::gateway::{Spoils, run};
 use crate::clifford::{Clifford, Turn};
 use crate::error::{Error, Result};
-use crate::evolve::Planned;
+use crate::evolve::{Planned, together};
 use crate::frame::Frame;
 use crate::kernel::lanes::Real;
 use crate::operation::joined;
 use crate::pauli::PauliString;
-use crate::rotations::{Body, Rotation, Rotations};
+use crate::rotations::{Block, Body, Rotation, Rotations};
+use crate::team::Control;
 
 /// Ordered rotations in repeated blocks, and a global phase.
 #[pyclass(frozen, name = "Rotations", module = "trueturn._native")]
@@ -161,23 +163,27 @@ impl PyRotations {
 
     /// What the engine makes of the circuit: for each planned list the times that it runs, and for each of its passes the
     /// rotations, the dimension of its cosets, whether these are contiguous, its runs over tiles and its operations.
-    fn passes(&self, single: bool) -> Vec<PlannedList> {
-        if single { planned_lists::<f32>(&self.rotations) } else { planned_lists::<f64>(&self.rotations) }
+    fn passes(&self, py: Python<'_>, single: bool) -> PyResult<Vec<PlannedList>> {
+        run(py, u64::MAX, Spoils::Nothing, None, |control| match single {
+            true => planned_lists::<f32>(&self.rotations, control),
+            false => planned_lists::<f64>(&self.rotations, control),
+        })
     }
 
     /// Bounds on the rounding of all operations that the engine makes of the circuit, see
-    /// [`Operation::rounding`](crate::operation::Operation::rounding): in roundoffs of amplitudes, and of doubles.
+    /// [`Operation::rounding`](crate::operation::Operation::rounding): in roundoffs of amplitudes, and of doubles. Where no
+    /// state vector is that large, each rotation counts by itself.
     fn rounding_units(&self) -> (f64, f64) {
+        if self.rotations.qubits() > LARGEST_STATE {
+            return (LONE_ROTATION * self.rotations.count() as f64, 0.0);
+        }
         let (mut units, mut angles) = (0.0, 0.0);
-        self.rotations.for_each_list(&mut |list, times| {
-            // Equal strings of repeats that are planned together may merge.
-            let together = times.min(crate::passes::UNROLLED_REPEATS) as f64;
-            for (own, sum) in joined(list).iter().map(|operation| operation.rounding()) {
-                units += times as f64 * own;
-                angles += times as f64 * sum;
-            }
-            if together > 1.0 {
-                angles += times as f64 * together * list.iter().map(|rotation| rotation.angle.abs()).sum::<f64>();
+        each_block(self.rotations.blocks(), 1, &mut |list, repeat, times| {
+            for (list, own) in together(list, repeat) {
+                for (roundings, sums) in joined(&list).iter().map(|operation| operation.rounding()) {
+                    units += times as f64 * own as f64 * roundings;
+                    angles += times as f64 * own as f64 * sums;
+                }
             }
         });
         (units, angles)
@@ -193,17 +199,32 @@ impl PyRotations {
     }
 }
 
+/// Qubits of the largest state that an address space holds.
+const LARGEST_STATE: u32 = 62;
+/// Roundings of a rotation that joins no other.
+const LONE_ROTATION: f64 = 8.0;
+
+/// Calls `take(list, repeat, times)` for each list with its own repeat and that of all around it.
+fn each_block(blocks: &[Block], times: u64, take: &mut dyn FnMut(&[Rotation], u64, u64)) {
+    for block in blocks {
+        match &block.body {
+            Body::List(list) => take(list, block.repeat, times),
+            Body::Nested(blocks) => each_block(blocks, times.saturating_mul(block.repeat), take),
+        }
+    }
+}
+
 /// Times, and the figures of each pass.
 type PlannedList = (u64, Vec<(usize, u32, bool, usize, usize)>);
 
-fn planned_lists<T: Real>(rotations: &Rotations) -> Vec<PlannedList> {
+fn planned_lists<T: Real>(rotations: &Rotations, control: &Control) -> Result<Vec<PlannedList>> {
     let mut found = vec![];
-    Planned::<T>::circuit(rotations).each_list(1, &mut |passes, times| {
+    Planned::<T>::circuit(rotations, control)?.each_list(1, &mut |passes, times| {
         let figures = passes.iter().map(|pass| {
             let contiguous = pass.offsets.is_empty();
             (pass.rotations, pass.space.dimension(), contiguous, pass.work.runs(), pass.work.operations())
         });
         found.push((times, figures.collect()));
     });
-    found
+    Ok(found)
 }
