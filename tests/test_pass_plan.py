@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+import os
+import resource
+
 import numpy as np
 import pytest
 from hypothesis import given
@@ -93,3 +96,32 @@ def test_room_starts_at_a_cache_line_and_large_room_at_a_large_page(count, dtype
     boundary = 1 << 21 if array.nbytes >= 1 << 22 else 64
     assert array.ctypes.data % boundary == 0
     assert array.flags.writeable and array.flags.c_contiguous
+
+
+@pytest.mark.skipif(not hasattr(os, "fork"), reason="no fork on this system")
+def test_a_forked_child_has_states_of_its_own():
+    state = tt.State.computational(0, 18)
+    child = os.fork()
+    if child == 0:
+        state.amplitudes[0] = 0.5
+        os._exit(0)
+    os.waitpid(child, 0)
+    assert state.amplitudes[0] == 1.0
+
+
+@pytest.mark.parametrize("dtype", ["float64", None, "abacus"])
+def test_plans_are_for_complex_amplitudes(dtype):
+    with pytest.raises(tt.errors.ArgumentError, match="complex128 or complex64"):
+        tt.Rotations([1], [0], [0.1], 3).plan(dtype)
+
+
+def test_many_observables_take_little_memory():
+    """Operators are taken in batches: 2000 strings at once once took a quarter of a gigabyte."""
+    generator = np.random.default_rng(3)
+    masks = [[int(m) for m in generator.integers(0, 1 << 18, 400)] for _ in range(2)]
+    operators = [tt.Operator.from_masks([x], [z], [1.0], 18) for x, z in zip(*masks, strict=True)]
+    state = tt.State.random(18, 1)
+    before = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss
+    values = state.expectations(operators)
+    assert resource.getrusage(resource.RUSAGE_SELF).ru_maxrss - before < 64 * 1024
+    assert values.shape == (400,) and abs(values).max() < 1.0
