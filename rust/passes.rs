@@ -32,6 +32,7 @@
 
 pub mod diagonal;
 pub mod space;
+pub mod spread;
 pub mod tiles;
 
 use crate::error::Result;

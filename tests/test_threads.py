@@ -20,7 +20,7 @@ from trueturn import _native
 COMMITTED = {
     ("mixed", "complex128"): "719997a133fa73d7168f134a5621334b59f6a2a8fab4e054c8904630bd2bd490",
     ("mixed", "complex64"): "58e8ef32879a3c7f5bc44b380a994793812fe8cde675e7513b00a81da7ff4048",
-    ("ladder", "complex128"): "f5405441c244a177c47e16efe061451a7c6f9d5104837ad0369394e72b47a57d",
+    ("ladder", "complex128"): "69b8a8878c3725f8f92a657859cc81dd32be65148b543da3fb510ccaae2d12f6",
     ("ladder", "complex64"): "0eb2711487efa37d491a799179334d322c1178196736a84a382645d74e1cece5",
     ("long", "complex128"): "2af6d8f73bfcde63f28b418644116cf4fc3efbe247d9a46295a63828c2dbdbb8",
     ("long", "complex64"): "e012b599789e5ca9ff5a97b2c4504b1ad3ebcbed1c23b3ba477e6d334b0c8b5a",

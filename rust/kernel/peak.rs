@@ -21,7 +21,9 @@ impl<T: Real> VectorWork<T> for Chains {
         // SAFETY: by contract; the room holds one vector.
         unsafe {
             let (factor, step) = (V::splat(T::from_f64(0.5)), V::splat(T::from_f64(0.25)));
-            let mut chains = [step; CHAINS];
+            // Starts that the compiler cannot tell are equal, or it would carry one chain for all.
+            let starts = std::hint::black_box([[T::from_f64(0.25); 16]; CHAINS]);
+            let mut chains = starts.map(|start| V::load(start.as_ptr()));
             for _ in 0..self.rounds {
                 for chain in &mut chains {
                     *chain = chain.mul(factor).add(step);

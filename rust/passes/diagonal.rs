@@ -10,6 +10,7 @@
 use num_complex::Complex64;
 
 use super::space::Space;
+use super::spread::{Combine, Flip, Spread};
 use crate::kernel::lanes::Real;
 
 /// Low coordinates of the tables.
@@ -17,48 +18,24 @@ pub const LOW_BITS: u32 = 7;
 /// Distinct flips that low tables are made for.
 const FLIPS: usize = 4;
 
-/// A sign by high coordinates and by the coset.
-#[derive(Clone, Copy, Debug, PartialEq)]
-struct Flip {
-    high: usize,
-    coset: usize,
-}
-
-impl Flip {
-    fn is_fixed(self) -> bool {
-        self.high == 0 && self.coset == 0
-    }
-
-    fn is_odd(self, high: usize, rep: usize) -> bool {
-        ((self.high & high).count_ones() + (self.coset & rep).count_ones()) & 1 == 1
-    }
-}
-
-/// A number whose sign flips: an angle, or a coefficient.
-#[derive(Clone, Copy, Debug)]
-struct Signed<N> {
-    flip: Flip,
-    value: N,
-}
-
 /// Numbers with one low mask.
 #[derive(Clone, Debug)]
 pub struct Group<T: Real, N> {
     mask: usize,
-    terms: Vec<Signed<N>>,
+    numbers: Spread<N>,
     /// Signs by lane, for vectors of even and of odd parity.
     signs: [T::Line; 2],
 }
 
-impl<T: Real, N> Group<T, N> {
-    fn new(mask: usize) -> Self {
+impl<T: Real, N: Combine> Group<T, N> {
+    fn new(mask: usize, numbers: Spread<N>) -> Self {
         let mut signs = [T::Line::default(); 2];
         for (parity, line) in signs.iter_mut().enumerate() {
             for (lane, sign) in line.as_mut().iter_mut().enumerate() {
                 *sign = T::from_f64(if is_odd(lane & mask) ^ (parity == 1) { -1.0 } else { 1.0 });
             }
         }
-        Self { mask, terms: vec![], signs }
+        Self { mask, numbers, signs }
     }
 
     /// Signs of the lanes of vector `low` of the low coordinates.
@@ -72,69 +49,71 @@ impl<T: Real, N> Group<T, N> {
 struct Sorted {
     low_bits: u32,
     high_size: usize,
-    low: Vec<(usize, Signed<f64>)>,
+    low: Vec<(usize, Flip, f64)>,
     flips: Vec<Flip>,
-    grouped: Vec<(usize, Signed<f64>)>,
-    high_fixed: Vec<Signed<f64>>,
-    high_moving: Vec<Signed<f64>>,
-    scalars: Vec<Signed<f64>>,
+    grouped: Vec<(usize, Flip, f64)>,
+    high: Vec<(Flip, f64)>,
 }
 
 impl Sorted {
     fn new(terms: &[(u64, f64)], space: &Space) -> Self {
         let low_bits = LOW_BITS.min(space.dimension());
-        let mut low: Vec<(usize, Signed<f64>)> = vec![];
+        let mut low: Vec<(usize, Flip, f64)> = vec![];
         let mut flips: Vec<Flip> = vec![];
-        let (mut high, mut scalars) = (vec![], vec![]);
+        let mut high = vec![];
         for &(z, value) in terms {
             let local = space.dual(z);
             let flip = Flip { high: local >> low_bits, coset: if space.leaves(z) { z as usize } else { 0 } };
-            let signed = Signed { flip, value };
-            match (local & ((1 << low_bits) - 1), flip.high) {
-                (0, 0) => scalars.push(signed),
-                (0, _) => high.push(signed),
-                (mask, _) => {
+            match local & ((1 << low_bits) - 1) {
+                0 => high.push((flip, value)),
+                mask => {
                     if !flip.is_fixed() && !flips.contains(&flip) {
                         flips.push(flip);
                     }
-                    low.push((mask, signed));
+                    low.push((mask, flip, value));
                 }
             }
         }
         let mut grouped = vec![];
         if flips.len() > FLIPS {
             flips.clear();
-            (low, grouped) = low.into_iter().partition(|(_, signed)| signed.flip.is_fixed());
+            (low, grouped) = low.into_iter().partition(|(_, flip, _)| flip.is_fixed());
         }
-        let (high_fixed, high_moving) = high.into_iter().partition(|signed: &Signed<f64>| signed.flip.coset == 0);
         let high_size = 1usize << (space.dimension() - low_bits);
-        Self { low_bits, high_size, low, flips, grouped, high_fixed, high_moving, scalars }
+        Self { low_bits, high_size, low, flips, grouped, high }
     }
 
     /// Calls `take(pattern of flips, low coordinates, numbers with their signs)` for all entries of the low tables.
     fn each_low_entry(&self, mut take: impl FnMut(usize, usize, &mut dyn Iterator<Item = f64>)) {
         let place = |flip: &Flip| self.flips.iter().position(|own| own == flip).map_or(0, |j| 1 << j);
-        let bits: Vec<usize> = self.low.iter().map(|(_, signed)| place(&signed.flip)).collect();
+        let bits: Vec<usize> = self.low.iter().map(|(_, flip, _)| place(flip)).collect();
         for pattern in 0..1usize << self.flips.len() {
             for index in 0..1usize << self.low_bits {
-                let one = |((mask, signed), bit): (&(usize, Signed<f64>), &usize)| {
-                    if is_odd(mask & index) ^ (bit & pattern != 0) { -signed.value } else { signed.value }
+                let one = |((mask, _, value), bit): (&(usize, Flip, f64), &usize)| {
+                    if is_odd(mask & index) ^ (bit & pattern != 0) { -value } else { *value }
                 };
                 take(pattern, index, &mut self.low.iter().zip(&bits).map(one));
             }
         }
     }
 
-    fn groups<T: Real, N>(&self, number: impl Fn(f64) -> N) -> Vec<Group<T, N>> {
-        let mut groups: Vec<Group<T, N>> = vec![];
-        for (mask, Signed { flip, value }) in &self.grouped {
-            let place = groups.iter().position(|group| group.mask == *mask).unwrap_or_else(|| {
-                groups.push(Group::new(*mask));
-                groups.len() - 1
-            });
-            groups[place].terms.push(Signed { flip: *flip, value: number(*value) });
+    fn spread<N: Combine>(&self, number: impl Fn(f64) -> N) -> Spread<N> {
+        Spread::new(self.high_size, self.high.iter().map(|(flip, value)| (*flip, number(*value))))
+    }
+
+    fn groups<T: Real, N: Combine>(&self, number: impl Fn(f64) -> N) -> Vec<Group<T, N>> {
+        let mut masks: Vec<usize> = vec![];
+        for (mask, ..) in &self.grouped {
+            if !masks.contains(mask) {
+                masks.push(*mask);
+            }
         }
-        groups
+        let group = |mask: usize| {
+            let own = self.grouped.iter().filter(|(other, ..)| *other == mask);
+            let numbers = own.map(|(_, flip, value)| (*flip, number(*value)));
+            Group::new(mask, Spread::new(self.high_size, numbers))
+        };
+        masks.into_iter().map(group).collect()
     }
 }
 
@@ -143,31 +122,13 @@ fn pattern(flips: &[Flip], high: usize, rep: usize) -> usize {
     flips.iter().enumerate().map(|(j, flip)| usize::from(flip.is_odd(high, rep)) << j).sum()
 }
 
-impl Signed<Complex64> {
-    fn at(&self, high: usize, rep: usize) -> Complex64 {
-        if self.flip.is_odd(high, rep) { self.value.conj() } else { self.value }
-    }
-}
-
-impl Signed<f64> {
-    fn at(&self, high: usize, rep: usize) -> f64 {
-        if self.flip.is_odd(high, rep) { -self.value } else { self.value }
-    }
-
-    fn phase(&self) -> Signed<Complex64> {
-        Signed { flip: self.flip, value: unit(self.value) }
-    }
-}
-
 /// A diagonal operation in the coordinates of a space.
 #[derive(Clone, Debug)]
 pub struct Diagonal<T: Real> {
     /// For each pattern of flips and each vector of low coordinates: cosine lanes, then sine lanes.
     pub low: Vec<T::Line>,
     flips: Vec<Flip>,
-    high_fixed: Vec<Complex64>,
-    high: Vec<Signed<Complex64>>,
-    scalars: Vec<Signed<Complex64>>,
+    high: Spread<Complex64>,
     /// Phases that depend on low and high coordinates in more ways than the tables hold.
     pub groups: Vec<Group<T, Complex64>>,
     factor: Complex64,
@@ -191,6 +152,7 @@ pub struct CosetFactors<T> {
     pub high: Vec<HighFactor<T>>,
     /// By group, then by high coordinate: cosine and sine.
     pub groups: Vec<[T; 2]>,
+    combined: Vec<(usize, Complex64)>,
 }
 
 fn unit(angle: f64) -> Complex64 {
@@ -216,37 +178,22 @@ impl<T: Real> Diagonal<T> {
             low[line].as_mut()[lane] = T::from_f64(phase.re);
             low[line + 1].as_mut()[lane] = T::from_f64(phase.im);
         });
-        let phases = |list: &[Signed<f64>]| list.iter().map(Signed::phase).collect::<Vec<_>>();
-        let fixed = phases(&sorted.high_fixed);
-        let product = |high: usize| fixed.iter().fold(Complex64::new(1.0, 0.0), |p, term| p * term.at(high, 0));
-        Self {
-            low,
-            high_fixed: (0..sorted.high_size).map(product).collect(),
-            high: phases(&sorted.high_moving),
-            scalars: phases(&sorted.scalars),
-            groups: sorted.groups(unit),
-            flips: sorted.flips,
-            factor,
-        }
+        Self { low, high: sorted.spread(unit), groups: sorted.groups(unit), flips: sorted.flips, factor }
     }
 
     /// The factors of the coset of `rep`.
     pub fn prepare(&self, rep: usize, room: &mut CosetFactors<T>) {
-        let scalar = self.scalars.iter().fold(self.factor, |p, term| p * term.at(0, rep));
         let lines = self.low.len() >> self.flips.len();
-        room.high.clear();
-        for (high, fixed) in self.high_fixed.iter().enumerate() {
-            let factor = self.high.iter().fold(fixed * scalar, |p, term| p * term.at(high, rep));
+        let CosetFactors { high: factors, groups, combined } = room;
+        factors.clear();
+        self.high.each(rep, combined, |high, phase| {
+            let factor = phase * self.factor;
             let low = pattern(&self.flips, high, rep) * lines;
-            room.high.push(HighFactor { re: T::from_f64(factor.re), im: T::from_f64(factor.im), low });
-        }
-        room.groups.clear();
+            factors.push(HighFactor { re: T::from_f64(factor.re), im: T::from_f64(factor.im), low });
+        });
+        groups.clear();
         for group in &self.groups {
-            for high in 0..self.high_fixed.len() {
-                let phase = group.terms.iter().map(|term| term.at(high, rep)).reduce(|p, q| p * q);
-                let phase = phase.unwrap_or(Complex64::new(1.0, 0.0));
-                room.groups.push([T::from_f64(phase.re), T::from_f64(phase.im)]);
-            }
+            group.numbers.each(rep, combined, |_, phase| groups.push([T::from_f64(phase.re), T::from_f64(phase.im)]));
         }
     }
 }
@@ -257,9 +204,7 @@ pub struct DiagonalSum<T: Real> {
     /// For each pattern of flips and each vector of low coordinates: one line.
     pub low: Vec<T::Line>,
     flips: Vec<Flip>,
-    high_fixed: Vec<f64>,
-    high: Vec<Signed<f64>>,
-    scalars: Vec<Signed<f64>>,
+    high: Spread<f64>,
     /// Values that depend on low and high coordinates in more ways than the tables hold.
     pub groups: Vec<Group<T, f64>>,
 }
@@ -280,6 +225,7 @@ pub struct CosetSums<T> {
     pub high: Vec<HighSum<T>>,
     /// By group, then by high coordinate.
     pub groups: Vec<T>,
+    combined: Vec<(usize, f64)>,
 }
 
 impl<T: Real> DiagonalSum<T> {
@@ -292,15 +238,7 @@ impl<T: Real> DiagonalSum<T> {
             let lane = index & ((1 << T::LANE_BITS) - 1);
             low[pattern * vectors + (index >> T::LANE_BITS)].as_mut()[lane] = T::from_f64(values.sum());
         });
-        let fixed = |high: usize| sorted.high_fixed.iter().map(|term| term.at(high, 0)).sum::<f64>();
-        Self {
-            low,
-            high_fixed: (0..sorted.high_size).map(fixed).collect(),
-            groups: sorted.groups(|value| value),
-            flips: sorted.flips,
-            high: sorted.high_moving,
-            scalars: sorted.scalars,
-        }
+        Self { low, high: sorted.spread(|value| value), groups: sorted.groups(|value| value), flips: sorted.flips }
     }
 
     /// Most numbers that enter one entry of the diagonal one after the other.
@@ -310,18 +248,15 @@ impl<T: Real> DiagonalSum<T> {
 
     /// The values of the coset of `rep`.
     pub fn prepare(&self, rep: usize, room: &mut CosetSums<T>) {
-        let scalar: f64 = self.scalars.iter().map(|term| term.at(0, rep)).sum();
         let lines = self.low.len() >> self.flips.len();
-        room.high.clear();
-        for (high, fixed) in self.high_fixed.iter().enumerate() {
-            let value = self.high.iter().fold(fixed + scalar, |sum, term| sum + term.at(high, rep));
-            room.high.push(HighSum { value: T::from_f64(value), low: pattern(&self.flips, high, rep) * lines });
-        }
-        room.groups.clear();
+        let CosetSums { high: sums, groups, combined } = room;
+        sums.clear();
+        self.high.each(rep, combined, |high, value| {
+            sums.push(HighSum { value: T::from_f64(value), low: pattern(&self.flips, high, rep) * lines });
+        });
+        groups.clear();
         for group in &self.groups {
-            for high in 0..self.high_fixed.len() {
-                room.groups.push(T::from_f64(group.terms.iter().map(|term| term.at(high, rep)).sum()));
-            }
+            group.numbers.each(rep, combined, |_, value| groups.push(T::from_f64(value)));
         }
     }
 }
