@@ -54,7 +54,7 @@ def plan(job: Path, into: Path | None, as_json: bool, threads: int | None) -> in
     "--errors",
     type=click.Choice(["measured", "proven"]),
     default="measured",
-    help="Algorithmic errors: measured from the start state (default), or proven bounds without a state.",
+    help="Algorithmic errors: measured from the start state (default), or proven bounds, for which JOB needs no [start].",
 )
 @AS_JSON
 @THREADS
