@@ -109,3 +109,30 @@ def test_bad_input_is_status_2(tmp_path, capsys, old, new, message) -> None:
     path.write_text(path.read_text().replace(old, new))
     assert cli.run(["bound", str(path)]) == 2
     assert message in capsys.readouterr().err
+
+
+def test_the_refused_tolerance_is_the_one_of_the_job(tmp_path) -> None:
+    # The observable doubles the distance; the note names the tolerance that was asked for, not half of it.
+    target = 'times = [1.0]\nobservables = { edge = "Z_0" }'
+    rows = job_bounds(read_job(written(tmp_path, target, tolerance=1e-16), start_required=False))
+    suzuki = next(row for row in rows if row.label.startswith("suzuki-4"))
+    assert suzuki.proven_steps is None
+    assert "reach it (1e-16)" in suzuki.note and "rounded to doubles" in suzuki.note
+
+
+def test_plans_extrapolations_and_the_command_prove_the_same_count(tmp_path) -> None:
+    task = read_job(written(tmp_path, 'quantity = "state"\ntimes = [1.0]'), start_required=False)
+    proven = {row.label: row.proven_steps for row in job_bounds(task)}
+    formulas = [candidate.formula for candidate in task.formula_candidates]
+    start = tt.State.product("0+1-")
+    planned = tt.plan(task.operator, start, 1.0, formulas, "commuting", 0.01, "state")
+    assert {row.label: row.bound_steps for row in planned.rows} == proven
+    assert all(row.overpays == proven[row.label] / row.steps for row in planned.rows)
+    scaling = tt.step_scaling(
+        lambda n: tt.Case(task.operator, 1.0, 0.01 * n, start), [1, 2, 4], formulas, quantity="state"
+    )
+    assert {f"{entry.formula}, commuting": entry.proven for entry in scaling.extrapolate(1)} == proven
+    # Else the test could not tell: the published theorem alone proves less.
+    strang = task.formula_candidates[0]
+    published = tt.steps_by_bound("strang", strang.partition(task.operator), 1.0, 0.01)
+    assert published > proven["strang, commuting"]

@@ -228,6 +228,33 @@ def test_a_tolerance_below_the_rounding_of_the_weights_is_refused_with_what_can_
     tt.steps_by_bound("suzuki-4", circuits.P3, 1.0, 1.01 * achievable)
 
 
+def test_a_refused_tolerance_says_which_limit_stands_in_the_way():
+    for tolerance, time, words in (
+        (1e-17, 1.0, "the weights of the formula are rounded to doubles, which leaves a bound of"),
+        (1e-300, 1e200, r"the bound overflows for this time \(1e\+200\) with any"),
+    ):
+        with pytest.raises(tt.errors.ToleranceError, match=rf"reach it \({tolerance!r}\): {words}"):
+            tt.steps_by_bound("suzuki-4", circuits.P3, time, tolerance)
+    with pytest.raises(
+        tt.errors.ToleranceError, match=r"with 2\*\*53 steps, the most that there are, the bound is still"
+    ):
+        tt.steps_by_bound("lie", circuits.P3, 1.0, 1e-20)
+
+
+@pytest.mark.parametrize("name", ["qdrift", "permuted", "Random-Direction"])
+def test_the_name_of_a_randomised_formula_is_sent_to_its_channel_bound(name):
+    with pytest.raises(
+        tt.errors.FormulaError, match=r"^formula: randomised.*trueturn\.randomised\.\w+\(…\)\.channel_bo"
+    ):
+        tt.bound(name, circuits.P3, 1.0, 1)
+
+
+@pytest.mark.parametrize("effort", [0.0, -1, "1", True, np.nan, 10**400])
+def test_an_effort_that_is_no_positive_number_is_refused(effort):
+    with pytest.raises(tt.errors.ArgumentError, match="effort: is not a positive number"):
+        tt.bound("lie", circuits.P3, 1.0, 1, effort=effort)
+
+
 def test_a_huge_time_gives_infinity_instead_of_an_overflow():
     for name in ("lie", "strang", "suzuki-4"):
         for method in ("commutator", "tightest", "analytic"):
@@ -285,7 +312,7 @@ def test_an_ensemble_is_sent_to_its_channel_bound():
         tt.bound(ensemble, circuits.P3, 1.0, 5)
 
 
-@pytest.mark.parametrize("tolerance", [0.0, -1.0, np.nan, np.inf, "tight", True])
+@pytest.mark.parametrize("tolerance", [0.0, -1.0, np.nan, np.inf, 10**400, "tight", True])
 def test_tolerances_that_are_not_positive_numbers_are_refused(tolerance):
     with pytest.raises(tt.errors.ToleranceError, match="tolerance: is not a positive number"):
         tt.steps_by_bound("lie", circuits.P3, 1.0, tolerance)

@@ -6,6 +6,7 @@ import json
 
 import pytest
 
+import trueturn as tt
 from trueturn import cli
 from trueturn.audit.job import built_in_job, read_job, template
 from trueturn.device.job import job_budgets
@@ -37,6 +38,7 @@ steps = "least"
 formula = "lie"
 {device}
 """
+ISING = tt.model.ising(tt.lattice.chain(5), zz=-1.0, x=0.7)
 DEVICE = "[device]\ntwo_qubit_error = {rate}\nshots = {shots}"
 
 
@@ -77,6 +79,28 @@ def test_proven_errors_need_no_state(job, capsys, monkeypatch):
     assert cli.run(["budget", str(path), "--errors", "proven", "--json"]) in (0, 1)
     rows = json.loads(capsys.readouterr().out)["budgets"]["edge"]["rows"]
     assert {row["algorithmic_kind"] for row in rows} == {"proven"}
+
+
+def test_proven_errors_need_no_start_section(job, capsys):
+    path = job(DEVICE.format(rate=1e-7, shots=1_000_000))
+    path.write_text(path.read_text(encoding="utf-8").replace('[start]\npattern = "0"\n', ""), encoding="utf-8")
+    assert cli.run(["budget", str(path), "--errors", "proven"]) in (0, 1)
+    assert "by proven bound" in capsys.readouterr().out
+    assert cli.run(["budget", str(path)]) == 2
+    assert "start" in capsys.readouterr().err
+
+
+def test_the_gates_are_those_of_the_device_in_the_job(job):
+    text = DEVICE.format(rate=1e-6, shots=100_000)
+    rows = {}
+    for more in ('native = "cx"', 'native = "zz"', 'connectivity = "ring"'):
+        found = job_budgets(read_job(job(f"{text}\n{more}")), "proven")["edge"]
+        circuit = found.best.candidate.formula.rotations(found.best.candidate.partition(ISING), 1.0, found.best.steps)
+        device = dict([more.replace('"', "").split(" = ")])
+        assert found.best.two_qubit_gates == circuit.cost(**device).two_qubit_gates
+        rows[more] = found
+        assert "written for the device" in found.assumptions[1]
+    assert "native zz" in rows['native = "zz"'].assumptions[1]
 
 
 def test_a_relative_tolerance_is_taken_of_the_norm(job):

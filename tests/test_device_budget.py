@@ -15,8 +15,11 @@ import circuits
 import oracle
 import trueturn as tt
 from trueturn.device.algorithmic import ErrorLaw, Measurements
+from trueturn.device.counting import visible_gates
+from trueturn.device.counts import Written
 from trueturn.device.shares import gate_share
 from trueturn.errors import ArgumentError, FormulaError, OperatorError, StateShapeError
+from trueturn.export.hardware import Hardware
 
 # Two qubits, so that every gate is in the cone: a Lie step has two rotations of weight 2 and costs 4 gates.
 PAIR = tt.Operator("0.3 X_0 X_1 + 0.4 Z_0 Z_1 + 0.2 X_0")
@@ -175,7 +178,7 @@ def test_a_fitted_law_lies_above_the_points_that_it_was_fitted_to():
     candidate = tt.Candidate("strang", "axis")
     parts = candidate.partition(CHAIN)
     law = measurements.law(candidate, parts, 2.0, 10**6)
-    first, last = map(int, re.search(r"from (\d+) to (\d+)", law.words).groups())
+    first, last = map(int, re.search(r"from (\d+) to (\d+)", law.words(1)).groups())
     # The counts that are run: 1, then 1.5 times as many, and at least one more.
     counts = [1]
     while counts[-1] < last:
@@ -185,7 +188,7 @@ def test_a_fitted_law_lies_above_the_points_that_it_was_fitted_to():
 
 
 def test_a_measured_error_above_the_law_counts(monkeypatch):
-    hopeful = ErrorLaw("fitted", "too good", 2.0, lambda steps: 1e-3 / steps)
+    hopeful = ErrorLaw("fitted", lambda steps: "too good", 2.0, lambda steps: 1e-3 / steps)
     monkeypatch.setattr(Measurements, "law", lambda *arguments: hopeful)
     row = tt.device_budget(CHAIN, 1.1, ["lie"], MIDDLE, 0.05, two_qubit_error=3e-5, state=START).best
     assert row.algorithmic_kind == "measured" and row.algorithmic == row.measured[1] > hopeful(row.steps)
@@ -197,7 +200,9 @@ def test_without_a_state_bounds_are_taken_at_any_size():
     found = tt.device_budget(chain, 0.5, ["lie", "strang"], watched, 0.1, two_qubit_error=1e-6)
     for row in found.rows:
         parts = tt.Partition.of(chain, "commuting")
-        proven = found.width * tt.bound(row.candidate.formula, parts, 0.5, row.steps).value
+        bound = tt.bound(row.candidate.formula, parts, 0.5, row.steps, method="tightest")
+        proven = found.width * bound.value
+        assert row.law == f"{bound.theorem}, {bound.source}"
         assert row.algorithmic_kind == "proven" and row.algorithmic == pytest.approx(min(found.width, proven))
     assert found.rows[0].gates_in_cone < found.rows[0].two_qubit_gates
 
@@ -222,6 +227,47 @@ def test_gates_may_be_counted_otherwise():
     half = lie_budget(0.5, 2, 1e-5, gates=lambda circuit: circuit.two_qubit_gates() // 2)
     full = lie_budget(0.5, 2, 1e-5)
     assert half.best.total < full.best.total and half.best.steps > full.best.steps
+
+
+def test_a_law_by_the_name_of_a_formula_serves_all_its_rules():
+    laws = {"strang": lambda r: 0.2 / r**2}
+    pair = [tt.Candidate("strang", rule) for rule in ("axis", "bond")]
+    found = tt.device_budget(CHAIN, 0.5, pair, MIDDLE, 0.1, two_qubit_error=1e-5, algorithmic=laws)
+    assert [row.algorithmic_kind for row in found.rows] == ["given", "given"]
+
+
+@pytest.mark.parametrize(
+    "device",
+    [
+        {},
+        {"native": "zz"},
+        {"join_pairs": False},
+        {"connectivity": "ring"},
+        {"connectivity": "line", "routing": "swaps"},
+    ],
+)
+@pytest.mark.parametrize("name", ["lie", "strang", "suzuki-4", "ruth-3"])
+def test_gates_written_for_a_device_are_those_of_the_file_at_every_step_count(name, device):
+    ring = tt.model.heisenberg(tt.lattice.ring(5), 0.5, z=0.2)
+    parts = tt.Partition.of(ring, "bond")
+
+    def circuit(steps):
+        return tt.formula(name).rotations(parts, 1.0, steps)
+
+    written = Written(circuit, Hardware.of(device))
+    for steps in (1, 2, 3, 4, 5, 6, 7, 30, 101):
+        assert written(steps) == circuit(steps).cost(**device).two_qubit_gates
+
+
+@pytest.mark.parametrize("device", [{"native": "zz"}, {"connectivity": "line"}])
+def test_a_budget_counts_gates_of_a_device_as_a_plan_does_and_says_how(device):
+    laws = {"strang": lambda r: 0.2 / r**2}
+    ring = tt.model.heisenberg(tt.lattice.ring(5), 0.5, z=0.2)
+    found = tt.device_budget(ring, 0.5, "strang", MIDDLE, 0.1, two_qubit_error=1e-5, algorithmic=laws, device=device)
+    circuit = tt.formula("strang").rotations(tt.Partition.of(ring, "commuting"), 0.5, found.best.steps)
+    assert found.best.gates_in_cone == visible_gates(circuit, MIDDLE, Hardware.of(device))
+    assert found.best.two_qubit_gates == circuit.cost(**device).two_qubit_gates != circuit.two_qubit_gates()
+    assert "written for the device" in found.assumptions[1] and next(iter(device.values())) in found.assumptions[1]
 
 
 def test_variance_of_the_whole_observable_asks_for_fewer_shots():
@@ -278,6 +324,13 @@ ORDINARY = {"two_qubit_error": 1e-3, "algorithmic": {"lie": lambda r: 1.0 / r}}
         ({"algorithmic": {"lye": lambda r: 1.0}}, ArgumentError, r"algorithmic: names no candidate \('lye'\)"),
         ({"algorithmic": {"lie": lambda r: -1.0}}, ArgumentError, r"algorithmic\['lie'\]: gives no error"),
         ({"algorithmic": {"lie": lambda r: "a"}}, ArgumentError, r"algorithmic\['lie'\]: gives no error"),
+        ({"algorithmic": 3}, ArgumentError, r"algorithmic: is no mapping \(3\)"),
+        ({"algorithmic": {"lie": 3}}, ArgumentError, r"algorithmic\['lie'\]: is no function \(3\)"),
+        ({"gates": 3}, ArgumentError, r"gates: is no function of Rotations \(3\)"),
+        ({"gates": lambda circuit: "a"}, ArgumentError, r"gates: gives no count \('a'\)"),
+        ({"gates": lambda circuit: 1, "device": {}}, ArgumentError, r"gates: given beside device"),
+        ({"device": 5}, ArgumentError, r"device: neither a mapping nor a Hardware \(5\)"),
+        ({"synthesis_error": 10**400}, ArgumentError, r"synthesis_error: not a positive finite number"),
         ({"state": tt.State.product("000")}, StateShapeError, r"qubits"),
     ],
 )

@@ -250,6 +250,17 @@ def test_a_known_norm_narrows_the_interval_where_the_error_is_spread_out():
     assert narrow.high <= norm.high
 
 
+@pytest.mark.parametrize("method", ["dense", "sampled"])
+def test_a_norm_below_a_measured_error_is_refused(method):
+    # Without the check an upper end of 1e-6 was reported for an error of some 1e-3.
+    chain = tt.model.heisenberg(tt.lattice.chain(4), 1.0)
+    circuit = STRANG.rotations(tt.Partition.of(chain, "bond"), 1.0, 10)
+    with pytest.raises(errors.ArgumentError, match=r"^norm: is no upper bound \(1e-06\), since an error of 0\.0"):
+        tt.rms_error(circuit, chain, 1.0, method=method, norm=1e-6)
+    true = np.linalg.norm(difference(circuit, chain, 1.0), 2)
+    assert tt.rms_error(circuit, chain, 1.0, method=method, norm=true * (1 + 1e-9)).high <= true
+
+
 PRODUCTS = ["000", "+-+", ["0", "+i", (0.3, 1.2)]]
 
 
@@ -341,6 +352,12 @@ BAD = {
         r"^bound: is one for random inputs \(0\.0\d+\); give one with inputs='worst'",
     ),
     "negative bound": (lambda: tt.operator_error(ONE, X0, 1.0, bound=-1), errors.ArgumentError, "^bound: is negative"),
+    "starts": (
+        lambda: tt.product_errors(ONE, X0, 1.0, 3),
+        errors.ArgumentError,
+        r"^starts: is no list of product states \(3\)",
+    ),
+    "one start": (lambda: tt.product_errors(ONE, X0, 1.0, "0"), errors.ArgumentError, r"^starts: is no list"),
     "samples": (lambda: tt.rms_error(ONE, X0, 1.0, samples=0), errors.ArgumentError, "^samples: is not a whole"),
     "seed": (lambda: tt.rms_error(ONE, X0, 1.0, seed=-1), errors.ArgumentError, "^seed: is not a whole"),
     "norm": (lambda: tt.rms_error(ONE, X0, 1.0, norm=-0.5), errors.ArgumentError, "^norm: is negative"),

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import dataclasses
 import itertools
 
 import numpy as np
@@ -13,7 +14,7 @@ import oracle
 import strategies
 import trueturn as tt
 from trueturn.audit.measure import Bench
-from trueturn.planning import costs, ranking
+from trueturn.planning import costs, ranking, words
 from trueturn.reference.certificate import norm_bound
 
 CHAIN = tt.model.ising(tt.lattice.chain(4), zz=-1.0, x=-0.7, z=0.2)
@@ -287,7 +288,7 @@ def test_the_proven_count_is_the_least_whose_bound_meets_the_tolerance():
     for row in found.rows:
         partition = row.candidate.partition(CHAIN)
         values = [
-            tt.bound(row.candidate.formula, partition, 1.0, count).value
+            tt.bound(row.candidate.formula, partition, 1.0, count, method="tightest").value
             for count in (row.bound_steps, row.bound_steps - 2)
         ]
         # A proven upper bound on the norm stands for it: here 1.5 exactly, since both terms can be 1 and 0.5 at once.
@@ -302,7 +303,7 @@ def test_proven_counts_cover_every_formula_and_can_be_left_out():
     found = tt.plan(CHAIN, START, 1.0, FORMULAS, "axis", 1e-2, "state")
     for row in found.rows:
         partition = row.candidate.partition(CHAIN)
-        assert row.bound_steps == tt.steps_by_bound(row.candidate.formula, partition, 1.0, 1e-2)
+        assert row.bound_steps == tt.steps_by_bound(row.candidate.formula, partition, 1.0, 1e-2, method="tightest")
         assert row.bound is not None and row.bound >= row.error[0]
     without = tt.plan(CHAIN, START, 1.0, FORMULAS, "axis", 1e-2, "state", bounds=False)
     assert all(row.bound is None and row.bound_steps is None and row.overpays is None for row in without.rows)
@@ -360,6 +361,18 @@ def test_rows_without_room_for_noise_rank_behind_those_that_have_it_and_are_not_
         assert rooms[0] or "has room for the noise" in found.reason
         seen |= set(rooms)
     assert seen == {True, False}
+
+
+def test_a_row_without_room_is_not_called_one_that_misses():
+    found = tt.plan(CHAIN, START, 1.0, FORMULAS, "axis", 1e-2, "observables", WATCHED, device={"two_qubit_error": 1e-6})
+    first, *others = found.rows
+    crowded = [first, *(dataclasses.replace(row, room=False) for row in others)]
+    missing = [first, *(dataclasses.replace(row, room=False, verdict="misses") for row in others)]
+    assert all(row.verdict == "meets" for row in crowded)
+    assert words.reason(crowded, found.cost, 1e-2).endswith(
+        "; no other way that meets it has room for the noise of the device."
+    )
+    assert words.reason(missing, found.cost, 1e-2).endswith("; no other way meets it.")
 
 
 def test_every_ordering_is_tried_and_named():
@@ -493,6 +506,9 @@ def plan_with(**changes):
         ({"rule": "single", "orderings": "every"}, tt.errors.ArgumentError, r"^orderings: 'every' .* \(11 here\)"),
         ({"cost": "two_qubit_gate"}, tt.errors.ArgumentError, r"^cost: unknown .* did you mean 'two_qubit_gates'\?"),
         ({"cost": []}, tt.errors.ArgumentError, r"^cost: empty"),
+        ({"cost": lambda circuit: "a"}, tt.errors.ArgumentError, r"^cost: gives no finite number \(own cost: 'a'\)"),
+        ({"cost": lambda circuit: np.nan}, tt.errors.ArgumentError, r"^cost: gives no finite number"),
+        ({"cost": lambda circuit: 10**400}, tt.errors.ArgumentError, r"^cost: gives no finite number"),
         ({"cost": 4}, tt.errors.ArgumentError, r"^cost: unknown \(4\)"),
         ({"tolerance": 0.0}, tt.errors.ToleranceError, r"^tolerance: not a positive number"),
         ({"tolerance": "x", "cost": "t_count"}, tt.errors.ToleranceError, r"^tolerance: not a positive number"),

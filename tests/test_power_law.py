@@ -141,6 +141,8 @@ def test_repeated_sizes_count_as_points():
         (lambda: PowerLaw.fit([4, 5, 6], [1, 2, 3], unit=-1.0), r"unit: negative"),
         (lambda: fit_steps(SIZES, range(1, 10)).interval(1.0), r"level: not between 0 and 1"),
         (lambda: fit_steps(SIZES, range(1, 10)).predict(0), r"size: not above zero"),
+        (lambda: PowerLaw.fit([1, 2, 4], [1, 16, 256]).predict(1e300), r"size: the law is too large .* \(1e\+300\)"),
+        (lambda: PowerLaw.fit([1, 2, 4], [1, 16, 256])(1e300), r"size: the law is too large"),
         (lambda: fit_steps(SIZES, range(1, 10)).bootstrap_interval(draws=3), r"draws: too few"),
     ],
 )

@@ -21,6 +21,19 @@ TIGHTEST = "tightest"
 METHODS = (COMMUTATOR, TIGHTEST, ANALYTIC)
 INPUTS = ("worst", "random")
 
+RANDOMISED = {
+    "qdrift": "qdrift",
+    "permuted": "permuted",
+    "random-order": "permuted",
+    "directed": "directed",
+    "random-direction": "directed",
+    "partly": "partly",
+}
+"""Names of randomised formulas, and what makes them in `trueturn.randomised`."""
+
+FALLING = 1.5
+"""Twice the steps leave at most 2^-p ≤ 1/2 of a bound of order p, and all of what the rounding of weights leaves."""
+
 
 @dataclass(frozen=True)
 class Bound:
@@ -243,10 +256,26 @@ def steps_by_bound(
     >>> tt.steps_by_bound("strang", parts, time=1.0, tolerance=1e-3)
     23
     """
+    return least_steps(formula, partition, time, tolerance, 1.0, method=method, inputs=inputs, effort=effort)
+
+
+def least_steps(
+    formula: Formula | Processed | str,
+    partition: Partition,
+    time: float,
+    tolerance: float,
+    per_distance: float,
+    *,
+    method: str,
+    inputs: str = "worst",
+    effort: float = 1.0,
+) -> int:
+    """Do as `steps_by_bound`, where the tolerance is on `per_distance` > 0 times the distance; refusals name that tolerance."""
     asked, method = _checked(formula, partition, time, method, inputs, effort)
-    limit = _checked_tolerance(tolerance)
+    wanted = _checked_tolerance(tolerance)
+    limit = wanted / per_distance
     if asked.error(method, MOST_STEPS) > limit:
-        raise _unreachable(limit, asked, method)
+        raise _unreachable(wanted, per_distance, asked, method)
     low, high = 0, 1
     while asked.error(method, high) > limit:
         low, high = high, min(2 * high, MOST_STEPS)
@@ -260,7 +289,7 @@ def _checked(
     formula: object, partition: object, time: object, method: object, inputs: object, effort: object
 ) -> tuple[_Question, str]:
     if isinstance(formula, str):
-        formula = known_formula(formula)
+        formula = _named(formula)
     if not isinstance(formula, (Formula, Processed)):
         average = " (an ensemble's own channel_bound() bounds its average)" if hasattr(formula, "channel_bound") else ""
         raise FormulaError(
@@ -288,7 +317,7 @@ def _checked(
             argument="method",
             value=method,
         )
-    if isinstance(effort, bool) or not isinstance(effort, Real) or not 0.0 < float(effort) < math.inf:
+    if not _is_positive(effort):
         raise ArgumentError(
             f"effort: is not a positive number ({effort!r}); give a share of the usual work, such as 0.1",
             argument="effort",
@@ -296,12 +325,12 @@ def _checked(
         )
     if isinstance(formula, Formula):
         require_structure(formula, partition)
-    return _Question(formula, partition, checked_time(time), str(inputs), float(effort)), str(method)
+    return _Question(formula, partition, checked_time(time), str(inputs), float(effort)), str(method)  # type: ignore[arg-type]
 
 
 def _checked_tolerance(tolerance: object) -> float:
-    if isinstance(tolerance, Real) and not isinstance(tolerance, bool) and 0.0 < float(tolerance) < math.inf:
-        return float(tolerance)
+    if _is_positive(tolerance):
+        return float(tolerance)  # type: ignore[arg-type]
     raise ToleranceError(
         f"tolerance: is not a positive number ({tolerance!r}); give one, such as 1e-3",
         tolerance=tolerance,
@@ -309,12 +338,47 @@ def _checked_tolerance(tolerance: object) -> float:
     )
 
 
-def _unreachable(limit: float, asked: _Question, method: str) -> ToleranceError:
-    """Refuse a tolerance, with the least value of the bound over powers of two of steps."""
-    least = min(asked.error(method, 2**power) for power in range(54))
+def _is_positive(value: object) -> bool:
+    """Whether this is a real number above zero whose float is finite."""
+    if not isinstance(value, Real) or isinstance(value, bool):
+        return False
+    try:
+        return 0.0 < float(value) < math.inf
+    except OverflowError:
+        return False
+
+
+def _named(name: str) -> Formula | Processed:
+    """Look a formula up; the names of randomised ones are sent to their channel bounds."""
+    maker = RANDOMISED.get(name.strip().lower())
+    if maker is not None:
+        raise FormulaError(
+            f"formula: randomised, so that a bound on one circuit says nothing ({name!r}); bound the average of its circuits "
+            f"with trueturn.randomised.{maker}(…).channel_bound()",
+            name=name,
+            choices=(f"trueturn.randomised.{maker}",),
+        )
+    return known_formula(name)
+
+
+def _unreachable(wanted: float, per_distance: float, asked: _Question, method: str) -> ToleranceError:
+    """Refuse a tolerance, with the least value of the bound over powers of two of steps and what keeps it there."""
+    values = [asked.error(method, 2**power) for power in range(MOST_STEPS.bit_length())]
+    least = min(values)
+    if least == math.inf:
+        why = f"the bound overflows for this time ({asked.time:g}) with any; give a shorter time"
+    elif values[-1] < values[-2] / FALLING:
+        why = (
+            f"with 2**53 steps, the most that there are, the bound is still {per_distance * least:.3g}; ask for more than "
+            "that, or give a shorter time"
+        )
+    else:
+        why = (
+            f"the weights of the formula are rounded to doubles, which leaves a bound of {per_distance * least:.3g} with any; "
+            "ask for more than that"
+        )
     return ToleranceError(
-        f"tolerance: no step count is proven to reach it ({limit!r}); the bound comes down to {least:.3g} only, because "
-        "the weights of the formula are rounded to doubles or because 2**53 steps are too few; ask for more than that",
-        tolerance=limit,
-        achievable=least,
+        f"tolerance: no step count is proven to reach it ({wanted!r}): {why}",
+        tolerance=wanted,
+        achievable=per_distance * least,
     )

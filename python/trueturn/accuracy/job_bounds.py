@@ -5,11 +5,11 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
-from trueturn.accuracy.bounds import Bound, bound, steps_by_bound
+from trueturn.accuracy.bounds import Bound, bound
+from trueturn.accuracy.proven_steps import proven_steps
 from trueturn.audit.figures import count, plain, upper
 from trueturn.audit.grid import grid_unit
 from trueturn.audit.job import Job
-from trueturn.errors import ToleranceError
 from trueturn.reference.certificate import norm_bound
 
 if TYPE_CHECKING:
@@ -68,22 +68,11 @@ def job_bounds(task: Job) -> tuple[BoundRow, ...]:
     for candidate in task.formula_candidates:
         partition = candidate.partition(task.operator)
         formula = candidate.formula
-
-        def least(inputs: str, formula: Any = formula, partition: Any = partition) -> int:
-            limit = task.tolerance / factor if factor > 0.0 else float("inf")
-            if limit >= 2.0:
-                return unit
-            found = steps_by_bound(formula, partition, time, limit, method="tightest", inputs=inputs)
-            return -(-found // unit) * unit
-
-        note = ""
-        proven: int | None = None
+        proven, why = proven_steps(formula, partition, time, task.tolerance, factor, unit)
+        note = why if proven is None else ""
         at_random: int | None = None
-        try:
-            proven = least("worst")
-            at_random = least("random") if task.quantity == "state" else None
-        except ToleranceError as error:
-            note = str(error)
+        if task.quantity == "state" and proven is not None:
+            at_random, _ = proven_steps(formula, partition, time, task.tolerance, factor, unit, "random")
         steps = candidate.steps if isinstance(candidate.steps, int) else proven
         found = None if steps is None else bound(formula, partition, time, steps, method="tightest")
         value = None if found is None else factor * min(found.value, 2.0 if task.quantity == "state" else 1.0)

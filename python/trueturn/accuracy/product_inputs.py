@@ -126,7 +126,7 @@ def product_errors(
     count = whole("draws", draws, 0, "give the number of random product states")
     first = whole("seed", seed, 0, "give 0 or more")
     roundings = whole("angle_roundings", angle_roundings, 0, "give 0 for exact angles")
-    listed = _default_starts(circuit.qubits, count, first) if starts is None else list(starts)
+    listed = _default_starts(circuit.qubits, count, first) if starts is None else _listed(starts)
     if not listed:
         raise ArgumentError("starts: empty; give at least one product state", argument="starts", value=starts)
     workers = _threads.resolve(threads)
@@ -139,6 +139,16 @@ def product_errors(
         low, high = joined([row.errors[name] for row in rows])
         largest[name] = ErrorInterval(low, high, kind="measured", proven=True)
     return ProductErrors(rows, largest)
+
+
+def _listed(starts: object) -> list[Start]:
+    if isinstance(starts, str) or not isinstance(starts, Iterable):
+        raise ArgumentError(
+            f'starts: is no list of product states ({starts!r}); give one such as ["0000", "++++"]',
+            argument="starts",
+            value=starts,
+        )
+    return list(starts)
 
 
 class _Bench:

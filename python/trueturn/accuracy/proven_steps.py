@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from trueturn.accuracy.bounds import bound, steps_by_bound
+from trueturn.accuracy.bounds import TIGHTEST, bound, least_steps
 from trueturn.errors import FormulaError, ToleranceError
 from trueturn.formulas import Formula
 from trueturn.formulas.processed import Processed
@@ -30,17 +30,35 @@ def allowed_distance(error: float, per_distance: float) -> float:
 
 
 def proven_steps(
-    formula: Formula | Processed, partition: Partition, time: float, distance: float, unit: int = 1
+    formula: Formula | Processed,
+    partition: Partition,
+    time: float,
+    tolerance: float,
+    per_distance: float,
+    unit: int = 1,
+    inputs: str = "worst",
 ) -> tuple[int | None, str]:
-    """Return the least multiple of `unit` steps whose proven bound is within `distance` and its source, or None and the reason.
+    """Return the least multiple of `unit` steps whose tightest bound meets a tolerance and its source, or None and the reason.
 
-    The bound is on the circuit in exact arithmetic at the last time: at earlier times on the same grid, and at shorter times
-    in as many steps, it is smaller. It falls as steps grow, so the least count that fits the grid is the next one on it.
+    This is the one proven count of the package: `trueturn bound`, plans and extrapolations give it. The bound is on the
+    circuit in exact arithmetic at the last time: at earlier times on the same grid, and at shorter times in as many steps, it
+    is smaller. It falls as steps grow, so the least count that fits the grid is the next one on it.
+
+    Parameters
+    ----------
+    formula, partition, time, inputs
+        As for `bound`.
+    tolerance : float
+        On the error, which is at most `per_distance` times the distance of the circuit from exp(-iHt).
+    per_distance : float
+    unit : int
     """
+    if allowed_distance(tolerance, per_distance) >= 2.0:
+        return unit, "no two unitary matrices are further than 2 apart"
     try:
-        least = steps_by_bound(formula, partition, time, distance)
+        least = least_steps(formula, partition, time, tolerance, per_distance, method=TIGHTEST, inputs=inputs)
         steps = -(-least // unit) * unit
-        found = bound(formula, partition, time, steps)
+        found = bound(formula, partition, time, steps, method=TIGHTEST, inputs=inputs)
     except (FormulaError, ToleranceError) as refusal:
         return None, str(refusal)
     return steps, f"{found.theorem}, {found.source}"

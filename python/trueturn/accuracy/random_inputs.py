@@ -82,7 +82,8 @@ def rms_error(
         Least probability, over the samples, with which the interval holds.
     norm : ErrorInterval or float, optional
         An upper bound on ‖S - exp(-iHt)‖, such as what `operator_error` gave: narrows the interval. The probability
-        with which an interval of kind ``"confidence"`` fails is taken from what `confidence` allows.
+        with which an interval of kind ``"confidence"`` fails is taken from what `confidence` allows. One below an error
+        that is measured here is refused; whether it bounds the errors of all other states is not checked.
     seed : int
         Sample k is ``State.random(qubits, seed + k)``.
 
@@ -94,7 +95,7 @@ def rms_error(
     Raises
     ------
     ArgumentError, OperatorError, StateShapeError, MemoryRefusedError, ToleranceError
-        As for `operator_error`; or `norm` fails more often than `confidence` allows.
+        As for `operator_error`; or `norm` fails more often than `confidence` allows, or an error above it is measured.
 
     Notes
     -----
@@ -122,6 +123,7 @@ def rms_error(
     if not isinstance(exact, PlannedEvolution):
         matrix, error = dense_difference(circuit, exact, threads=workers, angle_roundings=roundings)
         value = float(np.linalg.norm(matrix)) / math.sqrt(len(matrix))
+        _require_above(norm, largest, float(np.max(np.linalg.norm(matrix, axis=0))) - error)
         slack = error + UNIT * len(matrix) * value
         return ErrorInterval(value - slack, value + slack, kind="dense", proven=False, notes=(ROUNDING_NOTE,))
     difference = Difference(circuit, exact, threads=workers, angle_roundings=roundings)
@@ -129,6 +131,7 @@ def rms_error(
     for k in range(count):
         image = difference.apply(State.random(circuit.qubits, first + k).amplitudes)
         squares.append(difference.norm(image) ** 2)
+    _require_above(norm, largest, math.sqrt(max(squares)) - difference.slack)
     measured = math.sqrt(math.fsum(squares) / count)
     lowest, highest = max(0.0, measured - difference.slack), measured + difference.slack
     chance = 1.0 - level - spent
@@ -187,6 +190,17 @@ def _root(function: Callable[[float], float], inside: float, outside: float) -> 
             break
         inside, outside = (middle, outside) if function(middle) < 0.0 else (inside, middle)
     return outside
+
+
+def _require_above(norm: object, largest: float | None, seen: float) -> None:
+    """Refuse a bound on the norm that the error on some unit vector exceeds; `seen` is less what can be wrong with it."""
+    if largest is not None and largest < seen * (1.0 - 1e-9):
+        raise ArgumentError(
+            f"norm: is no upper bound ({largest:g}), since an error of {seen:g} was measured; give operator_error(…), or "
+            "leave it out",
+            argument="norm",
+            value=norm,
+        )
 
 
 def _checked_norm(norm: object, chance: float) -> tuple[float | None, float]:

@@ -132,15 +132,21 @@ class SimulatedSeries:
         Raises
         ------
         ArgumentError
-            `step_time` is not a finite number.
-        OperatorError
-            A coefficient overflows.
+            `step_time` is not a finite number, or so large that a coefficient overflows.
         """
-        step = finite("step_time", step_time, "give the time of one step, such as 0.1")
+        step = _step(step_time)
         total = self.terms[0]
         for power, term in enumerate(self.terms[1:], start=1):
             if len(term) and step:
-                total = total + term * _power(step, power)
+                factor = _power(step, power)
+                if not math.isfinite(factor * term.one_norm()):
+                    raise ArgumentError(
+                        f"step_time: makes coefficients of τ^{power} too large for a float ({step_time!r}); give a shorter "
+                        "step, or a lower order",
+                        argument="step_time",
+                        value=step_time,
+                    )
+                total = total + term * factor
         return total
 
     def sizes(self, step_time: float = 1.0) -> tuple[TermSize, ...]:
@@ -151,7 +157,7 @@ class SimulatedSeries:
         ArgumentError
             `step_time` is not a finite number.
         """
-        step = abs(finite("step_time", step_time, "give the time of one step, such as 0.1"))
+        step = abs(_step(step_time))
         return tuple(_size(degree, term, _power(step, degree - 1)) for degree, term in enumerate(self.terms, start=1))
 
     def split(
@@ -259,9 +265,7 @@ def simulated_hamiltonian(
     Raises
     ------
     ArgumentError, FormulaError, MemoryRefusedError
-        As for `simulated_series`; or `step_time` is not a finite number.
-    OperatorError
-        A coefficient overflows.
+        As for `simulated_series`; or `step_time` is not a finite number, or so large that a coefficient overflows.
 
     References
     ----------
@@ -275,7 +279,8 @@ def simulated_hamiltonian(
     >>> print(tt.simulated_hamiltonian("lie", parts, 0.1, 2))
     1.0 X_0 + 1.0 Z_0 + 0.1 Y_0
     """
-    return simulated_series(formula, partition, order).at(step_time)
+    step = _step(step_time)
+    return simulated_series(formula, partition, order).at(step)
 
 
 def _checked_formula(given: Formula | Processed | str) -> Formula | Processed:
@@ -299,6 +304,10 @@ def _checked_degree(order: object) -> int:
             value=order,
         )
     return degree
+
+
+def _step(step_time: object) -> float:
+    return finite("step_time", step_time, "give the time of one step, such as 0.1")
 
 
 def _power(step: float, power: int) -> float:

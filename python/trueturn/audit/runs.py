@@ -97,11 +97,11 @@ class Runs:
         untried = "fewer steps may do" if passing else "more steps were not tried"
         return Chosen(steps, accidental, f"{stopped}: {untried}", verified=False)
 
-    def row(self, chosen: Chosen, effort: float) -> Row:
-        """Make the row of a step count that was run, with a proven bound of this effort (see `bound`), none for 0."""
+    def row(self, chosen: Chosen, effort: float, method: str = "commutator") -> Row:
+        """Make the row of a step count that was run, with a proven bound of this method and effort, none for 0."""
         found = self.measured[chosen.steps]
         circuit = found.circuit
-        limit, source = self._bound(chosen.steps, effort) if effort > 0.0 else (None, "not computed")
+        limit, source = self._bound(chosen.steps, effort, method) if effort > 0.0 else (None, "not computed")
         return Row(
             candidate=self.candidate,
             label=self.candidate.label,
@@ -120,13 +120,13 @@ class Runs:
             note="; ".join(filter(None, (chosen.note, found.note))),
         )
 
-    def _bound(self, steps: int, effort: float) -> tuple[float | None, str]:
+    def _bound(self, steps: int, effort: float, method: str) -> tuple[float | None, str]:
         """Return a proven bound on the error at a step count and its source, or None and the reason."""
         bench = self.bench
         if not isinstance(self.candidate, Candidate) or self.partition is None:
             return None, "no formula, so no theorem on its error"
         try:
-            found = bound(self.candidate.formula, self.partition, bench.times[-1], steps, effort=effort)
+            found = bound(self.candidate.formula, self.partition, bench.times[-1], steps, method=method, effort=effort)
         except FormulaError:
             return None, f"no theorem at hand covers {self.candidate.name}"
         source = "; ".join((f"{found.theorem}, {found.source}", *(f"left out: {one}" for one in found.left_out)))

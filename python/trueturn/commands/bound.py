@@ -16,7 +16,8 @@ def bound(job: Path, as_json: bool) -> int:
     """Bound the error of every candidate of JOB by theorems alone.
 
     No state is made, so any size up to 128 qubits will do, and JOB needs no [start]. Exit status 0 where a candidate is
-    proven to meet the tolerance with its own steps, 4 where none is.
+    proven to meet the tolerance with its own steps, 4 where none is. Randomised formulas are no candidates of a job: in
+    Python the channel_bound() of trueturn.randomised bounds their average.
     """
     from trueturn.accuracy.job_bounds import document, job_bounds, page
     from trueturn.audit.job import read_job

@@ -54,7 +54,7 @@ def plan(job: Path, into: Path | None, as_json: bool, threads: int | None) -> in
     "--errors",
     type=click.Choice(["measured", "proven"]),
     default="measured",
-    help="Algorithmic errors: measured from the start state (default), or proven bounds without a state.",
+    help="Algorithmic errors: measured from the start state (default), or proven bounds, for which JOB needs no [start].",
 )
 @AS_JSON
 @THREADS
@@ -67,7 +67,7 @@ def budget(job: Path, errors: str, as_json: bool, threads: int | None) -> int:
     from trueturn.cli import STATUS, progress_bar, say_json, say_rich
     from trueturn.device.job import job_budgets, job_document
 
-    task = read_job(job)
+    task = read_job(job, start_required=errors == "measured")
     with progress_bar() as progress:
         found = job_budgets(task, errors, threads=threads, progress=progress)
     if as_json:

@@ -7,7 +7,7 @@ from collections.abc import Callable
 from dataclasses import dataclass, field
 
 from trueturn import _threads
-from trueturn.accuracy import bound
+from trueturn.accuracy import Bound, bound
 from trueturn.audit.candidate import Candidate
 from trueturn.audit.figures import nearest
 from trueturn.audit.measure import Bench
@@ -34,14 +34,14 @@ class ErrorLaw:
     Attributes
     ----------
     kind : "proven", "fitted" or "given"
-    words : str
-        Where it comes from.
+    words : callable
+        Says where the error at a step count comes from.
     width : float
         No two expectations differ by more.
     """
 
     kind: str
-    words: str
+    words: Callable[[int], str]
     width: float
     rule: Callable[[int], float]
     known: dict[int, float] = field(default_factory=dict)
@@ -53,7 +53,9 @@ class ErrorLaw:
 
 
 def proven_law(candidate: Candidate, partition: Partition, time: float, width: float) -> ErrorLaw:
-    """Take the proven bound: |⟨O⟩_S - ⟨O⟩| ≤ W ‖S - exp(-iHt)‖, with W the distance of O's extreme eigenvalues.
+    """Take the tightest proven bound: |⟨O⟩_S - ⟨O⟩| ≤ W ‖S - exp(-iHt)‖, with W the distance of O's extreme eigenvalues.
+
+    Which theorem is the tightest may change with the step count, and so do the words.
 
     Raises
     ------
@@ -61,12 +63,16 @@ def proven_law(candidate: Candidate, partition: Partition, time: float, width: f
         The parts lack a structure that the formula requires.
     """
     formula = candidate.formula
-    source = bound(formula, partition, time, 1)
+
+    def found(steps: int) -> Bound:
+        return bound(formula, partition, time, steps, method="tightest")
+
+    found(1)  # refuses parts that lack a structure
     return ErrorLaw(
         "proven",
-        f"{source.theorem}, {source.source}",
+        lambda steps: f"{found(steps).theorem}, {found(steps).source}",
         width,
-        lambda steps: width * bound(formula, partition, time, steps).value,
+        lambda steps: width * found(steps).value,
     )
 
 
@@ -84,7 +90,7 @@ def given_law(label: str, law: Callable[[int], float], width: float) -> ErrorLaw
         return float(value)
 
     words = repr(law) if isinstance(law, PowerLaw) else "given by the caller"
-    return ErrorLaw("given", words, width, rule)
+    return ErrorLaw("given", lambda _: words, width, rule)
 
 
 class Measurements:
@@ -136,11 +142,12 @@ class Measurements:
         clear = clear[-_POINTS:]
         if len(clear) < FEWEST_POINTS:
             ceiling = max(high for _, (_, high) in points[-FEWEST_POINTS:])
-            return ErrorLaw("fitted", f"at most {nearest(ceiling)} wherever measured", width, lambda _: ceiling)
+            told = f"at most {nearest(ceiling)} at {len(points[-FEWEST_POINTS:])} counts up to {points[-1][0]}"
+            return ErrorLaw("fitted", lambda _: told, width, lambda _: ceiling)
         law = PowerLaw.fit([count for count, _ in clear], [high for _, high in clear], variable="r", what="error")
         raised = math.exp(max(law.residuals))
         words = (
             f"{nearest(raised * law.prefactor)} r^{nearest(law.exponent)} over {len(clear)} counts from "
             f"{clear[0][0]} to {clear[-1][0]}"
         )
-        return ErrorLaw("fitted", words, width, lambda steps: raised * law(steps))
+        return ErrorLaw("fitted", lambda _: words, width, lambda steps: raised * law(steps))

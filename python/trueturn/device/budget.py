@@ -10,6 +10,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable, Mapping, Sequence
+from typing import Any
 
 from trueturn.audit.candidate import Candidate
 from trueturn.audit.truth import Progress
@@ -18,17 +19,20 @@ from trueturn.device.checks import (
     between,
     check_counts,
     checked_candidates,
+    checked_laws,
     checked_problem,
     checked_rate,
     checked_variance,
     positive,
 )
+from trueturn.device.counting import checked_counting
 from trueturn.device.counts import Counts
 from trueturn.device.result import Budget, Spending
 from trueturn.device.shares import fitting_shots, shot_scale, t_gates
 from trueturn.device.weighing import Weighed, crossovers
-from trueturn.device.words import ASSUMPTIONS, statement
+from trueturn.device.words import FAILURES, statement
 from trueturn.errors import ArgumentError, FormulaError
+from trueturn.export.hardware import Hardware
 from trueturn.formulas import Formula
 from trueturn.formulas.processed import Processed
 from trueturn.operator import Operator
@@ -56,6 +60,7 @@ def device_budget(
     state: State | None = None,
     algorithmic: Mapping[str, Callable[[int], float]] | None = None,
     gates: Callable[[Rotations], int] | None = None,
+    device: Mapping[str, Any] | Hardware | None = None,
     most_steps: int = 1_000_000,
     threads: int | None = None,
     progress: Progress | None = None,
@@ -90,6 +95,9 @@ def device_budget(
         fitted to smaller systems; they replace what would be measured or proven.
     gates : callable, optional
         Counts the two-qubit gates of Rotations; default `Rotations.two_qubit_gates`. It must be additive over blocks.
+    device : mapping or Hardware, optional
+        Options of `Rotations.cost`: gates are then counted as a plan counts them, at most those of the circuit as it is written
+        for the device, and where nothing is routed at most 2(w-1) for a rotation of the cone. Its error rates are not used.
     most_steps : int
     threads : int, optional
     progress : callable, optional
@@ -102,7 +110,8 @@ def device_budget(
     Raises
     ------
     ArgumentError
-        A rate, a number of shots, a tolerance, a confidence or a candidate that is impossible.
+        A rate, a number of shots, a tolerance, a confidence or a candidate that is impossible; `algorithmic` is no mapping
+        to functions or names no candidate; `gates` is no function, gives no count, or stands beside `device`.
     OperatorError
         The observable is no Operator on the qubits of the Hamiltonian, or acts on none.
     FormulaError
@@ -132,6 +141,8 @@ def device_budget(
     sure = between("confidence", confidence, "a probability, such as 0.95")
     check_counts(shots, most_steps)
     allowed = None if synthesis_error is None else positive("synthesis_error", synthesis_error, "1e-3")
+    given = checked_laws(algorithmic)
+    how = checked_counting(gates, device)
     bare = observable.without_identity()
     low, high = bare.spectral_interval()
     width = high - low
@@ -142,24 +153,25 @@ def device_budget(
         measurements = Measurements(operator, state, moment, observable, tolerance, threads, progress)
     weighed: list[Weighed] = []
     left_out: dict[str, str] = {}
-    given = dict(algorithmic or {})
+    used: set[str] = set()
     for place, candidate in enumerate(chosen):
         if progress is not None:
             progress(candidate.label, place, len(chosen))
         partition = candidate.partition(operator)
         try:
-            law = _law(candidate, partition, moment, width, given, measurements, most_steps)
+            law = _law(candidate, partition, moment, width, given, used, measurements, most_steps)
         except FormulaError as refusal:
             left_out[candidate.label] = str(refusal)
             continue
-        counts = Counts(candidate, partition, moment, observable, gates or Rotations.two_qubit_gates)
+        counts = Counts(candidate, partition, moment, observable, how)
         weighed.append(Weighed(candidate, partition, law, counts, width, synthesis, shot, most_steps))
-    if given:
+    unused = [name for name in given if name not in used]
+    if unused:
         known = ", ".join(f"{candidate.label!r}" for candidate in chosen)
         raise ArgumentError(
-            f"algorithmic: names no candidate ({next(iter(given))!r}); give labels out of {known}",
+            f"algorithmic: names no candidate ({unused[0]!r}); give labels out of {known}",
             argument="algorithmic",
-            value=next(iter(given)),
+            value=unused[0],
         )
     if not weighed:
         raise FormulaError(
@@ -167,7 +179,7 @@ def device_budget(
             name=chosen[0].label,
             choices=(),
         )
-    spent = [_spending(one, rate, float(tolerance), scale, allowed, moment, measurements, gates) for one in weighed]
+    spent = [_spending(one, rate, float(tolerance), scale, allowed, moment, measurements) for one in weighed]
     # With perfect gates every total can be made as small as any: then the fewest gates that meet come first.
     rows = tuple(
         sorted(spent, key=lambda row: (row.verdict != "meets", row.gates_in_cone) if rate == 0.0 else (row.total, 0))
@@ -187,7 +199,7 @@ def device_budget(
         shot_count=shots,
         synthesis_error=allowed,
         confidence=sure,
-        assumptions=ASSUMPTIONS,
+        assumptions=(FAILURES, how.words),
     )
 
 
@@ -196,13 +208,15 @@ def _law(
     partition: Partition,
     time: float,
     width: float,
-    given: dict[str, Callable[[int], float]],
+    given: Mapping[str, Callable[[int], float]],
+    used: set[str],
     measurements: Measurements | None,
     most_steps: int,
 ) -> ErrorLaw:
     for name in (candidate.label, candidate.formula.name):
         if name in given:
-            return given_law(name, given.pop(name), width)
+            used.add(name)
+            return given_law(name, given[name], width)
     if measurements is not None:
         return measurements.law(candidate, partition, width, min(most_steps, _MOST_MEASURED))
     return proven_law(candidate, partition, time, width)
@@ -216,7 +230,6 @@ def _spending(
     synthesis_error: float | None,
     time: float,
     measurements: Measurements | None,
-    gates: Callable[[Rotations], int] | None,
 ) -> Spending:
     steps = one.best_steps(rate)
     fewest = one.fewest_steps(rate, steps, tolerance)
@@ -238,13 +251,13 @@ def _spending(
         fewest_steps=fewest,
         algorithmic=algorithmic,
         algorithmic_kind=kind,
-        law=one.law.words,
+        law=one.law.words(steps),
         measured=measured,
         gates=one.noise(steps, rate),
         synthesis=one.synthesis,
         shots=one.shots,
         total=total,
-        two_qubit_gates=(gates or Rotations.two_qubit_gates)(circuit),
+        two_qubit_gates=one.counts.how.whole(circuit),
         gates_in_cone=inside.gates,
         t_count=None if synthesis_error is None else t_gates(inside.general, inside.tees, synthesis_error),
         needed_shots=fitting_shots(scale, tolerance - (total - one.shots)),

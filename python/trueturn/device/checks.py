@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Callable, Mapping, Sequence
 from numbers import Integral, Real
 
 from trueturn.audit.candidate import Candidate
@@ -18,6 +18,7 @@ __all__ = [
     "between",
     "check_counts",
     "checked_candidates",
+    "checked_laws",
     "checked_problem",
     "checked_rate",
     "checked_variance",
@@ -67,6 +68,23 @@ def checked_problem(
                 value=time,
             )
     return moment
+
+
+def checked_laws(algorithmic: object) -> Mapping[str, Callable[[int], float]]:
+    """Give functions of the step count by candidate."""
+    if algorithmic is None:
+        return {}
+    remedy = 'give functions of the step count by candidate, such as {"strang": lambda r: 0.2 / r**2}'
+    if not isinstance(algorithmic, Mapping):
+        raise ArgumentError(
+            f"algorithmic: is no mapping ({algorithmic!r}); {remedy}", argument="algorithmic", value=algorithmic
+        )
+    for name, law in algorithmic.items():
+        if not callable(law):
+            raise ArgumentError(
+                f"algorithmic[{name!r}]: is no function ({law!r}); {remedy}", argument="algorithmic", value=law
+            )
+    return algorithmic
 
 
 def checked_rate(value: object) -> float:
@@ -121,5 +139,11 @@ def positive(argument: str, value: object, example: str) -> float:
 
 
 def is_real(value: object) -> bool:
-    """Whether this is a real number, and no truth value."""
-    return isinstance(value, Real) and not isinstance(value, bool)
+    """Whether this is a real number that a float can hold, and no truth value."""
+    if not isinstance(value, Real) or isinstance(value, bool):
+        return False
+    try:
+        float(value)
+    except OverflowError:
+        return False
+    return True

@@ -67,6 +67,7 @@ def job_budgets(
             synthesis_error=job.device.synthesis_error,
             confidence=job.device.confidence,
             state=job.required_start().state() if errors == "measured" else None,
+            device=job.device.hardware,
             most_steps=job.most_steps,
             threads=job.threads if threads is None else threads,
             progress=progress,

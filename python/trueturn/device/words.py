@@ -7,13 +7,12 @@ from collections.abc import Sequence
 from trueturn.audit.figures import count, nearest, plain, upper
 from trueturn.device.result import Spending
 
-__all__ = ["ASSUMPTIONS", "statement", "steps_words"]
+__all__ = ["FAILURES", "statement", "steps_words"]
 
-ASSUMPTIONS = (
+FAILURES = (
     "Each two-qubit gate in the causal cone fails independently with the given probability, and a failure may do anything "
     "to its two qubits; one-qubit gates, preparation and readout are perfect. Under this model the gates' share is proven. "
-    "Errors that always point the same way are not covered.",
-    "Two-qubit gates are 2(w-1) for a rotation of weight w, as the circuit is given; nothing is routed.",
+    "Errors that always point the same way are not covered."
 )
 
 

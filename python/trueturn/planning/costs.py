@@ -3,9 +3,14 @@
 from __future__ import annotations
 
 import difflib
+import math
 from collections.abc import Callable, Iterable, Mapping
+from contextlib import suppress
 from dataclasses import replace
+from numbers import Real
 from typing import NamedTuple
+
+import numpy as np
 
 from trueturn.errors import ArgumentError
 from trueturn.export.cost import cost_of
@@ -81,7 +86,19 @@ class Prices(NamedTuple):
         if self.synthesis is not None and written is not None:
             found["t_count"] = written.t_count
         found["wall_time"] = seconds
-        return found | {name: float(price(circuit)) for name, price in self.own.items()}
+        return found | {name: _own_cost(name, price(circuit)) for name, price in self.own.items()}
+
+
+def _own_cost(name: str, value: object) -> float:
+    """Return what a function of the user made of a circuit as a float; ranks need a finite number."""
+    if isinstance(value, (Real, np.bool_)):
+        with suppress(OverflowError):
+            number = float(value)
+            if math.isfinite(number):
+                return number
+    raise ArgumentError(
+        f"cost: gives no finite number ({name}: {value!r}); return one for every circuit", argument="cost", value=value
+    )
 
 
 def chosen_costs(cost: object) -> tuple[tuple[str, ...], dict[str, OwnCost]]:

@@ -12,10 +12,9 @@ from typing import NamedTuple
 
 from trueturn.audit.figures import count, plain, upper
 from trueturn.audit.measure import Bench
-from trueturn.device.causal_cone import causal_cone
+from trueturn.device.counting import visible_gates
 from trueturn.device.shares import gate_share
 from trueturn.errors import ToleranceError
-from trueturn.export.cost import cost_of
 from trueturn.export.hardware import Hardware
 from trueturn.planning.ways import Way
 from trueturn.rotations import Rotations
@@ -31,16 +30,11 @@ class Noise(NamedTuple):
 
     def of(self, circuit: Rotations) -> float:
         """Return the largest share of failing gates in the error of any observable."""
-        total = cost_of(circuit, self.hardware).two_qubit_gates
         rate = self.hardware.two_qubit_error or 0.0
         largest = 0.0
         for name, observable in self.bench.observables.items():
-            gates = total
-            if self.hardware.connectivity in (None, "all") and len(observable.without_identity()):
-                # Routing puts gates on qubits outside the cone too, so that only the whole circuit bounds them.
-                gates = min(total, causal_cone(circuit, observable, by="support").rotations.two_qubit_gates())
             width = 2.0 if self.bench.relative_to == "norm" else 2.0 * self.bench.norms[name]
-            largest = max(largest, width * gate_share(gates, rate))
+            largest = max(largest, width * gate_share(visible_gates(circuit, observable, self.hardware), rate))
         return largest
 
     def require_room(self, ways: Sequence[Way], tolerance: float) -> None:

@@ -14,6 +14,7 @@ from trueturn.audit.result import Audit
 from trueturn.audit.run import prepare
 from trueturn.audit.runs import Runs, error_per_distance
 from trueturn.audit.truth import Progress
+from trueturn.device.counting import options_of
 from trueturn.errors import ArgumentError, ToleranceError
 from trueturn.export.hardware import Hardware
 from trueturn.operator import Operator
@@ -146,7 +147,7 @@ def plan(
     """
     began = clock.perf_counter()
     names, own = chosen_costs(cost)
-    hardware = device if device is None or isinstance(device, Hardware) else Hardware.of(_options(device))
+    hardware = device if device is None or isinstance(device, Hardware) else Hardware.of(options_of(device))
     for_synthesis = _synthesis(synthesis_error, tolerance, names)
     found, left_out = ways(operator, formulas, rule, orderings)
     if not thorough:
@@ -238,15 +239,3 @@ def _synthesis(given: float | None, tolerance: float, names: Sequence[str]) -> f
             achievable=float(given),
         )
     return float(given)
-
-
-def _options(device: object) -> dict[str, Any]:
-    """Return the options of a device as keywords."""
-    if isinstance(device, Mapping) and all(isinstance(name, str) for name in device):
-        return dict(device)
-    raise ArgumentError(
-        f"device: neither a mapping nor a Hardware ({device!r}); give options of Rotations.cost, such as "
-        "{'connectivity': 'line'}",
-        argument="device",
-        value=device,
-    )

@@ -7,7 +7,7 @@ from collections.abc import Callable
 from dataclasses import dataclass, field, fields, replace
 from typing import NamedTuple
 
-from trueturn.accuracy.proven_steps import allowed_distance, proven_steps
+from trueturn.accuracy.proven_steps import proven_steps
 from trueturn.audit.figures import upper
 from trueturn.audit.result import Row
 from trueturn.audit.runs import Chosen, Runs, error_per_distance
@@ -115,7 +115,7 @@ class Sought:
             elif not why:
                 try:
                     tell(way.label, number)
-                    row, proven = runs.row(chosen, 1.0), _proven(way, runs)
+                    row, proven = runs.row(chosen, 1.0, "tightest"), _proven(way, runs)
                 except KeyboardInterrupt:
                     self.interrupted = True
                     why = UNBOUNDED
@@ -157,8 +157,14 @@ class Sought:
 def _proven(way: Way, runs: Runs) -> tuple[int | None, str]:
     """Return the step count that theorems prove for a way, on the grid of the times, and its source."""
     bench = runs.bench
-    distance = allowed_distance(bench.tolerance, error_per_distance(bench))
-    return proven_steps(way.candidate.formula, way.partition, bench.times[-1], distance, bench.step_unit())
+    return proven_steps(
+        way.candidate.formula,
+        way.partition,
+        bench.times[-1],
+        bench.tolerance,
+        error_per_distance(bench),
+        bench.step_unit(),
+    )
 
 
 def _fitted_order(runs: Runs, steps: int) -> float | None:

@@ -71,7 +71,12 @@ def reason(rows: Sequence[PlanRow], cost: Sequence[str], tolerance: float) -> st
         text += f", the fewest here; next is {following.label} with {amount(by, following.costs[by])}"
     elif len(rows) > 1:
         equal = sum(row.room for row in rows) - 1
-        text += f"; {equal} more cost the same" if equal else "; no other way meets it"
+        if equal:
+            text += f"; {equal} more cost{'s' if equal == 1 else ''} the same"
+        elif any(row.verdict == "meets" for row in rows[1:]):
+            text += "; no other way that meets it has room for the noise of the device"
+        else:
+            text += "; no other way meets it"
     return f"{text}."
 
 

@@ -181,8 +181,25 @@ class PowerLaw:
         )
 
     def __call__(self, size: float) -> float:
-        """Return the value on the curve."""
-        return float(self.prefactor * checked.positive("size", size) ** self.exponent)
+        """Return the value on the curve.
+
+        Raises
+        ------
+        ArgumentError
+            `size` is not positive, or the value at it is too large for a float.
+        """
+        at = checked.positive("size", size)
+        try:
+            value = float(self.prefactor * at**self.exponent)
+        except OverflowError:
+            value = math.inf
+        if value == math.inf:
+            raise ArgumentError(
+                f"size: the law is too large for a float there ({size!r}); give one nearer to the measured sizes",
+                argument="size",
+                value=size,
+            )
+        return value
 
     @property
     def residuals(self) -> tuple[float, ...]:
@@ -214,7 +231,7 @@ class PowerLaw:
         Raises
         ------
         ArgumentError
-            `size` is not positive, or `level` not between 0 and 1.
+            `size` is not positive or so large that the law overflows, or `level` not between 0 and 1.
 
         Examples
         --------
@@ -223,7 +240,7 @@ class PowerLaw:
         (True, False)
         """
         at = checked.positive("size", size)
-        value = self.prefactor * at**self.exponent
+        value = self(at)
         quantile = self._student(level)
         variance = 1.0 / len(self.sizes) + (math.log(at) - self._centre) ** 2 / self._width
         band, whole = (quantile * self.spread * math.sqrt(v) for v in (variance, 1.0 + variance))

@@ -131,18 +131,20 @@ class Scaling:
         ArgumentError
             `size` is not positive or `level` not between 0 and 1.
         """
-        from trueturn.accuracy.proven_steps import allowed_distance, proven_steps
+        from trueturn.accuracy.proven_steps import proven_steps
         from trueturn.reference.certificate import norm_bound
         from trueturn.scaling.run import checked_case
 
         forecasts = {name: law.predict(size, level) for name, law in self.laws.items()}
         case = checked_case(self.case, size)
         watched = (case.observables or {}).values() if self.quantity in (None, "observables") else ()
-        distance = allowed_distance(case.tolerance, max((2.0 * norm_bound(one) for one in watched), default=1.0))
+        per_distance = max((2.0 * norm_bound(one) for one in watched), default=1.0)
         found = []
         for candidate in self.candidates:
             said = forecasts[candidate.formula.name]
-            proven, source = proven_steps(candidate.formula, candidate.partition(case.operator), case.time, distance)
+            proven, source = proven_steps(
+                candidate.formula, candidate.partition(case.operator), case.time, case.tolerance, per_distance
+            )
             found.append(Extrapolated(candidate.formula.name, said, math.ceil(said.value), proven, source))
         return tuple(found)
 

@@ -18,6 +18,7 @@ from trueturn.formulas import Formula
 from trueturn.formulas.processed import Processed
 from trueturn.operator import Operator
 from trueturn.partition import Partition
+from trueturn.randomised.checks import finite
 from trueturn.scaling.power_law import FEWEST_POINTS, fit_steps
 from trueturn.scaling.result import Point, Scaling
 from trueturn.state import State, require_same_qubits
@@ -46,6 +47,11 @@ class Case:
     state : State, optional
         Start; needed to measure errors of observables or of the state, not to extrapolate.
     observables : mapping of str to Operator, optional
+
+    Raises
+    ------
+    ArgumentError, OperatorError, StateShapeError
+        Something is of the wrong kind or on other qubits, or time or tolerance is not a positive number.
     """
 
     operator: Operator
@@ -53,6 +59,28 @@ class Case:
     tolerance: float
     state: State | None = None
     observables: Mapping[str, Operator] | None = None
+
+    def __post_init__(self) -> None:
+        if not isinstance(self.operator, Operator):
+            raise _refused("operator", "is not an Operator", self.operator, "give the Hamiltonian")
+        for argument, value in (("time", self.time), ("tolerance", self.tolerance)):
+            finite(argument, value, "give one above zero")
+            if value <= 0.0:
+                raise _refused(argument, "is not above zero", value, "give a positive number")
+        if self.state is not None:
+            require_same_qubits(self.state, self.operator, "operator")
+        for name, observable in named_operators(self.observables).items():
+            if observable.qubits != self.operator.qubits:
+                raise _refused(
+                    f"observables[{name!r}]",
+                    f"is not on the {self.operator.qubits} qubits of the Hamiltonian",
+                    observable.qubits,
+                    "give qubits= where it is made",
+                )
+
+
+def _refused(argument: str, what: str, value: object, remedy: str) -> ArgumentError:
+    return ArgumentError(f"{argument}: {what} ({value!r}); {remedy}", argument=argument, value=value)
 
 
 def step_scaling(
@@ -123,6 +151,8 @@ def step_scaling(
     ordered = _sizes(sizes)
     if isinstance(formulas, (str, Formula, Processed)):
         formulas = [formulas]
+    if not isinstance(formulas, Iterable):
+        raise _refused("formulas", "is no list of formulas", formulas, 'give one such as ["lie", "strang"]')
     candidates = [Candidate(entry, rule) for entry in formulas]  # type: ignore[arg-type]
     names = [candidate.formula.name for candidate in candidates]
     if not names or len(set(names)) < len(names):
@@ -164,6 +194,8 @@ def step_scaling(
 
 def checked_case(case: Callable[[float], Case], size: float) -> Case:
     """Make the case of a size and look at it."""
+    if not callable(case):
+        raise _refused("case", "is no function of the size", case, "give one that returns a trueturn.Case")
     found = case(size)
     if not isinstance(found, Case):
         raise ArgumentError(
@@ -209,9 +241,6 @@ def _measure(case: Case, size: float, quantity: str | None, threads: int) -> Mea
         raise AuditError(
             f"case: has no {missing} to measure with (at {size:g}); give {missing}=", reason=f"no {missing}", limit=None
         )
-    require_same_qubits(case.state, case.operator, "operator")
-    for name, observable in watched.items():
-        require_same_qubits(case.state, observable, f"observables[{name!r}]")
     keep = "all" if asked == "state" else "last"
     truth = reference_for(
         case.operator, case.state, times, case.tolerance, None, watched, keep=keep, threads=threads, progress=None
