@@ -142,7 +142,7 @@ fn read_once(text: &str, files: &sources::Files, options: &Options, keep: Keep, 
     let turned = reader.parts[1].turned;
     let [prepare, evolution, basis] = reader.parts.map(|mut part| {
         part.widen(qubits.max(part.qubits()));
-        part.finish()
+        part.finish().map_err(|error| whole(parser.token.place.refuse(error.to_string())))
     });
     Ok(Circuit {
         parts: [prepare?, evolution?, basis?],

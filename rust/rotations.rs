@@ -41,14 +41,19 @@ pub struct Block {
 }
 
 impl Block {
-    /// Rotations in all repeats together, saturating.
-    fn count(&self) -> u64 {
+    /// Rotations in all repeats together; None beyond 64 bits.
+    fn count(&self) -> Option<u64> {
         let once = match &self.body {
             Body::List(list) => list.len() as u64,
-            Body::Nested(blocks) => blocks.iter().fold(0, |sum: u64, block| sum.saturating_add(block.count())),
+            Body::Nested(blocks) => counted(blocks)?,
         };
-        once.saturating_mul(self.repeat)
+        once.checked_mul(self.repeat)
     }
+}
+
+/// Rotations of blocks one after the other; None beyond 64 bits.
+fn counted(blocks: &[Block]) -> Option<u64> {
+    blocks.iter().try_fold(0u64, |sum, block| sum.checked_add(block.count()?))
 }
 
 /// A circuit of rotations; immutable.
@@ -97,12 +102,16 @@ impl Rotations {
     /// A circuit from blocks of another one.
     ///
     /// # Errors
-    /// The phase is not finite.
+    /// The phase is not finite, or the rotations in all are beyond 64 bits.
     pub fn from_blocks(qubits: u32, blocks: Vec<Block>, phase: f64) -> Result<Self> {
         Self::checked(qubits, blocks, phase)
     }
 
     fn checked(qubits: u32, blocks: Vec<Block>, phase: f64) -> Result<Self> {
+        if counted(&blocks).is_none() {
+            let message = "k: the circuit runs more rotations than 64 bits count; use fewer repeats";
+            return Err(refuse("k", message.into()));
+        }
         if !phase.is_finite() {
             return Err(refuse("phase", format!("phase: grows out of range ({phase}); use fewer repeats")));
         }
@@ -129,9 +138,10 @@ impl Rotations {
         self.frame.as_deref()
     }
 
-    /// Rotations with all repeats, saturating at the largest integer.
+    /// Rotations with all repeats.
     pub fn count(&self) -> u64 {
-        self.blocks.iter().fold(0, |sum: u64, block| sum.saturating_add(block.count()))
+        // Every circuit is made by `checked` or from one that was, so the count fits.
+        counted(&self.blocks).unwrap_or(u64::MAX)
     }
 
     /// Calls `visit` for each list with the number of times it runs in all; lists in order of first use.
@@ -192,6 +202,10 @@ mod tests {
         assert_eq!(many.count(), 2_000_000_000_000);
         assert_eq!(many.blocks().len(), 1);
         assert!(many.written_out(1 << 20).is_none());
+        let most = many.times(u64::MAX / many.count()).unwrap();
+        assert!(most.count() > u64::MAX - 2_000_000_000_000);
+        assert!(most.then(&many).unwrap_err().to_string().contains("64 bits"));
+        assert!(many.times(1 << 40).unwrap_err().to_string().contains("64 bits"));
     }
 
     #[test]

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import re
 
 import pytest
 
@@ -70,6 +71,43 @@ def test_the_command_judges_circuits_and_tells_what_was_left_out(files, capsys):
     both = [str(files / name) for name in ("bad.qasm", "good.qasm")]
     assert cli.run(["audit", *both, "--job", str(files / "job.toml"), "--into", str(files / "report")]) == 0
     assert (files / "report" / "report.html").is_file()
+
+
+@pytest.mark.parametrize("quantity", ["", 'quantity = "operator"', 'quantity = "state"'])
+def test_gates_of_a_file_are_shown_as_unknown(files, capsys, quantity):
+    path = files / "job.toml"
+    path.write_text(JOB.format(tolerance=f"0.01\n{quantity}"))
+    if quantity:
+        path.write_text(path.read_text().split("[target.observables]")[0])
+    command = ["audit", str(files / "good.qasm"), "--job", str(path)]
+    assert cli.run([*command, "--json"]) in (0, 1, 4)
+    document = json.loads(capsys.readouterr().out)
+    (row,) = document["rows"]
+    assert row["two_qubit_gates"] is None and row["depth"] is None and row["rotations"] > 0
+    assert all(trial["two_qubit_gates"] is None for trial in row["trials"])
+    assert any("Gates of circuits from files are not counted" in one for one in document["assumptions"])
+    cli.run([*command, "--into", str(files / "report")])
+    out = capsys.readouterr().out
+    line = next(line for line in out.splitlines() if line.startswith("good.qasm  "))
+    assert line.count("–") >= 2
+    said = " ".join(out.split())
+    assert "its gates are not known, so nothing is called cheapest" in said
+    assert not re.search(r"\d two-qubit gate", said)
+
+
+def test_a_file_on_fewer_qubits_is_judged_on_those_of_the_job(files, capsys):
+    (files / "job.toml").write_text(
+        JOB.format(tolerance=0.01).replace("1.0 Z_0 Z_1 + 0.5 X_0 + 0.5 X_1", "0.5 X_0 + 0.1 X_2")
+    )
+    (files / "one.qasm").write_text('OPENQASM 3.0;\ninclude "stdgates.inc";\nqubit q;\nrx(1.0) q;\n')
+    assert cli.run(["audit", str(files / "one.qasm"), "--job", str(files / "job.toml")]) == 0
+
+
+def test_a_circuit_without_a_job_is_told_to_take_one(files, capsys):
+    (files / "circuit.txt").write_text(strang_text(20))
+    for name in ("good.qasm", "circuit.txt"):
+        assert cli.run(["audit", str(files / name)]) == 2
+        assert "circuits need a job: trueturn audit CIRCUIT.qasm --job JOB.toml" in capsys.readouterr().err
 
 
 def test_preparation_is_named_on_the_command_line(files, capsys):

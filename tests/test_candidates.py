@@ -149,6 +149,10 @@ def test_an_error_of_the_users_own_passes_through():
     [
         (lambda: tt.Candidate.from_callable("", exactly), r"name: no text \(''\); give a name"),
         (lambda: tt.Candidate.from_callable("a", 3), r"apply: cannot be called \(3\); give a function"),
+        (
+            lambda: tt.Candidate.from_callable("a", lambda state, time: state),
+            r"apply: does not take \(state, time, steps\) \(\(state, time\): too many positional arguments\)",
+        ),
         (lambda: tt.Candidate.from_callable("a", exactly, steps=0), r"steps: not a positive whole number \(0\)"),
         (lambda: tt.Candidate.from_callable("a", exactly, order=0), r"order: not a positive whole number \(0\)"),
         (lambda: tt.Candidate.from_rotations("a", "qasm"), r"circuit: no circuit \('qasm'\); give Rotations"),

@@ -174,10 +174,32 @@ def test_bad_keys_are_named(device, message):
         parse_job(text(device=device), None, True)
 
 
+def test_candidates_without_a_step_count_are_told_and_the_others_counted(write, capsys):
+    path = write(steps='"least"')
+    assert cli.run(["cost", str(path)]) == 0
+    lines = capsys.readouterr().out.splitlines()[1:4]
+    assert [line.split("  ")[0] for line in lines] == ["lie, commuting", "strang, bond", "strang, axis"]
+    assert lines[1].endswith("  steps not known (least): give --steps") and "known" not in lines[0] + lines[2]
+    assert cli.run(["cost", str(path), "--json"]) == 0
+    rows = json.loads(capsys.readouterr().out)["rows"]
+    assert rows[1] == {"name": "strang, bond", "note": "steps not known (least): give --steps"}
+    assert rows[0]["two_qubit_gates"] > 0
+    path.write_text(path.read_text().replace("steps = 4", 'steps = "least"').replace("steps = 2", 'steps = "least"'))
+    assert cli.run(["cost", str(path)]) == 2
+    assert "candidate[1].steps: not known before an audit (least)" in capsys.readouterr().err
+    assert cli.run(["cost", str(path), "--steps", "4"]) == 0
+
+
+def test_the_job_of_init_is_counted(tmp_path, capsys):
+    assert cli.run(["init", str(tmp_path / "job.toml")]) == 0
+    assert cli.run(["cost", str(tmp_path / "job.toml")]) == 0
+    out = capsys.readouterr().out
+    assert "two-qubit gates" in out and "steps not known (least): give --steps" in out
+
+
 @pytest.mark.parametrize(
     ("arguments", "changes", "message"),
     [
-        (["cost"], {"steps": '"least"'}, "candidate[2].steps: not known before an audit (least)"),
         (["cost", "--steps", "3"], {}, "steps: 3 steps to time 1 do not meet every requested time"),
         (
             ["export", "--candidate", "lye, commuting"],

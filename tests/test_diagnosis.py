@@ -5,6 +5,7 @@ from __future__ import annotations
 import io
 import json
 import re
+import time
 from contextlib import redirect_stdout
 from pathlib import Path
 
@@ -229,6 +230,42 @@ def test_a_phase_that_is_off_is_only_a_remark():
     assert found.matches is True and [remark.kind for remark in found.findings] == ["global phase"]
 
 
+@pytest.mark.parametrize("place", [0, 7, -1])
+def test_a_rotation_off_by_pi_turns_the_global_phase(place):
+    circuit = strang(CHAIN)
+    x, z, angles = columns(circuit)
+    angles = np.array(angles)
+    angles[place] += np.pi
+    turned = tt.Rotations(x, z, angles, 6)
+    assert np.allclose(unitary(turned), -unitary(circuit), atol=1e-12)
+    found = tt.diagnose(turned, CHAIN, 1.0)
+    assert found.matches is True and [remark.kind for remark in found.findings] == ["global phase"]
+    # Another turn back, and a phase of π, both make it right.
+    other = angles.copy()
+    other[place // 2] -= np.pi
+    assert tt.diagnose(tt.Rotations(x, z, other, 6), CHAIN, 1.0).findings == ()
+    assert tt.diagnose(tt.Rotations(x, z, angles, 6, np.pi), CHAIN, 1.0).findings == ()
+
+
+def test_a_diagnosis_is_neither_true_nor_false():
+    with pytest.raises(TypeError, match=r"^ask \.matches: True, False or None$"):
+        bool(tt.diagnose(strang(CHAIN), CHAIN, 1.0))
+
+
+@pytest.mark.heavy
+def test_a_million_stored_rotations_on_128_qubits_are_diagnosed_in_time():
+    chain = tt.model.ising(tt.lattice.chain(128), zz=-1.0, x=np.linspace(0.5, 0.9, 128))
+    step = tt.formula("strang").rotations(tt.Partition.of(chain, "commuting"), 0.001, 1)
+    copies = -(-(10**6) // step.count)
+    x, z, angles = (np.tile(column, copies) for column in columns(step))
+    flat = tt.Rotations(x, z, angles, 128)
+    assert flat.count >= 10**6 and len(flat.blocks) == 1 and flat.blocks[0].repeat == 1
+    begun = time.perf_counter()
+    found = tt.diagnose(flat, chain, 0.001 * copies)
+    assert time.perf_counter() - begun < 20.0
+    assert found.matches is True and found.rotations == flat.count
+
+
 # --- the second moment, and what stands below
 
 
@@ -370,6 +407,30 @@ def test_the_command_ends_with_the_answer(tmp_path, capsys, time, status, matche
     assert capsys.readouterr().out.startswith("✓ MATCHES" if matches else "✗ DOES NOT MATCH")
     assert cli.run([*command, "--json"]) == status
     assert json.loads(capsys.readouterr().out)["matches"] is matches
+
+
+def test_the_command_takes_layouts_and_named_parts(tmp_path, capsys):
+    (tmp_path / "job.toml").write_text(JOB, encoding="utf-8")
+    operator = tt.Operator("-1.0 Z_0 Z_1 + 0.5 X_0 + 0.5 X_1")
+    text = strang(operator).qasm(2).replace("qreg q[2];", "qreg q[3];\nx q[0];")
+    text = text.replace("q[1]", "q[2]") + "h q[0];\n"
+    (tmp_path / "routed.qasm").write_text(text, encoding="utf-8")
+    gates = tt.read_circuit(text).gates
+    command = ["diagnose", str(tmp_path / "routed.qasm"), "--job", str(tmp_path / "job.toml")]
+    assert cli.run(command) != 0
+    parts = ["--prepare", "0:1", "--basis", f"{gates - 1}:{gates}"]
+    layout = ["--start-layout", "0,2", "--end-layout", "[0, 2]"]
+    assert cli.run([*command, *parts, *layout]) == 0
+    capsys.readouterr()
+    assert cli.run(["audit", *command[1:], *parts, *layout, "--json"]) in (0, 1, 4)
+    (row,) = json.loads(capsys.readouterr().out)["rows"]
+    assert row["rotations"] > 0
+    assert cli.run([*command, "--start-layout", "0;2"]) == 2
+    assert "no list of qubits (0;2); give for instance 2,0,1" in capsys.readouterr().err
+    missing = str(tmp_path / "none.qasm")
+    for name in ("diagnose", "audit"):
+        assert cli.run([name, missing, "--job", str(tmp_path / "job.toml")]) == 2
+        assert f"CIRCUIT: cannot be read ({missing}: No such file" in capsys.readouterr().err
 
 
 def test_the_page_on_a_broken_circuit_prints_what_it_says():

@@ -205,9 +205,13 @@ def test_numbers_of_electrons_are_needed_only_to_drop_qubits(tmp_path):
         tt.read_fcidump(path, electrons=(3, 0))
 
 
-def test_a_missing_file_is_the_systems_error(tmp_path):
-    with pytest.raises(FileNotFoundError):
+def test_a_file_that_cannot_be_read_is_named(tmp_path):
+    with pytest.raises(
+        tt.errors.IntegralsError, match=r"^path: cannot be read \(.*none.fcidump: No such file or directory\); give"
+    ):
         tt.read_fcidump(tmp_path / "none.fcidump")
+    with pytest.raises(tt.errors.ArgumentError, match=r"^path: no path \(None\); give an FCIDUMP file"):
+        tt.read_fcidump(None)
 
 
 @given(data=st.data())

@@ -85,6 +85,33 @@ def test_without_an_end_layout_the_moved_qubits_are_told():
     assert logical.relabelling == (0, 2, 1)
 
 
+def test_a_misspelt_layout_comment_is_refused_and_another_noted():
+    for name in ("start_layuot", "Start_Layout", "start-layout", "end layout", "startlayout"):
+        error = refused(f"{V3}// trueturn: {name} = [1, 0]\nqubit[2] q; x q[0];")
+        assert f"unknown ({name}); did you mean {'end' if name.startswith('end') else 'start'}_layout?" in str(error)
+        assert error.line == 3
+    circuit = tt.read_circuit(f"{V3}// trueturn: by hand\nqubit[2] q; x q[0];")
+    assert circuit.start_layout is None
+    assert [str(note) for note in circuit.notes] == [
+        "line 3: a comment that says nothing known is left out (trueturn: by hand)"
+    ]
+
+
+def test_a_circuit_is_put_on_the_qubits_asked_for():
+    text = f"{V3}qubit[3] q; h q[0]; rz(0.2) q[0]; h q[0]; s q[1]; swap q[0], q[1];"
+    own = tt.read_qasm(text)
+    wide = tt.read_qasm(text, qubits=5)
+    assert (own.qubits, wide.qubits, tt.read_qasm(text, qubits=2).qubits) == (3, 5, 2)
+    assert wide.angle_totals() == tt.Operator("0.1 X_0", qubits=5)
+    assert wide.relabelling == (*own.relabelling, 3, 4) and wide.frame.count == own.frame.count > 0
+    assert tt.read_qasm(f"{V3}qubit q; x q;", qubits=2) + tt.Rotations([3], [0], [0.1], 2)
+    with pytest.raises(ArgumentError, match="qubits: 1 asked, and the circuit on 3 qubits uses others too"):
+        tt.read_qasm(text, qubits=1)
+    for qubits in (0, 129, 2.0, True, "3"):
+        with pytest.raises(ArgumentError, match="qubits: not a whole number from 1 to 128"):
+            tt.read_qasm(text, qubits=qubits)
+
+
 def test_layouts_that_do_not_fit_are_refused():
     text = f"{V3}qubit[3] q; x q[2];"
     for layout in ([0, 0, 1], [], ["a"], [-1, 0], 5):
@@ -292,6 +319,11 @@ MESSAGES = {
     "qubit q; rz(sin(1, 2)) q;": "sin takes another number of values (2 given)",
     "qubit q; rz(arccos(2)) q;": "arccos has no real value there",
     "qubit q; rz(log(0)) q;": "log has no real value there",
+    "qubit q; const int k = 2.5;": "no whole number (2.5); declare it as const float",
+    "qubit q; pow(true) @ x q;": "pow: no exponent up to 2**53 (true)",
+    "qubit q; ctrl(2.5) @ x q, q;": "no number of controls from 1 to 128 (2.5)",
+    "qubit q; qubit[2.5] r;": "no whole number (2.5)",
+    "qubit q; gate g a { for int i in [0:3] { h a; } } g q;": "a loop in a gate body is valid OpenQASM but unsupported",
     "qubit q; rz(0.0**-1) q;": "a power of zero below 0",
     "qubit q; for float t in [0:1] { x q; }": "a loop over something else than whole numbers",
     "qubit[3] q; pow(0.5) @ cswap q[0], q[1], q[2]; g q;": "no gate of this name (g)",

@@ -295,3 +295,8 @@ def test_a_million_rotations_are_written_in_seconds_at_any_size(tmp_path):
     cost = circuit.write_qasm(tmp_path / "big.qasm", ladder="balanced")
     with (tmp_path / "big.qasm").open(encoding="utf-8") as file:
         assert sum(line.startswith("cx") for line in file) == cost.two_qubit_gates
+
+
+def test_what_is_no_path_is_refused():
+    with pytest.raises(ArgumentError, match=r"^path: no path \(None\); give the file to write"):
+        tt.Rotations([1], [0], [0.1], 1).write_qasm(None)

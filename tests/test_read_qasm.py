@@ -207,6 +207,50 @@ def test_steps_in_a_loop_stay_one_block():
     )
 
 
+@pytest.mark.parametrize("exponent", [10**6 + 1, 10**15 + 7, 2**53 - 1, -(2**53) + 1])
+@pytest.mark.parametrize(
+    ("gate", "period"), [("t", 8), ("s", 4), ("x", 2), ("h", 2), ("sx", 4), ("ctrl @ t", 8), ("rz(pi/8)", 32)]
+)
+@pytest.mark.parametrize("way", WAYS)
+def test_a_huge_power_of_a_gate_that_comes_back_is_exact(gate, period, exponent, way):
+    qubits = "q[0], q[1]" if "ctrl" in gate else "q[0]"
+    huge, small = (
+        tt.read_qasm(f"{V3}qubit[2] q; pow({power}) @ {gate} {qubits};", quarter_turns=way)
+        for power in (exponent, exponent % period)
+    )
+    # Angles of at most 2^12 π/16 on both sides, of which the sixteenths are exact.
+    assert difference(matrix(huge), matrix(small)) <= slack(huge, small)
+
+
+def test_a_power_without_digits_left_is_refused():
+    for statement, shown in (
+        ("pow(9007199254740991) @ rz(0.3) q;", "pow(9007199254740991)"),
+        ("gate g a { h a; gphase(0.3); } pow(1e12) @ g q;", "pow(1000000000000)"),
+        ("pow(1e9 + 0.5) @ rz(3.0) q;", "pow(1000000000.5)"),
+        ("pow(1e9 + 0.5) @ h q;", "pow(1000000000.5)"),
+    ):
+        with pytest.raises(QasmError) as caught:
+            tt.read_qasm(f"{V3}qubit q; {statement}")
+        assert f"{shown}: the angle leaves no digits modulo 2π; reduce the exponent" in str(caught.value)
+    with pytest.raises(QasmError, match=r"pow: no exponent up to 2\*\*53 \(1e16\)"):
+        tt.read_qasm(f"{V3}qubit q; pow(1e16) @ x q;")
+    # 10^6 repeats of an angle that is no multiple keep nine digits.
+    (block,) = tt.read_qasm(f"{V3}qubit q; pow(1000000) @ rz(0.3) q;").blocks
+    assert block.rotations.angles[0] == pytest.approx(150000.0, rel=4 * U)
+
+
+@pytest.mark.parametrize(
+    "text",
+    [
+        "for int i in [1:4000000000000000000] { for int j in [1:9] { rz(0.1) q; } }",
+        "for int i in [1:9000000000000000000] { rz(0.1) q; } " * 3,
+    ],
+)
+def test_repeats_beyond_64_bits_are_refused(text):
+    with pytest.raises(QasmError, match=r"line 3, column \d+: .*the circuit runs more rotations than 64 bits count"):
+        tt.read_qasm(f"{V3}qubit q; {text}")
+
+
 def test_a_repeat_that_never_comes_back_is_refused_with_the_reason():
     swaps = ""
     start = 0

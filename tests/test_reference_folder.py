@@ -21,7 +21,9 @@ from hypothesis import strategies as st
 import oracle
 import trueturn as tt
 from trueturn.cli import run
+from trueturn.errors import ArgumentError
 from trueturn.reference.folder import SEAL, seal
+from trueturn.reference.verification import Check, Verification, verify
 
 ROOT = Path(__file__).parent.parent
 CHAIN = tt.model.ising(tt.lattice.chain(5), zz=-1.0, x=-0.7, z=0.2) + 2.5
@@ -383,6 +385,15 @@ times = [0.5, 1.0]
 tolerance = 1e-3
 observables = { m = "Z_2" }
 """
+
+
+def test_a_verification_is_as_true_as_it_holds(tmp_path):
+    good = Verification(tmp_path, (Check("schema", True, ""),))
+    bad = Verification(tmp_path, (Check("schema", True, ""), Check("norm", False, "")))
+    assert good and good.holds
+    assert not bad and not bad.holds
+    with pytest.raises(ArgumentError, match=r"^folder: no path \(None\); give one that"):
+        verify(None)
 
 
 def test_the_command_line_writes_and_verifies(tmp_path, capsys):

@@ -148,7 +148,13 @@ def test_repeats_are_never_written_out():
     totals = many.angle_totals()
     # Quarters times whole numbers below 2^53: exact.
     assert totals == Operator.from_masks([1, 2], [0, 3], [0.25 * 1000001e6, -0.5 * 1000001e6], 2)
-    assert step.times(2**63).times(2**63).count == 2**64 - 1
+    assert step.times(2**62).count == 2**63
+    with pytest.raises(
+        RotationError, match=r"^k: the circuit runs more rotations than 64 bits count; use fewer repeats"
+    ):
+        step.times(2**63).times(2**63)
+    with pytest.raises(RotationError, match="64 bits"):
+        step.times(2**62) + step.times(2**62)
 
 
 def test_writing_out_stops_at_ten_million():

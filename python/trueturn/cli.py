@@ -20,7 +20,7 @@ import click
 from trueturn.commands.bound import bound
 from trueturn.commands.circuits import cost, export
 from trueturn.commands.diagnose import diagnose
-from trueturn.commands.options import AS_JSON, JOB, THREADS
+from trueturn.commands.options import AS_JSON, JOB, THREADS, circuit_options, is_circuit, require_readable
 from trueturn.commands.plans import budget, plan
 from trueturn.commands.references import reference, verify
 
@@ -56,19 +56,17 @@ commands.add_command(verify)
 @commands.command()
 @click.argument("files", nargs=-1, type=JOB, metavar="[JOB | CIRCUIT... --job JOB]")
 @click.option("--job", type=JOB, metavar="JOB", help="Judge the circuits of OpenQASM files against this job.")
-@click.option("--prepare", metavar="RANGE", help='Gates of a circuit that prepare the start: "0:120" or "lines 4-9".')
-@click.option("--basis", metavar="RANGE", help="Gates that change the basis before measurement, likewise.")
+@circuit_options
 @click.option("--into", type=JOB, metavar="FOLDER", help="Write report.html, audit.json and audit.csv there.")
 @AS_JSON
 @THREADS
 def audit(
     files: tuple[Path, ...],
     job: Path | None,
-    prepare: str | None,
-    basis: str | None,
     into: Path | None,
     as_json: bool,
     threads: int | None,
+    **reading: Any,
 ) -> int:
     """Judge the candidates of JOB and recommend one, or judge circuits against JOB.
 
@@ -84,10 +82,12 @@ def audit(
             raise click.UsageError("--job goes with circuits: trueturn audit CIRCUIT.qasm --job JOB.toml")
         from trueturn.circuits.auditing import job_for_circuits
 
-        task, notes = job_for_circuits(read_job(job, candidates_required=False), files, prepare, basis)
+        for path in files:
+            require_readable(path)
+        task, notes = job_for_circuits(read_job(job, candidates_required=False), files, **reading)
         for note in notes:
             print(f"trueturn: {note}", file=sys.stderr)
-    elif len(files) > 1 or prepare is not None or basis is not None:
+    elif len(files) > 1 or any(value is not None for value in reading.values()) or is_circuit(files):
         raise click.UsageError("circuits need a job: trueturn audit CIRCUIT.qasm --job JOB.toml")
     else:
         task = read_job(files[0]) if files else built_in_job()

@@ -340,7 +340,7 @@ class Rotations:
         Raises
         ------
         ArgumentError
-            As for `cost`; or the file cannot be written, an old one then being left as it was.
+            As for `cost`; or `path` is no path or the file cannot be written, an old one then being left as it was.
 
         Notes
         -----

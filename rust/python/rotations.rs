@@ -112,6 +112,11 @@ impl PyRotations {
         self.rotations.narrowed(qubits).map(|rotations| Self { rotations })
     }
 
+    /// The circuit on more qubits, which it leaves alone.
+    fn widened(&self, qubits: u32) -> Self {
+        Self { rotations: self.rotations.clone().widened(qubits.clamp(self.rotations.qubits(), 128)) }
+    }
+
     fn inverse(&self) -> Self {
         Self { rotations: self.rotations.inverse() }
     }

@@ -17,7 +17,8 @@ pub enum Value {
 }
 
 impl Value {
-    fn shown(self) -> String {
+    /// The value as the language writes it.
+    pub fn shown(self) -> String {
         match self {
             Self::Whole(value) => value.to_string(),
             Self::Real(value) => format!("{value:?}"),

@@ -12,6 +12,8 @@ use super::syntax::{Call, Definition, Expression, Modifier, Statement};
 
 /// Rotations that one gate with modifiers may take: fifteen controls.
 const MOST_ROTATIONS: u64 = 1 << 16;
+/// Beyond this a float holds even whole numbers only.
+const EXACT: f64 = (1u64 << 53) as f64;
 /// Gates that call each other, counted from the innermost.
 const DEEPEST: u32 = 200;
 
@@ -165,6 +167,13 @@ impl<'a> Gates<'a> {
                     continue;
                 }
                 Statement::Remark(_) => continue,
+                Statement::For { place, .. } => {
+                    let message = format!(
+                        "a loop in a gate body is valid OpenQASM but unsupported here (gate {name}); write its calls \
+                         out, or put the loop around calls of the gate"
+                    );
+                    return Err(place.refuse(message));
+                }
                 _ => {
                     let message =
                         format!("the body of gate {name} holds something else than gates ({name}); take it out");
@@ -219,13 +228,18 @@ impl<'a> Gates<'a> {
                 Modifier::Inverse => Ok(Applied::Inverse),
                 Modifier::Power(exponent) => match context.value(exponent)? {
                     Value::Whole(k) if k.unsigned_abs() <= 1 << 53 => Ok(Applied::Power(k as f64, true)),
-                    Value::Real(k) => Ok(Applied::Power(k, k.fract() == 0.0 && k.abs() <= 9e15)),
-                    other => Err(call.place.refuse(format!("pow: no exponent up to 2**53 ({other:?}); give a number"))),
+                    Value::Real(k) if k.abs() <= EXACT => Ok(Applied::Power(k, k.fract() == 0.0)),
+                    other => {
+                        let shown = other.shown();
+                        Err(call.place.refuse(format!("pow: no exponent up to 2**53 ({shown}); give a smaller number")))
+                    }
                 },
                 Modifier::Controls(None, on_one, _) => Ok(Applied::Controls(1, *on_one)),
                 Modifier::Controls(Some(count), on_one, place) => match counted.value(count)? {
                     Value::Whole(count @ 1..=128) => Ok(Applied::Controls(count as u32, *on_one)),
-                    other => Err(place.refuse(format!("no number of controls from 1 to 128 ({other:?}); give one"))),
+                    other => {
+                        Err(place.refuse(format!("no number of controls from 1 to 128 ({}); give one", other.shown())))
+                    }
                 },
             })
             .collect()

@@ -1,6 +1,7 @@
 //! Powers of a gate that is written as a product of rotations.
 //!
-//! Whole powers repeat. Others are principal powers: with eigenvalues e^{iφ}, -π < φ ≤ π, those of the power are e^{ikφ}. Two
+//! Whole powers repeat, and an angle times the exponent counts modulo 2π: multiples of π/16 exactly where the product is large,
+//! and what would leave no digits is refused. Others are principal powers: with eigenvalues e^{iφ}, -π < φ ≤ π, those of the power are e^{ikφ}. Two
 //! cases cover the library and what is built from it by controls:
 //!
 //! - The strings commute. Each sign of their independent generators is an eigenspace, its φ is a sum of the angles with
@@ -20,22 +21,31 @@ use crate::rotations::Rotation;
 
 /// Independent strings whose signs are all tried.
 const MOST_GENERATORS: usize = 12;
+/// Radians by which rounding may turn a power: an angle of 4.5 million.
+const MOST_ROUNDING: f64 = 1e-9;
 
 pub fn power(
-    product: Product,
+    mut product: Product,
     qubits: u32,
     exponent: f64,
     whole: bool,
     limit: u64,
     place: Place,
 ) -> Result<Product, Refusal> {
+    if whole && product.phase != 0.0 {
+        let phase = multiplied(product.phase, exponent, place)?;
+        product.phase = 0.0;
+        let mut out = power(product, qubits, exponent, whole, limit, place)?;
+        out.phase += phase;
+        return Ok(out);
+    }
     let plain = product.read(qubits, place)?;
     let read = if plain.frame().is_none() { Product::of(&plain, limit) } else { None };
     let candidates = [read, Some(product)];
     let mut candidates = candidates.into_iter().flatten();
     if whole {
         if let Some(found) = candidates.find(|product| commuting(&product.list)) {
-            return Ok(scaled(found, exponent));
+            return scaled(found, exponent, place);
         }
         let repeat = exponent.abs() as u64;
         let refused = |error: crate::error::Error| place.refuse(format!("pow({exponent}): {error}"));
@@ -52,14 +62,16 @@ pub fn power(
     }
     for product in candidates {
         if product.list.is_empty() {
-            return Ok(Product { list: vec![], phase: exponent * principal(product.phase) });
+            let phase = exponent * principal(product.phase);
+            require_digits(phase, exponent, place)?;
+            return Ok(Product { list: vec![], phase });
         }
         if commuting(&product.list) {
-            if let Some(found) = commuting_power(&product, exponent) {
+            if let Some(found) = commuting_power(&product, exponent, place)? {
                 return Ok(found);
             }
         } else if qubits == 1 {
-            return Ok(one_qubit_power(&product, exponent));
+            return one_qubit_power(&product, exponent, place);
         }
     }
     Err(place.refuse(format!(
@@ -102,10 +114,37 @@ fn commuting(list: &[Rotation]) -> bool {
             .all(|(place, one)| list[..place].iter().all(|other| one.string.commutes_with(other.string)))
 }
 
-fn scaled(mut product: Product, exponent: f64) -> Product {
-    product.list.iter_mut().for_each(|rotation| rotation.angle *= exponent);
-    product.phase *= exponent;
-    product
+fn scaled(mut product: Product, exponent: f64, place: Place) -> Result<Product, Refusal> {
+    for rotation in &mut product.list {
+        rotation.angle = multiplied(rotation.angle, exponent, place)?;
+    }
+    product.phase = multiplied(product.phase, exponent, place)?;
+    Ok(product)
+}
+
+/// An angle times a whole number up to 2^53, right modulo 2π.
+///
+/// A multiple of π/16 (Cliffords, T, and T under a control), as close as rounding explains, stays one: beyond 2^12 of them,
+/// where the digits of the product would begin to go, it is reduced by whole turns first.
+fn multiplied(angle: f64, exponent: f64, place: Place) -> Result<f64, Refusal> {
+    let sixteenths = (angle / (PI / 16.0)).round();
+    let near = (angle - sixteenths * (PI / 16.0)).abs() <= 4.0 * f64::EPSILON * angle.abs();
+    if near && sixteenths.abs() < 1e6 {
+        let all = sixteenths as i128 * exponent as i128;
+        let kept = if all.unsigned_abs() <= 1 << 12 { all } else { all.rem_euclid(32) };
+        return Ok(kept as f64 * (PI / 16.0));
+    }
+    let product = angle * exponent;
+    require_digits(product, exponent, place)?;
+    Ok(product)
+}
+
+/// Refuses an angle whose rounding is seen modulo 2π.
+fn require_digits(angle: f64, exponent: f64, place: Place) -> Result<(), Refusal> {
+    if angle.abs() * f64::EPSILON <= MOST_ROUNDING {
+        return Ok(());
+    }
+    Err(place.refuse(format!("pow({exponent}): the angle leaves no digits modulo 2π; reduce the exponent")))
 }
 
 /// The angle less a multiple of 2π, above -π and at most π; what is within rounding of -π counts as π.
@@ -127,22 +166,22 @@ fn elements(generators: &[PauliString]) -> Vec<(PauliString, bool)> {
     all
 }
 
-fn commuting_power(product: &Product, exponent: f64) -> Option<Product> {
+fn commuting_power(product: &Product, exponent: f64, place: Place) -> Result<Option<Product>, Refusal> {
     let mut generators: Vec<PauliString> = Vec::new();
     let mut all = elements(&[]);
     let mut members = Vec::with_capacity(product.list.len());
     for rotation in &product.list {
-        let place = all.iter().position(|(string, _)| *string == rotation.string).unwrap_or_else(|| {
+        let member = all.iter().position(|(string, _)| *string == rotation.string).unwrap_or_else(|| {
             generators.push(rotation.string);
             all.len()
         });
         if generators.len() > MOST_GENERATORS {
-            return None;
+            return Ok(None);
         }
-        if place == all.len() {
+        if member == all.len() {
             all = elements(&generators);
         }
-        members.push(place);
+        members.push(member);
     }
     // The eigenvalue of element m in sector λ is (-1)^{bits shared by m and λ}, its sign aside.
     let sign = |m: usize, sector: usize| if (m & sector).count_ones() & 1 == 1 { -1.0 } else { 1.0 };
@@ -155,6 +194,7 @@ fn commuting_power(product: &Product, exponent: f64) -> Option<Product> {
             exponent * principal(product.phase - turned.sum::<f64>())
         })
         .collect();
+    spectrum.iter().try_for_each(|&angle| require_digits(angle, exponent, place))?;
     transform(&mut spectrum);
     let size = spectrum.len() as f64;
     let mut made = Product { list: vec![], phase: spectrum[0] / size };
@@ -165,7 +205,7 @@ fn commuting_power(product: &Product, exponent: f64) -> Option<Product> {
             made.list.push(Rotation { string: *string, angle: if *negative { -angle } else { angle } });
         }
     }
-    Some(made)
+    Ok(Some(made))
 }
 
 /// The Walsh-Hadamard transform without a factor, in place.
@@ -182,7 +222,7 @@ fn transform(values: &mut [f64]) {
     }
 }
 
-fn one_qubit_power(product: &Product, exponent: f64) -> Product {
+fn one_qubit_power(product: &Product, exponent: f64, place: Place) -> Result<Product, Refusal> {
     // exp(-i θ P) as a quaternion: cos θ and the three sines; the product multiplies out without a phase.
     let mut real = 1.0;
     let mut axis = [0.0f64; 3];
@@ -207,6 +247,7 @@ fn one_qubit_power(product: &Product, exponent: f64) -> Product {
     let (low, high) = (principal(product.phase - beta), principal(product.phase + beta));
     let turned = 0.5 * exponent * (high - low);
     let phase = 0.5 * exponent * (high + low);
+    require_digits(turned.abs().max(phase.abs()), exponent, place)?;
     // exp(-i turned n·σ) = rz(a) ry(b) rz(c)
     let (sin, cos) = turned.sin_cos();
     let n = if length > 0.0 { axis.map(|a| a / length) } else { [0.0, 0.0, 1.0] };
@@ -218,5 +259,5 @@ fn one_qubit_power(product: &Product, exponent: f64) -> Product {
     let y = Rotation { string: PauliString { x: 1, z: 1 }, angle: 0.5 * middle };
     let mut list = vec![z(0.5 * (sum - difference)), y, z(0.5 * (sum + difference))];
     list.retain(|rotation| rotation.angle != 0.0);
-    Product { list, phase }
+    Ok(Product { list, phase })
 }

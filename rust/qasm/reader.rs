@@ -255,8 +255,12 @@ impl<'a> Reader<'a> {
         let found = Context { version: self.registers.version, whole, names: &names }.value(value)?;
         match (kind, found) {
             ("int" | "uint", Value::Whole(_)) | ("bool", Value::Truth(_)) => Ok(found),
-            ("int" | "uint", _) => Err(place.refuse(format!("no whole number ({found:?}); declare it as const float"))),
-            ("bool", _) => Err(place.refuse(format!("neither true nor false ({found:?}); declare it as const float"))),
+            ("int" | "uint", _) => {
+                Err(place.refuse(format!("no whole number ({}); declare it as const float", found.shown())))
+            }
+            ("bool", _) => {
+                Err(place.refuse(format!("neither true nor false ({}); declare it as const float", found.shown())))
+            }
             _ => real(found, "a const", place).map(Value::Real),
         }
     }

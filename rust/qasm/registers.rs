@@ -118,7 +118,9 @@ impl<'a> Registers<'a> {
         let names = |name: &str| self.value(name);
         match (Context { version: self.version, whole: true, names: &names }).value(expression)? {
             Value::Whole(value) => Ok(value),
-            other => Err(place.refuse(format!("no whole number ({other:?}); sizes, indices and counts are whole"))),
+            other => {
+                Err(place.refuse(format!("no whole number ({}); sizes, indices and counts are whole", other.shown())))
+            }
         }
     }
 

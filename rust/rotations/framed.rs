@@ -35,7 +35,8 @@ impl Rotations {
     /// One circuit after the other.
     ///
     /// # Errors
-    /// The numbers of qubits differ, or the phases add up to more than a float holds.
+    /// The numbers of qubits differ, the phases add up to more than a float holds, or the rotations to more
+    /// than 64 bits count.
     pub fn then(&self, next: &Self) -> Result<Self> {
         if self.qubits != next.qubits {
             return Err(refuse(
@@ -63,7 +64,7 @@ impl Rotations {
     /// empty circuit.
     ///
     /// # Errors
-    /// The phase grows beyond what a float holds; a frame whose repeats come back to themselves too late to write out.
+    /// The phase grows beyond what a float holds, the rotations beyond what 64 bits count; a frame whose repeats come back to themselves too late to write out.
     pub fn times(&self, repeat: u64) -> Result<Self> {
         let phase = self.phase * repeat as f64;
         let Some(frame) = &self.frame else {

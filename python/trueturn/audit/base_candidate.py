@@ -102,6 +102,11 @@ class BaseCandidate(ABC):
         return ""
 
     @property
+    def counted(self) -> bool:
+        """Whether the gates of its circuits are those of its rotations; a file has gates of its own."""
+        return True
+
+    @property
     def on_grid(self) -> bool:
         """Whether one circuit of equal steps can be read on the way."""
         return True

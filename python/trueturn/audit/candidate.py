@@ -126,7 +126,7 @@ class Candidate(BaseCandidate):
         Raises
         ------
         ArgumentError
-            The name is empty, `apply` cannot be called, or `steps` or `order` is no positive whole number.
+            The name is empty, `apply` cannot be called with three arguments, or `steps` or `order` is no positive whole number.
 
         Examples
         --------

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import inspect
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from typing import Any, TypeAlias
@@ -52,6 +53,7 @@ class Implementation(BaseCandidate):
                 argument="apply",
                 value=self.apply,
             )
+        _require_signature(self.apply)
         if isinstance(self.order, bool) or not isinstance(self.order, int) or self.order < 1:
             raise ArgumentError(
                 f"order: not a positive whole number ({self.order!r}); give 1 or more",
@@ -69,6 +71,22 @@ class Implementation(BaseCandidate):
             _CallLeg(self, time - was, count - done, not along)
             for time, count, (was, done) in zip(times, counts, before, strict=True)
         ]
+
+
+def _require_signature(apply: Apply) -> None:
+    """Refuse a function that three arguments do not fit; one that hides its signature is taken at its word."""
+    try:
+        signature = inspect.signature(apply)
+    except (TypeError, ValueError):
+        return
+    try:
+        signature.bind(None, 0.0, 1)
+    except TypeError as error:
+        raise ArgumentError(
+            f"apply: does not take (state, time, steps) ({signature}: {error}); give a function of these three",
+            argument="apply",
+            value=apply,
+        ) from None
 
 
 @dataclass(frozen=True)

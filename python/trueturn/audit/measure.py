@@ -109,7 +109,7 @@ class Bench:
                 lost = max(lost, abs(length - self._start_length))
             points.extend(self._compare(place, spent, length))
         error = (max(point.error[0] for point in points), max(point.error[1] for point in points))
-        gates = None if whole is None else whole.two_qubit_gates()
+        gates = whole.two_qubit_gates() if whole is not None and candidate.counted else None
         trial = Trial(steps, error, judge(error, self.tolerance), gates)
         note = f"not unitary: the norm is off by {upper(lost)}" if lost > _LOST_NORM else ""
         return Measured(trial, tuple(points), spent, whole, note)

@@ -53,7 +53,8 @@ class OperatorBench(Bench):
             for time, circuit, exact in zip(self.times, circuits, self._exact, strict=True)
         )
         error = (max(point.error[0] for point in points), max(point.error[1] for point in points))
-        trial = Trial(steps, error, judge(error, self.tolerance), circuits[-1].two_qubit_gates())
+        gates = circuits[-1].two_qubit_gates() if candidate.counted else None
+        trial = Trial(steps, error, judge(error, self.tolerance), gates)
         return Measured(trial, points, circuits[-1].rounding_bound(roundings), circuits[-1])
 
     def _error(

@@ -64,7 +64,8 @@ class Row:
     rotations, two_qubit_gates, depth : int or None
         Cost of the circuits of this candidate: rotations after merging, 2(w-1) two-qubit gates for a rotation of
         weight w, and depth in two-qubit gates. For ``readout="separate"`` the cost of the longest circuit. None for an
-        implementation of the user's, whose circuit is not known.
+        implementation of the user's, whose circuit is not known; gates and depth are None for a circuit read from a file,
+        whose own gates are not counted.
     verdict : "meets", "misses" or "undecided"
     rounding : float
         Bound on the 2-norm error that rounding added to the candidate's state, included in `error`. 0 for an

@@ -111,7 +111,7 @@ class Runs:
             bound_source=source,
             rotations=None if circuit is None else circuit.count,
             two_qubit_gates=found.trial.two_qubit_gates,
-            depth=None if circuit is None else circuit.depth(),
+            depth=circuit.depth() if circuit is not None and self.candidate.counted else None,
             verdict=found.trial.verdict,
             rounding=found.rounding,
             points=found.points,

@@ -59,12 +59,14 @@ def assumptions(
     exactly = "The Hamiltonian is exactly as given; the start is any unit vector"
     if quantity != "operator":
         exactly = "The Hamiltonian and the start state are exactly as given"
-    taken = (
+    taken: tuple[str, ...] = (
         f"{exactly}; ħ = 1.",
         how,
         scale,
         f"Candidates ran in {'single' if single else 'double'} precision on a noiseless state vector.",
     )
+    if any(not candidate.counted for candidate in candidates):
+        taken = (*taken, "Gates of circuits from files are not counted: rotations are what the gates come to.")
     if not own:
         return taken
     return (*taken, f"What {own} computed is judged as it came back, its own rounding included; its cost is not known.")
@@ -118,7 +120,11 @@ def recommendation(rows: Sequence[Row], tolerance: float) -> tuple[Row | None, s
         )
     best = fitting[0]
     if best.two_qubit_gates is None:
-        return best, f"{_run_of(best)} meets {plain(tolerance)}; its cost is not known, so nothing is called cheapest."
+        unknown = "cost is" if best.rotations is None else "gates are"
+        return (
+            best,
+            f"{_run_of(best)} meets {plain(tolerance)}; its {unknown} not known, so nothing is called cheapest.",
+        )
     reason = f"{_run_of(best)} meets {plain(tolerance)} with {_gates(best)}"
     if len(fitting) == 1:
         others = "it is the only candidate" if len(rows) == 1 else "no other candidate meets it"

@@ -22,6 +22,7 @@ from trueturn import _memory
 from trueturn.chemistry._header import Header, Line, fault, read_header
 from trueturn.chemistry.encodings import checked_sector
 from trueturn.chemistry.integrals import SYMMETRIC_TO, Integrals, Orbitals, Order, Reals, pair_table
+from trueturn.errors import ArgumentError, IntegralsError
 from trueturn.operator import Operator
 
 __all__ = ["read_fcidump", "read_integrals"]
@@ -72,14 +73,12 @@ def read_fcidump(
     Raises
     ------
     IntegralsError
-        The file is no FCIDUMP file, or its entries are missing, out of range or contradict each other; carries `path` and
-        `line`.
+        The file cannot be read or is no FCIDUMP file, or its entries are missing, out of range or contradict each other;
+        carries `path` and `line`.
     ArgumentError
-        An option is out of range, or qubits cannot be dropped.
+        `path` is no path, an option is out of range, or qubits cannot be dropped.
     MemoryRefusedError
         Integrals or terms would not fit.
-    OSError
-        As raised by the system.
 
     Notes
     -----
@@ -125,10 +124,18 @@ def read_integrals(
 
     Raises
     ------
-    IntegralsError, ArgumentError, MemoryRefusedError, OSError
+    IntegralsError, ArgumentError, MemoryRefusedError
         As for `read_fcidump`.
     """
+    if not isinstance(path, (str, os.PathLike)):
+        raise ArgumentError(f"path: no path ({path!r}); give an FCIDUMP file", argument="path", value=path)
     name = Path(path).name
+    try:
+        Path(path).open("rb").close()
+    except (OSError, ValueError) as error:
+        reason = error.strerror if isinstance(error, OSError) and error.strerror else str(error)
+        message = f"path: cannot be read ({os.fspath(path)}: {reason}); give an FCIDUMP file"
+        raise IntegralsError(message, path=str(path), line=1) from error
     with open(path, encoding="utf-8", errors="replace", newline=None) as file:
         lines = _lines(file, name)
         header = read_header(lines, name, spin_orbitals)

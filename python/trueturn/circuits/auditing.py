@@ -7,7 +7,7 @@ from dataclasses import replace
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from trueturn.audit.candidate import Candidate
+from trueturn.audit.given_circuit import GivenCircuit
 from trueturn.circuits.reading import Range, read_circuit
 
 if TYPE_CHECKING:
@@ -21,11 +21,13 @@ def job_for_circuits(
     paths: Sequence[Path],
     prepare: Range | None = None,
     basis: Range | None = None,
+    start_layout: Sequence[int] | None = None,
+    end_layout: Sequence[int] | None = None,
     quarter_turns: str = "auto",
 ) -> tuple[Job, list[str]]:
     """Return the job with the circuits as its candidates, and what the reader must know.
 
-    The circuits are judged at the job's last time, to which they are taken to evolve.
+    The circuits are judged at the job's last time, to which they are taken to evolve, on the qubits of its Hamiltonian.
 
     Raises
     ------
@@ -34,8 +36,16 @@ def job_for_circuits(
     """
     candidates, notes = [], []
     for path in paths:
-        circuit = read_circuit(path, prepare=prepare, basis=basis, quarter_turns=quarter_turns)
-        candidates.append(Candidate.from_rotations(path.name, circuit.evolution))
+        circuit = read_circuit(
+            path,
+            prepare=prepare,
+            basis=basis,
+            start_layout=start_layout,
+            end_layout=end_layout,
+            quarter_turns=quarter_turns,
+            qubits=job.operator.qubits,
+        )
+        candidates.append(GivenCircuit(circuit.evolution, path.name, file=True))
         notes += [f"{path.name}: {note}" for note in circuit.notes]
     if len(job.times) > 1:
         notes.append(f"circuits are read out at their end: only the last time of the job is judged, {job.times[-1]:g}")

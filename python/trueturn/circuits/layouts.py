@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import difflib
 import operator
 import re
 from collections.abc import Iterable, Sequence
@@ -33,18 +34,27 @@ def given_layout(argument: str, layout: Sequence[int] | None) -> Layout | None:
     return found
 
 
-def marked_layouts(marks: Iterable[tuple[int, int, str]]) -> tuple[Layout | None, Layout | None]:
-    """Return the layouts in the comments ``// trueturn: start_layout = [2, 0, 1]`` of a file.
+def marked_layouts(
+    marks: Iterable[tuple[int, int, str]],
+) -> tuple[tuple[Layout | None, Layout | None], list[tuple[int, str]]]:
+    """Return the layouts in the comments ``// trueturn: start_layout = [2, 0, 1]`` of a file, and lines of other comments.
 
     Raises
     ------
     QasmError
-        A comment that starts so and is no list of different qubits, or says it twice.
+        A comment that starts so and is no list of different qubits, says it twice, or is nearly one of the names.
     """
     found: dict[str, Layout] = {}
+    unknown: list[tuple[int, str]] = []
     for line, column, text in marks:
         name, equals, value = (part.strip() for part in text.partition("="))
         if name not in NAMES:
+            word = name.lower().replace("-", "_").replace(" ", "_")
+            near = difflib.get_close_matches(word, NAMES, n=1, cutoff=0.75)
+            if near:
+                message = f"circuit: line {line}, column {column}: unknown ({name}); did you mean {near[0]}?"
+                raise QasmError(message, path="", line=line, column=column)
+            unknown.append((line, text.strip()))
             continue
         numbers = re.fullmatch(r"\[((?:\s*\d{1,6}\s*,)*\s*\d{1,6}\s*)\]", value)
         layout = tuple(int(number) for number in numbers[1].split(",")) if numbers is not None else ()
@@ -57,7 +67,7 @@ def marked_layouts(marks: Iterable[tuple[int, int, str]]) -> tuple[Layout | None
             message = f"circuit: line {line}, column {column}: {name} is said twice; keep one of them"
             raise QasmError(message, path="", line=line, column=column)
         found[name] = layout
-    return found.get(NAMES[0]), found.get(NAMES[1])
+    return (found.get(NAMES[0]), found.get(NAMES[1])), unknown
 
 
 @dataclass(frozen=True)

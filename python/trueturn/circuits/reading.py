@@ -84,6 +84,7 @@ def read_qasm(
     end_layout: Sequence[int] | None = None,
     quarter_turns: str = "auto",
     expansion_limit: int | None = None,
+    qubits: int | None = None,
 ) -> Rotations:
     """Read an OpenQASM 2 or 3 circuit as Pauli rotations.
 
@@ -108,6 +109,9 @@ def read_qasm(
     expansion_limit : int, optional
         Gates that loops over their variable, gate bodies and modifiers may make. Default: 2**18, and 16 more for each
         byte of text.
+    qubits : int, optional
+        Qubits of the result, 1 to 128: more than the file has are left alone, and idle ones beyond these are left out.
+        Default: those of the file, or those that the start layout lists.
 
     Returns
     -------
@@ -121,7 +125,7 @@ def read_qasm(
     QasmError
         The text is no unitary circuit with known values; with line, column and reason.
     ArgumentError
-        A range, a layout or an option that does not fit.
+        A range, a layout or an option that does not fit; `qubits` fewer than are used.
 
     Notes
     -----
@@ -148,6 +152,7 @@ def read_qasm(
         end_layout=end_layout,
         quarter_turns=quarter_turns,
         expansion_limit=expansion_limit,
+        qubits=qubits,
     ).evolution
 
 
@@ -160,6 +165,7 @@ def read_circuit(
     end_layout: Sequence[int] | None = None,
     quarter_turns: str = "auto",
     expansion_limit: int | None = None,
+    qubits: int | None = None,
 ) -> Circuit:
     """Read an OpenQASM 2 or 3 circuit with everything that the text says; parameters and errors are those of `read_qasm`.
 
@@ -183,18 +189,22 @@ def read_circuit(
     ranges = (_range("prepare", prepare), _range("basis", basis))
     given = (given_layout("start_layout", start_layout), given_layout("end_layout", end_layout))
     limit = None if expansion_limit is None else _limit(expansion_limit)
+    width = None if qubits is None else _width(qubits)
     try:
         found = _native.read_qasm(text, folder, quarter_turns, *ranges, limit)
         parts, version, registers, gates, notes, marks, way = found
-        start, end = (
-            mine if mine is not None else marked for mine, marked in zip(given, marked_layouts(marks), strict=True)
-        )
+        marked, unknown = marked_layouts(marks)
+        start, end = (mine if mine is not None else its for mine, its in zip(given, marked, strict=True))
     except QasmError as error:
         raise _named(error, path) from None
     prepared, evolution, measured = (Rotations._wrap(part) for part in parts)
     layouts = Layouts(start, end, evolution.qubits)
-    preparation, evolution, changed = layouts.logical(prepared, evolution, measured)
+    whole = layouts.logical(prepared, evolution, measured)
+    preparation, evolution, changed = whole if width is None else (_on_qubits(part, width) for part in whole)
     said = [Note(line, words) for line, words in notes]
+    said += [
+        Note(line, f"a comment that says nothing known is left out (trueturn: {words})") for line, words in unknown
+    ]
     if way != "clifford" and quarter_turns == "auto":
         kept = "diagonal rotations" if way == "diagonal" else "rotations"
         said.append(Note(0, f"{kept} by multiples of π/4 are taken as rotations, not as changes of basis"))
@@ -284,3 +294,24 @@ def _limit(given: int) -> int:
             f"expansion_limit: no number of gates ({given!r}); give 1 or more", argument="expansion_limit", value=given
         )
     return given
+
+
+def _width(given: int) -> int:
+    if type(given) is not int or not 1 <= given <= 128:
+        raise ArgumentError(f"qubits: not a whole number from 1 to 128 ({given!r})", argument="qubits", value=given)
+    return given
+
+
+def _on_qubits(part: Rotations, qubits: int) -> Rotations:
+    """Put a circuit on more qubits, or on fewer where the others are idle."""
+    if qubits >= part.qubits:
+        return Rotations._wrap(part._circuit.widened(qubits))
+    narrow = part._circuit.narrowed(qubits)
+    if narrow is None:
+        raise ArgumentError(
+            f"qubits: {qubits} asked, and the circuit on {part.qubits} qubits uses others too; "
+            "give its own number, or the layout (start_layout) of the qubits that it uses",
+            argument="qubits",
+            value=qubits,
+        )
+    return Rotations._wrap(narrow)

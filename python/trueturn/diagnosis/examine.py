@@ -9,7 +9,7 @@ import numpy as np
 
 from trueturn.diagnosis.describe import describe
 from trueturn.diagnosis.frames import MOST as MOST_MOVED
-from trueturn.diagnosis.frames import QUARTER, moved_to_the_end
+from trueturn.diagnosis.frames import QUARTER, SLACK, moved_to_the_end
 from trueturn.diagnosis.ordering import clashes, settle
 from trueturn.diagnosis.readings import Reading, readings
 from trueturn.diagnosis.result import Character, Diagnosis, Finding
@@ -44,6 +44,7 @@ class Case:
     residual: tuple[str, ...] = ()
     relabelled: tuple[tuple[int, int], ...] = ()
     moved: int = 0
+    moved_phase: float = 0.0
 
     @property
     def cost(self) -> float:
@@ -116,7 +117,7 @@ def _best_case(rotations: Rotations, hamiltonian: Hamiltonian, time: float, tole
         left = moved_to_the_end(frame)
         if left is not None:
             case = replace(case, residual=left.residual, relabelled=left.relabelled)
-            plain = plain + edited(frame, _as_it_is, 0.0)
+            plain = plain + edited(frame, _as_it_is, frame.phase)
     merged = _merged(plain) if case.cost else plain
     for source, nearest in ((plain, False), (merged, False), (plain, True), (merged, True)):
         moved = moved_to_the_end(source, nearest) if case.cost else None
@@ -125,7 +126,7 @@ def _best_case(rotations: Rotations, hamiltonian: Hamiltonian, time: float, tole
         other = _case(moved.rotations, hamiltonian, time, tolerance)
         other = replace(other, residual=moved.residual, relabelled=moved.relabelled, moved=moved.gates)
         if other.cost < case.cost - 0.5 and not (nearest and other.cost):
-            case = other
+            case = other if moved.residual or moved.relabelled else replace(other, moved_phase=moved.phase)
     return case
 
 
@@ -339,14 +340,16 @@ def _remarks(
             )
         )
     phase = 0.0 - hamiltonian.operator.identity_coefficient * time
-    off = math.remainder(case.unfolded.phase - phase, 2 * math.pi)
-    if abs(off) > SOME * max(1.0, abs(phase)) and not case.moved:
+    found = case.unfolded.phase + case.moved_phase
+    off = math.remainder(found - phase, 2 * math.pi)
+    # Each moved gate may have been off by SLACK.
+    if abs(off) > SOME * max(1.0, abs(phase)) + SLACK * case.moved and not moves:
         remarks.append(
             Finding(
                 kind="global phase",
                 mistake=False,
                 text="The global phase is not that of exp(-iHt); no measurement can tell.",
-                evidence=(f"phase {case.unfolded.phase!r}, where the identity of the Hamiltonian gives {phase!r}",),
+                evidence=(f"phase {found!r}, where the identity of the Hamiltonian gives {phase!r}",),
                 change=f"Set the phase to {phase!r}.",
                 fixed=None,
             )

@@ -133,6 +133,14 @@ class Moved:
     relabelled: tuple[tuple[int, int], ...]
     _product: tuple[tuple[Mask, int], ...] = ()
 
+    @property
+    def phase(self) -> float:
+        """Global phase in radians of the product of the moved gates where that is the identity but for a phase."""
+        turns = [quarters * QUARTER for _, quarters in self._product]
+        x, z = [mask[0] for mask, _ in self._product], [mask[1] for mask, _ in self._product]
+        nothing = Rotations([], [], [], self.rotations.qubits)
+        return nothing.with_frame(Rotations(x, z, turns, self.rotations.qubits)).phase
+
     def back(self, masks: Sequence[Mask]) -> list[tuple[Mask, float]]:
         """Turn strings P into C P C†, with C the product of the moved gates; new strings and signs."""
         frame = _Frame()

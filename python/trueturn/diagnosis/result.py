@@ -113,6 +113,10 @@ class Diagnosis:
     rotations: int
     time: float
 
+    def __bool__(self) -> bool:
+        """Refuse to be taken as true or false: there are three answers."""
+        raise TypeError("ask .matches: True, False or None")
+
     @property
     def mistakes(self) -> tuple[Finding, ...]:
         """The findings that are mistakes."""

@@ -7,13 +7,17 @@ from typing import TYPE_CHECKING
 
 from trueturn.audit.grid import steps_at
 from trueturn.errors import JobError
+from trueturn.export.cost import cost_of
 from trueturn.export.hardware import Hardware
+from trueturn.export.table import CostTable
 from trueturn.rotations import Rotations
 
 if TYPE_CHECKING:
     from trueturn.audit.job import Job
 
-__all__ = ["circuit_words", "job_candidate", "job_circuit", "job_hardware", "job_labels"]
+__all__ = ["circuit_words", "job_candidate", "job_circuit", "job_costs", "job_hardware", "job_labels"]
+
+NO_STEPS = "steps not known (least): give --steps"
 
 
 def job_hardware(job: Job) -> Hardware:
@@ -87,6 +91,28 @@ def job_circuit(job: Job, place: int, steps: int | None) -> Rotations:
     for time, was, done, before in zip(job.times, (0.0, *job.times[:-1]), counts, (0, *counts[:-1]), strict=True):
         whole = whole + candidate.formula.rotations(partition, time - was, done - before)
     return whole
+
+
+def job_costs(job: Job, steps: int | None) -> CostTable:
+    """Count every candidate of a job whose step count is known; the others say what is missing.
+
+    Raises
+    ------
+    JobError
+        No step count is known.
+    AuditError
+        As `job_circuit` does.
+    """
+    hardware = job_hardware(job)
+    known = [steps is not None or isinstance(candidate.steps, int) for candidate in job.formula_candidates]
+    if not any(known):
+        job_circuit(job, 0, steps)
+    return CostTable(
+        {
+            label: cost_of(job_circuit(job, place, steps), hardware) if known[place] else NO_STEPS
+            for place, label in enumerate(job_labels(job))
+        }
+    )
 
 
 def circuit_words(job: Job, place: int, steps: int | None) -> str:

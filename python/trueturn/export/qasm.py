@@ -30,6 +30,8 @@ def write_qasm(
 ) -> Cost:
     """Write a circuit to a file; see `Rotations.write_qasm`."""
     _require_version(version)
+    if not isinstance(path, (str, os.PathLike)):
+        raise ArgumentError(f"path: no path ({path!r}); give the file to write", argument="path", value=path)
     target = Path(path)
     placed = hardware.placed(circuit.qubits)
     cost, options = written_as(circuit, placed)

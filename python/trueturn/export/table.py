@@ -21,17 +21,25 @@ HEADINGS = ("two-qubit gates", "unsaved", "swaps", "two-qubit depth", "depth", "
 
 @dataclass(frozen=True)
 class CostTable:
-    """Costs by the name of the circuit, in the order given; prints as a table."""
+    """Costs by the name of the circuit, in the order given, or why there is none; prints as a table."""
 
-    rows: Mapping[str, Cost]
+    rows: Mapping[str, Cost | str]
+
+    @property
+    def counted(self) -> dict[str, Cost]:
+        """The rows that have a cost."""
+        return {name: cost for name, cost in self.rows.items() if isinstance(cost, Cost)}
 
     def to_dict(self) -> list[dict[str, Any]]:
-        """Give the rows as plain data, each with its ``name``."""
-        return [{"name": name, **asdict(cost)} for name, cost in self.rows.items()]
+        """Give the rows as plain data, each with its ``name``; one that is not counted has a ``note`` instead."""
+        return [
+            {"name": name, **({"note": cost} if isinstance(cost, str) else asdict(cost))}
+            for name, cost in self.rows.items()
+        ]
 
     def __repr__(self) -> str:
         lines = [["", *HEADINGS]]
-        for name, cost in self.rows.items():
+        for name, cost in self.counted.items():
             figures = (
                 cost.two_qubit_gates,
                 cost.unsaved_two_qubit_gates,
@@ -45,11 +53,14 @@ class CostTable:
             lines.append([name, *map(count, figures), success])
         kept = [place for place in range(len(lines[0])) if any(line[place] for line in lines[1:])]
         widths = [max(len(line[place]) for line in lines) for place in kept]
-        rows = []
+        widths[0] = max(widths[0], *map(len, self.rows))
+        laid_out = {}
         for line in lines:
             cells = [line[place] for place in kept]
-            rows.append("  ".join([cells[0].ljust(widths[0]), *map(str.rjust, cells[1:], widths[1:])]).rstrip())
-        said = dict.fromkeys(sentence for cost in self.rows.values() for sentence in cost.assumptions)
+            laid_out[line[0]] = "  ".join([cells[0].ljust(widths[0]), *map(str.rjust, cells[1:], widths[1:])]).rstrip()
+        laid_out |= {name: f"{name.ljust(widths[0])}  {why}" for name, why in self.rows.items() if isinstance(why, str)}
+        rows = [laid_out[""], *(laid_out[name] for name in self.rows)]
+        said = dict.fromkeys(sentence for cost in self.counted.values() for sentence in cost.assumptions)
         return "\n".join([*rows, *(line for sentence in said for line in wrap(sentence, WIDTH))])
 
 

@@ -57,6 +57,10 @@ class Verification:
         """Whether every check holds."""
         return all(check.holds for check in self.checks)
 
+    def __bool__(self) -> bool:
+        """Whether every check holds, so that ``if verify(folder)`` says what it seems to."""
+        return self.holds
+
     @property
     def failures(self) -> tuple[Check, ...]:
         """The checks that do not hold."""
@@ -97,7 +101,7 @@ def verify(
     Raises
     ------
     ArgumentError
-        The folder does not exist or holds no manifest.json.
+        `folder` is no path, does not exist or holds no manifest.json.
     MemoryRefusedError
         One state vector does not fit.
 
@@ -112,6 +116,12 @@ def verify(
     That the states are those of the Hamiltonian at these times is not proven by any of this: norm and energy are necessary,
     not sufficient. Computing the reference again is.
     """
+    if not isinstance(folder, (str, os.PathLike)):
+        raise ArgumentError(
+            f"folder: no path ({folder!r}); give one that trueturn reference --into wrote",
+            argument="folder",
+            value=folder,
+        )
     place = Path(folder)
     if not (place / MANIFEST).is_file():
         wrong = "holds no manifest.json" if place.is_dir() else "no such folder"
