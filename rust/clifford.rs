@@ -1,7 +1,7 @@
 //! Clifford operators with their exact global phase, on up to 128 qubits.
 //!
 //! A Clifford C is kept as what it does to single X and Z by pulling them back, C† X_q C and C† Z_q C, which fixes it up to
-//! a phase, and as the state C|0…0>, which fixes that phase; see [`witness`]. Everything that happens to it is a product
+//! a phase, and as the state C|0…0>, which fixes that phase; see `witness`. Everything that happens to it is a product
 //! with a *quarter turn*, exp(-i π/4 P) for a Pauli string P: those generate the group together with e^{iπ/4}. Pulling back
 //! through exp(-i π/4 P) replaces a string Q that anticommutes with P by i P Q, so a gate on two qubits changes four rows.
 

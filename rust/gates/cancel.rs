@@ -4,7 +4,7 @@
 //! functions of Z, or both of X: a controlled NOT is a function of Z on its control and of X on its target), and where it
 //! meets its own inverse on all of its qubits, both vanish. Rotations never vanish and never change their order.
 //!
-//! Gates leave in order once [`WINDOW`] others have come after them, so that a circuit of any size streams through.
+//! Gates leave in order once `WINDOW` others have come after them, so that a circuit of any size streams through.
 //!
 //! A body that runs r times is g M g⁻¹ where its first gate undoes its last, and (g M g⁻¹)^r = g M^r g⁻¹: such gates move
 //! out of the loop, where they meet what is around it.

@@ -1,4 +1,4 @@
-//! Images of a state under an [`Action`], and what is made of them: a vector, an expectation, a Chebyshev recurrence.
+//! Images of a state under an [`Action`](crate::action::Action), and what is made of them: a vector, an expectation, a Chebyshev recurrence.
 //!
 //! One coset of the state at a time lies in cache as vectors of real and imaginary parts. For each tile of eight vectors of
 //! the result the addends are summed in registers; what becomes of the sum is the [`Ending`].
