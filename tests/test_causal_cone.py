@@ -10,6 +10,7 @@ from hypothesis import strategies as st
 import strategies
 import trueturn as tt
 from trueturn.audit.candidate import Candidate
+from trueturn.device.counting import Counting
 from trueturn.device.counts import Counts
 from trueturn.device.shares import synthesised
 from trueturn.errors import ArgumentError, OperatorError
@@ -128,7 +129,7 @@ def test_counts_at_any_step_count_are_those_of_the_circuit(name, rule):
     watched = tt.Operator("Z_4", qubits=9)
     candidate = Candidate(name, rule)
     partition = candidate.partition(chain)
-    counts = Counts(candidate, partition, 1.0, watched, Rotations.two_qubit_gates)
+    counts = Counts(candidate, partition, 1.0, watched, Counting(Rotations.two_qubit_gates, None, "plain"))
     for steps in (1, 2, 3, 8, 5, 30, 13, 31, 200):  # 8 and 30 may settle the rule for what follows
         kept = tt.causal_cone(candidate.formula.rotations(partition, 1.0, steps), watched, "support").rotations
         found = counts(steps)
@@ -142,7 +143,7 @@ def test_processed_formulas_are_counted_too():
     watched = tt.Operator("Z_0", qubits=6)
     candidate = Candidate(PROCESSED[0], "commuting")
     partition = candidate.partition(chain)
-    counts = Counts(candidate, partition, 1.0, watched, Rotations.two_qubit_gates)
+    counts = Counts(candidate, partition, 1.0, watched, Counting(Rotations.two_qubit_gates, None, "plain"))
     for steps in (1, 2, 6, 7, 50):
         kept = tt.causal_cone(candidate.formula.rotations(partition, 1.0, steps), watched, "support").rotations
         assert counts(steps).gates == kept.two_qubit_gates()
