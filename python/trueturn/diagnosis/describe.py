@@ -213,7 +213,8 @@ class _Describer:
             name = self.plan.model.method.name
             evidence += (f"the other strings run as {name} in {self.plan.steps} steps{rule}",)
         others = self._other_places(group) if mended is not None else ()
-        placed = group.kind in ("missing", "letters", "place") and irregular
+        repeated = group.kind == "factor" and abs(group.factor - 2.0) <= WHOLE  # which of the two should stay?
+        placed = (group.kind in ("missing", "letters", "place") or repeated) and irregular
         guessed = placed and self.plan is not None and not self.plan.given
         if guessed and mended is not None:
             change += " No rule gives this order of parts, so the place is a guess."

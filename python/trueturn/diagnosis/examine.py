@@ -8,6 +8,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from trueturn.diagnosis.describe import describe
+from trueturn.diagnosis.evidence import unsupported
 from trueturn.diagnosis.frames import MOST as MOST_MOVED
 from trueturn.diagnosis.frames import QUARTER, SLACK, moved_to_the_end
 from trueturn.diagnosis.ordering import clashes, settle
@@ -15,7 +16,7 @@ from trueturn.diagnosis.readings import Reading, readings
 from trueturn.diagnosis.result import Character, Diagnosis, Finding
 from trueturn.diagnosis.slips import slip_place, turned_behind
 from trueturn.diagnosis.structure import MOST_STRINGS, STILL, Hamiltonian, Plan, Structure
-from trueturn.diagnosis.totals import Group, Sheet, support
+from trueturn.diagnosis.totals import Group, Sheet
 from trueturn.diagnosis.unfolding import Mask, Unfolded, edited, unfold
 from trueturn.formulas import formula
 from trueturn.operator import Operator
@@ -233,22 +234,8 @@ def _undetermined(case: Case, structure: Structure) -> str:
         )
     if len(reading.groups) > 1 and any(_quarter_turns(case.sheet, group) for group in reading.groups):
         return f"several strings are off, some by quarter turns alone, as in a set of native gates{advice}"
-    kinds = {group.kind for group in reading.groups}
-    odd = [group for group in reading.groups if group.kind == "factor" and structure.uneven(group)]
-    if len(odd) > 1 or sum(group.kind == "extra" for group in reading.groups) > 1:
-        return (
-            "several strings are off, each by another amount and not alike in every step, as when blocks of gates are "
-            f"resynthesised{advice}"
-        )
-    if "extra" in kinds and len(reading.groups) > 1:
-        extra = [group for group in reading.groups if group.kind == "extra"]
-        others = [group for group in reading.groups if group.kind != "extra"]
-        touched = [support(mask) for group in others for mask in (*group.found, *group.wanted)]
-        if any(support(mask) & one for group in extra for mask in group.found for one in touched):
-            return (
-                "strings of the Hamiltonian are off on the very qubits where others were added, as when a block of "
-                f"gates is resynthesised{advice}"
-            )
+    if why := unsupported(structure):
+        return f"{why}, so that a right circuit whose blocks were resynthesised could look like this one{advice}"
     return ""
 
 
