@@ -15,7 +15,7 @@ from collections.abc import Sequence
 import numpy as np
 
 from trueturn.diagnosis.character import first_order, last_order, recognised
-from trueturn.diagnosis.ordering import Settled, clashes, settle
+from trueturn.diagnosis.ordering import Settled, clashes, settle, shares_of
 from trueturn.diagnosis.structure import Plan, Structure
 from trueturn.diagnosis.totals import Group
 from trueturn.diagnosis.unfolding import Ints, Mask, Reals
@@ -92,7 +92,9 @@ def _in_stages(structure: Structure) -> bool:
     settled = settle(structure.word, structure.neighbours, kept)
     seen: list[Reals] = []
     for string in structure.sound:
-        shares = settled.angles[string] / settled.angles[string].sum()
+        shares = shares_of(settled.angles[string])
+        if shares is None:
+            return False
         if not any(_equal(shares, one) for one in seen):
             seen.append(shares)
     return len(seen) <= KINDS and len(structure.sound) >= 2 * len(seen)
