@@ -50,6 +50,7 @@ class Clocks:
         self._sound = frozenset(judged)
         self._turned_by: dict[int, Reals] = {}
         self._known: dict[tuple[object, ...], float] = {}
+        self._explained: dict[tuple[object, ...], bool] = {}
         short = np.bincount(word.strings, weights=word.angles, minlength=len(neighbours))
         most = max(judged, key=lambda string: abs(float(short[string])))
         self._time = float(short[most]) / coefficients[most]
@@ -87,9 +88,11 @@ class Clocks:
         Either, on every clock, all angles that are off are so by one factor, and none stands where there should be
         nothing; or the string runs a second time in every step.
         """
-        if all(_one_factor(given, ideal) for given, ideal in self._by_clock(model, string, earlier)):
-            return True
-        return self.unlike_two(model, string, earlier) <= SLACK
+        key = (model.method.name, model.steps, string, tuple(earlier.items()))
+        if key not in self._explained:
+            alike = all(_one_factor(given, ideal) for given, ideal in self._by_clock(model, string, earlier))
+            self._explained[key] = alike or self.unlike_two(model, string, earlier) <= SLACK
+        return self._explained[key]
 
     def surplus_in_shares(self, model: Model, string: int, earlier: Earlier) -> bool:
         """Whether what a string turns too much comes in the shares of stages, up to three that merged."""

@@ -22,8 +22,6 @@ from trueturn.diagnosis.unfolding import Ints, Mask, Reals
 
 __all__ = ["unsupported"]
 
-TRIED = 6
-"""Plans of a circuit that are looked at."""
 ALIKE = 1e-6
 """Relative difference below which two numbers are one."""
 KINDS = 4
@@ -49,8 +47,7 @@ def unsupported(structure: Structure) -> str:
     accused = sorted({numbers[mask] for group in groups for mask in group.found if mask in numbers})
     if _any_clash(structure, accused):
         return "strings that are off do not commute with one another, and do not run as a formula either"
-    reasons = [_against(structure, plan, groups, numbers) for plan in structure.plans[:TRIED]]
-    return "" if "" in reasons else reasons[0]
+    return _against(structure, structure.plans[0], groups, numbers)
 
 
 def _all_commute(structure: Structure) -> bool:
@@ -122,6 +119,6 @@ def _against(structure: Structure, plan: Plan, groups: Sequence[Group], numbers:
             if structure.terms[string] < 0:
                 if structure.settled.places[string].size > 1:
                     return "strings that the Hamiltonian lacks turn in several places, and not as terms of a formula do"
-            elif not structure.one_number(plan, string, group.kind in ("letters", "place")):
+            elif not structure.one_number(plan, string):
                 return "strings that are off are so by several amounts in several places"
     return ""

@@ -148,7 +148,7 @@ class Structure:
 
     @cached_property
     def plans(self) -> list[Plan]:
-        """Plans that agree with all sound strings, the best first."""
+        """Plans that agree with all sound strings, the best first: those that leave one number for each damaged string."""
         if self.neighbours is None or not self.sound:
             return []
         found = list(self._plans_of(self.sound, []))
@@ -156,9 +156,10 @@ class Structure:
             found = list(self._plans_of(self.sound, self.damaged))
         symmetric = bool(self.moments.size) and float(self.moments.max()) < STILL
 
-        def doubt(plan: Plan) -> tuple[bool, float]:
+        def doubt(plan: Plan) -> tuple[bool, bool, float]:
             asymmetric = symmetric and not plan.model.method.symmetric
-            return asymmetric, round(plan.unexplained + (0.0 if plan.given else UNUSUAL), 6)
+            several = not all(self.one_number(plan, string) for string in self.damaged)
+            return asymmetric, several, round(plan.unexplained + (0.0 if plan.given else UNUSUAL), 6)
 
         return sorted(found, key=doubt)
 
@@ -251,16 +252,22 @@ class Structure:
         earlier = self._earlier(plan.order, plan.judged, string)
         return scaled_deviation(*self.clocks(plan.judged).angles(plan.model, string, earlier))
 
-    def one_number(self, plan: Plan, string: int, taken_over: bool) -> bool:
+    def one_number(self, plan: Plan, string: int) -> bool:
         """Whether one number explains where and by how much a damaged string is off from a plan.
 
-        With `taken_over` the string also has the rotations of another one that is missing.
+        A string that has the rotations of another one besides, which is missing, is off by shares of stages.
         """
         earlier = self._earlier(plan.order, plan.judged, string)
         clocks = self.clocks(plan.judged)
         return clocks.one_number(plan.model, string, earlier) or (
-            taken_over and clocks.surplus_in_shares(plan.model, string, earlier)
+            self.masks[string] in self._taking_over and clocks.surplus_in_shares(plan.model, string, earlier)
         )
+
+    @cached_property
+    def _taking_over(self) -> set[Mask]:
+        """Strings that stand where others are missing."""
+        slips = [group for group in self.reading.groups if group.kind in ("letters", "place")]
+        return {mask for group in slips for mask in group.found}
 
     def clocks(self, judged: Sequence[int]) -> Clocks:
         """Give sound strings as clocks."""
