@@ -1,7 +1,7 @@
 """Blocks of a circuit written anew: other strings, other angles, the same unitary, as compilers leave them.
 
 A block is a run of rotations on one or two qubits. It is replaced by another word of Pauli rotations whose angles are
-solved for by Gauss-Newton steps in the algebra of the block, to rounding. Totals of chosen strings can be asked for
+solved for by damped Gauss-Newton steps, to rounding. Totals of chosen strings can be asked for
 besides: then the first moment of the new word is what an adversary wants it to be, and the unitary is still right.
 """
 
@@ -16,6 +16,8 @@ from oracle import string
 
 EXACT = 1e-12
 """Largest entry by which a new word may differ from the block, a phase apart; up to 30 rotations at 4u each are 3e-14."""
+TRIES = 3
+ITERATIONS = 50
 STYLES = ("euler", "canonical", "own", "own and one", "any", "totals kept", "one total off")
 
 
@@ -71,7 +73,7 @@ def another_word(draw, block, style):
     if len(qubits) > 2:
         return None
     local = [(packed(mask, qubits), angle) for mask, angle in block]
-    for _ in range(4):
+    for _ in range(TRIES):
         word, wanted = a_word(draw, local, len(qubits), style)
         if word is None:
             return None
@@ -133,39 +135,38 @@ def euler(draw, bit):
 def solved(draw, word, target, wanted, qubits):
     """Solve for angles that make the word the target but for a phase, with the totals wanted; None where it fails.
 
-    Levenberg-Marquardt: the residual is the logarithm's first order, Im tr(Q W T†)/2^n for every string Q.
+    Levenberg-Marquardt: the residual is tr(Q W T†)/2^n for every string Q but the identity, which vanishes only where
+    the word W is the target T but for a phase (or another multiple of the identity, which unitaries have not).
     """
-    count = len(word)
-    strings = [matrix(*mask, qubits) for mask in word]
-    basis = np.array([matrix(x, z, qubits) for x in range(2**qubits) for z in range(2**qubits) if x or z])
-    size = 2**qubits
+    count, size = len(word), 2**qubits
+    strings = np.array([matrix(*mask, qubits) for mask in word])
+    basis = np.array([matrix(x, z, qubits) for x in range(size) for z in range(size) if x or z])
+    flat = basis.transpose(0, 2, 1).reshape(len(basis), -1) / size
+    back = target.conj().T
     rows = np.array([[float(mask == one) for mask in word] for one in wanted]).reshape(len(wanted), count)
     aims = np.array(list(wanted.values()))
-    damping = 1e-2
 
     def residual(angles):
-        """The residual and the product from the left up to each rotation."""
-        after, products = np.eye(size, dtype=complex), []
-        for angle, one in zip(angles[::-1], strings[::-1], strict=True):
-            products.append(after)
-            after = after @ turn(one, angle)
-        off = after @ target.conj().T
-        phase = np.trace(off)
-        off = off * (abs(phase) / phase if abs(phase) > 1e-9 else 1.0)
-        parts = np.einsum("aij,ji->a", basis, off) / size
-        # the identity's share tells U from strings, of which the traces vanish as well
-        return off, products[::-1], np.concatenate([-parts.imag, parts.real, rows @ angles - aims])
+        """The residual, W T†, and the product of the rotations behind each."""
+        turns = turn(strings, angles[:, None, None])
+        after, products = np.eye(size, dtype=complex), np.empty_like(turns)
+        for place in range(count - 1, -1, -1):
+            products[place] = after
+            after = after @ turns[place]
+        off = after @ back
+        parts = flat @ off.ravel()
+        return off, products, np.concatenate([parts.real, parts.imag, rows @ angles - aims])
 
     angles = draw.normal(size=count) * float(draw.choice([0.3, 1.0]))
     off, products, left = residual(angles)
-    for _ in range(80):
+    damping = 1e-2
+    for _ in range(ITERATIONS):
         if np.max(np.abs(left)) < EXACT:
             return angles
-        turned = np.array([p @ s @ p.conj().T for p, s in zip(products, strings, strict=True)])
-        slopes = -1j * np.einsum("aij,cjk,ki->ac", basis, turned, off, optimize=True) / size
-        jacobian = np.concatenate([-slopes.imag, slopes.real, rows])
-        normal = jacobian.T @ jacobian
-        move = np.linalg.solve(normal + damping * np.eye(count), -jacobian.T @ left)
+        moved = -1j * (products @ strings @ products.conj().transpose(0, 2, 1)) @ off
+        slopes = flat @ moved.reshape(count, -1).T
+        jacobian = np.concatenate([slopes.real, slopes.imag, rows])
+        move = np.linalg.solve(jacobian.T @ jacobian + damping * np.eye(count), -jacobian.T @ left)
         trial = residual(angles + move)
         if np.linalg.norm(trial[2]) < np.linalg.norm(left):
             angles = angles + move
@@ -177,7 +178,8 @@ def solved(draw, word, target, wanted, qubits):
 
 
 def turn(one, angle):
-    return np.cos(angle) * np.eye(len(one)) - 1j * np.sin(angle) * one
+    """Rotations about strings as matrices; both may be stacked."""
+    return np.cos(angle) * np.eye(one.shape[-1]) - 1j * np.sin(angle) * one
 
 
 def product(local, qubits):

@@ -24,6 +24,8 @@ __all__ = ["unsupported"]
 
 ALIKE = 1e-6
 """Relative difference below which two numbers are one."""
+NUMBERS = 2
+"""Groups that are off by a number each; three would be enough to meet the equations of one anticommuting pair."""
 KINDS = 4
 """Sequences of shares that a formula of stages shows at most, see `trueturn.diagnosis.methods`."""
 
@@ -109,6 +111,8 @@ def _any_clash(structure: Structure, strings: Sequence[int]) -> bool:
 def _against(structure: Structure, plan: Plan, groups: Sequence[Group], numbers: dict[Mask, int]) -> str:
     """Say what speaks against a plan and one number for each group; empty where nothing does."""
     assert structure.settled is not None
+    if sum(bool(group.found) for group in groups) > NUMBERS:
+        return "strings that are off are so by several amounts"
     for group in groups:
         for mask in group.found:
             string = numbers.get(mask)
