@@ -326,13 +326,14 @@ def same_totals(circuit, operator, time):
     return circuit.angle_totals().near(operator.without_identity() * time, atol=1e-9)
 
 
-def seeded(kind, seed):
+def seeded(kind, seed, base=0):
     """Give (right, right circuit, broken circuit), or None where the mistake does nothing or cannot be made.
 
     Left out are broken circuits whose unitary is the right one, and those that are right product formulas of the
-    same Hamiltonian all the same (a symmetry carried one into another): nobody can call these broken.
+    same Hamiltonian all the same (a symmetry carried one into another): nobody can call these broken. Other bases give
+    other instances.
     """
-    draw = np.random.default_rng([sum(map(ord, kind)), seed])
+    draw = np.random.default_rng([sum(map(ord, kind)), seed, base])
     right = a_right_circuit(draw)
     broken = MISTAKES[kind](draw, right)
     if broken is None or same_totals(broken, right.operator, right.time):

@@ -80,7 +80,9 @@ def test_blocks_hold_all_rotations_in_an_order_that_changes_nothing():
     rotations = [rotation for block in blocks(listed(circuit)) for rotation in block]
     assert sorted(rotations) == sorted(listed(circuit))
     masks = [mask for mask, _ in rotations]
-    same = tt.Rotations([x for x, _ in masks], [z for _, z in masks], [angle for _, angle in rotations], 5, circuit.phase)
+    same = tt.Rotations(
+        [x for x, _ in masks], [z for _, z in masks], [angle for _, angle in rotations], 5, circuit.phase
+    )
     assert off(same, circuit) < CLOSE
 
 

@@ -18,7 +18,7 @@ from trueturn.diagnosis.character import first_order, last_order, recognised
 from trueturn.diagnosis.ordering import Settled, clashes, settle, shares_of
 from trueturn.diagnosis.structure import Plan, Structure
 from trueturn.diagnosis.totals import Group
-from trueturn.diagnosis.unfolding import Ints, Mask, Reals
+from trueturn.diagnosis.unfolding import Ints, Reals
 
 __all__ = ["unsupported"]
 
@@ -41,15 +41,28 @@ def unsupported(structure: Structure) -> str:
     groups = structure.reading.groups
     if not groups or _all_commute(structure) or _runs_throughout(structure):
         return ""
+    accused = [_turning(structure, group) for group in groups]
     if not structure.plans:
-        if all(group.kind == "missing" for group in groups) and _in_stages(structure):
-            return ""
+        if not any(accused) and _in_stages(structure):
+            return ""  # strings are missing, and nothing is put in their place
         return "the rotations of the strings that are right do not run as those of any known formula"
-    numbers = {mask: string for string, mask in enumerate(structure.masks)}
-    accused = sorted({numbers[mask] for group in groups for mask in group.found if mask in numbers})
-    if _any_clash(structure, accused):
+    if sum(map(bool, accused)) > NUMBERS:
+        return "strings that are off are so by several amounts"
+    strings = sorted({string for group in accused for string in group})
+    if _any_clash(structure, strings):
         return "strings that are off do not commute with one another, and do not run as a formula either"
-    return _against(structure, structure.plans[0], groups, numbers)
+    return _against(structure, structure.plans[0], strings)
+
+
+def _turning(structure: Structure, group: Group) -> list[int]:
+    """List the strings of a group that the circuit turns by, those whose angles sum to nothing among them."""
+    settled = structure.settled
+    masks = {*group.found, *(group.wanted if group.kind == "missing" else ())}
+    return [
+        string
+        for string, mask in enumerate(structure.masks)
+        if mask in masks and (settled is None or settled.places[string].size)
+    ]
 
 
 def _all_commute(structure: Structure) -> bool:
@@ -108,21 +121,16 @@ def _any_clash(structure: Structure, strings: Sequence[int]) -> bool:
     return any(np.intersect1d(structure.neighbours[string], strings).size for string in strings)
 
 
-def _against(structure: Structure, plan: Plan, groups: Sequence[Group], numbers: dict[Mask, int]) -> str:
-    """Say what speaks against a plan and one number for each group; empty where nothing does."""
+def _against(structure: Structure, plan: Plan, strings: Sequence[int]) -> str:
+    """Say what speaks against a plan and one number for each string that is off; empty where nothing does."""
     assert structure.settled is not None
-    if sum(bool(group.found) for group in groups) > NUMBERS:
-        return "strings that are off are so by several amounts"
-    for group in groups:
-        for mask in group.found:
-            string = numbers.get(mask)
-            if string is None:
-                continue
-            if structure.clocks(plan.judged).cut(plan.model, string):
-                return "strings that are off cut rotations of strings that are right"
-            if structure.terms[string] < 0:
-                if structure.settled.places[string].size > 1:
-                    return "strings that the Hamiltonian lacks turn in several places, and not as terms of a formula do"
-            elif not structure.one_number(plan, string):
-                return "strings that are off are so by several amounts in several places"
+    clocks = structure.clocks(plan.judged)
+    for string in strings:
+        if clocks.cut(plan.model, string):
+            return "strings that are off cut rotations of strings that are right"
+        if structure.terms[string] < 0:
+            if structure.settled.places[string].size > 1:
+                return "strings that the Hamiltonian lacks turn in several places, and not as terms of a formula do"
+        elif not structure.one_number(plan, string):
+            return "strings that are off are so by several amounts in several places"
     return ""

@@ -75,7 +75,9 @@ class RuleOrders:
                 groups = self._of(rule)
                 if groups is None:
                     continue
-                order = tuple(term for group in (groups if given else _sorted(groups, ranks, self._neighbours)) for term in group)
+                order = tuple(
+                    term for group in (groups if given else _sorted(groups, ranks, self._neighbours)) for term in group
+                )
                 places = np.empty(len(order), dtype=np.intp)
                 places[list(order)] = np.arange(len(order))
                 if np.array_equal(places[one] < places[two], earlier):
