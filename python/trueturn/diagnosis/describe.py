@@ -203,7 +203,7 @@ class Describer:
             rule = f" in the order of {self.plan.rule!r}" if self.plan.rule else ""
             name = self.plan.model.method.name
             evidence += (f"the other strings run as {name} in {counted(self.plan.steps)}{rule}",)
-        others = self._other_places(group) if mended is not None else ()
+        others = () if mended is None else self._other_formulas(group) or self._other_places(group)
         repeated = group.kind == "factor" and abs(group.factor - 2.0) <= WHOLE  # which of the two should stay?
         placed = (group.kind in ("missing", "letters", "place") or repeated) and irregular
         guessed = placed and self.plan is not None and not self.plan.given
@@ -274,6 +274,19 @@ class Describer:
         spans = sorted(_span(mask) for mask in self.sheet.wanted if _span(mask))
         lost = [_span(mask) for mask in group.wanted]
         return bool(spans) and len(set(lost)) == 1 and lost[0] > max(1, spans[len(spans) // 2])
+
+    def _other_formulas(self, group: Group) -> tuple[tuple[str, Rotations], ...]:
+        """Circuits of other formulas or step counts from which the same strings are off by one number as well."""
+        if group.kind != "factor" or self.plan is None or self._steps_wrong():
+            return ()
+        seen = {(self.plan.model.method.name, self.plan.steps)}
+        found = []
+        for plan in self.structure.plans:
+            key = name, steps = plan.model.method.name, plan.steps
+            if key not in seen and all(self.structure.one_number(plan, one) for one in self.structure.damaged):
+                seen.add(key)
+                found.append((f"build {name} in {counted(steps)}", plan.circuit(self.hamiltonian, self.time)))
+        return tuple(found[:SHOWN])
 
     def _other_places(self, group: Group) -> tuple[tuple[str, Rotations], ...]:
         """Circuits with missing strings elsewhere, where another rule fits as well."""
