@@ -55,6 +55,25 @@ def distance(one, two):
     return float(np.linalg.norm(unitary(one) - unitary(two), 2))
 
 
+def up_to_phase(one, two):
+    """Distance in spectral norm, a global phase apart."""
+    left, right = unitary(one), unitary(two)
+    phase = np.vdot(left, right)
+    return float(np.linalg.norm(left * phase / abs(phase) - right, 2))
+
+
+def strang(operator, time=1.0, steps=4, rule="commuting"):
+    return tt.formula("strang").rotations(tt.Partition.of(operator, rule), time, steps)
+
+
+def one_mistake(circuit, operator, time):
+    """Give the mistake that a diagnosis names, if it is one."""
+    found = tt.diagnose(circuit, operator, time)
+    assert found.matches is False
+    (mistake,) = found.mistakes
+    return mistake
+
+
 def a_model(draw):
     """One of: Ising, Heisenberg, exchange in fields, long-range Ising, Hubbard, random strings."""
     kind = draw.choice(["ising", "heisenberg", "exchange", "long-range", "hubbard", "random"])

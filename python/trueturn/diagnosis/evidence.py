@@ -41,6 +41,8 @@ def unsupported(structure: Structure) -> str:
     groups = structure.reading.groups
     if not groups or _all_commute(structure) or _runs_throughout(structure):
         return ""
+    if structure.neighbours is None:
+        return "there are too many strings to compare the order of their rotations"
     accused = [_turning(structure, group) for group in groups]
     if not structure.plans:
         if not any(accused) and _in_stages(structure):
