@@ -55,6 +55,25 @@ def distance(one, two):
     return float(np.linalg.norm(unitary(one) - unitary(two), 2))
 
 
+def up_to_phase(one, two):
+    """Distance in spectral norm, a global phase apart."""
+    left, right = unitary(one), unitary(two)
+    phase = np.vdot(left, right)
+    return float(np.linalg.norm(left * phase / abs(phase) - right, 2))
+
+
+def strang(operator, time=1.0, steps=4, rule="commuting"):
+    return tt.formula("strang").rotations(tt.Partition.of(operator, rule), time, steps)
+
+
+def one_mistake(circuit, operator, time):
+    """Give the mistake that a diagnosis names, if it is one."""
+    found = tt.diagnose(circuit, operator, time)
+    assert found.matches is False
+    (mistake,) = found.mistakes
+    return mistake
+
+
 def a_model(draw):
     """One of: Ising, Heisenberg, exchange in fields, long-range Ising, Hubbard, random strings."""
     kind = draw.choice(["ising", "heisenberg", "exchange", "long-range", "hubbard", "random"])
@@ -326,13 +345,14 @@ def same_totals(circuit, operator, time):
     return circuit.angle_totals().near(operator.without_identity() * time, atol=1e-9)
 
 
-def seeded(kind, seed):
+def seeded(kind, seed, base=0):
     """Give (right, right circuit, broken circuit), or None where the mistake does nothing or cannot be made.
 
     Left out are broken circuits whose unitary is the right one, and those that are right product formulas of the
-    same Hamiltonian all the same (a symmetry carried one into another): nobody can call these broken.
+    same Hamiltonian all the same (a symmetry carried one into another): nobody can call these broken. Other bases give
+    other instances.
     """
-    draw = np.random.default_rng([sum(map(ord, kind)), seed])
+    draw = np.random.default_rng([sum(map(ord, kind)), seed, base])
     right = a_right_circuit(draw)
     broken = MISTAKES[kind](draw, right)
     if broken is None or same_totals(broken, right.operator, right.time):

@@ -16,11 +16,15 @@ CLOSE = 1e-8
 """Spectral norm: both circuits hold at most 1e4 rotations, whose angles are off by 4u |θ| each, below 1e-11 in all."""
 
 
-def score(kind, wanted):
+FRESH = 20261202
+"""Base of seeds that no choice in the diagnosis was made on; the figures are in benches/record."""
+
+
+def score(kind, wanted, base=0):
     """Return (instances, mended, certain but not mended) for the first seeds that give a broken circuit."""
     instances = mended = misled = seed = 0
     while instances < wanted:
-        case = seeded(kind, seed)
+        case = seeded(kind, seed, base)
         seed += 1
         assert seed < 20 * wanted, f"{kind}: too few seeds give a broken circuit"
         if case is None:
@@ -43,7 +47,7 @@ def test_a_few_of_each_kind_are_mended(kind):
 
 @pytest.mark.heavy
 def test_fifty_of_each_kind_are_mended(capsys):
-    table = {kind: score(kind, 50) for kind in MISTAKES}
+    table = {kind: score(kind, 50, FRESH) for kind in MISTAKES}
     with capsys.disabled():
         for kind, (instances, mended, misled) in table.items():
             print(f"\n{kind:28} {mended}/{instances} mended, {misled} certain but wrong", end="")

@@ -48,9 +48,10 @@ def diagnose(rotations: Rotations, operator: Operator, time: float, *, tolerance
 
     Notes
     -----
-    Every product formula turns each string P of H by c·t in all, so totals that differ are mistakes, or the circuit
-    is no product formula of H, which is then not told from a resynthesised one: the answer is None. Totals that
-    agree prove the circuit consistent (first order at least), not accurate: that is what an audit is for.
+    Every product formula turns each string P of H by c·t in all. Totals that differ are called a mistake only where
+    the order of the rotations leaves one number to explain; what a right circuit with resynthesised blocks could look
+    like as well is not accused: the answer is None. Totals that agree prove the circuit consistent (first order at
+    least), not accurate: that is what an audit is for.
 
     Time and memory grow with what the circuit stores, not with its repeats: 10^6 stored rotations on 128 qubits take
     seconds. Nothing depends on 2**qubits.

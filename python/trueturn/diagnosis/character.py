@@ -13,7 +13,7 @@ import numpy as np
 import numpy.typing as npt
 
 from trueturn.diagnosis.methods import Method, known_methods, stage_places
-from trueturn.diagnosis.ordering import Settled
+from trueturn.diagnosis.ordering import Settled, shares_of
 from trueturn.diagnosis.unfolding import Ints, Reals
 
 __all__ = ["Model", "first_order", "last_order", "recognised"]
@@ -75,7 +75,9 @@ def recognised(
     list of Model
         In the order of the library; several only where the strings cannot tell them apart.
     """
-    shares = {string: settled.angles[string] / settled.angles[string].sum() for string in judged}
+    shares = {string: own for string in judged if (own := shares_of(settled.angles[string])) is not None}
+    if len(shares) < len(judged):
+        return []
     size = len(neighbours)
     ranks = np.full(size, -1)
     ranks[list(order)] = np.arange(len(order))

@@ -10,56 +10,47 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 
 from trueturn.audit.figures import plain
+from trueturn.diagnosis.case import Case
 from trueturn.diagnosis.readings import Reading
 from trueturn.diagnosis.result import Finding
 from trueturn.diagnosis.structure import Hamiltonian, Plan, Structure
-from trueturn.diagnosis.totals import Group, Sheet, letter_pairs, support
-from trueturn.diagnosis.unfolding import Mask, Unfolded, edited
+from trueturn.diagnosis.totals import Group, letter_pairs, support
+from trueturn.diagnosis.unfolding import Mask, edited
 from trueturn.partition_rules import string_text
 from trueturn.rotations import Rotations
 
-__all__ = ["describe"]
+__all__ = ["Describer"]
 
 SHOWN = 4
 WHOLE = 1e-6
 UNKNOWN = "The circuit does not show where the rotations belong; build it again from the Hamiltonian."
 
 
-def describe(
-    rotations: Rotations,
-    unfolded: Unfolded,
-    sheet: Sheet,
-    structure: Structure,
-    rivals: Sequence[Reading],
-    time: float,
-    residual: Sequence[str],
-) -> list[Finding]:
-    """Name the mistakes of a circuit whose totals are off; rivals are readings that fit as well."""
-    return _Describer(rotations, unfolded, sheet, structure, rivals, time, residual).findings()
+class Describer:
+    """Name the mistakes of a circuit whose totals are off.
 
+    Parameters
+    ----------
+    case : Case
+    structure : Structure
+        Of the case, under the reading chosen.
+    rivals : sequence of Reading
+        Others that fit as well.
+    time : float
+    """
 
-class _Describer:
-    def __init__(
-        self,
-        rotations: Rotations,
-        unfolded: Unfolded,
-        sheet: Sheet,
-        structure: Structure,
-        rivals: Sequence[Reading],
-        time: float,
-        residual: Sequence[str],
-    ) -> None:
-        self.rotations = rotations
-        self.sheet = sheet
+    def __init__(self, case: Case, structure: Structure, rivals: Sequence[Reading], time: float) -> None:
+        self.rotations = case.rotations
+        self.sheet = case.sheet
         self.structure = structure
         self.hamiltonian: Hamiltonian = structure.hamiltonian
         self.reading: Reading = structure.reading
         self.rivals = rivals
         self.time = time
-        self.residual = tuple(residual)
+        self.residual = case.residual
         self.plan: Plan | None = structure.plans[0] if structure.plans else None
         self.string_of = {mask: string for string, mask in enumerate(structure.masks)}
-        self.totals: list[float] = unfolded.totals.tolist()
+        self.totals: list[float] = case.unfolded.totals.tolist()
         self.phase = 0.0 - self.hamiltonian.operator.identity_coefficient * time
 
     def findings(self) -> list[Finding]:
@@ -172,13 +163,13 @@ class _Describer:
                 return Finding(
                     "steps",
                     True,
-                    f"The circuit runs {self.plan.steps} steps where {steps} of this size reach the time.",
+                    f"The circuit runs {counted(self.plan.steps)} where {steps} of this size reach the time.",
                     (*evidence, f"a step takes {shown(self.time / steps)}"),
-                    f"Run {steps} steps.",
+                    f"Run {counted(steps)}.",
                     circuit,
                     alternatives=((f"scale all angles by {shown(1 / factor)}", mended),),
                 )
-            alternatives = ((f"run {steps} steps instead of {self.plan.steps}", circuit),)
+            alternatives = ((f"run {counted(steps)} instead of {self.plan.steps}", circuit),)
         if _near_any(factor, (2.0,)):
             what = (
                 "angles doubled",
@@ -211,9 +202,10 @@ class _Describer:
         if irregular and self.plan is not None:
             rule = f" in the order of {self.plan.rule!r}" if self.plan.rule else ""
             name = self.plan.model.method.name
-            evidence += (f"the other strings run as {name} in {self.plan.steps} steps{rule}",)
-        others = self._other_places(group) if mended is not None else ()
-        placed = group.kind in ("missing", "letters", "place") and irregular
+            evidence += (f"the other strings run as {name} in {counted(self.plan.steps)}{rule}",)
+        others = () if mended is None else self._other_formulas(group) or self._other_places(group)
+        repeated = group.kind == "factor" and abs(group.factor - 2.0) <= WHOLE  # which of the two should stay?
+        placed = (group.kind in ("missing", "letters", "place") or repeated) and irregular
         guessed = placed and self.plan is not None and not self.plan.given
         if guessed and mended is not None:
             change += " No rule gives this order of parts, so the place is a guess."
@@ -283,6 +275,19 @@ class _Describer:
         lost = [_span(mask) for mask in group.wanted]
         return bool(spans) and len(set(lost)) == 1 and lost[0] > max(1, spans[len(spans) // 2])
 
+    def _other_formulas(self, group: Group) -> tuple[tuple[str, Rotations], ...]:
+        """Circuits of other formulas or step counts from which the same strings are off by one number as well."""
+        if group.kind != "factor" or self.plan is None or self._steps_wrong():
+            return ()
+        seen = {(self.plan.model.method.name, self.plan.steps)}
+        found = []
+        for plan in self.structure.plans:
+            key = name, steps = plan.model.method.name, plan.steps
+            if key not in seen and all(self.structure.one_number(plan, one) for one in self.structure.damaged):
+                seen.add(key)
+                found.append((f"build {name} in {counted(steps)}", plan.circuit(self.hamiltonian, self.time)))
+        return tuple(found[:SHOWN])
+
     def _other_places(self, group: Group) -> tuple[tuple[str, Rotations], ...]:
         """Circuits with missing strings elsewhere, where another rule fits as well."""
         if self.plan is None or group.kind not in ("missing", "letters", "place"):
@@ -325,6 +330,11 @@ def _reading_words(reading: Reading, qubits: int) -> tuple[str, str, str, str]:
         "with the letters exchanged back the angle totals fit",
         f"Exchange {turned} {on}.",
     )
+
+
+def counted(steps: int) -> str:
+    """Write a number of steps."""
+    return "1 step" if steps == 1 else f"{steps} steps"
 
 
 def shown(value: float) -> str:

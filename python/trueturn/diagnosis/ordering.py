@@ -17,7 +17,7 @@ import numpy.typing as npt
 
 from trueturn.diagnosis.unfolding import Ints, Mask, Reals, Word
 
-__all__ = ["Settled", "clashes", "order_moments", "settle"]
+__all__ = ["Settled", "clashes", "order_moments", "settle", "shares_of"]
 
 ROWS = 512
 ROUNDS = 64
@@ -119,7 +119,7 @@ def order_moments(settled: Settled, neighbours: Sequence[Ints], most: int = 4096
     """
     pairs = [(p, int(q)) for p, others in enumerate(neighbours) for q in others if p < q]
     chosen = pairs[:: max(1, -(-len(pairs) // most))]
-    shares = {string: own for string, angles in enumerate(settled.angles) if (own := _shares(angles)) is not None}
+    shares = {string: own for string, angles in enumerate(settled.angles) if (own := shares_of(angles)) is not None}
     found = []
     for p, q in chosen:
         if p in shares and q in shares:
@@ -129,7 +129,7 @@ def order_moments(settled: Settled, neighbours: Sequence[Ints], most: int = 4096
     return np.array(found)
 
 
-def _shares(angles: Reals) -> Reals | None:
-    """Divide by the total; None where that is lost in rounding."""
+def shares_of(angles: Reals) -> Reals | None:
+    """Divide the angles of a string by their total; None where that is lost in rounding."""
     total = float(angles.sum())
     return angles / total if abs(total) > 1e-9 * float(np.abs(angles).sum()) else None

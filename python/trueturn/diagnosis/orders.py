@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 
@@ -74,7 +75,9 @@ class RuleOrders:
                 groups = self._of(rule)
                 if groups is None:
                     continue
-                order = tuple(term for group in (groups if given else _sorted(groups, ranks)) for term in group)
+                order = tuple(
+                    term for group in (groups if given else _sorted(groups, ranks, self._neighbours)) for term in group
+                )
                 places = np.empty(len(order), dtype=np.intp)
                 places[list(order)] = np.arange(len(order))
                 if np.array_equal(places[one] < places[two], earlier):
@@ -100,15 +103,28 @@ class RuleOrders:
         return self._groups[rule]
 
 
-def _sorted(groups: Groups, ranks: Ints) -> Groups:
-    """Put parts in the order of the mean rank of their known terms; parts without any stay behind the last one."""
+def _sorted(groups: Groups, ranks: Ints, neighbours: Sequence[Ints]) -> Groups:
+    """Put parts in the order of the mean rank of their known terms, and the others where most places are the same.
+
+    Moving a part past one that it commutes with changes nothing. A part that was anywhere in a random order was most
+    likely in the longest stretch between parts that it does not commute with.
+    """
     keys: list[tuple[float, int]] = []
-    last = -1.0
+    unknown = []
     for place, group in enumerate(groups):
         known = [float(ranks[term]) for term in group if ranks[term] >= 0]
-        last = sum(known) / len(known) if known else last
-        keys.append((last, place))
-    return [groups[place] for _, place in sorted(keys)]
+        if known:
+            keys.append((sum(known) / len(known), place))
+        else:
+            unknown.append(group)
+    placed = [groups[place] for _, place in sorted(keys)]
+    for group in unknown:
+        barred = {int(other) for term in group for other in neighbours[term]}
+        walls = [place for place, other in enumerate(placed) if barred.intersection(other)]
+        stretches = pairwise([-1, *walls, len(placed)])
+        start, _ = max(stretches, key=lambda ends: ends[1] - ends[0])
+        placed.insert(start + 1, group)
+    return placed
 
 
 def partition_in_order(operator: Operator, order: Sequence[int], neighbours: Sequence[Ints]) -> Partition:

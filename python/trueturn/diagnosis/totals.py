@@ -67,8 +67,12 @@ class Sheet:
         return self.tolerance * abs(self.wanted.get(mask, least)) + self.slack.get(mask, 0.0)
 
     def factors(self) -> list[float]:
-        """List total over c·t of the strings that both sides have."""
-        return [self.found[mask] / value for mask, value in self.wanted.items() if mask in self.found]
+        """List total over c·t of the strings that both sides have, but for totals that are nothing but rounding."""
+        return [
+            self.found[mask] / value
+            for mask, value in self.wanted.items()
+            if abs(self.found.get(mask, 0.0)) > self.slack.get(mask, 0.0)
+        ]
 
     def common_factor(self) -> float:
         """Give the factor that most strings share; of equally many the one nearest to 1."""
