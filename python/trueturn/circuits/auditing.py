@@ -5,10 +5,10 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import replace
 from pathlib import Path
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Unpack
 
 from trueturn.audit.given_circuit import GivenCircuit
-from trueturn.circuits.reading import Range, read_circuit
+from trueturn.circuits.reading import Reading, read_circuit
 
 if TYPE_CHECKING:
     from trueturn.audit.job import Job
@@ -19,11 +19,7 @@ __all__ = ["job_for_circuits"]
 def job_for_circuits(
     job: Job,
     paths: Sequence[Path],
-    prepare: Range | None = None,
-    basis: Range | None = None,
-    start_layout: Sequence[int] | None = None,
-    end_layout: Sequence[int] | None = None,
-    quarter_turns: str = "auto",
+    **reading: Unpack[Reading],
 ) -> tuple[Job, list[str]]:
     """Return the job with the circuits as its candidates, and what the reader must know.
 
@@ -36,16 +32,8 @@ def job_for_circuits(
     """
     candidates, notes = [], []
     for path in paths:
-        circuit = read_circuit(
-            path,
-            prepare=prepare,
-            basis=basis,
-            start_layout=start_layout,
-            end_layout=end_layout,
-            quarter_turns=quarter_turns,
-            qubits=job.operator.qubits,
-        )
-        candidates.append(GivenCircuit(circuit.evolution, path.name, file=True))
+        circuit = read_circuit(path, **{**reading, "qubits": job.operator.qubits})
+        candidates.append(GivenCircuit(circuit.evolution, path.name))
         notes += [f"{path.name}: {note}" for note in circuit.notes]
     if len(job.times) > 1:
         notes.append(f"circuits are read out at their end: only the last time of the job is judged, {job.times[-1]:g}")
