@@ -8,13 +8,16 @@ import re
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
-from typing import NamedTuple, TypedDict, Unpack
+from typing import TYPE_CHECKING, Any, NamedTuple, TypedDict, Unpack
 
 from trueturn import _native
 from trueturn.circuits.counts import GateCounts
 from trueturn.circuits.layouts import Layouts, given_layout, marked_layouts
 from trueturn.errors import ArgumentError, QasmError
 from trueturn.rotations import Rotations
+
+if TYPE_CHECKING:
+    from trueturn.export import Cost
 
 __all__ = ["Circuit", "Note", "Reading", "Register", "read_circuit", "read_qasm"]
 
@@ -84,6 +87,42 @@ class Circuit:
         assert counts is not None
         return counts
 
+    def cost(self, **device: Any) -> Cost:
+        """Return what the evolution costs as the file has it, at the rates of a device.
+
+        Parameters
+        ----------
+        **device
+            As for `Rotations.cost`, which counts the gates that trueturn would write instead. Only two_qubit_error,
+            one_qubit_error, readout_error and synthesis_error matter here.
+
+        Returns
+        -------
+        Cost
+            Its `success` is None where there are gates on more than two qubits, whose rate is not known.
+
+        Raises
+        ------
+        ArgumentError
+            An unknown option, a rate out of range.
+
+        Examples
+        --------
+        >>> text = 'OPENQASM 3.0; include "stdgates.inc"; qubit[2] q; cx q[0], q[1]; rz(0.7) q[1]; cx q[0], q[1];'
+        >>> cost = read_circuit(text).cost(two_qubit_error=0.01)
+        >>> cost.two_qubit_gates, cost.depth, round(cost.success, 4)
+        (2, 3, 0.9801)
+        """
+        from trueturn.export.cost import cost_as_written
+        from trueturn.export.hardware import Hardware
+
+        start = self.start_layout or tuple(range(self.evolution.qubits))
+        end = self.end_layout or start
+        physical = max(
+            sum(register.size for register in self.registers), 1 + max((*start, *end)), self.evolution.qubits
+        )
+        return cost_as_written(self.evolution, Hardware.of(device), start, end, physical)
+
 
 class Reading(TypedDict, total=False):
     """How a file is read; each is explained at `read_qasm`."""
@@ -94,7 +133,7 @@ class Reading(TypedDict, total=False):
     end_layout: Sequence[int] | None
     quarter_turns: str
     expansion_limit: int | None
-    native_gates: Sequence[str]
+    native_gates: Sequence[str] | None
     qubits: int | None
 
 
@@ -191,7 +230,7 @@ def read_circuit(path_or_text: str | os.PathLike[str], **reading: Unpack[Reading
         given_layout("end_layout", reading.get("end_layout")),
     )
     limit = _limit(reading.get("expansion_limit"))
-    native = _names(reading.get("native_gates", NATIVE_GATES))
+    native = _names(reading.get("native_gates"))
     width = _width(reading.get("qubits"))
     try:
         found = _native.read_qasm(text, folder, quarter_turns, *ranges, limit, native)
@@ -300,7 +339,9 @@ def _require_known(reading: Mapping[str, object]) -> None:
             raise ArgumentError(f"{name}: unknown option ({value!r}); {hint}", argument=name, value=value)
 
 
-def _names(given: Sequence[str]) -> list[str]:
+def _names(given: Sequence[str] | None) -> list[str]:
+    if given is None:
+        return list(NATIVE_GATES)
     if isinstance(given, str) or not all(isinstance(name, str) and name.isidentifier() for name in given):
         raise ArgumentError(
             f'native_gates: no names of gates ({given!r}); give for instance ["rzz", "rxx"]',
