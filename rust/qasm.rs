@@ -12,6 +12,7 @@
 //! Sources: the OpenQASM 3.0 and 3.1 texts, A. Cross et al., ACM Trans. Quantum Comput. 3, 12 (2022); OpenQASM 2,
 //! arXiv:1707.03429 (2017). Where they contradict themselves, `library` says what is taken.
 
+mod blocks;
 mod calls;
 mod conjugation;
 mod definitions;

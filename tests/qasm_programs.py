@@ -77,8 +77,10 @@ def calls(draw, variable=None, depth=0):
     for _ in range(draw(st.sampled_from([0, 0, 0, 1, 2]))):
         choice = draw(st.sampled_from(["inv", "pow(2)", "pow(-3)", "pow(0)", "ctrl", "negctrl", "root"]))
         if choice == "root":
-            # Roots of gates on one qubit, and of those whose rotations commute, are what is promised.
-            if not modifiers and (size == 1 or name in ("cx", "cz", "cy", "swap", "ladder", "crz", "cp", "ccx")):
+            # Roots of gates whose rotations commute, or that are diagonal on all qubits but one, are what is promised.
+            if not modifiers and (
+                size == 1 or name in ("cx", "cz", "cy", "swap", "ladder", "crz", "cp", "ccx", "ch", "cu")
+            ):
                 modifiers.append(f"pow({draw(st.sampled_from(['0.5', '-0.3', '1.7']))})")
         elif choice in ("ctrl", "negctrl"):
             if size < 3:
