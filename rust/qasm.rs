@@ -12,7 +12,10 @@
 //! Sources: the OpenQASM 3.0 and 3.1 texts, A. Cross et al., ACM Trans. Quantum Comput. 3, 12 (2022); OpenQASM 2,
 //! arXiv:1707.03429 (2017). Where they contradict themselves, `library` says what is taken.
 
+mod blocks;
+mod calls;
 mod conjugation;
+mod definitions;
 mod expressions;
 mod gates;
 mod lexer;
@@ -21,18 +24,21 @@ mod loops;
 mod modifiers;
 mod parser;
 mod powers;
+mod ranges;
 mod reader;
 mod refusal;
 mod registers;
 mod sources;
 mod statements;
 mod syntax;
+mod tally;
 
 use std::path::Path;
 
 pub use conjugation::Keep;
 pub use reader::{Named, Note};
 pub use registers::Register;
+pub use tally::Counted;
 
 use crate::error::{Error, Result};
 use crate::rotations::Rotations;
@@ -56,6 +62,8 @@ pub struct Options<'o> {
     pub basis: Option<Named>,
     /// Gates that loops, bodies and modifiers may make; None is 2^18 and 16 for each byte.
     pub limit: Option<u64>,
+    /// Gates of the file that count as one, whatever their bodies.
+    pub native: &'o [String],
 }
 
 /// What a text says.
@@ -75,6 +83,8 @@ pub struct Circuit {
     pub marks: Vec<(u32, u32, String)>,
     /// What stayed a rotation.
     pub keep: Keep,
+    /// The gates of the evolution.
+    pub counted: Counted,
     turned: [u64; 2],
 }
 
@@ -118,7 +128,7 @@ fn read_once(text: &str, files: &sources::Files, options: &Options, keep: Keep, 
     let version = reader::version(&mut parser).map_err(whole)?;
     parser.version = version;
     let limit = options.limit.unwrap_or(EXPANSION.0 + EXPANSION.1 * text.len() as u64);
-    let mut reader = Reader::new(version, keep, limit, [options.prepare, options.basis], files);
+    let mut reader = Reader::new(version, keep, limit, options, files);
     reader.run(&mut parser, pulse).map_err(|stop| match stop {
         Stop::Cancelled(error) => error,
         Stop::Refused(refusal) => {
@@ -140,6 +150,7 @@ fn read_once(text: &str, files: &sources::Files, options: &Options, keep: Keep, 
     });
     let marks = marks.collect();
     let turned = reader.parts[1].turned;
+    let counted = reader.gates.tally.total();
     let [prepare, evolution, basis] = reader.parts.map(|mut part| {
         part.widen(qubits.max(part.qubits()));
         part.finish().map_err(|error| whole(parser.token.place.refuse(error.to_string())))
@@ -152,6 +163,7 @@ fn read_once(text: &str, files: &sources::Files, options: &Options, keep: Keep, 
         notes: reader.notes,
         marks,
         keep,
+        counted,
         turned,
     })
 }

@@ -134,6 +134,12 @@ OPERATIONS = {
     "/": lambda a, b: a / b,
     "%": lambda a, b: math.fmod(a, b) if isinstance(a, float) or isinstance(b, float) else int(math.fmod(a, b)),
     "**": lambda a, b: a**b,
+    "<": lambda a, b: a < b,
+    ">=": lambda a, b: a >= b,
+    "==": lambda a, b: a == b,
+    "!=": lambda a, b: a != b,
+    "&&": lambda a, b: bool(a and b),
+    "||": lambda a, b: bool(a or b),
 }
 
 
@@ -192,6 +198,8 @@ class Program:
             case ast.ForInLoop(identifier=name, set_declaration=values, block=block):
                 for value in self.range(values, names):
                     self.run(block, names | {name.name: value})
+            case ast.BranchingStatement(condition=condition, if_block=taken, else_block=other):
+                self.run(taken if self.value(condition, names) else other, names)
             case ast.QuantumGate() | ast.QuantumPhase():
                 lists = [self.many(qubit, names) for qubit in statement.qubits]
                 width = max([len(one) for one in lists if len(one) > 1], default=1)
@@ -273,6 +281,8 @@ class Program:
                 return names[name] if name in names else CONSTANTS[name]
             case ast.UnaryExpression(op=op, expression=inner) if op.name == "-":
                 return -self.value(inner, names)
+            case ast.UnaryExpression(op=op, expression=inner) if op.name == "!":
+                return not self.value(inner, names)
             case ast.BinaryExpression(op=op, lhs=left, rhs=right):
                 return OPERATIONS[op.name](self.value(left, names), self.value(right, names))
             case ast.FunctionCall(name=name, arguments=arguments):

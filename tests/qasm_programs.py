@@ -31,6 +31,11 @@ include "stdgates.inc";
 const float c = pi / 7;
 gate ladder(t) u, v { cx u, v; rz(t) v; cx u, v; }
 gate mixed(s, t) u, v { h u; ladder(s + t / 2) v, u; inv @ s v; ctrl @ ry(-t) u, v; pow(2) @ h u; }
+gate looped(t) u, v {
+  for int k in [0:3] { rz(t + k / 4.0) u; h u; if (k % 2 == 0) { cx u, v; } else s v; }
+  for int k in [1:7] { rx(t) v; cx v, u; }
+  for uint m in {2, 5} for int k in [m:-1:1] if (t < 0 || k == m) ladder(t * k) u, v;
+}
 qubit[2] a;
 qubit b;
 let both = b ++ a[0:0];
@@ -65,13 +70,17 @@ def calls(draw, variable=None, depth=0):
     elif kind == 1:
         (name, size), parameters = draw(st.sampled_from(sorted(TURNED.items())))
     else:
-        name, size, parameters = draw(st.sampled_from([("ladder", 2, 1), ("mixed", 2, 2), ("rx", 1, 1), ("rz", 1, 1)]))
+        name, size, parameters = draw(
+            st.sampled_from([("ladder", 2, 1), ("mixed", 2, 2), ("looped", 2, 1), ("rx", 1, 1), ("rz", 1, 1)])
+        )
     modifiers = []
     for _ in range(draw(st.sampled_from([0, 0, 0, 1, 2]))):
         choice = draw(st.sampled_from(["inv", "pow(2)", "pow(-3)", "pow(0)", "ctrl", "negctrl", "root"]))
         if choice == "root":
-            # Roots of gates on one qubit, and of those whose rotations commute, are what is promised.
-            if not modifiers and (size == 1 or name in ("cx", "cz", "cy", "swap", "ladder", "crz", "cp", "ccx")):
+            # Roots of gates whose rotations commute, or that are diagonal on all qubits but one, are what is promised.
+            if not modifiers and (
+                size == 1 or name in ("cx", "cz", "cy", "swap", "ladder", "crz", "cp", "ccx", "ch", "cu")
+            ):
                 modifiers.append(f"pow({draw(st.sampled_from(['0.5', '-0.3', '1.7']))})")
         elif choice in ("ctrl", "negctrl"):
             if size < 3:
@@ -99,6 +108,12 @@ def statements(draw, variable=None, depth=0):
         span = draw(st.sampled_from(["[0:2]", "[1:2:6]", "[3:-1:1]", "{0, 4, 4}", "[0:12]"]))
         body += draw(st.lists(calls(variable=inner), max_size=1))
         return f"for int {inner} in {span} {{ {' '.join(body)} }}"
+    if kind == 3 and depth < 2:
+        counted = [] if variable is None else [f"{variable} % 3 == 1", f"{variable} >= 2 && c < 1"]
+        condition = draw(st.sampled_from(["true", "c < 0.3", "!(2 != 2)", *counted]))
+        bodies = [" ".join(draw(st.lists(statements(variable, depth + 1), max_size=3))) for _ in range(2)]
+        other = f" else {{ {bodies[1]} }}" if draw(st.booleans()) else ""
+        return f"if ({condition}) {{ {bodies[0]} }}{other}"
     if kind == 1:
         return draw(st.sampled_from(["h a;", "rx(c) a;", "cx a, b;", "swap both, a[1];", "barrier a;", "h b; sdg a;"]))
     if kind == 2:

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import json
-import re
 
 import pytest
 
@@ -74,7 +73,7 @@ def test_the_command_judges_circuits_and_tells_what_was_left_out(files, capsys):
 
 
 @pytest.mark.parametrize("quantity", ["", 'quantity = "operator"', 'quantity = "state"'])
-def test_gates_of_a_file_are_shown_as_unknown(files, capsys, quantity):
+def test_gates_of_a_file_are_those_that_stand_in_it(files, capsys, quantity):
     path = files / "job.toml"
     path.write_text(JOB.format(tolerance=f"0.01\n{quantity}"))
     if quantity:
@@ -83,16 +82,55 @@ def test_gates_of_a_file_are_shown_as_unknown(files, capsys, quantity):
     assert cli.run([*command, "--json"]) in (0, 1, 4)
     document = json.loads(capsys.readouterr().out)
     (row,) = document["rows"]
-    assert row["two_qubit_gates"] is None and row["depth"] is None and row["rotations"] > 0
-    assert all(trial["two_qubit_gates"] is None for trial in row["trials"])
-    assert any("Gates of circuits from files are not counted" in one for one in document["assumptions"])
+    # Each of 20 steps: rx on both qubits, cx, rz, cx, rx on both.
+    assert (row["two_qubit_gates"], row["depth"], row["rotations"]) == (40, 40, 100)
+    assert row["file_gates"] == {
+        "two_qubit_gates": 40,
+        "swaps": 0,
+        "larger_gates": 0,
+        "one_qubit_gates": 100,
+        "rotations": 100,
+        "clifford_rotations": 0,
+        "t_rotations": 0,
+        "two_qubit_depth": 40,
+        "depth": 100,
+    }
+    assert row["note"] == "the file has 100 one-qubit gates, 100 rotations (0 Clifford, 0 of T's kind)"
+    assert [trial["two_qubit_gates"] for trial in row["trials"]] == [40]
+    assert any("Gates of circuits from files are those of the files" in one for one in document["assumptions"])
     cli.run([*command, "--into", str(files / "report")])
     out = capsys.readouterr().out
-    line = next(line for line in out.splitlines() if line.startswith("good.qasm  "))
-    assert line.count("–") >= 2
-    said = " ".join(out.split())
-    assert "its gates are not known, so nothing is called cheapest" in said
-    assert not re.search(r"\d two-qubit gate", said)
+    assert "40" in next(line for line in out.splitlines() if line.startswith("good.qasm  "))
+    assert "the file has 100 one-qubit gates" in (files / "report" / "report.html").read_text()
+
+
+def test_a_file_with_a_native_gate_is_compared_by_its_own_gates(files):
+    steps = "rx(0.025) q; rzz(0.1) q[0], q[1]; rx(0.025) q;"
+    define = "gate rzz(t) a, b { cx a, b; rz(t) b; cx a, b; }\n"
+    text = f"{HEAD}{define}for int k in [1:20] {{ {steps} }}\n"
+    candidates = [
+        tt.Candidate.from_rotations("native", tt.read_qasm(text)),
+        tt.Candidate.from_rotations("by cx", tt.read_qasm(text, native_gates=[])),
+        tt.Candidate.from_rotations("as rotations", tt.read_qasm(text).times(1)),
+    ]
+    found = tt.audit(PAIR, tt.State.computational(0, 2), 1.0, candidates, 0.1, observables=Z0)
+    assert [row.two_qubit_gates for row in found.rows] == [20, 40, 40]
+    assert [row.depth for row in found.rows] == [20, 40, 40]
+    assert found.recommended is found.rows[0]
+    assert found.rows[0].gate_counts.rotations == 100 and found.rows[2].gate_counts is None
+
+
+def test_gates_on_more_than_two_qubits_leave_two_qubit_gates_unknown(files, capsys):
+    (files / "large.qasm").write_text(
+        strang_text(20).replace("qubit[2] q;", "qubit[2] q; qubit r; ctrl(2) @ x q[0], q[1], r;")
+    )
+    (files / "job.toml").write_text(JOB.format(tolerance=0.01).replace("0.5 X_1", "0.5 X_1 + 0.0001 X_2"))
+    assert cli.run(["audit", str(files / "large.qasm"), "--job", str(files / "job.toml"), "--json"]) == 0
+    document = json.loads(capsys.readouterr().out)
+    (row,) = document["rows"]
+    assert row["two_qubit_gates"] is None and row["depth"] is None and row["file_gates"]["larger_gates"] == 1
+    assert "1 gate on more than two qubits, so two-qubit gates are not known" in row["note"]
+    assert "its gates are not known, so nothing is called cheapest" in document["reason"]
 
 
 def test_a_file_on_fewer_qubits_is_judged_on_those_of_the_job(files, capsys):

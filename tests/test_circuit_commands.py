@@ -179,14 +179,23 @@ def test_candidates_without_a_step_count_are_told_and_the_others_counted(write, 
     assert cli.run(["cost", str(path)]) == 0
     lines = capsys.readouterr().out.splitlines()[1:4]
     assert [line.split("  ")[0] for line in lines] == ["lie, commuting", "strang, bond", "strang, axis"]
-    assert lines[1].endswith("  steps not known (least): give --steps") and "known" not in lines[0] + lines[2]
+    assert (
+        lines[1].endswith("  steps not known (least): give --steps N, or --search to find them")
+        and "known" not in lines[0] + lines[2]
+    )
     assert cli.run(["cost", str(path), "--json"]) == 0
     rows = json.loads(capsys.readouterr().out)["rows"]
-    assert rows[1] == {"name": "strang, bond", "note": "steps not known (least): give --steps"}
+    assert rows[1] == {
+        "name": "strang, bond",
+        "note": "steps not known (least): give --steps N, or --search to find them",
+    }
     assert rows[0]["two_qubit_gates"] > 0
     path.write_text(path.read_text().replace("steps = 4", 'steps = "least"').replace("steps = 2", 'steps = "least"'))
     assert cli.run(["cost", str(path)]) == 2
-    assert "candidate[1].steps: not known before an audit (least)" in capsys.readouterr().err
+    message = (
+        "candidate[1].steps: not known before an audit (least); give --steps N, or --search to find them as an audit"
+    )
+    assert message in capsys.readouterr().err
     assert cli.run(["cost", str(path), "--steps", "4"]) == 0
 
 
@@ -194,7 +203,7 @@ def test_the_job_of_init_is_counted(tmp_path, capsys):
     assert cli.run(["init", str(tmp_path / "job.toml")]) == 0
     assert cli.run(["cost", str(tmp_path / "job.toml")]) == 0
     out = capsys.readouterr().out
-    assert "two-qubit gates" in out and "steps not known (least): give --steps" in out
+    assert "two-qubit gates" in out and "steps not known (least): give --steps N, or --search to find them" in out
 
 
 @pytest.mark.parametrize(

@@ -112,16 +112,58 @@ def test_every_gate_takes_every_modifier(version, head, name, definition):
         "pow(-2) @ ": np.linalg.matrix_power(own.conj().T, 2),
         "inv @ ctrl @ ": controlled(own.conj().T),
     }
-    if name not in ("ch", "cu"):  # their rotations do not commute
-        expected |= {
-            "pow(0.3) @ ": principal_power(own, 0.3),
-            "ctrl @ pow(-0.5) @ ": controlled(principal_power(own, -0.5)),
-        }
+    expected |= {
+        "pow(0.3) @ ": principal_power(own, 0.3),
+        "ctrl @ pow(-0.5) @ ": controlled(principal_power(own, -0.5)),
+    }
     for modifiers, result in expected.items():
         _, text = call_text(version, head, name, definition, ANGLES, modifiers)
         circuit = tt.read_qasm(text)
         # A power triples errors; the Schur form of the oracle adds some u for each of at most 32 rows.
         assert difference(matrix(circuit), result) <= 4 * slack(circuit, gates=64), modifiers
+
+
+ROOTS = {
+    "ctrl @ U(0.3, -1.1, 2.7) q[2], q[0];": 2,
+    "negctrl @ ctrl @ h q[1], q[2], q[0];": 3,
+    "ctrl @ inv @ cu(0.3, -1.1, 2.7, 0.9) q[2], q[0], q[1];": 3,
+    # Diagonal on q[0] and q[2], with phases of its own; X, Y and Z on q[1].
+    "g(0.4) q[0], q[1], q[2];": 3,
+    # The eigenvalue -1 on one value of the control only, on which no axis is determined.
+    "ctrl @ m q[0], q[1];": 2,
+}
+
+
+@pytest.mark.parametrize("exponent", ["0.5", "-0.3", "1.7", "-1.5"])
+@pytest.mark.parametrize("call", ROOTS)
+def test_roots_of_gates_that_are_diagonal_on_all_qubits_but_one_are_principal(call, exponent):
+    head = f"""{V3}gate g(t) a, b, c {{ crx(t) a, b; cp(2 * t) c, a; cy c, b; rz(t) b; gphase(t); cz a, c; ch a, b; }}
+gate m a {{ rz(pi) a; ry(pi) a; rx(pi) a; x a; y a; z a; ry(0.1) a; rx(0) a; ry(-0.1) a; }}
+qubit[3] q;
+"""
+    plain = unitary(f"{head}{call}")
+    circuit = tt.read_qasm(f"{head}pow({exponent}) @ {call}")
+    # Sums over at most 8 sectors of angles below 2 * 1.7 π, each off by some u, and a Schur form of 8 rows.
+    assert difference(matrix(circuit), principal_power(plain, float(exponent))) <= 8 * slack(circuit, gates=64)
+    assert tt.read_circuit(f"{head}pow({exponent}) @ {call}").gate_counts.rotations >= 1
+
+
+def test_a_root_that_is_no_product_of_known_rotations_is_refused_with_the_reason():
+    text = f"{V3}gate g a, b {{ h a; cx a, b; ry(0.3) b; cx b, a; }} qubit[2] q; pow(0.5) @ g q[0], q[1];"
+    with pytest.raises(
+        QasmError, match="of a gate on 2 qubits whose rotations neither commute nor are diagonal on all"
+    ):
+        tt.read_qasm(text)
+    text = f"{V3}gate g a, b, c {{ ch a, c; cswap a, b, c; }} qubit[3] q; pow(0.5) @ g q[0], q[1], q[2];"
+    with pytest.raises(QasmError, match="write the root as a gate of its own"):
+        tt.read_qasm(text)
+
+
+def test_a_loop_in_a_gate_that_does_the_same_each_time_stays_a_block():
+    text = "gate g(t) a, b { for int s in [1:1000000] { rx(t) a; cx a, b; rz(2 * t) b; cx a, b; } }"
+    circuit = tt.read_qasm(f"{V3}{text} qubit[2] q; g(0.1) q[0], q[1]; inv @ g(0.1) q[1], q[0];")
+    assert [block.repeat for block in circuit.blocks] == [1_000_000] * 2
+    assert circuit.angle_totals().near(tt.Operator("5e4 X_0 - 5e4 X_1", qubits=2), 1e-9)
 
 
 def test_gates_of_no_library_are_refused():

@@ -24,6 +24,7 @@ from trueturn.accuracy import (
 from trueturn.adaptive import AdaptiveRun, adaptive
 from trueturn.audit import Audit, Candidate, audit
 from trueturn.chemistry import read_fcidump
+from trueturn.circuits.counts import GateCounts
 from trueturn.circuits.reading import Circuit, read_circuit, read_qasm
 from trueturn.comparison import Comparison, compare
 from trueturn.device import Budget, CausalCone, causal_cone, device_budget
@@ -71,6 +72,7 @@ __all__ = [
     "Finding",
     "Formula",
     "FoundFormula",
+    "GateCounts",
     "Improved",
     "Instance",
     "MemoryPass",

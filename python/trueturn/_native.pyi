@@ -154,6 +154,7 @@ def read_qasm(
     prepare: _Range | None,
     basis: _Range | None,
     limit: int | None,
+    native: list[str],
 ) -> tuple[
     list[Rotations],
     int,
@@ -162,6 +163,7 @@ def read_qasm(
     list[tuple[int, str]],
     list[tuple[int, int, str]],
     str,
+    tuple[list[int], list[int], list[int | None]],
 ]: ...
 def pairwise_sum(values: Sequence[float]) -> float: ...
 def instruction_sets() -> tuple[list[str], str]: ...

@@ -18,6 +18,7 @@ from trueturn.pass_plan import PassPlan, pass_plan
 if TYPE_CHECKING:
     import os
 
+    from trueturn.circuits.counts import GateCounts
     from trueturn.export import Cost
 
 __all__ = ["Block", "Rotations"]
@@ -66,8 +67,9 @@ class Rotations:
     2000
     """
 
-    __slots__ = ("_circuit",)
+    __slots__ = ("_circuit", "_gate_counts")
     _circuit: _native.Rotations
+    _gate_counts: GateCounts | None
 
     def __init__(
         self,
@@ -84,11 +86,13 @@ class Rotations:
             checked.qubits(qubits),
             checked.number("phase", phase),
         )
+        self._gate_counts = None
 
     @classmethod
-    def _wrap(cls, native: _native.Rotations) -> Rotations:
+    def _wrap(cls, native: _native.Rotations, gate_counts: GateCounts | None = None) -> Rotations:
         made = cls.__new__(cls)
         made._circuit = native
+        made._gate_counts = gate_counts
         return made
 
     @property
@@ -105,6 +109,14 @@ class Rotations:
     def phase(self) -> float:
         """Global phase in radians, not reduced."""
         return self._circuit.phase
+
+    @property
+    def gate_counts(self) -> GateCounts | None:
+        """The gates of the file that this circuit was read from; None where it was made otherwise, or changed since.
+
+        `cost`, `two_qubit_gates` and `depth` are about the rotations, however they were written.
+        """
+        return self._gate_counts
 
     @property
     def blocks(self) -> tuple[Block, ...]:

@@ -14,6 +14,8 @@ pub struct Counts {
     pub zz: u64,
     /// Swaps, each three two-qubit gates.
     pub swaps: u64,
+    /// Gates on more than two qubits, which only files have.
+    pub larger: u64,
     /// One-qubit gates, rotations included.
     pub one_qubit: u64,
     /// Rotations whose angle is a multiple of π/2 as OpenQASM has it: Clifford gates.
@@ -24,28 +26,65 @@ pub struct Counts {
     pub other_rotations: u64,
 }
 
-impl Counts {
-    fn add(&mut self, gate: Gate, times: u64) {
-        let place = match gate {
-            Gate::Cx(..) | Gate::Cz(..) => &mut self.controlled,
-            Gate::Swap(..) => &mut self.swaps,
-            Gate::Zz(..) => &mut self.zz,
-            _ => &mut self.one_qubit,
+/// What has to be known of a gate to count it.
+pub trait Counted {
+    /// Calls `visit` for each qubit that the gate occupies.
+    fn each_qubit(&self, visit: impl FnMut(usize));
+
+    /// Adds the gate, `times` over.
+    fn add_to(&self, counts: &mut Counts, times: u64);
+
+    /// Layers that the gate takes.
+    fn layers(&self) -> u64;
+
+    /// Whether these are layers of gates on several qubits.
+    fn joins(&self) -> bool;
+}
+
+impl Counted for Gate {
+    fn each_qubit(&self, mut visit: impl FnMut(usize)) {
+        let (first, second) = self.qubits();
+        visit(usize::from(first));
+        second.into_iter().for_each(|second| visit(usize::from(second)));
+    }
+
+    fn add_to(&self, counts: &mut Counts, times: u64) {
+        let place = match self {
+            Self::Cx(..) | Self::Cz(..) => &mut counts.controlled,
+            Self::Swap(..) => &mut counts.swaps,
+            Self::Zz(..) => &mut counts.zz,
+            _ => &mut counts.one_qubit,
         };
         *place = place.saturating_add(times);
-        if let Some(angle) = gate.angle() {
-            let place = match eighth_turns(angle) {
-                Some(count) if count % 2 == 0 => &mut self.clifford_rotations,
-                Some(_) => &mut self.t_rotations,
-                None => &mut self.other_rotations,
-            };
+        if let Some(angle) = self.angle() {
+            let place = counts.rotations(angle);
             *place = place.saturating_add(times);
         }
     }
 
-    fn add_item(&mut self, item: &Item, times: u64) {
+    fn layers(&self) -> u64 {
+        if matches!(self, Self::Swap(..)) { 3 } else { 1 }
+    }
+
+    fn joins(&self) -> bool {
+        self.qubits().1.is_some()
+    }
+}
+
+impl Counts {
+    /// The count of rotations that a rotation by this angle belongs to, as OpenQASM has the angle.
+    pub fn rotations(&mut self, angle: f64) -> &mut u64 {
+        match eighth_turns(angle) {
+            Some(count) if count % 2 == 0 => &mut self.clifford_rotations,
+            Some(_) => &mut self.t_rotations,
+            None => &mut self.other_rotations,
+        }
+    }
+
+    /// Adds an item, `times` over.
+    pub fn add_item<G: Counted>(&mut self, item: &Item<G>, times: u64) {
         match item {
-            Item::Gate(gate) => self.add(*gate, times),
+            Item::Gate(gate) => gate.add_to(self, times),
             Item::Loop(body) => {
                 let times = times.saturating_mul(body.repeat);
                 body.items.iter().for_each(|item| self.add_item(item, times));
@@ -68,65 +107,85 @@ fn eighth_turns(angle: f64) -> Option<u64> {
 pub struct Counter {
     /// The counts so far.
     pub counts: Counts,
-    depth: Vec<u64>,
-    two_qubit_depth: Vec<u64>,
+    all: Clock,
+    joining: Clock,
 }
 
 impl Counter {
-    /// A counter for a device of `qubits` qubits.
-    pub fn new(qubits: usize) -> Self {
-        Self { counts: Counts::default(), depth: vec![0; qubits], two_qubit_depth: vec![0; qubits] }
+    /// A counter for a device of `qubits` qubits. Repeats are followed until they recur, for up to `work` gates in all.
+    pub fn new(qubits: usize, work: u64) -> Self {
+        let clock = |joining| Clock { free_at: vec![0; qubits], joining, work };
+        Self { counts: Counts::default(), all: clock(false), joining: clock(true) }
     }
 
-    /// Layers of gates, a swap being three, when each gate starts as soon as its qubits are free.
-    pub fn depth(&self) -> u64 {
-        self.depth.iter().copied().max().unwrap_or(0)
+    /// Takes the next item.
+    pub fn add<G: Counted>(&mut self, item: &Item<G>) {
+        self.counts.add_item(item, 1);
+        self.all.add(item);
+        self.joining.add(item);
     }
 
-    /// The same for two-qubit gates alone.
-    pub fn two_qubit_depth(&self) -> u64 {
-        self.two_qubit_depth.iter().copied().max().unwrap_or(0)
+    /// Layers of gates, a swap being three, when each gate starts as soon as its qubits are free; None where repeats did
+    /// not recur.
+    pub fn depth(&self) -> Option<u64> {
+        self.all.depth()
+    }
+
+    /// The same for gates on two or more qubits alone.
+    pub fn two_qubit_depth(&self) -> Option<u64> {
+        self.joining.depth()
     }
 }
 
 impl Sink for Counter {
     fn take(&mut self, item: Item) -> Result<()> {
-        self.counts.add_item(&item, 1);
-        schedule(&item, &mut self.depth, one_for_each);
-        schedule(&item, &mut self.two_qubit_depth, none_for_one_qubit);
+        self.add(&item);
         Ok(())
     }
 }
 
-fn one_for_each(gate: Gate) -> u64 {
-    if matches!(gate, Gate::Swap(..)) { 3 } else { 1 }
+/// When each qubit becomes free.
+struct Clock {
+    free_at: Vec<u64>,
+    /// Whether only gates on several qubits take time.
+    joining: bool,
+    work: u64,
 }
 
-fn none_for_one_qubit(gate: Gate) -> u64 {
-    if gate.qubits().1.is_some() { one_for_each(gate) } else { 0 }
+impl Clock {
+    fn add<G: Counted>(&mut self, item: &Item<G>) {
+        schedule(item, &mut self.free_at, self.joining, &mut self.work);
+    }
+
+    fn depth(&self) -> Option<u64> {
+        (self.work > 0).then(|| self.free_at.iter().copied().max().unwrap_or(0))
+    }
 }
 
-fn schedule(item: &Item, free_at: &mut [u64], duration: fn(Gate) -> u64) {
+fn schedule<G: Counted>(item: &Item<G>, free_at: &mut [u64], joining: bool, work: &mut u64) {
     match item {
         Item::Gate(gate) => {
-            let (first, second) = gate.qubits();
-            let (first, second) = (usize::from(first), usize::from(second.unwrap_or(first)));
-            let end = free_at[first].max(free_at[second]).saturating_add(duration(*gate));
-            if duration(*gate) > 0 {
-                (free_at[first], free_at[second]) = (end, end);
-            }
+            let mut end = 0;
+            gate.each_qubit(|qubit| end = end.max(free_at[qubit]));
+            let layers = if joining && !gate.joins() { 0 } else { gate.layers() };
+            end = end.saturating_add(layers);
+            gate.each_qubit(|qubit| free_at[qubit] = end);
         }
         Item::Loop(body) => {
             let parts = connected(&body.items, free_at.len());
             repeated(body.repeat, &parts, free_at, &mut |free_at| {
-                body.items.iter().for_each(|item| schedule(item, free_at, duration));
+                *work = work.saturating_sub(body.items.len() as u64);
+                // Without work left nothing moves, which recurs at once.
+                if *work > 0 {
+                    body.items.iter().for_each(|item| schedule(item, free_at, joining, work));
+                }
             });
         }
     }
 }
 
 /// Sets of qubits that the gates of a body connect, two or more each, and single ones that it touches.
-fn connected(items: &[Item], qubits: usize) -> Vec<Vec<usize>> {
+fn connected<G: Counted>(items: &[Item<G>], qubits: usize) -> Vec<Vec<usize>> {
     let mut leader: Vec<usize> = (0..qubits).collect();
     let mut touched = vec![false; qubits];
     join(items, &mut leader, &mut touched);
@@ -138,18 +197,17 @@ fn connected(items: &[Item], qubits: usize) -> Vec<Vec<usize>> {
     parts
 }
 
-fn join(items: &[Item], leader: &mut [usize], touched: &mut [bool]) {
+fn join<G: Counted>(items: &[Item<G>], leader: &mut [usize], touched: &mut [bool]) {
     for item in items {
         match item {
             Item::Gate(gate) => {
-                let (first, second) = gate.qubits();
-                let one = find(leader, usize::from(first));
-                touched[usize::from(first)] = true;
-                if let Some(second) = second {
-                    let other = find(leader, usize::from(second));
-                    touched[usize::from(second)] = true;
+                let mut first = None;
+                gate.each_qubit(|qubit| {
+                    touched[qubit] = true;
+                    let other = find(leader, qubit);
+                    let one = *first.get_or_insert(other);
                     leader[other] = one;
-                }
+                });
             }
             Item::Loop(body) => join(&body.items, leader, touched),
         }
@@ -163,4 +221,27 @@ fn find(leader: &mut [usize], qubit: usize) -> usize {
         now = leader[now];
     }
     now
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::gates::gate::Loop;
+
+    fn chain(repeat: u64) -> Item {
+        let items = (0..5).map(|qubit| Item::Gate(Gate::Cx(qubit, qubit + 1))).collect();
+        Item::Loop(Box::new(Loop { repeat, items, qubits: (0..6).collect() }))
+    }
+
+    #[test]
+    fn depth_is_given_up_where_repeats_take_too_much_work() {
+        let depths = [9, 1000].map(|work| {
+            let mut counter = Counter::new(6, work);
+            counter.add(&chain(1 << 40));
+            assert_eq!(counter.counts.controlled, 5 << 40);
+            (counter.depth(), counter.two_qubit_depth())
+        });
+        let exact = 2 * ((1 << 40) - 1) + 5;
+        assert_eq!(depths, [(None, None), (Some(exact), Some(exact))]);
+    }
 }

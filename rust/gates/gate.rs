@@ -95,20 +95,20 @@ impl Gate {
 
 /// A gate, or a body that runs several times.
 #[derive(Clone, Debug, PartialEq)]
-pub enum Item {
+pub enum Item<G = Gate> {
     /// One gate.
-    Gate(Gate),
+    Gate(G),
     /// A repeated body.
-    Loop(Box<Loop>),
+    Loop(Box<Loop<G>>),
 }
 
 /// Items that run `repeat` times over.
 #[derive(Clone, Debug, PartialEq)]
-pub struct Loop {
+pub struct Loop<G = Gate> {
     /// How often, at least twice.
     pub repeat: u64,
     /// What runs, first in time first.
-    pub items: Vec<Item>,
+    pub items: Vec<Item<G>>,
     /// The qubits that the body touches, ascending.
     pub qubits: Vec<u16>,
 }

@@ -75,7 +75,7 @@ type Numbers = (u64, u64, u64, u64, u64, u64, u64, u64, u64);
 #[pyfunction]
 pub fn gate_counts(py: Python<'_>, circuit: &PyRotations, options: &PyGateOptions) -> PyResult<(Numbers, Vec<u16>)> {
     let (rotations, options) = (&circuit.rotations, &options.options);
-    let mut counter = Counter::new(options.qubits);
+    let mut counter = Counter::new(options.qubits, u64::MAX);
     let end = run_checked(py, |check| compile(rotations, options, &mut counter, check))?;
     let counts = counter.counts;
     let numbers = (
@@ -86,8 +86,8 @@ pub fn gate_counts(py: Python<'_>, circuit: &PyRotations, options: &PyGateOption
         counts.clifford_rotations,
         counts.t_rotations,
         counts.other_rotations,
-        counter.depth(),
-        counter.two_qubit_depth(),
+        counter.depth().unwrap_or(u64::MAX),
+        counter.two_qubit_depth().unwrap_or(u64::MAX),
     );
     Ok((numbers, end.physical))
 }

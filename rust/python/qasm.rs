@@ -6,19 +6,30 @@ use pyo3::prelude::*;
 
 use super::gateway::run_checked;
 use super::rotations::PyRotations;
-use crate::qasm::{Keep, Named, Options, read};
+use crate::qasm::{Counted, Keep, Named, Options, read};
 
 /// A range: whether it counts lines, and its ends.
 type Range = (bool, u64, u64);
 
-/// What was read: preparation, evolution, basis; version; registers; gates; notes; marks; what stayed a rotation.
-type Found =
-    ([PyRotations; 3], u32, Vec<(String, u32, u32)>, u64, Vec<(u32, String)>, Vec<(u32, u32, String)>, &'static str);
+/// Two-qubit gates, swaps, larger and one-qubit gates; Clifford, T-like and other rotations; depth, two-qubit depth.
+type Counts = ([u64; 4], [u64; 3], [Option<u64>; 2]);
+
+/// What was read: preparation, evolution, basis; version; registers; gates; notes; marks; what stayed a rotation; counts.
+type Found = (
+    [PyRotations; 3],
+    u32,
+    Vec<(String, u32, u32)>,
+    u64,
+    Vec<(u32, String)>,
+    Vec<(u32, u32, String)>,
+    &'static str,
+    Counts,
+);
 
 const WAYS: [(&str, Keep); 3] =
     [("clifford", Keep::Nothing), ("diagonal", Keep::Diagonal), ("rotations", Keep::Rotations)];
 
-/// Reads OpenQASM text; `keep` is one of "clifford", "diagonal", "rotations", or anything else to choose.
+/// Reads OpenQASM text; `native` are gates of the file that count as one; `keep` is one of "clifford", "diagonal", "rotations", or anything else to choose.
 #[pyfunction]
 pub fn read_qasm(
     py: Python<'_>,
@@ -28,6 +39,7 @@ pub fn read_qasm(
     prepare: Option<Range>,
     basis: Option<Range>,
     limit: Option<u64>,
+    native: Vec<String>,
 ) -> PyResult<Found> {
     let named = |range: Range| match range {
         (true, start, stop) => Named::Lines(start, stop),
@@ -39,6 +51,7 @@ pub fn read_qasm(
         prepare: prepare.map(named),
         basis: basis.map(named),
         limit,
+        native: &native,
     };
     let found = run_checked(py, |check| read(text, &options, check))?;
     let way = WAYS.iter().find(|(_, way)| *way == found.keep).map_or("", |(name, _)| name);
@@ -50,5 +63,13 @@ pub fn read_qasm(
         found.notes.into_iter().map(|note| (note.line, note.text)).collect(),
         found.marks,
         way,
+        counts(&found.counted),
     ))
+}
+
+fn counts(counted: &Counted) -> Counts {
+    let all = &counted.counts;
+    let gates = [all.controlled, all.swaps, all.larger, all.one_qubit];
+    let rotations = [all.clifford_rotations, all.t_rotations, all.other_rotations];
+    (gates, rotations, [counted.depth, counted.two_qubit_depth])
 }

@@ -7,7 +7,8 @@
 
 use std::f64::consts::FRAC_PI_4;
 
-use super::library::Move;
+use super::library::{Move, rotates, weighted};
+use super::refusal::{Place, Refusal};
 use crate::clifford::{Clifford, Turn, inverted, move_string};
 use crate::error::Result;
 use crate::frame::Frame;
@@ -99,8 +100,9 @@ impl Builder {
         self.slots.len() as u32
     }
 
-    pub fn keep(&self) -> Keep {
-        self.keep
+    /// An empty builder of the same kind.
+    pub fn fresh(&self) -> Self {
+        Self::new(self.qubits(), self.keep)
     }
 
     pub fn widen(&mut self, qubits: u32) {
@@ -161,10 +163,8 @@ impl Builder {
     pub fn step(&mut self, step: &Move, parameters: &[f64], on: &[u32], undo: bool) {
         let spread = |mask: u8| (0..3).filter(|bit| mask >> bit & 1 == 1).fold(0, |all, bit| all | 1u128 << on[bit]);
         let string = |x: u8, z: u8| PauliString { x: spread(x), z: spread(z) };
-        let angle = |weights: &[f64; 5]| {
-            let angle = parameters.iter().zip(weights).map(|(value, weight)| value * weight).sum::<f64>() + weights[4];
-            if undo { -angle } else { angle }
-        };
+        let angle =
+            |weights: &[f64; 5]| if undo { -weighted(weights, parameters) } else { weighted(weights, parameters) };
         let eighths = |turns: u8| if undo { (8 - turns) & 7 } else { turns };
         match step {
             Move::Quarter(x, z, turns) => self.turn(string(*x, *z), eighths(*turns)),
@@ -173,8 +173,7 @@ impl Builder {
             Move::Phase(weights) => self.gate_phase(angle(weights)),
             Move::Angle(x, z, weights) => {
                 let angle = angle(weights);
-                // A gate of one angle, such as rz(0), is kept as written; parts of others that vanish are none.
-                if angle != 0.0 || (parameters.len() == 1 && weights == &HALF) {
+                if rotates(weights, parameters) {
                     self.rotate(string(*x, *z), angle, parameters.is_empty());
                 }
             }
@@ -204,6 +203,19 @@ impl Builder {
         self.slots = back.iter().map(|&qubit| self.slots[qubit as usize]).collect();
     }
 
+    /// Appends what another builder read, as often as said.
+    pub fn repeat(&mut self, body: Self, count: u64, place: Place) -> std::result::Result<(), Refusal> {
+        self.turned = [0, 1].map(|which| self.turned[which].saturating_add(body.turned[which]));
+        let refused = |error: crate::error::Error| place.refuse(format!("a loop of {count} repeats: {error}"));
+        let mut once = body.finish().map_err(refused)?;
+        self.widen(once.qubits().max(self.qubits()));
+        if once.qubits() < self.qubits() {
+            once = once.widened(self.qubits());
+        }
+        self.append(&once.times(count).map_err(refused)?);
+        Ok(())
+    }
+
     fn seal(&mut self) {
         if !self.list.is_empty() {
             let body = Body::List(std::mem::take(&mut self.list).into());
@@ -223,5 +235,3 @@ impl Builder {
         Rotations::framed(self.slots.len() as u32, self.blocks, phase, frame)
     }
 }
-
-const HALF: [f64; 5] = [0.5, 0.0, 0.0, 0.0, 0.0];

@@ -44,6 +44,9 @@ impl Context<'_> {
             Expression::Real(value) => Ok(Value::Real(*value)),
             Expression::Truth(value) => Ok(Value::Truth(*value)),
             Expression::Name(name, place) => self.named(name, *place),
+            Expression::Entry(name, place) => Err(place.refuse(format!(
+                "an entry of a register is no value known before the circuit runs ({name}[..]); write a constant"
+            ))),
             Expression::Unary(sign, inner, place) => unary(sign, self.value(inner)?, *place),
             Expression::Binary(sign, both, place) => {
                 let (left, right) = (self.value(&both[0])?, self.value(&both[1])?);
@@ -54,6 +57,21 @@ impl Context<'_> {
                 self.call(name, &values, *place)
             }
         }
+    }
+
+    /// A size, an index or a count.
+    pub fn whole_number(&self, expression: &Expression, place: Place) -> Outcome<i64> {
+        match self.value(expression)? {
+            Value::Whole(value) => Ok(value),
+            other => {
+                Err(place.refuse(format!("no whole number ({}); sizes, indices and counts are whole", other.shown())))
+            }
+        }
+    }
+
+    /// Whether a condition holds.
+    pub fn holds(&self, condition: &Expression, place: Place) -> Outcome<bool> {
+        truth(self.value(condition)?, "if", place)
     }
 
     fn named(&self, name: &str, place: Place) -> Outcome<Value> {

@@ -58,6 +58,17 @@ impl Standard {
     }
 }
 
+/// The angle of a move.
+pub fn weighted(weights: &[f64; 5], parameters: &[f64]) -> f64 {
+    parameters.iter().zip(weights).map(|(value, weight)| value * weight).sum::<f64>() + weights[4]
+}
+
+/// Whether a move is a rotation with these parameters: a gate of one angle, such as rz(0), is kept as written; parts of
+/// others that vanish are none.
+pub fn rotates(weights: &[f64; 5], parameters: &[f64]) -> bool {
+    weighted(weights, parameters) != 0.0 || (parameters.len() == 1 && weights == &[0.5, 0.0, 0.0, 0.0, 0.0])
+}
+
 const X0: (u8, u8) = (1, 0);
 const Z0: (u8, u8) = (0, 1);
 const Y0: (u8, u8) = (1, 1);

@@ -1,9 +1,11 @@
-//! Loops with known bounds: a body that does the same each time becomes a block, another is carried out value by value.
+//! Loops and branches with known values: a body that does the same each time becomes a block, another is carried out value
+//! by value.
 
-use super::conjugation::Builder;
+use super::expressions::Context;
+use super::ranges::Values;
 use super::reader::{Pulse, Reader, Stop};
 use super::refusal::Place;
-use super::syntax::{Range, Statement};
+use super::syntax::{Expression, Range, Statement};
 
 impl<'a> Reader<'a> {
     pub fn repeat(
@@ -14,12 +16,8 @@ impl<'a> Reader<'a> {
         place: Place,
         pulse: Pulse,
     ) -> Result<(), Stop> {
-        let set = self.registers.set_values(range, place)?;
-        let (start, step, count) = match (range, &set) {
-            (Range::Span(span), _) => self.registers.span(span)?,
-            (_, Some(set)) => (0, 1, set.len() as u64),
-            _ => (0, 1, 0),
-        };
+        let values = Values::of(range, place, &|value, place| self.registers.whole(value, place))?;
+        let count = values.count();
         if count == 0 {
             return Ok(());
         }
@@ -29,14 +27,9 @@ impl<'a> Reader<'a> {
         } else {
             self.gates.spend(count.saturating_mul(body.len().max(1) as u64), place)?;
             (0..count).try_for_each(|at| {
-                let value = match &set {
-                    Some(set) => set[at as usize],
-                    // Both ends are 64-bit numbers and this lies between them.
-                    None => start.wrapping_add((at as i64).wrapping_mul(step)),
-                };
                 self.registers.close();
                 self.registers.open();
-                self.registers.set(variable, value);
+                self.registers.set(variable, values.at(at));
                 body.iter().try_for_each(|statement| self.carry_out(statement, pulse))
             })
         };
@@ -47,21 +40,43 @@ impl<'a> Reader<'a> {
     /// A body that does the same each time is read once and becomes a block.
     fn repeat_once(&mut self, body: &[Statement<'a>], count: u64, place: Place, pulse: Pulse) -> Result<(), Stop> {
         self.gates.spend(body.len() as u64, place)?;
-        let fresh = Builder::new(self.registers.qubits, self.parts[self.part].keep());
+        let fresh = self.parts[self.part].fresh();
         let outer = std::mem::replace(&mut self.parts[self.part], fresh);
+        self.gates.tally.open();
         let outcome = body.iter().try_for_each(|statement| self.carry_out(statement, pulse));
+        let counted = self.gates.tally.close();
         let inner = std::mem::replace(&mut self.parts[self.part], outer);
         outcome?;
-        let builder = &mut self.parts[self.part];
-        builder.turned = [0, 1].map(|which| builder.turned[which].saturating_add(inner.turned[which]));
-        let refused = |error: crate::error::Error| place.refuse(format!("a loop of {count} repeats: {error}"));
-        let mut once = inner.finish().map_err(refused)?;
-        if once.qubits() < self.registers.qubits {
-            once = once.widened(self.registers.qubits);
+        self.gates.tally.repeat(counted, count);
+        Ok(self.parts[self.part].repeat(inner, count, place)?)
+    }
+
+    /// Carries out the body that a condition picks.
+    pub fn branch(
+        &mut self,
+        condition: &Expression<'a>,
+        bodies: &[Vec<Statement<'a>>; 2],
+        place: Place,
+        pulse: Pulse,
+    ) -> Result<(), Stop> {
+        let measured = |inner: &Expression| match inner {
+            Expression::Name(name, _) => self.registers.is_bits(name),
+            Expression::Entry(..) => true,
+            _ => false,
+        };
+        if let Some(Expression::Name(name, _) | Expression::Entry(name, _)) = condition.find_name(&measured) {
+            let message = format!(
+                "a branch on measured bits is valid OpenQASM but unsupported here (if, {name}); only unitary circuits \
+                 with known values can be read"
+            );
+            return Err(place.refuse(message).into());
         }
-        let many = once.times(count).map_err(refused)?;
-        builder.widen(self.registers.qubits.max(builder.qubits()));
-        builder.append(&many);
-        Ok(())
+        let names = |name: &str| self.registers.value(name);
+        let context = Context { version: self.registers.version, whole: true, names: &names };
+        let taken = context.holds(condition, place)?;
+        self.registers.open();
+        let outcome = bodies[usize::from(!taken)].iter().try_for_each(|statement| self.carry_out(statement, pulse));
+        self.registers.close();
+        outcome
     }
 }

@@ -251,6 +251,10 @@ impl<'a> Parser<'a> {
                 if size {
                     return Err(self.unexpected("'(' after a type"));
                 }
+                if self.version == 3 && self.took("[")? {
+                    self.index()?;
+                    return Ok(Expression::Entry(name.text, name.place));
+                }
                 Ok(Expression::Name(name.text, name.place))
             }
             Kind::Sign if self.is("(") => {

@@ -1,18 +1,18 @@
 //! Powers of a gate that is written as a product of rotations.
 //!
 //! Whole powers repeat, and an angle times the exponent counts modulo 2π: multiples of π/16 exactly where the product is large,
-//! and what would leave no digits is refused. Others are principal powers: with eigenvalues e^{iφ}, -π < φ ≤ π, those of the power are e^{ikφ}. Two
+//! and what would leave no digits is refused. Others are principal powers: with eigenvalues e^{iφ}, -π < φ ≤ π, those of the power are e^{ikφ}. Three
 //! cases cover the library and what is built from it by controls:
 //!
 //! - The strings commute. Each sign of their independent generators is an eigenspace, its φ is a sum of the angles with
 //!   signs, and the logarithm is again a sum of products of the generators, found by a Walsh-Hadamard transform.
 //! - One qubit. U = e^{iα} exp(-i β n·σ) has the eigenvalues e^{i(α ∓ β)} and keeps its axis n.
+//! - One qubit under others on which every string is diagonal: a block of the second kind for each of their values, so a
+//!   controlled gate's power is the controlled power. See `blocks`.
 //!
 //! Anything else is refused; a numerical logarithm of a larger matrix is no sum of few strings.
 
 use std::f64::consts::PI;
-
-use num_complex::Complex64;
 
 use super::modifiers::Product;
 use super::refusal::{Place, Refusal};
@@ -70,13 +70,14 @@ pub fn power(
             if let Some(found) = commuting_power(&product, exponent, place)? {
                 return Ok(found);
             }
-        } else if qubits == 1 {
-            return one_qubit_power(&product, exponent, place);
+        } else if let Some(found) = super::blocks::power(&product, exponent, place)? {
+            return Ok(found);
         }
     }
     Err(place.refuse(format!(
-        "pow({exponent}): a power that is not whole, of a gate on {qubits} qubits whose rotations do not commute; \
-         write the root as a gate of its own"
+        "pow({exponent}): a power that is not whole, of a gate on {qubits} qubits whose rotations neither commute nor are \
+         diagonal on all qubits but one, so that its root is no product of rotations known here; write the root as a gate \
+         of its own"
     )))
 }
 
@@ -140,7 +141,7 @@ fn multiplied(angle: f64, exponent: f64, place: Place) -> Result<f64, Refusal> {
 }
 
 /// Refuses an angle whose rounding is seen modulo 2π.
-fn require_digits(angle: f64, exponent: f64, place: Place) -> Result<(), Refusal> {
+pub fn require_digits(angle: f64, exponent: f64, place: Place) -> Result<(), Refusal> {
     if angle.abs() * f64::EPSILON <= MOST_ROUNDING {
         return Ok(());
     }
@@ -148,7 +149,7 @@ fn require_digits(angle: f64, exponent: f64, place: Place) -> Result<(), Refusal
 }
 
 /// The angle less a multiple of 2π, above -π and at most π; what is within rounding of -π counts as π.
-fn principal(angle: f64) -> f64 {
+pub fn principal(angle: f64) -> f64 {
     let turned = angle - 2.0 * PI * (angle / (2.0 * PI)).round();
     if turned <= -PI + 1e-12 { turned + 2.0 * PI } else { turned }
 }
@@ -209,7 +210,7 @@ fn commuting_power(product: &Product, exponent: f64, place: Place) -> Result<Opt
 }
 
 /// The Walsh-Hadamard transform without a factor, in place.
-fn transform(values: &mut [f64]) {
+pub fn transform(values: &mut [f64]) {
     let mut half = 1;
     while half < values.len() {
         for start in (0..values.len()).step_by(2 * half) {
@@ -220,44 +221,4 @@ fn transform(values: &mut [f64]) {
         }
         half *= 2;
     }
-}
-
-fn one_qubit_power(product: &Product, exponent: f64, place: Place) -> Result<Product, Refusal> {
-    // exp(-i θ P) as a quaternion: cos θ and the three sines; the product multiplies out without a phase.
-    let mut real = 1.0;
-    let mut axis = [0.0f64; 3];
-    for rotation in &product.list {
-        let (sin, cos) = rotation.angle.sin_cos();
-        let which = match (rotation.string.x, rotation.string.z) {
-            (0, _) => 2,
-            (_, 0) => 0,
-            _ => 1,
-        };
-        // (cos - i sin σ_w)(r - i a·σ) = … with σ_w σ_v = i ε σ_u.
-        let mut next = [cos * axis[0], cos * axis[1], cos * axis[2]];
-        next[which] += sin * real;
-        let (u, v) = ((which + 1) % 3, (which + 2) % 3);
-        next[v] += sin * axis[u];
-        next[u] -= sin * axis[v];
-        real = cos * real - sin * axis[which];
-        axis = next;
-    }
-    let length = axis.iter().map(|a| a * a).sum::<f64>().sqrt();
-    let beta = length.atan2(real);
-    let (low, high) = (principal(product.phase - beta), principal(product.phase + beta));
-    let turned = 0.5 * exponent * (high - low);
-    let phase = 0.5 * exponent * (high + low);
-    require_digits(turned.abs().max(phase.abs()), exponent, place)?;
-    // exp(-i turned n·σ) = rz(a) ry(b) rz(c)
-    let (sin, cos) = turned.sin_cos();
-    let n = if length > 0.0 { axis.map(|a| a / length) } else { [0.0, 0.0, 1.0] };
-    let stay = Complex64::new(cos, -n[2] * sin);
-    let flip = Complex64::new(n[1] * sin, -n[0] * sin);
-    let middle = 2.0 * flip.norm().atan2(stay.norm());
-    let (sum, difference) = (-2.0 * stay.arg(), 2.0 * flip.arg());
-    let z = |angle: f64| Rotation { string: PauliString { x: 0, z: 1 }, angle: 0.5 * angle };
-    let y = Rotation { string: PauliString { x: 1, z: 1 }, angle: 0.5 * middle };
-    let mut list = vec![z(0.5 * (sum - difference)), y, z(0.5 * (sum + difference))];
-    list.retain(|rotation| rotation.angle != 0.0);
-    Ok(Product { list, phase })
 }

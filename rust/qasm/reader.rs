@@ -1,15 +1,17 @@
 //! Carries statements out as they are read.
 
+use super::Options;
+use super::calls::{require_arguments, require_qubits};
 use super::conjugation::{Builder, Keep};
 use super::expressions::{Context, Value, real};
-use super::gates::{Gates, require_arguments, require_qubits};
+use super::gates::Gates;
 use super::lexer::Kind;
 use super::modifiers::controls;
 use super::parser::Parser;
 use super::refusal::{Place, Refusal};
 use super::registers::{Registers, Symbol, Wires};
 use super::sources::{Files, QELIB1, STDGATES};
-use super::syntax::{Call, Expression, Operand, Statement};
+use super::syntax::{Call, Definition, Expression, Operand, Statement};
 
 type Outcome<T> = Result<T, Refusal>;
 
@@ -75,10 +77,13 @@ impl From<Refusal> for Stop {
 }
 
 impl<'a> Reader<'a> {
-    pub fn new(version: u32, keep: Keep, limit: u64, named: [Option<Named>; 2], files: &'a Files) -> Self {
+    pub fn new(version: u32, keep: Keep, limit: u64, options: &Options, files: &'a Files) -> Self {
+        let named = [options.prepare, options.basis];
+        let mut gates = Gates::new(version, limit, options.native);
+        gates.tally.counts = named[0].is_none();
         Self {
             registers: Registers::new(version),
-            gates: Gates::new(version, limit),
+            gates,
             parts: [0, 1, 2].map(|_| Builder::new(0, keep)),
             part: if named[0].is_some() { PREPARATION } else { EVOLUTION },
             named,
@@ -98,6 +103,7 @@ impl<'a> Reader<'a> {
             match parser.statement()? {
                 Statement::End => return Ok(()),
                 Statement::Include(name, place) => self.include(name, place, parser.version, pulse)?,
+                Statement::Gate(definition) => self.define(*definition)?,
                 statement => self.top(&statement, line, pulse)?,
             }
         }
@@ -137,7 +143,9 @@ impl<'a> Reader<'a> {
     }
 
     fn top(&mut self, statement: &Statement<'a>, line: u32, pulse: Pulse) -> Result<(), Stop> {
-        if let Statement::Call(Call { place, .. }) | Statement::For { place, .. } = statement {
+        if let Statement::Call(Call { place, .. }) | Statement::For { place, .. } | Statement::If { place, .. } =
+            statement
+        {
             self.enter_part(line, *place)?;
             self.gate_count += 1;
         }
@@ -168,7 +176,16 @@ impl<'a> Reader<'a> {
             return Err(place.refuse(message));
         }
         self.part = part;
+        self.gates.tally.counts = part == EVOLUTION;
         Ok(())
+    }
+
+    fn define(&mut self, definition: Definition<'a>) -> Outcome<()> {
+        if self.registers.value(definition.name).is_some() {
+            let message = format!("declared twice ({}); choose another name", definition.name);
+            return Err(definition.place.refuse(message));
+        }
+        self.gates.define(definition)
     }
 
     pub fn carry_out(&mut self, statement: &Statement<'a>, pulse: Pulse) -> Result<(), Stop> {
@@ -176,13 +193,8 @@ impl<'a> Reader<'a> {
         if self.statements & 0xfff == 0 {
             pulse().map_err(Stop::Cancelled)?;
         }
-        let top = self.registers.is_top();
-        let only_top = |place: Place, what: &str| -> Outcome<()> {
-            if top { Ok(()) } else { Err(place.refuse(format!("{what} inside a loop; move it out"))) }
-        };
         match statement {
             Statement::Qubits { name, size, place } => {
-                only_top(*place, "a register of qubits")?;
                 let size = self.registers.size(size.as_ref(), *place)?;
                 self.registers.add_qubits(name, size, &self.gates, *place)?;
             }
@@ -193,7 +205,7 @@ impl<'a> Reader<'a> {
             Statement::Constant { kind, name, value, place } => {
                 let value = self.constant(kind, value, *place)?;
                 self.registers.declare(name, Symbol::Value(value), &self.gates, *place)?;
-                if top {
+                if self.registers.is_top() {
                     self.gates.constants.insert(name, value);
                 }
             }
@@ -213,31 +225,36 @@ impl<'a> Reader<'a> {
                 }
                 self.registers.declare(name, Symbol::Qubits(all), &self.gates, *place)?;
             }
-            Statement::Gate(definition) => {
-                only_top(definition.place, "a gate definition")?;
-                if self.registers.value(definition.name).is_some() {
-                    let message = format!("declared twice ({}); choose another name", definition.name);
-                    return Err(definition.place.refuse(message).into());
-                }
-                self.gates.define(std::rc::Rc::clone(definition))?;
-            }
             Statement::Call(call) => self.call(call)?,
             Statement::Barrier(operands) | Statement::Delay(operands, _) => {
                 if let Statement::Delay(_, place) = statement {
                     self.note(*place, "delays are left out: they change nothing in a circuit without noise");
                 }
+                let mut on = Vec::new();
                 for operand in operands {
-                    self.registers.wires(operand)?;
+                    match self.registers.wires(operand)? {
+                        Wires::One(one) => on.push(one),
+                        Wires::Many(many) => on.extend(many),
+                    }
+                }
+                if operands.is_empty() {
+                    on.extend(0..self.registers.qubits);
+                }
+                if let Statement::Barrier(_) = statement {
+                    self.gates.tally.barrier(on.into_iter());
                 }
             }
             Statement::Measure { qubits, target, declares, place } => {
-                only_top(*place, "measure")?;
+                if !self.registers.is_top() {
+                    return Err(place.refuse("measure inside a loop or a branch; move it out").into());
+                }
                 self.measure(qubits, target.as_deref(), *declares, *place)?;
             }
             Statement::For { variable, range, body, place } => self.repeat(variable, range, body, *place, pulse)?,
+            Statement::If { condition, bodies, place } => self.branch(condition, bodies, *place, pulse)?,
             Statement::Remark(place) => self.note(*place, "pragmas and annotations are left out"),
-            Statement::Include(_, place) => only_top(*place, "include")?,
-            Statement::End => {}
+            // Never inside a block, and met at the top already.
+            Statement::Include(..) | Statement::Gate(_) | Statement::End => {}
         }
         Ok(())
     }

@@ -4,8 +4,9 @@ use std::collections::HashMap;
 
 use super::expressions::{Context, Value};
 use super::gates::Gates;
+use super::ranges::steps;
 use super::refusal::{Place, Refusal};
-use super::syntax::{Expression, Index, Operand, Range, Span};
+use super::syntax::{Expression, Index, Operand};
 
 type Outcome<T> = Result<T, Refusal>;
 
@@ -68,6 +69,11 @@ impl<'a> Registers<'a> {
         self.scopes.iter().rev().find_map(|scope| scope.get(name))
     }
 
+    /// Whether the name is one of bits.
+    pub fn is_bits(&self, name: &str) -> bool {
+        matches!(self.symbol(name), Some(Symbol::Bits(_)))
+    }
+
     /// The constant or loop variable of this name.
     pub fn value(&self, name: &str) -> Option<Value> {
         match self.symbol(name) {
@@ -116,12 +122,7 @@ impl<'a> Registers<'a> {
     /// A size, an index or a count.
     pub fn whole(&self, expression: &Expression, place: Place) -> Outcome<i64> {
         let names = |name: &str| self.value(name);
-        match (Context { version: self.version, whole: true, names: &names }).value(expression)? {
-            Value::Whole(value) => Ok(value),
-            other => {
-                Err(place.refuse(format!("no whole number ({}); sizes, indices and counts are whole", other.shown())))
-            }
-        }
+        Context { version: self.version, whole: true, names: &names }.whole_number(expression, place)
     }
 
     /// A size: 1 where none is given.
@@ -215,35 +216,6 @@ impl<'a> Registers<'a> {
             }
         }
     }
-
-    /// The values of a loop's range: first, step and how many.
-    pub fn span(&self, span: &Span) -> Outcome<(i64, i64, u64)> {
-        let place = span.place;
-        let (Some(start), Some(stop)) = (&span.start, &span.stop) else {
-            return Err(place.refuse("a range without its ends; write [0:9]"));
-        };
-        let (start, stop) = (self.whole(start, place)?, self.whole(stop, place)?);
-        let step = span.step.as_ref().map_or(Ok(1), |step| self.whole(step, place))?;
-        Ok((start, step, steps(start, step, stop, place)?))
-    }
-
-    /// The values of a loop over a set.
-    pub fn set_values(&self, range: &Range, place: Place) -> Outcome<Option<Vec<i64>>> {
-        match range {
-            Range::Span(_) => Ok(None),
-            Range::Set(set) => set.iter().map(|value| self.whole(value, place)).collect::<Outcome<_>>().map(Some),
-        }
-    }
-}
-
-/// How many values a range has, both ends included.
-fn steps(start: i64, step: i64, stop: i64, place: Place) -> Outcome<u64> {
-    if step == 0 {
-        return Err(place.refuse("a range with the step 0; give another step"));
-    }
-    let span = (i128::from(stop) - i128::from(start)) / i128::from(step);
-    let backwards = (stop < start && step > 0) || (stop > start && step < 0);
-    Ok(if backwards { 0 } else { u64::try_from(span + 1).unwrap_or(u64::MAX) })
 }
 
 /// The entry of a register, negative ones counted from its end.

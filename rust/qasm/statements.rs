@@ -1,7 +1,5 @@
 //! The grammar of statements, both versions.
 
-use std::rc::Rc;
-
 use super::lexer::Kind;
 use super::parser::{Parser, is_type};
 use super::refusal::{Place, Refusal};
@@ -72,6 +70,7 @@ impl<'a> Parser<'a> {
             ("delay", 3) => self.delay(),
             ("measure", _) => self.measure(None, false),
             ("for", 3) => self.repeat(),
+            ("if", 3) => self.branch(),
             (word, _) => {
                 if let Some((_, what)) = UNSUPPORTED.iter().find(|(name, _)| *name == word) {
                     return Err(unsupported(start.place, word, what));
@@ -177,7 +176,7 @@ impl<'a> Parser<'a> {
             qubits.push(parameter(self)?);
         }
         let body = self.block("the head of the gate")?;
-        Ok(Statement::Gate(Rc::new(Definition { name: name.text, parameters, qubits, body, place: name.place })))
+        Ok(Statement::Gate(Box::new(Definition { name: name.text, parameters, qubits, body, place: name.place })))
     }
 
     fn block(&mut self, after: &str) -> Outcome<Vec<Statement<'a>>> {
@@ -188,11 +187,43 @@ impl<'a> Parser<'a> {
                 if parser.token.kind == Kind::End {
                     return Err(parser.unexpected("'}'"));
                 }
-                body.push(parser.statement()?);
+                body.push(parser.inner_statement()?);
             }
             parser.take()?;
             Ok(body)
         })
+    }
+
+    /// What a loop or a branch carries out: a block, or one statement with its annotations.
+    fn body(&mut self, after: &str, what: &str) -> Outcome<Vec<Statement<'a>>> {
+        if self.is("{") {
+            return self.block(after);
+        }
+        self.deeper(|parser| {
+            let mut body = Vec::new();
+            loop {
+                if parser.token.kind == Kind::End || parser.is("}") {
+                    return Err(parser.unexpected(what));
+                }
+                let annotation = parser.token.kind == Kind::Remark && parser.token.text.starts_with('@');
+                body.push(parser.inner_statement()?);
+                if !annotation {
+                    return Ok(body);
+                }
+            }
+        })
+    }
+
+    /// A statement of a block, where nothing global is declared.
+    fn inner_statement(&mut self) -> Outcome<Statement<'a>> {
+        let (place, word) = (self.token.place, self.token.text);
+        let statement = self.statement()?;
+        match statement {
+            Statement::Gate(_) | Statement::Qubits { .. } | Statement::Include(..) => {
+                Err(place.refuse(format!("declared inside a block ({word}); move it out")))
+            }
+            inner => Ok(inner),
+        }
     }
 
     fn delay(&mut self) -> Outcome<Statement<'a>> {
@@ -241,12 +272,19 @@ impl<'a> Parser<'a> {
         } else {
             return Err(self.unexpected("a range such as [0:9] or a set such as {1, 2}"));
         };
-        let body = match self.token.kind {
-            Kind::End => return Err(self.unexpected("the body of the loop")),
-            _ if self.is("{") => self.block("the loop's range")?,
-            _ => vec![self.deeper(Self::statement)?],
-        };
+        let body = self.body("the loop's range", "the body of the loop")?;
         Ok(Statement::For { variable: variable.text, range, body, place: word.place })
+    }
+
+    /// `if (condition) { … } else { … }`.
+    fn branch(&mut self) -> Outcome<Statement<'a>> {
+        let word = self.take()?;
+        self.expect("(", "if")?;
+        let condition = self.expression()?;
+        self.expect(")", "the condition")?;
+        let taken = self.body("the condition", "the body of the branch")?;
+        let other = if self.took("else")? { self.body("else", "the body after else")? } else { vec![] };
+        Ok(Statement::If { condition, bodies: [taken, other], place: word.place })
     }
 
     /// A gate with its modifiers, or `c = measure q;`.

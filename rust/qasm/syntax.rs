@@ -1,7 +1,5 @@
 //! The syntax tree of one statement. A file is never held as a whole: statements are carried out as they are read.
 
-use std::rc::Rc;
-
 use super::refusal::Place;
 
 /// Something to calculate.
@@ -14,6 +12,8 @@ pub enum Expression<'a> {
     Unary(&'a str, Box<Expression<'a>>, Place),
     Binary(&'a str, Box<[Expression<'a>; 2]>, Place),
     Call(&'a str, Vec<Expression<'a>>, Place),
+    /// An entry of a register of bits, which has no value before the circuit runs.
+    Entry(&'a str, Place),
 }
 
 /// `start:step:stop`, each of which may be left out.
@@ -103,7 +103,7 @@ pub enum Statement<'a> {
         parts: Vec<Operand<'a>>,
         place: Place,
     },
-    Gate(Rc<Definition<'a>>),
+    Gate(Box<Definition<'a>>),
     Call(Call<'a>),
     Barrier(Vec<Operand<'a>>),
     Delay(Vec<Operand<'a>>, Place),
@@ -120,6 +120,12 @@ pub enum Statement<'a> {
         body: Vec<Statement<'a>>,
         place: Place,
     },
+    /// The bodies of `if` and `else`.
+    If {
+        condition: Expression<'a>,
+        bodies: [Vec<Statement<'a>>; 2],
+        place: Place,
+    },
     Remark(Place),
     End,
 }
@@ -129,17 +135,50 @@ impl Expression<'_> {
     pub fn mentions(&self, name: &str) -> bool {
         match self {
             Self::Integer(_) | Self::Real(_) | Self::Truth(_) => false,
-            Self::Name(own, _) => *own == name,
+            Self::Name(own, _) | Self::Entry(own, _) => *own == name,
             Self::Unary(_, inner, _) => inner.mentions(name),
             Self::Binary(_, both, _) => both.iter().any(|inner| inner.mentions(name)),
             Self::Call(_, inner, _) => inner.iter().any(|inner| inner.mentions(name)),
         }
     }
+
+    /// The first name, or register of an entry, that `wanted` picks.
+    pub fn find_name(&self, wanted: &dyn Fn(&Self) -> bool) -> Option<&Self> {
+        match self {
+            _ if wanted(self) => Some(self),
+            Self::Unary(_, inner, _) => inner.find_name(wanted),
+            Self::Binary(_, both, _) => both.iter().find_map(|inner| inner.find_name(wanted)),
+            Self::Call(_, inner, _) => inner.iter().find_map(|inner| inner.find_name(wanted)),
+            _ => None,
+        }
+    }
 }
 
-impl Span<'_> {
-    fn mentions(&self, name: &str) -> bool {
-        [&self.start, &self.step, &self.stop].into_iter().flatten().any(|inner| inner.mentions(name))
+impl<'a> Span<'a> {
+    pub fn expressions(&self) -> impl Iterator<Item = &Expression<'a>> {
+        [&self.start, &self.step, &self.stop].into_iter().flatten()
+    }
+}
+
+impl<'a> Range<'a> {
+    /// What the values are calculated from.
+    pub fn expressions(&self) -> Vec<&Expression<'a>> {
+        match self {
+            Self::Span(span) => span.expressions().collect(),
+            Self::Set(set) => set.iter().collect(),
+        }
+    }
+}
+
+impl<'a> Call<'a> {
+    /// What the modifiers and the angles are calculated from.
+    pub fn expressions(&self) -> impl Iterator<Item = &Expression<'a>> {
+        let modified = self.modifiers.iter().filter_map(|modifier| match modifier {
+            Modifier::Inverse => None,
+            Modifier::Power(value) => Some(value),
+            Modifier::Controls(count, ..) => count.as_ref(),
+        });
+        modified.chain(&self.arguments)
     }
 }
 
@@ -148,7 +187,7 @@ impl Operand<'_> {
         match &self.index {
             None => false,
             Some(Index::One(one)) => one.mentions(name),
-            Some(Index::Span(span)) => span.mentions(name),
+            Some(Index::Span(span)) => span.expressions().any(|inner| inner.mentions(name)),
             Some(Index::Set(set)) => set.iter().any(|inner| inner.mentions(name)),
         }
     }
@@ -159,23 +198,16 @@ impl Statement<'_> {
     pub fn mentions(&self, name: &str) -> bool {
         let any = |operands: &[Operand]| operands.iter().any(|operand| operand.mentions(name));
         match self {
-            Self::Call(call) => {
-                let modified = call.modifiers.iter().any(|modifier| match modifier {
-                    Modifier::Inverse => false,
-                    Modifier::Power(value) => value.mentions(name),
-                    Modifier::Controls(count, ..) => count.as_ref().is_some_and(|count| count.mentions(name)),
-                });
-                modified || call.arguments.iter().any(|argument| argument.mentions(name)) || any(&call.operands)
-            }
+            Self::Call(call) => call.expressions().any(|value| value.mentions(name)) || any(&call.operands),
             Self::Constant { value, .. } => value.mentions(name),
             Self::Alias { parts, .. } => any(parts),
             Self::Barrier(operands) | Self::Delay(operands, _) => any(operands),
             Self::For { range, body, .. } => {
-                let ranged = match range {
-                    Range::Span(span) => span.mentions(name),
-                    Range::Set(set) => set.iter().any(|value| value.mentions(name)),
-                };
+                let ranged = range.expressions().iter().any(|value| value.mentions(name));
                 ranged || body.iter().any(|statement| statement.mentions(name))
+            }
+            Self::If { condition, bodies, .. } => {
+                condition.mentions(name) || bodies.iter().flatten().any(|statement| statement.mentions(name))
             }
             Self::Measure { .. } | Self::Qubits { .. } | Self::Bits { .. } | Self::Gate(_) | Self::Include(..) => false,
             Self::Remark(_) | Self::End => false,

@@ -13,7 +13,7 @@ from trueturn.partition import Partition
 from trueturn.rotations import Rotations
 from trueturn.state import State
 
-__all__ = ["SEGMENT_ROUNDINGS", "BaseCandidate", "CircuitLeg", "Leg", "circuits_from_start"]
+__all__ = ["SEGMENT_ROUNDINGS", "BaseCandidate", "CircuitLeg", "Leg", "circuits_from_start", "gates_and_depth"]
 
 # A segment's time is a difference of two requested times: one more rounding in each angle of a formula.
 SEGMENT_ROUNDINGS = ANGLE_ROUNDINGS + 1
@@ -70,6 +70,18 @@ def circuits_from_start(legs: Iterable[Leg]) -> Iterator[Rotations | None]:
         yield whole
 
 
+def gates_and_depth(circuit: Rotations) -> tuple[int | None, int | None]:
+    """Return the two-qubit gates and the depth in them.
+
+    Those of the file that the circuit was read from, where it has no gates on more qubits; otherwise those that its
+    rotations take, 2(w-1) each.
+    """
+    counts = circuit.gate_counts
+    if counts is None:
+        return circuit.two_qubit_gates(), circuit.depth()
+    return (None, None) if counts.larger_gates else (counts.two_qubit_gates, counts.two_qubit_depth)
+
+
 class BaseCandidate(ABC):
     """One circuit to be judged.
 
@@ -100,11 +112,6 @@ class BaseCandidate(ABC):
     def rule_words(self) -> str:
         """How the Hamiltonian is split; empty where it is not."""
         return ""
-
-    @property
-    def counted(self) -> bool:
-        """Whether the gates of its circuits are those of its rotations; a file has gates of its own."""
-        return True
 
     @property
     def on_grid(self) -> bool:

@@ -78,6 +78,7 @@ class Candidate(BaseCandidate):
             For tables.
         circuit : Rotations or mapping of float to Rotations
             The circuit to the one time that is asked for; or one circuit for each time, each from the start.
+            One that `read_qasm` read, unchanged, is shown with the gates of its file (`Rotations.gate_counts`).
 
         Returns
         -------

@@ -27,15 +27,12 @@ class GivenCircuit(BaseCandidate):
     circuit : Rotations or mapping of float to Rotations
         To the one time asked for, or by time, each from the start.
     name : str
-    file : bool
-        Whether it was read from a file, whose gates are not those that its rotations would take.
     steps : int
         1: the circuit runs once.
     """
 
     circuit: Rotations | Mapping[float, Rotations]
     name: str = ""
-    file: bool = False
 
     def __post_init__(self) -> None:
         object.__setattr__(self, "name", checked_name(self.name))
@@ -56,6 +53,12 @@ class GivenCircuit(BaseCandidate):
         object.__setattr__(self, "circuit", dict(self.circuit))
 
     @property
+    def from_file(self) -> bool:
+        """Whether circuits were read from files, whose gates then count."""
+        circuits = [self.circuit] if isinstance(self.circuit, Rotations) else self.circuit.values()
+        return any(circuit.gate_counts is not None for circuit in circuits)
+
+    @property
     def steps(self) -> int:
         """1: the circuit runs once."""
         return 1
@@ -64,11 +67,6 @@ class GivenCircuit(BaseCandidate):
     def order(self) -> int:
         """1; a given circuit has no step length."""
         return 1
-
-    @property
-    def counted(self) -> bool:
-        """Whether gates are those of the rotations: not where a file has its own."""
-        return not self.file
 
     @property
     def on_grid(self) -> bool:

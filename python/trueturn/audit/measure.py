@@ -8,7 +8,7 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from trueturn import _native
-from trueturn.audit.base_candidate import BaseCandidate, Leg, circuits_from_start
+from trueturn.audit.base_candidate import BaseCandidate, Leg, circuits_from_start, gates_and_depth
 from trueturn.audit.figures import upper
 from trueturn.audit.grid import grid_unit, steps_at
 from trueturn.audit.result import PointError, Trial
@@ -109,7 +109,7 @@ class Bench:
                 lost = max(lost, abs(length - self._start_length))
             points.extend(self._compare(place, spent, length))
         error = (max(point.error[0] for point in points), max(point.error[1] for point in points))
-        gates = whole.two_qubit_gates() if whole is not None and candidate.counted else None
+        gates = None if whole is None else gates_and_depth(whole)[0]
         trial = Trial(steps, error, judge(error, self.tolerance), gates)
         note = f"not unitary: the norm is off by {upper(lost)}" if lost > _LOST_NORM else ""
         return Measured(trial, tuple(points), spent, whole, note)

@@ -8,7 +8,7 @@ from dataclasses import dataclass, field
 from trueturn import _memory
 from trueturn.accuracy.difference import DENSE_QUBITS, DenseEvolution, PlannedEvolution, exact_evolution
 from trueturn.accuracy.operator_norm import norm_of_difference
-from trueturn.audit.base_candidate import BaseCandidate, circuits_from_start
+from trueturn.audit.base_candidate import BaseCandidate, circuits_from_start, gates_and_depth
 from trueturn.audit.measure import Bench, Measured, judge
 from trueturn.audit.result import PointError, Trial
 from trueturn.operator import Operator
@@ -53,7 +53,7 @@ class OperatorBench(Bench):
             for time, circuit, exact in zip(self.times, circuits, self._exact, strict=True)
         )
         error = (max(point.error[0] for point in points), max(point.error[1] for point in points))
-        gates = circuits[-1].two_qubit_gates() if candidate.counted else None
+        gates, _ = gates_and_depth(circuits[-1])
         trial = Trial(steps, error, judge(error, self.tolerance), gates)
         return Measured(trial, points, circuits[-1].rounding_bound(roundings), circuits[-1])
 

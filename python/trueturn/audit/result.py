@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from trueturn.audit.base_candidate import BaseCandidate
+    from trueturn.circuits.counts import GateCounts
     from trueturn.operator import Operator
     from trueturn.reference import Reference
 
@@ -64,8 +65,8 @@ class Row:
     rotations, two_qubit_gates, depth : int or None
         Cost of the circuits of this candidate: rotations after merging, 2(w-1) two-qubit gates for a rotation of
         weight w, and depth in two-qubit gates. For ``readout="separate"`` the cost of the longest circuit. None for an
-        implementation of the user's, whose circuit is not known; gates and depth are None for a circuit read from a file,
-        whose own gates are not counted.
+        implementation of the user's, whose circuit is not known. Gates and depth of a circuit that was read from a file are
+        those of the file, and None where it has gates on more than two qubits.
     verdict : "meets", "misses" or "undecided"
     rounding : float
         Bound on the 2-norm error that rounding added to the candidate's state, included in `error`. 0 for an
@@ -78,6 +79,8 @@ class Row:
         Step counts below `steps` that met the tolerance although a larger tested one missed it.
     note : str
         Anything the reader must know about this row; may be empty.
+    gate_counts : GateCounts or None
+        All gates of the file that the circuit was read from.
     """
 
     candidate: BaseCandidate
@@ -95,6 +98,7 @@ class Row:
     trials: tuple[Trial, ...]
     accidental: tuple[int, ...] = ()
     note: str = ""
+    gate_counts: GateCounts | None = None
 
 
 @dataclass(frozen=True)

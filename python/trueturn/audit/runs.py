@@ -9,7 +9,7 @@ from typing import NamedTuple
 
 from trueturn.accuracy.bounds import bound
 from trueturn.audit import words
-from trueturn.audit.base_candidate import BaseCandidate
+from trueturn.audit.base_candidate import BaseCandidate, gates_and_depth
 from trueturn.audit.candidate import Candidate
 from trueturn.audit.measure import Bench, Measured
 from trueturn.audit.result import Row, Trial
@@ -101,6 +101,7 @@ class Runs:
         """Make the row of a step count that was run, with a proven bound of this method and effort, none for 0."""
         found = self.measured[chosen.steps]
         circuit = found.circuit
+        counts = None if circuit is None else circuit.gate_counts
         limit, source = self._bound(chosen.steps, effort, method) if effort > 0.0 else (None, "not computed")
         return Row(
             candidate=self.candidate,
@@ -111,13 +112,14 @@ class Runs:
             bound_source=source,
             rotations=None if circuit is None else circuit.count,
             two_qubit_gates=found.trial.two_qubit_gates,
-            depth=circuit.depth() if circuit is not None and self.candidate.counted else None,
+            depth=None if circuit is None else gates_and_depth(circuit)[1],
             verdict=found.trial.verdict,
             rounding=found.rounding,
             points=found.points,
             trials=tuple(self.measured[count].trial for count in sorted(self.measured)),
             accidental=chosen.accidental,
-            note="; ".join(filter(None, (chosen.note, found.note))),
+            note="; ".join(filter(None, (chosen.note, found.note, "" if counts is None else counts.words))),
+            gate_counts=counts,
         )
 
     def _bound(self, steps: int, effort: float, method: str) -> tuple[float | None, str]:

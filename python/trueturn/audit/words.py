@@ -7,6 +7,7 @@ from collections.abc import Sequence
 
 from trueturn.audit.base_candidate import BaseCandidate
 from trueturn.audit.figures import plain, upper
+from trueturn.audit.given_circuit import GivenCircuit
 from trueturn.audit.implementation import Implementation
 from trueturn.audit.operator_measure import CONFIDENCE
 from trueturn.audit.result import Row
@@ -22,7 +23,7 @@ CAUTIONS = (
     "It holds for this start state, these times and these observables. Another start or another observable can have a "
     "larger error at the same step count.",
     "Errors need not fall evenly with the step count: step counts between and beyond the tested ones were not run.",
-    "Gate counts take 2(w-1) two-qubit gates for a rotation on w qubits with all qubits connected, before any "
+    "Gate counts of formulas take 2(w-1) two-qubit gates for a rotation on w qubits with all qubits connected, before any "
     "compilation or routing.",
 )
 _FOR_EVERY_START = (
@@ -65,8 +66,11 @@ def assumptions(
         scale,
         f"Candidates ran in {'single' if single else 'double'} precision on a noiseless state vector.",
     )
-    if any(not candidate.counted for candidate in candidates):
-        taken = (*taken, "Gates of circuits from files are not counted: rotations are what the gates come to.")
+    if any(isinstance(candidate, GivenCircuit) and candidate.from_file for candidate in candidates):
+        taken = (
+            *taken,
+            "Gates of circuits from files are those of the files, a swap being three; rotations are what they come to.",
+        )
     if not own:
         return taken
     return (*taken, f"What {own} computed is judged as it came back, its own rounding included; its cost is not known.")

@@ -2,21 +2,27 @@
 
 from __future__ import annotations
 
+import difflib
 import os
 import re
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
-from typing import NamedTuple
+from typing import TYPE_CHECKING, Any, NamedTuple, TypedDict, Unpack
 
 from trueturn import _native
+from trueturn.circuits.counts import GateCounts
 from trueturn.circuits.layouts import Layouts, given_layout, marked_layouts
 from trueturn.errors import ArgumentError, QasmError
 from trueturn.rotations import Rotations
 
-__all__ = ["Circuit", "Note", "Register", "read_circuit", "read_qasm"]
+if TYPE_CHECKING:
+    from trueturn.export import Cost
+
+__all__ = ["Circuit", "Note", "Reading", "Register", "read_circuit", "read_qasm"]
 
 QUARTER_TURNS = ("auto", "clifford", "diagonal", "rotations")
+NATIVE_GATES = ("rzz", "swap")
 LARGEST_FILE = 1 << 32
 
 Range = tuple[int, int] | str
@@ -55,7 +61,7 @@ class Circuit:
     registers : tuple of Register
         Empty where the file uses qubits of the machine, ``$0``.
     gates : int
-        Gate calls and loops outside of loops and definitions; `prepare` and `basis` count in these.
+        Gate calls, loops and branches outside of loops, branches and definitions; `prepare` and `basis` count in these.
     start_layout, end_layout : tuple of int or None
         Entry q is the physical qubit that holds logical qubit q before the first gate, after the last.
     quarter_turns : "clifford", "diagonal" or "rotations"
@@ -74,18 +80,64 @@ class Circuit:
     quarter_turns: str
     notes: tuple[Note, ...]
 
+    @property
+    def gate_counts(self) -> GateCounts:
+        """The gates of the evolution as they stand in the file."""
+        counts = self.evolution.gate_counts
+        assert counts is not None
+        return counts
 
-def read_qasm(
-    path_or_text: str | os.PathLike[str],
-    *,
-    prepare: Range | None = None,
-    basis: Range | None = None,
-    start_layout: Sequence[int] | None = None,
-    end_layout: Sequence[int] | None = None,
-    quarter_turns: str = "auto",
-    expansion_limit: int | None = None,
-    qubits: int | None = None,
-) -> Rotations:
+    def cost(self, **device: Any) -> Cost:
+        """Return what the evolution costs as the file has it, at the rates of a device.
+
+        Parameters
+        ----------
+        **device
+            As for `Rotations.cost`, which counts the gates that trueturn would write instead. Only two_qubit_error,
+            one_qubit_error, readout_error and synthesis_error matter here.
+
+        Returns
+        -------
+        Cost
+            Its `success` is None where there are gates on more than two qubits, whose rate is not known.
+
+        Raises
+        ------
+        ArgumentError
+            An unknown option, a rate out of range.
+
+        Examples
+        --------
+        >>> text = 'OPENQASM 3.0; include "stdgates.inc"; qubit[2] q; cx q[0], q[1]; rz(0.7) q[1]; cx q[0], q[1];'
+        >>> cost = read_circuit(text).cost(two_qubit_error=0.01)
+        >>> cost.two_qubit_gates, cost.depth, round(cost.success, 4)
+        (2, 3, 0.9801)
+        """
+        from trueturn.export.cost import cost_as_written
+        from trueturn.export.hardware import Hardware
+
+        start = self.start_layout or tuple(range(self.evolution.qubits))
+        end = self.end_layout or start
+        physical = max(
+            sum(register.size for register in self.registers), 1 + max((*start, *end)), self.evolution.qubits
+        )
+        return cost_as_written(self.evolution, Hardware.of(device), start, end, physical)
+
+
+class Reading(TypedDict, total=False):
+    """How a file is read; each is explained at `read_qasm`."""
+
+    prepare: Range | None
+    basis: Range | None
+    start_layout: Sequence[int] | None
+    end_layout: Sequence[int] | None
+    quarter_turns: str
+    expansion_limit: int | None
+    native_gates: Sequence[str] | None
+    qubits: int | None
+
+
+def read_qasm(path_or_text: str | os.PathLike[str], **reading: Unpack[Reading]) -> Rotations:
     """Read an OpenQASM 2 or 3 circuit as Pauli rotations.
 
     Parameters
@@ -109,6 +161,9 @@ def read_qasm(
     expansion_limit : int, optional
         Gates that loops over their variable, gate bodies and modifiers may make. Default: 2**18, and 16 more for each
         byte of text.
+    native_gates : sequence of str, optional
+        Gates that the file defines and that count as one gate each in `Rotations.gate_counts`, whatever their bodies; others
+        count by their bodies. Default: rzz and swap.
     qubits : int, optional
         Qubits of the result, 1 to 128: more than the file has are left alone, and idle ones beyond these are left out.
         Default: those of the file, or those that the start layout lists.
@@ -144,29 +199,10 @@ def read_qasm(
     >>> zz.angle_totals()
     Operator('0.35 Z_0 Z_1', qubits=2)
     """
-    return read_circuit(
-        path_or_text,
-        prepare=prepare,
-        basis=basis,
-        start_layout=start_layout,
-        end_layout=end_layout,
-        quarter_turns=quarter_turns,
-        expansion_limit=expansion_limit,
-        qubits=qubits,
-    ).evolution
+    return read_circuit(path_or_text, **reading).evolution
 
 
-def read_circuit(
-    path_or_text: str | os.PathLike[str],
-    *,
-    prepare: Range | None = None,
-    basis: Range | None = None,
-    start_layout: Sequence[int] | None = None,
-    end_layout: Sequence[int] | None = None,
-    quarter_turns: str = "auto",
-    expansion_limit: int | None = None,
-    qubits: int | None = None,
-) -> Circuit:
+def read_circuit(path_or_text: str | os.PathLike[str], **reading: Unpack[Reading]) -> Circuit:
     """Read an OpenQASM 2 or 3 circuit with everything that the text says; parameters and errors are those of `read_qasm`.
 
     Returns
@@ -179,20 +215,26 @@ def read_circuit(
     >>> print(*read_circuit(text).notes)
     line 1: measurements at the end are left out: what is read is the unitary before them
     """
+    _require_known(reading)
     text, folder, path = _source(path_or_text)
+    quarter_turns = reading.get("quarter_turns", "auto")
     if quarter_turns not in QUARTER_TURNS:
         raise ArgumentError(
             f"quarter_turns: unknown ({quarter_turns!r}); give one of {', '.join(QUARTER_TURNS)}",
             argument="quarter_turns",
             value=quarter_turns,
         )
-    ranges = (_range("prepare", prepare), _range("basis", basis))
-    given = (given_layout("start_layout", start_layout), given_layout("end_layout", end_layout))
-    limit = None if expansion_limit is None else _limit(expansion_limit)
-    width = None if qubits is None else _width(qubits)
+    ranges = (_range("prepare", reading.get("prepare")), _range("basis", reading.get("basis")))
+    given = (
+        given_layout("start_layout", reading.get("start_layout")),
+        given_layout("end_layout", reading.get("end_layout")),
+    )
+    limit = _limit(reading.get("expansion_limit"))
+    native = _names(reading.get("native_gates"))
+    width = _width(reading.get("qubits"))
     try:
-        found = _native.read_qasm(text, folder, quarter_turns, *ranges, limit)
-        parts, version, registers, gates, notes, marks, way = found
+        found = _native.read_qasm(text, folder, quarter_turns, *ranges, limit, native)
+        parts, version, registers, gates, notes, marks, way, counted = found
         marked, unknown = marked_layouts(marks)
         start, end = (mine if mine is not None else its for mine, its in zip(given, marked, strict=True))
     except QasmError as error:
@@ -209,7 +251,7 @@ def read_circuit(
         kept = "diagonal rotations" if way == "diagonal" else "rotations"
         said.append(Note(0, f"{kept} by multiples of π/4 are taken as rotations, not as changes of basis"))
     return Circuit(
-        evolution=evolution,
+        evolution=Rotations._wrap(evolution._circuit, GateCounts._of(*counted)),
         preparation=preparation,
         basis=changed,
         version=version,
@@ -288,7 +330,30 @@ def _range(argument: str, given: Range | None) -> tuple[bool, int, int] | None:
     )
 
 
-def _limit(given: int) -> int:
+def _require_known(reading: Mapping[str, object]) -> None:
+    known = list(Reading.__annotations__)
+    for name, value in reading.items():
+        if name not in known:
+            near = difflib.get_close_matches(name, known, n=1, cutoff=0.5)
+            hint = f"did you mean {near[0]!r}?" if near else f"known: {', '.join(known)}"
+            raise ArgumentError(f"{name}: unknown option ({value!r}); {hint}", argument=name, value=value)
+
+
+def _names(given: Sequence[str] | None) -> list[str]:
+    if given is None:
+        return list(NATIVE_GATES)
+    if isinstance(given, str) or not all(isinstance(name, str) and name.isidentifier() for name in given):
+        raise ArgumentError(
+            f'native_gates: no names of gates ({given!r}); give for instance ["rzz", "rxx"]',
+            argument="native_gates",
+            value=given,
+        )
+    return list(given)
+
+
+def _limit(given: int | None) -> int | None:
+    if given is None:
+        return None
     if type(given) is not int or not 1 <= given < 1 << 63:
         raise ArgumentError(
             f"expansion_limit: no number of gates ({given!r}); give 1 or more", argument="expansion_limit", value=given
@@ -296,7 +361,9 @@ def _limit(given: int) -> int:
     return given
 
 
-def _width(given: int) -> int:
+def _width(given: int | None) -> int | None:
+    if given is None:
+        return None
     if type(given) is not int or not 1 <= given <= 128:
         raise ArgumentError(f"qubits: not a whole number from 1 to 128 ({given!r})", argument="qubits", value=given)
     return given

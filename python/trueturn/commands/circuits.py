@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+import sys
 from dataclasses import asdict
 from pathlib import Path
+from typing import Any
 
 import click
 
-from trueturn.commands.options import AS_JSON, JOB
+from trueturn.commands.options import AS_JSON, JOB, THREADS, circuit_options, is_circuit, require_readable
 
 __all__ = ["cost", "export"]
 
@@ -15,28 +17,60 @@ STEPS = click.option("--steps", type=click.IntRange(min=1), metavar="N", help="S
 
 
 @click.command()
-@click.argument("job", type=JOB)
+@click.argument("files", nargs=-1, required=True, type=JOB, metavar="JOB | CIRCUIT...")
+@click.option("--job", type=JOB, metavar="JOB", help="The [device] of this job says how often gates of CIRCUITs fail.")
+@circuit_options
 @STEPS
+@click.option("--search", is_flag=True, help="Search the step counts that JOB leaves open (least), as an audit does.")
 @AS_JSON
-def cost(job: Path, steps: int | None, as_json: bool) -> int:
-    """Count the gates of each candidate of JOB on its [device].
+@THREADS
+def cost(
+    files: tuple[Path, ...],
+    job: Path | None,
+    steps: int | None,
+    search: bool,
+    as_json: bool,
+    threads: int | None,
+    **reading: Any,
+) -> int:
+    """Count the gates of each candidate of JOB on its [device], or those that stand in OpenQASM files.
 
-    Two-qubit gates after all savings and with routing, depth, T count, and the chance that nothing fails. Nothing is run.
-    A candidate whose steps are least is counted with --steps only.
+    Two-qubit gates, depth, T count, and the chance that nothing fails. Candidates are counted after all savings and with
+    routing, as trueturn export writes them. Nothing is run; a candidate whose steps are least is counted with --steps, or with
+    --search, which evolves the state.
     """
     from trueturn.audit.job import read_job
-    from trueturn.cli import say, say_json
-    from trueturn.export.job import job_costs
+    from trueturn.cli import progress_bar, say, say_json
+    from trueturn.export.job import job_costs, job_least
 
-    task = read_job(job)
-    table = job_costs(task, steps)
+    if job is not None or len(files) > 1 or is_circuit(files):
+        if steps is not None or search:
+            raise click.UsageError("--steps and --search go with a job: trueturn cost JOB.toml")
+        from trueturn.circuits.auditing import circuit_costs
+
+        for path in files:
+            require_readable(path)
+        task = None if job is None else read_job(job, candidates_required=False, start_required=False)
+        table, notes = circuit_costs(files, task, **reading)
+        title = "" if task is None else task.title
+        for note in notes:
+            print(f"trueturn: {note}", file=sys.stderr)
+    else:
+        if any(value is not None for value in reading.values()):
+            raise click.UsageError("--prepare, --basis and layouts go with circuits: trueturn cost CIRCUIT.qasm")
+        task = read_job(files[0])
+        searched = None
+        if search and steps is None:
+            with progress_bar() as progress:
+                searched = job_least(task, threads, progress)
+        table, title = job_costs(task, steps, searched), task.title
     if as_json:
         said = dict.fromkeys(sentence for one in table.counted.values() for sentence in one.assumptions)
         say_json(
             {
                 "kind": "trueturn cost",
                 "schema": 1,
-                "title": task.title,
+                "title": title,
                 "rows": table.to_dict(),
                 "assumptions": list(said),
             }

@@ -34,6 +34,15 @@ class _Layout(click.ParamType[tuple[int, ...]]):
         return tuple(int(number) for number in numbers[1].split(","))
 
 
+class _Names(click.ParamType[tuple[str, ...]]):
+    """Names of gates with commas between them; none where the text is empty."""
+
+    name = "names"
+
+    def convert(self, value: Any, param: click.Parameter | None, ctx: click.Context | None) -> tuple[str, ...]:
+        return value if isinstance(value, tuple) else tuple(name.strip() for name in value.split(",") if name.strip())
+
+
 _CIRCUIT_OPTIONS = (
     click.option(
         "--prepare", metavar="RANGE", help='Gates of a circuit that prepare the start: "0:120" or "lines 4-9".'
@@ -46,11 +55,17 @@ _CIRCUIT_OPTIONS = (
         help="Physical qubits that hold qubits 0, 1, ... before the first gate; by default as the file's comments say.",
     ),
     click.option("--end-layout", type=_Layout(), metavar="2,0,1", help="The same after the last gate."),
+    click.option(
+        "--native-gates",
+        type=_Names(),
+        metavar="NAME,NAME",
+        help="Gates that the file defines and that count as one gate each; by default rzz,swap.",
+    ),
 )
 
 
 def circuit_options(command: Callable[..., int]) -> Callable[..., int]:
-    """Give a command what says how a circuit's file is read: prepare, basis, start_layout, end_layout."""
+    """Give a command what says how a circuit's file is read: prepare, basis, start_layout, end_layout, native_gates."""
     for option in reversed(_CIRCUIT_OPTIONS):
         command = option(command)
     return command

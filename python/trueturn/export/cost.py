@@ -12,7 +12,7 @@ from trueturn.export.hardware import Hardware, Placed
 from trueturn.ladders import is_list
 from trueturn.rotations import Rotations
 
-__all__ = ["Cost", "cost_of", "written_as"]
+__all__ = ["Cost", "cost_as_written", "cost_of", "written_as"]
 
 BYTES_PER_GATE = 64  # a gate of a repeated body while its ends are compared: itself, twice, and its place on two qubits
 
@@ -28,8 +28,9 @@ class Cost:
     unsaved_two_qubit_gates : int
         2(w-1) for each rotation of weight w: nothing saved, nothing routed.
     swaps : int
-    two_qubit_depth, depth : int
-        Layers of two-qubit gates, and of all gates, when each starts as soon as its qubits are free; a swap is three.
+    two_qubit_depth, depth : int or None
+        Layers of two-qubit gates, and of all gates, when each starts as soon as its qubits are free; a swap is three. None
+        only for a file with loops that take too long to follow.
     one_qubit_gates : int
         Rotations included.
     rotations : int
@@ -44,10 +45,12 @@ class Cost:
     success : float or None
         Probability that no gate and no readout fails; None where the device states no rate.
     routing : str
-        ``"bridges"`` or ``"swaps"``, as it was done.
+        ``"bridges"`` or ``"swaps"``, as it was done; ``"as written"`` for a file that was read.
     start_layout, end_layout : tuple of int
         Entry q is the physical qubit that holds qubit q.
     physical_qubits : int
+    larger_gates : int
+        Gates on more than two qubits, which only files that were read have; not among the two-qubit gates.
 
     References
     ----------
@@ -58,8 +61,8 @@ class Cost:
     two_qubit_gates: int
     unsaved_two_qubit_gates: int
     swaps: int
-    two_qubit_depth: int
-    depth: int
+    two_qubit_depth: int | None
+    depth: int | None
     one_qubit_gates: int
     rotations: int
     clifford_rotations: int
@@ -71,6 +74,7 @@ class Cost:
     start_layout: tuple[int, ...]
     end_layout: tuple[int, ...]
     physical_qubits: int
+    larger_gates: int = 0
 
     @property
     def assumptions(self) -> tuple[str, ...]:
@@ -79,6 +83,11 @@ class Cost:
             "T count: 3 log2(1/ε), rounded up, for each rotation that is neither Clifford nor T-like: the leading term of "
             "the typical count (Ross, Selinger 2016), ε being the synthesis error divided by their number."
         ]
+        if self.routing == "as written":
+            said.append(
+                "Gates of a file count as they stand there; a gate that the file defines counts by its body, unless it is "
+                "named as native. Rotations are those of the products of rotations that the gates are."
+            )
         if self.success is not None:
             said.append(
                 "Success: gates and readouts fail independently at the rates given, and any failure spoils the result; "
@@ -90,6 +99,35 @@ class Cost:
 def cost_of(circuit: Rotations, hardware: Hardware) -> Cost:
     """Count the gates of a circuit on a device; see `Rotations.cost`."""
     return written_as(circuit, hardware.placed(circuit.qubits))[0]
+
+
+def cost_as_written(
+    circuit: Rotations, hardware: Hardware, start_layout: tuple[int, ...], end_layout: tuple[int, ...], physical: int
+) -> Cost:
+    """Return the cost of a circuit that was read as its file has it; only rates and synthesis error of the device matter."""
+    counts = circuit.gate_counts
+    assert counts is not None
+    other = counts.rotations - counts.clifford_rotations - counts.t_rotations
+    known = not counts.larger_gates
+    return Cost(
+        two_qubit_gates=counts.two_qubit_gates,
+        unsaved_two_qubit_gates=circuit.two_qubit_gates(),
+        swaps=counts.swaps,
+        two_qubit_depth=counts.two_qubit_depth,
+        depth=counts.depth,
+        one_qubit_gates=counts.one_qubit_gates,
+        rotations=counts.rotations,
+        clifford_rotations=counts.clifford_rotations,
+        t_rotations=counts.t_rotations,
+        t_count=t_gates(other, counts.t_rotations, hardware.synthesis_error),
+        synthesis_error=hardware.synthesis_error,
+        success=_success(hardware, counts.two_qubit_gates, counts.one_qubit_gates, circuit.qubits) if known else None,
+        routing="as written",
+        start_layout=start_layout,
+        end_layout=end_layout,
+        physical_qubits=physical,
+        larger_gates=counts.larger_gates,
+    )
 
 
 def written_as(circuit: Rotations, placed: Placed) -> tuple[Cost, _native.GateOptions]:

@@ -3,21 +3,23 @@
 from __future__ import annotations
 
 import difflib
+from collections.abc import Mapping
+from dataclasses import replace
 from typing import TYPE_CHECKING
 
 from trueturn.audit.grid import steps_at
 from trueturn.errors import JobError
-from trueturn.export.cost import cost_of
+from trueturn.export.cost import Cost, cost_of
 from trueturn.export.hardware import Hardware
 from trueturn.export.table import CostTable
 from trueturn.rotations import Rotations
 
 if TYPE_CHECKING:
-    from trueturn.audit.job import Job
+    from trueturn.audit.job import Job, Progress
 
-__all__ = ["circuit_words", "job_candidate", "job_circuit", "job_costs", "job_hardware", "job_labels"]
+__all__ = ["circuit_words", "job_candidate", "job_circuit", "job_costs", "job_hardware", "job_labels", "job_least"]
 
-NO_STEPS = "steps not known (least): give --steps"
+NO_STEPS = "steps not known (least): give --steps N, or --search to find them"
 
 
 def job_hardware(job: Job) -> Hardware:
@@ -93,8 +95,16 @@ def job_circuit(job: Job, place: int, steps: int | None) -> Rotations:
     return whole
 
 
-def job_costs(job: Job, steps: int | None) -> CostTable:
+def job_costs(job: Job, steps: int | None, searched: Mapping[int, int | str] | None = None) -> CostTable:
     """Count every candidate of a job whose step count is known; the others say what is missing.
+
+    Parameters
+    ----------
+    job : Job
+    steps : int or None
+        Overrides the step count of every candidate.
+    searched : mapping of int to int or str, optional
+        What `job_least` found.
 
     Raises
     ------
@@ -104,15 +114,41 @@ def job_costs(job: Job, steps: int | None) -> CostTable:
         As `job_circuit` does.
     """
     hardware = job_hardware(job)
-    known = [steps is not None or isinstance(candidate.steps, int) for candidate in job.formula_candidates]
-    if not any(known):
-        job_circuit(job, 0, steps)
-    return CostTable(
-        {
-            label: cost_of(job_circuit(job, place, steps), hardware) if known[place] else NO_STEPS
-            for place, label in enumerate(job_labels(job))
-        }
-    )
+    rows: dict[str, Cost | str] = {}
+    for place, label in enumerate(job_labels(job)):
+        own = job.formula_candidates[place].steps
+        known = own if steps is None else steps
+        if not isinstance(known, int):
+            known = (searched or {}).get(place, NO_STEPS)
+        rows[label] = cost_of(job_circuit(job, place, known), hardware) if isinstance(known, int) else known
+    if searched is None and all(row == NO_STEPS for row in rows.values()):
+        key = "candidate[1].steps"
+        message = "not known before an audit (least); give --steps N, or --search to find them as an audit does"
+        raise JobError(f"{key}: {message}", path=_path(job), key=key)
+    return CostTable(rows)
+
+
+def job_least(job: Job, threads: int | None = None, progress: Progress | None = None) -> dict[int, int | str]:
+    """Search the least step counts that a job leaves open, as its audit does; where none meets the tolerance, say so.
+
+    Returns
+    -------
+    dict of int to int or str
+        By the place of the candidate.
+
+    Raises
+    ------
+    AuditError, MemoryRefusedError
+        As the audit does.
+    """
+    places = [place for place, candidate in enumerate(job.formula_candidates) if candidate.steps == "least"]
+    if not places:
+        return {}
+    found = replace(job, candidates=tuple(job.formula_candidates[place] for place in places)).audit(threads, progress)
+    return {
+        place: row.steps if row.verdict == "meets" else f"no step count found: {row.note or row.verdict}"
+        for place, row in zip(places, found.rows, strict=True)
+    }
 
 
 def circuit_words(job: Job, place: int, steps: int | None) -> str:

@@ -16,7 +16,17 @@ from trueturn.rotations import Rotations
 __all__ = ["CostTable", "compare_costs"]
 
 WIDTH = 100
-HEADINGS = ("two-qubit gates", "unsaved", "swaps", "two-qubit depth", "depth", "rotations", "T count", "success")
+HEADINGS = (
+    "two-qubit gates",
+    "larger gates",
+    "unsaved",
+    "swaps",
+    "two-qubit depth",
+    "depth",
+    "rotations",
+    "T count",
+    "success",
+)
 
 
 @dataclass(frozen=True)
@@ -42,6 +52,7 @@ class CostTable:
         for name, cost in self.counted.items():
             figures = (
                 cost.two_qubit_gates,
+                cost.larger_gates or None,
                 cost.unsaved_two_qubit_gates,
                 cost.swaps,
                 cost.two_qubit_depth,
@@ -50,7 +61,7 @@ class CostTable:
                 cost.t_count,
             )
             success = "" if cost.success is None else f"{cost.success:.3g}"
-            lines.append([name, *map(count, figures), success])
+            lines.append([name, *("" if figure is None else count(figure) for figure in figures), success])
         kept = [place for place in range(len(lines[0])) if any(line[place] for line in lines[1:])]
         widths = [max(len(line[place]) for line in lines) for place in kept]
         widths[0] = max(widths[0], *map(len, self.rows))

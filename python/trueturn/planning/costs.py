@@ -72,6 +72,7 @@ class Prices(NamedTuple):
             hardware = self.hardware or Hardware()
             written = cost_of(circuit, replace(hardware, synthesis_error=self.synthesis or hardware.synthesis_error))
         if self.hardware is not None and written is not None:
+            assert written.two_qubit_depth is not None  # only the depth of a file that was read may be unknown
             found = {
                 "two_qubit_gates": written.two_qubit_gates,
                 "depth": written.two_qubit_depth,

@@ -8,6 +8,7 @@ import io
 import json
 import math
 from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import asdict
 from typing import TYPE_CHECKING, Any
 
 from trueturn._build import build_info
@@ -109,6 +110,7 @@ def row_data(row: Row) -> dict[str, Any]:
         "two_qubit_gates": row.two_qubit_gates,
         "depth": row.depth,
         "rotations": row.rotations,
+        "file_gates": None if row.gate_counts is None else asdict(row.gate_counts),
         "verdict": row.verdict,
         "rounding": number(row.rounding),
         "accidental": list(row.accidental),

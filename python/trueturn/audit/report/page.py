@@ -135,7 +135,7 @@ def table(audit: Audit) -> str:
     return (
         f'{framed(head, rows)}\n<ol class="small">{listed}</ol>\n'
         '<p class="small">An error is the interval that holds the true error: one figure where its '
-        "ends agree to all digits shown. Cost counts 2(w−1) two-qubit gates for a rotation of weight w; "
+        "ends agree to all digits shown. Cost counts 2(w−1) two-qubit gates for a rotation of weight w, and of a file its own; "
         "depth counts two-qubit gates in sequence.</p>"
     )
 
