@@ -15,9 +15,10 @@ use std::sync::Arc;
 use crate::kernel::lanes::Real;
 use crate::operation::{PARITIES, coordinates, independent, sign_at_zero};
 use crate::passes::diagonal::DiagonalSum;
+use crate::passes::layout::Layout;
+use crate::passes::least_qubits;
 use crate::passes::space::{Space, Span};
 use crate::passes::tiles::{TILE, TILE_BITS};
-use crate::passes::{least_qubits, run_offsets};
 use crate::rotations::Rotation;
 use crate::terms::Terms;
 
@@ -58,10 +59,8 @@ pub struct Addend<T: Real> {
 pub struct ActionPass<T: Real> {
     /// The space whose cosets it works on.
     pub space: Arc<Space>,
-    /// See [`crate::passes::Pass::offsets`].
-    pub offsets: Arc<[usize]>,
-    /// See [`crate::passes::Pass::run_bits`].
-    pub run_bits: u32,
+    /// Where a coset lies in the state.
+    pub layout: Arc<Layout>,
     /// What is added.
     pub addends: Vec<Addend<T>>,
     /// The diagonal, in the first pass.
@@ -149,12 +148,12 @@ impl<T: Real> Action<T> {
         let mut first = true;
         while first || left.iter().any(|gathered| !gathered.is_empty()) {
             let (space, taken) = next_space::<T>(qubits, first, &mut left);
-            let offsets = run_offsets(&space, T::LANE_BITS + 2).into();
+            let layout = Arc::new(Layout::sequence::<T>(&space));
             let space = Arc::new(space);
             for (((action, taken), diagonal), members) in
                 actions.iter_mut().zip(taken).zip(&diagonals).zip(&mut members)
             {
-                action.push(&space, &offsets, &taken, diagonal);
+                action.push(&space, &layout, &taken, diagonal);
                 members.push(taken);
             }
             first = false;
@@ -165,12 +164,11 @@ impl<T: Real> Action<T> {
         actions
     }
 
-    fn push(&mut self, space: &Arc<Space>, offsets: &Arc<[usize]>, taken: &[Gathered], diagonal: &[(u64, f64)]) {
-        let run_bits = T::LANE_BITS + 2;
+    fn push(&mut self, space: &Arc<Space>, layout: &Arc<Layout>, taken: &[Gathered], diagonal: &[(u64, f64)]) {
         let addends = taken.iter().map(|own| Addend::new(space, own)).collect();
         let sum = (self.passes.is_empty() && !diagonal.is_empty()).then(|| DiagonalSum::new(diagonal, space));
-        let (space, offsets) = (Arc::clone(space), Arc::clone(offsets));
-        self.passes.push(ActionPass { space, offsets, run_bits, addends, diagonal: sum });
+        let (space, layout) = (Arc::clone(space), Arc::clone(layout));
+        self.passes.push(ActionPass { space, layout, addends, diagonal: sum });
     }
 
     /// Bound on the 2-norm of the rounding error of one application to a unit vector, in units of the roundoff.

@@ -72,11 +72,12 @@ impl Operation {
         other.rotations().all(|rotation| self.commutes_with(rotation))
     }
 
-    /// Whether the mixing strings depend on the parity of `mask` at most, as a bond's do, so that its diagonal string may
-    /// join them.
-    fn depends_only_on(&self, mask: u128) -> bool {
+    /// Whether the diagonal string of `mask` belongs to the bond of the mixing strings: they depend on its parity at most,
+    /// and it is that of their own YY. Strings elsewhere that only commute are cheaper in a diagonal operation.
+    fn is_bond_of(&self, mask: u128) -> bool {
         let fits = |r: &Rotation| (r.string.z == 0 || r.string.z == mask) && r.string.y_count() & 1 == 0;
-        self.mixing.iter().all(fits)
+        (self.x() as u128 == mask || self.mixing.iter().any(|r| r.string.z == mask))
+            && self.mixing.iter().all(fits)
             && self.diagonal.iter().all(|r| r.string.z == mask)
             && (self.x() as u128 & mask).count_ones() & 1 == 0
     }
@@ -94,7 +95,7 @@ impl Operation {
         match (self.mixing.first(), string.x) {
             (None, 0) => true,
             (None, _) => false,
-            (Some(_), 0) => self.depends_only_on(string.z),
+            (Some(_), 0) => self.is_bond_of(string.z),
             (Some(first), x) if first.string.x == x && self.commutes_with(rotation) => match self.diagonal.first() {
                 Some(phase) => string.z == 0 || string.z == phase.string.z,
                 None => {
@@ -324,7 +325,7 @@ fn complete_bonds(operations: &mut [Operation]) {
         let bond = &operations[place];
         let masks = independent(bond.mixing.iter().map(|r| r.string.z as u64));
         let &[mask] = &masks[..] else { continue };
-        if !bond.diagonal.is_empty() || bond.mixing.len() < 2 || !bond.depends_only_on(u128::from(mask)) {
+        if !bond.diagonal.is_empty() || bond.mixing.len() < 2 || !bond.is_bond_of(u128::from(mask)) {
             continue;
         }
         let before = (place.saturating_sub(LOOK_BACK)..place).rev();

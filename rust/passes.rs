@@ -31,17 +31,21 @@
 //! megabyte); non-temporal stores; index swizzling against cache set conflicts.
 
 pub mod diagonal;
+pub mod layout;
 pub mod space;
 pub mod spread;
 pub mod tiles;
+
+use num_complex::Complex64;
 
 use crate::error::Result;
 use crate::kernel::lanes::Real;
 use crate::operation::{Operation, joined};
 use crate::rotations::Rotation;
 use crate::team::Control;
+use layout::Layout;
 use space::{Space, Span};
-use tiles::{TILE_BITS, Work};
+use tiles::{ONE, TILE_BITS, Work};
 
 /// States of at most this many qubits are one coset.
 pub const WHOLE_BITS: u32 = 15;
@@ -68,14 +72,14 @@ pub const fn least_qubits<T: Real>() -> u32 {
 pub struct Pass<T: Real> {
     /// The space whose cosets it works on.
     pub space: Space,
-    /// Where contiguous run `i` of a coset starts, relative to its representative; empty where cosets are contiguous.
-    pub offsets: Vec<usize>,
-    /// Amplitudes in such a run, as a power of two.
-    pub run_bits: u32,
+    /// Where a coset lies in the state.
+    pub layout: Layout,
     /// What happens to a coset.
     pub work: Work<T>,
     /// Rotations that it carries out.
     pub rotations: usize,
+    /// What the state after this pass still has to be multiplied by: later passes do it on their way.
+    pub owed: Complex64,
 }
 
 /// Plans a list on `qubits` qubits. Every rotation of the list ends up in exactly one pass.
@@ -88,6 +92,7 @@ pub fn plan<T: Real>(qubits: u32, list: &[Rotation], control: &Control) -> Resul
     let run_bits = T::LANE_BITS + 2;
     let mut passes = Vec::new();
     let mut taken = vec![false; list.len()];
+    let mut owed = ONE;
     let mut first = 0;
     while first < list.len() {
         if taken[first] {
@@ -101,9 +106,25 @@ pub fn plan<T: Real>(qubits: u32, list: &[Rotation], control: &Control) -> Resul
         let (members, span) = if weight(&low.0) >= weight(&spread.0) { low } else { spread };
         members.iter().for_each(|&place| taken[place] = true);
         let members: Vec<&Operation> = members.iter().map(|&place| &list[place]).collect();
-        passes.push(Pass::new(span, limit, run_bits, &members));
+        passes.push(Pass::new(span, limit, &members, &mut owed));
     }
+    settle(&mut passes, owed);
     Ok(passes)
+}
+
+/// Lets the last diagonal operation, or the last pass, apply what the passes left to do.
+fn settle<T: Real>(passes: &mut [Pass<T>], owed: Complex64) {
+    if owed == ONE {
+        return;
+    }
+    match passes.iter_mut().rposition(|pass| pass.work.absorb(owed)) {
+        Some(place) => passes[place..].iter_mut().for_each(|pass| pass.owed /= owed),
+        None => {
+            let last = passes.last_mut().expect("some pass left the factor");
+            last.work.scale(owed);
+            last.owed = ONE;
+        }
+    }
 }
 
 /// Places, from `first` on, of operations that fit the span and commute with all that were skipped before them; and the
@@ -126,22 +147,14 @@ fn gather(list: &[Operation], taken: &[bool], first: usize, mut span: Span, limi
 }
 
 impl<T: Real> Pass<T> {
-    fn new(span: Span, limit: u32, run_bits: u32, members: &[&Operation]) -> Self {
+    fn new(span: Span, limit: u32, members: &[&Operation], owed: &mut Complex64) -> Self {
         let dimension = span.dimension().max(LEAST_COSET_BITS.min(limit));
         let space = Space::new(span.filled(dimension));
-        let offsets = run_offsets(&space, run_bits);
-        let work = tiles::prepare(&space, members);
+        let layout = Layout::sequence::<T>(&space);
+        let work = tiles::prepare(&space, members, owed);
         let rotations = members.iter().map(|operation| operation.count()).sum();
-        Self { space, offsets, run_bits, work, rotations }
+        Self { space, layout, work, rotations, owed: *owed }
     }
-}
-
-/// Where the contiguous runs of a coset start, relative to its representative; nothing where cosets are contiguous.
-pub fn run_offsets(space: &Space, run_bits: u32) -> Vec<usize> {
-    if space.is_contiguous() {
-        return vec![];
-    }
-    (0..1usize << (space.dimension() - run_bits)).map(|run| space.vector(run << run_bits) as usize).collect()
 }
 
 #[cfg(test)]

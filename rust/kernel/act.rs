@@ -22,15 +22,16 @@ const PIECE: usize = 1 << 12;
 
 /// One coset's place in a state.
 fn place<'a, T: Real>(pass: &'a ActionPass<T>, state: &Shared<T>, rep: usize, interleaved: bool) -> Place<'a, T> {
-    // SAFETY: representatives are indices of the state.
-    unsafe {
-        if pass.offsets.is_empty() {
-            Place { start: state.at(2 * rep), scattered: None, interleaved }
-        } else {
-            let scattered = Some((rep, &pass.offsets[..], pass.run_bits));
-            Place { start: state.at(0), scattered, interleaved }
-        }
-    }
+    // SAFETY: the state has a first real.
+    let start = unsafe { state.at(0) };
+    Place { start, origin: 2 * rep, layout: Some(&pass.layout), interleaved }
+}
+
+/// What to fetch of the next coset.
+fn ahead<'a, T: Real>(pass: &'a ActionPass<T>, state: &Shared<T>, next: usize) -> Ahead<'a, T> {
+    // SAFETY: the state has a first real.
+    let start = unsafe { state.at(0) };
+    Ahead { start, origin: 2 * next, layout: &pass.layout, first: 0, step: 1 }
 }
 
 /// A worker's buffer for one coset.
@@ -47,7 +48,7 @@ impl<T: Real> Buffer<T> {
     /// The place holds a coset of this buffer's size that nobody writes to.
     unsafe fn fill(&mut self, isa: Isa, from: Place<T>) -> *const T {
         let start = self.0.as_mut_ptr().cast();
-        let to = Place { start, scattered: None, interleaved: false };
+        let to = Place { start, origin: 0, layout: None, interleaved: false };
         // SAFETY: by contract, and the buffer is this worker's own.
         unsafe { isa.run_vectors(Copy { from, to, vectors: self.0.len() / 2, factor: None }) };
         start
@@ -100,10 +101,7 @@ pub fn apply<T: Real>(
             each_coset(member, pass, &state, |_, rep, next| {
                 let ending =
                     Ending::Store { out: place(pass, &out, rep, number == last), old, halved: false, gains: &[] };
-                let ahead = next.map(|next| {
-                    let ahead = |place| Ahead { next: place, first: 0, step: 1 };
-                    [ahead(place(pass, &state, next, true)), ahead(place(pass, &out, next, false))]
-                });
+                let ahead = next.map(|next| [ahead(pass, &state, next), ahead(pass, &out, next)]);
                 let ahead = ahead.as_ref().map_or(&[][..], |both| &both[..]);
                 // SAFETY: each coset belongs to one worker, `out` is not `state`, and the state is only read.
                 unsafe {
@@ -146,7 +144,7 @@ pub fn expectations<T: Real>(
             let mut room = Room::default();
             let mut buffer = Buffer::new(pass);
             each_coset(member, pass, &state, |coset, rep, next| {
-                let mut ahead = next.map(|next| [Ahead { next: place(pass, &state, next, true), first: 0, step: 1 }]);
+                let mut ahead = next.map(|next| [ahead(pass, &state, next)]);
                 // SAFETY: the state is only read.
                 let source = unsafe { buffer.fill(isa, place(pass, &state, rep, true)) };
                 for (slot, &which) in busy.iter().enumerate() {
@@ -200,7 +198,7 @@ pub fn chebyshev(
             let (read, write) = (&buffers[(term + 1) & 1], &buffers[term & 1]);
             let due = term & 1 == 0 || term + 1 == terms;
             for (number, pass) in action.passes.iter().enumerate() {
-                let mut buffer = (!pass.offsets.is_empty()).then(|| Buffer::new(pass));
+                let mut buffer = (!pass.space.is_contiguous()).then(|| Buffer::new(pass));
                 let old = match (number, term) {
                     (0, 1) => Old::Dropped,
                     (0, _) => Old::Subtracted,
@@ -208,10 +206,10 @@ pub fn chebyshev(
                 };
                 let gaining = number == last && due;
                 let mut gains: Vec<Gain<f64>> = Vec::with_capacity(sums.len());
-                let mut ahead: Vec<Ahead<f64>> = Vec::with_capacity(sums.len() + 2);
+                let mut coming: Vec<Ahead<f64>> = Vec::with_capacity(sums.len() + 2);
                 each_coset(member, pass, read, |_, rep, next| {
                     gains.clear();
-                    ahead.clear();
+                    coming.clear();
                     if gaining {
                         gains.extend(sums.iter().zip(coefficients).map(|(sum, list)| Gain {
                             sum: place(pass, sum, rep, false),
@@ -222,18 +220,17 @@ pub fn chebyshev(
                     if let Some(next) = next {
                         let later = if gaining { &sums[..] } else { &[] };
                         let arrays = [read, write].into_iter().chain(later);
-                        ahead.extend(arrays.map(|a| Ahead { next: place(pass, a, next, false), first: 0, step: 1 }));
+                        coming.extend(arrays.map(|array| ahead(pass, array, next)));
                     }
                     let out = place(pass, write, rep, false);
                     let ending = Ending::Store { out, old, halved: number == last && term == 1, gains: &gains };
                     // SAFETY: each coset belongs to one worker; the arrays are distinct, and `read` is only read.
                     unsafe {
-                        let from = place(pass, read, rep, false);
                         let source = match &mut buffer {
-                            None => from.start,
-                            Some(buffer) => buffer.fill(isa, from),
+                            None => read.at(2 * rep),
+                            Some(buffer) => buffer.fill(isa, place(pass, read, rep, false)),
                         };
-                        coset_image(isa, pass, source, rep, ending, &ahead, &mut room);
+                        coset_image(isa, pass, source, rep, ending, &coming, &mut room);
                     }
                 })?;
                 member.pass_done()?;
@@ -296,5 +293,5 @@ fn each_vector(member: &Member, state: &Shared<f64>, mut work: impl FnMut(usize,
 fn whole(state: &Shared<f64>, vector: usize, interleaved: bool) -> Place<'static, f64> {
     // SAFETY: vectors are cut from the state.
     let start = unsafe { state.at(vector << (f64::LANE_BITS + 1)) };
-    Place { start, scattered: None, interleaved }
+    Place { start, origin: 0, layout: None, interleaved }
 }

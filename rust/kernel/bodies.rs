@@ -7,7 +7,7 @@
 use super::lanes::Real;
 use super::vector::Vector;
 use crate::passes::diagonal::{CosetFactors, Diagonal, LOW_BITS};
-use crate::passes::tiles::{TILE, TileOperation};
+use crate::passes::tiles::{ACTIVE, TILE, TileOperation};
 
 /// The real or the imaginary parts of a tile.
 pub type Registers<V> = [V; TILE];
@@ -57,9 +57,9 @@ pub unsafe fn exchange<V: Vector>(
     re: &mut Registers<V>,
     im: &mut Registers<V>,
     operation: &TileOperation<V::Element>,
-    active: u8,
-    x: usize,
+    arm: usize,
 ) {
+    let (x, active) = (arm / TILE, ACTIVE[arm]);
     // SAFETY: by contract.
     unsafe {
         let (gamma_re, gamma_im) = (V::splat(operation.numbers[0]), V::splat(operation.numbers[1]));
@@ -82,9 +82,9 @@ pub unsafe fn bond<V: Vector>(
     re: &mut Registers<V>,
     im: &mut Registers<V>,
     operation: &TileOperation<V::Element>,
-    active: u8,
-    x: usize,
+    arm: usize,
 ) {
+    let (x, active) = (arm / TILE, ACTIVE[arm]);
     // SAFETY: by contract.
     unsafe {
         let [plus_re, plus_im, minus_re, minus_im, tangent] = operation.numbers;

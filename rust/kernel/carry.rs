@@ -3,11 +3,14 @@
 //! Between the first and the last pass of a run the state is kept as vectors of real and of imaginary parts in turn; the
 //! first tiles of the first pass split what they load, the last tiles of the last pass interleave what they store.
 
+use num_complex::Complex64;
+
 use super::Isa;
 use super::VectorWork;
+use super::bodies::product;
 use super::lanes::Real;
 use super::shared::Shared;
-use super::tile::{Ahead, Place, Tiles};
+use super::tile::{Ahead, Home, Tiles};
 use super::vector::Vector;
 use crate::error::{Error, Result};
 use crate::passes::Pass;
@@ -45,20 +48,21 @@ impl<'a, T: Real> Carrier<'a, T> {
         self.interleaved = last;
         let done = self.member.pass_done();
         if matches!(done, Err(Error::Cancelled { .. })) && !self.interleaved {
-            self.restore()?;
+            self.restore(pass.owed)?;
         }
         done
     }
 
-    /// Interleaves this member's share of the state.
-    fn restore(&mut self) -> Result<()> {
+    /// Interleaves this member's share of the state, and multiplies it by what later passes would have done.
+    fn restore(&mut self, owed: Complex64) -> Result<()> {
+        let factor = (T::from_f64(owed.re), T::from_f64(owed.im));
         self.interleaved = true;
         let reals = 2usize << T::LANE_BITS;
         self.member.each_piece(self.state.reals() / reals, PIECE >> T::LANE_BITS, |vectors| {
-            // SAFETY: pieces are disjoint and in bounds; `Interleave` asks for no more than that.
+            // SAFETY: pieces are disjoint and in bounds; `Restore` asks for no more than that.
             unsafe {
                 let start = self.state.at(vectors.start * reals);
-                self.isa.run_vectors(Interleave { start, vectors: vectors.len() });
+                self.isa.run_vectors(Restore { start, vectors: vectors.len(), factor });
             }
         })
     }
@@ -66,7 +70,7 @@ impl<'a, T: Real> Carrier<'a, T> {
     fn carry_out(&mut self, pass: &Pass<T>, last: bool) -> Result<()> {
         let size = 1usize << pass.space.dimension();
         let amplitudes = self.state.reals() / 2;
-        if !pass.offsets.is_empty() {
+        if !pass.space.is_contiguous() {
             self.coset.resize(size << 1 >> T::LANE_BITS, T::Line::default());
         }
         self.factors.resize_with(self.factors.len().max(pass.work.diagonals.len()), CosetFactors::default);
@@ -92,38 +96,30 @@ impl<'a, T: Real> Carrier<'a, T> {
         for (diagonal, room) in work.diagonals.iter().zip(&mut self.factors) {
             diagonal.prepare(rep, room);
         }
-        let contiguous = pass.offsets.is_empty();
-        // SAFETY: representatives are indices of the state.
-        let outside = |rep: usize| unsafe {
-            if contiguous {
-                Place { start: self.state.at(2 * rep), scattered: None, interleaved: false }
-            } else {
-                let scattered = Some((rep, &pass.offsets[..], pass.run_bits));
-                Place { start: self.state.at(0), scattered, interleaved: false }
-            }
-        };
-        let own = outside(rep);
-        let inside = if contiguous {
-            own
+        // SAFETY: the state has a first real.
+        let start = unsafe { self.state.at(0) };
+        let state = Home { start, origin: 2 * rep, outside: true, interleaved: false };
+        let inside = if pass.space.is_contiguous() {
+            state
         } else {
-            Place { start: self.coset.as_mut_ptr().cast(), scattered: None, interleaved: false }
+            Home { start: self.coset.as_mut_ptr().cast(), origin: 0, outside: false, interleaved: false }
         };
-        let (first_from, last_to) =
-            (Place { interleaved: self.interleaved, ..own }, Place { interleaved: last, ..own });
+        let first_from = Home { interleaved: self.interleaved, ..state };
+        let last_to = Home { interleaved: last, ..state };
         let runs = work.runs();
         let mut before = 0;
         for stage in &work.stages {
-            let vectors = 1usize << (pass.space.dimension() - T::LANE_BITS);
-            for part in (0..vectors).step_by(1 << stage.part_bits) {
+            for part in &stage.parts {
                 for (place, run) in stage.runs.iter().enumerate() {
-                    let number = before + place;
-                    let ahead = next.map(|next| Ahead { next: outside(next), first: number, step: runs });
+                    let first = before + place;
+                    let ahead =
+                        next.map(|next| Ahead { start, origin: 2 * next, layout: &pass.layout, first, step: runs });
                     let tiles = Tiles {
                         run,
                         part,
                         rep,
-                        from: if number == 0 { first_from } else { inside },
-                        to: if number + 1 == runs { last_to } else { inside },
+                        from: if first == 0 { first_from } else { inside },
+                        to: if first + 1 == runs { last_to } else { inside },
                         diagonals: &work.diagonals,
                         factors: &self.factors,
                         ahead,
@@ -139,13 +135,14 @@ impl<'a, T: Real> Carrier<'a, T> {
     }
 }
 
-/// Turns pairs of vectors into interleaved amplitudes, in place.
-struct Interleave<T> {
+/// Multiplies pairs of vectors by a number and turns them into interleaved amplitudes, in place.
+struct Restore<T> {
     start: *mut T,
     vectors: usize,
+    factor: (T, T),
 }
 
-impl<T: Real> VectorWork<T> for Interleave<T> {
+impl<T: Real> VectorWork<T> for Restore<T> {
     type Output = ();
 
     /// # Safety
@@ -157,7 +154,9 @@ impl<T: Real> VectorWork<T> for Interleave<T> {
             // SAFETY: by contract.
             unsafe {
                 let address = self.start.add(2 * lanes * vector);
-                let (first, second) = V::interleave(V::load(address), V::load(address.add(lanes)));
+                let factor = (V::splat(self.factor.0), V::splat(self.factor.1));
+                let (re, im) = product(factor.0, factor.1, V::load(address), V::load(address.add(lanes)));
+                let (first, second) = V::interleave(re, im);
                 first.store(address);
                 second.store(address.add(lanes));
             }

@@ -16,15 +16,18 @@ use super::bodies::{
 use super::lanes::Real;
 use super::vector::Vector;
 use crate::passes::diagonal::{CosetFactors, Diagonal};
-use crate::passes::tiles::{Form, TILE, TileOperation, TileRun};
+use crate::passes::layout::{Layout, packed};
+use crate::passes::tiles::{Form, Part, TILE, TileOperation, TileRun};
 
-/// Where the vectors of a coset lie.
+/// Where the vectors of a coset lie, in a state or in a buffer.
 #[derive(Clone, Copy)]
 pub struct Place<'a, T> {
-    /// The first real of the buffer, of the block, or of the whole state where the coset is scattered.
+    /// The first real of the state or buffer.
     pub start: *mut T,
-    /// Representative, offsets of the contiguous runs, and amplitudes in a run as a power of two.
-    pub scattered: Option<(usize, &'a [usize], u32)>,
+    /// What the offsets are relative to, by exclusive or: twice the representative, or 0 in a buffer.
+    pub origin: usize,
+    /// The offsets; nothing where one vector follows the other from the start.
+    pub layout: Option<&'a Layout>,
     /// (re, im, re, im, …) instead of a vector of real parts and a vector of imaginary parts.
     pub interleaved: bool,
 }
@@ -36,17 +39,10 @@ impl<T: Real> Place<'_, T> {
     /// `v` is below the number of vectors of the coset that this place was made for.
     #[inline(always)]
     pub unsafe fn address(&self, v: usize) -> *mut T {
-        match self.scattered {
-            // SAFETY: in bounds by contract.
-            None => unsafe { self.start.add(v << (T::LANE_BITS + 1)) },
-            Some((rep, offsets, run_bits)) => {
-                let amplitude = v << T::LANE_BITS;
-                // SAFETY: the offsets cover the coset, and representative and offset are indices of the state.
-                unsafe {
-                    let run = rep ^ offsets.get_unchecked(amplitude >> run_bits);
-                    self.start.add(2 * (run + (amplitude & ((1 << run_bits) - 1))))
-                }
-            }
+        // SAFETY: by contract.
+        unsafe {
+            let offset = self.layout.map_or_else(|| packed::<T>(v), |layout| layout.offset(v));
+            self.start.add(self.origin ^ offset)
         }
     }
 }
@@ -54,26 +50,51 @@ impl<T: Real> Place<'_, T> {
 /// What to fetch while a run is at work: every `step`-th vector of the next coset, from `first` on.
 #[derive(Clone, Copy)]
 pub struct Ahead<'a, T> {
-    /// The next coset.
-    pub next: Place<'a, T>,
+    /// The first real of the state.
+    pub start: *const T,
+    /// Twice the representative of the next coset.
+    pub origin: usize,
+    /// Where a coset lies.
+    pub layout: &'a Layout,
     /// First vector of each tile's share.
     pub first: usize,
     /// Distance of vectors.
     pub step: usize,
 }
 
+/// Where a run finds, or leaves, its coset.
+#[derive(Clone, Copy)]
+pub struct Home<T> {
+    /// The first real of the state or buffer.
+    pub start: *mut T,
+    /// What the offsets are relative to, by exclusive or.
+    pub origin: usize,
+    /// Whether it is the state.
+    pub outside: bool,
+    /// (re, im, re, im, …) instead of a vector of real parts and a vector of imaginary parts.
+    pub interleaved: bool,
+}
+
+impl<T: Real> Home<T> {
+    /// Offsets of a run's tiles, and what they are relative to.
+    #[inline(always)]
+    fn layout<'a>(&self, run: &'a TileRun<T>, part: &Part) -> (&'a Layout, usize) {
+        if self.outside { (&run.outside, self.origin ^ part.outside) } else { (&run.inside, self.origin ^ part.inside) }
+    }
+}
+
 /// One run over the tiles of one part of a coset.
 pub struct Tiles<'a, T: Real> {
     /// The run.
     pub run: &'a TileRun<T>,
-    /// First vector of the part.
-    pub part: usize,
+    /// The part.
+    pub part: &'a Part,
     /// The representative.
     pub rep: usize,
     /// Where vectors come from.
-    pub from: Place<'a, T>,
+    pub from: Home<T>,
     /// Where they go.
-    pub to: Place<'a, T>,
+    pub to: Home<T>,
     /// Tables of the pass.
     pub diagonals: &'a [Diagonal<T>],
     /// Their factors for this coset.
@@ -104,6 +125,28 @@ macro_rules! by_mask {
     };
 }
 
+/// Calls a body with a constant arm where the vector type wants it.
+macro_rules! by_arm {
+    ($v:ty, $arm:expr, $body:ident ( $($argument:expr),* )) => {
+        by_arm!(@ $v, $arm, $body ( $($argument),* )
+            8 9 10 11 12 13 14 15 16 17 18 19 20 21 22 23 24 25 26 27 28 29 30 31 32 33 34 35
+            36 37 38 39 40 41 42 43 44 45 46 47 48 49 50 51 52 53 54 55 56 57 58 59 60 61 62 63)
+    };
+    (@ $v:ty, $arm:expr, $body:ident $arguments:tt $($number:literal)*) => {
+        if <$v>::UNROLLED {
+            match $arm {
+                $($number => by_arm!(@ $v, $body $arguments $number),)*
+                _ => {}
+            }
+        } else {
+            by_arm!(@ $v, $body $arguments $arm)
+        }
+    };
+    (@ $v:ty, $body:ident ( $($argument:expr),* ) $arm:expr) => {
+        $body::<$v>($($argument,)* $arm)
+    };
+}
+
 /// Calls a body that exchanges lanes only where the operation mixes lanes.
 macro_rules! by_mask_and_lanes {
     ($v:ty, $operation:expr, $body:ident ( $($argument:expr),* )) => {
@@ -125,25 +168,27 @@ impl<T: Real> VectorWork<T> for Tiles<'_, T> {
     unsafe fn run<V: Vector<Element = T>>(self) {
         let Tiles { run, part, rep, from, to, diagonals, factors, ahead, entries } = self;
         entries.resize(run.operations.len(), 0);
-        let mut tile = part >> 3;
+        let ((sources, source), (targets, target)) = (from.layout(run, part), to.layout(run, part));
+        let mut tile = 0;
         for outer in &run.outer {
-            let outer = outer | part;
             for (entry, operation) in entries.iter_mut().zip(&run.operations) {
-                *entry = operation.entry(outer, rep);
+                *entry = operation.entry(outer | part.first, rep);
             }
-            for inner in &run.inner {
-                let base = outer | inner;
-                // SAFETY: by this function's contract; bases and combs stay below the number of vectors.
+            for _ in 0..run.inner {
+                // SAFETY: by this function's contract; a run has as many tiles as its layouts.
                 unsafe {
                     if let Some(ahead) = &ahead {
-                        fetch::<V>(ahead, tile);
+                        fetch::<V>(ahead, part.first / TILE + tile);
                     }
+                    let base = part.first | run.inside.tiles.get_unchecked(tile) >> (T::LANE_BITS + 1);
+                    let source = source ^ sources.tiles.get_unchecked(tile);
+                    let target = target ^ targets.tiles.get_unchecked(tile);
                     tile += 1;
-                    let (mut re, mut im) = load_tile::<V>(&from, &run.comb, base);
+                    let (mut re, mut im) = load_tile::<V>(from.start, source, &sources.registers, from.interleaved);
                     for (operation, entry) in run.operations.iter().zip(entries.iter()) {
                         apply::<V>(&mut re, &mut im, operation, *entry, base, &run.comb, diagonals, factors);
                     }
-                    store_tile::<V>(&to, &run.comb, base, &re, &im);
+                    store_tile::<V>(to.start, target, &targets.registers, to.interleaved, &re, &im);
                 }
             }
         }
@@ -169,10 +214,11 @@ impl<T: Real> TileOperation<T> {
 #[inline(always)]
 pub unsafe fn fetch<V: Vector>(ahead: &Ahead<V::Element>, tile: usize) {
     let lanes = 1usize << V::Element::LANE_BITS;
+    // SAFETY: by contract.
+    let origin = unsafe { ahead.origin ^ ahead.layout.tiles.get_unchecked(tile) };
     let mut number = ahead.first;
     while number < TILE {
-        // SAFETY: by contract.
-        let address = unsafe { ahead.next.address(TILE * tile + number) };
+        let address = ahead.start.wrapping_add(origin ^ ahead.layout.registers[number]);
         // A vector's real and imaginary parts fill one cache line each.
         V::prefetch(address);
         V::prefetch(address.wrapping_add(lanes));
@@ -183,12 +229,13 @@ pub unsafe fn fetch<V: Vector>(ahead: &Ahead<V::Element>, tile: usize) {
 /// Reads a tile.
 ///
 /// # Safety
-/// As [`Place::address`] for all vectors of the tile.
+/// The vectors of the tile lie in readable memory.
 #[inline(always)]
 unsafe fn load_tile<V: Vector>(
-    from: &Place<V::Element>,
-    comb: &[usize; TILE],
-    base: usize,
+    start: *const V::Element,
+    origin: usize,
+    registers: &[usize; TILE],
+    interleaved: bool,
 ) -> (Registers<V>, Registers<V>) {
     // SAFETY: by contract.
     unsafe {
@@ -196,11 +243,11 @@ unsafe fn load_tile<V: Vector>(
         let (mut re, mut im) = ([zero; TILE], [zero; TILE]);
         let lanes = 1usize << V::Element::LANE_BITS;
         registers!(t => {
-            let address = from.address(base ^ comb[t]);
+            let address = start.add(origin ^ registers[t]);
             re[t] = V::load(address);
             im[t] = V::load(address.add(lanes));
         });
-        if from.interleaved {
+        if interleaved {
             registers!(t => { (re[t], im[t]) = V::split(re[t], im[t]); });
         }
         (re, im)
@@ -210,21 +257,24 @@ unsafe fn load_tile<V: Vector>(
 /// Writes a tile.
 ///
 /// # Safety
-/// As [`load_tile`].
+/// The vectors of the tile lie in memory that nobody else uses.
 #[inline(always)]
 unsafe fn store_tile<V: Vector>(
-    to: &Place<V::Element>,
-    comb: &[usize; TILE],
-    base: usize,
+    start: *mut V::Element,
+    origin: usize,
+    registers: &[usize; TILE],
+    interleaved: bool,
     re: &Registers<V>,
     im: &Registers<V>,
 ) {
     let lanes = 1usize << V::Element::LANE_BITS;
+    // The compiler would keep the addresses of the loads, or the stores, for all operations between.
+    let origin = std::hint::black_box(origin);
     // SAFETY: by contract.
     unsafe {
         registers!(t => {
-            let address = to.address(base ^ comb[t]);
-            let (first, second) = if to.interleaved { V::interleave(re[t], im[t]) } else { (re[t], im[t]) };
+            let address = start.add(origin ^ registers[t]);
+            let (first, second) = if interleaved { V::interleave(re[t], im[t]) } else { (re[t], im[t]) };
             first.store(address);
             second.store(address.add(lanes));
         });
@@ -250,8 +300,8 @@ unsafe fn apply<V: Vector>(
     // SAFETY: by contract.
     unsafe {
         match (operation.form, operation.real) {
-            (Form::Exchange, _) => by_mask!(V, operation.x, exchange(re, im, operation, operation.active[entry & 1])),
-            (Form::Bond, _) => by_mask!(V, operation.x, bond(re, im, operation, operation.active[entry & 1])),
+            (Form::Exchange, _) => by_arm!(V, operation.arm | entry & 1, exchange(re, im, operation)),
+            (Form::Bond, _) => by_arm!(V, operation.arm | entry & 1, bond(re, im, operation)),
             (Form::Mix, _) => by_mask_and_lanes!(V, operation, mix(re, im, operation)),
             (Form::Turn, false) => by_mask_and_lanes!(V, operation, turn(re, im, operation, entry)),
             (Form::Turn, true) => by_mask_and_lanes!(V, operation, turn_real(re, im, operation, entry)),

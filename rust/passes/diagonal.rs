@@ -181,6 +181,16 @@ impl<T: Real> Diagonal<T> {
         Self { low, high: sorted.spread(unit), groups: sorted.groups(unit), flips: sorted.flips, factor }
     }
 
+    /// Takes a factor of everything on if it does not become smaller than `least` in all.
+    pub fn absorb(&mut self, factor: Complex64, least: f64) -> bool {
+        let product = self.factor * factor;
+        let fits = product.norm() >= least;
+        if fits {
+            self.factor = product;
+        }
+        fits
+    }
+
     /// The factors of the coset of `rep`.
     pub fn prepare(&self, rep: usize, room: &mut CosetFactors<T>) {
         let lines = self.low.len() >> self.flips.len();

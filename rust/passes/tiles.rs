@@ -12,6 +12,7 @@ use num_complex::Complex64;
 
 use super::LOOK_AHEAD;
 use super::diagonal::Diagonal;
+use super::layout::{Layout, packed, scattered};
 use super::space::{Space, Span, subsets};
 use crate::kernel::lanes::Real;
 use crate::operation::{Action, Operation, PARITIES};
@@ -24,6 +25,9 @@ pub const TILE: usize = 1 << TILE_BITS;
 const INNER_BITS: u32 = 10;
 /// Products of cosines smaller than this are multiplied in before more are put off.
 const SMALLEST_FACTOR: f64 = 1e-18;
+
+/// Nothing left to do.
+pub const ONE: Complex64 = Complex64::new(1.0, 0.0);
 
 /// Which arithmetic an operation needs on the registers of a tile.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
@@ -46,6 +50,48 @@ pub enum Form {
     Scale,
     /// Phases from the tables of a diagonal.
     Diagonal,
+}
+
+/// Partner masks of registers times classes of active registers.
+pub const ARMS: usize = 64;
+
+/// Registers that an arm's bonds are active in. Arm `8 x + 2 i + s` mixes register t with t ^ x where the parity of `t & z_i`
+/// differs from s: z_0 … z_3 are the masks that x overlaps evenly, since both partners are active or none.
+pub const ACTIVE: [u8; ARMS] = {
+    let mut table = [0u8; ARMS];
+    let mut place = 8;
+    while place < ARMS {
+        let z = even_mask(place / 8, place / 2 % 4);
+        let mut t = 0;
+        while t < TILE {
+            if ((t & z).count_ones() as usize & 1) ^ (place & 1) == 1 {
+                table[place] |= 1 << t;
+            }
+            t += 1;
+        }
+        place += 1;
+    }
+    table
+};
+
+/// The `number`-th mask that x overlaps evenly.
+const fn even_mask(x: usize, mut number: usize) -> usize {
+    let mut z = 0;
+    loop {
+        if (z & x).count_ones() & 1 == 0 {
+            if number == 0 {
+                return z;
+            }
+            number -= 1;
+        }
+        z += 1;
+    }
+}
+
+/// The arm of a bond for entry 0.
+fn arm(x: usize, z: usize) -> usize {
+    let number = (0..4).find(|&number| even_mask(x, number) == z);
+    8 * x + 2 * number.expect("the mask of a bond overlaps its x mask evenly")
 }
 
 /// An operation on the registers of a tile.
@@ -75,30 +121,45 @@ pub struct TileOperation<T: Real> {
     pub register_entry: [usize; TILE],
     /// The same, counted in lines.
     pub register_line: [usize; TILE],
-    /// Registers in the odd class, for entry 0 and 1.
-    pub active: [u8; 2],
+    /// For [`Form::Exchange`] and [`Form::Bond`], which registers are active: see [`ACTIVE`].
+    pub arm: usize,
     /// Entries that leave everything as it is.
     pub idle: u16,
 }
 
-/// One traversal of a coset, tile by tile.
+/// One traversal of a part of a coset, tile by tile.
 #[derive(Clone, Debug)]
 pub struct TileRun<T: Real> {
     /// Vectors of a tile, relative to its base.
     pub comb: [usize; TILE],
     /// Bases that change the parities of operations.
     pub outer: Vec<usize>,
-    /// Bases that do not.
-    pub inner: Vec<usize>,
+    /// Tiles for each of them.
+    pub inner: usize,
+    /// Where the tiles lie in the state.
+    pub outside: Layout,
+    /// Where they lie in a buffer; the same where cosets are contiguous.
+    pub inside: Layout,
     /// What to apply, in order.
     pub operations: Vec<TileOperation<T>>,
+}
+
+/// A part of a coset.
+#[derive(Clone, Copy, Debug)]
+pub struct Part {
+    /// Its first vector.
+    pub first: usize,
+    /// Where that lies in the state.
+    pub outside: usize,
+    /// Where that lies in a buffer.
+    pub inside: usize,
 }
 
 /// Runs that go over one part of the coset after the other.
 #[derive(Clone, Debug)]
 pub struct Stage<T: Real> {
-    /// Vectors in a part, as a power of two.
-    pub part_bits: u32,
+    /// The parts.
+    pub parts: Vec<Part>,
     /// The runs.
     pub runs: Vec<TileRun<T>>,
 }
@@ -120,13 +181,12 @@ struct Gathering<'a> {
 
 /// Sorts the operations of a pass into runs and prepares them.
 ///
-/// Factors of everything that the operations leave to do are multiplied up. The product goes into the tables of a diagonal
-/// operation where the pass has one, else to the end of the last run; before it gets too small it is applied on the way.
-pub fn prepare<T: Real>(space: &Space, operations: &[&Operation]) -> Work<T> {
-    let one = Complex64::new(1.0, 0.0);
+/// Factors of everything that the operations leave to do are multiplied to `owed`, what earlier passes left to do. The
+/// product goes into the tables of a diagonal operation where the pass has one, else it is left to later ones; before it
+/// gets too small it is applied on the way.
+pub fn prepare<T: Real>(space: &Space, operations: &[&Operation], owed: &mut Complex64) -> Work<T> {
     let mut work = Work { stages: vec![], diagonals: vec![] };
     let mut diagonals: Vec<Vec<(u64, f64)>> = vec![];
-    let mut factor = one;
     let mut runs: Vec<(Space, Vec<TileOperation<T>>)> = vec![];
     for Gathering { span, operations } in gather::<T>(space, operations) {
         let tile = Space::new(span.filled(TILE_BITS));
@@ -139,24 +199,21 @@ pub fn prepare<T: Real>(space: &Space, operations: &[&Operation]) -> Work<T> {
                 }
                 action => {
                     let (prepared, own) = TileOperation::new(space, &tile, operation.x(), &action);
-                    factor *= own;
+                    *owed *= own;
                     run.push(prepared);
                 }
             }
-            if factor.norm() < SMALLEST_FACTOR {
-                run.push(TileOperation::scale(std::mem::replace(&mut factor, one)));
+            if owed.norm() < SMALLEST_FACTOR {
+                run.push(TileOperation::scale(std::mem::replace(owed, ONE)));
             }
         }
         runs.push((tile, run));
     }
-    if let (true, Some((_, run))) = (diagonals.is_empty() && factor != one, runs.last_mut()) {
-        run.push(TileOperation::scale(std::mem::replace(&mut factor, one)));
-    }
     for terms in diagonals {
-        work.diagonals.push(Diagonal::new(&terms, space, std::mem::replace(&mut factor, one)));
+        work.diagonals.push(Diagonal::new(&terms, space, std::mem::replace(owed, ONE)));
     }
     for (tile, run) in runs {
-        work.append(space.dimension() - T::LANE_BITS, &tile, run);
+        work.append(space, &tile, run);
     }
     work
 }
@@ -190,17 +247,38 @@ fn gather<'a, T: Real>(space: &Space, operations: &[&'a Operation]) -> Vec<Gathe
 }
 
 impl<T: Real> Work<T> {
-    fn append(&mut self, coset_bits: u32, tile: &Space, operations: Vec<TileOperation<T>>) {
+    /// Multiplies everything by a number on the way: in the tables of a diagonal operation if there is one that can take
+    /// it. Says whether there was.
+    pub fn absorb(&mut self, factor: Complex64) -> bool {
+        self.diagonals.last_mut().is_some_and(|diagonal| diagonal.absorb(factor, SMALLEST_FACTOR))
+    }
+
+    /// Multiplies everything by a number at the end.
+    pub fn scale(&mut self, factor: Complex64) {
+        let last = self.stages.last_mut().and_then(|stage| stage.runs.last_mut());
+        last.expect("a pass has a run").operations.push(TileOperation::scale(factor));
+    }
+
+    fn append(&mut self, space: &Space, tile: &Space, operations: Vec<TileOperation<T>>) {
+        let coset_bits = space.dimension() - T::LANE_BITS;
         let inner_bits = (INNER_BITS - T::LANE_BITS).min(coset_bits);
         let part_bits = if tile.highest() < inner_bits { inner_bits } else { coset_bits };
         let bases = tile.complement(part_bits);
         let signs = operations.iter().flat_map(|operation| &operation.masks).fold(0, |all, mask| all | mask);
-        let mut comb = [0; TILE];
-        comb.iter_mut().enumerate().for_each(|(t, place)| *place = tile.vector(t) as usize);
-        let run = TileRun { comb, outer: subsets(bases & signs), inner: subsets(bases & !signs), operations };
+        let (outer, inner) = (subsets(bases & signs), subsets(bases & !signs));
+        let order: Vec<usize> = outer.iter().flat_map(|o| inner.iter().map(move |i| o | i)).collect();
+        let comb = std::array::from_fn(|t| tile.vector(t) as usize);
+        let outside = Layout::new(&order, &comb, |vector| scattered::<T>(space, vector));
+        let inside = Layout::new(&order, &comb, packed::<T>);
+        let run = TileRun { comb, outer, inner: inner.len(), outside, inside, operations };
+        let part = |first: usize| Part { first, outside: scattered::<T>(space, first), inside: packed::<T>(first) };
+        let parts = 1usize << (coset_bits - part_bits);
         match self.stages.last_mut() {
-            Some(stage) if stage.part_bits == part_bits => stage.runs.push(run),
-            _ => self.stages.push(Stage { part_bits, runs: vec![run] }),
+            Some(stage) if stage.parts.len() == parts => stage.runs.push(run),
+            _ => {
+                let parts = (0..parts).map(|number| part(number << part_bits)).collect();
+                self.stages.push(Stage { parts, runs: vec![run] });
+            }
         }
     }
 
@@ -260,7 +338,7 @@ impl<T: Real> TileOperation<T> {
             coset_masks: vec![],
             register_entry: [0; TILE],
             register_line: [0; TILE],
-            active: [0, u8::MAX],
+            arm: 0,
             idle: 0,
         }
     }
@@ -285,7 +363,6 @@ impl<T: Real> TileOperation<T> {
             Action::Exchange { mask, .. } | Action::Bond { mask, .. } => m != 0 || sees_lanes(mask),
             _ => false,
         };
-        let one = Complex64::new(1.0, 0.0);
         let (mut operation, factor) = match action {
             Action::Exchange { mask, gamma, factor } if lanes => {
                 let entry = |odd: bool| if odd { vec![gamma.re, gamma.im] } else { vec![0.0, 0.0] };
@@ -310,27 +387,31 @@ impl<T: Real> TileOperation<T> {
             Action::Turn { mask: 0, tangent, cosine, .. } => {
                 let mut operation = Self::plain(Form::Mix);
                 operation.set_numbers(&[*tangent]);
-                (operation, one * cosine)
+                (operation, ONE * cosine)
             }
             Action::Turn { mask, tangent, cosine, .. } => {
                 let signed = |parities: usize| vec![if parities == 1 { -tangent } else { *tangent }];
-                (Self::by_parity(Form::Turn, space, tile, &[*mask], signed), one * cosine)
+                (Self::by_parity(Form::Turn, space, tile, &[*mask], signed), ONE * cosine)
             }
             Action::Table { masks, entries, .. } => {
                 let entry = |parities: usize| vec![entries[parities].0, entries[parities].1];
-                (Self::by_parity(Form::Table, space, tile, masks, entry), one)
+                (Self::by_parity(Form::Table, space, tile, masks, entry), ONE)
             }
             Action::Complex { mask, entries } => {
                 let entry = |parities: usize| {
                     let (c, s) = entries[parities];
                     vec![c.re, c.im, s.re, s.im]
                 };
-                (Self::by_parity(Form::Complex, space, tile, &[*mask], entry), one)
+                (Self::by_parity(Form::Complex, space, tile, &[*mask], entry), ONE)
             }
             Action::Diagonal(_) => unreachable!("diagonal operations have tables of their own"),
         };
         operation.real = matches!(action, Action::Turn { real: true, .. } | Action::Table { real: true, .. });
         (operation.x, operation.m) = (x, m);
+        if matches!(operation.form, Form::Exchange | Form::Bond) {
+            let seen = |t: usize| operation.register_entry[t] & 1;
+            operation.arm = arm(x, seen(1) | seen(2) << 1 | seen(4) << 2);
+        }
         if let (Action::Table { entries, .. }, true) = (action, operation.parities_are_lane_free()) {
             let idle = |(e, entry): (usize, &(f64, f64))| u16::from(*entry == (1.0, 0.0)) << e;
             operation.idle = entries.iter().enumerate().map(idle).sum();
@@ -369,9 +450,6 @@ impl<T: Real> TileOperation<T> {
                 }
             }
         }
-        let odd = |t: usize| u8::from(operation.register_entry[t] & 1 == 1) << t;
-        let active = (0..TILE).map(odd).sum::<u8>();
-        operation.active = [active, !active];
         operation.masks = vectors;
         operation.coset_masks = masks.iter().map(|mask| if space.leaves(*mask) { *mask as usize } else { 0 }).collect();
         operation

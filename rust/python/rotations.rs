@@ -226,7 +226,7 @@ fn planned_lists<T: Real>(rotations: &Rotations, control: &Control) -> Result<Ve
     let mut found = vec![];
     Planned::<T>::circuit(rotations, control)?.each_list(1, &mut |passes, times| {
         let figures = passes.iter().map(|pass| {
-            let contiguous = pass.offsets.is_empty();
+            let contiguous = pass.space.is_contiguous();
             (pass.rotations, pass.space.dimension(), contiguous, pass.work.runs(), pass.work.operations())
         });
         found.push((times, figures.collect()));
