@@ -12,6 +12,8 @@
 //! the parity of `v_i & z`, and the parity of `rep & z` is a sign common to the coset ([`space`]). Where the span is that of the
 //! lowest k qubits, cosets are contiguous blocks and nothing is moved at all.
 //!
+//! A list of one rotation is not worth any of this ([`single`]).
+//!
 //! **Tile** ([`tiles`]). In cache, the operations of a run are sorted again by what fits into registers together.
 //!
 //! Worked example on three qubits: X_2, then Z_0 Z_1, then X_2 X_0, with k = 2 and no forced low bits. The span of 0b100
@@ -32,6 +34,7 @@
 
 pub mod diagonal;
 pub mod layout;
+pub mod single;
 pub mod space;
 pub mod spread;
 pub mod tiles;
@@ -44,6 +47,7 @@ use crate::operation::{Operation, joined};
 use crate::rotations::Rotation;
 use crate::team::Control;
 use layout::Layout;
+use single::Single;
 use space::{Space, Span};
 use tiles::{ONE, TILE_BITS, Work};
 
@@ -80,6 +84,8 @@ pub struct Pass<T: Real> {
     pub rotations: usize,
     /// What the state after this pass still has to be multiplied by: later passes do it on their way.
     pub owed: Complex64,
+    /// The same in short, where the whole list is one rotation.
+    pub single: Option<Single<T>>,
 }
 
 /// Plans a list on `qubits` qubits. Every rotation of the list ends up in exactly one pass.
@@ -109,6 +115,9 @@ pub fn plan<T: Real>(qubits: u32, list: &[Rotation], control: &Control) -> Resul
         passes.push(Pass::new(span, limit, &members, &mut owed));
     }
     settle(&mut passes, owed);
+    if let ([pass], [operation]) = (&mut passes[..], list) {
+        pass.single = Single::new(operation);
+    }
     Ok(passes)
 }
 
@@ -153,7 +162,7 @@ impl<T: Real> Pass<T> {
         let layout = Layout::sequence::<T>(&space);
         let work = tiles::prepare(&space, members, owed);
         let rotations = members.iter().map(|operation| operation.count()).sum();
-        Self { space, layout, work, rotations, owed: *owed }
+        Self { space, layout, work, rotations, owed: *owed, single: None }
     }
 }
 

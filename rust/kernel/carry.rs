@@ -10,11 +10,13 @@ use super::VectorWork;
 use super::bodies::product;
 use super::lanes::Real;
 use super::shared::Shared;
+use super::single::Turning;
 use super::tile::{Ahead, Home, Tiles};
 use super::vector::Vector;
 use crate::error::{Error, Result};
 use crate::passes::Pass;
 use crate::passes::diagonal::CosetFactors;
+use crate::passes::single::{GROUP, Single};
 use crate::team::Member;
 
 /// Bytes of a state above which the next coset is fetched ahead: below, everything stays in cache anyway.
@@ -44,7 +46,10 @@ impl<'a, T: Real> Carrier<'a, T> {
     /// # Errors
     /// As [`Member::pass_done`] and [`Member::each_piece`]. After a stop the state is interleaved.
     pub fn pass(&mut self, pass: &Pass<T>, last: bool) -> Result<()> {
-        self.carry_out(pass, last)?;
+        match &pass.single {
+            Some(single) if self.interleaved && last => self.turn(single)?,
+            _ => self.carry_out(pass, last)?,
+        }
         self.interleaved = last;
         let done = self.member.pass_done();
         if matches!(done, Err(Error::Cancelled { .. })) && !self.interleaved {
@@ -63,6 +68,19 @@ impl<'a, T: Real> Carrier<'a, T> {
             unsafe {
                 let start = self.state.at(vectors.start * reals);
                 self.isa.run_vectors(Restore { start, vectors: vectors.len(), factor });
+            }
+        })
+    }
+
+    /// Carries out one rotation on an interleaved state.
+    fn turn(&self, single: &Single<T>) -> Result<()> {
+        let reals = self.state.reals();
+        let fetching = reals * size_of::<T>() >= FETCH_FROM;
+        self.member.each_piece(single.units(reals), PIECE / (GROUP << T::LANE_BITS), |units| {
+            // SAFETY: each unit belongs to one piece of one worker, and units are disjoint.
+            unsafe {
+                let (state, first, count) = (self.state.at(0), units.start, units.len());
+                self.isa.run_vectors(Turning { single, state, first, count, fetching });
             }
         })
     }

@@ -9,6 +9,7 @@
 //! | --- | --- |
 //! | [`vector`], `x86_64` | the vectors |
 //! | [`bodies`], [`tile`] | what an operation does to the registers of a tile; the loop over tiles |
+//! | [`single`] | one rotation alone |
 //! | [`carry`] | the passes of a circuit over a state |
 //! | [`image`], [`act`] | sums of an operator's terms; applications, expectations and the Chebyshev recurrence |
 //! | [`reduce`] | norms, overlaps and distances: plain loops, left to the compiler |
@@ -26,6 +27,7 @@ pub mod lanes;
 pub mod peak;
 pub mod reduce;
 pub mod shared;
+pub mod single;
 pub mod tile;
 pub mod vector;
 #[cfg(target_arch = "x86_64")]
