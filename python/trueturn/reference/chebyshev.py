@@ -204,7 +204,7 @@ def carry_out(
         done += expansion.degree
         for target, vector in zip(expansion.targets, results, strict=True):
             turn = plan.field.evolution(target - expansion.start, plan.centre, operator.qubits)
-            State.from_array(vector).apply(turn, threads=threads)
+            State._over(vector).apply(turn, threads=threads)
             if target in wanted:
                 yield target, vector
         current, sums[: len(used)] = results[-1], [*results[:-1], free]

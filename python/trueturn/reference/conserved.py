@@ -136,7 +136,8 @@ def _rows(terms: Sequence[tuple[int, int, float]]) -> Iterator[Row]:
 
 def _acts(parts: Sequence[tuple[int, float]], state: int) -> bool:
     """Whether Σ c i^{|z|} (-1)^{|z & state|}, z running over the z masks inside the x mask, is not exactly 0."""
-    real, imaginary = [], []
+    real: list[float] = []
+    imaginary: list[float] = []
     for z, coefficient in parts:
         count = z.bit_count()
         turns = count + 2 * (z & state).bit_count()
