@@ -245,7 +245,7 @@ mod tests {
             // Terms on the top qubit of every kind: alone, beside lanes, with both kinds of masks.
             let top = 1u128 << (qubits - 1);
             let extra =
-                [(top, 0), (0, top), (top | 1, 0), (top | 1, top | 1), (top | 64, top | 64), (1, top), (top, 9)];
+                [(top, 0), (0, top), (top | 1, 0), (top | 1, top | 1), (top | 32, top | 32), (1, top), (top, 9)];
             let extra = extra.map(|(x, z)| (PauliString { x, z }, 0.3 + x as f64 / (8 * top) as f64));
             let operator = Terms::new(Some(qubits), real.chain(extra)).unwrap();
             let (whole, folded) =
