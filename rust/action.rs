@@ -9,6 +9,12 @@
 //! pass works on contiguous blocks and has the diagonal; later ones add to what is there. Worked example on three qubits,
 //! H = X_0 + X_2 with blocks of two qubits: the first pass adds X_0 inside {0 … 3} and {4 … 7}, the second adds X_2 inside the
 //! cosets of the span of 0b001 and 0b100.
+//!
+//! *Folded.* A real operator (every string has an even number of Y) keeps real states real, and a real state of n qubits is
+//! half as much to carry as a complex one. It is folded into a complex vector of n - 1 qubits: amplitudes with top qubit 0 are
+//! its real parts, those with top qubit 1 its imaginary parts. All kernels then work as they are, and the few terms that act
+//! on the top qubit tell real from imaginary parts: an x mask with it exchanges the two, a z mask with it gives them different
+//! coefficients. On three qubits X_2 X_0 folds into X_0 with the parts exchanged, Z_2 into +1 for real and -1 for imaginary parts.
 
 use std::sync::Arc;
 
@@ -52,6 +58,10 @@ pub struct Addend<T: Real> {
     pub lines: Vec<T::Line>,
     /// Entries that are zero.
     pub idle: u16,
+    /// Folded: real parts take from imaginary ones, and these from real ones.
+    pub swapped: bool,
+    /// Folded: what imaginary parts add to the entry's number, by exclusive or.
+    pub im_entry: usize,
 }
 
 /// Addends that work on one coset at a time.
@@ -65,11 +75,13 @@ pub struct ActionPass<T: Real> {
     pub addends: Vec<Addend<T>>,
     /// The diagonal, in the first pass.
     pub diagonal: Option<DiagonalSum<T>>,
+    /// Folded: the diagonal of imaginary parts, where it is another.
+    pub im_diagonal: Option<DiagonalSum<T>>,
 }
 
 /// An operator `scale · H + shift`, ready to be applied.
 pub struct Action<T: Real> {
-    /// Qubits of the operator.
+    /// Qubits of the states that it acts on: those of the operator, or one less where it is folded.
     pub qubits: u32,
     /// Passes over the state, at least one.
     pub passes: Vec<ActionPass<T>>,
@@ -82,9 +94,16 @@ struct Gathered {
     imaginary: bool,
     masks: Vec<u64>,
     terms: Vec<Rotation>,
+    swapped: bool,
 }
 
 impl Gathered {
+    /// Takes the top qubit out of the x mask. Parity masks keep it: it tells imaginary from real parts.
+    fn fold(&mut self, top: u64) {
+        self.swapped = self.x & top != 0;
+        self.x &= !top;
+    }
+
     fn size(&self) -> f64 {
         self.terms.iter().map(|term| term.angle.abs()).sum()
     }
@@ -118,7 +137,10 @@ fn gather(terms: &Terms, scale: f64) -> (Vec<Gathered>, Vec<(u64, f64)>) {
                 own.masks = independent(own.masks.iter().copied().chain([z]));
                 own.terms.push(term);
             }
-            None => gathered.push(Gathered { x, imaginary, masks: independent([z].into_iter()), terms: vec![term] }),
+            None => {
+                let masks = independent([z].into_iter());
+                gathered.push(Gathered { x, imaginary, masks, terms: vec![term], swapped: false });
+            }
         }
     }
     (gathered, diagonal)
@@ -127,22 +149,34 @@ fn gather(terms: &Terms, scale: f64) -> (Vec<Gathered>, Vec<(u64, f64)>) {
 impl<T: Real> Action<T> {
     /// Prepares `scale · terms + shift`.
     pub fn new(terms: &Terms, scale: f64, shift: f64) -> Self {
-        let mut actions = Self::prepared(&[terms], scale, shift);
+        let mut actions = Self::prepared(&[terms], scale, shift, None);
         actions.remove(0)
+    }
+
+    /// Prepares `scale · terms + shift` for folded real states; None where the terms are not real or the states too short.
+    pub fn folded(terms: &Terms, scale: f64, shift: f64) -> Option<Self> {
+        if terms.qubits() <= least_qubits::<T>() || !terms.is_real() {
+            return None;
+        }
+        Self::prepared(&[terms], scale, shift, Some(1 << (terms.qubits() - 1))).pop()
     }
 
     /// Prepares several operators on one number of qubits so that all have their passes over the same spaces.
     pub fn together(operators: &[&Terms]) -> Vec<Self> {
-        Self::prepared(operators, 1.0, 0.0)
+        Self::prepared(operators, 1.0, 0.0, None)
     }
 
-    fn prepared(operators: &[&Terms], scale: f64, shift: f64) -> Vec<Self> {
-        let qubits = operators.iter().map(|terms| terms.qubits()).max().unwrap_or(0).max(least_qubits::<T>());
+    /// `top` is the bit of the qubit to fold.
+    fn prepared(operators: &[&Terms], scale: f64, shift: f64, top: Option<u64>) -> Vec<Self> {
+        let own = |terms: &Terms| terms.qubits() - u32::from(top.is_some());
+        let qubits = operators.iter().map(|terms| own(terms)).max().unwrap_or(0).max(least_qubits::<T>());
         let (mut left, mut diagonals): (Vec<_>, Vec<_>) = operators.iter().map(|terms| gather(terms, scale)).unzip();
         if shift != 0.0 {
             diagonals.iter_mut().for_each(|diagonal: &mut Vec<(u64, f64)>| diagonal.push((0, shift)));
         }
-        let new = |terms: &&Terms| Self { qubits: terms.qubits(), passes: vec![], rounding: 0.0 };
+        let top = top.unwrap_or(0);
+        left.iter_mut().flatten().for_each(|gathered: &mut Gathered| gathered.fold(top));
+        let new = |terms: &&Terms| Self { qubits: own(terms), passes: vec![], rounding: 0.0 };
         let mut actions: Vec<Self> = operators.iter().map(new).collect();
         let mut members: Vec<Vec<Vec<Gathered>>> = operators.iter().map(|_| vec![]).collect();
         let mut first = true;
@@ -153,7 +187,7 @@ impl<T: Real> Action<T> {
             for (((action, taken), diagonal), members) in
                 actions.iter_mut().zip(taken).zip(&diagonals).zip(&mut members)
             {
-                action.push(&space, &layout, &taken, diagonal);
+                action.push(&space, &layout, &taken, diagonal, top);
                 members.push(taken);
             }
             first = false;
@@ -164,11 +198,24 @@ impl<T: Real> Action<T> {
         actions
     }
 
-    fn push(&mut self, space: &Arc<Space>, layout: &Arc<Layout>, taken: &[Gathered], diagonal: &[(u64, f64)]) {
-        let addends = taken.iter().map(|own| Addend::new(space, own)).collect();
-        let sum = (self.passes.is_empty() && !diagonal.is_empty()).then(|| DiagonalSum::new(diagonal, space));
+    fn push(
+        &mut self,
+        space: &Arc<Space>,
+        layout: &Arc<Layout>,
+        taken: &[Gathered],
+        diagonal: &[(u64, f64)],
+        top: u64,
+    ) {
+        let addends = taken.iter().map(|own| Addend::new(space, own, top)).collect();
+        let first = self.passes.is_empty() && !diagonal.is_empty();
+        let part = |sign: f64| {
+            let one = |(z, value): &(u64, f64)| (z & !top, if z & top == 0 { *value } else { sign * value });
+            DiagonalSum::new(&diagonal.iter().map(one).collect::<Vec<_>>(), space)
+        };
+        let sum = first.then(|| part(1.0));
+        let im_diagonal = (first && diagonal.iter().any(|(z, _)| z & top != 0)).then(|| part(-1.0));
         let (space, layout) = (Arc::clone(space), Arc::clone(layout));
-        self.passes.push(ActionPass { space, layout, addends, diagonal: sum });
+        self.passes.push(ActionPass { space, layout, addends, diagonal: sum, im_diagonal });
     }
 
     /// Bound on the 2-norm of the rounding error of one application to a unit vector, in units of the roundoff.
@@ -222,10 +269,12 @@ fn is_odd(masked: usize) -> bool {
 }
 
 impl<T: Real> Addend<T> {
-    fn new(space: &Space, gathered: &Gathered) -> Self {
+    fn new(space: &Space, gathered: &Gathered, top: u64) -> Self {
         let local = space.coordinates(gathered.x);
         let lane_mask = (1usize << T::LANE_BITS) - 1;
-        let duals: Vec<usize> = gathered.masks.iter().map(|mask| space.dual(*mask)).collect();
+        let im_entry = gathered.masks.iter().enumerate().map(|(j, mask)| usize::from(mask & top != 0) << j).sum();
+        let parities: Vec<u64> = gathered.masks.iter().map(|mask| mask & !top).collect();
+        let duals: Vec<usize> = parities.iter().map(|mask| space.dual(*mask)).collect();
         let masks: Vec<usize> = duals.iter().map(|dual| dual >> T::LANE_BITS).collect();
         let entry = |vector: usize| -> usize {
             masks.iter().enumerate().map(|(j, mask)| usize::from(is_odd(vector & mask)) << j).sum()
@@ -257,13 +306,15 @@ impl<T: Real> Addend<T> {
             x: local >> T::LANE_BITS,
             m,
             imaginary: gathered.imaginary,
-            coset_masks: gathered.masks.iter().map(|z| if space.leaves(*z) { *z as usize } else { 0 }).collect(),
+            coset_masks: parities.iter().map(|z| if space.leaves(*z) { *z as usize } else { 0 }).collect(),
             register_entry,
             uniform: register_entry == [register_entry[0]; TILE],
             tile_entry,
             values,
             lines,
             idle,
+            swapped: gathered.swapped,
+            im_entry,
             masks: masks.iter().map(|mask| mask & !within).collect(),
         }
     }

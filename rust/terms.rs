@@ -88,6 +88,11 @@ impl Terms {
         self.strings.is_empty()
     }
 
+    /// Whether the matrix is real: every string has an even number of Y.
+    pub fn is_real(&self) -> bool {
+        self.strings.iter().all(|string| string.y_count() & 1 == 0)
+    }
+
     /// The terms as pairs, in order.
     pub fn iter(&self) -> impl ExactSizeIterator<Item = (PauliString, f64)> + '_ {
         self.strings.iter().copied().zip(self.coefficients.iter().copied())

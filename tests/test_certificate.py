@@ -221,6 +221,48 @@ def test_one_application_rounds_less_than_counted():
     assert np.median(slacks) < 100
 
 
+def test_one_folded_application_rounds_less_than_counted():
+    slacks = []
+    for seed in range(60):
+        generator = np.random.default_rng(seed)
+        qubits, terms = int(generator.integers(7, 13)), int(generator.integers(4, 80))
+        mixed = (random_operator if seed % 2 else local_operator)(generator, qubits, terms)
+        both = (int(x) & int(z) for x, z in zip(mixed.x_masks, mixed.z_masks, strict=True))
+        real = np.array([mask.bit_count() % 2 == 0 for mask in both])
+        operator = Operator.from_masks(mixed.x_masks[real], mixed.z_masks[real], mixed.coefficients[real], qubits)
+        values = State.random(qubits, seed).amplitudes.real
+        amplitudes = (values / np.linalg.norm(values)).astype(np.complex128)
+        scale, shift = float(generator.uniform(0.1, 3)), float(generator.normal())
+        image, spare = amplitudes.copy(), np.empty_like(amplitudes)
+        done = _native.real_chebyshev_sums(operator._terms, scale, shift, image, [spare], [[0.0, 2.0]], 1, None)
+        assert done
+        exact = np.longdouble(scale) * twin_application(operator, amplitudes) + np.longdouble(shift) * amplitudes
+        error = float(np.linalg.norm(1j * image.astype(np.clongdouble) - exact))
+        counted = _native.application_rounding(operator._terms, scale, shift)
+        # As in `application_slacks`.
+        size = scale * operator.one_norm() + abs(shift)
+        bound = 1.01 * UNIT_ROUNDOFF * counted
+        assert error - 2.0**-64 * (3 + terms) * size <= bound
+        slacks.append(bound / max(error, 1e-300))
+    assert np.median(slacks) < 100
+
+
+def test_what_is_not_real_is_not_folded():
+    def folded(text, amplitudes):
+        operator, before = Operator(text, qubits=8), amplitudes.copy()
+        arrays = [operator._terms, 1.0, 0.0, amplitudes, [np.empty_like(amplitudes)], [[1.0]]]
+        done = _native.real_chebyshev_sums(*arrays, 1, None)
+        assert done or np.array_equal(amplitudes, before)
+        return done
+
+    real = State.product("0" * 8).amplitudes.copy()
+    late = real.copy()
+    late[-1] = 1e-300j
+    assert folded("X_0 + Y_1 Y_2", real.copy())
+    assert not folded("X_0 + Y_1 Y_2", late)
+    assert not folded("X_0 + Y_1 Z_2", real)
+
+
 def test_applying_terms_equals_the_first_step_of_the_recurrence():
     """So that what is measured above holds for both entry points."""
     operator = local_operator(np.random.default_rng(1), 11, 40)

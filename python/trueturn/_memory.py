@@ -30,7 +30,7 @@ def allowed_bytes() -> int:
     return 1 << 63 if available is None else available
 
 
-def require(needed: int, what: str, bytes_for_qubits: Callable[[int], int] | int | None = None) -> None:
+def require(needed: int, what: str, bytes_for_qubits: Callable[[int], int] | int | None = None) -> int | None:
     """Refuse a request that does not fit.
 
     Parameters
@@ -43,6 +43,11 @@ def require(needed: int, what: str, bytes_for_qubits: Callable[[int], int] | int
         Bytes needed as a function of the number of qubits, or a count of complex128 state vectors. Serves
         to name the largest size that fits.
 
+    Returns
+    -------
+    int or None
+        `available_bytes`.
+
     Raises
     ------
     MemoryRefusedError
@@ -51,7 +56,7 @@ def require(needed: int, what: str, bytes_for_qubits: Callable[[int], int] | int
     """
     available = available_bytes()
     if available is None or needed <= available:
-        return
+        return available
     if isinstance(bytes_for_qubits, int):
         vectors = bytes_for_qubits
         bytes_for_qubits = lambda qubits: vectors * AMPLITUDE_BYTES << qubits  # noqa: E731

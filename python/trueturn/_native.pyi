@@ -24,6 +24,7 @@ __all__ = [
     "overlap",
     "pairwise_sum",
     "read_qasm",
+    "real_chebyshev_sums",
     "rung_counts",
     "squared_norms",
     "write_gates",
@@ -141,6 +142,16 @@ def chebyshev_sums(
     threads: int,
     progress: _Progress | None,
 ) -> None: ...
+def real_chebyshev_sums(
+    terms: Terms,
+    scale: float,
+    shift: float,
+    current: npt.NDArray[np.complex128],
+    sums: Sequence[npt.NDArray[np.complex128]],
+    coefficients: Sequence[Sequence[float]],
+    threads: int,
+    progress: _Progress | None,
+) -> bool: ...
 def overlap(left: npt.NDArray[Any], right: npt.NDArray[Any], threads: int) -> complex: ...
 def distance(left: npt.NDArray[Any], right: npt.NDArray[Any], factor: complex, threads: int) -> float: ...
 def squared_norms(state: npt.NDArray[Any], threads: int) -> npt.NDArray[np.float64]: ...

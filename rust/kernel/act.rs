@@ -2,10 +2,11 @@
 
 use std::sync::atomic::{AtomicU64, Ordering};
 
-use num_complex::{Complex, Complex64};
+use num_complex::Complex;
 
 use super::Isa;
-use super::image::{Copy, Ending, Gain, Old, Room, Turned, coset_image};
+use super::copies::Copy;
+use super::image::{Ending, Old, Room, coset_image};
 use super::lanes::Real;
 use super::shared::Shared;
 use super::tile::{Ahead, Place};
@@ -17,28 +18,31 @@ use crate::team::{Control, Member, Run, run, workers_for};
 
 /// Bytes of a state above which the next coset is fetched ahead.
 const FETCH_FROM: usize = 1 << 23;
-/// Vectors that a worker copies between two looks at the flags.
-const PIECE: usize = 1 << 12;
 
 /// One coset's place in a state.
-fn place<'a, T: Real>(pass: &'a ActionPass<T>, state: &Shared<T>, rep: usize, interleaved: bool) -> Place<'a, T> {
+pub(super) fn place<'a, T: Real>(
+    pass: &'a ActionPass<T>,
+    state: &Shared<T>,
+    rep: usize,
+    interleaved: bool,
+) -> Place<'a, T> {
     // SAFETY: the state has a first real.
     let start = unsafe { state.at(0) };
     Place { start, origin: 2 * rep, layout: Some(&pass.layout), interleaved }
 }
 
 /// What to fetch of the next coset.
-fn ahead<'a, T: Real>(pass: &'a ActionPass<T>, state: &Shared<T>, next: usize) -> Ahead<'a, T> {
+pub(super) fn ahead<'a, T: Real>(pass: &'a ActionPass<T>, state: &Shared<T>, next: usize) -> Ahead<'a, T> {
     // SAFETY: the state has a first real.
     let start = unsafe { state.at(0) };
     Ahead { start, origin: 2 * next, layout: &pass.layout, first: 0, step: 1 }
 }
 
 /// A worker's buffer for one coset.
-struct Buffer<T: Real>(Vec<T::Line>);
+pub(super) struct Buffer<T: Real>(Vec<T::Line>);
 
 impl<T: Real> Buffer<T> {
-    fn new(pass: &ActionPass<T>) -> Self {
+    pub fn new(pass: &ActionPass<T>) -> Self {
         Self(vec![T::Line::default(); 2 << (pass.space.dimension() - T::LANE_BITS)])
     }
 
@@ -46,7 +50,7 @@ impl<T: Real> Buffer<T> {
     ///
     /// # Safety
     /// The place holds a coset of this buffer's size that nobody writes to.
-    unsafe fn fill(&mut self, isa: Isa, from: Place<T>) -> *const T {
+    pub unsafe fn fill(&mut self, isa: Isa, from: Place<T>) -> *const T {
         let start = self.0.as_mut_ptr().cast();
         let to = Place { start, origin: 0, layout: None, interleaved: false };
         // SAFETY: by contract, and the buffer is this worker's own.
@@ -56,7 +60,7 @@ impl<T: Real> Buffer<T> {
 }
 
 /// Calls `work(number, rep, next rep)` for this member's cosets of a pass.
-fn each_coset<T: Real>(
+pub(super) fn each_coset<T: Real>(
     member: &Member,
     pass: &ActionPass<T>,
     state: &Shared<T>,
@@ -72,7 +76,7 @@ fn each_coset<T: Real>(
     })
 }
 
-fn require_size<T: Real>(action: &Action<T>, lengths: impl IntoIterator<Item = usize>) {
+pub(super) fn require_size<T: Real>(action: &Action<T>, lengths: impl IntoIterator<Item = usize>) {
     let size = 1usize << action.qubits.max(least_qubits::<T>());
     assert!(lengths.into_iter().all(|length| length == size), "states are extended and checked by the caller");
 }
@@ -165,133 +169,4 @@ pub fn expectations<T: Real>(
         }
     }
     Ok(totals.iter().map(|values| pairwise(values)).collect())
-}
-
-/// The recurrence behind [`crate::apply::chebyshev_sums`], on states of the right and least length.
-///
-/// The vectors are kept as real and imaginary parts in turn for the whole run. Every second term enters the sums together
-/// with the one before it, which is at hand as the source of the recurrence.
-///
-/// # Errors
-/// A stop on request, after which all arrays are unfinished.
-pub fn chebyshev(
-    action: &Action<f64>,
-    current: &mut [Complex64],
-    previous: &mut [Complex64],
-    sums: &mut [&mut [Complex64]],
-    coefficients: &[Vec<f64>],
-    threads: usize,
-    control: &Control,
-) -> Result<Run> {
-    require_size(action, [current.len(), previous.len()].into_iter().chain(sums.iter().map(|sum| sum.len())));
-    let isa = Isa::chosen()?;
-    let terms = coefficients[0].len();
-    let workers = workers_for(threads, current.len());
-    control.expect(control.progress().0 + (terms - 1) as u64 * action.passes.len() as u64 + 2);
-    let buffers = [Shared::new(current), Shared::new(previous)];
-    let sums: Vec<Shared<f64>> = sums.iter_mut().map(|sum| Shared::new(sum)).collect();
-    run(workers, control, |member| {
-        begin(member, isa, &buffers[0], &sums, coefficients)?;
-        let mut room = Room::default();
-        let last = action.passes.len() - 1;
-        for term in 1..terms {
-            let (read, write) = (&buffers[(term + 1) & 1], &buffers[term & 1]);
-            let due = term & 1 == 0 || term + 1 == terms;
-            for (number, pass) in action.passes.iter().enumerate() {
-                let mut buffer = (!pass.space.is_contiguous()).then(|| Buffer::new(pass));
-                let old = match (number, term) {
-                    (0, 1) => Old::Dropped,
-                    (0, _) => Old::Subtracted,
-                    _ => Old::Added,
-                };
-                let gaining = number == last && due;
-                let mut gains: Vec<Gain<f64>> = Vec::with_capacity(sums.len());
-                let mut coming: Vec<Ahead<f64>> = Vec::with_capacity(sums.len() + 2);
-                each_coset(member, pass, read, |_, rep, next| {
-                    gains.clear();
-                    coming.clear();
-                    if gaining {
-                        gains.extend(sums.iter().zip(coefficients).map(|(sum, list)| Gain {
-                            sum: place(pass, sum, rep, false),
-                            own: turned(list, term),
-                            source: (term & 1 == 0).then(|| turned(list, term - 1)),
-                        }));
-                    }
-                    if let Some(next) = next {
-                        let later = if gaining { &sums[..] } else { &[] };
-                        let arrays = [read, write].into_iter().chain(later);
-                        coming.extend(arrays.map(|array| ahead(pass, array, next)));
-                    }
-                    let out = place(pass, write, rep, false);
-                    let ending = Ending::Store { out, old, halved: number == last && term == 1, gains: &gains };
-                    // SAFETY: each coset belongs to one worker; the arrays are distinct, and `read` is only read.
-                    unsafe {
-                        let source = match &mut buffer {
-                            None => read.at(2 * rep),
-                            Some(buffer) => buffer.fill(isa, place(pass, read, rep, false)),
-                        };
-                        coset_image(isa, pass, source, rep, ending, &coming, &mut room);
-                    }
-                })?;
-                member.pass_done()?;
-            }
-        }
-        end(member, isa, &sums)
-    })
-}
-
-/// (-i)^term times the coefficient of the term.
-fn turned(list: &[f64], term: usize) -> Turned<f64> {
-    let sign = if matches!(term & 3, 1 | 2) { -1.0 } else { 1.0 };
-    Turned { value: sign * list[term], imaginary: term & 1 == 1 }
-}
-
-/// Splits the start into real and imaginary parts, and begins the sums with the first term.
-fn begin(
-    member: &Member,
-    isa: Isa,
-    start: &Shared<f64>,
-    sums: &[Shared<f64>],
-    coefficients: &[Vec<f64>],
-) -> Result<()> {
-    each_vector(member, start, |from, vectors| {
-        for (sum, list) in sums.iter().zip(coefficients) {
-            let factor = Some((list[0], 0.0));
-            // SAFETY: pieces belong to one worker each, and the arrays are distinct.
-            unsafe {
-                isa.run_vectors(Copy { from: whole(start, from, true), to: whole(sum, from, false), vectors, factor })
-            };
-        }
-        // SAFETY: as above; a vector is read before it is written.
-        unsafe {
-            let (from, to) = (whole(start, from, true), whole(start, from, false));
-            isa.run_vectors(Copy { from, to, vectors, factor: None });
-        }
-    })?;
-    member.pass_done()
-}
-
-/// Interleaves the sums.
-fn end(member: &Member, isa: Isa, sums: &[Shared<f64>]) -> Result<()> {
-    for sum in sums {
-        each_vector(member, sum, |from, vectors| {
-            // SAFETY: pieces belong to one worker each; a vector is read before it is written.
-            unsafe {
-                let (from, to) = (whole(sum, from, false), whole(sum, from, true));
-                isa.run_vectors(Copy { from, to, vectors, factor: None });
-            }
-        })?;
-    }
-    member.pass_done()
-}
-
-fn each_vector(member: &Member, state: &Shared<f64>, mut work: impl FnMut(usize, usize)) -> Result<()> {
-    member.each_piece(state.reals() >> (f64::LANE_BITS + 1), PIECE, |vectors| work(vectors.start, vectors.len()))
-}
-
-/// The state from a vector on.
-fn whole(state: &Shared<f64>, vector: usize, interleaved: bool) -> Place<'static, f64> {
-    // SAFETY: vectors are cut from the state.
-    let start = unsafe { state.at(vector << (f64::LANE_BITS + 1)) };
-    Place { start, origin: 0, layout: None, interleaved }
 }

@@ -3,13 +3,13 @@
 //! One coset of the state at a time lies in cache as vectors of real and imaginary parts. For each tile of eight vectors of
 //! the result the addends are summed in registers; what becomes of the sum is the [`Ending`].
 
-use super::bodies::{product, registers};
+use super::bodies::registers;
 use super::lanes::Real;
 use super::tile::{Ahead, Place, fetch};
 use super::vector::Vector;
 use super::{Isa, VectorWork};
 use crate::action::{ActionPass, Addend, STRETCH_BITS};
-use crate::passes::diagonal::{CosetSums, LOW_BITS};
+use crate::passes::diagonal::{CosetSums, DiagonalSum, LOW_BITS};
 use crate::passes::tiles::{TILE, TILE_BITS};
 
 /// A real number, or i times one.
@@ -26,8 +26,8 @@ pub struct Turned<T> {
 pub struct Gain<'a, T> {
     /// Where the sum lies.
     pub sum: Place<'a, T>,
-    /// Factor of the result.
-    pub own: Turned<T>,
+    /// Factor of the result, if it enters.
+    pub own: Option<Turned<T>>,
     /// Factor of the state, if it enters.
     pub source: Option<Turned<T>>,
 }
@@ -63,7 +63,8 @@ pub enum Ending<'a, T> {
 
 /// A worker's room.
 pub struct Room<T: Real> {
-    sums: CosetSums<T>,
+    /// Of real parts (and imaginary ones, unless theirs are others), and of imaginary parts.
+    sums: [CosetSums<T>; 2],
     entries: Vec<usize>,
     /// Real part of the inner product, by lane.
     pub dot: [f64; 16],
@@ -71,7 +72,7 @@ pub struct Room<T: Real> {
 
 impl<T: Real> Default for Room<T> {
     fn default() -> Self {
-        Self { sums: CosetSums::default(), entries: vec![], dot: [0.0; 16] }
+        Self { sums: Default::default(), entries: vec![], dot: [0.0; 16] }
     }
 }
 
@@ -89,8 +90,10 @@ pub unsafe fn coset_image<T: Real>(
     ahead: &[Ahead<T>],
     room: &mut Room<T>,
 ) {
-    if let Some(diagonal) = &pass.diagonal {
-        diagonal.prepare(rep, &mut room.sums);
+    for (diagonal, sums) in [&pass.diagonal, &pass.im_diagonal].into_iter().zip(&mut room.sums) {
+        if let Some(diagonal) = diagonal {
+            diagonal.prepare(rep, sums);
+        }
     }
     // SAFETY: the contract is handed on.
     unsafe { isa.run_vectors(Image { pass, source, rep, ending, ahead, room }) }
@@ -161,7 +164,7 @@ impl<T: Real> Addend<T> {
 /// # Safety
 /// The address holds both.
 #[inline(always)]
-unsafe fn pair<V: Vector>(address: *const V::Element) -> (V, V) {
+pub unsafe fn pair<V: Vector>(address: *const V::Element) -> (V, V) {
     // SAFETY: by contract.
     unsafe { (V::load(address), V::load(address.add(1 << V::Element::LANE_BITS))) }
 }
@@ -175,28 +178,68 @@ unsafe fn add_diagonal<V: Vector>(
     re: &mut [V; TILE],
     im: &mut [V; TILE],
     pass: &ActionPass<V::Element>,
-    sums: &CosetSums<V::Element>,
+    sums: &[CosetSums<V::Element>; 2],
     source: *const V::Element,
     base: usize,
 ) {
     let Some(diagonal) = &pass.diagonal else { return };
-    let low_vectors = LOW_BITS - V::Element::LANE_BITS;
-    // SAFETY: by contract: the high part of a vector number is below the number of high values, its low part below that of
-    // table lines; a tile does not cross high values, since it is at most as large as a low table.
+    // SAFETY: by contract.
     unsafe {
-        let high = base >> low_vectors;
-        let first = base & ((1 << low_vectors) - 1);
-        let sum = sums.high.get_unchecked(high);
-        let (value, table) = (V::splat(sum.value), diagonal.low.as_ptr().add(sum.low + first));
+        let of_re = DiagonalTile::<V>::new(diagonal, &sums[0], base);
+        let of_im = pass.im_diagonal.as_ref().map(|diagonal| DiagonalTile::<V>::new(diagonal, &sums[1], base));
         registers!(t => {
-            let mut factor = V::load(table.add(t).cast()).add(value);
-            for (number, group) in diagonal.groups.iter().enumerate() {
-                let part = V::splat(*sums.groups.get_unchecked(number * sums.high.len() + high));
-                factor = factor.add(part.mul(V::load(group.sign(first + t))));
-            }
+            let factor = of_re.factor(t);
+            let im_factor = match &of_im {
+                Some(tile) => tile.factor(t),
+                None => factor,
+            };
             let (a, b) = pair::<V>(source.add((base + t) << (V::Element::LANE_BITS + 1)));
-            (re[t], im[t]) = (re[t].add(factor.mul(a)), im[t].add(factor.mul(b)));
+            (re[t], im[t]) = (re[t].add(factor.mul(a)), im[t].add(im_factor.mul(b)));
         });
+    }
+}
+
+/// A diagonal on one tile.
+struct DiagonalTile<'a, V: Vector> {
+    diagonal: &'a DiagonalSum<V::Element>,
+    sums: &'a CosetSums<V::Element>,
+    high: usize,
+    first: usize,
+    value: V,
+    table: *const <V::Element as Real>::Line,
+}
+
+impl<'a, V: Vector> DiagonalTile<'a, V> {
+    /// # Safety
+    /// The instruction set is there, the sums are those of the diagonal, and the base is a tile of the coset.
+    #[inline(always)]
+    unsafe fn new(diagonal: &'a DiagonalSum<V::Element>, sums: &'a CosetSums<V::Element>, base: usize) -> Self {
+        let low_vectors = LOW_BITS - V::Element::LANE_BITS;
+        let (high, first) = (base >> low_vectors, base & ((1 << low_vectors) - 1));
+        // SAFETY: by contract: the high part of a vector number is below the number of high values, its low part below that of
+        // table lines; a tile does not cross high values, since it is at most as large as a low table.
+        unsafe {
+            let sum = sums.high.get_unchecked(high);
+            let (value, table) = (V::splat(sum.value), diagonal.low.as_ptr().add(sum.low + first));
+            Self { diagonal, sums, high, first, value, table }
+        }
+    }
+
+    /// The diagonal at vector `t` of the tile.
+    ///
+    /// # Safety
+    /// The instruction set is there, and `t` is below [`TILE`].
+    #[inline(always)]
+    unsafe fn factor(&self, t: usize) -> V {
+        // SAFETY: by contract, as in `new`.
+        unsafe {
+            let mut factor = V::load(self.table.add(t).cast()).add(self.value);
+            for (number, group) in self.diagonal.groups.iter().enumerate() {
+                let part = V::splat(*self.sums.groups.get_unchecked(number * self.sums.high.len() + self.high));
+                factor = factor.add(part.mul(V::load(group.sign(self.first + t))));
+            }
+            factor
+        }
     }
 }
 
@@ -216,7 +259,9 @@ unsafe fn add<V: Vector>(
     let stride = V::Element::LANE_BITS + 1;
     // SAFETY: by contract.
     unsafe {
-        if !addend.lines.is_empty() {
+        if addend.swapped || addend.im_entry != 0 {
+            add_folded(re, im, addend, entry, from);
+        } else if !addend.lines.is_empty() {
             let m = addend.m;
             registers!(t => {
                 let coefficient = V::load(addend.lines.as_ptr().add(entry ^ addend.register_entry[t]).cast());
@@ -250,6 +295,40 @@ unsafe fn add<V: Vector>(
                 }
             });
         }
+    }
+}
+
+/// Adds one addend that tells imaginary from real parts; see [`add`].
+///
+/// # Safety
+/// As [`add`].
+#[inline(always)]
+unsafe fn add_folded<V: Vector>(
+    re: &mut [V; TILE],
+    im: &mut [V; TILE],
+    addend: &Addend<V::Element>,
+    entry: usize,
+    from: *const V::Element,
+) {
+    let (x, m) = (addend.x & (TILE - 1), addend.m);
+    let coefficient = |entry: usize| -> V {
+        // SAFETY: by contract.
+        unsafe {
+            match addend.lines.is_empty() {
+                true => V::splat(addend.values[entry & 15]),
+                false => V::load(addend.lines.as_ptr().add(entry).cast()),
+            }
+        }
+    };
+    // SAFETY: by contract.
+    unsafe {
+        registers!(t => {
+            let entry = entry ^ addend.register_entry[t];
+            let (a, b) = pair::<V>(from.add((t ^ x) << (V::Element::LANE_BITS + 1)));
+            let (a, b) = if addend.swapped { (b, a) } else { (a, b) };
+            re[t] = re[t].add(coefficient(entry).mul(a.exchange(m)));
+            im[t] = im[t].add(coefficient(entry ^ addend.im_entry).mul(b.exchange(m)));
+        });
     }
 }
 
@@ -309,7 +388,9 @@ unsafe fn finish<V: Vector>(
                             let (e, f) = pair::<V>(source.add((base + t) << (V::Element::LANE_BITS + 1)));
                             accumulate(&mut c, &mut d, V::splat(factor.value), e, f, factor.imaginary);
                         }
-                        accumulate(&mut c, &mut d, V::splat(gain.own.value), a, b, gain.own.imaginary);
+                        if let Some(factor) = gain.own {
+                            accumulate(&mut c, &mut d, V::splat(factor.value), a, b, factor.imaginary);
+                        }
                         c.store(address);
                         d.store(address.add(lanes));
                     }
@@ -325,48 +406,6 @@ unsafe fn finish<V: Vector>(
                 let mut values = [V::Element::default(); 16];
                 sum.store(values.as_mut_ptr());
                 dot.iter_mut().zip(values).for_each(|(total, value)| *total += value.to_f64());
-            }
-        }
-    }
-}
-
-/// Copies vectors between places, splitting or interleaving amplitudes and multiplying by a number on the way.
-pub struct Copy<'a, T> {
-    /// Where they come from.
-    pub from: Place<'a, T>,
-    /// Where they go; may be where they come from.
-    pub to: Place<'a, T>,
-    /// How many vectors of real (and of imaginary) parts.
-    pub vectors: usize,
-    /// (c, s): the factor c + i s.
-    pub factor: Option<(T, T)>,
-}
-
-impl<T: Real> VectorWork<T> for Copy<'_, T> {
-    type Output = ();
-
-    /// # Safety
-    /// Besides the instruction set: both places hold that many vectors; nobody else uses the second meanwhile or writes to
-    /// the first.
-    #[inline(always)]
-    unsafe fn run<V: Vector<Element = T>>(self) {
-        let lanes = 1usize << T::LANE_BITS;
-        for vector in 0..self.vectors {
-            // SAFETY: by contract.
-            unsafe {
-                let (mut a, mut b) = pair::<V>(self.from.address(vector));
-                if self.from.interleaved {
-                    (a, b) = V::split(a, b);
-                }
-                if let Some((c, s)) = self.factor {
-                    (a, b) = product(V::splat(c), V::splat(s), a, b);
-                }
-                if self.to.interleaved {
-                    (a, b) = V::interleave(a, b);
-                }
-                let address = self.to.address(vector);
-                a.store(address);
-                b.store(address.add(lanes));
             }
         }
     }

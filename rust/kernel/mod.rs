@@ -11,7 +11,8 @@
 //! | [`bodies`], [`tile`] | what an operation does to the registers of a tile; the loop over tiles |
 //! | [`single`] | one rotation alone |
 //! | [`carry`] | the passes of a circuit over a state |
-//! | [`image`], [`act`] | sums of an operator's terms; applications, expectations and the Chebyshev recurrence |
+//! | [`image`], [`act`], [`recurrence`] | sums of an operator's terms; applications, expectations; the Chebyshev recurrence |
+//! | [`copies`] | vectors copied between layouts, real states folded and unfolded |
 //! | [`reduce`] | norms, overlaps and distances: plain loops, left to the compiler |
 //! | [`peak`] | the arithmetic limit, for benches |
 //! | [`shared`] | one array that several workers write, each its own part |
@@ -22,9 +23,11 @@
 pub mod act;
 pub mod bodies;
 pub mod carry;
+pub mod copies;
 pub mod image;
 pub mod lanes;
 pub mod peak;
+pub mod recurrence;
 pub mod reduce;
 pub mod shared;
 pub mod single;

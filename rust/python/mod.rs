@@ -23,7 +23,7 @@ mod _native {
     #[pymodule_export]
     use super::state::{
         application_rounding, apply_terms, chebyshev_sums, clear, distance, evolve, expectations, image_rounding,
-        instruction_sets, overlap, pairwise_sum, squared_norms,
+        instruction_sets, overlap, pairwise_sum, real_chebyshev_sums, squared_norms,
     };
     #[pymodule_export]
     use super::terms::PyTerms;

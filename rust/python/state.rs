@@ -93,10 +93,12 @@ pub fn expectations(
     })
 }
 
-/// Bound on the rounding of one application of `scale · operator + shift` to a unit vector, in units of the roundoff.
+/// Bound on the rounding of one application of `scale · operator + shift` to a unit vector, folded or not, in units of the
+/// roundoff.
 #[pyfunction]
 pub fn application_rounding(terms: &PyTerms, scale: f64, shift: f64) -> f64 {
-    Action::<f64>::new(&terms.terms, scale, shift).rounding()
+    let whole = Action::<f64>::new(&terms.terms, scale, shift).rounding();
+    Action::<f64>::folded(&terms.terms, scale, shift).map_or(whole, |folded| whole.max(folded.rounding()))
 }
 
 /// Bound on the rounding of one image of a unit vector under an operator in [`expectations`], in units of the roundoff.
@@ -129,6 +131,37 @@ pub fn chebyshev_sums(
     run(py, weight, Spoils::Nothing, progress.as_ref(), |control| {
         let action = Action::new(&terms.terms, scale, shift);
         apply::chebyshev_sums(&action, current, previous, &mut views, &coefficients, threads, control).map(drop)
+    })
+}
+
+/// Chebyshev sums from a real `current` under a real operator, into `current` and all of `sums` but the last; see
+/// [`apply::real_chebyshev_sums`]. Returns whether they were made: not where the start or the operator is not real, or the
+/// state too short; then nothing has changed.
+#[pyfunction]
+#[allow(clippy::too_many_arguments)]
+pub fn real_chebyshev_sums(
+    py: Python<'_>,
+    terms: &PyTerms,
+    scale: f64,
+    shift: f64,
+    current: &Bound<'_, PyAny>,
+    sums: Vec<Bound<'_, PyAny>>,
+    coefficients: Vec<Vec<f64>>,
+    threads: usize,
+    progress: Option<Py<PyAny>>,
+) -> PyResult<bool> {
+    let mut current = borrow_double(current)?;
+    let current = slice(py, &mut current)?;
+    let mut arrays: Vec<PyReadwriteArray1<Complex64>> = sums.iter().map(borrow_double).collect::<PyResult<_>>()?;
+    let mut views = arrays.iter_mut().map(|array| slice(py, array)).collect::<PyResult<Vec<_>>>()?;
+    let count = coefficients.first().map_or(0, Vec::len);
+    let weight = (current.len() as u64).saturating_mul((count * terms.terms.strings().len().max(1)) as u64);
+    run(py, weight, Spoils::Nothing, progress.as_ref(), |control| {
+        if current.iter().any(|amplitude| amplitude.im != 0.0) {
+            return Ok(false);
+        }
+        let Some(action) = Action::folded(&terms.terms, scale, shift) else { return Ok(false) };
+        apply::real_chebyshev_sums(&action, current, &mut views, &coefficients, threads, control).map(|_| true)
     })
 }
 

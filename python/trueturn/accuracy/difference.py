@@ -132,24 +132,24 @@ def exact_evolution(operator: Operator, time: float, *, dense: bool, threads: in
         found = _diagonalised(operator)
         return DenseEvolution(found.evolution(time), found.rounding(time) + UNIT * math.sqrt(size))
     _memory.require(_VECTORS * (16 << operator.qubits), "operator_error", _VECTORS)
-    ahead = _direction(operator, time, threads, None)
-    interval = None
-    if ahead.certificate is not None:
-        low, high = ahead.certificate.spectral_interval
-        interval = -high, -low, ahead.certificate.spectral_route
-    return PlannedEvolution(ahead, _direction(operator, -time, threads, interval))
+    if len(operator) == 0 or time == 0.0:
+        still = _Direction(operator, 0.0, None, None, threads)
+        return PlannedEvolution(still, still)
+    low, high, route = chebyshev.bare_interval(operator, time)
+    along, against = (low, high, route), (-high, -low, route)
+    if time < 0.0:
+        along, against = against, along
+    return PlannedEvolution(_direction(operator, time, threads, along), _direction(operator, -time, threads, against))
 
 
 # Several times of one Hamiltonian come in a row.
 _diagonalised: Callable[[Operator], Diagonalised] = lru_cache(maxsize=1)(diagonalised)
 
 
-def _direction(operator: Operator, time: float, threads: int, interval: tuple[float, float, str] | None) -> _Direction:
+def _direction(operator: Operator, time: float, threads: int, interval: tuple[float, float, str]) -> _Direction:
     """Plan as fine an evolution as double precision certifies, `FINEST` at most."""
     mirrored = operator if time >= 0.0 else -1.0 * operator
     span = abs(time)
-    if span == 0.0 or len(operator) == 0:
-        return _Direction(operator, 0.0, None, None, threads)
 
     def planned(tolerance: float) -> tuple[Certificate, Schedule]:
         return chebyshev.planned(mirrored, operator.qubits, [span], tolerance, keep_all=False, interval=interval)

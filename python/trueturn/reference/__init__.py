@@ -205,7 +205,7 @@ def reference(
     if certificate.largest > tolerance:
         _refuse_tolerance(certificate, tolerance)
     inputs = inputs_of(operator, state, watched, tolerance, workers)
-    length = state.norm(threads=workers)
+    length = inputs.start_norm
     records = {name: _Record(observable, length, state.qubits) for name, observable in watched.items()}
     last = sign * ascending[-1] if ascending else 0.0
     kept: dict[float, State] = {}

@@ -13,6 +13,7 @@ __all__ = ["bessel_values", "least_degree", "tail_bound", "truncation"]
 
 _PRECISION = 50
 _NEGLIGIBLE = 1e-45
+_GOLDEN = (math.sqrt(5.0) - 1.0) / 2.0
 
 
 def tail_bound(x: float, degree: int) -> float:
@@ -21,8 +22,6 @@ def tail_bound(x: float, degree: int) -> float:
     Cauchy's estimate on the circle of radius ρ gives |J_k(x)| ≤ e^{x(ρ-1/ρ)/2} ρ^{-k}; the sum is geometric. Any ρ > 1
     is valid, so the minimisation need not be exact.
     """
-    from scipy.optimize import minimize_scalar  # slow to import, so only where it is needed
-
     x = abs(x)
     if x == 0.0:
         return 0.0
@@ -32,10 +31,21 @@ def tail_bound(x: float, degree: int) -> float:
         rho = 1.0 + excess
         return x * (rho - 1.0 / rho) / 2.0 - degree * math.log1p(excess) - log_rho_minus_one
 
-    largest = min(700.0, math.log(4.0 * (degree + 1) / x + 4.0))
-    found = minimize_scalar(logarithm, bounds=(-12.0, largest), method="bounded")
+    # Golden sections leave less than 1e-6 of the range. No library, since importing one takes longer.
+    low, high = -12.0, min(700.0, math.log(4.0 * (degree + 1) / x + 4.0))
+    left, right = high - _GOLDEN * (high - low), low + _GOLDEN * (high - low)
+    at_left, at_right = logarithm(left), logarithm(right)
+    for _ in range(30):
+        if at_left < at_right:
+            high, right, at_right = right, left, at_left
+            left = high - _GOLDEN * (high - low)
+            at_left = logarithm(left)
+        else:
+            low, left, at_left = left, right, at_right
+            right = low + _GOLDEN * (high - low)
+            at_right = logarithm(right)
     # The exponent is a difference of large numbers: pad it by their rounding.
-    padded = float(found.fun) + 1e-13 * (x + degree + 10.0)
+    padded = min(at_left, at_right) + 1e-13 * (x + degree + 10.0)
     return 2.0 * math.exp(min(padded, 700.0))
 
 

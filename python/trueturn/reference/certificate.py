@@ -26,7 +26,8 @@ class Certificate:
     truncation, rounding : mapping of float to float
         By time: what cutting the expansion costs, and what arithmetic costs.
     spectral_interval : (float, float)
-        Interval that was used for the expansion and holds the whole spectrum.
+        Holds the whole spectrum. It was used for the expansion, or is the one that was, widened by a conserved field
+        that was taken out.
     spectral_route : str
         How the interval was obtained.
     applications : int

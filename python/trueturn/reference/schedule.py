@@ -21,10 +21,13 @@ from trueturn.errors import ToleranceError
 from trueturn.operator import Operator
 from trueturn.reference.bessel import bessel_values, least_degree, truncation
 from trueturn.reference.certificate import UNIT
+from trueturn.reference.conserved import NO_FIELD, Field
 
 __all__ = ["Expansion", "Schedule", "schedule"]
 
 _WIDENINGS = (0.0, 0.01, 0.04, 0.12)
+# Of the tolerance, what truncation may take.
+_SHARES = (0.9, 0.5, 0.05)
 # λ times the length of the longest expansion: beyond it the overhead that longer ones save is below 2 %.
 _LONGEST = 2000.0
 # Start states may be off unit length by as much (complex64 ones; the bounds are linear in the norm).
@@ -53,11 +56,12 @@ class Expansion:
 
 @dataclass(frozen=True)
 class Schedule:
-    """Expansions in order, on the interval of the given centre and half-width."""
+    """Expansions in order, on the interval of the given centre and half-width, of an operator without the given field."""
 
     expansions: tuple[Expansion, ...]
     centre: float
     half_width: float
+    field: Field = NO_FIELD
 
     @property
     def applications(self) -> int:
@@ -84,8 +88,11 @@ def schedule(
     times: Sequence[float],
     tolerance: float,
     group: int,
+    field: Field = NO_FIELD,
 ) -> Schedule:
     """Plan expansions to all times (ascending, positive) within a tolerance, with at most `group` targets each.
+
+    Operator and interval are those without `field`, whose own evolution is added after each expansion.
 
     Raises
     ------
@@ -94,8 +101,16 @@ def schedule(
     """
     reach = _least_rounding(operator, interval, times[-1])
     if reach > tolerance:
-        raise _refusal(tolerance, _far_bound(operator, interval, times[-1], reach))
-    drafts = sorted(_drafts(operator, interval, times, tolerance, group), key=lambda draft: draft.total)
+        raise _refusal(tolerance, _far_bound(operator, interval, times[-1], reach, field))
+    drafts: list[_Draft] = []
+    for draft in _drafts(operator, interval, times, tolerance, group, field):
+        # The first ones neither widen nor cut more than they must, by falling shares of truncation: none takes fewer terms.
+        if len(drafts) < len(_SHARES) and draft.total <= tolerance:
+            exact = draft.schedule(exact=True)
+            if _total(exact) <= tolerance:
+                return exact
+        drafts.append(draft)
+    drafts.sort(key=lambda draft: draft.total)
     fitting = sorted((draft for draft in drafts if draft.total <= tolerance), key=lambda draft: draft.applications)
     # A draft rounds lengths; the exact plan may miss the tolerance by a hair, and then the next draft is due.
     for draft in fitting:
@@ -118,13 +133,14 @@ def _refusal(tolerance: float, bound: float) -> ToleranceError:
 def _least_rounding(operator: Operator, interval: tuple[float, float], time: float) -> float:
     """Return what any plan's rounding bound exceeds, so that hopeless requests are refused without planning.
 
-    Each recurrence counts at least `local` Σ k |a_k|, and x sin θ = |d/dθ exp(-ix cos θ)| ≤ Σ k |a_k| for all θ.
+    Each recurrence counts at least `local` Σ k |a_k|, and x sin θ = |d/dθ exp(-ix cos θ)| ≤ Σ k |a_k| for all θ. A part of
+    `local` does not shrink as the interval is widened, so that the product with x is least where it is not.
     """
     centre, half = _centred(interval)
-    return min(_local_error(operator, centre, half * (1.0 + w)) * half * time for w in _WIDENINGS)
+    return _local_error(operator, centre, half) * half * time
 
 
-def _far_bound(operator: Operator, interval: tuple[float, float], time: float, reach: float) -> float:
+def _far_bound(operator: Operator, interval: tuple[float, float], time: float, reach: float, field: Field) -> float:
     """Return the bound of a plan of equal expansions to a time that is out of reach, from one of them."""
     centre, half = _centred(interval)
     totals = []
@@ -133,7 +149,7 @@ def _far_bound(operator: Operator, interval: tuple[float, float], time: float, r
         local = _local_error(operator, centre, wide)
         for parts in _segment_counts(wide * time):
             cuts = ((0.0, (time / parts,)),)
-            one = _Draft(cuts, centre, wide, 0.05 * reach / parts, local, _growth(widening)).evaluated()
+            one = _Draft(cuts, centre, wide, 0.05 * reach / parts, local, _growth(widening), field).evaluated()
             totals.append(math.expm1(min(parts * one.total, 700.0)))
     return min(totals)
 
@@ -158,12 +174,13 @@ class _Draft:
     allowed: float
     local: float
     growth: float
+    field: Field
     applications: int = 0
     total: float = math.inf
 
     def schedule(self, exact: bool) -> Schedule:
         expansions = tuple(self._expansion(start, targets, exact) for start, targets in self.cuts)
-        return Schedule(expansions, self.centre, self.half)
+        return Schedule(expansions, self.centre, self.half, self.field)
 
     def evaluated(self) -> _Draft:
         plan = self.schedule(exact=False)
@@ -180,7 +197,8 @@ class _Draft:
         if not exact:
             turns = [_nearly(turn) for turn in turns]
         rounding = tuple(
-            _rounding(x, degree, turn, self.local, self.growth) for x, turn in zip(lengths, turns, strict=True)
+            _rounding(x, degree, turn, self.local, self.growth) + self.field.rounding(target - start)
+            for x, turn, target in zip(lengths, turns, targets, strict=True)
         )
         return Expansion(start, targets, degree, cut, rounding)
 
@@ -191,7 +209,12 @@ def _nearly(value: float) -> float:
 
 
 def _drafts(
-    operator: Operator, interval: tuple[float, float], times: Sequence[float], tolerance: float, group: int
+    operator: Operator,
+    interval: tuple[float, float],
+    times: Sequence[float],
+    tolerance: float,
+    group: int,
+    field: Field,
 ) -> Iterator[_Draft]:
     centre, half = _centred(interval)
     for widening in _WIDENINGS:
@@ -199,9 +222,9 @@ def _drafts(
         local = _local_error(operator, centre, wide)
         for segments in _segment_counts(wide * times[-1]):
             cuts = tuple(_cuts(times, times[-1] / segments, group))
-            for share in (0.5, 0.05):
+            for share in _SHARES:
                 allowed = share * tolerance / len(cuts)
-                yield _Draft(cuts, centre, wide, allowed, local, _growth(widening)).evaluated()
+                yield _Draft(cuts, centre, wide, allowed, local, _growth(widening), field).evaluated()
 
 
 def _growth(widening: float) -> float:
