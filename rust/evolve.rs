@@ -230,6 +230,31 @@ mod tests {
         }
     }
 
+    #[test]
+    fn one_rotation_alone_does_what_the_twin_does_with_the_same_bits_everywhere() {
+        for qubits in [3, 6, 7, 9, 12, 16] {
+            let start = random_state(qubits, 5);
+            let identity = Rotation { string: PauliString { x: 0, z: 0 }, angle: 0.3 };
+            let all = Rotation { string: PauliString { x: (1 << qubits) - 1, z: (1 << qubits) - 1 }, angle: -2.0 };
+            for rotation in random_list(qubits, 24, 3 * u64::from(qubits)).into_iter().chain([identity, all]) {
+                let circuit = Rotations::from_list(qubits, vec![rotation], 0.0).unwrap();
+                let planned = Planned::<f64>::circuit(&circuit, &Control::default()).unwrap();
+                let end = |isa: Isa, threads: usize| {
+                    let mut state = start.clone();
+                    carry_out(isa, &planned, &mut state, threads, &Control::default()).unwrap();
+                    state
+                };
+                let fast = end(Isa::BASELINE, 1);
+                let mut slow = start.clone();
+                crate::twin::rotate(&mut slow, &rotation);
+                let distance = fast.iter().zip(&slow).map(|(a, b)| (a - b).norm_sqr()).sum::<f64>().sqrt();
+                // Both sides round at most 5 u, u = 1.1e-16.
+                assert!(distance < 2.0 * 5.0 * 1.2e-16, "{qubits} qubits, {rotation:?}: {distance:e}");
+                assert!(Isa::available().into_iter().all(|isa| end(isa, 1) == fast && end(isa, 3) == fast));
+            }
+        }
+    }
+
     /// Bonds of all kinds, hopping with strings between, excitations, couplings of all pairs, in both orders.
     fn structured_list(qubits: u32) -> Vec<Rotation> {
         let mut list = vec![];
@@ -289,6 +314,30 @@ mod tests {
             evolve(&mut at_once, &step.times(repeat).unwrap(), 1, &Control::default()).unwrap();
             let distance = one_by_one.iter().zip(&at_once).map(|(a, b)| (a - b).norm_sqr()).sum::<f64>().sqrt();
             assert!(distance < repeat as f64 * (2.0 * 2e-16 * 61.0) + 2e-14, "{repeat}: {distance:e}");
+        }
+    }
+
+    #[test]
+    fn a_stopped_run_leaves_the_state_of_the_finished_passes() {
+        // A chain of XX on 17 qubits: the first pass holds the eleven lowest, and leaves the product of their cosines to the
+        // second.
+        let qubits = 17;
+        let list: Vec<_> =
+            (0..qubits - 1).map(|q| Rotation { string: PauliString { x: 3 << q, z: 0 }, angle: 0.4 }).collect();
+        let circuit = Rotations::from_list(qubits, list.clone(), 0.0).unwrap();
+        let planned = Planned::<f64>::circuit(&circuit, &Control::default()).unwrap();
+        assert_eq!(planned.passes(), 2);
+        let start = random_state(qubits, 8);
+        let mut slow = start.clone();
+        list[..11].iter().for_each(|rotation| crate::twin::rotate(&mut slow, rotation));
+        for threads in [1, 2] {
+            let (mut stopped, control) = (start.clone(), Control::default());
+            control.request_stop();
+            let outcome = carry_out(Isa::chosen().unwrap(), &planned, &mut stopped, threads, &control);
+            assert!(matches!(outcome, Err(Error::Cancelled { .. })));
+            let distance = stopped.iter().zip(&slow).map(|(a, b)| (a - b).norm_sqr()).sum::<f64>().sqrt();
+            // Eleven rotations of 8 u on one side, of 5 u on the other, and one product of 3 u; u = 1.1e-16.
+            assert!(distance < (11.0 * 13.0 + 3.0) * 1.2e-16, "{threads} threads: {distance:e}");
         }
     }
 

@@ -37,6 +37,7 @@ pub mod layout;
 pub mod single;
 pub mod space;
 pub mod spread;
+pub mod tile_operation;
 pub mod tiles;
 
 use num_complex::Complex64;

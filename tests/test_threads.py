@@ -20,12 +20,12 @@ from trueturn import _native
 COMMITTED = {
     ("mixed", "complex128"): "719997a133fa73d7168f134a5621334b59f6a2a8fab4e054c8904630bd2bd490",
     ("mixed", "complex64"): "58e8ef32879a3c7f5bc44b380a994793812fe8cde675e7513b00a81da7ff4048",
-    ("ladder", "complex128"): "69b8a8878c3725f8f92a657859cc81dd32be65148b543da3fb510ccaae2d12f6",
-    ("ladder", "complex64"): "0eb2711487efa37d491a799179334d322c1178196736a84a382645d74e1cece5",
+    ("ladder", "complex128"): "498a74a9389b55570612d54ffcd41b05c1ca95a33e34589ac7137d07d829d282",
+    ("ladder", "complex64"): "1357d536411d5f31b5d73f3b5da731609d4f414a2523ca5257b45bc3739955f2",
     ("long", "complex128"): "2af6d8f73bfcde63f28b418644116cf4fc3efbe247d9a46295a63828c2dbdbb8",
     ("long", "complex64"): "e012b599789e5ca9ff5a97b2c4504b1ad3ebcbed1c23b3ba477e6d334b0c8b5a",
-    ("random", "complex128"): "fb51735f157d882a1db4ce40ca2bf002bcdc805706f52fd583e84c704322a062",
-    ("random", "complex64"): "816fd5b55f6944a4b8d602aa57ba7c44a94c3a2bd6871082d77fb977ead8c939",
+    ("random", "complex128"): "eb0d3c1da2c3456138a557ad2ca780e59a0dbd3016e38f59068ba11cf9f3f863",
+    ("random", "complex64"): "ff7b6b2416f6055a6a99ef63a0f91016764806432afab5bd3d450dab2b1dabfd",
 }
 
 

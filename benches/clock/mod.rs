@@ -23,8 +23,10 @@ pub fn best(runs: usize, mut work: impl FnMut()) -> f64 {
 /// Room for a state that can begin on a large page, as the package allocates states; see [`aligned`].
 pub fn room<T: Real>(qubits: u32) -> Vec<Complex<T>> {
     let spare = LARGE_PAGE / size_of::<Complex<T>>();
-    let mut room = vec![Complex::new(T::default(), T::default()); (1 << qubits) + spare];
-    ask_for_large_pages(&mut room);
+    let count = (1 << qubits) + spare;
+    let mut room = Vec::with_capacity(count);
+    ask_for_large_pages(room.spare_capacity_mut());
+    room.resize(count, Complex::new(T::default(), T::default()));
     room
 }
 

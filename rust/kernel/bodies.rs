@@ -7,7 +7,8 @@
 use super::lanes::Real;
 use super::vector::Vector;
 use crate::passes::diagonal::{CosetFactors, Diagonal, LOW_BITS};
-use crate::passes::tiles::{ACTIVE, TILE, TileOperation};
+use crate::passes::tile_operation::{ACTIVE, TileOperation};
+use crate::passes::tiles::TILE;
 
 /// The real or the imaginary parts of a tile.
 pub type Registers<V> = [V; TILE];

@@ -17,7 +17,8 @@ use super::lanes::Real;
 use super::vector::Vector;
 use crate::passes::diagonal::{CosetFactors, Diagonal};
 use crate::passes::layout::{Layout, packed};
-use crate::passes::tiles::{Form, Part, TILE, TileOperation, TileRun};
+use crate::passes::tile_operation::{Form, TileOperation};
+use crate::passes::tiles::{Part, TILE, TileRun};
 
 /// Where the vectors of a coset lie, in a state or in a buffer.
 #[derive(Clone, Copy)]
