@@ -5,7 +5,7 @@
 //! sums and differences of two numbers: the same bits everywhere. In the comments a is a register and b its partner.
 
 use super::lanes::Real;
-use super::vector::Vector;
+use super::vector::{Lanes, Vector};
 use crate::passes::diagonal::{CosetFactors, Diagonal, LOW_BITS};
 use crate::passes::tile_operation::{ACTIVE, TileOperation};
 use crate::passes::tiles::TILE;
@@ -24,6 +24,20 @@ macro_rules! registers {
 }
 
 pub(super) use registers;
+
+/// Repeats a block for the parts of a vector.
+macro_rules! parts {
+    ($v:ty, $n:ident => $body:block) => {{
+        {
+            let $n: usize = 0;
+            $body
+        }
+        if <$v>::PARTS == 2 {
+            let $n: usize = 1;
+            $body
+        }
+    }};
+}
 
 impl<T: Real> TileOperation<T> {
     /// Lines of the entry that register `t` sees.
@@ -44,7 +58,7 @@ impl<T: Real> TileOperation<T> {
 /// # Safety
 /// The instruction set is there.
 #[inline(always)]
-pub unsafe fn product<V: Vector>(c: V, s: V, a: V, b: V) -> (V, V) {
+pub unsafe fn product<V: Lanes>(c: V, s: V, a: V, b: V) -> (V, V) {
     // SAFETY: by contract.
     unsafe { (c.mul(a).sub(s.mul(b)), c.mul(b).add(s.mul(a))) }
 }
@@ -63,13 +77,17 @@ pub unsafe fn exchange<V: Vector>(
     let (x, active) = (arm / TILE, ACTIVE[arm]);
     // SAFETY: by contract.
     unsafe {
-        let (gamma_re, gamma_im) = (V::splat(operation.numbers[0]), V::splat(operation.numbers[1]));
-        registers!(t => {
-            let u = (t ^ x) & 7;
-            if t < u && active >> t & 1 == 1 {
-                let (dr, di) = product(gamma_re, gamma_im, re[u].sub(re[t]), im[u].sub(im[t]));
-                (re[t], im[t], re[u], im[u]) = (re[t].add(dr), im[t].add(di), re[u].sub(dr), im[u].sub(di));
-            }
+        let (gamma_re, gamma_im) = (V::Part::splat(operation.numbers[0]), V::Part::splat(operation.numbers[1]));
+        parts!(V, n => {
+            registers!(t => {
+                let u = (t ^ x) & 7;
+                if t < u && active >> t & 1 == 1 {
+                    let (a, b, c, d) = (re[t].part(n), im[t].part(n), re[u].part(n), im[u].part(n));
+                    let (dr, di) = product(gamma_re, gamma_im, c.sub(a), d.sub(b));
+                    (re[t], im[t]) = (re[t].with_part(n, a.add(dr)), im[t].with_part(n, b.add(di)));
+                    (re[u], im[u]) = (re[u].with_part(n, c.sub(dr)), im[u].with_part(n, d.sub(di)));
+                }
+            });
         });
     }
 }
@@ -90,22 +108,49 @@ pub unsafe fn bond<V: Vector>(
     unsafe {
         let [plus_re, plus_im, minus_re, minus_im, tangent] = operation.numbers;
         let (plus_re, plus_im, minus_re, minus_im) =
-            (V::splat(plus_re), V::splat(plus_im), V::splat(minus_re), V::splat(minus_im));
-        let tangent = V::splat(tangent);
-        registers!(t => {
-            let u = (t ^ x) & 7;
-            if t < u {
-                let (a, b, c, d) = (re[t], im[t], re[u], im[u]);
-                if active >> t & 1 == 1 {
-                    let (sr, si) = product(plus_re, plus_im, a.add(c), b.add(d));
-                    let (dr, di) = product(minus_re, minus_im, a.sub(c), b.sub(d));
-                    (re[t], im[t], re[u], im[u]) = (sr.add(dr), si.add(di), sr.sub(dr), si.sub(di));
-                } else {
-                    (re[t], im[t]) = (a.add(tangent.mul(d)), b.sub(tangent.mul(c)));
-                    (re[u], im[u]) = (c.add(tangent.mul(b)), d.sub(tangent.mul(a)));
+            (V::Part::splat(plus_re), V::Part::splat(plus_im), V::Part::splat(minus_re), V::Part::splat(minus_im));
+        let tangent = V::Part::splat(tangent);
+        parts!(V, n => {
+            registers!(t => {
+                let u = (t ^ x) & 7;
+                if t < u {
+                    let (a, b, c, d) = (re[t].part(n), im[t].part(n), re[u].part(n), im[u].part(n));
+                    let (e, f, g, h) = if active >> t & 1 == 1 {
+                        let (sr, si) = product(plus_re, plus_im, a.add(c), b.add(d));
+                        let (dr, di) = product(minus_re, minus_im, a.sub(c), b.sub(d));
+                        (sr.add(dr), si.add(di), sr.sub(dr), si.sub(di))
+                    } else {
+                        let (e, f) = (a.add(tangent.mul(d)), b.sub(tangent.mul(c)));
+                        (e, f, c.add(tangent.mul(b)), d.sub(tangent.mul(a)))
+                    };
+                    (re[t], im[t]) = (re[t].with_part(n, e), im[t].with_part(n, f));
+                    (re[u], im[u]) = (re[u].with_part(n, g), im[u].with_part(n, h));
                 }
-            }
+            });
         });
+    }
+}
+
+/// How the lanes of partners are exchanged: not at all.
+pub const KEPT: u8 = 0;
+/// Within registers.
+pub const WITHIN: u8 = 1;
+/// Across registers.
+pub const ACROSS: u8 = 2;
+
+/// Lanes exchanged by `m`, in the way that is known.
+///
+/// # Safety
+/// The instruction set is there, and the way is that of `m`.
+#[inline(always)]
+unsafe fn exchanged<V: Vector, const LANES: u8>(vector: V, m: usize) -> V {
+    // SAFETY: by contract.
+    unsafe {
+        match LANES {
+            KEPT => vector,
+            WITHIN => vector.exchange_known::<false>(m),
+            _ => vector.exchange_known::<true>(m),
+        }
     }
 }
 
@@ -114,13 +159,13 @@ pub unsafe fn bond<V: Vector>(
 /// # Safety
 /// The instruction set is there.
 #[inline(always)]
-pub unsafe fn mix<V: Vector, const LANES: bool>(
+pub unsafe fn mix<V: Vector, const LANES: u8>(
     re: &mut Registers<V>,
     im: &mut Registers<V>,
     operation: &TileOperation<V::Element>,
     x: usize,
 ) {
-    let m = if LANES { operation.m } else { 0 };
+    let m = operation.m;
     // SAFETY: by contract.
     unsafe {
         let tangent = V::splat(operation.numbers[0]);
@@ -128,10 +173,10 @@ pub unsafe fn mix<V: Vector, const LANES: bool>(
             let u = (t ^ x) & 7;
             if t <= u {
                 let (a, b, c, d) = (re[t], im[t], re[u], im[u]);
-                let (e, f) = if LANES { (c.exchange(m), d.exchange(m)) } else { (c, d) };
+                let (e, f) = (exchanged::<V, LANES>(c, m), exchanged::<V, LANES>(d, m));
                 (re[t], im[t]) = (a.add(tangent.mul(f)), b.sub(tangent.mul(e)));
                 if t < u {
-                    let (e, f) = if LANES { (a.exchange(m), b.exchange(m)) } else { (a, b) };
+                    let (e, f) = (exchanged::<V, LANES>(a, m), exchanged::<V, LANES>(b, m));
                     (re[u], im[u]) = (c.add(tangent.mul(f)), d.sub(tangent.mul(e)));
                 }
             }
@@ -147,7 +192,7 @@ macro_rules! by_partner {
         /// # Safety
         /// The instruction set is there, and the entry is one of the operation's.
         #[inline(always)]
-        pub unsafe fn $name<V: Vector, const LANES: bool>(
+        pub unsafe fn $name<V: Vector, const LANES: u8>(
             re: &mut Registers<V>,
             im: &mut Registers<V>,
             operation: &TileOperation<V::Element>,
@@ -160,17 +205,17 @@ macro_rules! by_partner {
                 // SAFETY: as for the whole body.
                 unsafe { $result }
             }
-            let m = if LANES { operation.m } else { 0 };
+            let m = operation.m;
             // SAFETY: by contract.
             unsafe {
                 registers!(t => {
                     let u = (t ^ x) & 7;
                     if t <= u && $used(operation, entry, t) {
                         let (a, b, c, d) = (re[t], im[t], re[u], im[u]);
-                        let (e, f) = if LANES { (c.exchange(m), d.exchange(m)) } else { (c, d) };
+                        let (e, f) = (exchanged::<V, LANES>(c, m), exchanged::<V, LANES>(d, m));
                         (re[t], im[t]) = one(operation.lines(entry, t), a, b, e, f);
                         if t < u {
-                            let (e, f) = if LANES { (a.exchange(m), b.exchange(m)) } else { (a, b) };
+                            let (e, f) = (exchanged::<V, LANES>(a, m), exchanged::<V, LANES>(b, m));
                             (re[u], im[u]) = one(operation.lines(entry, u), c, d, e, f);
                         }
                     }

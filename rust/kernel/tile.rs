@@ -10,8 +10,8 @@
 
 use super::VectorWork;
 use super::bodies::{
-    Registers, bond, complex, diagonal, exchange, lane_exchange, mix, registers, scale, table, table_real, turn,
-    turn_real,
+    ACROSS, KEPT, Registers, WITHIN, bond, complex, diagonal, exchange, lane_exchange, mix, registers, scale, table,
+    table_real, turn, turn_real,
 };
 use super::lanes::Real;
 use super::vector::Vector;
@@ -108,7 +108,7 @@ pub struct Tiles<'a, T: Real> {
 
 /// Calls a body with a constant register mask where the vector type wants it.
 macro_rules! by_mask {
-    ($v:ty, $x:expr, $body:ident $(<$lanes:literal>)? ( $($argument:expr),* )) => {
+    ($v:ty, $x:expr, $body:ident $(<$lanes:ident>)? ( $($argument:expr),* )) => {
         if <$v>::UNROLLED {
             match $x {
                 0 => $body::<$v $(, $lanes)?>($($argument,)* 0),
@@ -152,9 +152,11 @@ macro_rules! by_arm {
 macro_rules! by_mask_and_lanes {
     ($v:ty, $operation:expr, $body:ident ( $($argument:expr),* )) => {
         if $operation.m == 0 {
-            by_mask!($v, $operation.x, $body<false>($($argument),*))
+            by_mask!($v, $operation.x, $body<KEPT>($($argument),*))
+        } else if <$v>::PARTS == 2 && <$v>::reaches_across($operation.m) {
+            by_mask!($v, $operation.x, $body<ACROSS>($($argument),*))
         } else {
-            by_mask!($v, $operation.x, $body<true>($($argument),*))
+            by_mask!($v, $operation.x, $body<WITHIN>($($argument),*))
         }
     };
 }

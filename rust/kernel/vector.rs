@@ -10,26 +10,13 @@
 
 use super::lanes::Real;
 
-/// Lanes of reals. All operations work lane by lane unless said otherwise.
+/// Arithmetic lane by lane: what vectors and the registers that they consist of have in common.
 ///
 /// # Safety
 /// Each function may only be called where the processor has the instruction set of the implementing type.
-pub trait Vector: Copy {
-    /// What a lane holds; there are `1 << Real::LANE_BITS` of them.
+pub trait Lanes: Copy {
+    /// What a lane holds.
     type Element: Real;
-    /// Whether the bodies should be unrolled over constant register masks.
-    const UNROLLED: bool;
-
-    /// Reads all lanes.
-    ///
-    /// # Safety
-    /// Besides the instruction set: `from` points to that many readable elements; no alignment is asked for.
-    unsafe fn load(from: *const Self::Element) -> Self;
-    /// Writes all lanes.
-    ///
-    /// # Safety
-    /// Besides the instruction set: `to` points to that many writable elements; no alignment is asked for.
-    unsafe fn store(self, to: *mut Self::Element);
     /// The same value in all lanes.
     ///
     /// # Safety
@@ -50,11 +37,60 @@ pub trait Vector: Copy {
     /// # Safety
     /// The instruction set is there.
     unsafe fn mul(self, other: Self) -> Self;
+}
+
+/// `1 << Real::LANE_BITS` lanes of reals.
+///
+/// # Safety
+/// As [`Lanes`].
+pub trait Vector: Lanes {
+    /// Whether the bodies should be unrolled over constant register masks.
+    const UNROLLED: bool;
+    /// One register of a vector. Where there are several, bodies that keep to their lanes take one after the other: with all
+    /// at once there are not enough registers.
+    type Part: Lanes<Element = Self::Element>;
+    /// How many registers a vector has.
+    const PARTS: usize;
+
+    /// Register `number`.
+    ///
+    /// # Safety
+    /// The instruction set is there, and so is the register.
+    unsafe fn part(self, number: usize) -> Self::Part;
+    /// The vector with another register `number`.
+    ///
+    /// # Safety
+    /// As [`Vector::part`].
+    unsafe fn with_part(self, number: usize, part: Self::Part) -> Self;
+    /// Reads all lanes.
+    ///
+    /// # Safety
+    /// Besides the instruction set: `from` points to that many readable elements; no alignment is asked for.
+    unsafe fn load(from: *const Self::Element) -> Self;
+    /// Writes all lanes.
+    ///
+    /// # Safety
+    /// Besides the instruction set: `to` points to that many writable elements; no alignment is asked for.
+    unsafe fn store(self, to: *mut Self::Element);
     /// Lane `l` takes what lane `l ^ m` held; `m` is below the number of lanes.
     ///
     /// # Safety
     /// The instruction set is there.
     unsafe fn exchange(self, m: usize) -> Self;
+    /// The same where it is known whether `m` reaches across registers.
+    ///
+    /// # Safety
+    /// As [`Vector::exchange`], and `ACROSS` is [`Vector::reaches_across`] of `m`.
+    #[inline(always)]
+    unsafe fn exchange_known<const ACROSS: bool>(self, m: usize) -> Self {
+        // SAFETY: by contract.
+        unsafe { self.exchange(m) }
+    }
+    /// Whether exchanging lanes by `m` exchanges registers, too.
+    #[inline(always)]
+    fn reaches_across(_m: usize) -> bool {
+        false
+    }
     /// Real and imaginary parts of amplitudes that lie as (re, im, re, im, …) in two vectors.
     ///
     /// # Safety
@@ -74,20 +110,8 @@ pub trait Vector: Copy {
 #[derive(Clone, Copy)]
 pub struct Portable<T, const LANES: usize>([T; LANES]);
 
-impl<T: Real, const LANES: usize> Vector for Portable<T, LANES> {
+impl<T: Real, const LANES: usize> Lanes for Portable<T, LANES> {
     type Element = T;
-    const UNROLLED: bool = false;
-
-    #[inline(always)]
-    unsafe fn load(from: *const T) -> Self {
-        // SAFETY: the caller vouches for the elements; arrays are read without alignment.
-        Self(unsafe { from.cast::<[T; LANES]>().read_unaligned() })
-    }
-    #[inline(always)]
-    unsafe fn store(self, to: *mut T) {
-        // SAFETY: as above.
-        unsafe { to.cast::<[T; LANES]>().write_unaligned(self.0) }
-    }
     #[inline(always)]
     unsafe fn splat(value: T) -> Self {
         Self([value; LANES])
@@ -103,6 +127,32 @@ impl<T: Real, const LANES: usize> Vector for Portable<T, LANES> {
     #[inline(always)]
     unsafe fn mul(self, other: Self) -> Self {
         Self(std::array::from_fn(|l| self.0[l] * other.0[l]))
+    }
+}
+
+impl<T: Real, const LANES: usize> Vector for Portable<T, LANES> {
+    const UNROLLED: bool = false;
+    type Part = Self;
+    const PARTS: usize = 1;
+
+    #[inline(always)]
+    unsafe fn part(self, _number: usize) -> Self {
+        self
+    }
+    #[inline(always)]
+    unsafe fn with_part(self, _number: usize, part: Self) -> Self {
+        part
+    }
+
+    #[inline(always)]
+    unsafe fn load(from: *const T) -> Self {
+        // SAFETY: the caller vouches for the elements; arrays are read without alignment.
+        Self(unsafe { from.cast::<[T; LANES]>().read_unaligned() })
+    }
+    #[inline(always)]
+    unsafe fn store(self, to: *mut T) {
+        // SAFETY: as above.
+        unsafe { to.cast::<[T; LANES]>().write_unaligned(self.0) }
     }
     #[inline(always)]
     unsafe fn exchange(self, m: usize) -> Self {

@@ -3,7 +3,7 @@
 use std::arch::x86_64::*;
 
 use super::lanes::Real;
-use super::vector::Vector;
+use super::vector::{Lanes, Vector};
 use super::{VectorWork, Work};
 
 /// Runs a loop with AVX2.
@@ -50,11 +50,53 @@ fn prefetch_line<T>(line: *const T) {
     unsafe { _mm_prefetch::<_MM_HINT_T1>(line.cast()) }
 }
 
-/// Implements the operations that one intrinsic serves.
-macro_rules! plain_operations {
-    ($element:ty, $load:ident, $store:ident, $splat:ident, $add:ident, $sub:ident, $mul:ident) => {
-        type Element = $element;
+/// Arithmetic of one register.
+macro_rules! register {
+    ($(#[$attribute:meta])* $name:ident, $register:ty, $element:ty, $splat:ident, $add:ident, $sub:ident, $mul:ident) => {
+        $(#[$attribute])*
+        #[derive(Clone, Copy)]
+        pub struct $name($register);
+
+        impl Lanes for $name {
+            type Element = $element;
+            #[inline(always)]
+            unsafe fn splat(value: $element) -> Self {
+                // SAFETY: the caller vouches for the instruction set.
+                Self(unsafe { $splat(value) })
+            }
+            #[inline(always)]
+            unsafe fn add(self, other: Self) -> Self {
+                // SAFETY: as above.
+                Self(unsafe { $add(self.0, other.0) })
+            }
+            #[inline(always)]
+            unsafe fn sub(self, other: Self) -> Self {
+                // SAFETY: as above.
+                Self(unsafe { $sub(self.0, other.0) })
+            }
+            #[inline(always)]
+            unsafe fn mul(self, other: Self) -> Self {
+                // SAFETY: as above.
+                Self(unsafe { $mul(self.0, other.0) })
+            }
+        }
+    };
+}
+
+/// What a vector of one register has in plain.
+macro_rules! one_register {
+    ($element:ty, $load:ident, $store:ident) => {
         const UNROLLED: bool = true;
+        type Part = Self;
+        const PARTS: usize = 1;
+        #[inline(always)]
+        unsafe fn part(self, _number: usize) -> Self {
+            self
+        }
+        #[inline(always)]
+        unsafe fn with_part(self, _number: usize, part: Self) -> Self {
+            part
+        }
         #[inline(always)]
         unsafe fn load(from: *const $element) -> Self {
             // SAFETY: the caller vouches for elements and instruction set.
@@ -66,46 +108,19 @@ macro_rules! plain_operations {
             unsafe { $store(to, self.0) }
         }
         #[inline(always)]
-        unsafe fn splat(value: $element) -> Self {
-            // SAFETY: as above.
-            Self(unsafe { $splat(value) })
-        }
-        #[inline(always)]
-        unsafe fn add(self, other: Self) -> Self {
-            // SAFETY: as above.
-            Self(unsafe { $add(self.0, other.0) })
-        }
-        #[inline(always)]
-        unsafe fn sub(self, other: Self) -> Self {
-            // SAFETY: as above.
-            Self(unsafe { $sub(self.0, other.0) })
-        }
-        #[inline(always)]
-        unsafe fn mul(self, other: Self) -> Self {
-            // SAFETY: as above.
-            Self(unsafe { $mul(self.0, other.0) })
-        }
-        #[inline(always)]
         fn prefetch(line: *const $element) {
             prefetch_line(line);
         }
     };
 }
 
-/// Eight doubles in one register.
-#[derive(Clone, Copy)]
-pub struct Double512(__m512d);
+register!(
+    /// Eight doubles in one register.
+    Double512, __m512d, f64, _mm512_set1_pd, _mm512_add_pd, _mm512_sub_pd, _mm512_mul_pd
+);
 
 impl Vector for Double512 {
-    plain_operations!(
-        f64,
-        _mm512_loadu_pd,
-        _mm512_storeu_pd,
-        _mm512_set1_pd,
-        _mm512_add_pd,
-        _mm512_sub_pd,
-        _mm512_mul_pd
-    );
+    one_register!(f64, _mm512_loadu_pd, _mm512_storeu_pd);
     #[inline(always)]
     unsafe fn exchange(self, m: usize) -> Self {
         // SAFETY: the caller vouches for the instruction set.
@@ -137,20 +152,13 @@ impl Vector for Double512 {
     }
 }
 
-/// Sixteen singles in one register.
-#[derive(Clone, Copy)]
-pub struct Single512(__m512);
+register!(
+    /// Sixteen singles in one register.
+    Single512, __m512, f32, _mm512_set1_ps, _mm512_add_ps, _mm512_sub_ps, _mm512_mul_ps
+);
 
 impl Vector for Single512 {
-    plain_operations!(
-        f32,
-        _mm512_loadu_ps,
-        _mm512_storeu_ps,
-        _mm512_set1_ps,
-        _mm512_add_ps,
-        _mm512_sub_ps,
-        _mm512_mul_ps
-    );
+    one_register!(f32, _mm512_loadu_ps, _mm512_storeu_ps);
     #[inline(always)]
     unsafe fn exchange(self, m: usize) -> Self {
         // SAFETY: the caller vouches for the instruction set.
@@ -182,70 +190,108 @@ impl Vector for Single512 {
     }
 }
 
+register!(
+    /// Four doubles.
+    Doubles4, __m256d, f64, _mm256_set1_pd, _mm256_add_pd, _mm256_sub_pd, _mm256_mul_pd
+);
+register!(
+    /// Eight singles.
+    Singles8, __m256, f32, _mm256_set1_ps, _mm256_add_ps, _mm256_sub_ps, _mm256_mul_ps
+);
+
 /// A vector in two AVX2 registers: lanes of the lower half, then of the upper.
 macro_rules! two_registers {
-    ($name:ident, $register:ty, $element:ty, $lanes:literal, $load:ident, $store:ident, $splat:ident, $add:ident, $sub:ident,
-     $mul:ident) => {
+    ($name:ident, $part:ident, $element:ty, $lanes:literal, $load:ident, $store:ident) => {
         #[doc = concat!("Twice ", $lanes, " lanes in two registers.")]
         #[derive(Clone, Copy)]
-        pub struct $name($register, $register);
+        pub struct $name($part, $part);
+
+        impl Lanes for $name {
+            type Element = $element;
+            #[inline(always)]
+            unsafe fn splat(value: $element) -> Self {
+                // SAFETY: the caller vouches for the instruction set.
+                unsafe { Self($part::splat(value), $part::splat(value)) }
+            }
+            #[inline(always)]
+            unsafe fn add(self, other: Self) -> Self {
+                // SAFETY: as above.
+                unsafe { Self(self.0.add(other.0), self.1.add(other.1)) }
+            }
+            #[inline(always)]
+            unsafe fn sub(self, other: Self) -> Self {
+                // SAFETY: as above.
+                unsafe { Self(self.0.sub(other.0), self.1.sub(other.1)) }
+            }
+            #[inline(always)]
+            unsafe fn mul(self, other: Self) -> Self {
+                // SAFETY: as above.
+                unsafe { Self(self.0.mul(other.0), self.1.mul(other.1)) }
+            }
+        }
 
         impl Vector for $name {
-            type Element = $element;
             const UNROLLED: bool = true;
+            type Part = $part;
+            const PARTS: usize = 2;
+            #[inline(always)]
+            unsafe fn part(self, number: usize) -> $part {
+                if number == 0 { self.0 } else { self.1 }
+            }
+            #[inline(always)]
+            unsafe fn with_part(self, number: usize, part: $part) -> Self {
+                if number == 0 { Self(part, self.1) } else { Self(self.0, part) }
+            }
             #[inline(always)]
             unsafe fn load(from: *const $element) -> Self {
                 // SAFETY: the caller vouches for elements and instruction set.
-                unsafe { Self($load(from), $load(from.add($lanes))) }
+                unsafe { Self($part($load(from)), $part($load(from.add($lanes)))) }
             }
             #[inline(always)]
             unsafe fn store(self, to: *mut $element) {
                 // SAFETY: as above.
                 unsafe {
-                    $store(to, self.0);
-                    $store(to.add($lanes), self.1);
+                    $store(to, self.0.0);
+                    $store(to.add($lanes), self.1.0);
                 }
-            }
-            #[inline(always)]
-            unsafe fn splat(value: $element) -> Self {
-                // SAFETY: as above.
-                unsafe { Self($splat(value), $splat(value)) }
-            }
-            #[inline(always)]
-            unsafe fn add(self, other: Self) -> Self {
-                // SAFETY: as above.
-                unsafe { Self($add(self.0, other.0), $add(self.1, other.1)) }
-            }
-            #[inline(always)]
-            unsafe fn sub(self, other: Self) -> Self {
-                // SAFETY: as above.
-                unsafe { Self($sub(self.0, other.0), $sub(self.1, other.1)) }
-            }
-            #[inline(always)]
-            unsafe fn mul(self, other: Self) -> Self {
-                // SAFETY: as above.
-                unsafe { Self($mul(self.0, other.0), $mul(self.1, other.1)) }
             }
             #[inline(always)]
             unsafe fn exchange(self, m: usize) -> Self {
                 // SAFETY: as above.
-                let (low, high) = unsafe { (Self::within(self.0, m), Self::within(self.1, m)) };
-                if m & $lanes == 0 { Self(low, high) } else { Self(high, low) }
+                unsafe {
+                    if Self::reaches_across(m) {
+                        self.exchange_known::<true>(m)
+                    } else {
+                        self.exchange_known::<false>(m)
+                    }
+                }
+            }
+            #[inline(always)]
+            unsafe fn exchange_known<const ACROSS: bool>(self, m: usize) -> Self {
+                // SAFETY: as above.
+                let (low, high) = unsafe { ($part(Self::within(self.0.0, m)), $part(Self::within(self.1.0, m))) };
+                if ACROSS { Self(high, low) } else { Self(low, high) }
+            }
+            #[inline(always)]
+            fn reaches_across(m: usize) -> bool {
+                m & $lanes != 0
             }
             #[inline(always)]
             unsafe fn split(first: Self, second: Self) -> (Self, Self) {
                 // SAFETY: as above.
                 unsafe {
-                    let (low, high) = (Self::parts(first.0, first.1), Self::parts(second.0, second.1));
-                    (Self(low.0, high.0), Self(low.1, high.1))
+                    let low = Self::parts(first.0.0, first.1.0);
+                    let high = Self::parts(second.0.0, second.1.0);
+                    (Self($part(low.0), $part(high.0)), Self($part(low.1), $part(high.1)))
                 }
             }
             #[inline(always)]
             unsafe fn interleave(re: Self, im: Self) -> (Self, Self) {
                 // SAFETY: as above.
                 unsafe {
-                    let (low, high) = (Self::woven(re.0, im.0), Self::woven(re.1, im.1));
-                    (Self(low.0, low.1), Self(high.0, high.1))
+                    let low = Self::woven(re.0.0, im.0.0);
+                    let high = Self::woven(re.1.0, im.1.0);
+                    (Self($part(low.0), $part(low.1)), Self($part(high.0), $part(high.1)))
                 }
             }
             #[inline(always)]
@@ -256,30 +302,8 @@ macro_rules! two_registers {
     };
 }
 
-two_registers!(
-    Double256,
-    __m256d,
-    f64,
-    4,
-    _mm256_loadu_pd,
-    _mm256_storeu_pd,
-    _mm256_set1_pd,
-    _mm256_add_pd,
-    _mm256_sub_pd,
-    _mm256_mul_pd
-);
-two_registers!(
-    Single256,
-    __m256,
-    f32,
-    8,
-    _mm256_loadu_ps,
-    _mm256_storeu_ps,
-    _mm256_set1_ps,
-    _mm256_add_ps,
-    _mm256_sub_ps,
-    _mm256_mul_ps
-);
+two_registers!(Double256, Doubles4, f64, 4, _mm256_loadu_pd, _mm256_storeu_pd);
+two_registers!(Single256, Singles8, f32, 8, _mm256_loadu_ps, _mm256_storeu_ps);
 
 impl Double256 {
     /// Lane l of a register takes lane l ^ (m & 3).
