@@ -31,6 +31,7 @@ const WAYS: [(&str, Keep); 3] =
 
 /// Reads OpenQASM text; `native` are gates of the file that count as one; `keep` is one of "clifford", "diagonal", "rotations", or anything else to choose.
 #[pyfunction]
+#[allow(clippy::too_many_arguments)]
 pub fn read_qasm(
     py: Python<'_>,
     text: &str,
