@@ -34,8 +34,9 @@ def job_for_circuits(
         As `read_circuit` does.
     """
     candidates, notes = [], []
+    asked: Reading = {**reading, "qubits": job.operator.qubits}
     for path in paths:
-        circuit = read_circuit(path, **{**reading, "qubits": job.operator.qubits})
+        circuit = read_circuit(path, **asked)
         candidates.append(GivenCircuit(circuit.evolution, path.name))
         notes += [f"{path.name}: {note}" for note in circuit.notes]
     if len(job.times) > 1:
