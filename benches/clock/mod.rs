@@ -7,6 +7,7 @@ use std::time::Instant;
 
 use _native::kernel::Isa;
 use _native::kernel::lanes::Real;
+use _native::kernel::pages::ask_for_large_pages;
 use _native::kernel::peak::arithmetic;
 use num_complex::Complex;
 
@@ -32,22 +33,6 @@ pub fn room<T: Real>(qubits: u32) -> Vec<Complex<T>> {
 
 /// Bytes of a large page.
 const LARGE_PAGE: usize = 1 << 21;
-
-/// Asks the system for large pages before the memory is touched. Without, S1 of a state in memory is up to twice as long.
-#[cfg(target_os = "linux")]
-fn ask_for_large_pages<T>(room: &mut [T]) {
-    unsafe extern "C" {
-        fn madvise(start: *mut std::ffi::c_void, bytes: usize, advice: i32) -> i32;
-    }
-    const HUGE_PAGE: i32 = 14;
-    let first = room.as_ptr().align_offset(4096);
-    let inside = &mut room[first..];
-    // SAFETY: the advice changes no content, and the range is memory of this slice. A refusal costs time only.
-    unsafe { madvise(inside.as_mut_ptr().cast(), size_of_val(inside), HUGE_PAGE) };
-}
-
-#[cfg(not(target_os = "linux"))]
-fn ask_for_large_pages<T>(_room: &mut [T]) {}
 
 /// The state inside its room: |0…0>.
 pub fn aligned<T: Real>(room: &mut [Complex<T>]) -> &mut [Complex<T>] {

@@ -6,13 +6,11 @@
 use num_complex::Complex64;
 
 use super::Isa;
-use super::VectorWork;
-use super::bodies::product;
+use super::copies::Copy;
 use super::lanes::Real;
 use super::shared::Shared;
 use super::single::Turning;
-use super::tile::{Ahead, Home, Tiles};
-use super::vector::Vector;
+use super::tile::{Ahead, Home, Place, Tiles};
 use crate::error::{Error, Result};
 use crate::passes::Pass;
 use crate::passes::diagonal::CosetFactors;
@@ -64,10 +62,12 @@ impl<'a, T: Real> Carrier<'a, T> {
         self.interleaved = true;
         let reals = 2usize << T::LANE_BITS;
         self.member.each_piece(self.state.reals() / reals, PIECE >> T::LANE_BITS, |vectors| {
-            // SAFETY: pieces are disjoint and in bounds; `Restore` asks for no more than that.
+            // SAFETY: pieces are disjoint and in bounds; a vector is read before it is written.
             unsafe {
                 let start = self.state.at(vectors.start * reals);
-                self.isa.run_vectors(Restore { start, vectors: vectors.len(), factor });
+                let from = Place { start, origin: 0, layout: None, interleaved: false };
+                let to = Place { interleaved: true, ..from };
+                self.isa.run_vectors(Copy { from, to, vectors: vectors.len(), factor: Some(factor) });
             }
         })
     }
@@ -149,35 +149,6 @@ impl<'a, T: Real> Carrier<'a, T> {
                 }
             }
             before += stage.runs.len();
-        }
-    }
-}
-
-/// Multiplies pairs of vectors by a number and turns them into interleaved amplitudes, in place.
-struct Restore<T> {
-    start: *mut T,
-    vectors: usize,
-    factor: (T, T),
-}
-
-impl<T: Real> VectorWork<T> for Restore<T> {
-    type Output = ();
-
-    /// # Safety
-    /// Besides the instruction set: `start` points to `vectors` pairs of vectors that nobody else uses.
-    #[inline(always)]
-    unsafe fn run<V: Vector<Element = T>>(self) {
-        let lanes = 1usize << T::LANE_BITS;
-        for vector in 0..self.vectors {
-            // SAFETY: by contract.
-            unsafe {
-                let address = self.start.add(2 * lanes * vector);
-                let factor = (V::splat(self.factor.0), V::splat(self.factor.1));
-                let (re, im) = product(factor.0, factor.1, V::load(address), V::load(address.add(lanes)));
-                let (first, second) = V::interleave(re, im);
-                first.store(address);
-                second.store(address.add(lanes));
-            }
         }
     }
 }

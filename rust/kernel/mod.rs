@@ -14,7 +14,7 @@
 //! | [`image`], [`act`], [`recurrence`] | sums of an operator's terms; applications, expectations; the Chebyshev recurrence |
 //! | [`copies`] | vectors copied between layouts, real states folded and unfolded |
 //! | [`reduce`] | norms, overlaps and distances: plain loops, left to the compiler |
-//! | [`peak`] | the arithmetic limit, for benches |
+//! | [`peak`], [`pages`] | the arithmetic limit and large pages, for benches |
 //! | [`shared`] | one array that several workers write, each its own part |
 //!
 //! All unsafe code of the crate is in this folder: calls into feature-enabled functions, loads and stores of vectors, and the
@@ -26,6 +26,7 @@ pub mod carry;
 pub mod copies;
 pub mod image;
 pub mod lanes;
+pub mod pages;
 pub mod peak;
 pub mod recurrence;
 pub mod reduce;

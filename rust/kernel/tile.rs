@@ -40,9 +40,12 @@ impl<T: Real> Place<'_, T> {
     /// `v` is below the number of vectors of the coset that this place was made for.
     #[inline(always)]
     pub unsafe fn address(&self, v: usize) -> *mut T {
-        // SAFETY: by contract.
+        // SAFETY: by contract the tile of the vector is there; registers are numbered below their count.
         unsafe {
-            let offset = self.layout.map_or_else(|| packed::<T>(v), |layout| layout.offset(v));
+            let offset = match self.layout {
+                None => packed::<T>(v),
+                Some(layout) => layout.tiles.get_unchecked(v / TILE) ^ layout.registers[v % TILE],
+            };
             self.start.add(self.origin ^ offset)
         }
     }

@@ -30,16 +30,6 @@ impl Layout {
         let bases: Vec<usize> = (0..vectors).step_by(TILE).collect();
         Self::new(&bases, &std::array::from_fn(|t| t), |vector| scattered::<T>(space, vector))
     }
-
-    /// Where vector `vector` of the sequence of tiles lies.
-    ///
-    /// # Safety
-    /// The tile of the vector is there.
-    #[inline(always)]
-    pub unsafe fn offset(&self, vector: usize) -> usize {
-        // SAFETY: by contract; registers are numbered below their count.
-        unsafe { self.tiles.get_unchecked(vector / TILE) ^ self.registers[vector % TILE] }
-    }
 }
 
 /// Where a vector of a coset lies in the state, relative to the representative, in reals.
@@ -63,8 +53,8 @@ mod tests {
         assert!(span.admit(1 << 9 | 1 << 7, 8) && span.admit(1 << 8, 8));
         let space = Space::new(span.filled(8));
         let layout = Layout::sequence::<f64>(&space);
-        // SAFETY: all 32 vectors are in the four tiles.
-        let mut starts: Vec<usize> = (0..32).map(|vector| unsafe { layout.offset(vector) }).collect();
+        let with_registers = |tile: &usize| layout.registers.map(|register| tile ^ register);
+        let mut starts: Vec<usize> = layout.tiles.iter().flat_map(with_registers).collect();
         starts.sort_unstable();
         let mut expected: Vec<usize> = (0..1usize << 8).map(|c| 2 * space.vector(c) as usize).collect();
         expected.sort_unstable();
