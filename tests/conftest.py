@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import os
+import signal
 import tomllib
 from pathlib import Path
 
@@ -42,3 +43,10 @@ def published():
         return json.loads(text) if name.endswith(".json") else tomllib.loads(text)
 
     return load
+
+
+def pytest_sessionstart(session):
+    # A shell that starts the tests in the background has them ignore Ctrl-C, and their children too: tests of it would wait
+    # for ever.
+    if signal.getsignal(signal.SIGINT) is signal.SIG_IGN:
+        signal.signal(signal.SIGINT, signal.default_int_handler)
