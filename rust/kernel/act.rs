@@ -69,8 +69,8 @@ pub(super) fn each_coset<T: Real>(
     let cosets = (state.reals() / 2) >> pass.space.dimension();
     let fetching = state.reals() * size_of::<T>() >= FETCH_FROM;
     member.each_piece(cosets, 4, |numbers| {
-        for number in numbers.clone() {
-            let next = pass.space.representative((number + 1).min(numbers.end - 1));
+        for number in numbers {
+            let next = pass.space.representative((number + 1).min(cosets - 1));
             work(number, pass.space.representative(number), fetching.then_some(next));
         }
     })

@@ -94,11 +94,12 @@ impl<'a, T: Real> Carrier<'a, T> {
         self.factors.resize_with(self.factors.len().max(pass.work.diagonals.len()), CosetFactors::default);
         let fetching = amplitudes * 2 * size_of::<T>() >= FETCH_FROM;
         let member = self.member;
-        member.each_piece(amplitudes / size, (PIECE / size).max(1), |numbers| {
+        let cosets = amplitudes / size;
+        member.each_piece(cosets, (PIECE / size).max(1), |numbers| {
             let mut next = pass.space.representative(numbers.start);
-            for number in numbers.clone() {
+            for number in numbers {
                 let rep = next;
-                next = pass.space.representative((number + 1).min(numbers.end - 1));
+                next = pass.space.representative((number + 1).min(cosets - 1));
                 // SAFETY: each coset number belongs to one piece of one worker, and cosets are disjoint.
                 unsafe { self.coset(pass, rep, fetching.then_some(next), last) };
             }
