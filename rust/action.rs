@@ -28,8 +28,11 @@ use crate::passes::tiles::{TILE, TILE_BITS};
 use crate::rotations::Rotation;
 use crate::terms::Terms;
 
-/// Dimension of a coset.
-const COSET_BITS: u32 = 13;
+/// Vectors in a coset, as a power of two.
+const COSET_BITS: u32 = 10;
+/// Vectors, as powers of two, that a coset reads in one run at least: the second where it costs no more passes, since long
+/// runs are faster to read.
+const RUN_BITS: [u32; 2] = [2, 3];
 /// Tiles, as a power of two, over which the parities of addends are prepared at once.
 pub const STRETCH_BITS: u32 = 4;
 
@@ -179,9 +182,12 @@ impl<T: Real> Action<T> {
         let new = |terms: &&Terms| Self { qubits: own(terms), passes: vec![], rounding: 0.0 };
         let mut actions: Vec<Self> = operators.iter().map(new).collect();
         let mut members: Vec<Vec<Vec<Gathered>>> = operators.iter().map(|_| vec![]).collect();
-        let mut first = true;
-        while first || left.iter().any(|gathered| !gathered.is_empty()) {
-            let (space, taken) = next_space::<T>(qubits, first, &mut left);
+        let limit = (COSET_BITS + T::LANE_BITS).min(qubits);
+        let masks: Vec<u64> = left.iter().flatten().map(|own| own.x).collect();
+        let [short, long] = RUN_BITS.map(|bits| spans(limit, T::LANE_BITS + bits, &masks));
+        for span in if long.len() <= short.len() { long } else { short } {
+            let taken: Vec<Vec<Gathered>> = left.iter_mut().map(|own| take(own, &span)).collect();
+            let space = Space::new(span.filled(limit));
             let layout = Arc::new(Layout::sequence::<T>(&space));
             let space = Arc::new(space);
             for (((action, taken), diagonal), members) in
@@ -190,7 +196,6 @@ impl<T: Real> Action<T> {
                 action.push(&space, &layout, &taken, diagonal, top);
                 members.push(taken);
             }
-            first = false;
         }
         for ((action, members), diagonal) in actions.iter_mut().zip(&members).zip(&diagonals) {
             action.rounding = rounding(&action.passes, members, diagonal);
@@ -239,17 +244,24 @@ impl<T: Real> Action<T> {
     }
 }
 
-/// The space of the next pass, and what of each operator it takes.
-fn next_space<T: Real>(qubits: u32, first: bool, left: &mut [Vec<Gathered>]) -> (Space, Vec<Vec<Gathered>>) {
-    let (limit, run_bits) = (COSET_BITS.min(qubits), T::LANE_BITS + 2);
-    let mut span = Span::of_low_bits(if first { limit } else { run_bits.min(limit) });
-    let mut taken = Vec::with_capacity(left.len());
-    for gathered in left {
-        let (own, rest) = std::mem::take(gathered).into_iter().partition(|own: &Gathered| span.admit(own.x, limit));
-        *gathered = rest;
-        taken.push(own);
+/// The spaces of all passes, of dimensions up to `limit`, for addends with these x masks: the first of the lowest qubits, in
+/// those after it memory is read in runs of 2^`run_bits` amplitudes.
+fn spans(limit: u32, run_bits: u32, masks: &[u64]) -> Vec<Span> {
+    let mut left = masks.to_vec();
+    let mut spans = vec![];
+    while spans.is_empty() || !left.is_empty() {
+        let mut span = Span::of_low_bits(if spans.is_empty() { limit } else { run_bits.min(limit) });
+        left.retain(|mask| !span.admit(*mask, limit));
+        spans.push(span);
     }
-    (Space::new(span.filled(limit)), taken)
+    spans
+}
+
+/// Takes out what lies in the span, in order.
+fn take(left: &mut Vec<Gathered>, span: &Span) -> Vec<Gathered> {
+    let (taken, rest) = std::mem::take(left).into_iter().partition(|own| span.contains(own.x));
+    *left = rest;
+    taken
 }
 
 fn rounding<T: Real>(passes: &[ActionPass<T>], members: &[Vec<Gathered>], diagonal: &[(u64, f64)]) -> f64 {

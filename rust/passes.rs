@@ -24,13 +24,14 @@
 //! 2 ↔ 7 and 3 ↔ 6 mix.
 //!
 //! The planner is greedy: it opens a pass, takes every later operation that fits and commutes with all that it skipped,
-//! tries this with the lowest k qubits and with a gathered span, and keeps the one that takes more rotations. Plans depend
+//! tries this with the lowest k qubits and with a gathered span, and keeps the one that takes more rotations. All this is
+//! done for two k, and the larger one is kept where it saves passes. Plans depend
 //! on the list and the number of qubits only, never on the machine, so results keep their bits. Operations are not re-ordered
 //! otherwise. A body that repeats is planned over a few repeats at once, so that the last pass of a step also does the
 //! beginning of the next ([`UNROLLED_REPEATS`]).
 //!
-//! Tried and left out: blocks of 2^15 amplitudes (fewer passes, but slower on processors whose second-level cache is half a
-//! megabyte); non-temporal stores; index swizzling against cache set conflicts.
+//! Tried and left out: blocks of 2^14 amplitudes (often no faster) and of 2^15 (slower on processors whose second-level cache
+//! is half a megabyte); non-temporal stores; index swizzling against cache set conflicts.
 
 pub mod diagonal;
 pub mod layout;
@@ -54,8 +55,8 @@ use tiles::{ONE, TILE_BITS, Work};
 
 /// States of at most this many qubits are one coset.
 pub const WHOLE_BITS: u32 = 15;
-/// Dimension of a coset of larger states.
-pub const COSET_BITS: u32 = 12;
+/// Vectors in a coset of larger states, as powers of two: the second where it saves passes.
+const COSET_BITS: [u32; 2] = [9, 10];
 /// Least dimension of a coset.
 const LEAST_COSET_BITS: u32 = 10;
 /// Repeats of a body that are planned together.
@@ -95,31 +96,48 @@ pub struct Pass<T: Real> {
 /// A stop on request.
 pub fn plan<T: Real>(qubits: u32, list: &[Rotation], control: &Control) -> Result<Vec<Pass<T>>> {
     let list = &joined(list)[..];
-    let limit = if qubits <= WHOLE_BITS { qubits } else { COSET_BITS };
-    let run_bits = T::LANE_BITS + 2;
-    let mut passes = Vec::new();
-    let mut taken = vec![false; list.len()];
+    let (limit, parts) = if qubits <= WHOLE_BITS {
+        (qubits, divide::<T>(list, qubits, control)?)
+    } else {
+        let limits = COSET_BITS.map(|bits| bits + T::LANE_BITS);
+        let [small, large] = limits.map(|limit| divide::<T>(list, limit, control));
+        let (small, large) = (small?, large?);
+        if small.len() <= large.len() { (limits[0], small) } else { (limits[1], large) }
+    };
     let mut owed = ONE;
-    let mut first = 0;
-    while first < list.len() {
-        if taken[first] {
-            first += 1;
-            continue;
-        }
-        control.go_on()?;
-        let weight = |members: &[usize]| members.iter().map(|&place| list[place].count()).sum::<usize>();
-        let low = gather(list, &taken, first, Span::of_low_bits(limit), limit);
-        let spread = gather(list, &taken, first, Span::of_low_bits(run_bits.min(limit)), limit);
-        let (members, span) = if weight(&low.0) >= weight(&spread.0) { low } else { spread };
-        members.iter().for_each(|&place| taken[place] = true);
-        let members: Vec<&Operation> = members.iter().map(|&place| &list[place]).collect();
-        passes.push(Pass::new(span, limit, &members, &mut owed));
-    }
+    let pass = |Part { members, span }: Part| Pass::new(span, limit, &members, &mut owed);
+    let mut passes: Vec<Pass<T>> = parts.into_iter().map(pass).collect();
     settle(&mut passes, owed);
     if let ([pass], [operation]) = (&mut passes[..], list) {
         pass.single = Single::new(operation);
     }
     Ok(passes)
+}
+
+/// What one pass takes, and the span that it needs.
+struct Part<'a> {
+    members: Vec<&'a Operation>,
+    span: Span,
+}
+
+/// Greedy: part after part, each the one that takes more rotations of two, with the lowest qubits or with a gathered span.
+fn divide<'a, T: Real>(list: &'a [Operation], limit: u32, control: &Control) -> Result<Vec<Part<'a>>> {
+    let run_bits = (T::LANE_BITS + 2).min(limit);
+    let mut parts = vec![];
+    let mut taken = vec![false; list.len()];
+    for first in 0..list.len() {
+        if taken[first] {
+            continue;
+        }
+        control.go_on()?;
+        let weight = |places: &[usize]| places.iter().map(|&place| list[place].count()).sum::<usize>();
+        let low = gather(list, &taken, first, Span::of_low_bits(limit), limit);
+        let spread = gather(list, &taken, first, Span::of_low_bits(run_bits), limit);
+        let (places, span) = if weight(&low.0) >= weight(&spread.0) { low } else { spread };
+        places.iter().for_each(|&place| taken[place] = true);
+        parts.push(Part { members: places.iter().map(|&place| &list[place]).collect(), span });
+    }
+    Ok(parts)
 }
 
 /// Lets the last diagonal operation, or the last pass, apply what the passes left to do.
@@ -188,9 +206,10 @@ mod tests {
 
     #[test]
     fn a_chain_of_bonds_takes_as_many_passes_as_its_span_needs() {
-        // The low twelve qubits hold eleven bonds; the other eight fit five forced bits and seven more.
+        // The low twelve qubits hold eleven bonds; other seven fit five forced bits and seven more, as eight need the larger coset.
         let list: Vec<_> = (0..19).map(|q| rotation(3 << q, 0)).collect();
-        assert_eq!(members(&list, 20), [11, 7, 1]);
+        assert_eq!(members(&list[..18], 19), [11, 7]);
+        assert_eq!(members(&list, 20), [12, 7]);
     }
 
     #[test]

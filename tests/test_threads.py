@@ -18,12 +18,12 @@ from trueturn import _native
 
 # SHA-256 of the little-endian amplitudes after each circuit of `fixed_circuit` on the product state 01+-01+-…
 COMMITTED = {
-    ("mixed", "complex128"): "719997a133fa73d7168f134a5621334b59f6a2a8fab4e054c8904630bd2bd490",
-    ("mixed", "complex64"): "58e8ef32879a3c7f5bc44b380a994793812fe8cde675e7513b00a81da7ff4048",
-    ("ladder", "complex128"): "498a74a9389b55570612d54ffcd41b05c1ca95a33e34589ac7137d07d829d282",
-    ("ladder", "complex64"): "1357d536411d5f31b5d73f3b5da731609d4f414a2523ca5257b45bc3739955f2",
+    ("mixed", "complex128"): "5f442f4cfc0fafdc26a86d84b2396014119c5ff6add600c6e3a0dafb3a8564a7",
+    ("mixed", "complex64"): "0214e39cabb98197cb0a97388367c201e70e613d04c44576965e90f171092e99",
+    ("ladder", "complex128"): "0b1558833b35528cafcd583573939f6c608856f688a9d5a9e98d4e46532b9641",
+    ("ladder", "complex64"): "c59735051a9a9d236a691e4c8fa778202a18dcb8eea92803fab39bb5c2ec5535",
     ("long", "complex128"): "2af6d8f73bfcde63f28b418644116cf4fc3efbe247d9a46295a63828c2dbdbb8",
-    ("long", "complex64"): "e012b599789e5ca9ff5a97b2c4504b1ad3ebcbed1c23b3ba477e6d334b0c8b5a",
+    ("long", "complex64"): "c6d689e6105b9a05e4b2c7b2712eba1f11f4cb3adf4175f441d9a34cab5e66a9",
     ("random", "complex128"): "eb0d3c1da2c3456138a557ad2ca780e59a0dbd3016e38f59068ba11cf9f3f863",
     ("random", "complex64"): "ff7b6b2416f6055a6a99ef63a0f91016764806432afab5bd3d450dab2b1dabfd",
 }

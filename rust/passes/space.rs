@@ -21,6 +21,11 @@ impl Span {
         self.basis.iter().fold(vector, |rest, v| if rest >> v.ilog2() & 1 == 1 { rest ^ v } else { rest })
     }
 
+    /// Whether a vector lies in the span.
+    pub fn contains(&self, vector: u64) -> bool {
+        self.reduce(vector) == 0
+    }
+
     /// Makes the span contain `vector` if its dimension then stays within `limit`; says whether it does.
     pub fn admit(&mut self, vector: u64, limit: u32) -> bool {
         let rest = self.reduce(vector);
