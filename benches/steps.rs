@@ -2,8 +2,9 @@
 //!
 //! `cargo bench --no-default-features --bench steps -- [QUBITS ...]` prints, for one and two threads, the best time of each
 //! list as a multiple of S1, the one-thread loop that multiplies every amplitude by a constant, the time of the same list
-//! one rotation at a time, the time of a step among eight in a row, and the arithmetic limit: the time that its products and
-//! sums alone take one thread, at the rate at which registers multiply and add in the same run.
+//! one rotation at a time, the time of a step among eight in a row, the time of its passes without their operations (all loads
+//! and stores, no arithmetic) and the arithmetic limit: the time that its products and sums alone take one thread, at the
+//! rate at which registers multiply and add in the same run.
 
 mod clock;
 mod lists;
@@ -11,8 +12,12 @@ mod lists;
 use std::env;
 
 use _native::evolve::{Planned, evolve};
+use _native::kernel::Isa;
+use _native::kernel::carry::Carrier;
+use _native::kernel::shared::Shared;
+use _native::passes::Pass;
 use _native::rotations::{Rotation, Rotations};
-use _native::team::Control;
+use _native::team::{Control, run};
 use clock::{aligned, best, peak, room, sizes, sweep};
 use num_complex::Complex64;
 
@@ -27,8 +32,8 @@ fn report(qubits: u32) {
     let peak = peak::<f64>();
     let only = env::var("TRUETURN_BENCH_ONLY").unwrap_or_default();
     println!(
-        "{:<28}{:>10}{:>8}{:>9}{:>9}{:>11}{:>8}{:>11}{:>12}",
-        "list", "rotations", "passes", "1 thread", "2", "in a row 1", "2", "unfused 1", "arithmetic"
+        "{:<28}{:>10}{:>8}{:>9}{:>9}{:>11}{:>8}{:>11}{:>9}{:>12}",
+        "list", "rotations", "passes", "1 thread", "2", "in a row 1", "2", "unfused 1", "moved 1", "arithmetic"
     );
     for (name, list) in lists::steps(qubits).into_iter().filter(|(name, _)| name.contains(&only)) {
         let once = Rotations::from_list(qubits, list.clone(), 0.0).expect("strings within the qubits");
@@ -45,13 +50,14 @@ fn report(qubits: u32) {
         });
         let single = unfused(state, &list);
         print!("{name:<28}{:>10}{passes:>8}", list.len());
-        let mut operations = 0.0;
-        Planned::<f64>::circuit(&once, &Control::default()).expect("no stop asked").each_list(1, &mut |passes, _| {
-            operations += passes.iter().map(|pass| pass.work.arithmetic()).sum::<f64>();
-        });
+        let mut planned = vec![];
+        let plan = Planned::<f64>::circuit(&once, &Control::default()).expect("no stop asked");
+        plan.each_list(1, &mut |passes, _| planned.extend_from_slice(passes));
+        let operations: f64 = planned.iter().map(|pass| pass.work.arithmetic()).sum();
         let arithmetic = operations * state.len() as f64 / peak;
+        let moved = moved(state, planned);
         print!("{:>9.2}{:>9.2}{:>11.2}{:>8.2}", steps[0] / sweep, steps[1] / sweep, rows[0] / sweep, rows[1] / sweep);
-        println!("{:>11.1}{:>12.2}", single / sweep, arithmetic / sweep);
+        println!("{:>11.1}{:>9.2}{:>12.2}", single / sweep, moved / sweep, arithmetic / sweep);
     }
 }
 
@@ -64,5 +70,21 @@ fn unfused(state: &mut [Complex64], list: &[Rotation]) -> f64 {
         for circuit in &circuits {
             evolve(state, circuit, 1, &Control::default()).expect("no stop asked");
         }
+    })
+}
+
+/// Time of passes without their operations, on one thread.
+fn moved(state: &mut [Complex64], mut passes: Vec<Pass<f64>>) -> f64 {
+    for pass in &mut passes {
+        pass.single = None;
+        pass.work.stages.iter_mut().flat_map(|stage| &mut stage.runs).for_each(|run| run.operations.clear());
+    }
+    let (isa, state) = (Isa::chosen().expect("a known instruction set"), Shared::new(state));
+    best(3, || {
+        let done = run(1, &Control::default(), |member| {
+            let mut carrier = Carrier::new(isa, member, &state);
+            (1..).zip(&passes).try_for_each(|(number, pass)| carrier.pass(pass, number == passes.len()))
+        });
+        done.expect("no stop asked");
     })
 }

@@ -34,12 +34,17 @@ pub fn room<T: Real>(qubits: u32) -> Vec<Complex<T>> {
 /// Bytes of a large page.
 const LARGE_PAGE: usize = 1 << 21;
 
-/// The state inside its room: |0…0>.
+/// The state inside its room, with amplitudes of one size: few rotations leave many of |0…0> so small that single precision
+/// holds them as subnormal numbers, on which processors are slow.
 pub fn aligned<T: Real>(room: &mut [Complex<T>]) -> &mut [Complex<T>] {
     let start = room.as_ptr().align_offset(LARGE_PAGE);
     let end = room.len() - LARGE_PAGE / size_of::<Complex<T>>() + start;
     let state = &mut room[start..end];
-    state[0].re = T::from_f64(1.0);
+    let size = (state.len() as f64).powf(-0.5);
+    for (index, amplitude) in state.iter_mut().enumerate() {
+        amplitude.re =
+            T::from_f64(if (index.wrapping_mul(0x9e37_79b9) >> 16).count_ones() & 1 == 1 { -size } else { size });
+    }
     state
 }
 
