@@ -5,8 +5,8 @@ use std::sync::atomic::{AtomicU64, Ordering};
 use num_complex::Complex;
 
 use super::Isa;
-use super::copies::Copy;
-use super::image::{Ending, Old, Room, coset_image};
+use super::copies::{Copy, Refill};
+use super::image::{Coming, Ending, Old, Room, coset_image};
 use super::lanes::Real;
 use super::shared::Shared;
 use super::tile::{Ahead, Place};
@@ -31,31 +31,53 @@ pub(super) fn place<'a, T: Real>(
     Place { start, origin: 2 * rep, layout: Some(&pass.layout), interleaved }
 }
 
-/// What to fetch of the next coset.
+/// What to fetch of the next coset where it is worked on in place.
 pub(super) fn ahead<'a, T: Real>(pass: &'a ActionPass<T>, state: &Shared<T>, next: usize) -> Ahead<'a, T> {
     // SAFETY: the state has a first real.
     let start = unsafe { state.at(0) };
     Ahead { start, origin: 2 * next, layout: &pass.layout, first: 0, step: 1 }
 }
 
-/// A worker's buffer for one coset.
-pub(super) struct Buffer<T: Real>(Vec<T::Line>);
+/// A worker's buffers for the coset at work and the next one.
+pub(super) struct Buffers<T: Real> {
+    lines: usize,
+    both: [Vec<T::Line>; 2],
+    /// The representative of the coset that the second buffer got while the one before was at work.
+    ready: Option<usize>,
+}
 
-impl<T: Real> Buffer<T> {
+impl<T: Real> Buffers<T> {
     pub fn new(pass: &ActionPass<T>) -> Self {
-        Self(vec![T::Line::default(); 2 << (pass.space.dimension() - T::LANE_BITS)])
+        let lines = 2 << (pass.space.dimension() - T::LANE_BITS);
+        Self { lines, both: Default::default(), ready: None }
     }
 
-    /// Copies a coset here, as vectors of real and imaginary parts.
+    /// The coset of `rep` as vectors of real and imaginary parts, and how the next one is to be copied meanwhile.
     ///
     /// # Safety
-    /// The place holds a coset of this buffer's size that nobody writes to.
-    pub unsafe fn fill(&mut self, isa: Isa, from: Place<T>) -> *const T {
-        let start = self.0.as_mut_ptr().cast();
-        let to = Place { start, origin: 0, layout: None, interleaved: false };
-        // SAFETY: by contract, and the buffer is this worker's own.
-        unsafe { isa.run_vectors(Copy { from, to, vectors: self.0.len() / 2, factor: None }) };
-        start
+    /// The place holds cosets of these buffers' size that nobody writes to before the work on this coset is done; that work
+    /// carries the refill out.
+    pub unsafe fn take<'a>(
+        &mut self,
+        isa: Isa,
+        place: impl Fn(usize) -> Place<'a, T>,
+        rep: usize,
+        next: Option<usize>,
+    ) -> (*const T, Option<Refill<'a, T>>) {
+        self.both.swap(0, 1);
+        let [start, then] = &mut self.both;
+        start.resize(self.lines, T::Line::default());
+        if next.is_some() {
+            then.resize(self.lines, T::Line::default());
+        }
+        let start: *mut T = start.as_mut_ptr().cast();
+        if self.ready != Some(rep) {
+            let to = Place { start, origin: 0, layout: None, interleaved: false };
+            // SAFETY: by contract, and the buffer is this worker's own.
+            unsafe { isa.run_vectors(Copy { from: place(rep), to, vectors: self.lines / 2, factor: None }) };
+        }
+        self.ready = next;
+        (start, next.map(|next| Refill { from: place(next), to: then.as_mut_ptr().cast() }))
     }
 }
 
@@ -100,17 +122,18 @@ pub fn apply<T: Real>(
         let mut room = Room::default();
         let last = action.passes.len() - 1;
         for (number, pass) in action.passes.iter().enumerate() {
-            let mut buffer = Buffer::new(pass);
+            let mut buffers = Buffers::new(pass);
             let old = if number == 0 { Old::Dropped } else { Old::Added };
             each_coset(member, pass, &state, |_, rep, next| {
                 let ending =
                     Ending::Store { out: place(pass, &out, rep, number == last), old, halved: false, gains: &[] };
-                let ahead = next.map(|next| [ahead(pass, &state, next), ahead(pass, &out, next)]);
-                let ahead = ahead.as_ref().map_or(&[][..], |both| &both[..]);
+                let ahead = next.map(|next| [ahead(pass, &out, next)]);
+                let ahead = ahead.as_ref().map_or(&[][..], |one| &one[..]);
                 // SAFETY: each coset belongs to one worker, `out` is not `state`, and the state is only read.
                 unsafe {
-                    let source = buffer.fill(isa, place(pass, &state, rep, true));
-                    coset_image(isa, pass, source, rep, ending, ahead, &mut room);
+                    let (source, refill) = buffers.take(isa, |rep| place(pass, &state, rep, true), rep, next);
+                    let coming = Coming { fetched: ahead, copied: refill };
+                    coset_image(isa, pass, source, rep, ending, coming, &mut room);
                 }
             })?;
             member.pass_done()?;
@@ -146,18 +169,17 @@ pub fn expectations<T: Real>(
         let partial: Vec<AtomicU64> = (0..busy.len() * cosets).map(|_| AtomicU64::new(0)).collect();
         run(workers, control, |member| {
             let mut room = Room::default();
-            let mut buffer = Buffer::new(pass);
+            let mut buffers = Buffers::new(pass);
             each_coset(member, pass, &state, |coset, rep, next| {
-                let mut ahead = next.map(|next| [ahead(pass, &state, next)]);
-                // SAFETY: the state is only read.
-                let source = unsafe { buffer.fill(isa, place(pass, &state, rep, true)) };
+                // SAFETY: the state is only read; the first image refills.
+                let (source, mut refill) =
+                    unsafe { buffers.take(isa, |rep| place(pass, &state, rep, true), rep, next) };
                 for (slot, &which) in busy.iter().enumerate() {
                     room.dot = [0.0; 16];
-                    let ahead = ahead.take();
-                    let ahead = ahead.as_ref().map_or(&[][..], |one| &one[..]);
+                    let coming = Coming { fetched: &[], copied: refill.take() };
                     let pass = &actions[which].passes[number];
                     // SAFETY: as above; the source is this worker's buffer.
-                    unsafe { coset_image(isa, pass, source, rep, Ending::Dot, ahead, &mut room) };
+                    unsafe { coset_image(isa, pass, source, rep, Ending::Dot, coming, &mut room) };
                     partial[slot * cosets + coset].store(pairwise(&room.dot).to_bits(), Ordering::Relaxed);
                 }
             })?;

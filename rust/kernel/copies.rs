@@ -5,11 +5,15 @@
 //! operator is (sum of even terms) + i (sum of odd terms), both real, both kept folded until the end.
 
 use super::VectorWork;
-use super::bodies::product;
+use super::bodies::{product, registers};
 use super::image::pair;
 use super::lanes::Real;
 use super::tile::Place;
 use super::vector::Vector;
+use crate::passes::tiles::TILE_BITS;
+
+/// Tiles between the one that a [`Refill`] copies and the one that it fetches.
+const LEAD: usize = 4;
 
 /// Copies vectors between places, splitting or interleaving amplitudes and multiplying by a number on the way.
 pub struct Copy<'a, T> {
@@ -49,6 +53,46 @@ impl<T: Real> VectorWork<T> for Copy<'_, T> {
                 a.store(address);
                 b.store(address.add(lanes));
             }
+        }
+    }
+}
+
+/// A coset that is copied to a buffer tile by tile, while another one is at work.
+pub struct Refill<'a, T> {
+    /// Where it lies.
+    pub from: Place<'a, T>,
+    /// Where it goes, as vectors of real and imaginary parts.
+    pub to: *mut T,
+}
+
+impl<T: Real> Refill<'_, T> {
+    /// Copies one tile, and fetches a later one.
+    ///
+    /// # Safety
+    /// Both places hold `tiles` tiles that nobody else uses or writes to.
+    #[inline(always)]
+    pub unsafe fn tile<V: Vector<Element = T>>(&self, tile: usize, tiles: usize) {
+        let lanes = 1usize << T::LANE_BITS;
+        // SAFETY: by contract.
+        unsafe {
+            if tile + LEAD < tiles {
+                let base = (tile + LEAD) << TILE_BITS;
+                registers!(t => {
+                    let address = self.from.address(base + t);
+                    V::prefetch(address);
+                    V::prefetch(address.add(lanes));
+                });
+            }
+            let base = tile << TILE_BITS;
+            registers!(t => {
+                let (mut a, mut b) = pair::<V>(self.from.address(base + t));
+                if self.from.interleaved {
+                    (a, b) = V::split(a, b);
+                }
+                let to = self.to.add((base + t) << (T::LANE_BITS + 1));
+                a.store(to);
+                b.store(to.add(lanes));
+            });
         }
     }
 }

@@ -3,12 +3,14 @@
 //! One coset of the state at a time lies in cache as vectors of real and imaginary parts. For each tile of eight vectors of
 //! the result the addends are summed in registers; what becomes of the sum is the [`Ending`].
 
+use super::addends::{accumulate, add};
 use super::bodies::registers;
+use super::copies::Refill;
 use super::lanes::Real;
 use super::tile::{Ahead, Place, fetch};
 use super::vector::Vector;
 use super::{Isa, VectorWork};
-use crate::action::{ActionPass, Addend, STRETCH_BITS};
+use crate::action::{ActionPass, STRETCH_BITS};
 use crate::passes::diagonal::{CosetSums, DiagonalSum, LOW_BITS};
 use crate::passes::tiles::{TILE, TILE_BITS};
 
@@ -61,6 +63,14 @@ pub enum Ending<'a, T> {
     Dot,
 }
 
+/// What is brought nearer for the next coset meanwhile, tile by tile.
+pub struct Coming<'a, T> {
+    /// Where it is fetched into cache.
+    pub fetched: &'a [Ahead<'a, T>],
+    /// What is copied.
+    pub copied: Option<Refill<'a, T>>,
+}
+
 /// A worker's room.
 pub struct Room<T: Real> {
     /// Of real parts (and imaginary ones, unless theirs are others), and of imaginary parts.
@@ -87,7 +97,7 @@ pub unsafe fn coset_image<T: Real>(
     source: *const T,
     rep: usize,
     ending: Ending<T>,
-    ahead: &[Ahead<T>],
+    coming: Coming<T>,
     room: &mut Room<T>,
 ) {
     for (diagonal, sums) in [&pass.diagonal, &pass.im_diagonal].into_iter().zip(&mut room.sums) {
@@ -96,7 +106,7 @@ pub unsafe fn coset_image<T: Real>(
         }
     }
     // SAFETY: the contract is handed on.
-    unsafe { isa.run_vectors(Image { pass, source, rep, ending, ahead, room }) }
+    unsafe { isa.run_vectors(Image { pass, source, rep, ending, coming, room }) }
 }
 
 struct Image<'a, T: Real> {
@@ -104,7 +114,7 @@ struct Image<'a, T: Real> {
     source: *const T,
     rep: usize,
     ending: Ending<'a, T>,
-    ahead: &'a [Ahead<'a, T>],
+    coming: Coming<'a, T>,
     room: &'a mut Room<T>,
 }
 
@@ -115,7 +125,7 @@ impl<T: Real> VectorWork<T> for Image<'_, T> {
     /// As [`coset_image`], and the instruction set is there.
     #[inline(always)]
     unsafe fn run<V: Vector<Element = T>>(self) {
-        let Image { pass, source, rep, ending, ahead, room } = self;
+        let Image { pass, source, rep, ending, coming, room } = self;
         let tiles = 1usize << (pass.space.dimension() - T::LANE_BITS - TILE_BITS);
         room.entries.resize(pass.addends.len(), 0);
         for tile in 0..tiles {
@@ -128,8 +138,11 @@ impl<T: Real> VectorWork<T> for Image<'_, T> {
             }
             // SAFETY: by this function's contract; bases are vectors of the coset.
             unsafe {
-                for ahead in ahead {
+                for ahead in coming.fetched {
                     fetch::<V>(ahead, tile);
+                }
+                if let Some(refill) = &coming.copied {
+                    refill.tile::<V>(tile, tiles);
                 }
                 let zero = V::splat(T::default());
                 let (mut re, mut im) = ([zero; TILE], [zero; TILE]);
@@ -144,18 +157,6 @@ impl<T: Real> VectorWork<T> for Image<'_, T> {
                 finish::<V>(&re, &im, &ending, source, base, &mut room.dot);
             }
         }
-    }
-}
-
-impl<T: Real> Addend<T> {
-    /// Number of the entry at the first tile of a stretch.
-    #[inline(always)]
-    fn entry(&self, base: usize, rep: usize) -> usize {
-        let mut entry = 0;
-        for (j, (mask, coset)) in self.masks.iter().zip(&self.coset_masks).enumerate() {
-            entry |= (((base & mask).count_ones() ^ (rep & coset).count_ones()) as usize & 1) << j;
-        }
-        entry
     }
 }
 
@@ -239,111 +240,6 @@ impl<'a, V: Vector> DiagonalTile<'a, V> {
                 factor = factor.add(part.mul(V::load(group.sign(self.first + t))));
             }
             factor
-        }
-    }
-}
-
-/// Adds one addend; `from` is the tile that it reads.
-///
-/// # Safety
-/// The instruction set is there, the entry is one of the addend's, and `from` holds a tile.
-#[inline(always)]
-unsafe fn add<V: Vector>(
-    re: &mut [V; TILE],
-    im: &mut [V; TILE],
-    addend: &Addend<V::Element>,
-    entry: usize,
-    from: *const V::Element,
-) {
-    let x = addend.x & (TILE - 1);
-    let stride = V::Element::LANE_BITS + 1;
-    // SAFETY: by contract.
-    unsafe {
-        if addend.swapped || addend.im_entry != 0 {
-            add_folded(re, im, addend, entry, from);
-        } else if !addend.lines.is_empty() {
-            let m = addend.m;
-            registers!(t => {
-                let coefficient = V::load(addend.lines.as_ptr().add(entry ^ addend.register_entry[t]).cast());
-                let (a, b) = pair::<V>(from.add((t ^ x) << stride));
-                accumulate(&mut re[t], &mut im[t], coefficient, a.exchange(m), b.exchange(m), addend.imaginary);
-            });
-        } else if addend.uniform {
-            let entry = entry ^ addend.register_entry[0];
-            if addend.idle >> entry & 1 == 1 {
-                return;
-            }
-            let coefficient = V::splat(addend.values[entry & 15]);
-            if addend.imaginary {
-                registers!(t => {
-                    let (a, b) = pair::<V>(from.add((t ^ x) << stride));
-                    (re[t], im[t]) = (re[t].sub(coefficient.mul(b)), im[t].add(coefficient.mul(a)));
-                });
-            } else {
-                registers!(t => {
-                    let (a, b) = pair::<V>(from.add((t ^ x) << stride));
-                    (re[t], im[t]) = (re[t].add(coefficient.mul(a)), im[t].add(coefficient.mul(b)));
-                });
-            }
-        } else {
-            registers!(t => {
-                let entry = entry ^ addend.register_entry[t];
-                if addend.idle >> entry & 1 == 0 {
-                    let coefficient = V::splat(addend.values[entry & 15]);
-                    let (a, b) = pair::<V>(from.add((t ^ x) << stride));
-                    accumulate(&mut re[t], &mut im[t], coefficient, a, b, addend.imaginary);
-                }
-            });
-        }
-    }
-}
-
-/// Adds one addend that tells imaginary from real parts; see [`add`].
-///
-/// # Safety
-/// As [`add`].
-#[inline(always)]
-unsafe fn add_folded<V: Vector>(
-    re: &mut [V; TILE],
-    im: &mut [V; TILE],
-    addend: &Addend<V::Element>,
-    entry: usize,
-    from: *const V::Element,
-) {
-    let (x, m) = (addend.x & (TILE - 1), addend.m);
-    let coefficient = |entry: usize| -> V {
-        // SAFETY: by contract.
-        unsafe {
-            match addend.lines.is_empty() {
-                true => V::splat(addend.values[entry & 15]),
-                false => V::load(addend.lines.as_ptr().add(entry).cast()),
-            }
-        }
-    };
-    // SAFETY: by contract.
-    unsafe {
-        registers!(t => {
-            let entry = entry ^ addend.register_entry[t];
-            let (a, b) = pair::<V>(from.add((t ^ x) << (V::Element::LANE_BITS + 1)));
-            let (a, b) = if addend.swapped { (b, a) } else { (a, b) };
-            re[t] = re[t].add(coefficient(entry).mul(a.exchange(m)));
-            im[t] = im[t].add(coefficient(entry ^ addend.im_entry).mul(b.exchange(m)));
-        });
-    }
-}
-
-/// += c (a + i b), or i c (a + i b).
-///
-/// # Safety
-/// The instruction set is there.
-#[inline(always)]
-unsafe fn accumulate<V: Vector>(re: &mut V, im: &mut V, c: V, a: V, b: V, imaginary: bool) {
-    // SAFETY: by contract.
-    unsafe {
-        if imaginary {
-            (*re, *im) = (re.sub(c.mul(b)), im.add(c.mul(a)));
-        } else {
-            (*re, *im) = (re.add(c.mul(a)), im.add(c.mul(b)));
         }
     }
 }

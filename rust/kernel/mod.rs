@@ -21,6 +21,7 @@
 //! disjoint access of several workers to one array.
 
 pub mod act;
+pub mod addends;
 pub mod bodies;
 pub mod carry;
 pub mod copies;

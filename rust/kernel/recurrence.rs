@@ -9,9 +9,9 @@
 use num_complex::Complex64;
 
 use super::Isa;
-use super::act::{Buffer, ahead, each_coset, place, require_size};
+use super::act::{Buffers, ahead, each_coset, place, require_size};
 use super::copies::{Copy, Fold, Unfold};
-use super::image::{Ending, Gain, Old, Room, Turned, coset_image};
+use super::image::{Coming, Ending, Gain, Old, Room, Turned, coset_image};
 use super::lanes::Real;
 use super::shared::Shared;
 use super::tile::{Ahead, Place};
@@ -192,7 +192,7 @@ fn recur(member: &Member, isa: Isa, action: &Action<f64>, buffers: &[Shared<f64>
         let (read, write) = (&buffers[(term + 1) & 1], &buffers[term & 1]);
         let due = term & 1 == 0 || term + 1 == terms;
         for (number, pass) in action.passes.iter().enumerate() {
-            let mut buffer = (!pass.space.is_contiguous()).then(|| Buffer::new(pass));
+            let mut buffers = (!pass.space.is_contiguous()).then(|| Buffers::new(pass));
             let old = match (number, term) {
                 (0, 1) => Old::Dropped,
                 (0, _) => Old::Subtracted,
@@ -202,28 +202,30 @@ fn recur(member: &Member, isa: Isa, action: &Action<f64>, buffers: &[Shared<f64>
             let entering: Vec<Entering> =
                 if due { sums.iter().filter_map(|sum| sum.entering(term)).collect() } else { vec![] };
             let mut gains: Vec<Gain<f64>> = Vec::with_capacity(entering.len());
-            let mut coming: Vec<Ahead<f64>> = Vec::with_capacity(entering.len() + 2);
+            let mut arriving: Vec<Ahead<f64>> = Vec::with_capacity(entering.len() + 2);
             each_coset(member, pass, read, |_, rep, next| {
                 gains.clear();
-                coming.clear();
+                arriving.clear();
                 gains.extend(entering.iter().map(|one| Gain {
                     sum: place(pass, one.vector, rep, false),
                     own: one.own,
                     source: one.source,
                 }));
                 if let Some(next) = next {
-                    let arrays = [read, write].into_iter().chain(entering.iter().map(|one| one.vector));
-                    coming.extend(arrays.map(|array| ahead(pass, array, next)));
+                    let read = buffers.is_none().then_some(read);
+                    let arrays = read.into_iter().chain([write]).chain(entering.iter().map(|one| one.vector));
+                    arriving.extend(arrays.map(|array| ahead(pass, array, next)));
                 }
                 let out = place(pass, write, rep, false);
                 let ending = Ending::Store { out, old, halved: number == last && term == 1, gains: &gains };
                 // SAFETY: each coset belongs to one worker; the arrays are distinct, and `read` is only read.
                 unsafe {
-                    let source = match &mut buffer {
-                        None => read.at(2 * rep),
-                        Some(buffer) => buffer.fill(isa, place(pass, read, rep, false)),
+                    let (source, refill) = match &mut buffers {
+                        None => (read.at(2 * rep).cast_const(), None),
+                        Some(buffers) => buffers.take(isa, |rep| place(pass, read, rep, false), rep, next),
                     };
-                    coset_image(isa, pass, source, rep, ending, &coming, &mut room);
+                    let coming = Coming { fetched: &arriving, copied: refill };
+                    coset_image(isa, pass, source, rep, ending, coming, &mut room);
                 }
             })?;
             member.pass_done()?;
