@@ -12,7 +12,7 @@
 //! the parity of `v_i & z`, and the parity of `rep & z` is a sign common to the coset ([`space`]). Where the span is that of the
 //! lowest k qubits, cosets are contiguous blocks and nothing is moved at all.
 //!
-//! A list of one rotation is not worth any of this ([`single`]).
+//! A list of one rotation, or of two, is not worth any of this ([`single`]).
 //!
 //! **Tile** ([`tiles`]). In cache, the operations of a run are sorted again by what fits into registers together.
 //!
@@ -57,6 +57,8 @@ use tiles::{ONE, TILE_BITS, Work};
 pub const WHOLE_BITS: u32 = 15;
 /// Vectors in a coset of larger states, as powers of two: the second where it saves passes.
 const COSET_BITS: [u32; 2] = [9, 10];
+/// Operations up to which a list is carried out one by one on states of several cosets: a pass for two saves nothing.
+const FEW: usize = 2;
 /// Least dimension of a coset.
 const LEAST_COSET_BITS: u32 = 10;
 /// Repeats of a body that are planned together.
@@ -86,7 +88,7 @@ pub struct Pass<T: Real> {
     pub rotations: usize,
     /// What the state after this pass still has to be multiplied by: later passes do it on their way.
     pub owed: Complex64,
-    /// The same in short, where the whole list is one rotation.
+    /// The same in short, where the list is so short that each pass of it is one rotation.
     pub single: Option<Single<T>>,
 }
 
@@ -96,8 +98,13 @@ pub struct Pass<T: Real> {
 /// A stop on request.
 pub fn plan<T: Real>(qubits: u32, list: &[Rotation], control: &Control) -> Result<Vec<Pass<T>>> {
     let list = &joined(list)[..];
+    let alone = list.len() == 1 || qubits > WHOLE_BITS && list.len() <= FEW;
     let (limit, parts) = if qubits <= WHOLE_BITS {
         (qubits, divide::<T>(list, qubits, control)?)
+    } else if alone {
+        let limit = COSET_BITS[0] + T::LANE_BITS;
+        let one = |operation| divide::<T>(std::slice::from_ref(operation), limit, control);
+        (limit, list.iter().map(one).collect::<Result<Vec<_>>>()?.into_iter().flatten().collect())
     } else {
         let limits = COSET_BITS.map(|bits| bits + T::LANE_BITS);
         let [small, large] = limits.map(|limit| divide::<T>(list, limit, control));
@@ -108,8 +115,8 @@ pub fn plan<T: Real>(qubits: u32, list: &[Rotation], control: &Control) -> Resul
     let pass = |Part { members, span }: Part| Pass::new(span, limit, &members, &mut owed);
     let mut passes: Vec<Pass<T>> = parts.into_iter().map(pass).collect();
     settle(&mut passes, owed);
-    if let ([pass], [operation]) = (&mut passes[..], list) {
-        pass.single = Single::new(operation);
+    if let (true, Some(singles)) = (alone, list.iter().map(Single::new).collect::<Option<Vec<_>>>()) {
+        passes.iter_mut().zip(singles).for_each(|(pass, single)| pass.single = Some(single));
     }
     Ok(passes)
 }

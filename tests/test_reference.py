@@ -292,10 +292,12 @@ def test_states_have_the_same_bits_for_any_number_of_threads():
         assert np.array_equal(found[0].expectations["h"], other.expectations["h"])
 
 
-@pytest.mark.parametrize("method", ["chebyshev", "krylov"])
-def test_progress_is_reported(method):
+# Long enough that the run is looked at before it ends.
+@pytest.mark.parametrize(("method", "sites", "time"), [("chebyshev", 16, 20.0), ("krylov", 13, 4.0)])
+def test_progress_is_reported(method, sites, time):
     seen = []
-    reference(chain(13), State.product("+" * 13), 4.0, method=method, progress=lambda *news: seen.append(news))
+    start = State.product("+" * sites)
+    reference(chain(sites), start, time, method=method, progress=lambda *news: seen.append(news))
     assert seen
     assert all(name == "reference" and 0 < done <= total for name, done, total in seen)
     assert [done for _, done, _ in seen] == sorted(done for _, done, _ in seen)

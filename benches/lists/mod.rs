@@ -129,6 +129,24 @@ pub fn random(qubits: u32, count: usize) -> Vec<Rotation> {
     (0..count).map(|_| rotation(mask(), mask(), 0.1)).collect()
 }
 
+/// Strings of one weight, on any qubits, with any letters.
+pub fn of_weight(qubits: u32, weight: u32, count: usize) -> Vec<Rotation> {
+    let mut next = numbers(17);
+    let mut string = || {
+        let (mut x, mut z) = (0u128, 0u128);
+        while (x | z).count_ones() < weight {
+            let place = 1u128 << (next() % u64::from(qubits));
+            if (x | z) & place == 0 {
+                let letter = 1 + next() % 3;
+                x |= place * u128::from(letter & 1);
+                z |= place * u128::from(letter >> 1);
+            }
+        }
+        rotation(x, z, 0.1)
+    };
+    (0..count).map(|_| string()).collect()
+}
+
 /// The steps of the table in the README of this folder.
 pub fn steps(qubits: u32) -> Vec<Named> {
     let mut all = vec![

@@ -45,10 +45,12 @@ impl<'a, T: Real> Carrier<'a, T> {
     /// As [`Member::pass_done`] and [`Member::each_piece`]. After a stop the state is interleaved.
     pub fn pass(&mut self, pass: &Pass<T>, last: bool) -> Result<()> {
         match &pass.single {
-            Some(single) if self.interleaved && last => self.turn(single)?,
-            _ => self.carry_out(pass, last)?,
+            Some(single) if self.interleaved => self.turn(single)?,
+            _ => {
+                self.carry_out(pass, last)?;
+                self.interleaved = last;
+            }
         }
-        self.interleaved = last;
         let done = self.member.pass_done();
         if matches!(done, Err(Error::Cancelled { .. })) && !self.interleaved {
             self.restore(pass.owed)?;
