@@ -57,7 +57,7 @@ use tiles::{ONE, TILE_BITS, Work};
 pub const WHOLE_BITS: u32 = 15;
 /// Vectors in a coset of larger states, as powers of two: the second where it saves passes.
 const COSET_BITS: [u32; 2] = [9, 10];
-/// Operations up to which a list is carried out one by one on states of several cosets: a pass for two saves nothing.
+/// Lone rotations up to which a list is carried out one by one on states of several cosets: a pass for two saves nothing.
 const FEW: usize = 2;
 /// Least dimension of a coset.
 const LEAST_COSET_BITS: u32 = 10;
@@ -98,10 +98,11 @@ pub struct Pass<T: Real> {
 /// A stop on request.
 pub fn plan<T: Real>(qubits: u32, list: &[Rotation], control: &Control) -> Result<Vec<Pass<T>>> {
     let list = &joined(list)[..];
-    let alone = list.len() == 1 || qubits > WHOLE_BITS && list.len() <= FEW;
+    let few = list.len() <= if qubits <= WHOLE_BITS { 1 } else { FEW };
+    let singles: Option<Vec<_>> = if few { list.iter().map(Single::new).collect() } else { None };
     let (limit, parts) = if qubits <= WHOLE_BITS {
         (qubits, divide::<T>(list, qubits, control)?)
-    } else if alone {
+    } else if singles.is_some() {
         let limit = COSET_BITS[0] + T::LANE_BITS;
         let one = |operation| divide::<T>(std::slice::from_ref(operation), limit, control);
         (limit, list.iter().map(one).collect::<Result<Vec<_>>>()?.into_iter().flatten().collect())
@@ -115,9 +116,7 @@ pub fn plan<T: Real>(qubits: u32, list: &[Rotation], control: &Control) -> Resul
     let pass = |Part { members, span }: Part| Pass::new(span, limit, &members, &mut owed);
     let mut passes: Vec<Pass<T>> = parts.into_iter().map(pass).collect();
     settle(&mut passes, owed);
-    if let (true, Some(singles)) = (alone, list.iter().map(Single::new).collect::<Option<Vec<_>>>()) {
-        passes.iter_mut().zip(singles).for_each(|(pass, single)| pass.single = Some(single));
-    }
+    passes.iter_mut().zip(singles.into_iter().flatten()).for_each(|(pass, single)| pass.single = Some(single));
     Ok(passes)
 }
 
@@ -217,6 +216,13 @@ mod tests {
         let list: Vec<_> = (0..19).map(|q| rotation(3 << q, 0)).collect();
         assert_eq!(members(&list[..18], 19), [11, 7]);
         assert_eq!(members(&list, 20), [12, 7]);
+    }
+
+    #[test]
+    fn two_bonds_share_a_pass_and_two_lone_strings_do_not() {
+        let bond = |q: u128| [rotation(3 << q, 0), rotation(3 << q, 3 << q)];
+        assert_eq!(members(&[bond(0), bond(3)].concat(), 17), [4]);
+        assert_eq!(members(&[rotation(1, 0), rotation(2, 0)], 17), [1, 1]);
     }
 
     #[test]
